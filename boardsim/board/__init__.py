@@ -1,0 +1,1 @@
+"""Reading and resolving board files."""

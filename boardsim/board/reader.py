@@ -1,0 +1,263 @@
+"""Board file -> Board: validated, parts resolved by name, channels laid out; every mistake with its place."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from pydantic import ValidationError
+from pydantic_core import PydanticCustomError
+
+from boardsim.board.ranges import read_range, write_range
+from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits, component_class
+from boardsim.board.toml_file import Keys, TomlFile, read_toml
+from boardsim.errors import InputError, Problem, QuantityError
+from boardsim.parts.base import Assumption, Part, Surroundings, listed, nearest
+from boardsim.parts.bulk import Bulk
+from boardsim.parts.cable import Cable
+from boardsim.parts.coil import Coil
+from boardsim.parts.kinds import kinds
+from boardsim.parts.library import records
+from boardsim.parts.logic import Logic
+from boardsim.parts.supply import Supply
+from boardsim.quantities import Origin
+
+
+@dataclass(frozen=True)
+class Channel:
+    """One coil with its switch and its clamp, driven by one register output."""
+
+    number: int
+    output: int
+    bit: int
+    label: str
+    coil: Coil
+    coil_name: str
+    switch: Any  # a part of role "switch"
+    clamp: Any  # a part of role "clamp"
+
+
+@dataclass(frozen=True)
+class Board:
+    """Parts and how they are connected. `around` is None where no ambient was given."""
+
+    path: Path
+    name: str
+    supply: Supply
+    cable: Cable
+    bulk: Bulk
+    logic: Logic
+    chain: Chain
+    channels: tuple[Channel, ...]
+    limits: Limits
+    exclusive: tuple[tuple[tuple[int, ...], int, str], ...]
+    derating: Deratings
+    around: Surroundings | None
+    assumptions: tuple[Assumption, ...]
+
+    def channel(self, number: int) -> Channel:
+        """The channel of a number.
+
+        Raises
+        ------
+        KeyError
+            If the board has no such channel.
+        """
+        for channel in self.channels:
+            if channel.number == number:
+                return channel
+        raise KeyError(number)
+
+
+class _Shelf:
+    """Finds parts by name: in the board file first, then in the library."""
+
+    def __init__(self, file: TomlFile):
+        self.local: dict[str, dict[str, Any]] = {}
+        self.coils: dict[str, dict[str, Any]] = {}
+        for shelf, section in ((self.local, "parts"), (self.coils, "coils")):
+            table = file.data.get(section)
+            if isinstance(table, dict):
+                shelf.update({k: v for k, v in table.items() if isinstance(v, dict)})
+        self.found: dict[tuple[type[Part], str], Part] = {}
+        self.name = file.path.name
+
+    def origin(self, field: str | None) -> Origin:
+        """Where the numbers of the file itself come from."""
+        return Origin("given", self.name)
+
+    def kind_of(self, name: str) -> str:
+        """The kind of a named part; an unknown name is reported where the part itself is read."""
+        record = self.local.get(name) or records().get(name, {})
+        kind = str(record.get("kind", ""))
+        return kind if kind in kinds("switch") else next(iter(kinds("switch")))
+
+    def find(self, cls: type[Part], name: str) -> Part:
+        """The part of a class and name, as pydantic asks for it.
+
+        Raises
+        ------
+        PydanticCustomError
+            If there is none, or it is of another kind.
+        """
+        kind = cls.model_fields["kind"].default
+        mine: Mapping[str, Any] = self.coils if cls.role == "coil" else self.local
+        if (cls, name) not in self.found:
+            record: Mapping[str, Any] | None = mine.get(name)
+            context: dict[str, Any] = {"find": self.find, "kind_of": self.kind_of, "origin": self.origin}
+            if record is None and (record := records().get(name)) is not None:
+                context["origin"] = _library_origin(record)
+                record = {k: v for k, v in record.items() if k not in ("source", "sources")}
+            if record is None:
+                same = [n for n, r in {**records(), **mine}.items() if r.get("kind", "coil") == kind]
+                raise PydanticCustomError("said", "{said}", {"said": (
+                    f'{kind} "{name}" is neither in this file nor in the library{nearest(name, same)}; known: {", ".join(sorted(same)) or "none"}'
+                )})  # fmt: skip
+            if record.get("kind", "coil" if cls.role == "coil" else kind) != kind:
+                raise PydanticCustomError("said", "{said}", {"said": f'"{name}" is a {record["kind"]}; a {kind} is needed here'})
+            try:
+                self.found[cls, name] = cls.model_validate({"title": name, **record}, context=context)
+            except ValidationError as err:
+                raise PydanticCustomError("broken", "{said}", {"said": f'"{name}" has mistakes of its own'}) from err
+        return self.found[cls, name]
+
+
+def _library_origin(record: Mapping[str, Any]) -> Callable[[str | None], Origin]:
+    sources = record.get("sources", {})
+
+    def origin(field: str | None) -> Origin:
+        return Origin("library", sources.get(field, record.get("source", "")))
+
+    return origin
+
+
+def library_part(name: str) -> Part:
+    """A part of the library by its name.
+
+    Raises
+    ------
+    InputError
+        If there is none; names the nearest.
+    """
+    record = records().get(name)
+    cls = component_class(str(record.get("kind"))) if record else None
+    if record is None or cls is None:
+        raise InputError(f'the library has no part "{name}"{nearest(name, list(records()))}')
+    body = {k: v for k, v in record.items() if k not in ("source", "sources")}
+    return cls.model_validate(body, context={"origin": _library_origin(record)})
+
+
+def read_board(path: Path) -> Board:
+    """Read a board file.
+
+    Raises
+    ------
+    InputError
+        With every mistake found: file, line, what was found, what is allowed.
+    """
+    file = read_toml(path, "board")
+    shelf = _Shelf(file)
+    context = {"find": shelf.find, "kind_of": shelf.kind_of, "origin": shelf.origin}
+    try:
+        board = BoardFile.model_validate(file.data, context=context)
+    except ValidationError as err:
+        raise InputError(problems_of(err, file)) from None
+    problems: list[Problem] = []
+    channels = _lay_out(board, file, problems)
+    exclusive = []
+    numbers = {c.number for c in channels}
+    for i, group in enumerate(board.limits.exclusive):
+        keys: Keys = ("limits", "exclusive", i, "channels")
+        members = _range(group.channels, file, keys, problems)
+        if unknown := [n for n in members if n not in numbers]:
+            problems.append(file.problem(keys, f"channel {unknown[0]} is not on this board"))
+        exclusive.append((members, group.most, group.reason or ""))
+    if problems:
+        raise InputError(sorted(problems, key=lambda p: p.line or 0))
+    around = None
+    assumed = listed("chain", latch_time=board.chain.latch_time)
+    if board.ambient is not None:
+        around = Surroundings(board.ambient.min, board.ambient.max)
+    else:
+        assumed += (Assumption("board", "ambient", "not given", "windings and cable are taken at the temperature of their given resistance"),)
+    return Board(
+        path, board.name or path.resolve().parent.name, board.supply, board.cable, board.bulk, board.logic, board.chain,
+        tuple(sorted(channels, key=lambda c: c.number)), board.limits, tuple(exclusive), board.derating, around, assumed,
+    )  # fmt: skip
+
+
+def _range(text: str, file: TomlFile, keys: Keys, problems: list[Problem]) -> tuple[int, ...]:
+    try:
+        return read_range(text)
+    except QuantityError as err:
+        problems.append(file.problem(keys, str(err)))
+        return ()
+
+
+def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[Channel]:
+    """One Channel per number of each range; complains of what is claimed twice or lies outside the chain."""
+    channels: list[Channel] = []
+    claimed: dict[str, dict[int, str]] = {"channel": {}, "output": {}, "bit": {}}
+    for text, group in board.channels.items():
+        keys: Keys = ("channels", text)
+        numbers = _range(text, file, keys, problems)
+        columns = {"outputs": numbers, "bits": numbers, "numbers": numbers}
+        for column in columns:
+            given = getattr(group, column)
+            if given is not None:
+                columns[column] = _range(given, file, (*keys, column), problems)
+                if len(columns[column]) not in (0, len(numbers)):
+                    problems.append(file.problem((*keys, column), f"names {len(columns[column])} {column} for {len(numbers)} channels"))
+            elif column == "bits":
+                columns[column] = columns["outputs"]
+        if any(len(c) != len(numbers) for c in columns.values()):
+            continue
+        for what, values in (("channel", numbers), ("output", columns["outputs"]), ("bit", columns["bits"])):
+            if twice := [n for n in values if n in claimed[what]]:
+                other = claimed[what][twice[0]]
+                problems.append(file.problem(keys, f'{what} {write_range(twice)} is already taken by channels."{other}"'))
+            claimed[what].update(dict.fromkeys(values, text))
+            if what != "channel" and (beyond := [n for n in values if n >= board.chain.outputs]):
+                problems.append(file.problem(keys, (
+                    f"{what} {write_range(beyond)} is outside the chain: {board.chain.count} registers have outputs 0-{board.chain.outputs - 1}"
+                )))  # fmt: skip
+        for number, output, bit, n in zip(numbers, columns["outputs"], columns["bits"], columns["numbers"], strict=True):
+            channels.append(_channel(group, number, output, bit, n))
+    return channels
+
+
+def _channel(group: ChannelRange, number: int, output: int, bit: int, n: int) -> Channel:
+    label = group.label.replace("{n}", str(n))
+    return Channel(number, output, bit, label, group.coil, group.coil.title or "coil", group.switch, group.clamp)
+
+
+def problems_of(err: ValidationError, file: TomlFile) -> list[Problem]:
+    """pydantic's errors as problems with file and line; consequences of another mistake are left out."""
+    problems: list[Problem] = []
+    errors = err.errors(include_url=False)
+    whole = [e for e in errors if "has mistakes of its own" not in e["msg"]]
+    for e in whole or errors:
+        keys = _keys_in(file.data, e["loc"])
+        where = ".".join(str(k) if not isinstance(k, str) or k.replace("_", "").isalnum() else f'"{k}"' for k in keys)
+        text = e["msg"].removeprefix("Value error, ")
+        problem = file.problem(keys, f"{where}: {text}" if where else text)
+        if problem not in problems:
+            problems.append(problem)
+    return sorted(problems, key=lambda p: p.line or 0)
+
+
+def _keys_in(data: Any, loc: tuple[int | str, ...]) -> Keys:
+    """The part of pydantic's location that names keys of the file (it also names classes and kinds)."""
+    keys: Keys = ()
+    for step in loc:
+        if isinstance(data, dict) and step in data:
+            data = data[step]
+            keys = (*keys, step)
+        elif isinstance(data, list) and isinstance(step, int) and step < len(data):
+            data = data[step]
+            keys = (*keys, step)
+    return keys
+
+

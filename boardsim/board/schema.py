@@ -1,0 +1,127 @@
+"""The shape of a board file. The JSON Schema that editors use is made from these classes."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal, Union
+
+from pydantic import BeforeValidator, Field, ValidationInfo
+
+from boardsim.parts.base import Name, Part, Record, named_part
+from boardsim.parts.bulk import Bulk
+from boardsim.parts.cable import Cable
+from boardsim.parts.coil import Coil
+from boardsim.parts.kinds import kinds
+from boardsim.parts.logic import Logic
+from boardsim.parts.register import Register
+from boardsim.parts.supply import Supply
+from boardsim.quantities import FREQUENCY, SHARE, TEMPERATURE, TIME, VOLTAGE, Quantity, assume
+
+
+def _any_kind(role: str) -> Any:
+    """A field that takes any kind of part of a role, told apart by `kind`."""
+    classes = tuple(kinds(role).values())
+    return Annotated[Union[classes], Field(discriminator="kind")] if len(classes) > 1 else classes[0]  # noqa: UP007
+
+
+def _with_kind(value: Any, info: ValidationInfo) -> Any:
+    """A switch stage is of the kind of the transistor that it names."""
+    if isinstance(value, dict) and "kind" not in value:
+        part = value.get("part")
+        if isinstance(part, str) and info.context and "kind_of" in info.context:
+            return {"kind": info.context["kind_of"](part), **value}
+        if isinstance(part, dict) and "kind" in part:
+            return {"kind": part["kind"], **value}
+    return value
+
+
+AnyClamp = _any_kind("clamp")
+AnySwitch = _any_kind("switch")
+AnyComponent = _any_kind("component")
+
+
+class Chain(Record):
+    """The chain of registers and how the controller writes it."""
+
+    register_: named_part(Register) = Field(alias="register")  # type: ignore[valid-type]
+    count: Annotated[int, Field(ge=1, le=64)]
+    clock: Annotated[Quantity, FREQUENCY]
+    bit_order: Literal["msb", "lsb"] = Field("msb", description="which bit of each byte is sent first")
+    first_out: Literal["far", "near"] = Field("far", description="whose byte is sent first: of the farthest or the nearest register")
+    active: Literal["high", "low"] = Field("high", description="output level by which the firmware means on")
+    latch_time: Annotated[Quantity, TIME] = assume("500 ns", TIME, "from the last clock edge to the latch edge, a pin toggled by firmware, from memory")
+
+    @property
+    def outputs(self) -> int:
+        """Outputs of the whole chain."""
+        return int(self.count * self.register_.outputs)
+
+
+class ChannelRange(Record):
+    """Channels that are built alike."""
+
+    coil: named_part(Coil)  # type: ignore[valid-type]
+    switch: Annotated[AnySwitch, BeforeValidator(_with_kind)]
+    clamp: AnyClamp
+    outputs: str | None = Field(None, description="register outputs that the channels are wired to, in order; the channel numbers if absent")
+    bits: str | None = Field(None, description="bits of the firmware's image that mean the channels, in order; the outputs if absent")
+    label: Name = Field("channel {n}", description="name for reports; {n} is the channel's number")
+    numbers: str | None = Field(None, description="numbers for {n}, in order; the channel numbers if absent")
+
+
+class BrownOut(Record):
+    """Below this voltage of the coil rail, for longer than this, the board no longer works."""
+
+    voltage: Annotated[Quantity, VOLTAGE]
+    lasting: Annotated[Quantity, TIME]
+
+
+class Exclusive(Record):
+    """Channels of which only so many may be on at once."""
+
+    channels: str
+    most: Annotated[int, Field(ge=1)] = 1
+    reason: Name | None = None
+
+
+class Limits(Record):
+    """Limits of the board as a whole."""
+
+    most_on: Annotated[int, Field(ge=1)] | None = None
+    brown_out: BrownOut | None = None
+    exclusive: tuple[Exclusive, ...] = ()
+    guard_band: Annotated[Quantity, SHARE] = assume("10 %", SHARE, "guard band for the verdict tight, common practice")
+
+
+class Deratings(Record):
+    """The share of each rating that may be used, and why."""
+
+    voltage: Annotated[Quantity, SHARE] | None = None
+    current: Annotated[Quantity, SHARE] | None = None
+    power: Annotated[Quantity, SHARE] | None = None
+    energy: Annotated[Quantity, SHARE] | None = None
+    reason: Name = "the user's own"
+
+
+class BoardFile(Record):
+    """A board: supply, cable, bulk capacitor, logic rail, chain, coils, channels, limits."""
+
+    name: Name | None = None
+    ambient: Annotated[Quantity, TEMPERATURE] | None = None
+    supply: Supply
+    cable: Cable
+    bulk: Bulk
+    logic: Logic
+    chain: Chain
+    coils: dict[Name, Coil] = Field(default_factory=dict)
+    parts: dict[Name, AnyComponent] = Field(default_factory=dict)
+    channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]
+    limits: Limits = Limits()
+    derating: Deratings = Deratings()
+
+
+def component_class(kind: str) -> type[Part] | None:
+    """The class of records of a kind that stand in the library, or under [parts] and [coils]."""
+    for role in ("component", "register", "coil"):
+        if kind in kinds(role):
+            return kinds(role)[kind]
+    return None

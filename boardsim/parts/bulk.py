@@ -1,0 +1,62 @@
+"""The bulk capacitor on the coil rail."""
+
+from __future__ import annotations
+
+from typing import Annotated, ClassVar, Literal
+
+from boardsim.parts.base import (
+    GROUND, Capacitor, Corner, Inductor, Limit, Part, PeakRule, Port, Probe, Resistor, Stamp, current, listed, plus,
+    scaled, voltage,
+)  # fmt: skip
+from boardsim.quantities import CAPACITANCE, INDUCTANCE, RESISTANCE, VOLTAGE, Quantity, assume
+
+_MIN_ESR = 1e-4  # [ohm], keeps the branch resistive where 0 ohm was given
+
+
+class Bulk(Part):
+    """Capacitance with equivalent series resistance and inductance.
+
+    Notes
+    -----
+    The series inductance has a loss resistance across it: above some MHz the windings and plates are lossy, and
+    without it the rail would ring against the switches' output capacitances for as long as no real rail does.
+    """
+
+    role: ClassVar[str] = "bulk"
+    kind: Literal["bulk"] = "bulk"
+    capacitance: Annotated[Quantity, CAPACITANCE]
+    esr: Annotated[Quantity, RESISTANCE]
+    esl: Annotated[Quantity, INDUCTANCE] = assume("20 nH", INDUCTANCE, "radial electrolytic capacitor, from memory")
+    esl_loss: Annotated[Quantity, RESISTANCE] = assume(
+        "1 ohm", RESISTANCE, "damping of the capacitor's inductance above some MHz, from memory"
+    )
+    rated: Annotated[Quantity, VOLTAGE] | None = None
+
+    def stamp(self, rail: str, corner: Corner) -> Stamp:
+        """The capacitor from node `rail` to ground."""
+        c = corner.take(self.capacitance, "bulk")
+        esr = max(self.esr.typ, _MIN_ESR)
+        coil = Inductor("bulk_esl", "bulk_mid", GROUND, self.esl.typ)
+        through = plus(current(coil), scaled(1 / self.esl_loss.typ, voltage("bulk_mid")))
+        return Stamp(
+            elements=(
+                Capacitor("bulk", rail, "bulk_top", c),
+                Resistor("bulk_esr", "bulk_top", "bulk_mid", esr),
+                coil,
+                Resistor("bulk_loss", "bulk_mid", GROUND, self.esl_loss.typ),
+            ),
+            probes=(
+                Probe("v_rail", voltage(rail), "V"),
+                Probe("v_bulk_c", voltage(rail, "bulk_top"), "V"),
+                Probe("v_bulk_port", voltage(rail, "bulk_mid"), "V"),
+                Probe("i_bulk", through, "A"),
+            ),
+            ports=(Port("bulk capacitor", (("v_bulk_port", "i_bulk"),), store=("v_bulk_c", c)),),
+            rules=(
+                PeakRule(
+                    "overvoltage", "v_rail", Limit.of(self.rated, "rated voltage", "V", "voltage"), "destroy",
+                    "voltage across the bulk capacitor", "choose a higher rated voltage, or let the clamps return less to the rail",
+                ),
+            ),
+            assumptions=listed("bulk capacitor", series_inductance=self.esl, loss_across_series_inductance=self.esl_loss),
+        )  # fmt: skip

@@ -1,0 +1,91 @@
+"""A coil of fixed inductance: winding, inductance, core loss, pull-in and release current."""
+
+from __future__ import annotations
+
+from typing import Annotated, ClassVar, Literal
+
+from boardsim.parts.base import (
+    Corner, Inductor, Limit, Part, Port, Probe, PullInRule, ReleaseRule, Resistor, Stamp, Surroundings, current, listed,
+    plus, scaled, voltage,
+)  # fmt: skip
+from boardsim.parts.copper import resistance_at
+from boardsim.quantities import (
+    CURRENT, INDUCTANCE, RESISTANCE, TEMPERATURE, TEMPERATURE_RISE, Quantity, assume, computed, in_units,
+)  # fmt: skip
+
+_CORE_LOSS_FACTOR = 200
+
+
+class Coil(Part):
+    """A solenoid, valve, relay or selector coil.
+
+    Notes
+    -----
+    Winding resistance in series with (inductance parallel to a core-loss resistance). Resistance follows the
+    winding's temperature as copper does. Ignores saturation and the plunger's motion.
+    """
+
+    role: ClassVar[str] = "coil"
+    kind: Literal["coil"] = "coil"
+    resistance: Annotated[Quantity, RESISTANCE]
+    at: Annotated[Quantity, TEMPERATURE] = assume("20 degC", TEMPERATURE, "coil data are given at 20 degC, common practice")
+    inductance: Annotated[Quantity, INDUCTANCE]
+    core_loss: Annotated[Quantity, RESISTANCE] | None = None
+    pull_in: Annotated[Quantity, CURRENT] | None = None
+    release: Annotated[Quantity, CURRENT] | None = None
+    rise: Annotated[Quantity, TEMPERATURE_RISE] = assume(
+        "0 K", TEMPERATURE_RISE, "no temperature rise of the winding given: hot means the highest ambient only"
+    )
+
+    def winding(self, corner: Corner, around: Surroundings | None) -> float:
+        """Winding resistance in a corner. [ohm]"""
+        r = corner.take(self.resistance, "coil_resistance")
+        if around is None or corner.winding == "reference":
+            return r
+        t = around.ambient_low if corner.winding == "cold" else around.ambient_high + self.rise.typ
+        return resistance_at(r, self.at.typ, t)
+
+    @property
+    def loss(self) -> Quantity:
+        """Core-loss resistance across the inductance; assumed where it was not given. [ohm]"""
+        return self.core_loss or assume(
+            f"{_CORE_LOSS_FACTOR * self.resistance.typ:.6g} ohm", RESISTANCE,
+            f"{_CORE_LOSS_FACTOR} times the winding resistance, from memory; solid iron loses more",
+        )  # fmt: skip
+
+    def stamp(self, name: str, label: str, a: str, b: str, corner: Corner, around: Surroundings | None) -> Stamp:
+        """The coil from node `a` (rail) to node `b` (switch)."""
+        mid = f"{name}_w"
+        henries = corner.take(self.inductance, "inductance")
+        coil = Inductor(f"{name}_l", mid, b, henries)
+        core = self.loss.typ
+        through = plus(current(coil), scaled(1 / core, voltage(mid, b)))
+        assumed = listed(
+            f"coil {label}", temperature_of_the_given_resistance=self.at, core_loss_resistance=self.loss,
+            temperature_rise_of_the_winding=self.rise,
+        )  # fmt: skip
+        return Stamp(
+            elements=(
+                Resistor(f"{name}_r", a, mid, self.winding(corner, around)),
+                coil,
+                Resistor(f"{name}_core", mid, b, core),
+            ),
+            probes=(
+                Probe("v_coil", voltage(a, b), "V"),
+                Probe("i_coil", through, "A"),
+                Probe("i_l", current(coil), "A"),
+            ),
+            ports=(Port("coil", (("v_coil", "i_coil"),), store=("i_l", henries)),),
+            rules=(
+                PullInRule("pull-in", "i_coil", Limit.of(self.pull_in, "pull-in current", "A", None, self.pull_in and self.pull_in.max)),
+                ReleaseRule("overlap", "i_coil", Limit.of(self.release, "release current", "A", None, self.release and self.release.min)),
+            ),
+            assumptions=assumed,
+        )  # fmt: skip
+
+    def pull_in_voltage(self, corner: Corner, around: Surroundings | None) -> Quantity | None:
+        """Steady voltage across the coil that just gives the pull-in current. [V]"""
+        if self.pull_in is None:
+            return None
+        r = self.winding(corner, around)
+        return computed(self.pull_in.max * r, "V", f"pull-in current times {in_units(r, 'ohm')}")

@@ -1,0 +1,118 @@
+"""A rectifier diode, from its forward voltage at one or more currents."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from typing import Annotated, ClassVar, Literal
+
+from pydantic import Field
+
+from boardsim.errors import QuantityError
+from boardsim.parts.base import (
+    Junction, Limit, MeanRule, Model, Part, PeakRule, Port, Probe, Record, Rule, Signal, Stamp, scaled, voltage,
+)  # fmt: skip
+from boardsim.quantities import CAPACITANCE, CURRENT, TIME, VOLTAGE, Quantity, assume
+
+THERMAL_VOLTAGE = 8.617333e-5 * 298.15  # [V] k T / q at 25 degC, CODATA
+EMISSION = 1.75  # silicon rectifier in its working range, from memory
+
+
+class ForwardPoint(Record):
+    """One typical point of the forward characteristic."""
+
+    voltage: Annotated[Quantity, VOLTAGE]
+    current: Annotated[Quantity, CURRENT]
+
+
+def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, float, float]:
+    """Saturation current, emission coefficient and series resistance of a diode from forward points.
+
+    Parameters
+    ----------
+    points : sequence of (voltage, current)
+        Typical forward points, currents rising. [V], [A]
+
+    Returns
+    -------
+    tuple of float
+        I_S [A], N [1], R_S [ohm].
+
+    Raises
+    ------
+    QuantityError
+        If currents or voltages do not rise.
+
+    Notes
+    -----
+    V = N V_T ln(I / I_S) + R_S I at 25 degC. One point: N is taken as 1.75 and R_S as 0. Two points: N as 1.75,
+    R_S from the difference; where that would be negative, R_S = 0 and N from the difference. More points: the
+    first and the last are used that way.
+
+    Examples
+    --------
+    >>> i_s, n, r_s = forward_parameters([(0.7, 0.01), (0.95, 1.0)])
+    >>> round(n * THERMAL_VOLTAGE * math.log(1.0 / i_s) + r_s * 1.0, 6)
+    0.95
+    """
+    v1, i1 = points[0]
+    v2, i2 = points[-1]
+    n, r_s = EMISSION, 0.0
+    if len(points) > 1:
+        if not (i2 > i1 and v2 > v1):
+            raise QuantityError("forward points must rise in voltage and current")
+        r_s = (v2 - v1 - n * THERMAL_VOLTAGE * math.log(i2 / i1)) / (i2 - i1)
+        if r_s < 0:
+            r_s, n = 0.0, (v2 - v1) / (THERMAL_VOLTAGE * math.log(i2 / i1))
+    i_s = i2 / math.exp((v2 - r_s * i2) / (n * THERMAL_VOLTAGE))
+    return i_s, n, r_s
+
+
+class Diode(Part):
+    """A diode with its ratings.
+
+    Notes
+    -----
+    ngspice's junction diode at 25 degC without breakdown: a reverse voltage above the rating is reported, not
+    clipped. Ignores the rise of the forward voltage at turn-on.
+    """
+
+    role: ClassVar[str] = "component"
+    kind: Literal["diode"] = "diode"
+    forward: Annotated[tuple[ForwardPoint, ...], Field(min_length=1)]
+    reverse_voltage: Annotated[Quantity, VOLTAGE] | None = None
+    average_current: Annotated[Quantity, CURRENT] | None = None
+    repetitive_current: Annotated[Quantity, CURRENT] | None = None
+    capacitance: Annotated[Quantity, CAPACITANCE] = assume("50 pF", CAPACITANCE, "rectifier of a few amperes, from memory")
+    recovery: Annotated[Quantity, TIME] = assume("100 ns", TIME, "fast rectifier, from memory")
+
+    def stamp(self, name: str, label: str, anode: str, cathode: str, through: Signal) -> Stamp:
+        """The diode between two nodes; `through` is the current from anode to cathode."""
+        i_s, n, r_s = forward_parameters([(p.voltage.typ, p.current.typ) for p in self.forward])
+        model = Model(
+            f"{name}_m", "D",
+            {"IS": i_s, "N": n, "RS": r_s, "CJO": self.capacitance.typ, "TT": self.recovery.typ, "TNOM": 25.0},
+        )  # fmt: skip
+        v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
+        peak_limit = Limit.of(self.repetitive_current, "repetitive peak current", "A", "current")
+        if self.repetitive_current is None:
+            peak_limit = Limit.of(self.average_current, "average current (no repetitive peak rating given)", "A", "current")
+        rules: tuple[Rule, ...] = (
+            PeakRule("overvoltage", v_r, Limit.of(self.reverse_voltage, "repetitive reverse voltage", "V", "voltage"), "destroy",
+                     f"reverse voltage of the {label}", "choose a higher reverse voltage"),
+            PeakRule("overcurrent", i, peak_limit, "destroy", f"peak current of the {label}", "choose a larger diode"),
+            MeanRule("overcurrent", (i,), Limit.of(self.average_current, "average current", "A", "current"), "destroy",
+                     f"average current of the {label}", "choose a larger diode, or fire less often"),
+        )  # fmt: skip
+        v_max = self.reverse_voltage.typ if self.reverse_voltage else 100.0
+        charge = self.capacitance.typ * v_max + self.recovery.typ * (self.average_current.typ if self.average_current else 1.0)
+        return Stamp(
+            elements=(Junction(name, anode, cathode, model),),
+            probes=(
+                Probe(v, voltage(anode, cathode), "V"),
+                Probe(v_r, scaled(-1, voltage(anode, cathode)), "V"),
+                Probe(i, through, "A"),
+            ),
+            ports=(Port(label, ((v, i),), holds=charge * v_max),),
+            rules=rules,
+        )

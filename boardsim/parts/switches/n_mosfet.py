@@ -1,0 +1,181 @@
+"""A low-side logic-level N-MOSFET, from its datasheet's typical figures, and its gate network."""
+
+from __future__ import annotations
+
+import math
+from typing import Annotated, ClassVar, Literal
+
+from pydantic import Field, model_validator
+
+from boardsim.errors import QuantityError
+from boardsim.parts.base import (
+    GROUND, Ammeter, BreakdownRule, Corner, Limit, MeanRule, Model, Part, PeakRule, Port, PowerMosfet, Probe, Record,
+    Resistor, Stamp, current, listed, named_part, plus, scaled, voltage,
+)  # fmt: skip
+from boardsim.quantities import CAPACITANCE, CHARGE, CURRENT, ENERGY, RESISTANCE, VOLTAGE, Quantity, assume
+
+_BODY_DIODE_POTENTIAL = 0.75  # [V], grading exponent 1/2: an abrupt junction, from memory
+_BREAKDOWN_CURRENT = 250e-6  # [A], at which V_(BR)DSS is specified, common practice
+_GATE_DRAIN_SLOPE = 0.5  # [1/V], how sharply the gate-drain capacitance falls near V_GD = 0, from memory
+
+
+class OnResistance(Record):
+    """A typical R_DS(on) and the gate voltage it is given for."""
+
+    value: Annotated[Quantity, RESISTANCE]
+    gate: Annotated[Quantity, VOLTAGE]
+
+
+class NMosfet(Part):
+    """An enhancement N-channel power MOSFET with its ratings. Typical figures shape the model; ratings judge it."""
+
+    role: ClassVar[str] = "component"
+    kind: Literal["n-mosfet"] = "n-mosfet"
+    breakdown: Annotated[Quantity, VOLTAGE]
+    gate_rating: Annotated[Quantity, VOLTAGE] | None = None
+    continuous_current: Annotated[Quantity, CURRENT] | None = None
+    pulse_current: Annotated[Quantity, CURRENT] | None = None
+    avalanche_current: Annotated[Quantity, CURRENT] | None = None
+    avalanche_energy: Annotated[Quantity, ENERGY] | None = None
+    avalanche_repetitive: Annotated[Quantity, ENERGY] | None = None
+    threshold: Annotated[Quantity, VOLTAGE]
+    threshold_current: Annotated[Quantity, CURRENT] = assume("250 uA", CURRENT, "test current of most datasheets, common practice")
+    on_resistance: Annotated[tuple[OnResistance, ...], Field(min_length=1)]
+    input_capacitance: Annotated[Quantity, CAPACITANCE]
+    output_capacitance: Annotated[Quantity, CAPACITANCE]
+    reverse_capacitance: Annotated[Quantity, CAPACITANCE]
+    capacitance_voltage: Annotated[Quantity, VOLTAGE] = assume("25 V", VOLTAGE, "test voltage of most datasheets, common practice")
+    gate_drain_charge: Annotated[Quantity, CHARGE]
+    charge_voltage: Annotated[Quantity, VOLTAGE]
+    gate_resistance: Annotated[Quantity, RESISTANCE] = assume("2 ohm", RESISTANCE, "internal gate resistance, from memory")
+
+    @model_validator(mode="after")
+    def _coherent(self) -> NMosfet:
+        self.parameters(self.breakdown.typ)
+        return self
+
+    def parameters(self, breakdown: float) -> dict[str, float]:
+        """Parameters of ngspice's VDMOS model from the datasheet's typical figures.
+
+        Parameters
+        ----------
+        breakdown : float
+            Drain voltage at which the channel-less device conducts 250 uA. [V]
+
+        Returns
+        -------
+        dict
+            ngspice's names, SI units.
+
+        Raises
+        ------
+        QuantityError
+            If the figures contradict each other; names them.
+
+        Notes
+        -----
+        R_DS(on) = R_D + 1 / (K_P (V_GS - V_TO)) from two points, or from one with half of it as R_D; threshold from
+        V_GS(th) = V_TO + sqrt(2 I / K_P). Gate-drain capacitance between C_GDmin = C_rss and a C_GDmax for which
+        the charge from the test voltage to 0 is Q_gd. Output capacitance as an abrupt junction. 25 degC.
+
+        References
+        ----------
+        ngspice manual, VDMOS model (equations of the gate-drain capacitance and of the triode region).
+        """
+        points = sorted((p.gate.typ, p.value.typ) for p in self.on_resistance)
+        v_th, i_th = self.threshold.typ, self.threshold_current.typ
+        if points[0][0] <= v_th:
+            raise QuantityError(f"on_resistance at a gate voltage of {points[0][0]:.3g} V, below the threshold of {v_th:.3g} V")
+        v_to = v_th
+        for _ in range(20):  # V_TO and K_P depend weakly on each other
+            if len(points) == 1:
+                r_d, k_p = points[0][1] / 2, 2 / (points[0][1] * (points[0][0] - v_to))
+            else:
+                (v1, r1), (v2, r2) = points[0], points[-1]
+                k_p = (1 / (v1 - v_to) - 1 / (v2 - v_to)) / (r1 - r2) if r1 > r2 else math.inf
+                r_d = r1 - 1 / (k_p * (v1 - v_to))
+            if not (0 < k_p < math.inf) or r_d < 0:
+                raise QuantityError(
+                    "on_resistance at the gate voltages given and threshold contradict each other: the resistance must fall "
+                    "with gate voltage, and not faster than the channel alone; use the typical figures of one table"
+                )
+            v_to = v_th - math.sqrt(2 * i_th / k_p)
+        c_iss, c_oss, c_rss = (c.typ for c in (self.input_capacitance, self.output_capacitance, self.reverse_capacitance))
+        if not c_rss < min(c_iss, c_oss):
+            raise QuantityError("reverse_capacitance must be smaller than input_capacitance and output_capacitance")
+        v, a = self.charge_voltage.typ, _GATE_DRAIN_SLOPE
+        # C_GD(v) = s atan(a v) + C_max - s with s = (C_max - C_min) / (1 + pi/2), integrated over v = -V .. 0
+        area = v * math.atan(a * v) - math.log(1 + (a * v) ** 2) / (2 * a)
+        share = (area + v) / (1 + math.pi / 2)
+        c_max = (self.gate_drain_charge.typ - c_rss * share) / (v - share)
+        if c_max < c_rss:
+            raise QuantityError("gate_drain_charge is smaller than reverse_capacitance times charge_voltage")
+        junction = (c_oss - c_rss) * math.sqrt(1 + self.capacitance_voltage.typ / _BODY_DIODE_POTENTIAL)
+        return {
+            "VTO": v_to, "KP": k_p, "RD": r_d, "RS": 0.0, "RG": self.gate_resistance.typ, "RB": 0.005,
+            "CGS": c_iss - c_rss, "CGDMAX": c_max, "CGDMIN": c_rss, "A": a,
+            "CJO": junction, "VJ": _BODY_DIODE_POTENTIAL, "M": 0.5, "IS": 1e-12, "N": 1.1, "TT": 50e-9,
+            "BV": breakdown, "IBV": _BREAKDOWN_CURRENT, "TNOM": 25.0,
+        }  # fmt: skip
+
+
+class NMosfetStage(Part):
+    """The transistor with its gate resistor and pull-down; source at ground, drain at the coil."""
+
+    role: ClassVar[str] = "switch"
+    kind: Literal["n-mosfet"] = "n-mosfet"
+    part: named_part(NMosfet)  # type: ignore[valid-type]
+    gate: Annotated[Quantity, RESISTANCE]
+    pulldown: Annotated[Quantity, RESISTANCE] | None = None
+
+    active: ClassVar[Literal["high", "low"]] = "high"
+    """Output level that turns the coil on."""
+
+    @property
+    def tolerances(self) -> dict[str, Quantity]:
+        """What the corners vary in this stage."""
+        return {"breakdown": self.part.breakdown}
+
+    def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
+        """The stage between the register's node `pin` and the coil's node `drain`."""
+        part: NMosfet = self.part
+        bv = corner.take(part.breakdown, "breakdown")
+        parameters = part.parameters(bv)
+        gate, inside = f"{name}_g", f"{name}_di"
+        meter = Ammeter(f"{name}_d", drain, inside)
+        r_gate = max(self.gate.typ, 1e-2)
+        into_gate = scaled(1 / r_gate, voltage(pin, gate))
+        elements = [meter, PowerMosfet(name, inside, gate, GROUND, Model(f"{name}_m", "VDMOS", parameters))]
+        network = [Resistor(f"{name}_gate", pin, gate, r_gate)]
+        if self.pulldown is not None:
+            network.append(Resistor(f"{name}_pulldown", gate, GROUND, self.pulldown.typ))
+            into_gate = plus(into_gate, scaled(-1 / self.pulldown.typ, voltage(gate)))
+        peak = Limit.of(part.pulse_current, "pulsed drain current", "A", "current")
+        if part.pulse_current is None:
+            peak = Limit.of(part.continuous_current, "continuous drain current (no pulse rating given)", "A", "current")
+        holds = 0.5 * (parameters["CJO"] + parameters["CGDMAX"]) * bv**2 + 0.5 * (part.input_capacitance.typ + parameters["CGDMAX"]) * 20.0**2
+        return Stamp(
+            elements=(*elements, *network),
+            probes=(
+                Probe("v_ds", voltage(inside), "V"),
+                Probe("i_d", current(meter), "A"),
+                Probe("v_gs", voltage(gate), "V"),
+                Probe("i_g", into_gate, "A"),
+            ),
+            ports=(Port("switch", (("v_ds", "i_d"), ("v_gs", "i_g")), holds=holds),),
+            rules=(
+                BreakdownRule(
+                    "overvoltage", "v_ds", "i_d", bv,
+                    Limit.of(part.breakdown, "drain-source voltage", "V", "voltage", part.breakdown.min),
+                    Limit.of(part.avalanche_current, "avalanche current", "A", "current"),
+                    Limit.of(part.avalanche_energy, "single-pulse avalanche energy", "J", "energy"),
+                    Limit.of(part.avalanche_repetitive, "repetitive avalanche energy", "J", "energy"),
+                ),
+                PeakRule("overvoltage", "v_gs", Limit.of(part.gate_rating, "gate-source voltage", "V", "voltage"), "destroy",
+                         "gate-source voltage of the switch", "lower the logic rail, or choose a gate rating that stands it", magnitude=True),
+                PeakRule("overcurrent", "i_d", peak, "destroy", "peak current of the switch", "choose a larger switch"),
+                MeanRule("overcurrent", ("i_d",), Limit.of(part.continuous_current, "continuous drain current", "A", "current"),
+                         "destroy", "average current of the switch", "choose a larger switch, or fire less often"),
+            ),
+            assumptions=listed("switch", gate_resistance=part.gate_resistance, capacitance_voltage=part.capacitance_voltage),
+        )  # fmt: skip

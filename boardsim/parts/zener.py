@@ -1,0 +1,52 @@
+"""A Zener diode, from its voltage at the test current, its impedance and its ratings."""
+
+from __future__ import annotations
+
+from typing import Annotated, ClassVar, Literal
+
+from boardsim.parts.base import (
+    Corner, Junction, Limit, MeanRule, Model, Part, PeakRule, Port, Probe, Signal, Stamp, voltage,
+)  # fmt: skip
+from boardsim.parts.diode import THERMAL_VOLTAGE
+from boardsim.quantities import CAPACITANCE, CURRENT, POWER, RESISTANCE, VOLTAGE, Quantity, assume
+
+
+class Zener(Part):
+    """A Zener (or avalanche) diode used in breakdown.
+
+    Notes
+    -----
+    V = V_Z + Z (I - I_Z): ngspice's junction breakdown, an exponential of 26 mV per e-fold, in series with what
+    remains of Z at the test current. At 25 degC; the voltage's own temperature coefficient is ignored.
+    """
+
+    role: ClassVar[str] = "component"
+    kind: Literal["zener"] = "zener"
+    voltage: Annotated[Quantity, VOLTAGE]
+    test_current: Annotated[Quantity, CURRENT]
+    impedance: Annotated[Quantity, RESISTANCE]
+    power: Annotated[Quantity, POWER] | None = None
+    surge_current: Annotated[Quantity, CURRENT] | None = None
+    capacitance: Annotated[Quantity, CAPACITANCE] = assume("500 pF", CAPACITANCE, "Zener of some watts, from memory")
+
+    def stamp(self, name: str, label: str, positive: str, negative: str, through: Signal, corner: Corner) -> Stamp:
+        """The Zener with `positive` at its cathode; `through` is the current from positive to negative."""
+        i_z = self.test_current.typ
+        v_z = corner.take(self.voltage, "clamp_voltage")
+        r = max(self.impedance.typ - THERMAL_VOLTAGE / i_z, 1e-3)
+        model = Model(
+            f"{name}_m", "D",
+            {"IS": 1e-12, "N": 1.1, "RS": r, "BV": v_z - r * i_z, "IBV": i_z, "CJO": self.capacitance.typ, "TNOM": 25.0},
+        )  # fmt: skip
+        v, i = f"v_{label}", f"i_{label}"
+        return Stamp(
+            elements=(Junction(name, negative, positive, model),),
+            probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
+            ports=(Port(label, ((v, i),), holds=self.capacitance.typ * v_z**2),),
+            rules=(
+                PeakRule("overcurrent", i, Limit.of(self.surge_current, "peak current", "A", "current"), "destroy",
+                         f"peak current of the {label}", "choose a larger Zener or a transient suppressor"),
+                MeanRule("overpower", (v, i), Limit.of(self.power, "power", "W", "power"), "destroy",
+                         f"average power of the {label}", "choose a larger Zener, or fire less often"),
+            ),
+        )  # fmt: skip

@@ -1,0 +1,354 @@
+"""Numbers with units: "12 mH +/- 10 %" <-> SI values with a tolerance band and an origin.
+
+pint knows the units; the grammar around it is thin: a number, a unit or an attached scale letter where the
+field fixes the unit ("4k7", "470u", IEC 60062), and a tolerance ("+/- 10 %", "-20/+50 %") or a band ("5 to 45 degC").
+"""
+
+from __future__ import annotations
+
+import functools
+import math
+import re
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Any, Literal
+
+from boardsim.errors import QuantityError
+
+if TYPE_CHECKING:
+    from pydantic import GetCoreSchemaHandler, GetJsonSchemaHandler
+    from pydantic_core import core_schema
+
+Bound = Literal["min", "typ", "max"]
+
+
+@dataclass(frozen=True)
+class Origin:
+    """Where a number comes from, and in whose words."""
+
+    kind: Literal["given", "library", "computed", "assumed"]
+    source: str = ""
+
+    def __str__(self) -> str:
+        return f"{self.kind}: {self.source}" if self.source else self.kind
+
+
+GIVEN = Origin("given", "board file")
+
+
+@dataclass(frozen=True)
+class Quantity:
+    """A value with its tolerance band, in the SI unit `unit`; `min <= typ <= max`."""
+
+    typ: float
+    min: float
+    max: float
+    unit: str
+    origin: Origin = GIVEN
+
+    @property
+    def toleranced(self) -> bool:
+        """Whether a tolerance or a band was given."""
+        return self.min != self.max
+
+    def at(self, bound: Bound) -> float:
+        """The value at one end of the band, or in its middle. [unit]"""
+        return float(getattr(self, bound))
+
+    def assumed(self) -> bool:
+        """Whether the tool had to supply this number."""
+        return self.origin.kind == "assumed"
+
+    def __str__(self) -> str:
+        text = in_units(self.typ, self.unit)
+        if not self.toleranced:
+            return text
+        return f"{text} ({in_units(self.min, self.unit)} to {in_units(self.max, self.unit)})"
+
+
+@dataclass(frozen=True)
+class Dimension:
+    """What a field measures: its unit, which letters suffice, and which values can be meant at all.
+
+    The bounds are far outside what boards contain; they catch slips such as "12 MH".
+    """
+
+    name: str
+    unit: str
+    example: str
+    low: float = 0.0
+    high: float = math.inf
+    zero: bool = False
+    scale_letters: bool = True
+
+    @property
+    def named(self) -> str:
+        """The name with its article."""
+        return f"{'an' if self.name[0] in 'aeiou' else 'a'} {self.name}"
+
+    def check(self, value: float, text: str) -> None:
+        """Raise QuantityError if a value is outside what the field can mean."""
+        if value < 0 and self.low >= 0:
+            raise QuantityError(f"{text!r} is negative; {self.named} must be {'0 or more' if self.zero else 'positive'}")
+        if value == 0 and self.zero:
+            return
+        if not (self.low <= value <= self.high) or (value == 0 and self.low >= 0):
+            raise QuantityError(
+                f"{text!r} is {in_units(value, self.unit)}; {self.named} is expected between "
+                f"{in_units(self.low, self.unit)} and {in_units(self.high, self.unit)}"
+            )
+
+    # pydantic: a field of this dimension is written as a string and read as a Quantity.
+    def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> core_schema.CoreSchema:
+        from pydantic_core import core_schema
+
+        def read(value: Any, info: core_schema.ValidationInfo) -> Quantity:
+            origin = GIVEN
+            if info.context and "origin" in info.context:
+                origin = info.context["origin"](info.field_name)
+            return read_quantity(value, self, origin)
+
+        return core_schema.with_info_plain_validator_function(
+            read, serialization=core_schema.plain_serializer_function_ser_schema(str)
+        )
+
+    def __get_pydantic_json_schema__(self, schema: core_schema.CoreSchema, handler: GetJsonSchemaHandler) -> dict[str, Any]:
+        return {"type": "string", "examples": [self.example], "description": f"{self.name} in {self.unit}, such as {self.example!r}"}
+
+
+RESISTANCE = Dimension("resistance", "ohm", "16 ohm +/- 10 %", 1e-6, 1e12, zero=True)
+INDUCTANCE = Dimension("inductance", "H", "12 mH +/- 20 %", 1e-10, 1e3)
+CAPACITANCE = Dimension("capacitance", "F", "4700 uF -20/+50 %", 1e-14, 1e2)
+VOLTAGE = Dimension("voltage", "V", "24 V +/- 5 %", 1e-3, 1e4)
+CURRENT = Dimension("current", "A", "0.8 A", 1e-9, 1e4)
+POWER = Dimension("power", "W", "5 W", 1e-6, 1e5)
+ENERGY = Dimension("energy", "J", "40 mJ", 1e-9, 1e4)
+CHARGE = Dimension("charge", "C", "10 nC", 1e-12, 1.0)
+TIME = Dimension("time", "s", "10 ms", 1e-12, 1e6, zero=True)
+FREQUENCY = Dimension("frequency", "Hz", "4 MHz", 1e-3, 1e9)
+LENGTH = Dimension("length", "m", "1.8 m", 1e-6, 1e4)
+AREA = Dimension("area", "m^2", "2.5 mm2", 1e-10, 1e-2, scale_letters=False)
+TEMPERATURE = Dimension("temperature", "K", "25 degC", 200.0, 800.0, scale_letters=False)
+TEMPERATURE_RISE = Dimension("temperature rise", "K", "40 K", 1e-3, 600.0, zero=True, scale_letters=False)
+SHARE = Dimension("share", "1", "80 %", 1e-6, 1.0, scale_letters=False)
+
+# IEC 60062 writes the scale letter in place of the decimal point; R stands for x1.
+_SCALE = {
+    "f": 1e-15, "p": 1e-12, "n": 1e-9, "u": 1e-6, "µ": 1e-6, "μ": 1e-6, "m": 1e-3,
+    "R": 1.0, "k": 1e3, "K": 1e3, "M": 1e6, "G": 1e9,
+}  # fmt: skip
+_NUMBER = r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?"
+_UNIT = r"[A-Za-zµμΩ°%]+[23]?(?:/[A-Za-zµμΩ°]+[23]?)?"
+_VALUE = re.compile(rf"({_NUMBER})\s*({_UNIT})?")
+_RKM = re.compile(r"([+-]?\d+)([fpnuµμmRkKMG])(\d+)")
+_SYMMETRIC = re.compile(rf"\s*(?:\+/-|\+-|±)\s*({_NUMBER})\s*({_UNIT})")
+_LOWER_UPPER = re.compile(rf"\s*-\s*({_NUMBER})\s*({_UNIT})?\s*/\s*\+\s*({_NUMBER})\s*({_UNIT})")
+_BAND = re.compile(rf"\s*({_NUMBER})\s*({_UNIT})?\s+to\s+({_NUMBER})\s*({_UNIT})\s*")
+_PINT_NAMES = {"Ω": "ohm", "°C": "degC", "%": "percent"}
+_SI_NAMES = {"1": "", "m^2": "m**2"}
+
+
+@functools.cache
+def _registry() -> Any:
+    import pint  # 0.3 s: only where a number is read
+
+    return pint.UnitRegistry(cache_folder=None)
+
+
+@functools.cache
+def _factor(unit: str, dimension: Dimension) -> tuple[float, float] | None:
+    """Factor and offset to the dimension's SI unit; None where the unit measures something else.
+
+    Raises
+    ------
+    QuantityError
+        If the unit is not known at all.
+    """
+    import pint
+
+    registry = _registry()
+    name = unit
+    for ours, theirs in _PINT_NAMES.items():
+        name = name.replace(ours, theirs)
+    name = re.sub(r"(?<=[A-Za-zµμ])([23])", r"**\1", name)
+    if dimension is TEMPERATURE_RISE and name != "K":
+        return None
+    try:
+        parsed = registry.parse_units(name)
+        target = registry.parse_units(_SI_NAMES.get(dimension.unit, dimension.unit) or "dimensionless")
+        if parsed.dimensionality != target.dimensionality:
+            return None
+        zero = registry.Quantity(0.0, parsed).to(target).magnitude
+        one = registry.Quantity(1.0, parsed).to(target).magnitude
+    except (pint.errors.PintError, AttributeError, TypeError) as err:
+        raise QuantityError(f"unit {unit!r} is not known; write {dimension.named} such as {dimension.example!r}") from err
+    return float(one - zero), float(zero)
+
+
+def _value_in(number: str, unit: str, dimension: Dimension, text: str, attached: bool) -> float:
+    if attached and dimension.scale_letters and unit in _SCALE and unit != dimension.unit:
+        return float(number) * _SCALE[unit]
+    scale = _factor(unit, dimension)
+    if scale is None:
+        raise QuantityError(
+            f"{text!r} is in {unit!r}, which does not measure {dimension.named}; write it such as {dimension.example!r}"
+        )
+    return float(number) * scale[0] + scale[1]
+
+
+def parse(text: str, dimension: Dimension, origin: Origin = GIVEN) -> Quantity:
+    """Read a number with its unit and tolerance.
+
+    Parameters
+    ----------
+    text : str
+        Such as "12 mH +/- 10 %", "4700 uF -20/+50 %", "5 to 45 degC", "4k7".
+    dimension : Dimension
+        What the number must measure.
+    origin : Origin
+        Where it comes from.
+
+    Returns
+    -------
+    Quantity
+        In the SI unit of the dimension.
+
+    Raises
+    ------
+    QuantityError
+        If there is no unit, the unit does not fit, or the value is outside the dimension's range.
+
+    Examples
+    --------
+    >>> parse("4700 uF -20/+50 %", CAPACITANCE).max
+    0.00705
+    >>> parse("4k7", RESISTANCE).typ
+    4700.0
+    """
+    band = _BAND.fullmatch(text)
+    if band:
+        low = _value_in(band[1], band[2] or band[4], dimension, text, attached=False)
+        high = _value_in(band[3], band[4], dimension, text, attached=False)
+        if low > high:
+            raise QuantityError(f"{text!r} runs downwards; write the lower end first")
+        return _checked(Quantity((low + high) / 2, low, high, dimension.unit, origin), dimension, text)
+
+    body = text.strip()
+    rkm = _RKM.match(body)
+    if rkm and dimension.scale_letters:
+        typ = float(f"{rkm[1]}.{rkm[3]}") * _SCALE[rkm[2]]
+        rest = body[rkm.end() :]
+        unit = ""
+    else:
+        value = _VALUE.match(body)
+        if not value:
+            raise QuantityError(f"{text!r} is not a number with a unit; write it such as {dimension.example!r}")
+        if not value[2]:
+            raise QuantityError(f"{text!r} has no unit; write {dimension.named} such as {dimension.example!r}")
+        unit = value[2]
+        attached = value[0] == value[1] + unit
+        typ = _value_in(value[1], unit, dimension, text, attached)
+        rest = body[value.end() :]
+    low, high = _tolerance(rest, typ, unit, dimension, text)
+    return _checked(Quantity(typ, low, high, dimension.unit, origin), dimension, text)
+
+
+def _tolerance(rest: str, typ: float, unit: str, dimension: Dimension, text: str) -> tuple[float, float]:
+    def span(number: str, of: str) -> float:
+        if of == "%":
+            return abs(typ) * float(number) / 100
+        scale = _factor(of, dimension)
+        if scale is None:
+            raise QuantityError(f"the tolerance in {text!r} is in {of!r}; use % or the unit of the value")
+        return float(number) * scale[0]
+
+    if not rest.strip():
+        return typ, typ
+    if dimension is TEMPERATURE and "%" in rest:
+        raise QuantityError(f"{text!r}: a temperature has no tolerance in %; write a band such as '5 to 45 degC'")
+    if match := _SYMMETRIC.fullmatch(rest):
+        half = span(match[1], match[2])
+        return typ - half, typ + half
+    if match := _LOWER_UPPER.fullmatch(rest):
+        return typ - span(match[1], match[2] or match[4]), typ + span(match[3], match[4])
+    raise QuantityError(
+        f"{rest.strip()!r} in {text!r} is not a tolerance; write '+/- 10 %' or '-20/+50 %'"
+        + (f" after the unit {unit!r}" if unit else "")
+    )
+
+
+def _checked(quantity: Quantity, dimension: Dimension, text: str) -> Quantity:
+    dimension.check(quantity.typ, text)
+    if quantity.min < 0 <= dimension.low:
+        raise QuantityError(f"{text!r}: the tolerance reaches below zero")
+    return quantity
+
+
+def read_quantity(value: Any, dimension: Dimension, origin: Origin = GIVEN) -> Quantity:
+    """Read what a file holds for a field of this dimension; only strings (and finished quantities) will do.
+
+    Raises
+    ------
+    QuantityError
+        If it is a bare number, or no text at all.
+    """
+    if isinstance(value, Quantity):
+        return value
+    if isinstance(value, bool) or not isinstance(value, str | int | float):
+        raise QuantityError(f"expected {dimension.named} in quotes, such as {dimension.example!r}")
+    if not isinstance(value, str):
+        raise QuantityError(f"{value} has no unit; write {dimension.named} in quotes, such as {dimension.example!r}")
+    return parse(value, dimension, origin)
+
+
+def assume(text: str, dimension: Dimension, why: str) -> Quantity:
+    """Supply a number that the files did not give; it is listed as an assumption, with the reason."""
+    return parse(text, dimension, Origin("assumed", why))
+
+
+def computed(value: float, unit: str, how: str) -> Quantity:
+    """A number that follows from other given numbers. [unit]"""
+    return Quantity(value, value, value, unit, Origin("computed", how))
+
+
+def with_origin(quantity: Quantity, origin: Origin) -> Quantity:
+    """The same number under another origin."""
+    return replace(quantity, origin=origin)
+
+
+_PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
+_UNPREFIXED = {"1", "%", "m^2"}
+_LARGEST = {"K": 0, "m": 0, "F": -6}  # nobody writes kilokelvin, or 4.7 mF on a capacitor
+
+
+def in_units(value: float, unit: str, digits: int = 3) -> str:
+    """Write an SI value for people, with an engineering prefix.
+
+    Parameters
+    ----------
+    value : float
+        In SI units. [unit]
+    unit : str
+        The SI unit; "K" stays kelvin.
+    digits : int
+        Significant digits.
+
+    Examples
+    --------
+    >>> in_units(0.01238, "s")
+    '12.4 ms'
+    >>> in_units(17.94, "V")
+    '17.9 V'
+    """
+    if unit == "1":
+        return f"{value:.{digits}g}"
+    if not math.isfinite(value):
+        return f"{value} {unit}"
+    if unit in _UNPREFIXED or value == 0:
+        return f"{value:.{digits}g} {unit}"
+    rounded = float(f"{value:.{digits - 1}e}")
+    exponent = 3 * math.floor(math.log10(abs(rounded)) / 3)
+    exponent = max(min(_PREFIXES), min(max(_PREFIXES), exponent))
+    exponent = min(exponent, _LARGEST.get(unit, exponent))
+    scaled = rounded / 10**exponent
+    decimals = max(0, digits - 1 - math.floor(math.log10(abs(scaled)))) if scaled else 0
+    return f"{scaled:.{decimals}f} {_PREFIXES[exponent]}{unit}"

@@ -1,0 +1,1 @@
+"""Terminal, picture, JSON: they render findings and waveforms, they compute nothing."""

@@ -1,0 +1,1 @@
+"""Waveforms -> readings -> findings."""

@@ -1,0 +1,207 @@
+"""What a run comes to: findings, the audit, and what the pictures are drawn from. Values only."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from boardsim.errors import EXIT_LIMIT_BROKEN, EXIT_PASS, EXIT_UNPROVEN
+from boardsim.parts.base import Assumption, Consequence
+
+Verdict = Literal["pass", "tight", "fail", "unproven", "limit-missing"]
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Finding:
+    """A reading against a limit.
+
+    Attributes
+    ----------
+    check : str
+        What was checked, such as "overvoltage", "rail-sag".
+    quantity, part : str
+        What was read, and of which part, such as "peak current of the clamp diode", "fast-2a".
+    channel : int or None
+        The channel; None for a part of the whole board.
+    label : str
+        The board's own name for the channel, or the part of the board.
+    value, limit : float
+        Reading and limit after derating; limit None where it was not given. [unit]
+    margin : float or None
+        (limit - value) / limit, or the other way round where the limit is a lower one; negative when broken.
+    at, lasting : float or None
+        When, and for how long. [s]
+    corner : str
+        The corner in which it is worst; `nominal_only` names what had no tolerance there.
+    source : str
+        Where the limit comes from.
+    """
+
+    check: str
+    quantity: str
+    part: str
+    channel: int | None
+    label: str
+    value: float
+    limit: float | None
+    unit: str
+    margin: float | None
+    at: float | None
+    consequence: Consequence
+    verdict: Verdict
+    sentence: str
+    corner: str = ""
+    source: str = ""
+    lasting: float | None = None
+    nominal_only: tuple[str, ...] = ()
+
+    @property
+    def key(self) -> tuple[str, str, str, int | None]:
+        """What makes two findings of different runs the same question."""
+        return (self.check, self.quantity, self.part, self.channel)
+
+
+_SEVERITY: dict[Verdict, int] = {"fail": 0, "unproven": 1, "limit-missing": 2, "tight": 3, "pass": 4}
+
+
+def severity(finding: Finding) -> tuple[int, float]:
+    """Sort key: broken limits first, then the smallest margin."""
+    return (_SEVERITY[finding.verdict], finding.margin if finding.margin is not None else 0.0)
+
+
+def overall(findings: Iterable[Finding], proven: bool, strict: bool) -> Verdict:
+    """The verdict of a run: the worst of its findings; a missing limit counts as broken under `strict`."""
+    verdicts = {f.verdict for f in findings}
+    if "fail" in verdicts or (strict and "limit-missing" in verdicts):
+        return "fail"
+    if not proven or "unproven" in verdicts or not verdicts:
+        return "unproven"
+    for verdict in ("limit-missing", "tight"):
+        if verdict in verdicts:
+            return verdict
+    return "pass"
+
+
+def exit_status(verdict: Verdict) -> int:
+    """The command's status for a verdict."""
+    return {"fail": EXIT_LIMIT_BROKEN, "unproven": EXIT_UNPROVEN}.get(verdict, EXIT_PASS)
+
+
+@dataclass(frozen=True)
+class AuditEntry:
+    """One criterion of the audit on one run.
+
+    Attributes
+    ----------
+    criterion : {"passivity", "refinement", "density"}
+    corner, run : str
+        Which corner, and with which settings of the engine.
+    subject : str
+        The part or the reading that came closest to the bound.
+    measured, allowed : float
+        In `unit`.
+    """
+
+    criterion: Literal["passivity", "refinement", "density"]
+    corner: str
+    run: str
+    subject: str
+    measured: float
+    allowed: float
+    unit: str
+    passed: bool
+
+    def __str__(self) -> str:
+        sign = "within" if self.passed else "beyond"
+        return f"{self.criterion} ({self.corner}; {self.run}): {self.subject} {self.measured:.3g} {self.unit}, {sign} {self.allowed:.3g} {self.unit}"
+
+
+@dataclass(frozen=True)
+class Envelope:
+    """A waveform thinned for pictures without losing a spike: lowest and highest value per slice of time.
+
+    Attributes
+    ----------
+    edges : (n + 1,) array
+        Borders of the slices. [s]
+    low, high : (n,) array
+        [unit]
+    """
+
+    label: str
+    unit: str
+    edges: Floats
+    low: Floats
+    high: Floats
+
+
+@dataclass(frozen=True)
+class Traces:
+    """What the overview picture shows, of the corner with the lowest rail.
+
+    Attributes
+    ----------
+    rail, total, supply : Envelope
+        Coil rail at the board [V], sum of the coil currents [A], current out of the supply [A].
+    on : mapping of channel to (n, 2) array
+        When each channel is on. [s]
+    labels : mapping of channel to str
+    rail_limit, supply_limit : float or None
+        Brown-out level [V] and the supply's ceiling [A].
+    """
+
+    corner: str
+    rail: Envelope
+    total: Envelope
+    supply: Envelope
+    on: Mapping[int, Floats]
+    labels: Mapping[int, str]
+    rail_limit: float | None
+    supply_limit: float | None
+
+
+@dataclass(frozen=True)
+class Timing:
+    """Where the time went: a stage and its seconds."""
+
+    stage: str
+    seconds: float
+
+
+@dataclass(frozen=True)
+class Result:
+    """One pattern on one board, judged.
+
+    Attributes
+    ----------
+    firing : tuple of str
+        Sentences about the register frames: frame time, how far edges moved.
+    deck : str
+        The deck of the corner that decides, with the settings that passed the audit.
+    """
+
+    board: str
+    pattern: str
+    duration: float
+    verdict: Verdict
+    findings: tuple[Finding, ...]
+    assumptions: tuple[Assumption, ...]
+    audit: tuple[AuditEntry, ...]
+    firing: tuple[str, ...]
+    traces: Traces | None
+    deck: str
+    timings: tuple[Timing, ...] = ()
+    corners: tuple[str, ...] = ()
+    notes: tuple[str, ...] = field(default=())
+
+
+CAUTIONS = (
+    "This is a simulation: it supports a design review and replaces neither measurement nor local codes nor licensed practice.",
+    "An unclamped coil reaches hundreds of volts at turn-off; parts that fail can burn.",
+    "Coils move things: keep hands away while firing, and give whatever must hold or release people a protection of its own.",
+)
