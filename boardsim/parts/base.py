@@ -98,6 +98,10 @@ class Part(Record):
     kind: str
     title: Name | None = None
 
+    def tolerances(self) -> dict[str, Quantity]:
+        """What the corners vary in this part, by the keys of `Corner.ends`."""
+        return {}
+
 
 def named_part(cls: type[Part]) -> Any:
     """A field that takes a part inline, or by its name from the board file or the library."""
@@ -267,12 +271,16 @@ class Port:
     store : tuple or None
         (quantity, value): the part stores value/2 x quantity^2 (L with its current, C with its voltage); the
         energy that it has dissipated, not the terminal energy, must then never fall.
+    from_rest : bool
+        Count voltages from their first value. A capacitor on a rail is as passive about its resting voltage as
+        about 0 V, and rounding errors of its charge do not then count at the full rail voltage.
     """
 
     part: str
     pairs: tuple[tuple[str, str], ...]
     holds: float = 0.0
     store: tuple[str, float] | None = None
+    from_rest: bool = False
 
 
 # ----------------------------------------------------------------------------------------------- rules
@@ -301,7 +309,7 @@ class Limit:
 
 @dataclass(frozen=True)
 class PeakRule:
-    """The highest value of a probe (or of its magnitude) must stay below a limit."""
+    """The highest value of a probe (or of its magnitude) must stay below a limit; `part` if not the stamp's own."""
 
     check: str
     quantity: str
@@ -310,6 +318,7 @@ class PeakRule:
     what: str
     advice: str
     magnitude: bool = False
+    part: str = ""
 
 
 @dataclass(frozen=True)
@@ -322,6 +331,7 @@ class MeanRule:
     consequence: Consequence
     what: str
     advice: str
+    part: str = ""
 
 
 @dataclass(frozen=True)

@@ -51,7 +51,7 @@ class Bulk(Part):
                 Probe("v_bulk_port", voltage(rail, "bulk_mid"), "V"),
                 Probe("i_bulk", through, "A"),
             ),
-            ports=(Port("bulk capacitor", (("v_bulk_port", "i_bulk"),), store=("v_bulk_c", c)),),
+            ports=(Port("bulk capacitor", (("v_bulk_port", "i_bulk"),), store=("v_bulk_c", c), from_rest=True),),
             rules=(
                 PeakRule(
                     "overvoltage", "v_rail", Limit.of(self.rated, "rated voltage", "V", "voltage"), "destroy",

@@ -10,7 +10,7 @@ from pydantic import BeforeValidator, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Inductor, Part, Probe, Resistor, Stamp, Surroundings, current, listed
-from boardsim.parts.copper import awg_diameter, loop_resistance, pair_inductance
+from boardsim.parts.copper import T_20C, awg_diameter, loop_resistance, pair_inductance
 from boardsim.quantities import AREA, LENGTH, Quantity, assume, computed
 
 
@@ -52,12 +52,14 @@ class Cable(Part):
         """Cross-section of one conductor. [m^2]"""
         return math.pi * self.diameter**2 / 4
 
-    def stamp(self, near: str, far: str, corner: Corner, around: Surroundings) -> Stamp:
+    def stamp(self, near: str, far: str, corner: Corner, around: Surroundings | None) -> Stamp:
         """The cable from the supply's node `near` to the board's node `far`; the way back is folded into it."""
         spacing = self.spacing or assume(
             f"{2 * self.diameter:.3g} m", LENGTH, "two conductors side by side, insulation half a diameter, from memory"
         )
-        t = around.ambient_high if corner.winding == "hot" else around.ambient_low
+        t = T_20C
+        if around is not None:
+            t = around.ambient_high if corner.winding == "hot" else around.ambient_low
         r = loop_resistance(self.section, self.length.typ, t)
         coil = Inductor("cable", "cable_mid", far, pair_inductance(self.diameter, spacing.typ, self.length.typ))
         return Stamp(

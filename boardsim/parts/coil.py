@@ -37,6 +37,10 @@ class Coil(Part):
         "0 K", TEMPERATURE_RISE, "no temperature rise of the winding given: hot means the highest ambient only"
     )
 
+    def tolerances(self) -> dict[str, Quantity]:
+        """What the corners vary in this part."""
+        return {"coil_resistance": self.resistance, "inductance": self.inductance}
+
     def winding(self, corner: Corner, around: Surroundings | None) -> float:
         """Winding resistance in a corner. [ohm]"""
         r = corner.take(self.resistance, "coil_resistance")

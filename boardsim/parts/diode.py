@@ -93,16 +93,17 @@ class Diode(Part):
             f"{name}_m", "D",
             {"IS": i_s, "N": n, "RS": r_s, "CJO": self.capacitance.typ, "TT": self.recovery.typ, "TNOM": 25.0},
         )  # fmt: skip
+        name_of = self.title or label
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
         peak_limit = Limit.of(self.repetitive_current, "repetitive peak current", "A", "current")
         if self.repetitive_current is None:
             peak_limit = Limit.of(self.average_current, "average current (no repetitive peak rating given)", "A", "current")
         rules: tuple[Rule, ...] = (
             PeakRule("overvoltage", v_r, Limit.of(self.reverse_voltage, "repetitive reverse voltage", "V", "voltage"), "destroy",
-                     f"reverse voltage of the {label}", "choose a higher reverse voltage"),
-            PeakRule("overcurrent", i, peak_limit, "destroy", f"peak current of the {label}", "choose a larger diode"),
+                     f"reverse voltage of the {label}", "choose a higher reverse voltage", part=name_of),
+            PeakRule("overcurrent", i, peak_limit, "destroy", f"peak current of the {label}", "choose a larger diode", part=name_of),
             MeanRule("overcurrent", (i,), Limit.of(self.average_current, "average current", "A", "current"), "destroy",
-                     f"average current of the {label}", "choose a larger diode, or fire less often"),
+                     f"average current of the {label}", "choose a larger diode, or fire less often", part=name_of),
         )  # fmt: skip
         v_max = self.reverse_voltage.typ if self.reverse_voltage else 100.0
         charge = self.capacitance.typ * v_max + self.recovery.typ * (self.average_current.typ if self.average_current else 1.0)

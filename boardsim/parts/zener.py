@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Annotated, ClassVar, Literal
 
 from boardsim.parts.base import (
-    Corner, Junction, Limit, MeanRule, Model, Part, PeakRule, Port, Probe, Signal, Stamp, voltage,
+    Corner, Junction, Limit, MeanRule, Model, Part, PeakRule, Port, Probe, Resistor, Signal, Stamp, voltage,
 )  # fmt: skip
 from boardsim.parts.diode import THERMAL_VOLTAGE
 from boardsim.quantities import CAPACITANCE, CURRENT, POWER, RESISTANCE, VOLTAGE, Quantity, assume
@@ -17,7 +17,8 @@ class Zener(Part):
     Notes
     -----
     V = V_Z + Z (I - I_Z): ngspice's junction breakdown, an exponential of 26 mV per e-fold, in series with what
-    remains of Z at the test current. At 25 degC; the voltage's own temperature coefficient is ignored.
+    remains of Z at the test current, and a leakage resistance across it, which lets the node between two clamp
+    diodes find its level as it does on a board. At 25 degC; the voltage's own temperature coefficient is ignored.
     """
 
     role: ClassVar[str] = "component"
@@ -27,6 +28,7 @@ class Zener(Part):
     impedance: Annotated[Quantity, RESISTANCE]
     power: Annotated[Quantity, POWER] | None = None
     surge_current: Annotated[Quantity, CURRENT] | None = None
+    leakage: Annotated[Quantity, CURRENT] = assume("1 uA", CURRENT, "at three quarters of the Zener voltage, from memory")
     capacitance: Annotated[Quantity, CAPACITANCE] = assume("500 pF", CAPACITANCE, "Zener of some watts, from memory")
 
     def stamp(self, name: str, label: str, positive: str, negative: str, through: Signal, corner: Corner) -> Stamp:
@@ -38,15 +40,19 @@ class Zener(Part):
             f"{name}_m", "D",
             {"IS": 1e-12, "N": 1.1, "RS": r, "BV": v_z - r * i_z, "IBV": i_z, "CJO": self.capacitance.typ, "TNOM": 25.0},
         )  # fmt: skip
+        name_of = self.title or label
         v, i = f"v_{label}", f"i_{label}"
         return Stamp(
-            elements=(Junction(name, negative, positive, model),),
+            elements=(
+                Junction(name, negative, positive, model),
+                Resistor(f"{name}_leak", positive, negative, 0.75 * self.voltage.typ / self.leakage.typ),
+            ),
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
             ports=(Port(label, ((v, i),), holds=self.capacitance.typ * v_z**2),),
             rules=(
                 PeakRule("overcurrent", i, Limit.of(self.surge_current, "peak current", "A", "current"), "destroy",
-                         f"peak current of the {label}", "choose a larger Zener or a transient suppressor"),
+                         f"peak current of the {label}", "choose a larger Zener or a transient suppressor", part=name_of),
                 MeanRule("overpower", (v, i), Limit.of(self.power, "power", "W", "power"), "destroy",
-                         f"average power of the {label}", "choose a larger Zener, or fire less often"),
+                         f"average power of the {label}", "choose a larger Zener, or fire less often", part=name_of),
             ),
         )  # fmt: skip

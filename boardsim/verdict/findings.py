@@ -122,6 +122,30 @@ class AuditEntry:
 
 
 @dataclass(frozen=True)
+class CornerAudit:
+    """The audit of one corner.
+
+    Attributes
+    ----------
+    corner : str
+    entries : tuple of AuditEntry
+        Of the run that is reported, of the run that it is compared with, and their comparison; of every try where
+        none held.
+    proven : bool
+        Whether two runs of the corner pass and agree.
+    """
+
+    corner: str
+    entries: tuple[AuditEntry, ...]
+    proven: bool
+
+    @property
+    def compared(self) -> bool:
+        """Whether a run was compared with another at all."""
+        return any(entry.criterion == "refinement" for entry in self.entries)
+
+
+@dataclass(frozen=True)
 class Envelope:
     """A waveform thinned for pictures without losing a spike: lowest and highest value per slice of time.
 
@@ -191,13 +215,17 @@ class Result:
     verdict: Verdict
     findings: tuple[Finding, ...]
     assumptions: tuple[Assumption, ...]
-    audit: tuple[AuditEntry, ...]
+    audit: tuple[CornerAudit, ...]
     firing: tuple[str, ...]
     traces: Traces | None
     deck: str
     timings: tuple[Timing, ...] = ()
-    corners: tuple[str, ...] = ()
     notes: tuple[str, ...] = field(default=())
+
+    @property
+    def proven(self) -> bool:
+        """Whether the audit holds in every corner; without an audit nothing is proven."""
+        return bool(self.audit) and all(audit.proven for audit in self.audit)
 
 
 CAUTIONS = (

@@ -7,6 +7,7 @@ from typing import ClassVar, Literal
 from boardsim.parts.base import Ammeter, Corner, Part, Stamp, current, named_part
 from boardsim.parts.diode import Diode
 from boardsim.parts.zener import Zener
+from boardsim.quantities import Quantity
 
 
 class DiodeZenerClamp(Part):
@@ -17,6 +18,10 @@ class DiodeZenerClamp(Part):
     to: Literal["rail"] = "rail"
     diode: named_part(Diode)  # type: ignore[valid-type]
     zener: named_part(Zener)  # type: ignore[valid-type]
+
+    def tolerances(self) -> dict[str, Quantity]:
+        """What the corners vary in this clamp."""
+        return {"clamp_voltage": self.zener.voltage}
 
     def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
         """The clamp between node `drain` and node `rail`."""

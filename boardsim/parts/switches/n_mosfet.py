@@ -131,9 +131,8 @@ class NMosfetStage(Part):
     active: ClassVar[Literal["high", "low"]] = "high"
     """Output level that turns the coil on."""
 
-    @property
     def tolerances(self) -> dict[str, Quantity]:
-        """What the corners vary in this stage."""
+        """What the corners vary in this stage: where the transistor breaks down."""
         return {"breakdown": self.part.breakdown}
 
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:

@@ -1,0 +1,65 @@
+"""Which corners a board is run in: the worst ends of the tolerances that were given."""
+
+from __future__ import annotations
+
+from boardsim.board.reader import Board
+from boardsim.parts.base import NOMINAL, Corner
+from boardsim.quantities import Bound, Quantity
+
+_INPUT_NAMES = {
+    "supply": "supply voltage",
+    "coil_resistance": "coil resistance",
+    "inductance": "coil inductance",
+    "bulk": "bulk capacitance",
+    "clamp_voltage": "clamp voltage",
+    "breakdown": "breakdown voltage",
+    "logic": "logic rail",
+}
+
+
+def _varied(board: Board) -> dict[str, list[Quantity]]:
+    """Every number that corners vary, by its key."""
+    found: dict[str, list[Quantity]] = {
+        "supply": [board.supply.voltage],
+        "bulk": [board.bulk.capacitance],
+        "logic": [board.logic.voltage],
+    }
+    for channel in board.channels:
+        for part in (channel.coil, channel.switch, channel.clamp):
+            for key, quantity in part.tolerances().items():
+                found.setdefault(key, []).append(quantity)
+    return found
+
+
+def nominal_only(board: Board) -> tuple[str, ...]:
+    """Names of the numbers that had no tolerance and so were run at their nominal value."""
+    names = [_INPUT_NAMES.get(key, key) for key, found in _varied(board).items() if not all(q.toleranced for q in found)]
+    return (*names, *(() if board.around else ("winding temperature",)))
+
+
+def corners(board: Board) -> tuple[Corner, ...]:
+    """The corners to run.
+
+    Notes
+    -----
+    Every finding is judged in every corner and reported in its worst, so a corner only has to be the worst for
+    something: supply high with cold windings and stiff clamps for voltage and current; the same with soft clamps,
+    low breakdown and high inductance for energy and release; supply low with hot windings for pull-in; supply low
+    with cold windings for the rail, which then has to feed the most. Corners that come out alike are run once.
+    """
+    strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max"}
+    weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "logic": "min"}
+    wanted = (
+        Corner("supply high, coils cold, clamps high", {**strong, "inductance": "min", "clamp_voltage": "max", "breakdown": "max"}, "cold"),
+        Corner("supply high, coils cold, clamps low", {**strong, "inductance": "max", "clamp_voltage": "min", "breakdown": "min"}, "cold"),
+        Corner("supply low, coils hot", {**weak, "coil_resistance": "max", "inductance": "max"}, "hot"),
+        Corner("supply low, coils cold", {**weak, "coil_resistance": "min", "inductance": "min"}, "cold"),
+    )  # fmt: skip
+    has_tolerance = {key: any(q.toleranced for q in found) for key, found in _varied(board).items()}
+    distinct: dict[tuple[object, ...], Corner] = {}
+    for corner in wanted:
+        ends = {k: v for k, v in corner.ends.items() if has_tolerance.get(k)}
+        winding = corner.winding if board.around else "reference"
+        distinct.setdefault((tuple(sorted(ends.items())), winding), Corner(corner.name, ends, winding))
+    only = tuple(distinct.values())
+    return only if len(only) > 1 else (NOMINAL,)

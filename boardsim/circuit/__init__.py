@@ -1,0 +1,1 @@
+"""Board and output edges -> deck. The only place that knows PySpice's builder."""

@@ -1,0 +1,120 @@
+"""Board, output edges and a corner -> deck."""
+
+from __future__ import annotations
+
+from boardsim.board.reader import Board, Channel
+from boardsim.circuit.build import Builder
+from boardsim.circuit.deck import Deck, PlacedRule, Window
+from boardsim.firing.schedule import Firing
+from boardsim.parts.base import Assumption, Corner, DipRule, Limit, Port, Rule, Signal, Stamp, plus
+
+RAIL = "rail"
+SUPPLY = "supply_out"
+
+
+def windows(board: Board, firing: Firing) -> tuple[Window, ...]:
+    """The stretches of time to run: so far one, with every channel in it."""
+    return (Window(0.0, firing.duration, tuple(c.number for c in board.channels)),)
+
+
+def gate_points(levels: tuple[tuple[float, bool], ...], window: Window, volts: float, edge: float) -> tuple[tuple[float, float], ...]:
+    """A register output as straight lines.
+
+    Parameters
+    ----------
+    levels : tuple of (time, level)
+        From `Firing.levels`. [s]
+    window : Window
+        Times before it only set the first level.
+    volts, edge : float
+        High level [V] and how long an edge takes [s].
+
+    Returns
+    -------
+    tuple of (time, voltage)
+        Relative to the window's start. [s], [V]
+    """
+    before = [level for t, level in levels if t <= window.start]
+    points = [(0.0, volts * before[-1])]
+    for t, level in levels:
+        if window.start < t < window.stop:
+            at = max(t - window.start, points[-1][0] + 1e-12)
+            points += [(at, points[-1][1]), (at + edge, volts * level)]
+    points.append((window.stop - window.start + edge, points[-1][1]))
+    return tuple(points)
+
+
+class _Assembly:
+    """What the stamps add up to."""
+
+    def __init__(self) -> None:
+        self.builder = Builder()
+        self.signals: dict[tuple[int | None, str], Signal] = {}
+        self.units: dict[tuple[int | None, str], str] = {}
+        self.ports: list[tuple[int | None, str, Port]] = []
+        self.rules: list[PlacedRule] = []
+        self.assumptions: dict[Assumption, None] = {}
+        self.hints: dict[str, float] = {}
+
+    def add(self, stamp: Stamp, channel: int | None, part: str, label: str) -> None:
+        self.builder.add(stamp.elements)
+        for probe in stamp.probes:
+            self.signals[channel, probe.quantity] = probe.signal
+            self.units[channel, probe.quantity] = probe.unit
+        self.ports += [(channel, label, port) for port in stamp.ports]
+        self.rules += [PlacedRule(rule, channel, part, label) for rule in stamp.rules]
+        self.assumptions.update(dict.fromkeys(stamp.assumptions))
+        self.hints.update(stamp.hints)
+
+
+def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> Deck:
+    """Assemble the deck of one window in one corner."""
+    parts = _Assembly()
+    parts.add(board.supply.stamp(SUPPLY, corner), None, board.supply.title or "supply", "supply")
+    around = board.around
+    parts.add(board.cable.stamp(SUPPLY, RAIL, corner, around), None, board.cable.title or "cable", "cable")
+    parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
+    parts.hints[RAIL] = corner.take(board.supply.voltage, "supply")
+    for channel in board.channels:
+        if channel.number in window.channels:
+            _add_channel(parts, board, firing, corner, window, channel)
+
+    total = plus(*(s for (_, quantity), s in parts.signals.items() if quantity == "i_coil"))
+    parts.signals[None, "i_total"] = total
+    parts.units[None, "i_total"] = "A"
+    parts.rules.append(PlacedRule(_rail_rule(board), None, "coil rail", "board"))
+    vectors = dict.fromkeys(name for signal in parts.signals.values() for _, name in signal)
+    return Deck(
+        parts.builder.netlist(), window, corner, tuple(vectors), parts.signals, parts.units, tuple(parts.ports), tuple(parts.rules),
+        tuple(parts.assumptions), _measures(parts.signals), parts.hints,
+    )  # fmt: skip
+
+
+def _add_channel(parts: _Assembly, board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> None:
+    k, name, label = channel.number, f"c{channel.number}", channel.label
+    register = board.chain.register_
+    points = gate_points(firing.levels[channel.output], window, board.logic.level(corner), register.output_edge.typ)
+    pin, drain = f"{name}_q", f"{name}_d"
+    parts.add(register.drive(f"{name}_q", pin, points), k, register.title or "register", label)
+    coil = channel.coil.stamp(name, channel.coil_name, RAIL, drain, corner, board.around)
+    parts.add(coil, k, channel.coil_name, label)
+    parts.add(channel.switch.stamp(f"{name}_s", pin, drain, corner), k, channel.switch.part.title or "switch", label)
+    parts.add(channel.clamp.stamp(f"{name}_c", drain, RAIL, corner), k, f"{channel.clamp.kind} clamp", label)
+
+
+def _rail_rule(board: Board) -> Rule:
+    brown_out = board.limits.brown_out
+    if brown_out is None:
+        return DipRule("rail-sag", "v_rail", Limit(None, "V", None, "", "brown-out level"), 0.0, "coil rail")
+    return DipRule("rail-sag", "v_rail", Limit.of(brown_out.voltage, "brown-out level", "V", None), brown_out.lasting.typ, "coil rail")
+
+
+def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
+    """The readings that plain ngspice can print by itself: extremes of single vectors."""
+    wanted = {"v_rail": ("MIN", "MAX"), "i_supply": ("MAX",), "v_ds": ("MAX",), "i_d": ("MAX",), "v_gs": ("MAX",)}
+    lines = []
+    for (channel, quantity), signal in signals.items():
+        if quantity in wanted and len(signal) == 1 and signal[0][0] == 1.0:
+            prefix = "board" if channel is None else f"c{channel}"
+            lines += [f".meas tran {prefix}_{quantity}_{how.lower()} {how} {signal[0][1]}" for how in wanted[quantity]]
+    return tuple(lines)

@@ -1,0 +1,103 @@
+"""The assembled netlist, and the map from its saved waveforms to quantities of parts."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+from boardsim.parts.base import Assumption, Corner, Port, Rule, Signal
+
+SIMULATION_TEMPERATURE = 25.0  # [degC]; all models hold at 25 degC, windings carry their own temperature
+
+
+@dataclass(frozen=True)
+class Settings:
+    """How finely the engine integrates.
+
+    Notes
+    -----
+    `abstol` is 0.1 uA, not ngspice's 1 pA: with many switches on one rail the noise of Newton's method on tiny
+    capacitive currents otherwise holds the step at picoseconds for ever.
+    """
+
+    method: Literal["trap", "gear"]
+    reltol: float
+    max_step: float
+    abstol: float = 1e-7
+
+    def __str__(self) -> str:
+        return f"{self.method}, reltol {self.reltol:g}, step up to {self.max_step * 1e6:g} us"
+
+
+@dataclass(frozen=True)
+class Window:
+    """A stretch of time with the channels that matter in it. [s]"""
+
+    start: float
+    stop: float
+    channels: tuple[int, ...]
+
+
+@dataclass(frozen=True)
+class PlacedRule:
+    """A rule of a part at its place on the board."""
+
+    rule: Rule
+    channel: int | None
+    part: str
+    label: str
+
+
+@dataclass(frozen=True)
+class Deck:
+    """One window of a board in one corner.
+
+    Attributes
+    ----------
+    netlist : str
+        Elements and models.
+    vectors : tuple of str
+        What is saved, in order: "v(node)", "i(element)".
+    signals : mapping of (channel or None, quantity) to Signal
+    measures : tuple of str
+        .meas lines, for who runs the deck by hand; the engine leaves them out.
+    hints : mapping of node to voltage
+        Start of the search for the operating point. [V]
+    """
+
+    netlist: str
+    window: Window
+    corner: Corner
+    vectors: tuple[str, ...]
+    signals: Mapping[tuple[int | None, str], Signal]
+    units: Mapping[tuple[int | None, str], str]
+    ports: tuple[tuple[int | None, str, Port], ...]
+    rules: tuple[PlacedRule, ...]
+    assumptions: tuple[Assumption, ...]
+    measures: tuple[str, ...]
+    hints: Mapping[str, float]
+
+    def text(self, settings: Settings, measures: bool = True) -> str:
+        """The whole deck as plain ngspice runs it."""
+        duration = self.window.stop - self.window.start
+        hints = " ".join(f"v({node})={v:.9g}" for node, v in self.hints.items())
+        lines = [
+            self.netlist.rstrip(),
+            f".options method={settings.method} reltol={settings.reltol:g} abstol={settings.abstol:g}",
+            f".options temp={SIMULATION_TEMPERATURE:g} tnom={SIMULATION_TEMPERATURE:g} noacct noinit",
+            f".nodeset {hints}",
+            f".save {' '.join(self.vectors)}",
+            *(self.measures if measures else ()),
+            f".tran {min(settings.max_step, duration / 50):.9g} {duration:.12g} 0 {settings.max_step:.9g}",
+            ".end",
+        ]
+        return "\n".join(_folded(line) for text in lines for line in text.splitlines() if line.strip()) + "\n"
+
+
+def _folded(line: str) -> str:
+    """Long lines continue with a plus sign."""
+    if len(line) <= 120:
+        return line
+    return "\n+ ".join(textwrap.wrap(line, 118, break_long_words=False, break_on_hyphens=False))

@@ -1,0 +1,187 @@
+"""The commands: parse, call one function, print. Every error of the user's ends here, in a message and a status."""
+
+from __future__ import annotations
+
+import contextlib
+import os
+import sys
+from collections.abc import Callable, Iterator
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
+
+import typer
+
+from boardsim.errors import EXIT_WRONG_INPUT, BoardsimError
+
+if TYPE_CHECKING:
+    from boardsim.verdict.findings import Result
+
+# Whatever needs numpy, pydantic or matplotlib is imported inside the command that uses it: `--help` must be quick.
+
+app = typer.Typer(
+    name="boardsim",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"]},
+    help="Checks boards that fire many coils through shift registers: a firing pattern against the limits of every part.",
+)
+
+BoardFile = Annotated[Path, typer.Argument(metavar="BOARD", help="board file, such as netlists/fruit-sorter/board.toml")]
+PatternFile = Annotated[Path, typer.Argument(metavar="PATTERN", help="pattern file, such as netlists/fruit-sorter/patterns/steady.toml")]
+
+
+@app.command(
+    epilog="Example: boardsim fire netlists/fruit-sorter/board.toml netlists/fruit-sorter/patterns/rush.toml --out out/rush"
+)
+def fire(
+    board: BoardFile,
+    pattern: PatternFile,
+    out: Annotated[Path | None, typer.Option(metavar="DIR", help="folder for the results; out/BOARD-PATTERN if not given")] = None,
+    strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+) -> None:
+    """Simulate a firing pattern on a board and judge it against every limit.
+
+    Exit status: 0 pass, 1 a limit is broken, 2 wrong input, 3 unproven.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.firing.pattern import read_pattern
+    from boardsim.scenarios.fire import fire_pattern
+    from boardsim.verdict.findings import exit_status
+
+    the_board = read_board(board)
+    the_pattern = read_pattern(pattern, the_board)
+    folder = out or Path("out") / f"{_plain(the_board.name)}-{_plain(the_pattern.name)}"
+    _usable(folder)
+    with _progress(f"{the_board.name}, {the_pattern.name}") as progress:
+        result = fire_pattern(the_board, the_pattern, folder, strict, time_limit, progress)
+    _report(result, folder)
+    raise typer.Exit(exit_status(result.verdict))
+
+
+@app.command(
+    epilog="Example: boardsim deck netlists/fruit-sorter/board.toml netlists/fruit-sorter/patterns/rush.toml --to rush.cir && ngspice -b rush.cir"
+)
+def deck(
+    board: BoardFile,
+    pattern: PatternFile,
+    to: Annotated[Path | None, typer.Option(metavar="FILE", help="where to write it; standard output if not given")] = None,
+    corner: Annotated[int, typer.Option(metavar="N", min=1, help="which of the board's corners, counted from 1")] = 1,
+) -> None:
+    """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
+    from boardsim.board.reader import read_board
+    from boardsim.errors import InputError
+    from boardsim.firing.pattern import read_pattern
+    from boardsim.report.files import write_text
+    from boardsim.scenarios.decks import write_deck
+
+    the_board = read_board(board)
+    names, text = write_deck(the_board, read_pattern(pattern, the_board), corner)
+    if text is None:
+        listed = "; ".join(f"{i} {name}" for i, name in enumerate(names, 1))
+        raise InputError(f"--corner {corner}: this board has {len(names)}: {listed}")
+    if to is None:
+        sys.stdout.write(text)
+    else:
+        write_text(to, text)
+        typer.echo(f"corner {corner}, {names[corner - 1]}: {to}", err=True)
+
+
+@app.command(epilog="Example: boardsim schema > board.schema.json")
+def schema(
+    what: Annotated[str, typer.Argument(metavar="[board|pattern]", help="which kind of file")] = "board",
+) -> None:
+    """Print the JSON Schema of board or pattern files, for editors that complete and check TOML."""
+    import json
+
+    from boardsim.errors import InputError
+    from boardsim.scenarios.starter import json_schema
+
+    found = json_schema(what)
+    if found is None:
+        raise InputError(f'"{what}" is not a kind of file; say board or pattern')
+    typer.echo(json.dumps(found, indent=2, ensure_ascii=False))
+
+
+@app.command(epilog="Example: boardsim begin my-board && boardsim fire my-board/board.toml my-board/patterns/first.toml")
+def begin(
+    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="new folder for the board")],
+) -> None:
+    """Write a commented starter board and a first pattern into a new folder."""
+    from boardsim.scenarios.starter import write_starter
+
+    written = write_starter(folder)
+    for path in written:
+        typer.echo(path)
+    typer.echo(f"\nnow try: boardsim fire {written[0]} {written[1]}")
+
+
+def _plain(name: str) -> str:
+    """A name as part of a path."""
+    return "".join(c if c.isalnum() else "-" for c in name.lower()).strip("-") or "board"
+
+
+def _usable(folder: Path) -> None:
+    """Complain before the run, not after it."""
+    from boardsim.errors import InputError
+
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as err:
+        raise InputError(f"{folder}: cannot be used as a folder for results: {err.strerror or err}; choose another with --out") from err
+    if not os.access(folder, os.W_OK | os.X_OK):
+        raise InputError(f"{folder}: cannot be written to; choose another folder with --out")
+
+
+@contextlib.contextmanager
+def _progress(what: str) -> Iterator[Callable[[float], None]]:
+    """A progress bar on standard error; nothing where that is no terminal."""
+    from rich.console import Console
+    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
+
+    console = Console(stderr=True)
+    columns: tuple[Any, ...] = (TextColumn("{task.description}"), BarColumn(), TextColumn("{task.percentage:>3.0f} %"), TimeElapsedColumn())
+    with Progress(*columns, console=console, transient=True, disable=not console.is_terminal) as bar:
+        task = bar.add_task(what, total=1.0)
+        yield lambda share: bar.update(task, completed=share)
+
+
+def _report(result: Result, folder: Path) -> None:
+    from rich.console import Console
+
+    from boardsim.report.files import write_text
+    from boardsim.report.json_report import write_findings
+    from boardsim.report.junit import write_junit
+    from boardsim.report.overview import draw_overview
+    from boardsim.report.terminal import print_result
+
+    picture = folder / "overview.png"
+    write_text(folder / "board.cir", result.deck)
+    write_findings(result, folder / "findings.json")
+    write_junit(result, folder / "junit.xml")
+    draw_overview(result, picture)
+    console = Console(soft_wrap=False)
+    if not console.is_terminal:
+        console = Console(width=100)
+    print_result(result, console, picture, folder)
+
+
+def main() -> None:
+    """Run a command; an error that a user can cause ends in its message and its exit status, never in a traceback."""
+    try:
+        app()
+    except BoardsimError as err:
+        typer.echo(f"boardsim: {err}" if "\n" not in str(err) else str(err), err=True)
+        sys.exit(err.exit_status)
+    except BrokenPipeError:
+        # Whoever read the output has stopped, as `head` does.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        sys.exit(EXIT_WRONG_INPUT)
+    except KeyboardInterrupt:
+        typer.echo("boardsim: interrupted", err=True)
+        sys.exit(130)
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,1 @@
+"""Pattern -> register frames, bit by bit -> latched output edges."""

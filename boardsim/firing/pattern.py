@@ -1,0 +1,119 @@
+"""Pattern files: pulses with start, channels, width, repetition and stagger."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Annotated
+
+from pydantic import Field, ValidationError
+
+from boardsim.board.ranges import read_range
+from boardsim.board.reader import Board, problems_of
+from boardsim.board.toml_file import TomlFile, read_toml
+from boardsim.errors import InputError, Problem, QuantityError
+from boardsim.parts.base import Name, Record
+from boardsim.quantities import TIME, Quantity
+
+MOST_PULSES = 1_000_000
+
+
+class PulseTrain(Record):
+    """One entry of a pattern: a pulse on each of some channels, repeated."""
+
+    channels: str
+    start: Annotated[Quantity, TIME]
+    width: Annotated[Quantity, TIME]
+    repeat: Annotated[int, Field(ge=1, le=MOST_PULSES)] = 1
+    every: Annotated[Quantity, TIME] | None = None
+    stagger: Annotated[Quantity, TIME] | None = None
+
+
+class PatternFile(Record):
+    """A firing pattern: pulse trains, and how long to look."""
+
+    name: Name | None = None
+    duration: Annotated[Quantity, TIME] | None = None
+    pulses: Annotated[tuple[PulseTrain, ...], Field(min_length=1)]
+
+
+@dataclass(frozen=True)
+class Pulse:
+    """One commanded pulse on a channel. [s]"""
+
+    channel: int
+    start: float
+    width: float
+
+    @property
+    def stop(self) -> float:
+        """When the channel is commanded off. [s]"""
+        return self.start + self.width
+
+
+@dataclass(frozen=True)
+class Pattern:
+    """Pulses by start, and the time until which a run looks. [s]"""
+
+    path: Path
+    name: str
+    duration: float | None
+    pulses: tuple[Pulse, ...]
+
+
+def read_pattern(path: Path, board: Board) -> Pattern:
+    """Read a pattern file for a board.
+
+    Raises
+    ------
+    InputError
+        With every mistake found: file, line, what was found, what is allowed.
+    """
+    file = read_toml(path, "pattern")
+    try:
+        raw = PatternFile.model_validate(file.data)
+    except ValidationError as err:
+        raise InputError(problems_of(err, file)) from None
+    problems: list[Problem] = []
+    pulses: list[Pulse] = []
+    for i, train in enumerate(raw.pulses):
+        pulses.extend(_expand(train, i, board, file, problems))
+    duration = raw.duration.typ if raw.duration else None
+    if not problems and duration is not None:
+        last = max(pulses, key=lambda p: p.stop)
+        if last.stop > duration:
+            problems.append(
+                file.problem(("duration",), f"duration: {duration:g} s ends before the last pulse does, at {last.stop:g} s")
+            )
+    if problems:
+        raise InputError(problems)
+    return Pattern(path, raw.name or path.stem, duration, tuple(sorted(pulses, key=lambda p: (p.start, p.channel))))
+
+
+def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problems: list[Problem]) -> list[Pulse]:
+    known = {c.number for c in board.channels}
+    keys = ("pulses", index)
+    try:
+        channels = read_range(train.channels)
+    except QuantityError as err:
+        problems.append(file.problem((*keys, "channels"), f"channels: {err}"))
+        return []
+    if unknown := [n for n in channels if n not in known]:
+        problems.append(file.problem((*keys, "channels"), f"channels: channel {unknown[0]} is not on the board {board.path.name}"))
+    if train.width.typ == 0:
+        problems.append(file.problem((*keys, "width"), "width: a pulse of 0 s is none; give its on-time"))
+    if train.repeat > 1 and (train.every is None or train.every.typ == 0):
+        problems.append(file.problem((*keys, "repeat"), 'repeat: needs "every", the time from one start to the next'))
+    if train.every is not None and train.repeat == 1:
+        problems.append(file.problem((*keys, "every"), 'every: has no effect without "repeat"'))
+    if len(channels) * train.repeat > MOST_PULSES:
+        problems.append(file.problem((*keys, "repeat"), f"repeat: more than {MOST_PULSES} pulses"))
+    if problems:
+        return []
+    every = train.every.typ if train.every else 0.0
+    stagger = train.stagger.typ if train.stagger else 0.0
+    return [
+        Pulse(channel, train.start.typ + k * every + i * stagger, train.width.typ)
+        for k in range(train.repeat)
+        for i, channel in enumerate(channels)
+    ]

@@ -1,0 +1,103 @@
+"""How does one begin? A commented starter board, and the schema of the files."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+from boardsim.board.schema import BoardFile
+from boardsim.errors import InputError
+from boardsim.firing.pattern import PatternFile
+from boardsim.report.files import write_text
+
+BOARD = """\
+# A board file. Numbers are text with a unit; a tolerance may follow ("12 mH +/- 10 %", "4700 uF -20/+50 %",
+# "5 to 45 degC"). Where you give tolerances, the worst corners are run. Everything here is a made-up example:
+# replace each figure with that of your datasheet.
+name = "my board"
+ambient = "10 to 40 degC"             # air around the board: cold windings draw more, warm ones pull in later
+
+supply = { voltage = "24 V +/- 5 %", resistance = "20 mohm", current_ceiling = "3 A" }
+cable = { gauge = "18 AWG", length = "1 m" }     # or area = "1 mm2"; out and back are counted
+bulk = { capacitance = "2200 uF +/- 20 %", esr = "60 mohm", rated = "35 V" }
+logic = { voltage = "5 V +/- 5 %" }
+
+[chain]                               # the shift registers, and how the firmware writes them
+register = "74HC595"
+count = 1
+clock = "2 MHz"
+# bit_order = "msb"                   # which bit of a byte is sent first: "msb" or "lsb"
+# first_out = "far"                   # whose byte is sent first: the "far" or the "near" register's
+# active = "high"                     # output level by which the firmware means on
+
+[coils.gate]
+resistance = "48 ohm +/- 10 %"
+at = "20 degC"                        # temperature at which the resistance is given
+inductance = "90 mH +/- 20 %"
+pull_in = "0.25 A"                    # below this it does not move
+release = "0.05 A"                    # above this it does not let go
+rise = "30 K"                         # how much warmer than the air the winding gets
+
+[channels."0-7"]                      # eight channels that are built alike
+label = "gate {n}"
+coil = "gate"
+switch = { part = "n-logic-60v", gate = "100 ohm", pulldown = "10 kohm" }
+clamp = { kind = "diode", diode = "fast-2a" }
+# outputs = "0-7"                     # register outputs they are wired to; the channel numbers if not given
+# bits = "0-7"                        # bits of the firmware's image that mean them; the outputs if not given
+
+# A part that the library does not have is described here and used by its name above:
+# [parts.my-switch]
+# kind = "n-mosfet"
+# breakdown = "55 V"
+# ...
+
+[limits]
+most_on = 4                           # channels that may be on at once
+brown_out = { voltage = "18 V", lasting = "2 ms" }   # the board fails if the coil rail is below for longer
+# [[limits.exclusive]]
+# channels = "0-1"
+# most = 1
+
+# [derating]                          # the share of each rating that you allow yourself
+# voltage = "80 %"
+# reason = "house rule"
+"""
+
+PATTERN = """\
+# A firing pattern: pulses, each on one or more channels.
+name = "first"
+
+[[pulses]]
+channels = "0-7"
+start = "5 ms"
+width = "40 ms"
+stagger = "20 ms"     # each further channel starts this much later
+repeat = 2
+every = "250 ms"      # from one start of a channel to its next
+"""
+
+
+def write_starter(folder: Path) -> tuple[Path, Path]:
+    """Write the starter board and pattern into a new folder.
+
+    Raises
+    ------
+    InputError
+        If one of the files exists already, or the folder cannot be made.
+    """
+    board, pattern = folder / "board.toml", folder / "patterns" / "first.toml"
+    for path in (board, pattern):
+        if path.exists():
+            raise InputError(f"{path}: exists already and is left as it is; name a new folder")
+    write_text(board, BOARD)
+    write_text(pattern, PATTERN)
+    return board, pattern
+
+
+def json_schema(what: str) -> dict[str, Any] | None:
+    """The JSON Schema of "board" or "pattern" files; None for any other word."""
+    model = {"board": BoardFile, "pattern": PatternFile}.get(what)
+    if model is None:
+        return None
+    return {"$schema": "https://json-schema.org/draft/2020-12/schema", **model.model_json_schema(by_alias=True)}

@@ -1,0 +1,103 @@
+"""The audit of every run: passivity, refinement, and whether points are dense enough for energies."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from boardsim.verdict.findings import AuditEntry, Finding
+from boardsim.verdict.readings import PortReading, Readings
+
+SHARE = 0.01  # of the deciding energy or reading
+POINTS = 1.5  # a repeat counts as a refinement only with this many times the points
+DECIDING = 0.5  # a reading with more margin than this decides nothing, and may move by
+FAR = 0.1  # this share, which leaves it far from deciding
+
+
+def passivity(readings: Readings, corner: str, run: str, floor: float) -> AuditEntry:
+    """No switch, clamp, coil or capacitor may give out energy that it did not have.
+
+    Parameters
+    ----------
+    readings : Readings
+    corner, run : str
+        For the entry.
+    floor : float
+        Smallest energy that can decide a finding on this board. [J]
+
+    Returns
+    -------
+    AuditEntry
+        Of the part that comes closest to its bound, or is the farthest beyond it.
+
+    Notes
+    -----
+    The total energy taken by a part, less what it stores (L i^2/2, C v^2/2), must not fall by more than its own
+    capacitances can hold plus 1 % of the energy that decides: the largest energy that a coil held. A sum over the
+    whole circuit would not do: it is zero for wrong runs as well (Tellegen's theorem). For the bulk capacitor,
+    through which the energy of all channels passes at the full rail voltage, 1 % of what passes counts.
+    """
+    scale = max(readings.pulse_energy, floor)
+
+    def bound(p: PortReading) -> float:
+        return p.holds + SHARE * (scale if p.channel is not None else max(scale, p.through))
+
+    worst = max(readings.ports, key=lambda p: p.drop / bound(p))
+    allowed = bound(worst)
+    return AuditEntry("passivity", corner, run, f"{worst.name} gave out", worst.drop, allowed, "J", worst.drop <= allowed)
+
+
+def density(readings: Readings, corner: str, run: str, floor: float) -> AuditEntry:
+    """Points must be dense enough that two ways to integrate the same energies agree.
+
+    Notes
+    -----
+    Compares the trapezoid rule with midpoint products, part by part. It says nothing about the engine's own
+    integration; passivity and refinement do that.
+    """
+    scale = max(readings.pulse_energy, floor)
+    worst = max(readings.ports, key=lambda p: p.spread / max(p.through, scale))
+    allowed = SHARE * max(worst.through, scale)
+    return AuditEntry("density", corner, run, f"{worst.name}: energy uncertain by", worst.spread, allowed, "J", worst.spread <= allowed)
+
+
+def refinement(coarse: Sequence[Finding], fine: Sequence[Finding], points: tuple[int, int], corner: str, run: str) -> AuditEntry:
+    """A repeat with at least 1.5 times the points must not move any deciding reading by 1 %.
+
+    A reading decides unless its margin is above one half; those others may move by 10 % of themselves.
+
+    Parameters
+    ----------
+    coarse, fine : sequence of Finding
+        Of the run and of its repeat.
+    points : tuple of int
+        Of the run and of its repeat.
+    """
+    if points[1] < POINTS * points[0]:
+        ratio = points[1] / points[0]
+        return AuditEntry("refinement", corner, run, "too few points in the repeat, ratio", ratio, POINTS, "1", False)
+    before = {f.key: f for f in coarse}
+    worst, allowed, subject = -1.0, SHARE, "nothing was read"
+    for f in fine:
+        old = before.pop(f.key, None)
+        moved = 1.0 if old is None else _moved(old, f)
+        bound = FAR if f.margin is not None and f.margin > DECIDING else SHARE
+        if moved / bound > worst / allowed:
+            worst, allowed, subject = moved, bound, f"{f.label}: {f.quantity} moved by"
+    if before:
+        gone = next(iter(before.values()))
+        worst, allowed, subject = 1.0, SHARE, f"{gone.label}: {gone.quantity} is gone, moved by"
+    worst = max(worst, 0.0)
+    return AuditEntry("refinement", corner, run, subject, worst * 100, allowed * 100, "%", worst <= allowed)
+
+
+def _moved(old: Finding, new: Finding) -> float:
+    """Change of a reading and of its duration, as a share of itself or, where that is more, of 5 % of its limit."""
+    share = 0.0
+    for a, b, limit in ((old.value, new.value, new.limit), (old.lasting or 0.0, new.lasting or 0.0, None)):
+        size = max(abs(b), SMALL * abs(limit or 0.0))
+        if a != b:
+            share = max(share, abs(a - b) / size if size else 1.0)
+    return share
+
+
+SMALL = 0.05  # readings below this share of their limit, such as a coil current long gone, are compared on its scale

@@ -1,0 +1,178 @@
+"""Waveforms -> readings: one pass over the blocks feeds every watch that the deck's rules and ports ask for."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import scipy.sparse
+
+from boardsim.circuit.deck import Deck
+from boardsim.engine.waves import Waves
+from boardsim.firing.schedule import Firing
+from boardsim.parts.base import (
+    BreakdownRule, CeilingRule, DipRule, MeanRule, PullInRule, ReleaseRule,
+)  # fmt: skip
+from boardsim.verdict.findings import Envelope, Floats
+from boardsim.verdict.watch import Avalanche, Avalanches, Dip, Dips, Extremes, Falls, Integrals, Samples, Slices, TimeAbove
+
+Key = tuple[int | None, str]
+
+SLICES = 1600  # across a picture; more than it has pixels
+AT_CEILING = 0.995  # share of the ceiling from which the supply counts as being at it (its bend is rounded)
+
+
+@dataclass(frozen=True)
+class PortReading:
+    """What the passivity audit found at one part. [J]"""
+
+    channel: int | None
+    name: str
+    drop: float
+    spread: float
+    through: float
+    holds: float
+
+
+@dataclass(frozen=True)
+class Readings:
+    """Everything that the rules of a deck ask of its waveforms.
+
+    Attributes
+    ----------
+    high, low : mapping of (channel, quantity) to (value, time)
+    means : mapping of (channel, quantities) to the average over the window
+    dips : list of Dip, below the level of the rail rule
+    lowest : (value, time) of the rail
+    ceiling : (time at the ceiling, since when)
+    pull_in, release : mapping of channel to (times, currents)
+    avalanches : mapping of channel to list of Avalanche
+    pulse_energy : float
+        Largest energy that a coil held. [J]
+    points : int
+    """
+
+    high: Mapping[Key, tuple[float, float]]
+    low: Mapping[Key, tuple[float, float]]
+    means: Mapping[tuple[int | None, tuple[str, ...]], float]
+    dips: tuple[Dip, ...]
+    ceiling: tuple[float, float | None]
+    pull_in: Mapping[int, tuple[Floats, Floats]]
+    release: Mapping[int, tuple[Floats, Floats]]
+    avalanches: Mapping[int, tuple[Avalanche, ...]]
+    ports: tuple[PortReading, ...]
+    pulse_energy: float
+    points: int
+    envelopes: Mapping[str, Envelope]
+
+
+class _Table:
+    """Signals of a deck as rows of a matrix over the saved vectors."""
+
+    def __init__(self, deck: Deck, names: tuple[str, ...]):
+        column = {name: i for i, name in enumerate(names)}
+        self.row = {key: i for i, key in enumerate(deck.signals)}
+        entries = [(k, self.row[key], column[v]) for key, signal in deck.signals.items() for k, v in signal]
+        data, rows, columns = zip(*entries, strict=True)
+        self.matrix = scipy.sparse.csr_matrix((data, (rows, columns)), shape=(len(self.row), len(names)))
+
+    def values(self, block: Floats) -> Floats:
+        """(signals, points)"""
+        return np.asarray(self.matrix @ block.T)
+
+
+def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
+    """Read a window's waveforms.
+
+    Parameters
+    ----------
+    waves : Waves
+        Of one run of `deck`.
+    deck : Deck
+    firing : Firing
+        For the times of switching; absolute, as are all times of the result. [s]
+    """
+    names = tuple(_ours(name) for name in waves.names)
+    table = _Table(deck, names)
+    row, start, stop = table.row, deck.window.start, deck.window.stop
+    rules = [(p.channel, p.rule) for p in deck.rules]
+
+    extremes = Extremes(len(row))
+    mean_keys = list(dict.fromkeys((c, r.quantities) for c, r in rules if isinstance(r, MeanRule)))
+    integrals = Integrals(len(mean_keys))
+    dip_rule = next((r for _, r in rules if isinstance(r, DipRule)), None)
+    dips = Dips(dip_rule.limit.value if dip_rule and dip_rule.limit.value is not None else -np.inf)
+    ceiling_rule = next((r for _, r in rules if isinstance(r, CeilingRule)), None)
+    ceiling = TimeAbove(AT_CEILING * ceiling_rule.limit.value if ceiling_rule and ceiling_rule.limit.value else np.inf)
+    pull_in = {c: Samples(_within(firing.on[c][:, 1], start, stop)) for c, r in rules if isinstance(r, PullInRule) and c is not None}
+    release = {c: Samples(_within(firing.on[c][1:, 0], start, stop)) for c, r in rules if isinstance(r, ReleaseRule) and c is not None}
+    avalanches = {c: (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None}
+    falls = Falls(len(deck.ports))
+    shown = {"rail": (None, "v_rail"), "total": (None, "i_total"), "supply": (None, "i_supply")}
+    slices = Slices(np.linspace(start, stop, SLICES + 1), len(shown))
+
+    for block in waves.blocks():
+        t = block[:, 0] + start
+        y = table.values(block)
+        extremes.feed(t, y)
+        if mean_keys:
+            integrals.feed(t, np.stack([np.prod([y[row[c, q]] for q in qs], axis=0) for c, qs in mean_keys]))
+        dips.feed(t, y[row[None, "v_rail"]])
+        ceiling.feed(t, y[row[None, "i_supply"]])
+        for samples in (pull_in, release):
+            for c, sample in samples.items():
+                sample.feed(t, y[row[c, "i_coil"]])
+        for c, (watch, rule) in avalanches.items():
+            watch.feed(t, y[row[c, rule.voltage]], y[row[c, rule.current]])
+        _feed_falls(falls, deck, row, t, y)
+        slices.feed(t, y[[row[key] for key in shown.values()]])
+
+    span = stop - start
+    coil_energy = [0.5 * p.store[1] * _largest(extremes, row[c, p.store[0]]) ** 2 for c, _, p in deck.ports if p.store and c is not None]
+    return Readings(
+        {k: (float(extremes.high[i]), float(extremes.high_at[i])) for k, i in row.items()},
+        {k: (float(extremes.low[i]), float(extremes.low_at[i])) for k, i in row.items()},
+        {k: float(integrals.total[i]) / span for i, k in enumerate(mean_keys)},
+        tuple(dips.all()), (ceiling.total, ceiling.first),
+        {c: (s.times, s.values) for c, s in pull_in.items()},
+        {c: (s.times, s.values) for c, s in release.items()},
+        {c: tuple(w.found) for c, (w, _) in avalanches.items()},
+        tuple(
+            PortReading(c, f"{label} {p.part}" if c is not None else p.part, float(falls.drop[i]), float(falls.spread[i]), float(falls.through[i]), p.holds)
+            for i, (c, label, p) in enumerate(deck.ports)
+        ),
+        max(coil_energy, default=0.0), waves.points,
+        {
+            name: Envelope(name, deck.units[key], slices.edges, slices.low[i], slices.high[i])
+            for i, (name, key) in enumerate(shown.items())
+        },
+    )  # fmt: skip
+
+
+def _ours(name: str) -> str:
+    """ngspice's name of a vector as decks save it: "l1#branch" -> "i(l1)"."""
+    return f"i({name.removesuffix('#branch')})" if name.endswith("#branch") else name
+
+
+def _within(times: Floats, start: float, stop: float) -> Floats:
+    return times[(times >= start) & (times <= stop)]
+
+
+def _largest(extremes: Extremes, i: int) -> float:
+    return float(max(abs(extremes.high[i]), abs(extremes.low[i])))
+
+
+def _feed_falls(falls: Falls, deck: Deck, row: Mapping[Key, int], t: Floats, y: Floats) -> None:
+    def voltage(i: int, channel: int | None, quantity: str) -> Floats:
+        values = y[row[channel, quantity]]
+        return values - falls.rest.setdefault((i, quantity), float(values[0])) if deck.ports[i][2].from_rest else values
+
+    pairs, stored = [], np.zeros((len(deck.ports), len(t)))
+    for i, (c, _, port) in enumerate(deck.ports):
+        pairs.append([(voltage(i, c, v), y[row[c, a]]) for v, a in port.pairs])
+        if port.store is not None:
+            stored[i] = 0.5 * port.store[1] * voltage(i, c, port.store[0]) ** 2
+    falls.feed(t, pairs, stored)
+
+

@@ -1,0 +1,140 @@
+"""Findings that need no waveform: what the register frames made of the pulses, and who is on together."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from boardsim.board.ranges import write_range
+from boardsim.board.reader import Board
+from boardsim.firing.schedule import Firing
+from boardsim.quantities import in_units
+from boardsim.verdict.findings import Finding, Floats, Verdict
+
+
+def judge_switching(board: Board, firing: Firing) -> list[Finding]:
+    """Swallowed, joined and misdirected pulses; channels on at once; exclusive groups; clock and logic rail."""
+    found = [*_swallowed(board, firing), *_joined(board, firing), *_wrong(board, firing)]
+    everyone = tuple(c.number for c in board.channels)
+    found.append(_at_once(board, firing, everyone, board.limits.most_on, "channels on at once", "board", ""))
+    for members, most, reason in board.exclusive:
+        label = f"channels {write_range(members)}"
+        found.append(_at_once(board, firing, members, most, "exclusive channels on at once", label, reason))
+    return [*found, *_register(board)]
+
+
+def _plain(check: str, quantity: str, channel: int | None, label: str, value: float, limit: float, unit: str, at: float | None, sentence: str) -> Finding:
+    return Finding(
+        check, quantity, "register chain", channel, label, value, limit, unit, -1.0, at, "misbehave", "fail", sentence,
+        source="a pulse must be fired as commanded",
+    )  # fmt: skip
+
+
+def _swallowed(board: Board, firing: Firing) -> list[Finding]:
+    lost = [m for m in firing.moved if m.swallowed]
+    found = []
+    for channel in dict.fromkeys(m.pulse.channel for m in lost):
+        mine = [m for m in lost if m.pulse.channel == channel]
+        p, label = mine[0].pulse, board.channel(channel).label
+        found.append(_plain(
+            "lost-pulse", "width of a pulse", channel, label, p.width, firing.frame_time, "s", p.start,
+            f"{label}: its pulse of {in_units(p.width, 's')} at {in_units(p.start, 's', 4)} is lost: both edges fall on one latch, "
+            f"since a register frame takes {in_units(firing.frame_time, 's')} ({len(mine)} such pulses on this channel); "
+            "try: a longer pulse or a faster clock",
+        ))  # fmt: skip
+    return found
+
+
+def _joined(board: Board, firing: Firing) -> list[Finding]:
+    found = []
+    for channel in dict.fromkeys(p.channel for p in firing.merged):
+        mine = [p for p in firing.merged if p.channel == channel]
+        label = board.channel(channel).label
+        found.append(_plain(
+            "overlap", "pulses commanded while on", channel, label, float(len(mine)), 0.0, "1", mine[0].start,
+            f"{label}: fired again at {in_units(mine[0].start, 's', 4)} while still commanded on: the pulses run together "
+            f"({len(mine)} times); try: a later start or a shorter pulse",
+        ))  # fmt: skip
+    return found
+
+
+def _wrong(board: Board, firing: Firing) -> list[Finding]:
+    found = []
+    for w in firing.wrong:
+        channel = board.channel(w.channel)
+        did = "stays off although it is commanded on" if w.commanded else "is on although nothing commands it"
+        found.append(_plain(
+            "wrong-output", "output against command", w.channel, channel.label, 1.0, 0.0, "1", w.at,
+            f"{channel.label} (output {channel.output}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, active "
+            "level and the map from channel to output and bit do not fit together; try: bit_order, first_out, active, outputs, bits",
+        ))  # fmt: skip
+    return found
+
+
+def most_together(firing: Firing, channels: tuple[int, ...]) -> tuple[int, float]:
+    """The largest number of these channels on at one time, and since when. [s]"""
+    spans: list[Floats] = [firing.on[c] for c in channels if len(firing.on[c])]
+    if not spans:
+        return 0, 0.0
+    rows = np.concatenate(spans)
+    times = np.concatenate([rows[:, 1], rows[:, 0]])
+    steps = np.concatenate([np.full(len(rows), -1), np.full(len(rows), 1)])
+    order = np.lexsort((steps, times))  # at equal times off comes before on: they change on one latch
+    counts = np.cumsum(steps[order])
+    k = int(counts.argmax())
+    return int(counts[k]), float(times[order][k])
+
+
+def _at_once(board: Board, firing: Firing, channels: tuple[int, ...], most: int | None, quantity: str, label: str, reason: str) -> Finding:
+    count, at = most_together(firing, channels)
+    margin = None if most is None else (most - count) / most
+    verdict: Verdict = "limit-missing" if margin is None else "fail" if margin < 0 else "pass"
+    on = write_range([c for c in firing.channels_on(at) if c in channels]) or "none"
+    sentence = f"{label}: up to {count} channels are on at once, first at {in_units(at, 's', 4)} (channels {on})"
+    if most is None:
+        sentence += "; how many may be was not given ([limits] most_on)"
+    else:
+        sentence += f"; {most} may be" + (f" ({reason})" if reason else "")
+        if count > most:
+            sentence += "; try: a stagger"
+    return Finding(
+        "overlap", quantity, "firing", None, label, float(count), None if most is None else float(most), "1", margin, at, "misbehave",
+        verdict, sentence, source=f"given: {board.path.name}" if most is not None else "",
+    )  # fmt: skip
+
+
+def _register(board: Board) -> list[Finding]:
+    """Clock and logic rail against what the register stands."""
+    chain, register = board.chain, board.chain.register_
+    name = register.title or "register"
+    clock = register.highest_clock
+    margin = None if clock is None else (clock.typ - chain.clock.max) / clock.typ
+    found = [Finding(
+        "chain", "clock", name, None, "chain", chain.clock.max, clock.typ if clock else None, "Hz", margin, None, "misbehave",
+        _of(board, margin),
+        f"the chain is clocked at {in_units(chain.clock.max, 'Hz')}; "
+        + (f"one {name} alone follows up to {in_units(clock.typ, 'Hz')}" if clock else f"no highest clock of {name} was given"),
+        source=str(clock.origin) if clock else "",
+    )]  # fmt: skip
+    high, low = register.supply_high, register.supply_low
+    rail = board.logic.voltage
+    for value, limit, quantity, consequence in (
+        (rail.max, high, "highest logic rail", "destroy"),
+        (rail.min, low, "lowest logic rail", "misbehave"),
+    ):
+        upper = limit is high
+        spare = (limit.typ - value) / limit.typ if upper else (value - limit.typ) / limit.typ
+        found.append(Finding(
+            "logic-rail", quantity, name, None, "chain", value, limit.typ, "V", spare, None, consequence, _of(board, spare),  # type: ignore[arg-type]
+            f"the logic rail is {'up to' if upper else 'down to'} {in_units(value, 'V')}; {name} works "
+            f"{'up to' if upper else 'from'} {in_units(limit.typ, 'V')}",
+            source=str(limit.origin),
+        ))  # fmt: skip
+    return found
+
+
+def _of(board: Board, margin: float | None) -> Verdict:
+    if margin is None:
+        return "limit-missing"
+    if margin < 0:
+        return "fail"
+    return "tight" if margin < board.limits.guard_band.typ else "pass"
