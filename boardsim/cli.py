@@ -27,8 +27,13 @@ app = typer.Typer(
     help="Checks boards that fire many coils through shift registers: a firing pattern against the limits of every part.",
 )
 
-BoardFile = Annotated[Path, typer.Argument(metavar="BOARD", help="board file, such as netlists/fruit-sorter/board.toml")]
-PatternFile = Annotated[Path, typer.Argument(metavar="PATTERN", help="pattern file, such as netlists/fruit-sorter/patterns/steady.toml")]
+BoardFile = Annotated[
+    Path, typer.Argument(metavar="BOARD", help="board file, such as netlists/fruit-sorter/board.toml")
+]
+PatternFile = Annotated[
+    Path,
+    typer.Argument(metavar="PATTERN", help="pattern file, such as netlists/fruit-sorter/patterns/steady.toml"),
+]
 
 
 @app.command(
@@ -37,7 +42,10 @@ PatternFile = Annotated[Path, typer.Argument(metavar="PATTERN", help="pattern fi
 def fire(
     board: BoardFile,
     pattern: PatternFile,
-    out: Annotated[Path | None, typer.Option(metavar="DIR", help="folder for the results; out/BOARD-PATTERN if not given")] = None,
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="folder for the results; out/BOARD-PATTERN if not given"),
+    ] = None,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
 ) -> None:
@@ -66,7 +74,9 @@ def fire(
 def deck(
     board: BoardFile,
     pattern: PatternFile,
-    to: Annotated[Path | None, typer.Option(metavar="FILE", help="where to write it; standard output if not given")] = None,
+    to: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="where to write it; standard output if not given")
+    ] = None,
     corner: Annotated[int, typer.Option(metavar="N", min=1, help="which of the board's corners, counted from 1")] = 1,
 ) -> None:
     """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
@@ -104,7 +114,9 @@ def schema(
     typer.echo(json.dumps(found, indent=2, ensure_ascii=False))
 
 
-@app.command(epilog="Example: boardsim begin my-board && boardsim fire my-board/board.toml my-board/patterns/first.toml")
+@app.command(
+    epilog="Example: boardsim begin my-board && boardsim fire my-board/board.toml my-board/patterns/first.toml"
+)
 def begin(
     folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="new folder for the board")],
 ) -> None:
@@ -129,7 +141,9 @@ def _usable(folder: Path) -> None:
     try:
         folder.mkdir(parents=True, exist_ok=True)
     except OSError as err:
-        raise InputError(f"{folder}: cannot be used as a folder for results: {err.strerror or err}; choose another with --out") from err
+        raise InputError(
+            f"{folder}: cannot be used as a folder for results: {err.strerror or err}; choose another with --out"
+        ) from err
     if not os.access(folder, os.W_OK | os.X_OK):
         raise InputError(f"{folder}: cannot be written to; choose another folder with --out")
 
@@ -141,7 +155,12 @@ def _progress(what: str) -> Iterator[Callable[[float], None]]:
     from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
 
     console = Console(stderr=True)
-    columns: tuple[Any, ...] = (TextColumn("{task.description}"), BarColumn(), TextColumn("{task.percentage:>3.0f} %"), TimeElapsedColumn())
+    columns: tuple[Any, ...] = (
+        TextColumn("{task.description}"),
+        BarColumn(),
+        TextColumn("{task.percentage:>3.0f} %"),
+        TimeElapsedColumn(),
+    )
     with Progress(*columns, console=console, transient=True, disable=not console.is_terminal) as bar:
         task = bar.add_task(what, total=1.0)
         yield lambda share: bar.update(task, completed=share)

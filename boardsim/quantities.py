@@ -88,7 +88,9 @@ class Dimension:
     def check(self, value: float, text: str) -> None:
         """Raise QuantityError if a value is outside what the field can mean."""
         if value < 0 and self.low >= 0:
-            raise QuantityError(f"{text!r} is negative; {self.named} must be {'0 or more' if self.zero else 'positive'}")
+            raise QuantityError(
+                f"{text!r} is negative; {self.named} must be {'0 or more' if self.zero else 'positive'}"
+            )
         if value == 0 and self.zero:
             return
         if not (self.low <= value <= self.high) or (value == 0 and self.low >= 0):
@@ -111,8 +113,14 @@ class Dimension:
             read, serialization=core_schema.plain_serializer_function_ser_schema(str)
         )
 
-    def __get_pydantic_json_schema__(self, schema: core_schema.CoreSchema, handler: GetJsonSchemaHandler) -> dict[str, Any]:
-        return {"type": "string", "examples": [self.example], "description": f"{self.name} in {self.unit}, such as {self.example!r}"}
+    def __get_pydantic_json_schema__(
+        self, schema: core_schema.CoreSchema, handler: GetJsonSchemaHandler
+    ) -> dict[str, Any]:
+        return {
+            "type": "string",
+            "examples": [self.example],
+            "description": f"{self.name} in {self.unit}, such as {self.example!r}",
+        }
 
 
 RESISTANCE = Dimension("resistance", "ohm", "16 ohm +/- 10 %", 1e-6, 1e12, zero=True)
@@ -133,9 +141,19 @@ SHARE = Dimension("share", "1", "80 %", 1e-6, 1.0, scale_letters=False)
 
 # IEC 60062 writes the scale letter in place of the decimal point; R stands for x1.
 _SCALE = {
-    "f": 1e-15, "p": 1e-12, "n": 1e-9, "u": 1e-6, "µ": 1e-6, "μ": 1e-6, "m": 1e-3,
-    "R": 1.0, "k": 1e3, "K": 1e3, "M": 1e6, "G": 1e9,
-}  # fmt: skip
+    "f": 1e-15,
+    "p": 1e-12,
+    "n": 1e-9,
+    "u": 1e-6,
+    "µ": 1e-6,
+    "μ": 1e-6,
+    "m": 1e-3,
+    "R": 1.0,
+    "k": 1e3,
+    "K": 1e3,
+    "M": 1e6,
+    "G": 1e9,
+}
 _NUMBER = r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?"
 _UNIT = r"[A-Za-zµμΩ°%]+[23]?(?:/[A-Za-zµμΩ°]+[23]?)?"
 _VALUE = re.compile(rf"({_NUMBER})\s*({_UNIT})?")
@@ -180,7 +198,9 @@ def _factor(unit: str, dimension: Dimension) -> tuple[float, float] | None:
         zero = registry.Quantity(0.0, parsed).to(target).magnitude
         one = registry.Quantity(1.0, parsed).to(target).magnitude
     except (pint.errors.PintError, AttributeError, TypeError) as err:
-        raise QuantityError(f"unit {unit!r} is not known; write {dimension.named} such as {dimension.example!r}") from err
+        raise QuantityError(
+            f"unit {unit!r} is not known; write {dimension.named} such as {dimension.example!r}"
+        ) from err
     return float(one - zero), float(zero)
 
 

@@ -33,7 +33,9 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
 
 def nominal_only(board: Board) -> tuple[str, ...]:
     """Names of the numbers that had no tolerance and so were run at their nominal value."""
-    names = [_INPUT_NAMES.get(key, key) for key, found in _varied(board).items() if not all(q.toleranced for q in found)]
+    names = [
+        _INPUT_NAMES.get(key, key) for key, found in _varied(board).items() if not all(q.toleranced for q in found)
+    ]
     return (*names, *(() if board.around else ("winding temperature",)))
 
 
@@ -50,11 +52,19 @@ def corners(board: Board) -> tuple[Corner, ...]:
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max"}
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "logic": "min"}
     wanted = (
-        Corner("supply high, coils cold, clamps high", {**strong, "inductance": "min", "clamp_voltage": "max", "breakdown": "max"}, "cold"),
-        Corner("supply high, coils cold, clamps low", {**strong, "inductance": "max", "clamp_voltage": "min", "breakdown": "min"}, "cold"),
+        Corner(
+            "supply high, coils cold, clamps high",
+            {**strong, "inductance": "min", "clamp_voltage": "max", "breakdown": "max"},
+            "cold",
+        ),
+        Corner(
+            "supply high, coils cold, clamps low",
+            {**strong, "inductance": "max", "clamp_voltage": "min", "breakdown": "min"},
+            "cold",
+        ),
         Corner("supply low, coils hot", {**weak, "coil_resistance": "max", "inductance": "max"}, "hot"),
         Corner("supply low, coils cold", {**weak, "coil_resistance": "min", "inductance": "min"}, "cold"),
-    )  # fmt: skip
+    )
     has_tolerance = {key: any(q.toleranced for q in found) for key, found in _varied(board).items()}
     distinct: dict[tuple[object, ...], Corner] = {}
     for corner in wanted:

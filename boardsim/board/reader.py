@@ -112,11 +112,19 @@ class _Shelf:
                 record = {k: v for k, v in record.items() if k not in ("source", "sources")}
             if record is None:
                 same = [n for n, r in {**records(), **mine}.items() if r.get("kind", "coil") == kind]
-                raise PydanticCustomError("said", "{said}", {"said": (
-                    f'{kind} "{name}" is neither in this file nor in the library{nearest(name, same)}; known: {", ".join(sorted(same)) or "none"}'
-                )})  # fmt: skip
+                raise PydanticCustomError(
+                    "said",
+                    "{said}",
+                    {
+                        "said": (
+                            f'{kind} "{name}" is neither in this file nor in the library{nearest(name, same)}; known: {", ".join(sorted(same)) or "none"}'
+                        )
+                    },
+                )
             if record.get("kind", "coil" if cls.role == "coil" else kind) != kind:
-                raise PydanticCustomError("said", "{said}", {"said": f'"{name}" is a {record["kind"]}; a {kind} is needed here'})
+                raise PydanticCustomError(
+                    "said", "{said}", {"said": f'"{name}" is a {record["kind"]}; a {kind} is needed here'}
+                )
             try:
                 self.found[cls, name] = cls.model_validate({"title": name, **record}, context=context)
             except ValidationError as err:
@@ -181,11 +189,29 @@ def read_board(path: Path) -> Board:
     if board.ambient is not None:
         around = Surroundings(board.ambient.min, board.ambient.max)
     else:
-        assumed += (Assumption("board", "ambient", "not given", "windings and cable are taken at the temperature of their given resistance"),)
+        assumed += (
+            Assumption(
+                "board",
+                "ambient",
+                "not given",
+                "windings and cable are taken at the temperature of their given resistance",
+            ),
+        )
     return Board(
-        path, board.name or path.resolve().parent.name, board.supply, board.cable, board.bulk, board.logic, board.chain,
-        tuple(sorted(channels, key=lambda c: c.number)), board.limits, tuple(exclusive), board.derating, around, assumed,
-    )  # fmt: skip
+        path,
+        board.name or path.resolve().parent.name,
+        board.supply,
+        board.cable,
+        board.bulk,
+        board.logic,
+        board.chain,
+        tuple(sorted(channels, key=lambda c: c.number)),
+        board.limits,
+        tuple(exclusive),
+        board.derating,
+        around,
+        assumed,
+    )
 
 
 def _range(text: str, file: TomlFile, keys: Keys, problems: list[Problem]) -> tuple[int, ...]:
@@ -209,7 +235,12 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
             if given is not None:
                 columns[column] = _range(given, file, (*keys, column), problems)
                 if len(columns[column]) not in (0, len(numbers)):
-                    problems.append(file.problem((*keys, column), f"names {len(columns[column])} {column} for {len(numbers)} channels"))
+                    problems.append(
+                        file.problem(
+                            (*keys, column),
+                            f"names {len(columns[column])} {column} for {len(numbers)} channels",
+                        )
+                    )
             elif column == "bits":
                 columns[column] = columns["outputs"]
         if any(len(c) != len(numbers) for c in columns.values()):
@@ -217,13 +248,22 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
         for what, values in (("channel", numbers), ("output", columns["outputs"]), ("bit", columns["bits"])):
             if twice := [n for n in values if n in claimed[what]]:
                 other = claimed[what][twice[0]]
-                problems.append(file.problem(keys, f'{what} {write_range(twice)} is already taken by channels."{other}"'))
+                problems.append(
+                    file.problem(keys, f'{what} {write_range(twice)} is already taken by channels."{other}"')
+                )
             claimed[what].update(dict.fromkeys(values, text))
             if what != "channel" and (beyond := [n for n in values if n >= board.chain.outputs]):
-                problems.append(file.problem(keys, (
-                    f"{what} {write_range(beyond)} is outside the chain: {board.chain.count} registers have outputs 0-{board.chain.outputs - 1}"
-                )))  # fmt: skip
-        for number, output, bit, n in zip(numbers, columns["outputs"], columns["bits"], columns["numbers"], strict=True):
+                problems.append(
+                    file.problem(
+                        keys,
+                        (
+                            f"{what} {write_range(beyond)} is outside the chain: {board.chain.count} registers have outputs 0-{board.chain.outputs - 1}"
+                        ),
+                    )
+                )
+        for number, output, bit, n in zip(
+            numbers, columns["outputs"], columns["bits"], columns["numbers"], strict=True
+        ):
             channels.append(_channel(group, number, output, bit, n))
     return channels
 
@@ -252,12 +292,8 @@ def _keys_in(data: Any, loc: tuple[int | str, ...]) -> Keys:
     """The part of pydantic's location that names keys of the file (it also names classes and kinds)."""
     keys: Keys = ()
     for step in loc:
-        if isinstance(data, dict) and step in data:
-            data = data[step]
-            keys = (*keys, step)
-        elif isinstance(data, list) and isinstance(step, int) and step < len(data):
+        inside = step in data if isinstance(data, dict) else isinstance(data, list) and step in range(len(data))
+        if inside:
             data = data[step]
             keys = (*keys, step)
     return keys
-
-

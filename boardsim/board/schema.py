@@ -46,9 +46,13 @@ class Chain(Record):
     count: Annotated[int, Field(ge=1, le=64)]
     clock: Annotated[Quantity, FREQUENCY]
     bit_order: Literal["msb", "lsb"] = Field("msb", description="which bit of each byte is sent first")
-    first_out: Literal["far", "near"] = Field("far", description="whose byte is sent first: of the farthest or the nearest register")
+    first_out: Literal["far", "near"] = Field(
+        "far", description="whose byte is sent first: of the farthest or the nearest register"
+    )
     active: Literal["high", "low"] = Field("high", description="output level by which the firmware means on")
-    latch_time: Annotated[Quantity, TIME] = assume("500 ns", TIME, "from the last clock edge to the latch edge, a pin toggled by firmware, from memory")
+    latch_time: Annotated[Quantity, TIME] = assume(
+        "500 ns", TIME, "from the last clock edge to the latch edge, a pin toggled by firmware, from memory"
+    )
 
     @property
     def outputs(self) -> int:
@@ -60,10 +64,16 @@ class ChannelRange(Record):
     """Channels that are built alike."""
 
     coil: named_part(Coil)  # type: ignore[valid-type]
-    switch: Annotated[AnySwitch, BeforeValidator(_with_kind)]
-    clamp: AnyClamp
-    outputs: str | None = Field(None, description="register outputs that the channels are wired to, in order; the channel numbers if absent")
-    bits: str | None = Field(None, description="bits of the firmware's image that mean the channels, in order; the outputs if absent")
+    switch: Annotated[AnySwitch, BeforeValidator(_with_kind)]  # type: ignore[valid-type]
+    clamp: AnyClamp  # type: ignore[valid-type]
+    outputs: str | None = Field(
+        None,
+        description="register outputs that the channels are wired to, in order; the channel numbers if absent",
+    )
+    bits: str | None = Field(
+        None,
+        description="bits of the firmware's image that mean the channels, in order; the outputs if absent",
+    )
     label: Name = Field("channel {n}", description="name for reports; {n} is the channel's number")
     numbers: str | None = Field(None, description="numbers for {n}, in order; the channel numbers if absent")
 
@@ -113,7 +123,7 @@ class BoardFile(Record):
     logic: Logic
     chain: Chain
     coils: dict[Name, Coil] = Field(default_factory=dict)
-    parts: dict[Name, AnyComponent] = Field(default_factory=dict)
+    parts: dict[Name, AnyComponent] = Field(default_factory=dict)  # type: ignore[valid-type]
     channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]
     limits: Limits = Limits()
     derating: Deratings = Deratings()

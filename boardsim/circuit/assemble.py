@@ -17,7 +17,9 @@ def windows(board: Board, firing: Firing) -> tuple[Window, ...]:
     return (Window(0.0, firing.duration, tuple(c.number for c in board.channels)),)
 
 
-def gate_points(levels: tuple[tuple[float, bool], ...], window: Window, volts: float, edge: float) -> tuple[tuple[float, float], ...]:
+def gate_points(
+    levels: tuple[tuple[float, bool], ...], window: Window, volts: float, edge: float
+) -> tuple[tuple[float, float], ...]:
     """A register output as straight lines.
 
     Parameters
@@ -85,12 +87,23 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> De
     parts.rules.append(PlacedRule(_rail_rule(board), None, "coil rail", "board"))
     vectors = dict.fromkeys(name for signal in parts.signals.values() for _, name in signal)
     return Deck(
-        parts.builder.netlist(), window, corner, tuple(vectors), parts.signals, parts.units, tuple(parts.ports), tuple(parts.rules),
-        tuple(parts.assumptions), _measures(parts.signals), parts.hints,
-    )  # fmt: skip
+        parts.builder.netlist(),
+        window,
+        corner,
+        tuple(vectors),
+        parts.signals,
+        parts.units,
+        tuple(parts.ports),
+        tuple(parts.rules),
+        tuple(parts.assumptions),
+        _measures(parts.signals),
+        parts.hints,
+    )
 
 
-def _add_channel(parts: _Assembly, board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> None:
+def _add_channel(
+    parts: _Assembly, board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel
+) -> None:
     k, name, label = channel.number, f"c{channel.number}", channel.label
     register = board.chain.register_
     points = gate_points(firing.levels[channel.output], window, board.logic.level(corner), register.output_edge.typ)
@@ -106,12 +119,24 @@ def _rail_rule(board: Board) -> Rule:
     brown_out = board.limits.brown_out
     if brown_out is None:
         return DipRule("rail-sag", "v_rail", Limit(None, "V", None, "", "brown-out level"), 0.0, "coil rail")
-    return DipRule("rail-sag", "v_rail", Limit.of(brown_out.voltage, "brown-out level", "V", None), brown_out.lasting.typ, "coil rail")
+    return DipRule(
+        "rail-sag",
+        "v_rail",
+        Limit.of(brown_out.voltage, "brown-out level", "V", None),
+        brown_out.lasting.typ,
+        "coil rail",
+    )
 
 
 def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
     """The readings that plain ngspice can print by itself: extremes of single vectors."""
-    wanted = {"v_rail": ("MIN", "MAX"), "i_supply": ("MAX",), "v_ds": ("MAX",), "i_d": ("MAX",), "v_gs": ("MAX",)}
+    wanted = {
+        "v_rail": ("MIN", "MAX"),
+        "i_supply": ("MAX",),
+        "v_ds": ("MAX",),
+        "i_d": ("MAX",),
+        "v_gs": ("MAX",),
+    }
     lines = []
     for (channel, quantity), signal in signals.items():
         if quantity in wanted and len(signal) == 1 and signal[0][0] == 1.0:

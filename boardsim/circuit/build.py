@@ -8,8 +8,17 @@ from PySpice.Spice.ElementParameter import ModelPositionalParameter
 from PySpice.Spice.Netlist import Circuit, FixedPinElement
 
 from boardsim.parts.base import (
-    Ammeter, Capacitor, CurrentLaw, Drive, Element, Inductor, Junction, Model, PowerMosfet, Resistor,
-)  # fmt: skip
+    Ammeter,
+    Capacitor,
+    CurrentLaw,
+    Drive,
+    Element,
+    Inductor,
+    Junction,
+    Model,
+    PowerMosfet,
+    Resistor,
+)
 
 TITLE = "boardsim deck"
 

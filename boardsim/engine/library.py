@@ -76,7 +76,7 @@ class Ngspice(NgSpiceShared):  # type: ignore[misc]  # PySpice has no types
 
     def _load_library(self, verbose: bool) -> None:
         super()._load_library(verbose)
-        self._ngspice_shared = _WithoutInitData(self._ngspice_shared)
+        self._ngspice_shared: Any = _WithoutInitData(self._ngspice_shared)
 
     @staticmethod
     def _send_char(message_c: Any, ngspice_id: int, user_data: Any) -> int:

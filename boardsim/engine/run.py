@@ -18,7 +18,14 @@ from typing import IO, Any
 
 from boardsim.circuit.deck import Deck, Settings
 from boardsim.engine.waves import Waves, read_waves
-from boardsim.errors import BoardsimError, DeckRejected, EngineCrash, EngineMissing, EngineTimeout, NoConvergence
+from boardsim.errors import (
+    BoardsimError,
+    DeckRejected,
+    EngineCrash,
+    EngineMissing,
+    EngineTimeout,
+    NoConvergence,
+)
 
 DEFAULT_TIME_LIMIT = 900.0  # [s] per run
 _STALL = "ngspice made no progress"
@@ -75,7 +82,9 @@ class Engine:
         EngineCrash, EngineTimeout, DeckRejected, NoConvergence
             If the run came to nothing; deck and log are kept and named.
         """
-        with self.run_text(deck.text(settings, measures=False), deck.window.stop - deck.window.start, progress) as waves:
+        with self.run_text(
+            deck.text(settings, measures=False), deck.window.stop - deck.window.start, progress
+        ) as waves:
             yield waves
 
     @contextlib.contextmanager
@@ -127,9 +136,14 @@ class Engine:
         self._answers = queue.Queue()
         try:
             self._process = subprocess.Popen(
-                self.command, cwd=self.folder, stdin=subprocess.PIPE, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL,
-                text=True, start_new_session=True,
-            )  # fmt: skip
+                self.command,
+                cwd=self.folder,
+                stdin=subprocess.PIPE,
+                stdout=subprocess.PIPE,
+                stderr=subprocess.DEVNULL,
+                text=True,
+                start_new_session=True,
+            )
         except OSError as err:
             raise EngineMissing(f"the engine's worker cannot be started: {err}") from err
         threading.Thread(target=_forward, args=(self._process.stdout, self._answers), daemon=True).start()
@@ -167,7 +181,9 @@ class Engine:
             self._process.wait()
             self._process = None
 
-    def _failure(self, kind: type[EngineCrash | EngineTimeout | NoConvergence | DeckRejected], text: str, deck: Path) -> BoardsimError:
+    def _failure(
+        self, kind: type[EngineCrash | EngineTimeout | NoConvergence | DeckRejected], text: str, deck: Path
+    ) -> BoardsimError:
         """The error for a failed run, with deck and log copied to where the user finds them."""
         self.keep.mkdir(parents=True, exist_ok=True)
         kept_deck, kept_log = self.keep / "failed.cir", self.keep / "failed.log"

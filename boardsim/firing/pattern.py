@@ -83,7 +83,10 @@ def read_pattern(path: Path, board: Board) -> Pattern:
         last = max(pulses, key=lambda p: p.stop)
         if last.stop > duration:
             problems.append(
-                file.problem(("duration",), f"duration: {duration:g} s ends before the last pulse does, at {last.stop:g} s")
+                file.problem(
+                    ("duration",),
+                    f"duration: {duration:g} s ends before the last pulse does, at {last.stop:g} s",
+                )
             )
     if problems:
         raise InputError(problems)
@@ -99,7 +102,9 @@ def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problem
         problems.append(file.problem((*keys, "channels"), f"channels: {err}"))
         return []
     if unknown := [n for n in channels if n not in known]:
-        problems.append(file.problem((*keys, "channels"), f"channels: channel {unknown[0]} is not on the board {board.path.name}"))
+        problems.append(
+            file.problem((*keys, "channels"), f"channels: channel {unknown[0]} is not on the board {board.path.name}")
+        )
     if train.width.typ == 0:
         problems.append(file.problem((*keys, "width"), "width: a pulse of 0 s is none; give its on-time"))
     if train.repeat > 1 and (train.every is None or train.every.typ == 0):

@@ -102,10 +102,10 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     while i < len(asked):
         start = max(asked[i][0], free)
         while i < len(asked) and asked[i][0] <= start:
-            at, channel, on = asked[i]
-            wanted[channel] = on
+            at, channel, turn_on = asked[i]
+            wanted[channel] = turn_on
             mask = 1 << bit_of[channel]
-            image = image | mask if on else image & ~mask
+            image = image | mask if turn_on else image & ~mask
             latched[channel, at] = start + spent + delay
             i += 1
         free = start + spent
@@ -128,7 +128,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     on = {c.number: _spans(levels[c.output], active[c.output], duration) for c in board.channels}
     return Firing(
         duration, {o: tuple(v) for o, v in levels.items()}, on, moved, merged, tuple(wrong.values()), frames, spent
-    )  # fmt: skip
+    )
 
 
 def _changes(pattern: Pattern) -> tuple[list[tuple[float, int, bool]], tuple[Pulse, ...]]:
@@ -146,7 +146,14 @@ def _changes(pattern: Pattern) -> tuple[list[tuple[float, int, bool]], tuple[Pul
     return sorted(changes, key=lambda e: (e[0], e[2], e[1])), tuple(merged)
 
 
-def _compare(state: ChainState, wanted: dict[int, bool], board: Board, at: float, active: dict[int, bool], wrong: dict[int, WrongOutput]) -> None:
+def _compare(
+    state: ChainState,
+    wanted: dict[int, bool],
+    board: Board,
+    at: float,
+    active: dict[int, bool],
+    wrong: dict[int, WrongOutput],
+) -> None:
     """Hold what the outputs do against what the pattern meant for the coil on each of them."""
     for c in board.channels:
         on = bool(state.storage >> c.output & 1) == active[c.output]

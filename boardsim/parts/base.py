@@ -12,7 +12,15 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Annotated, Any, ClassVar, Literal
 
-from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, ValidationError, ValidationInfo, model_validator
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    ValidationError,
+    ValidationInfo,
+    model_validator,
+)
 from pydantic_core import InitErrorDetails, PydanticCustomError
 
 from boardsim.quantities import Bound, Quantity
@@ -71,9 +79,7 @@ def _reworded(error: Any, known: list[str]) -> InitErrorDetails:
     elif kind in ("string_type", "tuple_type", "list_type"):
         what = "text in quotes" if kind == "string_type" else "a list in [ ]"
         said = f'"{key}" must be {what}; found {found!r}'
-    return InitErrorDetails(
-        type=PydanticCustomError("said", "{said}", {"said": said}), loc=loc, input=found
-    )
+    return InitErrorDetails(type=PydanticCustomError("said", "{said}", {"said": said}), loc=loc, input=found)
 
 
 def _safe(text: str) -> str:
@@ -300,7 +306,9 @@ class Limit:
     name: str
 
     @staticmethod
-    def of(quantity: Quantity | None, name: str, unit: str, derating: Derating | None, value: float | None = None) -> Limit:
+    def of(
+        quantity: Quantity | None, name: str, unit: str, derating: Derating | None, value: float | None = None
+    ) -> Limit:
         """The limit that a field holds; `value` where not the typical value counts."""
         if quantity is None:
             return Limit(None, unit, derating, "", name)
@@ -457,5 +465,7 @@ class Surroundings:
 def listed(part: str, **quantities: Quantity) -> tuple[Assumption, ...]:
     """The assumptions among these quantities."""
     return tuple(
-        Assumption(part, name.replace("_", " "), str(q), q.origin.source) for name, q in quantities.items() if q.assumed()
+        Assumption(part, name.replace("_", " "), str(q), q.origin.source)
+        for name, q in quantities.items()
+        if q.assumed()
     )

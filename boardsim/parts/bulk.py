@@ -5,9 +5,23 @@ from __future__ import annotations
 from typing import Annotated, ClassVar, Literal
 
 from boardsim.parts.base import (
-    GROUND, Capacitor, Corner, Inductor, Limit, Part, PeakRule, Port, Probe, Resistor, Stamp, current, listed, plus,
-    scaled, voltage,
-)  # fmt: skip
+    GROUND,
+    Capacitor,
+    Corner,
+    Inductor,
+    Limit,
+    Part,
+    PeakRule,
+    Port,
+    Probe,
+    Resistor,
+    Stamp,
+    current,
+    listed,
+    plus,
+    scaled,
+    voltage,
+)
 from boardsim.quantities import CAPACITANCE, INDUCTANCE, RESISTANCE, VOLTAGE, Quantity, assume
 
 _MIN_ESR = 1e-4  # [ohm], keeps the branch resistive where 0 ohm was given
@@ -54,9 +68,15 @@ class Bulk(Part):
             ports=(Port("bulk capacitor", (("v_bulk_port", "i_bulk"),), store=("v_bulk_c", c), from_rest=True),),
             rules=(
                 PeakRule(
-                    "overvoltage", "v_rail", Limit.of(self.rated, "rated voltage", "V", "voltage"), "destroy",
-                    "voltage across the bulk capacitor", "choose a higher rated voltage, or let the clamps return less to the rail",
+                    "overvoltage",
+                    "v_rail",
+                    Limit.of(self.rated, "rated voltage", "V", "voltage"),
+                    "destroy",
+                    "voltage across the bulk capacitor",
+                    "choose a higher rated voltage, or let the clamps return less to the rail",
                 ),
             ),
-            assumptions=listed("bulk capacitor", series_inductance=self.esl, loss_across_series_inductance=self.esl_loss),
-        )  # fmt: skip
+            assumptions=listed(
+                "bulk capacitor", series_inductance=self.esl, loss_across_series_inductance=self.esl_loss
+            ),
+        )

@@ -55,7 +55,9 @@ class Cable(Part):
     def stamp(self, near: str, far: str, corner: Corner, around: Surroundings | None) -> Stamp:
         """The cable from the supply's node `near` to the board's node `far`; the way back is folded into it."""
         spacing = self.spacing or assume(
-            f"{2 * self.diameter:.3g} m", LENGTH, "two conductors side by side, insulation half a diameter, from memory"
+            f"{2 * self.diameter:.3g} m",
+            LENGTH,
+            "two conductors side by side, insulation half a diameter, from memory",
         )
         t = T_20C
         if around is not None:

@@ -5,13 +5,35 @@ from __future__ import annotations
 from typing import Annotated, ClassVar, Literal
 
 from boardsim.parts.base import (
-    Corner, Inductor, Limit, Part, Port, Probe, PullInRule, ReleaseRule, Resistor, Stamp, Surroundings, current, listed,
-    plus, scaled, voltage,
-)  # fmt: skip
+    Corner,
+    Inductor,
+    Limit,
+    Part,
+    Port,
+    Probe,
+    PullInRule,
+    ReleaseRule,
+    Resistor,
+    Stamp,
+    Surroundings,
+    current,
+    listed,
+    plus,
+    scaled,
+    voltage,
+)
 from boardsim.parts.copper import resistance_at
 from boardsim.quantities import (
-    CURRENT, INDUCTANCE, RESISTANCE, TEMPERATURE, TEMPERATURE_RISE, Quantity, assume, computed, in_units,
-)  # fmt: skip
+    CURRENT,
+    INDUCTANCE,
+    RESISTANCE,
+    TEMPERATURE,
+    TEMPERATURE_RISE,
+    Quantity,
+    assume,
+    computed,
+    in_units,
+)
 
 _CORE_LOSS_FACTOR = 200
 
@@ -28,13 +50,17 @@ class Coil(Part):
     role: ClassVar[str] = "coil"
     kind: Literal["coil"] = "coil"
     resistance: Annotated[Quantity, RESISTANCE]
-    at: Annotated[Quantity, TEMPERATURE] = assume("20 degC", TEMPERATURE, "coil data are given at 20 degC, common practice")
+    at: Annotated[Quantity, TEMPERATURE] = assume(
+        "20 degC", TEMPERATURE, "coil data are given at 20 degC, common practice"
+    )
     inductance: Annotated[Quantity, INDUCTANCE]
     core_loss: Annotated[Quantity, RESISTANCE] | None = None
     pull_in: Annotated[Quantity, CURRENT] | None = None
     release: Annotated[Quantity, CURRENT] | None = None
     rise: Annotated[Quantity, TEMPERATURE_RISE] = assume(
-        "0 K", TEMPERATURE_RISE, "no temperature rise of the winding given: hot means the highest ambient only"
+        "0 K",
+        TEMPERATURE_RISE,
+        "no temperature rise of the winding given: hot means the highest ambient only",
     )
 
     def tolerances(self) -> dict[str, Quantity]:
@@ -53,9 +79,10 @@ class Coil(Part):
     def loss(self) -> Quantity:
         """Core-loss resistance across the inductance; assumed where it was not given. [ohm]"""
         return self.core_loss or assume(
-            f"{_CORE_LOSS_FACTOR * self.resistance.typ:.6g} ohm", RESISTANCE,
+            f"{_CORE_LOSS_FACTOR * self.resistance.typ:.6g} ohm",
+            RESISTANCE,
             f"{_CORE_LOSS_FACTOR} times the winding resistance, from memory; solid iron loses more",
-        )  # fmt: skip
+        )
 
     def stamp(self, name: str, label: str, a: str, b: str, corner: Corner, around: Surroundings | None) -> Stamp:
         """The coil from node `a` (rail) to node `b` (switch)."""
@@ -65,9 +92,11 @@ class Coil(Part):
         core = self.loss.typ
         through = plus(current(coil), scaled(1 / core, voltage(mid, b)))
         assumed = listed(
-            f"coil {label}", temperature_of_the_given_resistance=self.at, core_loss_resistance=self.loss,
+            f"coil {label}",
+            temperature_of_the_given_resistance=self.at,
+            core_loss_resistance=self.loss,
             temperature_rise_of_the_winding=self.rise,
-        )  # fmt: skip
+        )
         return Stamp(
             elements=(
                 Resistor(f"{name}_r", a, mid, self.winding(corner, around)),
@@ -81,11 +110,19 @@ class Coil(Part):
             ),
             ports=(Port("coil", (("v_coil", "i_coil"),), store=("i_l", henries)),),
             rules=(
-                PullInRule("pull-in", "i_coil", Limit.of(self.pull_in, "pull-in current", "A", None, self.pull_in and self.pull_in.max)),
-                ReleaseRule("overlap", "i_coil", Limit.of(self.release, "release current", "A", None, self.release and self.release.min)),
+                PullInRule(
+                    "pull-in",
+                    "i_coil",
+                    Limit.of(self.pull_in, "pull-in current", "A", None, self.pull_in.max if self.pull_in else None),
+                ),
+                ReleaseRule(
+                    "overlap",
+                    "i_coil",
+                    Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None),
+                ),
             ),
             assumptions=assumed,
-        )  # fmt: skip
+        )
 
     def pull_in_voltage(self, corner: Corner, around: Surroundings | None) -> Quantity | None:
         """Steady voltage across the coil that just gives the pull-in current. [V]"""

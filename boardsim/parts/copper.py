@@ -137,7 +137,7 @@ def pair_inductance(diameter: float, spacing: float, length: float) -> float:
     Examples
     --------
     >>> round(pair_inductance(1.29e-3, 2.6e-3, 1.8) * 1e6, 2)
-    1.14
+    1.13
     """
     if spacing < diameter:
         raise QuantityError(f"conductors of {diameter * 1e3:.2f} mm cannot be {spacing * 1e3:.2f} mm apart")

@@ -10,8 +10,21 @@ from pydantic import Field
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import (
-    Junction, Limit, MeanRule, Model, Part, PeakRule, Port, Probe, Record, Rule, Signal, Stamp, scaled, voltage,
-)  # fmt: skip
+    Junction,
+    Limit,
+    MeanRule,
+    Model,
+    Part,
+    PeakRule,
+    Port,
+    Probe,
+    Record,
+    Rule,
+    Signal,
+    Stamp,
+    scaled,
+    voltage,
+)
 from boardsim.quantities import CAPACITANCE, CURRENT, TIME, VOLTAGE, Quantity, assume
 
 THERMAL_VOLTAGE = 8.617333e-5 * 298.15  # [V] k T / q at 25 degC, CODATA
@@ -83,30 +96,59 @@ class Diode(Part):
     reverse_voltage: Annotated[Quantity, VOLTAGE] | None = None
     average_current: Annotated[Quantity, CURRENT] | None = None
     repetitive_current: Annotated[Quantity, CURRENT] | None = None
-    capacitance: Annotated[Quantity, CAPACITANCE] = assume("50 pF", CAPACITANCE, "rectifier of a few amperes, from memory")
+    capacitance: Annotated[Quantity, CAPACITANCE] = assume(
+        "50 pF", CAPACITANCE, "rectifier of a few amperes, from memory"
+    )
     recovery: Annotated[Quantity, TIME] = assume("100 ns", TIME, "fast rectifier, from memory")
 
     def stamp(self, name: str, label: str, anode: str, cathode: str, through: Signal) -> Stamp:
         """The diode between two nodes; `through` is the current from anode to cathode."""
         i_s, n, r_s = forward_parameters([(p.voltage.typ, p.current.typ) for p in self.forward])
         model = Model(
-            f"{name}_m", "D",
+            f"{name}_m",
+            "D",
             {"IS": i_s, "N": n, "RS": r_s, "CJO": self.capacitance.typ, "TT": self.recovery.typ, "TNOM": 25.0},
-        )  # fmt: skip
+        )
         name_of = self.title or label
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
         peak_limit = Limit.of(self.repetitive_current, "repetitive peak current", "A", "current")
         if self.repetitive_current is None:
-            peak_limit = Limit.of(self.average_current, "average current (no repetitive peak rating given)", "A", "current")
+            peak_limit = Limit.of(
+                self.average_current, "average current (no repetitive peak rating given)", "A", "current"
+            )
         rules: tuple[Rule, ...] = (
-            PeakRule("overvoltage", v_r, Limit.of(self.reverse_voltage, "repetitive reverse voltage", "V", "voltage"), "destroy",
-                     f"reverse voltage of the {label}", "choose a higher reverse voltage", part=name_of),
-            PeakRule("overcurrent", i, peak_limit, "destroy", f"peak current of the {label}", "choose a larger diode", part=name_of),
-            MeanRule("overcurrent", (i,), Limit.of(self.average_current, "average current", "A", "current"), "destroy",
-                     f"average current of the {label}", "choose a larger diode, or fire less often", part=name_of),
-        )  # fmt: skip
+            PeakRule(
+                "overvoltage",
+                v_r,
+                Limit.of(self.reverse_voltage, "repetitive reverse voltage", "V", "voltage"),
+                "destroy",
+                f"reverse voltage of the {label}",
+                "choose a higher reverse voltage",
+                part=name_of,
+            ),
+            PeakRule(
+                "overcurrent",
+                i,
+                peak_limit,
+                "destroy",
+                f"peak current of the {label}",
+                "choose a larger diode",
+                part=name_of,
+            ),
+            MeanRule(
+                "overcurrent",
+                (i,),
+                Limit.of(self.average_current, "average current", "A", "current"),
+                "destroy",
+                f"average current of the {label}",
+                "choose a larger diode, or fire less often",
+                part=name_of,
+            ),
+        )
         v_max = self.reverse_voltage.typ if self.reverse_voltage else 100.0
-        charge = self.capacitance.typ * v_max + self.recovery.typ * (self.average_current.typ if self.average_current else 1.0)
+        charge = self.capacitance.typ * v_max + self.recovery.typ * (
+            self.average_current.typ if self.average_current else 1.0
+        )
         return Stamp(
             elements=(Junction(name, anode, cathode, model),),
             probes=(

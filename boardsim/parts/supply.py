@@ -5,8 +5,20 @@ from __future__ import annotations
 from typing import Annotated, ClassVar, Literal
 
 from boardsim.parts.base import (
-    GROUND, Ammeter, CeilingRule, Corner, CurrentLaw, Limit, Part, Probe, Resistor, Stamp, current, listed, voltage,
-)  # fmt: skip
+    GROUND,
+    Ammeter,
+    CeilingRule,
+    Corner,
+    CurrentLaw,
+    Limit,
+    Part,
+    Probe,
+    Resistor,
+    Stamp,
+    current,
+    listed,
+    voltage,
+)
 from boardsim.quantities import CURRENT, RESISTANCE, VOLTAGE, Quantity, assume
 
 # Widths over which the two bends of the characteristic are rounded, so that Newton's method has a slope everywhere.

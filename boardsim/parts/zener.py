@@ -5,8 +5,20 @@ from __future__ import annotations
 from typing import Annotated, ClassVar, Literal
 
 from boardsim.parts.base import (
-    Corner, Junction, Limit, MeanRule, Model, Part, PeakRule, Port, Probe, Resistor, Signal, Stamp, voltage,
-)  # fmt: skip
+    Corner,
+    Junction,
+    Limit,
+    MeanRule,
+    Model,
+    Part,
+    PeakRule,
+    Port,
+    Probe,
+    Resistor,
+    Signal,
+    Stamp,
+    voltage,
+)
 from boardsim.parts.diode import THERMAL_VOLTAGE
 from boardsim.quantities import CAPACITANCE, CURRENT, POWER, RESISTANCE, VOLTAGE, Quantity, assume
 
@@ -28,7 +40,9 @@ class Zener(Part):
     impedance: Annotated[Quantity, RESISTANCE]
     power: Annotated[Quantity, POWER] | None = None
     surge_current: Annotated[Quantity, CURRENT] | None = None
-    leakage: Annotated[Quantity, CURRENT] = assume("1 uA", CURRENT, "at three quarters of the Zener voltage, from memory")
+    leakage: Annotated[Quantity, CURRENT] = assume(
+        "1 uA", CURRENT, "at three quarters of the Zener voltage, from memory"
+    )
     capacitance: Annotated[Quantity, CAPACITANCE] = assume("500 pF", CAPACITANCE, "Zener of some watts, from memory")
 
     def stamp(self, name: str, label: str, positive: str, negative: str, through: Signal, corner: Corner) -> Stamp:
@@ -37,9 +51,18 @@ class Zener(Part):
         v_z = corner.take(self.voltage, "clamp_voltage")
         r = max(self.impedance.typ - THERMAL_VOLTAGE / i_z, 1e-3)
         model = Model(
-            f"{name}_m", "D",
-            {"IS": 1e-12, "N": 1.1, "RS": r, "BV": v_z - r * i_z, "IBV": i_z, "CJO": self.capacitance.typ, "TNOM": 25.0},
-        )  # fmt: skip
+            f"{name}_m",
+            "D",
+            {
+                "IS": 1e-12,
+                "N": 1.1,
+                "RS": r,
+                "BV": v_z - r * i_z,
+                "IBV": i_z,
+                "CJO": self.capacitance.typ,
+                "TNOM": 25.0,
+            },
+        )
         name_of = self.title or label
         v, i = f"v_{label}", f"i_{label}"
         return Stamp(
@@ -50,9 +73,23 @@ class Zener(Part):
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
             ports=(Port(label, ((v, i),), holds=self.capacitance.typ * v_z**2),),
             rules=(
-                PeakRule("overcurrent", i, Limit.of(self.surge_current, "peak current", "A", "current"), "destroy",
-                         f"peak current of the {label}", "choose a larger Zener or a transient suppressor", part=name_of),
-                MeanRule("overpower", (v, i), Limit.of(self.power, "power", "W", "power"), "destroy",
-                         f"average power of the {label}", "choose a larger Zener, or fire less often", part=name_of),
+                PeakRule(
+                    "overcurrent",
+                    i,
+                    Limit.of(self.surge_current, "peak current", "A", "current"),
+                    "destroy",
+                    f"peak current of the {label}",
+                    "choose a larger Zener or a transient suppressor",
+                    part=name_of,
+                ),
+                MeanRule(
+                    "overpower",
+                    (v, i),
+                    Limit.of(self.power, "power", "W", "power"),
+                    "destroy",
+                    f"average power of the {label}",
+                    "choose a larger Zener, or fire less often",
+                    part=name_of,
+                ),
             ),
-        )  # fmt: skip
+        )

@@ -25,10 +25,12 @@ def result_to_dict(result: Result) -> dict[str, Any]:
         "verdict": result.verdict,
         "findings": [_finding(f) for f in by_severity(result.findings)],
         "assumptions": [
-            {"part": a.part, "quantity": a.quantity, "value": a.value, "why": a.why}
-            for a in result.assumptions
+            {"part": a.part, "quantity": a.quantity, "value": a.value, "why": a.why} for a in result.assumptions
         ],
-        "audit": {"passed": result.proven, "entries": [_entry(e) for corner in result.audit for e in corner.entries]},
+        "audit": {
+            "passed": result.proven,
+            "entries": [_entry(e) for corner in result.audit for e in corner.entries],
+        },
         "firing": list(result.firing),
         "corners": [audit.corner for audit in result.audit],
         "timings": [{"stage": t.stage, "seconds": _number(t.seconds)} for t in result.timings],
@@ -66,6 +68,7 @@ def _finding(finding: Finding) -> dict[str, Any]:
         "sentence": finding.sentence,
         "corner": finding.corner,
         "nominal_only": list(finding.nominal_only),
+        "assumed": list(finding.assumed),
         "source": finding.source,
     }
 

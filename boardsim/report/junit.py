@@ -28,9 +28,7 @@ def write_junit(result: Result, path: Path) -> None:
     root = ET.Element("testsuites", name="boardsim")
     root.append(suite_element(result))
     ET.indent(root)
-    write_text(
-        path, '<?xml version="1.0" encoding="utf-8"?>\n' + ET.tostring(root, encoding="unicode") + "\n"
-    )
+    write_text(path, '<?xml version="1.0" encoding="utf-8"?>\n' + ET.tostring(root, encoding="unicode") + "\n")
 
 
 def suite_element(result: Result) -> ET.Element:
@@ -42,9 +40,7 @@ def suite_element(result: Result) -> ET.Element:
     classname = _clean(f"{result.board}.{result.pattern}")
     findings = by_severity(result.findings)
     names = Counter(_name(f) for f in findings)
-    cases = [
-        _case(f, classname, _name(f) if names[_name(f)] == 1 else f"{_name(f)}, {f.part}") for f in findings
-    ]
+    cases = [_case(f, classname, _name(f) if names[_name(f)] == 1 else f"{_name(f)}, {f.part}") for f in findings]
     if result.verdict in ("fail", "unproven") and all(f.verdict != result.verdict for f in findings):
         cases.append(_verdict_case(result, classname))
 

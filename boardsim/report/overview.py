@@ -135,9 +135,7 @@ def _heading(figure: Figure, result: Result, height: float) -> None:
     )
 
 
-def _lanes(
-    axes: Axes, result: Result, traces: Traces, channels: list[int], height: float, scale: float
-) -> None:
+def _lanes(axes: Axes, result: Result, traces: Traces, channels: list[int], height: float, scale: float) -> None:
     from matplotlib.patches import Patch
 
     failing = {f.channel for f in result.findings if f.verdict == "fail"} & set(channels)
@@ -159,9 +157,7 @@ def _lanes(
     caption(
         axes,
         f"Channels on: {firing} of {len(channels)} fire" + (f" (one label in {step})" if step > 1 else ""),
-        {"on": Patch(color=DARK), "on, and fails a check in some corner": Patch(color=FAILING)}
-        if failing
-        else {},
+        {"on": Patch(color=DARK), "on, and fails a check in some corner": Patch(color=FAILING)} if failing else {},
     )
 
 
@@ -212,9 +208,7 @@ def _coil_rail(axes: Axes, traces: Traces, scale: float) -> None:
     slot = int(np.argmin(rail.low))
     t, v = float(rail.edges[slot] + rail.edges[slot + 1]) / 2, float(rail.low[slot])
     across = t * scale / float(axes.get_xlim()[1])
-    side: Literal["left", "center", "right"] = (
-        "left" if across < 0.15 else "right" if across > 0.85 else "center"
-    )
+    side: Literal["left", "center", "right"] = "left" if across < 0.15 else "right" if across > 0.85 else "center"
     leader = {
         "arrowstyle": "-",
         "color": INK,

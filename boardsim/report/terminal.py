@@ -140,6 +140,10 @@ def _sentences(console: Console, groups: list[Group]) -> None:
         sentence = _text(worst.sentence)
         if len(group.members) > 1:
             sentence.append(f" (the same for {len(group.members) - 1} more)", "dim")
+        if worst.nominal_only:
+            sentence.append(f" [nominal only: {', '.join(worst.nominal_only)}]", "dim")
+        if worst.assumed:
+            sentence.append(f" [hangs on assumed {'; '.join(worst.assumed)}]", "dim")
         lines.add_row(_text(worst.verdict, _STYLES[worst.verdict]), sentence)
     console.print(lines)
     if len(groups) > MOST_SENTENCES:
@@ -188,11 +192,7 @@ def _time_line(result: Result) -> list[str]:
     stages: dict[str, float] = {}
     for timing in result.timings:
         stages[timing.stage] = stages.get(timing.stage, 0.0) + timing.seconds
-    return (
-        ["; ".join(f"{stage} {in_units(seconds, 's', 2)}" for stage, seconds in stages.items())]
-        if stages
-        else []
-    )
+    return ["; ".join(f"{stage} {in_units(seconds, 's', 2)}" for stage, seconds in stages.items())] if stages else []
 
 
 def _text(text: str, style: str = "") -> Text:

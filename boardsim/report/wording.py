@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 from boardsim.parts.base import Assumption
 from boardsim.quantities import in_units
-from boardsim.verdict.findings import AuditEntry, Finding, Result, Verdict, severity
+from boardsim.verdict.findings import Finding, Result, Verdict, severity
 
 # Verdicts in the order in which they are named: what needs attention first.
 VERDICTS: tuple[Verdict, ...] = ("fail", "unproven", "limit-missing", "tight", "pass")
@@ -43,9 +43,7 @@ def grouped(findings: Iterable[Finding]) -> tuple[Group, ...]:
     """Findings of the same check, quantity, part and verdict together; groups and members by severity."""
     groups: dict[tuple[str, str, str, Verdict], list[Finding]] = {}
     for finding in by_severity(findings):
-        groups.setdefault((finding.check, finding.quantity, finding.part, finding.verdict), []).append(
-            finding
-        )
+        groups.setdefault((finding.check, finding.quantity, finding.part, finding.verdict), []).append(finding)
     return tuple(Group(members[0], tuple(members)) for members in groups.values())
 
 

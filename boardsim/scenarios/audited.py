@@ -63,35 +63,74 @@ class CornerResult:
     failure: Exception | None = None
 
 
+@dataclass
+class _Job:
+    """One corner's deck on one engine, and how long each stage of it took."""
+
+    engine: Engine
+    deck: Deck
+    firing: Firing
+    bench: Bench
+    floor: float
+    seconds: dict[str, float]
+
+    def run(self, settings: Settings, progress: Progress) -> Trial:
+        """Simulate, read, judge, and audit the run by itself."""
+        clock = time.perf_counter()
+        with self.engine.run(self.deck, settings, progress) as waves:
+            self.seconds["simulate"] += time.perf_counter() - clock
+            clock = time.perf_counter()
+            readings = take_readings(waves, self.deck, self.firing)
+        findings = judge(readings, self.deck, self.firing, self.bench)
+        self.seconds["read"] += time.perf_counter() - clock
+        audit = tuple(check(readings, self.bench.corner, str(settings), self.floor) for check in (passivity, density))
+        return Trial(self.deck, settings, readings, tuple(findings), audit)
+
+
 def run_corner(
-    board: Board, firing: Firing, corner: Corner, bench: Bench, keep: Path, progress: Progress,
-    ladder: Sequence[Settings] = LADDER, time_limit: float = DEFAULT_TIME_LIMIT,
-) -> CornerResult:  # fmt: skip
+    board: Board,
+    firing: Firing,
+    corner: Corner,
+    bench: Bench,
+    keep: Path,
+    progress: Progress,
+    ladder: Sequence[Settings] = LADDER,
+    time_limit: float = DEFAULT_TIME_LIMIT,
+) -> CornerResult:
     """Run a corner coarse and fine; accept the fine run if both pass passivity and the readings agree.
+
+    Parameters
+    ----------
+    keep : Path
+        Where deck and log of a failed run are kept.
+    progress : callable
+        Told the share of the corner's work that is done.
+    ladder : sequence of Settings
+        From coarse to fine.
+    time_limit : float
+        Per run. [s]
 
     Raises
     ------
     EngineMissing, EngineCrash, DeckRejected
         If there is no engine to speak of, or it does not take the deck.
     """
-    seconds = {"assemble": 0.0, "simulate": 0.0, "read": 0.0}
     clock = time.perf_counter()
-    window = windows(board, firing)[0]
-    deck = assemble(board, firing, corner, window)
-    seconds["assemble"] = time.perf_counter() - clock
+    deck = assemble(board, firing, corner, windows(board, firing)[0])
+    seconds = {"assemble": time.perf_counter() - clock, "simulate": 0.0, "read": 0.0}
     floor = 1e-3 * max(_full_energy(board, corner))
-    audit: list[AuditEntry] = []
+    entries: list[AuditEntry] = []
     trials: list[Trial] = []
     failure: Exception | None = None
     with Engine(keep, time_limit) as engine:
-        for rung, settings in enumerate(ladder):
-            base = min(rung, 1) / 2 if rung < 2 else 0.9
+        job = _Job(engine, deck, firing, bench, floor, seconds)
+        for settings, (begin, end) in zip(ladder, (*_SHARES, *[(0.95, 0.95)] * len(ladder)), strict=False):
             try:
-                trial = _try(engine, deck, settings, firing, bench, floor, seconds, lambda s, b=base: progress(b + s / 2 if b < 0.9 else b))
+                trial = job.run(settings, _scaled(progress, begin, end))
             except (NoConvergence, EngineTimeout) as err:
                 failure = err
                 continue
-            audit += trial.audit
+            entries += trial.audit
             coarse = _coarser(trials, trial)
             trials.append(trial)
             if coarse is None:
@@ -99,13 +138,21 @@ def run_corner(
             points = (coarse.readings.points, trial.readings.points)
             pair = f"{coarse.settings} against {settings}"
             entry = refinement(coarse.findings, trial.findings, points, corner.name, pair)
-            audit.append(entry)
+            entries.append(entry)
             if entry.passed and trial.sound and coarse.passive:
                 decisive = (*(e for e in coarse.audit if e.criterion == "passivity"), *trial.audit, entry)
                 progress(1.0)
                 return CornerResult(corner, trial, CornerAudit(corner.name, decisive, True), seconds)
     progress(1.0)
-    return CornerResult(corner, trials[-1] if trials else None, CornerAudit(corner.name, tuple(audit), False), seconds, failure)
+    last = trials[-1] if trials else None
+    return CornerResult(corner, last, CornerAudit(corner.name, tuple(entries), False), seconds, failure)
+
+
+_SHARES = ((0.0, 0.35), (0.35, 0.95))  # of a corner's time that the first two runs take
+
+
+def _scaled(progress: Progress, begin: float, end: float) -> Progress:
+    return lambda share: progress(begin + (end - begin) * share)
 
 
 def _coarser(before: Sequence[Trial], trial: Trial) -> Trial | None:
@@ -113,20 +160,6 @@ def _coarser(before: Sequence[Trial], trial: Trial) -> Trial | None:
     candidates = [t for t in before if t.passive] or list(before)
     few = [t for t in candidates if trial.readings.points >= POINTS * t.readings.points]
     return (few[-1] if few else candidates[0]) if candidates else None
-
-
-def _try(
-    engine: Engine, deck: Deck, settings: Settings, firing: Firing, bench: Bench, floor: float, seconds: dict[str, float], progress: Progress
-) -> Trial:
-    clock = time.perf_counter()
-    with engine.run(deck, settings, progress) as waves:
-        seconds["simulate"] += time.perf_counter() - clock
-        clock = time.perf_counter()
-        readings = take_readings(waves, deck, firing)
-    findings = judge(readings, deck, firing, bench)
-    seconds["read"] += time.perf_counter() - clock
-    entries = tuple(check(readings, bench.corner, str(settings), floor) for check in (passivity, density))
-    return Trial(deck, settings, readings, tuple(findings), entries)
 
 
 def _full_energy(board: Board, corner: Corner) -> list[float]:

@@ -24,9 +24,14 @@ from boardsim.verdict.switching import judge_switching
 
 
 def fire_pattern(
-    board: Board, pattern: Pattern, keep: Path, strict: bool = False, time_limit: float = DEFAULT_TIME_LIMIT,
-    progress: Callable[[float], None] | None = None, workers: int | None = None,
-) -> Result:  # fmt: skip
+    board: Board,
+    pattern: Pattern,
+    keep: Path,
+    strict: bool = False,
+    time_limit: float = DEFAULT_TIME_LIMIT,
+    progress: Callable[[float], None] | None = None,
+    workers: int | None = None,
+) -> Result:
     """Fire a pattern on a board.
 
     Parameters
@@ -77,9 +82,16 @@ def fire_pattern(
     proven = all(r.audit.proven for r in results)
     sampled = [r for r in results if r.trial is not None]
     return Result(
-        board.name, pattern.name, firing.duration, overall(findings, proven, strict), tuple(findings),
-        _assumptions(board, sampled), tuple(r.audit for r in results), _firing_sentences(board, firing),
-        _traces(board, firing, sampled), _deciding_deck(findings, sampled),
+        board.name,
+        pattern.name,
+        firing.duration,
+        overall(findings, proven, strict),
+        tuple(findings),
+        _assumptions(board, sampled),
+        tuple(r.audit for r in results),
+        _firing_sentences(board, firing),
+        _traces(board, firing, sampled),
+        _deciding_deck(findings, sampled),
         (
             Timing("register frames", spent_firing),
             Timing("simulation, all corners and repeats", sum(r.seconds["simulate"] for r in results)),
@@ -87,7 +99,7 @@ def fire_pattern(
             Timing("elapsed over all corners", spent_running),
         ),
         tuple(f"{r.corner.name}: {r.failure}" for r in results if r.failure is not None and not r.audit.proven),
-    )  # fmt: skip
+    )
 
 
 def _by_corner(results: Iterable[CornerResult]) -> Iterable[list[Finding]]:
@@ -146,9 +158,15 @@ def _traces(board: Board, firing: Firing, results: Sequence[CornerResult]) -> Tr
     rail, total, supply = (replace(e[k], label=named[k]) for k in ("rail", "total", "supply"))
     brown_out, ceiling = board.limits.brown_out, board.supply.current_ceiling
     return Traces(
-        shown.corner.name, rail, total, supply, firing.on, {c.number: c.label for c in board.channels},
-        brown_out.voltage.typ if brown_out else None, ceiling.typ if ceiling else None,
-    )  # fmt: skip
+        shown.corner.name,
+        rail,
+        total,
+        supply,
+        firing.on,
+        {c.number: c.label for c in board.channels},
+        brown_out.voltage.typ if brown_out else None,
+        ceiling.typ if ceiling else None,
+    )
 
 
 def _deciding_deck(findings: Sequence[Finding], results: Sequence[CornerResult]) -> str:

@@ -8,6 +8,7 @@ from typing import Any
 from boardsim.board.schema import BoardFile
 from boardsim.errors import InputError
 from boardsim.firing.pattern import PatternFile
+from boardsim.parts.base import Record
 from boardsim.report.files import write_text
 
 BOARD = """\
@@ -97,7 +98,11 @@ def write_starter(folder: Path) -> tuple[Path, Path]:
 
 def json_schema(what: str) -> dict[str, Any] | None:
     """The JSON Schema of "board" or "pattern" files; None for any other word."""
-    model = {"board": BoardFile, "pattern": PatternFile}.get(what)
+    models: dict[str, type[Record]] = {"board": BoardFile, "pattern": PatternFile}
+    model = models.get(what)
     if model is None:
         return None
-    return {"$schema": "https://json-schema.org/draft/2020-12/schema", **model.model_json_schema(by_alias=True)}
+    return {
+        "$schema": "https://json-schema.org/draft/2020-12/schema",
+        **model.model_json_schema(by_alias=True),
+    }

@@ -43,7 +43,9 @@ def passivity(readings: Readings, corner: str, run: str, floor: float) -> AuditE
 
     worst = max(readings.ports, key=lambda p: p.drop / bound(p))
     allowed = bound(worst)
-    return AuditEntry("passivity", corner, run, f"{worst.name} gave out", worst.drop, allowed, "J", worst.drop <= allowed)
+    return AuditEntry(
+        "passivity", corner, run, f"{worst.name} gave out", worst.drop, allowed, "J", worst.drop <= allowed
+    )
 
 
 def density(readings: Readings, corner: str, run: str, floor: float) -> AuditEntry:
@@ -57,10 +59,21 @@ def density(readings: Readings, corner: str, run: str, floor: float) -> AuditEnt
     scale = max(readings.pulse_energy, floor)
     worst = max(readings.ports, key=lambda p: p.spread / max(p.through, scale))
     allowed = SHARE * max(worst.through, scale)
-    return AuditEntry("density", corner, run, f"{worst.name}: energy uncertain by", worst.spread, allowed, "J", worst.spread <= allowed)
+    return AuditEntry(
+        "density",
+        corner,
+        run,
+        f"{worst.name}: energy uncertain by",
+        worst.spread,
+        allowed,
+        "J",
+        worst.spread <= allowed,
+    )
 
 
-def refinement(coarse: Sequence[Finding], fine: Sequence[Finding], points: tuple[int, int], corner: str, run: str) -> AuditEntry:
+def refinement(
+    coarse: Sequence[Finding], fine: Sequence[Finding], points: tuple[int, int], corner: str, run: str
+) -> AuditEntry:
     """A repeat with at least 1.5 times the points must not move any deciding reading by 1 %.
 
     A reading decides unless its margin is above one half; those others may move by 10 % of themselves.

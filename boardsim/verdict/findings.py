@@ -40,6 +40,8 @@ class Finding:
         The corner in which it is worst; `nominal_only` names what had no tolerance there.
     source : str
         Where the limit comes from.
+    assumed : tuple of str
+        Assumed numbers that the reading hangs on.
     """
 
     check: str
@@ -59,6 +61,7 @@ class Finding:
     source: str = ""
     lasting: float | None = None
     nominal_only: tuple[str, ...] = ()
+    assumed: tuple[str, ...] = ()
 
     @property
     def key(self) -> tuple[str, str, str, int | None]:

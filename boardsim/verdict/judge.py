@@ -12,8 +12,17 @@ from boardsim.board.reader import Board
 from boardsim.circuit.deck import Deck, PlacedRule
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import (
-    BreakdownRule, CeilingRule, Consequence, Derating, DipRule, Limit, MeanRule, PeakRule, PullInRule, ReleaseRule,
-)  # fmt: skip
+    BreakdownRule,
+    CeilingRule,
+    Consequence,
+    Derating,
+    DipRule,
+    Limit,
+    MeanRule,
+    PeakRule,
+    PullInRule,
+    ReleaseRule,
+)
 from boardsim.quantities import in_units
 from boardsim.verdict.findings import Finding, Verdict
 from boardsim.verdict.readings import AT_CEILING, Readings
@@ -58,9 +67,23 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     """
     found: list[Finding] = []
     for placed in deck.rules:
+        assumed = _assumed(placed, deck)
         for finding in _apply(placed, readings, firing, bench):
-            found.append(replace(finding, corner=bench.corner, nominal_only=bench.nominal_only))
+            found.append(replace(finding, corner=bench.corner, nominal_only=bench.nominal_only, assumed=assumed))
     return found
+
+
+def _assumed(placed: PlacedRule, deck: Deck) -> tuple[str, ...]:
+    """The assumptions that a reading hangs on: the supply's and the rail's for the rail and for pull-in, the
+    coils' own for what happens in a channel.
+    """
+    rail = placed.channel is None or isinstance(placed.rule, PullInRule)
+    own = placed.channel is not None
+    return tuple(
+        f"{a.part}: {a.quantity} {a.value}"
+        for a in deck.assumptions
+        if (a.part.startswith(("coil", "switch")) and own) or (not a.part.startswith(("coil", "switch")) and rail)
+    )
 
 
 def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:
@@ -69,7 +92,18 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench)
             yield _peak(rule, placed, readings, bench)
         case MeanRule() as rule:
             value = readings.means[placed.channel, rule.quantities]
-            yield _upper(rule.what, rule.check, rule.limit, rule.consequence, placed, bench, value, None, rule.advice, part=rule.part)
+            yield _upper(
+                rule.what,
+                rule.check,
+                rule.limit,
+                rule.consequence,
+                placed,
+                bench,
+                value,
+                None,
+                rule.advice,
+                part=rule.part,
+            )
         case BreakdownRule() as rule:
             yield from _breakdown(rule, placed, readings, bench)
         case PullInRule() as rule:
@@ -87,9 +121,18 @@ def _when(at: float | None) -> str:
 
 
 def _upper(
-    what: str, check: str, limit: Limit, consequence: Consequence, placed: PlacedRule, bench: Bench, value: float,
-    at: float | None, advice: str, detail: str = "", part: str = "",
-) -> Finding:  # fmt: skip
+    what: str,
+    check: str,
+    limit: Limit,
+    consequence: Consequence,
+    placed: PlacedRule,
+    bench: Bench,
+    value: float,
+    at: float | None,
+    advice: str,
+    detail: str = "",
+    part: str = "",
+) -> Finding:
     """A reading that must stay below a limit."""
     part = part or placed.part
     share = bench.derating(limit.derating)
@@ -108,9 +151,21 @@ def _upper(
     if verdict == "fail":
         sentence += f"; try: {advice}"
     return Finding(
-        check, what, part, placed.channel, placed.label, value, bound, limit.unit, margin, at, consequence, verdict,
-        sentence, source=limit.source,
-    )  # fmt: skip
+        check,
+        what,
+        part,
+        placed.channel,
+        placed.label,
+        value,
+        bound,
+        limit.unit,
+        margin,
+        at,
+        consequence,
+        verdict,
+        sentence,
+        source=limit.source,
+    )
 
 
 def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) -> Finding:
@@ -118,7 +173,18 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
     value, at = readings.high[key]
     if rule.magnitude and -readings.low[key][0] > value:
         value, at = -readings.low[key][0], readings.low[key][1]
-    return _upper(rule.what, rule.check, rule.limit, rule.consequence, placed, bench, value, at, rule.advice, part=rule.part)
+    return _upper(
+        rule.what,
+        rule.check,
+        rule.limit,
+        rule.consequence,
+        placed,
+        bench,
+        value,
+        at,
+        rule.advice,
+        part=rule.part,
+    )
 
 
 # --------------------------------------------------------------------------------------------- avalanche
@@ -132,30 +198,77 @@ def _breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings, benc
     value, at = readings.high[placed.channel, rule.voltage]
     events = readings.avalanches[placed.channel]
     if not events:
-        yield _upper("drain-source voltage", rule.check, rule.rating, "destroy", placed, bench, value, at, "clamp the coil at a lower voltage")
+        yield _upper(
+            "drain-source voltage",
+            rule.check,
+            rule.rating,
+            "destroy",
+            placed,
+            bench,
+            value,
+            at,
+            "clamp the coil at a lower voltage",
+        )
         return
     hardest = max(events, key=lambda e: e.energy)
     times = f", {len(events)} times" if len(events) > 1 else ""
     detail = f" in avalanche at {in_units(hardest.voltage, 'V')}{times}"
     if all(limit.value is None for limit in (rule.avalanche_current, rule.single, rule.repetitive)):
         yield Finding(
-            rule.check, "avalanche energy", placed.part, placed.channel, placed.label, hardest.energy, 0.0, "J", -1.0, hardest.start,
-            "destroy", "fail",
+            rule.check,
+            "avalanche energy",
+            placed.part,
+            placed.channel,
+            placed.label,
+            hardest.energy,
+            0.0,
+            "J",
+            -1.0,
+            hardest.start,
+            "destroy",
+            "fail",
             f"{placed.label}: the switch takes {in_units(hardest.energy, 'J')}{_when(hardest.start)}{detail}; {placed.part} has no "
             f"avalanche rating, so breakdown destroys it; try: {_CLAMP}",
             source="no avalanche rating given",
-        )  # fmt: skip
+        )
         return
     current = max(events, key=lambda e: e.current)
-    yield _upper("avalanche current", rule.check, rule.avalanche_current, "destroy", placed, bench, current.current, current.start, _CLAMP, detail)
+    yield _upper(
+        "avalanche current",
+        rule.check,
+        rule.avalanche_current,
+        "destroy",
+        placed,
+        bench,
+        current.current,
+        current.start,
+        _CLAMP,
+        detail,
+    )
     yield from _avalanche_energy(rule, placed, bench, events, hardest, detail)
 
 
 def _avalanche_energy(
-    rule: BreakdownRule, placed: PlacedRule, bench: Bench, events: tuple[Avalanche, ...], hardest: Avalanche, detail: str
+    rule: BreakdownRule,
+    placed: PlacedRule,
+    bench: Bench,
+    events: tuple[Avalanche, ...],
+    hardest: Avalanche,
+    detail: str,
 ) -> Iterator[Finding]:
     """A single-pulse rating covers one pulse; repeated avalanche needs a repetitive rating."""
-    single = _upper("avalanche energy", rule.check, rule.single, "destroy", placed, bench, hardest.energy, hardest.start, _CLAMP, detail)
+    single = _upper(
+        "avalanche energy",
+        rule.check,
+        rule.single,
+        "destroy",
+        placed,
+        bench,
+        hardest.energy,
+        hardest.start,
+        _CLAMP,
+        detail,
+    )
     if len(events) == 1:
         yield single
         return
@@ -164,12 +277,27 @@ def _avalanche_energy(
         return
     if rule.repetitive.value is None:
         yield replace(
-            single, limit=None, margin=None, verdict="limit-missing", source="",
+            single,
+            limit=None,
+            margin=None,
+            verdict="limit-missing",
+            source="",
             sentence=f"{placed.label}: the switch takes up to {in_units(hardest.energy, 'J')}{detail}; the single-pulse rating of "
             f"{placed.part} covers one pulse only, and no repetitive avalanche energy was given",
-        )  # fmt: skip
+        )
         return
-    yield _upper("avalanche energy", rule.check, rule.repetitive, "destroy", placed, bench, hardest.energy, hardest.start, _CLAMP, detail)
+    yield _upper(
+        "avalanche energy",
+        rule.check,
+        rule.repetitive,
+        "destroy",
+        placed,
+        bench,
+        hardest.energy,
+        hardest.start,
+        _CLAMP,
+        detail,
+    )
 
 
 # ------------------------------------------------------------------------------------------------- coils
@@ -183,7 +311,9 @@ def _pull_in(rule: PullInRule, placed: PlacedRule, readings: Readings, bench: Be
     k = int(np.argmin(values))
     value, at, bound = float(values[k]), float(times[k]), rule.limit.value
     margin = None if bound is None else (value - bound) / bound
-    sentence = f"{placed.label}: at the end of its pulse at {in_units(at, 's', 4)} the coil current is {in_units(value, 'A')}"
+    sentence = (
+        f"{placed.label}: at the end of its pulse at {in_units(at, 's', 4)} the coil current is {in_units(value, 'A')}"
+    )
     if bound is None:
         sentence += f"; no pull-in current of {placed.part} was given to hold it against"
     else:
@@ -191,9 +321,21 @@ def _pull_in(rule: PullInRule, placed: PlacedRule, readings: Readings, bench: Be
         if margin is not None and margin < 0:
             sentence += "; try: a longer pulse, fewer channels at once, or a stiffer supply"
     yield Finding(
-        rule.check, "coil current at the end of a pulse", placed.part, placed.channel, placed.label, value, bound, "A", margin, at,
-        "misbehave", bench.verdict(margin), sentence, source=rule.limit.source,
-    )  # fmt: skip
+        rule.check,
+        "coil current at the end of a pulse",
+        placed.part,
+        placed.channel,
+        placed.label,
+        value,
+        bound,
+        "A",
+        margin,
+        at,
+        "misbehave",
+        bench.verdict(margin),
+        sentence,
+        source=rule.limit.source,
+    )
 
 
 def _release(rule: ReleaseRule, placed: PlacedRule, readings: Readings, bench: Bench) -> Iterator[Finding]:
@@ -204,7 +346,9 @@ def _release(rule: ReleaseRule, placed: PlacedRule, readings: Readings, bench: B
     k = int(np.argmax(values))
     value, at, bound = max(float(values[k]), 0.0), float(times[k]), rule.limit.value
     margin = None if bound is None else (bound - value) / bound
-    sentence = f"{placed.label}: fired again at {in_units(at, 's', 4)} while its coil still carries {in_units(value, 'A')}"
+    sentence = (
+        f"{placed.label}: fired again at {in_units(at, 's', 4)} while its coil still carries {in_units(value, 'A')}"
+    )
     if bound is None:
         sentence += f"; no release current of {placed.part} was given to hold it against"
     else:
@@ -212,9 +356,21 @@ def _release(rule: ReleaseRule, placed: PlacedRule, readings: Readings, bench: B
         if margin is not None and margin < 0:
             sentence += "; try: a longer pause, or a clamp of higher voltage"
     yield Finding(
-        rule.check, "coil current when fired again", placed.part, placed.channel, placed.label, value, bound, "A", margin, at,
-        "misbehave", bench.verdict(margin), sentence, source=rule.limit.source,
-    )  # fmt: skip
+        rule.check,
+        "coil current when fired again",
+        placed.part,
+        placed.channel,
+        placed.label,
+        value,
+        bound,
+        "A",
+        margin,
+        at,
+        "misbehave",
+        bench.verdict(margin),
+        sentence,
+        source=rule.limit.source,
+    )
 
 
 # -------------------------------------------------------------------------------------------------- rail
@@ -241,7 +397,9 @@ def _together(board: Board, firing: Firing, at: float) -> str:
     number = len(on)
     if not number:
         return "no channel was on"
-    return f"{_who(board, on)} ({number} {'channel' if number == 1 else 'channels'}) {'was' if number == 1 else 'were'} on"
+    return (
+        f"{_who(board, on)} ({number} {'channel' if number == 1 else 'channels'}) {'was' if number == 1 else 'were'} on"
+    )
 
 
 def _dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
@@ -252,20 +410,41 @@ def _dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, 
     sentence = f"{who} at {in_units(at, 's', 4)}: the {rule.what} fell to {in_units(lowest, 'V')}"
     if level is None:
         return Finding(
-            rule.check, "coil rail voltage", placed.part, None, placed.label, lowest, None, "V", None, at, "misbehave", "limit-missing",
+            rule.check,
+            "coil rail voltage",
+            placed.part,
+            None,
+            placed.label,
+            lowest,
+            None,
+            "V",
+            None,
+            at,
+            "misbehave",
+            "limit-missing",
             f"{sentence}; no brown-out level was given to hold it against ([limits] brown_out)",
-        )  # fmt: skip
+        )
     margin = (lowest - level) / level
     longest: Dip | None = max(readings.dips, key=lambda d: d.lasting, default=None)
     if longest is None:
         sentence += f"; the brown-out level is {in_units(level, 'V')}"
         return Finding(
-            rule.check, "coil rail voltage", placed.part, None, placed.label, lowest, level, "V", margin, at, "misbehave",
-            bench.verdict(margin), sentence, source=rule.limit.source,
-        )  # fmt: skip
-    sentence += (
-        f" and stayed below {in_units(level, 'V')} for {in_units(longest.lasting, 's')}; brown-out counts after {in_units(rule.lasting, 's')}"
-    )
+            rule.check,
+            "coil rail voltage",
+            placed.part,
+            None,
+            placed.label,
+            lowest,
+            level,
+            "V",
+            margin,
+            at,
+            "misbehave",
+            bench.verdict(margin),
+            sentence,
+            source=rule.limit.source,
+        )
+    sentence += f" and stayed below {in_units(level, 'V')} for {in_units(longest.lasting, 's')}; brown-out counts after {in_units(rule.lasting, 's')}"
     spare = (rule.lasting - longest.lasting) / rule.lasting if rule.lasting else -1.0
     if spare < 0:
         sentence += _fewer(bench.board)
@@ -273,9 +452,22 @@ def _dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, 
         margin = spare
     # Broken, the margin tells the depth; allowed for its shortness, the margin tells how short.
     return Finding(
-        rule.check, "coil rail voltage", placed.part, None, placed.label, lowest, level, "V", margin, at, "misbehave",
-        bench.verdict(margin), sentence, source=rule.limit.source, lasting=longest.lasting,
-    )  # fmt: skip
+        rule.check,
+        "coil rail voltage",
+        placed.part,
+        None,
+        placed.label,
+        lowest,
+        level,
+        "V",
+        margin,
+        at,
+        "misbehave",
+        bench.verdict(margin),
+        sentence,
+        source=rule.limit.source,
+        lasting=longest.lasting,
+    )
 
 
 def _fewer(board: Board) -> str:
@@ -288,7 +480,11 @@ def _fewer(board: Board) -> str:
     feeds = (board.supply.voltage.min - level.voltage.typ) / r / each
     if board.supply.current_ceiling is not None:
         feeds = min(feeds, board.supply.current_ceiling.typ / each)
-    return f"; try: at most {max(int(feeds), 1)} channels together, or a stronger supply" if feeds > 0 else "; try: a stronger supply"
+    return (
+        f"; try: at most {max(int(feeds), 1)} channels together, or a stronger supply"
+        if feeds > 0
+        else "; try: a stronger supply"
+    )
 
 
 def _ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
@@ -311,6 +507,19 @@ def _ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, firing: 
         margin = (bound - value) / bound
         sentence += f"; its ceiling is {in_units(bound, 'A')}"
     return Finding(
-        rule.check, "supply current", placed.part, None, placed.label, value, bound, "A", margin, when, "misbehave",
-        bench.verdict(margin), sentence[0].upper() + sentence[1:], source=rule.limit.source, lasting=lasting if since is not None else None,
-    )  # fmt: skip
+        rule.check,
+        "supply current",
+        placed.part,
+        None,
+        placed.label,
+        value,
+        bound,
+        "A",
+        margin,
+        when,
+        "misbehave",
+        bench.verdict(margin),
+        sentence[0].upper() + sentence[1:],
+        source=rule.limit.source,
+        lasting=lasting if since is not None else None,
+    )

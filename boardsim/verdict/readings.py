@@ -12,10 +12,26 @@ from boardsim.circuit.deck import Deck
 from boardsim.engine.waves import Waves
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import (
-    BreakdownRule, CeilingRule, DipRule, MeanRule, PullInRule, ReleaseRule,
-)  # fmt: skip
+    BreakdownRule,
+    CeilingRule,
+    DipRule,
+    MeanRule,
+    PullInRule,
+    ReleaseRule,
+)
 from boardsim.verdict.findings import Envelope, Floats
-from boardsim.verdict.watch import Avalanche, Avalanches, Dip, Dips, Extremes, Falls, Integrals, Samples, Slices, TimeAbove
+from boardsim.verdict.watch import (
+    Avalanche,
+    Avalanches,
+    Dip,
+    Dips,
+    Extremes,
+    Falls,
+    Integrals,
+    Samples,
+    Slices,
+    TimeAbove,
+)
 
 Key = tuple[int | None, str]
 
@@ -105,8 +121,16 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     dips = Dips(dip_rule.limit.value if dip_rule and dip_rule.limit.value is not None else -np.inf)
     ceiling_rule = next((r for _, r in rules if isinstance(r, CeilingRule)), None)
     ceiling = TimeAbove(AT_CEILING * ceiling_rule.limit.value if ceiling_rule and ceiling_rule.limit.value else np.inf)
-    pull_in = {c: Samples(_within(firing.on[c][:, 1], start, stop)) for c, r in rules if isinstance(r, PullInRule) and c is not None}
-    release = {c: Samples(_within(firing.on[c][1:, 0], start, stop)) for c, r in rules if isinstance(r, ReleaseRule) and c is not None}
+    pull_in = {
+        c: Samples(_within(firing.on[c][:, 1], start, stop))
+        for c, r in rules
+        if isinstance(r, PullInRule) and c is not None
+    }
+    release = {
+        c: Samples(_within(firing.on[c][1:, 0], start, stop))
+        for c, r in rules
+        if isinstance(r, ReleaseRule) and c is not None
+    }
     avalanches = {c: (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None}
     falls = Falls(len(deck.ports))
     shown = {"rail": (None, "v_rail"), "total": (None, "i_total"), "supply": (None, "i_supply")}
@@ -129,25 +153,38 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         slices.feed(t, y[[row[key] for key in shown.values()]])
 
     span = stop - start
-    coil_energy = [0.5 * p.store[1] * _largest(extremes, row[c, p.store[0]]) ** 2 for c, _, p in deck.ports if p.store and c is not None]
+    coil_energy = [
+        0.5 * p.store[1] * _largest(extremes, row[c, p.store[0]]) ** 2
+        for c, _, p in deck.ports
+        if p.store and c is not None
+    ]
     return Readings(
         {k: (float(extremes.high[i]), float(extremes.high_at[i])) for k, i in row.items()},
         {k: (float(extremes.low[i]), float(extremes.low_at[i])) for k, i in row.items()},
         {k: float(integrals.total[i]) / span for i, k in enumerate(mean_keys)},
-        tuple(dips.all()), (ceiling.total, ceiling.first),
+        tuple(dips.all()),
+        (ceiling.total, ceiling.first),
         {c: (s.times, s.values) for c, s in pull_in.items()},
         {c: (s.times, s.values) for c, s in release.items()},
         {c: tuple(w.found) for c, (w, _) in avalanches.items()},
         tuple(
-            PortReading(c, f"{label} {p.part}" if c is not None else p.part, float(falls.drop[i]), float(falls.spread[i]), float(falls.through[i]), p.holds)
+            PortReading(
+                c,
+                f"{label} {p.part}" if c is not None else p.part,
+                float(falls.drop[i]),
+                float(falls.spread[i]),
+                float(falls.through[i]),
+                p.holds,
+            )
             for i, (c, label, p) in enumerate(deck.ports)
         ),
-        max(coil_energy, default=0.0), waves.points,
+        max(coil_energy, default=0.0),
+        waves.points,
         {
             name: Envelope(name, deck.units[key], slices.edges, slices.low[i], slices.high[i])
             for i, (name, key) in enumerate(shown.items())
         },
-    )  # fmt: skip
+    )
 
 
 def _ours(name: str) -> str:
@@ -156,7 +193,8 @@ def _ours(name: str) -> str:
 
 
 def _within(times: Floats, start: float, stop: float) -> Floats:
-    return times[(times >= start) & (times <= stop)]
+    inside: Floats = times[(times >= start) & (times <= stop)]
+    return inside
 
 
 def _largest(extremes: Extremes, i: int) -> float:
@@ -165,8 +203,10 @@ def _largest(extremes: Extremes, i: int) -> float:
 
 def _feed_falls(falls: Falls, deck: Deck, row: Mapping[Key, int], t: Floats, y: Floats) -> None:
     def voltage(i: int, channel: int | None, quantity: str) -> Floats:
-        values = y[row[channel, quantity]]
-        return values - falls.rest.setdefault((i, quantity), float(values[0])) if deck.ports[i][2].from_rest else values
+        values: Floats = y[row[channel, quantity]]
+        if not deck.ports[i][2].from_rest:
+            return values
+        return np.subtract(values, falls.rest.setdefault((i, quantity), float(values[0])))
 
     pairs, stored = [], np.zeros((len(deck.ports), len(t)))
     for i, (c, _, port) in enumerate(deck.ports):
@@ -174,5 +214,3 @@ def _feed_falls(falls: Falls, deck: Deck, row: Mapping[Key, int], t: Floats, y: 
         if port.store is not None:
             stored[i] = 0.5 * port.store[1] * voltage(i, c, port.store[0]) ** 2
     falls.feed(t, pairs, stored)
-
-

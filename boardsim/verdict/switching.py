@@ -7,7 +7,8 @@ import numpy as np
 from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
 from boardsim.firing.schedule import Firing
-from boardsim.quantities import in_units
+from boardsim.parts.base import Consequence
+from boardsim.quantities import Quantity, in_units
 from boardsim.verdict.findings import Finding, Floats, Verdict
 
 
@@ -22,11 +23,33 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     return [*found, *_register(board)]
 
 
-def _plain(check: str, quantity: str, channel: int | None, label: str, value: float, limit: float, unit: str, at: float | None, sentence: str) -> Finding:
+def _plain(
+    check: str,
+    quantity: str,
+    channel: int | None,
+    label: str,
+    value: float,
+    limit: float,
+    unit: str,
+    at: float | None,
+    sentence: str,
+) -> Finding:
     return Finding(
-        check, quantity, "register chain", channel, label, value, limit, unit, -1.0, at, "misbehave", "fail", sentence,
+        check,
+        quantity,
+        "register chain",
+        channel,
+        label,
+        value,
+        limit,
+        unit,
+        -1.0,
+        at,
+        "misbehave",
+        "fail",
+        sentence,
         source="a pulse must be fired as commanded",
-    )  # fmt: skip
+    )
 
 
 def _swallowed(board: Board, firing: Firing) -> list[Finding]:
@@ -35,12 +58,21 @@ def _swallowed(board: Board, firing: Firing) -> list[Finding]:
     for channel in dict.fromkeys(m.pulse.channel for m in lost):
         mine = [m for m in lost if m.pulse.channel == channel]
         p, label = mine[0].pulse, board.channel(channel).label
-        found.append(_plain(
-            "lost-pulse", "width of a pulse", channel, label, p.width, firing.frame_time, "s", p.start,
-            f"{label}: its pulse of {in_units(p.width, 's')} at {in_units(p.start, 's', 4)} is lost: both edges fall on one latch, "
-            f"since a register frame takes {in_units(firing.frame_time, 's')} ({len(mine)} such pulses on this channel); "
-            "try: a longer pulse or a faster clock",
-        ))  # fmt: skip
+        found.append(
+            _plain(
+                "lost-pulse",
+                "width of a pulse",
+                channel,
+                label,
+                p.width,
+                firing.frame_time,
+                "s",
+                p.start,
+                f"{label}: its pulse of {in_units(p.width, 's')} at {in_units(p.start, 's', 4)} is lost: both edges fall on one latch, "
+                f"since a register frame takes {in_units(firing.frame_time, 's')} ({len(mine)} such pulses on this channel); "
+                "try: a longer pulse or a faster clock",
+            )
+        )
     return found
 
 
@@ -49,11 +81,20 @@ def _joined(board: Board, firing: Firing) -> list[Finding]:
     for channel in dict.fromkeys(p.channel for p in firing.merged):
         mine = [p for p in firing.merged if p.channel == channel]
         label = board.channel(channel).label
-        found.append(_plain(
-            "overlap", "pulses commanded while on", channel, label, float(len(mine)), 0.0, "1", mine[0].start,
-            f"{label}: fired again at {in_units(mine[0].start, 's', 4)} while still commanded on: the pulses run together "
-            f"({len(mine)} times); try: a later start or a shorter pulse",
-        ))  # fmt: skip
+        found.append(
+            _plain(
+                "overlap",
+                "pulses commanded while on",
+                channel,
+                label,
+                float(len(mine)),
+                0.0,
+                "1",
+                mine[0].start,
+                f"{label}: fired again at {in_units(mine[0].start, 's', 4)} while still commanded on: the pulses run together "
+                f"({len(mine)} times); try: a later start or a shorter pulse",
+            )
+        )
     return found
 
 
@@ -62,11 +103,20 @@ def _wrong(board: Board, firing: Firing) -> list[Finding]:
     for w in firing.wrong:
         channel = board.channel(w.channel)
         did = "stays off although it is commanded on" if w.commanded else "is on although nothing commands it"
-        found.append(_plain(
-            "wrong-output", "output against command", w.channel, channel.label, 1.0, 0.0, "1", w.at,
-            f"{channel.label} (output {channel.output}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, active "
-            "level and the map from channel to output and bit do not fit together; try: bit_order, first_out, active, outputs, bits",
-        ))  # fmt: skip
+        found.append(
+            _plain(
+                "wrong-output",
+                "output against command",
+                w.channel,
+                channel.label,
+                1.0,
+                0.0,
+                "1",
+                w.at,
+                f"{channel.label} (output {channel.output}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, active "
+                "level and the map from channel to output and bit do not fit together; try: bit_order, first_out, active, outputs, bits",
+            )
+        )
     return found
 
 
@@ -84,7 +134,15 @@ def most_together(firing: Firing, channels: tuple[int, ...]) -> tuple[int, float
     return int(counts[k]), float(times[order][k])
 
 
-def _at_once(board: Board, firing: Firing, channels: tuple[int, ...], most: int | None, quantity: str, label: str, reason: str) -> Finding:
+def _at_once(
+    board: Board,
+    firing: Firing,
+    channels: tuple[int, ...],
+    most: int | None,
+    quantity: str,
+    label: str,
+    reason: str,
+) -> Finding:
     count, at = most_together(firing, channels)
     margin = None if most is None else (most - count) / most
     verdict: Verdict = "limit-missing" if margin is None else "fail" if margin < 0 else "pass"
@@ -97,9 +155,21 @@ def _at_once(board: Board, firing: Firing, channels: tuple[int, ...], most: int 
         if count > most:
             sentence += "; try: a stagger"
     return Finding(
-        "overlap", quantity, "firing", None, label, float(count), None if most is None else float(most), "1", margin, at, "misbehave",
-        verdict, sentence, source=f"given: {board.path.name}" if most is not None else "",
-    )  # fmt: skip
+        "overlap",
+        quantity,
+        "firing",
+        None,
+        label,
+        float(count),
+        None if most is None else float(most),
+        "1",
+        margin,
+        at,
+        "misbehave",
+        verdict,
+        sentence,
+        source=f"given: {board.path.name}" if most is not None else "",
+    )
 
 
 def _register(board: Board) -> list[Finding]:
@@ -108,27 +178,57 @@ def _register(board: Board) -> list[Finding]:
     name = register.title or "register"
     clock = register.highest_clock
     margin = None if clock is None else (clock.typ - chain.clock.max) / clock.typ
-    found = [Finding(
-        "chain", "clock", name, None, "chain", chain.clock.max, clock.typ if clock else None, "Hz", margin, None, "misbehave",
-        _of(board, margin),
-        f"the chain is clocked at {in_units(chain.clock.max, 'Hz')}; "
-        + (f"one {name} alone follows up to {in_units(clock.typ, 'Hz')}" if clock else f"no highest clock of {name} was given"),
-        source=str(clock.origin) if clock else "",
-    )]  # fmt: skip
+    found = [
+        Finding(
+            "chain",
+            "clock",
+            name,
+            None,
+            "chain",
+            chain.clock.max,
+            clock.typ if clock else None,
+            "Hz",
+            margin,
+            None,
+            "misbehave",
+            _of(board, margin),
+            f"the chain is clocked at {in_units(chain.clock.max, 'Hz')}; "
+            + (
+                f"one {name} alone follows up to {in_units(clock.typ, 'Hz')}"
+                if clock
+                else f"no highest clock of {name} was given"
+            ),
+            source=str(clock.origin) if clock else "",
+        )
+    ]
     high, low = register.supply_high, register.supply_low
     rail = board.logic.voltage
-    for value, limit, quantity, consequence in (
+    ends: tuple[tuple[float, Quantity, str, Consequence], ...] = (
         (rail.max, high, "highest logic rail", "destroy"),
         (rail.min, low, "lowest logic rail", "misbehave"),
-    ):
+    )
+    for value, limit, quantity, consequence in ends:
         upper = limit is high
         spare = (limit.typ - value) / limit.typ if upper else (value - limit.typ) / limit.typ
-        found.append(Finding(
-            "logic-rail", quantity, name, None, "chain", value, limit.typ, "V", spare, None, consequence, _of(board, spare),  # type: ignore[arg-type]
-            f"the logic rail is {'up to' if upper else 'down to'} {in_units(value, 'V')}; {name} works "
-            f"{'up to' if upper else 'from'} {in_units(limit.typ, 'V')}",
-            source=str(limit.origin),
-        ))  # fmt: skip
+        found.append(
+            Finding(
+                "logic-rail",
+                quantity,
+                name,
+                None,
+                "chain",
+                value,
+                limit.typ,
+                "V",
+                spare,
+                None,
+                consequence,
+                _of(board, spare),
+                f"the logic rail is {'up to' if upper else 'down to'} {in_units(value, 'V')}; {name} works "
+                f"{'up to' if upper else 'from'} {in_units(limit.typ, 'V')}",
+                source=str(limit.origin),
+            )
+        )
     return found
 
 

@@ -183,15 +183,21 @@ class Avalanches:
             lo, hi = max(a - 1, 0), min(b + 2, len(t))
             joined = a == 0 and self._open
             one = Avalanche(
-                float(t[a]), float(t[b] - t[a]), float(np.trapezoid(np.maximum(p[lo:hi], 0), t[lo:hi])),
-                float(i[a : b + 1].max()), float(v[a : b + 1].max()),
-            )  # fmt: skip
+                float(t[a]),
+                float(t[b] - t[a]),
+                float(np.trapezoid(np.maximum(p[lo:hi], 0), t[lo:hi])),
+                float(i[a : b + 1].max()),
+                float(v[a : b + 1].max()),
+            )
             if joined and self.found:
                 last = self.found[-1]
                 one = Avalanche(
-                    last.start, one.start + one.lasting - last.start, last.energy + one.energy,
-                    max(last.current, one.current), max(last.voltage, one.voltage),
-                )  # fmt: skip
+                    last.start,
+                    one.start + one.lasting - last.start,
+                    last.energy + one.energy,
+                    max(last.current, one.current),
+                    max(last.voltage, one.voltage),
+                )
                 self.found[-1] = one
             else:
                 self.found.append(one)

@@ -5,7 +5,17 @@ from __future__ import annotations
 import numpy as np
 
 from boardsim.parts.base import Assumption
-from boardsim.verdict.findings import AuditEntry, CornerAudit, Envelope, Finding, Result, Timing, Traces, Verdict, overall
+from boardsim.verdict.findings import (
+    AuditEntry,
+    CornerAudit,
+    Envelope,
+    Finding,
+    Result,
+    Timing,
+    Traces,
+    Verdict,
+    overall,
+)
 
 COLD = "supply high, coils cold"
 HOT = "supply low, coils hot"
@@ -37,8 +47,7 @@ def finding(verdict: Verdict = "pass", channel: int | None = 0, **changes: objec
 
 def audit(passed: bool = True) -> tuple[CornerAudit, ...]:
     entries = [
-        AuditEntry("passivity", corner, "step 2 us", "clamp of lane 7", 1e-6, 3e-6, "J", True)
-        for corner in (COLD, HOT)
+        AuditEntry("passivity", corner, "step 2 us", "clamp of lane 7", 1e-6, 3e-6, "J", True) for corner in (COLD, HOT)
     ]
     entries += [
         AuditEntry("refinement", COLD, "step 2 us", "peak current of the clamp diode", 0.3, 1.0, "%", True),
@@ -103,10 +112,7 @@ def result(
         "verdict": overall(findings, proven, strict),
         "findings": findings,
         "assumptions": (
-            *(
-                Assumption(f"coil lane {n}", "core loss", "12.0 kohm", "solid core, from memory")
-                for n in range(24)
-            ),
+            *(Assumption(f"coil lane {n}", "core loss", "12.0 kohm", "solid core, from memory") for n in range(24)),
             Assumption("supply", "resistance", "20.0 mohm", "enclosed switching supply, from memory"),
         ),
         "audit": audit(proven),

@@ -15,9 +15,7 @@ def test_a_file_appears_with_its_folder_and_nothing_beside_it(tmp_path: Path) ->
 
 
 @pytest.mark.parametrize("interruption", [KeyboardInterrupt, RuntimeError])
-def test_an_interrupted_writer_leaves_the_old_file_as_it_was(
-    tmp_path: Path, interruption: type[BaseException]
-) -> None:
+def test_an_interrupted_writer_leaves_the_old_file_as_it_was(tmp_path: Path, interruption: type[BaseException]) -> None:
     place = tmp_path / "findings.json"
     place.write_text("the last run")
 

@@ -33,12 +33,8 @@ def test_a_mixed_result_follows_the_schema(validator: Draft202012Validator, tmp_
     validator.validate(read_strictly(tmp_path / "findings.json"))
 
 
-def test_an_engine_that_delivered_nothing_follows_the_schema(
-    validator: Draft202012Validator, tmp_path: Path
-) -> None:
-    write_findings(
-        result((), audit=(), traces=None, timings=(), firing=()), tmp_path / "findings.json"
-    )
+def test_an_engine_that_delivered_nothing_follows_the_schema(validator: Draft202012Validator, tmp_path: Path) -> None:
+    write_findings(result((), audit=(), traces=None, timings=(), firing=()), tmp_path / "findings.json")
     read = read_strictly(tmp_path / "findings.json")
     validator.validate(read)
     assert (read["verdict"], read["audit"]["passed"]) == ("unproven", False)

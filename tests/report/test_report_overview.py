@@ -200,9 +200,7 @@ def test_a_pulse_thinner_than_a_pixel_can_be_seen() -> None:
     seen = traces(24)
     without = pixels(drawn(replace(seen, on={**seen.on, 5: np.empty((0, 2))})))
     pulse = np.array([[0.15, 0.1500005]])
-    assert (
-        np.abs(without - pixels(drawn(replace(seen, on={**seen.on, 5: pulse})))).sum(axis=2) > 60
-    ).sum() >= 5
+    assert (np.abs(without - pixels(drawn(replace(seen, on={**seen.on, 5: pulse})))).sum(axis=2) > 60).sum() >= 5
 
 
 def test_a_chopped_hold_phase_is_drawn_as_few_bars() -> None:
@@ -235,9 +233,7 @@ def test_channels_that_fail_are_marked_and_the_mark_explained() -> None:
 )
 def test_tones_can_be_told_apart_in_grey(side_by_side: tuple[str, str]) -> None:
     # Luma after ITU-R BT.601, as programs convert to grey; a seventh suffices on paper, from memory.
-    light, dark = (
-        float(np.dot(to_rgb(getattr(drawing, tone)), (0.299, 0.587, 0.114))) for tone in side_by_side
-    )
+    light, dark = (float(np.dot(to_rgb(getattr(drawing, tone)), (0.299, 0.587, 0.114))) for tone in side_by_side)
     assert light - dark > 1 / 7
 
 

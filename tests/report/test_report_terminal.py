@@ -11,7 +11,7 @@ from rich.console import Console
 
 from boardsim.parts.base import Assumption
 from boardsim.report.terminal import MOST_SENTENCES, print_result
-from boardsim.report.wording import audit_passed, grouped, moment, percent, value_and_limit
+from boardsim.report.wording import grouped, moment, percent, value_and_limit
 from boardsim.verdict.findings import CAUTIONS, AuditEntry, CornerAudit, Result, Verdict
 
 
@@ -70,8 +70,7 @@ def test_a_pass_needs_no_sentence() -> None:
 
 def test_of_very_many_sentences_the_rest_is_counted() -> None:
     many = tuple(
-        finding("fail", n, part=f"diode {n:02}", sentence=f"Seed slot {n:02} burns.")
-        for n in range(MOST_SENTENCES + 5)
+        finding("fail", n, part=f"diode {n:02}", sentence=f"Seed slot {n:02} burns.") for n in range(MOST_SENTENCES + 5)
     )
     text = printed(result(many))
     assert text.count("burns.") == MOST_SENTENCES
@@ -122,7 +121,10 @@ def entry(criterion: Literal["passivity", "refinement"], run: str, passed: bool 
     [
         ((), "no second run"),
         ((entry("passivity", "coarse"),), "no second run"),
-        ((entry("passivity", "fine"), entry("refinement", "coarse against fine", passed=False)), "coil rail 3 %, beyond 1 %"),
+        (
+            (entry("passivity", "fine"), entry("refinement", "coarse against fine", passed=False)),
+            "coil rail 3 %, beyond 1 %",
+        ),
     ],
     ids=["never run", "no repeat", "moved"],
 )
@@ -144,9 +146,7 @@ def test_cautions_and_the_time_spent_are_always_there() -> None:
 
 
 def test_names_are_shown_as_they_stand_and_cannot_steer_the_terminal() -> None:
-    text = printed(
-        result((finding("fail", 1, sentence="[red]Tray[/red] \x1b[2Jgate :gear: fails.", label="[b]7"),))
-    )
+    text = printed(result((finding("fail", 1, sentence="[red]Tray[/red] \x1b[2Jgate :gear: fails.", label="[b]7"),)))
     assert "[red]Tray[/red] [2Jgate :gear: fails." in text
     assert "[b]7" in text
     assert "\x1b" not in text

@@ -9,9 +9,29 @@ from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import (
-    GROUND, Ammeter, BreakdownRule, Corner, Limit, MeanRule, Model, Part, PeakRule, Port, PowerMosfet, Probe, Record,
-    Resistor, Stamp, current, listed, named_part, plus, scaled, voltage,
-)  # fmt: skip
+    GROUND,
+    Ammeter,
+    BreakdownRule,
+    Corner,
+    Element,
+    Limit,
+    MeanRule,
+    Model,
+    Part,
+    PeakRule,
+    Port,
+    PowerMosfet,
+    Probe,
+    Record,
+    Resistor,
+    Stamp,
+    current,
+    listed,
+    named_part,
+    plus,
+    scaled,
+    voltage,
+)
 from boardsim.quantities import CAPACITANCE, CHARGE, CURRENT, ENERGY, RESISTANCE, VOLTAGE, Quantity, assume
 
 _BODY_DIODE_POTENTIAL = 0.75  # [V], grading exponent 1/2: an abrupt junction, from memory
@@ -39,15 +59,21 @@ class NMosfet(Part):
     avalanche_energy: Annotated[Quantity, ENERGY] | None = None
     avalanche_repetitive: Annotated[Quantity, ENERGY] | None = None
     threshold: Annotated[Quantity, VOLTAGE]
-    threshold_current: Annotated[Quantity, CURRENT] = assume("250 uA", CURRENT, "test current of most datasheets, common practice")
+    threshold_current: Annotated[Quantity, CURRENT] = assume(
+        "250 uA", CURRENT, "test current of most datasheets, common practice"
+    )
     on_resistance: Annotated[tuple[OnResistance, ...], Field(min_length=1)]
     input_capacitance: Annotated[Quantity, CAPACITANCE]
     output_capacitance: Annotated[Quantity, CAPACITANCE]
     reverse_capacitance: Annotated[Quantity, CAPACITANCE]
-    capacitance_voltage: Annotated[Quantity, VOLTAGE] = assume("25 V", VOLTAGE, "test voltage of most datasheets, common practice")
+    capacitance_voltage: Annotated[Quantity, VOLTAGE] = assume(
+        "25 V", VOLTAGE, "test voltage of most datasheets, common practice"
+    )
     gate_drain_charge: Annotated[Quantity, CHARGE]
     charge_voltage: Annotated[Quantity, VOLTAGE]
-    gate_resistance: Annotated[Quantity, RESISTANCE] = assume("2 ohm", RESISTANCE, "internal gate resistance, from memory")
+    gate_resistance: Annotated[Quantity, RESISTANCE] = assume(
+        "2 ohm", RESISTANCE, "internal gate resistance, from memory"
+    )
 
     @model_validator(mode="after")
     def _coherent(self) -> NMosfet:
@@ -85,7 +111,9 @@ class NMosfet(Part):
         points = sorted((p.gate.typ, p.value.typ) for p in self.on_resistance)
         v_th, i_th = self.threshold.typ, self.threshold_current.typ
         if points[0][0] <= v_th:
-            raise QuantityError(f"on_resistance at a gate voltage of {points[0][0]:.3g} V, below the threshold of {v_th:.3g} V")
+            raise QuantityError(
+                f"on_resistance at a gate voltage of {points[0][0]:.3g} V, below the threshold of {v_th:.3g} V"
+            )
         v_to = v_th
         for _ in range(20):  # V_TO and K_P depend weakly on each other
             if len(points) == 1:
@@ -100,7 +128,9 @@ class NMosfet(Part):
                     "with gate voltage, and not faster than the channel alone; use the typical figures of one table"
                 )
             v_to = v_th - math.sqrt(2 * i_th / k_p)
-        c_iss, c_oss, c_rss = (c.typ for c in (self.input_capacitance, self.output_capacitance, self.reverse_capacitance))
+        c_iss, c_oss, c_rss = (
+            c.typ for c in (self.input_capacitance, self.output_capacitance, self.reverse_capacitance)
+        )
         if not c_rss < min(c_iss, c_oss):
             raise QuantityError("reverse_capacitance must be smaller than input_capacitance and output_capacitance")
         v, a = self.charge_voltage.typ, _GATE_DRAIN_SLOPE
@@ -112,11 +142,26 @@ class NMosfet(Part):
             raise QuantityError("gate_drain_charge is smaller than reverse_capacitance times charge_voltage")
         junction = (c_oss - c_rss) * math.sqrt(1 + self.capacitance_voltage.typ / _BODY_DIODE_POTENTIAL)
         return {
-            "VTO": v_to, "KP": k_p, "RD": r_d, "RS": 0.0, "RG": self.gate_resistance.typ, "RB": 0.005,
-            "CGS": c_iss - c_rss, "CGDMAX": c_max, "CGDMIN": c_rss, "A": a,
-            "CJO": junction, "VJ": _BODY_DIODE_POTENTIAL, "M": 0.5, "IS": 1e-12, "N": 1.1, "TT": 50e-9,
-            "BV": breakdown, "IBV": _BREAKDOWN_CURRENT, "TNOM": 25.0,
-        }  # fmt: skip
+            "VTO": v_to,
+            "KP": k_p,
+            "RD": r_d,
+            "RS": 0.0,
+            "RG": self.gate_resistance.typ,
+            "RB": 0.005,
+            "CGS": c_iss - c_rss,
+            "CGDMAX": c_max,
+            "CGDMIN": c_rss,
+            "A": a,
+            "CJO": junction,
+            "VJ": _BODY_DIODE_POTENTIAL,
+            "M": 0.5,
+            "IS": 1e-12,
+            "N": 1.1,
+            "TT": 50e-9,
+            "BV": breakdown,
+            "IBV": _BREAKDOWN_CURRENT,
+            "TNOM": 25.0,
+        }
 
 
 class NMosfetStage(Part):
@@ -144,15 +189,21 @@ class NMosfetStage(Part):
         meter = Ammeter(f"{name}_d", drain, inside)
         r_gate = max(self.gate.typ, 1e-2)
         into_gate = scaled(1 / r_gate, voltage(pin, gate))
-        elements = [meter, PowerMosfet(name, inside, gate, GROUND, Model(f"{name}_m", "VDMOS", parameters))]
-        network = [Resistor(f"{name}_gate", pin, gate, r_gate)]
+        elements: list[Element] = [
+            meter,
+            PowerMosfet(name, inside, gate, GROUND, Model(f"{name}_m", "VDMOS", parameters)),
+        ]
+        network: list[Element] = [Resistor(f"{name}_gate", pin, gate, r_gate)]
         if self.pulldown is not None:
             network.append(Resistor(f"{name}_pulldown", gate, GROUND, self.pulldown.typ))
             into_gate = plus(into_gate, scaled(-1 / self.pulldown.typ, voltage(gate)))
         peak = Limit.of(part.pulse_current, "pulsed drain current", "A", "current")
         if part.pulse_current is None:
             peak = Limit.of(part.continuous_current, "continuous drain current (no pulse rating given)", "A", "current")
-        holds = 0.5 * (parameters["CJO"] + parameters["CGDMAX"]) * bv**2 + 0.5 * (part.input_capacitance.typ + parameters["CGDMAX"]) * 20.0**2
+        holds = (
+            0.5 * (parameters["CJO"] + parameters["CGDMAX"]) * bv**2
+            + 0.5 * (part.input_capacitance.typ + parameters["CGDMAX"]) * 20.0**2
+        )
         return Stamp(
             elements=(*elements, *network),
             probes=(
@@ -164,17 +215,35 @@ class NMosfetStage(Part):
             ports=(Port("switch", (("v_ds", "i_d"), ("v_gs", "i_g")), holds=holds),),
             rules=(
                 BreakdownRule(
-                    "overvoltage", "v_ds", "i_d", bv,
+                    "overvoltage",
+                    "v_ds",
+                    "i_d",
+                    bv,
                     Limit.of(part.breakdown, "drain-source voltage", "V", "voltage", part.breakdown.min),
                     Limit.of(part.avalanche_current, "avalanche current", "A", "current"),
                     Limit.of(part.avalanche_energy, "single-pulse avalanche energy", "J", "energy"),
                     Limit.of(part.avalanche_repetitive, "repetitive avalanche energy", "J", "energy"),
                 ),
-                PeakRule("overvoltage", "v_gs", Limit.of(part.gate_rating, "gate-source voltage", "V", "voltage"), "destroy",
-                         "gate-source voltage of the switch", "lower the logic rail, or choose a gate rating that stands it", magnitude=True),
+                PeakRule(
+                    "overvoltage",
+                    "v_gs",
+                    Limit.of(part.gate_rating, "gate-source voltage", "V", "voltage"),
+                    "destroy",
+                    "gate-source voltage of the switch",
+                    "lower the logic rail, or choose a gate rating that stands it",
+                    magnitude=True,
+                ),
                 PeakRule("overcurrent", "i_d", peak, "destroy", "peak current of the switch", "choose a larger switch"),
-                MeanRule("overcurrent", ("i_d",), Limit.of(part.continuous_current, "continuous drain current", "A", "current"),
-                         "destroy", "average current of the switch", "choose a larger switch, or fire less often"),
+                MeanRule(
+                    "overcurrent",
+                    ("i_d",),
+                    Limit.of(part.continuous_current, "continuous drain current", "A", "current"),
+                    "destroy",
+                    "average current of the switch",
+                    "choose a larger switch, or fire less often",
+                ),
             ),
-            assumptions=listed("switch", gate_resistance=part.gate_resistance, capacitance_voltage=part.capacitance_voltage),
-        )  # fmt: skip
+            assumptions=listed(
+                "switch", gate_resistance=part.gate_resistance, capacitance_voltage=part.capacitance_voltage
+            ),
+        )
