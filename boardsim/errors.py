@@ -71,6 +71,10 @@ class EngineTimeout(EngineError):
     """The time limit ran out."""
 
 
+class EngineStopped(EngineError):
+    """Somebody interrupted the run."""
+
+
 class NoConvergence(EngineError):
     """ngspice gave up, or stopped before the end of the pattern."""
 

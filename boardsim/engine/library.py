@@ -37,13 +37,13 @@ def fatal_lines(messages: list[str]) -> list[str]:
     return [m for m in messages if _FATAL.search(m) and not _RETRIED.search(m)]
 
 
-def find_library() -> str | None:
-    """Path or name under which libngspice can be opened, or None."""
+def find_library() -> str:
+    """Path or name under which libngspice can be opened, if it is there."""
     named = os.environ.get("NGSPICE_LIBRARY_PATH")
     if named:
         return named
     # Debian ships libngspice.so.0 without the bare name that PySpice asks for.
-    return ctypes.util.find_library("ngspice")
+    return ctypes.util.find_library("ngspice") or "libngspice.so.0"
 
 
 class _WithoutInitData:

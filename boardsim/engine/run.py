@@ -22,13 +22,15 @@ from boardsim.errors import (
     BoardsimError,
     DeckRejected,
     EngineCrash,
+    EngineStopped,
     EngineMissing,
     EngineTimeout,
     NoConvergence,
 )
 
 DEFAULT_TIME_LIMIT = 900.0  # [s] per run
-_STALL = "ngspice made no progress"
+_KEPT_DECK, _KEPT_LOG = "failed.cir", "failed.log"
+_LISTEN = 0.2  # [s] between looks at whether somebody wants to stop
 
 Progress = Callable[[float], None]
 
@@ -42,11 +44,13 @@ class Engine:
     """A worker process with one libngspice, in a scratch folder.
 
     The worker is started at the first run, and again after a failure. The folder goes with the engine, unless a
-    run failed: then deck and log are kept in `keep` and the error names them.
+    run failed: then deck and log are kept in `keep` and the error names them. Setting `cancel` ends a run from
+    another thread.
     """
 
     keep: Path
     time_limit: float = DEFAULT_TIME_LIMIT
+    cancel: threading.Event = field(default_factory=threading.Event)
     command: tuple[str, ...] = (sys.executable, "-m", "boardsim.engine.worker")
     version: int | None = None
     _folder: Path | None = None
@@ -63,6 +67,13 @@ class Engine:
         if self._folder is not None:
             shutil.rmtree(self._folder, ignore_errors=True)
             self._folder = None
+
+    def discard_kept(self) -> None:
+        """Remove what earlier failures left in `keep`, once a later run has made it pointless."""
+        for name in (_KEPT_DECK, _KEPT_LOG):
+            (self.keep / name).unlink(missing_ok=True)
+        with contextlib.suppress(OSError):
+            self.keep.rmdir()  # only if nothing else is in it
 
     @property
     def folder(self) -> Path:
@@ -155,11 +166,19 @@ class Engine:
         return self._process
 
     def _answer(self, deck: Path, deadline: float) -> dict[str, Any]:
-        try:
-            line = self._answers.get(timeout=max(0.0, deadline - time.monotonic()))
-        except queue.Empty:
-            self._stop()
-            raise self._failure(EngineTimeout, f"{_STALL} to the end within {self.time_limit:g} s", deck) from None
+        while True:
+            left = deadline - time.monotonic()
+            try:
+                line = self._answers.get(timeout=max(0.0, min(left, _LISTEN)))
+                break
+            except queue.Empty:
+                if self.cancel.is_set():
+                    self._stop()
+                    raise EngineStopped("interrupted") from None
+                if left <= 0:
+                    self._stop()
+                    text = f"ngspice did not finish within {self.time_limit:g} s"
+                    raise self._failure(EngineTimeout, text, deck) from None
         if line is None:
             raise self._crashed(deck)
         answer: dict[str, Any] = json.loads(line)
@@ -186,7 +205,7 @@ class Engine:
     ) -> BoardsimError:
         """The error for a failed run, with deck and log copied to where the user finds them."""
         self.keep.mkdir(parents=True, exist_ok=True)
-        kept_deck, kept_log = self.keep / "failed.cir", self.keep / "failed.log"
+        kept_deck, kept_log = self.keep / _KEPT_DECK, self.keep / _KEPT_LOG
         shutil.copyfile(deck, kept_deck)
         log = self.folder / "ngspice.log"
         if log.exists():

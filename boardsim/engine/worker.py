@@ -6,17 +6,24 @@ Everything that ngspice itself prints goes to the log.
 
 from __future__ import annotations
 
+import ctypes
 import json
 import os
 import re
+import signal
 import sys
 import time
 from pathlib import Path
 from typing import Any
 
+_PR_SET_PDEATHSIG = 1
+
 
 def main() -> None:
     """Serve runs until standard input ends."""
+    if sys.platform == "linux":
+        # Go when the caller goes, also in the middle of a run.
+        ctypes.CDLL(None).prctl(_PR_SET_PDEATHSIG, signal.SIGKILL)
     answers = os.fdopen(os.dup(1), "w", buffering=1)
     log = os.open("ngspice.log", os.O_WRONLY | os.O_CREAT | os.O_APPEND, 0o644)
     os.dup2(log, 1)
@@ -36,11 +43,8 @@ def main() -> None:
             said = time.monotonic()
             answer(progress=float(match[1]) / 100)
 
-    library = find_library()
     try:
-        if library is None:
-            raise OSError("libngspice was not found")
-        engine = Ngspice(library, on_status)
+        engine = Ngspice(find_library(), on_status)
     except (OSError, NameError) as err:
         answer(missing=f"{err}; {HOW_TO_INSTALL}")
         return

@@ -19,11 +19,11 @@ from boardsim.parts.base import (
     listed,
     voltage,
 )
-from boardsim.quantities import CURRENT, RESISTANCE, VOLTAGE, Quantity, assume
+from boardsim.quantities import CURRENT, POSITIVE_RESISTANCE, RESISTANCE, VOLTAGE, Quantity, assume
 
 # Widths over which the two bends of the characteristic are rounded, so that Newton's method has a slope everywhere.
-_ONE_WAY_WIDTH = 1e-3  # [A]
-_CEILING_WIDTH = 1e-3  # share of the ceiling
+_ONE_WAY_WIDTH = 10e-3  # [A]
+_CEILING_WIDTH = 5e-3  # share of the ceiling; a real supply's bend is no sharper
 
 
 class Supply(Part):
@@ -42,8 +42,8 @@ class Supply(Part):
         "20 mohm", RESISTANCE, "load regulation of an enclosed switching supply, from memory"
     )
     current_ceiling: Annotated[Quantity, CURRENT] | None = None
-    internal_load: Annotated[Quantity, RESISTANCE] = assume(
-        "10 kohm", RESISTANCE, "feedback divider and indicator of a supply, from memory"
+    internal_load: Annotated[Quantity, POSITIVE_RESISTANCE] = assume(
+        "10 kohm", POSITIVE_RESISTANCE, "feedback divider and indicator of a supply, from memory"
     )
 
     def stamp(self, plus: str, corner: Corner) -> Stamp:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import threading
 import time
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
@@ -19,13 +20,14 @@ from boardsim.verdict.findings import AuditEntry, CornerAudit, Finding
 from boardsim.verdict.judge import Bench, judge
 from boardsim.verdict.readings import Readings, take_readings
 
-# Gear's method, since the trapezoidal rule fails passivity on clamped coils at any tolerance worth its time. Each
-# rung takes at least 1.5 times the points of the one before on boards measured so far; the last two are for what fails.
+# Gear's method, since the trapezoidal rule fails passivity on clamped coils at any tolerance worth its time. A rung
+# takes at least 1.5 times the points of the one before on most boards; those from the third on are for what fails.
 LADDER = (
-    Settings("gear", 3e-4, 500e-6),
-    Settings("gear", 5e-5, 300e-6),
-    Settings("gear", 1e-5, 150e-6),
-    Settings("gear", 2e-6, 75e-6),
+    Settings("gear", 1e-3, 500e-6),
+    Settings("gear", 2.5e-4, 500e-6),
+    Settings("gear", 4e-5, 300e-6),
+    Settings("gear", 8e-6, 150e-6),
+    Settings("gear", 1.5e-6, 75e-6),
 )
 
 Progress = Callable[[float], None]
@@ -42,13 +44,8 @@ class Trial:
     audit: tuple[AuditEntry, ...]
 
     @property
-    def passive(self) -> bool:
-        """Whether the run is fit to be compared with."""
-        return all(entry.passed for entry in self.audit if entry.criterion == "passivity")
-
-    @property
     def sound(self) -> bool:
-        """Whether the run is fit to be reported, refinement apart."""
+        """Whether the run is fit to be reported, once another agrees with it."""
         return all(entry.passed for entry in self.audit)
 
 
@@ -96,8 +93,9 @@ def run_corner(
     progress: Progress,
     ladder: Sequence[Settings] = LADDER,
     time_limit: float = DEFAULT_TIME_LIMIT,
+    cancel: threading.Event | None = None,
 ) -> CornerResult:
-    """Run a corner coarse and fine; accept the fine run if both pass passivity and the readings agree.
+    """Run a corner coarse and fine; accept the fine run if it passes by itself and the coarse one agrees with it.
 
     Parameters
     ----------
@@ -109,11 +107,13 @@ def run_corner(
         From coarse to fine.
     time_limit : float
         Per run. [s]
+    cancel : threading.Event
+        Ends the corner from another thread when set.
 
     Raises
     ------
-    EngineMissing, EngineCrash, DeckRejected
-        If there is no engine to speak of, or it does not take the deck.
+    EngineMissing, EngineCrash, EngineStopped, DeckRejected
+        If there is no engine to speak of, it was interrupted, or it does not take the deck.
     """
     clock = time.perf_counter()
     deck = assemble(board, firing, corner, windows(board, firing)[0])
@@ -122,14 +122,17 @@ def run_corner(
     entries: list[AuditEntry] = []
     trials: list[Trial] = []
     failure: Exception | None = None
-    with Engine(keep, time_limit) as engine:
+    with Engine(keep, time_limit, cancel or threading.Event()) as engine:
         job = _Job(engine, deck, firing, bench, floor, seconds)
         for settings, (begin, end) in zip(ladder, (*_SHARES, *[(0.95, 0.95)] * len(ladder)), strict=False):
             try:
                 trial = job.run(settings, _scaled(progress, begin, end))
-            except (NoConvergence, EngineTimeout) as err:
+            except NoConvergence as err:
                 failure = err
                 continue
+            except EngineTimeout as err:
+                failure = err
+                break  # a finer run takes longer still
             entries += trial.audit
             coarse = _coarser(trials, trial)
             trials.append(trial)
@@ -139,9 +142,10 @@ def run_corner(
             pair = f"{coarse.settings} against {settings}"
             entry = refinement(coarse.findings, trial.findings, points, corner.name, pair)
             entries.append(entry)
-            if entry.passed and trial.sound and coarse.passive:
-                decisive = (*(e for e in coarse.audit if e.criterion == "passivity"), *trial.audit, entry)
+            if entry.passed and trial.sound:
+                decisive = (*trial.audit, entry)
                 progress(1.0)
+                engine.discard_kept()
                 return CornerResult(corner, trial, CornerAudit(corner.name, decisive, True), seconds)
     progress(1.0)
     last = trials[-1] if trials else None
@@ -156,10 +160,9 @@ def _scaled(progress: Progress, begin: float, end: float) -> Progress:
 
 
 def _coarser(before: Sequence[Trial], trial: Trial) -> Trial | None:
-    """The last passive run that has few enough points for this one to be its refinement; else the first run."""
-    candidates = [t for t in before if t.passive] or list(before)
-    few = [t for t in candidates if trial.readings.points >= POINTS * t.readings.points]
-    return (few[-1] if few else candidates[0]) if candidates else None
+    """The last run that has few enough points for this one to be its refinement; else the first run."""
+    few = [t for t in before if trial.readings.points >= POINTS * t.readings.points]
+    return few[-1] if few else before[0] if before else None
 
 
 def _full_energy(board: Board, corner: Corner) -> list[float]:

@@ -57,7 +57,7 @@ def fire_pattern(
     spent_firing = time.perf_counter() - began
     wanted, only = corners(board), nominal_only(board)
     shares = dict.fromkeys((c.name for c in wanted), 0.0)
-    lock = threading.Lock()
+    lock, cancel = threading.Lock(), threading.Event()
 
     def report(name: str, share: float) -> None:
         if progress is not None:
@@ -69,11 +69,17 @@ def fire_pattern(
         corner = wanted[i]
         bench = Bench(board, corner.name, only)
         folder = keep if len(wanted) == 1 else keep / f"corner{i + 1}"
-        return run_corner(board, firing, corner, bench, folder, lambda s: report(corner.name, s), time_limit=time_limit)
+        return run_corner(
+            board, firing, corner, bench, folder, lambda s: report(corner.name, s), time_limit=time_limit, cancel=cancel
+        )
 
     began = time.perf_counter()
     with ThreadPoolExecutor(max_workers=workers or os.cpu_count() or 1) as pool:
-        results = list(pool.map(one, range(len(wanted))))
+        try:
+            results = list(pool.map(one, range(len(wanted))))
+        except BaseException:
+            cancel.set()  # else leaving the pool would wait for every run to end by itself
+            raise
     spent_running = time.perf_counter() - began
     if all(r.trial is None for r in results):
         raise next(r.failure for r in results if r.failure is not None)

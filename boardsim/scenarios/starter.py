@@ -5,10 +5,14 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
+from pydantic import BaseModel
+from pydantic.json_schema import GenerateJsonSchema
+
 from boardsim.board.schema import BoardFile
 from boardsim.errors import InputError
 from boardsim.firing.pattern import PatternFile
 from boardsim.parts.base import Record
+from boardsim.quantities import Quantity
 from boardsim.report.files import write_text
 
 BOARD = """\
@@ -104,5 +108,15 @@ def json_schema(what: str) -> dict[str, Any] | None:
         return None
     return {
         "$schema": "https://json-schema.org/draft/2020-12/schema",
-        **model.model_json_schema(by_alias=True),
+        **model.model_json_schema(by_alias=True, schema_generator=_Schema),
     }
+
+
+class _Schema(GenerateJsonSchema):
+    """Writes the default of a quantity as a file would: as text."""
+
+    def encode_default(self, dft: Any) -> Any:
+        """What the schema names as the default; none of a whole table, since its keys have their own."""
+        if isinstance(dft, Quantity):
+            return str(dft)
+        return super().encode_default({} if isinstance(dft, BaseModel) else dft)

@@ -10,7 +10,7 @@ from boardsim.verdict.readings import PortReading, Readings
 SHARE = 0.01  # of the deciding energy or reading
 POINTS = 1.5  # a repeat counts as a refinement only with this many times the points
 DECIDING = 0.5  # a reading with more margin than this decides nothing, and may move by
-FAR = 0.1  # this share, which leaves it far from deciding
+FAR = 0.05  # this share of its limit, which leaves it outside every guard band
 
 
 def passivity(readings: Readings, corner: str, run: str, floor: float) -> AuditEntry:
@@ -76,7 +76,8 @@ def refinement(
 ) -> AuditEntry:
     """A repeat with at least 1.5 times the points must not move any deciding reading by 1 %.
 
-    A reading decides unless its margin is above one half; those others may move by 10 % of themselves.
+    A reading decides unless its margin is above one half; those others may move by 5 % of their limit, after which
+    none of them can have come to decide.
 
     Parameters
     ----------
@@ -92,10 +93,12 @@ def refinement(
     worst, allowed, subject = -1.0, SHARE, "nothing was read"
     for f in fine:
         old = before.pop(f.key, None)
-        moved = 1.0 if old is None else _moved(old, f)
-        bound = FAR if f.margin is not None and f.margin > DECIDING else SHARE
+        far = f.margin is not None and f.margin > DECIDING and f.limit is not None
+        moved = 1.0 if old is None else abs(old.value - f.value) / abs(f.limit or 1.0) if far else _moved(old, f)
+        bound = FAR if far else SHARE
         if moved / bound > worst / allowed:
-            worst, allowed, subject = moved, bound, f"{f.label}: {f.quantity} moved by"
+            worst, allowed = moved, bound
+            subject = f"{f.label}: {f.quantity} moved by" + (" (of its limit)" if far else "")
     if before:
         gone = next(iter(before.values()))
         worst, allowed, subject = 1.0, SHARE, f"{gone.label}: {gone.quantity} is gone, moved by"

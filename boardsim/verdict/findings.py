@@ -132,10 +132,9 @@ class CornerAudit:
     ----------
     corner : str
     entries : tuple of AuditEntry
-        Of the run that is reported, of the run that it is compared with, and their comparison; of every try where
-        none held.
+        Of the run that is reported, and its comparison with a coarser one; of every try where none held.
     proven : bool
-        Whether two runs of the corner pass and agree.
+        Whether a run of the corner passes by itself and a coarser one agrees with it.
     """
 
     corner: str

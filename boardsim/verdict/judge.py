@@ -407,7 +407,9 @@ def _dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, 
     lowest, at = readings.low[placed.channel, rule.quantity]
     who = _together(bench.board, firing, at)
     level = rule.limit.value
+    at_supply = in_units(readings.low[None, "v_supply"][0], "V")
     sentence = f"{who} at {in_units(at, 's', 4)}: the {rule.what} fell to {in_units(lowest, 'V')}"
+    sentence += f" ({at_supply} at the supply's own terminals)"
     if level is None:
         return Finding(
             rule.check,

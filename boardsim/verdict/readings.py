@@ -36,7 +36,7 @@ from boardsim.verdict.watch import (
 Key = tuple[int | None, str]
 
 SLICES = 1600  # across a picture; more than it has pixels
-AT_CEILING = 0.995  # share of the ceiling from which the supply counts as being at it (its bend is rounded)
+AT_CEILING = 0.99  # share of the ceiling from which the supply counts as being at it (its bend is rounded)
 
 
 @dataclass(frozen=True)

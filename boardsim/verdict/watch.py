@@ -223,7 +223,7 @@ class Samples:
 
 @dataclass
 class TimeAbove:
-    """How long a signal is at or above a level in all, and since when."""
+    """How long a signal is at or above a level in all (ends interpolated), and since when."""
 
     level: float
     total: float = 0.0
@@ -232,10 +232,16 @@ class TimeAbove:
     def feed(self, t: Floats, y: Floats) -> None:
         """Times and values, both (m,)."""
         above = y >= self.level
-        if above.any():
-            self.total += float(np.sum(np.diff(t) * (above[1:] & above[:-1])))
-            if self.first is None:
-                self.first = float(t[above.argmax()])
+        if not above.any():
+            return
+        over = np.maximum(y - self.level, 0.0)
+        change = np.abs(np.diff(y))
+        crossing = above[1:] != above[:-1]
+        share = (above[1:] & above[:-1]).astype(np.float64)
+        share[crossing] = np.maximum(over[1:], over[:-1])[crossing] / change[crossing]
+        self.total += float(np.sum(np.diff(t) * share))
+        if self.first is None:
+            self.first = float(t[above.argmax()])
 
 
 @dataclass

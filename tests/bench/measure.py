@@ -1,0 +1,58 @@
+"""Times whole commands as a user starts them, cold, and holds them against their budgets.
+
+    .venv/bin/python tests/bench/measure.py            both
+    .venv/bin/python tests/bench/measure.py help       only the start-up
+    .venv/bin/python tests/bench/measure.py fire       only the fruit sorter's steady pattern
+
+Budgets are for two cores. Exit status 1 if one is missed. Compare two versions by their ratio in one sitting, not by
+seconds of different days.
+"""
+
+from __future__ import annotations
+
+import json
+import statistics
+import subprocess
+import sys
+import tempfile
+import time
+from pathlib import Path
+
+HERE = Path(__file__).resolve().parents[2]
+SORTER = HERE / "netlists" / "fruit-sorter"
+BUDGETS = {"help": 0.5, "fire": 60.0}  # [s]
+
+
+def timed(*arguments: str) -> float:
+    """Wall time of one command. [s]"""
+    begin = time.perf_counter()
+    done = subprocess.run(
+        [sys.executable, "-m", "boardsim.cli", *arguments], capture_output=True, cwd=HERE, check=False
+    )
+    spent = time.perf_counter() - begin
+    if done.returncode != 0:
+        sys.exit(f"{' '.join(arguments)} ended with status {done.returncode}:\n{done.stderr.decode()}")
+    return spent
+
+
+def main() -> None:
+    """Measure what the arguments name, or everything."""
+    missed = False
+    for name in sys.argv[1:] or list(BUDGETS):
+        if name == "help":
+            spent = statistics.median(timed("--help") for _ in range(5))
+            detail = "median of 5"
+        else:
+            with tempfile.TemporaryDirectory() as out:
+                spent = timed(
+                    "fire", str(SORTER / "board.toml"), str(SORTER / "patterns" / "steady.toml"), "--out", out
+                )
+                found = json.loads((Path(out) / "findings.json").read_text(encoding="utf-8"))
+            detail = "; ".join(f"{t['stage']} {t['seconds']:.2f} s" for t in found["timings"])
+        missed |= spent > BUDGETS[name]
+        print(f"{name}: {spent:.2f} s of {BUDGETS[name]:g} s ({detail})")
+    sys.exit(missed)
+
+
+if __name__ == "__main__":
+    main()
