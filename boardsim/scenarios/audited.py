@@ -16,8 +16,9 @@ from boardsim.errors import EngineTimeout, NoConvergence
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Corner
 from boardsim.verdict.audit import POINTS, density, passivity, refinement
+from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import AuditEntry, CornerAudit, Finding
-from boardsim.verdict.judge import Bench, judge
+from boardsim.verdict.judge import judge
 from boardsim.verdict.readings import Readings, take_readings
 
 # Gear's method, since the trapezoidal rule fails passivity on clamped coils at any tolerance worth its time. A rung

@@ -18,8 +18,8 @@ from boardsim.firing.schedule import Firing, fire
 from boardsim.parts.base import Assumption
 from boardsim.quantities import in_units
 from boardsim.scenarios.audited import CornerResult, run_corner, unproven
+from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding, Result, Timing, Traces, overall, severity
-from boardsim.verdict.judge import Bench
 from boardsim.verdict.switching import judge_switching
 
 

@@ -1,0 +1,124 @@
+"""The drain voltage of a switch: below breakdown by voltage, in avalanche by current, energy and repetition."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import replace
+
+from boardsim.circuit.deck import PlacedRule
+from boardsim.parts.base import BreakdownRule
+from boardsim.quantities import in_units
+from boardsim.verdict.bench import Bench, upper, when
+from boardsim.verdict.findings import Finding
+from boardsim.verdict.readings import Readings
+from boardsim.verdict.watch import Avalanche
+
+_CLAMP = "add a clamp, or choose a switch rated for this avalanche"
+
+
+def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings, bench: Bench) -> Iterator[Finding]:
+    """Below breakdown by voltage, in avalanche by current, energy and repetition."""
+    assert placed.channel is not None  # the rule of a channel's switch
+    value, at = readings.high[placed.channel, rule.voltage]
+    events = readings.avalanches[placed.channel]
+    if not events:
+        yield upper(
+            "drain-source voltage",
+            rule.check,
+            rule.rating,
+            "destroy",
+            placed,
+            bench,
+            value,
+            at,
+            "clamp the coil at a lower voltage",
+        )
+        return
+    hardest = max(events, key=lambda e: e.energy)
+    times = f", {len(events)} times" if len(events) > 1 else ""
+    detail = f" in avalanche at {in_units(hardest.voltage, 'V')}{times}"
+    if all(limit.value is None for limit in (rule.avalanche_current, rule.single, rule.repetitive)):
+        yield Finding(
+            rule.check,
+            "avalanche energy",
+            placed.part,
+            placed.channel,
+            placed.label,
+            hardest.energy,
+            0.0,
+            "J",
+            -1.0,
+            hardest.start,
+            "destroy",
+            "fail",
+            f"{placed.label}: the switch takes {in_units(hardest.energy, 'J')}{when(hardest.start)}{detail}; {placed.part} has no "
+            f"avalanche rating, so breakdown destroys it; try: {_CLAMP}",
+            source="no avalanche rating given",
+        )
+        return
+    current = max(events, key=lambda e: e.current)
+    yield upper(
+        "avalanche current",
+        rule.check,
+        rule.avalanche_current,
+        "destroy",
+        placed,
+        bench,
+        current.current,
+        current.start,
+        _CLAMP,
+        detail,
+    )
+    yield from _avalanche_energy(rule, placed, bench, events, hardest, detail)
+
+
+def _avalanche_energy(
+    rule: BreakdownRule,
+    placed: PlacedRule,
+    bench: Bench,
+    events: tuple[Avalanche, ...],
+    hardest: Avalanche,
+    detail: str,
+) -> Iterator[Finding]:
+    """A single-pulse rating covers one pulse; repeated avalanche needs a repetitive rating."""
+    single = upper(
+        "avalanche energy",
+        rule.check,
+        rule.single,
+        "destroy",
+        placed,
+        bench,
+        hardest.energy,
+        hardest.start,
+        _CLAMP,
+        detail,
+    )
+    if len(events) == 1:
+        yield single
+        return
+    if single.verdict == "fail":
+        yield single
+        return
+    if rule.repetitive.value is None:
+        yield replace(
+            single,
+            limit=None,
+            margin=None,
+            verdict="limit-missing",
+            source="",
+            sentence=f"{placed.label}: the switch takes up to {in_units(hardest.energy, 'J')}{detail}; the single-pulse rating of "
+            f"{placed.part} covers one pulse only, and no repetitive avalanche energy was given",
+        )
+        return
+    yield upper(
+        "avalanche energy",
+        rule.check,
+        rule.repetitive,
+        "destroy",
+        placed,
+        bench,
+        hardest.energy,
+        hardest.start,
+        _CLAMP,
+        detail,
+    )

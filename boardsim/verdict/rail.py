@@ -1,0 +1,166 @@
+"""The coil rail's dips and the supply's ceiling, and who was on at the time."""
+
+from __future__ import annotations
+
+from boardsim.board.ranges import write_range
+from boardsim.board.reader import Board
+from boardsim.circuit.deck import PlacedRule
+from boardsim.firing.schedule import Firing
+from boardsim.parts.base import CeilingRule, DipRule
+from boardsim.quantities import in_units
+from boardsim.verdict.bench import Bench
+from boardsim.verdict.findings import Finding
+from boardsim.verdict.readings import AT_CEILING, Readings
+from boardsim.verdict.watch import Dip
+
+
+def _who(board: Board, channels: tuple[int, ...]) -> str:
+    """The channels by the board's own names, such as "lane 0-23"."""
+    if not channels:
+        return "no channel"
+    labels = [board.channel(c).label for c in channels]
+    stems = {label.rstrip("0123456789") for label in labels}
+    if len(labels) == 1:
+        return labels[0]
+    if len(stems) == 1 and (stem := stems.pop()).strip():
+        numbers = [int(label[len(stem) :]) for label in labels if label[len(stem) :]]
+        if len(numbers) == len(labels):
+            return f"{stem.strip()}s {write_range(numbers)}"
+    return f"channels {write_range(list(channels))}"
+
+
+def _together(board: Board, firing: Firing, at: float) -> str:
+    """Who was on just before a time: at the very edge the outputs have already changed."""
+    on = firing.channels_on(at) or firing.channels_on(at - 2e-6) or firing.channels_on(at - 1e-4)
+    number = len(on)
+    if not number:
+        return "no channel was on"
+    return (
+        f"{_who(board, on)} ({number} {'channel' if number == 1 else 'channels'}) {'was' if number == 1 else 'were'} on"
+    )
+
+
+def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
+    """Depth with duration: below the level is allowed for less than the given time."""
+    lowest, at = readings.low[placed.channel, rule.quantity]
+    who = _together(bench.board, firing, at)
+    level = rule.limit.value
+    at_supply = in_units(readings.low[None, "v_supply"][0], "V")
+    sentence = f"{who} at {in_units(at, 's', 4)}: the {rule.what} fell to {in_units(lowest, 'V')}"
+    sentence += f" ({at_supply} at the supply's own terminals)"
+    if level is None:
+        return Finding(
+            rule.check,
+            "coil rail voltage",
+            placed.part,
+            None,
+            placed.label,
+            lowest,
+            None,
+            "V",
+            None,
+            at,
+            "misbehave",
+            "limit-missing",
+            f"{sentence}; no brown-out level was given to hold it against ([limits] brown_out)",
+        )
+    margin = (lowest - level) / level
+    longest: Dip | None = max(readings.dips, key=lambda d: d.lasting, default=None)
+    if longest is None:
+        sentence += f"; the brown-out level is {in_units(level, 'V')}"
+        return Finding(
+            rule.check,
+            "coil rail voltage",
+            placed.part,
+            None,
+            placed.label,
+            lowest,
+            level,
+            "V",
+            margin,
+            at,
+            "misbehave",
+            bench.verdict(margin),
+            sentence,
+            source=rule.limit.source,
+        )
+    sentence += f" and stayed below {in_units(level, 'V')} for {in_units(longest.lasting, 's')}; brown-out counts after {in_units(rule.lasting, 's')}"
+    spare = (rule.lasting - longest.lasting) / rule.lasting if rule.lasting else -1.0
+    if spare < 0:
+        sentence += _fewer(bench.board)
+    else:
+        margin = spare
+    # Broken, the margin tells the depth; allowed for its shortness, the margin tells how short.
+    return Finding(
+        rule.check,
+        "coil rail voltage",
+        placed.part,
+        None,
+        placed.label,
+        lowest,
+        level,
+        "V",
+        margin,
+        at,
+        "misbehave",
+        bench.verdict(margin),
+        sentence,
+        source=rule.limit.source,
+        lasting=longest.lasting,
+    )
+
+
+def _fewer(board: Board) -> str:
+    """A closed-form guess at how many channels the supply feeds for ever at the brown-out level: only a hint."""
+    level = board.limits.brown_out
+    if level is None:
+        return ""
+    each = level.voltage.typ / min(c.coil.resistance.min for c in board.channels)
+    r = board.supply.resistance.typ + board.cable.loop(293.15).typ
+    feeds = (board.supply.voltage.min - level.voltage.typ) / r / each
+    if board.supply.current_ceiling is not None:
+        feeds = min(feeds, board.supply.current_ceiling.typ / each)
+    return (
+        f"; try: at most {max(int(feeds), 1)} channels together, or a stronger supply"
+        if feeds > 0
+        else "; try: a stronger supply"
+    )
+
+
+def judge_ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
+    """The highest current out of the supply, and for how long it was at its ceiling."""
+    value, at = readings.high[placed.channel, rule.quantity]
+    lasting, since = readings.ceiling
+    bound = rule.limit.value
+    when = at if since is None else since
+    sentence = f"{rule.what} reaches {in_units(value, 'A')} at {in_units(when, 's', 4)}"
+    margin: float | None = None
+    if bound is None:
+        sentence += "; no current ceiling of the supply was given to hold it against"
+    elif since is not None:
+        margin = min((bound * AT_CEILING - value) / bound, -1e-3)
+        sentence = (
+            f"the supply was at its ceiling of {in_units(bound, 'A')} for {in_units(lasting, 's')}, first at {in_units(when, 's', 4)} "
+            f"({_together(bench.board, firing, when)}): a supply that trips or hiccups instead of limiting would drop the rail"
+            "; try: fewer channels at once, or a larger supply"
+        )
+    else:
+        margin = (bound - value) / bound
+        sentence += f"; its ceiling is {in_units(bound, 'A')}"
+    return Finding(
+        rule.check,
+        "supply current",
+        placed.part,
+        None,
+        placed.label,
+        value,
+        bound,
+        "A",
+        margin,
+        when,
+        "misbehave",
+        bench.verdict(margin),
+        sentence[0].upper() + sentence[1:],
+        source=rule.limit.source,
+        lasting=lasting if since is not None else None,
+    )
