@@ -59,10 +59,10 @@ class Quantity:
         return self.origin.kind == "assumed"
 
     def __str__(self) -> str:
-        text = in_units(self.typ, self.unit)
+        text = _written(self.typ, self.unit)
         if not self.toleranced:
             return text
-        return f"{text} ({in_units(self.min, self.unit)} to {in_units(self.max, self.unit)})"
+        return f"{text} ({_written(self.min, self.unit)} to {_written(self.max, self.unit)})"
 
 
 @dataclass(frozen=True)
@@ -85,18 +85,24 @@ class Dimension:
         """The name with its article."""
         return f"{'an' if self.name[0] in 'aeiou' else 'a'} {self.name}"
 
+    @property
+    def bounds(self) -> str:
+        """Between which values the field is expected, for messages."""
+        return f"{_written(self.low, self.unit)} and {_written(self.high, self.unit)}"
+
     def check(self, value: float, text: str) -> None:
         """Raise QuantityError if a value is outside what the field can mean."""
-        if value < 0 and self.low >= 0:
+        if value < 0 <= self.low < 1:  # a temperature below 0 K is out of range like any other
             raise QuantityError(
                 f"{text!r} is negative; {self.named} must be {'0 or more' if self.zero else 'positive'}"
             )
         if value == 0 and self.zero:
             return
-        if not (self.low <= value <= self.high) or (value == 0 and self.low >= 0):
+        if value == 0 and self.low >= 0:
+            raise QuantityError(f"{text!r} is zero; {self.named} must be positive here")
+        if not self.low <= value <= self.high:
             raise QuantityError(
-                f"{text!r} is {in_units(value, self.unit)}; {self.named} is expected between "
-                f"{in_units(self.low, self.unit)} and {in_units(self.high, self.unit)}"
+                f"{text!r} is out of range, {_written(value, self.unit)}; {self.named} is expected between {self.bounds}"
             )
 
     # pydantic: a field of this dimension is written as a string and read as a Quantity.
@@ -124,6 +130,7 @@ class Dimension:
 
 
 RESISTANCE = Dimension("resistance", "ohm", "16 ohm +/- 10 %", 1e-6, 1e12, zero=True)
+POSITIVE_RESISTANCE = replace(RESISTANCE, zero=False)  # where 0 ohm would be a short that no model can take
 INDUCTANCE = Dimension("inductance", "H", "12 mH +/- 20 %", 1e-10, 1e3)
 CAPACITANCE = Dimension("capacitance", "F", "4700 uF -20/+50 %", 1e-14, 1e2)
 VOLTAGE = Dimension("voltage", "V", "24 V +/- 5 %", 1e-3, 1e4)
@@ -132,8 +139,9 @@ POWER = Dimension("power", "W", "5 W", 1e-6, 1e5)
 ENERGY = Dimension("energy", "J", "40 mJ", 1e-9, 1e4)
 CHARGE = Dimension("charge", "C", "10 nC", 1e-12, 1.0)
 TIME = Dimension("time", "s", "10 ms", 1e-12, 1e6, zero=True)
+POSITIVE_TIME = replace(TIME, zero=False)
 FREQUENCY = Dimension("frequency", "Hz", "4 MHz", 1e-3, 1e9)
-LENGTH = Dimension("length", "m", "1.8 m", 1e-6, 1e4)
+LENGTH = Dimension("length", "m", "1.8 m", 1e-6, 1e4, scale_letters=False)  # "1m8" could be 1.8 m or 1.8 mm
 AREA = Dimension("area", "m^2", "2.5 mm2", 1e-10, 1e-2, scale_letters=False)
 TEMPERATURE = Dimension("temperature", "K", "25 degC", 200.0, 800.0, scale_letters=False)
 TEMPERATURE_RISE = Dimension("temperature rise", "K", "40 K", 1e-3, 600.0, zero=True, scale_letters=False)
@@ -154,14 +162,18 @@ _SCALE = {
     "M": 1e6,
     "G": 1e9,
 }
-_NUMBER = r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?"
-_UNIT = r"[A-Za-zµμΩ°%]+[23]?(?:/[A-Za-zµμΩ°]+[23]?)?"
+_UNSIGNED = r"(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
+_NUMBER = rf"[+-]?{_UNSIGNED}"
+_LETTERS = r"[A-Za-zµμ\u03a9\u2126°%]+(?:\^?[23]|[²³])?"
+_UNIT = rf"{_LETTERS}(?:/{_LETTERS})?"
 _VALUE = re.compile(rf"({_NUMBER})\s*({_UNIT})?")
-_RKM = re.compile(r"([+-]?\d+)([fpnuµμmRkKMG])(\d+)")
-_SYMMETRIC = re.compile(rf"\s*(?:\+/-|\+-|±)\s*({_NUMBER})\s*({_UNIT})")
-_LOWER_UPPER = re.compile(rf"\s*-\s*({_NUMBER})\s*({_UNIT})?\s*/\s*\+\s*({_NUMBER})\s*({_UNIT})")
+_RKM = re.compile(r"([+-]?[0-9]*)([fpnuµμmRkKMG])([0-9]+)")
+_DECIMAL_COMMA = re.compile(r"[+-]?[0-9]+,[0-9]+")
+_SYMMETRIC = re.compile(rf"\s*(?:\+/-|\+-|±)\s*({_UNSIGNED})\s*({_UNIT})")
+_LOWER_UPPER = re.compile(rf"\s*-\s*({_UNSIGNED})\s*({_UNIT})?\s*/\s*\+\s*({_UNSIGNED})\s*({_UNIT})")
 _BAND = re.compile(rf"\s*({_NUMBER})\s*({_UNIT})?\s+to\s+({_NUMBER})\s*({_UNIT})\s*")
-_PINT_NAMES = {"Ω": "ohm", "°C": "degC", "%": "percent"}
+_PINT_NAMES = {"\u03a9": "ohm", "\u2126": "ohm", "°C": "degC", "%": "percent", "²": "2", "³": "3", "^": ""}
+_LONGEST_TEXT = 100  # letters; what no number with a unit and a tolerance needs
 _SI_NAMES = {"1": "", "m^2": "m**2"}
 
 
@@ -188,20 +200,23 @@ def _factor(unit: str, dimension: Dimension) -> tuple[float, float] | None:
     for ours, theirs in _PINT_NAMES.items():
         name = name.replace(ours, theirs)
     name = re.sub(r"(?<=[A-Za-zµμ])([23])", r"**\1", name)
-    if dimension is TEMPERATURE_RISE and name != "K":
+    if dimension is TEMPERATURE_RISE and name not in ("K", "mK"):
         return None
     try:
         parsed = registry.parse_units(name)
         target = registry.parse_units(_SI_NAMES.get(dimension.unit, dimension.unit) or "dimensionless")
-        if parsed.dimensionality != target.dimensionality:
+        # Base units, not dimensions: a radian has no dimension, yet rad/s is no frequency and rad no share.
+        if registry.get_base_units(parsed)[1] != registry.get_base_units(target)[1]:
             return None
-        zero = registry.Quantity(0.0, parsed).to(target).magnitude
-        one = registry.Quantity(1.0, parsed).to(target).magnitude
+        zero, one, two = (registry.Quantity(n, parsed).to(target).magnitude for n in (0.0, 1.0, 2.0))
+        if not math.isclose(two - one, one - zero, rel_tol=1e-9):  # a logarithmic unit such as dBm
+            return None
     except (pint.errors.PintError, AttributeError, TypeError) as err:
         raise QuantityError(
             f"unit {unit!r} is not known; write {dimension.named} such as {dimension.example!r}"
         ) from err
-    return float(one - zero), float(zero)
+    # pint multiplies by way of base units; without the rounding 500 ns would read as 500.0000000000001 ns.
+    return float(f"{one - zero:.14g}"), float(f"{zero:.14g}")
 
 
 def _value_in(number: str, unit: str, dimension: Dimension, text: str, attached: bool) -> float:
@@ -239,11 +254,15 @@ def parse(text: str, dimension: Dimension, origin: Origin = GIVEN) -> Quantity:
 
     Examples
     --------
-    >>> parse("4700 uF -20/+50 %", CAPACITANCE).max
+    >>> round(parse("4700 uF -20/+50 %", CAPACITANCE).max, 6)
     0.00705
     >>> parse("4k7", RESISTANCE).typ
     4700.0
     """
+    if len(text) > _LONGEST_TEXT:
+        raise QuantityError(
+            f"{text[:20]!r}... is too long for a number with a unit; write it such as {dimension.example!r}"
+        )
     band = _BAND.fullmatch(text)
     if band:
         low = _value_in(band[1], band[2] or band[4], dimension, text, attached=False)
@@ -253,9 +272,11 @@ def parse(text: str, dimension: Dimension, origin: Origin = GIVEN) -> Quantity:
         return _checked(Quantity((low + high) / 2, low, high, dimension.unit, origin), dimension, text)
 
     body = text.strip()
+    if _DECIMAL_COMMA.match(body):
+        raise QuantityError(f"{text!r} has a comma in its number; write a point, such as {dimension.example!r}")
     rkm = _RKM.match(body)
     if rkm and dimension.scale_letters:
-        typ = float(f"{rkm[1]}.{rkm[3]}") * _SCALE[rkm[2]]
+        typ = float(f"{rkm[1] or 0}.{rkm[3]}") * _SCALE[rkm[2]]
         rest = body[rkm.end() :]
         unit = ""
     else:
@@ -300,6 +321,14 @@ def _checked(quantity: Quantity, dimension: Dimension, text: str) -> Quantity:
     dimension.check(quantity.typ, text)
     if quantity.min < 0 <= dimension.low:
         raise QuantityError(f"{text!r}: the tolerance reaches below zero")
+    if quantity.min == 0 and not dimension.zero:
+        raise QuantityError(f"{text!r} reaches down to zero; {dimension.named} must be positive here")
+    for end in (quantity.min, quantity.max):
+        if not (end == 0 or dimension.low <= end <= dimension.high):
+            raise QuantityError(
+                f"{text!r} reaches to {_written(end, dimension.unit)}; "
+                f"{dimension.named} is expected between {dimension.bounds}"
+            )
     return quantity
 
 
@@ -333,6 +362,11 @@ def computed(value: float, unit: str, how: str) -> Quantity:
 def with_origin(quantity: Quantity, origin: Origin) -> Quantity:
     """The same number under another origin."""
     return replace(quantity, origin=origin)
+
+
+def _written(value: float, unit: str) -> str:
+    """A value for people; a share in %."""
+    return f"{value * 100:.6g} %" if unit == "1" else in_units(value, unit)
 
 
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}

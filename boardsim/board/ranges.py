@@ -24,19 +24,22 @@ def read_range(text: str) -> tuple[int, ...]:
     >>> read_range("2-0")
     (2, 1, 0)
     """
+    said = repr(text) if len(text) <= 60 else f"{text[:60]!r}..."
     numbers: list[int] = []
+    seen: set[int] = set()
     for piece in text.split(","):
-        match = re.fullmatch(r"\s*(\d{1,4})\s*(?:-\s*(\d{1,4})\s*)?", piece)
+        match = re.fullmatch(r"\s*([0-9]{1,4})\s*(?:-\s*([0-9]{1,4})\s*)?", piece)
         if not match:
-            raise QuantityError(f"{text!r} is not a range of channels; write it such as '0-23' or '0,2,8-15'")
+            raise QuantityError(f"{said} is not a range of numbers; write it such as '0-23' or '0,2,8-15'")
         first, last = int(match[1]), int(match[2] or match[1])
+        if max(first, last) > HIGHEST:
+            raise QuantityError(f"{said} reaches beyond {HIGHEST}, more than any chain has")
         step = 1 if last >= first else -1
-        numbers.extend(range(first, last + step, step))
-    if max(numbers) > HIGHEST:
-        raise QuantityError(f"{text!r} reaches beyond {HIGHEST}, more than any chain has")
-    twice = sorted({n for n in numbers if numbers.count(n) > 1})
-    if twice:
-        raise QuantityError(f"{text!r} names {twice[0]} twice")
+        for n in range(first, last + step, step):
+            if n in seen:
+                raise QuantityError(f"{said} names {n} twice")
+            seen.add(n)
+            numbers.append(n)
     return tuple(numbers)
 
 

@@ -2,19 +2,29 @@
 
 from __future__ import annotations
 
+import difflib
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 from pydantic import ValidationError
-from pydantic_core import PydanticCustomError
 
 from boardsim.board.ranges import read_range, write_range
 from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits, component_class
 from boardsim.board.toml_file import Keys, TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.parts.base import Assumption, Part, Surroundings, listed, nearest
+from boardsim.parts.base import (
+    Assumption,
+    Part,
+    Surroundings,
+    listed,
+    name_from,
+    named_like,
+    nearest,
+    said,
+    shortened,
+)
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
@@ -92,7 +102,11 @@ class _Shelf:
         """The kind of a named part; an unknown name is reported where the part itself is read."""
         record = self.local.get(name) or records().get(name, {})
         kind = str(record.get("kind", ""))
-        return kind if kind in kinds("switch") else next(iter(kinds("switch")))
+        if kind in kinds("switch"):
+            return kind
+        known = {n: str(r.get("kind", "")) for n, r in {**records(), **self.local}.items()}
+        close = difflib.get_close_matches(name, [n for n, k in known.items() if k in kinds("switch")], n=1)
+        return known[close[0]] if close else next(iter(kinds("switch")))
 
     def find(self, cls: type[Part], name: str) -> Part:
         """The part of a class and name, as pydantic asks for it.
@@ -112,23 +126,18 @@ class _Shelf:
                 record = {k: v for k, v in record.items() if k not in ("source", "sources")}
             if record is None:
                 same = [n for n, r in {**records(), **mine}.items() if r.get("kind", "coil") == kind]
-                raise PydanticCustomError(
-                    "said",
-                    "{said}",
-                    {
-                        "said": (
-                            f'{kind} "{name}" is neither in this file nor in the library{nearest(name, same)}; known: {", ".join(sorted(same)) or "none"}'
-                        )
-                    },
+                known = ", ".join(sorted(same)) or "none"
+                raise said(
+                    f'{kind} "{shortened(name)}" is neither in this file nor in the library'
+                    f"{nearest(shortened(name), same)}; known: {known}"
                 )
             if record.get("kind", "coil" if cls.role == "coil" else kind) != kind:
-                raise PydanticCustomError(
-                    "said", "{said}", {"said": f'"{name}" is a {record["kind"]}; a {kind} is needed here'}
-                )
+                found = named_like(shortened(str(record["kind"])) or "part without a kind")
+                raise said(f'"{name}" is {found}; {named_like(kind)} is needed here')
             try:
                 self.found[cls, name] = cls.model_validate({"title": name, **record}, context=context)
             except ValidationError as err:
-                raise PydanticCustomError("broken", "{said}", {"said": f'"{name}" has mistakes of its own'}) from err
+                raise said(f'"{name}" has mistakes of its own') from err
         return self.found[cls, name]
 
 
@@ -180,7 +189,7 @@ def read_board(path: Path) -> Board:
         keys: Keys = ("limits", "exclusive", i, "channels")
         members = _range(group.channels, file, keys, problems)
         if unknown := [n for n in members if n not in numbers]:
-            problems.append(file.problem(keys, f"channel {unknown[0]} is not on this board"))
+            problems.append(file.problem_at(keys, f"{_listed('channel', unknown)} not on this board"))
         exclusive.append((members, group.most, group.reason or ""))
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
@@ -199,7 +208,7 @@ def read_board(path: Path) -> Board:
         )
     return Board(
         path,
-        board.name or path.resolve().parent.name,
+        board.name or name_from(path.resolve().parent.name, "board"),
         board.supply,
         board.cable,
         board.bulk,
@@ -218,8 +227,13 @@ def _range(text: str, file: TomlFile, keys: Keys, problems: list[Problem]) -> tu
     try:
         return read_range(text)
     except QuantityError as err:
-        problems.append(file.problem(keys, str(err)))
+        problems.append(file.problem_at(keys, str(err)))
         return ()
+
+
+def _listed(what: str, numbers: list[int]) -> str:
+    """ "channel 3 is" or "channels 3-5 are"."""
+    return f"{what} {write_range(numbers)} is" if len(numbers) == 1 else f"{what}s {write_range(numbers)} are"
 
 
 def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[Channel]:
@@ -236,36 +250,54 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
                 columns[column] = _range(given, file, (*keys, column), problems)
                 if len(columns[column]) not in (0, len(numbers)):
                     problems.append(
-                        file.problem(
+                        file.problem_at(
                             (*keys, column),
-                            f"names {len(columns[column])} {column} for {len(numbers)} channels",
+                            f"names {len(columns[column])} where the range has {len(numbers)} channels",
                         )
                     )
             elif column == "bits":
                 columns[column] = columns["outputs"]
         if any(len(c) != len(numbers) for c in columns.values()):
             continue
-        for what, values in (("channel", numbers), ("output", columns["outputs"]), ("bit", columns["bits"])):
-            if twice := [n for n in values if n in claimed[what]]:
-                other = claimed[what][twice[0]]
-                problems.append(
-                    file.problem(keys, f'{what} {write_range(twice)} is already taken by channels."{other}"')
-                )
-            claimed[what].update(dict.fromkeys(values, text))
-            if what != "channel" and (beyond := [n for n in values if n >= board.chain.outputs]):
-                problems.append(
-                    file.problem(
-                        keys,
-                        (
-                            f"{what} {write_range(beyond)} is outside the chain: {board.chain.count} registers have outputs 0-{board.chain.outputs - 1}"
-                        ),
-                    )
-                )
+        _claim(group, text, {"channel": numbers, **columns}, claimed, board.chain, file, problems)
         for number, output, bit, n in zip(
             numbers, columns["outputs"], columns["bits"], columns["numbers"], strict=True
         ):
             channels.append(_channel(group, number, output, bit, n))
     return channels
+
+
+def _claim(
+    group: ChannelRange,
+    text: str,
+    columns: Mapping[str, tuple[int, ...]],
+    claimed: dict[str, dict[int, str]],
+    chain: Chain,
+    file: TomlFile,
+    problems: list[Problem],
+) -> None:
+    """Complain of numbers that an earlier range has, or that lie outside the chain; once where one follows from another."""
+    registers = "1 register has" if chain.count == 1 else f"{chain.count} registers have"
+    blamed: set[int] = set()
+    for what, column in (("channel", "channel"), ("output", "outputs"), ("bit", "bits")):
+        own = column != "channel" and getattr(group, column) is not None
+        blamed = set() if own else blamed
+        keys: Keys = ("channels", text, column) if own else ("channels", text)
+        values = columns[column]
+        fresh = [n for n in values if n not in blamed]
+        if twice := [n for n in fresh if n in claimed[what]]:
+            other = claimed[what][twice[0]]
+            problems.append(file.problem_at(keys, f'{_listed(what, twice)} already taken by channels."{other}"'))
+        beyond = [n for n in fresh if n >= chain.outputs] if what != "channel" else []
+        if beyond:
+            problems.append(
+                file.problem_at(
+                    keys,
+                    f"{_listed(what, beyond)} outside the chain: {registers} outputs 0-{chain.outputs - 1}",
+                )
+            )
+        blamed.update(twice, beyond)
+        claimed[what].update(dict.fromkeys(values, text))
 
 
 def _channel(group: ChannelRange, number: int, output: int, bit: int, n: int) -> Channel:
@@ -275,17 +307,13 @@ def _channel(group: ChannelRange, number: int, output: int, bit: int, n: int) ->
 
 def problems_of(err: ValidationError, file: TomlFile) -> list[Problem]:
     """pydantic's errors as problems with file and line; consequences of another mistake are left out."""
-    problems: list[Problem] = []
     errors = err.errors(include_url=False)
     whole = [e for e in errors if "has mistakes of its own" not in e["msg"]]
-    for e in whole or errors:
-        keys = _keys_in(file.data, e["loc"])
-        where = ".".join(str(k) if not isinstance(k, str) or k.replace("_", "").isalnum() else f'"{k}"' for k in keys)
-        text = e["msg"].removeprefix("Value error, ")
-        problem = file.problem(keys, f"{where}: {text}" if where else text)
-        if problem not in problems:
-            problems.append(problem)
-    return sorted(problems, key=lambda p: p.line or 0)
+    found = {
+        file.problem_at(_keys_in(file.data, e["loc"]), e["msg"].removeprefix("Value error, ")): None
+        for e in whole or errors
+    }
+    return sorted(found, key=lambda p: p.line or 0)
 
 
 def _keys_in(data: Any, loc: tuple[int | str, ...]) -> Keys:

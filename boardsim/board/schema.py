@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal, Union
+from typing import Annotated, Any, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo
 
-from boardsim.parts.base import Name, Part, Record, named_part
+from boardsim.parts.base import Name, Part, Record, any_of, named_part
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
@@ -17,10 +17,9 @@ from boardsim.parts.supply import Supply
 from boardsim.quantities import FREQUENCY, SHARE, TEMPERATURE, TIME, VOLTAGE, Quantity, assume
 
 
-def _any_kind(role: str) -> Any:
-    """A field that takes any kind of part of a role, told apart by `kind`."""
-    classes = tuple(kinds(role).values())
-    return Annotated[Union[classes], Field(discriminator="kind")] if len(classes) > 1 else classes[0]  # noqa: UP007
+def _any_kind(*roles: str) -> Any:
+    """A field that takes any kind of part of these roles, told apart by `kind`."""
+    return any_of([cls for role in roles for cls in kinds(role).values()])
 
 
 def _with_kind(value: Any, info: ValidationInfo) -> Any:
@@ -29,21 +28,21 @@ def _with_kind(value: Any, info: ValidationInfo) -> Any:
         part = value.get("part")
         if isinstance(part, str) and info.context and "kind_of" in info.context:
             return {"kind": info.context["kind_of"](part), **value}
-        if isinstance(part, dict) and "kind" in part:
+        if isinstance(part, dict) and part.get("kind") in [*kinds("switch")]:
             return {"kind": part["kind"], **value}
     return value
 
 
 AnyClamp = _any_kind("clamp")
 AnySwitch = _any_kind("switch")
-AnyComponent = _any_kind("component")
+AnyComponent = _any_kind("component", "register")
 
 
 class Chain(Record):
     """The chain of registers and how the controller writes it."""
 
     register_: named_part(Register) = Field(alias="register")  # type: ignore[valid-type]
-    count: Annotated[int, Field(ge=1, le=64)]
+    count: Annotated[int, Field(strict=True, ge=1, le=64)]
     clock: Annotated[Quantity, FREQUENCY]
     bit_order: Literal["msb", "lsb"] = Field("msb", description="which bit of each byte is sent first")
     first_out: Literal["far", "near"] = Field(
@@ -89,14 +88,14 @@ class Exclusive(Record):
     """Channels of which only so many may be on at once."""
 
     channels: str
-    most: Annotated[int, Field(ge=1)] = 1
+    most: Annotated[int, Field(strict=True, ge=1)] = 1
     reason: Name | None = None
 
 
 class Limits(Record):
     """Limits of the board as a whole."""
 
-    most_on: Annotated[int, Field(ge=1)] | None = None
+    most_on: Annotated[int, Field(strict=True, ge=1)] | None = None
     brown_out: BrownOut | None = None
     exclusive: tuple[Exclusive, ...] = ()
     guard_band: Annotated[Quantity, SHARE] = assume("10 %", SHARE, "guard band for the verdict tight, common practice")

@@ -18,14 +18,14 @@ class Settings:
 
     Notes
     -----
-    `abstol` is 0.1 uA, not ngspice's 1 pA: with many switches on one rail the noise of Newton's method on tiny
+    `abstol` is 1 uA, not ngspice's 1 pA: with many switches on one rail the noise of Newton's method on tiny
     capacitive currents otherwise holds the step at picoseconds for ever.
     """
 
     method: Literal["trap", "gear"]
     reltol: float
     max_step: float
-    abstol: float = 1e-7
+    abstol: float = 1e-6
 
     def __str__(self) -> str:
         return f"{self.method}, reltol {self.reltol:g}, step up to {self.max_step * 1e6:g} us"

@@ -23,7 +23,9 @@ _FATAL = re.compile(
     r"|source stepping failed|iteration limit reached|circuit not parsed",
     re.IGNORECASE,
 )
-_RETRIED = re.compile(r"gmin stepping failed|source stepping failed|iteration limit reached", re.IGNORECASE)
+_RETRIED = re.compile(
+    r"gmin stepping failed|source stepping failed|iteration limit reached|^warning:\s*singular matrix", re.IGNORECASE
+)
 
 
 def fatal_lines(messages: list[str]) -> list[str]:
@@ -31,8 +33,8 @@ def fatal_lines(messages: list[str]) -> list[str]:
 
     Notes
     -----
-    A failed gmin or source stepping is only one try on the way to the operating point: it counts by what
-    follows, not by itself.
+    A failed gmin or source stepping, or a matrix that is singular at a try, is only a step on the way to the
+    operating point: it counts by what follows (a run that does not reach its end is refused), not by itself.
     """
     return [m for m in messages if _FATAL.search(m) and not _RETRIED.search(m)]
 

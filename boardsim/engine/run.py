@@ -22,8 +22,8 @@ from boardsim.errors import (
     BoardsimError,
     DeckRejected,
     EngineCrash,
-    EngineStopped,
     EngineMissing,
+    EngineStopped,
     EngineTimeout,
     NoConvergence,
 )

@@ -8,12 +8,12 @@ from typing import Annotated
 
 from pydantic import Field, ValidationError
 
-from boardsim.board.ranges import read_range
+from boardsim.board.ranges import read_range, write_range
 from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.parts.base import Name, Record
-from boardsim.quantities import TIME, Quantity
+from boardsim.parts.base import Name, Record, name_from
+from boardsim.quantities import TIME, Quantity, in_units
 
 MOST_PULSES = 1_000_000
 
@@ -24,7 +24,7 @@ class PulseTrain(Record):
     channels: str
     start: Annotated[Quantity, TIME]
     width: Annotated[Quantity, TIME]
-    repeat: Annotated[int, Field(ge=1, le=MOST_PULSES)] = 1
+    repeat: Annotated[int, Field(strict=True, ge=1, le=MOST_PULSES)] = 1
     every: Annotated[Quantity, TIME] | None = None
     stagger: Annotated[Quantity, TIME] | None = None
 
@@ -78,42 +78,57 @@ def read_pattern(path: Path, board: Board) -> Pattern:
     pulses: list[Pulse] = []
     for i, train in enumerate(raw.pulses):
         pulses.extend(_expand(train, i, board, file, problems))
+        if len(pulses) > MOST_PULSES:
+            problems.append(
+                file.problem_at(("pulses", i), f"with this entry the pattern has more than {MOST_PULSES} pulses")
+            )
+            break
     duration = raw.duration.typ if raw.duration else None
     if not problems and duration is not None:
         last = max(pulses, key=lambda p: p.stop)
         if last.stop > duration:
             problems.append(
-                file.problem(
+                file.problem_at(
                     ("duration",),
-                    f"duration: {duration:g} s ends before the last pulse does, at {last.stop:g} s",
+                    f"{in_units(duration, 's', 4)} ends before the last pulse does, at {in_units(last.stop, 's', 4)}",
                 )
             )
     if problems:
         raise InputError(problems)
-    return Pattern(path, raw.name or path.stem, duration, tuple(sorted(pulses, key=lambda p: (p.start, p.channel))))
+    return Pattern(
+        path,
+        raw.name or name_from(path.stem, "pattern"),
+        duration,
+        tuple(sorted(pulses, key=lambda p: (p.start, p.channel))),
+    )
 
 
 def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problems: list[Problem]) -> list[Pulse]:
     known = {c.number for c in board.channels}
+    before = len(problems)
     keys = ("pulses", index)
     try:
         channels = read_range(train.channels)
     except QuantityError as err:
-        problems.append(file.problem((*keys, "channels"), f"channels: {err}"))
+        problems.append(file.problem_at((*keys, "channels"), str(err)))
         return []
     if unknown := [n for n in channels if n not in known]:
         problems.append(
-            file.problem((*keys, "channels"), f"channels: channel {unknown[0]} is not on the board {board.path.name}")
+            file.problem_at(
+                (*keys, "channels"),
+                f"{'channel' if len(unknown) == 1 else 'channels'} {write_range(unknown)} "
+                f"{'is' if len(unknown) == 1 else 'are'} not on the board {board.path.name}",
+            )
         )
     if train.width.typ == 0:
-        problems.append(file.problem((*keys, "width"), "width: a pulse of 0 s is none; give its on-time"))
+        problems.append(file.problem_at((*keys, "width"), "a pulse of 0 s is none; give its on-time"))
     if train.repeat > 1 and (train.every is None or train.every.typ == 0):
-        problems.append(file.problem((*keys, "repeat"), 'repeat: needs "every", the time from one start to the next'))
+        problems.append(file.problem_at((*keys, "repeat"), 'needs "every", the time from one start to the next'))
     if train.every is not None and train.repeat == 1:
-        problems.append(file.problem((*keys, "every"), 'every: has no effect without "repeat"'))
+        problems.append(file.problem_at((*keys, "every"), 'has no effect without "repeat"'))
     if len(channels) * train.repeat > MOST_PULSES:
-        problems.append(file.problem((*keys, "repeat"), f"repeat: more than {MOST_PULSES} pulses"))
-    if problems:
+        problems.append(file.problem_at((*keys, "repeat"), f"more than {MOST_PULSES} pulses"))
+    if len(problems) > before:
         return []
     every = train.every.typ if train.every else 0.0
     stagger = train.stagger.typ if train.stagger else 0.0

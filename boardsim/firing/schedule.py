@@ -127,7 +127,14 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     duration = max(pattern.duration or 0.0, last + _SETTLE * tau if pattern.duration is None else last)
     on = {c.number: _spans(levels[c.output], active[c.output], duration) for c in board.channels}
     return Firing(
-        duration, {o: tuple(v) for o, v in levels.items()}, on, moved, merged, tuple(wrong.values()), frames, spent
+        duration,
+        {o: tuple(v) for o, v in levels.items()},
+        on,
+        moved,
+        merged,
+        tuple(wrong.values()),
+        frames,
+        spent,
     )
 
 

@@ -8,17 +8,19 @@ from __future__ import annotations
 
 import difflib
 import re
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Annotated, Any, ClassVar, Literal
+from typing import Annotated, Any, ClassVar, Literal, Union
 
 from pydantic import (
     AfterValidator,
     BaseModel,
     BeforeValidator,
     ConfigDict,
+    Field,
     ValidationError,
     ValidationInfo,
+    WrapValidator,
     model_validator,
 )
 from pydantic_core import InitErrorDetails, PydanticCustomError
@@ -36,6 +38,29 @@ def nearest(word: str, words: list[str]) -> str:
     return f' (did you mean "{close[0]}"?)' if close else ""
 
 
+def shortened(text: str) -> str:
+    """A word of a file for a message, cut where it is longer than any name."""
+    return text if len(text) <= 60 else text[:60] + "..."
+
+
+def shown(value: Any) -> str:
+    """What a file holds, for a message: as it stands there where that is short."""
+    if isinstance(value, bool):
+        return "true" if value else "false"
+    if isinstance(value, dict):
+        return "a table"
+    if isinstance(value, list | tuple):
+        return "a list"
+    if isinstance(value, str):
+        return repr(shortened(value))
+    return str(value)  # a number, a date or a time
+
+
+def named_like(kind: str) -> str:
+    """A kind with its article."""
+    return f"{'an' if kind[0] in 'aeiou' or kind[:2] in ('n-', 'r-') else 'a'} {kind}"
+
+
 class Record(BaseModel):
     """A table of a file: frozen, unknown keys refused with the nearest known one."""
 
@@ -48,38 +73,52 @@ class Record(BaseModel):
         try:
             return handler(value)
         except ValidationError as err:
-            known = list(cls.model_fields)
+            known = [field.alias or name for name, field in cls.model_fields.items()]
+            errors = err.errors(include_url=False)
+            # A list whose only entry is wrong counts as empty; the entry's own mistake says enough.
+            inside = {e["loc"][:n] for e in errors for n in range(1, len(e["loc"]))}
             raise ValidationError.from_exception_data(
-                cls.__name__, [_reworded(e, known) for e in err.errors(include_url=False)]
+                cls.__name__,
+                [_reworded(e, known) for e in errors if e["type"] != "too_short" or e["loc"] not in inside],
             ) from None
 
 
 def _reworded(error: Any, known: list[str]) -> InitErrorDetails:
     """One pydantic error in the project's words: what was found, what is allowed, the nearest known word."""
-    kind, loc, found, ctx = error["type"], error["loc"], error["input"], error.get("ctx", {})
-    key = str(loc[-1]) if loc else ""
+    kind, loc, found, ctx = error["type"], error["loc"], shown(error["input"]), error.get("ctx", {})
+    if kind in ("model_type", "model_attributes_type") and not loc:
+        # The table around this one knows the key; it rewords the error.
+        return InitErrorDetails(type=kind, loc=loc, input=error["input"], ctx=ctx)
+    key = shortened(str(loc[-1])) if loc else ""
     expected = re.findall(r"'([^']*)'", str(ctx.get("expected", ctx.get("expected_tags", ""))))
     allowed = ", ".join(f'"{word}"' for word in expected)
-    said = error["msg"].removeprefix("Value error, ")
+    text = error["msg"].removeprefix("Value error, ")
     if kind == "extra_forbidden":
-        said = f'"{key}" is not known here{nearest(key, known)}; known: {", ".join(known)}'
+        text = f'"{key}" is not known here{nearest(key, known)}; known: {", ".join(known)}'
     elif kind == "missing":
-        said = f'"{key}" is missing'
+        text = f'"{key}" is missing'
     elif kind == "literal_error":
-        said = f'{found!r} is not allowed for "{key}"{nearest(str(found), expected)}; allowed: {allowed}'
+        text = (
+            f'{found} is not allowed for "{key}"{nearest(shortened(str(error["input"])), expected)}; allowed: {allowed}'
+        )
     elif kind == "union_tag_invalid":
-        tag = str(ctx.get("tag", ""))
-        said = f'kind "{tag}" is not known for "{key}"{nearest(tag, expected)}; known: {allowed}'
+        tag = shortened(str(ctx.get("tag", "")))
+        text = f'kind "{tag}" is not known for "{key}"{nearest(tag, expected)}; known: {allowed}'
     elif kind == "union_tag_not_found":
-        said = f'"{key}" needs a "kind"'
+        text = f'"{key}" needs a "kind"'
     elif kind in ("model_type", "model_attributes_type", "dict_type"):
-        said = f'"{key}" must be a table, such as {{ ... }}; found {found!r}'
-    elif kind in ("int_type", "int_parsing", "int_from_float"):
-        said = f'"{key}" must be a whole number without unit; found {found!r}'
+        text = f'"{key}" must be a table, such as {{ ... }}; found {found}'
+    elif kind == "int_type":
+        text = f'"{key}" must be a whole number without unit or quotes; found {found}'
+    elif kind in ("greater_than_equal", "less_than_equal"):
+        bound = f"{ctx['ge']} or more" if "ge" in ctx else f"{ctx['le']} or less"
+        text = f'"{key}" must be {bound}; found {found}'
+    elif kind == "too_short":
+        text = f'"{key}" is empty; it needs at least {ctx["min_length"]} {"entry" if ctx["min_length"] == 1 else "entries"}'
     elif kind in ("string_type", "tuple_type", "list_type"):
         what = "text in quotes" if kind == "string_type" else "a list in [ ]"
-        said = f'"{key}" must be {what}; found {found!r}'
-    return InitErrorDetails(type=PydanticCustomError("said", "{said}", {"said": said}), loc=loc, input=found)
+        text = f'"{key}" must be {what}; found {found}'
+    return InitErrorDetails(type=PydanticCustomError("said", "{said}", {"said": text}), loc=loc, input=error["input"])
 
 
 def _safe(text: str) -> str:
@@ -88,9 +127,15 @@ def _safe(text: str) -> str:
         raise PydanticCustomError(
             "unsafe_name",
             "{text} cannot be a name: use up to 60 letters, digits, blanks and _ + - ( ) # / , . { }, starting with a letter or digit",
-            {"text": repr(text)},
+            {"text": repr(shortened(text))},
         )
     return text
+
+
+def name_from(text: str, otherwise: str) -> str:
+    """A name made from that of a file or folder, which may hold anything."""
+    kept = "".join(c if re.fullmatch(r"[\w +\-()#/,.{}]", c) else "-" for c in text).lstrip("_ +-()#/,.{}")[:60]
+    return kept if re.fullmatch(_NAME, kept) else otherwise
 
 
 _NAME = r"[^\W_][\w +\-()#/,.{}]{0,59}"
@@ -109,16 +154,55 @@ class Part(Record):
         return {}
 
 
+def said(text: str) -> PydanticCustomError:
+    """A mistake in the project's own words."""
+    return PydanticCustomError("said", "{said}", {"said": text})
+
+
+def any_of(classes: Sequence[type[Part]]) -> Any:
+    """A field that takes a part of any of these classes, told apart by `kind`."""
+    if len(classes) == 1:
+        return classes[0]
+
+    def without_tag(value: Any, handler: Callable[[Any], Any]) -> Any:
+        # pydantic names the kind in the place of an error, where a reader would take it for a key of the file.
+        try:
+            return handler(value)
+        except ValidationError as err:
+            kinds = {cls.model_fields["kind"].default for cls in classes}
+            raise ValidationError.from_exception_data(
+                "part",
+                [
+                    InitErrorDetails(
+                        type=PydanticCustomError("said", "{said}", {"said": e["msg"]})
+                        if e["type"] == "said"
+                        else e["type"],
+                        loc=e["loc"][1:] if e["loc"] and e["loc"][0] in kinds else e["loc"],
+                        input=e["input"],
+                        ctx=e.get("ctx", {}),
+                    )
+                    for e in err.errors(include_url=False)
+                ],
+            ) from None
+
+    return Annotated[Union[tuple(classes)], Field(discriminator="kind"), WrapValidator(without_tag)]  # noqa: UP007
+
+
 def named_part(cls: type[Part]) -> Any:
     """A field that takes a part inline, or by its name from the board file or the library."""
 
     def find(value: Any, info: ValidationInfo) -> Any:
+        kind = cls.model_fields["kind"].default
         if isinstance(value, str):
             if not info.context or "find" not in info.context:
                 raise PydanticCustomError("no_library", "a part by name needs a library")
             return info.context["find"](cls, value)
-        if isinstance(value, Mapping) and "kind" not in value:
-            return {"kind": cls.model_fields["kind"].default, **value}
+        if isinstance(value, Mapping):
+            if value.get("kind", kind) != kind:
+                raise said(f"this is {named_like(str(value['kind']))}; {named_like(kind)} is needed here")
+            return {"kind": kind, **value}
+        if not isinstance(value, cls):
+            raise said(f"must be the name of {named_like(kind)} in quotes, or a table {{ ... }}; found {shown(value)}")
         return value
 
     return Annotated[cls, BeforeValidator(find, json_schema_input_type=str | cls)]

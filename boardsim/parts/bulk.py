@@ -22,7 +22,15 @@ from boardsim.parts.base import (
     scaled,
     voltage,
 )
-from boardsim.quantities import CAPACITANCE, INDUCTANCE, RESISTANCE, VOLTAGE, Quantity, assume
+from boardsim.quantities import (
+    CAPACITANCE,
+    INDUCTANCE,
+    POSITIVE_RESISTANCE,
+    RESISTANCE,
+    VOLTAGE,
+    Quantity,
+    assume,
+)
 
 _MIN_ESR = 1e-4  # [ohm], keeps the branch resistive where 0 ohm was given
 
@@ -41,8 +49,8 @@ class Bulk(Part):
     capacitance: Annotated[Quantity, CAPACITANCE]
     esr: Annotated[Quantity, RESISTANCE]
     esl: Annotated[Quantity, INDUCTANCE] = assume("20 nH", INDUCTANCE, "radial electrolytic capacitor, from memory")
-    esl_loss: Annotated[Quantity, RESISTANCE] = assume(
-        "1 ohm", RESISTANCE, "damping of the capacitor's inductance above some MHz, from memory"
+    esl_loss: Annotated[Quantity, POSITIVE_RESISTANCE] = assume(
+        "1 ohm", POSITIVE_RESISTANCE, "damping of the capacitor's inductance above some MHz, from memory"
     )
     rated: Annotated[Quantity, VOLTAGE] | None = None
 

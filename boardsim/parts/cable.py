@@ -9,16 +9,29 @@ from typing import Annotated, Any, ClassVar, Literal
 from pydantic import BeforeValidator, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Corner, Inductor, Part, Probe, Resistor, Stamp, Surroundings, current, listed
+from boardsim.parts.base import (
+    Corner,
+    Inductor,
+    Part,
+    Probe,
+    Resistor,
+    Stamp,
+    Surroundings,
+    current,
+    listed,
+    shown,
+)
 from boardsim.parts.copper import T_20C, awg_diameter, loop_resistance, pair_inductance
 from boardsim.quantities import AREA, LENGTH, Quantity, assume, computed
 
 
 def _gauge(value: Any) -> Any:
-    if isinstance(value, str) and (match := re.fullmatch(r"\s*(\d{1,2}|[1-4]/0)\s*AWG\s*", value)):
+    if isinstance(value, str) and (match := re.fullmatch(r"\s*([0-9]{1,2}|[1-4]/0)\s*AWG\s*", value)):
         text = match[1]
-        return 1 - int(text[0]) if text.endswith("/0") else int(text)
-    raise QuantityError(f"{value!r} is not a wire gauge; write it such as '16 AWG'")
+        gauge = 1 - int(text[0]) if text.endswith("/0") else int(text)
+        awg_diameter(gauge)
+        return gauge
+    raise QuantityError(f"{shown(value)} is not a wire gauge; write it such as '16 AWG' or '2/0 AWG'")
 
 
 class Cable(Part):
@@ -34,7 +47,8 @@ class Cable(Part):
     @model_validator(mode="after")
     def _one_size(self) -> Cable:
         if (self.gauge is None) == (self.area is None):
-            raise QuantityError("give either gauge (such as '16 AWG') or area (such as '1.5 mm2')")
+            found = "neither is given" if self.gauge is None else "both are given"
+            raise QuantityError(f"give either gauge (such as '16 AWG') or area (such as '1.5 mm2'); {found}")
         if self.spacing is not None and self.spacing.typ < self.diameter:
             raise QuantityError(f"spacing is smaller than the bare conductor, {self.diameter * 1e3:.2f} mm")
         return self

@@ -26,6 +26,7 @@ from boardsim.parts.copper import resistance_at
 from boardsim.quantities import (
     CURRENT,
     INDUCTANCE,
+    POSITIVE_RESISTANCE,
     RESISTANCE,
     TEMPERATURE,
     TEMPERATURE_RISE,
@@ -49,12 +50,12 @@ class Coil(Part):
 
     role: ClassVar[str] = "coil"
     kind: Literal["coil"] = "coil"
-    resistance: Annotated[Quantity, RESISTANCE]
+    resistance: Annotated[Quantity, POSITIVE_RESISTANCE]
     at: Annotated[Quantity, TEMPERATURE] = assume(
         "20 degC", TEMPERATURE, "coil data are given at 20 degC, common practice"
     )
     inductance: Annotated[Quantity, INDUCTANCE]
-    core_loss: Annotated[Quantity, RESISTANCE] | None = None
+    core_loss: Annotated[Quantity, POSITIVE_RESISTANCE] | None = None
     pull_in: Annotated[Quantity, CURRENT] | None = None
     release: Annotated[Quantity, CURRENT] | None = None
     rise: Annotated[Quantity, TEMPERATURE_RISE] = assume(

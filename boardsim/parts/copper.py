@@ -44,7 +44,7 @@ def awg_diameter(gauge: int) -> float:
     0.5106
     """
     if not -3 <= gauge <= 50:
-        raise QuantityError(f"gauge {gauge} AWG is outside -3 (4/0) to 50")
+        raise QuantityError(f"gauge {gauge} AWG is outside 4/0 to 50 AWG")
     return float(0.127e-3 * 92 ** ((36 - gauge) / 39))
 
 

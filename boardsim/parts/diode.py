@@ -6,7 +6,7 @@ import math
 from collections.abc import Sequence
 from typing import Annotated, ClassVar, Literal
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import (
@@ -28,6 +28,7 @@ from boardsim.parts.base import (
 from boardsim.quantities import CAPACITANCE, CURRENT, TIME, VOLTAGE, Quantity, assume
 
 THERMAL_VOLTAGE = 8.617333e-5 * 298.15  # [V] k T / q at 25 degC, CODATA
+_MOST_FOLDS = 250  # e-folds of current: about 11 V across the junction alone, more than stacked rectifiers have
 EMISSION = 1.75  # silicon rectifier in its working range, from memory
 
 
@@ -54,7 +55,7 @@ def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, fl
     Raises
     ------
     QuantityError
-        If currents or voltages do not rise.
+        If currents or voltages do not rise, or a voltage is more than one junction can have.
 
     Notes
     -----
@@ -77,7 +78,10 @@ def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, fl
         r_s = (v2 - v1 - n * THERMAL_VOLTAGE * math.log(i2 / i1)) / (i2 - i1)
         if r_s < 0:
             r_s, n = 0.0, (v2 - v1) / (THERMAL_VOLTAGE * math.log(i2 / i1))
-    i_s = i2 / math.exp((v2 - r_s * i2) / (n * THERMAL_VOLTAGE))
+    folds = (v2 - r_s * i2) / (n * THERMAL_VOLTAGE)
+    if not 0 < folds < _MOST_FOLDS:
+        raise QuantityError(f"forward voltage {v2:.3g} V at {i2:.3g} A is not that of one junction")
+    i_s = i2 / math.exp(folds)
     return i_s, n, r_s
 
 
@@ -101,13 +105,35 @@ class Diode(Part):
     )
     recovery: Annotated[Quantity, TIME] = assume("100 ns", TIME, "fast rectifier, from memory")
 
+    @model_validator(mode="after")
+    def _coherent(self) -> Diode:
+        self.parameters()
+        return self
+
+    def parameters(self) -> tuple[float, float, float]:
+        """Saturation current [A], emission coefficient [1] and series resistance [ohm] of its forward points.
+
+        Raises
+        ------
+        QuantityError
+            If the points do not rise, or cannot be those of one junction.
+        """
+        return forward_parameters([(p.voltage.typ, p.current.typ) for p in self.forward])
+
     def stamp(self, name: str, label: str, anode: str, cathode: str, through: Signal) -> Stamp:
         """The diode between two nodes; `through` is the current from anode to cathode."""
-        i_s, n, r_s = forward_parameters([(p.voltage.typ, p.current.typ) for p in self.forward])
+        i_s, n, r_s = self.parameters()
         model = Model(
             f"{name}_m",
             "D",
-            {"IS": i_s, "N": n, "RS": r_s, "CJO": self.capacitance.typ, "TT": self.recovery.typ, "TNOM": 25.0},
+            {
+                "IS": i_s,
+                "N": n,
+                "RS": r_s,
+                "CJO": self.capacitance.typ,
+                "TT": self.recovery.typ,
+                "TNOM": 25.0,
+            },
         )
         name_of = self.title or label
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"

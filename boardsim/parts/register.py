@@ -7,7 +7,7 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import Field
 
 from boardsim.parts.base import GROUND, Drive, Part, Resistor, Stamp
-from boardsim.quantities import FREQUENCY, RESISTANCE, TIME, VOLTAGE, Quantity
+from boardsim.quantities import FREQUENCY, POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity
 
 
 class Register(Part):
@@ -21,10 +21,10 @@ class Register(Part):
 
     role: ClassVar[str] = "register"
     kind: Literal["shift-register"] = "shift-register"
-    outputs: Annotated[int, Field(ge=1, le=64)]
-    output_resistance: Annotated[Quantity, RESISTANCE]
+    outputs: Annotated[int, Field(strict=True, ge=1, le=64)]
+    output_resistance: Annotated[Quantity, POSITIVE_RESISTANCE]
     propagation: Annotated[Quantity, TIME]
-    output_edge: Annotated[Quantity, TIME]
+    output_edge: Annotated[Quantity, POSITIVE_TIME]
     highest_clock: Annotated[Quantity, FREQUENCY] | None = None
     supply_low: Annotated[Quantity, VOLTAGE]
     supply_high: Annotated[Quantity, VOLTAGE]

@@ -4,6 +4,9 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
+from pydantic import model_validator
+
+from boardsim.errors import QuantityError
 from boardsim.parts.base import (
     Corner,
     Junction,
@@ -20,7 +23,7 @@ from boardsim.parts.base import (
     voltage,
 )
 from boardsim.parts.diode import THERMAL_VOLTAGE
-from boardsim.quantities import CAPACITANCE, CURRENT, POWER, RESISTANCE, VOLTAGE, Quantity, assume
+from boardsim.quantities import CAPACITANCE, CURRENT, POWER, RESISTANCE, VOLTAGE, Quantity, assume, in_units
 
 
 class Zener(Part):
@@ -28,9 +31,10 @@ class Zener(Part):
 
     Notes
     -----
-    V = V_Z + Z (I - I_Z): ngspice's junction breakdown, an exponential of 26 mV per e-fold, in series with what
-    remains of Z at the test current, and a leakage resistance across it, which lets the node between two clamp
-    diodes find its level as it does on a board. At 25 degC; the voltage's own temperature coefficient is ignored.
+    V = V_Z + (Z - V_T / I_Z) (I - I_Z) + V_T ln(I / I_Z) with V_T = 26 mV: ngspice's junction breakdown in series
+    with what remains of Z, so that the dynamic impedance at the test current is the datasheet's. Far beyond it a
+    straight line of Z would lie higher. A leakage resistance across it lets the node between two clamp diodes find
+    its level as it does on a board. At 25 degC; the voltage's own temperature coefficient is ignored.
     """
 
     role: ClassVar[str] = "component"
@@ -44,6 +48,16 @@ class Zener(Part):
         "1 uA", CURRENT, "at three quarters of the Zener voltage, from memory"
     )
     capacitance: Annotated[Quantity, CAPACITANCE] = assume("500 pF", CAPACITANCE, "Zener of some watts, from memory")
+
+    @model_validator(mode="after")
+    def _coherent(self) -> Zener:
+        drop = self.impedance.typ * self.test_current.typ
+        if drop >= self.voltage.min:
+            raise QuantityError(
+                f"impedance times test_current is {in_units(drop, 'V')}, which leaves nothing of the voltage of "
+                f"{in_units(self.voltage.min, 'V')}"
+            )
+        return self
 
     def stamp(self, name: str, label: str, positive: str, negative: str, through: Signal, corner: Corner) -> Stamp:
         """The Zener with `positive` at its cathode; `through` is the current from positive to negative."""

@@ -32,9 +32,20 @@ from boardsim.parts.base import (
     scaled,
     voltage,
 )
-from boardsim.quantities import CAPACITANCE, CHARGE, CURRENT, ENERGY, RESISTANCE, VOLTAGE, Quantity, assume
+from boardsim.quantities import (
+    CAPACITANCE,
+    CHARGE,
+    CURRENT,
+    ENERGY,
+    POSITIVE_RESISTANCE,
+    RESISTANCE,
+    VOLTAGE,
+    Quantity,
+    assume,
+)
 
 _BODY_DIODE_POTENTIAL = 0.75  # [V], grading exponent 1/2: an abrupt junction, from memory
+_SUBTHRESHOLD = 0.1  # [V], ngspice's own default for the rounding near threshold
 _BREAKDOWN_CURRENT = 250e-6  # [A], at which V_(BR)DSS is specified, common practice
 _GATE_DRAIN_SLOPE = 0.5  # [1/V], how sharply the gate-drain capacitance falls near V_GD = 0, from memory
 
@@ -42,7 +53,7 @@ _GATE_DRAIN_SLOPE = 0.5  # [1/V], how sharply the gate-drain capacitance falls n
 class OnResistance(Record):
     """A typical R_DS(on) and the gate voltage it is given for."""
 
-    value: Annotated[Quantity, RESISTANCE]
+    value: Annotated[Quantity, POSITIVE_RESISTANCE]
     gate: Annotated[Quantity, VOLTAGE]
 
 
@@ -100,9 +111,10 @@ class NMosfet(Part):
 
         Notes
         -----
-        R_DS(on) = R_D + 1 / (K_P (V_GS - V_TO)) from two points, or from one with half of it as R_D; threshold from
-        V_GS(th) = V_TO + sqrt(2 I / K_P). Gate-drain capacitance between C_GDmin = C_rss and a C_GDmax for which
-        the charge from the test voltage to 0 is Q_gd. Output capacitance as an abrupt junction. 25 degC.
+        R_DS(on) = R_D + 1 / (K_P u) from two points, or from one with half of it as R_D; V_GS(th) is where
+        I = K_P u^2 / 2; u = k ln(1 + exp((V_GS - V_TO) / k)) with k = 0.1 V is the model's overdrive. Gate-drain
+        capacitance between C_GDmin = C_rss and a C_GDmax for which the charge over the plateau is Q_gd. Output
+        capacitance as an abrupt junction. 25 degC.
 
         References
         ----------
@@ -115,34 +127,41 @@ class NMosfet(Part):
                 f"on_resistance at a gate voltage of {points[0][0]:.3g} V, below the threshold of {v_th:.3g} V"
             )
         v_to = v_th
-        for _ in range(20):  # V_TO and K_P depend weakly on each other
+
+        def drive(v_gs: float) -> float:
+            """The model's effective overdrive, rounded near the threshold. [V]"""
+            return _SUBTHRESHOLD * math.log1p(math.exp((v_gs - v_to) / _SUBTHRESHOLD))
+
+        for _ in range(60):  # V_TO and K_P depend weakly on each other
             if len(points) == 1:
-                r_d, k_p = points[0][1] / 2, 2 / (points[0][1] * (points[0][0] - v_to))
+                r_d, k_p = points[0][1] / 2, 2 / (points[0][1] * drive(points[0][0]))
             else:
                 (v1, r1), (v2, r2) = points[0], points[-1]
-                k_p = (1 / (v1 - v_to) - 1 / (v2 - v_to)) / (r1 - r2) if r1 > r2 else math.inf
-                r_d = r1 - 1 / (k_p * (v1 - v_to))
+                k_p = (1 / drive(v1) - 1 / drive(v2)) / (r1 - r2) if r1 > r2 and v2 > v1 else math.inf
+                r_d = r1 - 1 / (k_p * drive(v1))
             if not (0 < k_p < math.inf) or r_d < 0:
                 raise QuantityError(
                     "on_resistance at the gate voltages given and threshold contradict each other: the resistance must fall "
                     "with gate voltage, and not faster than the channel alone; use the typical figures of one table"
                 )
-            v_to = v_th - math.sqrt(2 * i_th / k_p)
+            v_to = v_th - _SUBTHRESHOLD * math.log(math.expm1(math.sqrt(2 * i_th / k_p) / _SUBTHRESHOLD))
         c_iss, c_oss, c_rss = (
             c.typ for c in (self.input_capacitance, self.output_capacitance, self.reverse_capacitance)
         )
         if not c_rss < min(c_iss, c_oss):
             raise QuantityError("reverse_capacitance must be smaller than input_capacitance and output_capacitance")
-        v, a = self.charge_voltage.typ, _GATE_DRAIN_SLOPE
-        # C_GD(v) = s atan(a v) + C_max - s with s = (C_max - C_min) / (1 + pi/2), integrated over v = -V .. 0
-        area = v * math.atan(a * v) - math.log(1 + (a * v) ** 2) / (2 * a)
-        share = (area + v) / (1 + math.pi / 2)
-        c_max = (self.gate_drain_charge.typ - c_rss * share) / (v - share)
+        # C_GD(v) = C_max - s + s atan(a v) below 0 V and C_max - s + s tanh(a v) above, with s = (C_max - C_min) /
+        # (1 + pi/2); the plateau runs from V_GD = -(V - V_th) to where the channel is fully on, at about V_TO.
+        low, high, a = self.charge_voltage.typ - v_th, v_to, _GATE_DRAIN_SLOPE
+        area = low * math.atan(a * low) - math.log1p((a * low) ** 2) / (2 * a)
+        share = (area + low + high - math.log(math.cosh(a * high)) / a) / (1 + math.pi / 2)
+        c_max = (self.gate_drain_charge.typ - c_rss * share) / (low + high - share)
         if c_max < c_rss:
             raise QuantityError("gate_drain_charge is smaller than reverse_capacitance times charge_voltage")
         junction = (c_oss - c_rss) * math.sqrt(1 + self.capacitance_voltage.typ / _BODY_DIODE_POTENTIAL)
         return {
             "VTO": v_to,
+            "KSUBTHRES": _SUBTHRESHOLD,
             "KP": k_p,
             "RD": r_d,
             "RS": 0.0,
@@ -171,7 +190,7 @@ class NMosfetStage(Part):
     kind: Literal["n-mosfet"] = "n-mosfet"
     part: named_part(NMosfet)  # type: ignore[valid-type]
     gate: Annotated[Quantity, RESISTANCE]
-    pulldown: Annotated[Quantity, RESISTANCE] | None = None
+    pulldown: Annotated[Quantity, POSITIVE_RESISTANCE] | None = None
 
     active: ClassVar[Literal["high", "low"]] = "high"
     """Output level that turns the coil on."""
@@ -233,7 +252,14 @@ class NMosfetStage(Part):
                     "lower the logic rail, or choose a gate rating that stands it",
                     magnitude=True,
                 ),
-                PeakRule("overcurrent", "i_d", peak, "destroy", "peak current of the switch", "choose a larger switch"),
+                PeakRule(
+                    "overcurrent",
+                    "i_d",
+                    peak,
+                    "destroy",
+                    "peak current of the switch",
+                    "choose a larger switch",
+                ),
                 MeanRule(
                     "overcurrent",
                     ("i_d",),

@@ -1,0 +1,197 @@
+"""What fields, names and messages of parts are made of."""
+
+import math
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from pydantic import ValidationError
+
+from boardsim.errors import QuantityError
+from boardsim.parts.base import (
+    NOMINAL,
+    Corner,
+    Surroundings,
+    name_from,
+    named_like,
+    nearest,
+    plus,
+    scaled,
+    shown,
+    voltage,
+)
+from boardsim.parts.cable import Cable
+from boardsim.parts.coil import Coil
+from boardsim.parts.copper import pair_inductance
+from boardsim.parts.diode import THERMAL_VOLTAGE, Diode, forward_parameters
+from boardsim.parts.supply import Supply
+from boardsim.parts.switches.n_mosfet import NMosfet
+
+
+def coil(**changes: str) -> Coil:
+    return Coil.model_validate({"resistance": "16 ohm +/- 10 %", "inductance": "12 mH", **changes})
+
+
+def test_the_nearest_known_word_is_offered_and_nothing_where_none_is_near() -> None:
+    assert nearest("zenner", ["diode", "zener"]) == ' (did you mean "zener"?)'
+    assert nearest("propeller", ["diode", "zener"]) == ""
+
+
+@pytest.mark.parametrize(
+    ("value", "text"),
+    [
+        (True, "true"),
+        (5, "5"),
+        ("x", "'x'"),
+        ({"a": 1}, "a table"),
+        ([1], "a list"),
+        ("y" * 99, repr("y" * 60 + "...")),
+    ],
+)
+def test_what_a_file_holds_is_shown_shortly(value: object, text: str) -> None:
+    assert shown(value) == text
+
+
+def test_kinds_get_the_article_that_is_spoken() -> None:
+    assert [named_like(k) for k in ("diode", "n-mosfet", "inductor", "zener")] == [
+        "a diode",
+        "an n-mosfet",
+        "an inductor",
+        "a zener",
+    ]
+
+
+@given(st.text(max_size=80))
+def test_any_text_makes_a_name_that_a_part_can_have(text: str) -> None:
+    name = name_from(text, "board")
+    assert coil(title=name).title == name
+
+
+def test_a_part_cannot_be_changed_after_it_was_read() -> None:
+    with pytest.raises(ValidationError, match="frozen"):
+        coil().title = "other"  # type: ignore[misc]
+
+
+def test_signals_add_up_by_vector() -> None:
+    assert plus(voltage("a", "b"), scaled(2.0, voltage("b"))) == ((1.0, "v(a)"), (1.0, "v(b)"))
+    assert voltage("0", "a") == ((-1.0, "v(a)"),)
+
+
+def test_a_corner_takes_the_end_that_it_names_and_the_middle_otherwise() -> None:
+    quantity = coil().resistance
+    assert Corner("low", {"coil_resistance": "min"}).take(quantity, "coil_resistance") == pytest.approx(14.4)
+    assert NOMINAL.take(quantity, "coil_resistance") == 16.0
+
+
+def test_a_winding_is_coldest_at_the_lowest_ambient_and_hottest_at_the_highest_with_its_own_rise() -> None:
+    around = Surroundings(278.15, 318.15)
+    part = coil(at="20 degC", rise="40 K")
+    cold = part.winding(Corner("cold", {}, "cold"), around)
+    hot = part.winding(Corner("hot", {}, "hot"), around)
+    # R = R20 (1 + alpha (T - 20 degC)), alpha 0.00393 / K: IEC 60028
+    assert cold == pytest.approx(16 * (1 + 0.00393 * (5 - 20)))
+    assert hot == pytest.approx(16 * (1 + 0.00393 * (45 + 40 - 20)))
+    assert part.winding(NOMINAL, around) == part.winding(Corner("cold", {}, "cold"), None) == 16.0
+
+
+def test_the_voltage_that_just_pulls_in_is_current_times_resistance() -> None:
+    assert coil().pull_in_voltage(NOMINAL, None) is None
+    found = coil(pull_in="0.5 A").pull_in_voltage(NOMINAL, None)
+    assert found is not None
+    assert found.typ == pytest.approx(8.0)
+    assert found.origin.kind == "computed"
+
+
+@given(
+    v=st.floats(0.4, 1.5),
+    rise=st.floats(0.05, 1.0),
+    i=st.floats(1e-3, 1.0),
+    ratio=st.floats(2.0, 100.0),
+)
+def test_a_diode_passes_through_the_points_that_were_given(v: float, rise: float, i: float, ratio: float) -> None:
+    points = [(v, i), (v + rise, i * ratio)]
+    i_s, n, r_s = forward_parameters(points)
+    assert i_s > 0
+    assert r_s >= 0
+    v_last, i_last = points[-1]
+    assert n * THERMAL_VOLTAGE * math.log(i_last / i_s) + r_s * i_last == pytest.approx(v_last, rel=1e-6)
+    assert n * THERMAL_VOLTAGE * math.log(i / i_s) + r_s * i == pytest.approx(v, abs=1e-6)
+
+
+@pytest.mark.parametrize(
+    "points", [[(1.0, 1.0), (0.9, 2.0)], [(1.0, 1.0), (1.1, 1.0)], [(50.0, 1.0)], [(9000.0, 1e-9)]]
+)
+def test_forward_points_of_no_single_junction_are_refused(points: list[tuple[float, float]]) -> None:
+    with pytest.raises(QuantityError, match=r"must rise|not that of one junction"):
+        forward_parameters(points)
+
+
+def test_a_diode_refuses_such_points_where_it_is_read() -> None:
+    with pytest.raises(ValidationError, match="not that of one junction"):
+        Diode.model_validate({"forward": [{"voltage": "100 V", "current": "1 A"}]})
+
+
+@pytest.mark.parametrize(
+    ("gauge", "number"), [("16 AWG", 16), ("16AWG", 16), ("0 AWG", 0), ("1/0 AWG", 0), ("4/0 AWG", -3)]
+)
+def test_wire_gauges_are_read(gauge: str, number: int) -> None:
+    assert Cable.model_validate({"gauge": gauge, "length": "1 m"}).gauge == number
+
+
+def test_a_cable_of_an_area_is_round_and_solid() -> None:
+    cable = Cable.model_validate({"area": "1 mm2", "length": "1 m"})
+    assert cable.section == pytest.approx(1e-6)
+    assert cable.diameter == pytest.approx(2 * math.sqrt(1e-6 / math.pi))
+
+
+def test_conductors_cannot_overlap() -> None:
+    with pytest.raises(QuantityError, match=r"conductors of 1.00 mm cannot be 0.90 mm apart"):
+        pair_inductance(1e-3, 0.9e-3, 1.0)
+
+
+def test_wider_spacing_never_lowers_the_inductance() -> None:
+    found = [pair_inductance(1e-3, spacing * 1e-3, 1.0) for spacing in (1.0, 1.5, 2.0, 10.0, 100.0)]
+    assert found == sorted(found)
+
+
+@pytest.mark.parametrize(
+    ("cls", "changes"),
+    [
+        (Coil, {"resistance": "0 ohm", "inductance": "1 mH"}),
+        (Coil, {"resistance": "1 ohm", "inductance": "1 mH", "core_loss": "0 ohm"}),
+        (Supply, {"voltage": "5 V", "internal_load": "0 ohm"}),
+    ],
+)
+def test_a_resistance_that_the_model_divides_by_cannot_be_zero(cls: type, changes: dict[str, str]) -> None:
+    with pytest.raises(ValidationError, match="'0 ohm' is zero; a resistance must be positive here"):
+        cls.model_validate(changes)  # type: ignore[attr-defined]
+
+
+MOSFET = {
+    "breakdown": "60 V",
+    "threshold": "1.7 V",
+    "on_resistance": [{"value": "55 mohm", "gate": "4.5 V"}, {"value": "45 mohm", "gate": "10 V"}],
+    "input_capacitance": "560 pF",
+    "output_capacitance": "95 pF",
+    "reverse_capacitance": "35 pF",
+    "gate_drain_charge": "3 nC",
+    "charge_voltage": "30 V",
+}
+
+
+def test_a_mosfets_model_gives_back_the_figures_that_shaped_it() -> None:
+    part = NMosfet.model_validate(MOSFET)
+    p = part.parameters(60.0)
+    for gate, r in ((4.5, 0.055), (10.0, 0.045)):
+        assert p["RD"] + 1 / (p["KP"] * (gate - p["VTO"])) == pytest.approx(r, rel=1e-3)
+    assert p["VTO"] + math.sqrt(2 * 250e-6 / p["KP"]) == pytest.approx(1.7, rel=1e-6)
+    assert p["CGS"] + p["CGDMIN"] == pytest.approx(560e-12)
+    # charge from the test voltage to 0, by Simpson's rule over ngspice's capacitance (manual, VDMOS model)
+    n, s = 2000, (p["CGDMAX"] - p["CGDMIN"]) / (1 + math.pi / 2)
+
+    def c_gd(v: float) -> float:
+        return s * math.atan(p["A"] * v) + p["CGDMAX"] - s
+
+    h = 30.0 / n
+    total = sum((1 if k in (0, n) else 4 if k % 2 else 2) * c_gd(-30.0 + k * h) for k in range(n + 1)) * h / 3
+    assert total == pytest.approx(3e-9, rel=1e-6)
