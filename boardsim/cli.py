@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from boardsim.errors import EXIT_WRONG_INPUT, BoardsimError
+from boardsim.errors import EXIT_WRONG_INPUT, BoardsimError, InputError
 
 if TYPE_CHECKING:
     from boardsim.verdict.findings import Result
@@ -81,7 +81,6 @@ def deck(
 ) -> None:
     """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
     from boardsim.board.reader import read_board
-    from boardsim.errors import InputError
     from boardsim.firing.pattern import read_pattern
     from boardsim.report.files import write_text
     from boardsim.scenarios.decks import write_deck
@@ -105,7 +104,6 @@ def schema(
     """Print the JSON Schema of board or pattern files, for editors that complete and check TOML."""
     import json
 
-    from boardsim.errors import InputError
     from boardsim.scenarios.starter import json_schema
 
     found = json_schema(what)
@@ -136,7 +134,6 @@ def _plain(name: str) -> str:
 
 def _usable(folder: Path) -> None:
     """Complain before the run, not after it."""
-    from boardsim.errors import InputError
 
     try:
         folder.mkdir(parents=True, exist_ok=True)
@@ -191,7 +188,8 @@ def main() -> None:
     try:
         app()
     except BoardsimError as err:
-        typer.echo(f"boardsim: {err}" if "\n" not in str(err) else str(err), err=True)
+        located = isinstance(err, InputError) and err.problems  # begins with file and line, where editors look for them
+        typer.echo(str(err) if located else f"boardsim: {err}", err=True)
         sys.exit(err.exit_status)
     except BrokenPipeError:
         # Whoever read the output has stopped, as `head` does.

@@ -91,7 +91,13 @@ class Dimension:
         return f"{_written(self.low, self.unit)} and {_written(self.high, self.unit)}"
 
     def check(self, value: float, text: str) -> None:
-        """Raise QuantityError if a value is outside what the field can mean."""
+        """Hold a value against what the field can mean.
+
+        Raises
+        ------
+        QuantityError
+            If it is outside.
+        """
         if value < 0 <= self.low < 1:  # a temperature below 0 K is out of range like any other
             raise QuantityError(
                 f"{text!r} is negative; {self.named} must be {'0 or more' if self.zero else 'positive'}"

@@ -19,6 +19,7 @@ Keys = tuple[str | int, ...]
 _TABLES = {"table", "table_array_element"}
 _KEYS = {"bare_key", "quoted_key", "dotted_key"}
 _DEEPEST = 32  # levels of tables and lists; a board has six
+_ENDLESS_KEY = re.compile(r"""(?<![\w"'-])(?:[\w"'-]++[ \t]*+\.[ \t]*+){100}""")
 LARGEST_FILE = 4 * 1024 * 1024  # [byte]; a board of a thousand channels needs a hundredth of it
 
 
@@ -84,6 +85,8 @@ def read_toml(path: Path, what: str) -> TomlFile:
     except UnicodeDecodeError as err:
         line = raw[: err.start].count(b"\n") + 1
         raise refuse(f"is not UTF-8 text; a {what} file is TOML, saved as UTF-8", line) from err
+    if _ENDLESS_KEY.search(text):  # tomllib would take minutes over it
+        raise refuse(f"nests more than {_DEEPEST} levels deep, which no {what} file does")
     try:
         data = tomllib.loads(text)
     except RecursionError as err:
@@ -155,12 +158,14 @@ def _places(text: str) -> Iterator[tuple[Keys, int]]:
     parser = tree_sitter.Parser(tree_sitter.Language(tree_sitter_toml.language()))
     root = parser.parse(text.encode()).root_node
     counts: dict[Keys, int] = {}
+    around: list[tuple[Keys, int]] = []
     for node in root.named_children:
         if node.type == "pair":
             yield from _pair(node, ())
         elif node.type in _TABLES:
             name, *rest = node.named_children
             keys = _open(_key(name), counts)
+            around += [(keys[:end], _line(name)) for end in range(1, len(keys))]
             if node.type == "table_array_element":
                 index = counts.get(keys, -1) + 1
                 counts[keys] = index
@@ -170,6 +175,7 @@ def _places(text: str) -> Iterator[tuple[Keys, int]]:
             for pair in rest:
                 if pair.type == "pair":
                     yield from _pair(pair, keys)
+    yield from around  # [a.b] also names a; a header of its own says so better, so these come last
 
 
 def _open(keys: Keys, counts: dict[Keys, int]) -> Keys:

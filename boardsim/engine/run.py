@@ -77,7 +77,13 @@ class Engine:
 
     @property
     def folder(self) -> Path:
-        """The scratch folder; exists inside `with` only."""
+        """The scratch folder.
+
+        Raises
+        ------
+        RuntimeError
+            Outside a `with` statement, where there is none.
+        """
         if self._folder is None:
             raise RuntimeError("an Engine runs inside a with statement only")
         return self._folder

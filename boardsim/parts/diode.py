@@ -79,8 +79,10 @@ def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, fl
         if r_s < 0:
             r_s, n = 0.0, (v2 - v1) / (THERMAL_VOLTAGE * math.log(i2 / i1))
     folds = (v2 - r_s * i2) / (n * THERMAL_VOLTAGE)
-    if not 0 < folds < _MOST_FOLDS:
-        raise QuantityError(f"forward voltage {v2:.3g} V at {i2:.3g} A is not that of one junction")
+    if folds <= 0:
+        raise QuantityError("forward points rise more steeply than a junction with a series resistance does")
+    if folds > _MOST_FOLDS:
+        raise QuantityError(f"forward voltage {v2:.3g} V at {i2:.3g} A is more than that of one junction")
     i_s = i2 / math.exp(folds)
     return i_s, n, r_s
 

@@ -137,7 +137,7 @@ class Dips:
             at = a + int(y[a:b].argmin())
             begin = self._open.start if self._open else start
             low, low_at = float(y[at]), float(t[at])
-            if self._open and self._open.lowest < low:
+            if self._open and self._open.lowest <= low:
                 low, low_at = self._open.lowest, self._open.at
             end = float(crossings[np.searchsorted(turns + 1, b)]) if b < len(t) else float(t[-1])
             self._open = Dip(begin, end - begin, low, low_at)

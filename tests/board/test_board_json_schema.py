@@ -72,9 +72,8 @@ def tables(data: Any, keys: tuple[str, ...] = ()) -> list[tuple[str, ...]]:
     return found
 
 
-def test_the_schema_refuses_an_unknown_key_in_every_table_as_the_reader_does(tmp_path: Path) -> None:
+def test_the_schema_refuses_an_unknown_key_in_every_table() -> None:
     data = tomllib.loads(with_part(ZENER))
-    free = {("coils",), ("parts",), ("channels",)}  # names of the user's own
     for keys in tables(data):
         changed = copy.deepcopy(data)
         table = changed
@@ -82,7 +81,6 @@ def test_the_schema_refuses_an_unknown_key_in_every_table_as_the_reader_does(tmp
             table = table[key]
         table["colour"] = "red"
         assert not validator("board").is_valid(changed), keys
-    assert free < set(tables(data))
 
 
 @pytest.mark.parametrize(

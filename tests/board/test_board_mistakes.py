@@ -31,6 +31,7 @@ NAME_RULE = (
         # keys
         (changed("esr =", "ers ="), 7, 'bulk.ers: "ers" is not known here (did you mean "esr"?); known: kind, title, capacitance, esr, '),
         (changed("esr =", "ers ="), 7, 'bulk: "esr" is missing'),
+        (changed("[coils.ejector]", "[coil.ejector]"), 15, 'coil: "coil" is not known here (did you mean "coils"?); known: name, ambient, supply,'),
         (changed("[limits]", "[limit]"), 29, 'limit: "limit" is not known here (did you mean "limits"?); known: name, ambient, supply,'),
         (changed("count = 3", 'count = 3\nregster = "x"'), 13, 'chain.regster: "regster" is not known here (did you mean "register"?); known: register, count,'),
         (changed("pull_in", "pullin"), 19, 'coils.ejector.pullin: "pullin" is not known here (did you mean "pull_in"?)'),
@@ -106,7 +107,7 @@ NAME_RULE = (
         (with_part(MOSFET.format('{ value = "40 mohm", gate = "4.5 V" }').replace('"3 nC"', '"0.1 nC"')), 29, "parts.mine: gate_drain_charge is smaller than reverse_capacitance times charge_voltage"),
         (with_part(ZENER.replace('"3 ohm"', '"3 kohm"')), 29, "parts.mine: impedance times test_current is 150 V, which leaves nothing of the voltage of 12.0 V"),
         (with_part('kind = "diode"\nforward = [{ voltage = "1 V", current = "1 A" }, { voltage = "0.7 V", current = "2 A" }]'), 29, "parts.mine: forward points must rise in voltage and current"),
-        (with_part('kind = "diode"\nforward = [{ voltage = "100 V", current = "1 A" }]'), 29, "parts.mine: forward voltage 100 V at 1 A is not that of one junction"),
+        (with_part('kind = "diode"\nforward = [{ voltage = "100 V", current = "1 A" }]'), 29, "parts.mine: forward voltage 100 V at 1 A is more than that of one junction"),
         # channels
         (changed('"0-23"', '"0-24"'), 23, 'channels."0-24": output 24 is outside the chain: 3 registers have outputs 0-23'),
         (changed("count = 3", "count = 1"), 23, 'channels."0-23": outputs 8-23 are outside the chain: 1 register has outputs 0-7'),

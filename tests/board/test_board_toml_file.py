@@ -40,6 +40,10 @@ n = 1
 k = 7
 [[rows.inner]]
 k = 8
+[implied.table.inner]
+x = 1
+[implied.table]
+y = 1
 """
 
 
@@ -74,6 +78,7 @@ def refusal(folder: Path, content: str | bytes) -> str:
         (("table", "list", 1), 16),
         (("table", "list", 1, "a"), 16),
         (("table", "after"), 17),
+        (("table", "sub"), 19),
         (("table", "sub", "x.y"), 19),
         (("table", "sub", "x.y", "key", "two", "three"), 20),
         (("rows",), 22),
@@ -82,6 +87,10 @@ def refusal(folder: Path, content: str | bytes) -> str:
         (("rows", 0, "cell", "m"), 25),
         (("rows", 1), 26),
         (("rows", 1, "n"), 27),
+        (("rows", 1, "inner"), 28),
+        (("implied",), 32),
+        (("implied", "table"), 34),
+        (("implied", "table", "inner"), 32),
         (("rows", 1, "inner", 0, "k"), 29),
         (("rows", 1, "inner", 1, "k"), 31),
         # what is not there stands at the nearest table around it

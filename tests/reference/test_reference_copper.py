@@ -54,7 +54,7 @@ def test_a_winding_gets_warm_as_its_resistance_tells() -> None:
     # T2 = (R2/R1)(T1 + 234.5) - 234.5; 320 ohm at 25 degC and 443.3 ohm warm give 125 degC.
     assert resistance_at(320.0, 298.15, 398.15) == pytest.approx(443.3, abs=0.05)  # printed to a tenth of an ohm
     # The rule's 234.5 degC follows from alpha = 0.00393 / K at 20 degC to 0.05 K.
-    assert 1 / ALPHA_20C - 20 == pytest.approx(234.5, abs=0.06)
+    assert pytest.approx(234.5, abs=0.06) == 1 / ALPHA_20C - 20
 
 
 # Kuphaldt, Lessons in Electric Circuits vol. I, chapter "Physics of conductors", works an example (14 V, 250 ohm load,

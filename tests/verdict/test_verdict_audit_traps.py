@@ -111,8 +111,7 @@ class Trap:
         names = [f"i({n.removesuffix('#branch')})" if n.endswith("#branch") else n for n in waves.names]
         column = dict(zip(names, rows.T, strict=True))
         v, i = (
-            np.sum([k * column[name] for k, name in deck.signals[0, quantity]], axis=0)
-            for quantity in ("v_ds", "i_d")
+            np.sum([k * column[name] for k, name in deck.signals[0, quantity]], axis=0) for quantity in ("v_ds", "i_d")
         )
         off = rows[:, 0] > float(self.firing.on[0][0, 1])
         return float(np.trapezoid((v * i)[off], rows[off, 0]))
@@ -134,9 +133,7 @@ def passive(readings: Readings) -> AuditEntry:
 
 @pytest.mark.engine
 @pytest.mark.parametrize("settings", [TRAP_200_US, TRAP_20_US], ids=["200 us", "20 us"])
-def test_passivity_refuses_what_the_trapezoidal_rule_makes_of_an_unclamped_coil(
-    trap: Trap, settings: Settings
-) -> None:
+def test_passivity_refuses_what_the_trapezoidal_rule_makes_of_an_unclamped_coil(trap: Trap, settings: Settings) -> None:
     energy = trap.switch_energy(trap.bare, settings)
     assert energy < 0.85 * TRUE  # wrong by far more than any tolerance, and ngspice says nothing
     entry = passive(trap.readings(trap.bare, settings))
@@ -271,6 +268,4 @@ def test_refinement_refuses_a_reading_that_only_one_of_the_runs_has() -> None:
 
 def test_refinement_lets_a_reading_far_from_its_limit_move_more() -> None:
     assert refinement([finding(5.0e-3, 0.75)], [finding(5.2e-3, 0.74)], (100, 200), "nominal", "pair").passed
-    assert not refinement(
-        [finding(5.0e-3, 0.75)], [finding(6.5e-3, 0.67)], (100, 200), "nominal", "pair"
-    ).passed
+    assert not refinement([finding(5.0e-3, 0.75)], [finding(6.5e-3, 0.67)], (100, 200), "nominal", "pair").passed

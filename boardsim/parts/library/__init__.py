@@ -11,7 +11,13 @@ from typing import Any
 
 @functools.cache
 def records() -> Mapping[str, Mapping[str, Any]]:
-    """All records by name, as they stand in the files: kind, source, sources, and the fields of the kind."""
+    """All records by name, as they stand in the files: kind, source, sources, and the fields of the kind.
+
+    Raises
+    ------
+    ValueError
+        If two files define the same name.
+    """
     found: dict[str, Mapping[str, Any]] = {}
     for entry in sorted(resources.files(__name__).iterdir(), key=lambda e: e.name):
         if entry.name.endswith(".toml"):

@@ -130,7 +130,8 @@ class NMosfet(Part):
 
         def drive(v_gs: float) -> float:
             """The model's effective overdrive, rounded near the threshold. [V]"""
-            return _SUBTHRESHOLD * math.log1p(math.exp((v_gs - v_to) / _SUBTHRESHOLD))
+            x = (v_gs - v_to) / _SUBTHRESHOLD
+            return _SUBTHRESHOLD * (max(x, 0.0) + math.log1p(math.exp(-abs(x))))
 
         for _ in range(60):  # V_TO and K_P depend weakly on each other
             if len(points) == 1:
@@ -144,7 +145,8 @@ class NMosfet(Part):
                     "on_resistance at the gate voltages given and threshold contradict each other: the resistance must fall "
                     "with gate voltage, and not faster than the channel alone; use the typical figures of one table"
                 )
-            v_to = v_th - _SUBTHRESHOLD * math.log(math.expm1(math.sqrt(2 * i_th / k_p) / _SUBTHRESHOLD))
+            overdrive = math.sqrt(2 * i_th / k_p) / _SUBTHRESHOLD
+            v_to = v_th - _SUBTHRESHOLD * (overdrive + math.log(-math.expm1(-overdrive)))
         c_iss, c_oss, c_rss = (
             c.typ for c in (self.input_capacitance, self.output_capacitance, self.reverse_capacitance)
         )
@@ -153,8 +155,15 @@ class NMosfet(Part):
         # C_GD(v) = C_max - s + s atan(a v) below 0 V and C_max - s + s tanh(a v) above, with s = (C_max - C_min) /
         # (1 + pi/2); the plateau runs from V_GD = -(V - V_th) to where the channel is fully on, at about V_TO.
         low, high, a = self.charge_voltage.typ - v_th, v_to, _GATE_DRAIN_SLOPE
+        if not (low > 0 and high > 0):
+            raise QuantityError(
+                f"charge_voltage must be above the threshold of {v_th:.3g} V"
+                if low <= 0
+                else f"threshold_current of {i_th:.3g} A is more than a channel of this on_resistance carries at its threshold"
+            )
         area = low * math.atan(a * low) - math.log1p((a * low) ** 2) / (2 * a)
-        share = (area + low + high - math.log(math.cosh(a * high)) / a) / (1 + math.pi / 2)
+        log_cosh = a * high + math.log1p(math.exp(-2 * a * high)) - math.log(2)
+        share = (area + low + high - log_cosh / a) / (1 + math.pi / 2)
         c_max = (self.gate_drain_charge.typ - c_rss * share) / (low + high - share)
         if c_max < c_rss:
             raise QuantityError("gate_drain_charge is smaller than reverse_capacitance times charge_voltage")

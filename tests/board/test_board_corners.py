@@ -1,0 +1,67 @@
+"""Which corners a board is run in."""
+
+from pathlib import Path
+
+import pytest
+from board_files import FRUIT_SORTER, TEXT
+
+from boardsim.board.corners import corners, nominal_only
+from boardsim.board.reader import Board, read_board
+
+TOLERANCES = (" +/- 5 %", " +/- 10 %", " +/- 20 %")
+
+
+def board(folder: Path, *, tolerances: bool, ambient: bool) -> Board:
+    text = TEXT if ambient else TEXT.replace('ambient = "5 to 45 degC"', "")
+    for tolerance in () if tolerances else TOLERANCES:
+        text = text.replace(tolerance, "")
+    path = folder / "board.toml"
+    path.write_text(text.replace('zener = "24v-5w"', 'zener = "flat"') + """
+[parts.flat]
+kind = "zener"
+voltage = "24 V"
+test_current = "50 mA"
+impedance = "3.5 ohm"
+""" if not tolerances else text, encoding="utf-8")  # fmt: skip
+    return read_board(path)
+
+
+def test_a_board_with_tolerances_runs_at_the_ends_that_are_worst_for_something() -> None:
+    found = {c.name: c for c in corners(read_board(FRUIT_SORTER))}
+    assert [name.split(",")[0] for name in found] == ["supply high", "supply high", "supply low", "supply low"]
+    hot = found["supply low, coils hot"]
+    assert (hot.winding, hot.ends["supply"], hot.ends["coil_resistance"]) == ("hot", "min", "max")
+    strong = found["supply high, coils cold, clamps high"]
+    assert (strong.winding, strong.ends["supply"], strong.ends["coil_resistance"]) == ("cold", "max", "min")
+    assert strong.ends["clamp_voltage"] == "max"
+    assert "breakdown" not in strong.ends  # the library's switch has no tolerance there
+
+
+def test_without_tolerances_and_ambient_one_nominal_run_is_left(tmp_path: Path) -> None:
+    (only,) = corners(board(tmp_path, tolerances=False, ambient=False))
+    assert (only.name, dict(only.ends), only.winding) == ("nominal", {}, "reference")
+
+
+def test_an_ambient_band_alone_gives_a_cold_and_a_hot_run(tmp_path: Path) -> None:
+    assert {c.winding for c in corners(board(tmp_path, tolerances=False, ambient=True))} == {"cold", "hot"}
+
+
+@pytest.mark.parametrize("tolerances", [True, False])
+@pytest.mark.parametrize("ambient", [True, False])
+def test_no_two_runs_are_alike(tmp_path: Path, tolerances: bool, ambient: bool) -> None:
+    found = corners(board(tmp_path, tolerances=tolerances, ambient=ambient))
+    assert len({(tuple(sorted(c.ends.items())), c.winding) for c in found}) == len(found)
+
+
+def test_what_was_given_without_tolerance_is_named(tmp_path: Path) -> None:
+    assert nominal_only(read_board(FRUIT_SORTER)) == ("breakdown voltage",)
+    assert set(nominal_only(board(tmp_path, tolerances=False, ambient=False))) == {
+        "supply voltage",
+        "coil resistance",
+        "coil inductance",
+        "bulk capacitance",
+        "clamp voltage",
+        "breakdown voltage",
+        "logic rail",
+        "winding temperature",
+    }
