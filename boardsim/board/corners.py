@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 from boardsim.board.reader import Board
-from boardsim.parts.base import NOMINAL, Corner
-from boardsim.quantities import Bound, Quantity
+from boardsim.parts.base import NOMINAL, Assumption, Corner
+from boardsim.parts.record import Record
+from boardsim.quantities import Bound, Quantity, in_units
 
 _INPUT_NAMES = {
     "supply": "supply voltage",
     "coil_resistance": "coil resistance",
     "inductance": "coil inductance",
     "bulk": "bulk capacitance",
+    "esr": "bulk series resistance",
     "clamp_voltage": "clamp voltage",
     "breakdown": "breakdown voltage",
     "logic": "logic rail",
@@ -22,6 +26,7 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
     found: dict[str, list[Quantity]] = {
         "supply": [board.supply.voltage],
         "bulk": [board.bulk.capacitance],
+        "esr": [board.bulk.esr],
         "logic": [board.logic.voltage],
     }
     for channel in board.channels:
@@ -50,7 +55,7 @@ def corners(board: Board) -> tuple[Corner, ...]:
     with cold windings for the rail, which then has to feed the most. Corners that come out alike are run once.
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max"}
-    weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "logic": "min"}
+    weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min"}
     wanted = (
         Corner(
             "supply high, coils cold, clamps high",
@@ -73,3 +78,44 @@ def corners(board: Board) -> tuple[Corner, ...]:
         distinct.setdefault((tuple(sorted(ends.items())), winding), Corner(corner.name, ends, winding))
     only = tuple(distinct.values())
     return only if len(only) > 1 else (NOMINAL,)
+
+
+def not_varied(board: Board) -> tuple[Assumption, ...]:
+    """Tolerances that were given but that no corner varies, so that nobody takes them for covered."""
+    used = [q for found in _varied(board).values() for q in found]
+    # Judged at their worse end, or only read as a band.
+    used += [board.chain.clock]
+    for channel in board.channels:
+        used += [q for q in (channel.coil.pull_in, channel.coil.release) if q is not None]
+    parts: list[tuple[str, Record]] = [
+        ("supply", board.supply),
+        ("cable", board.cable),
+        ("bulk capacitor", board.bulk),
+        ("chain", board.chain),
+    ]
+    for channel in board.channels:
+        parts += [(f"coil {channel.coil_name}", channel.coil), ("switch", channel.switch), ("clamp", channel.clamp)]
+    found = {
+        Assumption(
+            part,
+            name.replace("_", " "),
+            in_units(q.typ, q.unit),
+            "its tolerance is not varied; the typical value is used",
+        ): None
+        for part, record in parts
+        for name, q in _quantities(record)
+        if q.toleranced and not any(q is u for u in used)
+    }
+    return tuple(found)
+
+
+def _quantities(record: Record) -> Iterator[tuple[str, Quantity]]:
+    """Every number of a record and of the records in it."""
+    for name, value in record:
+        for item in value if isinstance(value, tuple) else (value,):
+            if isinstance(item, Quantity):
+                yield name, item
+            elif isinstance(item, Record):
+                for inner, quantity in _quantities(item):
+                    title = getattr(item, "title", None)
+                    yield f"{title} {inner}" if title else inner, quantity

@@ -14,23 +14,14 @@ from boardsim.board.ranges import read_range, write_range
 from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits, component_class
 from boardsim.board.toml_file import Keys, TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.parts.base import (
-    Assumption,
-    Part,
-    Surroundings,
-    listed,
-    name_from,
-    named_like,
-    nearest,
-    said,
-    shortened,
-)
+from boardsim.parts.base import Assumption, Part, Surroundings, listed
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
 from boardsim.parts.kinds import kinds
 from boardsim.parts.library import records
 from boardsim.parts.logic import Logic
+from boardsim.parts.record import name_from, named_like, nearest, said, shortened
 from boardsim.parts.supply import Supply
 from boardsim.quantities import Origin
 

@@ -6,12 +6,13 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo
 
-from boardsim.parts.base import Name, Part, Record, any_of, named_part
+from boardsim.parts.base import Part, any_of, named_part
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
 from boardsim.parts.kinds import kinds
 from boardsim.parts.logic import Logic
+from boardsim.parts.record import Name, Record
 from boardsim.parts.register import Register
 from boardsim.parts.supply import Supply
 from boardsim.quantities import FREQUENCY, SHARE, TEMPERATURE, TIME, VOLTAGE, Quantity, assume

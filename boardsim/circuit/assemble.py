@@ -6,7 +6,9 @@ from boardsim.board.reader import Board, Channel
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.firing.schedule import Firing
-from boardsim.parts.base import Assumption, Corner, DipRule, Limit, Port, Rule, Signal, Stamp, plus
+from boardsim.parts.base import Assumption, Corner, Stamp
+from boardsim.parts.elements import Port, Signal, plus
+from boardsim.parts.rules import DipRule, Limit, Rule
 
 RAIL = "rail"
 SUPPLY = "supply_out"

@@ -7,7 +7,7 @@ from collections.abc import Iterable
 from PySpice.Spice.ElementParameter import ModelPositionalParameter
 from PySpice.Spice.Netlist import Circuit, FixedPinElement
 
-from boardsim.parts.base import (
+from boardsim.parts.elements import (
     Ammeter,
     Capacitor,
     CurrentLaw,

@@ -7,7 +7,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal
 
-from boardsim.parts.base import Assumption, Corner, Port, Rule, Signal
+from boardsim.parts.base import Assumption, Corner
+from boardsim.parts.elements import Port, Signal
+from boardsim.parts.rules import Rule
 
 SIMULATION_TEMPERATURE = 25.0  # [degC]; all models hold at 25 degC, windings carry their own temperature
 

@@ -12,7 +12,7 @@ from boardsim.board.ranges import read_range, write_range
 from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.parts.base import Name, Record, name_from
+from boardsim.parts.record import Name, Record, name_from
 from boardsim.quantities import TIME, Quantity, in_units
 
 MOST_PULSES = 1_000_000
@@ -120,6 +120,10 @@ def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problem
                 f"{'is' if len(unknown) == 1 else 'are'} not on the board {board.path.name}",
             )
         )
+    for name in ("start", "width", "every", "stagger"):
+        time: Quantity | None = getattr(train, name)
+        if time is not None and time.toleranced:
+            problems.append(file.problem_at((*keys, name), "a commanded time has no tolerance; leave it out"))
     if train.width.typ == 0:
         problems.append(file.problem_at((*keys, "width"), "a pulse of 0 s is none; give its on-time"))
     if train.repeat > 1 and (train.every is None or train.every.typ == 0):

@@ -4,24 +4,9 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from boardsim.parts.base import (
-    GROUND,
-    Capacitor,
-    Corner,
-    Inductor,
-    Limit,
-    Part,
-    PeakRule,
-    Port,
-    Probe,
-    Resistor,
-    Stamp,
-    current,
-    listed,
-    plus,
-    scaled,
-    voltage,
-)
+from boardsim.parts.base import Corner, Part, Stamp, listed
+from boardsim.parts.elements import GROUND, Capacitor, Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
+from boardsim.parts.rules import Limit, PeakRule
 from boardsim.quantities import (
     CAPACITANCE,
     INDUCTANCE,
@@ -57,7 +42,7 @@ class Bulk(Part):
     def stamp(self, rail: str, corner: Corner) -> Stamp:
         """The capacitor from node `rail` to ground."""
         c = corner.take(self.capacitance, "bulk")
-        esr = max(self.esr.typ, _MIN_ESR)
+        esr = max(corner.take(self.esr, "esr"), _MIN_ESR)
         coil = Inductor("bulk_esl", "bulk_mid", GROUND, self.esl.typ)
         through = plus(current(coil), scaled(1 / self.esl_loss.typ, voltage("bulk_mid")))
         return Stamp(

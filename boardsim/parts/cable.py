@@ -9,19 +9,10 @@ from typing import Annotated, Any, ClassVar, Literal
 from pydantic import BeforeValidator, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import (
-    Corner,
-    Inductor,
-    Part,
-    Probe,
-    Resistor,
-    Stamp,
-    Surroundings,
-    current,
-    listed,
-    shown,
-)
+from boardsim.parts.base import Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import T_20C, awg_diameter, loop_resistance, pair_inductance
+from boardsim.parts.elements import Inductor, Probe, Resistor, current
+from boardsim.parts.record import shown
 from boardsim.quantities import AREA, LENGTH, Quantity, assume, computed
 
 

@@ -4,25 +4,10 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from boardsim.parts.base import (
-    Corner,
-    Inductor,
-    Limit,
-    Part,
-    Port,
-    Probe,
-    PullInRule,
-    ReleaseRule,
-    Resistor,
-    Stamp,
-    Surroundings,
-    current,
-    listed,
-    plus,
-    scaled,
-    voltage,
-)
+from boardsim.parts.base import Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
+from boardsim.parts.elements import Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
+from boardsim.parts.rules import Limit, PullInRule, ReleaseRule
 from boardsim.quantities import (
     CURRENT,
     INDUCTANCE,

@@ -9,22 +9,10 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import (
-    Junction,
-    Limit,
-    MeanRule,
-    Model,
-    Part,
-    PeakRule,
-    Port,
-    Probe,
-    Record,
-    Rule,
-    Signal,
-    Stamp,
-    scaled,
-    voltage,
-)
+from boardsim.parts.base import Part, Stamp
+from boardsim.parts.elements import Junction, Model, Port, Probe, Signal, scaled, voltage
+from boardsim.parts.record import Record
+from boardsim.parts.rules import Limit, MeanRule, PeakRule, Rule
 from boardsim.quantities import CAPACITANCE, CURRENT, TIME, VOLTAGE, Quantity, assume
 
 THERMAL_VOLTAGE = 8.617333e-5 * 298.15  # [V] k T / q at 25 degC, CODATA

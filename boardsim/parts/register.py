@@ -6,7 +6,8 @@ from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field
 
-from boardsim.parts.base import GROUND, Drive, Part, Resistor, Stamp
+from boardsim.parts.base import Part, Stamp
+from boardsim.parts.elements import GROUND, Drive, Resistor
 from boardsim.quantities import FREQUENCY, POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity
 
 

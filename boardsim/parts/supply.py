@@ -4,21 +4,9 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from boardsim.parts.base import (
-    GROUND,
-    Ammeter,
-    CeilingRule,
-    Corner,
-    CurrentLaw,
-    Limit,
-    Part,
-    Probe,
-    Resistor,
-    Stamp,
-    current,
-    listed,
-    voltage,
-)
+from boardsim.parts.base import Corner, Part, Stamp, listed
+from boardsim.parts.elements import GROUND, Ammeter, CurrentLaw, Probe, Resistor, current, voltage
+from boardsim.parts.rules import CeilingRule, Limit
 from boardsim.quantities import CURRENT, POSITIVE_RESISTANCE, RESISTANCE, VOLTAGE, Quantity, assume
 
 # Widths over which the two bends of the characteristic are rounded, so that Newton's method has a slope everywhere.

@@ -7,22 +7,10 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import (
-    Corner,
-    Junction,
-    Limit,
-    MeanRule,
-    Model,
-    Part,
-    PeakRule,
-    Port,
-    Probe,
-    Resistor,
-    Signal,
-    Stamp,
-    voltage,
-)
+from boardsim.parts.base import Corner, Part, Stamp
 from boardsim.parts.diode import THERMAL_VOLTAGE
+from boardsim.parts.elements import Junction, Model, Port, Probe, Resistor, Signal, voltage
+from boardsim.parts.rules import Limit, MeanRule, PeakRule
 from boardsim.quantities import CAPACITANCE, CURRENT, POWER, RESISTANCE, VOLTAGE, Quantity, assume, in_units
 
 

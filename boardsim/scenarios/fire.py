@@ -10,7 +10,7 @@ from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
 from pathlib import Path
 
-from boardsim.board.corners import corners, nominal_only
+from boardsim.board.corners import corners, nominal_only, not_varied
 from boardsim.board.reader import Board
 from boardsim.engine.run import DEFAULT_TIME_LIMIT
 from boardsim.firing.pattern import Pattern
@@ -130,7 +130,7 @@ def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
 
 
 def _assumptions(board: Board, results: Sequence[CornerResult]) -> tuple[Assumption, ...]:
-    found = dict.fromkeys(board.assumptions)
+    found = dict.fromkeys((*board.assumptions, *not_varied(board)))
     for r in results:
         if r.trial is not None:
             found.update(dict.fromkeys(r.trial.deck.assumptions))

@@ -11,7 +11,7 @@ from pydantic.json_schema import GenerateJsonSchema
 from boardsim.board.schema import BoardFile
 from boardsim.errors import InputError
 from boardsim.firing.pattern import PatternFile
-from boardsim.parts.base import Record
+from boardsim.parts.record import Record
 from boardsim.quantities import Quantity
 from boardsim.report.files import write_text
 

@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from dataclasses import replace
 
 from boardsim.circuit.deck import PlacedRule
-from boardsim.parts.base import BreakdownRule
+from boardsim.parts.rules import BreakdownRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench, upper, when
 from boardsim.verdict.findings import Finding

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
-from boardsim.parts.base import Consequence, Derating, Limit
+from boardsim.parts.rules import Consequence, Derating, Limit
 from boardsim.quantities import in_units
 from boardsim.verdict.findings import Finding, Verdict
 

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from boardsim.circuit.deck import PlacedRule
-from boardsim.parts.base import PullInRule, ReleaseRule
+from boardsim.parts.rules import PullInRule, ReleaseRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding

@@ -10,7 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from boardsim.errors import EXIT_LIMIT_BROKEN, EXIT_PASS, EXIT_UNPROVEN
-from boardsim.parts.base import Assumption, Consequence
+from boardsim.parts.base import Assumption
+from boardsim.parts.rules import Consequence
 
 Verdict = Literal["pass", "tight", "fail", "unproven", "limit-missing"]
 Floats = NDArray[np.float64]

@@ -7,7 +7,7 @@ from dataclasses import replace
 
 from boardsim.circuit.deck import Deck, PlacedRule
 from boardsim.firing.schedule import Firing
-from boardsim.parts.base import BreakdownRule, CeilingRule, DipRule, MeanRule, PeakRule, PullInRule, ReleaseRule
+from boardsim.parts.rules import BreakdownRule, CeilingRule, DipRule, MeanRule, PeakRule, PullInRule, ReleaseRule, Rule
 from boardsim.verdict.avalanche import judge_breakdown
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.coils import judge_pull_in, judge_release
@@ -28,9 +28,18 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     found: list[Finding] = []
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
+        nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed.rule))
         for finding in _apply(placed, readings, firing, bench):
-            found.append(replace(finding, corner=bench.corner, nominal_only=bench.nominal_only, assumed=assumed))
+            found.append(replace(finding, corner=bench.corner, nominal_only=nominal, assumed=assumed))
     return found
+
+
+def _beside_the_point(name: str, rule: Rule) -> bool:
+    """Whether a number that was run at its nominal value only does not bear on a rule's reading."""
+    of_the_rail = name in ("bulk capacitance", "bulk series resistance")
+    return (name == "breakdown voltage" and not isinstance(rule, BreakdownRule)) or (
+        of_the_rail and not isinstance(rule, DipRule | CeilingRule | PullInRule)
+    )
 
 
 def _assumed(placed: PlacedRule, deck: Deck) -> tuple[str, ...]:

@@ -6,7 +6,7 @@ from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
 from boardsim.firing.schedule import Firing
-from boardsim.parts.base import CeilingRule, DipRule
+from boardsim.parts.rules import CeilingRule, DipRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding

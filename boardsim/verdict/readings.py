@@ -11,14 +11,7 @@ import scipy.sparse
 from boardsim.circuit.deck import Deck
 from boardsim.engine.waves import Waves
 from boardsim.firing.schedule import Firing
-from boardsim.parts.base import (
-    BreakdownRule,
-    CeilingRule,
-    DipRule,
-    MeanRule,
-    PullInRule,
-    ReleaseRule,
-)
+from boardsim.parts.rules import BreakdownRule, CeilingRule, DipRule, MeanRule, PullInRule, ReleaseRule
 from boardsim.verdict.findings import Envelope, Floats
 from boardsim.verdict.watch import (
     Avalanche,

@@ -7,7 +7,7 @@ import numpy as np
 from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
 from boardsim.firing.schedule import Firing
-from boardsim.parts.base import Consequence
+from boardsim.parts.rules import Consequence
 from boardsim.quantities import Quantity, in_units
 from boardsim.verdict.findings import Finding, Floats, Verdict
 

@@ -5,7 +5,7 @@ from pathlib import Path
 import pytest
 from board_files import FRUIT_SORTER, TEXT
 
-from boardsim.board.corners import corners, nominal_only
+from boardsim.board.corners import corners, nominal_only, not_varied
 from boardsim.board.reader import Board, read_board
 
 TOLERANCES = (" +/- 5 %", " +/- 10 %", " +/- 20 %")
@@ -54,14 +54,27 @@ def test_no_two_runs_are_alike(tmp_path: Path, tolerances: bool, ambient: bool) 
 
 
 def test_what_was_given_without_tolerance_is_named(tmp_path: Path) -> None:
-    assert nominal_only(read_board(FRUIT_SORTER)) == ("breakdown voltage",)
+    assert nominal_only(read_board(FRUIT_SORTER)) == ("bulk series resistance", "breakdown voltage")
     assert set(nominal_only(board(tmp_path, tolerances=False, ambient=False))) == {
         "supply voltage",
         "coil resistance",
         "coil inductance",
         "bulk capacitance",
+        "bulk series resistance",
         "clamp voltage",
         "breakdown voltage",
         "logic rail",
         "winding temperature",
     }
+
+
+def test_a_tolerance_that_no_corner_varies_is_said(tmp_path: Path) -> None:
+    text = TEXT.replace('gate = "100 ohm"', 'gate = "100 ohm +/- 5 %"').replace(
+        'esr = "40 mohm"', 'esr = "40 mohm +/- 50 %"'
+    )
+    path = tmp_path / "board.toml"
+    path.write_text(text)
+    found = read_board(path)
+    said = [(a.part, a.quantity) for a in not_varied(found)]
+    assert said == [("switch", "gate")]  # the ESR has a corner of its own, and 24 equal channels say it once
+    assert {corner.ends.get("esr") for corner in corners(found)} == {None, "max"}

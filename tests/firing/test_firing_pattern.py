@@ -60,6 +60,7 @@ GOOD = '[[pulses]]\nchannels = "0"\nstart = "1 ms"\nwidth = "1 ms"\n'
         (GOOD.replace('"0"', '"zero"'), "2: pulses.0.channels: 'zero' is not a range of numbers; write it such as '0-23'"),
         (GOOD.replace('"0"', "0"), '2: pulses.0.channels: "channels" must be text in quotes; found 0'),
         (GOOD + GOOD.replace('width = "1 ms"', 'width = "0 s"'), "8: pulses.1.width: a pulse of 0 s is none; give its on-time"),
+        (GOOD.replace('width = "1 ms"', 'width = "1 ms +/- 5 %"'), "4: pulses.0.width: a commanded time has no tolerance; leave it out"),
         (GOOD + "repeat = 2\n", '5: pulses.0.repeat: needs "every", the time from one start to the next'),
         (GOOD + 'repeat = 2\nevery = "0 s"\n', '5: pulses.0.repeat: needs "every", the time from one start to the next'),
         (GOOD + 'every = "1 s"\n', '5: pulses.0.every: has no effect without "repeat"'),

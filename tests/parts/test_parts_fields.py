@@ -9,22 +9,13 @@ from hypothesis import strategies as st
 from pydantic import ValidationError
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import (
-    NOMINAL,
-    Corner,
-    Surroundings,
-    name_from,
-    named_like,
-    nearest,
-    plus,
-    scaled,
-    shown,
-    voltage,
-)
+from boardsim.parts.base import NOMINAL, Corner, Surroundings
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
 from boardsim.parts.copper import pair_inductance
 from boardsim.parts.diode import THERMAL_VOLTAGE, Diode, forward_parameters
+from boardsim.parts.elements import plus, scaled, voltage
+from boardsim.parts.record import name_from, named_like, nearest, shown
 from boardsim.parts.supply import Supply
 from boardsim.parts.switches.n_mosfet import NMosfet
 from boardsim.quantities import CAPACITANCE, CHARGE, CURRENT, RESISTANCE, VOLTAGE, Dimension

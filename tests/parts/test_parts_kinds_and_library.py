@@ -11,7 +11,7 @@ import boardsim.parts
 from boardsim.board.reader import library_part
 from boardsim.board.schema import component_class
 from boardsim.errors import InputError
-from boardsim.parts.base import FROM_MEMORY, Part
+from boardsim.parts.base import Part
 from boardsim.parts.kinds import kinds
 from boardsim.parts.library import records
 from boardsim.quantities import Quantity
@@ -107,7 +107,7 @@ def test_a_class_from_memory_says_to_check_the_datasheet() -> None:
     for name, record in records().items():
         for source in (record["source"], *record.get("sources", {}).values()):
             if "memory" in source and "datasheet" in source:
-                assert source == FROM_MEMORY, name
+                assert source == "typical of its class, from memory: check against your datasheet", name
 
 
 def test_an_unknown_name_is_refused_with_the_nearest() -> None:

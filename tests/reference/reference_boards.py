@@ -19,7 +19,8 @@ from boardsim.engine.run import Engine
 from boardsim.engine.waves import Waves
 from boardsim.firing.pattern import Pattern, read_pattern
 from boardsim.firing.schedule import Firing, fire
-from boardsim.parts.base import NOMINAL, Corner, Signal
+from boardsim.parts.base import NOMINAL, Corner
+from boardsim.parts.elements import Signal
 
 Floats = NDArray[np.float64]
 

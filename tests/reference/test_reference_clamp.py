@@ -59,9 +59,7 @@ capacitance = "20 pF"
 """
 
 
-def run_clamped(
-    engine: Engine, folder: Path, volts: float, ohms: float = 16.0, henries: float = 12e-3
-) -> Run:
+def run_clamped(engine: Engine, folder: Path, volts: float, ohms: float = 16.0, henries: float = 12e-3) -> Run:
     text = board_text(
         supply=f'voltage = "24 V", {STIFF}', coil=f'resistance = "{ohms:g} ohm"\ninductance = "{henries:g} H"\n{NO_LOSS}',
         clamp='{ kind = "diode-zener", diode = "perfect-diode", zener = "constant" }',
@@ -72,9 +70,7 @@ def run_clamped(
     return run_board(engine, folder, text, fired, Settings("gear", 1e-5, 20e-6))
 
 
-@pytest.mark.parametrize(
-    ("volts", "ohms", "henries"), [(24.0, 16.0, 12e-3), (5.1, 16.0, 12e-3), (60.0, 8.0, 6e-3)]
-)
+@pytest.mark.parametrize(("volts", "ohms", "henries"), [(24.0, 16.0, 12e-3), (5.1, 16.0, 12e-3), (60.0, 8.0, 6e-3)])
 def test_release_time_and_energy_of_a_constant_clamp_follow_the_closed_forms(
     engine: Engine, tmp_path: Path, volts: float, ohms: float, henries: float
 ) -> None:
@@ -119,9 +115,7 @@ def reading(result: Result, quantity: str) -> float:
 
 def test_energy_of_an_unclamped_turn_off_follows_the_closed_form_with_coil_resistance(tmp_path: Path) -> None:
     """12 mH, 16 ohm, 24 V into 60 V: 15.68 mJ from 1.496 A (worked by hand from the formula above)."""
-    result = fire_unclamped(
-        tmp_path, f'resistance = "16 ohm"\ninductance = "12 mH"\n{NO_LOSS}', "10 ms", "16 ms"
-    )
+    result = fire_unclamped(tmp_path, f'resistance = "16 ohm"\ninductance = "12 mH"\n{NO_LOSS}', "10 ms", "16 ms")
     assert result.proven
     start = reading(result, "coil current at the end of a pulse")
     assert start == pytest.approx(1.496, rel=2e-3)  # 1.4950: 45 to 55 mohm in the switch
@@ -135,9 +129,7 @@ def test_energy_of_an_unclamped_turn_off_without_coil_resistance_is_the_avalanch
     tmp_path: Path,
 ) -> None:
     """E = L I^2/2 BV/(BV - V). Reference: Toshiba, "How to calculate the avalanche energy" (FAQ, MOSFET)."""
-    result = fire_unclamped(
-        tmp_path, f'resistance = "0.1 ohm"\ninductance = "12 mH"\n{NO_LOSS}', "0.75 ms", "3 ms"
-    )
+    result = fire_unclamped(tmp_path, f'resistance = "0.1 ohm"\ninductance = "12 mH"\n{NO_LOSS}', "0.75 ms", "3 ms")
     assert result.proven
     start = reading(result, "coil current at the end of a pulse")
     assert start == pytest.approx(24 * 0.75e-3 / 12e-3, rel=1e-2)  # V t / L; 0.15 ohm take 0.5 % at the end

@@ -26,9 +26,7 @@ few = settings(
 QUICK = Settings("gear", 5e-5, 100e-6)
 
 
-def run_small(
-    engine: Engine, *, volts: float = 24.0, zener: float = 24.0, channels: str = "0", fired: str
-) -> Run:
+def run_small(engine: Engine, *, volts: float = 24.0, zener: float = 24.0, channels: str = "0", fired: str) -> Run:
     text = board_text(
         supply=f'voltage = "{volts:.6g} V", resistance = "30 mohm"', channels=channels,
         cable='{ gauge = "18 AWG", length = "1 m" }', bulk='{ capacitance = "470 uF", esr = "40 mohm" }',
@@ -47,9 +45,7 @@ def run_small(
 
 @few
 @given(order=st.permutations([0, 1, 2, 3]))
-def test_a_permutation_of_identical_channels_changes_nothing_but_names(
-    engine: Engine, order: list[int]
-) -> None:
+def test_a_permutation_of_identical_channels_changes_nothing_but_names(engine: Engine, order: list[int]) -> None:
     starts, widths = [1.0, 1.5, 3.0, 6.0], [5.0, 2.0, 4.0, 1.0]  # [ms], of four pulses that overlap in part
 
     def fired(channels: list[int]) -> str:
@@ -84,9 +80,7 @@ def test_more_clamp_voltage_never_slows_the_release(engine: Engine, zener: float
 @given(volts=st.floats(8.0, 40.0), more=st.floats(0.1, 10.0))
 def test_a_higher_supply_never_lowers_the_peak_current(engine: Engine, volts: float, more: float) -> None:
     fired = pattern_text(pulse("1 ms", "5 ms"), duration="7 ms")
-    low, high = (
-        run_small(engine, volts=v, fired=fired).signal("i_coil", 0).max() for v in (volts, volts + more)
-    )
+    low, high = (run_small(engine, volts=v, fired=fired).signal("i_coil", 0).max() for v in (volts, volts + more))
     assert high > low
     # Nothing in this circuit but the diode is bent, and it is off: current and supply are in proportion. 0.2 %: the
     # supply's smooth bend at 0 A.

@@ -10,8 +10,9 @@ from reference_boards import run_plain
 
 from boardsim.board.reader import library_part
 from boardsim.engine.run import Engine
-from boardsim.parts.base import NOMINAL, Junction
+from boardsim.parts.base import NOMINAL
 from boardsim.parts.diode import Diode
+from boardsim.parts.elements import Junction
 from boardsim.parts.switches.n_mosfet import NMosfet
 from boardsim.parts.zener import Zener
 
@@ -120,22 +121,16 @@ def test_forward_voltage_at_every_point_given(engine: Engine, name: str) -> None
     model = only_junction(part).model
     for point in part.forward:
         amperes = point.current.typ
-        text = plain(
-            card("D", model.parameters), "D1 a 0 part", "I1 0 a 0", f".dc I1 0 {amperes} {amperes / 10}"
-        )
+        text = plain(card("D", model.parameters), "D1 a 0 part", "I1 0 a 0", f".dc I1 0 {amperes} {amperes / 10}")
         # 0.1 %: the fit is exact; ngspice's kT/q has other digits of k and q.
-        assert run_plain(engine, text, amperes)["v(a)"][-1] == pytest.approx(point.voltage.typ, rel=1e-3), (
-            point
-        )
+        assert run_plain(engine, text, amperes)["v(a)"][-1] == pytest.approx(point.voltage.typ, rel=1e-3), point
 
 
 @pytest.mark.parametrize("name", ["24v-5w", "12v-5w"])
 def test_zener_voltage_and_impedance_at_the_test_current(engine: Engine, name: str) -> None:
     part = library_part(name)
     model, amperes = only_junction(part).model, part.test_current.typ
-    text = plain(
-        card("D", model.parameters), "D1 0 a part", "I1 0 a 0", f".dc I1 0 {1.1 * amperes} {amperes / 100}"
-    )
+    text = plain(card("D", model.parameters), "D1 0 a part", "I1 0 a 0", f".dc I1 0 {1.1 * amperes} {amperes / 100}")
     waves = run_plain(engine, text, 1.1 * amperes)
     i = np.linspace(0, 1.1 * amperes, len(waves["v(a)"]))
     v = np.interp(np.array([0.9, 1.0, 1.1]) * amperes, i, waves["v(a)"])

@@ -26,9 +26,7 @@ CABLE = '{ area = "1.5 mm2", length = "2 m" }'
 V, R_SOURCE, R_COIL, R_SWITCH = 24.0, 0.05, 2.4, 1e-3
 
 
-def run_step(
-    engine: Engine, folder: Path, farads: float, esr: float, henries: float, max_step: float = 1e-6
-) -> Run:
+def run_step(engine: Engine, folder: Path, farads: float, esr: float, henries: float, max_step: float = 1e-6) -> Run:
     text = board_text(
         supply=f'voltage = "24 V", resistance = "{R_SOURCE} ohm"', cable=CABLE, clamp=DIODE,
         bulk=f'{{ capacitance = "{farads:g} F", esr = "{esr:g} ohm", esl = "0.1 nH" }}',
@@ -90,9 +88,7 @@ def test_settled_rail_is_the_divider_of_source_cable_switch_and_coil(engine: Eng
     current = V / (R_SOURCE + R_CABLE + R_COIL + R_SWITCH)
     # 1e-4: steady state; the supply's bend adds 1 uA.
     assert run.at(off - 10e-6, "v_rail") == pytest.approx(V - current * (R_SOURCE + R_CABLE), rel=1e-4)
-    assert run.at(off - 10e-6, "i_supply") == pytest.approx(
-        current + V / 10e3, rel=1e-3
-    )  # and its internal load
+    assert run.at(off - 10e-6, "i_supply") == pytest.approx(current + V / 10e3, rel=1e-3)  # and its internal load
 
 
 def test_rail_of_a_supply_at_its_ceiling_is_discharged_by_what_the_coil_draws_beyond_it(

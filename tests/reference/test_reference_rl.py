@@ -38,9 +38,7 @@ def run_book(
         coil=f'resistance = "{SCALE * ohms:g} ohm"\ninductance = "{SCALE * henries:g} H"\n{NO_LOSS}',
         clamp=DIODE,
     )
-    return run_board(
-        engine, folder, text, pattern_text(*pulses, duration=duration), Settings("gear", 1e-5, step)
-    )
+    return run_board(engine, folder, text, pattern_text(*pulses, duration=duration), Settings("gear", 1e-5, step))
 
 
 # Kuphaldt, Lessons in Electric Circuits vol. I, chapter "RC and L/R time constants", inductor transient table:
@@ -58,9 +56,7 @@ KUPHALDT_RISE = [
 ]
 
 
-def test_current_and_voltage_of_a_rising_coil_follow_the_table_of_a_textbook(
-    engine: Engine, tmp_path: Path
-) -> None:
+def test_current_and_voltage_of_a_rising_coil_follow_the_table_of_a_textbook(engine: Engine, tmp_path: Path) -> None:
     run = run_book(engine, tmp_path, 15, 1, 1, pulse("1 ms", "10.5 s"), duration="11 s", step=10e-3)
     on, _ = run.on()
     for t, amperes, volts in KUPHALDT_RISE:
@@ -130,9 +126,7 @@ def test_second_pulse_that_finds_five_amperes_in_the_coil_follows_the_table_of_a
             assert v == pytest.approx(volts, rel=1e-3, abs=0.5e-3), t
 
 
-def test_overlapping_pulses_of_a_board_of_common_parts_follow_the_exponential(
-    engine: Engine, tmp_path: Path
-) -> None:
+def test_overlapping_pulses_of_a_board_of_common_parts_follow_the_exponential(engine: Engine, tmp_path: Path) -> None:
     """From L di/dt = V - R i, with R = coil + switch + supply + cable while on; and V = -V_F(i) while off."""
     text = board_text(
         supply=f'voltage = "24 V", {STIFF}', coil=f'resistance = "16 ohm"\ninductance = "12 mH"\n{NO_LOSS}',

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from typing import ClassVar, Literal
 
-from boardsim.parts.base import Ammeter, Corner, Part, Stamp, current, named_part
+from boardsim.parts.base import Corner, Part, Stamp, named_part
 from boardsim.parts.diode import Diode
+from boardsim.parts.elements import Ammeter, current
 from boardsim.parts.zener import Zener
 from boardsim.quantities import Quantity
 

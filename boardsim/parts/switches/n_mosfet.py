@@ -8,30 +8,23 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import (
+from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
+from boardsim.parts.elements import (
     GROUND,
     Ammeter,
-    BreakdownRule,
-    Corner,
     Element,
-    Limit,
-    MeanRule,
     Model,
-    Part,
-    PeakRule,
     Port,
     PowerMosfet,
     Probe,
-    Record,
     Resistor,
-    Stamp,
     current,
-    listed,
-    named_part,
     plus,
     scaled,
     voltage,
 )
+from boardsim.parts.record import Record
+from boardsim.parts.rules import BreakdownRule, Limit, MeanRule, PeakRule
 from boardsim.quantities import (
     CAPACITANCE,
     CHARGE,

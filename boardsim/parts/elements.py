@@ -1,0 +1,166 @@
+"""Plain circuit elements, the signals that are read from them, and the ports that the audit sums. Values only."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True)
+class Resistor:
+    """Between two nodes. [ohm]"""
+
+    name: str
+    a: str
+    b: str
+    ohms: float
+
+
+@dataclass(frozen=True)
+class Inductor:
+    """Between two nodes; its current flows from a to b inside. [H]"""
+
+    name: str
+    a: str
+    b: str
+    henries: float
+
+
+@dataclass(frozen=True)
+class Capacitor:
+    """Between two nodes. [F]"""
+
+    name: str
+    a: str
+    b: str
+    farads: float
+
+
+@dataclass(frozen=True)
+class Model:
+    """A .model line: device type and parameters in SI units, ngspice's own names."""
+
+    name: str
+    type: str
+    parameters: Mapping[str, float]
+
+
+@dataclass(frozen=True)
+class Junction:
+    """A diode between anode and cathode."""
+
+    name: str
+    anode: str
+    cathode: str
+    model: Model
+
+
+@dataclass(frozen=True)
+class PowerMosfet:
+    """A vertical MOSFET (ngspice VDMOS)."""
+
+    name: str
+    drain: str
+    gate: str
+    source: str
+    model: Model
+
+
+@dataclass(frozen=True)
+class Ammeter:
+    """A source of 0 V; the current through it counts from a to b."""
+
+    name: str
+    a: str
+    b: str
+
+
+@dataclass(frozen=True)
+class Drive:
+    """A voltage source that follows a register output: times [s] and levels [V], straight lines between."""
+
+    name: str
+    plus: str
+    minus: str
+    points: tuple[tuple[float, float], ...]
+
+
+@dataclass(frozen=True)
+class CurrentLaw:
+    """A current from minus to plus through the source, given by an expression of node voltages. [A]"""
+
+    name: str
+    plus: str
+    minus: str
+    expression: str
+
+
+Element = Resistor | Inductor | Capacitor | Junction | PowerMosfet | Ammeter | Drive | CurrentLaw
+
+Signal = tuple[tuple[float, str], ...]
+"""A linear combination of saved vectors: ((coefficient, "v(node)" or "i(element)"), ...)."""
+
+GROUND = "0"
+
+
+def voltage(a: str, b: str = GROUND) -> Signal:
+    """The voltage from node a to node b. [V]"""
+    return tuple((sign, f"v({node})") for sign, node in ((1.0, a), (-1.0, b)) if node != GROUND)
+
+
+def current(element: Inductor | Ammeter | Drive) -> Signal:
+    """The current through an element that has a branch of its own, from a (plus) to b. [A]"""
+    return ((1.0, f"i({_PREFIX[type(element)]}{element.name})"),)
+
+
+_PREFIX = {Inductor: "l", Ammeter: "v", Drive: "v"}
+
+
+def scaled(factor: float, signal: Signal) -> Signal:
+    """A signal times a number."""
+    return tuple((factor * k, name) for k, name in signal)
+
+
+def plus(*signals: Signal) -> Signal:
+    """The sum of signals."""
+    total: dict[str, float] = {}
+    for signal in signals:
+        for k, name in signal:
+            total[name] = total.get(name, 0.0) + k
+    return tuple((k, name) for name, k in total.items())
+
+
+@dataclass(frozen=True)
+class Probe:
+    """A quantity of a part that is read from the waveforms, such as v_ds [V] or i_coil [A]."""
+
+    quantity: str
+    signal: Signal
+    unit: str
+
+
+@dataclass(frozen=True)
+class Port:
+    """What the passivity audit sums for one part: pairs of voltage and current probes, current into the part.
+
+    Attributes
+    ----------
+    part : str
+        Name for messages.
+    pairs : tuple of (voltage, current) quantity names
+        Terminal power is the sum of their products. [W]
+    holds : float
+        Energy that the part's own capacitances can hold and return. [J]
+    store : tuple or None
+        (quantity, value): the part stores value/2 x quantity^2 (L with its current, C with its voltage); the
+        energy that it has dissipated, not the terminal energy, must then never fall.
+    from_rest : bool
+        Count voltages from their first value. A capacitor on a rail is as passive about its resting voltage as
+        about 0 V, and rounding errors of its charge do not then count at the full rail voltage.
+    """
+
+    part: str
+    pairs: tuple[tuple[str, str], ...]
+    holds: float = 0.0
+    store: tuple[str, float] | None = None
+    from_rest: bool = False
