@@ -143,7 +143,7 @@ def _sentences(console: Console, groups: list[Group]) -> None:
         if worst.nominal_only:
             sentence.append(f" [nominal only: {', '.join(worst.nominal_only)}]", "dim")
         if worst.assumed:
-            sentence.append(f" [hangs on assumed {'; '.join(worst.assumed)}]", "dim")
+            sentence.append(f" [hangs on assumed {', '.join(worst.assumed)}]", "dim")
         lines.add_row(_text(worst.verdict, _STYLES[worst.verdict]), sentence)
     console.print(lines)
     if len(groups) > MOST_SENTENCES:

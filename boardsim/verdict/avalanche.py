@@ -24,7 +24,6 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     if not events:
         yield upper(
             "drain-source voltage",
-            rule.check,
             rule.rating,
             "destroy",
             placed,
@@ -59,7 +58,6 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     current = max(events, key=lambda e: e.current)
     yield upper(
         "avalanche current",
-        rule.check,
         rule.avalanche_current,
         "destroy",
         placed,
@@ -83,7 +81,6 @@ def _avalanche_energy(
     """A single-pulse rating covers one pulse; repeated avalanche needs a repetitive rating."""
     single = upper(
         "avalanche energy",
-        rule.check,
         rule.single,
         "destroy",
         placed,
@@ -112,7 +109,6 @@ def _avalanche_energy(
         return
     yield upper(
         "avalanche energy",
-        rule.check,
         rule.repetitive,
         "destroy",
         placed,

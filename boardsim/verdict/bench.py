@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 from boardsim.board.reader import Board
@@ -30,12 +31,67 @@ class Bench:
         return self.board.limits.guard_band.typ
 
     def verdict(self, margin: float | None) -> Verdict:
-        """The verdict of a margin."""
+        """The verdict of a margin; None stands for a limit that was not given."""
         if margin is None:
             return "limit-missing"
+        if not math.isfinite(margin):
+            return "unproven"  # a reading that is no number proves nothing
         if margin < 0:
             return "fail"
         return "tight" if margin < self.guard else "pass"
+
+    def finding(
+        self,
+        placed: PlacedRule,
+        limit: Limit,
+        what: str,
+        value: float,
+        margin: float | None,
+        at: float | None,
+        sentence: str,
+        consequence: Consequence = "misbehave",
+        *,
+        part: str = "",
+        lasting: float | None = None,
+    ) -> Finding:
+        """A finding on a placed rule; the margin decides its verdict.
+
+        Parameters
+        ----------
+        placed : PlacedRule
+        limit : Limit
+            Before derating.
+        what : str
+            What was read.
+        value : float
+            The reading. [unit of the limit]
+        margin : float or None
+            Share of the limit that is left. [1]
+        at, lasting : float or None
+            When, and for how long. [s]
+        sentence : str
+        consequence : {"destroy", "misbehave"}
+        part : str
+            If it is not the placed rule's own.
+        """
+        bound = None if limit.value is None else limit.value * self.derating(limit.derating)
+        return Finding(
+            placed.rule.check,
+            what,
+            part or placed.part,
+            placed.channel,
+            placed.label,
+            value,
+            bound,
+            limit.unit,
+            margin,
+            at,
+            consequence,
+            self.verdict(margin),
+            sentence,
+            source=limit.source,
+            lasting=lasting,
+        )
 
 
 def when(at: float | None) -> str:
@@ -45,7 +101,6 @@ def when(at: float | None) -> str:
 
 def upper(
     what: str,
-    check: str,
     limit: Limit,
     consequence: Consequence,
     placed: PlacedRule,
@@ -61,7 +116,6 @@ def upper(
     share = bench.derating(limit.derating)
     bound = None if limit.value is None else limit.value * share
     margin = None if bound is None else (bound - value) / bound
-    verdict = bench.verdict(margin)
     reading = in_units(value, limit.unit)
     if bound is None:
         sentence = f"{placed.label}: {what} is {reading}{when(at)}{detail}; no {limit.name} of {part} was given to hold it against"
@@ -70,22 +124,7 @@ def upper(
         if share != 1.0:
             rated += f" ({share:.0%} of {in_units(limit.value or 0.0, limit.unit)}: {bench.board.derating.reason})"
         sentence = f"{placed.label}: {what} is {reading}{when(at)}{detail}; the {rated}, allows "
-        sentence += "less" if verdict == "fail" else f"{margin:.0%} more"
-    if verdict == "fail":
+        sentence += "less" if margin is not None and margin < 0 else f"{margin:.0%} more"
+    if margin is not None and margin < 0:
         sentence += f"; try: {advice}"
-    return Finding(
-        check,
-        what,
-        part,
-        placed.channel,
-        placed.label,
-        value,
-        bound,
-        limit.unit,
-        margin,
-        at,
-        consequence,
-        verdict,
-        sentence,
-        source=limit.source,
-    )
+    return bench.finding(placed, limit, what, value, margin, at, sentence, consequence, part=part)

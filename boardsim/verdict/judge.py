@@ -49,7 +49,7 @@ def _assumed(placed: PlacedRule, deck: Deck) -> tuple[str, ...]:
     rail = placed.channel is None or isinstance(placed.rule, PullInRule)
     own = placed.channel is not None
     return tuple(
-        f"{a.part}: {a.quantity} {a.value}"
+        f"{a.part} {a.quantity}"
         for a in deck.assumptions
         if (a.part.startswith(("coil", "switch")) and own) or (not a.part.startswith(("coil", "switch")) and rail)
     )
@@ -63,7 +63,6 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench)
             value = readings.means[placed.channel, rule.quantities]
             yield upper(
                 rule.what,
-                rule.check,
                 rule.limit,
                 rule.consequence,
                 placed,
@@ -76,9 +75,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench)
         case BreakdownRule() as rule:
             yield from judge_breakdown(rule, placed, readings, bench)
         case PullInRule() as rule:
-            yield from judge_pull_in(rule, placed, readings, bench)
+            yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], bench)
         case ReleaseRule() as rule:
-            yield from judge_release(rule, placed, readings, bench)
+            yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
         case DipRule() as rule:
             yield judge_dip(rule, placed, readings, firing, bench)
         case CeilingRule() as rule:
@@ -92,7 +91,6 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
         value, at = -readings.low[key][0], readings.low[key][1]
     return upper(
         rule.what,
-        rule.check,
         rule.limit,
         rule.consequence,
         placed,
@@ -102,3 +100,9 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
         rule.advice,
         part=rule.part,
     )
+
+
+def _channel(placed: PlacedRule) -> int:
+    """The channel of a rule that only channels have."""
+    assert placed.channel is not None
+    return placed.channel

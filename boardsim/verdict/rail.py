@@ -41,73 +41,35 @@ def _together(board: Board, firing: Firing, at: float) -> str:
 
 
 def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
-    """Depth with duration: below the level is allowed for less than the given time."""
+    """Depth with duration: below the level is allowed for less than the given time.
+
+    Without a dip below the level, the margin is that of the lowest voltage; with dips that are all short enough it is
+    what is left of the allowed time; with one that lasts too long it is how far it goes below.
+    """
     lowest, at = readings.low[placed.channel, rule.quantity]
-    who = _together(bench.board, firing, at)
     level = rule.limit.value
-    at_supply = in_units(readings.low[None, "v_supply"][0], "V")
-    sentence = f"{who} at {in_units(at, 's', 4)}: the {rule.what} fell to {in_units(lowest, 'V')}"
-    sentence += f" ({at_supply} at the supply's own terminals)"
-    if level is None:
-        return Finding(
-            rule.check,
-            "coil rail voltage",
-            placed.part,
-            None,
-            placed.label,
-            lowest,
-            None,
-            "V",
-            None,
-            at,
-            "misbehave",
-            "limit-missing",
-            f"{sentence}; no brown-out level was given to hold it against ([limits] brown_out)",
-        )
-    margin = (lowest - level) / level
     longest: Dip | None = max(readings.dips, key=lambda d: d.lasting, default=None)
-    if longest is None:
-        sentence += f"; the brown-out level is {in_units(level, 'V')}"
-        return Finding(
-            rule.check,
-            "coil rail voltage",
-            placed.part,
-            None,
-            placed.label,
-            lowest,
-            level,
-            "V",
-            margin,
-            at,
-            "misbehave",
-            bench.verdict(margin),
-            sentence,
-            source=rule.limit.source,
-        )
-    sentence += f" and stayed below {in_units(level, 'V')} for {in_units(longest.lasting, 's')}; brown-out counts after {in_units(rule.lasting, 's')}"
-    spare = (rule.lasting - longest.lasting) / rule.lasting if rule.lasting else -1.0
-    if spare < 0:
-        sentence += _fewer(bench.board)
+    shown, when = (lowest, at) if longest is None else (longest.lowest, longest.at)
+    said = f"{_together(bench.board, firing, when)} at {in_units(when, 's', 4)}: the {rule.what} fell to {in_units(shown, 'V')}"
+    if longest is not None and level is not None:
+        said += f" and stayed below {in_units(level, 'V')} for {in_units(longest.lasting, 's')}"
+        said += f"; brown-out counts after {in_units(rule.lasting, 's')}"
+    elif level is not None:
+        said += f"; the brown-out level is {in_units(level, 'V')}"
     else:
-        margin = spare
-    # Broken, the margin tells the depth; allowed for its shortness, the margin tells how short.
-    return Finding(
-        rule.check,
-        "coil rail voltage",
-        placed.part,
-        None,
-        placed.label,
-        lowest,
-        level,
-        "V",
-        margin,
-        at,
-        "misbehave",
-        bench.verdict(margin),
-        sentence,
-        source=rule.limit.source,
-        lasting=longest.lasting,
-    )
+        said += "; no brown-out level was given to hold it against ([limits] brown_out)"
+    if lowest < shown:
+        said += f"; the deepest dip reaches {in_units(lowest, 'V')} at {in_units(at, 's', 4)}"
+    said += f"; the supply's own terminals fell to {in_units(readings.low[None, 'v_supply'][0], 'V')}"
+    margin = None if level is None else (shown - level) / level
+    lasting = None
+    if longest is not None and level is not None:
+        lasting = longest.lasting
+        if lasting < rule.lasting:
+            margin = (rule.lasting - lasting) / rule.lasting
+        else:
+            said += _fewer(bench.board)
+    return bench.finding(placed, rule.limit, "coil rail voltage", shown, margin, when, said, lasting=lasting)
 
 
 def _fewer(board: Board) -> str:
@@ -130,37 +92,23 @@ def _fewer(board: Board) -> str:
 def judge_ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
     """The highest current out of the supply, and for how long it was at its ceiling."""
     value, at = readings.high[placed.channel, rule.quantity]
-    lasting, since = readings.ceiling
+    total, since = readings.ceiling
     bound = rule.limit.value
-    when = at if since is None else since
-    sentence = f"{rule.what} reaches {in_units(value, 'A')} at {in_units(when, 's', 4)}"
-    margin: float | None = None
     if bound is None:
-        sentence += "; no current ceiling of the supply was given to hold it against"
-    elif since is not None:
-        margin = min((bound * AT_CEILING - value) / bound, -1e-3)
-        sentence = (
-            f"the supply was at its ceiling of {in_units(bound, 'A')} for {in_units(lasting, 's')}, first at {in_units(when, 's', 4)} "
-            f"({_together(bench.board, firing, when)}): a supply that trips or hiccups instead of limiting would drop the rail"
-            "; try: fewer channels at once, or a larger supply"
-        )
-    else:
-        margin = (bound - value) / bound
-        sentence += f"; its ceiling is {in_units(bound, 'A')}"
-    return Finding(
-        rule.check,
-        "supply current",
-        placed.part,
-        None,
-        placed.label,
-        value,
-        bound,
-        "A",
-        margin,
-        when,
-        "misbehave",
-        bench.verdict(margin),
-        sentence[0].upper() + sentence[1:],
-        source=rule.limit.source,
-        lasting=lasting if since is not None else None,
+        said = f"{rule.what} reaches {in_units(value, 'A')} at {in_units(at, 's', 4)}; no current ceiling of the supply was given to hold it against"
+        return bench.finding(placed, rule.limit, "supply current", value, None, at, _sentence(said))
+    if since is None:
+        said = f"{rule.what} reaches {in_units(value, 'A')} at {in_units(at, 's', 4)}; its ceiling is {in_units(bound, 'A')}"
+        return bench.finding(placed, rule.limit, "supply current", value, (bound - value) / bound, at, _sentence(said))
+    said = (
+        f"the supply was at its ceiling of {in_units(bound, 'A')} for {in_units(total, 's')}, first at {in_units(since, 's', 4)} "
+        f"({_together(bench.board, firing, since)}): a supply that trips or hiccups instead of limiting would drop the rail"
+        "; try: fewer channels at once, or a larger supply"
     )
+    # The modelled supply never exceeds its ceiling: being at it is what breaks the limit.
+    margin = min((bound * AT_CEILING - value) / bound, -1e-3)
+    return bench.finding(placed, rule.limit, "supply current", value, margin, since, _sentence(said), lasting=total)
+
+
+def _sentence(text: str) -> str:
+    return text[0].upper() + text[1:]
