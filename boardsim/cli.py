@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import os
+import signal
 import sys
 from collections.abc import Callable, Iterator
 from pathlib import Path
@@ -11,7 +12,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from boardsim.errors import EXIT_WRONG_INPUT, BoardsimError, InputError
+from boardsim.errors import BoardsimError, InputError
 
 if TYPE_CHECKING:
     from boardsim.verdict.findings import Result
@@ -26,6 +27,27 @@ app = typer.Typer(
     context_settings={"help_option_names": ["-h", "--help"]},
     help="Checks boards that fire many coils through shift registers: a firing pattern against the limits of every part.",
 )
+
+RESULTS = ("findings.json", "junit.xml", "overview.png", "board.cir")
+EXIT_STOPPED = 130  # by the shell's convention for an interrupted command
+
+
+def _version(wanted: bool) -> None:
+    if wanted:
+        from importlib.metadata import version
+
+        typer.echo(f"boardsim {version('boardsim')}")
+        raise typer.Exit
+
+
+@app.callback()
+def _top(
+    version: Annotated[
+        bool, typer.Option("--version", help="print the version", callback=_version, is_eager=True)
+    ] = False,
+) -> None:
+    pass
+
 
 BoardFile = Annotated[
     Path, typer.Argument(metavar="BOARD", help="board file, such as netlists/fruit-sorter/board.toml")
@@ -62,9 +84,18 @@ def fire(
     the_pattern = read_pattern(pattern, the_board)
     folder = out or Path("out") / f"{_plain(the_board.name)}-{_plain(the_pattern.name)}"
     _usable(folder)
-    with _progress(f"{the_board.name}, {the_pattern.name}") as progress:
-        result = fire_pattern(the_board, the_pattern, folder, strict, time_limit, progress)
-    _report(result, folder)
+    try:
+        with _progress(f"{the_board.name}, {the_pattern.name}") as progress:
+            result = fire_pattern(the_board, the_pattern, folder, strict, time_limit, progress)
+    except KeyboardInterrupt:
+        typer.echo("boardsim: stopped; no result was written", err=True)
+        raise typer.Exit(EXIT_STOPPED) from None
+    try:
+        _report(result, folder)
+        sys.stdout.flush()
+    except BrokenPipeError:
+        # Whoever read the output has stopped, as `head` does; the files are written and the verdict stands.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
     raise typer.Exit(exit_status(result.verdict))
 
 
@@ -141,6 +172,8 @@ def _usable(folder: Path) -> None:
         raise InputError(
             f"{folder}: cannot be used as a folder for results: {err.strerror or err}; choose another with --out"
         ) from err
+    for name in RESULTS:
+        (folder / name).unlink(missing_ok=True)  # an old verdict must not stand for a run that comes to nothing
     if not os.access(folder, os.W_OK | os.X_OK):
         raise InputError(f"{folder}: cannot be written to; choose another folder with --out")
 
@@ -173,7 +206,8 @@ def _report(result: Result, folder: Path) -> None:
     from boardsim.report.terminal import print_result
 
     picture = folder / "overview.png"
-    write_text(folder / "board.cir", result.deck)
+    if result.deck:
+        write_text(folder / "board.cir", result.deck)
     write_findings(result, folder / "findings.json")
     write_junit(result, folder / "junit.xml")
     draw_overview(result, picture)
@@ -183,21 +217,20 @@ def _report(result: Result, folder: Path) -> None:
     print_result(result, console, picture, folder)
 
 
+def _stop(*_: object) -> None:
+    """Be ended as by an interrupt: engines are stopped and scratch folders removed."""
+    raise KeyboardInterrupt
+
+
 def main() -> None:
     """Run a command; an error that a user can cause ends in its message and its exit status, never in a traceback."""
+    signal.signal(signal.SIGTERM, _stop)
     try:
         app()
     except BoardsimError as err:
         located = isinstance(err, InputError) and err.problems  # begins with file and line, where editors look for them
         typer.echo(str(err) if located else f"boardsim: {err}", err=True)
         sys.exit(err.exit_status)
-    except BrokenPipeError:
-        # Whoever read the output has stopped, as `head` does.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        sys.exit(EXIT_WRONG_INPUT)
-    except KeyboardInterrupt:
-        typer.echo("boardsim: interrupted", err=True)
-        sys.exit(130)
 
 
 if __name__ == "__main__":

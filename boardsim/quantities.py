@@ -365,11 +365,6 @@ def computed(value: float, unit: str, how: str) -> Quantity:
     return Quantity(value, value, value, unit, Origin("computed", how))
 
 
-def with_origin(quantity: Quantity, origin: Origin) -> Quantity:
-    """The same number under another origin."""
-    return replace(quantity, origin=origin)
-
-
 def _written(value: float, unit: str) -> str:
     """A value for people; a share in %."""
     return f"{value * 100:.6g} %" if unit == "1" else in_units(value, unit)

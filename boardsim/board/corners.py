@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 from boardsim.board.reader import Board
@@ -44,32 +45,62 @@ def nominal_only(board: Board) -> tuple[str, ...]:
     return (*names, *(() if board.around else ("winding temperature",)))
 
 
-def corners(board: Board) -> tuple[Corner, ...]:
+def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     """The corners to run.
+
+    Parameters
+    ----------
+    board : Board
+    shortest : float
+        Width of the shortest pulse. [s]
 
     Notes
     -----
     Every finding is judged in every corner and reported in its worst, so a corner only has to be the worst for
-    something: supply high with cold windings and stiff clamps for voltage and current; the same with soft clamps,
-    low breakdown and high inductance for energy and release; supply low with hot windings for pull-in; supply low
-    with cold windings for the rail, which then has to feed the most. Corners that come out alike are run once.
+    something: supply high with cold windings and stiff clamps for voltage, current and power; the same with soft
+    clamps and low breakdown for energy and release; supply low with hot windings for pull-in; supply low with cold
+    windings for the rail, which then has to feed the most. A coil of high inductance holds the most energy and lets go
+    latest, unless pulses end before its current has settled (five times L/R): then the first two are run with low
+    inductance as well, which lets the current rise further. Corners that come out alike are run once.
     """
-    strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max"}
+    strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min"}
-    wanted = (
-        Corner(
-            "supply high, coils cold, clamps high",
-            {**strong, "inductance": "min", "clamp_voltage": "max", "breakdown": "max"},
-            "cold",
-        ),
-        Corner(
-            "supply high, coils cold, clamps low",
-            {**strong, "inductance": "max", "clamp_voltage": "min", "breakdown": "min"},
-            "cold",
-        ),
+    stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max"}
+    soft: dict[str, Bound] = {"clamp_voltage": "min", "breakdown": "min"}
+    wanted = [
+        Corner("supply high, coils cold, clamps high", {**strong, **stiff, "inductance": "max"}, "cold"),
+        Corner("supply high, coils cold, clamps low", {**strong, **soft, "inductance": "max"}, "cold"),
         Corner("supply low, coils hot", {**weak, "coil_resistance": "max", "inductance": "max"}, "hot"),
         Corner("supply low, coils cold", {**weak, "coil_resistance": "min", "inductance": "min"}, "cold"),
-    )
+    ]
+    if shortest < 5 * max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels):
+        high = "supply high, coils cold, low inductance"
+        wanted += [
+            Corner(f"{high}, clamps high", {**strong, **stiff, "inductance": "min"}, "cold"),
+            Corner(f"{high}, clamps low", {**strong, **soft, "inductance": "min"}, "cold"),
+        ]
+    return _distinct(board, wanted)
+
+
+def slow_rail(board: Board) -> Corner | None:
+    """The corner in which a rail that is already too low stays so for longest: the larger bulk capacitance takes the
+    supply longer to fill. None where the capacitance has no tolerance.
+    """
+    if not board.bulk.capacitance.toleranced:
+        return None
+    ends: dict[str, Bound] = {
+        "supply": "min",
+        "bulk": "max",
+        "esr": "max",
+        "coil_resistance": "min",
+        "inductance": "min",
+    }
+    (corner,) = _distinct(board, [Corner("supply low, coils cold, bulk high", {**ends, "logic": "min"}, "cold")])
+    return corner
+
+
+def _distinct(board: Board, wanted: list[Corner]) -> tuple[Corner, ...]:
+    """The corners that differ on this board; one nominal corner where none has anything to vary."""
     has_tolerance = {key: any(q.toleranced for q in found) for key, found in _varied(board).items()}
     distinct: dict[tuple[object, ...], Corner] = {}
     for corner in wanted:
@@ -77,7 +108,7 @@ def corners(board: Board) -> tuple[Corner, ...]:
         winding = corner.winding if board.around else "reference"
         distinct.setdefault((tuple(sorted(ends.items())), winding), Corner(corner.name, ends, winding))
     only = tuple(distinct.values())
-    return only if len(only) > 1 else (NOMINAL,)
+    return only if any(c.ends or c.winding != "reference" for c in only) else (NOMINAL,)
 
 
 def not_varied(board: Board) -> tuple[Assumption, ...]:

@@ -166,6 +166,8 @@ def read_board(path: Path) -> Board:
         With every mistake found: file, line, what was found, what is allowed.
     """
     file = read_toml(path, "board")
+    if "pulses" in file.data and "supply" not in file.data:
+        raise InputError([file.problem((), "is a pattern; name the board first, then the pattern")])
     shelf = _Shelf(file)
     context = {"find": shelf.find, "kind_of": shelf.kind_of, "origin": shelf.origin}
     try:
@@ -182,10 +184,16 @@ def read_board(path: Path) -> Board:
         if unknown := [n for n in members if n not in numbers]:
             problems.append(file.problem_at(keys, f"{_listed('channel', unknown)} not on this board"))
         exclusive.append((members, group.most, group.reason or ""))
+    brown_out = board.limits.brown_out
+    if brown_out is not None and brown_out.voltage.max >= board.supply.voltage.min:
+        text = f"brown_out.voltage of {brown_out.voltage} is not below the supply's lowest voltage of {board.supply.voltage.min:g} V"
+        problems.append(file.problem(("limits", "brown_out"), text))
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
     around = None
-    assumed = listed("chain", latch_time=board.chain.latch_time)
+    assumed = listed("chain", latch_time=board.chain.latch_time) + listed(
+        "limits", guard_band=board.limits.guard_band, pulse_error=board.limits.pulse_error
+    )
     if board.ambient is not None:
         around = Surroundings(board.ambient.min, board.ambient.max)
     else:

@@ -99,6 +99,9 @@ class Limits(Record):
     most_on: Annotated[int, Field(strict=True, ge=1)] | None = None
     brown_out: BrownOut | None = None
     exclusive: tuple[Exclusive, ...] = ()
+    pulse_error: Annotated[Quantity, SHARE] = assume(
+        "10 %", SHARE, "share of its width by which a pulse may come late or change, common practice"
+    )
     guard_band: Annotated[Quantity, SHARE] = assume("10 %", SHARE, "guard band for the verdict tight, common practice")
 
 

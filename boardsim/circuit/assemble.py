@@ -58,6 +58,7 @@ class _Assembly:
         self.ports: list[tuple[int | None, str, Port]] = []
         self.rules: list[PlacedRule] = []
         self.assumptions: dict[Assumption, None] = {}
+        self.assumed: dict[int | None, dict[str, None]] = {}
         self.hints: dict[str, float] = {}
 
     def add(self, stamp: Stamp, channel: int | None, part: str, label: str) -> None:
@@ -68,6 +69,8 @@ class _Assembly:
         self.ports += [(channel, label, port) for port in stamp.ports]
         self.rules += [PlacedRule(rule, channel, part, label) for rule in stamp.rules]
         self.assumptions.update(dict.fromkeys(stamp.assumptions))
+        names = self.assumed.setdefault(channel, {})
+        names.update(dict.fromkeys(f"{a.part} {a.quantity}" for a in stamp.assumptions))
         self.hints.update(stamp.hints)
 
 
@@ -98,6 +101,7 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> De
         tuple(parts.ports),
         tuple(parts.rules),
         tuple(parts.assumptions),
+        {channel: tuple(names) for channel, names in parts.assumed.items()},
         _measures(parts.signals),
         parts.hints,
     )
@@ -124,9 +128,10 @@ def _rail_rule(board: Board) -> Rule:
     return DipRule(
         "rail-sag",
         "v_rail",
-        Limit.of(brown_out.voltage, "brown-out level", "V", None),
-        brown_out.lasting.typ,
+        Limit.of(brown_out.voltage, "brown-out level", "V", None, brown_out.voltage.max),
+        brown_out.lasting.min,
         "coil rail",
+        board.limits.guard_band.typ,
     )
 
 

@@ -11,6 +11,7 @@ from boardsim.parts.base import Assumption, Corner
 from boardsim.parts.elements import Port, Signal
 from boardsim.parts.rules import Rule
 
+_BEYOND = 1e-9  # [s] that a run goes on after its window, so that the window's last instant lies inside
 SIMULATION_TEMPERATURE = 25.0  # [degC]; all models hold at 25 degC, windings carry their own temperature
 
 
@@ -63,6 +64,7 @@ class Deck:
     vectors : tuple of str
         What is saved, in order: "v(node)", "i(element)".
     signals : mapping of (channel or None, quantity) to Signal
+    assumed : mapping of channel (None: supply, cable and bulk capacitor) to names of what was assumed there
     measures : tuple of str
         .meas lines, for who runs the deck by hand; the engine leaves them out.
     hints : mapping of node to voltage
@@ -78,6 +80,7 @@ class Deck:
     ports: tuple[tuple[int | None, str, Port], ...]
     rules: tuple[PlacedRule, ...]
     assumptions: tuple[Assumption, ...]
+    assumed: Mapping[int | None, tuple[str, ...]]
     measures: tuple[str, ...]
     hints: Mapping[str, float]
 
@@ -87,12 +90,13 @@ class Deck:
         hints = " ".join(f"v({node})={v:.9g}" for node, v in self.hints.items())
         lines = [
             self.netlist.rstrip(),
+            f"* corner: {self.corner.name}; {settings}",
             f".options method={settings.method} reltol={settings.reltol:g} abstol={settings.abstol:g}",
             f".options temp={SIMULATION_TEMPERATURE:g} tnom={SIMULATION_TEMPERATURE:g} noacct noinit",
             f".nodeset {hints}",
             f".save {' '.join(self.vectors)}",
             *(self.measures if measures else ()),
-            f".tran {min(settings.max_step, duration / 50):.9g} {duration:.12g} 0 {settings.max_step:.9g}",
+            f".tran {min(settings.max_step, duration / 50):.9g} {duration + _BEYOND:.15g} 0 {settings.max_step:.9g}",
             ".end",
         ]
         return "\n".join(_folded(line) for text in lines for line in text.splitlines() if line.strip()) + "\n"

@@ -183,7 +183,7 @@ class Engine:
                     raise EngineStopped("interrupted") from None
                 if left <= 0:
                     self._stop()
-                    text = f"ngspice did not finish within {self.time_limit:g} s"
+                    text = f"ngspice did not finish within {self.time_limit:g} s (--time-limit)"
                     raise self._failure(EngineTimeout, text, deck) from None
         if line is None:
             raise self._crashed(deck)

@@ -70,6 +70,8 @@ def read_pattern(path: Path, board: Board) -> Pattern:
         With every mistake found: file, line, what was found, what is allowed.
     """
     file = read_toml(path, "pattern")
+    if "supply" in file.data and "pulses" not in file.data:
+        raise InputError([file.problem((), "is a board; name the board first, then the pattern")])
     try:
         raw = PatternFile.model_validate(file.data)
     except ValidationError as err:
@@ -86,7 +88,7 @@ def read_pattern(path: Path, board: Board) -> Pattern:
     duration = raw.duration.typ if raw.duration else None
     if not problems and duration is not None:
         last = max(pulses, key=lambda p: p.stop)
-        if last.stop > duration:
+        if last.stop > duration * (1 + 1e-9):
             problems.append(
                 file.problem_at(
                     ("duration",),

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -52,6 +52,8 @@ class Firing:
     moved : tuple of MovedPulse
     merged : tuple of Pulse
         Pulses that start while the same channel is still commanded on.
+    lost_pauses : tuple of Pulse
+        Pulses that are turned on by the same latch edge that should have ended the one before.
     wrong : tuple of WrongOutput
         The first wrong output of each channel.
     frames : int
@@ -65,6 +67,7 @@ class Firing:
     on: Mapping[int, Floats]
     moved: tuple[MovedPulse, ...]
     merged: tuple[Pulse, ...]
+    lost_pauses: tuple[Pulse, ...]
     wrong: tuple[WrongOutput, ...]
     frames: int
     frame_time: float
@@ -122,9 +125,11 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         for p in pattern.pulses
         if (p.channel, p.start) in latched and (p.channel, p.stop) in latched
     )
+    lost = tuple(Pulse(c, on, 0.0) for c, off, on in _pauses(asked) if latched[c, off] == latched[c, on])
     last = max([free + delay, *(p.stop for p in pattern.pulses)])
     tau = max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels if c.coil.resistance.min > 0)
-    duration = max(pattern.duration or 0.0, last + _SETTLE * tau if pattern.duration is None else last)
+    # Also where a duration was asked for: what the last turn-off does to its switch comes after it.
+    duration = max(pattern.duration or 0.0, last + _SETTLE * tau)
     on = {c.number: _spans(levels[c.output], active[c.output], duration) for c in board.channels}
     return Firing(
         duration,
@@ -132,6 +137,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         on,
         moved,
         merged,
+        lost,
         tuple(wrong.values()),
         frames,
         spent,
@@ -151,6 +157,16 @@ def _changes(pattern: Pattern) -> tuple[list[tuple[float, int, bool]], tuple[Pul
             mine.append((p.start, p.stop))
     changes = [(t, c, on) for c, ss in spans.items() for a, b in ss for t, on in ((a, True), (b, False))]
     return sorted(changes, key=lambda e: (e[0], e[2], e[1])), tuple(merged)
+
+
+def _pauses(asked: list[tuple[float, int, bool]]) -> Iterator[tuple[int, float, float]]:
+    """Every channel's times of being commanded off and on again."""
+    off_at: dict[int, float] = {}
+    for at, channel, on in asked:
+        if not on:
+            off_at[channel] = at
+        elif channel in off_at:
+            yield channel, off_at[channel], at
 
 
 def _compare(

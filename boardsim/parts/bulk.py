@@ -62,7 +62,7 @@ class Bulk(Part):
             rules=(
                 PeakRule(
                     "overvoltage",
-                    "v_rail",
+                    "v_bulk_port",
                     Limit.of(self.rated, "rated voltage", "V", "voltage"),
                     "destroy",
                     "voltage across the bulk capacitor",

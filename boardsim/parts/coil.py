@@ -4,6 +4,9 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
+from pydantic import model_validator
+
+from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
 from boardsim.parts.elements import Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
@@ -17,8 +20,6 @@ from boardsim.quantities import (
     TEMPERATURE_RISE,
     Quantity,
     assume,
-    computed,
-    in_units,
 )
 
 _CORE_LOSS_FACTOR = 200
@@ -48,6 +49,14 @@ class Coil(Part):
         TEMPERATURE_RISE,
         "no temperature rise of the winding given: hot means the highest ambient only",
     )
+
+    @model_validator(mode="after")
+    def _lets_go_below_pull_in(self) -> Coil:
+        if self.pull_in is not None and self.release is not None and self.release.min >= self.pull_in.max:
+            raise QuantityError(
+                "release must be smaller than pull_in: a coil lets go at less current than it pulls in with"
+            )
+        return self
 
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this part."""
@@ -109,10 +118,3 @@ class Coil(Part):
             ),
             assumptions=assumed,
         )
-
-    def pull_in_voltage(self, corner: Corner, around: Surroundings | None) -> Quantity | None:
-        """Steady voltage across the coil that just gives the pull-in current. [V]"""
-        if self.pull_in is None:
-            return None
-        r = self.winding(corner, around)
-        return computed(self.pull_in.max * r, "V", f"pull-in current times {in_units(r, 'ohm')}")

@@ -9,7 +9,7 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Part, Stamp
+from boardsim.parts.base import Part, Stamp, listed
 from boardsim.parts.elements import Junction, Model, Port, Probe, Signal, scaled, voltage
 from boardsim.parts.record import Record
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, Rule
@@ -128,10 +128,6 @@ class Diode(Part):
         name_of = self.title or label
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
         peak_limit = Limit.of(self.repetitive_current, "repetitive peak current", "A", "current")
-        if self.repetitive_current is None:
-            peak_limit = Limit.of(
-                self.average_current, "average current (no repetitive peak rating given)", "A", "current"
-            )
         rules: tuple[Rule, ...] = (
             PeakRule(
                 "overvoltage",
@@ -148,7 +144,7 @@ class Diode(Part):
                 peak_limit,
                 "destroy",
                 f"peak current of the {label}",
-                "choose a larger diode",
+                "choose a larger or faster diode",
                 part=name_of,
             ),
             MeanRule(
@@ -162,9 +158,9 @@ class Diode(Part):
             ),
         )
         v_max = self.reverse_voltage.typ if self.reverse_voltage else 100.0
-        charge = self.capacitance.typ * v_max + self.recovery.typ * (
-            self.average_current.typ if self.average_current else 1.0
-        )
+        # The junction gives its charge back at up to the reverse voltage, the stored carriers theirs near the drop.
+        forward = self.forward[-1]
+        holds = 0.5 * self.capacitance.typ * v_max**2 + self.recovery.typ * forward.current.typ * forward.voltage.typ
         return Stamp(
             elements=(Junction(name, anode, cathode, model),),
             probes=(
@@ -172,6 +168,7 @@ class Diode(Part):
                 Probe(v_r, scaled(-1, voltage(anode, cathode)), "V"),
                 Probe(i, through, "A"),
             ),
-            ports=(Port(label, ((v, i),), holds=charge * v_max),),
+            ports=(Port(label, ((v, i),), holds=holds),),
             rules=rules,
+            assumptions=listed(name_of, capacitance=self.capacitance, recovery_time=self.recovery),
         )

@@ -46,6 +46,18 @@ class PeakRule:
 
 
 @dataclass(frozen=True)
+class FloorRule:
+    """The highest value of a probe of a channel that is fired must reach a limit."""
+
+    check: str
+    quantity: str
+    limit: Limit
+    consequence: Consequence
+    what: str
+    advice: str
+
+
+@dataclass(frozen=True)
 class MeanRule:
     """The average over the pattern, of a probe or of the product of two, must stay below a limit."""
 
@@ -103,6 +115,7 @@ class DipRule:
     limit: Limit
     lasting: float
     what: str
+    guard: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -115,4 +128,4 @@ class CeilingRule:
     what: str
 
 
-Rule = PeakRule | MeanRule | BreakdownRule | PullInRule | ReleaseRule | DipRule | CeilingRule
+Rule = PeakRule | FloorRule | MeanRule | BreakdownRule | PullInRule | ReleaseRule | DipRule | CeilingRule

@@ -7,7 +7,7 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Corner, Part, Stamp
+from boardsim.parts.base import Corner, Part, Stamp, listed
 from boardsim.parts.diode import THERMAL_VOLTAGE
 from boardsim.parts.elements import Junction, Model, Port, Probe, Resistor, Signal, voltage
 from boardsim.parts.rules import Limit, MeanRule, PeakRule
@@ -73,7 +73,7 @@ class Zener(Part):
                 Resistor(f"{name}_leak", positive, negative, 0.75 * self.voltage.typ / self.leakage.typ),
             ),
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
-            ports=(Port(label, ((v, i),), holds=self.capacitance.typ * v_z**2),),
+            ports=(Port(label, ((v, i),), holds=0.5 * self.capacitance.typ * v_z**2),),
             rules=(
                 PeakRule(
                     "overcurrent",
@@ -94,4 +94,5 @@ class Zener(Part):
                     part=name_of,
                 ),
             ),
+            assumptions=listed(name_of, leakage=self.leakage, capacitance=self.capacitance),
         )

@@ -39,7 +39,7 @@ def write_whole(path: Path, write: Callable[[Path], None]) -> None:
     except OSError as err:
         raise InputError(
             f"{path}: the result cannot be written here ({err.strerror or err}); "
-            "make room or set the permissions, or choose another output folder with --out"
+            "make room, set the permissions, or choose another place"
         ) from err
 
 

@@ -140,6 +140,8 @@ def _sentences(console: Console, groups: list[Group]) -> None:
         sentence = _text(worst.sentence)
         if len(group.members) > 1:
             sentence.append(f" (the same for {len(group.members) - 1} more)", "dim")
+        if "from memory" in worst.source:
+            sentence.append(" [limit from memory: check it against your datasheet]", "dim")
         if worst.nominal_only:
             sentence.append(f" [nominal only: {', '.join(worst.nominal_only)}]", "dim")
         if worst.assumed:

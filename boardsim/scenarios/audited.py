@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shutil
 import threading
 import time
 from collections.abc import Callable, Sequence
@@ -12,7 +13,7 @@ from boardsim.board.reader import Board
 from boardsim.circuit.assemble import assemble, windows
 from boardsim.circuit.deck import Deck, Settings
 from boardsim.engine.run import DEFAULT_TIME_LIMIT, Engine
-from boardsim.errors import EngineTimeout, NoConvergence
+from boardsim.errors import DeckRejected, EngineCrash, EngineTimeout, InputError, NoConvergence
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Corner
 from boardsim.verdict.audit import POINTS, density, passivity, refinement
@@ -25,11 +26,24 @@ from boardsim.verdict.readings import Readings, take_readings
 # takes at least 1.5 times the points of the one before on most boards; those from the third on are for what fails.
 LADDER = (
     Settings("gear", 1e-3, 500e-6),
-    Settings("gear", 2.5e-4, 500e-6),
+    Settings("gear", 2e-4, 500e-6),
     Settings("gear", 4e-5, 300e-6),
     Settings("gear", 8e-6, 150e-6),
     Settings("gear", 1.5e-6, 75e-6),
 )
+FINE = 2  # the rung that decks are written with
+_STEPS_PER_TAU = (6, 10, 16, 25, 40)  # at least, whatever the engine's own error estimate allows
+
+
+def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
+    """The ladder with steps that the fastest coil of the board can be followed with.
+
+    The engine's estimate of its error alone lets it step over most of an exponential when nothing else happens.
+    """
+    tau = min(c.coil.inductance.min / max(c.coil.resistance.max, 1e-3) for c in board.channels)
+    counts = (*_STEPS_PER_TAU, *[_STEPS_PER_TAU[-1]] * len(ladder))
+    return tuple(replace(s, max_step=min(s.max_step, tau / n)) for s, n in zip(ladder, counts, strict=False))
+
 
 Progress = Callable[[float], None]
 
@@ -125,11 +139,14 @@ def run_corner(
 
     Raises
     ------
-    EngineMissing, EngineCrash, EngineStopped, DeckRejected
-        If there is no engine to speak of, it was interrupted, or it does not take the deck.
+    EngineMissing, EngineStopped
+        If there is no engine to speak of, or it was interrupted.
+    InputError
+        If the waveforms would not fit on the disk.
     """
     clock = time.perf_counter()
-    deck = assemble(board, firing, corner, windows(board, firing)[0])
+    (window,) = windows(board, firing)
+    deck = assemble(board, firing, corner, window)
     seconds = {"assemble": time.perf_counter() - clock, "simulate": 0.0, "read": 0.0}
     floor = 1e-3 * max(_full_energy(board, corner))
     entries: list[AuditEntry] = []
@@ -137,15 +154,17 @@ def run_corner(
     failure: Exception | None = None
     with Engine(keep, time_limit, cancel or threading.Event()) as engine:
         job = _Job(engine, deck, firing, bench, floor, seconds)
-        for settings, (begin, end) in zip(ladder, (*_SHARES, *[(0.95, 0.95)] * len(ladder)), strict=False):
+        rungs = fitted(ladder, board)
+        _fits(deck, rungs[0], engine.folder)
+        for settings, (begin, end) in zip(rungs, (*_SHARES, *[(0.95, 0.95)] * len(ladder)), strict=False):
             try:
                 trial = job.run_either(settings, _scaled(progress, begin, end))
             except NoConvergence as err:
                 failure = err
                 continue
-            except EngineTimeout as err:
+            except (EngineTimeout, EngineCrash, DeckRejected) as err:
                 failure = err
-                break  # a finer run takes longer still
+                break  # a finer run takes longer still, and what crashed once crashes again
             entries += trial.audit
             coarse = _coarser(trials, trial)
             trials.append(trial)
@@ -163,6 +182,23 @@ def run_corner(
     progress(1.0)
     last = trials[-1] if trials else None
     return CornerResult(corner, last, CornerAudit(corner.name, tuple(entries), False), seconds, failure)
+
+
+def _fits(deck: Deck, settings: Settings, folder: Path) -> None:
+    """Refuse a pattern whose waveforms alone would fill the disk: most often a slip in a duration.
+
+    Raises
+    ------
+    InputError
+        If the fewest points that a run can have would take more than half of what is free.
+    """
+    least = (deck.window.stop - deck.window.start) / settings.max_step * (len(deck.vectors) + 1) * 8
+    free = shutil.disk_usage(folder).free
+    if least > free / 2:
+        raise InputError(
+            f"a pattern of {deck.window.stop:g} s would write at least {least / 2**30:.1f} GiB of waveforms for one run, and "
+            f"{free / 2**30:.1f} GiB are free; shorten the pattern, or set TMPDIR to a larger disk"
+        )
 
 
 _SHARES = ((0.0, 0.35), (0.35, 0.95))  # of a corner's time that the first two runs take

@@ -7,7 +7,7 @@ from boardsim.board.reader import Board
 from boardsim.circuit.assemble import assemble, windows
 from boardsim.firing.pattern import Pattern
 from boardsim.firing.schedule import fire
-from boardsim.scenarios.audited import LADDER
+from boardsim.scenarios.audited import FINE, LADDER, fitted
 
 
 def write_deck(board: Board, pattern: Pattern, number: int) -> tuple[tuple[str, ...], str | None]:
@@ -15,12 +15,13 @@ def write_deck(board: Board, pattern: Pattern, number: int) -> tuple[tuple[str, 
 
     Notes
     -----
-    With the settings of the fine run of each pair, which is the one that findings are read from.
+    With settings one step finer than findings are usually read with.
     """
-    wanted = corners(board)
+    wanted = corners(board, min(p.width for p in pattern.pulses))
     names = tuple(c.name for c in wanted)
     if not 1 <= number <= len(wanted):
         return names, None
     firing = fire(board, pattern)
-    deck = assemble(board, firing, wanted[number - 1], windows(board, firing)[0])
-    return names, deck.text(LADDER[1])
+    (window,) = windows(board, firing)
+    deck = assemble(board, firing, wanted[number - 1], window)
+    return names, deck.text(fitted(LADDER, board)[FINE])

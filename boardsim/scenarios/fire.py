@@ -10,7 +10,7 @@ from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
 from pathlib import Path
 
-from boardsim.board.corners import corners, nominal_only, not_varied
+from boardsim.board.corners import corners, nominal_only, not_varied, slow_rail
 from boardsim.board.reader import Board
 from boardsim.engine.run import DEFAULT_TIME_LIMIT
 from boardsim.firing.pattern import Pattern
@@ -49,13 +49,16 @@ def fire_pattern(
 
     Raises
     ------
-    EngineError
-        If there is no engine, or it does not take the deck, or not one corner could be run.
+    EngineMissing, EngineStopped
+        If there is no engine, or the run was interrupted.
+    InputError
+        If the waveforms would not fit on the disk.
     """
     began = time.perf_counter()
     firing = fire(board, pattern)
     spent_firing = time.perf_counter() - began
-    wanted, only = corners(board), nominal_only(board)
+    only = nominal_only(board)
+    wanted = list(corners(board, min(p.width for p in pattern.pulses)))
     shares = dict.fromkeys((c.name for c in wanted), 0.0)
     lock, cancel = threading.Lock(), threading.Event()
 
@@ -77,14 +80,19 @@ def fire_pattern(
     with ThreadPoolExecutor(max_workers=workers or os.cpu_count() or 1) as pool:
         try:
             results = list(pool.map(one, range(len(wanted))))
+            longest = slow_rail(board)
+            if longest is not None and any(_dips(board, r) for r in results):
+                wanted.append(longest)
+                shares[longest.name] = 0.0
+                results.append(one(len(wanted) - 1))
         except BaseException:
             cancel.set()  # else leaving the pool would wait for every run to end by itself
             raise
     spent_running = time.perf_counter() - began
-    if all(r.trial is None for r in results):
-        raise next(r.failure for r in results if r.failure is not None)
 
     findings = worst([*_by_corner(results), judge_switching(board, firing)])
+    if not any(r.trial for r in results):
+        findings = [f for f in findings if f.verdict == "fail"]  # what is left was never put to a circuit
     proven = all(r.audit.proven for r in results)
     sampled = [r for r in results if r.trial is not None]
     return Result(
@@ -108,6 +116,16 @@ def fire_pattern(
     )
 
 
+def _dips(board: Board, result: CornerResult) -> bool:
+    """Whether the rail was too low for too long, or close to it."""
+    limit = board.limits.brown_out
+    return (
+        limit is not None
+        and result.trial is not None
+        and any(d.lasting >= limit.lasting.min / 2 for d in result.trial.readings.guarded)
+    )
+
+
 def _by_corner(results: Iterable[CornerResult]) -> Iterable[list[Finding]]:
     for r in results:
         if r.trial is None:
@@ -120,12 +138,21 @@ def _by_corner(results: Iterable[CornerResult]) -> Iterable[list[Finding]]:
 
 
 def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
-    """Of every question the worst answer among the corners, broken limits first."""
-    kept: dict[tuple[str, str, str, int | None], Finding] = {}
+    """Of every question the worst answer among the corners, broken limits first.
+
+    Where a corner whose audit failed reads worse than the answer that is kept, the sentence says so.
+    """
+    kept: dict[tuple[str, str, str, str], Finding] = {}
     for findings in runs:
         for f in findings:
             if f.key not in kept or severity(f) < severity(kept[f.key]):
                 kept[f.key] = f
+    for f in (f for findings in runs for f in findings if f.verdict == "unproven"):
+        mine = kept[f.key]
+        worse = f.value > mine.value if f.worse == "high" else f.value < mine.value
+        if worse and mine.verdict != "unproven":
+            more = f"; unproven, but worse: {in_units(f.value, f.unit)} ({f.corner})"
+            kept[f.key] = replace(mine, sentence=mine.sentence + more)
     return sorted(kept.values(), key=severity)
 
 
@@ -156,6 +183,8 @@ def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
 
 def _traces(board: Board, firing: Firing, results: Sequence[CornerResult]) -> Traces | None:
     """Pictures show the corner in which the rail is lowest."""
+    if not results:
+        return None
     shown = min(results, key=lambda r: r.trial.readings.low[None, "v_rail"][0] if r.trial else float("inf"))
     if shown.trial is None:
         return None
@@ -177,6 +206,8 @@ def _traces(board: Board, firing: Firing, results: Sequence[CornerResult]) -> Tr
 
 def _deciding_deck(findings: Sequence[Finding], results: Sequence[CornerResult]) -> str:
     """The deck of the corner that the worst waveform finding names."""
+    if not results:
+        return ""
     by_name = {r.corner.name: r for r in results}
     chosen = next((by_name[f.corner] for f in findings if f.corner in by_name), results[0])
     assert chosen.trial is not None  # only corners that ran are handed over

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 from boardsim.verdict.findings import AuditEntry, Finding
@@ -32,20 +33,25 @@ def passivity(readings: Readings, corner: str, run: str, floor: float) -> AuditE
     Notes
     -----
     The total energy taken by a part, less what it stores (L i^2/2, C v^2/2), must not fall by more than its own
-    capacitances can hold plus 1 % of the energy that decides: the largest energy that a coil held. A sum over the
+    capacitances can hold plus 1 % of the energy that decides: the largest energy that the channel's coil held. A sum over the
     whole circuit would not do: it is zero for wrong runs as well (Tellegen's theorem). For the bulk capacitor,
     through which the energy of all channels passes at the full rail voltage, 1 % of what passes counts.
     """
-    scale = max(readings.pulse_energy, floor)
+    worst = max(readings.ports, key=lambda p: _share(p.drop, _allowed(p, floor)))
+    allowed = _allowed(worst, floor)
+    passed = all(p.drop <= _allowed(p, floor) for p in readings.ports)
+    return AuditEntry("passivity", corner, run, f"{worst.name} gave out", worst.drop, allowed, "J", passed)
 
-    def bound(p: PortReading) -> float:
-        return p.holds + SHARE * (scale if p.channel is not None else max(scale, p.through))
 
-    worst = max(readings.ports, key=lambda p: p.drop / bound(p))
-    allowed = bound(worst)
-    return AuditEntry(
-        "passivity", corner, run, f"{worst.name} gave out", worst.drop, allowed, "J", worst.drop <= allowed
-    )
+def _allowed(port: PortReading, floor: float) -> float:
+    """How far a part's energy may fall. [J]"""
+    scale = max(port.deciding, floor)
+    return port.holds + SHARE * (scale if port.channel is not None else max(scale, port.through))
+
+
+def _share(measured: float, allowed: float) -> float:
+    """Measured over allowed; what is no number is worst of all."""
+    return measured / allowed if math.isfinite(measured) else math.inf
 
 
 def density(readings: Readings, corner: str, run: str, floor: float) -> AuditEntry:
@@ -56,19 +62,10 @@ def density(readings: Readings, corner: str, run: str, floor: float) -> AuditEnt
     Compares the trapezoid rule with midpoint products, part by part. It says nothing about the engine's own
     integration; passivity and refinement do that.
     """
-    scale = max(readings.pulse_energy, floor)
-    worst = max(readings.ports, key=lambda p: p.spread / max(p.through, scale))
-    allowed = SHARE * max(worst.through, scale)
-    return AuditEntry(
-        "density",
-        corner,
-        run,
-        f"{worst.name}: energy uncertain by",
-        worst.spread,
-        allowed,
-        "J",
-        worst.spread <= allowed,
-    )
+    worst = max(readings.ports, key=lambda p: _share(p.spread, max(p.through, p.deciding, floor)))
+    allowed = SHARE * max(worst.through, worst.deciding, floor)
+    passed = all(p.spread <= SHARE * max(p.through, p.deciding, floor) for p in readings.ports)
+    return AuditEntry("density", corner, run, f"{worst.name}: energy uncertain by", worst.spread, allowed, "J", passed)
 
 
 def refinement(
@@ -93,11 +90,16 @@ def refinement(
     worst, allowed, subject = -1.0, SHARE, "nothing was read"
     for f in fine:
         old = before.pop(f.key, None)
-        far = f.margin is not None and f.margin > DECIDING and f.limit is not None
-        moved = 1.0 if old is None else abs(old.value - f.value) / abs(f.limit or 1.0) if far else _moved(old, f)
+        far = old is not None and f.limit is not None and all((g.margin or 0.0) > DECIDING for g in (old, f))
+        if old is None:
+            moved = 1.0
+        elif far:
+            moved = abs(old.value - f.value) / abs(f.limit or 1.0)
+        else:
+            moved = _moved(old, f)
         bound = FAR if far else SHARE
-        if moved / bound > worst / allowed:
-            worst, allowed = moved, bound
+        if _share(moved, bound) > worst / allowed:
+            worst, allowed = moved if math.isfinite(moved) else math.inf, bound
             subject = f"{f.label}: {f.quantity} moved by" + (" (of its limit)" if far else "")
     if before:
         gone = next(iter(before.values()))
@@ -107,13 +109,17 @@ def refinement(
 
 
 def _moved(old: Finding, new: Finding) -> float:
-    """Change of a reading and of its duration, as a share of itself or, where that is more, of 5 % of its limit."""
-    share = 0.0
-    for a, b, limit in ((old.value, new.value, new.limit), (old.lasting or 0.0, new.lasting or 0.0, None)):
-        size = max(abs(b), SMALL * abs(limit or 0.0))
-        if a != b:
-            share = max(share, abs(a - b) / size if size else 1.0)
+    """Change of a reading, and of a duration that breaks a limit, as a share of itself.
+
+    Small readings, such as a coil current long gone, are compared on the scale of their limit or, without one, of
+    what the quantity reaches.
+    """
+    size = max(abs(new.value), SMALL * max(abs(new.limit or 0.0), new.scale))
+    share = abs(old.value - new.value) / size if size else float(old.value != new.value)
+    if "fail" in (old.verdict, new.verdict) and (old.lasting or new.lasting):
+        longest = max(old.lasting or 0.0, new.lasting or 0.0)
+        share = max(share, abs((old.lasting or 0.0) - (new.lasting or 0.0)) / longest)
     return share
 
 
-SMALL = 0.05  # readings below this share of their limit, such as a coil current long gone, are compared on its scale
+SMALL = 0.05  # of the limit or of the scale

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
+from typing import Literal
 
 from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
 from boardsim.parts.rules import Consequence, Derating, Limit
 from boardsim.quantities import in_units
-from boardsim.verdict.findings import Finding, Verdict
+from boardsim.verdict.findings import Finding, Verdict, verdict_of
 
 
 @dataclass(frozen=True)
@@ -32,13 +32,7 @@ class Bench:
 
     def verdict(self, margin: float | None) -> Verdict:
         """The verdict of a margin; None stands for a limit that was not given."""
-        if margin is None:
-            return "limit-missing"
-        if not math.isfinite(margin):
-            return "unproven"  # a reading that is no number proves nothing
-        if margin < 0:
-            return "fail"
-        return "tight" if margin < self.guard else "pass"
+        return verdict_of(margin, self.guard)
 
     def finding(
         self,
@@ -53,6 +47,7 @@ class Bench:
         *,
         part: str = "",
         lasting: float | None = None,
+        worse: Literal["high", "low"] = "high",
     ) -> Finding:
         """A finding on a placed rule; the margin decides its verdict.
 
@@ -73,6 +68,8 @@ class Bench:
         consequence : {"destroy", "misbehave"}
         part : str
             If it is not the placed rule's own.
+        worse : {"high", "low"}
+            Which way the reading gets worse.
         """
         bound = None if limit.value is None else limit.value * self.derating(limit.derating)
         return Finding(
@@ -91,6 +88,7 @@ class Bench:
             sentence,
             source=limit.source,
             lasting=lasting,
+            worse=worse,
         )
 
 

@@ -27,7 +27,7 @@ def judge_pull_in(
     said += _held(
         placed, bound, margin, "pulls in at", "pull-in", "a longer pulse, fewer channels at once, or a stiffer supply"
     )
-    yield bench.finding(placed, rule.limit, "coil current at the end of a pulse", value, margin, at, said)
+    yield bench.finding(placed, rule.limit, "coil current at the end of a pulse", value, margin, at, said, worse="low")
 
 
 def judge_release(

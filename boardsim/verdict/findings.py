@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import Literal
@@ -43,6 +44,10 @@ class Finding:
         Where the limit comes from.
     assumed : tuple of str
         Assumed numbers that the reading hangs on.
+    worse : {"high", "low"}
+        Which way a reading gets worse.
+    scale : float
+        Natural size of the quantity, against which a reading without a limit is compared. [unit]
     """
 
     check: str
@@ -63,19 +68,34 @@ class Finding:
     lasting: float | None = None
     nominal_only: tuple[str, ...] = ()
     assumed: tuple[str, ...] = ()
+    worse: Literal["high", "low"] = "high"
+    scale: float = 0.0
 
     @property
-    def key(self) -> tuple[str, str, str, int | None]:
+    def key(self) -> tuple[str, str, str, str]:
         """What makes two findings of different runs the same question."""
-        return (self.check, self.quantity, self.part, self.channel)
+        return (self.check, self.quantity, self.part, self.label)
+
+
+def verdict_of(margin: float | None, guard: float) -> Verdict:
+    """The verdict of a margin under a guard band; None stands for a limit that was not given."""
+    if margin is None:
+        return "limit-missing"
+    if not math.isfinite(margin):
+        return "unproven"  # a reading that is no number proves nothing
+    if margin < 0:
+        return "fail"
+    return "tight" if margin < guard else "pass"
 
 
 _SEVERITY: dict[Verdict, int] = {"fail": 0, "unproven": 1, "limit-missing": 2, "tight": 3, "pass": 4}
 
 
-def severity(finding: Finding) -> tuple[int, float]:
-    """Sort key: broken limits first, then the smallest margin."""
-    return (_SEVERITY[finding.verdict], finding.margin if finding.margin is not None else 0.0)
+def severity(finding: Finding) -> tuple[int, float, float, float]:
+    """Sort key: broken limits first, then the smallest margin, the worse reading, the longer duration."""
+    margin = finding.margin if finding.margin is not None else 0.0
+    value = -finding.value if finding.worse == "high" else finding.value
+    return (_SEVERITY[finding.verdict], margin, value, -(finding.lasting or 0.0))
 
 
 def overall(findings: Iterable[Finding], proven: bool, strict: bool) -> Verdict:

@@ -7,7 +7,17 @@ from dataclasses import replace
 
 from boardsim.circuit.deck import Deck, PlacedRule
 from boardsim.firing.schedule import Firing
-from boardsim.parts.rules import BreakdownRule, CeilingRule, DipRule, MeanRule, PeakRule, PullInRule, ReleaseRule, Rule
+from boardsim.parts.rules import (
+    BreakdownRule,
+    CeilingRule,
+    DipRule,
+    FloorRule,
+    MeanRule,
+    PeakRule,
+    PullInRule,
+    ReleaseRule,
+)
+from boardsim.quantities import in_units
 from boardsim.verdict.avalanche import judge_breakdown
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.coils import judge_pull_in, judge_release
@@ -28,17 +38,20 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     found: list[Finding] = []
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
-        nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed.rule))
+        nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))
+        scale = readings.high.get((placed.channel, "i_coil"), (0.0, 0.0))[0]
         for finding in _apply(placed, readings, firing, bench):
-            found.append(replace(finding, corner=bench.corner, nominal_only=nominal, assumed=assumed))
+            size = scale if finding.unit == "A" else 0.0
+            found.append(replace(finding, corner=bench.corner, nominal_only=nominal, assumed=assumed, scale=size))
     return found
 
 
-def _beside_the_point(name: str, rule: Rule) -> bool:
+def _beside_the_point(name: str, placed: PlacedRule) -> bool:
     """Whether a number that was run at its nominal value only does not bear on a rule's reading."""
     of_the_rail = name in ("bulk capacitance", "bulk series resistance")
-    return (name == "breakdown voltage" and not isinstance(rule, BreakdownRule)) or (
-        of_the_rail and not isinstance(rule, DipRule | CeilingRule | PullInRule)
+    in_a_channel = placed.channel is not None and not isinstance(placed.rule, PullInRule)
+    return (name == "breakdown voltage" and not isinstance(placed.rule, BreakdownRule)) or (
+        of_the_rail and in_a_channel
     )
 
 
@@ -46,19 +59,16 @@ def _assumed(placed: PlacedRule, deck: Deck) -> tuple[str, ...]:
     """The assumptions that a reading hangs on: the supply's and the rail's for the rail and for pull-in, the
     coils' own for what happens in a channel.
     """
-    rail = placed.channel is None or isinstance(placed.rule, PullInRule)
-    own = placed.channel is not None
-    return tuple(
-        f"{a.part} {a.quantity}"
-        for a in deck.assumptions
-        if (a.part.startswith(("coil", "switch")) and own) or (not a.part.startswith(("coil", "switch")) and rail)
-    )
+    own = deck.assumed.get(placed.channel, ())
+    return (*deck.assumed.get(None, ()), *own) if isinstance(placed.rule, PullInRule) else own
 
 
 def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:
     match placed.rule:
         case PeakRule() as rule:
             yield _peak(rule, placed, readings, bench)
+        case FloorRule() as rule:
+            yield from _floor(rule, placed, readings, firing, bench)
         case MeanRule() as rule:
             value = readings.means[placed.channel, rule.quantities]
             yield upper(
@@ -100,6 +110,18 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
         rule.advice,
         part=rule.part,
     )
+
+
+def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:
+    if not len(firing.on[_channel(placed)]):
+        return
+    value, at = readings.high[placed.channel, rule.quantity]
+    bound = rule.limit.value
+    margin = None if bound is None else (value - bound) / bound
+    said = f"{placed.label}: {rule.what} reaches {in_units(value, rule.limit.unit)}; the {rule.limit.name} of {placed.part} is "
+    said += "not given" if bound is None else in_units(bound, rule.limit.unit)
+    said += f"; try: {rule.advice}" if margin is not None and margin < 0 else ""
+    yield bench.finding(placed, rule.limit, rule.what, value, margin, at, said, rule.consequence, worse="low")
 
 
 def _channel(placed: PlacedRule) -> int:

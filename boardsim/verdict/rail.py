@@ -10,8 +10,9 @@ from boardsim.parts.rules import CeilingRule, DipRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding
-from boardsim.verdict.readings import AT_CEILING, Readings
-from boardsim.verdict.watch import Dip
+from boardsim.verdict.readings import Readings
+
+_JUST_BEFORE = 2e-6  # [s], longer than a switch takes
 
 
 def _who(board: Board, channels: tuple[int, ...]) -> str:
@@ -31,7 +32,7 @@ def _who(board: Board, channels: tuple[int, ...]) -> str:
 
 def _together(board: Board, firing: Firing, at: float) -> str:
     """Who was on just before a time: at the very edge the outputs have already changed."""
-    on = firing.channels_on(at) or firing.channels_on(at - 2e-6) or firing.channels_on(at - 1e-4)
+    on = firing.channels_on(at - _JUST_BEFORE) or firing.channels_on(at) or firing.channels_on(at - 50 * _JUST_BEFORE)
     number = len(on)
     if not number:
         return "no channel was on"
@@ -43,33 +44,43 @@ def _together(board: Board, firing: Firing, at: float) -> str:
 def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
     """Depth with duration: below the level is allowed for less than the given time.
 
-    Without a dip below the level, the margin is that of the lowest voltage; with dips that are all short enough it is
-    what is left of the allowed time; with one that lasts too long it is how far it goes below.
+    A dip that lasts too long fails, by how far it goes below the level. One that would last too long if the level were
+    a guard band higher is tight. What is shorter counts for nothing, however deep.
     """
     lowest, at = readings.low[placed.channel, rule.quantity]
     level = rule.limit.value
-    longest: Dip | None = max(readings.dips, key=lambda d: d.lasting, default=None)
-    shown, when = (lowest, at) if longest is None else (longest.lowest, longest.at)
-    said = f"{_together(bench.board, firing, when)} at {in_units(when, 's', 4)}: the {rule.what} fell to {in_units(shown, 'V')}"
-    if longest is not None and level is not None:
-        said += f" and stayed below {in_units(level, 'V')} for {in_units(longest.lasting, 's')}"
-        said += f"; brown-out counts after {in_units(rule.lasting, 's')}"
-    elif level is not None:
+    if level is None:
+        said = _dip_sentence(rule, readings, firing, bench, lowest, at)
+        said += "; no brown-out level was given to hold it against ([limits] brown_out)"
+        return bench.finding(placed, rule.limit, "coil rail voltage", lowest, None, at, said, worse="low")
+    longest, guarded = (
+        max((d for d in dips if d.lasting >= rule.lasting), key=lambda d: d.lasting, default=None)
+        for dips in (readings.dips, readings.guarded)
+    )
+    spare = (lowest - level) / level
+    if longest is not None:
+        lowest, at, margin = longest.lowest, longest.at, (longest.lowest - level) / level
+    elif guarded is not None:
+        margin = min(max(spare, 0.0), bench.guard)
+    else:
+        margin = max(spare, bench.guard)
+    said = _dip_sentence(rule, readings, firing, bench, lowest, at)
+    shown = max(readings.dips, key=lambda d: d.lasting, default=None) if longest is None else longest
+    if shown is None:
         said += f"; the brown-out level is {in_units(level, 'V')}"
     else:
-        said += "; no brown-out level was given to hold it against ([limits] brown_out)"
-    if lowest < shown:
-        said += f"; the deepest dip reaches {in_units(lowest, 'V')} at {in_units(at, 's', 4)}"
+        said += f" and stayed below {in_units(level, 'V')} for {in_units(shown.lasting, 's')}"
+        said += f"; brown-out counts after {in_units(rule.lasting, 's')}"
     said += f"; the supply's own terminals fell to {in_units(readings.low[None, 'v_supply'][0], 'V')}"
-    margin = None if level is None else (shown - level) / level
-    lasting = None
-    if longest is not None and level is not None:
-        lasting = longest.lasting
-        if lasting < rule.lasting:
-            margin = (rule.lasting - lasting) / rule.lasting
-        else:
-            said += _fewer(bench.board)
-    return bench.finding(placed, rule.limit, "coil rail voltage", shown, margin, when, said, lasting=lasting)
+    said += _fewer(bench.board) if longest is not None else ""
+    lasting = shown.lasting if shown else None
+    return bench.finding(
+        placed, rule.limit, "coil rail voltage", lowest, margin, at, said, lasting=lasting, worse="low"
+    )
+
+
+def _dip_sentence(rule: DipRule, readings: Readings, firing: Firing, bench: Bench, lowest: float, at: float) -> str:
+    return f"{_together(bench.board, firing, at)} at {in_units(at, 's', 4)}: the {rule.what} fell to {in_units(lowest, 'V')}"
 
 
 def _fewer(board: Board) -> str:
@@ -77,11 +88,14 @@ def _fewer(board: Board) -> str:
     level = board.limits.brown_out
     if level is None:
         return ""
-    each = level.voltage.typ / min(c.coil.resistance.min for c in board.channels)
+    r_coil = min(c.coil.resistance.min for c in board.channels)
     r = board.supply.resistance.typ + board.cable.loop(293.15).typ
-    feeds = (board.supply.voltage.min - level.voltage.typ) / r / each
+    counts = [(board.supply.voltage.min - level.voltage.max) / r / (level.voltage.max / r_coil)]
     if board.supply.current_ceiling is not None:
-        feeds = min(feeds, board.supply.current_ceiling.typ / each)
+        counts.append(board.supply.current_ceiling.typ / (board.supply.voltage.max / r_coil))
+    if board.limits.most_on is not None:
+        counts.append(board.limits.most_on)
+    feeds = min(counts)
     return (
         f"; try: at most {max(int(feeds), 1)} channels together, or a stronger supply"
         if feeds > 0
@@ -106,8 +120,7 @@ def judge_ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, fir
         "; try: fewer channels at once, or a larger supply"
     )
     # The modelled supply never exceeds its ceiling: being at it is what breaks the limit.
-    margin = min((bound * AT_CEILING - value) / bound, -1e-3)
-    return bench.finding(placed, rule.limit, "supply current", value, margin, since, _sentence(said), lasting=total)
+    return bench.finding(placed, rule.limit, "supply current", value, -1e-3, since, _sentence(said), lasting=total)
 
 
 def _sentence(text: str) -> str:

@@ -10,6 +10,7 @@ import scipy.sparse
 
 from boardsim.circuit.deck import Deck
 from boardsim.engine.waves import Waves
+from boardsim.errors import NoConvergence
 from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import BreakdownRule, CeilingRule, DipRule, MeanRule, PullInRule, ReleaseRule
 from boardsim.verdict.findings import Envelope, Floats
@@ -34,7 +35,7 @@ AT_CEILING = 0.99  # share of the ceiling from which the supply counts as being 
 
 @dataclass(frozen=True)
 class PortReading:
-    """What the passivity audit found at one part. [J]"""
+    """What the passivity audit found at one part; `deciding` is the largest energy its channel's coil held. [J]"""
 
     channel: int | None
     name: str
@@ -42,6 +43,7 @@ class PortReading:
     spread: float
     through: float
     holds: float
+    deciding: float
 
 
 @dataclass(frozen=True)
@@ -57,8 +59,8 @@ class Readings:
     ceiling : (time at the ceiling, since when)
     pull_in, release : mapping of channel to (times, currents)
     avalanches : mapping of channel to list of Avalanche
-    pulse_energy : float
-        Largest energy that a coil held. [J]
+    guarded : tuple of Dip
+        Below the level plus the guard band.
     points : int
     """
 
@@ -71,7 +73,7 @@ class Readings:
     release: Mapping[int, tuple[Floats, Floats]]
     avalanches: Mapping[int, tuple[Avalanche, ...]]
     ports: tuple[PortReading, ...]
-    pulse_energy: float
+    guarded: tuple[Dip, ...]
     points: int
     envelopes: Mapping[str, Envelope]
 
@@ -101,6 +103,11 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     deck : Deck
     firing : Firing
         For the times of switching; absolute, as are all times of the result. [s]
+
+    Raises
+    ------
+    NoConvergence
+        If the waveforms hold values that are no numbers.
     """
     names = tuple(_ours(name) for name in waves.names)
     table = _Table(deck, names)
@@ -112,6 +119,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     integrals = Integrals(len(mean_keys))
     dip_rule = next((r for _, r in rules if isinstance(r, DipRule)), None)
     dips = Dips(dip_rule.limit.value if dip_rule and dip_rule.limit.value is not None else -np.inf)
+    guarded = Dips(dips.level * (1 + dip_rule.guard) if dip_rule else -np.inf)
     ceiling_rule = next((r for _, r in rules if isinstance(r, CeilingRule)), None)
     ceiling = TimeAbove(AT_CEILING * ceiling_rule.limit.value if ceiling_rule and ceiling_rule.limit.value else np.inf)
     pull_in = {
@@ -130,12 +138,15 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     slices = Slices(np.linspace(start, stop, SLICES + 1), len(shown))
 
     for block in waves.blocks():
+        if not np.isfinite(block).all():
+            raise NoConvergence("ngspice's waveforms hold values that are no numbers")
         t = block[:, 0] + start
         y = table.values(block)
         extremes.feed(t, y)
         if mean_keys:
             integrals.feed(t, np.stack([np.prod([y[row[c, q]] for q in qs], axis=0) for c, qs in mean_keys]))
-        dips.feed(t, y[row[None, "v_rail"]])
+        for dip in (dips, guarded):
+            dip.feed(t, y[row[None, "v_rail"]])
         ceiling.feed(t, y[row[None, "i_supply"]])
         for samples in (pull_in, release):
             for c, sample in samples.items():
@@ -146,11 +157,12 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         slices.feed(t, y[[row[key] for key in shown.values()]])
 
     span = stop - start
-    coil_energy = [
-        0.5 * p.store[1] * _largest(extremes, row[c, p.store[0]]) ** 2
-        for c, _, p in deck.ports
-        if p.store and c is not None
-    ]
+    held: dict[int | None, float] = {}
+    for channel, _, port in deck.ports:
+        if port.store and channel is not None:
+            energy = 0.5 * port.store[1] * _largest(extremes, row[channel, port.store[0]]) ** 2
+            held[channel] = max(held.get(channel, 0.0), energy)
+    held[None] = max(held.values(), default=0.0)
     return Readings(
         {k: (float(extremes.high[i]), float(extremes.high_at[i])) for k, i in row.items()},
         {k: (float(extremes.low[i]), float(extremes.low_at[i])) for k, i in row.items()},
@@ -159,7 +171,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         (ceiling.total, ceiling.first),
         {c: (s.times, s.values) for c, s in pull_in.items()},
         {c: (s.times, s.values) for c, s in release.items()},
-        {c: tuple(w.found) for c, (w, _) in avalanches.items()},
+        {c: tuple(w.all()) for c, (w, _) in avalanches.items()},
         tuple(
             PortReading(
                 c,
@@ -168,10 +180,11 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
                 float(falls.spread[i]),
                 float(falls.through[i]),
                 p.holds,
+                held.get(c, 0.0),
             )
             for i, (c, label, p) in enumerate(deck.ports)
         ),
-        max(coil_energy, default=0.0),
+        tuple(guarded.all()),
         waves.points,
         {
             name: Envelope(name, deck.units[key], slices.edges, slices.low[i], slices.high[i])

@@ -9,12 +9,18 @@ from boardsim.board.reader import Board
 from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import Consequence
 from boardsim.quantities import Quantity, in_units
-from boardsim.verdict.findings import Finding, Floats, Verdict
+from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
 
 
 def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     """Swallowed, joined and misdirected pulses; channels on at once; exclusive groups; clock and logic rail."""
-    found = [*_swallowed(board, firing), *_joined(board, firing), *_wrong(board, firing)]
+    found = [
+        *_swallowed(board, firing),
+        *_moved(board, firing),
+        *_joined(board, firing),
+        *_lost_pauses(board, firing),
+        *_wrong(board, firing),
+    ]
     everyone = tuple(c.number for c in board.channels)
     found.append(_at_once(board, firing, everyone, board.limits.most_on, "channels on at once", "board", ""))
     for members, most, reason in board.exclusive:
@@ -76,6 +82,50 @@ def _swallowed(board: Board, firing: Firing) -> list[Finding]:
     return found
 
 
+def _moved(board: Board, firing: Firing) -> list[Finding]:
+    """The pulse that the register frames distort most, as a share of its own width."""
+    limit = board.limits.pulse_error
+    found = []
+    for what in ("lateness of a pulse", "change of a pulse's width"):
+        by = {
+            m: (m.start - m.pulse.start if what.startswith("late") else abs(m.stop - m.start - m.pulse.width))
+            for m in firing.moved
+            if not m.swallowed
+        }
+        if not by:
+            continue
+        m = max(by, key=lambda m: by[m] / m.pulse.width)
+        value = by[m] / m.pulse.width
+        margin = (limit.typ - value) / limit.typ
+        label = board.channel(m.pulse.channel).label
+        said = (
+            f"{label}: its pulse of {in_units(m.pulse.width, 's')} at {in_units(m.pulse.start, 's', 4)} "
+            f"{'comes late by' if what.startswith('late') else 'changes its width by'} {in_units(by[m], 's')}, {value:.1%} of its "
+            f"width; {limit.typ:.0%} is allowed"
+        )
+        if margin < 0:
+            said += "; try: a faster clock, or pulses that do not change together"
+        found.append(
+            Finding(
+                "pulse-timing",
+                what,
+                "register chain",
+                None,
+                label,
+                value,
+                limit.typ,
+                "1",
+                margin,
+                m.pulse.start,
+                "misbehave",
+                verdict_of(margin, board.limits.guard_band.typ),
+                said,
+                source=str(limit.origin),
+            )
+        )
+    return found
+
+
 def _joined(board: Board, firing: Firing) -> list[Finding]:
     found = []
     for channel in dict.fromkeys(p.channel for p in firing.merged):
@@ -93,6 +143,28 @@ def _joined(board: Board, firing: Firing) -> list[Finding]:
                 mine[0].start,
                 f"{label}: fired again at {in_units(mine[0].start, 's', 4)} while still commanded on: the pulses run together "
                 f"({len(mine)} times); try: a later start or a shorter pulse",
+            )
+        )
+    return found
+
+
+def _lost_pauses(board: Board, firing: Firing) -> list[Finding]:
+    found = []
+    for channel in dict.fromkeys(p.channel for p in firing.lost_pauses):
+        mine = [p for p in firing.lost_pauses if p.channel == channel]
+        label = board.channel(channel).label
+        found.append(
+            _plain(
+                "overlap",
+                "pauses lost between pulses",
+                channel,
+                label,
+                float(len(mine)),
+                0.0,
+                "1",
+                mine[0].start,
+                f"{label}: the pause before its pulse at {in_units(mine[0].start, 's', 4)} is lost: off and on again fall on one "
+                f"latch, and the pulses run together ({len(mine)} times); try: a longer pause or a faster clock",
             )
         )
     return found
@@ -191,7 +263,7 @@ def _register(board: Board) -> list[Finding]:
             margin,
             None,
             "misbehave",
-            _of(board, margin),
+            verdict_of(margin, board.limits.guard_band.typ),
             f"the chain is clocked at {in_units(chain.clock.max, 'Hz')}; "
             + (
                 f"one {name} alone follows up to {in_units(clock.typ, 'Hz')}"
@@ -223,18 +295,10 @@ def _register(board: Board) -> list[Finding]:
                 spare,
                 None,
                 consequence,
-                _of(board, spare),
+                verdict_of(spare, board.limits.guard_band.typ),
                 f"the logic rail is {'up to' if upper else 'down to'} {in_units(value, 'V')}; {name} works "
                 f"{'up to' if upper else 'from'} {in_units(limit.typ, 'V')}",
                 source=str(limit.origin),
             )
         )
     return found
-
-
-def _of(board: Board, margin: float | None) -> Verdict:
-    if margin is None:
-        return "limit-missing"
-    if margin < 0:
-        return "fail"
-    return "tight" if margin < board.limits.guard_band.typ else "pass"

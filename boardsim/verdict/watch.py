@@ -161,47 +161,60 @@ class Avalanche:
     voltage: float
 
 
+HYSTERESIS = 0.95  # of the breakdown voltage, below which a stretch of avalanche has ended
+
+
 @dataclass
 class Avalanches:
-    """Every stretch in which a switch takes current at or above its breakdown voltage."""
+    """Every stretch in which a switch takes current at or above its breakdown voltage.
+
+    A stretch ends where the voltage falls well below breakdown or the current ends: ripple about the breakdown voltage
+    makes one stretch, not many.
+    """
 
     breakdown: float
     found: list[Avalanche] = field(default_factory=list)
-    _open: bool = False
+    _open: Avalanche | None = None
 
     def feed(self, t: Floats, v: Floats, i: Floats) -> None:
         """Times, drain voltages and drain currents, all (m,)."""
-        if v.max() < self.breakdown:
-            self._open = False
+        if v.max() < HYSTERESIS * self.breakdown:
+            self._close()
             return
-        inside = (v >= self.breakdown) & (i > 0)
-        starts = np.flatnonzero(inside & ~np.concatenate([[False], inside[:-1]]))
-        ends = np.flatnonzero(inside & ~np.concatenate([inside[1:], [False]]))
-        p = v * i
-        for a, b in zip(starts.tolist(), ends.tolist(), strict=True):
-            # The steps into and out of breakdown count whole: with few points that errs on the safe side.
+        near = (v >= HYSTERESIS * self.breakdown) & (i > 0)
+        starts = np.flatnonzero(near & ~np.concatenate([[False], near[:-1]])).tolist()
+        ends = np.flatnonzero(near & ~np.concatenate([near[1:], [False]])).tolist()
+        if not near[0]:
+            self._close()
+        for a, b in zip(starts, ends, strict=True):
+            # The steps into and out of the stretch count whole: with few points that errs on the safe side.
             lo, hi = max(a - 1, 0), min(b + 2, len(t))
-            joined = a == 0 and self._open
+            energy = float(np.trapezoid(np.maximum(v * i, 0)[lo:hi], t[lo:hi]))
             one = Avalanche(
-                float(t[a]),
-                float(t[b] - t[a]),
-                float(np.trapezoid(np.maximum(p[lo:hi], 0), t[lo:hi])),
-                float(i[a : b + 1].max()),
-                float(v[a : b + 1].max()),
+                float(t[a]), float(t[b] - t[a]), energy, float(i[a : b + 1].max()), float(v[a : b + 1].max())
             )
-            if joined and self.found:
-                last = self.found[-1]
+            if a == 0 and self._open is not None:
+                first = self._open
                 one = Avalanche(
-                    last.start,
-                    one.start + one.lasting - last.start,
-                    last.energy + one.energy,
-                    max(last.current, one.current),
-                    max(last.voltage, one.voltage),
+                    first.start,
+                    one.start + one.lasting - first.start,
+                    first.energy + one.energy,
+                    max(first.current, one.current),
+                    max(first.voltage, one.voltage),
                 )
-                self.found[-1] = one
-            else:
-                self.found.append(one)
-        self._open = bool(inside[-1])
+            self._open = one
+            if b < len(t) - 1:
+                self._close()
+
+    def _close(self) -> None:
+        if self._open is not None and self._open.voltage >= self.breakdown:
+            self.found.append(self._open)
+        self._open = None
+
+    def all(self) -> list[Avalanche]:
+        """The stretches so far, with one that had not ended."""
+        at_end = [self._open] if self._open is not None and self._open.voltage >= self.breakdown else []
+        return [*self.found, *at_end]
 
 
 @dataclass

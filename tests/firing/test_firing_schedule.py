@@ -110,12 +110,22 @@ def test_firmware_that_means_low_by_on_turns_every_coil_on_before_anything_is_as
     assert spans(firing, 4)[0] == pytest.approx((0.0, 0.01 + FRAME + PROPAGATION))
 
 
-def test_a_run_looks_until_the_coils_are_at_rest_or_as_long_as_asked_for(tmp_path: Path) -> None:
+def test_a_run_looks_as_long_as_asked_for_and_until_the_coils_are_at_rest(tmp_path: Path) -> None:
     five_time_constants = 5 * 9e-3 / 30
     last = 0.012 + FRAME + PROPAGATION
     assert fire(board(tmp_path), pattern((3, 0.010, 0.002))).duration == pytest.approx(last + five_time_constants)
     assert fire(board(tmp_path), pattern((3, 0.010, 0.002), duration=0.5)).duration == 0.5
-    assert fire(board(tmp_path), pattern((3, 0.010, 0.002), duration=0.012)).duration == pytest.approx(last)
+    # A duration that ends with the pulse would hide what the turn-off does.
+    cut = fire(board(tmp_path), pattern((3, 0.010, 0.002), duration=0.012)).duration
+    assert cut == pytest.approx(last + five_time_constants)
+
+
+def test_a_pause_whose_two_edges_fall_on_one_latch_is_reported(tmp_path: Path) -> None:
+    # Another channel's frame is under way when channel 3 is turned off and on again.
+    firing = fire(board(tmp_path), pattern((3, 0.010, 0.005), (5, 0.0149999, 0.002), (3, 0.0150001, 0.005)))
+    merged = fire(board(tmp_path), pattern((3, 0.010, 0.005), (3, 0.0150001, 0.005), (5, 0.0149999, 0.002)))
+    assert [p.channel for p in firing.lost_pauses] == [p.channel for p in merged.lost_pauses] == [3]
+    assert len(firing.on[3]) == 1
 
 
 _PULSES = st.lists(

@@ -87,12 +87,9 @@ def test_a_winding_is_coldest_at_the_lowest_ambient_and_hottest_at_the_highest_w
     assert part.winding(NOMINAL, around) == part.winding(Corner("cold", {}, "cold"), None) == 16.0
 
 
-def test_the_voltage_that_just_pulls_in_is_current_times_resistance() -> None:
-    assert coil().pull_in_voltage(NOMINAL, None) is None
-    found = coil(pull_in="0.5 A").pull_in_voltage(NOMINAL, None)
-    assert found is not None
-    assert found.typ == pytest.approx(8.0)
-    assert found.origin.kind == "computed"
+def test_a_coil_cannot_let_go_at_more_current_than_it_pulls_in_with() -> None:
+    with pytest.raises(ValidationError, match="release must be smaller than pull_in"):
+        coil(pull_in="0.5 A", release="0.6 A")
 
 
 @given(

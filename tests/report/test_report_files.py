@@ -39,7 +39,7 @@ def test_the_old_file_is_never_written_into(tmp_path: Path) -> None:
 
 def test_a_folder_that_is_a_file_is_a_wrong_call_that_says_what_to_do(tmp_path: Path) -> None:
     (tmp_path / "out").write_text("")
-    with pytest.raises(InputError, match=r"out/note\.txt: .*cannot be written.*choose another output folder"):
+    with pytest.raises(InputError, match=r"out/note\.txt: .*cannot be written.*choose another place"):
         write_text(tmp_path / "out" / "note.txt", "x")
 
 

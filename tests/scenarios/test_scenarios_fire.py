@@ -31,7 +31,7 @@ pull_in = "0.5 A"
 release = "0.1 A"
 [channels."0-1"]
 coil = "gate"
-switch = { part = "n-logic-60v", gate = "100 ohm", pulldown = "10 kohm" }
+switch = { part = "n-logic-60v", gate = "100 ohm", pulldown = "100 kohm" }
 clamp = { kind = "diode", diode = "fast-2a" }
 [limits]
 most_on = 2

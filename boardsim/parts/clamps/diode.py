@@ -21,4 +21,10 @@ class DiodeClamp(Part):
         """The clamp between node `drain` and node `rail`."""
         meter = Ammeter(f"{name}_a", drain, f"{name}_in")
         diode = self.diode.stamp(f"{name}_d", "clamp diode", f"{name}_in", rail, current(meter))
-        return Stamp(elements=(meter, *diode.elements), probes=diode.probes, ports=diode.ports, rules=diode.rules)
+        return Stamp(
+            elements=(meter, *diode.elements),
+            probes=diode.probes,
+            ports=diode.ports,
+            rules=diode.rules,
+            assumptions=diode.assumptions,
+        )

@@ -35,4 +35,5 @@ class DiodeZenerClamp(Part):
             probes=(*diode.probes, *zener.probes),
             ports=(*diode.ports, *zener.ports),
             rules=(*diode.rules, *zener.rules),
+            assumptions=(*diode.assumptions, *zener.assumptions),
         )

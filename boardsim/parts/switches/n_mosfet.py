@@ -24,7 +24,7 @@ from boardsim.parts.elements import (
     voltage,
 )
 from boardsim.parts.record import Record
-from boardsim.parts.rules import BreakdownRule, Limit, MeanRule, PeakRule
+from boardsim.parts.rules import BreakdownRule, FloorRule, Limit, MeanRule, PeakRule
 from boardsim.quantities import (
     CAPACITANCE,
     CHARGE,
@@ -221,6 +221,7 @@ class NMosfetStage(Part):
         peak = Limit.of(part.pulse_current, "pulsed drain current", "A", "current")
         if part.pulse_current is None:
             peak = Limit.of(part.continuous_current, "continuous drain current (no pulse rating given)", "A", "current")
+        lowest = min(part.on_resistance, key=lambda p: p.gate.typ)
         holds = (
             0.5 * (parameters["CJO"] + parameters["CGDMAX"]) * bv**2
             + 0.5 * (part.input_capacitance.typ + parameters["CGDMAX"]) * 20.0**2
@@ -254,6 +255,14 @@ class NMosfetStage(Part):
                     "lower the logic rail, or choose a gate rating that stands it",
                     magnitude=True,
                 ),
+                FloorRule(
+                    "under-drive",
+                    "v_gs",
+                    Limit.of(lowest.gate, "lowest gate voltage with an on-resistance", "V", None),
+                    "destroy",
+                    "gate drive of the switch",
+                    "raise the logic rail, or choose a switch that is specified at this gate voltage",
+                ),
                 PeakRule(
                     "overcurrent",
                     "i_d",
@@ -272,6 +281,9 @@ class NMosfetStage(Part):
                 ),
             ),
             assumptions=listed(
-                "switch", gate_resistance=part.gate_resistance, capacitance_voltage=part.capacitance_voltage
+                "switch",
+                gate_resistance=part.gate_resistance,
+                capacitance_voltage=part.capacitance_voltage,
+                threshold_current=part.threshold_current,
             ),
         )
