@@ -17,6 +17,7 @@ from boardsim.quantities import CAPACITANCE, CURRENT, TIME, VOLTAGE, Quantity, a
 
 THERMAL_VOLTAGE = 8.617333e-5 * 298.15  # [V] k T / q at 25 degC, CODATA
 _MOST_FOLDS = 250  # e-folds of current: about 11 V across the junction alone, more than stacked rectifiers have
+_RECOVERY_CURRENTS = 0.5  # forward over reverse current at which recovery times are given (0.5 A, 1 A), common practice
 EMISSION = 1.75  # silicon rectifier in its working range, from memory
 
 
@@ -81,7 +82,9 @@ class Diode(Part):
     Notes
     -----
     ngspice's junction diode at 25 degC without breakdown: a reverse voltage above the rating is reported, not
-    clipped. Ignores the rise of the forward voltage at turn-on.
+    clipped. Stored charge from the recovery time; it ends abruptly, and the loop through switch and capacitor has no
+    inductance, so current peaks when a channel is fired into a conducting clamp are upper bounds. Ignores the rise of
+    the forward voltage at turn-on.
     """
 
     role: ClassVar[str] = "component"
@@ -113,6 +116,8 @@ class Diode(Part):
     def stamp(self, name: str, label: str, anode: str, cathode: str, through: Signal) -> Stamp:
         """The diode between two nodes; `through` is the current from anode to cathode."""
         i_s, n, r_s = self.parameters()
+        # Charge control: a diode that conducts I_F and is driven by I_R stays on for TT ln(1 + I_F / I_R).
+        transit_time = self.recovery.typ / math.log(1 + _RECOVERY_CURRENTS)
         model = Model(
             f"{name}_m",
             "D",
@@ -121,7 +126,7 @@ class Diode(Part):
                 "N": n,
                 "RS": r_s,
                 "CJO": self.capacitance.typ,
-                "TT": self.recovery.typ,
+                "TT": transit_time,
                 "TNOM": 25.0,
             },
         )
@@ -160,7 +165,7 @@ class Diode(Part):
         v_max = self.reverse_voltage.typ if self.reverse_voltage else 100.0
         # The junction gives its charge back at up to the reverse voltage, the stored carriers theirs near the drop.
         forward = self.forward[-1]
-        holds = 0.5 * self.capacitance.typ * v_max**2 + self.recovery.typ * forward.current.typ * forward.voltage.typ
+        holds = 0.5 * self.capacitance.typ * v_max**2 + transit_time * forward.current.typ * forward.voltage.typ
         return Stamp(
             elements=(Junction(name, anode, cathode, model),),
             probes=(

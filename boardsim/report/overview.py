@@ -218,7 +218,7 @@ def _coil_rail(axes: Axes, traces: Traces, scale: float) -> None:
         "shrinkB": 4,
     }
     axes.annotate(
-        f"lowest: {in_units(v, 'V', 4)} at {in_units(t, 's')}",
+        f"lowest: {in_units(v, 'V', 4)} at {in_units(t, 's', 4)}",
         xy=(t * scale, v),
         xytext=(across, 0.96),
         textcoords="axes fraction",
