@@ -108,7 +108,14 @@ def deck(
     to: Annotated[
         Path | None, typer.Option(metavar="FILE", help="where to write it; standard output if not given")
     ] = None,
-    corner: Annotated[int, typer.Option(metavar="N", min=1, help="which of the worst corners of the tolerances, counted from 1; the first if not given")] = 1,
+    corner: Annotated[
+        int,
+        typer.Option(
+            metavar="N",
+            min=1,
+            help="which of the worst corners of the tolerances, counted from 1; the first if not given",
+        ),
+    ] = 1,
 ) -> None:
     """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
     from boardsim.board.reader import read_board
