@@ -76,6 +76,11 @@ class Engine:
             self.keep.rmdir()  # only if nothing else is in it
 
     @property
+    def name(self) -> str:
+        """The engine and its version, once it has been started."""
+        return f"ngspice {self.version}" if self.version else "ngspice"
+
+    @property
     def folder(self) -> Path:
         """The scratch folder.
 

@@ -11,7 +11,7 @@ from pydantic import BeforeValidator, model_validator
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import T_20C, awg_diameter, loop_resistance, pair_inductance
-from boardsim.parts.elements import Inductor, Probe, Resistor, current
+from boardsim.parts.elements import Inductor, Resistor
 from boardsim.parts.record import shown
 from boardsim.quantities import AREA, LENGTH, Quantity, assume, computed
 
@@ -71,7 +71,6 @@ class Cable(Part):
         coil = Inductor("cable", "cable_mid", far, pair_inductance(self.diameter, spacing.typ, self.length.typ))
         return Stamp(
             elements=(Resistor("cable", near, "cable_mid", r), coil),
-            probes=(Probe("i_cable", current(coil), "A"),),
             assumptions=listed("cable", spacing=spacing),
         )
 

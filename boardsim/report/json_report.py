@@ -27,6 +27,7 @@ def result_to_dict(result: Result) -> dict[str, Any]:
         "assumptions": [
             {"part": a.part, "quantity": a.quantity, "value": a.value, "why": a.why} for a in result.assumptions
         ],
+        "engine": result.engine,
         "audit": {
             "passed": result.proven,
             "entries": [_entry(e) for corner in result.audit for e in corner.entries],

@@ -78,6 +78,7 @@ class CornerResult:
     audit: CornerAudit
     seconds: dict[str, float] = field(default_factory=dict)
     failure: Exception | None = None
+    engine: str = ""
 
 
 @dataclass
@@ -178,10 +179,12 @@ def run_corner(
                 decisive = (*trial.audit, entry)
                 progress(1.0)
                 engine.discard_kept()
-                return CornerResult(corner, trial, CornerAudit(corner.name, decisive, True), seconds)
+                return CornerResult(
+                    corner, trial, CornerAudit(corner.name, decisive, True), seconds, engine=engine.name
+                )
     progress(1.0)
     last = trials[-1] if trials else None
-    return CornerResult(corner, last, CornerAudit(corner.name, tuple(entries), False), seconds, failure)
+    return CornerResult(corner, last, CornerAudit(corner.name, tuple(entries), False), seconds, failure, engine.name)
 
 
 def _fits(deck: Deck, settings: Settings, folder: Path) -> None:

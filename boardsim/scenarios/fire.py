@@ -113,6 +113,7 @@ def fire_pattern(
             Timing("elapsed over all corners", spent_running),
         ),
         tuple(f"{r.corner.name}: {r.failure}" for r in results if r.failure is not None and not r.audit.proven),
+        next((r.engine for r in results if r.trial), "ngspice"),
     )
 
 

@@ -228,6 +228,8 @@ class Result:
     ----------
     firing : tuple of str
         Sentences about the register frames: frame time, how far edges moved.
+    engine : str
+        Name and version of the simulator.
     deck : str
         The deck of the corner that decides, with the settings that passed the audit.
     """
@@ -244,6 +246,7 @@ class Result:
     deck: str
     timings: tuple[Timing, ...] = ()
     notes: tuple[str, ...] = field(default=())
+    engine: str = ""
 
     @property
     def proven(self) -> bool:

@@ -71,16 +71,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench)
             yield from _floor(rule, placed, readings, firing, bench)
         case MeanRule() as rule:
             value = readings.means[placed.channel, rule.quantities]
+            over = f" over the pattern's {in_units(firing.duration, 's')}"
             yield upper(
-                rule.what,
-                rule.limit,
-                rule.consequence,
-                placed,
-                bench,
-                value,
-                None,
-                rule.advice,
-                part=rule.part,
+                rule.what, rule.limit, rule.consequence, placed, bench, value, None, rule.advice, over, part=rule.part
             )
         case BreakdownRule() as rule:
             yield from judge_breakdown(rule, placed, readings, bench)
