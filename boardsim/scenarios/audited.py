@@ -32,6 +32,7 @@ LADDER = (
     Settings("gear", 1.5e-6, 75e-6),
 )
 FINE = 2  # the rung that decks are written with
+_SHORTEST_STEP = 5e-6  # [s], as an upper bound: below it the engine's own estimate is left to find its steps
 _STEPS_PER_TAU = (6, 10, 16, 25, 40)  # at least, whatever the engine's own error estimate allows
 
 
@@ -42,7 +43,9 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
     """
     tau = min(c.coil.inductance.min / max(c.coil.resistance.max, 1e-3) for c in board.channels)
     counts = (*_STEPS_PER_TAU, *[_STEPS_PER_TAU[-1]] * len(ladder))
-    return tuple(replace(s, max_step=min(s.max_step, tau / n)) for s, n in zip(ladder, counts, strict=False))
+    return tuple(
+        replace(s, max_step=min(s.max_step, max(tau / n, _SHORTEST_STEP))) for s, n in zip(ladder, counts, strict=False)
+    )
 
 
 Progress = Callable[[float], None]

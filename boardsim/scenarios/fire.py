@@ -85,9 +85,8 @@ def fire_pattern(
                 wanted.append(longest)
                 shares[longest.name] = 0.0
                 results.append(one(len(wanted) - 1))
-        except BaseException:
-            cancel.set()  # else leaving the pool would wait for every run to end by itself
-            raise
+        finally:
+            cancel.set()  # nothing runs any more, unless something went wrong: then the pool need not wait for it
     spent_running = time.perf_counter() - began
 
     findings = worst([*_by_corner(results), judge_switching(board, firing)])

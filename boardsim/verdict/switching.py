@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Iterable, Iterator
+
 import numpy as np
 
 from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
+from boardsim.firing.pattern import Pulse
 from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import Consequence
 from boardsim.quantities import Quantity, in_units
@@ -29,26 +32,17 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     return [*found, *_register(board)]
 
 
-def _plain(
-    check: str,
-    quantity: str,
-    channel: int | None,
-    label: str,
-    value: float,
-    limit: float,
-    unit: str,
-    at: float | None,
-    sentence: str,
-) -> Finding:
+def _plain(quantity: str, check: str, channel: int, label: str, count: int, at: float, sentence: str) -> Finding:
+    """Something that must not happen at all; how often it did is the reading."""
     return Finding(
         check,
         quantity,
         "register chain",
         channel,
         label,
-        value,
-        limit,
-        unit,
+        float(count),
+        0.0,
+        "1",
         -1.0,
         at,
         "misbehave",
@@ -58,28 +52,29 @@ def _plain(
     )
 
 
-def _swallowed(board: Board, firing: Firing) -> list[Finding]:
-    lost = [m for m in firing.moved if m.swallowed]
-    found = []
-    for channel in dict.fromkeys(m.pulse.channel for m in lost):
-        mine = [m for m in lost if m.pulse.channel == channel]
-        p, label = mine[0].pulse, board.channel(channel).label
-        found.append(
-            _plain(
-                "lost-pulse",
-                "width of a pulse",
-                channel,
-                label,
-                p.width,
-                firing.frame_time,
-                "s",
-                p.start,
-                f"{label}: its pulse of {in_units(p.width, 's')} at {in_units(p.start, 's', 4)} is lost: both edges fall on one latch, "
-                f"since a register frame takes {in_units(firing.frame_time, 's')} ({len(mine)} such pulses on this channel); "
-                "try: a longer pulse or a faster clock",
-            )
+def _per_channel(
+    board: Board, pulses: Iterable[Pulse], check: str, quantity: str, say: Callable[[str, Pulse], str], remedy: str
+) -> Iterator[Finding]:
+    """One finding for each channel to which something happened, told by its first pulse."""
+    mine: dict[int, list[Pulse]] = {}
+    for pulse in pulses:
+        mine.setdefault(pulse.channel, []).append(pulse)
+    for channel, hit in mine.items():
+        label = board.channel(channel).label
+        times = f" ({len(hit)} times)" if len(hit) > 1 else ""
+        sentence = f"{say(label, hit[0])}{times}; try: {remedy}"
+        yield _plain(quantity, check, channel, label, len(hit), hit[0].start, sentence)
+
+
+def _swallowed(board: Board, firing: Firing) -> Iterator[Finding]:
+    def say(label: str, p: Pulse) -> str:
+        return (
+            f"{label}: its pulse of {in_units(p.width, 's')} at {in_units(p.start, 's', 4)} is lost: both edges fall on one "
+            f"latch, since a register frame takes {in_units(firing.frame_time, 's')}"
         )
-    return found
+
+    lost = [m.pulse for m in firing.moved if m.swallowed]
+    return _per_channel(board, lost, "lost-pulse", "pulses lost", say, "a longer pulse or a faster clock")
 
 
 def _moved(board: Board, firing: Firing) -> list[Finding]:
@@ -126,70 +121,35 @@ def _moved(board: Board, firing: Firing) -> list[Finding]:
     return found
 
 
-def _joined(board: Board, firing: Firing) -> list[Finding]:
-    found = []
-    for channel in dict.fromkeys(p.channel for p in firing.merged):
-        mine = [p for p in firing.merged if p.channel == channel]
-        label = board.channel(channel).label
-        found.append(
-            _plain(
-                "overlap",
-                "pulses commanded while on",
-                channel,
-                label,
-                float(len(mine)),
-                0.0,
-                "1",
-                mine[0].start,
-                f"{label}: fired again at {in_units(mine[0].start, 's', 4)} while still commanded on: the pulses run together "
-                f"({len(mine)} times); try: a later start or a shorter pulse",
-            )
+def _joined(board: Board, firing: Firing) -> Iterator[Finding]:
+    def say(label: str, p: Pulse) -> str:
+        return f"{label}: fired again at {in_units(p.start, 's', 4)} while still commanded on: the pulses run together"
+
+    remedy = "a later start or a shorter pulse"
+    return _per_channel(board, firing.merged, "overlap", "pulses commanded while on", say, remedy)
+
+
+def _lost_pauses(board: Board, firing: Firing) -> Iterator[Finding]:
+    def say(label: str, p: Pulse) -> str:
+        return (
+            f"{label}: the pause before its pulse at {in_units(p.start, 's', 4)} is lost: off and on again fall on one latch, "
+            "and the pulses run together"
         )
-    return found
+
+    remedy = "a longer pause or a faster clock"
+    return _per_channel(board, firing.lost_pauses, "overlap", "pauses lost between pulses", say, remedy)
 
 
-def _lost_pauses(board: Board, firing: Firing) -> list[Finding]:
-    found = []
-    for channel in dict.fromkeys(p.channel for p in firing.lost_pauses):
-        mine = [p for p in firing.lost_pauses if p.channel == channel]
-        label = board.channel(channel).label
-        found.append(
-            _plain(
-                "overlap",
-                "pauses lost between pulses",
-                channel,
-                label,
-                float(len(mine)),
-                0.0,
-                "1",
-                mine[0].start,
-                f"{label}: the pause before its pulse at {in_units(mine[0].start, 's', 4)} is lost: off and on again fall on one "
-                f"latch, and the pulses run together ({len(mine)} times); try: a longer pause or a faster clock",
-            )
-        )
-    return found
-
-
-def _wrong(board: Board, firing: Firing) -> list[Finding]:
-    found = []
+def _wrong(board: Board, firing: Firing) -> Iterator[Finding]:
     for w in firing.wrong:
         channel = board.channel(w.channel)
         did = "stays off although it is commanded on" if w.commanded else "is on although nothing commands it"
-        found.append(
-            _plain(
-                "wrong-output",
-                "output against command",
-                w.channel,
-                channel.label,
-                1.0,
-                0.0,
-                "1",
-                w.at,
-                f"{channel.label} (output {channel.output}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, active "
-                "level and the map from channel to output and bit do not fit together; try: bit_order, first_out, active, outputs, bits",
-            )
+        said = (
+            f"{channel.label} (output {channel.output}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, "
+            "active level and the map from channel to output and bit do not fit together; try: bit_order, first_out, "
+            "active, outputs, bits"
         )
-    return found
+        yield _plain("output against command", "wrong-output", w.channel, channel.label, 1, w.at, said)
 
 
 def most_together(firing: Firing, channels: tuple[int, ...]) -> tuple[int, float]:
