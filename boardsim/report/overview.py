@@ -206,7 +206,8 @@ def _coil_rail(axes: Axes, traces: Traces, scale: float) -> None:
     caption(axes, "Coil rail at the board [V]", {})
 
     slot = int(np.argmin(rail.low))
-    t, v = float(rail.edges[slot] + rail.edges[slot + 1]) / 2, float(rail.low[slot])
+    middle = float(rail.edges[slot] + rail.edges[slot + 1]) / 2
+    v, t = traces.lowest or (float(rail.low[slot]), middle)
     across = t * scale / float(axes.get_xlim()[1])
     side: Literal["left", "center", "right"] = "left" if across < 0.15 else "right" if across > 0.85 else "center"
     leader = {

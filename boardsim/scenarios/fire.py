@@ -201,6 +201,7 @@ def _traces(board: Board, firing: Firing, results: Sequence[CornerResult]) -> Tr
         {c.number: c.label for c in board.channels},
         brown_out.voltage.typ if brown_out else None,
         ceiling.typ if ceiling else None,
+        shown.trial.readings.low[None, "v_rail"],
     )
 
 

@@ -200,6 +200,8 @@ class Traces:
     labels : mapping of channel to str
     rail_limit, supply_limit : float or None
         Brown-out level [V] and the supply's ceiling [A].
+    lowest : (voltage, time) or None
+        Of the rail, exactly; the slices are too wide to tell. [V], [s]
     """
 
     corner: str
@@ -210,6 +212,7 @@ class Traces:
     labels: Mapping[int, str]
     rail_limit: float | None
     supply_limit: float | None
+    lowest: tuple[float, float] | None = None
 
 
 @dataclass(frozen=True)
