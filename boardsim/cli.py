@@ -175,14 +175,14 @@ def _usable(folder: Path) -> None:
 
     try:
         folder.mkdir(parents=True, exist_ok=True)
+        if not os.access(folder, os.W_OK | os.X_OK):
+            raise PermissionError(13, "no permission to write")
+        for name in RESULTS:
+            (folder / name).unlink(missing_ok=True)  # an old verdict must not stand for a run that comes to nothing
     except OSError as err:
         raise InputError(
             f"{folder}: cannot be used as a folder for results: {err.strerror or err}; choose another with --out"
         ) from err
-    for name in RESULTS:
-        (folder / name).unlink(missing_ok=True)  # an old verdict must not stand for a run that comes to nothing
-    if not os.access(folder, os.W_OK | os.X_OK):
-        raise InputError(f"{folder}: cannot be written to; choose another folder with --out")
 
 
 @contextlib.contextmanager
@@ -226,12 +226,15 @@ def _report(result: Result, folder: Path) -> None:
 
 def _stop(*_: object) -> None:
     """Be ended as by an interrupt: engines are stopped and scratch folders removed."""
+    for one in (signal.SIGTERM, signal.SIGINT):
+        signal.signal(one, signal.SIG_IGN)  # a second one must not interrupt the tidying up
     raise KeyboardInterrupt
 
 
 def main() -> None:
     """Run a command; an error that a user can cause ends in its message and its exit status, never in a traceback."""
-    signal.signal(signal.SIGTERM, _stop)
+    for one in (signal.SIGTERM, signal.SIGINT):
+        signal.signal(one, _stop)
     try:
         app()
     except BoardsimError as err:

@@ -144,7 +144,7 @@ def test_a_wrong_call_is_refused(run: Run, arguments: tuple[str, ...]) -> None:
 
 
 def test_a_corner_that_the_board_has_not_is_refused_with_those_that_it_has(run: Run) -> None:
-    refused(run("deck", "board.toml", "pattern.toml", "--corner", "9"), "--corner 9: this board has 4: 1 supply high")
+    refused(run("deck", "board.toml", "pattern.toml", "--corner", "9"), "--corner 9: this board has 5: 1 supply high")
 
 
 def test_schema_prints_json_and_knows_two_kinds_of_file(run: Run) -> None:

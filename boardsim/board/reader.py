@@ -176,6 +176,7 @@ def read_board(path: Path) -> Board:
         raise InputError(problems_of(err, file)) from None
     problems: list[Problem] = []
     channels = _lay_out(board, file, problems)
+    _refuse_shared_labels(channels, file, problems)
     exclusive = []
     numbers = {c.number for c in channels}
     for i, group in enumerate(board.limits.exclusive):
@@ -302,6 +303,17 @@ def _claim(
 def _channel(group: ChannelRange, number: int, output: int, bit: int, n: int) -> Channel:
     label = group.label.replace("{n}", str(n))
     return Channel(number, output, bit, label, group.coil, group.coil.title or "coil", group.switch, group.clamp)
+
+
+def _refuse_shared_labels(channels: list[Channel], file: TomlFile, problems: list[Problem]) -> None:
+    """Reports name a channel by its label: two channels of one name could not be told apart."""
+    named: dict[str, int] = {}
+    for channel in channels:
+        other = named.setdefault(channel.label, channel.number)
+        if other != channel.number:
+            text = f'channels {other} and {channel.number} are both labelled "{channel.label}"; put {{n}} into the label, or give other numbers'
+            problems.append(file.problem(("channels",), text))
+            return
 
 
 def problems_of(err: ValidationError, file: TomlFile) -> list[Problem]:

@@ -32,7 +32,7 @@ LADDER = (
     Settings("gear", 1.5e-6, 75e-6),
 )
 FINE = 2  # the rung that decks are written with
-_SHORTEST_STEP = 5e-6  # [s], as an upper bound: below it the engine's own estimate is left to find its steps
+_SHORTEST_STEP = 5e-6  # [s], of the first rung: a faster coil is left to the engine's own estimate
 _STEPS_PER_TAU = (6, 10, 16, 25, 40)  # at least, whatever the engine's own error estimate allows
 
 
@@ -44,7 +44,8 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
     tau = min(c.coil.inductance.min / max(c.coil.resistance.max, 1e-3) for c in board.channels)
     counts = (*_STEPS_PER_TAU, *[_STEPS_PER_TAU[-1]] * len(ladder))
     return tuple(
-        replace(s, max_step=min(s.max_step, max(tau / n, _SHORTEST_STEP))) for s, n in zip(ladder, counts, strict=False)
+        replace(s, max_step=min(s.max_step, max(tau, _SHORTEST_STEP * _STEPS_PER_TAU[0]) / n))
+        for s, n in zip(ladder, counts, strict=False)
     )
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from boardsim.board.corners import corners
+from boardsim.board.corners import corners, slow_rail
 from boardsim.board.reader import Board
 from boardsim.circuit.assemble import assemble, windows
 from boardsim.firing.pattern import Pattern
@@ -17,7 +17,9 @@ def write_deck(board: Board, pattern: Pattern, number: int) -> tuple[tuple[str, 
     -----
     With settings one step finer than findings are usually read with.
     """
-    wanted = corners(board, min(p.width for p in pattern.pulses))
+    wanted = list(corners(board, min(p.width for p in pattern.pulses)))
+    longest = slow_rail(board)
+    wanted += [longest] if longest else []
     names = tuple(c.name for c in wanted)
     if not 1 <= number <= len(wanted):
         return names, None

@@ -91,14 +91,20 @@ def _moved(board: Board, firing: Firing) -> list[Finding]:
             continue
         m = max(by, key=lambda m: by[m] / m.pulse.width)
         value = by[m] / m.pulse.width
-        margin = (limit.typ - value) / limit.typ
+        margin: float | None = (limit.typ - value) / limit.typ
         label = board.channel(m.pulse.channel).label
         said = (
             f"{label}: its pulse of {in_units(m.pulse.width, 's')} at {in_units(m.pulse.start, 's', 4)} "
             f"{'comes late by' if what.startswith('late') else 'changes its width by'} {in_units(by[m], 's')}, {value:.1%} of its "
-            f"width; {limit.typ:.0%} is allowed"
+            "width; "
         )
-        if margin < 0:
+        if limit.assumed() and limit.typ < value < 1:
+            # Nobody gave a limit: only a pulse that is off by all of its width is broken for certain.
+            margin = None
+            said += "how much may be was not given ([limits] pulse_error)"
+        else:
+            said += f"{limit.typ:.0%} is allowed"
+        if margin is None or margin < 0:
             said += "; try: a faster clock, or pulses that do not change together"
         found.append(
             Finding(
@@ -108,7 +114,7 @@ def _moved(board: Board, firing: Firing) -> list[Finding]:
                 None,
                 label,
                 value,
-                limit.typ,
+                None if margin is None else limit.typ,
                 "1",
                 margin,
                 m.pulse.start,

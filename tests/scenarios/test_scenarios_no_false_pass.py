@@ -129,3 +129,42 @@ def test_a_worse_reading_in_an_unproven_corner_is_not_kept_quiet() -> None:
 def test_a_dip_that_only_the_coarse_run_has_fails_the_refinement() -> None:
     coarse, fine = finding(2.0, 2.5, lasting=2e-3, verdict="fail"), finding(2.0, 2.5, lasting=0.4e-3)
     assert not refinement([coarse], [fine], (100, 200), "nominal", "pair").passed
+
+
+@pytest.mark.engine
+def test_a_fast_coil_is_proven_on_a_long_pattern(tmp_path: Path) -> None:
+    """Its L/R of 20 us must not hold every rung of the ladder to one and the same step."""
+    board = SMALL.replace('"24 ohm"', '"50 ohm"').replace('"30 mH"', '"1 mH"').replace('"0.5 A"', '"0.3 A"')
+    status, found, _, _ = fire(tmp_path, board, 'duration = "200 ms"\n' + ONE_PULSE)
+    assert (status, found["audit"]["passed"]) == (0, True)
+
+
+def test_two_channels_of_one_name_are_refused(tmp_path: Path) -> None:
+    board = SMALL.replace('[channels."0-1"]\n', '[channels."0-1"]\nlabel = "gate"\n')
+    status, _, _, err = fire(tmp_path, board)
+    assert status == 2
+    assert 'channels 0 and 1 are both labelled "gate"' in err
+
+
+@pytest.mark.engine
+def test_a_short_pulse_that_comes_a_little_late_is_no_failure_nobody_asked_for(tmp_path: Path) -> None:
+    # 20 us at 1 MHz and 8 bits: 8.5 us late, which is more than a tenth and less than all of it.
+    pulse = '[[pulses]]\nchannels = "0"\nstart = "1 ms"\nwidth = "20 us"\n'
+    _, found, _, _ = fire(tmp_path, SMALL, pulse)
+    late = worst(found, "pulse-timing")
+    assert (late["verdict"], late["limit"]) == ("limit-missing", None)
+    _, found, _, _ = fire(tmp_path, SMALL + 'pulse_error = "10 %"\n', pulse)
+    assert worst(found, "pulse-timing")["verdict"] == "fail"
+
+
+def test_a_folder_where_a_result_should_stand_is_a_wrong_call(tmp_path: Path) -> None:
+    (tmp_path / "out" / "findings.json").mkdir(parents=True)
+    (tmp_path / "board.toml").write_text(SMALL)
+    (tmp_path / "pattern.toml").write_text(PULSES)
+    done = subprocess.run(
+        [sys.executable, "-m", "boardsim.cli", "fire", "board.toml", "pattern.toml", "--out", "out"],
+        cwd=tmp_path, capture_output=True, text=True, check=False,
+    )  # fmt: skip
+    assert done.returncode == 2
+    assert "cannot be used as a folder for results" in done.stderr
+    assert "Traceback" not in done.stderr
