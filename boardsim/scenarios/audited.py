@@ -25,15 +25,14 @@ from boardsim.verdict.readings import Readings, take_readings
 # Gear's method, since the trapezoidal rule fails passivity on clamped coils at any tolerance worth its time. A rung
 # takes at least 1.5 times the points of the one before on most boards; those from the third on are for what fails.
 LADDER = (
-    Settings("gear", 1e-3, 500e-6),
-    Settings("gear", 2e-4, 500e-6),
-    Settings("gear", 4e-5, 300e-6),
-    Settings("gear", 8e-6, 150e-6),
-    Settings("gear", 1.5e-6, 75e-6),
+    Settings("gear", 2.5e-4, 500e-6),
+    Settings("gear", 4e-5, 500e-6),
+    Settings("gear", 6e-6, 250e-6),
+    Settings("gear", 8e-7, 120e-6),
 )
-FINE = 2  # the rung that decks are written with
+FINE = 1  # the rung that findings are usually read from, and that decks are written with
 _SHORTEST_STEP = 5e-6  # [s], of the first rung: a faster coil is left to the engine's own estimate
-_STEPS_PER_TAU = (6, 10, 16, 25, 40)  # at least, whatever the engine's own error estimate allows
+_STEPS_PER_TAU = (6, 10, 16, 25)  # at least, whatever the engine's own error estimate allows
 
 
 def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
@@ -69,7 +68,7 @@ class Trial:
 
     @property
     def sound(self) -> bool:
-        """Whether the run is fit to be reported, once another agrees with it."""
+        """Whether the run passes by itself, before it is compared with another."""
         return all(entry.passed for entry in self.audit)
 
 
@@ -127,7 +126,7 @@ def run_corner(
     time_limit: float = DEFAULT_TIME_LIMIT,
     cancel: threading.Event | None = None,
 ) -> CornerResult:
-    """Run a corner coarse and fine; accept the fine run if it passes by itself and the coarse one agrees with it.
+    """Run a corner coarse and fine; accept the fine run if both pass by themselves and agree.
 
     Parameters
     ----------
@@ -179,8 +178,8 @@ def run_corner(
             pair = f"{coarse.settings} against {settings}"
             entry = refinement(coarse.findings, trial.findings, points, corner.name, pair)
             entries.append(entry)
-            if entry.passed and trial.sound:
-                decisive = (*trial.audit, entry)
+            if entry.passed and trial.sound and coarse.sound:
+                decisive = (*coarse.audit, *trial.audit, entry)
                 progress(1.0)
                 engine.discard_kept()
                 return CornerResult(
@@ -216,9 +215,10 @@ def _scaled(progress: Progress, begin: float, end: float) -> Progress:
 
 
 def _coarser(before: Sequence[Trial], trial: Trial) -> Trial | None:
-    """The last run that has few enough points for this one to be its refinement; else the first run."""
-    few = [t for t in before if trial.readings.points >= POINTS * t.readings.points]
-    return few[-1] if few else before[0] if before else None
+    """The last sound run that has few enough points for this one to be its refinement; else the first run."""
+    candidates = [t for t in before if t.sound] or list(before)
+    few = [t for t in candidates if trial.readings.points >= POINTS * t.readings.points]
+    return few[-1] if few else candidates[0] if candidates else None
 
 
 def _full_energy(board: Board, corner: Corner) -> list[float]:

@@ -15,7 +15,7 @@ def write_deck(board: Board, pattern: Pattern, number: int) -> tuple[tuple[str, 
 
     Notes
     -----
-    With settings one step finer than findings are usually read with.
+    With the settings that findings are usually read with.
     """
     wanted = list(corners(board, min(p.width for p in pattern.pulses)))
     longest = slow_rail(board)

@@ -153,9 +153,9 @@ class CornerAudit:
     ----------
     corner : str
     entries : tuple of AuditEntry
-        Of the run that is reported, and its comparison with a coarser one; of every try where none held.
+        Of the run that is reported, of the coarser one, and their comparison; of every try where none held.
     proven : bool
-        Whether a run of the corner passes by itself and a coarser one agrees with it.
+        Whether two runs of the corner pass by themselves and agree.
     """
 
     corner: str
