@@ -15,6 +15,9 @@ import typer
 from boardsim.errors import BoardsimError, InputError
 
 if TYPE_CHECKING:
+    from rich.console import Console
+
+    from boardsim.scenarios.crew import Crew
     from boardsim.verdict.findings import Result
 
 # Whatever needs numpy, pydantic or matplotlib is imported inside the command that uses it: `--help` must be quick.
@@ -28,7 +31,6 @@ app = typer.Typer(
     help="Checks boards that fire many coils through shift registers: a firing pattern against the limits of every part.",
 )
 
-RESULTS = ("findings.json", "junit.xml", "overview.png", "board.cir")
 EXIT_STOPPED = 130  # by the shell's convention for an interrupted command
 
 
@@ -77,26 +79,17 @@ def fire(
     """
     from boardsim.board.reader import read_board
     from boardsim.firing.pattern import read_pattern
+    from boardsim.report.folder import make_ready
+    from boardsim.report.wording import plain_path
     from boardsim.scenarios.fire import fire_pattern
-    from boardsim.verdict.findings import exit_status
 
     the_board = read_board(board)
     the_pattern = read_pattern(pattern, the_board)
-    folder = out or Path("out") / f"{_plain(the_board.name)}-{_plain(the_pattern.name)}"
-    _usable(folder)
-    try:
-        with _progress(f"{the_board.name}, {the_pattern.name}") as progress:
-            result = fire_pattern(the_board, the_pattern, folder, strict, time_limit, progress)
-    except KeyboardInterrupt:
-        typer.echo("boardsim: stopped; no result was written", err=True)
-        raise typer.Exit(EXIT_STOPPED) from None
-    try:
-        _report(result, folder)
-        sys.stdout.flush()
-    except BrokenPipeError:
-        # Whoever read the output has stopped, as `head` does; the files are written and the verdict stands.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-    raise typer.Exit(exit_status(result.verdict))
+    folder = out or Path("out") / f"{plain_path(the_board.name)}-{plain_path(the_pattern.name)}"
+    make_ready(folder)
+    with _working(f"{the_board.name}, {the_pattern.name}", time_limit) as (crew, progress):
+        result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress)
+    _present(result, folder)
 
 
 @app.command(
@@ -165,24 +158,17 @@ def begin(
     typer.echo(f"\nnow try: boardsim fire {written[0]} {written[1]}")
 
 
-def _plain(name: str) -> str:
-    """A name as part of a path."""
-    return "".join(c if c.isalnum() else "-" for c in name.lower()).strip("-") or "board"
-
-
-def _usable(folder: Path) -> None:
-    """Complain before the run, not after it."""
+@contextlib.contextmanager
+def _working(what: str, time_limit: float) -> Iterator[tuple[Crew, Callable[[float], None]]]:
+    """Those who run the engine, and a progress bar; an interrupt ends every run and leaves no result."""
+    from boardsim.scenarios.crew import Crew
 
     try:
-        folder.mkdir(parents=True, exist_ok=True)
-        if not os.access(folder, os.W_OK | os.X_OK):
-            raise PermissionError(13, "no permission to write")
-        for name in RESULTS:
-            (folder / name).unlink(missing_ok=True)  # an old verdict must not stand for a run that comes to nothing
-    except OSError as err:
-        raise InputError(
-            f"{folder}: cannot be used as a folder for results: {err.strerror or err}; choose another with --out"
-        ) from err
+        with Crew(time_limit=time_limit) as crew, _progress(what) as progress:
+            yield crew, progress
+    except KeyboardInterrupt:
+        typer.echo("boardsim: stopped; no result was written", err=True)
+        raise typer.Exit(EXIT_STOPPED) from None
 
 
 @contextlib.contextmanager
@@ -203,25 +189,38 @@ def _progress(what: str) -> Iterator[Callable[[float], None]]:
         yield lambda share: bar.update(task, completed=share)
 
 
-def _report(result: Result, folder: Path) -> None:
+def _present(result: Result, folder: Path) -> None:
+    """Write a result's files, print it, and end with its status."""
+    from boardsim.report.folder import write_results
+    from boardsim.report.terminal import print_result
+    from boardsim.verdict.findings import exit_status
+
+    try:
+        picture = write_results(result, folder)
+    except KeyboardInterrupt:
+        typer.echo(f"boardsim: stopped; the results in {folder} are not complete", err=True)
+        raise typer.Exit(EXIT_STOPPED) from None
+    with _reader_may_leave():
+        print_result(result, _console(), picture, folder)
+    raise typer.Exit(exit_status(result.verdict))
+
+
+def _console() -> Console:
+    """Standard output, 100 columns wide where it is no terminal."""
     from rich.console import Console
 
-    from boardsim.report.files import write_text
-    from boardsim.report.json_report import write_findings
-    from boardsim.report.junit import write_junit
-    from boardsim.report.overview import draw_overview
-    from boardsim.report.terminal import print_result
-
-    picture = folder / "overview.png"
-    if result.deck:
-        write_text(folder / "board.cir", result.deck)
-    write_findings(result, folder / "findings.json")
-    write_junit(result, folder / "junit.xml")
-    draw_overview(result, picture)
     console = Console(soft_wrap=False)
-    if not console.is_terminal:
-        console = Console(width=100)
-    print_result(result, console, picture, folder)
+    return console if console.is_terminal else Console(width=100)
+
+
+@contextlib.contextmanager
+def _reader_may_leave() -> Iterator[None]:
+    """Whoever reads the output may stop, as `head` does: the files are written and the verdict stands."""
+    try:
+        yield
+        sys.stdout.flush()
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _stop(*_: object) -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Sequence
 
 from boardsim.errors import QuantityError
 
@@ -58,3 +59,22 @@ def write_range(numbers: tuple[int, ...] | list[int]) -> str:
         else:
             runs.append([n, n])
     return ", ".join(str(a) if a == b else f"{a}-{b}" if b > a + 1 else f"{a}, {b}" for a, b in runs)
+
+
+def write_labels(labels: Sequence[str]) -> str:
+    """Several channels by the board's own names, short where they differ in a number only.
+
+    Examples
+    --------
+    >>> write_labels(["lane 0", "lane 1", "lane 2", "lane 7"])
+    'lanes 0-2, 7'
+    >>> write_labels(["sorting gate", "lane 1"])
+    'sorting gate, lane 1'
+    """
+    if len(labels) == 1:
+        return labels[0]
+    split = [re.fullmatch(r"(.*\D)(\d+)", label) for label in labels]
+    stems = {match[1] for match in split if match}
+    if all(split) and len(stems) == 1 and (stem := stems.pop().strip()):
+        return f"{stem}s {write_range([int(match[2]) for match in split if match])}"
+    return ", ".join(labels[:8]) + (f" and {len(labels) - 8} more" if len(labels) > 8 else "")

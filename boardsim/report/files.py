@@ -43,6 +43,29 @@ def write_whole(path: Path, write: Callable[[Path], None]) -> None:
         ) from err
 
 
+def write_bytes(path: Path, content: bytes) -> None:
+    """Write bytes, whole or not at all.
+
+    Raises
+    ------
+    InputError
+        If the folder or the file cannot be written.
+    """
+    write_whole(path, lambda beside: _dump(beside, content))
+
+
+def remove_unfinished(folder: Path) -> None:
+    """Remove what a killed run left beside its files' places.
+
+    Raises
+    ------
+    OSError
+        If the folder cannot be read or a file not be removed.
+    """
+    for left in folder.glob(".*.part"):
+        left.unlink(missing_ok=True)
+
+
 def write_text(path: Path, text: str) -> None:
     """Write text as UTF-8, whole or not at all.
 
@@ -52,7 +75,7 @@ def write_text(path: Path, text: str) -> None:
         If the folder or the file cannot be written.
     """
     # A name taken from a file system may hold bytes that are no UTF-8; a report must not fail for that.
-    write_whole(path, lambda beside: _dump(beside, text.encode("utf-8", "replace")))
+    write_bytes(path, text.encode("utf-8", "replace"))
 
 
 def _dump(path: Path, content: bytes) -> None:

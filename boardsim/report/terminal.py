@@ -11,6 +11,7 @@ from rich.padding import Padding
 from rich.table import Table
 from rich.text import Text
 
+from boardsim.board.ranges import write_labels
 from boardsim.quantities import in_units
 from boardsim.report.wording import (
     Group,
@@ -139,7 +140,7 @@ def _sentences(console: Console, groups: list[Group]) -> None:
         worst = group.worst
         sentence = _text(worst.sentence)
         if len(group.members) > 1:
-            sentence.append(f" (the same for {len(group.members) - 1} more)", "dim")
+            sentence.append(f" (the same for {plain(write_labels([f.label for f in group.members[1:]]))})", "dim")
         if "from memory" in worst.source:
             sentence.append(" [limit from memory: check it against your datasheet]", "dim")
         if worst.nominal_only:

@@ -88,6 +88,11 @@ def plain(text: str) -> str:
     return "".join(c for c in one_line if unicodedata.category(c) not in ("Cc", "Cf", "Cs"))
 
 
+def plain_path(name: str) -> str:
+    """A name as part of a path."""
+    return "".join(c if c.isalnum() else "-" for c in name.lower()).strip("-") or "board"
+
+
 def value_and_limit(finding: Finding) -> tuple[str, str]:
     """Reading and limit, with as many digits as it takes to see that they differ."""
     if finding.limit is None:

@@ -13,12 +13,14 @@ from boardsim.board.reader import Board
 from boardsim.circuit.assemble import assemble, windows
 from boardsim.circuit.deck import Deck, Settings
 from boardsim.engine.run import DEFAULT_TIME_LIMIT, Engine
+from boardsim.engine.waves import Waves
 from boardsim.errors import DeckRejected, EngineCrash, EngineTimeout, InputError, NoConvergence
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Corner
 from boardsim.verdict.audit import POINTS, density, passivity, refinement
 from boardsim.verdict.bench import Bench
-from boardsim.verdict.findings import AuditEntry, CornerAudit, Finding
+from boardsim.verdict.closeups import Closeup, take_closeups
+from boardsim.verdict.findings import AuditEntry, CornerAudit, Finding, Reading
 from boardsim.verdict.judge import judge
 from boardsim.verdict.readings import Readings, take_readings
 
@@ -49,7 +51,7 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
 
 
 Progress = Callable[[float], None]
-
+Measure = Callable[[Waves, Deck], tuple[Reading, ...]]
 
 # Where a big capacitor's charge is rounded, a picosecond step makes microamperes of it: then Newton's method cannot
 # meet the usual absolute tolerance. It is still far below any current that decides.
@@ -58,13 +60,15 @@ LOOSE_ABSTOL = 1e-5  # [A]
 
 @dataclass(frozen=True)
 class Trial:
-    """One run of one deck."""
+    """One run of one deck; `measured` is what the scenario asked for beyond findings."""
 
     deck: Deck
     settings: Settings
     readings: Readings
     findings: tuple[Finding, ...]
     audit: tuple[AuditEntry, ...]
+    closeups: tuple[Closeup, ...] = ()
+    measured: tuple[Reading, ...] = ()
 
     @property
     def sound(self) -> bool:
@@ -94,6 +98,9 @@ class _Job:
     bench: Bench
     floor: float
     seconds: dict[str, float]
+    also: Sequence[Finding]
+    measure: Measure | None
+    pictured: bool
 
     def run_either(self, settings: Settings, progress: Progress) -> Trial:
         """Run; where that does not converge, once more with a looser absolute tolerance of currents."""
@@ -109,10 +116,14 @@ class _Job:
             self.seconds["simulate"] += time.perf_counter() - clock
             clock = time.perf_counter()
             readings = take_readings(waves, self.deck, self.firing)
-        findings = judge(readings, self.deck, self.firing, self.bench)
+            findings = judge(readings, self.deck, self.firing, self.bench)
+            corner, board = self.bench.corner, self.bench.board
+            shown = [*findings, *self.also]
+            closeups = take_closeups(waves, self.deck, board, self.firing, shown, corner) if self.pictured else ()
+            measured = self.measure(waves, self.deck) if self.measure is not None else ()
         self.seconds["read"] += time.perf_counter() - clock
-        audit = tuple(check(readings, self.bench.corner, str(settings), self.floor) for check in (passivity, density))
-        return Trial(self.deck, settings, readings, tuple(findings), audit)
+        audit = tuple(check(readings, corner, str(settings), self.floor) for check in (passivity, density))
+        return Trial(self.deck, settings, readings, tuple(findings), audit, closeups, measured)
 
 
 def run_corner(
@@ -125,6 +136,9 @@ def run_corner(
     ladder: Sequence[Settings] = LADDER,
     time_limit: float = DEFAULT_TIME_LIMIT,
     cancel: threading.Event | None = None,
+    also: Sequence[Finding] = (),
+    measure: Measure | None = None,
+    pictured: bool = True,
 ) -> CornerResult:
     """Run a corner coarse and fine; accept the fine run if both pass by themselves and agree.
 
@@ -140,6 +154,12 @@ def run_corner(
         Per run. [s]
     cancel : threading.Event
         Ends the corner from another thread when set.
+    also : sequence of Finding
+        Findings that need no waveform, but whose close-ups show this corner's.
+    measure : callable
+        Takes further readings from a run's waveforms; two runs must agree on them as on findings.
+    pictured : bool
+        Whether close-ups are wanted.
 
     Raises
     ------
@@ -157,7 +177,7 @@ def run_corner(
     trials: list[Trial] = []
     failure: Exception | None = None
     with Engine(keep, time_limit, cancel or threading.Event()) as engine:
-        job = _Job(engine, deck, firing, bench, floor, seconds)
+        job = _Job(engine, deck, firing, bench, floor, seconds, also, measure, pictured)
         rungs = fitted(ladder, board)
         _fits(deck, rungs[0], engine.folder)
         for settings, (begin, end) in zip(rungs, (*_SHARES, *[(0.95, 0.95)] * len(ladder)), strict=False):
@@ -176,7 +196,8 @@ def run_corner(
                 continue
             points = (coarse.readings.points, trial.readings.points)
             pair = f"{coarse.settings} against {settings}"
-            entry = refinement(coarse.findings, trial.findings, points, corner.name, pair)
+            measured = (coarse.measured, trial.measured)
+            entry = refinement(coarse.findings, trial.findings, points, corner.name, pair, measured)
             entries.append(entry)
             if entry.passed and trial.sound and coarse.sound:
                 decisive = (*coarse.audit, *trial.audit, entry)

@@ -2,24 +2,29 @@
 
 from __future__ import annotations
 
-import os
-import threading
 import time
-from collections.abc import Callable, Iterable, Sequence
-from concurrent.futures import ThreadPoolExecutor
+from collections.abc import Callable, Sequence
 from dataclasses import replace
 from pathlib import Path
 
-from boardsim.board.corners import corners, nominal_only, not_varied, slow_rail
+from boardsim.board.corners import corners, slow_rail
 from boardsim.board.reader import Board
-from boardsim.engine.run import DEFAULT_TIME_LIMIT
 from boardsim.firing.pattern import Pattern
 from boardsim.firing.schedule import Firing, fire
-from boardsim.parts.base import Assumption
 from boardsim.quantities import in_units
-from boardsim.scenarios.audited import CornerResult, run_corner, unproven
-from boardsim.verdict.bench import Bench
-from boardsim.verdict.findings import Finding, Result, Timing, Traces, overall, severity
+from boardsim.scenarios.all_corners import (
+    assumptions_of,
+    by_corner,
+    engine_of,
+    failures_of,
+    run_corners,
+    timings_of,
+    worst,
+)
+from boardsim.scenarios.audited import CornerResult
+from boardsim.scenarios.crew import Crew
+from boardsim.verdict.closeups import Closeup, take_closeups, wants_closeup
+from boardsim.verdict.findings import Finding, Result, Timing, Traces, overall
 from boardsim.verdict.switching import judge_switching
 
 
@@ -28,9 +33,8 @@ def fire_pattern(
     pattern: Pattern,
     keep: Path,
     strict: bool = False,
-    time_limit: float = DEFAULT_TIME_LIMIT,
+    crew: Crew | None = None,
     progress: Callable[[float], None] | None = None,
-    workers: int | None = None,
 ) -> Result:
     """Fire a pattern on a board.
 
@@ -40,12 +44,10 @@ def fire_pattern(
         Where deck and log of a failed run are kept.
     strict : bool
         Whether a missing limit counts as broken.
-    time_limit : float
-        Per run of the engine. [s]
+    crew : Crew
+        Who runs the corners; one of its own if absent.
     progress : callable
         Told the share of the work done, from any thread.
-    workers : int
-        Corners at a time; the number of cores if absent.
 
     Raises
     ------
@@ -54,65 +56,43 @@ def fire_pattern(
     InputError
         If the waveforms would not fit on the disk.
     """
+    if crew is None:
+        with Crew() as own:
+            return fire_pattern(board, pattern, keep, strict, own, progress)
     began = time.perf_counter()
     firing = fire(board, pattern)
     spent_firing = time.perf_counter() - began
-    only = nominal_only(board)
-    wanted = list(corners(board, min(p.width for p in pattern.pulses)))
-    shares = dict.fromkeys((c.name for c in wanted), 0.0)
-    lock, cancel = threading.Lock(), threading.Event()
-
-    def report(name: str, share: float) -> None:
-        if progress is not None:
-            with lock:
-                shares[name] = max(shares[name], share)
-                progress(sum(shares.values()) / len(shares))
-
-    def one(i: int) -> CornerResult:
-        corner = wanted[i]
-        bench = Bench(board, corner.name, only)
-        folder = keep if len(wanted) == 1 else keep / f"corner{i + 1}"
-        return run_corner(
-            board, firing, corner, bench, folder, lambda s: report(corner.name, s), time_limit=time_limit, cancel=cancel
-        )
-
+    switching = judge_switching(board, firing)
+    wanted = corners(board, min(p.width for p in pattern.pulses))
     began = time.perf_counter()
-    with ThreadPoolExecutor(max_workers=workers or os.cpu_count() or 1) as pool:
-        try:
-            results = list(pool.map(one, range(len(wanted))))
-            longest = slow_rail(board)
-            if longest is not None and any(_dips(board, r) for r in results):
-                wanted.append(longest)
-                shares[longest.name] = 0.0
-                results.append(one(len(wanted) - 1))
-        finally:
-            cancel.set()  # nothing runs any more, unless something went wrong: then the pool need not wait for it
+    results = run_corners(board, firing, wanted, keep, crew, progress, also=switching)
+    longest = slow_rail(board)
+    if longest is not None and any(_dips(board, r) for r in results):
+        results += run_corners(board, firing, (longest,), keep / "longest", crew, also=switching)
     spent_running = time.perf_counter() - began
 
-    findings = worst([*_by_corner(results), judge_switching(board, firing)])
+    findings = worst([*by_corner(results), switching])
     if not any(r.trial for r in results):
         findings = [f for f in findings if f.verdict == "fail"]  # what is left was never put to a circuit
     proven = all(r.audit.proven for r in results)
     sampled = [r for r in results if r.trial is not None]
+    shown = _shown(sampled)
     return Result(
         board.name,
         pattern.name,
         firing.duration,
         overall(findings, proven, strict),
         tuple(findings),
-        _assumptions(board, sampled),
+        assumptions_of(board, sampled),
         tuple(r.audit for r in results),
         _firing_sentences(board, firing),
-        _traces(board, firing, sampled),
+        _traces(board, firing, shown),
         _deciding_deck(findings, sampled),
-        (
-            Timing("register frames", spent_firing),
-            Timing("simulation, all corners and repeats", sum(r.seconds["simulate"] for r in results)),
-            Timing("readings", sum(r.seconds["read"] for r in results)),
-            Timing("elapsed over all corners", spent_running),
-        ),
-        tuple(f"{r.corner.name}: {r.failure}" for r in results if r.failure is not None and not r.audit.proven),
-        next((r.engine for r in results if r.trial), "ngspice"),
+        (Timing("register frames", spent_firing), *timings_of(results, spent_running)),
+        failures_of(results),
+        engine_of(results),
+        strict,
+        _closeups(findings, board, firing, sampled, shown),
     )
 
 
@@ -124,44 +104,6 @@ def _dips(board: Board, result: CornerResult) -> bool:
         and result.trial is not None
         and any(d.lasting >= limit.lasting.min / 2 for d in result.trial.readings.guarded)
     )
-
-
-def _by_corner(results: Iterable[CornerResult]) -> Iterable[list[Finding]]:
-    for r in results:
-        if r.trial is None:
-            continue
-        if r.audit.proven:
-            yield list(r.trial.findings)
-        else:
-            broken = next((e.criterion for e in reversed(r.audit.entries) if not e.passed), "not run twice")
-            yield unproven(r.trial.findings, f"audit failed, {broken}")
-
-
-def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
-    """Of every question the worst answer among the corners, broken limits first.
-
-    Where a corner whose audit failed reads worse than the answer that is kept, the sentence says so.
-    """
-    kept: dict[tuple[str, str, str, str], Finding] = {}
-    for findings in runs:
-        for f in findings:
-            if f.key not in kept or severity(f) < severity(kept[f.key]):
-                kept[f.key] = f
-    for f in (f for findings in runs for f in findings if f.verdict == "unproven"):
-        mine = kept[f.key]
-        worse = f.value > mine.value if f.worse == "high" else f.value < mine.value
-        if worse and mine.verdict != "unproven":
-            more = f"; unproven, but worse: {in_units(f.value, f.unit)} ({f.corner})"
-            kept[f.key] = replace(mine, sentence=mine.sentence + more)
-    return sorted(kept.values(), key=severity)
-
-
-def _assumptions(board: Board, results: Sequence[CornerResult]) -> tuple[Assumption, ...]:
-    found = dict.fromkeys((*board.assumptions, *not_varied(board)))
-    for r in results:
-        if r.trial is not None:
-            found.update(dict.fromkeys(r.trial.deck.assumptions))
-    return tuple(found)
 
 
 def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
@@ -181,12 +123,32 @@ def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
     return tuple(lines)
 
 
-def _traces(board: Board, firing: Firing, results: Sequence[CornerResult]) -> Traces | None:
+def _shown(results: Sequence[CornerResult]) -> CornerResult | None:
     """Pictures show the corner in which the rail is lowest."""
-    if not results:
-        return None
-    shown = min(results, key=lambda r: r.trial.readings.low[None, "v_rail"][0] if r.trial else float("inf"))
-    if shown.trial is None:
+    return min(
+        results, key=lambda r: r.trial.readings.low[None, "v_rail"][0] if r.trial else float("inf"), default=None
+    )
+
+
+def _closeups(
+    findings: Sequence[Finding],
+    board: Board,
+    firing: Firing,
+    results: Sequence[CornerResult],
+    shown: CornerResult | None,
+) -> tuple[Closeup, ...]:
+    """One for each finding that wants one, from the corner that it names; in the order of the findings."""
+    taken = {(c.finding, r.corner.name): c for r in results if r.trial is not None for c in r.trial.closeups}
+    in_view = shown.corner.name if shown is not None else ""
+    found: list[Closeup] = []
+    for f in filter(wants_closeup, findings):
+        one = taken.get((f.key, f.corner or in_view))
+        found += [one] if one is not None else take_closeups(None, None, board, firing, [f], f.corner)
+    return tuple(found)
+
+
+def _traces(board: Board, firing: Firing, shown: CornerResult | None) -> Traces | None:
+    if shown is None or shown.trial is None:
         return None
     e = shown.trial.readings.envelopes
     named = {"rail": "coil rail at the board", "total": "all coils together", "supply": "out of the supply"}

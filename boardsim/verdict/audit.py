@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
-from boardsim.verdict.findings import AuditEntry, Finding
+from boardsim.verdict.findings import AuditEntry, Finding, Reading
 from boardsim.verdict.readings import PortReading, Readings
 
 SHARE = 0.01  # of the deciding energy or reading
@@ -69,7 +69,12 @@ def density(readings: Readings, corner: str, run: str, floor: float) -> AuditEnt
 
 
 def refinement(
-    coarse: Sequence[Finding], fine: Sequence[Finding], points: tuple[int, int], corner: str, run: str
+    coarse: Sequence[Finding],
+    fine: Sequence[Finding],
+    points: tuple[int, int],
+    corner: str,
+    run: str,
+    readings: tuple[Sequence[Reading], Sequence[Reading]] = ((), ()),
 ) -> AuditEntry:
     """A repeat with at least 1.5 times the points must not move any deciding reading by 1 %.
 
@@ -81,6 +86,8 @@ def refinement(
         Of the run and of its repeat.
     points : tuple of int
         Of the run and of its repeat.
+    readings : tuple of two sequences of Reading
+        Of the run and of its repeat, what no finding holds; all of them decide.
     """
     if points[1] < POINTS * points[0]:
         ratio = points[1] / points[0]
@@ -95,6 +102,14 @@ def refinement(
         if _share(moved, bound) > worst / allowed:
             worst, allowed = moved if math.isfinite(moved) else math.inf, bound
             subject = f"{f.label}: {f.quantity} moved by"
+    others = {(r.quantity, r.label): r for r in readings[0]}
+    for r in readings[1]:
+        earlier = others.get((r.quantity, r.label))
+        size = max(abs(r.value), SMALL * r.scale)
+        shift = abs(earlier.value - r.value) / size if earlier is not None and size else float(earlier is None)
+        if _share(shift, SHARE) > worst / allowed:
+            worst, allowed = shift if math.isfinite(shift) else math.inf, SHARE
+            subject = f"{r.label}: {r.quantity} moved by"
     if before:
         gone = next(iter(before.values()))
         worst, allowed, subject = 1.0, SHARE, f"{gone.label}: {gone.quantity} is gone, moved by"

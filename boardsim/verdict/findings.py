@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import datetime
 import math
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,8 +15,53 @@ from boardsim.errors import EXIT_LIMIT_BROKEN, EXIT_PASS, EXIT_UNPROVEN
 from boardsim.parts.base import Assumption
 from boardsim.parts.rules import Consequence
 
+if TYPE_CHECKING:
+    from boardsim.verdict.closeups import Closeup
+    from boardsim.verdict.studies import Release, Volley
+
 Verdict = Literal["pass", "tight", "fail", "unproven", "limit-missing"]
+Shape = Literal["value", "mean", "energy", "count"]
 Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Reading:
+    """A number taken from waveforms that no limit belongs to.
+
+    Attributes
+    ----------
+    quantity, label : str
+        What was read, and where.
+    value, scale : float
+        The number, and the natural size of the quantity; a value that is small against it need not be as exact. [unit]
+    at : float or None
+        When. [s]
+    """
+
+    quantity: str
+    label: str
+    value: float
+    unit: str
+    scale: float = 0.0
+    at: float | None = None
+
+
+@dataclass(frozen=True)
+class Acceptance:
+    """A broken limit that somebody knows of and lives with, until a day; from then on it counts again.
+
+    Attributes
+    ----------
+    reason : str
+    until : datetime.date
+        The last day on which it is accepted.
+    expired : bool
+        Whether that day had passed when the run was judged.
+    """
+
+    reason: str
+    until: datetime.date
+    expired: bool
 
 
 @dataclass(frozen=True)
@@ -48,6 +94,14 @@ class Finding:
         Which way a reading gets worse.
     scale : float
         Natural size of the quantity, against which a reading without a limit is compared. [unit]
+    probes : tuple of str
+        The quantities that were read; their product is what the reading is taken from. Empty where no waveform was.
+    shape : {"value", "mean", "energy", "count"}
+        Whether the reading is a value of the waveform, its mean, its integral over one event, or a count of channels.
+    channels : tuple of int
+        Those that are counted, where channels are.
+    accepted : Acceptance or None
+        Whether somebody knows of the broken limit.
     """
 
     check: str
@@ -70,6 +124,15 @@ class Finding:
     assumed: tuple[str, ...] = ()
     worse: Literal["high", "low"] = "high"
     scale: float = 0.0
+    probes: tuple[str, ...] = ()
+    shape: Shape = "value"
+    channels: tuple[int, ...] = ()
+    accepted: Acceptance | None = None
+
+    @property
+    def excused(self) -> bool:
+        """Whether it is accepted today, and so counts for nothing in the verdict of a run."""
+        return self.accepted is not None and not self.accepted.expired
 
     @property
     def key(self) -> tuple[str, str, str, str]:
@@ -99,8 +162,14 @@ def severity(finding: Finding) -> tuple[int, float, float, float]:
 
 
 def overall(findings: Iterable[Finding], proven: bool, strict: bool) -> Verdict:
-    """The verdict of a run: the worst of its findings; a missing limit counts as broken under `strict`."""
-    verdicts = {f.verdict for f in findings}
+    """The verdict of a run: the worst of its findings; a missing limit counts as broken under `strict`.
+
+    What is accepted today does not count; a run of which all is accepted passes.
+    """
+    findings = list(findings)
+    verdicts = {f.verdict for f in findings if not f.excused}
+    if findings and not verdicts:
+        verdicts = {"pass"}
     if "fail" in verdicts or (strict and "limit-missing" in verdicts):
         return "fail"
     if not proven or "unproven" in verdicts or not verdicts:
@@ -235,6 +304,12 @@ class Result:
         Name and version of the simulator.
     deck : str
         The deck of the corner that decides, with the settings that passed the audit.
+    strict : bool
+        Whether a missing limit counted as broken.
+    closeups : tuple of Closeup
+        One for each finding that fails or is tight.
+    study : Volley or Release or None
+        What the scenario found beyond findings: its table, and what its picture is drawn from.
     """
 
     board: str
@@ -250,6 +325,9 @@ class Result:
     timings: tuple[Timing, ...] = ()
     notes: tuple[str, ...] = field(default=())
     engine: str = ""
+    strict: bool = False
+    closeups: tuple[Closeup, ...] = ()
+    study: Volley | Release | None = None
 
     @property
     def proven(self) -> bool:

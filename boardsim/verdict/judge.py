@@ -16,12 +16,13 @@ from boardsim.parts.rules import (
     PeakRule,
     PullInRule,
     ReleaseRule,
+    Rule,
 )
 from boardsim.quantities import in_units
 from boardsim.verdict.avalanche import judge_breakdown
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.coils import judge_pull_in, judge_release
-from boardsim.verdict.findings import Finding
+from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.rail import judge_ceiling, judge_dip
 from boardsim.verdict.readings import Readings
 
@@ -42,8 +43,35 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
         scale = readings.high.get((placed.channel, "i_coil"), (0.0, 0.0))[0]
         for finding in _apply(placed, readings, firing, bench):
             size = scale if finding.unit == "A" else 0.0
-            found.append(replace(finding, corner=bench.corner, nominal_only=nominal, assumed=assumed, scale=size))
+            found.append(
+                replace(
+                    finding,
+                    corner=bench.corner,
+                    nominal_only=nominal,
+                    assumed=assumed,
+                    scale=size,
+                    probes=_probes(placed.rule, finding),
+                    shape=_shape(placed.rule, finding),
+                )
+            )
     return found
+
+
+def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
+    """What a finding of a rule was read from."""
+    match rule:
+        case MeanRule():
+            return rule.quantities
+        case BreakdownRule():
+            return {"V": (rule.voltage,), "A": (rule.current,)}.get(finding.unit, (rule.voltage, rule.current))
+        case _:
+            return (rule.quantity,)
+
+
+def _shape(rule: Rule, finding: Finding) -> Shape:
+    if isinstance(rule, MeanRule):
+        return "mean"
+    return "energy" if finding.unit == "J" else "value"
 
 
 def _beside_the_point(name: str, placed: PlacedRule) -> bool:

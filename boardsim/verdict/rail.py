@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from boardsim.board.ranges import write_range
+from boardsim.board.ranges import write_labels
 from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
 from boardsim.firing.schedule import Firing
@@ -15,30 +15,14 @@ from boardsim.verdict.readings import Readings
 _JUST_BEFORE = 2e-6  # [s], longer than a switch takes
 
 
-def _who(board: Board, channels: tuple[int, ...]) -> str:
-    """The channels by the board's own names, such as "lane 0-23"."""
-    if not channels:
-        return "no channel"
-    labels = [board.channel(c).label for c in channels]
-    stems = {label.rstrip("0123456789") for label in labels}
-    if len(labels) == 1:
-        return labels[0]
-    if len(stems) == 1 and (stem := stems.pop()).strip():
-        numbers = [int(label[len(stem) :]) for label in labels if label[len(stem) :]]
-        if len(numbers) == len(labels):
-            return f"{stem.strip()}s {write_range(numbers)}"
-    return f"channels {write_range(list(channels))}"
-
-
 def _together(board: Board, firing: Firing, at: float) -> str:
     """Who was on just before a time: at the very edge the outputs have already changed."""
     on = firing.channels_on(at - _JUST_BEFORE) or firing.channels_on(at) or firing.channels_on(at - 50 * _JUST_BEFORE)
     number = len(on)
     if not number:
         return "no channel was on"
-    return (
-        f"{_who(board, on)} ({number} {'channel' if number == 1 else 'channels'}) {'was' if number == 1 else 'were'} on"
-    )
+    who = write_labels([board.channel(c).label for c in on])
+    return f"{who} ({number} {'channel' if number == 1 else 'channels'}) {'was' if number == 1 else 'were'} on"
 
 
 def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:

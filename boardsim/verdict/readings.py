@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -78,13 +78,13 @@ class Readings:
     envelopes: Mapping[str, Envelope]
 
 
-class _Table:
-    """Signals of a deck as rows of a matrix over the saved vectors."""
+class SignalTable:
+    """Signals of a deck as rows of a matrix over the saved vectors; all of them, or those of `keys`."""
 
-    def __init__(self, deck: Deck, names: tuple[str, ...]):
+    def __init__(self, deck: Deck, names: tuple[str, ...], keys: Iterable[Key] | None = None):
         column = {name: i for i, name in enumerate(names)}
-        self.row = {key: i for i, key in enumerate(deck.signals)}
-        entries = [(k, self.row[key], column[v]) for key, signal in deck.signals.items() for k, v in signal]
+        self.row = {key: i for i, key in enumerate(deck.signals if keys is None else keys)}
+        entries = [(k, i, column[v]) for key, i in self.row.items() for k, v in deck.signals[key]]
         data, rows, columns = zip(*entries, strict=True)
         self.matrix = scipy.sparse.csr_matrix((data, (rows, columns)), shape=(len(self.row), len(names)))
 
@@ -109,8 +109,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     NoConvergence
         If the waveforms hold values that are no numbers.
     """
-    names = tuple(_ours(name) for name in waves.names)
-    table = _Table(deck, names)
+    names = tuple(our_name(name) for name in waves.names)
+    table = SignalTable(deck, names)
     row, start, stop = table.row, deck.window.start, deck.window.stop
     rules = [(p.channel, p.rule) for p in deck.rules]
 
@@ -193,7 +193,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     )
 
 
-def _ours(name: str) -> str:
+def our_name(name: str) -> str:
     """ngspice's name of a vector as decks save it: "l1#branch" -> "i(l1)"."""
     return f"i({name.removesuffix('#branch')})" if name.endswith("#branch") else name
 

@@ -207,6 +207,8 @@ def _at_once(
         verdict,
         sentence,
         source=f"given: {board.path.name}" if most is not None else "",
+        shape="count",
+        channels=channels,
     )
 
 

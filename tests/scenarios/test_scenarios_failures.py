@@ -12,8 +12,9 @@ from test_scenarios_fire import PULSES, SMALL
 from boardsim.board.reader import read_board
 from boardsim.errors import EngineCrash
 from boardsim.firing.pattern import read_pattern
-from boardsim.scenarios import fire as room
+from boardsim.scenarios import all_corners as room
 from boardsim.scenarios.audited import CornerResult, run_corner
+from boardsim.scenarios.fire import fire_pattern
 from boardsim.verdict.findings import CornerAudit, Result, exit_status
 
 TOLERANCED = SMALL.replace('voltage = "24 V"', 'voltage = "24 V +/- 5 %"')
@@ -38,7 +39,7 @@ def fired(
         return crash(corner) if crashes(corner) else run_corner(board, firing, corner, *rest, **named)
 
     monkeypatch.setattr(room, "run_corner", some)
-    return room.fire_pattern(the_board, read_pattern(tmp_path / "pattern.toml", the_board), tmp_path / "kept")
+    return fire_pattern(the_board, read_pattern(tmp_path / "pattern.toml", the_board), tmp_path / "kept")
 
 
 @pytest.mark.engine

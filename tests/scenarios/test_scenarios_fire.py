@@ -111,15 +111,45 @@ def test_steady_passes(tmp_path: Path) -> None:
     assert len(found["corners"]) == 4
 
 
+UNRATED = """
+[parts.unrated]
+kind = "n-mosfet"
+breakdown = "60 V"
+gate_rating = "16 V"
+continuous_current = "5 A"
+pulse_current = "20 A"
+avalanche_current = "5 A"
+avalanche_energy = "50 mJ"
+threshold = "1.7 V"
+on_resistance = [{ value = "55 mohm", gate = "4.5 V" }, { value = "45 mohm", gate = "10 V" }]
+input_capacitance = "560 pF"
+output_capacitance = "95 pF"
+reverse_capacitance = "35 pF"
+gate_drain_charge = "3 nC"
+charge_voltage = "30 V"
+"""
+
+
 @pytest.mark.engine
 def test_without_clamps_repeated_avalanche_is_not_covered_by_a_single_pulse_rating(tmp_path: Path) -> None:
     board = SMALL.replace('{ kind = "diode", diode = "fast-2a" }', '{ kind = "none" }')
+    board = board.replace("n-logic-60v", "unrated") + UNRATED
     status, found, _, _ = fire(tmp_path, board)
     energy = next(f for f in found["findings"] if f["quantity"] == "avalanche energy")
     assert (status, energy["verdict"], energy["limit"]) == (0, "limit-missing", None)
     assert "covers one pulse only" in energy["sentence"]
     status, found, _, _ = fire(tmp_path, board, PULSES, "--strict")
     assert (status, found["verdict"]) == (1, "fail")
+
+
+@pytest.mark.engine
+def test_repeated_avalanche_is_held_against_the_repetitive_rating(tmp_path: Path) -> None:
+    board = SMALL.replace('{ kind = "diode", diode = "fast-2a" }', '{ kind = "none" }')
+    board = board.replace("n-logic-60v", "unrated") + UNRATED + 'avalanche_repetitive = "1 mJ"\n'
+    status, found, _, _ = fire(tmp_path, board)
+    energy = next(f for f in found["findings"] if f["quantity"] == "avalanche energy")
+    assert (status, energy["verdict"], energy["limit"]) == (1, "fail", 1e-3)
+    assert "repetitive avalanche energy of unrated, 1.00 mJ" in energy["sentence"]
 
 
 @pytest.mark.engine

@@ -12,7 +12,7 @@ from pathlib import Path
 import pytest
 from test_scenarios_fire import PULSES, SMALL, fire, worst
 
-from boardsim.scenarios.fire import worst as worst_of
+from boardsim.scenarios.all_corners import worst as worst_of
 from boardsim.verdict.audit import refinement
 from boardsim.verdict.findings import Finding, verdict_of
 

@@ -1,0 +1,137 @@
+"""The corners of one firing: run side by side, judged, and put together; the worst of each finding counts."""
+
+from __future__ import annotations
+
+import threading
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import replace
+from pathlib import Path
+
+from boardsim.board.corners import nominal_only, not_varied
+from boardsim.board.reader import Board
+from boardsim.firing.schedule import Firing
+from boardsim.parts.base import Assumption, Corner
+from boardsim.quantities import in_units
+from boardsim.scenarios.audited import CornerResult, Measure, run_corner, unproven
+from boardsim.scenarios.crew import Crew
+from boardsim.verdict.bench import Bench
+from boardsim.verdict.findings import Finding, Timing, severity
+
+
+def run_corners(
+    board: Board,
+    firing: Firing,
+    wanted: Sequence[Corner],
+    keep: Path,
+    crew: Crew,
+    progress: Callable[[float], None] | None = None,
+    also: Sequence[Finding] = (),
+    measure: Measure | None = None,
+    pictured: bool = True,
+) -> list[CornerResult]:
+    """Run a firing in several corners, as many at a time as the crew can; results in the order of `wanted`.
+
+    Parameters
+    ----------
+    keep : Path
+        Where deck and log of a failed run are kept.
+    progress : callable
+        Told the share of the work done, from any thread.
+    also, measure, pictured
+        See `run_corner`.
+
+    Raises
+    ------
+    EngineMissing, EngineStopped
+        If there is no engine, or the run was interrupted.
+    InputError
+        If the waveforms would not fit on the disk.
+    """
+    only = nominal_only(board)
+    shares = [0.0] * len(wanted)
+    lock = threading.Lock()
+
+    def report(i: int, share: float) -> None:
+        if progress is not None:
+            with lock:
+                shares[i] = max(shares[i], share)
+                progress(sum(shares) / len(shares))
+
+    def one(i: int) -> CornerResult:
+        corner = wanted[i]
+        bench = Bench(board, corner.name, only)
+        folder = keep if len(wanted) == 1 else keep / f"corner{i + 1}"
+        return run_corner(
+            board,
+            firing,
+            corner,
+            bench,
+            folder,
+            lambda share: report(i, share),
+            time_limit=crew.time_limit,
+            cancel=crew.cancel,
+            also=also,
+            measure=measure,
+            pictured=pictured,
+        )
+
+    return list(crew.pool.map(one, range(len(wanted))))
+
+
+def by_corner(results: Iterable[CornerResult]) -> Iterable[list[Finding]]:
+    """Each corner's findings; those of a corner whose audit failed count for nothing."""
+    for r in results:
+        if r.trial is None:
+            continue
+        if r.audit.proven:
+            yield list(r.trial.findings)
+        else:
+            broken = next((e.criterion for e in reversed(r.audit.entries) if not e.passed), "not run twice")
+            yield unproven(r.trial.findings, f"audit failed, {broken}")
+
+
+def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
+    """Of every question the worst answer among the corners, broken limits first.
+
+    Where a corner whose audit failed reads worse than the answer that is kept, the sentence says so.
+    """
+    kept: dict[tuple[str, str, str, str], Finding] = {}
+    for findings in runs:
+        for f in findings:
+            if f.key not in kept or severity(f) < severity(kept[f.key]):
+                kept[f.key] = f
+    for f in (f for findings in runs for f in findings if f.verdict == "unproven"):
+        mine = kept[f.key]
+        worse = f.value > mine.value if f.worse == "high" else f.value < mine.value
+        if worse and mine.verdict != "unproven":
+            more = f"; unproven, but worse: {in_units(f.value, f.unit)} ({f.corner})"
+            kept[f.key] = replace(mine, sentence=mine.sentence + more)
+    return sorted(kept.values(), key=severity)
+
+
+def assumptions_of(board: Board, results: Iterable[CornerResult]) -> tuple[Assumption, ...]:
+    """Every number that had to be supplied for these runs."""
+    found = dict.fromkeys((*board.assumptions, *not_varied(board)))
+    for r in results:
+        if r.trial is not None:
+            found.update(dict.fromkeys(r.trial.deck.assumptions))
+    return tuple(found)
+
+
+def timings_of(results: Sequence[CornerResult], elapsed: float) -> tuple[Timing, ...]:
+    """Where the time of these runs went; `elapsed` by the clock. [s]"""
+    return (
+        Timing("simulation, all corners and repeats", sum(r.seconds["simulate"] for r in results)),
+        Timing("readings", sum(r.seconds["read"] for r in results)),
+        Timing("elapsed over all corners", elapsed),
+    )
+
+
+def failures_of(results: Iterable[CornerResult]) -> tuple[str, ...]:
+    """Why corners came to nothing, in words."""
+    return tuple(f"{r.corner.name}: {r.failure}" for r in results if r.failure is not None and not r.audit.proven)
+
+
+def engine_of(results: Iterable[CornerResult]) -> str:
+    """Name and version of the simulator."""
+    return next((r.engine for r in results if r.trial), "ngspice")
