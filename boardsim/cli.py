@@ -92,6 +92,87 @@ def fire(
     _present(result, folder)
 
 
+@app.command(epilog="Example: boardsim release netlists/fruit-sorter/board.toml --every-clamp --out out/release")
+def release(
+    board: BoardFile,
+    channel: Annotated[
+        int | None,
+        typer.Option(metavar="N", help="which channel; one of every build of coil, switch and clamp if not given"),
+    ] = None,
+    every_clamp: Annotated[
+        bool,
+        typer.Option(
+            "--every-clamp", help="try every kind of clamp on the channel (the board's first if none is given)"
+        ),
+    ] = False,
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="folder for the results; out/BOARD-release if not given"),
+    ] = None,
+    strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+) -> None:
+    """Turn a channel off: peak at its switch, where the coil's energy goes, when it lets go, how soon it can fire again.
+
+    Verdict and exit status are those of the board's own clamp: 0 pass, 1 a limit is broken, 2 wrong input, 3 unproven.
+    Other clamps have a verdict of their own in the table.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.report.folder import make_ready
+    from boardsim.report.wording import plain_path
+    from boardsim.scenarios.release import chosen_channels, release_channel
+
+    the_board = read_board(board)
+    chosen_channels(the_board, channel, every_clamp)  # a wrong number must not cost an earlier result
+    folder = out or Path("out") / f"{plain_path(the_board.name)}-release"
+    make_ready(folder)
+    with _working(f"{the_board.name}, release", time_limit) as (crew, progress):
+        result = release_channel(the_board, folder, strict, crew, progress, channel, every_clamp)
+    _present(result, folder)
+
+
+@app.command(epilog="Example: boardsim verify netlists --out out/verify")
+def verify(
+    paths: Annotated[
+        list[Path],
+        typer.Argument(metavar="PATH...", help="scenarios.toml files, or folders with such files in or below them"),
+    ],
+    out: Annotated[Path, typer.Option(metavar="DIR", help="folder for the results")] = Path("out/verify"),
+    strict: Annotated[
+        bool, typer.Option("--strict", help="count a limit that was not given as broken, in every scenario")
+    ] = False,
+    only: Annotated[str | None, typer.Option(metavar="TEXT", help="only scenarios whose name contains this")] = None,
+    day: Annotated[
+        str | None,
+        typer.Option("--on", metavar="DAY", help="judge accepted failures as of this day, such as 2027-01-31; today"),
+    ] = None,
+    cores: Annotated[int, typer.Option(metavar="N", min=0, help="runs of the engine at a time; 0 for all cores")] = 0,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+) -> None:
+    """Run every scenario declared beside boards, and say which do not come out as expected.
+
+    Exit status: 0 all as expected, 1 a limit is broken that should not be (or holds that should not), 2 wrong input,
+    3 unproven.
+    """
+    from boardsim.report.collection import print_collection, write_collection
+    from boardsim.report.folder import make_ready
+    from boardsim.scenarios.chosen import choose
+    from boardsim.scenarios.verify import status_of, verify_all
+
+    chosen = choose(paths, only, strict, day)
+    for problem in chosen.problems:
+        typer.echo(str(problem), err=True)
+    make_ready(out)
+    unfinished = f"what {out} holds of finished scenarios is complete"
+    with _working(f"{len(chosen.scenarios)} scenarios", time_limit, cores, unfinished) as (crew, progress):
+        outcomes = verify_all(chosen, out, crew, progress, lambda line: typer.echo(line, err=True))
+    status = status_of(outcomes, bool(chosen.problems))
+    write_collection(outcomes, chosen.problems, status, out)
+    with _reader_may_leave():
+        print_collection(outcomes, chosen.problems, status, _console(), out)
+    raise typer.Exit(status)
+
+
 @app.command(
     epilog="Example: boardsim deck netlists/fruit-sorter/board.toml netlists/fruit-sorter/patterns/rush.toml --to rush.cir && ngspice -b rush.cir"
 )
@@ -128,18 +209,55 @@ def deck(
         typer.echo(f"corner {corner}, {names[corner - 1]}: {to}", err=True)
 
 
+@app.command(epilog='Example: boardsim volley netlists/fruit-sorter/board.toml --width "10 ms" --at-least 6')
+def volley(
+    board: BoardFile,
+    width: Annotated[
+        str | None,
+        typer.Option(metavar="TIME", help='of the pulse, such as "10 ms"; until all has settled if not given'),
+    ] = None,
+    at_least: Annotated[
+        int | None,
+        typer.Option(metavar="N", min=1, help="how many must pass; the board's most_on if not given"),
+    ] = None,
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="folder for the results; out/BOARD-volley if not given"),
+    ] = None,
+    strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+) -> None:
+    """Find how many channels a board can fire at once: one to all together, each number against every limit.
+
+    Exit status: 0 as many pass as are wanted, 1 fewer pass, 2 wrong input, 3 unproven.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.report.folder import make_ready
+    from boardsim.report.wording import plain_path
+    from boardsim.scenarios import volley as question
+
+    the_board = read_board(board)
+    the_width = None if width is None else question.read_width(width)
+    question.check_wanted(the_board, at_least)
+    folder = out or Path("out") / f"{plain_path(the_board.name)}-volley"
+    make_ready(folder)
+    with _working(f"{the_board.name}, volley", time_limit) as (crew, progress):
+        result = question.volley(the_board, folder, strict, crew, progress, the_width, at_least)
+    _present(result, folder)
+
+
 @app.command(epilog="Example: boardsim schema > board.schema.json")
 def schema(
-    what: Annotated[str, typer.Argument(metavar="[board|pattern]", help="which kind of file")] = "board",
+    what: Annotated[str, typer.Argument(metavar="[board|pattern|scenarios]", help="which kind of file")] = "board",
 ) -> None:
-    """Print the JSON Schema of board or pattern files, for editors that complete and check TOML."""
+    """Print the JSON Schema of board, pattern or scenario files, for editors that complete and check TOML."""
     import json
 
     from boardsim.scenarios.starter import json_schema
 
     found = json_schema(what)
     if found is None:
-        raise InputError(f'"{what}" is not a kind of file; say board or pattern')
+        raise InputError(f'"{what}" is not a kind of file; say board, pattern or scenarios')
     typer.echo(json.dumps(found, indent=2, ensure_ascii=False))
 
 
@@ -149,25 +267,27 @@ def schema(
 def begin(
     folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="new folder for the board")],
 ) -> None:
-    """Write a commented starter board and a first pattern into a new folder."""
+    """Write a commented starter board, a first pattern and its scenarios into a new folder."""
     from boardsim.scenarios.starter import write_starter
 
     written = write_starter(folder)
     for path in written:
         typer.echo(path)
-    typer.echo(f"\nnow try: boardsim fire {written[0]} {written[1]}")
+    typer.echo(f"\nnow try: boardsim fire {written[0]} {written[1]}\nand then: boardsim verify {folder}")
 
 
 @contextlib.contextmanager
-def _working(what: str, time_limit: float) -> Iterator[tuple[Crew, Callable[[float], None]]]:
+def _working(
+    what: str, time_limit: float, cores: int = 0, unfinished: str = "no result was written"
+) -> Iterator[tuple[Crew, Callable[[float], None]]]:
     """Those who run the engine, and a progress bar; an interrupt ends every run and leaves no result."""
     from boardsim.scenarios.crew import Crew
 
     try:
-        with Crew(time_limit=time_limit) as crew, _progress(what) as progress:
+        with Crew(cores, time_limit) as crew, _progress(what) as progress:
             yield crew, progress
     except KeyboardInterrupt:
-        typer.echo("boardsim: stopped; no result was written", err=True)
+        typer.echo(f"boardsim: stopped; {unfinished}", err=True)
         raise typer.Exit(EXIT_STOPPED) from None
 
 

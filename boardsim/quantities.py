@@ -407,3 +407,19 @@ def in_units(value: float, unit: str, digits: int = 3) -> str:
     scaled = rounded / 10**exponent
     decimals = max(0, digits - 1 - math.floor(math.log10(abs(scaled)))) if scaled else 0
     return f"{scaled:.{decimals}f} {_PREFIXES[exponent]}{unit}"
+
+
+def apart(value: float, limit: float, unit: str) -> tuple[str, str]:
+    """Two numbers of one unit, with as many digits as it takes to see that they differ.
+
+    Examples
+    --------
+    >>> apart(23.87, 23.9, "V")
+    ('23.87 V', '23.90 V')
+    """
+    texts = ("", "")
+    for digits in range(3, 7):
+        texts = (in_units(value, unit, digits), in_units(limit, unit, digits))
+        if texts[0] != texts[1] or value == limit:
+            break
+    return texts

@@ -81,7 +81,6 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> De
     around = board.around
     parts.add(board.cable.stamp(SUPPLY, RAIL, corner, around), None, board.cable.title or "cable", "cable")
     parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
-    parts.hints[RAIL] = corner.take(board.supply.voltage, "supply")
     for channel in board.channels:
         if channel.number in window.channels:
             _add_channel(parts, board, firing, corner, window, channel)

@@ -37,6 +37,17 @@ class PatternFile(Record):
     pulses: Annotated[tuple[PulseTrain, ...], Field(min_length=1)]
 
 
+def snapped(t: float) -> float:
+    """A time to the picosecond: sums that are equal on paper must be one moment, not two an ulp apart. [s]
+
+    Examples
+    --------
+    >>> 0.1 + 0.05 == 0.15, snapped(0.1 + 0.05) == 0.15
+    (False, True)
+    """
+    return round(t, 12)
+
+
 @dataclass(frozen=True)
 class Pulse:
     """One commanded pulse on a channel. [s]"""
@@ -48,7 +59,7 @@ class Pulse:
     @property
     def stop(self) -> float:
         """When the channel is commanded off. [s]"""
-        return self.start + self.width
+        return snapped(self.start + self.width)
 
 
 @dataclass(frozen=True)
@@ -139,7 +150,7 @@ def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problem
     every = train.every.typ if train.every else 0.0
     stagger = train.stagger.typ if train.stagger else 0.0
     return [
-        Pulse(channel, train.start.typ + k * every + i * stagger, train.width.typ)
+        Pulse(channel, snapped(train.start.typ + k * every + i * stagger), train.width.typ)
         for k in range(train.repeat)
         for i, channel in enumerate(channels)
     ]

@@ -60,6 +60,8 @@ class Firing:
         Register frames sent.
     frame_time : float
         [s]
+    asked : tuple of Pulse
+        Every pulse that the pattern commands, by start.
     """
 
     duration: float
@@ -71,6 +73,7 @@ class Firing:
     wrong: tuple[WrongOutput, ...]
     frames: int
     frame_time: float
+    asked: tuple[Pulse, ...] = ()
 
     def channels_on(self, t: float) -> tuple[int, ...]:
         """The channels that are on at a time."""
@@ -141,6 +144,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         tuple(wrong.values()),
         frames,
         spent,
+        pattern.pulses,
     )
 
 

@@ -6,9 +6,11 @@ from them, `verdict` applies the rules to the waveforms.
 
 from __future__ import annotations
 
+import inspect
+import itertools
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Annotated, Any, ClassVar, Literal, Union
+from typing import TYPE_CHECKING, Annotated, Any, ClassVar, Literal, Self, Union
 
 from pydantic import BeforeValidator, Field, ValidationError, ValidationInfo, WrapValidator
 from pydantic_core import InitErrorDetails, PydanticCustomError
@@ -17,6 +19,9 @@ from boardsim.parts.elements import Element, Port, Probe
 from boardsim.parts.record import Name, Record, named_like, said, shown
 from boardsim.parts.rules import Rule
 from boardsim.quantities import Bound, Quantity
+
+if TYPE_CHECKING:
+    from boardsim.parts.coil import Coil
 
 
 class Part(Record):
@@ -29,6 +34,35 @@ class Part(Record):
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this part, by the keys of `Corner.ends`."""
         return {}
+
+    def in_the_way(self) -> float:
+        """Highest resistance that a coil's current meets in this part once its switch is off: it sets how finely the decay
+        has to be followed. [ohm]
+        """
+        return 0.0
+
+    @classmethod
+    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[Self, ...]:
+        """This kind as a library could build it, to be set beside other kinds of its role.
+
+        Every combination of library parts for the fields that take a part. A kind that needs more than parts, such
+        as a resistance, overrides this.
+
+        Parameters
+        ----------
+        shelf : callable
+            The library's parts of a class.
+        coil : Coil
+            That it is to serve.
+        """
+        classes = {name: field.annotation for name, field in cls.model_fields.items()}
+        fields = {name: c for name, c in classes.items() if inspect.isclass(c) and issubclass(c, Part)}
+        combinations = itertools.product(*(shelf(c) for c in fields.values()))
+        return tuple(cls.model_validate(dict(zip(fields, parts, strict=True))) for parts in combinations)
+
+
+Shelf = Callable[[type[Part]], Sequence[Part]]
+"""A library, asked for all parts of a class."""
 
 
 def any_of(classes: Sequence[type[Part]]) -> Any:

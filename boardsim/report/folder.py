@@ -2,17 +2,34 @@
 
 from __future__ import annotations
 
+import io
 import os
 from pathlib import Path
 
+from rich.console import Console
+
 from boardsim.errors import InputError
+from boardsim.report.closeup import draw_closeups
 from boardsim.report.files import remove_unfinished, write_text
 from boardsim.report.json_report import write_findings
 from boardsim.report.junit import write_junit
 from boardsim.report.overview import draw_overview
+from boardsim.report.release_picture import draw_release
+from boardsim.report.terminal import print_result
+from boardsim.report.volley_picture import draw_volley
 from boardsim.verdict.findings import Result
+from boardsim.verdict.studies import Release, Volley
 
-_OURS = ("findings.json", "junit.xml", "board.cir", "overview.png", "release.png", "volley.png", "closeup-*.png")
+_OURS = (
+    "findings.json",
+    "junit.xml",
+    "board.cir",
+    "report.txt",
+    "overview.png",
+    "release.png",
+    "volley.png",
+    "closeup-*.png",
+)
 
 
 def make_ready(folder: Path) -> None:
@@ -48,10 +65,36 @@ def write_results(result: Result, folder: Path) -> Path:
     InputError
         If a file cannot be written.
     """
-    picture = folder / "overview.png"
-    draw_overview(result, picture)
+    picture = draw_main(result, folder)
+    pictures = draw_closeups(result, folder)
     if result.deck:
         write_text(folder / "board.cir", result.deck)
+    write_text(folder / "report.txt", printed(result, picture, folder))
     write_junit(result, folder / "junit.xml")
-    write_findings(result, folder / "findings.json")  # last: whoever waits for the verdict finds the rest in place
+    write_findings(result, folder / "findings.json", pictures)  # last: who waits for it finds the rest in place
     return picture
+
+
+def draw_main(result: Result, folder: Path) -> Path:
+    """Draw the picture that answers the scenario's question; its path.
+
+    Raises
+    ------
+    InputError
+        If the file cannot be written.
+    """
+    match result.study:
+        case Volley():
+            draw_volley(result, path := folder / "volley.png")
+        case Release():
+            draw_release(result, path := folder / "release.png")
+        case None:
+            draw_overview(result, path := folder / "overview.png")
+    return path
+
+
+def printed(result: Result, picture: Path, folder: Path) -> str:
+    """What stands on the terminal after a run, as plain text."""
+    text = io.StringIO()
+    print_result(result, Console(file=text, width=100), picture, folder)
+    return text.getvalue()

@@ -2,11 +2,9 @@
 
 from __future__ import annotations
 
-import math
 import textwrap
-import warnings
 from pathlib import Path
-from typing import TYPE_CHECKING, Literal
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -18,37 +16,30 @@ from boardsim.report.drawing import (
     MIDDLE,
     PALE,
     PAPER,
-    SMALL,
     TEXT,
-    WARNING,
+    badge,
     band,
     caption,
     frame,
     limit_line,
     make_room,
+    mark,
+    own_look,
     plain_axes,
 )
 from boardsim.report.files import write_whole
+from boardsim.report.lanes import Bar, joined, lane_bars, named_rows
 from boardsim.report.wording import plain
-from boardsim.verdict.findings import Floats, Result, Traces, Verdict
+from boardsim.verdict.findings import Result, Traces
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-_BADGES: dict[Verdict, tuple[str, str]] = {  # background, writing
-    "fail": (WARNING, "white"),
-    "unproven": ("#6b4c8a", "white"),
-    "limit-missing": ("#f2d88a", INK),
-    "tight": ("#f2d88a", INK),
-    "pass": (PALE, INK),
-}
-
 _DPI = 120
 _WIDTH, _LEFT, _RIGHT, _TOP, _GAP, _BOTTOM = 11.0, 0.85, 1.5, 1.1, 0.5, 0.6  # [inch]
 _CURRENTS, _RAIL = 2.0, 2.2  # heights of the lower panels [inch]
 _LANE, _LEAST_LANES, _MOST_LANES = 0.16, 0.4, 5.0  # height of a lane; of all lanes [inch]
-_LINE = 1.3  # distance of two lines of text over the height of their letters
 _SLICES = 2000  # of the whole time; a gap shorter than one is not drawn
 
 
@@ -60,9 +51,7 @@ def draw_overview(result: Result, path: Path) -> None:
     InputError
         If the file cannot be written.
     """
-    with warnings.catch_warnings():
-        # A label in a script that the font lacks shows as boxes; it is no reason to disturb the user.
-        warnings.filterwarnings("ignore", message="Glyph .* missing")
+    with own_look():
         figure = overview_figure(result)
         write_whole(path, lambda beside: figure.savefig(beside, format="png", dpi=_DPI))
 
@@ -95,7 +84,7 @@ def overview_figure(result: Result) -> Figure:
     panels = [figure.add_axes(box) for box in boxes]
     for axes in panels:
         plain_axes(axes, end * scale)
-    _lanes(panels[0], result, traces, channels, lanes, scale)
+    _lanes(panels[0], result, traces, channels, scale)
     _currents(panels[1], traces, scale)
     _coil_rail(panels[2], traces, scale)
     panels[2].tick_params(axis="x", labelbottom=True)
@@ -121,55 +110,32 @@ def _heading(figure: Figure, result: Result, height: float) -> None:
     )
     corner = f"waveforms of the corner: {result.traces.corner}" if result.traces else ""
     figure.text(left, 1 - 0.58 / height, plain(corner), va="center", fontsize=9, color=INK, parse_math=False)
-    ground, ink = _BADGES[result.verdict]
-    figure.text(
-        1 - 0.3 / _WIDTH,
-        1 - 0.32 / height,
-        f"verdict: {result.verdict}",
-        ha="right",
-        va="center",
-        fontsize=12,
-        color=ink,
-        fontweight="bold",
-        bbox={"boxstyle": "round,pad=0.4", "facecolor": ground, "edgecolor": INK, "linewidth": 0.8},
-    )
+    badge(figure, result.verdict, f"verdict: {result.verdict}", 1 - 0.3 / _WIDTH, 1 - 0.32 / height, 12)
 
 
-def _lanes(axes: Axes, result: Result, traces: Traces, channels: list[int], height: float, scale: float) -> None:
+def _lanes(axes: Axes, result: Result, traces: Traces, channels: list[int], scale: float) -> None:
     from matplotlib.patches import Patch
 
     failing = {f.channel for f in result.findings if f.verdict == "fail"} & set(channels)
     longest_gap = float(axes.get_xlim()[1]) / scale / _SLICES
-    for row, channel in enumerate(channels):
-        tone = FAILING if channel in failing else DARK
-        pulses = _joined(traces.on.get(channel), longest_gap)
-        bars = [(start * scale, (stop - start) * scale) for start, stop in pulses]
-        # The line around a bar keeps a pulse in sight that is thinner than a pixel.
-        axes.broken_barh(bars, (row - 0.34, 0.68), linewidth=0.5, snap=False, facecolor=tone, edgecolor=tone)
-    axes.set_ylim(len(channels) - 0.4, -0.6)
-    step = max(1, math.ceil(SMALL * _LINE / 72 * len(channels) / height))
-    named = range(0, len(channels), step)
-    labels = [plain(traces.labels.get(channels[row], f"channel {channels[row]}")) for row in named]
-    axes.set_yticks(list(named), labels, parse_math=False)
-    axes.tick_params(axis="y", length=0 if step == 1 else 2)
+    tones = {channel: FAILING if channel in failing else DARK for channel in channels}
+    bars = [
+        Bar(row, start * scale, stop * scale, tones[channel], tones[channel])
+        for row, channel in enumerate(channels)
+        for start, stop in joined(traces.on.get(channel), longest_gap)
+    ]
+    lane_bars(axes, bars)
+    rows = named_rows(axes, len(channels))
+    names = [plain(traces.labels.get(channels[row], f"channel {channels[row]}")) for row in rows]
+    axes.set_yticks(list(rows), names, parse_math=False)
+    axes.tick_params(axis="y", length=0 if rows.step == 1 else 2)
     axes.grid(False, axis="y")
     firing = sum(len(traces.on.get(n, ())) > 0 for n in channels)
     caption(
         axes,
-        f"Channels on: {firing} of {len(channels)} fire" + (f" (one label in {step})" if step > 1 else ""),
+        f"Channels on: {firing} of {len(channels)} fire" + (f" (one label in {rows.step})" if rows.step > 1 else ""),
         {"on": Patch(color=DARK), "on, and fails a check in some corner": Patch(color=FAILING)} if failing else {},
     )
-
-
-def _joined(pulses: Floats | None, longest_gap: float) -> list[tuple[float, float]]:
-    """Pulses with the gaps closed that no picture can show: a chopped hold phase has many thousands. [s]"""
-    joined: list[tuple[float, float]] = []
-    for start, stop in sorted(map(tuple, pulses)) if pulses is not None else ():
-        if joined and start - joined[-1][1] < longest_gap:
-            joined[-1] = (joined[-1][0], max(joined[-1][1], float(stop)))
-        else:
-            joined.append((float(start), float(stop)))
-    return joined
 
 
 def _currents(axes: Axes, traces: Traces, scale: float) -> None:
@@ -208,27 +174,4 @@ def _coil_rail(axes: Axes, traces: Traces, scale: float) -> None:
     slot = int(np.argmin(rail.low))
     middle = float(rail.edges[slot] + rail.edges[slot + 1]) / 2
     v, t = traces.lowest or (float(rail.low[slot]), middle)
-    across = t * scale / float(axes.get_xlim()[1])
-    side: Literal["left", "center", "right"] = "left" if across < 0.15 else "right" if across > 0.85 else "center"
-    leader = {
-        "arrowstyle": "-",
-        "color": INK,
-        "linewidth": 0.8,
-        "linestyle": (0, (1, 2)),
-        "shrinkA": 0,
-        "shrinkB": 4,
-    }
-    axes.annotate(
-        f"lowest: {in_units(v, 'V', 4)} at {in_units(t, 's', 4)}",
-        xy=(t * scale, v),
-        xytext=(across, 0.96),
-        textcoords="axes fraction",
-        va="top",
-        ha=side,
-        fontsize=TEXT,
-        color=INK,
-        zorder=5,
-        bbox={"facecolor": "white", "edgecolor": "none", "pad": 1.5},  # keeps the grid off the words
-        arrowprops={**leader, "relpos": ({"left": 0.0, "center": 0.5, "right": 1.0}[side], 0.0)},
-    )
-    axes.plot([t * scale], [v], "o", markersize=6, color="white", mec=INK, mew=1.4, zorder=6)
+    mark(axes, t * scale, v, f"lowest: {in_units(v, 'V', 4)} at {in_units(t, 's', 4)}", above=True)

@@ -20,18 +20,22 @@ from boardsim.report.wording import (
     many,
     percent,
     plain,
+    standing,
     value_and_limit,
     verdict_reason,
     when,
 )
-from boardsim.verdict.findings import CAUTIONS, Result, Verdict
+from boardsim.verdict.findings import CAUTIONS, Result
+from boardsim.verdict.studies import Cell
+from boardsim.verdict.studies import Table as StudyTable
 
 # Sentences printed at most; a board of a hundred different channels must not push its verdict out of sight.
 MOST_SENTENCES = 12
 # Below this many columns the table would break words and numbers; the same rows are then printed as blocks.
 NARROWEST_TABLE = 90
 
-_STYLES: dict[Verdict, str] = {
+_STYLES: dict[str, str] = {
+    "accepted": "bold blue",
     "fail": "bold red",
     "unproven": "bold magenta",
     "limit-missing": "bold cyan",
@@ -58,6 +62,9 @@ def print_result(result: Result, console: Console, picture: Path | None, folder:
     heading = f"{result.board}, pattern {result.pattern}, {in_units(result.duration, 's')}"
     console.print(_text(heading, "bold"))
     console.print()
+    if result.study is not None:
+        console.print(study_table(result.study.table, console.width))
+        console.print()
     if groups:
         console.print(_table(groups) if console.width >= NARROWEST_TABLE else _blocks(groups))
     _sentences(console, [g for g in groups if g.worst.verdict != "pass"])
@@ -94,6 +101,44 @@ def _table(groups: Iterable[Group]) -> Table:
     return table
 
 
+def study_table(table: StudyTable, width: int) -> Table:
+    """What a scenario found beyond findings, with units on the numbers; row by row as text where it is too wide."""
+    rows = [[_cell(value, column.unit) for value, column in zip(row, table.columns, strict=True)] for row in table.rows]
+    words = [any(isinstance(row[i], str) for row in table.rows) for i in range(len(table.columns))]
+    # No word is broken, and no number from its unit: lines are broken between words.
+    least, whole = [], []
+    for i, column in enumerate(table.columns):
+        cells = [row[i].plain for row in rows]
+        pieces = [piece for cell in cells for piece in (cell.split() if words[i] else [cell])]
+        least.append(max(map(len, [*column.name.split(), *pieces])))
+        whole.append(max(map(len, [column.name, *cells])))
+    room = width - 2 * len(least)
+    if sum(least) > room:
+        blocks = Table.grid(padding=(0, 2, 0, 0))
+        blocks.add_column(overflow="fold")
+        for row in rows:
+            named = [Text(f"{c.name} ") + cell for c, cell in zip(table.columns, row, strict=True)]
+            blocks.add_row(Text("; ").join(named))
+        return blocks
+    wanted = sum(whole) - sum(least)
+    share = min(1.0, (room - sum(least)) / wanted) if wanted else 1.0
+    drawn = Table(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0))
+    for column, low, high, word in zip(table.columns, least, whole, words, strict=True):
+        exactly = low + int((high - low) * share)
+        drawn.add_column(column.name, justify="left" if word else "right", overflow="fold", width=exactly)
+    for row in rows:
+        drawn.add_row(*row)
+    return drawn
+
+
+def _cell(value: Cell, unit: str) -> Text:
+    if value is None:
+        return _text("-", "dim")
+    if isinstance(value, str):
+        return _text(value, _STYLES.get(value, ""))
+    return _text(in_units(value, unit) if unit else f"{value:g}")
+
+
 def _blocks(groups: Iterable[Group]) -> Table:
     blocks = Table.grid(padding=(0, 2, 0, 0))
     blocks.add_column(overflow="fold", min_width=len("limit-missing"))
@@ -109,8 +154,9 @@ def _blocks(groups: Iterable[Group]) -> Table:
 def _row(group: Group) -> tuple[Text, ...]:
     worst = group.worst
     value, limit = value_and_limit(worst)
-    verdict = _text(worst.verdict, _STYLES[worst.verdict])
-    if worst.verdict == "fail":
+    word = standing(worst)
+    verdict = _text(word, _STYLES[word])
+    if word == "fail":
         verdict.append(f"\n{worst.consequence}", "dim")
     return (
         verdict,
@@ -130,14 +176,20 @@ def _two_lines(first: str, *second: str) -> Text:
 
 
 def _sentences(console: Console, groups: list[Group]) -> None:
-    if not groups:
-        return
-    console.print()
+    if groups:
+        console.print()
+        console.print(sentences_table(groups))
+    if len(groups) > MOST_SENTENCES:
+        console.print(_text(f"and {len(groups) - MOST_SENTENCES} more in findings.json"))
+
+
+def sentences_table(groups: Sequence[Group]) -> Table:
+    """What the worst finding of each group says, and for whom it holds as well; the first dozen groups."""
     lines = Table.grid(padding=(0, 2, 0, 0))
-    lines.add_column(overflow="fold", min_width=max(len(g.worst.verdict) for g in groups))
+    lines.add_column(overflow="fold", min_width=max(len(standing(g.worst)) for g in groups))
     lines.add_column(overflow="fold")
     for group in groups[:MOST_SENTENCES]:
-        worst = group.worst
+        worst, word = group.worst, standing(group.worst)
         sentence = _text(worst.sentence)
         if len(group.members) > 1:
             sentence.append(f" (the same for {plain(write_labels([f.label for f in group.members[1:]]))})", "dim")
@@ -147,10 +199,10 @@ def _sentences(console: Console, groups: list[Group]) -> None:
             sentence.append(f" [nominal only: {', '.join(worst.nominal_only)}]", "dim")
         if worst.assumed:
             sentence.append(f" [hangs on assumed {', '.join(worst.assumed)}]", "dim")
-        lines.add_row(_text(worst.verdict, _STYLES[worst.verdict]), sentence)
-    console.print(lines)
-    if len(groups) > MOST_SENTENCES:
-        console.print(_text(f"and {len(groups) - MOST_SENTENCES} more in findings.json"))
+        if worst.accepted is not None and worst.excused:
+            sentence.append(f" [accepted until {worst.accepted.until}: {plain(worst.accepted.reason)}]", "dim")
+        lines.add_row(_text(word, _STYLES[word]), sentence)
+    return lines
 
 
 def _section(console: Console, title: str, lines: Iterable[str]) -> None:

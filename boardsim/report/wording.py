@@ -10,7 +10,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from boardsim.parts.base import Assumption
-from boardsim.quantities import in_units
+from boardsim.quantities import apart, in_units
 from boardsim.verdict.findings import Finding, Result, Verdict, severity
 
 # Verdicts in the order in which they are named: what needs attention first.
@@ -41,9 +41,9 @@ def by_severity(findings: Iterable[Finding]) -> list[Finding]:
 
 def grouped(findings: Iterable[Finding]) -> tuple[Group, ...]:
     """Findings of the same check, quantity, part and verdict together; groups and members by severity."""
-    groups: dict[tuple[str, str, str, Verdict], list[Finding]] = {}
-    for finding in by_severity(findings):
-        groups.setdefault((finding.check, finding.quantity, finding.part, finding.verdict), []).append(finding)
+    groups: dict[tuple[object, ...], list[Finding]] = {}
+    for f in by_severity(findings):
+        groups.setdefault((f.check, f.quantity, f.part, f.verdict, f.accepted), []).append(f)
     return tuple(Group(members[0], tuple(members)) for members in groups.values())
 
 
@@ -59,16 +59,21 @@ def assumed_alike(assumptions: Iterable[Assumption]) -> tuple[tuple[str, Assumpt
     return tuple((and_more(alike[0].part, len(alike) - 1), alike[0]) for alike in sorts.values())
 
 
+def standing(finding: Finding) -> str:
+    """Its verdict, or that it is accepted."""
+    return "accepted" if finding.excused else finding.verdict
+
+
 def verdict_reason(result: Result) -> str:
     """Why the verdict of a run is what it is, in half a sentence."""
-    found = Counter(f.verdict for f in result.findings)
+    found = Counter(standing(f) for f in result.findings)
     if result.verdict == "fail" and not found["fail"]:
         return f"{many(found['limit-missing'], 'limit')} not given, and a missing limit counts as broken"
     if result.verdict == "unproven" and not found["unproven"]:
         if not result.findings:
             return "nothing was judged"
         return "the audit did not hold, so nothing passes"
-    counts = ", ".join(f"{found[verdict]} {verdict}" for verdict in VERDICTS if found[verdict])
+    counts = ", ".join(f"{found[word]} {word}" for word in (*VERDICTS, "accepted") if found[word])
     return f"of {many(len(result.findings), 'finding')} {counts}"
 
 
@@ -97,12 +102,10 @@ def value_and_limit(finding: Finding) -> tuple[str, str]:
     """Reading and limit, with as many digits as it takes to see that they differ."""
     if finding.limit is None:
         return _number(finding.value, finding.unit, 3), "not given"
-    value = limit = ""
-    for digits in range(3, 7):
-        value, limit = (_number(number, finding.unit, digits) for number in (finding.value, finding.limit))
-        if value != limit or finding.value == finding.limit:
-            break
-    return value, limit
+    if not (math.isfinite(finding.value) and math.isfinite(finding.limit)):
+        return _number(finding.value, finding.unit, 3), _number(finding.limit, finding.unit, 3)
+    value, limit = apart(finding.value, finding.limit, finding.unit)
+    return value.strip(), limit.strip()
 
 
 def _number(value: float, unit: str, digits: int) -> str:

@@ -109,6 +109,16 @@ def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
     return sorted(kept.values(), key=severity)
 
 
+def dips(board: Board, result: CornerResult) -> bool:
+    """Whether the rail was too low for too long, or close to it."""
+    limit = board.limits.brown_out
+    return (
+        limit is not None
+        and result.trial is not None
+        and any(d.lasting >= limit.lasting.min / 2 for d in result.trial.readings.guarded)
+    )
+
+
 def assumptions_of(board: Board, results: Iterable[CornerResult]) -> tuple[Assumption, ...]:
     """Every number that had to be supplied for these runs."""
     found = dict.fromkeys((*board.assumptions, *not_varied(board)))

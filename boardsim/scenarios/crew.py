@@ -32,8 +32,13 @@ class Crew:
     cancel: threading.Event = field(default_factory=threading.Event)
     _pool: ThreadPoolExecutor | None = None
 
+    @property
+    def size(self) -> int:
+        """Runs at a time."""
+        return self.workers or len(os.sched_getaffinity(0))
+
     def __enter__(self) -> Crew:
-        self._pool = ThreadPoolExecutor(max_workers=self.workers or len(os.sched_getaffinity(0)))
+        self._pool = ThreadPoolExecutor(max_workers=self.size)
         return self
 
     def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, _: TracebackType | None) -> None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Sequence
 from dataclasses import replace
+from functools import partial
 from pathlib import Path
 
 from boardsim.board.corners import corners, slow_rail
@@ -15,13 +16,14 @@ from boardsim.quantities import in_units
 from boardsim.scenarios.all_corners import (
     assumptions_of,
     by_corner,
+    dips,
     engine_of,
     failures_of,
     run_corners,
     timings_of,
     worst,
 )
-from boardsim.scenarios.audited import CornerResult
+from boardsim.scenarios.audited import CornerResult, Measure
 from boardsim.scenarios.crew import Crew
 from boardsim.verdict.closeups import Closeup, take_closeups, wants_closeup
 from boardsim.verdict.findings import Finding, Result, Timing, Traces, overall
@@ -35,6 +37,8 @@ def fire_pattern(
     strict: bool = False,
     crew: Crew | None = None,
     progress: Callable[[float], None] | None = None,
+    measure: Measure | None = None,
+    pictured: bool = True,
 ) -> Result:
     """Fire a pattern on a board.
 
@@ -48,6 +52,8 @@ def fire_pattern(
         Who runs the corners; one of its own if absent.
     progress : callable
         Told the share of the work done, from any thread.
+    measure, pictured
+        See `run_corner`.
 
     Raises
     ------
@@ -58,17 +64,18 @@ def fire_pattern(
     """
     if crew is None:
         with Crew() as own:
-            return fire_pattern(board, pattern, keep, strict, own, progress)
+            return fire_pattern(board, pattern, keep, strict, own, progress, measure, pictured)
     began = time.perf_counter()
     firing = fire(board, pattern)
     spent_firing = time.perf_counter() - began
     switching = judge_switching(board, firing)
     wanted = corners(board, min(p.width for p in pattern.pulses))
     began = time.perf_counter()
-    results = run_corners(board, firing, wanted, keep, crew, progress, also=switching)
+    run = partial(run_corners, board, firing, also=switching, measure=measure, pictured=pictured)
+    results = run(wanted, keep, crew, progress)
     longest = slow_rail(board)
-    if longest is not None and any(_dips(board, r) for r in results):
-        results += run_corners(board, firing, (longest,), keep / "longest", crew, also=switching)
+    if longest is not None and any(dips(board, r) for r in results):
+        results += run((longest,), keep / "longest", crew)
     spent_running = time.perf_counter() - began
 
     findings = worst([*by_corner(results), switching])
@@ -92,17 +99,7 @@ def fire_pattern(
         failures_of(results),
         engine_of(results),
         strict,
-        _closeups(findings, board, firing, sampled, shown),
-    )
-
-
-def _dips(board: Board, result: CornerResult) -> bool:
-    """Whether the rail was too low for too long, or close to it."""
-    limit = board.limits.brown_out
-    return (
-        limit is not None
-        and result.trial is not None
-        and any(d.lasting >= limit.lasting.min / 2 for d in result.trial.readings.guarded)
+        _closeups(findings, board, firing, sampled, shown) if pictured else (),
     )
 
 

@@ -14,6 +14,7 @@ from boardsim.firing.pattern import PatternFile
 from boardsim.parts.record import Record
 from boardsim.quantities import Quantity
 from boardsim.report.files import write_text
+from boardsim.scenarios.plan import FILE_NAME, ScenarioFile
 
 BOARD = """\
 # A board file. Numbers are text with a unit; a tolerance may follow ("12 mH +/- 10 %", "4700 uF -20/+50 %",
@@ -83,26 +84,49 @@ every = "250 ms"      # from one start of a channel to its next
 """
 
 
-def write_starter(folder: Path) -> tuple[Path, Path]:
-    """Write the starter board and pattern into a new folder.
+SCENARIOS = """\
+# What is asked of the board at every change: `boardsim verify FOLDER` runs every scenario and says which do not come
+# out as expected; a pipeline acts on its exit status.
+strict = false                        # true: a limit that was not given counts as broken
+
+[scenarios.first]
+pattern = "patterns/first.toml"
+# expect = "pass"                     # the worst verdict that is all right: "pass", "tight", "limit-missing"; or "fail"
+# breaks = ["overlap"]                # a scenario that has to break exactly these checks
+# conditions = { ambient = "40 to 55 degC", supply = "23 V +/- 2 %" }
+
+[scenarios.volley]                    # how many channels the supply stands at once
+question = "volley"
+
+[scenarios.release]                   # what turning a channel off does, and when it may be fired again
+question = "release"
+
+# A failure that is known and lived with for a while; from the day after it counts again:
+# accepted = [{ check = "overlap", channels = "3", reason = "why", until = 2030-06-30 }]
+"""
+
+
+def write_starter(folder: Path) -> tuple[Path, Path, Path]:
+    """Write the starter board, pattern and scenarios into a new folder.
 
     Raises
     ------
     InputError
         If one of the files exists already, or the folder cannot be made.
     """
-    board, pattern = folder / "board.toml", folder / "patterns" / "first.toml"
-    for path in (board, pattern):
+    board, pattern, scenarios = folder / "board.toml", folder / "patterns" / "first.toml", folder / FILE_NAME
+    for path in (board, pattern, scenarios):
         if path.exists():
             raise InputError(f"{path}: exists already and is left as it is; name a new folder")
     write_text(board, BOARD)
     write_text(pattern, PATTERN)
-    return board, pattern
+    write_text(scenarios, SCENARIOS)
+    return board, pattern, scenarios
 
 
 def json_schema(what: str) -> dict[str, Any] | None:
-    """The JSON Schema of "board" or "pattern" files; None for any other word."""
-    models: dict[str, type[Record]] = {"board": BoardFile, "pattern": PatternFile}
+    """The JSON Schema of "board", "pattern" or "scenarios" files; None for any other word."""
+    models: dict[str, type[Record]] = {"board": BoardFile, "pattern": PatternFile, "scenarios": ScenarioFile}
     model = models.get(what)
     if model is None:
         return None

@@ -8,7 +8,7 @@ from typing import Literal
 from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
 from boardsim.parts.rules import Consequence, Derating, Limit
-from boardsim.quantities import in_units
+from boardsim.quantities import apart, in_units
 from boardsim.verdict.findings import Finding, Verdict, verdict_of
 
 
@@ -114,11 +114,12 @@ def upper(
     share = bench.derating(limit.derating)
     bound = None if limit.value is None else limit.value * share
     margin = None if bound is None else (bound - value) / bound
-    reading = in_units(value, limit.unit)
     if bound is None:
+        reading = in_units(value, limit.unit)
         sentence = f"{placed.label}: {what} is {reading}{when(at)}{detail}; no {limit.name} of {part} was given to hold it against"
     else:
-        rated = f"{limit.name} of {part}, {in_units(bound, limit.unit)}"
+        reading, allowed = apart(value, bound, limit.unit)
+        rated = f"{limit.name} of {part}, {allowed}"
         if share != 1.0:
             rated += f" ({share:.0%} of {in_units(limit.value or 0.0, limit.unit)}: {bench.board.derating.reason})"
         sentence = f"{placed.label}: {what} is {reading}{when(at)}{detail}; the {rated}, allows "

@@ -6,8 +6,9 @@ slice of time stay.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -15,26 +16,31 @@ from boardsim.board.reader import Board
 from boardsim.circuit.deck import Deck
 from boardsim.engine.waves import Waves
 from boardsim.firing.schedule import Firing
+from boardsim.parts.rules import BreakdownRule
+from boardsim.verdict.cutting import RunningEnergy, between
 from boardsim.verdict.findings import Envelope, Finding, Floats
 from boardsim.verdict.readings import Key, SignalTable, our_name
-from boardsim.verdict.watch import Slices
+from boardsim.verdict.stretch import Stretch, channels_in_question, count_on, stretch_of
+from boardsim.verdict.watch import HYSTERESIS, Slices
 
 SLICES = 800  # across a close-up; about as many as it has pixels
-_TAUS = 3.0  # L/R times to look at on either side of a moment
-_CAUSES: Mapping[str, tuple[Key, ...]] = {
-    "pull-in": ((None, "v_rail"),),
+_BOARD_CAUSES: Mapping[str, tuple[Key, ...]] = {
     "overlap": ((None, "i_total"),),
     "rail-sag": ((None, "i_total"), (None, "i_supply")),
     "supply-ceiling": ((None, "i_total"), (None, "v_rail")),
 }
-"""What is shown beside a board's reading, by its check; beside a channel's own it is the coil current."""
+"""What is shown beside a reading of the whole board, by its check."""
 _WORDS = {
     "v_rail": "coil rail at the board",
     "i_total": "all coils together",
     "i_supply": "out of the supply",
     "i_coil": "coil current",
     "v_coil": "voltage across the coil",
+    "v_ds": "voltage at the switch",
+    "i_d": "current of the switch",
+    "v_gs": "gate voltage of the switch",
 }
+_SEVERAL = {"A": "currents", "V": "voltages"}
 
 
 @dataclass(frozen=True)
@@ -71,14 +77,19 @@ class Closeup:
     finding : tuple of str
         Key of the finding.
     corner : str
-        In which the waveforms were taken.
+        In which the waveforms were taken; empty where there are none.
     start, stop : float
         The stretch shown. [s]
     panels : tuple of Panel
-        The quantity with its limit first, then what causes it; empty for a finding that no waveform belongs to.
+        The quantity with its limit first, then what causes it; no quantity with a limit where no waveform holds the
+        reading, and nothing at all where the finding has no moment either.
     on, asked : mapping of channel to (n, 2) array
-        When the channels were on that are on at any time of the stretch, and when they were commanded to be. [s]
+        When the channels were on that are on at any time of the stretch, and when they were commanded to be; only
+        what touches the stretch, or was commanded so shortly before it that an output may still follow. [s]
     labels : mapping of channel to str
+        Of these channels, and of those that the finding is about.
+    who : tuple of int
+        The channels that the finding is about; empty for a part of the whole board.
     """
 
     finding: tuple[str, str, str, str]
@@ -89,75 +100,12 @@ class Closeup:
     on: Mapping[int, Floats]
     asked: Mapping[int, Floats]
     labels: Mapping[int, str]
-
-
-@dataclass
-class _Cut:
-    """A stretch under way: which signals, and their slices so far."""
-
-    finding: Finding
-    start: float
-    stop: float
-    causes: tuple[Key, ...]
-    watch: Slices = field(init=False)
-    energy: float = 0.0
-    sign: float = 1.0
-
-    def __post_init__(self) -> None:
-        self.watch = Slices(np.linspace(self.start, self.stop, SLICES + 1), 1 + len(self.causes))
+    who: tuple[int, ...] = ()
 
     @property
-    def subject(self) -> tuple[Key, ...]:
-        return tuple((self.finding.channel, q) for q in self.finding.probes)
-
-    def feed(self, t: Floats, y: Mapping[Key, Floats]) -> None:
-        keys = (*self.subject, *self.causes)
-        t, rows = _between(t, np.stack([y[key] for key in keys]), self.start, self.stop)
-        f, probes = self.finding, len(self.subject)
-        subject = np.prod(rows[:probes], axis=0) if probes else np.zeros_like(t)
-        if f.shape == "energy" and f.at is not None:
-            power = np.where(t >= f.at, np.maximum(subject, 0.0), 0.0)
-            subject = self.energy + np.concatenate([[0.0], np.cumsum(0.5 * (power[1:] + power[:-1]) * np.diff(t))])
-            self.energy = float(subject[-1])  # the next stretch begins with this one's last point
-        elif f.shape == "value" and f.at is not None and t[0] <= f.at <= t[-1]:
-            self.sign = -1.0 if float(np.interp(f.at, t, subject)) * f.value < 0 else 1.0
-        self.watch.feed(t, np.vstack([subject, rows[probes:]]))
-
-    def panels(self, units: Mapping[Key, str]) -> tuple[Panel, ...]:
-        f, edges = self.finding, self.watch.edges
-        seen = np.isfinite(self.watch.low).all(axis=0)
-        if not seen.all():
-            return ()  # the run ended before the stretch did
-
-        def wave(row: int, label: str, unit: str) -> Envelope:
-            return Envelope(label, unit, edges, self.watch.low[row], self.watch.high[row])
-
-        own = wave(0, f.quantity, f.unit)
-        marked = None if f.at is None or f.shape == "mean" else (f.at, self.sign * f.value)
-        if f.shape == "energy":
-            marked = (self.stop, f.value)
-        beside: dict[str, list[Envelope]] = {}
-        for row, (_, quantity) in enumerate(self.causes, 1):
-            unit = units[self.causes[row - 1]]
-            beside.setdefault(unit, []).append(wave(row, _WORDS.get(quantity, quantity), unit))
-        title = f.quantity[0].upper() + f.quantity[1:]
-        limit = None if f.limit is None else self.sign * f.limit
-        first = Panel(title, f.unit, (own,), limit, marked, f.value if f.shape == "mean" else None)
-        if f.shape == "value" and f.unit in beside:
-            first = replace(first, waves=(own, *beside.pop(f.unit)))
-        more = [Panel(waves[0].label.capitalize(), unit, tuple(waves)) for unit, waves in beside.items()]
-        return (first, *more)
-
-
-def _between(t: Floats, rows: Floats, start: float, stop: float) -> tuple[Floats, Floats]:
-    """Times (m,) and values (n, m) from `start` to `stop`, with values at both ends where those lie inside. [s]"""
-    inside = (t >= start) & (t <= stop)
-    ends = [end for end in (start, stop) if t[0] < end < t[-1]]
-    times = np.concatenate([t[inside], ends])
-    order = np.argsort(times, kind="stable")
-    at_ends = np.array([[np.interp(end, t, row) for end in ends] for row in rows]).reshape(len(rows), len(ends))
-    values = np.hstack([rows[:, inside], at_ends])
-    return times[order], values[:, order]
+    def shows_reading(self) -> bool:
+        """Whether a panel shows the reading itself."""
+        return any(p.marked is not None or p.mean is not None for p in self.panels)
 
 
 def wants_closeup(finding: Finding) -> bool:
@@ -179,64 +127,130 @@ def take_closeups(
         Of this run, and those that need no waveform.
     corner : str
         For the result.
+
+    Returns
+    -------
+    tuple of Closeup
+        In the order of the findings.
     """
+    if waves is None:
+        deck = None
     wanted = [f for f in findings if wants_closeup(f)]
-    cuts = [_cut(f, board, firing, deck) for f in wanted]
+    cuts = [_Cut(f, stretch_of(f, board, firing), _causes(f, board, deck), _breakdown(f, deck)) for f in wanted]
     if waves is not None and deck is not None:
         _feed(cuts, waves, deck)
-    units = deck.units if deck is not None else {}
-    return tuple(_closeup(cut, f, board, firing, units, corner) for f, cut in zip(wanted, cuts, strict=True))
+    asked = _commanded(firing)
+    return tuple(_closeup(cut, board, firing, asked, deck, corner) for cut in cuts)
 
 
-def _cut(f: Finding, board: Board, firing: Firing, deck: Deck | None) -> _Cut:
-    start, stop = _stretch(f, board, firing)
-    causes = _CAUSES.get(f.check) if f.channel is None else None
-    if causes is None:
-        causes = ((f.channel, "i_coil"), (f.channel, "v_coil")) if f.unit == "A" else ((f.channel, "i_coil"),)
-        if f.check == "pull-in":
-            causes = _CAUSES["pull-in"]
-        elif f.channel is None:
-            causes = ((None, "i_total"), (None, "i_supply"))
-    if deck is None:
-        causes = ()
+@dataclass
+class _Cut:
+    """A stretch under way: which signals, and their slices so far."""
+
+    finding: Finding
+    stretch: Stretch
+    causes: tuple[Key, ...]
+    breakdown: float
+    slices: Slices = field(init=False)
+    energy: RunningEnergy | None = None
+    sign: float = 1.0
+
+    def __post_init__(self) -> None:
+        f = self.finding
+        self.slices = Slices(np.linspace(*self.stretch, SLICES + 1), 1 + len(self.causes))
+        if f.shape == "energy" and f.at is not None:
+            self.energy = RunningEnergy(f.at, HYSTERESIS * self.breakdown)
+
+    @property
+    def subject(self) -> tuple[Key, ...]:
+        return tuple((self.finding.channel, q) for q in self.finding.probes)
+
+    def feed(self, t: Floats, y: Mapping[Key, Floats]) -> None:
+        """Times (m,) [s] and the values of every signal (m,)."""
+        rows = np.stack([y[key] for key in (*self.subject, *self.causes)])
+        t, rows = between(t, rows, *self.stretch)
+        f, probes = self.finding, len(self.subject)
+        subject = np.prod(rows[:probes], axis=0) if probes else np.zeros_like(t)
+        if self.energy is not None:
+            subject = self.energy.feed(t, rows[0], rows[1])
+        elif f.shape == "value" and f.at is not None and t[0] <= (at := self.inside(f.at)) <= t[-1]:
+            # A reading that is a magnitude may be that of a negative value.
+            self.sign = -1.0 if float(np.interp(at, t, subject)) * f.value < 0 else 1.0
+        self.slices.feed(t, np.vstack([subject, rows[probes:]]))
+
+    def inside(self, at: float) -> float:
+        """A time, or the end of the stretch that is nearest: a run goes on a little beyond its window. [s]"""
+        return min(max(at, self.stretch.start), self.stretch.stop)
+
+    def panels(self, deck: Deck) -> tuple[Panel, ...]:
+        if not np.isfinite(self.slices.low).all():
+            return ()  # the run ended before the stretch did: half a waveform would pass for a whole one
+        beside: dict[str, list[Envelope]] = {}
+        for row, key in enumerate(self.causes, 1):
+            unit = deck.units[key]
+            beside.setdefault(unit, []).append(self._wave(row, _WORDS.get(key[1], key[1]), unit))
+        first: tuple[Panel, ...] = ()
+        if self.finding.probes:
+            alike = beside.pop(self.finding.unit, []) if self.finding.shape == "value" else []
+            first = (self._first(alike),)
+        return (*first, *(Panel(_title(waves), unit, tuple(waves)) for unit, waves in beside.items()))
+
+    def _first(self, alike: Sequence[Envelope]) -> Panel:
+        """The quantity that was read, with its limit and the reading, and causes of the same unit."""
+        f = self.finding
+        named = f.quantity if f.shape == "energy" or len(f.probes) > 1 else _WORDS.get(f.probes[0], f.quantity)
+        waves = (self._wave(0, re.sub(r"^(peak|average) ", "", named), f.unit), *alike)
+        limit = None if f.limit is None else self.sign * f.limit
+        if f.shape == "mean":
+            return Panel(_title(waves), f.unit, waves, limit, mean=f.value)
+        marked = None
+        if f.at is not None:
+            at = self.energy.end if self.energy is not None else f.at
+            marked = (self.inside(at), self.sign * f.value)
+        return Panel(_title(waves), f.unit, waves, limit, marked)
+
+    def _wave(self, row: int, label: str, unit: str) -> Envelope:
+        return Envelope(label, unit, self.slices.edges, self.slices.low[row], self.slices.high[row])
+
+
+def _title(waves: Sequence[Envelope]) -> str:
+    name = waves[0].label if len(waves) == 1 else _SEVERAL.get(waves[0].unit, waves[0].label)
+    return name[:1].upper() + name[1:]
+
+
+def _causes(f: Finding, board: Board, deck: Deck | None) -> tuple[Key, ...]:
+    """What is shown beside a finding; nothing beside one that has neither waveform nor moment."""
+    if deck is None or (f.at is None and not f.probes):
+        return ()
+    causes: tuple[Key, ...]
+    who = channels_in_question(f, board)
+    if f.check == "pull-in":
+        causes = ((None, "v_rail"),)
+    elif len(who) == 1 and f.shape != "count":
+        causes = ((who[0], "i_coil"), (who[0], "v_ds")) if f.unit in ("A", "J") else ((who[0], "i_coil"),)
     else:
-        causes = tuple(key for key in causes if key in deck.signals and key not in [(f.channel, q) for q in f.probes])
-    return _Cut(f, start, stop, causes)
+        causes = _BOARD_CAUSES.get(f.check, ((None, "i_total"), (None, "i_supply")))
+    mine = [(f.channel, q) for q in f.probes] if len(f.probes) == 1 else []  # of a product neither is shown
+    return tuple(key for key in causes if key in deck.signals and key not in mine)
 
 
-def _stretch(f: Finding, board: Board, firing: Firing) -> tuple[float, float]:
-    """When to look: around the moment, with the pulse that leads to it; all of the pattern for what has no moment. [s]"""
-    if f.at is None:
-        return 0.0, firing.duration
-    reach = _TAUS * max(
-        c.coil.inductance.max / c.coil.resistance.min for c in board.channels if f.channel in (None, c.number)
-    )
-    start, stop = f.at - reach, f.at + reach
-    if f.lasting is not None:
-        start, stop = start - f.lasting, stop + f.lasting
-    spans = firing.on.get(f.channel, np.empty((0, 2))) if f.channel is not None else np.empty((0, 2))
-    before = spans[spans[:, 0] < f.at]
-    if f.check == "pull-in" and len(before):
-        start = before[-1, 0] - 0.1 * (f.at - before[-1, 0])
-    elif f.check == "overlap" and f.probes and len(before):
-        start = before[-1, 1] - reach / 3  # the turn-off that the coil has not got over
-    elif f.shape == "energy":
-        start, stop = f.at - reach / 2, f.at + 1.5 * reach
-        after = spans[spans[:, 0] > f.at]
-        stop = min(stop, after[0, 0]) if len(after) else stop
-    return max(start, 0.0), min(stop, firing.duration)
+def _breakdown(f: Finding, deck: Deck | None) -> float:
+    """Where the model of a finding's switch conducts; minus infinity where there is none. [V]"""
+    placed = deck.rules if deck is not None else ()
+    found = (p.rule.breakdown for p in placed if p.channel == f.channel and isinstance(p.rule, BreakdownRule))
+    return next(found, -np.inf)
 
 
 def _feed(cuts: Sequence[_Cut], waves: Waves, deck: Deck) -> None:
     """Give every cut its share of the waveforms."""
-    cuts = [c for c in cuts if c.finding.probes or c.causes]
+    cuts = [c for c in cuts if c.subject or c.causes]
     keys = tuple(dict.fromkeys(key for c in cuts for key in (*c.subject, *c.causes)))
     if not keys:
         return
     table = SignalTable(deck, tuple(our_name(name) for name in waves.names), keys)
     for block in waves.blocks():
         t = block[:, 0] + deck.window.start
-        here = [c for c in cuts if c.start <= t[-1] and c.stop >= t[0]]
+        here = [c for c in cuts if c.stretch.start <= t[-1] and c.stretch.stop >= t[0]]
         if here:
             values = table.values(block)
             y = {key: values[table.row[key]] for key in keys}
@@ -244,37 +258,48 @@ def _feed(cuts: Sequence[_Cut], waves: Waves, deck: Deck) -> None:
                 cut.feed(t, y)
 
 
-def _closeup(cut: _Cut, f: Finding, board: Board, firing: Firing, units: Mapping[Key, str], corner: str) -> Closeup:
-    panels: tuple[Panel, ...] = cut.panels(units) if f.probes or cut.causes else ()
-    if f.shape == "count":
-        panels = (_count(f, firing, cut), *panels[1:])
-    elif not f.probes:
-        panels = panels[1:]
-    on = {c: spans for c, spans in firing.on.items() if _touches(spans, cut.start, cut.stop)}
+def _commanded(firing: Firing) -> Mapping[int, Floats]:
     asked: dict[int, list[tuple[float, float]]] = {}
-    for m in firing.moved:
-        if m.pulse.start <= cut.stop and m.pulse.stop >= cut.start:
-            asked.setdefault(m.pulse.channel, []).append((m.pulse.start, m.pulse.stop))
-    labels = {c.number: c.label for c in board.channels if c.number in on or c.number in asked}
-    named = f.corner or corner
-    spans = {c: np.array(rows, dtype=np.float64) for c, rows in asked.items()}
-    return Closeup(f.key, named, cut.start, cut.stop, panels, on, spans, labels)
+    for p in firing.asked:
+        asked.setdefault(p.channel, []).append((p.start, p.stop))
+    return {c: np.array(rows) for c, rows in asked.items()}
 
 
-def _touches(spans: Floats, start: float, stop: float) -> bool:
-    return bool(np.any((spans[:, 0] <= stop) & (spans[:, 1] >= start)))
+def _closeup(
+    cut: _Cut, board: Board, firing: Firing, asked: Mapping[int, Floats], deck: Deck | None, corner: str
+) -> Closeup:
+    f, (start, stop) = cut.finding, cut.stretch
+    panels = cut.panels(deck) if deck is not None and (f.probes or cut.causes) else ()
+    named = (f.corner or corner) if panels else f.corner
+    if f.shape == "count":
+        panels = (_count(f, firing, cut), *panels)
+    if f.at is None and not f.probes:
+        return Closeup(f.key, named, start, stop, (), {}, {}, {})
+    late = 2 * firing.frame_time  # an output may follow its command by as much: who is on here was commanded before
+    on, commanded = (
+        {c: rows for c, spans in every.items() if len(rows := _touching(spans, start - before, stop))}
+        for every, before in ((firing.on, 0.0), (asked, late))
+    )
+    who = channels_in_question(f, board)
+    in_view = {*on, *(c for c, spans in commanded.items() if len(_touching(spans, start, stop)))}
+    in_view |= set(who) if len(who) == 1 else set()
+    labels = {c.number: c.label for c in board.channels if c.number in in_view}
+    return Closeup(f.key, named, start, stop, panels, on, commanded, labels, who)
+
+
+def _touching(spans: Floats, start: float, stop: float) -> Floats:
+    rows: Floats = spans[(spans[:, 0] <= stop) & (spans[:, 1] >= start)]
+    return rows
 
 
 def _count(f: Finding, firing: Firing, cut: _Cut) -> Panel:
     """How many channels are on, as steps."""
-    members = f.channels or tuple(firing.on)
-    changes = sorted(
-        (float(t), step) for c in members for span in firing.on[c] for t, step in zip(span, (1, -1), strict=True)
-    )
-    times = np.array([0.0, *np.repeat([t for t, _ in changes], 2), firing.duration])
-    counts = np.concatenate([[0], np.cumsum([step for _, step in changes])])
-    watch = Slices(cut.watch.edges, 1)
-    watch.feed(times, np.repeat(counts, 2)[None, :].astype(np.float64))
-    wave = Envelope(f.quantity, "1", watch.edges, watch.low[0], watch.high[0])
-    marked = None if f.at is None else (f.at, f.value)
-    return Panel(f.quantity[0].upper() + f.quantity[1:], "1", (wave,), f.limit, marked)
+    times, counts = count_on(f.channels, firing)
+    until = np.append(times[1:], firing.duration)
+    t, y = np.column_stack([times, until]).ravel(), np.repeat(counts, 2)[None, :]
+    t, y = between(t, y, *cut.stretch)
+    slices = Slices(cut.slices.edges, 1)
+    slices.feed(t, y)
+    wave = Envelope(f.quantity, "1", slices.edges, slices.low[0], slices.high[0])
+    marked = None if f.at is None else (cut.inside(f.at), f.value)
+    return Panel(_title([wave]), "1", (wave,), f.limit, marked)

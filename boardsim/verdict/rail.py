@@ -7,7 +7,7 @@ from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
 from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import CeilingRule, DipRule
-from boardsim.quantities import in_units
+from boardsim.quantities import apart, in_units
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding
 from boardsim.verdict.readings import Readings
@@ -34,7 +34,7 @@ def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Fir
     lowest, at = readings.low[placed.channel, rule.quantity]
     level = rule.limit.value
     if level is None:
-        said = _dip_sentence(rule, readings, firing, bench, lowest, at)
+        said = _dip_sentence(rule, firing, bench, in_units(lowest, "V"), at)
         said += "; no brown-out level was given to hold it against ([limits] brown_out)"
         return bench.finding(placed, rule.limit, "coil rail voltage", lowest, None, at, said, worse="low")
     longest, guarded = (
@@ -48,12 +48,13 @@ def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Fir
         margin = min(max(spare, 0.0), bench.guard)
     else:
         margin = max(spare, bench.guard)
-    said = _dip_sentence(rule, readings, firing, bench, lowest, at)
+    fell, below = apart(lowest, level, "V")
+    said = _dip_sentence(rule, firing, bench, fell, at)
     shown = max(readings.dips, key=lambda d: d.lasting, default=None) if longest is None else longest
     if shown is None:
-        said += f"; the brown-out level is {in_units(level, 'V')}"
+        said += f"; the brown-out level is {below}"
     else:
-        said += f" and stayed below {in_units(level, 'V')} for {in_units(shown.lasting, 's')}"
+        said += f" and stayed below {below} for {in_units(shown.lasting, 's')}"
         said += f"; brown-out counts after {in_units(rule.lasting, 's')}"
     said += f"; the supply's own terminals fell to {in_units(readings.low[None, 'v_supply'][0], 'V')}"
     said += _fewer(bench.board) if longest is not None else ""
@@ -63,8 +64,8 @@ def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Fir
     )
 
 
-def _dip_sentence(rule: DipRule, readings: Readings, firing: Firing, bench: Bench, lowest: float, at: float) -> str:
-    return f"{_together(bench.board, firing, at)} at {in_units(at, 's', 4)}: the {rule.what} fell to {in_units(lowest, 'V')}"
+def _dip_sentence(rule: DipRule, firing: Firing, bench: Bench, lowest: str, at: float) -> str:
+    return f"{_together(bench.board, firing, at)} at {in_units(at, 's', 4)}: the {rule.what} fell to {lowest}"
 
 
 def _fewer(board: Board) -> str:
@@ -79,12 +80,10 @@ def _fewer(board: Board) -> str:
         counts.append(board.supply.current_ceiling.typ / (board.supply.voltage.max / r_coil))
     if board.limits.most_on is not None:
         counts.append(board.limits.most_on)
-    feeds = min(counts)
-    return (
-        f"; try: at most {max(int(feeds), 1)} channels together, or a stronger supply"
-        if feeds > 0
-        else "; try: a stronger supply"
-    )
+    feeds = int(min(counts))
+    if feeds < 2:
+        return "; try: one channel at a time, or a stronger supply" if feeds == 1 else "; try: a stronger supply"
+    return f"; try: at most {feeds} channels together, or a stronger supply"
 
 
 def judge_ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:

@@ -107,7 +107,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     Raises
     ------
     NoConvergence
-        If the waveforms hold values that are no numbers.
+        If the waveforms hold values that are no numbers, or begin with a rail that the supply cannot have made.
     """
     names = tuple(our_name(name) for name in waves.names)
     table = SignalTable(deck, names)
@@ -142,6 +142,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             raise NoConvergence("ngspice's waveforms hold values that are no numbers")
         t = block[:, 0] + start
         y = table.values(block)
+        if t[0] == start:
+            _refuse_false_start(float(y[row[None, "v_rail"], 0]), float(y[row[None, "i_total"], 0]), deck)
         extremes.feed(t, y)
         if mean_keys:
             integrals.feed(t, np.stack([np.prod([y[row[c, q]] for q in qs], axis=0) for c, qs in mean_keys]))
@@ -191,6 +193,17 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             for i, (name, key) in enumerate(shown.items())
         },
     )
+
+
+def _refuse_false_start(rail: float, total: float, deck: Deck) -> None:
+    """Refuse a run that does not begin at rest: ngspice's search for the operating point can end far off without a word.
+
+    A supply feeds the rail through resistances and takes nothing back: the rail is nowhere above the supply's own
+    voltage, and where no coil draws anything it is at it (Kirchhoff). 1 %, to leave room for leakages.
+    """
+    volts = max(deck.hints.values(), default=None)  # the supply's
+    if volts is not None and (rail > 1.01 * volts or (abs(total) < 1e-3 and rail < 0.99 * volts)):
+        raise NoConvergence(f"ngspice began with a rail of {rail:.4g} V, which a supply of {volts:.4g} V does not make")
 
 
 def our_name(name: str) -> str:

@@ -28,37 +28,42 @@ class Table:
 
 @dataclass(frozen=True)
 class VolleyStep:
-    """So many channels turned on at once, each reading in its worst corner.
+    """So many channels turned on at once, each reading in its worst choice of channels and its worst corner.
 
     Attributes
     ----------
     on : int
         How many.
     channels : tuple of int
-        Which.
+        Those that draw most; choices with a lighter one among them were tried as well.
     who : str
         The same in the board's own words.
-    lowest_rail : float
-        Of the coil rail at the board. [V]
-    coil_current : float
-        The lowest of all coils at the end of the pulse. [A]
-    supply_peak : float
+    lowest_rail : float or None
+        Of the coil rail at the board; like all readings None unless every run came to an end. [V]
+    coil_current, pull_in : float or None
+        At the end of the pulse, of the coil that comes closest to not pulling in, and its pull-in current; the lowest
+        current, and None, where no pull-in current was given. [A]
+    supply_peak : float or None
         Highest current out of the supply. [A]
     at_ceiling : float or None
         How long the supply was at its current ceiling, 0 if never; None if no ceiling was given. [s]
     verdict : Verdict
+    proven : bool
+        Whether the audit holds in every run; if not, the readings are not to be relied on.
     broken : str
-        The sentence of the worst finding that fails; empty if none does.
+        The sentence of the worst finding that fails, or why nothing is proven; empty where the number passes.
     """
 
     on: int
     channels: tuple[int, ...]
     who: str
-    lowest_rail: float
-    coil_current: float
-    supply_peak: float
+    lowest_rail: float | None
+    coil_current: float | None
+    pull_in: float | None
+    supply_peak: float | None
     at_ceiling: float | None
     verdict: Verdict
+    proven: bool = True
     broken: str = ""
 
 
@@ -69,7 +74,7 @@ class Volley:
     Attributes
     ----------
     steps : tuple of VolleyStep
-        From one channel to all.
+        From one channel to all; not every number where there are very many.
     most : int
         The largest number that passes, with every smaller one; 0 if not even one does.
     wanted : int or None
@@ -80,8 +85,6 @@ class Volley:
         Brown-out level [V] and its least duration [s].
     ceiling : float or None
         Of the supply. [A]
-    pull_in : float or None
-        Highest pull-in current of the coils. [A]
     """
 
     steps: tuple[VolleyStep, ...]
@@ -91,26 +94,31 @@ class Volley:
     rail_limit: float | None
     rail_lasting: float | None
     ceiling: float | None
-    pull_in: float | None
 
     @property
     def table(self) -> Table:
-        """One row per number of channels."""
+        """One row per number of channels; without readings where they are not proven."""
         columns = (
             Column("on at once"),
             Column("lowest rail", "V"),
-            Column("lowest coil current", "A"),
+            Column("coil current at the end", "A"),
+            Column("pull-in", "A"),
             Column("highest supply current", "A"),
             Column("at the ceiling for", "s"),
             Column("verdict"),
         )
-        rows = tuple((s.on, s.lowest_rail, s.coil_current, s.supply_peak, s.at_ceiling, s.verdict) for s in self.steps)
-        return Table(columns, rows)
+        return Table(columns, tuple(map(_volley_row, self.steps)))
+
+
+def _volley_row(s: VolleyStep) -> tuple[Cell, ...]:
+    # What is not proven does not stand beside numbers that are, where nothing would mark it.
+    readings = (s.lowest_rail, s.coil_current, s.pull_in, s.supply_peak, s.at_ceiling) if s.proven else (None,) * 5
+    return (s.on, *readings, s.verdict)
 
 
 @dataclass(frozen=True)
 class ReleaseRow:
-    """One channel turned off with one clamp, each reading in its worst corner.
+    """One channel turned off with one clamp, each reading in its worst corner; None where none could be taken.
 
     Attributes
     ----------
@@ -119,73 +127,88 @@ class ReleaseRow:
     own : bool
         Whether it is the board's own.
     channel : int
-    label : str
-        Of the channel.
-    peak : float
-        Highest voltage at the switch. [V]
+    label, coil : str
+        Of the channel, and of its coil.
+    peak : float or None
+        Highest voltage at the switch from the turn-off on. [V]
     peak_limit : float or None
-        What the switch is rated for. [V]
-    clamp_energy, switch_energy : float
-        That the clamp, and the switch, take from turn-off on. [J]
+        What the switch is rated for, after derating; None if that was not given. [V]
+    clamp_energy, switch_energy : float or None
+        That the clamp, and the switch, take from the turn-off on. [J]
+    pulls_in : float or None
+        From turn-on until the coil current reaches the pull-in current; None if that was not given, or is not
+        reached in some corner. [s]
     let_go : float or None
         From turn-off until the coil current stays below the release current; None if that was not given, or the
-        current has not fallen that far. [s]
-    refire : float or None
-        Shortest time from one start to the next: until the coil has pulled in, and `let_go`. [s]
+        current has not fallen that far in some corner. [s]
+    pull_in, release : float or None
+        The currents of the coil that these times are taken at. [A]
     verdict : Verdict
-    broken : str
-        The sentence of the worst finding that fails; empty if none does.
+    why : str
+        The sentence that decides a verdict other than pass or tight; empty for those.
+    corner : str
+        In which the release takes longest.
     v_switch, i_coil : Envelope or None
-        Around the turn-off, in the corner with the longest release; times count from the turn-off.
+        Around the turn-off, in that corner; times count from the turn-off.
     """
 
     clamp: str
     own: bool
     channel: int
     label: str
-    peak: float
+    coil: str
+    peak: float | None
     peak_limit: float | None
-    clamp_energy: float
-    switch_energy: float
+    clamp_energy: float | None
+    switch_energy: float | None
+    pulls_in: float | None
     let_go: float | None
-    refire: float | None
+    pull_in: float | None
+    release: float | None
     verdict: Verdict
-    broken: str = ""
+    why: str = ""
+    corner: str = ""
     v_switch: Envelope | None = None
     i_coil: Envelope | None = None
+
+    @property
+    def refire(self) -> float | None:
+        """Shortest time from one start to the next that holds in every corner. [s]
+
+        Notes
+        -----
+        The longest time to pull in plus the longest time to let go. Both are the worst of all corners, of whichever
+        each: firmware that times its pulses does not know in which corner it is. The time to let go is that from a
+        settled current, which a pulse that ends at pull-in has not reached: the interval errs on the safe side. It is
+        one of currents: the travel of what the coil moves comes on top.
+        """
+        return None if self.pulls_in is None or self.let_go is None else self.pulls_in + self.let_go
 
 
 @dataclass(frozen=True)
 class Release:
-    """What turning a channel off does, row by row: builds of channels, or clamps side by side.
-
-    Attributes
-    ----------
-    release_current, pull_in : float or None
-        Of the coil, as they are judged. [A]
-    """
+    """What turning a channel off does, row by row: builds of channels, or clamps side by side."""
 
     rows: tuple[ReleaseRow, ...]
-    release_current: float | None
-    pull_in: float | None
 
     @property
     def table(self) -> Table:
-        """One row per clamp or build."""
+        """One row per clamp or build: peak at the switch and its rating, energies from the turn-off on, times."""
         columns = (
             Column("clamp"),
             Column("channel"),
-            Column("peak at the switch", "V"),
+            Column("peak", "V"),
             Column("rated", "V"),
-            Column("energy in the clamp", "J"),
-            Column("energy in the switch", "J"),
-            Column("time to let go", "s"),
-            Column("re-fire interval", "s"),
+            Column("into clamp", "J"),
+            Column("into switch", "J"),
+            Column("lets go in", "s"),
+            Column("re-fire", "s"),
             Column("verdict"),
         )
+        compared = not all(r.own for r in self.rows)
         rows = tuple(
             (
-                r.clamp + (" (the board's own)" if r.own else ""),
+                r.clamp + (" (the board's)" if r.own and compared else ""),
                 r.label,
                 r.peak,
                 r.peak_limit,

@@ -190,9 +190,8 @@ class Avalanches:
             # The steps into and out of the stretch count whole: with few points that errs on the safe side.
             lo, hi = max(a - 1, 0), min(b + 2, len(t))
             energy = float(np.trapezoid(np.maximum(v * i, 0)[lo:hi], t[lo:hi]))
-            one = Avalanche(
-                float(t[a]), float(t[b] - t[a]), energy, float(i[a : b + 1].max()), float(v[a : b + 1].max())
-            )
+            current = max(float(i[a : b + 1].max()), self._crossing(v, i, a - 1), self._crossing(v, i, b))
+            one = Avalanche(float(t[a]), float(t[b] - t[a]), energy, current, float(v[a : b + 1].max()))
             if a == 0 and self._open is not None:
                 first = self._open
                 one = Avalanche(
@@ -205,6 +204,17 @@ class Avalanches:
             self._open = one
             if b < len(t) - 1:
                 self._close()
+
+    def _crossing(self, v: Floats, i: Floats, k: int) -> float:
+        """The current at which the voltage passes the level between point k and the next; 0 if it does not. [A]
+
+        The switch turns off while its voltage rises: the current at the first point in the stretch alone would be a
+        matter of where the points lie.
+        """
+        level = HYSTERESIS * self.breakdown
+        if not 0 <= k < len(v) - 1 or (v[k] < level) == (v[k + 1] < level):
+            return 0.0
+        return float(i[k] + (level - v[k]) / (v[k + 1] - v[k]) * (i[k + 1] - i[k]))
 
     def _close(self) -> None:
         if self._open is not None and self._open.voltage >= self.breakdown:

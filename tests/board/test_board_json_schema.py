@@ -22,7 +22,7 @@ def validator(what: str) -> Draft202012Validator:
     return Draft202012Validator(schema)
 
 
-@pytest.mark.parametrize("what", ["board", "pattern"])
+@pytest.mark.parametrize("what", ["board", "pattern", "scenarios"])
 def test_the_schema_is_a_valid_schema(what: str) -> None:
     schema = json_schema(what)
     assert schema is not None
@@ -133,6 +133,11 @@ def test_the_schema_takes_parts_in_place_and_registers_among_the_parts() -> None
     validator("board").validate(data)
 
 
+@pytest.mark.parametrize("path", sorted(NETLISTS.glob("*/scenarios.toml")), ids=lambda p: p.parent.name)
+def test_the_schema_accepts_the_demonstration_scenarios(path: Path) -> None:
+    validator("scenarios").validate(tomllib.loads(path.read_text(encoding="utf-8")))
+
+
 def test_the_schema_knows_every_kind_that_the_program_knows() -> None:
     text = str(json_schema("board"))
     for role in ("clamp", "switch", "component", "register", "coil", "supply", "cable", "bulk", "logic"):
@@ -140,7 +145,7 @@ def test_the_schema_knows_every_kind_that_the_program_knows() -> None:
             assert f"'{kind}'" in text, kind
 
 
-@pytest.mark.parametrize("what", ["board", "pattern"])
+@pytest.mark.parametrize("what", ["board", "pattern", "scenarios"])
 def test_defaults_in_the_schema_are_of_the_type_that_the_schema_wants(what: str) -> None:
     schema = json_schema(what)
     assert schema is not None

@@ -74,7 +74,7 @@ NAME_RULE = (
         (changed("count = 3", 'count = "3"'), 12, "chain.count: \"count\" must be a whole number without unit or quotes; found '3'"),
         (changed("count = 3", "count = true"), 12, 'chain.count: "count" must be a whole number without unit or quotes; found true'),
         (changed("count = 3", "count = 0x" + "f" * 5000), 12, "chain.count: the number is larger than TOML allows"),
-        (changed("most_on = 6", "most_on = 0"), 30, 'limits.most_on: "most_on" must be 1 or more; found 0'),
+        (changed("most_on = 5", "most_on = 0"), 30, 'limits.most_on: "most_on" must be 1 or more; found 0'),
         (changed('"lane {n}"', "7"), 24, 'channels."0-23".label: "label" must be text in quotes; found 7'),
         (changed('"lane {n}"', "1999-01-02"), 24, 'channels."0-23".label: "label" must be text in quotes; found 1999-01-02'),
         (with_part('kind = "diode"\nforward = []'), 31, 'parts.mine.forward: "forward" is empty; it needs at least 1 entry'),
@@ -121,8 +121,8 @@ NAME_RULE = (
         (changed("label", 'outputs = "a-b"\nlabel'), 24, "channels.\"0-23\".outputs: 'a-b' is not a range of numbers"),
         (with_table(MORE_CHANNELS.format("20-25", "")), 29, 'channels."20-25": channels 20-23 are already taken by channels."0-23"'),
         (with_table(MORE_CHANNELS.format("30-31", 'outputs = "3,4"')), 30, 'channels."30-31".outputs: outputs 3, 4 are already taken by channels."0-23"'),
-        (changed("most_on = 6", 'most_on = 6\nexclusive = [{ channels = "0-40" }]'), 31, "limits.exclusive.0.channels: channels 24-40 are not on this board"),
-        (changed("most_on = 6", 'most_on = 6\nexclusive = [\n{ channels = "0-1" },\n{ channels = "x" },\n]'), 33, "limits.exclusive.1.channels: 'x' is not a range of numbers"),
+        (changed("most_on = 5", 'most_on = 5\nexclusive = [{ channels = "0-40" }]'), 31, "limits.exclusive.0.channels: channels 24-40 are not on this board"),
+        (changed("most_on = 5", 'most_on = 5\nexclusive = [\n{ channels = "0-1" },\n{ channels = "x" },\n]'), 33, "limits.exclusive.1.channels: 'x' is not a range of numbers"),
     ],
 )  # fmt: skip
 def test_says_where_what_was_found_and_what_is_allowed(tmp_path: Path, content: str, line: int, text: str) -> None:
@@ -145,7 +145,7 @@ NASTY = [r"a\n.control", r".include x", r"x\r\n.shell ls", r"$(ls)", r"`ls`", r"
         ("[limits]", "[parts.mine]\n" + ZENER + 'title = "{}"\n[limits]', "title"),
         ("pull_in", 'title = "{}"\npull_in', "title"),
         ("[limits]", '[derating]\nreason = "{}"\n[limits]', "reason"),
-        ("most_on = 6", 'exclusive = [{{ channels = "0-1", reason = "{}" }}]', "reason"),
+        ("most_on = 5", 'exclusive = [{{ channels = "0-1", reason = "{}" }}]', "reason"),
     ],
 )
 def test_nothing_that_could_be_a_command_of_the_engine_can_be_a_name(
@@ -183,7 +183,7 @@ def test_several_mistakes_come_together_in_the_order_of_the_file(tmp_path: Path)
 
 def test_mistakes_that_only_the_layout_shows_come_together(tmp_path: Path) -> None:
     content = changed("label", 'outputs = "1-24"\nnumbers = "1"\nlabel').replace(
-        "most_on = 6", 'exclusive = [{ channels = "50" }]'
+        "most_on = 5", 'exclusive = [{ channels = "50" }]'
     )
     assert said(tmp_path, content) == [
         '25: channels."0-23".numbers: names 1 where the range has 24 channels',

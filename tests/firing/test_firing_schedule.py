@@ -12,6 +12,7 @@ from hypothesis import strategies as st
 from boardsim.board.reader import Board
 from boardsim.firing.pattern import Pattern
 from boardsim.firing.schedule import Firing, fire
+from boardsim.verdict.switching import most_together
 
 # Two registers at 1 MHz and 1 us of latch time.
 FRAME = 17e-6
@@ -197,3 +198,12 @@ def test_permuting_the_channels_permutes_the_edges(needles: Board, the_pattern: 
     permuted = fire(needles, pattern(*((order[p.channel], p.start, p.width) for p in the_pattern.pulses)))
     for channel in range(16):
         assert np.array_equal(plain.on[channel], permuted.on[order[channel]])
+
+
+@pytest.mark.parametrize("first", [n / 1000 for n in range(1, 400, 7)])
+def test_a_pulse_that_ends_when_another_starts_changes_on_the_same_latch(tmp_path: Path, first: float) -> None:
+    """In binary 0.1 s + 0.05 s is later than 0.15 s; on paper, and in the firmware's timer, it is not."""
+    second = round(first + 0.05, 3)
+    firing = fire(board(tmp_path), pattern((0, first, 0.05), (1, second, 0.05)))
+    assert spans(firing, 0)[0][1] == spans(firing, 1)[0][0]
+    assert most_together(firing, (0, 1))[0] == 1

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from boardsim.parts.base import Assumption
+from boardsim.verdict.closeups import Closeup, Panel
 from boardsim.verdict.findings import (
     AuditEntry,
     CornerAudit,
@@ -93,6 +94,54 @@ def traces(
         rail_limit=limit,
         supply_limit=ceiling,
     )
+
+
+def wave(label: str, unit: str, low: float, high: float, start: float, stop: float, slices: int = 800) -> Envelope:
+    """A hump from `low` up to `high` in the middle of a stretch, and back. [unit], [s]"""
+    edges = np.linspace(start, stop, slices + 1)
+    hump = low + (high - low) * np.sin(np.linspace(0.0, np.pi, slices)) ** 2
+    return Envelope(label, unit, edges, hump - 0.01 * abs(high - low), hump)
+
+
+def closeup(
+    of: Finding,
+    channels: int = 24,
+    *,
+    span: tuple[float, float] = (0.02, 0.06),
+    waves: tuple[tuple[str, float, float], ...] = (("current of the clamp diode", 0.0, 3.0),),
+    label: str = "lane {n}",
+    sign: float = 1.0,
+    **changes: object,
+) -> Closeup:
+    """A close-up of a finding: its quantity, the coil rail and the currents beside it, and who was on.
+
+    `waves` are those of the first panel: name, lowest and highest value. [unit of the finding]
+    """
+    start, stop = span
+    width = stop - start
+    marked = None if of.at is None else (min(max(of.at, start), stop), sign * of.value)
+    limit = None if of.limit is None else sign * of.limit
+    first = tuple(wave(name, of.unit, low, high, start, stop) for name, low, high in waves)
+    currents = (("all coils together", 28.0), ("out of the supply", 9.9))
+    panels = (
+        Panel("Currents" if len(first) > 1 else first[0].label.capitalize(), of.unit, first, limit, marked),
+        Panel("Coil rail at the board", "V", (wave("coil rail at the board", "V", 5.1, 25.2, start, stop),)),
+        Panel("Currents", "A", tuple(wave(name, "A", -0.01, high, start, stop) for name, high in currents)),
+    )
+    starts = start + width * (0.1 + 0.4 * np.arange(channels) / channels)
+    on = {n: np.array([[t, t + 0.3 * width]]) for n, t in enumerate(starts)}
+    values: dict[str, object] = {
+        "finding": of.key,
+        "corner": of.corner,
+        "start": start,
+        "stop": stop,
+        "panels": panels,
+        "on": on,
+        "asked": on,
+        "labels": {n: label.format(n=n) for n in range(channels)},
+        "who": () if of.channel is None else (of.channel,),
+    }
+    return Closeup(**{**values, **changes})  # type: ignore[arg-type]
 
 
 def result(

@@ -1,18 +1,19 @@
 """The overview picture can be read: any number of channels, limits near or far, in grey, each spike."""
 
-import itertools
 from dataclasses import replace
 from pathlib import Path
 
+import matplotlib
 import numpy as np
 import pytest
 from made_up_results import finding, result, traces
 from matplotlib.axes import Axes
-from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.colors import to_rgb
 from matplotlib.figure import Figure
+from matplotlib.image import imread
+from matplotlib.patches import Patch
 from matplotlib.text import Text
-from matplotlib.transforms import Bbox
+from picture_text import collisions, pixels, swatches, visible_texts, words
 
 from boardsim.report import drawing
 from boardsim.report.overview import draw_overview, overview_figure
@@ -25,70 +26,8 @@ def drawn(seen: Traces, **changes: object) -> Figure:
     return overview_figure(result(traces=seen, **changes))
 
 
-def visible_texts(figure: Figure) -> dict[Text, Bbox]:
-    """All texts that are drawn, with their extents in pixels."""
-    figure.draw_without_rendering()
-    outside = set()
-    for axes in figure.axes:
-        # matplotlib keeps labels of ticks outside the range, and does not draw them.
-        for axis, (low, high) in (
-            (axes.xaxis, sorted(axes.get_xlim())),
-            (axes.yaxis, sorted(axes.get_ylim())),
-        ):
-            slack = 1e-9 * (high - low)
-            outside |= {
-                text
-                for tick in axis.get_major_ticks()
-                for text in (tick.label1, tick.label2)
-                if not low - slack <= tick.get_loc() <= high + slack
-            }
-    # get_window_extent of an annotation includes its arrow; of the words only Text's own counts.
-    return {
-        text: Text.get_window_extent(text)
-        for text in figure.findobj(Text)
-        if text.get_visible() and text.get_text().strip() and text not in outside and shown(text)
-    }
-
-
-def shown(text: Text) -> bool:
-    axes = text.axes
-    ticks = [] if axes is None else [*axes.xaxis.get_major_ticks(), *axes.yaxis.get_major_ticks()]
-    return not any(
-        (text is tick.label1 and not tick.label1.get_visible())
-        or (text is tick.label2 and not tick.label2.get_visible())
-        for tick in ticks
-    )
-
-
-def collisions(figure: Figure) -> list[str]:
-    """What overlaps or leaves the picture."""
-    extents = visible_texts(figure)
-    found = [
-        f"{a.get_text()!r} overlaps {b.get_text()!r}"
-        for (a, box), (b, other) in itertools.combinations(extents.items(), 2)
-        if box.x0 < other.x1 and other.x0 < box.x1 and box.y0 < other.y1 and other.y0 < box.y1
-    ]
-    page = figure.bbox
-    found += [
-        f"{text.get_text()!r} leaves the picture"
-        for text, box in extents.items()
-        if box.x0 < page.x0 or box.y0 < page.y0 or box.x1 > page.x1 or box.y1 > page.y1
-    ]
-    return found
-
-
-def pixels(figure: Figure) -> np.ndarray:
-    canvas = FigureCanvasAgg(figure)
-    canvas.draw()
-    return np.asarray(canvas.buffer_rgba())[..., :3].astype(float)
-
-
 def rail_axes(figure: Figure) -> Axes:
     return figure.axes[2]
-
-
-def words(figure: Figure) -> str:
-    return " | ".join(text.get_text() for text in visible_texts(figure))
 
 
 def lowest_note(figure: Figure) -> Text:
@@ -101,6 +40,15 @@ def test_the_search_for_overlaps_finds_them() -> None:
     figure.text(0.51, 0.5, "seed slot")
     figure.text(0.98, 0.2, "needle selector")
     assert collisions(figure) == ["'tray gate' overlaps 'seed slot'", "'needle selector' leaves the picture"]
+
+
+def test_the_search_for_overlaps_finds_words_on_the_sample_of_a_legend() -> None:
+    figure = Figure()
+    figure.legend([Patch()], ["tray gate"], loc="upper left")
+    assert collisions(figure) == []
+    (sample,) = swatches(figure)
+    figure.text(sample.x0 / figure.bbox.width, sample.y0 / figure.bbox.height, "W", transform=figure.transFigure)
+    assert collisions(figure) == ["'W' overlaps a sample of a legend"]
 
 
 @pytest.mark.parametrize("channels", CHANNELS)
@@ -207,15 +155,19 @@ def test_a_chopped_hold_phase_is_drawn_as_few_bars() -> None:
     seen = traces(2)
     starts = 0.05 + np.arange(5000) * 4e-5
     chopped = replace(seen, on={**seen.on, 1: np.column_stack([starts, starts + 2e-5])})
-    bars = drawn(chopped).axes[0].collections[1].get_paths()
+    extents = [bar.get_extents() for bar in drawn(chopped).axes[0].collections[0].get_paths()]
+    bars = [box for box in extents if box.y0 < 1 < box.y1]
     assert len(bars) == 1
-    assert bars[0].get_extents().width == pytest.approx((starts[-1] + 2e-5 - starts[0]) * 1e3)
+    assert bars[0].width == pytest.approx((starts[-1] + 2e-5 - starts[0]) * 1e3)
 
 
 def test_channels_that_fail_are_marked_and_the_mark_explained() -> None:
     failing = drawn(traces(24), findings=(finding("fail", 7),))
-    tones = [tuple(bars.get_facecolor()[0][:3]) for bars in failing.axes[0].collections]
-    assert [n for n, tone in enumerate(tones) if tone == to_rgb(drawing.FAILING)] == [7]
+    (bars,) = failing.axes[0].collections
+    rows = [(box.y0 + box.y1) / 2 for box in (path.get_extents() for path in bars.get_paths())]
+    tones = [tuple(tone[:3]) for tone in bars.get_facecolor()]
+    marked = {round(row) for row, tone in zip(rows, tones, strict=True) if tone == to_rgb(drawing.FAILING)}
+    assert marked == {7}
     assert "fails a check" in words(failing)
     assert "fails a check" not in words(drawn(traces(24), findings=(finding("pass", 7),)))
 
@@ -226,6 +178,8 @@ def test_channels_that_fail_are_marked_and_the_mark_explained() -> None:
         ("PAPER", "INK"),
         ("FAILING", "DARK"),
         ("PALE", "MIDDLE"),
+        ("PALE", "DARK"),
+        ("PALE", "FAILING"),
         ("MIDDLE", "DARK"),
         ("PALE", "WARNING"),
         ("WARNING", "DARK"),
@@ -270,3 +224,10 @@ def test_the_file_is_a_picture_and_stands_alone_in_its_folder(tmp_path: Path) ->
     draw_overview(judged, tmp_path / "out" / "overview.png")
     assert [path.name for path in (tmp_path / "out").iterdir()] == ["overview.png"]
     assert (tmp_path / "out" / "overview.png").read_bytes().startswith(b"\x89PNG\r\n")
+
+
+def test_settings_that_a_user_keeps_for_other_drawings_change_nothing(tmp_path: Path) -> None:
+    draw_overview(result(traces=traces(8)), tmp_path / "plain.png")
+    with matplotlib.rc_context({"axes.labelsize": 30, "figure.facecolor": "black", "font.size": 24, "savefig.dpi": 30}):
+        draw_overview(result(traces=traces(8)), tmp_path / "theirs.png")
+    assert np.array_equal(imread(tmp_path / "plain.png"), imread(tmp_path / "theirs.png"))

@@ -10,9 +10,10 @@ from rich.cells import cell_len
 from rich.console import Console
 
 from boardsim.parts.base import Assumption
-from boardsim.report.terminal import MOST_SENTENCES, print_result
+from boardsim.report.terminal import MOST_SENTENCES, print_result, study_table
 from boardsim.report.wording import grouped, moment, percent, value_and_limit
 from boardsim.verdict.findings import CAUTIONS, AuditEntry, CornerAudit, Result, Verdict
+from boardsim.verdict.studies import Column, Table
 
 
 def printed(judged: Result, width: int = 100, picture: Path | None = Path("out/rush/overview.png")) -> str:
@@ -184,3 +185,40 @@ def test_a_permutation_of_the_findings_prints_the_same() -> None:
 def test_groups_lose_no_finding() -> None:
     findings = result().findings
     assert sorted(f.key for g in grouped(findings) for f in g.members) == sorted(f.key for f in findings)
+
+
+STUDY = Table(
+    (
+        Column("clamp"),
+        Column("channel"),
+        Column("peak at the switch", "V"),
+        Column("lets go in", "s"),
+        Column("verdict"),
+    ),
+    (
+        ("diode-zener: fast-2a, 24v-5w (the board's)", "gate 0", 57.3, 606e-6, "tight"),
+        ("resistor: 16.0 ohm", "gate 0", 54.3, None, "limit-missing"),
+    ),
+)
+
+
+@pytest.mark.parametrize("width", [40, 60, 80, 100, 160])
+def test_a_table_of_a_scenario_loses_no_word_and_breaks_no_number(width: int) -> None:
+    text = io.StringIO()
+    Console(file=text, width=width).print(study_table(STUDY, width))
+    lines = text.getvalue().splitlines()
+    assert max(map(len, lines)) <= width
+    whole = " ".join(" ".join(lines).split())  # text in lines may break between a number and its unit
+    for word in (
+        "diode-zener:",
+        "fast-2a,",
+        "resistor:",
+        "gate",
+        "57.3 V",
+        "606 us",
+        "54.3 V",
+        "tight",
+        "limit-missing",
+    ):
+        assert any(word in line for line in lines) or (width < 80 and word in whole), word
+    assert " -" in whole

@@ -78,7 +78,13 @@ def test_a_sound_board_passes_and_leaves_every_file_of_the_contract(tmp_path: Pa
     status, found, out, err = fire(tmp_path)
     assert (status, found["verdict"], err) == (0, "pass", "")
     assert found["audit"]["passed"]
-    assert {p.name for p in (tmp_path / "out").iterdir()} == {"findings.json", "junit.xml", "overview.png", "board.cir"}
+    assert {p.name for p in (tmp_path / "out").iterdir()} == {
+        "findings.json",
+        "junit.xml",
+        "overview.png",
+        "board.cir",
+        "report.txt",
+    }
     assert "verdict: pass" in out
     assert "overview.png" in out.splitlines()[-1]
 

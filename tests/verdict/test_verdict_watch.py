@@ -98,6 +98,16 @@ def test_ripple_about_breakdown_is_one_avalanche() -> None:
     assert watch.all()[0].energy == pytest.approx(60.2e-3, rel=1e-3)
 
 
+@pytest.mark.parametrize("points", [5, 6, 7, 11, 101])
+def test_the_avalanche_current_does_not_hang_on_where_the_points_lie(points: int) -> None:
+    """The voltage rises evenly to breakdown while the current falls evenly to nothing: 57 V is reached with 3/60 of it."""
+    watch = Avalanches(60.0)
+    t = np.linspace(0, 1.0, points)
+    watch.feed(t, 60.0 * t, 2.0 * (1 - t) + 1e-12)
+    (one,) = watch.all()
+    assert one.current == pytest.approx(2.0 * (1 - HYSTERESIS))
+
+
 @given(values, cuts)
 def test_slices_keep_every_spike(y: list[float], at: list[int]) -> None:
     edges = np.linspace(0, len(y) - 1, 8)

@@ -1,0 +1,77 @@
+"""Other clamps for a channel: every kind of the library, as far as its parts can carry the coil's current."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from boardsim.board.reader import Board, Channel, library_part
+from boardsim.parts.base import NOMINAL, Part
+from boardsim.parts.kinds import kinds
+from boardsim.parts.library import records
+from boardsim.parts.rules import PeakRule
+from boardsim.quantities import Quantity, in_units
+from boardsim.verdict.bench import Bench
+
+MOST_OF_A_KIND = 4  # side by side; a picture of about ten clamps can still be read
+
+
+def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[Part], tuple[str, ...]]:
+    """Clamps of every kind to be set beside a channel's own, and sentences about those that are left out.
+
+    Parameters
+    ----------
+    board : Board
+        For its deratings.
+    channel : Channel
+    current : float
+        Highest current of its coil. [A]
+
+    Notes
+    -----
+    Of every kind the combinations of library parts (`Part.candidates`), less those with a part that is rated for less
+    than the coil's current: their rows would only repeat that. A kind of which no combination carries the current
+    stays whole, since each kind is to be seen. Of more than `MOST_OF_A_KIND` those are taken that lie evenly in
+    the library's order, with the first and the last.
+    """
+    bench = Bench(board, "", ())
+    shown: list[Part] = []
+    remarks: list[str] = []
+    for kind, cls in kinds("clamp").items():
+        offered = [c for c in cls.candidates(_of_the_library, channel.coil) if c != channel.clamp]
+        strong = [c for c in offered if _carries(c, current, bench)]
+        weak = [clamp_in_words(c) for c in offered if c not in strong] if strong else []
+        if weak:
+            remarks.append(f"not tried, rated for less than the coil's {in_units(current, 'A')}: {'; '.join(weak)}")
+        fit = strong or offered
+        if len(fit) > MOST_OF_A_KIND:
+            remarks.append(
+                f"{MOST_OF_A_KIND} of {len(fit)} clamps of the kind {kind} are shown; for another one put it into the board file"
+            )
+        shown += _spread(fit)
+    return shown, tuple(remarks)
+
+
+def _of_the_library(cls: type[Part]) -> list[Part]:
+    kind = cls.model_fields["kind"].default
+    return [library_part(name) for name, record in records().items() if record["kind"] == kind]
+
+
+def _carries(clamp: Part, current: float, bench: Bench) -> bool:
+    """Whether no part of a clamp is rated for less than a current. [A]"""
+    rules = clamp.stamp("c", "drain", "rail", NOMINAL).rules  # type: ignore[attr-defined]  # every clamp has it
+    limits = [r.limit for r in rules if isinstance(r, PeakRule) and r.limit.unit == "A"]
+    return all(limit.value is None or limit.value * bench.derating(limit.derating) >= current for limit in limits)
+
+
+def _spread(clamps: Sequence[Part]) -> list[Part]:
+    places = np.linspace(0, len(clamps) - 1, min(len(clamps), MOST_OF_A_KIND)).round().astype(int)
+    return [clamps[k] for k in places]
+
+
+def clamp_in_words(clamp: Part) -> str:
+    """A clamp's kind with its parts and its numbers, such as "diode-zener: fast-2a, 24v-5w"."""
+    found = [value.title or value.kind for _, value in clamp if isinstance(value, Part)]
+    found += [in_units(value.typ, value.unit) for _, value in clamp if isinstance(value, Quantity)]
+    return clamp.kind + (f": {', '.join(found)}" if found else "")
