@@ -27,10 +27,10 @@ from boardsim.verdict.readings import Readings, take_readings
 # Gear's method, since the trapezoidal rule fails passivity on clamped coils at any tolerance worth its time. A rung
 # takes at least 1.5 times the points of the one before on most boards; those from the third on are for what fails.
 LADDER = (
-    Settings("gear", 2.5e-4, 500e-6),
-    Settings("gear", 4e-5, 500e-6),
-    Settings("gear", 6e-6, 250e-6),
-    Settings("gear", 8e-7, 120e-6),
+    Settings("gear", 1.5e-4, 500e-6),
+    Settings("gear", 2e-5, 500e-6),
+    Settings("gear", 2.5e-6, 250e-6),
+    Settings("gear", 3e-7, 120e-6),
 )
 FINE = 1  # the rung that findings are usually read from, and that decks are written with
 _SHORTEST_STEP = 5e-6  # [s], of the first rung: a faster coil is left to the engine's own estimate

@@ -19,7 +19,7 @@ from boardsim.report import drawing
 from boardsim.report.overview import draw_overview, overview_figure
 from boardsim.verdict.findings import Envelope, Result, Traces
 
-CHANNELS = (1, 2, 8, 24, 64, 96)
+CHANNELS = (1, pytest.param(2, marks=pytest.mark.slow), pytest.param(8, marks=pytest.mark.slow), 24, 64, 96)
 
 
 def drawn(seen: Traces, **changes: object) -> Figure:

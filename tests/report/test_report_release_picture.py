@@ -77,7 +77,7 @@ def judged(rows: tuple[ReleaseRow, ...], **changes: object) -> Result:
     return result(study=Release(rows), pattern="release", **changes)
 
 
-COUNTS = (1, 3, 9, MOST_ROWS)
+COUNTS = (1, pytest.param(3, marks=pytest.mark.slow), pytest.param(9, marks=pytest.mark.slow), MOST_ROWS)
 
 
 @pytest.mark.parametrize("n", COUNTS)

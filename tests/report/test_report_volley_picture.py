@@ -18,7 +18,7 @@ from boardsim.report.volley_picture import draw_volley, volley_figure
 from boardsim.verdict.findings import Result, Verdict
 from boardsim.verdict.studies import Volley, VolleyStep
 
-CHANNELS = (1, 8, 24, 64)
+CHANNELS = (1, pytest.param(8, marks=pytest.mark.slow), 24, 64)
 LONG = (
     "any 5 of the 24 channels at once pass, with a pulse of 85.0 ms; with 6: the supply was at its ceiling of 10.0 A for "
     "82.7 ms, first at 3.918 ms (seed slots of the second row from the left, lower drum 0-5 (6 channels) were on): a supply "

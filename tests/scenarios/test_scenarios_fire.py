@@ -109,6 +109,7 @@ def test_rush_names_lowest_rail_time_duration_and_lanes(tmp_path: Path) -> None:
 
 
 @pytest.mark.engine
+@pytest.mark.slow
 def test_steady_passes(tmp_path: Path) -> None:
     status, found, _, _ = command(tmp_path, SORTER / "board.toml", SORTER / "patterns" / "steady.toml")
     assert status == 0
