@@ -58,6 +58,15 @@ PatternFile = Annotated[
     Path,
     typer.Argument(metavar="PATTERN", help="pattern file, such as netlists/fruit-sorter/patterns/steady.toml"),
 ]
+Libraries = Annotated[
+    list[Path] | None,
+    typer.Option(
+        "--library",
+        metavar="DIR",
+        help="folder with .toml files of your own parts; may be given several times. The folder library beside a board"
+        " is found by itself",
+    ),
+]
 
 
 @app.command(
@@ -72,6 +81,7 @@ def fire(
     ] = None,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+    library: Libraries = None,
 ) -> None:
     """Simulate a firing pattern on a board and judge it against every limit.
 
@@ -83,10 +93,10 @@ def fire(
     from boardsim.report.wording import plain_path
     from boardsim.scenarios.fire import fire_pattern
 
-    the_board = read_board(board)
+    the_board = read_board(board, library or ())
     the_pattern = read_pattern(pattern, the_board)
     folder = out or Path("out") / f"{plain_path(the_board.name)}-{plain_path(the_pattern.name)}"
-    make_ready(folder)
+    make_ready(folder, (board, pattern))
     with _working(f"{the_board.name}, {the_pattern.name}", time_limit) as (crew, progress):
         result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress)
     _present(result, folder)
@@ -111,6 +121,7 @@ def release(
     ] = None,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+    library: Libraries = None,
 ) -> None:
     """Turn a channel off: peak at its switch, where the coil's energy goes, when it lets go, how soon it can fire again.
 
@@ -122,10 +133,10 @@ def release(
     from boardsim.report.wording import plain_path
     from boardsim.scenarios.release import chosen_channels, release_channel
 
-    the_board = read_board(board)
+    the_board = read_board(board, library or ())
     chosen_channels(the_board, channel, every_clamp)  # a wrong number must not cost an earlier result
     folder = out or Path("out") / f"{plain_path(the_board.name)}-release"
-    make_ready(folder)
+    make_ready(folder, (board,))
     with _working(f"{the_board.name}, release", time_limit) as (crew, progress):
         result = release_channel(the_board, folder, strict, crew, progress, channel, every_clamp)
     _present(result, folder)
@@ -148,24 +159,27 @@ def verify(
     ] = None,
     cores: Annotated[int, typer.Option(metavar="N", min=0, help="runs of the engine at a time; 0 for all cores")] = 0,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+    library: Libraries = None,
 ) -> None:
     """Run every scenario declared beside boards, and say which do not come out as expected.
 
     Exit status: 0 all as expected, 1 a limit is broken that should not be (or holds that should not), 2 wrong input,
     3 unproven.
     """
-    from boardsim.report.collection import print_collection, write_collection
+    from boardsim.report.collection import print_collection, remove_gone, write_collection
     from boardsim.report.folder import make_ready
     from boardsim.scenarios.chosen import choose
     from boardsim.scenarios.verify import status_of, verify_all
 
-    chosen = choose(paths, only, strict, day)
+    chosen = choose(paths, only, strict, day, library or ())
     for problem in chosen.problems:
-        typer.echo(str(problem), err=True)
-    make_ready(out)
+        _say(str(problem))
+    if only is None:
+        remove_gone(out, chosen.folders)
+    make_ready(out, [s.path for s in chosen.scenarios])
     unfinished = f"what {out} holds of finished scenarios is complete"
     with _working(f"{len(chosen.scenarios)} scenarios", time_limit, cores, unfinished) as (crew, progress):
-        outcomes = verify_all(chosen, out, crew, progress, lambda line: typer.echo(line, err=True))
+        outcomes = verify_all(chosen, out, crew, progress, _say)
     status = status_of(outcomes, bool(chosen.problems))
     write_collection(outcomes, chosen.problems, status, out)
     with _reader_may_leave():
@@ -190,6 +204,7 @@ def deck(
             help="which of the worst corners of the tolerances, counted from 1; the first if not given",
         ),
     ] = 1,
+    library: Libraries = None,
 ) -> None:
     """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
     from boardsim.board.reader import read_board
@@ -197,7 +212,9 @@ def deck(
     from boardsim.report.files import write_text
     from boardsim.scenarios.decks import write_deck
 
-    the_board = read_board(board)
+    if to is not None and any(to.exists() and to.samefile(one) for one in (board, pattern) if one.exists()):
+        raise InputError(f"--to {to}: is one of the files to read; name another")
+    the_board = read_board(board, library or ())
     names, text = write_deck(the_board, read_pattern(pattern, the_board), corner)
     if text is None:
         listed = "; ".join(f"{i} {name}" for i, name in enumerate(names, 1))
@@ -226,6 +243,7 @@ def volley(
     ] = None,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+    library: Libraries = None,
 ) -> None:
     """Find how many channels a board can fire at once: one to all together, each number against every limit.
 
@@ -236,11 +254,11 @@ def volley(
     from boardsim.report.wording import plain_path
     from boardsim.scenarios import volley as question
 
-    the_board = read_board(board)
+    the_board = read_board(board, library or ())
     the_width = None if width is None else question.read_width(width)
     question.check_wanted(the_board, at_least)
     folder = out or Path("out") / f"{plain_path(the_board.name)}-volley"
-    make_ready(folder)
+    make_ready(folder, (board,))
     with _working(f"{the_board.name}, volley", time_limit) as (crew, progress):
         result = question.volley(the_board, folder, strict, crew, progress, the_width, at_least)
     _present(result, folder)
@@ -276,6 +294,97 @@ def begin(
     typer.echo(f"\nnow try: boardsim fire {written[0]} {written[1]}\nand then: boardsim verify {folder}")
 
 
+parts_app = typer.Typer(
+    name="parts",
+    no_args_is_help=True,
+    help="The parts that boards may name: what there is, where each number is from, how well each model fits its datasheet.",
+)
+app.add_typer(parts_app)
+
+PartName = Annotated[str, typer.Argument(metavar="NAME", help="of the part, such as n-logic-60v")]
+
+
+@parts_app.command("list", epilog='Example: boardsim parts list --kind n-mosfet --voltage "40 V"')
+def parts_list(
+    kind: Annotated[str | None, typer.Option(metavar="KIND", help="only this kind, such as n-mosfet")] = None,
+    voltage: Annotated[
+        str | None, typer.Option(metavar="VOLTAGE", help='rated for at least this, such as "40 V"')
+    ] = None,
+    current: Annotated[
+        str | None, typer.Option(metavar="CURRENT", help='rated for at least this, such as "2 A"')
+    ] = None,
+    library: Libraries = None,
+) -> None:
+    """List the parts of the library by kind, with their main ratings and where these are from."""
+    from boardsim.report.parts_report import print_parts
+    from boardsim.scenarios.parts import list_parts
+
+    found = list_parts(library or (), kind, voltage, current)
+    with _reader_may_leave():
+        print_parts([(p.kind, p.name, p.ratings, p.source) for p in found], _console())
+
+
+@parts_app.command("show", epilog="Example: boardsim parts show AO3400A")
+def parts_show(name: PartName, library: Libraries = None) -> None:
+    """Print every number of a part with its unit, its band, and its source."""
+    from boardsim.report.parts_report import print_part
+    from boardsim.scenarios.parts import show_part
+
+    part, details = show_part(name, library or ())
+    with _reader_may_leave():
+        print_part(name, part.kind, [(d.field, d.value) for d in details], _console())
+
+
+@parts_app.command("copy", epilog="Example: boardsim parts copy n-logic-60v --to my-board/library/my-switch.toml")
+def parts_copy(
+    name: PartName,
+    to: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="new file to write it to; standard output if not given")
+    ] = None,
+    library: Libraries = None,
+) -> None:
+    """Write a part's record as a starting point for one of your own, for a board file or for your library."""
+    from boardsim.scenarios.parts import copy_part, write_copy
+
+    text = copy_part(name, library or ())
+    if to is None:
+        sys.stdout.write(text)
+    else:
+        write_copy(text, to)
+        typer.echo(f"{name}: {to}", err=True)
+
+
+@parts_app.command("prove", epilog="Example: boardsim parts prove AO3400A --json proofs.json")
+def parts_prove(
+    names: Annotated[list[str] | None, typer.Argument(metavar="NAME...", help="parts to prove")] = None,
+    everything: Annotated[bool, typer.Option("--all", help="every part of the library")] = False,
+    to_json: Annotated[
+        Path | None, typer.Option("--json", metavar="FILE", help="write the numbers as JSON as well")
+    ] = None,
+    library: Libraries = None,
+    cores: Annotated[int, typer.Option(metavar="N", min=0, help="runs of the engine at a time; 0 for all cores")] = 0,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+) -> None:
+    """Run the test circuits of parts' datasheets on their models, and compare with what is printed.
+
+    Exit status: 0 all within their tolerance and the printed band, 1 one is not, 2 wrong input, 3 one is unproven.
+    """
+    from boardsim.report.json_report import write_json
+    from boardsim.report.parts_report import print_proofs, proofs_to_dict
+    from boardsim.scenarios.part_proofs import parts_to_prove, prove_parts
+    from boardsim.verdict.proving import status_of_proofs
+
+    chosen = parts_to_prove(names or (), everything, library or ())
+    with _working("proofs", time_limit, cores) as (crew, progress):
+        proven = prove_parts(chosen, Path("out") / "parts", crew, progress)
+    status = status_of_proofs(proven)
+    if to_json is not None:
+        write_json(to_json, proofs_to_dict(proven, status))
+    with _reader_may_leave():
+        print_proofs(proven, _console())
+    raise typer.Exit(status)
+
+
 @contextlib.contextmanager
 def _working(
     what: str, time_limit: float, cores: int = 0, unfinished: str = "no result was written"
@@ -298,13 +407,14 @@ def _progress(what: str) -> Iterator[Callable[[float], None]]:
     from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
 
     console = Console(stderr=True)
+    shown = sys.stderr.isatty()
     columns: tuple[Any, ...] = (
         TextColumn("{task.description}"),
         BarColumn(),
         TextColumn("{task.percentage:>3.0f} %"),
         TimeElapsedColumn(),
     )
-    with Progress(*columns, console=console, transient=True, disable=not console.is_terminal) as bar:
+    with Progress(*columns, console=console, transient=True, disable=not shown) as bar:
         task = bar.add_task(what, total=1.0)
         yield lambda share: bar.update(task, completed=share)
 
@@ -329,8 +439,15 @@ def _console() -> Console:
     """Standard output, 100 columns wide where it is no terminal."""
     from rich.console import Console
 
-    console = Console(soft_wrap=False)
-    return console if console.is_terminal else Console(width=100)
+    class Reporting(Console):
+        def on_broken_pipe(self) -> None:
+            """Leave it to the caller: the library would end the command with a status of its own."""
+            raise BrokenPipeError
+
+    if sys.stdout.isatty():
+        return Reporting(soft_wrap=False)
+    # Not the library's own judgement, which colours files where FORCE_COLOR is set, as many pipelines do.
+    return Reporting(width=100, force_terminal=False, color_system=None)
 
 
 @contextlib.contextmanager
@@ -339,8 +456,15 @@ def _reader_may_leave() -> Iterator[None]:
     try:
         yield
         sys.stdout.flush()
-    except BrokenPipeError:
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    except OSError:  # a pipe that nobody reads, or a full disk behind the output
+        with contextlib.suppress(OSError, ValueError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+def _say(line: str) -> None:
+    """A line of progress; whether anybody reads it must not matter."""
+    with contextlib.suppress(OSError):
+        typer.echo(line, err=True)
 
 
 def _stop(*_: object) -> None:
@@ -354,6 +478,10 @@ def main() -> None:
     """Run a command; an error that a user can cause ends in its message and its exit status, never in a traceback."""
     for one in (signal.SIGTERM, signal.SIGINT):
         signal.signal(one, _stop)
+    # A stream that the caller closed is None; what is printed goes nowhere then.
+    for name in ("stdout", "stderr"):
+        if getattr(sys, name) is None:
+            setattr(sys, name, os.fdopen(os.open(os.devnull, os.O_WRONLY), "w", encoding="utf-8"))
     try:
         app()
     except BoardsimError as err:

@@ -151,6 +151,7 @@ LENGTH = Dimension("length", "m", "1.8 m", 1e-6, 1e4, scale_letters=False)  # "1
 AREA = Dimension("area", "m^2", "2.5 mm2", 1e-10, 1e-2, scale_letters=False)
 TEMPERATURE = Dimension("temperature", "K", "25 degC", 200.0, 800.0, scale_letters=False)
 TEMPERATURE_RISE = Dimension("temperature rise", "K", "40 K", 1e-3, 600.0, zero=True, scale_letters=False)
+THERMAL_RESISTANCE = Dimension("thermal resistance", "K/W", "62 K/W", 1e-3, 1e4, scale_letters=False)
 SHARE = Dimension("share", "1", "80 %", 1e-6, 1.0, scale_letters=False)
 
 # IEC 60062 writes the scale letter in place of the decimal point; R stands for x1.
@@ -180,7 +181,7 @@ _LOWER_UPPER = re.compile(rf"\s*-\s*({_UNSIGNED})\s*({_UNIT})?\s*/\s*\+\s*({_UNS
 _BAND = re.compile(rf"\s*({_NUMBER})\s*({_UNIT})?\s+to\s+({_NUMBER})\s*({_UNIT})\s*")
 _PINT_NAMES = {"\u03a9": "ohm", "\u2126": "ohm", "°C": "degC", "%": "percent", "²": "2", "³": "3", "^": ""}
 _LONGEST_TEXT = 100  # letters; what no number with a unit and a tolerance needs
-_SI_NAMES = {"1": "", "m^2": "m**2"}
+_SI_NAMES = {"1": "", "m^2": "m**2", "K/W": "kelvin/watt"}
 
 
 @functools.cache
@@ -371,7 +372,7 @@ def _written(value: float, unit: str) -> str:
 
 
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
-_UNPREFIXED = {"1", "%", "m^2"}
+_UNPREFIXED = {"K/W", "1", "%", "m^2"}
 _LARGEST = {"K": 0, "m": 0, "F": -6}  # nobody writes kilokelvin, or 4.7 mF on a capacitor
 
 
@@ -407,6 +408,20 @@ def in_units(value: float, unit: str, digits: int = 3) -> str:
     scaled = rounded / 10**exponent
     decimals = max(0, digits - 1 - math.floor(math.log10(abs(scaled)))) if scaled else 0
     return f"{scaled:.{decimals}f} {_PREFIXES[exponent]}{unit}"
+
+
+ZERO_CELSIUS = 273.15  # [K]
+
+
+def celsius(kelvin: float, digits: int = 3) -> str:
+    """A temperature for people.
+
+    Examples
+    --------
+    >>> celsius(398.15)
+    '125 degC'
+    """
+    return f"{kelvin - ZERO_CELSIUS:.{digits}g} degC"
 
 
 def apart(value: float, limit: float, unit: str) -> tuple[str, str]:

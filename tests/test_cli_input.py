@@ -51,7 +51,7 @@ BAD_BOARDS: dict[str, tuple[bytes, str]] = {
     "misspelt key": (BOARD.replace("esr", "ers").encode(), 'board.toml:7: bulk.ers: "ers" is not known here (did you mean "esr"?)'),
     "bare number": (BOARD.replace('"1.8 m"', "1.8").encode(), "board.toml:6: cable.length: 1.8 has no unit"),
     "unknown part": (BOARD.replace("24v-5w", "24v5w").encode(), '(did you mean "24v-5w"?)'),
-    "wrong kind": (BOARD.replace("24v-5w", "fast-2a").encode(), '"fast-2a" is a diode; a zener is needed here'),
+    "wrong kind": (BOARD.replace("24v-5w", "fast-2a").encode(), '"fast-2a" is a diode; a zener or tvs is needed here'),
     "command in a label": (BOARD.replace("lane {n}", "a\\n.control").encode(), "cannot be a name"),
     "command in a coil": (BOARD.replace("[coils.ejector]", '[coils."a\\n.control"]').encode(), "cannot be a name"),
     "channels outside": (BOARD.replace("count = 3", "count = 2").encode(), "outputs 16-23 are outside the chain: 2 registers have outputs 0-15"),
@@ -197,3 +197,20 @@ def test_the_installed_program_itself_refuses_on_standard_error_with_status_2(tm
     )
     refused((done.returncode, done.stdout, done.stderr), 'board.toml:7: bulk: "esr" is missing')
     assert [p.name for p in tmp_path.iterdir()] == ["board.toml"]
+
+
+def test_results_never_lie_beside_the_files_that_were_read(run: Run, tmp_path: Path) -> None:
+    (tmp_path / "report.txt").write_text("mine", encoding="utf-8")
+    for call in (("fire", "board.toml", "pattern.toml"), ("release", "board.toml"), ("volley", "board.toml")):
+        refused(run(*call, "--out", "."), "results must not lie beside")
+    assert (tmp_path / "report.txt").read_text(encoding="utf-8") == "mine"
+
+
+def test_a_deck_is_never_written_over_what_it_was_made_from(run: Run, tmp_path: Path) -> None:
+    for target in ("board.toml", "pattern.toml"):
+        refused(run("deck", "board.toml", "pattern.toml", "--to", target), "is one of the files to read")
+    assert (tmp_path / "board.toml").read_text(encoding="utf-8") == BOARD
+
+
+def test_a_path_that_no_file_system_takes_is_refused(run: Run) -> None:
+    refused(run("verify", "a" * 300), "cannot be read: File name too long")

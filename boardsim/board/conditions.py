@@ -7,9 +7,7 @@ from dataclasses import dataclass, replace
 from boardsim.board.reader import Board
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Surroundings
-from boardsim.quantities import Quantity
-
-_ZERO_CELSIUS = 273.15  # [K]
+from boardsim.quantities import ZERO_CELSIUS, Quantity
 
 
 @dataclass(frozen=True)
@@ -30,7 +28,7 @@ class Conditions:
     def __str__(self) -> str:
         said = []
         if self.ambient is not None:
-            low, high = (t - _ZERO_CELSIUS for t in (self.ambient.min, self.ambient.max))
+            low, high = (t - ZERO_CELSIUS for t in (self.ambient.min, self.ambient.max))
             said.append(f"ambient {low:.4g} degC" if low == high else f"ambient {low:.4g} to {high:.4g} degC")
         if self.supply is not None:
             said.append(f"supply {self.supply}")

@@ -6,7 +6,7 @@ import math
 from collections.abc import Iterator
 
 from boardsim.board.reader import Board
-from boardsim.parts.base import NOMINAL, Assumption, Corner
+from boardsim.parts.base import NOMINAL, T_MODEL, Assumption, Corner
 from boardsim.parts.record import Record
 from boardsim.quantities import Bound, Quantity, in_units
 
@@ -106,9 +106,18 @@ def _distinct(board: Board, wanted: list[Corner]) -> tuple[Corner, ...]:
     for corner in wanted:
         ends = {k: v for k, v in corner.ends.items() if has_tolerance.get(k)}
         winding = corner.winding if board.around else "reference"
-        distinct.setdefault((tuple(sorted(ends.items())), winding), Corner(corner.name, ends, winding))
+        distinct.setdefault((tuple(sorted(ends.items())), winding), Corner(corner.name, ends, winding, _air(board)))
     only = tuple(distinct.values())
     return only if any(c.ends or c.winding != "reference" for c in only) else (NOMINAL,)
+
+
+def _air(board: Board) -> float:
+    """The warmest air, from which junction temperatures count in every corner. [K]
+
+    Coils that are cold draw most and heat the semiconductors most; on a hot day they are cold at switch-on only, which
+    makes the sum of both an upper bound.
+    """
+    return T_MODEL if board.around is None else board.around.ambient_high
 
 
 def not_varied(board: Board) -> tuple[Assumption, ...]:
@@ -116,6 +125,7 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     used = [q for found in _varied(board).values() for q in found]
     # Judged at their worse end, or only read as a band.
     used += [board.chain.clock]
+    used += [q for q in (board.supply.current_ceiling,) if q is not None]
     for channel in board.channels:
         used += [q for q in (channel.coil.pull_in, channel.coil.release) if q is not None]
     parts: list[tuple[str, Record]] = [

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import difflib
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -11,7 +11,8 @@ from typing import Any
 from pydantic import ValidationError
 
 from boardsim.board.ranges import read_range, write_range
-from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits, component_class
+from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits
+from boardsim.board.shelves import Shelves, problems_in, read_shelves
 from boardsim.board.toml_file import Keys, TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
 from boardsim.parts.base import Assumption, Part, Surroundings, listed
@@ -19,7 +20,7 @@ from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
 from boardsim.parts.kinds import kinds
-from boardsim.parts.library import records
+from boardsim.parts.leads import Leads
 from boardsim.parts.logic import Logic
 from boardsim.parts.record import name_from, named_like, nearest, said, shortened
 from boardsim.parts.supply import Supply
@@ -38,6 +39,8 @@ class Channel:
     coil_name: str
     switch: Any  # a part of role "switch"
     clamp: Any  # a part of role "clamp"
+    leads: Leads | None = None  # between coil and board; none: the coil sits on the board
+    package: str = ""  # which one of several channels' packages its switch is in, such as "array 2"
 
 
 @dataclass(frozen=True)
@@ -73,16 +76,17 @@ class Board:
 
 
 class _Shelf:
-    """Finds parts by name: in the board file first, then in the library."""
+    """Finds parts by name: in the board file first, then in the user's folders, then in the library."""
 
-    def __init__(self, file: TomlFile):
+    def __init__(self, file: TomlFile, shelves: Shelves):
+        self.shelves = shelves
         self.local: dict[str, dict[str, Any]] = {}
         self.coils: dict[str, dict[str, Any]] = {}
         for shelf, section in ((self.local, "parts"), (self.coils, "coils")):
             table = file.data.get(section)
             if isinstance(table, dict):
                 shelf.update({k: v for k, v in table.items() if isinstance(v, dict)})
-        self.found: dict[tuple[type[Part], str], Part] = {}
+        self.found: dict[tuple[str, str], Part] = {}
         self.name = file.path.name
 
     def origin(self, field: str | None) -> Origin:
@@ -90,55 +94,50 @@ class _Shelf:
         return Origin("given", self.name)
 
     def kind_of(self, name: str) -> str:
-        """The kind of a named part; an unknown name is reported where the part itself is read."""
-        record = self.local.get(name) or records().get(name, {})
-        kind = str(record.get("kind", ""))
+        """The kind of the switch that a part or the one of the nearest name is; empty if there is none like it."""
+        known = {n: e.kind for n, e in self.shelves.items()} | {
+            n: str(r.get("kind", "")) for n, r in self.local.items()
+        }
+        kind = known.get(name, "")
         if kind in kinds("switch"):
             return kind
-        known = {n: str(r.get("kind", "")) for n, r in {**records(), **self.local}.items()}
         close = difflib.get_close_matches(name, [n for n, k in known.items() if k in kinds("switch")], n=1)
-        return known[close[0]] if close else next(iter(kinds("switch")))
+        return known[close[0]] if close and name not in known else ""
 
-    def find(self, cls: type[Part], name: str) -> Part:
-        """The part of a class and name, as pydantic asks for it.
+    def find(self, cls: type[Part], name: str, *others: type[Part]) -> Part:
+        """The part of a class (or of one of several) and name, as pydantic asks for it.
 
         Raises
         ------
         PydanticCustomError
             If there is none, or it is of another kind.
         """
-        kind = cls.model_fields["kind"].default
+        classes = {c.model_fields["kind"].default: c for c in (cls, *others)}
+        kind = " or ".join(classes)
         mine: Mapping[str, Any] = self.coils if cls.role == "coil" else self.local
-        if (cls, name) not in self.found:
+        if (kind, name) not in self.found:
             record: Mapping[str, Any] | None = mine.get(name)
             context: dict[str, Any] = {"find": self.find, "kind_of": self.kind_of, "origin": self.origin}
-            if record is None and (record := records().get(name)) is not None:
-                context["origin"] = _library_origin(record)
-                record = {k: v for k, v in record.items() if k not in ("source", "sources")}
+            if record is None and (entry := self.shelves.get(name)) is not None:
+                context["origin"], record = entry.origin, entry.body
             if record is None:
-                same = [n for n, r in {**records(), **mine}.items() if r.get("kind", "coil") == kind]
+                same = [n for n, e in self.shelves.items() if e.kind in classes and n not in mine]
+                same += [n for n, r in mine.items() if r.get("kind", "coil") in classes]
                 known = ", ".join(sorted(same)) or "none"
                 raise said(
                     f'{kind} "{shortened(name)}" is neither in this file nor in the library'
                     f"{nearest(shortened(name), same)}; known: {known}"
                 )
-            if record.get("kind", "coil" if cls.role == "coil" else kind) != kind:
+            named = record.get("kind", next(iter(classes)))
+            wanted = classes.get(named) if isinstance(named, str) else None
+            if wanted is None:
                 found = named_like(shortened(str(record["kind"])) or "part without a kind")
                 raise said(f'"{name}" is {found}; {named_like(kind)} is needed here')
             try:
-                self.found[cls, name] = cls.model_validate({"title": name, **record}, context=context)
+                self.found[kind, name] = wanted.model_validate({"title": name, **record}, context=context)
             except ValidationError as err:
                 raise said(f'"{name}" has mistakes of its own') from err
-        return self.found[cls, name]
-
-
-def _library_origin(record: Mapping[str, Any]) -> Callable[[str | None], Origin]:
-    sources = record.get("sources", {})
-
-    def origin(field: str | None) -> Origin:
-        return Origin("library", sources.get(field, record.get("source", "")))
-
-    return origin
+        return self.found[kind, name]
 
 
 def library_part(name: str) -> Part:
@@ -149,16 +148,21 @@ def library_part(name: str) -> Part:
     InputError
         If there is none; names the nearest.
     """
-    record = records().get(name)
-    cls = component_class(str(record.get("kind"))) if record else None
-    if record is None or cls is None:
-        raise InputError(f'the library has no part "{name}"{nearest(name, list(records()))}')
-    body = {k: v for k, v in record.items() if k not in ("source", "sources")}
-    return cls.model_validate(body, context={"origin": _library_origin(record)})
+    shelves = read_shelves()
+    part = shelves[name].part(name) if name in shelves else None
+    if part is None:
+        raise InputError(f'the library has no part "{name}"{nearest(name, list(shelves))}')
+    return part
 
 
-def read_board(path: Path) -> Board:
+def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     """Read a board file.
+
+    Parameters
+    ----------
+    path : Path
+    libraries : sequence of Path
+        The user's folders of parts, beside the folder `library` next to the board file.
 
     Raises
     ------
@@ -168,7 +172,7 @@ def read_board(path: Path) -> Board:
     file = read_toml(path, "board")
     if "pulses" in file.data and "supply" not in file.data:
         raise InputError([file.problem((), "is a pattern; name the board first, then the pattern")])
-    shelf = _Shelf(file)
+    shelf = _Shelf(file, read_shelves(libraries, path))
     context = {"find": shelf.find, "kind_of": shelf.kind_of, "origin": shelf.origin}
     try:
         board = BoardFile.model_validate(file.data, context=context)
@@ -260,11 +264,23 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
         if any(len(c) != len(numbers) for c in columns.values()):
             continue
         _claim(group, text, {"channel": numbers, **columns}, claimed, board.chain, file, problems)
-        for number, output, bit, n in zip(
-            numbers, columns["outputs"], columns["bits"], columns["numbers"], strict=True
+        packages = _packages(group, len(numbers), channels)
+        for number, output, bit, n, package in zip(
+            numbers, columns["outputs"], columns["bits"], columns["numbers"], packages, strict=True
         ):
-            channels.append(_channel(group, number, output, bit, n))
+            channels.append(_channel(group, number, output, bit, n, package))
     return channels
+
+
+def _packages(group: ChannelRange, count: int, before: list[Channel]) -> list[str]:
+    """Which package each channel of a range has its switch in: filled in the order of the range, numbered over the board."""
+    switch: Any = group.switch  # a part of role "switch"
+    size = switch.per_package()
+    if not size:
+        return [""] * count
+    name = switch.part.title or switch.kind
+    first = len({c.package for c in before if c.package.rpartition(" ")[0] == name}) + 1
+    return [f"{name} {first + i // size}" for i in range(count)]
 
 
 def _claim(
@@ -300,9 +316,12 @@ def _claim(
         claimed[what].update(dict.fromkeys(values, text))
 
 
-def _channel(group: ChannelRange, number: int, output: int, bit: int, n: int) -> Channel:
+def _channel(group: ChannelRange, number: int, output: int, bit: int, n: int, package: str) -> Channel:
     label = group.label.replace("{n}", str(n))
-    return Channel(number, output, bit, label, group.coil, group.coil.title or "coil", group.switch, group.clamp)
+    coil = group.coil
+    return Channel(
+        number, output, bit, label, coil, coil.title or "coil", group.switch, group.clamp, group.leads, package
+    )
 
 
 def _refuse_shared_labels(channels: list[Channel], file: TomlFile, problems: list[Problem]) -> None:
@@ -318,21 +337,4 @@ def _refuse_shared_labels(channels: list[Channel], file: TomlFile, problems: lis
 
 def problems_of(err: ValidationError, file: TomlFile) -> list[Problem]:
     """pydantic's errors as problems with file and line; consequences of another mistake are left out."""
-    errors = err.errors(include_url=False)
-    whole = [e for e in errors if "has mistakes of its own" not in e["msg"]]
-    found = {
-        file.problem_at(_keys_in(file.data, e["loc"]), e["msg"].removeprefix("Value error, ")): None
-        for e in whole or errors
-    }
-    return sorted(found, key=lambda p: p.line or 0)
-
-
-def _keys_in(data: Any, loc: tuple[int | str, ...]) -> Keys:
-    """The part of pydantic's location that names keys of the file (it also names classes and kinds)."""
-    keys: Keys = ()
-    for step in loc:
-        inside = step in data if isinstance(data, dict) else isinstance(data, list) and step in range(len(data))
-        if inside:
-            data = data[step]
-            keys = (*keys, step)
-    return keys
+    return problems_in(err, file)

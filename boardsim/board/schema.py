@@ -4,13 +4,15 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from pydantic import BeforeValidator, Field, ValidationInfo
+from pydantic import BeforeValidator, Field, ValidationInfo, model_validator
 
+from boardsim.errors import QuantityError
 from boardsim.parts.base import Part, any_of, named_part
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
 from boardsim.parts.kinds import kinds
+from boardsim.parts.leads import Leads
 from boardsim.parts.logic import Logic
 from boardsim.parts.record import Name, Record
 from boardsim.parts.register import Register
@@ -25,13 +27,25 @@ def _any_kind(*roles: str) -> Any:
 
 def _with_kind(value: Any, info: ValidationInfo) -> Any:
     """A switch stage is of the kind of the transistor that it names."""
-    if isinstance(value, dict) and "kind" not in value:
-        part = value.get("part")
-        if isinstance(part, str) and info.context and "kind_of" in info.context:
-            return {"kind": info.context["kind_of"](part), **value}
-        if isinstance(part, dict) and part.get("kind") in [*kinds("switch")]:
-            return {"kind": part["kind"], **value}
-    return value
+    if not isinstance(value, dict) or "kind" in value:
+        return value
+    part, kind = value.get("part"), ""
+    if isinstance(part, str) and info.context and "kind_of" in info.context:
+        kind = info.context["kind_of"](part)
+    elif isinstance(part, dict) and part.get("kind") in [*kinds("switch")]:
+        kind = part["kind"]
+    return {"kind": kind or _likely_kind(value), **value}
+
+
+def _likely_kind(value: dict[str, Any]) -> str:
+    """The kind of switch stage whose keys a table has most of: mistakes in it are then named in terms of what is meant."""
+
+    def fit(kind: str) -> tuple[int, int]:
+        fields = kinds("switch")[kind].model_fields
+        missing = sum(field.is_required() and name not in value for name, field in fields.items())
+        return sum(key in fields for key in value), -missing
+
+    return max(kinds("switch"), key=fit)
 
 
 AnyClamp = _any_kind("clamp")
@@ -66,6 +80,9 @@ class ChannelRange(Record):
     coil: named_part(Coil)  # type: ignore[valid-type]
     switch: Annotated[AnySwitch, BeforeValidator(_with_kind)]  # type: ignore[valid-type]
     clamp: AnyClamp  # type: ignore[valid-type]
+    leads: Leads | None = Field(
+        None, description="the two wires from the board to the coil; none if it sits on the board"
+    )
     outputs: str | None = Field(
         None,
         description="register outputs that the channels are wired to, in order; the channel numbers if absent",
@@ -76,6 +93,17 @@ class ChannelRange(Record):
     )
     label: Name = Field("channel {n}", description="name for reports; {n} is the channel's number")
     numbers: str | None = Field(None, description="numbers for {n}, in order; the channel numbers if absent")
+
+    @model_validator(mode="after")
+    def _fits_together(self) -> ChannelRange:
+        clamp: Part = self.clamp
+        if problem := clamp.beside(self.switch):
+            raise QuantityError(problem)
+        if self.leads is None and clamp.at_the_coil():
+            raise QuantityError(
+                'the clamp is at = "coil", and no leads are given; add leads = { gauge = ..., length = ... }'
+            )
+        return self
 
 
 class BrownOut(Record):

@@ -76,8 +76,9 @@ def read_toml(path: Path, what: str) -> TomlFile:
             raw = handle.read(LARGEST_FILE + 1)
     except IsADirectoryError as err:
         raise refuse(f"is a folder; name the {what} file in it") from err
-    except OSError as err:
-        raise refuse(f"cannot be read: {err.strerror or err}; name an existing {what} file") from err
+    except (OSError, ValueError) as err:  # a path with a zero byte in it is a ValueError
+        said = getattr(err, "strerror", None) or err
+        raise refuse(f"cannot be read: {said}; name an existing {what} file") from err
     if len(raw) > LARGEST_FILE:
         raise refuse(f"is larger than {LARGEST_FILE // 2**20} MiB, which no {what} file is")
     try:

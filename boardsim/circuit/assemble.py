@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
 from boardsim.parts.elements import Port, Signal, plus
-from boardsim.parts.rules import DipRule, Limit, Rule
+from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule
 
 RAIL = "rail"
 SUPPLY = "supply_out"
@@ -60,8 +62,10 @@ class _Assembly:
         self.assumptions: dict[Assumption, None] = {}
         self.assumed: dict[int | None, dict[str, None]] = {}
         self.hints: dict[str, float] = {}
+        self.totals: dict[tuple[str, str, PeakRule, str], list[tuple[int, Signal]]] = {}
+        self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
 
-    def add(self, stamp: Stamp, channel: int | None, part: str, label: str) -> None:
+    def add(self, stamp: Stamp, channel: int | None, part: str, label: str, package: str = "") -> None:
         self.builder.add(stamp.elements)
         for probe in stamp.probes:
             self.signals[channel, probe.quantity] = probe.signal
@@ -72,6 +76,27 @@ class _Assembly:
         names = self.assumed.setdefault(channel, {})
         names.update(dict.fromkeys(f"{a.part} {a.quantity}" for a in stamp.assumptions))
         self.hints.update(stamp.hints)
+        for total in stamp.totals:
+            if channel is None:
+                continue
+            if isinstance(total.rule, HeatRule):
+                self.heats.setdefault((package, total.rule.part or part), []).append((channel, total.rule))
+            else:
+                self.totals.setdefault((package, part, total.rule, total.unit), []).append((channel, total.signal))
+
+    def add_totals(self) -> None:
+        """The sums over each package, and their rules."""
+        for (package, part, rule, unit), shares in self.totals.items():
+            quantity = f"{rule.quantity}, {package}"
+            self.signals[None, quantity] = plus(*(signal for _, signal in shares))
+            self.units[None, quantity] = unit
+            self.rules.append(PlacedRule(replace(rule, quantity=quantity), None, part, package))
+        for (package, part), heated in self.heats.items():
+            # A package heats by its switches and by what else of it is used, such as its clamp diodes.
+            powers = tuple(dict.fromkeys(pair for _, rule in heated for pair in rule.powers))
+            channels = tuple(dict.fromkeys(channel for channel, _ in heated))
+            whole = replace(heated[0][1], powers=powers, channels=channels)
+            self.rules.append(PlacedRule(whole, None, part, package))
 
 
 def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> Deck:
@@ -85,6 +110,7 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> De
         if channel.number in window.channels:
             _add_channel(parts, board, firing, corner, window, channel)
 
+    parts.add_totals()
     total = plus(*(s for (_, quantity), s in parts.signals.items() if quantity == "i_coil"))
     parts.signals[None, "i_total"] = total
     parts.units[None, "i_total"] = "A"
@@ -113,11 +139,17 @@ def _add_channel(
     register = board.chain.register_
     points = gate_points(firing.levels[channel.output], window, board.logic.level(corner), register.output_edge.typ)
     pin, drain = f"{name}_q", f"{name}_d"
+    coil_end = drain if channel.leads is None else f"{name}_k"
     parts.add(register.drive(f"{name}_q", pin, points), k, register.title or "register", label)
-    coil = channel.coil.stamp(name, channel.coil_name, RAIL, drain, corner, board.around)
+    coil = channel.coil.stamp(name, channel.coil_name, RAIL, coil_end, corner, board.around)
     parts.add(coil, k, channel.coil_name, label)
-    parts.add(channel.switch.stamp(f"{name}_s", pin, drain, corner), k, channel.switch.part.title or "switch", label)
-    parts.add(channel.clamp.stamp(f"{name}_c", drain, RAIL, corner), k, f"{channel.clamp.kind} clamp", label)
+    if channel.leads is not None:
+        parts.add(channel.leads.stamp(f"{name}_lead", coil_end, drain, corner, board.around), k, "leads", label)
+    switch = channel.switch.stamp(f"{name}_s", pin, drain, corner)
+    parts.add(switch, k, channel.switch.part.title or "switch", label, channel.package)
+    across = coil_end if channel.clamp.at_the_coil() else drain
+    clamp = channel.clamp.stamp(f"{name}_c", across, RAIL, corner)
+    parts.add(clamp, k, f"{channel.clamp.kind} clamp", label, channel.package or label)
 
 
 def _rail_rule(board: Board) -> Rule:

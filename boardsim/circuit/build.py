@@ -9,7 +9,9 @@ from PySpice.Spice.Netlist import Circuit, FixedPinElement
 
 from boardsim.parts.elements import (
     Ammeter,
+    Bipolar,
     Capacitor,
+    CurrentDrive,
     CurrentLaw,
     Drive,
     Element,
@@ -53,10 +55,15 @@ class Builder:
                     c.D(e.name, e.anode, e.cathode, model=self._model(e.model))
                 case PowerMosfet():
                     VerticalMosfet(c, e.name, e.drain, e.gate, e.source, model=self._model(e.model))
+                case Bipolar():
+                    c.BJT(e.name, e.collector, e.base, e.emitter, model=self._model(e.model))
                 case Ammeter():
                     c.V(e.name, e.a, e.b, 0)
                 case Drive():
                     c.PieceWiseLinearVoltageSource(e.name, e.plus, e.minus, values=list(e.points))
+                case CurrentDrive():
+                    # An I source's current flows from its first node through it to the second.
+                    c.PieceWiseLinearCurrentSource(e.name, e.minus, e.plus, values=list(e.points))
                 case CurrentLaw():
                     # A B source's current flows from its first node through it to the second.
                     c.BehavioralSource(e.name, e.minus, e.plus, current_expression=e.expression)

@@ -15,13 +15,17 @@ from typing import TYPE_CHECKING, Annotated, Any, ClassVar, Literal, Self, Union
 from pydantic import BeforeValidator, Field, ValidationError, ValidationInfo, WrapValidator
 from pydantic_core import InitErrorDetails, PydanticCustomError
 
-from boardsim.parts.elements import Element, Port, Probe
+from boardsim.parts.elements import Element, Port, Probe, Signal
+from boardsim.parts.proof import Proof
 from boardsim.parts.record import Name, Record, named_like, said, shown
-from boardsim.parts.rules import Rule
+from boardsim.parts.rules import HeatRule, PeakRule, Rule
 from boardsim.quantities import Bound, Quantity
 
 if TYPE_CHECKING:
     from boardsim.parts.coil import Coil
+
+
+T_MODEL = 298.15  # [K], at which datasheets give typical figures and where no ambient is given
 
 
 class Part(Record):
@@ -34,6 +38,26 @@ class Part(Record):
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this part, by the keys of `Corner.ends`."""
         return {}
+
+    def proofs(self) -> tuple[Proof, ...]:
+        """What of its datasheet the model can be held against; none for a part that has no model of its own."""
+        return ()
+
+    def per_package(self) -> int:
+        """How many channels share one package of this part; 0 where each has its own."""
+        return 0
+
+    def at_the_coil(self) -> bool:
+        """Whether a clamp sits at the coil's own ends and not on the board; only with leads between the two a difference."""
+        return False
+
+    def blocks(self, volts: float) -> bool:
+        """Whether a clamp carries no current to speak of while this voltage lies across the switch that is off. [V]"""
+        return True
+
+    def beside(self, switch: Part) -> str:
+        """What keeps a clamp from being used beside a switch, for people; nothing where it fits."""
+        return ""
 
     def in_the_way(self) -> float:
         """Highest resistance that a coil's current meets in this part once its switch is off: it sets how finely the decay
@@ -94,24 +118,29 @@ def any_of(classes: Sequence[type[Part]]) -> Any:
     return Annotated[Union[tuple(classes)], Field(discriminator="kind"), WrapValidator(without_tag)]  # noqa: UP007
 
 
-def named_part(cls: type[Part]) -> Any:
-    """A field that takes a part inline, or by its name from the board file or the library."""
+def named_part(cls: type[Part], *others: type[Part]) -> Any:
+    """A field that takes a part inline, or by its name from the board file or the library.
+
+    With several classes a table in place without a `kind` is of the first.
+    """
+    classes = {c.model_fields["kind"].default: c for c in (cls, *others)}
+    several: Any = Union[tuple(classes.values())] if others else cls  # noqa: UP007
 
     def find(value: Any, info: ValidationInfo) -> Any:
-        kind = cls.model_fields["kind"].default
+        kind = " or ".join(classes)
         if isinstance(value, str):
             if not info.context or "find" not in info.context:
                 raise PydanticCustomError("no_library", "a part by name needs a library")
-            return info.context["find"](cls, value)
+            return info.context["find"](cls, value, *others)
         if isinstance(value, Mapping):
-            if value.get("kind", kind) != kind:
+            if value.get("kind", cls.model_fields["kind"].default) not in [*classes]:  # which may be no word at all
                 raise said(f"this is {named_like(str(value['kind']))}; {named_like(kind)} is needed here")
-            return {"kind": kind, **value}
-        if not isinstance(value, cls):
+            return {"kind": cls.model_fields["kind"].default, **value}
+        if not isinstance(value, tuple(classes.values())):
             raise said(f"must be the name of {named_like(kind)} in quotes, or a table {{ ... }}; found {shown(value)}")
         return value
 
-    return Annotated[cls, BeforeValidator(find, json_schema_input_type=str | cls)]
+    return Annotated[any_of(tuple(classes.values())), BeforeValidator(find, json_schema_input_type=str | several)]
 
 
 @dataclass(frozen=True)
@@ -125,6 +154,24 @@ class Assumption:
 
 
 @dataclass(frozen=True)
+class Total:
+    """What the channels of one package add up to, and the rule that judges it, once for the package.
+
+    Attributes
+    ----------
+    rule : PeakRule or HeatRule
+        Its quantity is that of the sum.
+    signal : Signal
+        This channel's share of the sum; empty where the rule sums powers by itself.
+    unit : str
+    """
+
+    rule: PeakRule | HeatRule
+    signal: Signal = ()
+    unit: str = ""
+
+
+@dataclass(frozen=True)
 class Stamp:
     """What one part adds to the deck and to the judgement."""
 
@@ -133,6 +180,7 @@ class Stamp:
     ports: tuple[Port, ...] = ()
     rules: tuple[Rule, ...] = ()
     assumptions: tuple[Assumption, ...] = ()
+    totals: tuple[Total, ...] = ()
     hints: Mapping[str, float] = field(default_factory=dict)
     """Node voltages from which the operating point is sought. [V]"""
 
@@ -150,11 +198,14 @@ class Corner:
         "esr", "logic") to "min" or "max"; a key that is absent is taken at its typical value.
     winding : {"cold", "hot", "reference"}
         Winding temperature.
+    ambient : float
+        Warmest air around the board, from which junction temperatures count. [K]
     """
 
     name: str
     ends: Mapping[str, Bound] = field(default_factory=dict)
     winding: Literal["cold", "hot", "reference"] = "reference"
+    ambient: float = T_MODEL
 
     def take(self, quantity: Quantity, key: str) -> float:
         """The value of a quantity in this corner. [its unit]"""

@@ -2,39 +2,68 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Sequence
-from typing import Annotated, ClassVar, Literal
+from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Part, Stamp, listed
-from boardsim.parts.elements import Junction, Model, Port, Probe, Signal, scaled, voltage
+from boardsim.parts.base import NOMINAL, Corner, Part, Stamp, listed
+from boardsim.parts.elements import GROUND, CurrentDrive, Junction, Model, Port, Probe, Signal, scaled, voltage
+from boardsim.parts.heat import junction_heat
+from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.record import Record
-from boardsim.parts.rules import Limit, MeanRule, PeakRule, Rule
-from boardsim.quantities import CAPACITANCE, CURRENT, TIME, VOLTAGE, Quantity, assume
+from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule, Rule
+from boardsim.quantities import (
+    CAPACITANCE,
+    CURRENT,
+    POSITIVE_TIME,
+    TEMPERATURE,
+    THERMAL_RESISTANCE,
+    TIME,
+    VOLTAGE,
+    Quantity,
+    assume,
+    in_units,
+)
+
+if TYPE_CHECKING:
+    from boardsim.parts.led import Led
 
 THERMAL_VOLTAGE = 8.617333e-5 * 298.15  # [V] k T / q at 25 degC, CODATA
 _MOST_FOLDS = 250  # e-folds of current: about 11 V across the junction alone, more than stacked rectifiers have
 _RECOVERY_CURRENTS = 0.5  # forward over reverse current at which recovery times are given (0.5 A, 1 A), common practice
+_LEAST_SATURATION = 1e-28  # [A], what ngspice 39 takes instead of anything below it, measured
 EMISSION = 1.75  # silicon rectifier in its working range, from memory
+RAMP, SETTLE = 1e-3, 10e-3  # [s], of a test current: from nothing to its value, and until it is read
+_BASE = 0.1  # share of its peak above which a half sine lasts for 94 % of its base, by which surge ratings count
 
 
 class ForwardPoint(Record):
-    """One typical point of the forward characteristic."""
+    """One typical point of the forward characteristic; a band where the datasheet prints the ends of one."""
 
     voltage: Annotated[Quantity, VOLTAGE]
     current: Annotated[Quantity, CURRENT]
 
 
-def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, float, float]:
+class SurgePoint(Record):
+    """The highest current of a single pulse of a length."""
+
+    current: Annotated[Quantity, CURRENT]
+    lasting: Annotated[Quantity, POSITIVE_TIME]
+
+
+def forward_parameters(points: Sequence[tuple[float, float]], emission: float = EMISSION) -> tuple[float, float, float]:
     """Saturation current, emission coefficient and series resistance of a diode from forward points.
 
     Parameters
     ----------
     points : sequence of (voltage, current)
         Typical forward points, currents rising. [V], [A]
+    emission : float
+        Emission coefficient that is taken where the points leave it open. [1]
 
     Returns
     -------
@@ -48,9 +77,10 @@ def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, fl
 
     Notes
     -----
-    V = N V_T ln(I / I_S) + R_S I at 25 degC. One point: N is taken as 1.75 and R_S as 0. Two points: N as 1.75,
-    R_S from the difference; where that would be negative, R_S = 0 and N from the difference. More points: the
-    first and the last are used that way.
+    V = N V_T ln(I / I_S) + R_S I at 25 degC. One point: N is taken as `emission` and R_S as 0. Two points: N likewise,
+    R_S from the difference; where that would be negative, R_S = 0 and N from the difference. Where I_S would be below
+    1e-28 A, which ngspice does not take, I_S is that and N and R_S follow from the points. More points: the first and the
+    last are used that way.
 
     Examples
     --------
@@ -60,7 +90,7 @@ def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, fl
     """
     v1, i1 = points[0]
     v2, i2 = points[-1]
-    n, r_s = EMISSION, 0.0
+    n, r_s = emission, 0.0
     if len(points) > 1:
         if not (i2 > i1 and v2 > v1):
             raise QuantityError("forward points must rise in voltage and current")
@@ -72,8 +102,27 @@ def forward_parameters(points: Sequence[tuple[float, float]]) -> tuple[float, fl
         raise QuantityError("forward points rise more steeply than a junction with a series resistance does")
     if folds > _MOST_FOLDS:
         raise QuantityError(f"forward voltage {v2:.3g} V at {i2:.3g} A is more than that of one junction")
-    i_s = i2 / math.exp(folds)
-    return i_s, n, r_s
+    if folds > math.log(i2 / _LEAST_SATURATION):
+        return _at_the_least(points)
+    return i2 / math.exp(folds), n, r_s
+
+
+def _at_the_least(points: Sequence[tuple[float, float]]) -> tuple[float, float, float]:
+    """The same three numbers with the least saturation current that ngspice takes, N and R_S from the points.
+
+    Below 1e-28 A ngspice's diode goes on with 1e-28 A without a word: a junction of 3 V would come out at 2 V.
+    """
+    (v1, i1), (v2, i2) = points[0], points[-1]
+    f1, f2 = (THERMAL_VOLTAGE * math.log(i / _LEAST_SATURATION) for i in (i1, i2))
+    n, r_s = v2 / f2, 0.0
+    if len(points) > 1:  # v = N f + R_S i at both
+        r_s = (v2 * f1 - v1 * f2) / (i2 * f1 - i1 * f2)
+        n = (v2 - r_s * i2) / f2
+    if r_s < 0 or n <= 0:
+        raise QuantityError(
+            f"forward voltage {v2:.3g} V at {i2:.3g} A is more than that of one junction that rises as little as these points do"
+        )
+    return _LEAST_SATURATION, n, r_s
 
 
 class Diode(Part):
@@ -85,6 +134,10 @@ class Diode(Part):
     clipped. Stored charge from the recovery time; it ends abruptly, and the loop through switch and capacitor has no
     inductance, so current peaks when a channel is fired into a conducting clamp are upper bounds. Ignores the rise of
     the forward voltage at turn-on.
+
+    `surge` are single pulses (I_FSM against the base of a half sine): every pulse of the clamp is held against the
+    rating at its own length. A surge rating covers one pulse after a rest; what repeats is judged by
+    `repetitive_current` besides.
     """
 
     role: ClassVar[str] = "component"
@@ -93,6 +146,9 @@ class Diode(Part):
     reverse_voltage: Annotated[Quantity, VOLTAGE] | None = None
     average_current: Annotated[Quantity, CURRENT] | None = None
     repetitive_current: Annotated[Quantity, CURRENT] | None = None
+    surge: tuple[SurgePoint, ...] = ()
+    thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
+    junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
     capacitance: Annotated[Quantity, CAPACITANCE] = assume(
         "50 pF", CAPACITANCE, "rectifier of a few amperes, from memory"
     )
@@ -101,6 +157,7 @@ class Diode(Part):
     @model_validator(mode="after")
     def _coherent(self) -> Diode:
         self.parameters()
+        surge_points(self.surge)
         return self
 
     def parameters(self) -> tuple[float, float, float]:
@@ -113,7 +170,13 @@ class Diode(Part):
         """
         return forward_parameters([(p.voltage.typ, p.current.typ) for p in self.forward])
 
-    def stamp(self, name: str, label: str, anode: str, cathode: str, through: Signal) -> Stamp:
+    def proofs(self) -> tuple[Proof, ...]:
+        """Its forward voltage at every current that was given for it."""
+        return forward_proofs(self, self.forward)
+
+    def stamp(
+        self, name: str, label: str, anode: str, cathode: str, through: Signal, corner: Corner = NOMINAL
+    ) -> Stamp:
         """The diode between two nodes; `through` is the current from anode to cathode."""
         i_s, n, r_s = self.parameters()
         # Charge control: a diode that conducts I_F and is driven by I_R stays on for TT ln(1 + I_F / I_R).
@@ -161,7 +224,18 @@ class Diode(Part):
                 "choose a larger diode, or fire less often",
                 part=name_of,
             ),
+            junction_heat(
+                name_of,
+                label,
+                ((v, i),),
+                self.thermal_resistance,
+                self.junction_rating,
+                corner.ambient,
+                "choose a larger diode, more copper around it, or fire less often",
+            ),
         )
+        if self.surge:
+            rules += (self._surge_rule(name_of, label, i),)
         v_max = self.reverse_voltage.typ if self.reverse_voltage else 100.0
         # The junction gives its charge back at up to the reverse voltage, the stored carriers theirs near the drop.
         forward = self.forward[-1]
@@ -177,3 +251,53 @@ class Diode(Part):
             rules=rules,
             assumptions=listed(name_of, capacitance=self.capacitance, recovery_time=self.recovery),
         )
+
+    def _surge_rule(self, part: str, label: str, i: str) -> PulseRule:
+        points = surge_points(self.surge)
+        return PulseRule(
+            "surge",
+            (i,),
+            Limit.of(self.surge[0].current, "surge current", "A", "current", points[0][1]),
+            points,
+            self.repetitive_current.typ if self.repetitive_current is not None else 0.0,
+            _BASE,
+            "destroy",
+            f"surge of the {label}",
+            "choose a larger diode",
+            part=part,
+        )
+
+
+def surge_points(points: Sequence[SurgePoint]) -> tuple[tuple[float, float], ...]:
+    """Lengths [s] and currents [A] of surge ratings, the lengths rising.
+
+    Raises
+    ------
+    QuantityError
+        If a longer pulse may be higher, or two points have the same length.
+    """
+    found = sorted((p.lasting.typ, p.current.min) for p in points)
+    for (t1, i1), (t2, i2) in itertools.pairwise(found):
+        if t1 == t2 or i2 > i1:
+            raise QuantityError("surge points must fall in current as they rise in length, one for each length")
+    return tuple(found)
+
+
+def forward_proofs(part: Diode | Led, points: Sequence[ForwardPoint]) -> tuple[Proof, ...]:
+    """The forward voltage at every current given, with a current of a source through the part."""
+    anode = "a"
+    return tuple(
+        Proof(
+            f"forward voltage at {in_units(p.current.typ, 'A')}",
+            "V",
+            p.voltage,
+            (
+                CurrentDrive("test", anode, GROUND, ((0.0, 0.0), (RAMP, p.current.typ), (2 * SETTLE, p.current.typ))),
+                *part.stamp("x", "diode", anode, GROUND, ()).elements,
+            ),
+            SETTLE,
+            AtEnd(voltage(anode)),
+            why="one junction and one resistance pass through the first and the last point; those between may lie beside",
+        )
+        for p in points
+    )

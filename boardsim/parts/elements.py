@@ -67,6 +67,17 @@ class PowerMosfet:
 
 
 @dataclass(frozen=True)
+class Bipolar:
+    """A bipolar transistor (ngspice's Gummel-Poon model)."""
+
+    name: str
+    collector: str
+    base: str
+    emitter: str
+    model: Model
+
+
+@dataclass(frozen=True)
 class Ammeter:
     """A source of 0 V; the current through it counts from a to b."""
 
@@ -86,6 +97,16 @@ class Drive:
 
 
 @dataclass(frozen=True)
+class CurrentDrive:
+    """A current that comes out of `plus` and goes back into `minus`: times [s] and currents [A], straight lines between."""
+
+    name: str
+    plus: str
+    minus: str
+    points: tuple[tuple[float, float], ...]
+
+
+@dataclass(frozen=True)
 class CurrentLaw:
     """A current from minus to plus through the source, given by an expression of node voltages. [A]"""
 
@@ -95,7 +116,9 @@ class CurrentLaw:
     expression: str
 
 
-Element = Resistor | Inductor | Capacitor | Junction | PowerMosfet | Ammeter | Drive | CurrentLaw
+Element = (
+    Resistor | Inductor | Capacitor | Junction | PowerMosfet | Bipolar | Ammeter | Drive | CurrentDrive | CurrentLaw
+)
 
 Signal = tuple[tuple[float, str], ...]
 """A linear combination of saved vectors: ((coefficient, "v(node)" or "i(element)"), ...)."""

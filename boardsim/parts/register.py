@@ -27,6 +27,9 @@ class Register(Part):
     propagation: Annotated[Quantity, TIME]
     output_edge: Annotated[Quantity, POSITIVE_TIME]
     highest_clock: Annotated[Quantity, FREQUENCY] | None = None
+    timing_supply: Annotated[Quantity, VOLTAGE] | None = Field(
+        None, description="logic rail at which clock and times are given; below it the register is slower than they say"
+    )
     supply_low: Annotated[Quantity, VOLTAGE]
     supply_high: Annotated[Quantity, VOLTAGE]
 

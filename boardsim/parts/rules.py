@@ -71,6 +71,62 @@ class MeanRule:
 
 
 @dataclass(frozen=True)
+class HeatRule:
+    """A junction must stay cool enough at the average power of the pattern: T_j = T_ambient + R_th P.
+
+    `powers` are pairs of quantities whose products add up to the power. `resistance` is R_th to the ambient [K/W], `ambient`
+    the air around it in this run [K]; `limit` [K]. `channels` are those that share one package; empty: the rule's own.
+    """
+
+    check: str
+    powers: tuple[tuple[str, str], ...]
+    resistance: Limit
+    ambient: float
+    limit: Limit
+    consequence: Consequence
+    what: str
+    advice: str
+    part: str = ""
+    channels: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
+class PulseRule:
+    """Every single pulse of a quantity must stay below what the part stands for as long as that pulse lasts.
+
+    `quantities` is one, or two whose product counts. A pulse lasts from where it first is above `share` of its own peak
+    to where it last is. `points` are (length [s], rating), the lengths rising: between two of them the rating runs
+    straight on logarithmic scales, and a pulse shorter than the first has the first one's. Beyond the last it
+    falls with the square root of the length, as heat that spreads into the bulk of a chip has it (from memory), but not
+    below `lasting`, which the part stands however long. `limit` names the rating; its value is that of the first point.
+    """
+
+    check: str
+    quantities: tuple[str, ...]
+    limit: Limit
+    points: tuple[tuple[float, float], ...]
+    lasting: float
+    share: float
+    consequence: Consequence
+    what: str
+    advice: str
+    part: str = ""
+
+
+@dataclass(frozen=True)
+class EnergyRule:
+    """The energy of every single pulse of a power (the product of two quantities) must stay below a limit. [J]"""
+
+    check: str
+    quantities: tuple[str, str]
+    limit: Limit
+    consequence: Consequence
+    what: str
+    advice: str
+    part: str = ""
+
+
+@dataclass(frozen=True)
 class BreakdownRule:
     """The drain voltage of a switch: below breakdown against the rating, in avalanche by current and energy.
 
@@ -86,6 +142,7 @@ class BreakdownRule:
     avalanche_current: Limit
     single: Limit
     repetitive: Limit
+    what: str = "drain-source voltage"
 
 
 @dataclass(frozen=True)
@@ -104,6 +161,25 @@ class ReleaseRule:
     check: str
     quantity: str
     limit: Limit
+
+
+@dataclass(frozen=True)
+class DriveRule:
+    """At the end of every pulse, when its current is highest, a switch must be driven as hard as that current needs.
+
+    `needs` are pairs of current [A] and the drive that it needs [unit of the limit], currents rising; straight lines lie
+    between them, below the first the first's need counts, and above the last nothing is known. `limit` says what the
+    needs are and where they come from; its own value is not used.
+    """
+
+    check: str
+    quantity: str
+    current: str
+    needs: tuple[tuple[float, float], ...]
+    limit: Limit
+    consequence: Consequence
+    what: str
+    advice: str
 
 
 @dataclass(frozen=True)
@@ -128,4 +204,17 @@ class CeilingRule:
     what: str
 
 
-Rule = PeakRule | FloorRule | MeanRule | BreakdownRule | PullInRule | ReleaseRule | DipRule | CeilingRule
+Rule = (
+    PeakRule
+    | FloorRule
+    | DriveRule
+    | MeanRule
+    | HeatRule
+    | PulseRule
+    | EnergyRule
+    | BreakdownRule
+    | PullInRule
+    | ReleaseRule
+    | DipRule
+    | CeilingRule
+)

@@ -19,7 +19,8 @@ class Supply(Part):
 
     Notes
     -----
-    i = (V - v) / R between 0 and the ceiling: constant current at overload, nothing taken back above V. Ignores
+    i = (V - v) / R between 0 and the ceiling: constant current at overload, nothing taken back above V. A ceiling with
+    a tolerance counts at its lower end, in the model and as a limit. Ignores
     the control loop's response, soft start, hiccup and fold-back. An internal load keeps the idle rail defined.
     """
 
@@ -43,7 +44,7 @@ class Supply(Part):
         one_way = f"(0.5*({asked}+sqrt({asked}*{asked}+{4 * _ONE_WAY_WIDTH**2!r})))"
         law = one_way
         if self.current_ceiling is not None:
-            top = self.current_ceiling.typ
+            top = self.current_ceiling.min
             gap = f"({one_way}-{top!r})"
             law = f"0.5*({one_way}+{top!r}-sqrt({gap}*{gap}+{4 * (_CEILING_WIDTH * top) ** 2!r}))"
         meter = Ammeter("supply", inside, plus)
@@ -58,7 +59,13 @@ class Supply(Part):
                 CeilingRule(
                     "supply-ceiling",
                     "i_supply",
-                    Limit.of(self.current_ceiling, "current ceiling", "A", None),
+                    Limit.of(
+                        self.current_ceiling,
+                        "current ceiling",
+                        "A",
+                        None,
+                        self.current_ceiling.min if self.current_ceiling else None,
+                    ),
                     "the supply's current",
                 ),
             ),

@@ -7,11 +7,25 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Corner, Part, Stamp, listed
-from boardsim.parts.diode import THERMAL_VOLTAGE
-from boardsim.parts.elements import Junction, Model, Port, Probe, Resistor, Signal, voltage
-from boardsim.parts.rules import Limit, MeanRule, PeakRule
-from boardsim.quantities import CAPACITANCE, CURRENT, POWER, RESISTANCE, VOLTAGE, Quantity, assume, in_units
+from boardsim.parts.base import NOMINAL, Corner, Part, Stamp, listed
+from boardsim.parts.diode import RAMP, SETTLE, THERMAL_VOLTAGE
+from boardsim.parts.elements import GROUND, CurrentDrive, Junction, Model, Port, Probe, Resistor, Signal, voltage
+from boardsim.parts.heat import junction_heat
+from boardsim.parts.proof import AtEnd, Proof
+from boardsim.parts.rules import EnergyRule, Limit, MeanRule, PeakRule, Rule
+from boardsim.quantities import (
+    CAPACITANCE,
+    CURRENT,
+    ENERGY,
+    POWER,
+    RESISTANCE,
+    TEMPERATURE,
+    THERMAL_RESISTANCE,
+    VOLTAGE,
+    Quantity,
+    assume,
+    in_units,
+)
 
 
 class Zener(Part):
@@ -32,6 +46,9 @@ class Zener(Part):
     impedance: Annotated[Quantity, RESISTANCE]
     power: Annotated[Quantity, POWER] | None = None
     surge_current: Annotated[Quantity, CURRENT] | None = None
+    pulse_energy: Annotated[Quantity, ENERGY] | None = None
+    thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
+    junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
     leakage: Annotated[Quantity, CURRENT] = assume(
         "1 uA", CURRENT, "at three quarters of the Zener voltage, from memory"
     )
@@ -46,6 +63,29 @@ class Zener(Part):
                 f"{in_units(self.voltage.min, 'V')}"
             )
         return self
+
+    @property
+    def clamping(self) -> Quantity:
+        """What its corners vary: the voltage that it holds at the test current. [V]"""
+        return self.voltage
+
+    def proofs(self) -> tuple[Proof, ...]:
+        """Its voltage at the test current."""
+        held = "a"
+        return (
+            Proof(
+                f"Zener voltage at {in_units(self.test_current.typ, 'A')}",
+                "V",
+                self.voltage,
+                (
+                    CurrentDrive("test", held, GROUND, steady_current(self.test_current.typ)),
+                    *self.stamp("x", "Zener", held, GROUND, (), NOMINAL).elements,
+                ),
+                SETTLE,
+                AtEnd(voltage(held)),
+                why="the model passes through this point; the impedance sets its slope",
+            ),
+        )
 
     def stamp(self, name: str, label: str, positive: str, negative: str, through: Signal, corner: Corner) -> Stamp:
         """The Zener with `positive` at its cathode; `through` is the current from positive to negative."""
@@ -74,25 +114,55 @@ class Zener(Part):
             ),
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
             ports=(Port(label, ((v, i),), holds=0.5 * self.capacitance.typ * v_z**2),),
-            rules=(
-                PeakRule(
-                    "overcurrent",
-                    i,
-                    Limit.of(self.surge_current, "peak current", "A", "current"),
+            rules=self._rules(name_of, label, v, i, corner),
+            assumptions=listed(name_of, leakage=self.leakage, capacitance=self.capacitance),
+        )
+
+    def _rules(self, name_of: str, label: str, v: str, i: str, corner: Corner) -> tuple[Rule, ...]:
+        rules: tuple[Rule, ...] = (
+            PeakRule(
+                "overcurrent",
+                i,
+                Limit.of(self.surge_current, "peak current", "A", "current"),
+                "destroy",
+                f"peak current of the {label}",
+                "choose a larger Zener or a transient suppressor",
+                part=name_of,
+            ),
+            MeanRule(
+                "overpower",
+                (v, i),
+                Limit.of(self.power, "power", "W", "power"),
+                "destroy",
+                f"average power of the {label}",
+                "choose a larger Zener, or fire less often",
+                part=name_of,
+            ),
+            junction_heat(
+                name_of,
+                label,
+                ((v, i),),
+                self.thermal_resistance,
+                self.junction_rating,
+                corner.ambient,
+                "choose a larger Zener, more copper around it, or fire less often",
+            ),
+        )
+        if self.pulse_energy is not None:
+            rules += (
+                EnergyRule(
+                    "surge",
+                    (v, i),
+                    Limit.of(self.pulse_energy, "pulse energy", "J", "energy"),
                     "destroy",
-                    f"peak current of the {label}",
+                    f"energy of a pulse in the {label}",
                     "choose a larger Zener or a transient suppressor",
                     part=name_of,
                 ),
-                MeanRule(
-                    "overpower",
-                    (v, i),
-                    Limit.of(self.power, "power", "W", "power"),
-                    "destroy",
-                    f"average power of the {label}",
-                    "choose a larger Zener, or fire less often",
-                    part=name_of,
-                ),
-            ),
-            assumptions=listed(name_of, leakage=self.leakage, capacitance=self.capacitance),
-        )
+            )
+        return rules
+
+
+def steady_current(amperes: float) -> tuple[tuple[float, float], ...]:
+    """The points of a current that rises from nothing and stays, for a test circuit. [s], [A]"""
+    return ((0.0, 0.0), (RAMP, amperes), (2 * SETTLE, amperes))

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import contextlib
+import json
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -14,17 +16,41 @@ from rich.text import Text
 
 from boardsim.errors import EXIT_LIMIT_BROKEN, EXIT_PASS, EXIT_UNPROVEN, EXIT_WRONG_INPUT, Problem
 from boardsim.quantities import in_units
+from boardsim.report.folder import make_ready
 from boardsim.report.json_report import result_to_dict, write_json
 from boardsim.report.junit import write_joint_junit
-from boardsim.report.terminal import sentences_table
+from boardsim.report.terminal import print_section, sentences_table
 from boardsim.report.wording import grouped, many, plain, standing
-from boardsim.verdict.expectations import Outcome
+from boardsim.verdict.expectations import IDLE, Outcome
 from boardsim.verdict.findings import CAUTIONS, Finding
 
 SCHEMA = "boardsim-scenarios/1"
 SCHEMA_FILE = Path(__file__).with_name("scenarios.schema.json")
 _WORDS = {EXIT_PASS: "pass", EXIT_LIMIT_BROKEN: "fail", EXIT_WRONG_INPUT: "wrong input", EXIT_UNPROVEN: "unproven"}
 _STYLES = {"pass": "green", "fail": "bold red", "unproven": "bold magenta", "wrong input": "bold red"}
+
+
+def remove_gone(out: Path, folders: Iterable[Path]) -> None:
+    """Take away the results of scenarios that an earlier run had and this one has not: they were renamed or removed.
+
+    Raises
+    ------
+    InputError
+        If they cannot be removed.
+    """
+    kept = {folder.as_posix() for folder in folders}
+    try:
+        before = json.loads((out / "findings.json").read_text(encoding="utf-8"))
+        earlier = [str(s["folder"]) for s in before["scenarios"]] if before["schema"] == SCHEMA else []
+    except (OSError, ValueError, KeyError, TypeError):
+        return  # nothing of ours is there
+    for name in earlier:
+        folder = out / name
+        if name not in kept and folder.resolve().is_relative_to(out.resolve()) and folder.is_dir():
+            make_ready(folder)
+            with contextlib.suppress(OSError):
+                folder.rmdir()  # only if nothing else is in it
+                folder.parent.rmdir()
 
 
 def write_collection(outcomes: Sequence[Outcome], problems: Sequence[Problem], status: int, out: Path) -> None:
@@ -106,7 +132,8 @@ def print_collection(
     out : Path
         Where the files are.
     """
-    console.print(_table(outcomes, console.width))
+    if outcomes:
+        console.print(_table(outcomes, console.width))
     for o in outcomes:
         bad = _what_counts(o)
         if o.status == EXIT_PASS or not (bad or o.surprises):
@@ -126,12 +153,15 @@ def print_collection(
         for o, group in accepted:
             console.print(Text(f"  {plain(o.name)}"))
             console.print(sentences_table([group]))
-    notes = [(o.name, note) for o in outcomes if o.result is not None for note in o.result.notes]
-    if notes:
-        console.print()
-        console.print(Text("Notes", "bold"))
-        for name, note in notes:
-            console.print(Text(f"  {plain(name)}: {plain(note)}"))
+    # What a scenario has to say about itself stands in its own report; here only what asks for something to be done.
+    notes = [
+        f"{o.name}: {note}"
+        for o in outcomes
+        if o.result is not None
+        for note in o.result.notes
+        if o.status != EXIT_PASS or note.startswith(IDLE)
+    ]
+    print_section(console, "Notes", notes)
     console.print()
     fine = sum(o.status == EXIT_PASS for o in outcomes)
     word = _WORDS[status]

@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import secrets
+import time
 from collections.abc import Callable
 from pathlib import Path
 
 from boardsim.errors import InputError
+
+_STALE = 60.0  # [s], far more than writing a file takes
 
 
 def write_whole(path: Path, write: Callable[[Path], None]) -> None:
@@ -55,7 +59,7 @@ def write_bytes(path: Path, content: bytes) -> None:
 
 
 def remove_unfinished(folder: Path) -> None:
-    """Remove what a killed run left beside its files' places.
+    """Remove what a killed run left beside its files' places; what is fresh may be another run's, at work.
 
     Raises
     ------
@@ -63,7 +67,9 @@ def remove_unfinished(folder: Path) -> None:
         If the folder cannot be read or a file not be removed.
     """
     for left in folder.glob(".*.part"):
-        left.unlink(missing_ok=True)
+        with contextlib.suppress(FileNotFoundError):  # the other run has just finished it
+            if time.time() - left.stat().st_mtime > _STALE:
+                left.unlink()
 
 
 def write_text(path: Path, text: str) -> None:

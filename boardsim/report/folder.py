@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import os
+from collections.abc import Iterable
 from pathlib import Path
 
 from rich.console import Console
@@ -32,16 +33,27 @@ _OURS = (
 )
 
 
-def make_ready(folder: Path) -> None:
+def make_ready(folder: Path, inputs: Iterable[Path] = ()) -> None:
     """Make a folder for results, and take away what an earlier run left there.
 
     An old verdict must not stand for a run that comes to nothing.
+
+    Parameters
+    ----------
+    folder : Path
+    inputs : iterable of Path
+        Files of the user's, which must not lie in the same folder: it may hold more that is theirs.
 
     Raises
     ------
     InputError
         If the folder cannot be used.
     """
+    if (mine := next((p for p in inputs if p.parent.resolve() == folder.resolve()), None)) is not None:
+        raise InputError(
+            f"{folder}: holds {mine.name}, which results must not lie beside: they would overwrite files of the same names; "
+            "choose another folder with --out"
+        )
     try:
         folder.mkdir(parents=True, exist_ok=True)
         usable = os.access(folder, os.W_OK | os.X_OK)
@@ -96,5 +108,5 @@ def draw_main(result: Result, folder: Path) -> Path:
 def printed(result: Result, picture: Path, folder: Path) -> str:
     """What stands on the terminal after a run, as plain text."""
     text = io.StringIO()
-    print_result(result, Console(file=text, width=100), picture, folder)
+    print_result(result, Console(file=text, width=100, force_terminal=False, color_system=None), picture, folder)
     return text.getvalue()

@@ -68,16 +68,16 @@ def print_result(result: Result, console: Console, picture: Path | None, folder:
     if groups:
         console.print(_table(groups) if console.width >= NARROWEST_TABLE else _blocks(groups))
     _sentences(console, [g for g in groups if g.worst.verdict != "pass"])
-    _section(console, "Firing", result.firing)
-    _section(console, "Notes", result.notes)
-    _section(
+    print_section(console, "Firing", result.firing)
+    print_section(console, "Notes", result.notes)
+    print_section(
         console,
         "Assumed, since the files do not say",
         [f"{where}: {a.quantity} {a.value} ({a.why})" for where, a in assumed_alike(result.assumptions)],
     )
-    _section(console, "Audit", _audit_lines(result))
-    _section(console, "Time", _time_line(result))
-    _section(console, "Cautions", CAUTIONS)
+    print_section(console, "Audit", _audit_lines(result))
+    print_section(console, "Time", _time_line(result))
+    print_section(console, "Cautions", CAUTIONS)
     # Not wrapped: a path broken over two lines can be neither copied nor searched for.
     console.print()
     line = Text.assemble(
@@ -205,7 +205,8 @@ def sentences_table(groups: Sequence[Group]) -> Table:
     return lines
 
 
-def _section(console: Console, title: str, lines: Iterable[str]) -> None:
+def print_section(console: Console, title: str, lines: Iterable[str]) -> None:
+    """Print lines under a title, as a list; nothing where there are none."""
     lines = list(lines)
     if not lines:
         return

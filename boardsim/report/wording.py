@@ -10,7 +10,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from boardsim.parts.base import Assumption
-from boardsim.quantities import apart, in_units
+from boardsim.quantities import apart, celsius, in_units
 from boardsim.verdict.findings import Finding, Result, Verdict, severity
 
 # Verdicts in the order in which they are named: what needs attention first.
@@ -104,6 +104,8 @@ def value_and_limit(finding: Finding) -> tuple[str, str]:
         return _number(finding.value, finding.unit, 3), "not given"
     if not (math.isfinite(finding.value) and math.isfinite(finding.limit)):
         return _number(finding.value, finding.unit, 3), _number(finding.limit, finding.unit, 3)
+    if finding.unit == "K":
+        return celsius(finding.value), celsius(finding.limit)
     value, limit = apart(finding.value, finding.limit, finding.unit)
     return value.strip(), limit.strip()
 

@@ -28,6 +28,7 @@ def run_corners(
     also: Sequence[Finding] = (),
     measure: Measure | None = None,
     pictured: bool = True,
+    repeated: bool = False,
 ) -> list[CornerResult]:
     """Run a firing in several corners, as many at a time as the crew can; results in the order of `wanted`.
 
@@ -39,6 +40,8 @@ def run_corners(
         Told the share of the work done, from any thread.
     also, measure, pictured
         See `run_corner`.
+    repeated : bool
+        Whether what the firing does once stands for what is done again and again.
 
     Raises
     ------
@@ -59,7 +62,7 @@ def run_corners(
 
     def one(i: int) -> CornerResult:
         corner = wanted[i]
-        bench = Bench(board, corner.name, only)
+        bench = Bench(board, corner.name, only, repeated)
         folder = keep if len(wanted) == 1 else keep / f"corner{i + 1}"
         return run_corner(
             board,

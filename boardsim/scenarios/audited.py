@@ -224,8 +224,8 @@ def _fits(deck: Deck, settings: Settings, folder: Path) -> None:
     free = shutil.disk_usage(folder).free
     if least > free / 2:
         raise InputError(
-            f"a pattern of {deck.window.stop:g} s would write at least {least / 2**30:.1f} GiB of waveforms for one run, and "
-            f"{free / 2**30:.1f} GiB are free; shorten the pattern, or set TMPDIR to a larger disk"
+            f"a pattern of {deck.window.stop:g} s would write at least {least / 2**20:.0f} MiB of waveforms for one run, and "
+            f"{free / 2**20:.0f} MiB are free; shorten the pattern, or set TMPDIR to a larger disk"
         )
 
 

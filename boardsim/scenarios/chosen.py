@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import itertools
 import os
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
@@ -34,7 +35,9 @@ class Chosen:
     today: datetime.date
 
 
-def choose(paths: Sequence[Path], only: str | None, strict: bool, day: str | None) -> Chosen:
+def choose(
+    paths: Sequence[Path], only: str | None, strict: bool, day: str | None, libraries: Sequence[Path] = ()
+) -> Chosen:
     """Read the scenarios at and below paths.
 
     Parameters
@@ -47,11 +50,13 @@ def choose(paths: Sequence[Path], only: str | None, strict: bool, day: str | Non
         Whether a missing limit counts as broken in all of them.
     day : str or None
         The day by which acceptances are judged, such as "2027-01-31"; today if None.
+    libraries : sequence of Path
+        The user's folders of parts.
 
     Raises
     ------
     InputError
-        If there is nothing to run.
+        If the call is wrong. Where every file is wrong nothing is left to run, and `problems` says why.
     """
     try:
         today = datetime.date.fromisoformat(day) if day is not None else datetime.date.today()
@@ -61,31 +66,36 @@ def choose(paths: Sequence[Path], only: str | None, strict: bool, day: str | Non
     problems: dict[Problem, None] = {}
     for path in find_files(paths):
         try:
-            found, mistakes = read_scenarios(path)
+            found, mistakes = read_scenarios(path, libraries)
         except InputError as err:
             found, mistakes = (), err.problems
         scenarios += found
         problems.update(dict.fromkeys(mistakes))
     folders = folders_of(scenarios)
-    wanted = [i for i, folder in enumerate(folders) if only is None or only in folder.as_posix()]
+    wanted = [
+        i for i, folder in enumerate(folders) if only is None or only in folder.as_posix() or only in scenarios[i].name
+    ]
+    if only is not None and not wanted and problems:
+        raise InputError(problems)  # what is meant may be among those that could not be read
     if only is not None and not wanted:
         names = ", ".join(f.as_posix() for f in folders) or "none"
         raise InputError(f'--only "{only}": no scenario has this in its name; there are: {names}')
-    if not scenarios:
-        raise InputError(problems)
     chosen = tuple(replace(scenarios[i], strict=strict or scenarios[i].strict) for i in wanted)
     return Chosen(chosen, tuple(folders[i] for i in wanted), tuple(problems), today)
 
 
 def folders_of(scenarios: Sequence[Scenario]) -> list[Path]:
     """A folder for each scenario, relative to the folder of all: as the scenario files lie to each other."""
-    homes = [s.path.resolve().parent for s in scenarios]
+    homes = [s.path.parent.resolve() for s in scenarios]
     common = Path(os.path.commonpath(homes)) if homes else Path()
-    names: dict[Path, int] = {}
-    folders = []
+    plain = []
     for home, s in zip(homes, scenarios, strict=True):
         inside = home.relative_to(common)
-        folder = (Path(common.name) if inside == Path() else inside) / plain_path(s.name)
-        names[folder] = names.get(folder, 0) + 1
-        folders.append(folder if names[folder] == 1 else folder.with_name(f"{folder.name}-{names[folder]}"))
+        plain.append((Path(common.name) if inside == Path() else inside) / plain_path(s.name))
+    folders: list[Path] = []
+    for i, folder in enumerate(plain):
+        # What others are called by right is not given away to the second of one name.
+        taken = {*folders, *plain[:i], *plain[i + 1 :]} if folder in folders else set(folders)
+        numbered = (folder.with_name(f"{folder.name}-{n}") for n in itertools.count(2))
+        folders.append(next(f for f in itertools.chain([folder], numbered) if f not in taken))
     return folders

@@ -31,7 +31,7 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
     Notes
     -----
     Of every kind the combinations of library parts (`Part.candidates`), less those with a part that is rated for less
-    than the coil's current: their rows would only repeat that. A kind of which no combination carries the current
+    than the coil's current, or that conducts at the highest rail: their rows would only repeat that. A kind of which no combination carries the current
     stays whole, since each kind is to be seen. Of more than `MOST_OF_A_KIND` those are taken that lie evenly in
     the library's order, with the first and the last.
     """
@@ -39,7 +39,14 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
     shown: list[Part] = []
     remarks: list[str] = []
     for kind, cls in kinds("clamp").items():
-        offered = [c for c in cls.candidates(_of_the_library, channel.coil) if c != channel.clamp]
+        like = {"at": "coil"} if channel.clamp.at_the_coil() and "at" in cls.model_fields else {}
+        offered = [c.model_copy(update=like) for c in cls.candidates(_of_the_library, channel.coil)]
+        offered = [c for c in offered if c != channel.clamp]
+        blocking = [c for c in offered if c.blocks(board.supply.voltage.max)]
+        if blocking and len(blocking) < len(offered):
+            through = "; ".join(clamp_in_words(c) for c in offered if c not in blocking)
+            remarks.append(f"not tried, conducts at the rail of {in_units(board.supply.voltage.max, 'V')}: {through}")
+            offered = blocking
         strong = [c for c in offered if _carries(c, current, bench)]
         weak = [clamp_in_words(c) for c in offered if c not in strong] if strong else []
         if weak:
@@ -72,6 +79,7 @@ def _spread(clamps: Sequence[Part]) -> list[Part]:
 
 def clamp_in_words(clamp: Part) -> str:
     """A clamp's kind with its parts and its numbers, such as "diode-zener: fast-2a, 24v-5w"."""
-    found = [value.title or value.kind for _, value in clamp if isinstance(value, Part)]
+    found = ["at the coil"] if clamp.at_the_coil() else []
+    found += [value.title or value.kind for _, value in clamp if isinstance(value, Part)]
     found += [in_units(value.typ, value.unit) for _, value in clamp if isinstance(value, Quantity)]
     return clamp.kind + (f": {', '.join(found)}" if found else "")

@@ -159,7 +159,7 @@ def _traces(board: Board, firing: Firing, shown: CornerResult | None) -> Traces 
         firing.on,
         {c.number: c.label for c in board.channels},
         brown_out.voltage.typ if brown_out else None,
-        ceiling.typ if ceiling else None,
+        ceiling.min if ceiling else None,
         shown.trial.readings.low[None, "v_rail"],
     )
 

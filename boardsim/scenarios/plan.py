@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Iterable
-from dataclasses import dataclass
+import os
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
-from pydantic import BeforeValidator, Field, ValidationError
+from pydantic import AfterValidator, BeforeValidator, Field, ValidationError
 
 from boardsim.board.conditions import Conditions, under
 from boardsim.board.ranges import read_range, write_range
@@ -35,6 +36,12 @@ def _day(value: Any) -> datetime.date:
     raise said(f"{shown(value)} is not a day; write it such as 2027-06-30")
 
 
+def _words(text: str) -> str:
+    if not text.strip():
+        raise said('"reason" is empty; say why the failure is lived with')
+    return text
+
+
 Day = Annotated[datetime.date, BeforeValidator(_day, json_schema_input_type=datetime.date)]
 
 
@@ -45,7 +52,7 @@ class KnownRecord(Record):
     channels: str | None = Field(None, description="on which channels; anywhere if absent")
     part: Name | None = None
     quantity: str | None = None
-    reason: Annotated[str, Field(min_length=1, description="why it is lived with, for the report")]
+    reason: Annotated[str, AfterValidator(_words)] = Field(description="why it is lived with, for the report")
     until: Day = Field(description="last day; from the next on it counts as broken again")
 
 
@@ -63,13 +70,15 @@ class ScenarioRecord(Record):
     board: str | None = Field(None, description="board file, relative to this one; the file's own if absent")
     pattern: str | None = Field(None, description="for fire: pattern file, relative to this one")
     channel: Annotated[int, Field(strict=True, ge=0)] | None = Field(None, description="for release: which channel")
-    every_clamp: bool | None = Field(None, description="for release: every kind of clamp side by side")
+    every_clamp: bool | None = Field(None, strict=True, description="for release: every kind of clamp side by side")
     width: Annotated[Quantity, POSITIVE_TIME] | None = Field(None, description="for volley: width of the pulse")
     at_least: Annotated[int, Field(strict=True, ge=1)] | None = Field(
         None, description="for volley: how many channels must pass at once; the board's most_on if absent"
     )
     conditions: ConditionsRecord = ConditionsRecord()
-    strict: bool | None = Field(None, description="whether a missing limit counts as broken; the file's own if absent")
+    strict: bool | None = Field(
+        None, strict=True, description="whether a missing limit counts as broken; the file's own if absent"
+    )
     expect: Expected | None = Field(None, description="the worst verdict that is all right, or fail")
     breaks: tuple[Name, ...] = Field((), description="the checks that have to break, and no others")
     accepted: tuple[KnownRecord, ...] = ()
@@ -79,7 +88,7 @@ class ScenarioFile(Record):
     """The scenarios of a board; its `board`, `strict` and `accepted` hold for all of them."""
 
     board: str = "board.toml"
-    strict: bool = False
+    strict: bool = Field(False, strict=True)
     accepted: tuple[KnownRecord, ...] = ()
     scenarios: Annotated[dict[Name, ScenarioRecord], Field(min_length=1)]
 
@@ -130,22 +139,45 @@ def find_files(paths: Iterable[Path]) -> tuple[Path, ...]:
     """
     found: dict[Path, Path] = {}
     for path in paths:
-        if path.is_file():
-            here = [path]
-        elif path.is_dir():
-            inside = (p for p in path.rglob(FILE_NAME) if p.is_file())
-            here = sorted(p for p in inside if not any(s.startswith(".") for s in p.relative_to(path).parts))
-        else:
-            raise InputError(f"{path}: there is no such file or folder")
+        try:
+            here = [path] if path.is_file() else sorted(_below(path)) if path.is_dir() else None
+            missing = here is None and not path.exists()
+        except (OSError, ValueError) as err:
+            raise InputError(f"{str(path)[:200]}: cannot be read: {getattr(err, 'strerror', None) or err}") from None
+        if here is None:
+            what = "there is no such file or folder" if missing else "is neither a file nor a folder"
+            raise InputError(f"{path}: {what}")
         if not here:
             raise InputError(f"{path}: no {FILE_NAME} at or below it; write one beside a board")
         for one in here:
-            found.setdefault(one.resolve(), one)
+            # Boards and patterns are found beside the file: one text linked into two folders is two files.
+            found.setdefault(one.parent.resolve() / one.name, one)
     return tuple(found.values())
 
 
-def read_scenarios(path: Path) -> tuple[tuple[Scenario, ...], tuple[Problem, ...]]:
-    """Read a scenario file with its boards and patterns.
+def _below(top: Path) -> Iterator[Path]:
+    """Scenario files in and below a folder, linked folders included, each folder once.
+
+    Raises
+    ------
+    OSError
+        If a folder cannot be read: a board that is left out must not look as if it passed.
+    """
+
+    def refuse(error: OSError) -> None:
+        raise error
+
+    seen: set[str] = set()
+    for folder, inside, files in os.walk(top, followlinks=True, onerror=refuse):
+        real = os.path.realpath(folder)
+        inside[:] = [] if real in seen else sorted(name for name in inside if not name.startswith("."))
+        if real not in seen and FILE_NAME in files:
+            yield Path(folder) / FILE_NAME
+        seen.add(real)
+
+
+def read_scenarios(path: Path, libraries: Sequence[Path] = ()) -> tuple[tuple[Scenario, ...], tuple[Problem, ...]]:
+    """Read a scenario file with its boards and patterns; `libraries` are the user's folders of parts.
 
     Returns
     -------
@@ -157,7 +189,7 @@ def read_scenarios(path: Path) -> tuple[tuple[Scenario, ...], tuple[Problem, ...
     InputError
         If the file itself cannot be used.
     """
-    file = read_toml(path, "scenario file")
+    file = read_toml(path, "scenario")
     if "supply" in file.data and "scenarios" not in file.data:
         raise InputError([file.problem((), f"is a board; scenarios stand in a {FILE_NAME} beside it")])
     try:
@@ -168,17 +200,19 @@ def read_scenarios(path: Path) -> tuple[tuple[Scenario, ...], tuple[Problem, ...
     found = []
     for name, record in raw.scenarios.items():
         try:
-            found.append(_scenario(name, record, raw, file))
+            found.append(_scenario(name, record, raw, file, libraries))
         except InputError as err:
             problems.update(dict.fromkeys(err.problems or [file.problem(("scenarios", name), str(err))]))
     return tuple(found), tuple(problems)
 
 
-def _scenario(name: str, record: ScenarioRecord, raw: ScenarioFile, file: TomlFile) -> Scenario:
+def _scenario(
+    name: str, record: ScenarioRecord, raw: ScenarioFile, file: TomlFile, libraries: Sequence[Path]
+) -> Scenario:
     keys: Keys = ("scenarios", name)
     problems = _misplaced(record, file, keys)
     folder = file.path.parent
-    board = read_board(folder / (record.board or raw.board))
+    board = read_board(folder / (record.board or raw.board), libraries)
     numbers = {c.number for c in board.channels}
     known = _known(record, file, (*keys, "accepted"), numbers, problems)
     common = ScenarioRecord(accepted=raw.accepted)
@@ -242,7 +276,8 @@ def _known(
             except QuantityError as err:
                 problems.append(file.problem_at((*keys, i, "channels"), str(err)))
             if beyond := [n for n in channels if n not in numbers]:
-                text = f"channels {write_range(beyond)} are not on the board"
+                text = f"{'channel' if len(beyond) == 1 else 'channels'} {write_range(beyond)} not on the board, which has {write_range(sorted(numbers))}"
                 problems.append(file.problem_at((*keys, i, "channels"), text))
-        found.append(KnownFailure(known.check, known.reason, known.until, channels, known.part, known.quantity))
+        one = KnownFailure(known.check, known.reason, known.until, channels, known.part, known.quantity)
+        found.append(replace(one, shared=keys == ("accepted",)))
     return found

@@ -133,7 +133,7 @@ def chosen_channels(board: Board, number: int | None, only_one: bool) -> list[Ch
         return [board.channel(number)]
     builds: dict[tuple[object, ...], Channel] = {}
     for c in board.channels:
-        builds.setdefault((c.coil, c.coil_name, c.switch, c.clamp), c)
+        builds.setdefault((c.coil, c.coil_name, c.switch, c.clamp, c.leads), c)
     first = list(builds.values())
     return first[:1] if only_one else first
 
@@ -191,12 +191,34 @@ def _turn_off(
     result = fire_pattern(one, pattern, keep, strict, crew, progress, watch, pictured=own)
     # How many channels are on at once cannot be broken by one, whether or not a limit was given.
     findings = tuple(f for f in result.findings if f.shape != "count")
+    if not watch.found:
+        findings = (*findings, _nothing(channel, result))
     proven = result.proven and bool(watch.found)
     result = replace(result, findings=findings, verdict=overall(findings, proven, strict))
     row = _row(channel, own, watch, result, proven)
     said = f"{channel.label} is on for {in_units(pattern.pulses[0].width, 's')}, twice; all other channels stay off"
     result = replace(result, firing=(said, *result.firing))
     return _Done(row, result, tuple(_remarks(row, watch)))
+
+
+def _nothing(channel: Channel, result: Result) -> Finding:
+    """What stands for the readings that there are not: whatever else is accepted, nothing was measured."""
+    text = f"{channel.label} was not turned off, so that nothing of its release was measured"
+    return Finding(
+        NAME,
+        "turn-off",
+        "register chain",
+        channel.number,
+        channel.label,
+        0.0,
+        None,
+        "1",
+        None,
+        None,
+        "misbehave",
+        "unproven",
+        "; ".join([text, *result.notes]),
+    )
 
 
 def _row(channel: Channel, own: bool, watch: ReleaseWatch, result: Result, proven: bool) -> ReleaseRow:

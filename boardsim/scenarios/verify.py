@@ -19,7 +19,7 @@ from boardsim.scenarios.fire import fire_pattern
 from boardsim.scenarios.plan import Scenario
 from boardsim.scenarios.release import release_channel
 from boardsim.scenarios.volley import volley
-from boardsim.verdict.expectations import Outcome, accept, compare
+from boardsim.verdict.expectations import IDLE, Outcome, accept, compare
 from boardsim.verdict.findings import Result
 
 # Drawing changes settings of its library that all threads share.
@@ -96,8 +96,9 @@ def verify_all(
         If a folder or a file cannot be written.
     """
     scenarios, folders = chosen.scenarios, chosen.folders
+    homes = [s.path for s in scenarios]
     for folder in folders:
-        make_ready(out / folder)
+        make_ready(out / folder, homes)
     outcomes: dict[int, Outcome] = {}
     shares = [0.0] * len(scenarios)
 
@@ -133,7 +134,27 @@ def verify_all(
             crew.cancel.set()
             pool.shutdown(wait=False, cancel_futures=True)
             raise
-    return [outcomes[i] for i in range(len(scenarios))]
+    return _with_idle(scenarios, [outcomes[i] for i in range(len(scenarios))])
+
+
+def _with_idle(scenarios: Sequence[Scenario], outcomes: Sequence[Outcome]) -> list[Outcome]:
+    """Note, with the last scenario of a file, acceptances for the whole file that no scenario of it needs."""
+    found = list(outcomes)
+    for path in dict.fromkeys(s.path for s in scenarios):
+        here = [i for i, s in enumerate(scenarios) if s.path == path]
+        results = [r for i in here if (r := found[i].result) is not None]
+        accepted = [(f, f.accepted.reason, f.accepted.until) for r in results for f in r.findings if f.accepted]
+        idle = [
+            k
+            for k in dict.fromkeys(k for i in here for k in scenarios[i].known if k.shared)
+            if not any(k.covers(f) and (k.reason, k.until) == (reason, until) for f, reason, until in accepted)
+        ]
+        last = found[here[-1]]
+        if idle and last.result is not None and len(results) == len(here):
+            notes = tuple(f"{IDLE} {k} ({k.reason}) occurs in no scenario any more: take it out" for k in idle)
+            result = replace(last.result, notes=(*last.result.notes, *notes))
+            found[here[-1]] = replace(last, result=result)
+    return found
 
 
 def status_of(outcomes: Sequence[Outcome], wrong_input: bool = False) -> int:

@@ -18,6 +18,7 @@ from boardsim.quantities import POSITIVE_TIME, parse
 from boardsim.scenarios.all_corners import timings_of
 from boardsim.scenarios.audited import CornerResult
 from boardsim.scenarios.crew import Crew
+from boardsim.scenarios.volley_closeups import closeups_of
 from boardsim.scenarios.volley_runs import Runs, Tried
 from boardsim.scenarios.volley_words import answer_of, firing_sentences, notes_on
 from boardsim.verdict.findings import CornerAudit, Result, overall
@@ -83,12 +84,13 @@ def volley(
     began = time.perf_counter()
     runs = Runs(board, settled_width(board) if width is None else width, keep, strict, crew, progress)
     most = _find_most(runs, count, wanted)
-    spent = time.perf_counter() - began
-    if progress is not None:
-        progress(1.0)
     shown = runs.tried[wanted if wanted is not None else max(most, 1)]
     decides = runs.tried.get(most + 1, shown)  # the first that does not pass, if any
     answer = answer_of(runs, most, wanted, at_least)
+    closeups = closeups_of(runs, answer, shown)
+    spent = time.perf_counter() - began
+    if progress is not None:
+        progress(1.0)
     findings = (answer, *shown.findings)
     rests_on = {n: t for n, t in runs.tried.items() if n <= max(most, shown.step.on) or t.step.proven}
     results = [r for t in runs.tried.values() for r in t.results]
@@ -107,7 +109,8 @@ def volley(
         notes_on(runs, answer, shown, decides, rests_on),
         next((r.engine for r in results if r.engine), "ngspice"),
         strict,
-        study=_study(runs, most, wanted),
+        closeups,
+        _study(runs, most, wanted),
     )
 
 
@@ -222,7 +225,7 @@ def _study(runs: Runs, most: int, wanted: int | None) -> Volley:
         runs.width,
         brown_out.voltage.max if brown_out else None,
         brown_out.lasting.min if brown_out else None,
-        ceiling.typ if ceiling else None,
+        ceiling.min if ceiling else None,
     )
 
 

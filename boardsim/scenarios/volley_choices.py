@@ -1,4 +1,4 @@
-"""Which channels are the worst choice of so many: those that draw most, and one of every other build among them."""
+"""Which channels are the worst choice of so many in a corner: those that draw most, and one of every other build among them."""
 
 from __future__ import annotations
 
@@ -34,7 +34,7 @@ def alike(board: Board) -> tuple[Choice, ...]:
 
 
 def worst_choices(n: int, builds: Sequence[Choice], weights: Sequence[Sequence[float]]) -> tuple[Choice, ...]:
-    """The choices of n channels of which one is the worst for any question about any channel.
+    """The choices of n channels of which one is the worst in a corner, for any question about any channel.
 
     Parameters
     ----------
@@ -42,7 +42,7 @@ def worst_choices(n: int, builds: Sequence[Choice], weights: Sequence[Sequence[f
     builds : sequence of tuple of int
         Channels of each build.
     weights : sequence of sequence of float
-        How heavy one channel of each build is; one number for each way to weigh.
+        How heavy one channel of each build is in that corner; one number for each way to weigh.
 
     Returns
     -------
@@ -56,6 +56,10 @@ def worst_choices(n: int, builds: Sequence[Choice], weights: Sequence[Sequence[f
     among the n heaviest, their run answers for it; if not, it takes the place of the lightest of them, and one channel
     of its build answers for all. "Heaviest" is by the coil current at the end of the pulse, by charge, or by the
     energy of the coil: where these rank builds differently each ranking is tried.
+
+    Which build is heavier may change from corner to corner: a winding of wide tolerance is the heavier one cold and the
+    lighter one hot. Nothing that is found in a corner depends on what another corner does. So each corner has choices of
+    its own, ranked by what channels draw there, and these have to be run in that corner only.
     """
     build_of = {c: k for k, build in enumerate(builds) for c in build}
     found: dict[tuple[int, ...], Choice] = {}
@@ -70,18 +74,17 @@ def worst_choices(n: int, builds: Sequence[Choice], weights: Sequence[Sequence[f
 
 
 def weights_of(channel: int, results: Results) -> list[float]:
-    """How heavy a channel is by its run alone, in the corner in which it is heaviest.
+    """How heavy a channel is by its run alone, in the corner of these results.
 
     Coil current at the end of the pulse [A], charge through the coil and out of the supply [C], highest energy of the
     coil [J]; beyond all measure where no run came to an end, so that it is tried first.
     """
-    found = [r.trial.readings for choice, r in results if choice == (channel,) and r.trial is not None]
-    weights = [[math.inf] * 4] if not found else []
-    for readings in found:
-        energy = max((p.deciding for p in readings.ports if p.channel == channel), default=0.0)
-        current = float(np.max(readings.pull_in[channel][1], initial=0.0))
-        weights.append([current, *(_charge(readings.envelopes[wave]) for wave in ("total", "supply")), energy])
-    return [max(column) for column in zip(*weights, strict=True)]
+    readings = next((r.trial.readings for choice, r in results if choice == (channel,) and r.trial is not None), None)
+    if readings is None:
+        return [math.inf] * 4
+    energy = max((p.deciding for p in readings.ports if p.channel == channel), default=0.0)
+    current = float(np.max(readings.pull_in[channel][1], initial=0.0))
+    return [current, *(_charge(readings.envelopes[wave]) for wave in ("total", "supply")), energy]
 
 
 def _charge(wave: Envelope) -> float:

@@ -1,4 +1,4 @@
-"""The runs of a volley: which channels are the worst choice of so many, and each choice in every corner.
+"""The runs of a volley: in every corner the choices of so many channels that can be worst there.
 
 Waveforms of one number of channels are put together as soon as they are there, so that memory stays bounded.
 """
@@ -6,7 +6,7 @@ Waveforms of one number of channels are put together as soon as they are there, 
 from __future__ import annotations
 
 import threading
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
@@ -14,7 +14,6 @@ from boardsim.board.corners import corners, nominal_only, slow_rail
 from boardsim.board.ranges import write_labels
 from boardsim.board.reader import Board
 from boardsim.circuit.assemble import assemble, windows
-from boardsim.circuit.deck import Settings
 from boardsim.firing.pattern import Pattern, Pulse
 from boardsim.firing.schedule import Firing, fire
 from boardsim.parts.base import Assumption, Corner
@@ -22,23 +21,17 @@ from boardsim.scenarios.all_corners import by_corner, dips, worst
 from boardsim.scenarios.audited import CornerResult, run_corner
 from boardsim.scenarios.crew import Crew
 from boardsim.scenarios.volley_choices import Choice, Results, alike, weights_of, worst_choices
+from boardsim.scenarios.volley_triggers import Trigger, decisive, trigger_of
 from boardsim.verdict.bench import Bench
+from boardsim.verdict.closeups import wants_closeup
 from boardsim.verdict.findings import Finding, overall, severity
 from boardsim.verdict.readings import Readings
 from boardsim.verdict.studies import VolleyStep
 from boardsim.verdict.switching import judge_switching
 
 START = 1e-3  # [s], when all pulses of a volley are commanded; until then the board is at rest
+Run = tuple[Choice, Corner]
 _OVERHEAD = 12  # channels whose simulation takes as long as starting the engine, measured on the fruit sorter
-
-
-@dataclass(frozen=True)
-class Trigger:
-    """The run whose finding is the worst of its number of channels: enough to write its deck again."""
-
-    channels: Choice
-    corner: Corner
-    settings: Settings
 
 
 @dataclass(frozen=True)
@@ -53,13 +46,16 @@ class Tried:
     results : tuple of CornerResult
         Without their waveforms.
     trigger : Trigger or None
-        None if no run came to an end.
+        Of the worst finding; None if no run came to an end.
+    pictured : mapping of key to Trigger
+        Of every finding that gets a close-up, as far as a run of its channels came to an end.
     """
 
     step: VolleyStep
     findings: tuple[Finding, ...]
     results: tuple[CornerResult, ...]
     trigger: Trigger | None
+    pictured: Mapping[tuple[str, str, str, str], Trigger]
 
     @property
     def passes(self) -> bool:
@@ -101,7 +97,7 @@ class Runs:
         self.longest = slow_rail(self.board)
         self.only = nominal_only(self.board)
         self.builds = alike(self.board)
-        self.weights: list[list[float]] = []
+        self.weights: dict[str, list[list[float]]] = {}  # of every build, by the name of the corner
         self.duration = self.firing((self.board.channels[0].number,)).duration
         self._shares: dict[object, float] = {}
         self._expected = self._handed = 0.0
@@ -115,47 +111,55 @@ class Runs:
 
     def weigh(self, counts: Iterable[int]) -> None:
         """Try one channel alone, of each build, and learn which draw most; `counts` are to be tried after that."""
-        self._expected = sum(self._cost(n) for n in counts)
-        ((_, results),) = self._all([(1, tuple(build[:1] for build in self.builds))])
-        self.weights = [weights_of(build[0], results) for build in self.builds]
-        heaviest = {build[:1]: -weights[0] for build, weights in zip(self.builds, self.weights, strict=True)}
-        self._finish([(1, sorted(results, key=lambda one: heaviest[one[0]]))])
+        self._expected = len(self.corners) * sum(map(_cost, counts))
+        alone = [build[:1] for build in self.builds]
+        ((_, results),) = self._all([(1, [(choice, corner) for corner in self.corners for choice in alone])])
+        for corner in self.corners:
+            here = [one for one in results if one[1].corner == corner]
+            self.weights[corner.name] = [weights_of(build[0], here) for build in self.builds]
+        first = dict(zip(alone, self.weights[self.corners[0].name], strict=True))
+        self._finish([(1, sorted(results, key=lambda one: -first[one[0]][0]))])
 
     def run(self, counts: Iterable[int]) -> None:
         """Try these numbers of channels at once, those not yet tried; `weigh` comes first."""
         wanted = sorted({*counts} - {*self.tried}, reverse=True)
-        self._finish(self._all([(n, worst_choices(n, self.builds, self.weights)) for n in wanted]))
+        self._finish(self._all([(n, self._worst(n)) for n in wanted]))
 
     def deck(self, trigger: Trigger | None) -> str:
         """The deck of the run that decided, with the settings that were used; empty if there was none."""
         if trigger is None:
             return ""
-        board, firing = self._reduced(trigger.channels), self.firing(trigger.channels)
+        board, firing = self.reduced(trigger.channels), self.firing(trigger.channels)
         (window,) = windows(board, firing)
         return assemble(board, firing, trigger.corner, window).text(trigger.settings)
 
-    # ------------------------------------------------------------------------------------------------ runs
-
-    def _reduced(self, channels: Choice) -> Board:
+    def reduced(self, channels: Choice) -> Board:
         """The board with these channels only: the others are off and draw nothing."""
         return replace(self.hardware, channels=tuple(c for c in self.board.channels if c.number in channels))
 
-    def _all(
-        self, wanted: Iterable[tuple[int, Iterable[Choice]]], ends: Sequence[Corner] | None = None
-    ) -> Iterator[tuple[int, Results]]:
-        """Run choices in every corner, as many at a time as the crew can, and give out each number's results in turn."""
+    # ------------------------------------------------------------------------------------------------ runs
+
+    def _worst(self, n: int) -> list[Run]:
+        """Of every corner the choices that can be worst in it."""
+        return [
+            (choice, corner)
+            for corner in self.corners
+            for choice in worst_choices(n, self.builds, self.weights[corner.name])
+        ]
+
+    def _all(self, wanted: Iterable[tuple[int, Sequence[Run]]], named: str = "run") -> Iterator[tuple[int, Results]]:
+        """Make runs, as many at a time as the crew can, and give out each number's results in turn."""
         handed = [
             (
                 n,
                 [
-                    (choice, self.crew.pool.submit(self._one, choice, corner, f"at-once-{n}-choice{i}-corner{k}"))
-                    for i, choice in enumerate(choices, 1)
-                    for k, corner in enumerate(ends or self.corners, 1 if ends is None else len(self.corners) + 1)
+                    (choice, self.crew.pool.submit(self._one, choice, corner, f"at-once-{n}-{named}{i}"))
+                    for i, (choice, corner) in enumerate(several, 1)
                 ],
             )
-            for n, choices in wanted
+            for n, several in wanted
         ]
-        self._handed += sum(self._cost(n) * len(futures) / len(self.corners) for n, futures in handed)
+        self._handed += sum(_cost(n) * len(futures) for n, futures in handed)
         try:
             while handed:
                 # Taken out of the list, so that the readings of what was put together are let go.
@@ -166,10 +170,10 @@ class Runs:
                 future.cancel()
 
     def _one(self, choice: Choice, corner: Corner, folder: str) -> CornerResult:
-        bench = Bench(self.hardware, corner.name, self.only)
-        cost = self._cost(len(choice)) / len(self.corners)
+        bench = Bench(self.hardware, corner.name, self.only, repeated=True)
+        cost = _cost(len(choice))
         return run_corner(
-            self._reduced(choice),
+            self.reduced(choice),
             self.firing(choice),
             corner,
             bench,
@@ -179,10 +183,6 @@ class Runs:
             cancel=self.crew.cancel,
             pictured=False,
         )
-
-    def _cost(self, n: int) -> float:
-        """How long n channels take in all corners, in channels."""
-        return len(self.corners) * (_OVERHEAD + n)
 
     def _report(self, run: object, share: float) -> None:
         if self.progress is None:
@@ -204,14 +204,18 @@ class Runs:
             if self.longest is not None and low and self.tried[n].step.verdict != "fail":
                 dipping.append((n, results))
         if dipping and self.longest is not None:
-            again = self._all([(n, dict.fromkeys(c for c, _ in results)) for n, results in dipping], (self.longest,))
+            # It differs from another corner in the bulk alone, and all corners' choices are run in it.
+            again = self._all(
+                [(n, [(c, self.longest) for c in dict.fromkeys(c for c, _ in results)]) for n, results in dipping],
+                "slow-run",
+            )
             for (n, results), (_, more) in zip(dipping, again, strict=True):
                 self.tried[n] = self._put_together(n, [*results, *more])
 
     def _put_together(self, n: int, results: Results) -> Tried:
         choices = tuple(dict.fromkeys(choice for choice, _ in results))
-        switching = [_of_hardware(judge_switching(self.hardware, self.firing(choice))) for choice in choices]
-        findings = worst([*by_corner(r for _, r in results), *switching])
+        switching = {c: _of_hardware(judge_switching(self.hardware, self.firing(c))) for c in choices}
+        findings = worst([*by_corner(r for _, r in results), *switching.values()])
         if not any(r.trial for _, r in results):
             findings = [f for f in findings if f.verdict == "fail"]  # what is left was never put to a circuit
         for _, r in results:
@@ -221,7 +225,8 @@ class Runs:
             self._step(n, choices[0], results, findings),
             tuple(findings),
             tuple(replace(r, trial=None) for _, r in results),
-            _trigger(findings, results),
+            decisive(findings, results),
+            {f.key: t for f in findings if wants_closeup(f) and (t := trigger_of(f, results, switching)) is not None},
         )
 
     def _step(self, n: int, channels: Choice, results: Results, findings: Sequence[Finding]) -> VolleyStep:
@@ -267,13 +272,9 @@ def _of_hardware(findings: Iterable[Finding]) -> list[Finding]:
     return [f for f in findings if f.quantity != "channels on at once"]
 
 
-def _trigger(findings: Iterable[Finding], results: Results) -> Trigger | None:
-    ran = [(choice, r.corner, r.trial) for choice, r in results if r.trial is not None]
-    for f in findings:
-        for choice, corner, trial in ran:
-            if corner.name == f.corner and any(g.key == f.key and g.value == f.value for g in trial.findings):
-                return Trigger(choice, corner, trial.settings)
-    return next((Trigger(choice, corner, trial.settings) for choice, corner, trial in ran), None)
+def _cost(n: int) -> float:
+    """How long a run of n channels takes, in channels."""
+    return _OVERHEAD + n
 
 
 def _why(findings: Sequence[Finding], results: Results, strict: bool) -> str:

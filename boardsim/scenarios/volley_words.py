@@ -64,12 +64,13 @@ def _sentence(runs: Runs, most: int, wanted: int | None, at_least: int | None) -
         why = stop.step.broken
         why = "the " + why.removeprefix("The ") if why.startswith("The ") else why
         said += f": {why}" if most == 0 else f"; with {most + 1}: {why}"
+    # A sentence of its own: the one before may end in what the worst finding says, and would seem to go on with it.
     if at_least is not None:
-        said += f"; {at_least} at once {'is' if at_least == 1 else 'are'} asked for"
+        said += f". {at_least} at once {'is' if at_least == 1 else 'are'} asked for"
     elif wanted is not None:
-        said += f"; the firmware may fire {wanted} at once"
+        said += f". The firmware may fire {wanted} at once"
     else:
-        said += "; how many are wanted was not given (--at-least, or [limits] most_on)"
+        said += ". How many are wanted was not given (--at-least, or [limits] most_on)"
     return said
 
 
@@ -112,8 +113,8 @@ def notes_on(
     ]
     if len(runs.builds) > 1:
         notes.append(
-            f"the board has {len(runs.builds)} builds of channel: tried were the channels that draw most, and one of every "
-            "other build among them, so that what passes for a number passes for any channels of that number"
+            f"the board has {len(runs.builds)} builds of channel: tried in each corner were the channels that draw most there, "
+            "and one of every other build among them, so that what passes for a number passes for any channels of that number"
         )
     else:
         notes.append("all channels are built alike: what passes for some of them passes for any as many")

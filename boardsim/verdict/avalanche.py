@@ -1,4 +1,4 @@
-"""The drain voltage of a switch: below breakdown by voltage, in avalanche by current, energy and repetition."""
+"""The voltage across an open switch: below breakdown by voltage, in avalanche by current, energy and repetition."""
 
 from __future__ import annotations
 
@@ -13,7 +13,7 @@ from boardsim.verdict.findings import Finding
 from boardsim.verdict.readings import Readings
 from boardsim.verdict.watch import Avalanche
 
-_CLAMP = "add a clamp, or choose a switch rated for this avalanche"
+_CLAMP = "a clamp (or one of lower voltage), or a switch rated for this avalanche"
 
 
 def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings, bench: Bench) -> Iterator[Finding]:
@@ -23,7 +23,7 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     events = readings.avalanches[placed.channel]
     if not events:
         yield upper(
-            "drain-source voltage",
+            rule.what,
             rule.rating,
             "destroy",
             placed,
@@ -90,7 +90,7 @@ def _avalanche_energy(
         _CLAMP,
         detail,
     )
-    if len(events) == 1:
+    if len(events) == 1 and not bench.repeated:
         yield single
         return
     if single.verdict == "fail":

@@ -14,11 +14,15 @@ from boardsim.verdict.findings import Finding, Verdict, verdict_of
 
 @dataclass(frozen=True)
 class Bench:
-    """What limits are held against: deratings and guard band of the board, and the corner's name."""
+    """What limits are held against: deratings and guard band of the board, and the corner's name.
+
+    `repeated` says that what a run does once is done again and again: ratings for a single event then do not count.
+    """
 
     board: Board
     corner: str
     nominal_only: tuple[str, ...]
+    repeated: bool = False
 
     def derating(self, kind: Derating | None) -> float:
         """Share of a rating that may be used. [1]"""

@@ -26,7 +26,7 @@ from boardsim.verdict.watch import HYSTERESIS, Slices
 SLICES = 800  # across a close-up; about as many as it has pixels
 _BOARD_CAUSES: Mapping[str, tuple[Key, ...]] = {
     "overlap": ((None, "i_total"),),
-    "rail-sag": ((None, "i_total"), (None, "i_supply")),
+    "rail-sag": ((None, "i_supply"), (None, "i_total")),
     "supply-ceiling": ((None, "i_total"), (None, "v_rail")),
 }
 """What is shown beside a reading of the whole board, by its check."""

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import difflib
 from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
@@ -12,6 +13,8 @@ from boardsim.errors import EXIT_LIMIT_BROKEN, EXIT_PASS, EXIT_UNPROVEN
 from boardsim.verdict.findings import Acceptance, Finding, Result, Verdict, exit_status, overall
 
 Expected = Literal["pass", "tight", "limit-missing", "fail"]
+IDLE = "accepted failure of"
+"""How the note begins that an acceptance is not needed any more."""
 _ORDER: tuple[Verdict, ...] = ("pass", "tight", "limit-missing")
 
 
@@ -55,6 +58,8 @@ class KnownFailure:
     reason : str
     until : datetime.date
         Last day.
+    shared : bool
+        Whether it stands for all scenarios of a file, so that one of them need not need it.
     """
 
     check: str
@@ -63,6 +68,7 @@ class KnownFailure:
     channels: tuple[int, ...] = ()
     part: str | None = None
     quantity: str | None = None
+    shared: bool = False
 
     def covers(self, finding: Finding) -> bool:
         """Whether a finding is the one that is accepted."""
@@ -77,6 +83,15 @@ class KnownFailure:
         on = f" on {len(self.channels)} channels" if len(self.channels) > 1 else ""
         on = f" on channel {self.channels[0]}" if len(self.channels) == 1 else on
         return f"{self.check}{on}"
+
+
+def _unknown(check: str, result: Result) -> str:
+    """A hint where no finding of a result has a check of this name."""
+    names = sorted({f.check for f in result.findings})
+    if check in names:
+        return ""
+    close = difflib.get_close_matches(check, names, n=1, cutoff=0.6)
+    return f' (did you mean "{close[0]}"?)' if close else f"; the checks of this run are {', '.join(names)}"
 
 
 def accept(result: Result, known: Sequence[KnownFailure], today: datetime.date) -> Result:
@@ -97,9 +112,9 @@ def accept(result: Result, known: Sequence[KnownFailure], today: datetime.date) 
             f = replace(f, accepted=Acceptance(k.reason, k.until, over), sentence=f.sentence + said)
         findings.append(f)
     idle = tuple(
-        f"accepted failure of {k} ({k.reason}) does not occur any more: take it out of the scenario file"
+        f"{IDLE} {k} ({k.reason}) does not occur any more: take it out of the scenario file{_unknown(k.check, result)}"
         for k in dict.fromkeys(known)
-        if k not in used
+        if k not in used and not k.shared
     )
     verdict = overall(findings, result.proven, result.strict)
     return replace(result, findings=tuple(findings), verdict=verdict, notes=(*result.notes, *idle))
@@ -156,7 +171,8 @@ def compare(result: Result, expectation: Expectation) -> tuple[int, tuple[str, .
     wanted = set(expectation.breaks)
     surprises = []
     if missing := sorted(wanted - broken):
-        surprises.append(f"was expected to break {', '.join(missing)}, and does not")
+        hints = "".join(dict.fromkeys(_unknown(check, result) for check in missing))
+        surprises.append(f"was expected to break {', '.join(missing)}, and does not{hints}")
     elif not broken:
         surprises.append("was expected to break a limit, and breaks none")
     if wanted and (more := sorted(broken - wanted)):

@@ -11,20 +11,26 @@ from boardsim.parts.rules import (
     BreakdownRule,
     CeilingRule,
     DipRule,
+    DriveRule,
+    EnergyRule,
     FloorRule,
+    HeatRule,
     MeanRule,
     PeakRule,
     PullInRule,
+    PulseRule,
     ReleaseRule,
     Rule,
 )
-from boardsim.quantities import in_units
+from boardsim.quantities import celsius, in_units
 from boardsim.verdict.avalanche import judge_breakdown
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.coils import judge_pull_in, judge_release
+from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.rail import judge_ceiling, judge_dip
-from boardsim.verdict.readings import Readings
+from boardsim.verdict.readings import Readings, pulse_key
+from boardsim.verdict.surges import judge_pulses
 
 
 def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[Finding]:
@@ -37,12 +43,15 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
         never fired, a release rule of one that is fired once).
     """
     found: list[Finding] = []
+    # Without a limit an idle part's power, which is noise, is compared on the scale of the busiest part's.
+    hottest = max((abs(mean) for (_, of), mean in readings.means.items() if len(of) == 2), default=0.0)
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
         nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))
         scale = readings.high.get((placed.channel, "i_coil"), (0.0, 0.0))[0]
         for finding in _apply(placed, readings, firing, bench):
             size = scale if finding.unit == "A" else 0.0
+            size = hottest if finding.unit == "W" and finding.limit is None else size
             found.append(
                 replace(
                     finding,
@@ -60,8 +69,12 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
 def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
     """What a finding of a rule was read from."""
     match rule:
-        case MeanRule():
+        case MeanRule() | PulseRule():
             return rule.quantities
+        case EnergyRule():
+            return ()  # a close-up counts the energy of avalanches only
+        case HeatRule():
+            return rule.powers[0] if len(rule.powers) == 1 and not rule.channels and finding.unit == "W" else ()
         case BreakdownRule():
             return {"V": (rule.voltage,), "A": (rule.current,)}.get(finding.unit, (rule.voltage, rule.current))
         case _:
@@ -71,6 +84,8 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
 def _shape(rule: Rule, finding: Finding) -> Shape:
     if isinstance(rule, MeanRule):
         return "mean"
+    if isinstance(rule, EnergyRule):
+        return "value"
     return "energy" if finding.unit == "J" else "value"
 
 
@@ -97,12 +112,20 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench)
             yield _peak(rule, placed, readings, bench)
         case FloorRule() as rule:
             yield from _floor(rule, placed, readings, firing, bench)
+        case DriveRule() as rule:
+            yield from judge_drive(rule, placed, readings.drive[_channel(placed), rule.quantity, rule.current], bench)
         case MeanRule() as rule:
             value = readings.means[placed.channel, rule.quantities]
             over = f" over the pattern's {in_units(firing.duration, 's')}"
             yield upper(
                 rule.what, rule.limit, rule.consequence, placed, bench, value, None, rule.advice, over, part=rule.part
             )
+        case HeatRule() as rule:
+            yield _heat(rule, placed, readings, firing, bench)
+        case PulseRule() | EnergyRule() as rule:
+            key = pulse_key(placed.channel, rule)
+            assert key is not None  # both have one
+            yield judge_pulses(rule, placed, readings.pulses[key], bench)
         case BreakdownRule() as rule:
             yield from judge_breakdown(rule, placed, readings, bench)
         case PullInRule() as rule:
@@ -131,6 +154,31 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
         rule.advice,
         part=rule.part,
     )
+
+
+def _heat(rule: HeatRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
+    """T_j = T_ambient + R_th P at the pattern's average power; the margin counts from the ambient up.
+
+    Temperatures have no natural zero: what may be used up is the way from the ambient to the limit.
+    """
+    part = rule.part or placed.part
+    members = rule.channels or (placed.channel,)
+    power = sum(readings.means[c, pair] for c in members for pair in rule.powers)
+    among = f" of its {len(members)} channels" if rule.channels else ""
+    said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average over the pattern's {in_units(firing.duration, 's')}"
+    r_th, limit = rule.resistance.value, rule.limit.value
+    air = f"air of {celsius(rule.ambient)}"
+    if r_th is None or limit is None:
+        missing = replace(rule.resistance if r_th is None else rule.limit, unit="W")  # of what is known: the power
+        said += f"; no {missing.name} of {part} was given to tell how hot it gets in {air}"
+        return bench.finding(placed, missing, rule.what, power, None, None, said, rule.consequence, part=part)
+    hot = rule.ambient + r_th * power
+    margin = (limit - hot) / (limit - rule.ambient) if limit > rule.ambient else -1.0
+    said += (
+        f": {celsius(hot)} in {air} with {in_units(r_th, 'K/W')}; the {rule.limit.name} of {part} is {celsius(limit)}"
+    )
+    said += f"; try: {rule.advice}" if margin < 0 else ""
+    return bench.finding(placed, rule.limit, rule.what, hot, margin, None, said, rule.consequence, part=part)
 
 
 def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:

@@ -77,7 +77,7 @@ def _fewer(board: Board) -> str:
     r = board.supply.resistance.typ + board.cable.loop(293.15).typ
     counts = [(board.supply.voltage.min - level.voltage.max) / r / (level.voltage.max / r_coil)]
     if board.supply.current_ceiling is not None:
-        counts.append(board.supply.current_ceiling.typ / (board.supply.voltage.max / r_coil))
+        counts.append(board.supply.current_ceiling.min / (board.supply.voltage.max / r_coil))
     if board.limits.most_on is not None:
         counts.append(board.limits.most_on)
     feeds = int(min(counts))
@@ -98,12 +98,12 @@ def judge_ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, fir
         said = f"{rule.what} reaches {in_units(value, 'A')} at {in_units(at, 's', 4)}; its ceiling is {in_units(bound, 'A')}"
         return bench.finding(placed, rule.limit, "supply current", value, (bound - value) / bound, at, _sentence(said))
     said = (
-        f"the supply was at its ceiling of {in_units(bound, 'A')} for {in_units(total, 's')}, first at {in_units(since, 's', 4)} "
+        f"the supply came within 1 % of its ceiling of {in_units(bound, 'A')} for {in_units(total, 's')}, first at {in_units(since, 's', 4)} "
         f"({_together(bench.board, firing, since)}): a supply that trips or hiccups instead of limiting would drop the rail"
         "; try: fewer channels at once, or a larger supply"
     )
     # The modelled supply never exceeds its ceiling: being at it is what breaks the limit.
-    return bench.finding(placed, rule.limit, "supply current", value, -1e-3, since, _sentence(said), lasting=total)
+    return bench.finding(placed, rule.limit, "supply current", bound, -1e-3, since, _sentence(said), lasting=total)
 
 
 def _sentence(text: str) -> str:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import scipy.sparse
@@ -12,8 +12,21 @@ from boardsim.circuit.deck import Deck
 from boardsim.engine.waves import Waves
 from boardsim.errors import NoConvergence
 from boardsim.firing.schedule import Firing
-from boardsim.parts.rules import BreakdownRule, CeilingRule, DipRule, MeanRule, PullInRule, ReleaseRule
+from boardsim.parts.rules import (
+    BreakdownRule,
+    CeilingRule,
+    DipRule,
+    DriveRule,
+    EnergyRule,
+    HeatRule,
+    MeanRule,
+    PullInRule,
+    PulseRule,
+    ReleaseRule,
+    Rule,
+)
 from boardsim.verdict.findings import Envelope, Floats
+from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.watch import (
     Avalanche,
     Avalanches,
@@ -28,8 +41,10 @@ from boardsim.verdict.watch import (
 )
 
 Key = tuple[int | None, str]
+PulseKey = tuple[int | None, tuple[str, ...], float]
 
 SLICES = 1600  # across a picture; more than it has pixels
+ENERGY_SHARE = 0.5  # an energy does not depend on it; this one also tells how long the pulse is to its half
 AT_CEILING = 0.99  # share of the ceiling from which the supply counts as being at it (its bend is rounded)
 
 
@@ -59,9 +74,12 @@ class Readings:
     ceiling : (time at the ceiling, since when)
     pull_in, release : mapping of channel to (times, currents)
     avalanches : mapping of channel to list of Avalanche
+    drive : mapping of (channel, drive, current) to (times, drives, currents), at the ends of pulses
     guarded : tuple of Dip
         Below the level plus the guard band.
     points : int
+    pulses : mapping of (channel, quantities, share) to tuple of OnePulse
+        Share of its peak above which a pulse counts as lasting.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -72,10 +90,12 @@ class Readings:
     pull_in: Mapping[int, tuple[Floats, Floats]]
     release: Mapping[int, tuple[Floats, Floats]]
     avalanches: Mapping[int, tuple[Avalanche, ...]]
+    drive: Mapping[tuple[int, str, str], tuple[Floats, Floats, Floats]]
     ports: tuple[PortReading, ...]
     guarded: tuple[Dip, ...]
     points: int
     envelopes: Mapping[str, Envelope]
+    pulses: Mapping[PulseKey, tuple[OnePulse, ...]] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -115,7 +135,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     rules = [(p.channel, p.rule) for p in deck.rules]
 
     extremes = Extremes(len(row))
-    mean_keys = list(dict.fromkeys((c, r.quantities) for c, r in rules if isinstance(r, MeanRule)))
+    mean_keys = list(dict.fromkeys(key for c, r in rules for key in _averaged(c, r)))
     integrals = Integrals(len(mean_keys))
     dip_rule = next((r for _, r in rules if isinstance(r, DipRule)), None)
     dips = Dips(dip_rule.limit.value if dip_rule and dip_rule.limit.value is not None else -np.inf)
@@ -132,7 +152,15 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for c, r in rules
         if isinstance(r, ReleaseRule) and c is not None
     }
+    drive = {
+        (c, quantity): Samples(_within(firing.on[c][:, 1], start, stop))
+        for c, r in rules
+        if isinstance(r, DriveRule) and c is not None
+        for quantity in (r.quantity, r.current)
+    }
     avalanches = {c: (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None}
+    asked = dict.fromkeys(pulse_key(c, r) for c, r in rules)
+    pulses = {of: Pulses(of[2]) for of in asked if of is not None}
     falls = Falls(len(deck.ports))
     shown = {"rail": (None, "v_rail"), "total": (None, "i_total"), "supply": (None, "i_supply")}
     slices = Slices(np.linspace(start, stop, SLICES + 1), len(shown))
@@ -153,8 +181,12 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for samples in (pull_in, release):
             for c, sample in samples.items():
                 sample.feed(t, y[row[c, "i_coil"]])
+        for (c, quantity), sample in drive.items():
+            sample.feed(t, y[row[c, quantity]])
         for c, (watch, rule) in avalanches.items():
             watch.feed(t, y[row[c, rule.voltage]], y[row[c, rule.current]])
+        for (channel, qs, _), watched in pulses.items():
+            watched.feed(t, np.prod([y[row[channel, q]] for q in qs], axis=0))
         _feed_falls(falls, deck, row, t, y)
         slices.feed(t, y[[row[key] for key in shown.values()]])
 
@@ -174,6 +206,15 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {c: (s.times, s.values) for c, s in pull_in.items()},
         {c: (s.times, s.values) for c, s in release.items()},
         {c: tuple(w.all()) for c, (w, _) in avalanches.items()},
+        {
+            (c, r.quantity, r.current): (
+                drive[c, r.quantity].times,
+                drive[c, r.quantity].values,
+                drive[c, r.current].values,
+            )
+            for c, r in rules
+            if isinstance(r, DriveRule) and c is not None
+        },
         tuple(
             PortReading(
                 c,
@@ -192,7 +233,30 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             name: Envelope(name, deck.units[key], slices.edges, slices.low[i], slices.high[i])
             for i, (name, key) in enumerate(shown.items())
         },
+        {key: tuple(watched.all()) for key, watched in pulses.items()},
     )
+
+
+def pulse_key(channel: int | None, rule: Rule) -> PulseKey | None:
+    """Under which key the pulses that a rule asks for are kept; None for a rule that asks for none."""
+    match rule:
+        case PulseRule():
+            return (channel, rule.quantities, rule.share)
+        case EnergyRule():
+            return (channel, rule.quantities, ENERGY_SHARE)
+        case _:
+            return None
+
+
+def _averaged(channel: int | None, rule: Rule) -> list[tuple[int | None, tuple[str, ...]]]:
+    """Of which products of quantities a rule wants the average."""
+    match rule:
+        case MeanRule():
+            return [(channel, rule.quantities)]
+        case HeatRule():
+            return [(c, pair) for c in rule.channels or (channel,) for pair in rule.powers]
+        case _:
+            return []
 
 
 def _refuse_false_start(rail: float, total: float, deck: Deck) -> None:

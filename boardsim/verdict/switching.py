@@ -10,6 +10,7 @@ from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
 from boardsim.firing.pattern import Pulse
 from boardsim.firing.schedule import Firing
+from boardsim.parts.register import Register
 from boardsim.parts.rules import Consequence
 from boardsim.quantities import Quantity, in_units
 from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
@@ -212,12 +213,27 @@ def _at_once(
     )
 
 
+def _how_fast(register: Register, name: str, too_low: float | None) -> str:
+    """How far a register follows its clock; `too_low` is a logic rail below that for which this is given. [V]"""
+    clock, at = register.highest_clock, register.timing_supply
+    if clock is None:
+        return f"no highest clock of {name} was given"
+    if too_low is not None and at is not None:
+        return (
+            f"{name} follows up to {in_units(clock.typ, 'Hz')} from a logic rail of {in_units(at.typ, 'V')} on; down to "
+            f"{in_units(too_low, 'V')}, where it is slower, no highest clock was given"
+        )
+    return f"one {name} alone follows up to {in_units(clock.typ, 'Hz')}"
+
+
 def _register(board: Board) -> list[Finding]:
     """Clock and logic rail against what the register stands."""
     chain, register = board.chain, board.chain.register_
     name = register.title or "register"
-    clock = register.highest_clock
-    margin = None if clock is None else (clock.typ - chain.clock.max) / clock.typ
+    clock, at, rail = register.highest_clock, register.timing_supply, board.logic.voltage
+    slower = clock is not None and at is not None and rail.min < at.typ * (1 - 1e-9)
+    known = clock if not slower else None
+    margin = None if known is None else (known.typ - chain.clock.max) / known.typ
     found = [
         Finding(
             "chain",
@@ -226,23 +242,18 @@ def _register(board: Board) -> list[Finding]:
             None,
             "chain",
             chain.clock.max,
-            clock.typ if clock else None,
+            known.typ if known else None,
             "Hz",
             margin,
             None,
             "misbehave",
             verdict_of(margin, board.limits.guard_band.typ),
             f"the chain is clocked at {in_units(chain.clock.max, 'Hz')}; "
-            + (
-                f"one {name} alone follows up to {in_units(clock.typ, 'Hz')}"
-                if clock
-                else f"no highest clock of {name} was given"
-            ),
-            source=str(clock.origin) if clock else "",
+            + _how_fast(register, name, rail.min if slower else None),
+            source=str(known.origin) if known else "",
         )
     ]
     high, low = register.supply_high, register.supply_low
-    rail = board.logic.voltage
     ends: tuple[tuple[float, Quantity, str, Consequence], ...] = (
         (rail.max, high, "highest logic rail", "destroy"),
         (rail.min, low, "lowest logic rail", "misbehave"),

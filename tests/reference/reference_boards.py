@@ -31,7 +31,8 @@ STIFF = 'resistance = "1 mohm"'
 SHORT = '{ area = "100 mm2", length = "1 m" }'
 NO_LOSS = 'core_loss = "1 Gohm"'
 
-# A switch whose resistance and capacitances do not count beside any coil of these tests.
+# A switch whose resistance and capacitances do not count beside any coil of these tests; these stand at 1 kV, since
+# books' volts are scaled up to that.
 PERFECT_SWITCH = """
 [parts.perfect]
 kind = "n-mosfet"
@@ -39,8 +40,9 @@ breakdown = "{breakdown}"
 threshold = "1.5 V"
 on_resistance = [{{ value = "1 mohm", gate = "5 V" }}]
 input_capacitance = "300 pF"
-output_capacitance = "60 pF"
+output_capacitance = "35 pF"
 reverse_capacitance = "30 pF"
+capacitance_voltage = "1 kV"
 gate_drain_charge = "3 nC"
 charge_voltage = "30 V"
 """

@@ -100,7 +100,7 @@ def test_an_old_verdict_does_not_stand_for_a_run_that_came_to_nothing(tmp_path: 
 def test_a_pattern_that_would_fill_the_disk_is_refused(tmp_path: Path) -> None:
     status, _, out, err = fire(tmp_path, SMALL, 'duration = "1000000 s"\n' + ONE_PULSE)
     assert (status, out) == (2, "")
-    assert "GiB" in err
+    assert "MiB" in err
     assert "Traceback" not in err
 
 

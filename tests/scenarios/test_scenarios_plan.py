@@ -114,11 +114,13 @@ CALM = '[scenarios.calm]\npattern = "pattern.toml"\n'
         (CALM + 'conditions = { humidity = "80 %" }\n', '"humidity" is not known here; known: ambient, supply'),
         (CALM + 'accepted = [{ check = "overlap", reason = "x", until = "soon" }]\n', "'soon' is not a day"),
         (CALM + 'accepted = [{ check = "overlap", until = 2027-01-31 }]\n', '"reason" is missing'),
-        (CALM + 'accepted = [{ check = "overlap", reason = "", until = 2027-01-31 }]\n', "reason"),
+        (CALM + 'accepted = [{ check = "overlap", reason = " ", until = 2027-01-31 }]\n', '"reason" is empty; say why'),
+        (CALM + 'strict = "false"\n', "strict"),
+        (CALM + 'board = "a\\u0000b"\n', "cannot be read: embedded null byte"),
         (CALM + 'accepted = [{ check = "overlap", reason = "x" }]\n', '"until" is missing'),
         (
             CALM + 'accepted = [{ check = "overlap", channels = "0-9", reason = "x", until = 2027-01-31 }]\n',
-            "channels 2-9 are not on the board",
+            "channels 2-9 not on the board, which has 0, 1",
         ),
         ('[scenarios.calm]\npattern = "nothing.toml"\n', "nothing.toml: cannot be read"),
         (CALM + 'board = "nothing.toml"\n', "nothing.toml: cannot be read"),
@@ -179,9 +181,47 @@ def test_what_is_run_can_be_chosen_by_name(tmp_path: Path) -> None:
 def test_files_of_which_nothing_can_be_run_are_refused_with_every_mistake(tmp_path: Path) -> None:
     written(tmp_path / "a", "x = 1\n")
     written(tmp_path / "b", "[scenarios.calm]\n")
-    with pytest.raises(InputError) as caught:
-        choose([tmp_path], None, False, None)
-    assert {Path(p.file).parent.name for p in caught.value.problems} == {"a", "b"}
+    chosen = choose([tmp_path], None, False, None)
+    assert chosen.scenarios == ()
+    assert {Path(p.file).parent.name for p in chosen.problems} == {"a", "b"}
+
+
+def test_a_choice_by_name_does_not_hide_the_mistake_in_what_is_meant(tmp_path: Path) -> None:
+    written(tmp_path, GOOD + '[scenarios."cold morning"]\npattern = "nothing.toml"\n')
+    with pytest.raises(InputError, match=r"nothing\.toml: cannot be read"):
+        choose([tmp_path], "cold morning", False, None)
+
+
+def test_a_name_is_known_as_written_and_as_a_folder(tmp_path: Path) -> None:
+    written(tmp_path, CALM.replace("calm", '"cold morning"'))
+    for spelling in ("cold morning", "cold-morning"):
+        assert len(choose([tmp_path], spelling, False, None).scenarios) == 1
+
+
+def test_no_two_scenarios_share_a_folder(tmp_path: Path) -> None:
+    names = ("a b", "a-b", "a-b-2", "a_b", "A B")
+    text = "".join(CALM.replace("calm", f'"{name}"') for name in names)
+    found = [f.as_posix() for f in folders_of(list(read(tmp_path / "sorter", text).values()))]
+    assert len(set(found)) == len(names)
+    assert found[2] == "sorter/a-b-2"
+
+
+def test_one_file_linked_into_two_folders_is_asked_of_both_boards(tmp_path: Path) -> None:
+    shared = written(tmp_path / "common")
+    for name in ("a", "b"):
+        written(tmp_path / "boards" / name)
+        (tmp_path / "boards" / name / "scenarios.toml").unlink()
+        (tmp_path / "boards" / name / "scenarios.toml").symlink_to(shared)
+    chosen = choose([tmp_path / "boards"], "calm", False, None)
+    assert [f.as_posix() for f in chosen.folders] == ["a/calm", "b/calm"]
+
+
+def test_linked_folders_are_searched_and_loops_end(tmp_path: Path) -> None:
+    written(tmp_path / "elsewhere" / "b")
+    (tmp_path / "boards").mkdir()
+    (tmp_path / "boards" / "b").symlink_to(tmp_path / "elsewhere" / "b")
+    (tmp_path / "elsewhere" / "b" / "again").symlink_to(tmp_path / "boards")
+    assert len(find_files([tmp_path / "boards"])) == 1
 
 
 def test_the_starter_and_the_demonstrations_can_be_run(tmp_path: Path) -> None:

@@ -151,6 +151,49 @@ def test_the_same_scenarios_give_the_same_findings_on_one_core_and_on_all(tmp_pa
     assert runs[0] == runs[1]
 
 
+@pytest.mark.engine
+def test_whoever_stops_reading_changes_neither_status_nor_results(tmp_path: Path) -> None:
+    gates = laid_out(tmp_path / "gates", CALM)
+    for stream in ("stdout", "stderr"):
+        running = subprocess.Popen(
+            [sys.executable, "-m", "boardsim.cli", "verify", str(gates), "--out", str(tmp_path / "out")],
+            cwd=HERE,
+            **{"stdout": subprocess.DEVNULL, "stderr": subprocess.DEVNULL, stream: subprocess.PIPE},  # type: ignore[arg-type]
+        )
+        getattr(running, stream).close()
+        assert running.wait() == 0
+        assert collected(tmp_path)["verdict"] == "pass"
+        (tmp_path / "out" / "findings.json").unlink()
+
+
+@pytest.mark.engine
+def test_old_results_of_scenarios_that_are_gone_or_broken_do_not_stay(tmp_path: Path) -> None:
+    gates = laid_out(tmp_path / "gates", CALM + CLASH)
+    assert verify(tmp_path, gates)[0] == 0
+    laid_out(gates, CLASH)
+    assert verify(tmp_path, gates)[0] == 0
+    assert {p.name for p in (tmp_path / "out" / "gates").iterdir()} == {"clash"}
+    laid_out(gates, "x = 1\n")
+    status, out, _ = verify(tmp_path, gates)
+    assert status == 2
+    assert "verdict: wrong input" in out
+    assert not (tmp_path / "out" / "gates").exists()
+    (suite,) = ET.parse(tmp_path / "out" / "junit.xml").getroot()
+    assert suite.attrib["errors"] == "2"
+
+
+@pytest.mark.engine
+def test_a_release_that_nothing_was_measured_of_never_passes(tmp_path: Path) -> None:
+    accepted = 'accepted = [{ check = "wrong-output", reason = "known", until = 2030-01-01 }]\n'
+    gates = laid_out(
+        tmp_path / "gates",
+        '[scenarios.off]\nquestion = "release"\n' + accepted,
+        SMALL.replace('clock = "1 MHz"', 'clock = "1 MHz"\nactive = "low"'),
+    )
+    status, out, _ = verify(tmp_path, gates, "--on", "2029-01-01")
+    assert status == 3, out
+
+
 def whole(path: Path) -> bool:
     """Whether a file can be read to its end by who reads such files."""
     match path.suffix:
@@ -204,6 +247,7 @@ def test_an_old_verdict_does_not_stand_for_a_run_that_was_stopped(tmp_path: Path
     assert verify(tmp_path, gates)[0] == 0
     beside = tmp_path / "out" / "gates" / "calm" / ".overview.png.0123abcd.part"
     beside.write_bytes(b"half a picture")
+    os.utime(beside, (0, 0))  # long ago: what is fresh may be another run's
     (gates / "scenarios.toml").write_text("")
     assert verify(tmp_path, gates)[0] == 2
     laid_out(gates, MANY + CALM)

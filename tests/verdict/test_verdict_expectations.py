@@ -60,6 +60,13 @@ def test_what_never_broke_is_not_accepted_but_noted() -> None:
     )
 
 
+def test_a_misspelt_check_gets_the_nearest_one() -> None:
+    (note,) = accept(result((finding("fail", 3),)), [known("overcurent")], TODAY).notes
+    assert note.endswith('(did you mean "overcurrent"?)')
+    _, surprises = compare(result((finding("fail", 0),)), Expectation("fail", ("ovrcurrent",)))
+    assert 'does not (did you mean "overcurrent"?)' in surprises[0]
+
+
 def test_a_missing_limit_can_be_accepted_where_it_counts_as_broken() -> None:
     missing = result((finding("limit-missing", 3), finding("pass", 4)), strict=True)
     strict = accept(type(missing)(**{**vars(missing), "strict": True}), [known()], TODAY)

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 
-from boardsim.parts.base import Corner, Part, Shelf, Stamp
+from boardsim.parts.base import Corner, Shelf, Stamp
+from boardsim.parts.clamp import CoilClamp
 from boardsim.parts.elements import Ammeter, Port, Probe, Resistor, current, voltage
 from boardsim.parts.rules import Limit, MeanRule
 from boardsim.quantities import POSITIVE_RESISTANCE, POWER, Quantity, computed, in_units
@@ -15,7 +16,7 @@ if TYPE_CHECKING:
 _SHARES = (1, 2)  # times the coil's resistance: what is set beside other clamps
 
 
-class ResistorClamp(Part):
+class ResistorClamp(CoilClamp):
     """A resistor across the coil: cheap, quick to begin with, but it conducts while the coil is on as well.
 
     Notes
@@ -32,7 +33,6 @@ class ResistorClamp(Part):
 
     role: ClassVar[str] = "clamp"
     kind: Literal["resistor"] = "resistor"
-    to: Literal["rail"] = "rail"
     resistance: Annotated[Quantity, POSITIVE_RESISTANCE]
     power: Annotated[Quantity, POWER] | None = None
 

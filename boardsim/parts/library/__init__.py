@@ -8,6 +8,8 @@ from collections.abc import Mapping
 from importlib import resources
 from typing import Any
 
+NOT_FIELDS = ("source", "sources")  # what a record says about its numbers
+
 
 @functools.cache
 def records() -> Mapping[str, Mapping[str, Any]]:
@@ -26,3 +28,27 @@ def records() -> Mapping[str, Mapping[str, Any]]:
                     raise ValueError(f"{entry.name}: part {name!r} is defined twice")
                 found[name] = record
     return found
+
+
+def source_of(record: Mapping[str, Any], field: str | None) -> str:
+    """What a record says about the number of a field; a number in a table or list has the source of that.
+
+    Tables of one record must not share names of fields: only the field's own name is known here.
+
+    Examples
+    --------
+    >>> source_of({"source": "A", "sources": {"power": "B"}, "power": "1 W"}, "power")
+    'B'
+    >>> source_of({"source": "A", "sources": {"points": "B"}, "points": [{"gate": "5 V"}]}, "gate")
+    'B'
+    """
+    sources = record.get("sources", {})
+    if field not in record:
+        inside = [key for key, value in record.items() if key not in NOT_FIELDS and _holds(value, field)]
+        field = inside[0] if inside else field
+    return str(sources.get(field, record.get("source", "")))
+
+
+def _holds(value: Any, field: str | None) -> bool:
+    tables = value if isinstance(value, list) else [value]
+    return any(isinstance(table, Mapping) and field in table for table in tables)

@@ -23,6 +23,10 @@ from boardsim.parts.elements import (
     scaled,
     voltage,
 )
+from boardsim.parts.heat import junction_heat
+from boardsim.parts.mosfet_charge import GateFigures, gate_capacitances
+from boardsim.parts.mosfet_proofs import mosfet_proofs
+from boardsim.parts.proof import Proof
 from boardsim.parts.record import Record
 from boardsim.parts.rules import BreakdownRule, FloorRule, Limit, MeanRule, PeakRule
 from boardsim.quantities import (
@@ -31,7 +35,10 @@ from boardsim.quantities import (
     CURRENT,
     ENERGY,
     POSITIVE_RESISTANCE,
+    POSITIVE_TIME,
     RESISTANCE,
+    TEMPERATURE,
+    THERMAL_RESISTANCE,
     VOLTAGE,
     Quantity,
     assume,
@@ -40,14 +47,27 @@ from boardsim.quantities import (
 _BODY_DIODE_POTENTIAL = 0.75  # [V], grading exponent 1/2: an abrupt junction, from memory
 _SUBTHRESHOLD = 0.1  # [V], ngspice's own default for the rounding near threshold
 _BREAKDOWN_CURRENT = 250e-6  # [A], at which V_(BR)DSS is specified, common practice
-_GATE_DRAIN_SLOPE = 0.5  # [1/V], how sharply the gate-drain capacitance falls near V_GD = 0, from memory
 
 
 class OnResistance(Record):
-    """A typical R_DS(on) and the gate voltage it is given for."""
+    """A typical R_DS(on), the gate voltage it is given for, and the drain current it is measured at where that is printed."""
 
     value: Annotated[Quantity, POSITIVE_RESISTANCE]
     gate: Annotated[Quantity, VOLTAGE]
+    current: Annotated[Quantity, CURRENT] | None = None
+
+
+class SwitchingTimes(Record):
+    """Typical switching times, and the resistive circuit that they are measured in."""
+
+    supply: Annotated[Quantity, VOLTAGE]
+    load: Annotated[Quantity, POSITIVE_RESISTANCE]
+    gate_resistor: Annotated[Quantity, RESISTANCE]
+    drive: Annotated[Quantity, VOLTAGE]
+    delay_on: Annotated[Quantity, POSITIVE_TIME] | None = None
+    rise: Annotated[Quantity, POSITIVE_TIME] | None = None
+    delay_off: Annotated[Quantity, POSITIVE_TIME] | None = None
+    fall: Annotated[Quantity, POSITIVE_TIME] | None = None
 
 
 class NMosfet(Part):
@@ -75,14 +95,27 @@ class NMosfet(Part):
     )
     gate_drain_charge: Annotated[Quantity, CHARGE]
     charge_voltage: Annotated[Quantity, VOLTAGE]
+    charge_gate: Annotated[Quantity, VOLTAGE] | None = None
+    charge_current: Annotated[Quantity, CURRENT] | None = None
+    gate_charge: Annotated[Quantity, CHARGE] | None = None
+    gate_source_charge: Annotated[Quantity, CHARGE] | None = None
     gate_resistance: Annotated[Quantity, RESISTANCE] = assume(
         "2 ohm", RESISTANCE, "internal gate resistance, from memory"
     )
+    switching: SwitchingTimes | None = None
+    thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
+    junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
 
     @model_validator(mode="after")
     def _coherent(self) -> NMosfet:
         self.parameters(self.breakdown.typ)
+        if self.gate_charge is not None and self.charge_gate is None:
+            raise QuantityError('"gate_charge" needs "charge_gate", the gate voltage up to which it counts')
         return self
+
+    def proofs(self) -> tuple[Proof, ...]:
+        """What its datasheet prints, measured on the model as the datasheet measures it."""
+        return mosfet_proofs(self)
 
     def parameters(self, breakdown: float) -> dict[str, float]:
         """Parameters of ngspice's VDMOS model from the datasheet's typical figures.
@@ -105,9 +138,9 @@ class NMosfet(Part):
         Notes
         -----
         R_DS(on) = R_D + 1 / (K_P u) from two points, or from one with half of it as R_D; V_GS(th) is where
-        I = K_P u^2 / 2; u = k ln(1 + exp((V_GS - V_TO) / k)) with k = 0.1 V is the model's overdrive. Gate-drain
-        capacitance between C_GDmin = C_rss and a C_GDmax for which the charge over the plateau is Q_gd. Output
-        capacitance as an abrupt junction. 25 degC.
+        I = K_P u^2 / 2; u = k ln(1 + exp((V_GS - V_TO) / k)) with k = 0.1 V is the model's overdrive. The gate's
+        capacitances follow from C_iss, C_rss, Q_gd and, where it is printed, Q_g (`gate_capacitances`). Output capacitance
+        as an abrupt junction. 25 degC.
 
         References
         ----------
@@ -145,21 +178,23 @@ class NMosfet(Part):
         )
         if not c_rss < min(c_iss, c_oss):
             raise QuantityError("reverse_capacitance must be smaller than input_capacitance and output_capacitance")
-        # C_GD(v) = C_max - s + s atan(a v) below 0 V and C_max - s + s tanh(a v) above, with s = (C_max - C_min) /
-        # (1 + pi/2); the plateau runs from V_GD = -(V - V_th) to where the channel is fully on, at about V_TO.
-        low, high, a = self.charge_voltage.typ - v_th, v_to, _GATE_DRAIN_SLOPE
-        if not (low > 0 and high > 0):
+        if not (self.charge_voltage.typ > v_th and v_to > 0):
             raise QuantityError(
                 f"charge_voltage must be above the threshold of {v_th:.3g} V"
-                if low <= 0
+                if v_to > 0
                 else f"threshold_current of {i_th:.3g} A is more than a channel of this on_resistance carries at its threshold"
             )
-        area = low * math.atan(a * low) - math.log1p((a * low) ** 2) / (2 * a)
-        log_cosh = a * high + math.log1p(math.exp(-2 * a * high)) - math.log(2)
-        share = (area + low + high - log_cosh / a) / (1 + math.pi / 2)
-        c_max = (self.gate_drain_charge.typ - c_rss * share) / (low + high - share)
-        if c_max < c_rss:
-            raise QuantityError("gate_drain_charge is smaller than reverse_capacitance times charge_voltage")
+        figures = GateFigures(
+            c_iss,
+            c_rss,
+            self.capacitance_voltage.typ,
+            self.gate_drain_charge.typ,
+            self.charge_voltage.typ,
+            v_th,
+            v_to,
+            self.gate_charge.typ if self.gate_charge is not None else None,
+            self.charge_gate.typ if self.charge_gate is not None else None,
+        )
         junction = (c_oss - c_rss) * math.sqrt(1 + self.capacitance_voltage.typ / _BODY_DIODE_POTENTIAL)
         return {
             "VTO": v_to,
@@ -169,10 +204,7 @@ class NMosfet(Part):
             "RS": 0.0,
             "RG": self.gate_resistance.typ,
             "RB": 0.005,
-            "CGS": c_iss - c_rss,
-            "CGDMAX": c_max,
-            "CGDMIN": c_rss,
-            "A": a,
+            **gate_capacitances(figures),
             "CJO": junction,
             "VJ": _BODY_DIODE_POTENTIAL,
             "M": 0.5,
@@ -278,6 +310,15 @@ class NMosfetStage(Part):
                     "destroy",
                     "average current of the switch",
                     "choose a larger switch, or fire less often",
+                ),
+                junction_heat(
+                    part.title or "switch",
+                    "switch",
+                    (("v_ds", "i_d"), ("v_gs", "i_g")),
+                    part.thermal_resistance,
+                    part.junction_rating,
+                    corner.ambient,
+                    "choose a switch of less on-resistance or with a better path for heat, or fire less often",
                 ),
             ),
             assumptions=listed(

@@ -1,0 +1,279 @@
+"""What the datasheet of an N-MOSFET prints, and the test circuits that measure it on the model.
+
+Where printed figures contradict each other the model follows, in this order: the on-resistance at the gate voltages given,
+the threshold, the gate-drain charge, the total gate charge, the capacitances. The proof of the others then shows by how
+much they are missed.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import TYPE_CHECKING
+
+from boardsim.parts.elements import (
+    GROUND,
+    Ammeter,
+    CurrentDrive,
+    Drive,
+    Element,
+    Junction,
+    Model,
+    PowerMosfet,
+    Resistor,
+    Signal,
+    current,
+    scaled,
+    voltage,
+)
+from boardsim.parts.proof import AtEnd, Between, Proof, Ratio
+from boardsim.quantities import Quantity, in_units
+
+if TYPE_CHECKING:
+    from boardsim.parts.switches.n_mosfet import NMosfet, SwitchingTimes
+
+_BREAKDOWN_CURRENT = 250e-6  # [A] at which V_(BR)DSS is specified, common practice
+_SETTLED = 1e-3  # [s] after which the slowest circuit, 250 uA into the capacitances at the drain, stands still
+_GATE_CURRENT = 1e-3  # [A] into the gate in the charge circuit; slow against the channel, common practice
+_BLEEDER = 1e9  # [ohm] gives a gate that only a current drives a level to start from
+_PLATEAU_STEP = 0.05  # [V] by which V_GS has risen again where its plateau is over; a matter of the eye
+_EDGE = 0.5e-9  # [s] of the pulse generator in the switching circuit, short against all printed times
+_SMALL = 0.1  # [V] swept before the test voltage of a capacitance: small against the voltages it changes over
+
+_TYPICAL = "extraction meets typical points within 10 %"
+_SHAPE = "one-term channel and gate-drain capacitance of the model, 10 %"
+_GIVES_WAY = 0.20
+_LAST = "the input capacitance gives way where it contradicts the total gate charge, 20 %"
+_TURN_ON, _TURN_OFF = 0.75, 0.40
+_FIXTURE = (
+    "nothing of it shapes the model, and the inductance of leads and the rise of the generator, which datasheets do not "
+    "print, are not in it: they lengthen turn-on most"
+)
+
+
+def mosfet_proofs(part: NMosfet) -> tuple[Proof, ...]:
+    """Every printed figure of a MOSFET with its test circuit.
+
+    Notes
+    -----
+    On-resistance V_DS / I_D at the printed drain current, or at a tenth of the continuous rating where none is printed:
+    there the channel is ohmic at every gate voltage and the figure hangs on no other. Threshold: gate tied to drain, at
+    the test current. Breakdown: gate tied to source, 250 uA. Capacitances: a ramp of slope s, i = C s, read where the
+    ramp reaches the test voltage. Charges: a constant current into the gate, the drain loaded with a constant current
+    and held at the test voltage by an ideal diode; the plateau of V_GS reaches from where V_DS begins to fall to where
+    V_GS rises again (method of JESD24-2, from memory). Times: resistive load, delay and edge together,
+    since how the whole divides hangs on the knee of a curved edge; 10 % and 90 % points. 25 degC.
+    """
+    return (
+        *_on_resistances(part),
+        _threshold(part),
+        _breakdown(part),
+        *_charges(part),
+        *_capacitances(part),
+        *(_times(part, part.switching) if part.switching is not None else ()),
+    )
+
+
+def _device(part: NMosfet, drain: str = "d", gate: str = "g") -> PowerMosfet:
+    model = Model("m", "VDMOS", part.parameters(part.breakdown.typ))
+    return PowerMosfet("dut", drain, gate, GROUND, model)
+
+
+def _steady(level: float, duration: float) -> tuple[tuple[float, float], ...]:
+    return ((0.0, level), (duration, level))
+
+
+def _ramped(level: float, rise: float, duration: float) -> tuple[tuple[float, float], ...]:
+    return ((0.0, 0.0), (rise, level), (duration, level))
+
+
+def _on_resistances(part: NMosfet) -> Iterator[Proof]:
+    duration = _SETTLED
+    for point in part.on_resistance:
+        if point.current is not None:
+            amperes = point.current.typ
+        elif part.continuous_current is not None:
+            amperes = 0.1 * part.continuous_current.typ
+        else:
+            # Where no rating is given: a drop of a hundredth of the drive, at which the channel is as ohmic.
+            amperes = 0.01 * point.gate.typ / point.value.typ
+        load = CurrentDrive("load", "d", GROUND, _ramped(amperes, 0.1 * duration, duration))
+        drive = Drive("gate", "g", GROUND, _steady(point.gate.typ, duration))
+        meter = Ammeter("drain_meter", "d", "di")
+        yield Proof(
+            f"on-resistance at V_GS {in_units(point.gate.typ, 'V')}, {in_units(amperes, 'A')}",
+            "ohm",
+            point.value,
+            (_device(part, "di"), meter, drive, load),
+            duration,
+            Ratio(voltage("di"), current(meter)),
+            why=_TYPICAL,
+        )
+
+
+def _threshold(part: NMosfet) -> Proof:
+    amperes = part.threshold_current.typ
+    # 250 uA take some 10 us to charge a nanofarad; a smaller test current takes longer.
+    duration = _SETTLED * max(1.0, _BREAKDOWN_CURRENT / amperes)
+    load = CurrentDrive("load", "d", GROUND, _ramped(amperes, 0.1 * duration, duration))
+    return Proof(
+        f"threshold at {in_units(amperes, 'A')}, V_DS = V_GS",
+        "V",
+        part.threshold,
+        (_device(part, "d", "d"), load),
+        duration,
+        AtEnd(voltage("d")),
+        why=_TYPICAL,
+    )
+
+
+def _breakdown(part: NMosfet) -> Proof:
+    load = CurrentDrive("load", "d", GROUND, _ramped(_BREAKDOWN_CURRENT, 0.1 * _SETTLED, _SETTLED))
+    return Proof(
+        f"breakdown at {in_units(_BREAKDOWN_CURRENT, 'A')}",
+        "V",
+        part.breakdown,
+        (_device(part, "d", GROUND), load),
+        _SETTLED,
+        AtEnd(voltage("d")),
+        why=_TYPICAL,
+    )
+
+
+def _charges(part: NMosfet) -> Iterator[Proof]:
+    volts = part.charge_voltage.typ
+    amperes = _charge_current(part)
+    # The model's largest possible charge bounds how long the gate takes.
+    p = part.parameters(part.breakdown.typ)
+    top = part.charge_gate.typ if part.charge_gate is not None else part.threshold.typ + 3.0
+    most = (p["CGS"] + p["CGDMAX"]) * (top + 1.0) + part.gate_drain_charge.max * 2
+    begin = 0.02 * most / _GATE_CURRENT
+    duration = begin + 1.2 * most / _GATE_CURRENT
+    elements: tuple[Element, ...] = (
+        _device(part),
+        CurrentDrive(
+            "gate", "g", GROUND, ((0.0, 0.0), (begin, 0.0), (begin * 1.001, _GATE_CURRENT), (duration, _GATE_CURRENT))
+        ),
+        Resistor("bleeder", "g", GROUND, _BLEEDER),
+        Drive("supply", "rail", GROUND, _steady(volts, duration)),
+        CurrentDrive("load", "d", "rail", _steady(amperes, duration)),
+        Junction("hold", "d", "rail", Model("ideal", "D", {"IS": 1e-12, "N": 0.3, "CJO": 1e-13})),
+    )
+    at = f"V_DS {in_units(volts, 'V')}, {in_units(amperes, 'A')}"
+    falling = 0.98 * volts  # where V_DS begins to fall
+    started = 1e-3  # [V] above rest: where the charge begins to count
+    v_ds, v_gs = voltage("d"), voltage("g")
+    yield Proof(
+        f"gate-drain charge at {at}",
+        "C",
+        part.gate_drain_charge,
+        elements,
+        duration,
+        Between(v_ds, falling, "fall", v_gs, _PLATEAU_STEP, "rise", _GATE_CURRENT, relative=True),
+        why="where a plateau ends is a matter of the eye, 10 %",
+    )
+    if part.gate_source_charge is not None:
+        yield Proof(
+            f"gate-source charge at {at}",
+            "C",
+            part.gate_source_charge,
+            elements,
+            duration,
+            Between(v_gs, started, "rise", v_ds, falling, "fall", _GATE_CURRENT),
+            why=_SHAPE,
+            # It shapes nothing. A band with both ends holds no typical point, but is a bound.
+            shapes=not part.gate_source_charge.min < part.gate_source_charge.typ < part.gate_source_charge.max,
+        )
+    if part.gate_charge is not None and part.charge_gate is not None:
+        yield Proof(
+            f"total gate charge to V_GS {in_units(part.charge_gate.typ, 'V')} at {at}",
+            "C",
+            part.gate_charge,
+            elements,
+            duration,
+            Between(v_gs, started, "rise", v_gs, part.charge_gate.typ, "rise", _GATE_CURRENT),
+            why=_SHAPE,
+        )
+
+
+def _charge_current(part: NMosfet) -> float:
+    """Drain current of the charge circuit: the printed one, or a tenth of the continuous rating, or ten times the threshold's.
+
+    The plateau's level, and little of its length, hang on it. [A]
+    """
+    if part.charge_current is not None:
+        return part.charge_current.typ
+    return 0.1 * part.continuous_current.typ if part.continuous_current is not None else 10 * part.threshold_current.typ
+
+
+def _capacitances(part: NMosfet) -> Iterator[Proof]:
+    volts, duration = part.capacitance_voltage.typ, 1e-6
+    slope = _SMALL / duration  # [V/s]
+    # Ramps go on beyond the end: a corner there would be what the last point shows.
+    beyond = 0.1 * _SMALL
+    to_drain = ((0.0, volts - _SMALL), (1.1 * duration, volts + beyond))
+    gate_meter, drain_meter = Ammeter("gate_meter", "gs", "g"), Ammeter("drain_meter", "ds", "d")
+    rising_gate = Drive("gate", "gs", GROUND, ((0.0, -_SMALL), (1.1 * duration, beyond)))
+    resting_gate = Drive("gate", "gs", GROUND, _steady(0.0, duration))
+    still = Drive("drain", "ds", GROUND, _steady(volts, duration))
+    rising = Drive("drain", "ds", GROUND, to_drain)
+    device = (_device(part), gate_meter, drain_meter)
+    circuits: tuple[tuple[str, Quantity, tuple[Element, ...], Signal], ...] = (
+        ("input", part.input_capacitance, (rising_gate, still), scaled(1 / slope, current(gate_meter))),
+        ("output", part.output_capacitance, (resting_gate, rising), scaled(1 / slope, current(drain_meter))),
+        ("reverse", part.reverse_capacitance, (resting_gate, rising), scaled(-1 / slope, current(gate_meter))),
+    )
+    for name, printed, sources, signal in circuits:
+        yield Proof(
+            f"{name} capacitance at V_DS {in_units(volts, 'V')}",
+            "F",
+            printed,
+            (*device, *sources),
+            duration,
+            AtEnd(signal),
+            tolerance=_GIVES_WAY if name == "input" and part.gate_charge is not None else 0.10,
+            why=_LAST if name == "input" and part.gate_charge is not None else _TYPICAL,
+        )
+
+
+def _times(part: NMosfet, circuit: SwitchingTimes) -> Iterator[Proof]:
+    volts, drive, ohms = circuit.supply.typ, circuit.drive.typ, circuit.gate_resistor.typ + part.gate_resistance.typ
+    # Long enough for the gate to settle: ten times the resistance with the largest capacitance of the model.
+    p = part.parameters(part.breakdown.typ)
+    settle = 10 * max(ohms, 1.0) * (p["CGS"] + p["CGDMAX"]) + 20 * _EDGE
+    on, off = 0.1 * settle, 1.1 * settle
+    duration = 2.1 * settle
+    edges = ((0.0, 0.0), (on, 0.0), (on + _EDGE, drive), (off, drive), (off + _EDGE, 0.0), (duration, 0.0))
+    elements: tuple[Element, ...] = (
+        _device(part),
+        Drive("generator", "p", GROUND, edges),
+        Resistor("gate", "p", "g", max(circuit.gate_resistor.typ, 1e-3)),
+        Drive("supply", "rail", GROUND, _steady(volts, duration)),
+        Resistor("load", "rail", "d", circuit.load.typ),
+    )
+    gate, drain = voltage("g"), voltage("d")
+    low, high = 0.1 * volts, 0.9 * volts
+    wanted = (
+        (
+            "turn-on time",
+            circuit.delay_on,
+            circuit.rise,
+            Between(gate, 0.1 * drive, "rise", drain, low, "fall"),
+            _TURN_ON,
+        ),
+        (
+            "turn-off time",
+            circuit.delay_off,
+            circuit.fall,
+            Between(gate, 0.9 * drive, "fall", drain, high, "rise"),
+            _TURN_OFF,
+        ),
+    )
+    at = (
+        f"{in_units(volts, 'V')}, {in_units(circuit.load.typ, 'ohm')}, R_G {in_units(circuit.gate_resistor.typ, 'ohm')}"
+    )
+    for name, delay, edge, reading, tolerance in wanted:
+        if delay is not None and edge is not None:
+            ends = (delay.typ + edge.typ, delay.min + edge.min, delay.max + edge.max)
+            printed = Quantity(*ends, "s", delay.origin)
+            what = f"{name} (delay and edge) at {at}, V_GS {in_units(drive, 'V')}"
+            yield Proof(what, "s", printed, elements, duration, reading, tolerance, _FIXTURE)
