@@ -130,10 +130,10 @@ def verify_all(
                 o = outcomes[futures[future]] = future.result()
                 manner = "as expected" if o.status == EXIT_PASS else "NOT AS EXPECTED"
                 say(f"{len(outcomes)}/{len(scenarios)} {o.name}: {o.verdict}, {manner}, {in_units(o.seconds, 's', 2)}")
-        except BaseException:
-            crew.cancel.set()
-            pool.shutdown(wait=False, cancel_futures=True)
-            raise
+        finally:
+            if len(outcomes) < len(scenarios):  # stopped, or without an engine: the rest need not be waited for
+                crew.cancel.set()
+                pool.shutdown(wait=False, cancel_futures=True)
     return _with_idle(scenarios, [outcomes[i] for i in range(len(scenarios))])
 
 
