@@ -4,15 +4,38 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from typing import Annotated
 
 from boardsim.errors import QuantityError
 from boardsim.parts.diode import THERMAL_VOLTAGE
 from boardsim.parts.elements import GROUND, Junction, Model
+from boardsim.parts.record import Record
+from boardsim.quantities import CURRENT, VOLTAGE, Quantity
 
 JUNCTION_POTENTIAL = 0.75  # [V] of base-emitter and base-collector junction, ngspice's own default
 GRADING = 0.33  # [1] of both, ngspice's own default
 _BREAKDOWN_CURRENT = 1e-3  # [A], at which V_(BR)CEO is specified, common practice
 _LEAST_RISE = 1e-30  # [A], saturation current of a junction that must not conduct forward
+
+
+class Saturation(Record):
+    """A typical V_CE(sat) at I_C and I_B (the highest where no typical is printed), and the highest."""
+
+    voltage: Annotated[Quantity, VOLTAGE]
+    highest: Annotated[Quantity, VOLTAGE] | None = None
+    current: Annotated[Quantity, CURRENT]
+    base: Annotated[Quantity, CURRENT]
+
+    @property
+    def printed(self) -> Quantity:
+        """The typical point with the highest as the upper end of its band. [V]"""
+        return with_highest(self.voltage, self.highest)
+
+
+def with_highest(typical: Quantity, highest: Quantity | None) -> Quantity:
+    """A typical figure and the printed maximum as one quantity."""
+    top = typical.typ if highest is None else highest.typ
+    return Quantity(typical.typ, typical.typ, top, typical.unit, typical.origin)
 
 
 def base_charge(forward: float, knee: float) -> float:

@@ -104,6 +104,8 @@ def value_and_limit(finding: Finding) -> tuple[str, str]:
         return _number(finding.value, finding.unit, 3), "not given"
     if not (math.isfinite(finding.value) and math.isfinite(finding.limit)):
         return _number(finding.value, finding.unit, 3), _number(finding.limit, finding.unit, 3)
+    if finding.unit == "1" and 0 < finding.limit < 1:
+        return percent(finding.value), percent(finding.limit)  # a share, not a count
     if finding.unit == "K":
         return celsius(finding.value), celsius(finding.limit)
     value, limit = apart(finding.value, finding.limit, finding.unit)

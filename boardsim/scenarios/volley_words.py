@@ -58,6 +58,8 @@ def _sentence(runs: Runs, most: int, wanted: int | None, at_least: int | None) -
         said = f"all {count} channels at once pass"
     else:
         said = f"any {most} of the {count} channels at once {'passes' if most == 1 else 'pass'}"
+    if any(t.step.verdict == "limit-missing" for n, t in runs.tried.items() if n <= most):
+        said += " as far as limits were given"
     said += f", with a pulse of {width}"
     stop = runs.tried.get(most + 1)
     if stop is not None:

@@ -10,10 +10,12 @@ from pydantic import Field, model_validator
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, Part, Stamp, Total, listed, named_part
 from boardsim.parts.bipolar import (
+    Saturation,
     breakdown_junction,
     saturated,
     straight_line,
     thermal,
+    with_highest,
 )
 from boardsim.parts.diode import THERMAL_VOLTAGE, ForwardPoint, forward_parameters
 from boardsim.parts.elements import (
@@ -39,7 +41,6 @@ from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Between, Proof
 from boardsim.parts.record import Record
 from boardsim.parts.rules import BreakdownRule, DriveRule, Limit, MeanRule, PeakRule, Rule
-from boardsim.parts.switches.npn import Saturation, with_highest
 from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
@@ -403,9 +404,8 @@ class DarlingtonArray(Part):
                 elements,
                 2 * off,
                 Between(source, high / 2, "rise", output, half, "fall"),
-                tolerance=1.5,
-                why="the junction capacitances with which the model converges make it some tens of nanoseconds late: a "
-                "hundred-thousandth of any coil's L/R, which moves no finding",
+                tolerance=0.3,
+                why="the formula leaves out that the junctions have to be charged first",
             ),
             Proof(
                 "delay to the output's rising edge",

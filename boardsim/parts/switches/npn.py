@@ -13,6 +13,7 @@ from boardsim.parts.base import Assumption, Corner, Part, Stamp, listed, named_p
 from boardsim.parts.bipolar import (
     GRADING,
     JUNCTION_POTENTIAL,
+    Saturation,
     breakdown_junction,
     junction_capacitance,
     saturated,
@@ -75,26 +76,6 @@ class Gain(Record):
     def typ(self) -> float:
         """The typical gain; 1.5 times the least where it was not given. [1]"""
         return float(self.typical) if self.typical is not None else _TYPICAL_OVER_LEAST * self.least
-
-
-class Saturation(Record):
-    """A typical V_CE(sat) at I_C and I_B (the highest where no typical is printed), and the highest."""
-
-    voltage: Annotated[Quantity, VOLTAGE]
-    highest: Annotated[Quantity, VOLTAGE] | None = None
-    current: Annotated[Quantity, CURRENT]
-    base: Annotated[Quantity, CURRENT]
-
-    @property
-    def printed(self) -> Quantity:
-        """The typical point with the highest as the upper end of its band. [V]"""
-        return with_highest(self.voltage, self.highest)
-
-
-def with_highest(typical: Quantity, highest: Quantity | None) -> Quantity:
-    """A typical figure and the printed maximum as one quantity."""
-    top = typical.typ if highest is None else highest.typ
-    return Quantity(typical.typ, typical.typ, top, typical.unit, typical.origin)
 
 
 class Npn(Part):
