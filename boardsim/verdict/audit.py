@@ -104,15 +104,15 @@ def refinement(
             subject = f"{f.label}: {f.quantity} moved by"
     others = {(r.quantity, r.label): r for r in readings[0]}
     for r in readings[1]:
-        earlier = others.get((r.quantity, r.label))
+        earlier = others.pop((r.quantity, r.label), None)
         size = max(abs(r.value), SMALL * r.scale)
         shift = abs(earlier.value - r.value) / size if earlier is not None and size else float(earlier is None)
         if _share(shift, SHARE) > worst / allowed:
             worst, allowed = shift if math.isfinite(shift) else math.inf, SHARE
             subject = f"{r.label}: {r.quantity} moved by"
-    if before:
-        gone = next(iter(before.values()))
-        worst, allowed, subject = 1.0, SHARE, f"{gone.label}: {gone.quantity} is gone, moved by"
+    gone = [(g.label, g.quantity) for g in before.values()] + [(r.label, r.quantity) for r in others.values()]
+    if gone:
+        worst, allowed, subject = 1.0, SHARE, f"{gone[0][0]}: {gone[0][1]} is gone, moved by"
     worst = max(worst, 0.0)
     return AuditEntry("refinement", corner, run, subject, worst * 100, allowed * 100, "%", worst <= allowed)
 

@@ -11,6 +11,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from boardsim.verdict.audit import refinement
+from boardsim.verdict.findings import Reading
 from boardsim.verdict.watch import HYSTERESIS, Avalanches, Dips, Extremes, Falls, Integrals, Samples, Slices, TimeAbove
 
 values = st.lists(st.floats(-10, 10).map(lambda x: round(x, 3)), min_size=3, max_size=40)
@@ -117,3 +119,10 @@ def test_slices_keep_every_spike(y: list[float], at: list[int]) -> None:
     assert whole.high.max() == max(y)
     assert whole.low.min() == min(y)
     assert np.isfinite(whole.low).all()
+
+
+def test_a_reading_that_the_repeat_has_not_is_no_agreement() -> None:
+    once = (Reading("time to let go", "gate 0", 1e-3, "s", 1e-3),)
+    assert refinement((), (), (100, 200), "nominal", "pair", (once, once)).passed
+    for pair in ((once, ()), ((), once)):
+        assert not refinement((), (), (100, 200), "nominal", "pair", pair).passed
