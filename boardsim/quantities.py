@@ -152,6 +152,8 @@ AREA = Dimension("area", "m^2", "2.5 mm2", 1e-10, 1e-2, scale_letters=False)
 TEMPERATURE = Dimension("temperature", "K", "25 degC", 200.0, 800.0, scale_letters=False)
 TEMPERATURE_RISE = Dimension("temperature rise", "K", "40 K", 1e-3, 600.0, zero=True, scale_letters=False)
 THERMAL_RESISTANCE = Dimension("thermal resistance", "K/W", "62 K/W", 1e-3, 1e4, scale_letters=False)
+VOLTAGE_DRIFT = Dimension("temperature drift", "V/K", "-2 mV/K", -1.0, 1.0, zero=True, scale_letters=False)
+GROWTH = Dimension("temperature coefficient", "1/K", "0.4 %/K", 0.0, 0.05, zero=True, scale_letters=False)
 SHARE = Dimension("share", "1", "80 %", 1e-6, 1.0, scale_letters=False)
 
 # IEC 60062 writes the scale letter in place of the decimal point; R stands for x1.
@@ -181,7 +183,7 @@ _LOWER_UPPER = re.compile(rf"\s*-\s*({_UNSIGNED})\s*({_UNIT})?\s*/\s*\+\s*({_UNS
 _BAND = re.compile(rf"\s*({_NUMBER})\s*({_UNIT})?\s+to\s+({_NUMBER})\s*({_UNIT})\s*")
 _PINT_NAMES = {"\u03a9": "ohm", "\u2126": "ohm", "°C": "degC", "%": "percent", "²": "2", "³": "3", "^": ""}
 _LONGEST_TEXT = 100  # letters; what no number with a unit and a tolerance needs
-_SI_NAMES = {"1": "", "m^2": "m**2", "K/W": "kelvin/watt"}
+_SI_NAMES = {"1": "", "m^2": "m**2", "K/W": "kelvin/watt", "V/K": "volt/kelvin", "1/K": "1/kelvin"}
 
 
 @functools.cache
@@ -368,10 +370,13 @@ def computed(value: float, unit: str, how: str) -> Quantity:
 
 def _written(value: float, unit: str) -> str:
     """A value for people; a share in %."""
-    return f"{value * 100:.6g} %" if unit == "1" else in_units(value, unit)
+    if unit in _IN_PERCENT:
+        return f"{value * 100:.6g} {_IN_PERCENT[unit]}"
+    return in_units(value, unit)
 
 
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
+_IN_PERCENT = {"1": "%", "1/K": "%/K"}
 _UNPREFIXED = {"K/W", "1", "%", "m^2"}
 _LARGEST = {"K": 0, "m": 0, "F": -6}  # nobody writes kilokelvin, or 4.7 mF on a capacitor
 

@@ -5,8 +5,9 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 from boardsim.board.reader import Board
+from boardsim.board.schema import refuse_extremes
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Surroundings
+from boardsim.parts.base import Surroundings, listed
 from boardsim.quantities import ZERO_CELSIUS, Quantity
 
 
@@ -41,12 +42,16 @@ def under(board: Board, conditions: Conditions) -> Board:
     Raises
     ------
     QuantityError
-        If the supply would not be above the brown-out level.
+        If the supply would not be above the brown-out level, or no semiconductor's model holds at the ambient.
     """
     if conditions.ambient is not None:
         q = conditions.ambient
+        rise = board.junction_rise
+        refuse_extremes(q, rise)
         known = tuple(a for a in board.assumptions if (a.part, a.quantity) != ("board", "ambient"))
-        board = replace(board, around=Surroundings(q.min, q.max), assumptions=known)
+        listed_already = board.around is not None
+        known += () if listed_already else listed("board", junction_rise=rise)
+        board = replace(board, around=Surroundings(q.min, q.max, rise.typ), assumptions=known)
     if conditions.supply is not None:
         q, brown_out = conditions.supply, board.limits.brown_out
         if brown_out is not None and q.min <= brown_out.voltage.max:

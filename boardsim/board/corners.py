@@ -62,22 +62,40 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     windings for the rail, which then has to feed the most. A coil of high inductance holds the most energy and lets go
     latest, unless pulses end before its current has settled (five times L/R): then the first two are run with low
     inductance as well, which lets the current rise further. Corners that come out alike are run once.
+
+    Semiconductors are hot in the first and in the third: a Zener then clamps highest, a diode lowest, and a MOSFET's
+    on-resistance is largest; they are cold in the others, where breakdown is lowest and a bipolar transistor needs the
+    most drive. Hot is the warmest air and `junction_rise`, cold the coldest air. Cold windings with hot junctions do not
+    go together for long, which makes the first corner an upper bound.
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min"}
     stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max"}
     soft: dict[str, Bound] = {"clamp_voltage": "min", "breakdown": "min"}
+    warm, cool = hot_junction(board), cold_junction(board)
     wanted = [
-        Corner("supply high, coils cold, clamps high", {**strong, **stiff, "inductance": "max"}, "cold"),
-        Corner("supply high, coils cold, clamps low", {**strong, **soft, "inductance": "max"}, "cold"),
-        Corner("supply low, coils hot", {**weak, "coil_resistance": "max", "inductance": "max"}, "hot"),
-        Corner("supply low, coils cold", {**weak, "coil_resistance": "min", "inductance": "min"}, "cold"),
+        Corner(
+            "supply high, coils cold, clamps high and hot",
+            {**strong, **stiff, "inductance": "max"},
+            "cold",
+            junction=warm,
+        ),
+        Corner(
+            "supply high, coils cold, clamps low and cold",
+            {**strong, **soft, "inductance": "max"},
+            "cold",
+            junction=cool,
+        ),
+        Corner("supply low, coils hot", {**weak, "coil_resistance": "max", "inductance": "max"}, "hot", junction=warm),
+        Corner(
+            "supply low, coils cold", {**weak, "coil_resistance": "min", "inductance": "min"}, "cold", junction=cool
+        ),
     ]
     if shortest < 5 * max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels):
         high = "supply high, coils cold, low inductance"
         wanted += [
-            Corner(f"{high}, clamps high", {**strong, **stiff, "inductance": "min"}, "cold"),
-            Corner(f"{high}, clamps low", {**strong, **soft, "inductance": "min"}, "cold"),
+            Corner(f"{high}, clamps high and hot", {**strong, **stiff, "inductance": "min"}, "cold", junction=warm),
+            Corner(f"{high}, clamps low and cold", {**strong, **soft, "inductance": "min"}, "cold", junction=cool),
         ]
     return _distinct(board, wanted)
 
@@ -95,7 +113,10 @@ def slow_rail(board: Board) -> Corner | None:
         "coil_resistance": "min",
         "inductance": "min",
     }
-    (corner,) = _distinct(board, [Corner("supply low, coils cold, bulk high", {**ends, "logic": "min"}, "cold")])
+    (corner,) = _distinct(
+        board,
+        [Corner("supply low, coils cold, bulk high", {**ends, "logic": "min"}, "cold", junction=cold_junction(board))],
+    )
     return corner
 
 
@@ -106,9 +127,20 @@ def _distinct(board: Board, wanted: list[Corner]) -> tuple[Corner, ...]:
     for corner in wanted:
         ends = {k: v for k, v in corner.ends.items() if has_tolerance.get(k)}
         winding = corner.winding if board.around else "reference"
-        distinct.setdefault((tuple(sorted(ends.items())), winding), Corner(corner.name, ends, winding, _air(board)))
+        alike = (tuple(sorted(ends.items())), winding, corner.junction)
+        distinct.setdefault(alike, Corner(corner.name, ends, winding, _air(board), corner.junction))
     only = tuple(distinct.values())
     return only if any(c.ends or c.winding != "reference" for c in only) else (NOMINAL,)
+
+
+def hot_junction(board: Board) -> float:
+    """The temperature of semiconductors that have warmed up in the warmest air; 25 degC where no ambient was given. [K]"""
+    return T_MODEL if board.around is None else board.around.ambient_high + board.around.junction_rise
+
+
+def cold_junction(board: Board) -> float:
+    """The temperature of semiconductors in the coldest air; 25 degC where no ambient was given. [K]"""
+    return T_MODEL if board.around is None else board.around.ambient_low
 
 
 def _air(board: Board) -> float:

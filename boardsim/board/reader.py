@@ -24,7 +24,7 @@ from boardsim.parts.leads import Leads
 from boardsim.parts.logic import Logic
 from boardsim.parts.record import name_from, named_like, nearest, said, shortened
 from boardsim.parts.supply import Supply
-from boardsim.quantities import Origin
+from boardsim.quantities import Origin, Quantity
 
 
 @dataclass(frozen=True)
@@ -59,6 +59,7 @@ class Board:
     exclusive: tuple[tuple[tuple[int, ...], int, str], ...]
     derating: Deratings
     around: Surroundings | None
+    junction_rise: Quantity
     assumptions: tuple[Assumption, ...]
 
     def channel(self, number: int) -> Channel:
@@ -200,14 +201,15 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         "limits", guard_band=board.limits.guard_band, pulse_error=board.limits.pulse_error
     )
     if board.ambient is not None:
-        around = Surroundings(board.ambient.min, board.ambient.max)
+        around = Surroundings(board.ambient.min, board.ambient.max, board.junction_rise.typ)
+        assumed += listed("board", junction_rise=board.junction_rise)
     else:
         assumed += (
             Assumption(
                 "board",
                 "ambient",
                 "not given",
-                "windings and cable are taken at the temperature of their given resistance",
+                "windings and cable are taken at the temperature of their given resistance, semiconductors at 25 degC",
             ),
         )
     return Board(
@@ -223,6 +225,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         tuple(exclusive),
         board.derating,
         around,
+        board.junction_rise,
         assumed,
     )
 

@@ -17,7 +17,17 @@ from boardsim.parts.logic import Logic
 from boardsim.parts.record import Name, Record
 from boardsim.parts.register import Register
 from boardsim.parts.supply import Supply
-from boardsim.quantities import FREQUENCY, SHARE, TEMPERATURE, TIME, VOLTAGE, Quantity, assume
+from boardsim.quantities import (
+    FREQUENCY,
+    SHARE,
+    TEMPERATURE,
+    TEMPERATURE_RISE,
+    TIME,
+    VOLTAGE,
+    Quantity,
+    assume,
+    celsius,
+)
 
 
 def _any_kind(*roles: str) -> Any:
@@ -47,6 +57,8 @@ def _likely_kind(value: dict[str, Any]) -> str:
 
     return max(kinds("switch"), key=fit)
 
+
+_COLDEST, _HOTTEST = 218.15, 448.15  # [K], -55 to 175 degC: what power semiconductors are rated for at most
 
 AnyClamp = _any_kind("clamp")
 AnySwitch = _any_kind("switch")
@@ -148,6 +160,9 @@ class BoardFile(Record):
 
     name: Name | None = None
     ambient: Annotated[Quantity, TEMPERATURE] | None = None
+    junction_rise: Annotated[Quantity, TEMPERATURE_RISE] = assume(
+        "20 K", TEMPERATURE_RISE, "semiconductors that have warmed up, above the ambient; held against what they take"
+    )
     supply: Supply
     cable: Cable
     bulk: Bulk
@@ -158,6 +173,35 @@ class BoardFile(Record):
     channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]
     limits: Limits = Limits()
     derating: Deratings = Deratings()
+
+    @model_validator(mode="after")
+    def _models_hold(self) -> BoardFile:
+        if self.ambient is not None:
+            refuse_extremes(self.ambient, self.junction_rise)
+        return self
+
+
+def refuse_extremes(ambient: Quantity, rise: Quantity) -> None:
+    """Hold the temperatures of semiconductors against the range in which their models hold.
+
+    Parameters
+    ----------
+    ambient : Quantity
+        [K]
+    rise : Quantity
+        Of warm junctions above the warmest air. [K]
+
+    Raises
+    ------
+    QuantityError
+        If they go beyond it.
+    """
+    low, high = ambient.min, ambient.max + rise.typ
+    if low < _COLDEST or high > _HOTTEST:
+        raise QuantityError(
+            f"ambient and junction_rise take semiconductors from {celsius(low)} to {celsius(high)}; their models hold from "
+            f"{celsius(_COLDEST)} to {celsius(_HOTTEST)}"
+        )
 
 
 def component_class(kind: str) -> type[Part] | None:

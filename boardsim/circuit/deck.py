@@ -10,9 +10,10 @@ from typing import Literal
 from boardsim.parts.base import Assumption, Corner
 from boardsim.parts.elements import Port, Signal
 from boardsim.parts.rules import Rule
+from boardsim.parts.temperature import in_celsius
 
 _BEYOND = 1e-9  # [s] that a run goes on after its window, so that the window's last instant lies inside
-SIMULATION_TEMPERATURE = 25.0  # [degC]; all models hold at 25 degC, windings carry their own temperature
+MODEL_TEMPERATURE = 25.0  # [degC], of models that do not say another; windings carry their own temperature
 
 
 @dataclass(frozen=True)
@@ -92,7 +93,7 @@ class Deck:
             self.netlist.rstrip(),
             f"* corner: {self.corner.name}; {settings}",
             f".options method={settings.method} reltol={settings.reltol:g} abstol={settings.abstol:g}",
-            f".options temp={SIMULATION_TEMPERATURE:g} tnom={SIMULATION_TEMPERATURE:g} noacct noinit",
+            f".options temp={in_celsius(self.corner.junction):g} tnom={MODEL_TEMPERATURE:g} noacct noinit",
             f".nodeset {hints}",
             f".save {' '.join(self.vectors)}",
             *(self.measures if measures else ()),

@@ -187,7 +187,7 @@ class Stamp:
 
 @dataclass(frozen=True)
 class Corner:
-    """Which end of each tolerance a run takes, and how warm windings are.
+    """Which end of each tolerance a run takes, and how warm windings and junctions are.
 
     Attributes
     ----------
@@ -200,16 +200,23 @@ class Corner:
         Winding temperature.
     ambient : float
         Warmest air around the board, from which junction temperatures count. [K]
+    junction : float
+        Temperature of every semiconductor in this run, which its electrical figures are taken at. [K]
     """
 
     name: str
     ends: Mapping[str, Bound] = field(default_factory=dict)
     winding: Literal["cold", "hot", "reference"] = "reference"
     ambient: float = T_MODEL
+    junction: float = T_MODEL
 
     def take(self, quantity: Quantity, key: str) -> float:
         """The value of a quantity in this corner. [its unit]"""
         return quantity.at(self.ends.get(key, "typ"))
+
+    def drifted(self, drift: float) -> float:
+        """How far a voltage with this temperature drift is from where it is at 25 degC. [V/K] -> [V]"""
+        return drift * (self.junction - T_MODEL)
 
 
 NOMINAL = Corner("nominal")
@@ -217,10 +224,11 @@ NOMINAL = Corner("nominal")
 
 @dataclass(frozen=True)
 class Surroundings:
-    """What a run assumes around the board. [K]"""
+    """What a run assumes around the board, and of junctions that have warmed up. [K]"""
 
     ambient_low: float
     ambient_high: float
+    junction_rise: float = 0.0
 
 
 def listed(part: str, **quantities: Quantity) -> tuple[Assumption, ...]:

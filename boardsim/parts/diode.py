@@ -10,12 +10,32 @@ from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import NOMINAL, Corner, Part, Stamp, listed
-from boardsim.parts.elements import GROUND, CurrentDrive, Junction, Model, Port, Probe, Signal, scaled, voltage
+from boardsim.parts.base import NOMINAL, T_MODEL, Corner, Part, Stamp, listed
+from boardsim.parts.elements import (
+    GROUND,
+    CurrentDrive,
+    Element,
+    Junction,
+    Model,
+    Port,
+    Probe,
+    Resistor,
+    Signal,
+    scaled,
+    voltage,
+)
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.record import Record
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule, Rule
+from boardsim.parts.temperature import (
+    LEAST_SATURATION,
+    LeakagePoint,
+    in_celsius,
+    junction_at,
+    reverse_current,
+    thermal_voltage,
+)
 from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
@@ -24,28 +44,38 @@ from boardsim.quantities import (
     THERMAL_RESISTANCE,
     TIME,
     VOLTAGE,
+    VOLTAGE_DRIFT,
     Quantity,
     assume,
+    celsius,
     in_units,
 )
 
 if TYPE_CHECKING:
     from boardsim.parts.led import Led
 
-THERMAL_VOLTAGE = 8.617333e-5 * 298.15  # [V] k T / q at 25 degC, CODATA
+THERMAL_VOLTAGE = thermal_voltage(T_MODEL)  # [V] k T / q at 25 degC
 _MOST_FOLDS = 250  # e-folds of current: about 11 V across the junction alone, more than stacked rectifiers have
 _RECOVERY_CURRENTS = 0.5  # forward over reverse current at which recovery times are given (0.5 A, 1 A), common practice
-_LEAST_SATURATION = 1e-28  # [A], what ngspice 39 takes instead of anything below it, measured
 EMISSION = 1.75  # silicon rectifier in its working range, from memory
 RAMP, SETTLE = 1e-3, 10e-3  # [s], of a test current: from nothing to its value, and until it is read
 _BASE = 0.1  # share of its peak above which a half sine lasts for 94 % of its base, by which surge ratings count
 
 
 class ForwardPoint(Record):
-    """One typical point of the forward characteristic; a band where the datasheet prints the ends of one."""
+    """One typical point of the forward characteristic; a band where the datasheet prints the ends of one.
+
+    A point `at` another junction temperature than 25 degC shows how the voltage moves with it.
+    """
 
     voltage: Annotated[Quantity, VOLTAGE]
     current: Annotated[Quantity, CURRENT]
+    at: Annotated[Quantity, TEMPERATURE] | None = None
+
+    @property
+    def kelvin(self) -> float:
+        """25 degC if none was given. [K]"""
+        return T_MODEL if self.at is None else self.at.typ
 
 
 class SurgePoint(Record):
@@ -102,7 +132,7 @@ def forward_parameters(points: Sequence[tuple[float, float]], emission: float = 
         raise QuantityError("forward points rise more steeply than a junction with a series resistance does")
     if folds > _MOST_FOLDS:
         raise QuantityError(f"forward voltage {v2:.3g} V at {i2:.3g} A is more than that of one junction")
-    if folds > math.log(i2 / _LEAST_SATURATION):
+    if folds > math.log(i2 / LEAST_SATURATION):
         return _at_the_least(points)
     return i2 / math.exp(folds), n, r_s
 
@@ -113,7 +143,7 @@ def _at_the_least(points: Sequence[tuple[float, float]]) -> tuple[float, float, 
     Below 1e-28 A ngspice's diode goes on with 1e-28 A without a word: a junction of 3 V would come out at 2 V.
     """
     (v1, i1), (v2, i2) = points[0], points[-1]
-    f1, f2 = (THERMAL_VOLTAGE * math.log(i / _LEAST_SATURATION) for i in (i1, i2))
+    f1, f2 = (THERMAL_VOLTAGE * math.log(i / LEAST_SATURATION) for i in (i1, i2))
     n, r_s = v2 / f2, 0.0
     if len(points) > 1:  # v = N f + R_S i at both
         r_s = (v2 * f1 - v1 * f2) / (i2 * f1 - i1 * f2)
@@ -122,7 +152,7 @@ def _at_the_least(points: Sequence[tuple[float, float]]) -> tuple[float, float, 
         raise QuantityError(
             f"forward voltage {v2:.3g} V at {i2:.3g} A is more than that of one junction that rises as little as these points do"
         )
-    return _LEAST_SATURATION, n, r_s
+    return LEAST_SATURATION, n, r_s
 
 
 class Diode(Part):
@@ -130,8 +160,9 @@ class Diode(Part):
 
     Notes
     -----
-    ngspice's junction diode at 25 degC without breakdown: a reverse voltage above the rating is reported, not
-    clipped. Stored charge from the recovery time; it ends abruptly, and the loop through switch and capacitor has no
+    ngspice's junction diode at the run's junction temperature, without breakdown: a reverse voltage above the rating is
+    reported, not clipped. The forward voltage moves as `forward_drift` or points at another temperature say
+    (`junction_at`), a reverse current that was given as a resistance across the rated voltage (`reverse_current`). Stored charge from the recovery time; it ends abruptly, and the loop through switch and capacitor has no
     inductance, so current peaks when a channel is fired into a conducting clamp are upper bounds. Ignores the rise of
     the forward voltage at turn-on.
 
@@ -153,32 +184,50 @@ class Diode(Part):
         "50 pF", CAPACITANCE, "rectifier of a few amperes, from memory"
     )
     recovery: Annotated[Quantity, TIME] = assume("100 ns", TIME, "fast rectifier, from memory")
+    forward_drift: Annotated[Quantity, VOLTAGE_DRIFT] = assume(
+        "-2 mV/K", VOLTAGE_DRIFT, "forward voltage of a silicon junction against temperature, common practice"
+    )
+    leakage: tuple[LeakagePoint, ...] = Field(
+        (), description="reverse current at the rated voltage, at one or two temperatures"
+    )
 
     @model_validator(mode="after")
     def _coherent(self) -> Diode:
         self.parameters()
         surge_points(self.surge)
+        if self.leakage:
+            if self.reverse_voltage is None:
+                raise QuantityError("leakage is given at the reverse_voltage, which is missing")
+            reverse_current(self._leakages(), T_MODEL)
         return self
 
-    def parameters(self) -> tuple[float, float, float]:
+    def parameters(self, t: float = T_MODEL) -> tuple[float, float, float]:
         """Saturation current [A], emission coefficient [1] and series resistance [ohm] of its forward points.
+
+        Parameters
+        ----------
+        t : float
+            Junction temperature. [K]
 
         Raises
         ------
         QuantityError
             If the points do not rise, or cannot be those of one junction.
         """
-        return forward_parameters([(p.voltage.typ, p.current.typ) for p in self.forward])
+        return junction_parameters(self.forward, self.forward_drift, EMISSION, t)
+
+    def _leakages(self) -> list[tuple[float, float]]:
+        return sorted((p.kelvin, p.current.typ) for p in self.leakage)
 
     def proofs(self) -> tuple[Proof, ...]:
-        """Its forward voltage at every current that was given for it."""
+        """Its forward voltage at every current and temperature that was given for it."""
         return forward_proofs(self, self.forward)
 
     def stamp(
         self, name: str, label: str, anode: str, cathode: str, through: Signal, corner: Corner = NOMINAL
     ) -> Stamp:
         """The diode between two nodes; `through` is the current from anode to cathode."""
-        i_s, n, r_s = self.parameters()
+        i_s, n, r_s = self.parameters(corner.junction)
         # Charge control: a diode that conducts I_F and is driven by I_R stays on for TT ln(1 + I_F / I_R).
         transit_time = self.recovery.typ / math.log(1 + _RECOVERY_CURRENTS)
         model = Model(
@@ -190,9 +239,13 @@ class Diode(Part):
                 "RS": r_s,
                 "CJO": self.capacitance.typ,
                 "TT": transit_time,
-                "TNOM": 25.0,
+                "TNOM": in_celsius(corner.junction),
             },
         )
+        elements: list[Element] = [Junction(name, anode, cathode, model)]
+        if self.leakage and self.reverse_voltage is not None:
+            reverse = reverse_current(self._leakages(), corner.junction)
+            elements.append(Resistor(f"{name}_leak", cathode, anode, self.reverse_voltage.typ / reverse))
         name_of = self.title or label
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
         peak_limit = Limit.of(self.repetitive_current, "repetitive peak current", "A", "current")
@@ -241,7 +294,7 @@ class Diode(Part):
         forward = self.forward[-1]
         holds = 0.5 * self.capacitance.typ * v_max**2 + transit_time * forward.current.typ * forward.voltage.typ
         return Stamp(
-            elements=(Junction(name, anode, cathode, model),),
+            elements=tuple(elements),
             probes=(
                 Probe(v, voltage(anode, cathode), "V"),
                 Probe(v_r, scaled(-1, voltage(anode, cathode)), "V"),
@@ -249,7 +302,12 @@ class Diode(Part):
             ),
             ports=(Port(label, ((v, i),), holds=holds),),
             rules=rules,
-            assumptions=listed(name_of, capacitance=self.capacitance, recovery_time=self.recovery),
+            assumptions=listed(
+                name_of,
+                capacitance=self.capacitance,
+                recovery_time=self.recovery,
+                **drift_listed(self.forward, self.forward_drift),
+            ),
         )
 
     def _surge_rule(self, part: str, label: str, i: str) -> PulseRule:
@@ -283,21 +341,82 @@ def surge_points(points: Sequence[SurgePoint]) -> tuple[tuple[float, float], ...
     return tuple(found)
 
 
+def at_25_degc(points: Sequence[ForwardPoint]) -> list[tuple[float, float]]:
+    """Voltage [V] and current [A] of the points that were given at 25 degC.
+
+    Raises
+    ------
+    QuantityError
+        If there is none.
+    """
+    found = [(p.voltage.typ, p.current.typ) for p in points if p.kelvin == T_MODEL]
+    if not found:
+        raise QuantityError('forward needs a point at 25 degC (one without "at")')
+    return found
+
+
+def drift_listed(points: Sequence[ForwardPoint], drift: Quantity) -> dict[str, Quantity]:
+    """The drift of the forward voltage, to be listed as an assumption where no point at another temperature shows it."""
+    shown = any(p.kelvin != T_MODEL for p in points) and drift.assumed()
+    return {} if shown else {"drift_of_the_forward_voltage": drift}
+
+
+def junction_parameters(
+    points: Sequence[ForwardPoint], drift: Quantity, emission: float, t: float
+) -> tuple[float, float, float]:
+    """Saturation current, emission coefficient and series resistance at a junction temperature.
+
+    Parameters
+    ----------
+    points : sequence of ForwardPoint
+        Those at 25 degC shape the junction (`forward_parameters`); those at another temperature show its drift.
+    drift : Quantity
+        Of the forward voltage at the highest current, where no point shows it, or where it was given. [V/K]
+    emission : float
+        Where the points leave it open. [1]
+    t : float
+        Junction temperature. [K]
+
+    Returns
+    -------
+    tuple of float
+        I_S [A], N [1], R_S [ohm].
+
+    Raises
+    ------
+    QuantityError
+        If the points do not rise, or cannot be those of one junction.
+    """
+    cold = at_25_degc(points)
+    i_s, n, r_s = forward_parameters(cold, emission)
+    reference, slope = cold[-1][1], drift.typ
+    hot = [p for p in points if p.kelvin != T_MODEL]
+    if hot and drift.assumed():
+        point = max(hot, key=lambda p: abs(p.kelvin - T_MODEL))
+        reference = point.current.typ
+        volts = n * THERMAL_VOLTAGE * math.log(reference / i_s) + r_s * reference
+        slope = (point.voltage.typ - volts) / (point.kelvin - T_MODEL)
+    i_s, n = junction_at(i_s, n, reference, slope, t)
+    return i_s, n, r_s
+
+
 def forward_proofs(part: Diode | Led, points: Sequence[ForwardPoint]) -> tuple[Proof, ...]:
     """The forward voltage at every current given, with a current of a source through the part."""
     anode = "a"
     return tuple(
         Proof(
-            f"forward voltage at {in_units(p.current.typ, 'A')}",
+            f"forward voltage at {in_units(p.current.typ, 'A')}"
+            + (f", {celsius(p.kelvin)}" if p.at is not None else ""),
             "V",
             p.voltage,
             (
                 CurrentDrive("test", anode, GROUND, ((0.0, 0.0), (RAMP, p.current.typ), (2 * SETTLE, p.current.typ))),
-                *part.stamp("x", "diode", anode, GROUND, ()).elements,
+                *part.stamp("x", "diode", anode, GROUND, (), Corner("test", junction=p.kelvin)).elements,
             ),
             SETTLE,
             AtEnd(voltage(anode)),
             why="one junction and one resistance pass through the first and the last point; those between may lie beside",
+            temperature=p.kelvin,
         )
         for p in points
     )

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
+import math
+
 from boardsim.parts.rules import HeatRule, Limit
 from boardsim.quantities import Quantity
+
+_BEYOND = 2000.0  # [K], above which no junction settles
 
 
 def junction_heat(
@@ -14,6 +18,7 @@ def junction_heat(
     junction_rating: Quantity | None,
     ambient: float,
     advice: str,
+    growth: float = 0.0,
 ) -> HeatRule:
     """The rule that a junction stays cool enough at the average power of the pattern.
 
@@ -29,10 +34,13 @@ def junction_heat(
     ambient : float
         Air around the board in this corner. [K]
     advice : str
+    growth : float
+        Of the power with the junction's temperature, compounded, as that of an on-resistance. [1/K]
 
     Notes
     -----
-    T_j = T_ambient + R_th P, the steady state that every datasheet defines R_th by. Holds for the average of a pattern
+    T_j = T_ambient + R_th P, the steady state that every datasheet defines R_th by. P is that of the run at its junction
+    temperature; what grows with temperature is taken at T_j itself (`settled_temperature`). Holds for the average of a pattern
     that is short against the seconds to minutes in which a board warms up, or goes on for ever. The swing within one
     pulse comes on top: surge and energy ratings judge that.
     """
@@ -46,7 +54,54 @@ def junction_heat(
         f"junction of the {label}",
         advice,
         part=part,
+        growth=growth,
     )
+
+
+def settled_temperature(ambient: float, resistance: float, power: float, growth: float, at: float) -> float:
+    """Where a junction settles whose power grows with its own temperature.
+
+    Parameters
+    ----------
+    ambient : float
+        [K]
+    resistance : float
+        Junction to ambient. [K/W]
+    power : float
+        At the junction temperature `at`. [W]
+    growth : float
+        [1/K]
+    at : float
+        [K]
+
+    Returns
+    -------
+    float
+        The lower solution of T = T_ambient + R_th P (1 + g)^(T - at), which is the stable one; infinite where there is
+        none: the junction runs away. [K]
+
+    Notes
+    -----
+    Iterated from the ambient upwards: each step stays below the lower solution and comes nearer to it.
+
+    Examples
+    --------
+    >>> settled_temperature(300.0, 50.0, 1.0, 0.0, 300.0)
+    350.0
+    >>> round(settled_temperature(300.0, 50.0, 1.0, 0.004, 300.0), 1)
+    364.7
+    >>> settled_temperature(300.0, 200.0, 1.0, 0.01, 300.0)
+    inf
+    """
+    t = ambient
+    for _ in range(2000):
+        if t > _BEYOND:
+            return math.inf
+        nearer = ambient + resistance * power * math.pow(1 + growth, t - at)
+        if abs(nearer - t) < 1e-6:
+            return nearer
+        t = nearer
+    return math.inf
 
 
 def _end(quantity: Quantity | None, bound: str) -> float | None:

@@ -6,12 +6,13 @@ from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field, model_validator
 
-from boardsim.parts.base import NOMINAL, Corner, Part, Stamp, listed
-from boardsim.parts.diode import ForwardPoint, forward_parameters, forward_proofs
+from boardsim.parts.base import NOMINAL, T_MODEL, Corner, Part, Stamp, listed
+from boardsim.parts.diode import ForwardPoint, drift_listed, forward_proofs, junction_parameters
 from boardsim.parts.elements import Junction, Model, Port, Probe, Resistor, Signal, scaled, voltage
 from boardsim.parts.proof import Proof
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule
-from boardsim.quantities import CAPACITANCE, CURRENT, POSITIVE_TIME, VOLTAGE, Quantity, assume
+from boardsim.parts.temperature import in_celsius, reverse_current
+from boardsim.quantities import CAPACITANCE, CURRENT, POSITIVE_TIME, VOLTAGE, VOLTAGE_DRIFT, Quantity, assume
 
 _EMISSION = 2.0  # recombination in the junction of wide-gap semiconductors, from memory
 
@@ -21,8 +22,8 @@ class Led(Part):
 
     Notes
     -----
-    V = N V_T ln(I / I_S) + R_S I at 25 degC through the forward points (`forward_parameters`, with N = 2 where the
-    points leave it open). Against reverse voltage it has its leakage as a resistance and no breakdown: a voltage above
+    V = N V_T ln(I / I_S) + R_S I through the forward points (`forward_parameters`, with N = 2 where the
+    points leave it open), moved with the junction's temperature by `forward_drift` (`junction_at`). Against reverse voltage it has its leakage as a resistance and no breakdown: a voltage above
     the rating, 5 V for most LEDs, is reported and not clipped. Behind a series diode nearly all of the reverse voltage
     lies across that, since it leaks far less. The peak current is rated for short pulses: a coil's longer one is held
     against less (see `PulseRule`), down to the forward current, which it stands for ever. Holds for one chip; strings in one package are several LEDs in series.
@@ -39,21 +40,29 @@ class Led(Part):
     )
     leakage: Annotated[Quantity, CURRENT] = assume("1 uA", CURRENT, "at a reverse voltage of 5 V, from memory")
     capacitance: Annotated[Quantity, CAPACITANCE] = assume("50 pF", CAPACITANCE, "chip of a 5 mm LED, from memory")
+    forward_drift: Annotated[Quantity, VOLTAGE_DRIFT] = assume(
+        "-3 mV/K", VOLTAGE_DRIFT, "forward voltage of an LED against temperature, -2 to -4 mV/K, from memory"
+    )
 
     @model_validator(mode="after")
     def _coherent(self) -> Led:
         self.parameters()
         return self
 
-    def parameters(self) -> tuple[float, float, float]:
+    def parameters(self, t: float = T_MODEL) -> tuple[float, float, float]:
         """Saturation current [A], emission coefficient [1] and series resistance [ohm] of its forward points.
+
+        Parameters
+        ----------
+        t : float
+            Junction temperature. [K]
 
         Raises
         ------
         QuantityError
             If the points do not rise, or cannot be those of one junction.
         """
-        return forward_parameters([(p.voltage.typ, p.current.typ) for p in self.forward], _EMISSION)
+        return junction_parameters(self.forward, self.forward_drift, _EMISSION, t)
 
     def proofs(self) -> tuple[Proof, ...]:
         """Its forward voltage at every current that was given for it."""
@@ -63,16 +72,18 @@ class Led(Part):
         self, name: str, label: str, anode: str, cathode: str, through: Signal, corner: Corner = NOMINAL
     ) -> Stamp:
         """The LED between two nodes; `through` is the current from anode to cathode."""
-        i_s, n, r_s = self.parameters()
+        i_s, n, r_s = self.parameters(corner.junction)
         c = self.capacitance.typ
-        model = Model(f"{name}_m", "D", {"IS": i_s, "N": n, "RS": r_s, "CJO": c, "TNOM": 25.0})
+        leak = reverse_current([(T_MODEL, self.leakage.typ)], corner.junction)
+        tnom = in_celsius(corner.junction)
+        model = Model(f"{name}_m", "D", {"IS": i_s, "N": n, "RS": r_s, "CJO": c, "TNOM": tnom})
         name_of = self.title or label
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
         v_max = max(100.0, self.reverse_voltage.typ if self.reverse_voltage else 0.0)
         return Stamp(
             elements=(
                 Junction(name, anode, cathode, model),
-                Resistor(f"{name}_leak", cathode, anode, 5.0 / self.leakage.typ),
+                Resistor(f"{name}_leak", cathode, anode, 5.0 / leak),
             ),
             probes=(
                 Probe(v, voltage(anode, cathode), "V"),
@@ -115,6 +126,7 @@ class Led(Part):
                 leakage=self.leakage,
                 capacitance=self.capacitance,
                 length_of_the_peak_current=self.peak_lasting,
+                **drift_listed(self.forward, self.forward_drift),
             ),
         )
 

@@ -73,6 +73,8 @@ class Proof:
     shapes : bool
         Whether the printed number shapes the model; False where it only bounds it (a maximum without a typical figure):
         then the model must lie inside the band, however far from its middle.
+    temperature : float
+        Of the junction in the test circuit; 25 degC unless the datasheet says so. [K]
     """
 
     quantity: str
@@ -84,3 +86,4 @@ class Proof:
     tolerance: float = 0.10
     why: str = ""
     shapes: bool = True
+    temperature: float = 298.15

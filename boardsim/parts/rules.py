@@ -76,6 +76,7 @@ class HeatRule:
 
     `powers` are pairs of quantities whose products add up to the power. `resistance` is R_th to the ambient [K/W], `ambient`
     the air around it in this run [K]; `limit` [K]. `channels` are those that share one package; empty: the rule's own.
+    `growth` is that of the power with the junction's own temperature [1/K].
     """
 
     check: str
@@ -88,6 +89,7 @@ class HeatRule:
     advice: str
     part: str = ""
     channels: tuple[int, ...] = ()
+    growth: float = 0.0
 
 
 @dataclass(frozen=True)

@@ -8,7 +8,7 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import NOMINAL, Corner, Part, Stamp, listed
+from boardsim.parts.base import NOMINAL, T_MODEL, Corner, Part, Stamp, listed
 from boardsim.parts.diode import SETTLE, THERMAL_VOLTAGE
 from boardsim.parts.elements import (
     GROUND,
@@ -25,6 +25,7 @@ from boardsim.parts.elements import (
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule, Rule
+from boardsim.parts.temperature import in_celsius, reverse_current, thermal_voltage
 from boardsim.parts.zener import steady_current
 from boardsim.quantities import (
     CAPACITANCE,
@@ -34,6 +35,7 @@ from boardsim.quantities import (
     TEMPERATURE,
     THERMAL_RESISTANCE,
     VOLTAGE,
+    VOLTAGE_DRIFT,
     Quantity,
     assume,
     in_units,
@@ -52,7 +54,9 @@ class Tvs(Part):
     I_T and the highest clamping voltage V_C at the peak current I_PP: the two are printed for the same part, the one at
     the upper end. R = (V_C - V_BR,max - V_T ln(I_PP / I_T)) / (I_PP - I_T). V_C is printed for a 10/1000 us pulse at whose
     peak the junction is hot already; at the lower currents of coils a cooler one holds up to some per cent less, so that
-    peaks are upper bounds. Between standard points no type prints more; at 25 degC.
+    peaks are upper bounds. Between standard points no type prints more.
+
+    V_BR moves by `drift` with the junction temperature of the run, the leakage doubles every 10 K.
 
     A bidirectional one is two such junctions face to face, one of which conducts forwards: the printed voltages are those
     of both, and N V_T ln(I_PP / I_T) of the forward one is in its R as well. Without `bidirectional` the
@@ -81,6 +85,9 @@ class Tvs(Part):
     capacitance: Annotated[Quantity, CAPACITANCE] = assume(
         "1 nF", CAPACITANCE, "suppressor of some hundred watts at 0 V, from memory"
     )
+    drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = Field(
+        None, description="of its breakdown voltage with temperature"
+    )
 
     @model_validator(mode="after")
     def _coherent(self) -> Tvs:
@@ -91,6 +98,18 @@ class Tvs(Part):
         if self.resistance < 0:
             raise QuantityError("clamping_voltage must be above the highest breakdown voltage")
         return self
+
+    @property
+    def breakdown_drift(self) -> Quantity:
+        """Of the breakdown voltage; assumed where it was not given. [V/K]
+
+        References
+        ----------
+        ST SM15T series, figure 3: dV_BR = a_T (t - 25 degC) V_BR(25 degC); a_T of 0.1 %/K from memory.
+        """
+        return self.drift or assume(
+            f"{1e-3 * self.breakdown.typ:.4g} V/K", VOLTAGE_DRIFT, "0.1 %/K of the breakdown voltage, from memory"
+        )
 
     @property
     def clamping(self) -> Quantity:
@@ -140,19 +159,22 @@ class Tvs(Part):
         """The suppressor with `positive` at its cathode; `through` is the current from positive to negative."""
         name_of = self.title or label
         v, i = f"v_{label}", f"i_{label}"
-        v_br = corner.take(self.breakdown, "clamp_voltage")
+        v_br = corner.take(self.breakdown, "clamp_voltage") + corner.drifted(self.breakdown_drift.typ)
+        leak = reverse_current([(T_MODEL, self.leakage.typ)], corner.junction)
         return Stamp(
             elements=(
-                *self._junctions(name, positive, negative, v_br),
-                Resistor(f"{name}_leak", positive, negative, self.stand_off.typ / self.leakage.typ),
+                *self._junctions(name, positive, negative, v_br, corner.junction),
+                Resistor(f"{name}_leak", positive, negative, self.stand_off.typ / leak),
             ),
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
             ports=(Port(label, ((v, i),), holds=0.5 * self.capacitance.typ * self.clamping_voltage.typ**2),),
             rules=self._rules(name_of, label, v, i, corner),
-            assumptions=listed(name_of, leakage=self.leakage, capacitance=self.capacitance),
+            assumptions=listed(
+                name_of, leakage=self.leakage, capacitance=self.capacitance, drift_of_the_voltage=self.breakdown_drift
+            ),
         )
 
-    def _junctions(self, name: str, positive: str, negative: str, v_br: float) -> tuple[Element, ...]:
+    def _junctions(self, name: str, positive: str, negative: str, v_br: float, t: float) -> tuple[Element, ...]:
         i_t = self.test_current.typ
         r = max(self.resistance, 1e-3)
         model = {
@@ -162,11 +184,11 @@ class Tvs(Part):
             "BV": v_br - r * i_t,
             "IBV": i_t,
             "CJO": self.capacitance.typ,
-            "TNOM": 25.0,
+            "TNOM": in_celsius(t),
         }
         if not self.bidirectional:
             return (Junction(name, negative, positive, Model(f"{name}_m", "D", model)),)
-        model["BV"] -= _EMISSION * THERMAL_VOLTAGE * math.log(i_t / _SATURATION)  # what the other one takes forwards
+        model["BV"] -= _EMISSION * thermal_voltage(t) * math.log(i_t / _SATURATION)  # what the other one takes forwards
         model["CJO"] *= 2  # two in series make the printed one
         both = Model(f"{name}_m", "D", model)
         middle = f"{name}_x"

@@ -4,15 +4,16 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from pydantic import model_validator
+from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import NOMINAL, Corner, Part, Stamp, listed
+from boardsim.parts.base import NOMINAL, T_MODEL, Corner, Part, Stamp, listed
 from boardsim.parts.diode import RAMP, SETTLE, THERMAL_VOLTAGE
 from boardsim.parts.elements import GROUND, CurrentDrive, Junction, Model, Port, Probe, Resistor, Signal, voltage
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.rules import EnergyRule, Limit, MeanRule, PeakRule, Rule
+from boardsim.parts.temperature import in_celsius, reverse_current
 from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
@@ -22,6 +23,7 @@ from boardsim.quantities import (
     TEMPERATURE,
     THERMAL_RESISTANCE,
     VOLTAGE,
+    VOLTAGE_DRIFT,
     Quantity,
     assume,
     in_units,
@@ -36,7 +38,9 @@ class Zener(Part):
     V = V_Z + (Z - V_T / I_Z) (I - I_Z) + V_T ln(I / I_Z) with V_T = 26 mV: ngspice's junction breakdown in series
     with what remains of Z, so that the dynamic impedance at the test current is the datasheet's. Far beyond it a
     straight line of Z would lie higher. A leakage resistance across it lets the node between two clamp diodes find
-    its level as it does on a board. At 25 degC; the voltage's own temperature coefficient is ignored.
+    its level as it does on a board.
+
+    V_Z = V_Z(25 degC) + drift (t - 25 degC) at the junction temperature of the run; the leakage doubles every 10 K.
     """
 
     role: ClassVar[str] = "component"
@@ -53,6 +57,7 @@ class Zener(Part):
         "1 uA", CURRENT, "at three quarters of the Zener voltage, from memory"
     )
     capacitance: Annotated[Quantity, CAPACITANCE] = assume("500 pF", CAPACITANCE, "Zener of some watts, from memory")
+    drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = Field(None, description="of its voltage with temperature")
 
     @model_validator(mode="after")
     def _coherent(self) -> Zener:
@@ -63,6 +68,21 @@ class Zener(Part):
                 f"{in_units(self.voltage.min, 'V')}"
             )
         return self
+
+    @property
+    def voltage_drift(self) -> Quantity:
+        """Of the Zener voltage; assumed where it was not given. [V/K]
+
+        References
+        ----------
+        Yongerjia, BZX84C series: 0.03 to 0.11 %/K at 12 V, 0.04 to 0.12 %/K at 24 V, -0.02 to 0.02 %/K at 5.1 V; the line
+        through 5 V runs through the middle of these bands.
+        """
+        return self.drift or assume(
+            f"{self.voltage.typ - 5.0:.4g} mV/K",
+            VOLTAGE_DRIFT,
+            "1 mV/K for each volt above 5 V, the middle of the bands that Zeners' datasheets print",
+        )
 
     @property
     def clamping(self) -> Quantity:
@@ -90,7 +110,8 @@ class Zener(Part):
     def stamp(self, name: str, label: str, positive: str, negative: str, through: Signal, corner: Corner) -> Stamp:
         """The Zener with `positive` at its cathode; `through` is the current from positive to negative."""
         i_z = self.test_current.typ
-        v_z = corner.take(self.voltage, "clamp_voltage")
+        v_z = corner.take(self.voltage, "clamp_voltage") + corner.drifted(self.voltage_drift.typ)
+        leak = reverse_current([(T_MODEL, self.leakage.typ)], corner.junction)
         r = max(self.impedance.typ - THERMAL_VOLTAGE / i_z, 1e-3)
         model = Model(
             f"{name}_m",
@@ -102,7 +123,7 @@ class Zener(Part):
                 "BV": v_z - r * i_z,
                 "IBV": i_z,
                 "CJO": self.capacitance.typ,
-                "TNOM": 25.0,
+                "TNOM": in_celsius(corner.junction),
             },
         )
         name_of = self.title or label
@@ -110,12 +131,14 @@ class Zener(Part):
         return Stamp(
             elements=(
                 Junction(name, negative, positive, model),
-                Resistor(f"{name}_leak", positive, negative, 0.75 * self.voltage.typ / self.leakage.typ),
+                Resistor(f"{name}_leak", positive, negative, 0.75 * self.voltage.typ / leak),
             ),
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
             ports=(Port(label, ((v, i),), holds=0.5 * self.capacitance.typ * v_z**2),),
             rules=self._rules(name_of, label, v, i, corner),
-            assumptions=listed(name_of, leakage=self.leakage, capacitance=self.capacitance),
+            assumptions=listed(
+                name_of, leakage=self.leakage, capacitance=self.capacitance, drift_of_the_voltage=self.voltage_drift
+            ),
         )
 
     def _rules(self, name_of: str, label: str, v: str, i: str, corner: Corner) -> tuple[Rule, ...]:

@@ -8,11 +8,12 @@ from pathlib import Path
 
 from boardsim.board.shelves import read_shelves
 from boardsim.circuit.build import Builder
-from boardsim.circuit.deck import SIMULATION_TEMPERATURE
+from boardsim.circuit.deck import MODEL_TEMPERATURE
 from boardsim.engine.run import Engine
 from boardsim.errors import InputError, NoConvergence
 from boardsim.parts.base import Part
 from boardsim.parts.proof import Proof
+from boardsim.parts.temperature import in_celsius
 from boardsim.report.wording import plain_path
 from boardsim.scenarios.crew import Crew
 from boardsim.scenarios.parts import find_part
@@ -159,7 +160,7 @@ def proof_text(proof: Proof, max_step: float, reltol: float, abstol: float) -> s
 
     Notes
     -----
-    Gear's method, since the trapezoidal rule gives wrong charges at steep edges without a message. Models hold at 25 degC.
+    Gear's method, since the trapezoidal rule gives wrong charges at steep edges without a message. The circuit is at the proof's temperature.
     """
     builder = Builder()
     builder.add(proof.elements)
@@ -167,7 +168,7 @@ def proof_text(proof: Proof, max_step: float, reltol: float, abstol: float) -> s
         builder.netlist().rstrip(),
         f"* {proof.quantity}",
         f".options method=gear reltol={reltol:g} abstol={abstol:g}",
-        f".options temp={SIMULATION_TEMPERATURE:g} tnom={SIMULATION_TEMPERATURE:g} noacct noinit",
+        f".options temp={in_celsius(proof.temperature):g} tnom={MODEL_TEMPERATURE:g} noacct noinit",
         f".save {' '.join(vectors_of(proof.reading))}",
         f".tran {max_step:.9g} {proof.duration:.15g} 0 {max_step:.9g}",
         ".end",

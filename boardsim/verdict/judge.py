@@ -22,12 +22,13 @@ from boardsim.parts.rules import (
     ReleaseRule,
     Rule,
 )
-from boardsim.quantities import celsius, in_units
+from boardsim.quantities import in_units
 from boardsim.verdict.avalanche import judge_breakdown
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.coils import judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
+from boardsim.verdict.heat import judge_heat, judge_warmth
 from boardsim.verdict.rail import judge_ceiling, judge_dip
 from boardsim.verdict.readings import Readings, pulse_key
 from boardsim.verdict.surges import judge_pulses
@@ -49,7 +50,7 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
         assumed = _assumed(placed, deck)
         nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))
         scale = readings.high.get((placed.channel, "i_coil"), (0.0, 0.0))[0]
-        for finding in _apply(placed, readings, firing, bench):
+        for finding in _apply(placed, readings, firing, deck, bench):
             size = scale if finding.unit == "A" else 0.0
             size = hottest if finding.unit == "W" and finding.limit is None else size
             found.append(
@@ -63,7 +64,7 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
                     shape=_shape(placed.rule, finding),
                 )
             )
-    return found
+    return [*found, *judge_warmth(found, bench)]
 
 
 def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
@@ -106,7 +107,7 @@ def _assumed(placed: PlacedRule, deck: Deck) -> tuple[str, ...]:
     return (*deck.assumed.get(None, ()), *own) if isinstance(placed.rule, PullInRule) else own
 
 
-def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:
+def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, bench: Bench) -> Iterator[Finding]:
     match placed.rule:
         case PeakRule() as rule:
             yield _peak(rule, placed, readings, bench)
@@ -121,7 +122,7 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench)
                 rule.what, rule.limit, rule.consequence, placed, bench, value, None, rule.advice, over, part=rule.part
             )
         case HeatRule() as rule:
-            yield _heat(rule, placed, readings, firing, bench)
+            yield judge_heat(rule, placed, readings, firing, deck.corner, bench)
         case PulseRule() | EnergyRule() as rule:
             key = pulse_key(placed.channel, rule)
             assert key is not None  # both have one
@@ -154,31 +155,6 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
         rule.advice,
         part=rule.part,
     )
-
-
-def _heat(rule: HeatRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:
-    """T_j = T_ambient + R_th P at the pattern's average power; the margin counts from the ambient up.
-
-    Temperatures have no natural zero: what may be used up is the way from the ambient to the limit.
-    """
-    part = rule.part or placed.part
-    members = rule.channels or (placed.channel,)
-    power = sum(readings.means[c, pair] for c in members for pair in rule.powers)
-    among = f" of its {len(members)} channels" if rule.channels else ""
-    said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average over the pattern's {in_units(firing.duration, 's')}"
-    r_th, limit = rule.resistance.value, rule.limit.value
-    air = f"air of {celsius(rule.ambient)}"
-    if r_th is None or limit is None:
-        missing = replace(rule.resistance if r_th is None else rule.limit, unit="W")  # of what is known: the power
-        said += f"; no {missing.name} of {part} was given to tell how hot it gets in {air}"
-        return bench.finding(placed, missing, rule.what, power, None, None, said, rule.consequence, part=part)
-    hot = rule.ambient + r_th * power
-    margin = (limit - hot) / (limit - rule.ambient) if limit > rule.ambient else -1.0
-    said += (
-        f": {celsius(hot)} in {air} with {in_units(r_th, 'K/W')}; the {rule.limit.name} of {part} is {celsius(limit)}"
-    )
-    said += f"; try: {rule.advice}" if margin < 0 else ""
-    return bench.finding(placed, rule.limit, rule.what, hot, margin, None, said, rule.consequence, part=part)
 
 
 def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:

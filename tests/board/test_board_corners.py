@@ -7,6 +7,7 @@ from board_files import FRUIT_SORTER, TEXT
 
 from boardsim.board.corners import corners, nominal_only, not_varied
 from boardsim.board.reader import Board, read_board
+from boardsim.errors import InputError
 
 TOLERANCES = (" +/- 5 %", " +/- 10 %", " +/- 20 %")
 
@@ -31,7 +32,7 @@ def test_a_board_with_tolerances_runs_at_the_ends_that_are_worst_for_something()
     assert [name.split(",")[0] for name in found] == ["supply high", "supply high", "supply low", "supply low"]
     hot = found["supply low, coils hot"]
     assert (hot.winding, hot.ends["supply"], hot.ends["coil_resistance"]) == ("hot", "min", "max")
-    strong = found["supply high, coils cold, clamps high"]
+    strong = found["supply high, coils cold, clamps high and hot"]
     assert (strong.winding, strong.ends["supply"], strong.ends["coil_resistance"]) == ("cold", "max", "min")
     assert strong.ends["clamp_voltage"] == "max"
     assert "breakdown" not in strong.ends  # the library's switch has no tolerance there
@@ -50,7 +51,42 @@ def test_an_ambient_band_alone_gives_a_cold_and_a_hot_run(tmp_path: Path) -> Non
 @pytest.mark.parametrize("ambient", [True, False])
 def test_no_two_runs_are_alike(tmp_path: Path, tolerances: bool, ambient: bool) -> None:
     found = corners(board(tmp_path, tolerances=tolerances, ambient=ambient))
-    assert len({(tuple(sorted(c.ends.items())), c.winding) for c in found}) == len(found)
+    assert len({(tuple(sorted(c.ends.items())), c.winding, c.junction) for c in found}) == len(found)
+
+
+def test_semiconductors_are_cold_in_the_coldest_air_and_warmed_up_in_the_warmest() -> None:
+    """Ambient 5 to 45 degC and 20 K of their own."""
+    found = {c.name: c.junction - 273.15 for c in corners(read_board(FRUIT_SORTER))}
+    assert found == pytest.approx({
+        "supply high, coils cold, clamps high and hot": 65.0,
+        "supply high, coils cold, clamps low and cold": 5.0,
+        "supply low, coils hot": 65.0,
+        "supply low, coils cold": 5.0,
+    })  # fmt: skip
+
+
+def test_a_rise_of_the_boards_own_is_taken(tmp_path: Path) -> None:
+    path = tmp_path / "board.toml"
+    path.write_text(f'junction_rise = "50 K"\n{TEXT}', encoding="utf-8")
+    found = read_board(path)
+    assert max(c.junction for c in corners(found)) == pytest.approx(273.15 + 95)
+    assert not [a for a in found.assumptions if a.quantity == "junction rise"]
+
+
+def test_temperatures_at_which_no_semiconductor_works_are_refused(tmp_path: Path) -> None:
+    path = tmp_path / "board.toml"
+    path.write_text(f'junction_rise = "150 K"\n{TEXT}', encoding="utf-8")
+    with pytest.raises(
+        InputError, match="take semiconductors from 5 degC to 195 degC; their models hold from -55 degC to 175"
+    ):
+        read_board(path)
+
+
+def test_without_an_ambient_semiconductors_are_at_25_degc(tmp_path: Path) -> None:
+    found = board(tmp_path, tolerances=True, ambient=False)
+    assert {c.junction for c in corners(found)} == {298.15}
+    (said,) = (a.why for a in found.assumptions if a.quantity == "ambient")
+    assert "semiconductors at 25 degC" in said
 
 
 def test_what_was_given_without_tolerance_is_named(tmp_path: Path) -> None:

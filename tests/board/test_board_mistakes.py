@@ -31,8 +31,8 @@ NAME_RULE = (
         # keys
         (changed("esr =", "ers ="), 7, 'bulk.ers: "ers" is not known here (did you mean "esr"?); known: kind, title, capacitance, esr, '),
         (changed("esr =", "ers ="), 7, 'bulk: "esr" is missing'),
-        (changed("[coils.ejector]", "[coil.ejector]"), 15, 'coil: "coil" is not known here (did you mean "coils"?); known: name, ambient, supply,'),
-        (changed("[limits]", "[limit]"), 29, 'limit: "limit" is not known here (did you mean "limits"?); known: name, ambient, supply,'),
+        (changed("[coils.ejector]", "[coil.ejector]"), 15, 'coil: "coil" is not known here (did you mean "coils"?); known: name, ambient, junction_rise, supply,'),
+        (changed("[limits]", "[limit]"), 29, 'limit: "limit" is not known here (did you mean "limits"?); known: name, ambient, junction_rise, supply,'),
         (changed("count = 3", 'count = 3\nregster = "x"'), 13, 'chain.regster: "regster" is not known here (did you mean "register"?); known: register, count,'),
         (changed("pull_in", "pullin"), 19, 'coils.ejector.pullin: "pullin" is not known here (did you mean "pull_in"?)'),
         (changed("label", "lable"), 24, 'channels."0-23".lable: "lable" is not known here (did you mean "label"?)'),

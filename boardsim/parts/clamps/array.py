@@ -7,17 +7,20 @@ from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 from pydantic import AfterValidator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Corner, Part, Shelf, Stamp, Total, named_part
+from boardsim.parts.base import Corner, Part, Shelf, Stamp, Total, listed, named_part
 from boardsim.parts.clamp import in_series
-from boardsim.parts.diode import EMISSION, forward_parameters
+from boardsim.parts.diode import EMISSION, junction_parameters
 from boardsim.parts.elements import Ammeter, Junction, Model, Port, Probe, current, scaled, voltage
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.rules import HeatRule, Limit, MeanRule, PeakRule
 from boardsim.parts.switches.darlington import DarlingtonArray
+from boardsim.parts.temperature import in_celsius
+from boardsim.quantities import VOLTAGE_DRIFT, assume
 
 if TYPE_CHECKING:
     from boardsim.parts.coil import Coil
 
+_DRIFT = assume("-2 mV/K", VOLTAGE_DRIFT, "forward voltage of a silicon junction against temperature, common practice")
 _CAPACITANCE = 10e-12  # [F] at 0 V, a part of what the output's own capacitance is given with; from memory
 
 
@@ -34,7 +37,8 @@ class ArrayClamp(Part):
 
     Notes
     -----
-    V = N V_T ln(I / I_S) + R_S I through the array's forward points at 25 degC, N = 1.75 where they leave it open. Its
+    V = N V_T ln(I / I_S) + R_S I through the array's forward points at 25 degC, N = 1.75 where they leave it open, and
+    -2 mV/K of junction temperature. Its
     heat adds to that of the package's outputs. Its reverse voltage is rated like that of the output.
     """
 
@@ -68,8 +72,9 @@ class ArrayClamp(Part):
         label, title = "array diode", part.title or "array"
         inside = f"{name}_in"
         meter = Ammeter(f"{name}_a", drain, inside)
-        i_s, n, r_s = forward_parameters([(p.voltage.typ, p.current.typ) for p in part.clamp_forward or ()], EMISSION)
-        model = Model(f"{name}_m", "D", {"IS": i_s, "N": n, "RS": r_s, "CJO": _CAPACITANCE, "TNOM": 25.0})
+        i_s, n, r_s = junction_parameters(part.clamp_forward or (), _DRIFT, EMISSION, corner.junction)
+        tnom = in_celsius(corner.junction)
+        model = Model(f"{name}_m", "D", {"IS": i_s, "N": n, "RS": r_s, "CJO": _CAPACITANCE, "TNOM": tnom})
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
         rating = Limit.of(part.clamp_current, "clamp diode current", "A", "current")
         diode = Stamp(
@@ -110,6 +115,7 @@ class ArrayClamp(Part):
                 ),
             ),
             totals=(Total(self._heat(part, title, (v, i), corner)),),
+            assumptions=listed("array diode", drift_of_the_forward_voltage=_DRIFT),
         )
         return in_series((meter,), diode)
 

@@ -8,7 +8,7 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
+from boardsim.parts.base import T_MODEL, Corner, Part, Stamp, listed, named_part
 from boardsim.parts.elements import (
     GROUND,
     Ammeter,
@@ -29,32 +29,45 @@ from boardsim.parts.mosfet_proofs import mosfet_proofs
 from boardsim.parts.proof import Proof
 from boardsim.parts.record import Record
 from boardsim.parts.rules import BreakdownRule, FloorRule, Limit, MeanRule, PeakRule
+from boardsim.parts.temperature import LeakagePoint, grown, in_celsius, junction_at, reverse_current
 from boardsim.quantities import (
     CAPACITANCE,
     CHARGE,
     CURRENT,
     ENERGY,
+    GROWTH,
     POSITIVE_RESISTANCE,
     POSITIVE_TIME,
     RESISTANCE,
     TEMPERATURE,
     THERMAL_RESISTANCE,
     VOLTAGE,
+    VOLTAGE_DRIFT,
     Quantity,
     assume,
 )
 
 _BODY_DIODE_POTENTIAL = 0.75  # [V], grading exponent 1/2: an abrupt junction, from memory
+_BODY_DRIFT = -2e-3  # [V/K] of the body diode's forward voltage at 1 A, silicon, common practice
 _SUBTHRESHOLD = 0.1  # [V], ngspice's own default for the rounding near threshold
 _BREAKDOWN_CURRENT = 250e-6  # [A], at which V_(BR)DSS is specified, common practice
 
 
 class OnResistance(Record):
-    """A typical R_DS(on), the gate voltage it is given for, and the drain current it is measured at where that is printed."""
+    """A typical R_DS(on), the gate voltage it is given for, and the drain current it is measured at where that is printed.
+
+    A point `at` another junction temperature than 25 degC shows how the resistance grows with it.
+    """
 
     value: Annotated[Quantity, POSITIVE_RESISTANCE]
     gate: Annotated[Quantity, VOLTAGE]
     current: Annotated[Quantity, CURRENT] | None = None
+    at: Annotated[Quantity, TEMPERATURE] | None = None
+
+    @property
+    def kelvin(self) -> float:
+        """25 degC if none was given. [K]"""
+        return T_MODEL if self.at is None else self.at.typ
 
 
 class SwitchingTimes(Record):
@@ -105,10 +118,31 @@ class NMosfet(Part):
     switching: SwitchingTimes | None = None
     thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
     junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
+    threshold_drift: Annotated[Quantity, VOLTAGE_DRIFT] = assume(
+        "-5 mV/K",
+        VOLTAGE_DRIFT,
+        "threshold of a logic-level power MOSFET against temperature, -4 to -7 mV/K, from memory",
+    )
+    breakdown_drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = None
+    on_resistance_growth: Annotated[Quantity, GROWTH] = assume(
+        "0.4 %/K", GROWTH, "per kelvin, compounded: 1.5 times at 125 degC, as an Infineon note has it"
+    )
+    leakage: tuple[LeakagePoint, ...] = Field(
+        (), description="zero gate voltage drain current at the rated voltage, at one or two temperatures"
+    )
 
     @model_validator(mode="after")
     def _coherent(self) -> NMosfet:
         self.parameters(self.breakdown.typ)
+        if self.leakage:
+            reverse_current(self.leakages(), T_MODEL)
+        for p in self.on_resistance:
+            if p.kelvin != T_MODEL and p.gate.typ not in [
+                q.gate.typ for q in self.on_resistance if q.kelvin == T_MODEL
+            ]:
+                raise QuantityError(
+                    f'on_resistance at {p.at} needs one at 25 degC (without "at") and the same gate voltage of {p.gate} beside it'
+                )
         if self.gate_charge is not None and self.charge_gate is None:
             raise QuantityError('"gate_charge" needs "charge_gate", the gate voltage up to which it counts')
         return self
@@ -116,6 +150,75 @@ class NMosfet(Part):
     def proofs(self) -> tuple[Proof, ...]:
         """What its datasheet prints, measured on the model as the datasheet measures it."""
         return mosfet_proofs(self)
+
+    def leakages(self) -> list[tuple[float, float]]:
+        """Temperatures and zero gate voltage drain currents that were given, temperatures rising. [K], [A]"""
+        return sorted((p.kelvin, p.current.typ) for p in self.leakage)
+
+    @property
+    def drift_of_breakdown(self) -> Quantity:
+        """Of the breakdown voltage; assumed where it was not given. [V/K]"""
+        return self.breakdown_drift or assume(
+            f"{1e-3 * self.breakdown.typ:.4g} V/K",
+            VOLTAGE_DRIFT,
+            "0.1 %/K of the breakdown voltage, between what datasheets of 30 V and 55 V parts print (0.07 and 0.13 %/K)",
+        )
+
+    @property
+    def growth(self) -> float:
+        """Of the on-resistance with temperature, compounded; from points at another temperature where there are some. [1/K]"""
+        cold = {p.gate.typ: p.value.typ for p in self.on_resistance if p.kelvin == T_MODEL}
+        hot = [p for p in self.on_resistance if p.kelvin != T_MODEL]
+        if not hot:
+            return self.on_resistance_growth.typ
+        p = max(hot, key=lambda p: abs(p.kelvin - T_MODEL))
+        return float((p.value.typ / cold[p.gate.typ]) ** (1 / (p.kelvin - T_MODEL))) - 1
+
+    def at_temperature(self, breakdown: float, t: float) -> dict[str, float]:
+        """Parameters of ngspice's VDMOS model at a junction temperature.
+
+        Parameters
+        ----------
+        breakdown : float
+            Drain voltage at which the channel-less device conducts 250 uA, at `t`. [V]
+        t : float
+            Junction temperature. [K]
+
+        Returns
+        -------
+        dict
+            ngspice's names, SI units.
+
+        Raises
+        ------
+        QuantityError
+            If the figures contradict each other; names them.
+
+        Notes
+        -----
+        From the parameters at 25 degC: V_TO moves by `threshold_drift` (t - 25 degC); R_D grows as R_DS(on) does,
+        R(t) = R (1 + a)^(t - 25 degC) (`grown`); K_P is such that R_DS(on) at the highest gate voltage grows by the same
+        factor although the channel's overdrive has changed. At a gate voltage near the threshold the resistance then grows
+        less, as it does on real parts, whose threshold falls. The body diode moves by -2 mV/K (common practice). The
+        capacitances and charges stay: they hardly depend on temperature. From -55 to 175 degC.
+        """
+        found = self.parameters(breakdown)
+        if t == T_MODEL:
+            return found
+        factor = grown(1.0, self.growth, t)
+        v_to = found["VTO"] + self.threshold_drift.typ * (t - T_MODEL)
+        gate = max(p.gate.typ for p in self.on_resistance)
+        k_p = found["KP"] * overdrive(gate, found["VTO"]) / (overdrive(gate, v_to) * factor)
+        i_s, n = junction_at(found["IS"], found["N"], 1.0, _BODY_DRIFT, t)
+        return {
+            **found,
+            "VTO": v_to,
+            "KP": k_p,
+            "RD": found["RD"] * factor,
+            "IS": i_s,
+            "N": n,
+            "TNOM": in_celsius(t),
+        }
 
     def parameters(self, breakdown: float) -> dict[str, float]:
         """Parameters of ngspice's VDMOS model from the datasheet's typical figures.
@@ -140,13 +243,15 @@ class NMosfet(Part):
         R_DS(on) = R_D + 1 / (K_P u) from two points, or from one with half of it as R_D; V_GS(th) is where
         I = K_P u^2 / 2; u = k ln(1 + exp((V_GS - V_TO) / k)) with k = 0.1 V is the model's overdrive. The gate's
         capacitances follow from C_iss, C_rss, Q_gd and, where it is printed, Q_g (`gate_capacitances`). Output capacitance
-        as an abrupt junction. 25 degC.
+        as an abrupt junction. At 25 degC; `at_temperature` takes them elsewhere.
 
         References
         ----------
         ngspice manual, VDMOS model (equations of the gate-drain capacitance and of the triode region).
         """
-        points = sorted((p.gate.typ, p.value.typ) for p in self.on_resistance)
+        points = sorted((p.gate.typ, p.value.typ) for p in self.on_resistance if p.kelvin == T_MODEL)
+        if not points:
+            raise QuantityError('on_resistance needs a point at 25 degC (one without "at")')
         v_th, i_th = self.threshold.typ, self.threshold_current.typ
         if points[0][0] <= v_th:
             raise QuantityError(
@@ -155,9 +260,7 @@ class NMosfet(Part):
         v_to = v_th
 
         def drive(v_gs: float) -> float:
-            """The model's effective overdrive, rounded near the threshold. [V]"""
-            x = (v_gs - v_to) / _SUBTHRESHOLD
-            return _SUBTHRESHOLD * (max(x, 0.0) + math.log1p(math.exp(-abs(x))))
+            return overdrive(v_gs, v_to)
 
         for _ in range(60):  # V_TO and K_P depend weakly on each other
             if len(points) == 1:
@@ -171,8 +274,8 @@ class NMosfet(Part):
                     "on_resistance at the gate voltages given and threshold contradict each other: the resistance must fall "
                     "with gate voltage, and not faster than the channel alone; use the typical figures of one table"
                 )
-            overdrive = math.sqrt(2 * i_th / k_p) / _SUBTHRESHOLD
-            v_to = v_th - _SUBTHRESHOLD * (overdrive + math.log(-math.expm1(-overdrive)))
+            above = math.sqrt(2 * i_th / k_p) / _SUBTHRESHOLD
+            v_to = v_th - _SUBTHRESHOLD * (above + math.log(-math.expm1(-above)))
         c_iss, c_oss, c_rss = (
             c.typ for c in (self.input_capacitance, self.output_capacitance, self.reverse_capacitance)
         )
@@ -217,6 +320,26 @@ class NMosfet(Part):
         }
 
 
+def overdrive(v_gs: float, v_to: float) -> float:
+    """The model's effective overdrive, rounded near the threshold. [V]
+
+    Parameters
+    ----------
+    v_gs, v_to : float
+        Gate voltage and the model's threshold. [V]
+
+    Notes
+    -----
+    k ln(1 + exp((V_GS - V_TO) / k)), k = 0.1 V.
+
+    References
+    ----------
+    ngspice manual, VDMOS model, parameter KSUBTHRES.
+    """
+    x = (v_gs - v_to) / _SUBTHRESHOLD
+    return _SUBTHRESHOLD * (max(x, 0.0) + math.log1p(math.exp(-abs(x))))
+
+
 class NMosfetStage(Part):
     """The transistor with its gate resistor and pull-down; source at ground, drain at the coil."""
 
@@ -236,8 +359,8 @@ class NMosfetStage(Part):
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
         """The stage between the register's node `pin` and the coil's node `drain`."""
         part: NMosfet = self.part
-        bv = corner.take(part.breakdown, "breakdown")
-        parameters = part.parameters(bv)
+        bv = corner.take(part.breakdown, "breakdown") + corner.drifted(part.drift_of_breakdown.typ)
+        parameters = part.at_temperature(bv, corner.junction)
         gate, inside = f"{name}_g", f"{name}_di"
         meter = Ammeter(f"{name}_d", drain, inside)
         r_gate = max(self.gate.typ, 1e-2)
@@ -246,6 +369,9 @@ class NMosfetStage(Part):
             meter,
             PowerMosfet(name, inside, gate, GROUND, Model(f"{name}_m", "VDMOS", parameters)),
         ]
+        if part.leakage:
+            reverse = reverse_current(part.leakages(), corner.junction)
+            elements.append(Resistor(f"{name}_leak", inside, GROUND, part.breakdown.typ / reverse))
         network: list[Element] = [Resistor(f"{name}_gate", pin, gate, r_gate)]
         if self.pulldown is not None:
             network.append(Resistor(f"{name}_pulldown", gate, GROUND, self.pulldown.typ))
@@ -273,7 +399,7 @@ class NMosfetStage(Part):
                     "v_ds",
                     "i_d",
                     bv,
-                    Limit.of(part.breakdown, "drain-source voltage", "V", "voltage", part.breakdown.min),
+                    Limit.of(part.breakdown, "drain-source voltage", "V", "voltage", self._rating(corner)),
                     Limit.of(part.avalanche_current, "avalanche current", "A", "current"),
                     Limit.of(part.avalanche_energy, "single-pulse avalanche energy", "J", "energy"),
                     Limit.of(part.avalanche_repetitive, "repetitive avalanche energy", "J", "energy"),
@@ -319,6 +445,7 @@ class NMosfetStage(Part):
                     part.junction_rating,
                     corner.ambient,
                     "choose a switch of less on-resistance or with a better path for heat, or fire less often",
+                    growth=part.growth,
                 ),
             ),
             assumptions=listed(
@@ -326,5 +453,17 @@ class NMosfetStage(Part):
                 gate_resistance=part.gate_resistance,
                 capacitance_voltage=part.capacitance_voltage,
                 threshold_current=part.threshold_current,
+                drift_of_the_threshold=part.threshold_drift,
+                drift_of_the_breakdown=part.drift_of_breakdown,
+                **(
+                    {}
+                    if any(p.at for p in part.on_resistance)
+                    else {"growth_of_the_on_resistance": part.on_resistance_growth}
+                ),
             ),
         )
+
+    def _rating(self, corner: Corner) -> float:
+        """The rated voltage, which is given for 25 degC and above: a colder transistor breaks down earlier. [V]"""
+        part: NMosfet = self.part
+        return part.breakdown.min + min(0.0, corner.drifted(part.drift_of_breakdown.typ))

@@ -1,0 +1,83 @@
+"""The warmest junction against the temperature that a run took semiconductors' figures at."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from pathlib import Path
+
+import pytest
+
+from boardsim.board.reader import Board, read_board
+from boardsim.circuit.deck import PlacedRule
+from boardsim.firing.pattern import Pattern, Pulse
+from boardsim.firing.schedule import fire
+from boardsim.parts.base import Corner
+from boardsim.parts.heat import junction_heat
+from boardsim.quantities import TEMPERATURE, THERMAL_RESISTANCE, parse
+from boardsim.verdict.bench import Bench
+from boardsim.verdict.findings import Finding
+from boardsim.verdict.heat import judge_heat, judge_warmth
+from boardsim.verdict.readings import Readings
+
+FRUIT_SORTER = Path(__file__).parents[2] / "netlists" / "fruit-sorter" / "board.toml"
+TEXT = FRUIT_SORTER.read_text(encoding="utf-8")
+
+
+def bench(board: Board) -> Bench:
+    return Bench(board, "supply low, coils hot", ())
+
+
+def given(folder: Path, rise: str) -> Board:
+    path = folder / "board.toml"
+    path.write_text(f'junction_rise = "{rise}"\n{TEXT}', encoding="utf-8")
+    return read_board(path)
+
+
+def heated(celsius: float) -> Finding:
+    return Finding(
+        "overheating", "junction of the clamp Zener", "24v-5w", 3, "lane 3", celsius + 273.15, 448.15, "K", 0.5, None,
+        "destroy", "pass", "lane 3: ...",
+    )  # fmt: skip
+
+
+def test_a_junction_below_what_the_run_took_is_no_matter() -> None:
+    (found,) = judge_warmth([heated(50.0), heated(64.0)], bench(read_board(FRUIT_SORTER)))  # 45 degC and 20 K
+    assert (found.verdict, found.value, found.limit) == ("pass", pytest.approx(337.15), pytest.approx(338.15))
+
+
+def test_above_a_rise_that_was_assumed_the_rest_is_a_missing_number() -> None:
+    (found,) = judge_warmth([heated(96.0)], bench(read_board(FRUIT_SORTER)))
+    assert (found.verdict, found.limit) == ("limit-missing", None)
+    assert "taken up to 65 degC (junction_rise of 20.0 K, assumed)" in found.sentence
+    assert 'set junction_rise = "51 K"' in found.sentence
+
+
+def test_above_a_rise_that_was_given_the_run_proves_nothing(tmp_path: Path) -> None:
+    (found,) = judge_warmth([heated(96.0)], bench(given(tmp_path, "30 K")))
+    assert (found.verdict, found.margin) == ("unproven", pytest.approx(-21 / 30))
+    (found,) = judge_warmth([heated(96.0)], bench(given(tmp_path, "51 K")))
+    assert found.verdict == "pass"
+
+
+def test_without_an_ambient_or_thermal_data_nothing_is_claimed() -> None:
+    board = read_board(FRUIT_SORTER)
+    assert not list(judge_warmth([heated(96.0)], bench(replace(board, around=None))))
+    assert not list(judge_warmth([replace(heated(96.0), unit="W", limit=None)], bench(board)))
+
+
+@pytest.mark.parametrize(("growth", "verdict"), [(0.0, "pass"), (0.01, "fail")])
+def test_a_junction_that_runs_away_fails_by_name(growth: float, verdict: str) -> None:
+    """45 degC, 62 K/W, 0.9 W: 101 degC if the power stays; at 1 %/K there is no temperature at which it settles."""
+    board = read_board(FRUIT_SORTER)
+    rule = junction_heat(
+        "n-logic-60v", "switch", (("v_ds", "i_d"),), parse("62 K/W", THERMAL_RESISTANCE), parse("175 degC", TEMPERATURE),
+        318.15, "less heat", growth=growth,
+    )  # fmt: skip
+    means: dict[tuple[int | None, tuple[str, ...]], float] = {(3, ("v_ds", "i_d")): 0.9}
+    readings = Readings({}, {}, means, (), (0.0, None), {}, {}, {}, {}, (), (), 0, {})
+    firing = fire(board, Pattern(Path("one.toml"), "one", None, (Pulse(3, 0.0, 0.01),)))
+    found = judge_heat(
+        rule, PlacedRule(rule, 3, "n-logic-60v", "lane 3"), readings, firing, Corner("hot"), bench(board)
+    )
+    assert found.verdict == verdict
+    assert ("ever hotter" in found.sentence) == (growth > 0)
