@@ -152,7 +152,7 @@ AREA = Dimension("area", "m^2", "2.5 mm2", 1e-10, 1e-2, scale_letters=False)
 TEMPERATURE = Dimension("temperature", "K", "25 degC", 200.0, 800.0, scale_letters=False)
 TEMPERATURE_RISE = Dimension("temperature rise", "K", "40 K", 1e-3, 600.0, zero=True, scale_letters=False)
 THERMAL_RESISTANCE = Dimension("thermal resistance", "K/W", "62 K/W", 1e-3, 1e4, scale_letters=False)
-VOLTAGE_DRIFT = Dimension("temperature drift", "V/K", "-2 mV/K", -1.0, 1.0, zero=True, scale_letters=False)
+VOLTAGE_DRIFT = Dimension("temperature drift", "V/K", "-2 mV/K", -10.0, 10.0, zero=True, scale_letters=False)
 GROWTH = Dimension("temperature coefficient", "1/K", "0.4 %/K", 0.0, 0.05, zero=True, scale_letters=False)
 SHARE = Dimension("share", "1", "80 %", 1e-6, 1.0, scale_letters=False)
 

@@ -17,6 +17,7 @@ from boardsim.parts.logic import Logic
 from boardsim.parts.record import Name, Record
 from boardsim.parts.register import Register
 from boardsim.parts.supply import Supply
+from boardsim.parts.temperature import COLDEST, HOTTEST
 from boardsim.quantities import (
     FREQUENCY,
     SHARE,
@@ -57,8 +58,6 @@ def _likely_kind(value: dict[str, Any]) -> str:
 
     return max(kinds("switch"), key=fit)
 
-
-_COLDEST, _HOTTEST = 218.15, 448.15  # [K], -55 to 175 degC: what power semiconductors are rated for at most
 
 AnyClamp = _any_kind("clamp")
 AnySwitch = _any_kind("switch")
@@ -197,10 +196,10 @@ def refuse_extremes(ambient: Quantity, rise: Quantity) -> None:
         If they go beyond it.
     """
     low, high = ambient.min, ambient.max + rise.typ
-    if low < _COLDEST or high > _HOTTEST:
+    if low < COLDEST or high > HOTTEST:
         raise QuantityError(
             f"ambient and junction_rise take semiconductors from {celsius(low)} to {celsius(high)}; their models hold from "
-            f"{celsius(_COLDEST)} to {celsius(_HOTTEST)}"
+            f"{celsius(COLDEST)} to {celsius(HOTTEST)}"
         )
 
 

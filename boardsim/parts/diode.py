@@ -29,6 +29,7 @@ from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.record import Record
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule, Rule
 from boardsim.parts.temperature import (
+    HOTTEST,
     LEAST_SATURATION,
     LeakagePoint,
     in_celsius,
@@ -59,6 +60,7 @@ _MOST_FOLDS = 250  # e-folds of current: about 11 V across the junction alone, m
 _RECOVERY_CURRENTS = 0.5  # forward over reverse current at which recovery times are given (0.5 A, 1 A), common practice
 EMISSION = 1.75  # silicon rectifier in its working range, from memory
 RAMP, SETTLE = 1e-3, 10e-3  # [s], of a test current: from nothing to its value, and until it is read
+_DRIFT, _DRIFT_SHARE = 2e-3, 3e-3  # [V/K], [1/K] see Diode.drift
 _BASE = 0.1  # share of its peak above which a half sine lasts for 94 % of its base, by which surge ratings count
 
 
@@ -184,8 +186,8 @@ class Diode(Part):
         "50 pF", CAPACITANCE, "rectifier of a few amperes, from memory"
     )
     recovery: Annotated[Quantity, TIME] = assume("100 ns", TIME, "fast rectifier, from memory")
-    forward_drift: Annotated[Quantity, VOLTAGE_DRIFT] = assume(
-        "-2 mV/K", VOLTAGE_DRIFT, "forward voltage of a silicon junction against temperature, common practice"
+    forward_drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = Field(
+        None, description="of the forward voltage with temperature, at the highest current given"
     )
     leakage: tuple[LeakagePoint, ...] = Field(
         (), description="reverse current at the rated voltage, at one or two temperatures"
@@ -214,7 +216,19 @@ class Diode(Part):
         QuantityError
             If the points do not rise, or cannot be those of one junction.
         """
-        return junction_parameters(self.forward, self.forward_drift, EMISSION, t)
+        return junction_parameters(self.forward, self.drift, EMISSION, t)
+
+    @property
+    def drift(self) -> Quantity:
+        """Of the forward voltage; assumed where it was not given. [V/K]"""
+        if self.forward_drift is not None:
+            return self.forward_drift
+        volts = at_25_degc(self.forward)[-1][0]
+        return assume(
+            f"{-min(_DRIFT, _DRIFT_SHARE * volts) * 1e3:.3g} mV/K",
+            VOLTAGE_DRIFT,
+            "-2 mV/K of a silicon junction, common practice, and at most 0.3 %/K of the voltage, as Schottky diodes have it, from memory",
+        )
 
     def _leakages(self) -> list[tuple[float, float]]:
         return sorted((p.kelvin, p.current.typ) for p in self.leakage)
@@ -306,7 +320,7 @@ class Diode(Part):
                 name_of,
                 capacitance=self.capacitance,
                 recovery_time=self.recovery,
-                **drift_listed(self.forward, self.forward_drift),
+                **drift_listed(self.forward, self.drift),
             ),
         )
 
@@ -396,6 +410,12 @@ def junction_parameters(
         reference = point.current.typ
         volts = n * THERMAL_VOLTAGE * math.log(reference / i_s) + r_s * reference
         slope = (point.voltage.typ - volts) / (point.kelvin - T_MODEL)
+    left = n * THERMAL_VOLTAGE * math.log(reference / i_s) + slope * (HOTTEST - T_MODEL)
+    if left <= 0:
+        raise QuantityError(
+            f"a drift of {in_units(slope, 'V/K')} leaves nothing of the junction's voltage at {celsius(HOTTEST)}; give forward_drift "
+            "as the datasheet prints it, or a forward point at another temperature"
+        )
     i_s, n = junction_at(i_s, n, reference, slope, t)
     return i_s, n, r_s
 

@@ -9,10 +9,10 @@ from typing import Annotated
 from boardsim.errors import QuantityError
 from boardsim.parts.base import T_MODEL
 from boardsim.parts.record import Record
-from boardsim.quantities import CURRENT, TEMPERATURE, Quantity
+from boardsim.quantities import CURRENT, TEMPERATURE, ZERO_CELSIUS, Quantity
 
 BOLTZMANN = 8.617333e-5  # [V/K] k / q, CODATA
-ZERO_CELSIUS = 273.15  # [K]
+COLDEST, HOTTEST = 218.15, 448.15  # [K], -55 to 175 degC: what power semiconductors are rated for at most
 LEAST_SATURATION = 1e-28  # [A], what ngspice 39 takes instead of anything below it, measured
 DOUBLING = 10.0  # [K] by which a junction warms until its reverse current has doubled, common practice for silicon
 

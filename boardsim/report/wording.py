@@ -113,6 +113,8 @@ def value_and_limit(finding: Finding) -> tuple[str, str]:
 
 
 def _number(value: float, unit: str, digits: int) -> str:
+    if unit == "K":
+        return celsius(value)
     return in_units(value, unit, digits).strip() if math.isfinite(value) else "unknown"
 
 

@@ -54,14 +54,15 @@ def judge_warmth(found: Sequence[Finding], bench: Bench) -> Iterator[Finding]:
     rise that was assumed the rest of the way is a missing number, with one that was given the run is no proof.
     """
     around = bench.board.around
-    hot = [f for f in found if f.check == "overheating" and f.unit == "K"]
+    # One that is above its own limit has failed already; what its figures would be there is no matter any more.
+    hot = [f for f in found if f.check == "overheating" and f.unit == "K" and f.margin is not None and f.margin >= 0]
     if around is None or not hot:
         return
     warmest = max(hot, key=lambda f: f.value)
     taken, rise = hot_junction(bench.board), bench.board.junction_rise
     said = (
-        f"board: the {warmest.quantity} of {warmest.label} is the warmest, at {celsius(warmest.value)}; figures of "
-        f"semiconductors were taken up to {celsius(taken)} (junction_rise of {in_units(rise.typ, 'K')}"
+        f"board: the {warmest.quantity} of {warmest.label} is the warmest, at {celsius(warmest.value)} if the "
+        f"pattern goes on; figures of semiconductors were taken up to {celsius(taken)} (junction_rise of {in_units(rise.typ, 'K')}"
         f"{', assumed' if rise.assumed() else ''})"
     )
     margin = (taken - warmest.value) / max(taken - around.ambient_high, 1.0)

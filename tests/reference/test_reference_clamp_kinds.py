@@ -138,7 +138,7 @@ def test_heat_power_energy_and_length_of_a_pulse_are_what_the_closed_forms_say(t
         board_text(
             supply=f'voltage = "24 V", {STIFF}', coil='resistance = "16 ohm"\nat = "25 degC"\ninductance = "12 mH"\n' + NO_LOSS,
             clamp='{ kind = "diode-zener", diode = "perfect-diode", zener = "constant" }',
-            parts=PERFECT_SWITCH.format(breakdown="500 V") + PERFECT_DIODE + part,
+            parts=PERFECT_SWITCH.format(breakdown="500 V") + PERFECT_DIODE + part + 'drift = "0 V/K"\n',
             bulk='{ capacitance = "1000 uF", esr = "10 mohm", esl = "0.1 nH" }',
         ),
     ])  # fmt: skip
