@@ -61,6 +61,7 @@ class Board:
     around: Surroundings | None
     junction_rise: Quantity
     assumptions: tuple[Assumption, ...]
+    libraries: tuple[Path, ...] = ()  # the user's folders of parts that the board was read with
 
     def channel(self, number: int) -> Channel:
         """The channel of a number.
@@ -227,6 +228,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         around,
         board.junction_rise,
         assumed,
+        tuple(libraries),
     )
 
 

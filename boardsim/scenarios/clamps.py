@@ -1,4 +1,4 @@
-"""Other clamps for a channel: every kind of the library, as far as its parts can carry the coil's current."""
+"""Other clamps for a channel: every kind, of the library and of the user's folders, as far as its parts can carry the coil's current."""
 
 from __future__ import annotations
 
@@ -6,10 +6,10 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from boardsim.board.reader import Board, Channel, library_part
+from boardsim.board.reader import Board, Channel
+from boardsim.board.shelves import read_shelves
 from boardsim.parts.base import NOMINAL, Part
 from boardsim.parts.kinds import kinds
-from boardsim.parts.library import records
 from boardsim.parts.rules import PeakRule
 from boardsim.quantities import Quantity, in_units
 from boardsim.verdict.bench import Bench
@@ -30,17 +30,24 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
 
     Notes
     -----
-    Of every kind the combinations of library parts (`Part.candidates`), less those with a part that is rated for less
+    Of every kind the combinations of the library's parts and of those in the user's folders (`Part.candidates`), less those with a part that is rated for less
     than the coil's current, or that conducts at the highest rail: their rows would only repeat that. A kind of which no combination carries the current
     stays whole, since each kind is to be seen. Of more than `MOST_OF_A_KIND` those are taken that lie evenly in
     the library's order, with the first and the last.
     """
     bench = Bench(board, "", ())
+    shelves = read_shelves(board.libraries, board.path)
+
+    def on_the_shelves(wanted: type[Part]) -> list[Part]:
+        kind = wanted.model_fields["kind"].default
+        found = (entry.part(name) for name, entry in shelves.items() if entry.kind == kind)
+        return [part for part in found if part is not None]
+
     shown: list[Part] = []
     remarks: list[str] = []
     for kind, cls in kinds("clamp").items():
         like = {"at": "coil"} if channel.clamp.at_the_coil() and "at" in cls.model_fields else {}
-        offered = [c.model_copy(update=like) for c in cls.candidates(_of_the_library, channel.coil)]
+        offered = [c.model_copy(update=like) for c in cls.candidates(on_the_shelves, channel.coil)]
         offered = [c for c in offered if c != channel.clamp]
         blocking = [c for c in offered if c.blocks(board.supply.voltage.max)]
         if blocking and len(blocking) < len(offered):
@@ -58,11 +65,6 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
             )
         shown += _spread(fit)
     return shown, tuple(remarks)
-
-
-def _of_the_library(cls: type[Part]) -> list[Part]:
-    kind = cls.model_fields["kind"].default
-    return [library_part(name) for name, record in records().items() if record["kind"] == kind]
 
 
 def _carries(clamp: Part, current: float, bench: Bench) -> bool:

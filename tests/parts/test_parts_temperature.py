@@ -70,8 +70,16 @@ def test_a_junctions_voltage_moves_by_its_drift(i_s: float, n: float, amperes: f
 
 
 def test_a_diodes_voltage_falls_by_two_millivolts_per_kelvin_where_nothing_else_is_said() -> None:
-    part = Diode.model_validate(SCHOTTKY)
+    part = library_part("rectifier-1a")
+    assert isinstance(part, Diode)
+    part = part.model_copy(update={"forward_drift": None})
     assert voltage_at(part, 1.0, 398.15) - voltage_at(part, 1.0, 298.15) == pytest.approx(-0.2)
+    assert Diode.model_validate(SCHOTTKY).drift.typ == pytest.approx(-1.56e-3)  # 0.3 %/K of 0.52 V
+
+
+def test_a_drift_that_uses_up_the_forward_voltage_is_refused() -> None:
+    with pytest.raises(ValidationError, match="leaves nothing of the junction's voltage at 175 degC"):
+        Diode.model_validate({**SCHOTTKY, "forward_drift": "-4 mV/K"}).parameters()
 
 
 def test_a_forward_point_at_another_temperature_is_met() -> None:

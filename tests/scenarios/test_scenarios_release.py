@@ -340,18 +340,14 @@ def test_a_kind_of_which_nothing_carries_the_current_is_still_seen(tmp_path: Pat
     assert any("24v-5w" in w for w in words)
 
 
-def test_of_very_many_clamps_of_a_kind_a_few_are_shown_and_the_rest_is_said(
-    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    library = dict(clamps.records())
-    more = {f"zener-{k}": {**library["24v-5w"], "title": f"zener-{k}", "voltage": f"{10 + k} V"} for k in range(40)}
-    monkeypatch.setattr(clamps, "records", lambda: {**library, **more})
-    plain = clamps.library_part
-    monkeypatch.setattr(
-        clamps,
-        "library_part",
-        lambda name: plain("24v-5w").model_copy(update={"title": name}) if name in more else plain(name),
+def test_of_very_many_clamps_of_a_kind_a_few_are_shown_and_the_rest_is_said(tmp_path: Path) -> None:
+    """The folder of parts beside the board counts like the built-in library."""
+    (tmp_path / "library").mkdir()
+    more = "".join(
+        f'[zener-{k}]\nkind = "zener"\nvoltage = "{10 + k} V"\ntest_current = "50 mA"\nimpedance = "3.5 ohm"\n'
+        for k in range(40)
     )
+    (tmp_path / "library" / "more.toml").write_text(more, encoding="utf-8")
     words, remarks = offered(tmp_path, 1.0)
     shown = [w for w in words if w.startswith("diode-zener")]
     assert len(shown) == MOST_OF_A_KIND
