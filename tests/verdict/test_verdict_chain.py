@@ -7,9 +7,13 @@ from pathlib import Path
 
 import pytest
 
-from boardsim.board.reader import Board, read_board
+from boardsim.board.reader import Board, library_part, read_board
+from boardsim.firing.pattern import Pattern, Pulse
+from boardsim.firing.schedule import fire
+from boardsim.parts.switches.darlington import DarlingtonArray, DarlingtonStage
 from boardsim.verdict.chain import all_times, highest_clock, judge_chain
 from boardsim.verdict.chain_levels import judge_floating
+from boardsim.verdict.chain_loads import judge_loads
 from boardsim.verdict.chain_study import chain_study, judge_lateness, worst_lateness
 from boardsim.verdict.chain_times import Driven
 from boardsim.verdict.findings import Finding
@@ -302,3 +306,38 @@ def test_the_picture_shows_the_room_that_the_findings_have(tmp_path: Path, mode:
     f = found["latch after clock, controller to every register"]
     assert f.limit is not None
     assert latch.early == pytest.approx(f.limit - f.value, abs=1e-15)
+
+
+# ------------------------------------------------------------------------------------------------ loads
+
+
+@pytest.mark.parametrize(
+    ("switch", "each"),
+    [
+        # By hand at 5.25 V: 28 ohm of the register before gate resistor and pull-down, or before base resistor and junction.
+        ('{ part = "n-logic-60v", gate = "100 ohm", pulldown = "10 kohm" }', 5.25 / (28 + 100 + 10e3)),
+        ('{ part = "n-logic-60v", gate = "100 ohm" }', 0.0),
+        ('{ part = "npn-small", base = "68 ohm" }', (5.25 - 0.6) / (28 + 68)),
+    ],
+)
+def test_an_output_gives_what_the_switch_draws(tmp_path: Path, switch: str, each: float) -> None:
+    board(tmp_path)
+    path = tmp_path / "board.toml"
+    old = '{ part = "n-logic-60v", gate = "100 ohm", pulldown = "10 kohm" }'
+    path.write_text(path.read_text(encoding="utf-8").replace(old, switch), encoding="utf-8")
+    the_board = read_board(path)
+    pulses = (Pulse(0, 0.01, 0.01), Pulse(1, 0.015, 0.01), Pulse(2, 0.04, 0.01))  # two of the three at once
+    firing = fire(the_board, Pattern(path, "made here", None, pulses))
+    pin, total = judge_loads(the_board, firing)
+    assert (pin.value, total.value) == pytest.approx((each, 2 * each))
+    assert (pin.limit, total.limit) == pytest.approx((35e-3, 70e-3))  # NXP table 4
+    assert pin.verdict == total.verdict == ("fail" if each > 35e-3 else "pass")
+    assert pin.consequence == "destroy"
+
+
+def test_a_sink_array_draws_at_most_what_is_printed_of_its_input() -> None:
+    array = library_part("sink-array-8")
+    assert isinstance(array, DarlingtonArray)
+    stage = DarlingtonStage(part=array)
+    for point in array.input_current:
+        assert stage.steady_input(point.voltage.typ, 0.0) >= (point.highest or point.typical).max * (1 - 1e-9)
