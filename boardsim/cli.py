@@ -264,6 +264,31 @@ def volley(
     _present(result, folder)
 
 
+@app.command(epilog="Example: boardsim chain netlists/fruit-sorter/board.toml")
+def chain(
+    board: BoardFile,
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="folder for the results; out/BOARD-chain if not given"),
+    ] = None,
+    strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
+    library: Libraries = None,
+) -> None:
+    """Judge the chain of registers: levels, set-up and hold at every link, highest clock, frame time and lateness.
+
+    Exit status: 0 pass, 1 a limit is broken, 2 wrong input.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.report.folder import make_ready
+    from boardsim.report.wording import plain_path
+    from boardsim.scenarios.chain import check_chain
+
+    the_board = read_board(board, library or ())
+    folder = out or Path("out") / f"{plain_path(the_board.name)}-chain"
+    make_ready(folder, (board,))
+    _present(check_chain(the_board, strict), folder)
+
+
 @app.command(epilog="Example: boardsim schema > board.schema.json")
 def schema(
     what: Annotated[str, typer.Argument(metavar="[board|pattern|scenarios]", help="which kind of file")] = "board",

@@ -156,7 +156,7 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     """Tolerances that were given but that no corner varies, so that nobody takes them for covered."""
     used = [q for found in _varied(board).values() for q in found]
     # Judged at their worse end, or only read as a band.
-    used += [board.chain.clock]
+    used += [board.chain.clock, *(q for _, q in _of_the_chain(board))]
     used += [q for q in (board.supply.current_ceiling,) if q is not None]
     for channel in board.channels:
         used += [q for q in (channel.coil.pull_in, channel.coil.release) if q is not None]
@@ -180,6 +180,14 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
         if q.toleranced and not any(q is u for u in used)
     }
     return tuple(found)
+
+
+def _of_the_chain(board: Board) -> Iterator[tuple[str, Quantity]]:
+    """Numbers of the chain's lines and of its register's tables, which are judged at their worse ends."""
+    chain = board.chain
+    for record in (chain.data_line, chain.clock_line, chain.latch_line, chain.register_.family, *chain.register_.times):
+        if record is not None:
+            yield from _quantities(record)
 
 
 def _quantities(record: Record) -> Iterator[tuple[str, Quantity]]:

@@ -19,10 +19,12 @@ from boardsim.parts.base import Assumption, Part, Surroundings, listed
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
+from boardsim.parts.controller import Controller
 from boardsim.parts.kinds import kinds
 from boardsim.parts.leads import Leads
 from boardsim.parts.logic import Logic
 from boardsim.parts.record import name_from, named_like, nearest, said, shortened
+from boardsim.parts.register import Register
 from boardsim.parts.supply import Supply
 from boardsim.quantities import Origin, Quantity
 
@@ -62,6 +64,7 @@ class Board:
     junction_rise: Quantity
     assumptions: tuple[Assumption, ...]
     libraries: tuple[Path, ...] = ()  # the user's folders of parts that the board was read with
+    controller: Controller | None = None  # none: what drives the chain was not described
 
     def channel(self, number: int) -> Channel:
         """The channel of a number.
@@ -201,6 +204,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     assumed = listed("chain", latch_time=board.chain.latch_time) + listed(
         "limits", guard_band=board.limits.guard_band, pulse_error=board.limits.pulse_error
     )
+    assumed += _of_the_chain(board)
     if board.ambient is not None:
         around = Surroundings(board.ambient.min, board.ambient.max, board.junction_rise.typ)
         assumed += listed("board", junction_rise=board.junction_rise)
@@ -229,7 +233,21 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         board.junction_rise,
         assumed,
         tuple(libraries),
+        board.controller,
     )
+
+
+def _of_the_chain(board: BoardFile) -> tuple[Assumption, ...]:
+    """What had to be supplied of controller, lines and register."""
+    chain = board.chain
+    found = (board.controller or Controller()).assumed()
+    if board.controller is None:
+        text = "nothing is known of its levels; its serial port and timer are as follows"
+        found = (Assumption("controller", "controller", "not given", text), *found)
+    for name, line in (("data", chain.data_line), ("clock", chain.clock_line), ("latch", chain.latch_line)):
+        found += listed(f"line {name}", series=line.series, capacitance=line.capacitance)
+    register: Register = chain.register_
+    return found + register.assumed()
 
 
 def _range(text: str, file: TomlFile, keys: Keys, problems: list[Problem]) -> tuple[int, ...]:

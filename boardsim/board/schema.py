@@ -11,6 +11,7 @@ from boardsim.parts.base import Part, any_of, named_part
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
+from boardsim.parts.controller import Controller
 from boardsim.parts.kinds import kinds
 from boardsim.parts.leads import Leads
 from boardsim.parts.logic import Logic
@@ -19,7 +20,10 @@ from boardsim.parts.register import Register
 from boardsim.parts.supply import Supply
 from boardsim.parts.temperature import COLDEST, HOTTEST
 from boardsim.quantities import (
+    CAPACITANCE,
     FREQUENCY,
+    POSITIVE_RESISTANCE,
+    RESISTANCE,
     SHARE,
     TEMPERATURE,
     TEMPERATURE_RISE,
@@ -64,6 +68,23 @@ AnySwitch = _any_kind("switch")
 AnyComponent = _any_kind("component", "register")
 
 
+class Line(Record):
+    """One line of the chain: a resistor at its driver, trace or cable from register to register, and what holds it."""
+
+    series: Annotated[Quantity, RESISTANCE] = assume("0 ohm", RESISTANCE, "no resistor at the driver given")
+    capacitance: Annotated[Quantity, CAPACITANCE] = assume(
+        "5 pF", CAPACITANCE, "of the trace to each register, 5 cm at 1 pF/cm, from memory"
+    )
+    pull_up: Annotated[Quantity, POSITIVE_RESISTANCE] | None = Field(None, description="to the logic rail")
+    pull_down: Annotated[Quantity, POSITIVE_RESISTANCE] | None = Field(None, description="to ground")
+
+    @model_validator(mode="after")
+    def _one_way(self) -> Line:
+        if self.pull_up is not None and self.pull_down is not None:
+            raise QuantityError("give pull_up or pull_down, not both")
+        return self
+
+
 class Chain(Record):
     """The chain of registers and how the controller writes it."""
 
@@ -78,6 +99,11 @@ class Chain(Record):
     latch_time: Annotated[Quantity, TIME] = assume(
         "500 ns", TIME, "from the last clock edge to the latch edge, a pin toggled by firmware, from memory"
     )
+    data_line: Line = Field(
+        Line(), description="from the controller to the first register, and on from each to the next"
+    )
+    clock_line: Line = Field(Line(), description="to all registers")
+    latch_line: Line = Field(Line(), description="to all registers")
 
     @property
     def outputs(self) -> int:
@@ -141,6 +167,9 @@ class Limits(Record):
     pulse_error: Annotated[Quantity, SHARE] = assume(
         "10 %", SHARE, "share of its width by which a pulse may come late or change, common practice"
     )
+    lateness: Annotated[Quantity, TIME] | None = Field(
+        None, description="how long an output may follow its command, whatever the pulse"
+    )
     guard_band: Annotated[Quantity, SHARE] = assume("10 %", SHARE, "guard band for the verdict tight, common practice")
 
 
@@ -167,6 +196,7 @@ class BoardFile(Record):
     bulk: Bulk
     logic: Logic
     chain: Chain
+    controller: Controller | None = None
     coils: dict[Name, Coil] = Field(default_factory=dict)
     parts: dict[Name, AnyComponent] = Field(default_factory=dict)  # type: ignore[valid-type]
     channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]

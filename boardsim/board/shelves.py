@@ -8,7 +8,7 @@ writes serves as it is. All user's folders are one level: a name stands there on
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
@@ -20,7 +20,7 @@ from boardsim.errors import InputError, Problem
 from boardsim.parts.base import Part
 from boardsim.parts.kinds import kinds
 from boardsim.parts.library import NOT_FIELDS, records, source_of
-from boardsim.parts.record import nearest, shortened
+from boardsim.parts.record import nearest, said, shortened
 from boardsim.quantities import Origin
 
 FOLDER = "library"  # beside a board file, found by itself
@@ -38,11 +38,14 @@ class Entry:
         The user's file and line; empty for the built-in library.
     file : str
         Short name of the user's file for the origin of its numbers; empty for the built-in library.
+    beside : mapping
+        The shelves that it stands on, where the parts are found that it names, as a register names its family.
     """
 
     record: Mapping[str, Any]
     place: str = ""
     file: str = ""
+    beside: Mapping[str, Entry] = field(default_factory=dict, repr=False, compare=False)
 
     @property
     def kind(self) -> str:
@@ -69,7 +72,20 @@ class Entry:
         """
         cls = component_class(self.kind)
         body = {"title": name, **self.body}
-        return None if cls is None else cls.model_validate(body, context={"origin": self.origin})
+        context = {"origin": self.origin, "find": self._find}
+        return None if cls is None else cls.model_validate(body, context=context)
+
+    def _find(self, cls: type[Part], name: str, *others: type[Part]) -> Part:
+        """A part that this one names, as pydantic asks for it."""
+        wanted = [c.model_fields["kind"].default for c in (cls, *others)]
+        same = [n for n, e in self.beside.items() if e.kind in wanted]
+        found = self.beside[name].part(name) if name in same else None
+        if found is None:
+            kind, known = " or ".join(wanted), ", ".join(sorted(same)) or "none"
+            raise said(
+                f'{kind} "{shortened(name)}" is not in the library{nearest(shortened(name), same)}; known: {known}'
+            )
+        return found
 
 
 Shelves = Mapping[str, Entry]
@@ -91,8 +107,9 @@ def read_shelves(folders: Sequence[Path] = (), board: Path | None = None) -> She
     InputError
         With every mistake in the user's files, or if a folder cannot be used.
     """
-    found = {name: Entry(record) for name, record in records().items()}
-    found.update(_users(_files(folders, board)))
+    found: dict[str, Entry] = {}
+    found.update({name: Entry(record, beside=found) for name, record in records().items()})
+    _add_users(found, _files(folders, board))
     return found
 
 
@@ -113,8 +130,9 @@ def _files(folders: Sequence[Path], board: Path | None) -> Iterable[Path]:
     return files.values()
 
 
-def _users(files: Iterable[Path]) -> dict[str, Entry]:
-    found: dict[str, Entry] = {}
+def _add_users(shelves: dict[str, Entry], files: Iterable[Path]) -> None:
+    """Put the user's parts on the shelves, and then look for mistakes: a part may name one of a later file."""
+    found: dict[str, tuple[Entry, TomlFile, Keys]] = {}
     problems: list[Problem] = []
     for path in files:
         try:
@@ -126,18 +144,18 @@ def _users(files: Iterable[Path]) -> dict[str, Entry]:
             name = str(keys[-1])
             place = str(path) if (line := file.line(keys)) is None else f"{path}:{line}"
             if name in found:
-                text = f"a part of this name stands in {found[name].place} already; rename or remove one of the two"
+                text = f"a part of this name stands in {found[name][0].place} already; rename or remove one of the two"
                 problems.append(file.problem_at(keys, text))
                 continue
             short = f"{path.resolve().parent.name}/{path.name}"
             if not isinstance(record, dict):
                 problems.append(file.problem_at(keys, 'must be a table of a part, with a "kind"'))
                 continue
-            found[name] = Entry(record, place, short)
-            problems += _mistakes(found[name], file, keys)
+            found[name] = (Entry(record, place, short, shelves), file, keys)
+    shelves.update({name: entry for name, (entry, _, _) in found.items()})
+    problems += [problem for one in found.values() for problem in _mistakes(*one)]
     if problems:
         raise InputError(problems)
-    return found
 
 
 def _tables(file: TomlFile) -> Iterable[tuple[Keys, Any]]:

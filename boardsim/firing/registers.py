@@ -49,11 +49,26 @@ def bits_on_the_wire(image: int, chain: Chain) -> Iterable[int]:
             yield (image >> (register * size + place)) & 1
 
 
-def shift_in(state: ChainState, image: int, chain: Chain) -> ChainState:
-    """Clock one whole register frame in and latch it."""
-    for bit in bits_on_the_wire(image, chain):
+def shift_in(state: ChainState, image: int, chain: Chain, late: int | None = None) -> ChainState:
+    """Clock one whole register frame in and latch it.
+
+    Parameters
+    ----------
+    late : int or None
+        Where every bit comes one place late, as in SPI mode 1: the level on the wire before the frame, which the first clock
+        takes. The frame's own last bit then stays on the wire.
+    """
+    bits = list(bits_on_the_wire(image, chain))
+    if late is not None:
+        bits = [late, *bits[:-1]]
+    for bit in bits:
         state = state.clock(bit)
     return state.latch()
+
+
+def last_bit(image: int, chain: Chain) -> int:
+    """What stays on the data line after a frame."""
+    return list(bits_on_the_wire(image, chain))[-1]
 
 
 def frame_time(chain: Chain) -> float:

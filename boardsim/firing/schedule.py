@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+import math
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from boardsim.board.reader import Board
-from boardsim.firing.pattern import Pattern, Pulse
-from boardsim.firing.registers import ChainState, frame_time, shift_in
+from boardsim.firing.pattern import Pattern, Pulse, snapped
+from boardsim.firing.registers import ChainState, frame_time, last_bit, shift_in
+from boardsim.parts.controller import Controller
 
 Floats = NDArray[np.float64]
 
@@ -19,12 +21,30 @@ _SETTLE = 5.0  # L/R times to look at after the last edge
 
 @dataclass(frozen=True)
 class MovedPulse:
-    """A commanded pulse and what the latch made of it; `swallowed` if both edges fell on one latch. [s]"""
+    """A commanded pulse, what the controller's timer made of it, and what the latch made of that.
+
+    Attributes
+    ----------
+    pulse : Pulse
+        As asked for.
+    start, stop : float
+        When the output turns on and off. [s]
+    swallowed : bool
+        Whether no output shows it: both edges fell on one latch, or on one tick.
+    rounded : Pulse or None
+        As the timer has it; None where that is as asked for.
+    """
 
     pulse: Pulse
     start: float
     stop: float
     swallowed: bool
+    rounded: Pulse | None = None
+
+    @property
+    def timed(self) -> Pulse:
+        """As the timer has it."""
+        return self.rounded or self.pulse
 
 
 @dataclass(frozen=True)
@@ -62,6 +82,8 @@ class Firing:
         [s]
     asked : tuple of Pulse
         Every pulse that the pattern commands, by start.
+    jitter : float
+        How much later than here a frame may start, each by itself. [s]
     """
 
     duration: float
@@ -74,6 +96,7 @@ class Firing:
     frames: int
     frame_time: float
     asked: tuple[Pulse, ...] = ()
+    jitter: float = 0.0
 
     def channels_on(self, t: float) -> tuple[int, ...]:
         """The channels that are on at a time."""
@@ -85,17 +108,22 @@ def fire(board: Board, pattern: Pattern) -> Firing:
 
     Notes
     -----
-    The controller starts a register frame as soon as a change is asked for and the last frame is latched. A
-    frame carries every change asked for until it starts; changes that come while a frame is under way wait for
-    the next one. All changes of a frame appear together, at its latch edge.
+    Starts and widths are first rounded to the controller's tick. The controller starts a register frame as soon as a change
+    is due and the last frame is latched and its pause over. A frame carries every change that is due until it starts;
+    changes that come while a frame is under way wait for the next one. All changes of a frame appear together, at its latch
+    edge. Jitter is left out here: it moves every edge by up to as much again, which `verdict` adds to what it finds.
     """
-    chain = board.chain
+    chain, controller = board.chain, board.controller or Controller()
     spent = frame_time(chain)
     delay = chain.register_.propagation.typ
     bit_of = {c.number: c.bit for c in board.channels}
-    asked, merged = _changes(pattern)
+    timed = [(p, on_ticks(p, controller.tick.typ)) for p in pattern.pulses]
+    asked, merged = _changes(timed)
+    late = controller.spi_mode == 1
 
     state = shift_in(ChainState(chain.outputs), 0, chain)  # all off before the pattern starts
+    if late:  # a second one: what the first left on the wire is known
+        state = shift_in(state, 0, chain, last_bit(0, chain))
     watched = {c.output: c for c in board.channels}
     active = {c.output: c.switch.active == "high" for c in board.channels}
     levels: dict[int, list[tuple[float, bool]]] = {o: [(0.0, bool(state.storage >> o & 1))] for o in watched}
@@ -104,7 +132,8 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     wrong: dict[int, WrongOutput] = {}
     _compare(state, wanted, board, 0.0, active, wrong)
 
-    image, free, frames, i = 0, 0.0, 0, 0
+    image, free, latch, frames, i = 0, 0.0, 0.0, 0, 0
+    on_wire = last_bit(0, chain) if late else 0
     while i < len(asked):
         start = max(asked[i][0], free)
         while i < len(asked) and asked[i][0] <= start:
@@ -114,22 +143,23 @@ def fire(board: Board, pattern: Pattern) -> Firing:
             image = image | mask if turn_on else image & ~mask
             latched[channel, at] = start + spent + delay
             i += 1
-        free = start + spent
+        latch = start + spent
+        free = latch + controller.frame_gap.typ
         frames += 1
-        before, state = state, shift_in(state, image, chain)
+        before, state = state, shift_in(state, image, chain, on_wire if late else None)
+        on_wire = last_bit(image, chain) if late else 0
         changed = before.storage ^ state.storage
         for output in watched:
             if changed >> output & 1:
-                levels[output].append((free + delay, bool(state.storage >> output & 1)))
-        _compare(state, wanted, board, free + delay, active, wrong)
+                levels[output].append((latch + delay, bool(state.storage >> output & 1)))
+        _compare(state, wanted, board, latch + delay, active, wrong)
 
-    moved = tuple(
-        MovedPulse(p, a := latched[p.channel, p.start], b := latched[p.channel, p.stop], a == b)
-        for p in pattern.pulses
-        if (p.channel, p.start) in latched and (p.channel, p.stop) in latched
+    moved = tuple(_moved(timed, latched))
+    asked_at = {(t.channel, t.start): p for p, t in reversed(timed)}  # of several on one tick the first
+    lost = tuple(
+        Pulse(c, asked_at[c, on].start, 0.0) for c, off, on in _pauses(asked) if latched[c, off] == latched[c, on]
     )
-    lost = tuple(Pulse(c, on, 0.0) for c, off, on in _pauses(asked) if latched[c, off] == latched[c, on])
-    last = max([free + delay, *(p.stop for p in pattern.pulses)])
+    last = max([latch + delay, *(p.stop for pair in timed for p in pair)])
     tau = max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels if c.coil.resistance.min > 0)
     # Also where a duration was asked for: what the last turn-off does to its switch comes after it.
     duration = max(pattern.duration or 0.0, last + _SETTLE * tau)
@@ -145,17 +175,53 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         frames,
         spent,
         pattern.pulses,
+        controller.jitter.max,
     )
 
 
-def _changes(pattern: Pattern) -> tuple[list[tuple[float, int, bool]], tuple[Pulse, ...]]:
-    """Commanded changes by time, overlapping pulses of a channel joined; and the pulses that overlapped."""
+def on_ticks(pulse: Pulse, tick: float) -> Pulse:
+    """A pulse as a timer of this tick has it: start and width each at the nearest tick, halves upwards.
+
+    Parameters
+    ----------
+    tick : float
+        [s]; 0 leaves the pulse as it is.
+
+    Examples
+    --------
+    >>> on_ticks(Pulse(0, 1.4e-3, 2.6e-3), 1e-3)
+    Pulse(channel=0, start=0.001, width=0.003)
+    """
+    if tick <= 0:
+        return pulse
+
+    def nearest(t: float) -> float:
+        return snapped(math.floor(snapped(t) / tick + 0.5 + 1e-9) * tick)
+
+    return Pulse(pulse.channel, nearest(pulse.start), nearest(pulse.width))
+
+
+def _moved(timed: Sequence[tuple[Pulse, Pulse]], latched: Mapping[tuple[int, float], float]) -> Iterator[MovedPulse]:
+    """What became of every pulse whose two edges were sent; one that is no tick long is not sent at all."""
+    for pulse, t in timed:
+        rounded = None if t == pulse else t
+        if t.width == 0:
+            yield MovedPulse(pulse, t.start, t.start, True, rounded)
+        elif (t.channel, t.start) in latched and (t.channel, t.stop) in latched:
+            a, b = latched[t.channel, t.start], latched[t.channel, t.stop]
+            yield MovedPulse(pulse, a, b, a == b, rounded)
+
+
+def _changes(timed: Sequence[tuple[Pulse, Pulse]]) -> tuple[list[tuple[float, int, bool]], tuple[Pulse, ...]]:
+    """Changes that are due, by time, overlapping pulses of a channel joined; and the pulses as asked that overlap."""
     merged: list[Pulse] = []
     spans: dict[int, list[tuple[float, float]]] = {}
-    for p in pattern.pulses:  # by start
+    for pulse, p in timed:  # by start
+        if p.width == 0:
+            continue
         mine = spans.setdefault(p.channel, [])
         if mine and p.start <= mine[-1][1]:
-            merged.append(p)
+            merged.append(pulse)
             mine[-1] = (mine[-1][0], max(mine[-1][1], p.stop))
         else:
             mine.append((p.start, p.stop))

@@ -65,6 +65,10 @@ class Part(Record):
         """
         return 0.0
 
+    def steady_input(self, volts: float, resistance: float) -> float:
+        """Highest current that a switch draws from an output that stays at `volts` behind `resistance`. [V], [ohm] -> [A]"""
+        return 0.0
+
     @classmethod
     def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[Self, ...]:
         """This kind as a library could build it, to be set beside other kinds of its role.

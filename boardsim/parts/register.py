@@ -1,14 +1,56 @@
-"""A shift register with a storage stage, 74HC595 type: the outputs that drive the switches."""
+"""A shift register with a storage stage, 74HC595 type: the outputs that drive the switches, and how fast it follows."""
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import Annotated, ClassVar, Literal
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
-from boardsim.parts.base import Part, Stamp
+from boardsim.errors import QuantityError
+from boardsim.parts.base import Assumption, Part, Stamp, listed, named_part
 from boardsim.parts.elements import GROUND, Drive, Resistor
+from boardsim.parts.family import LogicFamily, place_in, rising
+from boardsim.parts.record import Record
 from boardsim.quantities import FREQUENCY, POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity
+
+_LEAST_SHARE = 0.25  # of the longest delay: the shortest, where no data sheet prints it
+_LEAST_WHY = "a quarter of the longest, where the data sheet prints no shortest delay, from memory"
+
+
+class TimingPoint(Record):
+    """At one printed supply: what the register asks of its inputs, and how long it takes."""
+
+    supply: Annotated[Quantity, VOLTAGE]
+    setup: Annotated[Quantity, TIME] = Field(description="data before the clock's rising edge")
+    hold: Annotated[Quantity, TIME] = Field(description="data after the clock's rising edge")
+    latch_setup: Annotated[Quantity, TIME] = Field(description="the clock's rising edge before the latch's")
+    clock_width: Annotated[Quantity, POSITIVE_TIME] = Field(description="shortest clock pulse, high or low")
+    latch_width: Annotated[Quantity, POSITIVE_TIME] = Field(description="shortest latch pulse")
+    clear_width: Annotated[Quantity, POSITIVE_TIME] | None = Field(None, description="shortest clear pulse")
+    shift_delay: Annotated[Quantity, POSITIVE_TIME] = Field(description="longest, from clock to serial output")
+    shift_delay_least: Annotated[Quantity, TIME] | None = Field(
+        None, description="shortest, from clock to serial output"
+    )
+    latch_delay: Annotated[Quantity, POSITIVE_TIME] = Field(description="longest, from latch to outputs")
+    alone_up_to: Annotated[Quantity, FREQUENCY] = Field(description="highest clock of one register alone")
+
+
+@dataclass(frozen=True)
+class EdgeTimes:
+    """What a register asks of its inputs and how long it takes, at one supply; as `TimingPoint`. [s], [Hz]"""
+
+    supply: float
+    setup: float
+    hold: float
+    latch_setup: float
+    clock_width: float
+    latch_width: float
+    clear_width: float | None
+    shift_delay: float
+    shift_delay_least: float
+    latch_delay: float
+    alone_up_to: float
 
 
 class Register(Part):
@@ -24,14 +66,94 @@ class Register(Part):
     kind: Literal["shift-register"] = "shift-register"
     outputs: Annotated[int, Field(strict=True, ge=1, le=64)]
     output_resistance: Annotated[Quantity, POSITIVE_RESISTANCE]
-    propagation: Annotated[Quantity, TIME]
+    propagation: Annotated[Quantity, TIME] = Field(description="from the latch edge to the outputs, for firing")
     output_edge: Annotated[Quantity, POSITIVE_TIME]
-    highest_clock: Annotated[Quantity, FREQUENCY] | None = None
+    family: named_part(LogicFamily) | None = Field(  # type: ignore[valid-type]
+        None, description="logic family: levels and ratings of its pins"
+    )
+    times: tuple[TimingPoint, ...] = Field((), description="times at each printed supply, the lowest first")
+    highest_clock: Annotated[Quantity, FREQUENCY] | None = Field(
+        None, description="of one register alone, where there is no table of times"
+    )
     timing_supply: Annotated[Quantity, VOLTAGE] | None = Field(
         None, description="logic rail at which clock and times are given; below it the register is slower than they say"
     )
     supply_low: Annotated[Quantity, VOLTAGE]
     supply_high: Annotated[Quantity, VOLTAGE]
+
+    @model_validator(mode="after")
+    def _one_source_of_times(self) -> Register:
+        rising(self.printed, "times")
+        if self.times and (self.highest_clock is not None or self.timing_supply is not None):
+            raise QuantityError(
+                "times holds the highest clock of each supply; leave highest_clock and timing_supply out"
+            )
+        return self
+
+    @property
+    def printed(self) -> tuple[float, ...]:
+        """Supplies at which times are printed, rising. [V]"""
+        return tuple(point.supply.typ for point in self.times)
+
+    def input_levels(self, volts: float) -> tuple[float, float] | None:
+        """Highest voltage that counts as low (V_IL) and lowest that counts as high (V_IH) at a supply. [V]
+
+        Returns
+        -------
+        tuple or None
+            None without a family, and beyond the supplies that its data sheet prints.
+        """
+        family: LogicFamily | None = self.family
+        return None if family is None else family.input_levels(volts)
+
+    def timing(self, volts: float) -> EdgeTimes | None:
+        """The times at a supply, each at its worse end; None without a table and beyond its printed supplies.
+
+        Parameters
+        ----------
+        volts : float
+            [V]
+
+        Notes
+        -----
+        CMOS delay falls with the supply along a curve that opens upwards (t ~ C V / (V - V_T)^a, 1 < a <= 2; Sakurai and
+        Newton, IEEE J. Solid-State Circuits 25 (1990) 584). The straight line between two printed supplies lies above
+        it: it errs to the safe side for what must not be longer, and so for clock periods. For the shortest delay it would
+        not: that of the higher printed supply counts.
+        """
+        place = place_in(self.printed, volts) if self.times else None
+        if place is None:
+            return None
+        rows = self.times
+
+        def longest(name: str) -> float:
+            return place.straight([getattr(row, name).max for row in rows])
+
+        clear = all(row.clear_width is not None for row in rows)
+        return EdgeTimes(
+            volts,
+            longest("setup"),
+            longest("hold"),
+            longest("latch_setup"),
+            longest("clock_width"),
+            longest("latch_width"),
+            longest("clear_width") if clear else None,
+            longest("shift_delay"),
+            min(_least(row) for row in rows[place.lower : place.upper + 1]),
+            longest("latch_delay"),
+            1 / place.straight([1 / row.alone_up_to.min for row in rows]),
+        )
+
+    def assumed(self) -> tuple[Assumption, ...]:
+        """What had to be supplied for the timing of a chain of these."""
+        name = self.title or "register"
+        family: LogicFamily | None = self.family
+        found = listed(family.title or "logic family", test_load=family.test_load) if family is not None else ()
+        without = [row for row in self.times if row.shift_delay_least is None]
+        if without:
+            values = ", ".join(f"{_least(row) * 1e9:.3g} ns at {row.supply}" for row in without)
+            found += (Assumption(name, "shortest delay from clock to serial output", values, _LEAST_WHY),)
+        return found
 
     def drive(self, name: str, pin: str, points: tuple[tuple[float, float], ...]) -> Stamp:
         """One output as a source and its resistance; node `pin` goes to the channel's gate network."""
@@ -41,3 +163,7 @@ class Register(Part):
                 Resistor(f"{name}_out", f"{name}_in", pin, self.output_resistance.typ),
             )
         )
+
+
+def _least(row: TimingPoint) -> float:
+    return row.shift_delay_least.min if row.shift_delay_least is not None else _LEAST_SHARE * row.shift_delay.typ

@@ -10,7 +10,9 @@ from pathlib import Path
 from rich.console import Console
 
 from boardsim.errors import InputError
+from boardsim.report.chain_picture import draw_chain
 from boardsim.report.closeup import draw_closeups
+from boardsim.report.edges import write_edges
 from boardsim.report.files import remove_unfinished, write_text
 from boardsim.report.json_report import write_findings
 from boardsim.report.junit import write_junit
@@ -19,7 +21,7 @@ from boardsim.report.release_picture import draw_release
 from boardsim.report.terminal import print_result
 from boardsim.report.volley_picture import draw_volley
 from boardsim.verdict.findings import Result
-from boardsim.verdict.studies import Release, Volley
+from boardsim.verdict.studies import ChainStudy, Release, Volley
 
 _OURS = (
     "findings.json",
@@ -28,6 +30,8 @@ _OURS = (
     "report.txt",
     "overview.png",
     "release.png",
+    "chain.png",
+    "edges.csv",
     "volley.png",
     "closeup-*.png",
 )
@@ -81,6 +85,8 @@ def write_results(result: Result, folder: Path) -> Path:
     pictures = draw_closeups(result, folder)
     if result.deck:
         write_text(folder / "board.cir", result.deck)
+    if result.edges:
+        write_edges(result.edges, folder / "edges.csv")
     write_text(folder / "report.txt", printed(result, picture, folder))
     write_junit(result, folder / "junit.xml")
     write_findings(result, folder / "findings.json", pictures)  # last: who waits for it finds the rest in place
@@ -100,6 +106,8 @@ def draw_main(result: Result, folder: Path) -> Path:
             draw_volley(result, path := folder / "volley.png")
         case Release():
             draw_release(result, path := folder / "release.png")
+        case ChainStudy():
+            draw_chain(result, path := folder / "chain.png")
         case None:
             draw_overview(result, path := folder / "overview.png")
     return path

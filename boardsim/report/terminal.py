@@ -222,6 +222,8 @@ def print_section(console: Console, title: str, lines: Iterable[str]) -> None:
 
 
 def _audit_lines(result: Result) -> list[str]:
+    if not result.simulated:
+        return ["nothing was simulated: printed levels and times, and lines as resistance and capacitance"]
     if not result.audit:
         return ["not audited: nothing here is proven"]
     lines = []

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import replace
 from functools import partial
 from pathlib import Path
@@ -26,7 +26,7 @@ from boardsim.scenarios.all_corners import (
 from boardsim.scenarios.audited import CornerResult, Measure
 from boardsim.scenarios.crew import Crew
 from boardsim.verdict.closeups import Closeup, take_closeups, wants_closeup
-from boardsim.verdict.findings import Finding, Result, Timing, Traces, overall
+from boardsim.verdict.findings import EdgeTimes, Finding, Result, Timing, Traces, overall
 from boardsim.verdict.switching import judge_switching
 
 
@@ -100,6 +100,21 @@ def fire_pattern(
         engine_of(results),
         strict,
         _closeups(findings, board, firing, sampled, shown) if pictured else (),
+        edges=edge_times(board, firing),
+    )
+
+
+def edge_times(board: Board, firing: Firing) -> tuple[EdgeTimes, ...]:
+    """Every pulse as asked for, as the controller's timer has it, and as its output shows it."""
+    return tuple(
+        EdgeTimes(
+            m.pulse.channel,
+            board.channel(m.pulse.channel).label,
+            (m.pulse.start, m.pulse.stop),
+            (m.timed.start, m.timed.stop),
+            None if m.swallowed else (m.start, m.stop),
+        )
+        for m in firing.moved
     )
 
 
@@ -117,7 +132,26 @@ def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
             f"({board.channel(late.pulse.channel).label}, {in_units(late.pulse.start, 's', 4)}); "
             f"their width changes by up to {in_units(abs(change) if abs(change) > 1e-12 else 0.0, 's')}"
         )
+        lines += _rounded(board, firing)
     return tuple(lines)
+
+
+def _rounded(board: Board, firing: Firing) -> Iterator[str]:
+    """What the controller's tick and jitter add, told by the pulse that the tick moves most."""
+    tick = board.controller.tick.typ if board.controller is not None else 0.0
+    if tick > 0:
+        m = max(firing.moved, key=lambda m: abs(m.timed.start - m.pulse.start) + abs(m.timed.stop - m.pulse.stop))
+        asked, timer, output = (
+            f"{in_units(on, 's', 6)} to {in_units(off, 's', 6)}"
+            for on, off in ((m.pulse.start, m.pulse.stop), (m.timed.start, m.timed.stop), (m.start, m.stop))
+        )
+        moved = sum(m.rounded is not None for m in firing.moved)
+        yield (
+            f"the timer's tick of {in_units(tick, 's')} moves {moved} of {len(firing.moved)} pulses; the most, "
+            f"{board.channel(m.pulse.channel).label}: asked {asked}, timer {timer}, output {'nothing' if m.swallowed else output}"
+        )
+    if firing.jitter > 0:
+        yield f"each edge may come up to {in_units(firing.jitter, 's')} later still (jitter); all edges stand in edges.csv"
 
 
 def _shown(results: Sequence[CornerResult]) -> CornerResult | None:

@@ -66,7 +66,7 @@ class ConditionsRecord(Record):
 class ScenarioRecord(Record):
     """One question put to a board."""
 
-    question: Literal["fire", "release", "volley"] = "fire"
+    question: Literal["fire", "release", "volley", "chain"] = "fire"
     board: str | None = Field(None, description="board file, relative to this one; the file's own if absent")
     pattern: str | None = Field(None, description="for fire: pattern file, relative to this one")
     channel: Annotated[int, Field(strict=True, ge=0)] | None = Field(None, description="for release: which channel")
@@ -103,7 +103,7 @@ class Scenario:
         As its file calls it.
     path : Path
         Of the file.
-    question : {"fire", "release", "volley"}
+    question : {"fire", "release", "volley", "chain"}
     board : Board
         Under the scenario's conditions.
     pattern : Pattern or None
@@ -116,7 +116,7 @@ class Scenario:
 
     name: str
     path: Path
-    question: Literal["fire", "release", "volley"]
+    question: Literal["fire", "release", "volley", "chain"]
     board: Board
     pattern: Pattern | None
     channel: int | None
@@ -255,7 +255,7 @@ def _misplaced(record: ScenarioRecord, file: TomlFile, keys: Keys) -> list[Probl
             text = f'belongs to question = "{question}"; this scenario asks "{record.question}"'
             problems.append(file.problem_at((*keys, key), text))
     if record.question == "fire" and record.pattern is None:
-        problems.append(file.problem_at(keys, 'needs a "pattern", or another "question": release, volley'))
+        problems.append(file.problem_at(keys, 'needs a "pattern", or another "question": release, volley, chain'))
     if record.breaks and record.expect not in (None, "fail"):
         text = f'names checks that have to break, but expect is "{record.expect}"; leave one of the two out'
         problems.append(file.problem_at((*keys, "breaks"), text))

@@ -36,6 +36,15 @@ clock = "2 MHz"
 # first_out = "far"                   # whose byte is sent first: the "far" or the "near" register's
 # active = "high"                     # output level by which the firmware means on
 
+[controller]                          # what drives the registers; on the logic rail unless it has a voltage of its own
+# voltage = "3.3 V +/- 3 %"
+high_drop = "0.8 V"                   # how far a high output may stay below its supply under load
+low_output = "0.6 V"                  # highest level of a low output under load
+spi_mode = 0                          # registers take data on the rising edge of the clock, as modes 0 and 3 do
+tick = "100 us"                       # of the timer that fires: starts and widths are rounded to it
+# jitter = "5 us"                     # how late an interrupt may come
+# frame_gap = "20 us"                 # pause between two register frames
+
 [coils.gate]
 resistance = "48 ohm +/- 10 %"
 at = "20 degC"                        # temperature at which the resistance is given
@@ -97,6 +106,9 @@ pattern = "patterns/first.toml"
 
 [scenarios.volley]                    # how many channels the supply stands at once
 question = "volley"
+
+[scenarios.chain]                      # whether the registers understand the controller
+question = "chain"
 
 [scenarios.release]                   # what turning a channel off does, and when it may be fired again
 question = "release"

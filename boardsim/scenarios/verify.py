@@ -13,6 +13,7 @@ from pathlib import Path
 from boardsim.errors import EXIT_LIMIT_BROKEN, EXIT_PASS, EXIT_UNPROVEN, EXIT_WRONG_INPUT, InputError
 from boardsim.quantities import in_units
 from boardsim.report.folder import make_ready, write_results
+from boardsim.scenarios.chain import check_chain
 from boardsim.scenarios.chosen import Chosen
 from boardsim.scenarios.crew import Crew
 from boardsim.scenarios.fire import fire_pattern
@@ -54,6 +55,8 @@ def run_scenario(
             result = release_channel(s.board, keep, s.strict, crew, progress, s.channel, s.every_clamp)
         case "volley":
             result = volley(s.board, keep, s.strict, crew, progress, s.width, s.at_least)
+        case "chain":
+            result = check_chain(s.board, s.strict)
         case "fire":
             assert s.pattern is not None  # a fire scenario without one is refused when it is read
             result = fire_pattern(s.board, s.pattern, keep, s.strict, crew, progress)

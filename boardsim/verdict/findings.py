@@ -17,7 +17,7 @@ from boardsim.parts.rules import Consequence
 
 if TYPE_CHECKING:
     from boardsim.verdict.closeups import Closeup
-    from boardsim.verdict.studies import Release, Volley
+    from boardsim.verdict.studies import ChainStudy, Release, Volley
 
 Verdict = Literal["pass", "tight", "fail", "unproven", "limit-missing"]
 Shape = Literal["value", "mean", "energy", "count"]
@@ -285,6 +285,17 @@ class Traces:
 
 
 @dataclass(frozen=True)
+class EdgeTimes:
+    """One pulse: as asked for, as the controller's timer has it, as the output shows it (None where it does not). [s]"""
+
+    channel: int
+    label: str
+    asked: tuple[float, float]
+    timer: tuple[float, float]
+    output: tuple[float, float] | None
+
+
+@dataclass(frozen=True)
 class Timing:
     """Where the time went: a stage and its seconds."""
 
@@ -308,8 +319,12 @@ class Result:
         Whether a missing limit counted as broken.
     closeups : tuple of Closeup
         One for each finding that fails or is tight.
-    study : Volley or Release or None
+    study : Volley or Release or ChainStudy or None
         What the scenario found beyond findings: its table, and what its picture is drawn from.
+    edges : tuple of EdgeTimes
+        Every pulse as asked for, as the timer has it, and as the output shows it.
+    simulated : bool
+        Whether the question takes runs of the engine, without whose audit nothing is proven.
     """
 
     board: str
@@ -327,12 +342,14 @@ class Result:
     engine: str = ""
     strict: bool = False
     closeups: tuple[Closeup, ...] = ()
-    study: Volley | Release | None = None
+    study: Volley | Release | ChainStudy | None = None
+    edges: tuple[EdgeTimes, ...] = ()
+    simulated: bool = True
 
     @property
     def proven(self) -> bool:
-        """Whether the audit holds in every corner; without an audit nothing is proven."""
-        return bool(self.audit) and all(audit.proven for audit in self.audit)
+        """Whether the audit holds in every corner; of what is simulated nothing is proven without one."""
+        return (bool(self.audit) or not self.simulated) and all(audit.proven for audit in self.audit)
 
 
 CAUTIONS = (

@@ -221,3 +221,89 @@ class Release:
             for r in self.rows
         )
         return Table(columns, rows)
+
+
+@dataclass(frozen=True)
+class LinkView:
+    """One link over time, at the logic rail where it has the least room; 0 is the controller's clock (or latch) edge.
+
+    Attributes
+    ----------
+    name, edge, signal : str
+        Of the link, of the edge that takes, and of what it takes.
+    seen : (float, float)
+        When that edge is seen at the earliest and at the latest. [s]
+    settled : float
+        From when on what is taken has surely arrived. [s]
+    leaves : float or None
+        From when on it may change again; None where that does not matter. [s]
+    before, after : float
+        Set-up and hold: how long it has to be there before and after the edge. [s]
+    edges : tuple of (float, bool)
+        Other edges of the clock, and whether they rise. [s]
+    volts : float
+        [V]
+    """
+
+    name: str
+    edge: str
+    signal: str
+    seen: tuple[float, float]
+    settled: float
+    leaves: float | None
+    before: float
+    after: float
+    edges: tuple[tuple[float, bool], ...]
+    volts: float
+
+    @property
+    def early(self) -> float:
+        """What is left of the time before the edge; negative where it does not suffice. [s]"""
+        return self.seen[0] - self.before - self.settled
+
+    @property
+    def late(self) -> float | None:
+        """What is left of the time after the edge. [s]"""
+        return None if self.leaves is None else self.leaves - self.seen[1] - self.after
+
+
+@dataclass(frozen=True)
+class ChainRow:
+    """One link in numbers: levels given and needed [V], times needed and there [s]; None where one is not known."""
+
+    link: str
+    high: float | None = None
+    high_needed: float | None = None
+    low: float | None = None
+    low_needed: float | None = None
+    setup_needed: float | None = None
+    setup: float | None = None
+    hold_needed: float | None = None
+    hold: float | None = None
+
+
+@dataclass(frozen=True)
+class ChainStudy:
+    """Whether the chain can work, link by link.
+
+    Attributes
+    ----------
+    rows : tuple of ChainRow
+    views : tuple of LinkView
+        What the picture shows; empty where times are not known.
+    """
+
+    rows: tuple[ChainRow, ...]
+    views: tuple[LinkView, ...]
+
+    @property
+    def table(self) -> Table:
+        """One row per sort of link."""
+        names = (("high level", "V"), ("needs", "V"), ("low level", "V"), ("allows", "V"))
+        times = (("set-up needs", "s"), ("there", "s"), ("hold needs", "s"), ("there", "s"))
+        columns = (Column("link"), *(Column(*one) for one in (*names, *times)))
+        rows = tuple(
+            (r.link, r.high, r.high_needed, r.low, r.low_needed, r.setup_needed, r.setup, r.hold_needed, r.hold)
+            for r in self.rows
+        )
+        return Table(columns, rows)

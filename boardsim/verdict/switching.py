@@ -2,22 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator, Mapping
 
 import numpy as np
 
 from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
 from boardsim.firing.pattern import Pulse
-from boardsim.firing.schedule import Firing
-from boardsim.parts.register import Register
-from boardsim.parts.rules import Consequence
-from boardsim.quantities import Quantity, in_units
+from boardsim.firing.schedule import Firing, MovedPulse
+from boardsim.parts.controller import Controller
+from boardsim.quantities import apart, in_units
+from boardsim.verdict.chain import judge_chain
+from boardsim.verdict.chain_loads import judge_loads
 from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
+
+_LATE = "comes late by"
 
 
 def judge_switching(board: Board, firing: Firing) -> list[Finding]:
-    """Swallowed, joined and misdirected pulses; channels on at once; exclusive groups; clock and logic rail."""
+    """Swallowed, joined and misdirected pulses; channels on at once; exclusive groups; and whether the chain can work."""
     found = [
         *_swallowed(board, firing),
         *_moved(board, firing),
@@ -30,7 +33,7 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     for members, most, reason in board.exclusive:
         label = f"channels {write_range(members)}"
         found.append(_at_once(board, firing, members, most, "exclusive channels on at once", label, reason))
-    return [*found, *_register(board)]
+    return [*found, *judge_loads(board, firing), *judge_chain(board)]
 
 
 def _plain(quantity: str, check: str, channel: int, label: str, count: int, at: float, sentence: str) -> Finding:
@@ -68,64 +71,104 @@ def _per_channel(
 
 
 def _swallowed(board: Board, firing: Firing) -> Iterator[Finding]:
-    def say(label: str, p: Pulse) -> str:
-        return (
-            f"{label}: its pulse of {in_units(p.width, 's')} at {in_units(p.start, 's', 4)} is lost: both edges fall on one "
-            f"latch, since a register frame takes {in_units(firing.frame_time, 's')}"
-        )
+    late = firing.jitter
+    tick = (board.controller or Controller()).tick.typ
+    lost = {m.pulse: m for m in firing.moved if m.swallowed or m.timed.width <= late}
 
-    lost = [m.pulse for m in firing.moved if m.swallowed]
-    return _per_channel(board, lost, "lost-pulse", "pulses lost", say, "a longer pulse or a faster clock")
+    def say(label: str, p: Pulse) -> str:
+        its = f"{label}: its pulse of {in_units(p.width, 's')} at {in_units(p.start, 's', 4)}"
+        if not lost[p].swallowed:
+            return f"{its} can get lost: it is no longer than a frame may be late, {in_units(late, 's')} (jitter)"
+        if lost[p].timed.width == 0:
+            return f"{its} is lost: it rounds to nothing on a timer tick of {in_units(tick, 's')}"
+        return f"{its} is lost: both edges fall on one latch, since a register frame takes {in_units(firing.frame_time, 's')}"
+
+    return _per_channel(
+        board, lost, "lost-pulse", "pulses lost", say, "a longer pulse, a faster clock or a finer timer tick"
+    )
 
 
 def _moved(board: Board, firing: Firing) -> list[Finding]:
-    """The pulse that the register frames distort most, as a share of its own width."""
-    limit = board.limits.pulse_error
-    found = []
-    for what in ("lateness of a pulse", "change of a pulse's width"):
-        by = {
-            m: (m.start - m.pulse.start if what.startswith("late") else abs(m.stop - m.start - m.pulse.width))
-            for m in firing.moved
-            if not m.swallowed
-        }
-        if not by:
-            continue
-        m = max(by, key=lambda m: by[m] / m.pulse.width)
-        value = by[m] / m.pulse.width
-        margin: float | None = (limit.typ - value) / limit.typ
+    """The pulse that ticks, register frames and jitter distort most, as a share of its own width; and the latest of all.
+
+    An output turns on and off at the times of `firing` or up to the jitter later, each edge by itself.
+    """
+    seen = [m for m in firing.moved if not m.swallowed]
+    if not seen:
+        return []
+    late = {m: max(m.start - m.pulse.start + firing.jitter, m.pulse.start - m.start) for m in seen}
+    changed = {m: abs(m.stop - m.start - m.pulse.width) + firing.jitter for m in seen}
+    found = [
+        _distorted(board, late, "lateness of a pulse", _LATE),
+        _distorted(board, changed, "change of a pulse's width", "changes its width by"),
+    ]
+    limit = board.limits.lateness
+    if limit is not None:
+        m = max(late, key=lambda m: late[m])
+        value, allowed = apart(late[m], limit.min, "s")
         label = board.channel(m.pulse.channel).label
-        said = (
-            f"{label}: its pulse of {in_units(m.pulse.width, 's')} at {in_units(m.pulse.start, 's', 4)} "
-            f"{'comes late by' if what.startswith('late') else 'changes its width by'} {in_units(by[m], 's')}, {value:.1%} of its "
-            "width; "
-        )
-        if limit.assumed() and limit.typ < value < 1:
-            # Nobody gave a limit: only a pulse that is off by all of its width is broken for certain.
-            margin = None
-            said += "how much may be was not given ([limits] pulse_error)"
-        else:
-            said += f"{limit.typ:.0%} is allowed"
-        if margin is None or margin < 0:
-            said += "; try: a faster clock, or pulses that do not change together"
+        said = f"{label}: its pulse at {in_units(m.pulse.start, 's', 4)} comes {value} away from when it was asked for; {allowed} are allowed"
+        margin = (limit.min - late[m]) / limit.min if limit.min else -1.0
+        said += "; try: a faster clock, or pulses that do not follow on each other so closely" if margin < 0 else ""
         found.append(
-            Finding(
-                "pulse-timing",
-                what,
-                "register chain",
-                None,
-                label,
-                value,
-                None if margin is None else limit.typ,
-                "1",
-                margin,
-                m.pulse.start,
-                "misbehave",
-                verdict_of(margin, board.limits.guard_band.typ),
-                said,
-                source=str(limit.origin),
+            _timing(
+                board, "latest pulse", label, late[m], limit.min, "s", margin, m.pulse.start, said, str(limit.origin)
             )
         )
     return found
+
+
+def _timing(
+    board: Board,
+    what: str,
+    label: str,
+    value: float,
+    limit: float | None,
+    unit: str,
+    margin: float | None,
+    at: float,
+    said: str,
+    source: str,
+) -> Finding:
+    return Finding(
+        "pulse-timing",
+        what,
+        "register chain",
+        None,
+        label,
+        value,
+        limit,
+        unit,
+        margin,
+        at,
+        "misbehave",
+        verdict_of(margin, board.limits.guard_band.typ),
+        said,
+        source=source,
+    )
+
+
+def _distorted(board: Board, by: Mapping[MovedPulse, float], what: str, verb: str) -> Finding:
+    """The pulse that is off by the largest share of its width."""
+    limit = board.limits.pulse_error
+    m = max(by, key=lambda m: by[m] / m.pulse.width)
+    value = by[m] / m.pulse.width
+    margin: float | None = (limit.typ - value) / limit.typ
+    label = board.channel(m.pulse.channel).label
+    said = (
+        f"{label}: its pulse of {in_units(m.pulse.width, 's')} at {in_units(m.pulse.start, 's', 4)} "
+        f"{'comes early by' if verb == _LATE and m.start < m.pulse.start else verb} {in_units(by[m], 's')}, {value:.1%} of its width; "
+    )
+    if limit.assumed() and limit.typ < value < 1:
+        # Nobody gave a limit: only a pulse that is off by all of its width is broken for certain.
+        margin = None
+        said += "how much may be was not given ([limits] pulse_error)"
+    else:
+        said += f"{limit.typ:.0%} is allowed"
+    if margin is None or margin < 0:
+        said += "; try: a faster clock, a finer timer tick, or pulses that do not change together"
+    known = None if margin is None else limit.typ
+    return _timing(board, what, label, value, known, "1", margin, m.pulse.start, said, str(limit.origin))
 
 
 def _joined(board: Board, firing: Firing) -> Iterator[Finding]:
@@ -211,73 +254,3 @@ def _at_once(
         shape="count",
         channels=channels,
     )
-
-
-def _how_fast(register: Register, name: str, too_low: float | None) -> str:
-    """How far a register follows its clock; `too_low` is a logic rail below that for which this is given. [V]"""
-    clock, at = register.highest_clock, register.timing_supply
-    if clock is None:
-        return f"no highest clock of {name} was given"
-    if too_low is not None and at is not None:
-        return (
-            f"{name} follows up to {in_units(clock.typ, 'Hz')} from a logic rail of {in_units(at.typ, 'V')} on; down to "
-            f"{in_units(too_low, 'V')}, where it is slower, no highest clock was given"
-        )
-    return f"one {name} alone follows up to {in_units(clock.typ, 'Hz')}"
-
-
-def _register(board: Board) -> list[Finding]:
-    """Clock and logic rail against what the register stands."""
-    chain, register = board.chain, board.chain.register_
-    name = register.title or "register"
-    clock, at, rail = register.highest_clock, register.timing_supply, board.logic.voltage
-    slower = clock is not None and at is not None and rail.min < at.typ * (1 - 1e-9)
-    known = clock if not slower else None
-    margin = None if known is None else (known.typ - chain.clock.max) / known.typ
-    found = [
-        Finding(
-            "chain",
-            "clock",
-            name,
-            None,
-            "chain",
-            chain.clock.max,
-            known.typ if known else None,
-            "Hz",
-            margin,
-            None,
-            "misbehave",
-            verdict_of(margin, board.limits.guard_band.typ),
-            f"the chain is clocked at {in_units(chain.clock.max, 'Hz')}; "
-            + _how_fast(register, name, rail.min if slower else None),
-            source=str(known.origin) if known else "",
-        )
-    ]
-    high, low = register.supply_high, register.supply_low
-    ends: tuple[tuple[float, Quantity, str, Consequence], ...] = (
-        (rail.max, high, "highest logic rail", "destroy"),
-        (rail.min, low, "lowest logic rail", "misbehave"),
-    )
-    for value, limit, quantity, consequence in ends:
-        upper = limit is high
-        spare = (limit.typ - value) / limit.typ if upper else (value - limit.typ) / limit.typ
-        found.append(
-            Finding(
-                "logic-rail",
-                quantity,
-                name,
-                None,
-                "chain",
-                value,
-                limit.typ,
-                "V",
-                spare,
-                None,
-                consequence,
-                verdict_of(spare, board.limits.guard_band.typ),
-                f"the logic rail is {'up to' if upper else 'down to'} {in_units(value, 'V')}; {name} works "
-                f"{'up to' if upper else 'from'} {in_units(limit.typ, 'V')}",
-                source=str(limit.origin),
-            )
-        )
-    return found

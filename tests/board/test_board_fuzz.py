@@ -94,7 +94,7 @@ def test_any_value_of_another_kind_is_refused_at_its_line(tmp_path: Path, what: 
             assert any(p.line == line for p in found) or keys[0] == "coils", (keys, found)
             assert all(p.text.isprintable() for p in found)
         else:
-            optional_table = keys in (("coils",), ("limits",)) and what == "table"
+            optional_table = keys in (("coils",), ("limits",), ("controller",)) and what == "table"
             assert (free_text and isinstance(WRONG[what], str)) or optional_table or may_be(what, keys[-1]), keys
 
 
@@ -103,12 +103,15 @@ def may_be(what: str, key: str) -> bool:
     return (what, key) in {("no ohms", k) for k in ("resistance", "esr", "gate")} | {
         ("bare number", "count"),
         ("bare number", "most_on"),
+        ("zero", "spi_mode"),  # a number among four
     }
 
 
 def test_every_key_that_goes_missing_leaves_a_valid_board_or_a_located_problem(tmp_path: Path) -> None:
     optional = {"name", "ambient", "limits", "most_on", "brown_out", "label", "to", "pulldown", "pull_in", "release"}
     optional |= {"at", "rise", "current_ceiling", "esl", "rated", "resistance"}
+    optional |= {"controller", "high_drop", "low_output", "spi_mode", "tick", "jitter", "frame_gap"}
+    optional |= {"lateness", "clock_line", "latch_line", "pull_down"}
     for keys in PLACES:
         data = copy.deepcopy(DATA)
         del at(data, keys)[keys[-1]]

@@ -23,6 +23,8 @@ bit_order = "{bit_order}"
 first_out = "{first_out}"
 active = "{active}"
 
+{controller}
+
 [coils.needle]
 resistance = "30 ohm"
 inductance = "9 mH"
@@ -46,6 +48,7 @@ def board(
     active: str = "high",
     channels: str = "",
     columns: str = "",
+    controller: str = "",
 ) -> Board:
     """A board with a coil on every output of its chain, unless told otherwise."""
     path = folder / "board.toml"
@@ -59,6 +62,7 @@ def board(
             active=active,
             channels=channels or f"0-{8 * count - 1}",
             columns=columns,
+            controller=f"[controller]\n{controller}" if controller else "",
         ),
         encoding="utf-8",
     )

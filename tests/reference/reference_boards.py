@@ -75,6 +75,10 @@ supply = {{ {supply} }}
 cable = {cable}
 bulk = {bulk}
 logic = {{ voltage = "{logic}" }}
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
+
 [chain]
 register = "74HC595"
 count = 1

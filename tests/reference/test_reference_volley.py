@@ -29,6 +29,10 @@ supply = {{ voltage = "{supply}", resistance = "{R_SOURCE} ohm"{ceiling} }}
 cable = {{ area = "1.5 mm2", length = "2 m" }}
 bulk = {{ capacitance = "4700 uF", esr = "30 mohm", rated = "63 V" }}
 logic = {{ voltage = "5 V" }}
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
+
 [chain]
 register = "74HC595"
 count = 2
@@ -136,6 +140,10 @@ supply = { voltage = "24 V +/- 5 %", resistance = "5 mohm", current_ceiling = "9
 cable = { gauge = "10 AWG", length = "1.8 m" }
 bulk = { capacitance = "22000 uF +/- 20 %", esr = "40 mohm", esl = "20 nH", rated = "35 V" }
 logic = { voltage = "5 V +/- 5 %" }
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
+
 [chain]
 register = "74HC595"
 count = 2

@@ -19,6 +19,10 @@ supply = { voltage = "24 V", resistance = "20 mohm", current_ceiling = "5 A" }
 cable = { gauge = "18 AWG", length = "1 m", spacing = "2 mm" }
 bulk = { capacitance = "2200 uF", esr = "50 mohm", esl = "20 nH", rated = "35 V" }
 logic = { voltage = "5 V" }
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
+
 [chain]
 register = "74HC595"
 count = 1
@@ -84,6 +88,7 @@ def test_a_sound_board_passes_and_leaves_every_file_of_the_contract(tmp_path: Pa
         "overview.png",
         "board.cir",
         "report.txt",
+        "edges.csv",
     }
     assert "verdict: pass" in out
     assert "overview.png" in out.splitlines()[-1]

@@ -29,6 +29,10 @@ supply = { voltage = "24 V", resistance = "20 mohm", current_ceiling = "5 A" }
 cable = { gauge = "18 AWG", length = "1 m", spacing = "2 mm" }
 bulk = { capacitance = "2200 uF", esr = "50 mohm", esl = "20 nH", rated = "35 V" }
 logic = { voltage = "5 V" }
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
+
 [chain]
 register = "74HC595"
 count = 1

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import csv
 import json
 import os
 import signal
@@ -205,6 +206,9 @@ def whole(path: Path) -> bool:
             return imread(path).size > 0 and path.read_bytes().endswith(b"IEND\xaeB`\x82")
         case ".cir":
             return path.read_text().endswith(".end\n")
+        case ".csv":
+            rows = list(csv.reader(path.read_text().splitlines()))
+            return path.read_text().endswith("\n") and len({len(row) for row in rows}) == 1
         case ".txt":
             return "verdict:" in path.read_text().splitlines()[-1]
     return False

@@ -159,6 +159,10 @@ supply = { voltage = "24 V", resistance = "1 ohm", current_ceiling = "20 A" }
 cable = { area = "10 mm2", length = "0.1 m" }
 bulk = { capacitance = "100 uF", esr = "50 mohm", esl = "20 nH", rated = "35 V" }
 logic = { voltage = "5 V" }
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
+
 [chain]
 register = "74HC595"
 count = 1
@@ -209,6 +213,10 @@ supply = { voltage = "24 V", resistance = "500 mohm" }
 cable = { gauge = "16 AWG", length = "0.2 m" }
 bulk = { capacitance = "100 uF", esr = "60 mohm", rated = "50 V" }
 logic = { voltage = "5 V" }
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
+
 [chain]
 register = "74HC595"
 count = 1

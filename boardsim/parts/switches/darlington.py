@@ -64,6 +64,9 @@ _RAMP_TIME = 1e-3  # [s], of the input; slow beside all delays
 _USUAL = "delays and test circuit of bipolar sink arrays, from memory"
 
 
+_LEAST_JUNCTIONS = 1.2  # [V] across two bases that conduct, from memory
+
+
 class InputCurrent(Record):
     """The typical input current at an input voltage, output open, and the highest."""
 
@@ -442,6 +445,12 @@ class DarlingtonStage(Part):
     def per_package(self) -> int:
         """Outputs of the package. [1]"""
         return int(self.part.outputs)
+
+    def steady_input(self, volts: float, resistance: float) -> float:
+        """Into the input, at most as printed: a resistance before two junctions of 0.6 V each (from memory). [A]"""
+        printed = [(p.voltage.typ - _LEAST_JUNCTIONS, (p.highest or p.typical).max) for p in self.part.input_current]
+        least: float = min(over / amperes for over, amperes in printed if over > 0)
+        return max(volts - _LEAST_JUNCTIONS, 0.0) / (resistance + least)
 
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
         """The sink between the register's node `pin` and the coil's node `drain`."""

@@ -356,6 +356,10 @@ class NMosfetStage(Part):
         """What the corners vary in this stage: where the transistor breaks down."""
         return {"breakdown": self.part.breakdown}
 
+    def steady_input(self, volts: float, resistance: float) -> float:
+        """Through gate resistor and pull-down; a gate by itself takes none. [V], [ohm] -> [A]"""
+        return 0.0 if self.pulldown is None else volts / (resistance + self.gate.min + self.pulldown.min)
+
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
         """The stage between the register's node `pin` and the coil's node `drain`."""
         part: NMosfet = self.part

@@ -65,6 +65,9 @@ _PROOF_VOLTAGE = 5.0  # [V], collector voltage of the gain's test circuit; witho
 _PROOF_TIME = 1e-4  # [s]
 
 
+_LEAST_JUNCTION = 0.6  # [V] across a base that conducts, from memory
+
+
 class Gain(Record):
     """The static gain I_C / I_B outside saturation: bare numbers, since they are counts of nothing but themselves."""
 
@@ -355,6 +358,10 @@ class NpnStage(Part):
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this stage: where the transistor breaks down."""
         return {"breakdown": self.part.breakdown}
+
+    def steady_input(self, volts: float, resistance: float) -> float:
+        """Through the base resistor into base and pull-down, which a junction holds at 0.6 V at least (from memory). [A]"""
+        return max(volts - _LEAST_JUNCTION, 0.0) / (resistance + self.base.min)
 
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
         """The stage between the register's node `pin` and the coil's node `drain`."""
