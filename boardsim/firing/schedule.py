@@ -2,19 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from boardsim.board.reader import Board
+from boardsim.firing.bus import Recorded
 from boardsim.firing.pattern import Pattern, Pulse
 from boardsim.firing.registers import ChainState, frame_time, shift_in
 
 Floats = NDArray[np.float64]
 
 _SETTLE = 5.0  # L/R times to look at after the last edge
+
+
+def settling_time(board: Board) -> float:
+    """How long to look after the last edge, so that what a turn-off does to its switch is in the run. [s]"""
+    return _SETTLE * max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels)
 
 
 @dataclass(frozen=True)
@@ -62,6 +68,8 @@ class Firing:
         [s]
     asked : tuple of Pulse
         Every pulse that the pattern commands, by start.
+    recorded : Recorded or None
+        The bus as it was captured, where it was: then nothing but the outputs tells what was commanded.
     """
 
     duration: float
@@ -74,6 +82,7 @@ class Firing:
     frames: int
     frame_time: float
     asked: tuple[Pulse, ...] = ()
+    recorded: Recorded | None = None
 
     def channels_on(self, t: float) -> tuple[int, ...]:
         """The channels that are on at a time."""
@@ -85,10 +94,14 @@ def fire(board: Board, pattern: Pattern) -> Firing:
 
     Notes
     -----
+    What was recorded has been through it already.
+
     The controller starts a register frame as soon as a change is asked for and the last frame is latched. A
     frame carries every change asked for until it starts; changes that come while a frame is under way wait for
     the next one. All changes of a frame appear together, at its latch edge.
     """
+    if pattern.recorded is not None:
+        return pattern.recorded
     chain = board.chain
     spent = frame_time(chain)
     delay = chain.register_.propagation.typ
@@ -130,10 +143,9 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     )
     lost = tuple(Pulse(c, on, 0.0) for c, off, on in _pauses(asked) if latched[c, off] == latched[c, on])
     last = max([free + delay, *(p.stop for p in pattern.pulses)])
-    tau = max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels if c.coil.resistance.min > 0)
     # Also where a duration was asked for: what the last turn-off does to its switch comes after it.
-    duration = max(pattern.duration or 0.0, last + _SETTLE * tau)
-    on = {c.number: _spans(levels[c.output], active[c.output], duration) for c in board.channels}
+    duration = max(pattern.duration or 0.0, last + settling_time(board))
+    on = {c.number: on_times(levels[c.output], active[c.output], duration) for c in board.channels}
     return Firing(
         duration,
         {o: tuple(v) for o, v in levels.items()},
@@ -188,8 +200,8 @@ def _compare(
             wrong[c.number] = WrongOutput(c.number, at, wanted[c.number])
 
 
-def _spans(levels: list[tuple[float, bool]], active: bool, end: float) -> Floats:
-    """On-times of a channel as rows (on, off)."""
+def on_times(levels: Sequence[tuple[float, bool]], active: bool, end: float) -> Floats:
+    """On-times of a channel, whose switch is on at output level `active`, until `end` [s]: rows (on, off), (n, 2). [s]"""
     rows: list[tuple[float, float]] = []
     since: float | None = None
     for t, level in levels:
