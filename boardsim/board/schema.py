@@ -17,7 +17,7 @@ from boardsim.parts.logic import Logic
 from boardsim.parts.record import Name, Record
 from boardsim.parts.register import Register
 from boardsim.parts.supply import Supply
-from boardsim.quantities import FREQUENCY, SHARE, TEMPERATURE, TIME, VOLTAGE, Quantity, assume
+from boardsim.quantities import CURRENT, FREQUENCY, SHARE, TEMPERATURE, TIME, VOLTAGE, Quantity, assume
 
 
 def _any_kind(*roles: str) -> Any:
@@ -121,10 +121,21 @@ class Exclusive(Record):
     reason: Name | None = None
 
 
+class AllOff(Record):
+    """Channels that must all be off soon after the firmware has fallen silent."""
+
+    within: Annotated[Quantity, TIME] = Field(description="from the last latch edge on")
+    channels: str | None = Field(None, description="which channels; all of the board if absent")
+
+
 class Limits(Record):
     """Limits of the board as a whole."""
 
     most_on: Annotated[int, Field(strict=True, ge=1)] | None = None
+    most_current: Annotated[Quantity, CURRENT] | None = Field(
+        None, description="what all coils together may carry at once"
+    )
+    all_off: AllOff | None = Field(None, description="when all must be off after the last register frame")
     brown_out: BrownOut | None = None
     exclusive: tuple[Exclusive, ...] = ()
     pulse_error: Annotated[Quantity, SHARE] = assume(
