@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+import numpy as np
+
 from boardsim.board.ranges import write_labels
 from boardsim.board.reader import Board, Channel
 from boardsim.firing.schedule import Firing
@@ -89,7 +91,7 @@ def _longest_on(board: Board, channel: Channel, firing: Firing) -> Iterator[Find
     spans = firing.on[channel.number]
     if limit is None or not len(spans):
         return
-    k = int((spans[:, 1] - spans[:, 0]).argmax())
+    k = int(np.round(spans[:, 1] - spans[:, 0], 12).argmax())  # the first of those that are equal on paper
     value, at = float(spans[k, 1] - spans[k, 0]), float(spans[k, 0])
     still = "at least " if spans[k, 1] >= firing.duration else ""
     said, allowed = apart(value, limit.min, "s")
@@ -106,7 +108,7 @@ def _least_off(board: Board, channel: Channel, firing: Firing) -> Iterator[Findi
     spans = firing.on[channel.number]
     if limit is None or len(spans) < 2:
         return
-    pauses = spans[1:, 0] - spans[:-1, 1]
+    pauses = np.round(spans[1:, 0] - spans[:-1, 1], 12)
     k = int(pauses.argmin())
     value, at = float(pauses[k]), float(spans[k, 1])
     said, allowed = apart(value, limit.max, "s")
