@@ -56,7 +56,11 @@ BoardFile = Annotated[
 ]
 PatternFile = Annotated[
     Path,
-    typer.Argument(metavar="PATTERN", help="pattern file, such as netlists/fruit-sorter/patterns/steady.toml"),
+    typer.Argument(
+        metavar="PATTERN",
+        help="pattern file, such as netlists/fruit-sorter/patterns/steady.toml; a list of events, events.csv; or a TOML"
+        " file that names a capture of the bus",
+    ),
 ]
 Libraries = Annotated[
     list[Path] | None,
@@ -79,6 +83,10 @@ def fire(
         Path | None,
         typer.Option(metavar="DIR", help="folder for the results; out/BOARD-PATTERN if not given"),
     ] = None,
+    edges: Annotated[
+        Path | None,
+        typer.Option(metavar="FILE.vcd", help="also write the edges of the register outputs, as a value change dump"),
+    ] = None,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
     library: Libraries = None,
@@ -88,15 +96,20 @@ def fire(
     Exit status: 0 pass, 1 a limit is broken, 2 wrong input, 3 unproven.
     """
     from boardsim.board.reader import read_board
-    from boardsim.firing.pattern import read_pattern
+    from boardsim.firing.sources import read_source
     from boardsim.report.folder import make_ready
     from boardsim.report.wording import plain_path
+    from boardsim.scenarios.edges import check_place, write_edges
     from boardsim.scenarios.fire import fire_pattern
 
     the_board = read_board(board, library or ())
-    the_pattern = read_pattern(pattern, the_board)
+    the_pattern = read_source(pattern, the_board)
+    if edges is not None:
+        check_place(edges, (board, pattern), the_pattern)
     folder = out or Path("out") / f"{plain_path(the_board.name)}-{plain_path(the_pattern.name)}"
     make_ready(folder, (board, pattern))
+    if edges is not None:
+        write_edges(the_board, the_pattern, edges)
     with _working(f"{the_board.name}, {the_pattern.name}", time_limit) as (crew, progress):
         result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress)
     _present(result, folder)
@@ -208,14 +221,14 @@ def deck(
 ) -> None:
     """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
     from boardsim.board.reader import read_board
-    from boardsim.firing.pattern import read_pattern
+    from boardsim.firing.sources import read_source
     from boardsim.report.files import write_text
     from boardsim.scenarios.decks import write_deck
 
     if to is not None and any(to.exists() and to.samefile(one) for one in (board, pattern) if one.exists()):
         raise InputError(f"--to {to}: is one of the files to read; name another")
     the_board = read_board(board, library or ())
-    names, text = write_deck(the_board, read_pattern(pattern, the_board), corner)
+    names, text = write_deck(the_board, read_source(pattern, the_board), corner)
     if text is None:
         listed = "; ".join(f"{i} {name}" for i, name in enumerate(names, 1))
         raise InputError(f"--corner {corner}: this board has {len(names)}: {listed}")
@@ -291,16 +304,18 @@ def chain(
 
 @app.command(epilog="Example: boardsim schema > board.schema.json")
 def schema(
-    what: Annotated[str, typer.Argument(metavar="[board|pattern|scenarios]", help="which kind of file")] = "board",
+    what: Annotated[
+        str, typer.Argument(metavar="[board|pattern|capture|scenarios]", help="which kind of file")
+    ] = "board",
 ) -> None:
-    """Print the JSON Schema of board, pattern or scenario files, for editors that complete and check TOML."""
+    """Print the JSON Schema of board, pattern, capture or scenario files, for editors that complete and check TOML."""
     import json
 
     from boardsim.scenarios.starter import json_schema
 
     found = json_schema(what)
     if found is None:
-        raise InputError(f'"{what}" is not a kind of file; say board, pattern or scenarios')
+        raise InputError(f'"{what}" is not a kind of file; say board, pattern, capture or scenarios')
     typer.echo(json.dumps(found, indent=2, ensure_ascii=False))
 
 

@@ -147,12 +147,12 @@ def test_a_corner_that_the_board_has_not_is_refused_with_those_that_it_has(run: 
     refused(run("deck", "board.toml", "pattern.toml", "--corner", "9"), "--corner 9: this board has 5: 1 supply high")
 
 
-def test_schema_prints_json_and_knows_three_kinds_of_file(run: Run) -> None:
-    for arguments in (("schema",), ("schema", "board"), ("schema", "pattern"), ("schema", "scenarios")):
+def test_schema_prints_json_and_knows_four_kinds_of_file(run: Run) -> None:
+    for arguments in (("schema",), *(("schema", kind) for kind in ("board", "pattern", "capture", "scenarios"))):
         status, out, err = run(*arguments)
         assert (status, err) == (0, "")
         assert json.loads(out)["$schema"]
-    refused(run("schema", "deck"), '"deck" is not a kind of file; say board, pattern or scenarios')
+    refused(run("schema", "deck"), '"deck" is not a kind of file; say board, pattern, capture or scenarios')
 
 
 def test_begin_writes_files_once_and_never_over_others(run: Run, tmp_path: Path) -> None:

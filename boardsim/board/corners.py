@@ -159,7 +159,8 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     used += [board.chain.clock, *(q for _, q in _of_the_chain(board))]
     used += [q for q in (board.supply.current_ceiling,) if q is not None]
     for channel in board.channels:
-        used += [q for q in (channel.coil.pull_in, channel.coil.release) if q is not None]
+        coil = channel.coil
+        used += [q for q in (coil.pull_in, coil.release, coil.longest_on, coil.least_off) if q is not None]
     parts: list[tuple[str, Record]] = [
         ("supply", board.supply),
         ("cable", board.cable),

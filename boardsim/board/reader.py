@@ -47,7 +47,10 @@ class Channel:
 
 @dataclass(frozen=True)
 class Board:
-    """Parts and how they are connected. `around` is None where no ambient was given."""
+    """Parts and how they are connected.
+
+    `around` is None where no ambient was given; `all_off` are the channels of that rule, all where none are named.
+    """
 
     path: Path
     name: str
@@ -65,6 +68,7 @@ class Board:
     assumptions: tuple[Assumption, ...]
     libraries: tuple[Path, ...] = ()  # the user's folders of parts that the board was read with
     controller: Controller | None = None  # none: what drives the chain was not described
+    all_off: tuple[int, ...] = ()
 
     def channel(self, number: int) -> Channel:
         """The channel of a number.
@@ -194,6 +198,13 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         if unknown := [n for n in members if n not in numbers]:
             problems.append(file.problem_at(keys, f"{_listed('channel', unknown)} not on this board"))
         exclusive.append((members, group.most, group.reason or ""))
+    silent = board.limits.all_off
+    all_off = tuple(sorted(numbers))
+    if silent is not None and silent.channels is not None:
+        all_off = _range(silent.channels, file, ("limits", "all_off", "channels"), problems)
+        if unknown := [n for n in all_off if n not in numbers]:
+            keys = ("limits", "all_off", "channels")
+            problems.append(file.problem_at(keys, f"{_listed('channel', unknown)} not on this board"))
     brown_out = board.limits.brown_out
     if brown_out is not None and brown_out.voltage.max >= board.supply.voltage.min:
         text = f"brown_out.voltage of {brown_out.voltage} is not below the supply's lowest voltage of {board.supply.voltage.min:g} V"
@@ -234,6 +245,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         assumed,
         tuple(libraries),
         board.controller,
+        all_off,
     )
 
 

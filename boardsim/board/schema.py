@@ -21,6 +21,7 @@ from boardsim.parts.supply import Supply
 from boardsim.parts.temperature import COLDEST, HOTTEST
 from boardsim.quantities import (
     CAPACITANCE,
+    CURRENT,
     FREQUENCY,
     POSITIVE_RESISTANCE,
     RESISTANCE,
@@ -158,10 +159,21 @@ class Exclusive(Record):
     reason: Name | None = None
 
 
+class AllOff(Record):
+    """Channels that must all be off soon after the firmware has fallen silent."""
+
+    within: Annotated[Quantity, TIME] = Field(description="from the last latch edge on")
+    channels: str | None = Field(None, description="which channels; all of the board if absent")
+
+
 class Limits(Record):
     """Limits of the board as a whole."""
 
     most_on: Annotated[int, Field(strict=True, ge=1)] | None = None
+    most_current: Annotated[Quantity, CURRENT] | None = Field(
+        None, description="what all coils together may carry at once"
+    )
+    all_off: AllOff | None = Field(None, description="when all must be off after the last register frame")
     brown_out: BrownOut | None = None
     exclusive: tuple[Exclusive, ...] = ()
     pulse_error: Annotated[Quantity, SHARE] = assume(

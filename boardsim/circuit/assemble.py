@@ -11,6 +11,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
 from boardsim.parts.elements import Port, Signal, plus
 from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule
+from boardsim.quantities import Quantity
 
 RAIL = "rail"
 SUPPLY = "supply_out"
@@ -115,6 +116,8 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> De
     parts.signals[None, "i_total"] = total
     parts.units[None, "i_total"] = "A"
     parts.rules.append(PlacedRule(_rail_rule(board), None, "coil rail", "board"))
+    if board.limits.most_current is not None:
+        parts.rules.append(PlacedRule(_current_rule(board.limits.most_current), None, "[limits]", "board"))
     vectors = dict.fromkeys(name for signal in parts.signals.values() for _, name in signal)
     return Deck(
         parts.builder.netlist(),
@@ -164,6 +167,12 @@ def _rail_rule(board: Board) -> Rule:
         "coil rail",
         board.limits.guard_band.typ,
     )
+
+
+def _current_rule(most: Quantity) -> Rule:
+    """What the firmware may draw at once, held against what the coils carry and not against their nameplates."""
+    limit = Limit.of(most, "most_current", "A", None, most.min)
+    return PeakRule("most-current", "i_total", limit, "misbehave", "the current of all coils together", "a stagger")
 
 
 def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 from pydantic import Field, ValidationError
 
@@ -14,6 +15,9 @@ from boardsim.board.toml_file import TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
 from boardsim.parts.record import Name, Record, name_from
 from boardsim.quantities import TIME, Quantity, in_units
+
+if TYPE_CHECKING:
+    from boardsim.firing.schedule import Firing
 
 MOST_PULSES = 1_000_000
 
@@ -64,12 +68,16 @@ class Pulse:
 
 @dataclass(frozen=True)
 class Pattern:
-    """Pulses by start, and the time until which a run looks. [s]"""
+    """Pulses by start, and the time until which a run looks. [s]
+
+    `recorded` is what the outputs really did, where the pulses were read from a capture of the bus.
+    """
 
     path: Path
     name: str
     duration: float | None
     pulses: tuple[Pulse, ...]
+    recorded: Firing | None = None
 
 
 def read_pattern(path: Path, board: Board) -> Pattern:
@@ -80,7 +88,17 @@ def read_pattern(path: Path, board: Board) -> Pattern:
     InputError
         With every mistake found: file, line, what was found, what is allowed.
     """
-    file = read_toml(path, "pattern")
+    return pattern_of(read_toml(path, "pattern"), board)
+
+
+def pattern_of(file: TomlFile, board: Board) -> Pattern:
+    """The pattern that a TOML file holds.
+
+    Raises
+    ------
+    InputError
+        With every mistake found: file, line, what was found, what is allowed.
+    """
     if "supply" in file.data and "pulses" not in file.data:
         raise InputError([file.problem((), "is a board; name the board first, then the pattern")])
     try:
@@ -108,12 +126,12 @@ def read_pattern(path: Path, board: Board) -> Pattern:
             )
     if problems:
         raise InputError(problems)
-    return Pattern(
-        path,
-        raw.name or name_from(path.stem, "pattern"),
-        duration,
-        tuple(sorted(pulses, key=lambda p: (p.start, p.channel))),
-    )
+    return Pattern(file.path, raw.name or name_from(file.path.stem, "pattern"), duration, by_start(pulses))
+
+
+def by_start(pulses: Iterable[Pulse]) -> tuple[Pulse, ...]:
+    """Pulses in the order in which a pattern holds them."""
+    return tuple(sorted(pulses, key=lambda p: (p.start, p.channel)))
 
 
 def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problems: list[Problem]) -> list[Pulse]:

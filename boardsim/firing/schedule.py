@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from boardsim.board.reader import Board
+from boardsim.firing.bus import Recorded
 from boardsim.firing.pattern import Pattern, Pulse, snapped
 from boardsim.firing.registers import ChainState, frame_time, last_bit, shift_in
 from boardsim.parts.controller import Controller
@@ -17,6 +18,11 @@ from boardsim.parts.controller import Controller
 Floats = NDArray[np.float64]
 
 _SETTLE = 5.0  # L/R times to look at after the last edge
+
+
+def settling_time(board: Board) -> float:
+    """How long to look after the last edge, so that what a turn-off does to its switch is in the run. [s]"""
+    return _SETTLE * max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels)
 
 
 @dataclass(frozen=True)
@@ -84,6 +90,8 @@ class Firing:
         Every pulse that the pattern commands, by start.
     jitter : float
         How much later than here a frame may start, each by itself. [s]
+    recorded : Recorded or None
+        The bus as it was captured, where it was: then nothing but the outputs tells what was commanded.
     """
 
     duration: float
@@ -97,6 +105,7 @@ class Firing:
     frame_time: float
     asked: tuple[Pulse, ...] = ()
     jitter: float = 0.0
+    recorded: Recorded | None = None
 
     def channels_on(self, t: float) -> tuple[int, ...]:
         """The channels that are on at a time."""
@@ -108,11 +117,15 @@ def fire(board: Board, pattern: Pattern) -> Firing:
 
     Notes
     -----
+    What was recorded has been through it already.
+
     Starts and widths are first rounded to the controller's tick. The controller starts a register frame as soon as a change
     is due and the last frame is latched and its pause over. A frame carries every change that is due until it starts;
     changes that come while a frame is under way wait for the next one. All changes of a frame appear together, at its latch
     edge. Jitter is left out here: it moves every edge by up to as much again, which `verdict` adds to what it finds.
     """
+    if pattern.recorded is not None:
+        return pattern.recorded
     chain, controller = board.chain, board.controller or Controller()
     spent = frame_time(chain)
     delay = chain.register_.propagation.typ
@@ -160,10 +173,9 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         Pulse(c, asked_at[c, on].start, 0.0) for c, off, on in _pauses(asked) if latched[c, off] == latched[c, on]
     )
     last = max([latch + delay, *(p.stop for pair in timed for p in pair)])
-    tau = max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels if c.coil.resistance.min > 0)
     # Also where a duration was asked for: what the last turn-off does to its switch comes after it.
-    duration = max(pattern.duration or 0.0, last + _SETTLE * tau)
-    on = {c.number: _spans(levels[c.output], active[c.output], duration) for c in board.channels}
+    duration = max(pattern.duration or 0.0, last + settling_time(board))
+    on = {c.number: on_times(levels[c.output], active[c.output], duration) for c in board.channels}
     return Firing(
         duration,
         {o: tuple(v) for o, v in levels.items()},
@@ -254,8 +266,8 @@ def _compare(
             wrong[c.number] = WrongOutput(c.number, at, wanted[c.number])
 
 
-def _spans(levels: list[tuple[float, bool]], active: bool, end: float) -> Floats:
-    """On-times of a channel as rows (on, off)."""
+def on_times(levels: Sequence[tuple[float, bool]], active: bool, end: float) -> Floats:
+    """On-times of a channel, whose switch is on at output level `active`, until `end` [s]: rows (on, off), (n, 2). [s]"""
     rows: list[tuple[float, float]] = []
     since: float | None = None
     for t, level in levels:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from pydantic import model_validator
+from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Part, Stamp, Surroundings, listed
@@ -15,6 +15,7 @@ from boardsim.quantities import (
     CURRENT,
     INDUCTANCE,
     POSITIVE_RESISTANCE,
+    POSITIVE_TIME,
     RESISTANCE,
     TEMPERATURE,
     TEMPERATURE_RISE,
@@ -44,6 +45,12 @@ class Coil(Part):
     core_loss: Annotated[Quantity, POSITIVE_RESISTANCE] | None = None
     pull_in: Annotated[Quantity, CURRENT] | None = None
     release: Annotated[Quantity, CURRENT] | None = None
+    longest_on: Annotated[Quantity, POSITIVE_TIME] | None = Field(
+        None, description="longest time that the firmware may leave it on at once"
+    )
+    least_off: Annotated[Quantity, POSITIVE_TIME] | None = Field(
+        None, description="least time that the firmware has to leave it off before the next pulse"
+    )
     rise: Annotated[Quantity, TEMPERATURE_RISE] = assume(
         "0 K",
         TEMPERATURE_RISE,

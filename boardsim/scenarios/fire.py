@@ -27,6 +27,8 @@ from boardsim.scenarios.audited import CornerResult, Measure
 from boardsim.scenarios.crew import Crew
 from boardsim.verdict.closeups import Closeup, take_closeups, wants_closeup
 from boardsim.verdict.findings import EdgeTimes, Finding, Result, Timing, Traces, overall
+from boardsim.verdict.firmware import judge_firmware, not_given
+from boardsim.verdict.recorded import assumptions_of_capture, judge_recorded, told
 from boardsim.verdict.switching import judge_switching
 
 
@@ -39,6 +41,7 @@ def fire_pattern(
     progress: Callable[[float], None] | None = None,
     measure: Measure | None = None,
     pictured: bool = True,
+    firmware: bool = True,
 ) -> Result:
     """Fire a pattern on a board.
 
@@ -54,6 +57,8 @@ def fire_pattern(
         Told the share of the work done, from any thread.
     measure, pictured
         See `run_corner`.
+    firmware : bool
+        Whether the rules for the firmware are judged; a question's own pulses are not the firmware's.
 
     Raises
     ------
@@ -64,11 +69,12 @@ def fire_pattern(
     """
     if crew is None:
         with Crew() as own:
-            return fire_pattern(board, pattern, keep, strict, own, progress, measure, pictured)
+            return fire_pattern(board, pattern, keep, strict, own, progress, measure, pictured, firmware)
     began = time.perf_counter()
     firing = fire(board, pattern)
     spent_firing = time.perf_counter() - began
-    switching = judge_switching(board, firing)
+    switching = [*judge_switching(board, firing), *judge_recorded(board, firing)]
+    switching += judge_firmware(board, firing) if firmware else []
     wanted = corners(board, min(p.width for p in pattern.pulses))
     began = time.perf_counter()
     run = partial(run_corners, board, firing, also=switching, measure=measure, pictured=pictured)
@@ -90,9 +96,9 @@ def fire_pattern(
         firing.duration,
         overall(findings, proven, strict),
         tuple(findings),
-        assumptions_of(board, sampled),
+        (*assumptions_of(board, sampled), *assumptions_of_capture(firing)),
         tuple(r.audit for r in results),
-        _firing_sentences(board, firing),
+        _firing_sentences(board, firing, firmware),
         _traces(board, firing, shown),
         _deciding_deck(findings, sampled),
         (Timing("register frames", spent_firing), *timings_of(results, spent_running)),
@@ -118,7 +124,11 @@ def edge_times(board: Board, firing: Firing) -> tuple[EdgeTimes, ...]:
     )
 
 
-def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
+def _firing_sentences(board: Board, firing: Firing, firmware: bool) -> tuple[str, ...]:
+    rules = not_given(board) if firmware else ""
+    missing = (rules,) if rules else ()
+    if firing.recorded is not None:
+        return (*told(firing), *missing)
     lines = [
         f"{firing.frames} register frames of {in_units(firing.frame_time, 's')} each "
         f"({board.chain.outputs} bits at {in_units(board.chain.clock.typ, 'Hz')} and the latch)"
@@ -133,7 +143,7 @@ def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
             f"their width changes by up to {in_units(abs(change) if abs(change) > 1e-12 else 0.0, 's')}"
         )
         lines += _rounded(board, firing)
-    return tuple(lines)
+    return (*lines, *missing)
 
 
 def _rounded(board: Board, firing: Firing) -> Iterator[str]:

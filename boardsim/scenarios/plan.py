@@ -16,7 +16,8 @@ from boardsim.board.ranges import read_range, write_range
 from boardsim.board.reader import Board, problems_of, read_board
 from boardsim.board.toml_file import Keys, TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.firing.pattern import Pattern, read_pattern
+from boardsim.firing.pattern import Pattern
+from boardsim.firing.sources import read_source
 from boardsim.parts.record import Name, Record, said, shown
 from boardsim.quantities import POSITIVE_TIME, TEMPERATURE, VOLTAGE, Quantity
 from boardsim.verdict.expectations import Expectation, Expected, KnownFailure
@@ -235,7 +236,7 @@ def _scenario(
         file.path,
         record.question,
         board,
-        read_pattern(folder / record.pattern, board) if record.pattern is not None else None,
+        read_source(folder / record.pattern, board) if record.pattern is not None else None,
         record.channel,
         bool(record.every_clamp),
         record.width.typ if record.width is not None else None,

@@ -188,7 +188,7 @@ def _turn_off(
     pattern = release_pattern(one)
     firing = fire(one, pattern)
     watch = ReleaseWatch(one, firing)
-    result = fire_pattern(one, pattern, keep, strict, crew, progress, watch, pictured=own)
+    result = fire_pattern(one, pattern, keep, strict, crew, progress, watch, pictured=own, firmware=False)
     # How many channels are on at once cannot be broken by one, whether or not a limit was given.
     findings = tuple(f for f in result.findings if f.shape != "count")
     if not watch.found:

@@ -10,6 +10,7 @@ from pydantic.json_schema import GenerateJsonSchema
 
 from boardsim.board.schema import BoardFile
 from boardsim.errors import InputError
+from boardsim.firing.capture import CaptureFile
 from boardsim.firing.pattern import PatternFile
 from boardsim.parts.record import Record
 from boardsim.quantities import Quantity
@@ -52,6 +53,8 @@ inductance = "90 mH +/- 20 %"
 pull_in = "0.25 A"                    # below this it does not move
 release = "0.05 A"                    # above this it does not let go
 rise = "30 K"                         # how much warmer than the air the winding gets
+# longest_on = "200 ms"               # rules for the firmware: how long it may leave one on,
+# least_off = "20 ms"                 # and how long it must leave it off before the next pulse
 
 [channels."0-7"]                      # eight channels that are built alike
 label = "gate {n}"
@@ -70,6 +73,8 @@ clamp = { kind = "diode", diode = "fast-2a" }
 [limits]
 most_on = 4                           # channels that may be on at once
 brown_out = { voltage = "18 V", lasting = "2 ms" }   # the board fails if the coil rail is below for longer
+# most_current = "2 A"                # what all coils together may carry at once
+# all_off = { within = "1 ms" }       # when all must be off after the firmware's last register frame
 # [[limits.exclusive]]
 # channels = "0-1"
 # most = 1
@@ -137,8 +142,13 @@ def write_starter(folder: Path) -> tuple[Path, Path, Path]:
 
 
 def json_schema(what: str) -> dict[str, Any] | None:
-    """The JSON Schema of "board", "pattern" or "scenarios" files; None for any other word."""
-    models: dict[str, type[Record]] = {"board": BoardFile, "pattern": PatternFile, "scenarios": ScenarioFile}
+    """The JSON Schema of "board", "pattern", "capture" or "scenarios" files; None for any other word."""
+    models: dict[str, type[Record]] = {
+        "board": BoardFile,
+        "pattern": PatternFile,
+        "capture": CaptureFile,
+        "scenarios": ScenarioFile,
+    }
     model = models.get(what)
     if model is None:
         return None

@@ -91,7 +91,7 @@ class Runs:
     assumptions: dict[Assumption, None] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
-        limits = self.board.limits.model_copy(update={"most_on": None})
+        limits = self.board.limits.model_copy(update={"most_on": None, "most_current": None})
         self.hardware = replace(self.board, limits=limits, exclusive=())
         self.corners = corners(self.board, self.width)
         self.longest = slow_rail(self.board)

@@ -110,7 +110,7 @@ def notes_on(
     notes = [answer.sentence] if answer.verdict == "pass" else []
     notes += [
         "what counts here is what the hardware stands: how many channels the firmware may turn on and which exclude each "
-        "other ([limits] most_on, exclusive) did not decide which number passes",
+        "other ([limits] most_on, most_current, exclusive) did not decide which number passes",
         f"the findings below the answer are those of {shown.step.on} at once ({shown.step.who})",
     ]
     if len(runs.builds) > 1:

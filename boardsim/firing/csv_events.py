@@ -1,0 +1,197 @@
+"""Lists of events as CSV: one pulse per line, for those whose pulses come out of a table or another program."""
+
+from __future__ import annotations
+
+import csv
+import re
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+from boardsim.board.reader import Board
+from boardsim.errors import InputError, Problem, QuantityError
+from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, snapped
+from boardsim.parts.record import name_from, nearest, shortened
+from boardsim.quantities import TIME, parse
+
+LARGEST_FILE = 128 * 1024 * 1024  # [byte]; the most pulses that a pattern may have fill a third of it
+_MOST_PROBLEMS = 20  # told one by one; a column in the wrong unit is a mistake in every line
+_DELIMITERS = ",;\t"
+_COLUMNS = ("channel", "start", "width", "stop")
+_TITLE = re.compile(r"(\w+)\s*(?:[\[(]\s*([^\])]+?)\s*[\])])?")
+_NUMBER = re.compile(r"[0-9]*\.?[0-9]+(?:[eE][+-]?[0-9]+)?|[0-9]+\.")
+
+
+@dataclass(frozen=True)
+class _Column:
+    """Where a quantity stands in each line; `unit` in seconds where the title names one."""
+
+    place: int
+    unit: float | None
+
+
+def read_events(path: Path, board: Board) -> Pattern:
+    """Read a list of events for a board.
+
+    Raises
+    ------
+    InputError
+        With the mistakes found: file, line, what was found, what is allowed.
+
+    Notes
+    -----
+    The first line that is neither empty nor begins with "#" names the columns: `channel` (its number, or its label on
+    the board), `start`, and either `width` or `stop`, in any order. Times carry their unit ("10 ms"), or the title does,
+    in brackets: `start [ms]`. Columns are separated by comma, semicolon or tab, numbers have a decimal point.
+    """
+    text = _text(path)
+    lines = text.split("\n")
+    wanted = [(k, line) for k, line in enumerate(lines, 1) if line.strip() and not line.lstrip().startswith("#")]
+    if not wanted:
+        raise InputError(
+            [Problem(str(path), None, "is empty; the first line names the columns: channel, start, width")]
+        )
+    number, title = wanted[0]
+    delimiter = max(_DELIMITERS, key=title.count)
+    try:
+        titles = _cells(title, delimiter)
+    except QuantityError as err:
+        raise InputError([Problem(str(path), number, str(err))]) from None
+    columns = _columns(titles, path, number)
+    known = {c.label: c.number for c in board.channels} | {str(c.number): c.number for c in board.channels}
+    problems: list[Problem] = []
+    pulses: list[Pulse] = []
+    for k, line in wanted[1:]:
+        try:
+            pulses.append(_pulse(_cells(line, delimiter), columns, known, board))
+        except QuantityError as err:
+            problems.append(Problem(str(path), k, str(err)))
+            if len(problems) == _MOST_PROBLEMS:
+                problems.append(Problem(str(path), k, "mistakes below this line are not told; mend these first"))
+                break
+        if len(pulses) > MOST_PULSES:
+            problems.append(Problem(str(path), k, f"with this line the list has more than {MOST_PULSES} pulses"))
+            break
+    if not problems and not pulses:
+        problems.append(Problem(str(path), number, "no pulse follows the line of titles; write one per line"))
+    if problems:
+        raise InputError(problems)
+    return Pattern(path, name_from(path.stem, "events"), None, by_start(pulses))
+
+
+def _text(path: Path) -> str:
+    def refuse(text: str, line: int | None = None) -> InputError:
+        return InputError([Problem(str(path), line, text)])
+
+    try:
+        with path.open("rb") as handle:
+            raw = handle.read(LARGEST_FILE + 1)
+    except (OSError, ValueError) as err:
+        said = getattr(err, "strerror", None) or err
+        raise refuse(f"cannot be read: {said}; name an existing list of events") from err
+    if len(raw) > LARGEST_FILE:
+        raise refuse(f"is larger than {LARGEST_FILE // 2**20} MiB, which no list of {MOST_PULSES} pulses is")
+    try:
+        return raw.decode("utf-8-sig")  # spreadsheets put a byte order mark first
+    except UnicodeDecodeError as err:
+        line = raw[: err.start].count(b"\n") + 1
+        raise refuse("is not UTF-8 text; save the list as CSV in UTF-8", line) from err
+
+
+def _cells(line: str, delimiter: str) -> list[str]:
+    try:
+        (cells,) = csv.reader([line.strip()], delimiter=delimiter, skipinitialspace=True, strict=True)
+    except (csv.Error, ValueError) as err:
+        raise QuantityError(
+            f"is not CSV: {err}; close every quotation mark, and break no line within a value"
+        ) from None
+    return [cell.strip() for cell in cells]
+
+
+def _columns(titles: list[str], path: Path, line: int) -> Mapping[str, _Column]:
+    """The columns by name.
+
+    Raises
+    ------
+    InputError
+        If a title is not known, stands twice, or one is missing.
+    """
+    problems: list[str] = []
+    found: dict[str, _Column] = {}
+    for place, title in enumerate(titles):
+        match = _TITLE.fullmatch(title)
+        name = match[1].lower() if match else title
+        if name not in _COLUMNS:
+            problems.append(
+                f'column "{shortened(title)}" is not known{nearest(name, [*_COLUMNS])}; known: {", ".join(_COLUMNS)}'
+            )
+        elif name in found:
+            problems.append(f'column "{name}" stands twice; leave one out')
+        else:
+            unit = match[2] if match else None
+            try:
+                found[name] = _Column(place, None if unit is None else parse(f"1 {unit}", TIME).typ)
+            except QuantityError as err:
+                problems.append(f'column "{shortened(title)}": {err}')
+            if name == "channel" and unit is not None:
+                problems.append('column "channel" has no unit; write its number or its label')
+    if not problems:
+        problems += [f'column "{name}" is missing' for name in ("channel", "start") if name not in found]
+        if ("width" in found) == ("stop" in found):
+            problems.append('needs one of the columns "width" and "stop", and not both')
+    if problems:
+        raise InputError([Problem(str(path), line, text) for text in problems])
+    return found
+
+
+def _pulse(cells: list[str], columns: Mapping[str, _Column], known: Mapping[str, int], board: Board) -> Pulse:
+    """The pulse of one line.
+
+    Raises
+    ------
+    QuantityError
+        If it is none; says why.
+    """
+    if len(cells) != len(columns):
+        raise QuantityError(f"has {len(cells)} columns where the titles name {len(columns)}")
+    named = cells[columns["channel"].place]
+    channel = known.get(named)
+    if channel is None:
+        raise QuantityError(
+            f"channel {shortened(named)!r} is not on the board {board.path.name}{nearest(named, [*known])}; "
+            "write its number or its label"
+        )
+    times = dict(_times(cells, columns))
+    start = snapped(times["start"])
+    width = snapped(times["width"] if "width" in times else times["stop"] - start)
+    if width <= 0:
+        text = "a pulse of 0 s is none; give its on-time" if "width" in times else "the pulse stops before it starts"
+        raise QuantityError(text)
+    return Pulse(channel, start, width)
+
+
+def _times(cells: list[str], columns: Mapping[str, _Column]) -> Iterator[tuple[str, float]]:
+    """Every time of a line. [s]
+
+    Raises
+    ------
+    QuantityError
+        If one is no time.
+    """
+    for name, column in columns.items():
+        if name == "channel":
+            continue
+        text = cells[column.place]
+        if column.unit is None:
+            found = parse(text, TIME)
+            if found.toleranced:
+                raise QuantityError(f"{name}: a commanded time has no tolerance; leave it out")
+            yield name, found.typ
+        elif _NUMBER.fullmatch(text):
+            value = float(text) * column.unit
+            TIME.check(value, text)
+            yield name, value
+        else:
+            raise QuantityError(
+                f"{name}: {shortened(text)!r} is not a plain number; its unit stands in the title, the point is decimal"
+            )
