@@ -12,7 +12,6 @@ from boardsim.parts.elements import (
     Bipolar,
     Capacitor,
     CurrentDrive,
-    CurrentLaw,
     Drive,
     Element,
     Inductor,
@@ -20,6 +19,7 @@ from boardsim.parts.elements import (
     Model,
     PowerMosfet,
     Resistor,
+    VoltageLaw,
 )
 
 TITLE = "boardsim deck"
@@ -64,9 +64,8 @@ class Builder:
                 case CurrentDrive():
                     # An I source's current flows from its first node through it to the second.
                     c.PieceWiseLinearCurrentSource(e.name, e.minus, e.plus, values=list(e.points))
-                case CurrentLaw():
-                    # A B source's current flows from its first node through it to the second.
-                    c.BehavioralSource(e.name, e.minus, e.plus, current_expression=e.expression)
+                case VoltageLaw():
+                    c.BehavioralSource(e.name, e.plus, e.minus, voltage_expression=e.expression)
 
     def _model(self, model: Model) -> str:
         key = (model.type, tuple(sorted(model.parameters.items())))

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from typing import Annotated
 
 from boardsim.errors import QuantityError
+from boardsim.parts.base import Assumption
 from boardsim.parts.diode import THERMAL_VOLTAGE
 from boardsim.parts.elements import GROUND, Junction, Model
 from boardsim.parts.record import Record
@@ -14,6 +15,13 @@ from boardsim.quantities import CURRENT, VOLTAGE, Quantity
 
 JUNCTION_POTENTIAL = 0.75  # [V] of base-emitter and base-collector junction, ngspice's own default
 GRADING = 0.33  # [1] of both, ngspice's own default
+# How ngspice takes a transistor to the run's temperature, from figures at 25 degC: I_S by the band gap of silicon [eV] and the
+# exponent 3, which makes V_BE fall by about 2 mV/K, and the gains with T^1.5, about 0.5 %/K (from memory; SPICE's own
+# default is no growth at all). Resistances and breakdown are left as they are.
+WITH_TEMPERATURE = {"EG": 1.11, "XTI": 3.0, "XTB": 1.5, "TNOM": 25.0}
+TEMPERATURE_ASSUMED = Assumption(
+    "switch", "growth of the gains", "0.5 %/K", "with temperature, to the power of 1.5, from memory"
+)
 _BREAKDOWN_CURRENT = 1e-3  # [A], at which V_(BR)CEO is specified, common practice
 _LEAST_RISE = 1e-30  # [A], saturation current of a junction that must not conduct forward
 

@@ -43,19 +43,21 @@ class Bulk(Part):
         """The capacitor from node `rail` to ground."""
         c = corner.take(self.capacitance, "bulk")
         esr = max(corner.take(self.esr, "esr"), _MIN_ESR)
-        coil = Inductor("bulk_esl", "bulk_mid", GROUND, self.esl.typ)
-        through = plus(current(coil), scaled(1 / self.esl_loss.typ, voltage("bulk_mid")))
+        coil = Inductor("bulk_esl", rail, "bulk_mid", self.esl.typ)
+        through = plus(current(coil), scaled(1 / self.esl_loss.typ, voltage(rail, "bulk_mid")))
         return Stamp(
             elements=(
-                Capacitor("bulk", rail, "bulk_top", c),
-                Resistor("bulk_esr", "bulk_top", "bulk_mid", esr),
+                # The capacitor lies at ground: what its charge is rounded by, microamperes at steps of picoseconds, then
+                # meets its own conductance and not the loss resistance, where Newton's method could not get below it.
                 coil,
-                Resistor("bulk_loss", "bulk_mid", GROUND, self.esl_loss.typ),
+                Resistor("bulk_loss", rail, "bulk_mid", self.esl_loss.typ),
+                Resistor("bulk_esr", "bulk_mid", "bulk_top", esr),
+                Capacitor("bulk", "bulk_top", GROUND, c),
             ),
             probes=(
                 Probe("v_rail", voltage(rail), "V"),
-                Probe("v_bulk_c", voltage(rail, "bulk_top"), "V"),
-                Probe("v_bulk_port", voltage(rail, "bulk_mid"), "V"),
+                Probe("v_bulk_c", voltage("bulk_top"), "V"),
+                Probe("v_bulk_port", voltage("bulk_mid"), "V"),
                 Probe("i_bulk", through, "A"),
             ),
             ports=(Port("bulk capacitor", (("v_bulk_port", "i_bulk"),), store=("v_bulk_c", c), from_rest=True),),

@@ -107,8 +107,8 @@ class CurrentDrive:
 
 
 @dataclass(frozen=True)
-class CurrentLaw:
-    """A current from minus to plus through the source, given by an expression of node voltages. [A]"""
+class VoltageLaw:
+    """A voltage from plus to minus, given by an expression of node voltages and of currents of ammeters. [V]"""
 
     name: str
     plus: str
@@ -117,7 +117,7 @@ class CurrentLaw:
 
 
 Element = (
-    Resistor | Inductor | Capacitor | Junction | PowerMosfet | Bipolar | Ammeter | Drive | CurrentDrive | CurrentLaw
+    Resistor | Inductor | Capacitor | Junction | PowerMosfet | Bipolar | Ammeter | Drive | CurrentDrive | VoltageLaw
 )
 
 Signal = tuple[tuple[float, str], ...]

@@ -5,13 +5,16 @@ from __future__ import annotations
 from typing import Annotated, ClassVar, Literal
 
 from boardsim.parts.base import Corner, Part, Stamp, listed
-from boardsim.parts.elements import GROUND, Ammeter, CurrentLaw, Probe, Resistor, current, voltage
+from boardsim.parts.elements import GROUND, Ammeter, Probe, Resistor, VoltageLaw, current, voltage
 from boardsim.parts.rules import CeilingRule, Limit
 from boardsim.quantities import CURRENT, POSITIVE_RESISTANCE, RESISTANCE, VOLTAGE, Quantity, assume
 
-# Widths over which the two bends of the characteristic are rounded, so that Newton's method has a slope everywhere.
-_ONE_WAY_WIDTH = 10e-3  # [A]
-_CEILING_WIDTH = 5e-3  # share of the ceiling; a real supply's bend is no sharper
+# The two bends of the characteristic are rounded, so that its slope is continuous: widths and slopes beyond them, chosen
+# so that neither is seen in a result.
+_ONE_WAY_WIDTH = 1e-6  # [A]
+_BACKWARD = 10e3  # [ohm] against current into the supply
+_CEILING_WIDTH = 1e-5  # share of the ceiling
+_BEYOND_CEILING = 1e-3  # share of the ceiling by which a short circuit exceeds it
 
 
 class Supply(Part):
@@ -22,6 +25,12 @@ class Supply(Part):
     i = (V - v) / R between 0 and the ceiling: constant current at overload, nothing taken back above V. A ceiling with
     a tolerance counts at its lower end, in the model and as a limit. Ignores
     the control loop's response, soft start, hiccup and fold-back. An internal load keeps the idle rail defined.
+
+    The law is written as a voltage that depends on the current, v = V - R i - R_c r(i - ceiling) + R_b r(-i) with
+    r(x) = (x + sqrt(x^2 + 4 w^2)) / 2: flat in the middle, steep at both ends. Its inverse, a current that depends on the
+    voltage, is steep in the middle and flat at both ends; there Newton's method steps from one flat end to the other
+    for ever, and ngspice 39, which begins a shorter step where the failed one left off, never came back.
+    R_c: a short circuit draws 0.1 % more than the ceiling; R_b = 10 kohm.
     """
 
     role: ClassVar[str] = "supply"
@@ -39,18 +48,17 @@ class Supply(Part):
         """The supply between node `plus` and ground."""
         v_set = corner.take(self.voltage, "supply")
         r = max(self.resistance.typ, 1e-4)
-        inside = "supply_in"
-        asked = f"(({v_set!r}-V({inside}))/{r!r})"
-        one_way = f"(0.5*({asked}+sqrt({asked}*{asked}+{4 * _ONE_WAY_WIDTH**2!r})))"
-        law = one_way
+        emf, inside = "supply_emf", "supply_in"
+        meter, through = Ammeter("supply", inside, plus), Ammeter("supply_law", emf, inside)
+        i = "I(Vsupply_law)"
+        law = f"{v_set!r}-{r!r}*{i}+{_BACKWARD!r}*{_rounded(f'(-{i})', _ONE_WAY_WIDTH)}"
         if self.current_ceiling is not None:
             top = self.current_ceiling.min
-            gap = f"({one_way}-{top!r})"
-            law = f"0.5*({one_way}+{top!r}-sqrt({gap}*{gap}+{4 * (_CEILING_WIDTH * top) ** 2!r}))"
-        meter = Ammeter("supply", inside, plus)
+            law += f"-{v_set / (_BEYOND_CEILING * top)!r}*{_rounded(f'({i}-{top!r})', _CEILING_WIDTH * top)}"
         return Stamp(
             elements=(
-                CurrentLaw("supply", inside, GROUND, law),
+                VoltageLaw("supply", emf, GROUND, law),
+                through,
                 Resistor("supply_load", inside, GROUND, self.internal_load.typ),
                 meter,
             ),
@@ -74,3 +82,8 @@ class Supply(Part):
             # pivots, and keeps these: with hints for the output or the rail, runs on stiff supplies began volts off.
             hints={inside: v_set},
         )
+
+
+def _rounded(x: str, width: float) -> str:
+    """Nothing below 0 and x above it, rounded over a width. [unit of x]"""
+    return f"(0.5*({x}+sqrt({x}*{x}+{4 * width**2!r})))"

@@ -167,8 +167,6 @@ def test_every_library_part_holds_against_its_own_sheet(tmp_path: Path) -> None:
         name for name in records() if not library_part(name).proofs()
     ]
     assert sum(len(part.lines) for part in found) > 50
-    bad = {(p.part, p.proof.quantity): p.verdict for part in found for p in part.lines if p.verdict != "pass"}
-    # Known and in view: the junction capacitances with which the sink arrays' model converges turn it on some 25 ns late.
-    late = "delay to the output's falling edge"
-    assert bad == {("sink-array-7", late): "fail", ("sink-array-8", late): "fail"}
+    bad = {(p.part, p.proof.quantity): p.reason for part in found for p in part.lines if p.verdict != "pass"}
+    assert not bad
     assert not list(tmp_path.rglob("*.cir"))

@@ -14,6 +14,7 @@ from boardsim.engine.run import Engine
 from boardsim.parts.base import Corner
 from boardsim.parts.elements import Junction
 from boardsim.parts.switches.n_mosfet import NMosfet
+from boardsim.parts.switches.npn import Npn
 from boardsim.parts.zener import Zener
 
 pytestmark = pytest.mark.engine
@@ -117,3 +118,22 @@ def test_a_rectifiers_forward_voltage_falls_by_two_millivolts_per_kelvin(engine:
     text = plain(t, card("D", model.parameters), "D1 a 0 part", "I1 0 a 0", ".dc I1 0 1 0.1")
     measured = run_plain(engine, text, 1.0)["v(a)"][-1]
     assert measured == pytest.approx(0.93 - 2e-3 * (t - 25.0), abs=2e-3)
+
+
+@pytest.mark.parametrize("t", TEMPERATURES)
+def test_a_transistors_base_voltage_falls_and_its_gain_grows(engine: Engine, t: float) -> None:
+    """V_BE of silicon falls by 1.5 to 2.5 mV/K, gains grow by 0.3 to 1 %/K (common practice), at about a milliampere."""
+    part = library_part("npn-small")
+    assert isinstance(part, Npn)
+    model = card("NPN", part.parameters())
+
+    def read(at: float) -> tuple[float, float]:
+        text = plain(at, model, "Q1 c b 0 part", "VC c 0 5", "VB drive 0 0", "IB 0 b 0", ".dc IB 0 5u 0.5u")
+        waves = run_plain(engine, text, 5e-6)
+        return float(waves["v(b)"][-1]), float(-waves["i(vc)"][-1]) / 5e-6
+
+    (cold, gain_25), (volts, gain) = read(25.0), read(t)
+    low, high = sorted(slope * (t - 25.0) for slope in (-2.5e-3, -1.5e-3))
+    assert low <= volts - cold <= high
+    low, high = sorted((1 + share) ** (t - 25.0) for share in (0.003, 0.010))
+    assert low <= gain / gain_25 <= high

@@ -9,11 +9,11 @@ from pydantic import AfterValidator
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Part, Shelf, Stamp, Total, listed, named_part
 from boardsim.parts.clamp import in_series
+from boardsim.parts.darlington import DarlingtonArray
 from boardsim.parts.diode import EMISSION, junction_parameters
 from boardsim.parts.elements import Ammeter, Junction, Model, Port, Probe, current, scaled, voltage
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.rules import HeatRule, Limit, MeanRule, PeakRule
-from boardsim.parts.switches.darlington import DarlingtonArray
 from boardsim.parts.temperature import in_celsius
 from boardsim.quantities import VOLTAGE_DRIFT, assume
 

@@ -13,6 +13,8 @@ from boardsim.parts.base import Assumption, Corner, Part, Stamp, listed, named_p
 from boardsim.parts.bipolar import (
     GRADING,
     JUNCTION_POTENTIAL,
+    TEMPERATURE_ASSUMED,
+    WITH_TEMPERATURE,
     Saturation,
     breakdown_junction,
     junction_capacitance,
@@ -157,7 +159,8 @@ class Npn(Part):
         - T_R from the storage time t_s = tau_s ln((I_B1 + I_B2) / (I_C / B_F + I_B2)) with I_B1 = I_B2 = I_B and
           tau_s = a_F (T_F + a_R T_R) / (1 - a_F a_R), a = B / (1 + B) (Moll). High-level injection shortens it.
 
-        Valid from about a hundredth of the rated current up to the highest current of its points, at 25 degC.
+        Valid from about a hundredth of the rated current up to the highest current of its points; at 25 degC, and with what
+        ngspice makes of it elsewhere (`WITH_TEMPERATURE`).
 
         References
         ----------
@@ -186,7 +189,7 @@ class Npn(Part):
             "MJC": GRADING,
             "TF": t_f,
             "TR": max((tau * (1 - a_f * a_r) / a_f - t_f) / a_r, 0.0),
-            "TNOM": 25.0,
+            **WITH_TEMPERATURE,
         }
         return found if math.isinf(knee) else {**found, "IKF": knee}
 
@@ -259,7 +262,7 @@ class Npn(Part):
         if len(self.saturation) == 1:
             why = "small switching transistor, from memory; one saturation point leaves it open"
             gains.append(Assumption("switch", "reverse gain", f"{_REVERSE_GAIN:g}", why))
-        return (*numbers, *gains)
+        return (*numbers, *gains, TEMPERATURE_ASSUMED)
 
     def proofs(self) -> tuple[Proof, ...]:
         """Its saturation voltages, gains, base-emitter voltages and storage time."""
