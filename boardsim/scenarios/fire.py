@@ -156,10 +156,13 @@ def _rounded(board: Board, firing: Firing) -> Iterator[str]:
             for on, off in ((m.pulse.start, m.pulse.stop), (m.timed.start, m.timed.stop), (m.start, m.stop))
         )
         moved = sum(m.rounded is not None for m in firing.moved)
-        yield (
-            f"the timer's tick of {in_units(tick, 's')} moves {moved} of {len(firing.moved)} pulses; the most, "
-            f"{board.channel(m.pulse.channel).label}: asked {asked}, timer {timer}, output {'nothing' if m.swallowed else output}"
-        )
+        if not moved:
+            yield f"the timer's tick of {in_units(tick, 's')} moves no pulse"
+        else:
+            yield (
+                f"the timer's tick of {in_units(tick, 's')} moves {moved} of {len(firing.moved)} pulses; the most, "
+                f"{board.channel(m.pulse.channel).label}: asked {asked}, timer {timer}, output {'nothing' if m.swallowed else output}"
+            )
     if firing.jitter > 0:
         yield f"each edge may come up to {in_units(firing.jitter, 's')} later still (jitter); all edges stand in edges.csv"
 

@@ -163,9 +163,9 @@ def test_printed_figures_of_a_mosfet_are_proven(tmp_path: Path, name: str) -> No
 def test_every_library_part_holds_against_its_own_sheet(tmp_path: Path) -> None:
     with Crew() as crew:
         found = prove_parts(parts_to_prove((), True), tmp_path, crew)
-    assert [part.part for part in found if not part.lines] == [
+    assert sorted(part.part for part in found if not part.lines) == sorted(
         name for name in records() if not library_part(name).proofs()
-    ]
+    )
     assert sum(len(part.lines) for part in found) > 50
     bad = {(p.part, p.proof.quantity): p.reason for part in found for p in part.lines if p.verdict != "pass"}
     assert not bad
