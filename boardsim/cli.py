@@ -8,7 +8,7 @@ import signal
 import sys
 from collections.abc import Callable, Iterator
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, Any
+from typing import TYPE_CHECKING, Annotated, Any, Literal
 
 import typer
 
@@ -67,6 +67,12 @@ Libraries = Annotated[
         " is found by itself",
     ),
 ]
+Clocked = Annotated[
+    bool,
+    typer.Option(
+        "--clocked", help="run the registers flip-flop by flip-flop, clocked by their lines; short patterns only"
+    ),
+]
 
 
 @app.command(
@@ -79,6 +85,7 @@ def fire(
         Path | None,
         typer.Option(metavar="DIR", help="folder for the results; out/BOARD-PATTERN if not given"),
     ] = None,
+    clocked: Clocked = False,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
     library: Libraries = None,
@@ -98,7 +105,8 @@ def fire(
     folder = out or Path("out") / f"{plain_path(the_board.name)}-{plain_path(the_pattern.name)}"
     make_ready(folder, (board, pattern))
     with _working(f"{the_board.name}, {the_pattern.name}", time_limit) as (crew, progress):
-        result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress)
+        detail: Literal["edges", "clocked"] = "clocked" if clocked else "edges"
+        result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress, detail=detail)
     _present(result, folder)
 
 
@@ -204,6 +212,7 @@ def deck(
             help="which of the worst corners of the tolerances, counted from 1; the first if not given",
         ),
     ] = 1,
+    clocked: Clocked = False,
     library: Libraries = None,
 ) -> None:
     """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
@@ -215,7 +224,8 @@ def deck(
     if to is not None and any(to.exists() and to.samefile(one) for one in (board, pattern) if one.exists()):
         raise InputError(f"--to {to}: is one of the files to read; name another")
     the_board = read_board(board, library or ())
-    names, text = write_deck(the_board, read_pattern(pattern, the_board), corner)
+    the_pattern = read_pattern(pattern, the_board)
+    names, text = write_deck(the_board, the_pattern, corner, "clocked" if clocked else "edges")
     if text is None:
         listed = "; ".join(f"{i} {name}" for i, name in enumerate(names, 1))
         raise InputError(f"--corner {corner}: this board has {len(names)}: {listed}")

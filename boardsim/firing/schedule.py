@@ -62,6 +62,8 @@ class Firing:
         [s]
     asked : tuple of Pulse
         Every pulse that the pattern commands, by start.
+    sent : tuple of (time, image)
+        When the controller starts each register frame, and the image that it sends. [s]
     """
 
     duration: float
@@ -74,6 +76,7 @@ class Firing:
     frames: int
     frame_time: float
     asked: tuple[Pulse, ...] = ()
+    sent: tuple[tuple[float, int], ...] = ()
 
     def channels_on(self, t: float) -> tuple[int, ...]:
         """The channels that are on at a time."""
@@ -105,6 +108,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     _compare(state, wanted, board, 0.0, active, wrong)
 
     image, free, frames, i = 0, 0.0, 0, 0
+    sent: list[tuple[float, int]] = []
     while i < len(asked):
         start = max(asked[i][0], free)
         while i < len(asked) and asked[i][0] <= start:
@@ -116,6 +120,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
             i += 1
         free = start + spent
         frames += 1
+        sent.append((start, image))
         before, state = state, shift_in(state, image, chain)
         changed = before.storage ^ state.storage
         for output in watched:
@@ -145,6 +150,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         frames,
         spent,
         pattern.pulses,
+        tuple(sent),
     )
 
 

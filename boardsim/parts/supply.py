@@ -35,12 +35,12 @@ class Supply(Part):
         "10 kohm", POSITIVE_RESISTANCE, "feedback divider and indicator of a supply, from memory"
     )
 
-    def stamp(self, plus: str, corner: Corner) -> Stamp:
-        """The supply between node `plus` and ground."""
+    def stamp(self, plus: str, corner: Corner, setting: str = "") -> Stamp:
+        """The supply between node `plus` and ground; its voltage is that of node `setting`, where one is named."""
         v_set = corner.take(self.voltage, "supply")
         r = max(self.resistance.typ, 1e-4)
         inside = "supply_in"
-        asked = f"(({v_set!r}-V({inside}))/{r!r})"
+        asked = f"(({f'V({setting})' if setting else repr(v_set)}-V({inside}))/{r!r})"
         one_way = f"(0.5*({asked}+sqrt({asked}*{asked}+{4 * _ONE_WAY_WIDTH**2!r})))"
         law = one_way
         if self.current_ceiling is not None:
@@ -72,5 +72,5 @@ class Supply(Part):
             assumptions=listed("supply", resistance=self.resistance, internal_load=self.internal_load),
             # This node alone, which has a path to ground. ngspice 39 ties hinted nodes to their hint while it chooses its
             # pivots, and keeps these: with hints for the output or the rail, runs on stiff supplies began volts off.
-            hints={inside: v_set},
+            hints={} if setting else {inside: v_set},
         )

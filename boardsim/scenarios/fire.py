@@ -10,6 +10,7 @@ from pathlib import Path
 
 from boardsim.board.corners import corners, slow_rail
 from boardsim.board.reader import Board
+from boardsim.circuit.assemble import Detail, assemble, refuse_too_many
 from boardsim.firing.pattern import Pattern
 from boardsim.firing.schedule import Firing, fire
 from boardsim.quantities import in_units
@@ -39,6 +40,7 @@ def fire_pattern(
     progress: Callable[[float], None] | None = None,
     measure: Measure | None = None,
     pictured: bool = True,
+    detail: Detail = "edges",
 ) -> Result:
     """Fire a pattern on a board.
 
@@ -54,24 +56,29 @@ def fire_pattern(
         Told the share of the work done, from any thread.
     measure, pictured
         See `run_corner`.
+    detail : {"edges", "clocked"}
+        Registers as their known output edges, or flip-flop by flip-flop.
 
     Raises
     ------
     EngineMissing, EngineStopped
         If there is no engine, or the run was interrupted.
     InputError
-        If the waveforms would not fit on the disk.
+        If the waveforms would not fit on the disk, or the pattern is too long for clocked registers.
     """
     if crew is None:
         with Crew() as own:
-            return fire_pattern(board, pattern, keep, strict, own, progress, measure, pictured)
+            return fire_pattern(board, pattern, keep, strict, own, progress, measure, pictured, detail)
     began = time.perf_counter()
     firing = fire(board, pattern)
     spent_firing = time.perf_counter() - began
+    if detail == "clocked":
+        refuse_too_many(board, firing)
     switching = judge_switching(board, firing)
     wanted = corners(board, min(p.width for p in pattern.pulses))
     began = time.perf_counter()
-    run = partial(run_corners, board, firing, also=switching, measure=measure, pictured=pictured)
+    made = partial(assemble, detail=detail)
+    run = partial(run_corners, board, firing, also=switching, measure=measure, pictured=pictured, assembled=made)
     results = run(wanted, keep, crew, progress)
     longest = slow_rail(board)
     if longest is not None and any(dips(board, r) for r in results):
@@ -92,7 +99,7 @@ def fire_pattern(
         tuple(findings),
         assumptions_of(board, sampled),
         tuple(r.audit for r in results),
-        _firing_sentences(board, firing),
+        _firing_sentences(board, firing, detail),
         _traces(board, firing, shown),
         _deciding_deck(findings, sampled),
         (Timing("register frames", spent_firing), *timings_of(results, spent_running)),
@@ -103,7 +110,7 @@ def fire_pattern(
     )
 
 
-def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
+def _firing_sentences(board: Board, firing: Firing, detail: Detail) -> tuple[str, ...]:
     lines = [
         f"{firing.frames} register frames of {in_units(firing.frame_time, 's')} each "
         f"({board.chain.outputs} bits at {in_units(board.chain.clock.typ, 'Hz')} and the latch)"
@@ -117,6 +124,8 @@ def _firing_sentences(board: Board, firing: Firing) -> tuple[str, ...]:
             f"({board.channel(late.pulse.channel).label}, {in_units(late.pulse.start, 's', 4)}); "
             f"their width changes by up to {in_units(abs(change) if abs(change) > 1e-12 else 0.0, 's')}"
         )
+    if detail == "clocked":
+        lines.append("the registers were run flip-flop by flip-flop, clocked by their lines")
     return tuple(lines)
 
 

@@ -1,0 +1,197 @@
+"""A chain of registers at circuit level: flip-flops clocked by lines, outputs that follow the logic rail or let go.
+
+The digital part is event-driven (ngspice's XSPICE devices), everything that carries a current is analogue. A register that
+is a voltage source with known edges (`Register.drive`) does the same for a thousandth of the time; this one also wakes up with
+any contents, loses them, is cleared, and lets its outputs float.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from boardsim.parts.elements import (
+    GROUND,
+    CurrentLaw,
+    Element,
+    FlipFlop,
+    Gate,
+    ToAnalog,
+    ToDigital,
+    VoltageLaw,
+)
+from boardsim.parts.register import Register
+
+EVENT = 1e-9  # [s], the least delay of an event-driven device of ngspice
+_ENABLING = 0.05  # [V], over which outputs begin to conduct as the logic rail rises: a slope for Newton's method
+_LEANING = 0.1  # [V], over which a leakage fades as its pin comes to rest, for the same reason
+_STAGE = 3e-9  # [s], of a shift stage inside its register, from memory; only the serial output has the printed delay
+
+
+@dataclass(frozen=True)
+class Nets:
+    """Nodes that a chain is wired to. Analogue: logic rail, data, clock and latch lines. Digital, "" where there is none:
+    `lost` (the rail is too low for contents to be kept) and `clear` (the shift stage is held at zero).
+    """
+
+    rail: str
+    data: str
+    clock: str
+    latch: str
+    lost: str = ""
+    clear: str = ""
+
+
+@dataclass(frozen=True)
+class Contents:
+    """What shift and storage stage of a chain hold at first, and again after their rail was lost; bit k is output k."""
+
+    shift: int
+    storage: int
+
+
+def level(register: Register, rail: str, which: str) -> str:
+    """An input level that moves with the logic rail, as an expression of the rail's node.
+
+    Parameters
+    ----------
+    register : Register
+    rail : str
+        Node.
+    which : {"threshold", "high"}
+        Where an input of this kind switches, halfway between what is surely low and surely high; or surely high. [V]
+
+    Notes
+    -----
+    Straight lines between five supplies of the register's range, and from its lowest supply to nothing at no supply.
+    """
+    low, high = register.supply_low.typ, register.supply_high.typ
+    points = [(0.0, 0.0)]
+    for k in range(5):
+        volts = low + k * (high - low) / 4
+        below, above = register.input_levels(volts)
+        points.append((volts, above if which == "high" else (below + above) / 2))
+    return f"pwl(V({rail}),{','.join(f'{x!r},{y!r}' for x, y in points)})"
+
+
+def comparator(name: str, line: str, bound: str, inverted: bool = False) -> tuple[Element, ...]:
+    """Digital node `name`: one while a line is above (or, inverted, below) a voltage given as an expression."""
+    over = f"({bound})-V({line})" if inverted else f"V({line})-({bound})"
+    return VoltageLaw(f"{name}_over", f"{name}_over", GROUND, over), ToDigital(name, f"{name}_over", name, EVENT)
+
+
+def flip_flops(register: Register, count: int, nets: Nets, start: Contents) -> tuple[Element, ...]:
+    """Shift and storage stage of every register, and the storage stage as voltages of 0 V and 1 V at nodes `held(k)`.
+
+    Parameters
+    ----------
+    register : Register
+    count : int
+        Registers in the chain.
+    nets : Nets
+    start : Contents
+
+    Notes
+    -----
+    Rising edges of the clock move every bit to the next higher output, across registers; rising edges of the latch copy the
+    shift stage into the storage stage. Clear holds the shift stage at zero and leaves the storage stage alone; the output
+    enable leaves both alone (NXP 74HC595 rev. 6, table 3). While the rail is lost both stages are held at `start`, which
+    stands for whatever they wake up with: a clear that is active outlasts it.
+
+    The printed propagation delays count from the threshold of the line to the output's edge; the comparator's own delay is
+    taken off. Ignores set-up and hold times, whose violation makes either level.
+    """
+    elements: list[Element] = []
+    for name, line in (("chain_data", nets.data), ("chain_clock", nets.clock), ("chain_latch", nets.latch)):
+        elements += comparator(name, line, level(register, nets.rail, "threshold"))
+    sets, resets = _wake_nets(nets, elements)
+    delay = max(register.propagation.typ - EVENT, EVENT)
+    before, size = "chain_data", int(register.outputs)
+    for k in range(count * size):
+        first, then = bool(start.shift >> k & 1), bool(start.storage >> k & 1)
+        of_register = delay if (k + 1) % size == 0 else _STAGE  # the last stage is the serial output as well
+        elements.append(
+            FlipFlop(
+                f"shift{k}",
+                before,
+                "chain_clock",
+                sets if first else "",
+                nets.clear if first else resets,
+                f"shift{k}",
+                of_register,
+                first,
+            )
+        )
+        woken = (nets.lost, "") if then else ("", nets.lost)
+        elements.append(FlipFlop(f"store{k}", f"shift{k}", "chain_latch", *woken, f"store{k}", delay, then))
+        before = f"shift{k}"
+    outputs = range(count * size)
+    digital, analogue = tuple(f"store{k}" for k in outputs), tuple(held(k) for k in outputs)
+    return (*elements, ToAnalog("held", digital, analogue, register.output_edge.typ))
+
+
+def _wake_nets(nets: Nets, elements: list[Element]) -> tuple[str, str]:
+    """The digital nodes that set a shift stage which wakes up as one, and that reset one which wakes up as zero."""
+    if not nets.lost or not nets.clear:
+        return nets.lost, nets.lost or nets.clear
+    elements += [
+        Gate("chain_kept", "inverter", (nets.clear,), "chain_kept", EVENT),
+        Gate("chain_set", "and", (nets.lost, "chain_kept"), "chain_set", EVENT),
+        Gate("chain_reset", "or", (nets.lost, nets.clear), "chain_reset", EVENT),
+    ]
+    return "chain_set", "chain_reset"
+
+
+def held(output: int) -> str:
+    """The node that is 1 V while an output's storage stage holds a one, else 0 V."""
+    return f"held{output}"
+
+
+@dataclass(frozen=True)
+class Leaning:
+    """Where what nothing drives drifts: `upwards` to the highest voltage that it has in operation, else to ground."""
+
+    upwards: bool
+    amperes: float
+    target: str  # expression of the voltage that it drifts up to
+
+
+def output_pin(
+    register: Register, name: str, pin: str, output: int, rail: str, enabled: str = "", leaning: Leaning | None = None
+) -> tuple[Element, ...]:
+    """One output of a chain.
+
+    Parameters
+    ----------
+    register : Register
+    name, pin : str
+        Of the element, and the node that goes to the channel.
+    output : int
+        Which.
+    rail : str
+        Node of the logic rail.
+    enabled : str
+        Node that is 1 V while outputs are enabled and 0 V while not; always if empty.
+    leaning : Leaning or None
+        The leakage of an output that is not enabled.
+
+    Notes
+    -----
+    i = e g (q V_CC - v) into the pin: q is 0 to 1 while the storage stage changes, g one over the output resistance, e the
+    enabling: 1 while enabled and the rail is above `drives_from`, else 0. Not enabled only the leakage is left, which fades
+    where the pin has arrived. Ignores the diodes from the pin to rail and ground: a voltage that a floating gate drifts
+    to is not held by them.
+    """
+    source = f"(V({held(output)})*V({rail})-V({pin}))/{register.output_resistance.typ!r}"
+    if not enabled:
+        return (CurrentLaw(name, pin, GROUND, source),)
+    alive = f"(0.5+0.5*tanh((V({rail})-{register.drives_from.typ!r})/{2 * _ENABLING!r}))"
+    drive = f"V({enabled})*{alive}"
+    if leaning is None:
+        return (CurrentLaw(name, pin, GROUND, f"{drive}*{source}"),)
+    return (CurrentLaw(name, pin, GROUND, f"{drive}*{source}+(1-{drive})*({drift(leaning, pin)})"),)
+
+
+def drift(leaning: Leaning, pin: str) -> str:
+    """The leakage into a pin, as an expression. [A]"""
+    away = f"{leaning.target}-V({pin})" if leaning.upwards else f"-V({pin})"
+    return f"{leaning.amperes!r}*tanh(({away})/{_LEANING!r})"
