@@ -274,6 +274,43 @@ def volley(
     _present(result, folder)
 
 
+@app.command("power-up", epilog="Example: boardsim power-up netlists/fruit-sorter/board.toml --random 7")
+def power_up(
+    board: BoardFile,
+    seed: Annotated[
+        int | None,
+        typer.Option(
+            "--random",
+            metavar="N",
+            min=0,
+            help="random number for random register contents; always the same if not given",
+        ),
+    ] = None,
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="folder for the results; out/BOARD-power-up if not given"),
+    ] = None,
+    strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+    library: Libraries = None,
+) -> None:
+    """Switch a board on with any register contents, and reset it in operation: what flows before the first enabled frame?
+
+    Exit status: 0 nothing that counts, 1 a coil is on, 2 wrong input, 3 unproven.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.report.folder import make_ready
+    from boardsim.report.wording import plain_path
+    from boardsim.scenarios.power_up import power_up as look
+
+    the_board = read_board(board, library or ())
+    folder = out or Path("out") / f"{plain_path(the_board.name)}-power-up"
+    make_ready(folder, (board,))
+    with _working(f"{the_board.name}, power-up", time_limit) as (crew, progress):
+        result = look(the_board, folder, strict, crew, progress, seed)
+    _present(result, folder)
+
+
 @app.command(epilog="Example: boardsim schema > board.schema.json")
 def schema(
     what: Annotated[str, typer.Argument(metavar="[board|pattern|scenarios]", help="which kind of file")] = "board",

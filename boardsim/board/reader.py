@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import difflib
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
 from pydantic import ValidationError
 
+from boardsim.board.power_up import PowerUpTable
 from boardsim.board.ranges import read_range, write_range
 from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits
 from boardsim.board.shelves import Shelves, problems_in, read_shelves
@@ -60,6 +61,7 @@ class Board:
     derating: Deratings
     around: Surroundings | None
     assumptions: tuple[Assumption, ...]
+    power_up: PowerUpTable = field(default_factory=PowerUpTable)
 
     def channel(self, number: int) -> Channel:
         """The channel of a number.
@@ -224,6 +226,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         board.derating,
         around,
         assumed,
+        board.power_up,
     )
 
 

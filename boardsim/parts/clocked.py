@@ -8,13 +8,16 @@ any contents, loses them, is cleared, and lets its outputs float.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 from boardsim.parts.elements import (
     GROUND,
+    Capacitor,
     CurrentLaw,
     Element,
     FlipFlop,
     Gate,
+    Resistor,
     ToAnalog,
     ToDigital,
     VoltageLaw,
@@ -24,6 +27,7 @@ from boardsim.parts.register import Register
 EVENT = 1e-9  # [s], the least delay of an event-driven device of ngspice
 _ENABLING = 0.05  # [V], over which outputs begin to conduct as the logic rail rises: a slope for Newton's method
 _LEANING = 0.1  # [V], over which a leakage fades as its pin comes to rest, for the same reason
+_CROSSING = 0.01  # [V], over which a slow line's crossing is followed
 _STAGE = 3e-9  # [s], of a shift stage inside its register, from memory; only the serial output has the printed delay
 
 
@@ -49,20 +53,21 @@ class Contents:
     storage: int
 
 
-def level(register: Register, rail: str, which: str) -> str:
-    """An input level that moves with the logic rail, as an expression of the rail's node.
+Which = Literal["threshold", "high"]
+
+
+def level_points(register: Register, which: Which) -> tuple[tuple[float, float], ...]:
+    """An input level against the logic rail, as points between which straight lines run. [V], [V]
 
     Parameters
     ----------
     register : Register
-    rail : str
-        Node.
     which : {"threshold", "high"}
-        Where an input of this kind switches, halfway between what is surely low and surely high; or surely high. [V]
+        Where an input of this kind switches, halfway between what is surely low and surely high; or surely high.
 
     Notes
     -----
-    Straight lines between five supplies of the register's range, and from its lowest supply to nothing at no supply.
+    Five supplies of the register's range; from its lowest supply straight to nothing at no supply.
     """
     low, high = register.supply_low.typ, register.supply_high.typ
     points = [(0.0, 0.0)]
@@ -70,13 +75,36 @@ def level(register: Register, rail: str, which: str) -> str:
         volts = low + k * (high - low) / 4
         below, above = register.input_levels(volts)
         points.append((volts, above if which == "high" else (below + above) / 2))
-    return f"pwl(V({rail}),{','.join(f'{x!r},{y!r}' for x, y in points)})"
+    return tuple(points)
+
+
+def level(register: Register, rail: str, which: Which) -> str:
+    """An input level that moves with the logic rail, as an expression of the rail's node. [V]"""
+    return f"pwl(V({rail}),{','.join(f'{x!r},{y!r}' for x, y in level_points(register, which))})"
 
 
 def comparator(name: str, line: str, bound: str, inverted: bool = False) -> tuple[Element, ...]:
     """Digital node `name`: one while a line is above (or, inverted, below) a voltage given as an expression."""
     over = f"({bound})-V({line})" if inverted else f"V({line})-({bound})"
     return VoltageLaw(f"{name}_over", f"{name}_over", GROUND, over), ToDigital(name, f"{name}_over", name, EVENT)
+
+
+def slow_comparator(name: str, line: str, bound: str) -> tuple[Element, ...]:
+    """Digital node `name`: one while a line, which may rise slowly, is below a voltage given as an expression.
+
+    Notes
+    -----
+    ngspice looks for events at the points that it takes anyway, so that a slow line's would be found up to a whole step late. Here
+    a capacitor follows the comparison, saturated over 10 mV; its charge, large enough to count against the engine's absolute
+    tolerance, makes it take small steps around the crossing. It adds 0.1 us.
+    """
+    over, slow = f"{name}_over", f"{name}_slow"
+    return (
+        VoltageLaw(over, over, GROUND, f"tanh((({bound})-V({line}))/{_CROSSING!r})"),
+        Resistor(slow, over, slow, 1.0),
+        Capacitor(slow, slow, GROUND, 100e-9),
+        ToDigital(name, slow, name, EVENT),
+    )
 
 
 def flip_flops(register: Register, count: int, nets: Nets, start: Contents) -> tuple[Element, ...]:

@@ -17,7 +17,7 @@ from boardsim.parts.rules import Consequence
 
 if TYPE_CHECKING:
     from boardsim.verdict.closeups import Closeup
-    from boardsim.verdict.studies import Release, Volley
+    from boardsim.verdict.studies import PowerUp, Release, Volley
 
 Verdict = Literal["pass", "tight", "fail", "unproven", "limit-missing"]
 Shape = Literal["value", "mean", "energy", "count"]
@@ -308,7 +308,7 @@ class Result:
         Whether a missing limit counted as broken.
     closeups : tuple of Closeup
         One for each finding that fails or is tight.
-    study : Volley or Release or None
+    study : Volley, Release, PowerUp or None
         What the scenario found beyond findings: its table, and what its picture is drawn from.
     """
 
@@ -327,7 +327,7 @@ class Result:
     engine: str = ""
     strict: bool = False
     closeups: tuple[Closeup, ...] = ()
-    study: Volley | Release | None = None
+    study: Volley | Release | PowerUp | None = None
 
     @property
     def proven(self) -> bool:

@@ -9,8 +9,9 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from boardsim.board.reader import Board, read_board
+from boardsim.board.reader import Board, library_part, read_board
 from boardsim.circuit.assemble import Detail, assemble, windows
+from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Settings
 from boardsim.circuit.serial import as_points, serial_lines
 from boardsim.engine.run import Engine
@@ -19,6 +20,8 @@ from boardsim.firing.pattern import Pattern, Pulse
 from boardsim.firing.registers import bits_on_the_wire, frame_time
 from boardsim.firing.schedule import Firing, fire
 from boardsim.parts.base import NOMINAL
+from boardsim.parts.clocked import Contents, Leaning, Nets, comparator, flip_flops, held, output_pin
+from boardsim.parts.elements import GROUND, Drive, Element, Resistor
 
 FINE = Settings("gear", 1e-4, 20e-6)
 
@@ -128,3 +131,80 @@ def test_a_pattern_too_long_for_flip_flops_is_refused_with_what_is_possible(tmp_
     (window,) = windows(of, long)
     with pytest.raises(InputError, match="at most 1562 can be followed"):
         assemble(of, long, NOMINAL, window, "clocked")
+
+
+RAIL_HELD = ((0.0, 5.0), (10e-3, 5.0))
+REGISTER = library_part("74HC595")
+
+
+def run(folder: Path, elements: tuple[Element, ...], save: str, duration: float = 10e-3) -> dict[str, np.ndarray]:
+    """A circuit by itself; the waveforms by the names that they are saved under."""
+    builder = Builder()
+    builder.add(elements)
+    text = f"{builder.netlist()}.options method=gear reltol=1e-4 xtrtol=7 noacct noinit\n.save {save}\n.tran 1u {duration} 0 20u\n.end\n"
+    with Engine(folder) as engine, engine.run_text(text, duration) as waves:
+        rows = np.concatenate(list(waves.blocks()))
+    return dict(zip(waves.names, rows.T, strict=True))
+
+
+def chain_of_one(
+    rail: tuple[tuple[float, float], ...],
+    latch: list[tuple[float, bool]],
+    clear: list[tuple[float, bool]],
+    start: Contents,
+) -> tuple[Element, ...]:
+    """One register whose clock never moves, with a latch line of its own."""
+    names = {"line_latch": latch, "cleared": clear}
+    lines: list[Element] = [
+        Drive(n, n, GROUND, tuple((t, 5 * v) for t, v in as_points(changes, 10e-3, 2e-9)))
+        for n, changes in names.items()
+    ]
+    still: list[Element] = [Drive(n, n, GROUND, ((0.0, 0.0), (1.0, 0.0))) for n in ("line_data", "line_clock")]
+    nets = Nets("rail", "line_data", "line_clock", "line_latch", "lost", "clear_now")
+    return (
+        Drive("rail", "rail", GROUND, rail),
+        *lines,
+        *still,
+        *comparator("lost", "rail", repr(REGISTER.keeps_from), inverted=True),
+        *comparator("clear_now", "cleared", "2.5"),
+        *flip_flops(REGISTER, 1, nets, start),
+    )
+
+
+@pytest.mark.engine
+def test_clear_empties_the_shift_stage_and_leaves_the_storage_stage_alone(tmp_path: Path) -> None:
+    """NXP 74HC595 rev. 6, table 3: with MR low Qn does not change; a latch edge then loads the empty shift register."""
+    circuit = chain_of_one(RAIL_HELD, [(5e-3, True)], [(1e-3, True), (2e-3, False)], Contents(0xFF, 0xFF))
+    found = run(tmp_path, circuit, "v(held0) v(held7)")
+    for name in ("held0", "held7"):
+        at = np.interp([0.5e-3, 4.9e-3, 5.1e-3], found["time"], found[f"v({name})"])
+        assert at == pytest.approx([1.0, 1.0, 0.0], abs=1e-6)
+
+
+@pytest.mark.engine
+@pytest.mark.parametrize(("lowest", "kept"), [(2.5, True), (1.5, False)])
+def test_contents_are_lost_below_the_lowest_supply_and_kept_above(tmp_path: Path, lowest: float, kept: bool) -> None:
+    """The storage stage holds zeros from its first latch on; below 2 V (NXP 74HC595 rev. 6, recommended) nothing is promised."""
+    dip = ((0.0, 5.0), (5e-3, 5.0), (5.1e-3, lowest), (5.5e-3, lowest), (5.6e-3, 5.0), (10e-3, 5.0))
+    circuit = chain_of_one(dip, [(3e-3, True)], [(1e-3, True), (2e-3, False)], Contents(0xFF, 0xFF))
+    found = run(tmp_path, circuit, "v(held3)")
+    wave = found["v(held3)"]
+    assert np.interp([4e-3, 9e-3], found["time"], wave) == pytest.approx([0.0, 0.0 if kept else 1.0], abs=1e-6)
+
+
+@pytest.mark.engine
+def test_an_output_follows_its_rail_through_its_resistance_and_lets_go_when_not_enabled(tmp_path: Path) -> None:
+    """Ohm's law: V_CC x 10 kohm / (10 kohm + R_out) while enabled, the pull-down's 0 V with 10 uA x 10 kohm at most when not."""
+    rail = ((0.0, 5.0), (2e-3, 5.0), (3e-3, 4.0), (10e-3, 4.0))
+    leaning = Leaning(True, REGISTER.off_leakage.typ, "V(rail)")
+    circuit: tuple[Element, ...] = (
+        Drive("rail", "rail", GROUND, rail),
+        Drive("one", held(0), GROUND, ((0.0, 1.0), (1.0, 1.0))),
+        Drive("on", "on", GROUND, ((0.0, 1.0), (5e-3, 1.0), (5.001e-3, 0.0), (1.0, 0.0))),
+        *output_pin(REGISTER, "q", "pin", 0, "rail", "on", leaning),
+        Resistor("load", "pin", GROUND, 10e3),
+    )
+    found = run(tmp_path, circuit, "v(pin)")
+    share = 10e3 / (10e3 + REGISTER.output_resistance.typ)
+    at = np.interp([1e-3, 4e-3, 8e-3], found["time"], found["v(pin)"])
+    assert at == pytest.approx([5 * share, 4 * share, 10e-6 * 10e3], rel=1e-3)

@@ -233,6 +233,10 @@ class NMosfetStage(Part):
         """What the corners vary in this stage: where the transistor breaks down."""
         return {"breakdown": self.part.breakdown}
 
+    def held_off(self) -> bool:
+        """Whether it has a pull-down."""
+        return self.pulldown is not None
+
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
         """The stage between the register's node `pin` and the coil's node `drain`."""
         part: NMosfet = self.part
