@@ -25,8 +25,8 @@ LOGIC = "logic_rail"
 
 Detail = Literal["edges", "clocked"]
 """Registers as known edges on their outputs, or flip-flop by flip-flop; the same edges either way."""
-MOST_CLOCKED = 250_000
-"""Clock edges times channels that are worth a circuit: some seconds for a run, from measurements on 24 channels."""
+MOST_CLOCKED = 50_000
+"""Clock edges times channels that are worth a circuit: about ten seconds for a run, from measurements on 24 channels."""
 
 Outputs = Callable[[Channel], Stamp]
 """What drives a channel's pin."""

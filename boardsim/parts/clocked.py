@@ -7,6 +7,7 @@ any contents, loses them, is cleared, and lets its outputs float.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Literal
 
@@ -27,7 +28,8 @@ from boardsim.parts.register import Register
 EVENT = 1e-9  # [s], the least delay of an event-driven device of ngspice
 _ENABLING = 0.05  # [V], over which outputs begin to conduct as the logic rail rises: a slope for Newton's method
 _LEANING = 0.1  # [V], over which a leakage fades as its pin comes to rest, for the same reason
-_CROSSING = 0.01  # [V], over which a slow line's crossing is followed
+_CROSSING = 1e-3  # [V], over which a slow line's crossing is followed
+_EDGE_RESISTANCE = 1e3  # [ohm], any: with a capacitor it makes the time constant of an edge
 _STAGE = 3e-9  # [s], of a shift stage inside its register, from memory; only the serial output has the printed delay
 
 
@@ -95,14 +97,14 @@ def slow_comparator(name: str, line: str, bound: str) -> tuple[Element, ...]:
     Notes
     -----
     ngspice looks for events at the points that it takes anyway, so that a slow line's would be found up to a whole step late. Here
-    a capacitor follows the comparison, saturated over 10 mV; its charge, large enough to count against the engine's absolute
+    a capacitor follows the comparison, saturated over 1 mV; its charge, large enough to count against the engine's absolute
     tolerance, makes it take small steps around the crossing. It adds 0.1 us.
     """
     over, slow = f"{name}_over", f"{name}_slow"
     return (
         VoltageLaw(over, over, GROUND, f"tanh((({bound})-V({line}))/{_CROSSING!r})"),
-        Resistor(slow, over, slow, 1.0),
-        Capacitor(slow, slow, GROUND, 100e-9),
+        Resistor(slow, over, slow, 0.1),
+        Capacitor(slow, slow, GROUND, 1e-6),
         ToDigital(name, slow, name, EVENT),
     )
 
@@ -126,7 +128,9 @@ def flip_flops(register: Register, count: int, nets: Nets, start: Contents) -> t
     stands for whatever they wake up with: a clear that is active outlasts it.
 
     The printed propagation delays count from the threshold of the line to the output's edge; the comparator's own delay is
-    taken off. Ignores set-up and hold times, whose violation makes either level.
+    taken off. An output's edge is an exponential whose middle is that of a straight one of the printed transition time, at
+    half of it: ramps of event-driven devices, on 64 Darlington outputs at once, stalled the engine. Ignores set-up and hold
+    times, whose violation makes either level.
     """
     elements: list[Element] = []
     for name, line in (("chain_data", nets.data), ("chain_clock", nets.clock), ("chain_latch", nets.latch)):
@@ -153,8 +157,13 @@ def flip_flops(register: Register, count: int, nets: Nets, start: Contents) -> t
         elements.append(FlipFlop(f"store{k}", f"shift{k}", "chain_latch", *woken, f"store{k}", delay, then))
         before = f"shift{k}"
     outputs = range(count * size)
-    digital, analogue = tuple(f"store{k}" for k in outputs), tuple(held(k) for k in outputs)
-    return (*elements, ToAnalog("held", digital, analogue, register.output_edge.typ))
+    steps = tuple(f"step{k}" for k in outputs)
+    elements.append(ToAnalog("held", tuple(f"store{k}" for k in outputs), steps, EVENT))
+    farads = register.output_edge.typ / (2 * math.log(2)) / _EDGE_RESISTANCE
+    for k in outputs:
+        elements.append(Resistor(f"step{k}", f"step{k}", held(k), _EDGE_RESISTANCE))
+        elements.append(Capacitor(f"step{k}", held(k), GROUND, farads))
+    return tuple(elements)
 
 
 def _wake_nets(nets: Nets, elements: list[Element]) -> tuple[str, str]:

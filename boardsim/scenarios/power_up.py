@@ -136,7 +136,7 @@ def power_up(
         overall(findings, proven, strict),
         tuple(findings),
         tuple(dict.fromkeys((*assumptions_of(board, sampled), *_assumed(board)))),
-        tuple(r.audit for r in results),
+        tuple(replace(r.audit, corner=f"{r.corner.name}; {d.boot.name}") for d in done for r in d.results),
         tuple(_told(board, all_boots, chosen)),
         None,
         deciding.trial.deck.text(deciding.trial.settings) if deciding is not None and deciding.trial else "",

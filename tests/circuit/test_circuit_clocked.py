@@ -129,7 +129,7 @@ def test_a_pattern_too_long_for_flip_flops_is_refused_with_what_is_possible(tmp_
     firing = random_firing(of, 1)
     long = replace(firing, sent=firing.sent * 400)
     (window,) = windows(of, long)
-    with pytest.raises(InputError, match="at most 1562 can be followed"):
+    with pytest.raises(InputError, match="at most 312 can be followed"):
         assemble(of, long, NOMINAL, window, "clocked")
 
 
