@@ -72,6 +72,11 @@ class Board:
     all_off: tuple[int, ...] = ()
     power_up: PowerUpTable = field(default_factory=PowerUpTable)
 
+    @property
+    def spi_mode(self) -> int:
+        """In which the controller sends; 0 where it was not described."""
+        return 0 if self.controller is None else int(self.controller.spi_mode)
+
     def channel(self, number: int) -> Channel:
         """The channel of a number.
 

@@ -12,7 +12,7 @@ from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
-from boardsim.firing.registers import ChainState, shift_in
+from boardsim.firing.registers import ChainState, send
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
 from boardsim.parts.clocked import Contents, Nets, flip_flops, output_pin
@@ -78,7 +78,7 @@ class Assembly:
         self.rules: list[PlacedRule] = []
         self.assumptions: dict[Assumption, None] = {}
         self.assumed: dict[int | None, dict[str, None]] = {}
-        self.hints: dict[str, float] = {}
+        self.rest: dict[str, float] = {}
         self.totals: dict[tuple[str, str, PeakRule, str], list[tuple[int, Signal]]] = {}
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
 
@@ -93,7 +93,7 @@ class Assembly:
         self.assumptions.update(dict.fromkeys(stamp.assumptions))
         names = self.assumed.setdefault(channel, {})
         names.update(dict.fromkeys(f"{a.part} {a.quantity}" for a in stamp.assumptions))
-        self.hints.update(stamp.hints)
+        self.rest.update(stamp.rest)
         for total in stamp.totals:
             if channel is None:
                 continue
@@ -148,8 +148,13 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
     Raises
     ------
     InputError
-        If it has more clock edges, times channels, than are worth it.
+        If it has more clock edges, times channels, than are worth it, or was captured.
     """
+    if firing.recorded is not None:
+        raise InputError(
+            "a capture holds what the bus did, and its registers were followed bit by bit; leave --clocked out, which would send "
+            "frames of its own"
+        )
     edges = len(firing.sent) * board.chain.outputs
     if edges * len(board.channels) > MOST_CLOCKED:
         most = MOST_CLOCKED // (board.chain.outputs * len(board.channels))
@@ -171,12 +176,14 @@ def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, c
 def _clocked(parts: Assembly, board: Board, frames: Frames, image: int, corner: Corner, window: Window) -> Outputs:
     """Flip-flops for the whole chain, which hold the frame of an image at first; what then drives each channel's pin."""
     chain, register = board.chain, board.chain.register_
-    state = shift_in(ChainState(chain.outputs), image, chain)
+    state, on_wire = ChainState(chain.outputs), 0
+    for _ in range(2):  # what was on the wire before the first one is then of no matter
+        state, on_wire = send(state, image, chain, board.spi_mode, on_wire)
     volts = board.logic.level(corner)
     span = window.stop - window.start
     rail: Element = Drive("logic", LOGIC, GROUND, ((0.0, volts), (span + 1e-6, volts)))
-    nets = Nets(LOGIC, *add_lines(parts, board, frames, span))
-    stages = flip_flops(register, chain.count, nets, Contents(state.shift, state.storage))
+    nets = Nets(LOGIC, *add_lines(parts, board, frames, span, on_wire))
+    stages = flip_flops(register, chain.count, nets, Contents(state.shift, state.storage), volts)
     parts.add(Stamp(elements=(rail, *stages)), None, register.title or "register", "chain")
 
     def driven(channel: Channel) -> Stamp:
@@ -186,9 +193,9 @@ def _clocked(parts: Assembly, board: Board, frames: Frames, image: int, corner: 
     return driven
 
 
-def add_lines(parts: Assembly, board: Board, frames: Frames, span: float) -> tuple[str, str, str]:
-    """The controller's data, clock and latch, at the level of the logic rail; their nodes."""
-    lines = serial_lines(frames, board.chain, span)
+def add_lines(parts: Assembly, board: Board, frames: Frames, span: float, on_wire: int = 0) -> tuple[str, str, str]:
+    """The controller's data, clock and latch, at the level of the logic rail; their nodes. `on_wire` is the data's first level."""
+    lines = serial_lines(frames, board.chain, span, board.spi_mode, on_wire)
     names = ("line_data", "line_clock", "line_latch")
     for name, points in zip(names, (lines.data, lines.clock, lines.latch), strict=True):
         shape = Drive(f"{name}_bit", f"{name}_bit", GROUND, points)
@@ -227,7 +234,7 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
         tuple(parts.assumptions),
         {channel: tuple(names) for channel, names in parts.assumed.items()},
         _measures(parts.signals),
-        parts.hints,
+        parts.rest,
     )
 
 

@@ -21,7 +21,7 @@ from boardsim.circuit.assemble import (
 )
 from boardsim.circuit.deck import Deck, Window
 from boardsim.circuit.serial import Frames, Points, as_points, busy
-from boardsim.firing.registers import ChainState, frame_time, shift_in
+from boardsim.firing.registers import ChainState, frame_time, send
 from boardsim.parts.base import Assumption, Corner, Stamp, listed
 from boardsim.parts.clocked import (
     Contents,
@@ -129,7 +129,7 @@ def boot_deck(board: Board, boot: Boot, corner: Corner, detail: Detail) -> Deck:
     return replace(
         deck,
         rules=rules,
-        hints={"supply_in": v_set} if boot.reset else {},
+        rest={"supply_in": v_set} if boot.reset else {},
         digital=True,
         clocked=busy(boot.frames, board.chain) if clocked else (),
     )
@@ -155,7 +155,7 @@ def _chain(parts: Assembly, board: Board, boot: Boot, volts: float, detail: Deta
         elements += comparator("chain_lost", LOGIC, repr(register.keeps_from), inverted=True)
         lines = add_lines(parts, board, boot.frames, boot.duration)
         nets = Nets(LOGIC, *lines, "chain_lost", "chain_clear" if cleared else "")
-        elements += flip_flops(register, chain.count, nets, boot.contents)
+        elements += flip_flops(register, chain.count, nets, boot.contents, board.logic.voltage.typ)
     else:
         elements += _known_stages(board, boot)
     numbers = listed(
@@ -210,8 +210,9 @@ def _known_stages(board: Board, boot: Boot) -> Iterator[Element]:
     chain, register = board.chain, board.chain.register_
     state = ChainState(chain.outputs, boot.contents.shift, boot.contents.storage)
     changes: dict[int, list[tuple[float, bool]]] = {c.output: [] for c in board.channels}
+    on_wire = 0
     for start, image in boot.frames:
-        state = shift_in(state, image, chain)
+        state, on_wire = send(state, image, chain, board.spi_mode, on_wire)
         at = start + frame_time(chain) + register.propagation.typ + register.output_edge.typ / 2
         for output, found in changes.items():
             found.append((at, bool(state.storage >> output & 1)))

@@ -68,8 +68,8 @@ class Deck:
     assumed : mapping of channel (None: supply, cable and bulk capacitor) to names of what was assumed there
     measures : tuple of str
         .meas lines, for who runs the deck by hand; the engine leaves them out.
-    hints : mapping of node to voltage
-        Start of the search for the operating point. [V]
+    rest : mapping of node to voltage
+        The supply's, at which a run has to begin. [V]
     digital : bool
         Whether registers are in it as flip-flops.
     clocked : tuple of (start, stop)
@@ -87,14 +87,13 @@ class Deck:
     assumptions: tuple[Assumption, ...]
     assumed: Mapping[int | None, tuple[str, ...]]
     measures: tuple[str, ...]
-    hints: Mapping[str, float]
+    rest: Mapping[str, float]
     digital: bool = False
     clocked: tuple[tuple[float, float], ...] = ()
 
     def text(self, settings: Settings, measures: bool = True) -> str:
         """The whole deck as plain ngspice runs it."""
         duration = self.window.stop - self.window.start
-        hints = " ".join(f"v({node})={v:.9g}" for node, v in self.hints.items())
         lines = [
             self.netlist.rstrip(),
             f"* corner: {self.corner.name}; {settings}",
@@ -102,7 +101,6 @@ class Deck:
             f".options temp={in_celsius(self.corner.junction):g} tnom={MODEL_TEMPERATURE:g} noacct noinit",
             # With event-driven devices ngspice 39 takes the strictest tolerance of truncation; back to the usual one.
             *([".options xtrtol=7"] if self.digital else ()),
-            *([f".nodeset {hints}"] if hints else ()),
             f".save {' '.join(self.vectors)}",
             *(self.measures if measures else ()),
             f".tran {min(settings.max_step, duration / 50):.9g} {duration + _BEYOND:.15g} 0 {settings.max_step:.9g}",

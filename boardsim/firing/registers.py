@@ -66,6 +66,24 @@ def shift_in(state: ChainState, image: int, chain: Chain, late: int | None = Non
     return state.latch()
 
 
+def send(state: ChainState, image: int, chain: Chain, spi_mode: int, on_wire: int) -> tuple[ChainState, int]:
+    """Shift one register frame in and latch it, as a controller in an SPI mode does.
+
+    Parameters
+    ----------
+    spi_mode : int
+        In mode 1 every bit comes one place late (`Controller`).
+    on_wire : int
+        Level of the data line before the frame.
+
+    Returns
+    -------
+    tuple of (ChainState, int)
+        The chain after the latch edge, and the level that stays on the data line.
+    """
+    return shift_in(state, image, chain, on_wire if spi_mode == 1 else None), last_bit(image, chain)
+
+
 def last_bit(image: int, chain: Chain) -> int:
     """What stays on the data line after a frame."""
     return list(bits_on_the_wire(image, chain))[-1]

@@ -189,8 +189,8 @@ class Stamp:
     rules: tuple[Rule, ...] = ()
     assumptions: tuple[Assumption, ...] = ()
     totals: tuple[Total, ...] = ()
-    hints: Mapping[str, float] = field(default_factory=dict)
-    """Node voltages from which the operating point is sought. [V]"""
+    rest: Mapping[str, float] = field(default_factory=dict)
+    """Node voltages that a run has to begin with. [V]"""
 
 
 @dataclass(frozen=True)

@@ -107,7 +107,9 @@ def slow_comparator(name: str, line: str, bound: str) -> tuple[Element, ...]:
     )
 
 
-def flip_flops(register: Register, count: int, nets: Nets, start: Contents) -> tuple[Element, ...]:
+def flip_flops(
+    register: Register, count: int, nets: Nets, start: Contents, volts: float | None = None
+) -> tuple[Element, ...]:
     """Shift and storage stage of every register, and the storage stage as voltages of 0 V and 1 V at nodes `held(k)`.
 
     Parameters
@@ -117,6 +119,8 @@ def flip_flops(register: Register, count: int, nets: Nets, start: Contents) -> t
         Registers in the chain.
     nets : Nets
     start : Contents
+    volts : float or None
+        Logic rail in operation, at which its serial output's delay is taken where that is printed. [V]
 
     Notes
     -----
@@ -135,10 +139,12 @@ def flip_flops(register: Register, count: int, nets: Nets, start: Contents) -> t
         elements += comparator(name, line, level(register, nets.rail, "threshold"))
     sets, resets = _wake_nets(nets, elements)
     delay = max(register.propagation.typ - EVENT, EVENT)
+    times = register.timing(volts) if volts is not None else None
+    onwards = delay if times is None else max(times.shift_delay - EVENT, EVENT)
     before, size = "chain_data", int(register.outputs)
     for k in range(count * size):
         first, then = bool(start.shift >> k & 1), bool(start.storage >> k & 1)
-        of_register = delay if (k + 1) % size == 0 else _STAGE  # the last stage is the serial output as well
+        of_register = onwards if (k + 1) % size == 0 else _STAGE  # the last stage is the serial output as well
         elements.append(
             FlipFlop(
                 f"shift{k}",

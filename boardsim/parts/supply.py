@@ -79,9 +79,7 @@ class Supply(Part):
                 ),
             ),
             assumptions=listed("supply", resistance=self.resistance, internal_load=self.internal_load),
-            # This node alone, which has a path to ground. ngspice 39 ties hinted nodes to their hint while it chooses its
-            # pivots, and keeps these: with hints for the output or the rail, runs on stiff supplies began volts off.
-            hints={} if setting else {inside: v_set},
+            rest={} if setting else {inside: v_set},
         )
 
 

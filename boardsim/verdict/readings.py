@@ -268,7 +268,7 @@ def _refuse_false_start(rail: float, total: float, deck: Deck) -> None:
     A supply feeds the rail through resistances and takes nothing back: the rail is nowhere above the supply's own
     voltage, and where no coil draws anything it is at it (Kirchhoff). 1 %, to leave room for leakages.
     """
-    volts = max(deck.hints.values(), default=None)  # the supply's
+    volts = max(deck.rest.values(), default=None)  # the supply's
     if volts is not None and (rail > 1.01 * volts or (abs(total) < 1e-3 and rail < 0.99 * volts)):
         raise NoConvergence(f"ngspice began with a rail of {rail:.4g} V, which a supply of {volts:.4g} V does not make")
 

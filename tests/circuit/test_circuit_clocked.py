@@ -37,6 +37,8 @@ count = 2
 clock = "{clock}"
 bit_order = "{order}"
 first_out = "{first}"
+[controller]
+spi_mode = {mode}
 [coils.drum]
 resistance = "24 ohm"
 inductance = "2 mH"
@@ -50,8 +52,11 @@ clamp = {{ kind = "diode", diode = "fast-2a" }}
 """
 
 
-def board(folder: Path, clock: str = "4 MHz", order: str = "msb", first: str = "far", bits: str = "3-12") -> Board:
-    (folder / "board.toml").write_text(BOARD.format(clock=clock, order=order, first=first, bits=bits))
+def board(
+    folder: Path, clock: str = "4 MHz", order: str = "msb", first: str = "far", bits: str = "3-12", mode: str = "0"
+) -> Board:
+    text = BOARD.format(clock=clock, order=order, first=first, bits=bits, mode=mode)
+    (folder / "board.toml").write_text(text)
     return read_board(folder / "board.toml")
 
 
@@ -90,6 +95,9 @@ def crossings(of: Board, firing: Firing, detail: Detail, folder: Path) -> dict[i
         (3, {"first": "near"}),
         (4, {"order": "lsb", "first": "near", "bits": "0-9"}),
         (5, {"clock": "10 MHz"}),
+        (6, {"mode": "1"}),
+        (7, {"mode": "2"}),
+        (8, {"mode": "3", "order": "lsb"}),
     ],
 )
 def test_flip_flops_and_bits_give_the_same_output_edges_on_random_frames(

@@ -32,6 +32,9 @@ logic = { voltage = "5 V" }
 register = "74HC595"
 count = 1
 clock = "1 MHz"
+[controller]
+high_drop = "0.8 V"
+low_output = "0.6 V"
 [coils.gate]
 resistance = "24 ohm"
 inductance = "30 mH"

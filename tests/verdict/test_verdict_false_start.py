@@ -9,7 +9,7 @@ import pytest
 from boardsim.errors import NoConvergence
 from boardsim.verdict.readings import _refuse_false_start
 
-DECK = SimpleNamespace(hints={"supply_in": 22.8})
+DECK = SimpleNamespace(rest={"supply_in": 22.8})
 
 
 @pytest.mark.parametrize(
