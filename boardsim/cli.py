@@ -8,7 +8,7 @@ import signal
 import sys
 from collections.abc import Callable, Iterator
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, Any
+from typing import TYPE_CHECKING, Annotated, Any, Literal
 
 import typer
 
@@ -71,6 +71,12 @@ Libraries = Annotated[
         " is found by itself",
     ),
 ]
+Clocked = Annotated[
+    bool,
+    typer.Option(
+        "--clocked", help="run the registers flip-flop by flip-flop, clocked by their lines; short patterns only"
+    ),
+]
 
 
 @app.command(
@@ -87,6 +93,7 @@ def fire(
         Path | None,
         typer.Option(metavar="FILE.vcd", help="also write the edges of the register outputs, as a value change dump"),
     ] = None,
+    clocked: Clocked = False,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
     time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
     library: Libraries = None,
@@ -111,7 +118,8 @@ def fire(
     if edges is not None:
         write_edges(the_board, the_pattern, edges)
     with _working(f"{the_board.name}, {the_pattern.name}", time_limit) as (crew, progress):
-        result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress)
+        detail: Literal["edges", "clocked"] = "clocked" if clocked else "edges"
+        result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress, detail=detail)
     _present(result, folder)
 
 
@@ -217,6 +225,7 @@ def deck(
             help="which of the worst corners of the tolerances, counted from 1; the first if not given",
         ),
     ] = 1,
+    clocked: Clocked = False,
     library: Libraries = None,
 ) -> None:
     """Write the assembled ngspice deck of a pattern; plain `ngspice -b` runs it and prints its readings."""
@@ -228,7 +237,8 @@ def deck(
     if to is not None and any(to.exists() and to.samefile(one) for one in (board, pattern) if one.exists()):
         raise InputError(f"--to {to}: is one of the files to read; name another")
     the_board = read_board(board, library or ())
-    names, text = write_deck(the_board, read_source(pattern, the_board), corner)
+    the_pattern = read_source(pattern, the_board)
+    names, text = write_deck(the_board, the_pattern, corner, "clocked" if clocked else "edges")
     if text is None:
         listed = "; ".join(f"{i} {name}" for i, name in enumerate(names, 1))
         raise InputError(f"--corner {corner}: this board has {len(names)}: {listed}")
@@ -300,6 +310,43 @@ def chain(
     folder = out or Path("out") / f"{plain_path(the_board.name)}-chain"
     make_ready(folder, (board,))
     _present(check_chain(the_board, strict), folder)
+
+
+@app.command("power-up", epilog="Example: boardsim power-up netlists/fruit-sorter/board.toml --random 7")
+def power_up(
+    board: BoardFile,
+    seed: Annotated[
+        int | None,
+        typer.Option(
+            "--random",
+            metavar="N",
+            min=0,
+            help="random number for random register contents; always the same if not given",
+        ),
+    ] = None,
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="folder for the results; out/BOARD-power-up if not given"),
+    ] = None,
+    strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+    library: Libraries = None,
+) -> None:
+    """Switch a board on with any register contents, and reset it in operation: what flows before the first enabled frame?
+
+    Exit status: 0 nothing that counts, 1 a coil is on, 2 wrong input, 3 unproven.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.report.folder import make_ready
+    from boardsim.report.wording import plain_path
+    from boardsim.scenarios.power_up import power_up as look
+
+    the_board = read_board(board, library or ())
+    folder = out or Path("out") / f"{plain_path(the_board.name)}-power-up"
+    make_ready(folder, (board,))
+    with _working(f"{the_board.name}, power-up", time_limit) as (crew, progress):
+        result = look(the_board, folder, strict, crew, progress, seed)
+    _present(result, folder)
 
 
 @app.command(epilog="Example: boardsim schema > board.schema.json")

@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import difflib
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
 from pydantic import ValidationError
 
+from boardsim.board.power_up import PowerUpTable
 from boardsim.board.ranges import read_range, write_range
 from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits
 from boardsim.board.shelves import Shelves, problems_in, read_shelves
@@ -69,6 +70,7 @@ class Board:
     libraries: tuple[Path, ...] = ()  # the user's folders of parts that the board was read with
     controller: Controller | None = None  # none: what drives the chain was not described
     all_off: tuple[int, ...] = ()
+    power_up: PowerUpTable = field(default_factory=PowerUpTable)
 
     def channel(self, number: int) -> Channel:
         """The channel of a number.
@@ -246,6 +248,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         tuple(libraries),
         board.controller,
         all_off,
+        board.power_up,
     )
 
 

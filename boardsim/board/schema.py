@@ -6,6 +6,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo, model_validator
 
+from boardsim.board.power_up import ControlLine, PowerUpTable, check_lines
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Part, any_of, named_part
 from boardsim.parts.bulk import Bulk
@@ -105,6 +106,18 @@ class Chain(Record):
     )
     clock_line: Line = Field(Line(), description="to all registers")
     latch_line: Line = Field(Line(), description="to all registers")
+
+    output_enable: ControlLine | None = Field(
+        None, description="what holds the registers' output enable (active low); taken as tied low if absent"
+    )
+    clear: ControlLine | None = Field(
+        None, description="what holds the registers' clear (active low); taken as tied high if absent"
+    )
+
+    @model_validator(mode="after")
+    def _can_work(self) -> Chain:
+        check_lines(self.output_enable, self.clear)
+        return self
 
     @property
     def outputs(self) -> int:
@@ -212,6 +225,7 @@ class BoardFile(Record):
     coils: dict[Name, Coil] = Field(default_factory=dict)
     parts: dict[Name, AnyComponent] = Field(default_factory=dict)  # type: ignore[valid-type]
     channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]
+    power_up: PowerUpTable = PowerUpTable()
     limits: Limits = Limits()
     derating: Deratings = Deratings()
 

@@ -2,19 +2,35 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
+from functools import partial
+from typing import Literal
 
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
+from boardsim.circuit.serial import Frames, busy, serial_lines
+from boardsim.errors import InputError
+from boardsim.firing.registers import ChainState, shift_in
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
-from boardsim.parts.elements import Port, Signal, plus
+from boardsim.parts.clocked import Contents, Nets, flip_flops, output_pin
+from boardsim.parts.elements import GROUND, Drive, Element, Port, Signal, VoltageLaw, plus
 from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule
 from boardsim.quantities import Quantity
 
 RAIL = "rail"
 SUPPLY = "supply_out"
+LOGIC = "logic_rail"
+
+Detail = Literal["edges", "clocked"]
+"""Registers as known edges on their outputs, or flip-flop by flip-flop; the same edges either way."""
+MOST_CLOCKED = 50_000
+"""Clock edges times channels that are worth a circuit: about ten seconds for a run, from measurements on 24 channels."""
+
+Outputs = Callable[[Channel], Stamp]
+"""What drives a channel's pin."""
 
 
 def windows(board: Board, firing: Firing) -> tuple[Window, ...]:
@@ -51,7 +67,7 @@ def gate_points(
     return tuple(points)
 
 
-class _Assembly:
+class Assembly:
     """What the stamps add up to."""
 
     def __init__(self) -> None:
@@ -67,6 +83,7 @@ class _Assembly:
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
 
     def add(self, stamp: Stamp, channel: int | None, part: str, label: str, package: str = "") -> None:
+        """Add one part's stamp at its place on the board."""
         self.builder.add(stamp.elements)
         for probe in stamp.probes:
             self.signals[channel, probe.quantity] = probe.signal
@@ -100,17 +117,96 @@ class _Assembly:
             self.rules.append(PlacedRule(whole, None, part, package))
 
 
-def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> Deck:
-    """Assemble the deck of one window in one corner."""
-    parts = _Assembly()
-    parts.add(board.supply.stamp(SUPPLY, corner), None, board.supply.title or "supply", "supply")
+def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detail: Detail = "edges") -> Deck:
+    """Assemble the deck of one window in one corner.
+
+    Raises
+    ------
+    InputError
+        If the pattern is too long for clocked registers.
+    """
+    parts = Assembly()
+    add_rail(parts, board, corner)
+    outputs: Outputs = partial(_known_edges, board, firing, corner, window)
+    frames: Frames = ()
+    if detail == "clocked":
+        refuse_too_many(board, firing)
+        frames = [(start - window.start, image) for start, image in firing.sent if start >= window.start]
+        before = [image for start, image in firing.sent if start < window.start]
+        outputs = _clocked(parts, board, frames, before[-1] if before else 0, corner, window)
+    for channel in board.channels:
+        if channel.number in window.channels:
+            add_channel(parts, board, corner, channel, outputs(channel))
+    deck = finished(parts, board, corner, window)
+    stretches = tuple((a + window.start, b + window.start) for a, b in busy(frames, board.chain))
+    return replace(deck, digital=detail == "clocked", clocked=stretches)
+
+
+def refuse_too_many(board: Board, firing: Firing) -> None:
+    """Refuse a pattern that would take clocked registers too long.
+
+    Raises
+    ------
+    InputError
+        If it has more clock edges, times channels, than are worth it.
+    """
+    edges = len(firing.sent) * board.chain.outputs
+    if edges * len(board.channels) > MOST_CLOCKED:
+        most = MOST_CLOCKED // (board.chain.outputs * len(board.channels))
+        raise InputError(
+            f"this pattern sends {len(firing.sent)} register frames; flip-flop by flip-flop at most {most} can be followed on "
+            "this board: run a shorter pattern, or leave --clocked out, which gives the same edges"
+        )
+
+
+def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> Stamp:
+    """An output that does what the bits say, as a source."""
+    register, name = board.chain.register_, f"c{channel.number}_q"
+    volts = board.logic.level(corner)
+    points = gate_points(firing.levels[channel.output], window, volts, register.output_edge.typ)
+    driven: Stamp = register.drive(name, name, points)
+    return driven
+
+
+def _clocked(parts: Assembly, board: Board, frames: Frames, image: int, corner: Corner, window: Window) -> Outputs:
+    """Flip-flops for the whole chain, which hold the frame of an image at first; what then drives each channel's pin."""
+    chain, register = board.chain, board.chain.register_
+    state = shift_in(ChainState(chain.outputs), image, chain)
+    volts = board.logic.level(corner)
+    span = window.stop - window.start
+    rail: Element = Drive("logic", LOGIC, GROUND, ((0.0, volts), (span + 1e-6, volts)))
+    nets = Nets(LOGIC, *add_lines(parts, board, frames, span))
+    stages = flip_flops(register, chain.count, nets, Contents(state.shift, state.storage))
+    parts.add(Stamp(elements=(rail, *stages)), None, register.title or "register", "chain")
+
+    def driven(channel: Channel) -> Stamp:
+        name = f"c{channel.number}_q"
+        return Stamp(elements=output_pin(register, name, name, channel.output, LOGIC))
+
+    return driven
+
+
+def add_lines(parts: Assembly, board: Board, frames: Frames, span: float) -> tuple[str, str, str]:
+    """The controller's data, clock and latch, at the level of the logic rail; their nodes."""
+    lines = serial_lines(frames, board.chain, span)
+    names = ("line_data", "line_clock", "line_latch")
+    for name, points in zip(names, (lines.data, lines.clock, lines.latch), strict=True):
+        shape = Drive(f"{name}_bit", f"{name}_bit", GROUND, points)
+        law = VoltageLaw(name, name, GROUND, f"V({name}_bit)*V({LOGIC})")
+        parts.add(Stamp(elements=(shape, law)), None, "controller", "chain")
+    return names
+
+
+def add_rail(parts: Assembly, board: Board, corner: Corner, setting: str = "") -> None:
+    """Supply, cable and bulk capacitor; `setting` is the node whose voltage the supply follows, its own if empty."""
+    parts.add(board.supply.stamp(SUPPLY, corner, setting), None, board.supply.title or "supply", "supply")
     around = board.around
     parts.add(board.cable.stamp(SUPPLY, RAIL, corner, around), None, board.cable.title or "cable", "cable")
     parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
-    for channel in board.channels:
-        if channel.number in window.channels:
-            _add_channel(parts, board, firing, corner, window, channel)
 
+
+def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> Deck:
+    """What was collected as a deck: sums over packages and over all coils, and the rail's own rule."""
     parts.add_totals()
     total = plus(*(s for (_, quantity), s in parts.signals.items() if quantity == "i_coil"))
     parts.signals[None, "i_total"] = total
@@ -135,15 +231,12 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window) -> De
     )
 
 
-def _add_channel(
-    parts: _Assembly, board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel
-) -> None:
+def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel, driven: Stamp) -> None:
+    """A channel behind what drives its pin."""
     k, name, label = channel.number, f"c{channel.number}", channel.label
-    register = board.chain.register_
-    points = gate_points(firing.levels[channel.output], window, board.logic.level(corner), register.output_edge.typ)
     pin, drain = f"{name}_q", f"{name}_d"
     coil_end = drain if channel.leads is None else f"{name}_k"
-    parts.add(register.drive(f"{name}_q", pin, points), k, register.title or "register", label)
+    parts.add(driven, k, board.chain.register_.title or "register", label)
     coil = channel.coil.stamp(name, channel.coil_name, RAIL, coil_end, corner, board.around)
     parts.add(coil, k, channel.coil_name, label)
     if channel.leads is not None:

@@ -12,17 +12,23 @@ from boardsim.parts.elements import (
     Bipolar,
     Capacitor,
     CurrentDrive,
+    CurrentLaw,
     Drive,
     Element,
+    FlipFlop,
+    Gate,
     Inductor,
     Junction,
     Model,
     PowerMosfet,
     Resistor,
+    ToAnalog,
+    ToDigital,
     VoltageLaw,
 )
 
 TITLE = "boardsim deck"
+LEAST_DELAY = 1e-9  # [s], of every digital device of ngspice
 
 
 class VerticalMosfet(FixedPinElement):  # type: ignore[misc]  # PySpice has no types
@@ -64,8 +70,36 @@ class Builder:
                 case CurrentDrive():
                     # An I source's current flows from its first node through it to the second.
                     c.PieceWiseLinearCurrentSource(e.name, e.minus, e.plus, values=list(e.points))
+                case CurrentLaw():
+                    # A B source's current flows from its first node through it to the second.
+                    c.BehavioralSource(e.name, e.minus, e.plus, current_expression=e.expression)
                 case VoltageLaw():
                     c.BehavioralSource(e.name, e.plus, e.minus, voltage_expression=e.expression)
+                case ToDigital() | ToAnalog() | Gate() | FlipFlop():
+                    self._digital(e)
+
+    def _digital(self, e: ToDigital | ToAnalog | Gate | FlipFlop) -> None:
+        """ngspice's event-driven devices ("A" lines), which PySpice has no elements for: vectors of nodes in brackets."""
+        match e:
+            case ToDigital():
+                values = {"in_low": 0.0, "in_high": 0.0, "rise_delay": e.delay, "fall_delay": e.delay}
+                nodes, model = f"[{e.a}] [{e.out}]", Model(e.name, "adc_bridge", values)
+            case ToAnalog():
+                values = {"out_low": 0.0, "out_high": 1.0, "t_rise": e.edge, "t_fall": e.edge}
+                nodes = f"[{' '.join(e.inputs)}] [{' '.join(e.outputs)}]"
+                model = Model(e.name, "dac_bridge", values)
+            case Gate():
+                values = {"rise_delay": e.delay, "fall_delay": e.delay}
+                into = e.inputs[0] if e.kind == "inverter" else f"[{' '.join(e.inputs)}]"
+                nodes, model = f"{into} {e.out}", Model(e.name, f"d_{e.kind}", values)
+            case FlipFlop():
+                # The output's own delay of 1 ns adds to that from the clock edge.
+                delay = max(e.delay - LEAST_DELAY, LEAST_DELAY)
+                values = {"clk_delay": delay, "rise_delay": LEAST_DELAY, "fall_delay": LEAST_DELAY, "ic": int(e.start)}
+                values |= {"set_delay": LEAST_DELAY, "reset_delay": LEAST_DELAY}
+                nodes = f"{e.data} {e.clock} {e.set or 'null'} {e.reset or 'null'} {e.out} null"
+                model = Model(e.name, "d_dff", values)
+        self._circuit.raw_spice += f"a{e.name} {nodes} {self._model(model)}\n"
 
     def _model(self, model: Model) -> str:
         key = (model.type, tuple(sorted(model.parameters.items())))

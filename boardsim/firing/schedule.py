@@ -92,6 +92,8 @@ class Firing:
         How much later than here a frame may start, each by itself. [s]
     recorded : Recorded or None
         The bus as it was captured, where it was: then nothing but the outputs tells what was commanded.
+    sent : tuple of (time, image)
+        When the controller starts each register frame, and the image that it sends. [s]
     """
 
     duration: float
@@ -106,6 +108,7 @@ class Firing:
     asked: tuple[Pulse, ...] = ()
     jitter: float = 0.0
     recorded: Recorded | None = None
+    sent: tuple[tuple[float, int], ...] = ()
 
     def channels_on(self, t: float) -> tuple[int, ...]:
         """The channels that are on at a time."""
@@ -147,6 +150,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
 
     image, free, latch, frames, i = 0, 0.0, 0.0, 0, 0
     on_wire = last_bit(0, chain) if late else 0
+    sent: list[tuple[float, int]] = []
     while i < len(asked):
         start = max(asked[i][0], free)
         while i < len(asked) and asked[i][0] <= start:
@@ -159,6 +163,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         latch = start + spent
         free = latch + controller.frame_gap.typ
         frames += 1
+        sent.append((start, image))
         before, state = state, shift_in(state, image, chain, on_wire if late else None)
         on_wire = last_bit(image, chain) if late else 0
         changed = before.storage ^ state.storage
@@ -188,6 +193,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         spent,
         pattern.pulses,
         controller.jitter.max,
+        sent=tuple(sent),
     )
 
 

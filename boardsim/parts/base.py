@@ -55,6 +55,10 @@ class Part(Record):
         """Whether a clamp carries no current to speak of while this voltage lies across the switch that is off. [V]"""
         return True
 
+    def held_off(self) -> bool:
+        """Whether a switch has a resistor of its own that keeps it off while nothing drives it."""
+        return False
+
     def beside(self, switch: Part) -> str:
         """What keeps a clamp from being used beside a switch, for people; nothing where it fits."""
         return ""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Literal
 
 
 @dataclass(frozen=True)
@@ -107,6 +108,16 @@ class CurrentDrive:
 
 
 @dataclass(frozen=True)
+class CurrentLaw:
+    """A current from minus to plus through the source, given by an expression of node voltages. [A]"""
+
+    name: str
+    plus: str
+    minus: str
+    expression: str
+
+
+@dataclass(frozen=True)
 class VoltageLaw:
     """A voltage from plus to minus, given by an expression of node voltages and of currents of ammeters. [V]"""
 
@@ -116,8 +127,70 @@ class VoltageLaw:
     expression: str
 
 
+@dataclass(frozen=True)
+class ToDigital:
+    """A comparator: digital node `out` is one while node `a` is above 0 V, and follows it after `delay`. [s]"""
+
+    name: str
+    a: str
+    out: str
+    delay: float
+
+
+@dataclass(frozen=True)
+class ToAnalog:
+    """Digital nodes as voltages of 0 V and 1 V, that take `edge` from one to the other. [s]"""
+
+    name: str
+    inputs: tuple[str, ...]
+    outputs: tuple[str, ...]
+    edge: float
+
+
+@dataclass(frozen=True)
+class Gate:
+    """A digital gate: one where all inputs ("and") or any of them ("or") is one, or where its input is none ("inverter")."""
+
+    name: str
+    kind: Literal["and", "or", "inverter"]
+    inputs: tuple[str, ...]
+    out: str
+    delay: float
+
+
+@dataclass(frozen=True)
+class FlipFlop:
+    """A D flip-flop on the rising edge of its clock; all nodes digital, `set` and `reset` active at one, "" where it has none.
+
+    `delay` counts from the clock edge to the output [s]; `start` is what it holds at first.
+    """
+
+    name: str
+    data: str
+    clock: str
+    set: str
+    reset: str
+    out: str
+    delay: float
+    start: bool
+
+
 Element = (
-    Resistor | Inductor | Capacitor | Junction | PowerMosfet | Bipolar | Ammeter | Drive | CurrentDrive | VoltageLaw
+    Resistor
+    | Inductor
+    | Capacitor
+    | Junction
+    | PowerMosfet
+    | Bipolar
+    | Ammeter
+    | Drive
+    | CurrentDrive
+    | CurrentLaw
+    | VoltageLaw
+    | ToDigital
+    | ToAnalog
+    | Gate
+    | FlipFlop
 )
 
 Signal = tuple[tuple[float, str], ...]

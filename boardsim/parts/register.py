@@ -12,7 +12,17 @@ from boardsim.parts.base import Assumption, Part, Stamp, listed, named_part
 from boardsim.parts.elements import GROUND, Drive, Resistor
 from boardsim.parts.family import LogicFamily, place_in, rising
 from boardsim.parts.record import Record
-from boardsim.quantities import FREQUENCY, POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity
+from boardsim.quantities import (
+    CAPACITANCE,
+    CURRENT,
+    FREQUENCY,
+    POSITIVE_RESISTANCE,
+    POSITIVE_TIME,
+    TIME,
+    VOLTAGE,
+    Quantity,
+    assume,
+)
 
 _LEAST_SHARE = 0.25  # of the longest delay: the shortest, where no data sheet prints it
 _LEAST_WHY = "a quarter of the longest, where the data sheet prints no shortest delay, from memory"
@@ -80,6 +90,54 @@ class Register(Part):
     )
     supply_low: Annotated[Quantity, VOLTAGE]
     supply_high: Annotated[Quantity, VOLTAGE]
+    retention: Annotated[Quantity, VOLTAGE] | None = Field(
+        None,
+        description="logic rail below which its contents are lost; supply_low if absent, below which nothing is promised",
+    )
+    drives_from: Annotated[Quantity, VOLTAGE] = assume(
+        "1 V", VOLTAGE, "logic rail from which an output's transistors can conduct, from memory"
+    )
+    off_leakage: Annotated[Quantity, CURRENT] = assume(
+        "10 uA",
+        CURRENT,
+        "3-state off current, maximum up to 125 degC, Philips 74HC595; 74HCT595 (25 June 2003), p. 12, for parts of this class",
+    )
+
+    @property
+    def input_leakage(self) -> Quantity:
+        """Of one input; assumed where its family does not say. [A]"""
+        family: LogicFamily | None = self.family
+        return (family.input_leakage if family is not None else None) or assume(
+            "1 uA",
+            CURRENT,
+            "input leakage, maximum, Philips 74HC595; 74HCT595 (25 June 2003), p. 12, for parts of this class",
+        )
+
+    @property
+    def input_capacitance(self) -> Quantity:
+        """Of one input; assumed where it has no family. [F]"""
+        family: LogicFamily | None = self.family
+        if family is not None:
+            return family.input_capacitance
+        return assume("5 pF", CAPACITANCE, "one CMOS input with its trace, from memory")
+
+    def switching_levels(self) -> tuple[tuple[float, float, float], ...]:
+        """Supplies, rising, with the highest voltage that is surely low and the lowest that is surely high there. [V]
+
+        Notes
+        -----
+        Those that its family's datasheet prints. Without a family 0.3 and 0.7 of the rail at both ends of its supply range,
+        the CMOS levels of JESD7A (the standard from memory).
+        """
+        family: LogicFamily | None = self.family
+        if family is None:
+            return tuple((v, 0.3 * v, 0.7 * v) for v in (self.supply_low.typ, self.supply_high.typ))
+        return tuple((level.supply.typ, level.low.min, level.high.max) for level in family.inputs)
+
+    @property
+    def keeps_from(self) -> float:
+        """The logic rail below which its contents are lost. [V]"""
+        return (self.retention or self.supply_low).typ
 
     @model_validator(mode="after")
     def _one_source_of_times(self) -> Register:

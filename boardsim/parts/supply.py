@@ -44,14 +44,15 @@ class Supply(Part):
         "10 kohm", POSITIVE_RESISTANCE, "feedback divider and indicator of a supply, from memory"
     )
 
-    def stamp(self, plus: str, corner: Corner) -> Stamp:
-        """The supply between node `plus` and ground."""
+    def stamp(self, plus: str, corner: Corner, setting: str = "") -> Stamp:
+        """The supply between node `plus` and ground; its voltage is that of node `setting`, where one is named."""
         v_set = corner.take(self.voltage, "supply")
         r = max(self.resistance.typ, 1e-4)
         emf, inside = "supply_emf", "supply_in"
         meter, through = Ammeter("supply", inside, plus), Ammeter("supply_law", emf, inside)
         i = "I(Vsupply_law)"
-        law = f"{v_set!r}-{r!r}*{i}+{_BACKWARD!r}*{_rounded(f'(-{i})', _ONE_WAY_WIDTH)}"
+        asked = f"V({setting})" if setting else repr(v_set)
+        law = f"{asked}-{r!r}*{i}+{_BACKWARD!r}*{_rounded(f'(-{i})', _ONE_WAY_WIDTH)}"
         if self.current_ceiling is not None:
             top = self.current_ceiling.min
             law += f"-{v_set / (_BEYOND_CEILING * top)!r}*{_rounded(f'({i}-{top!r})', _CEILING_WIDTH * top)}"
@@ -80,7 +81,7 @@ class Supply(Part):
             assumptions=listed("supply", resistance=self.resistance, internal_load=self.internal_load),
             # This node alone, which has a path to ground. ngspice 39 ties hinted nodes to their hint while it chooses its
             # pivots, and keeps these: with hints for the output or the rail, runs on stiff supplies began volts off.
-            hints={inside: v_set},
+            hints={} if setting else {inside: v_set},
         )
 
 

@@ -17,11 +17,12 @@ from boardsim.report.files import remove_unfinished, write_text
 from boardsim.report.json_report import write_findings
 from boardsim.report.junit import write_junit
 from boardsim.report.overview import draw_overview
+from boardsim.report.power_up_picture import draw_power_up
 from boardsim.report.release_picture import draw_release
 from boardsim.report.terminal import print_result
 from boardsim.report.volley_picture import draw_volley
 from boardsim.verdict.findings import Result
-from boardsim.verdict.studies import ChainStudy, Release, Volley
+from boardsim.verdict.studies import ChainStudy, PowerUp, Release, Volley
 
 _OURS = (
     "findings.json",
@@ -29,6 +30,7 @@ _OURS = (
     "board.cir",
     "report.txt",
     "overview.png",
+    "power-up.png",
     "release.png",
     "chain.png",
     "edges.csv",
@@ -108,6 +110,8 @@ def draw_main(result: Result, folder: Path) -> Path:
             draw_release(result, path := folder / "release.png")
         case ChainStudy():
             draw_chain(result, path := folder / "chain.png")
+        case PowerUp():
+            draw_power_up(result, path := folder / "power-up.png")
         case None:
             draw_overview(result, path := folder / "overview.png")
     return path

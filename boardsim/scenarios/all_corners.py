@@ -9,10 +9,11 @@ from pathlib import Path
 
 from boardsim.board.corners import nominal_only, not_varied
 from boardsim.board.reader import Board
+from boardsim.circuit.assemble import assemble
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner
 from boardsim.quantities import in_units
-from boardsim.scenarios.audited import CornerResult, Measure, run_corner, unproven
+from boardsim.scenarios.audited import Assemble, CornerResult, Measure, run_corner, unproven
 from boardsim.scenarios.crew import Crew
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding, Timing, severity
@@ -29,6 +30,7 @@ def run_corners(
     measure: Measure | None = None,
     pictured: bool = True,
     repeated: bool = False,
+    assembled: Assemble = assemble,
 ) -> list[CornerResult]:
     """Run a firing in several corners, as many at a time as the crew can; results in the order of `wanted`.
 
@@ -38,7 +40,7 @@ def run_corners(
         Where deck and log of a failed run are kept.
     progress : callable
         Told the share of the work done, from any thread.
-    also, measure, pictured
+    also, measure, pictured, assembled
         See `run_corner`.
     repeated : bool
         Whether what the firing does once stands for what is done again and again.
@@ -76,6 +78,7 @@ def run_corners(
             also=also,
             measure=measure,
             pictured=pictured,
+            assembled=assembled,
         )
 
     return list(crew.pool.map(one, range(len(wanted))))

@@ -11,7 +11,7 @@ from pathlib import Path
 
 from boardsim.board.reader import Board
 from boardsim.circuit.assemble import assemble, windows
-from boardsim.circuit.deck import Deck, Settings
+from boardsim.circuit.deck import Deck, Settings, Window
 from boardsim.engine.run import DEFAULT_TIME_LIMIT, Engine
 from boardsim.engine.waves import Waves
 from boardsim.errors import DeckRejected, EngineCrash, EngineTimeout, InputError, NoConvergence
@@ -53,6 +53,7 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
 
 Progress = Callable[[float], None]
 Measure = Callable[[Waves, Deck], tuple[Reading, ...]]
+Assemble = Callable[[Board, Firing, Corner, Window], Deck]
 
 # Where a big capacitor's charge is rounded, a picosecond step makes microamperes of it: then Newton's method cannot
 # meet the usual absolute tolerance. It is still far below any current that decides.
@@ -104,11 +105,16 @@ class _Job:
     pictured: bool
 
     def run_either(self, settings: Settings, progress: Progress) -> Trial:
-        """Run; where that does not converge, once more with a looser absolute tolerance of currents."""
+        """Run; where that does not converge, once more with another absolute tolerance of currents.
+
+        Event-driven devices make picosecond steps of their own, so that a deck with them begins with the looser one.
+        """
+        tries = [settings, replace(settings, abstol=LOOSE_ABSTOL)]
+        first, second = reversed(tries) if self.deck.digital else tries
         try:
-            return self.run(settings, progress)
+            return self.run(first, progress)
         except NoConvergence:
-            return self.run(replace(settings, abstol=LOOSE_ABSTOL), progress)
+            return self.run(second, progress)
 
     def run(self, settings: Settings, progress: Progress) -> Trial:
         """Simulate, read, judge, and audit the run by itself."""
@@ -140,6 +146,7 @@ def run_corner(
     also: Sequence[Finding] = (),
     measure: Measure | None = None,
     pictured: bool = True,
+    assembled: Assemble = assemble,
 ) -> CornerResult:
     """Run a corner coarse and fine; accept the fine run if both pass by themselves and agree.
 
@@ -161,6 +168,8 @@ def run_corner(
         Takes further readings from a run's waveforms; two runs must agree on them as on findings.
     pictured : bool
         Whether close-ups are wanted.
+    assembled : callable
+        Makes the deck.
 
     Raises
     ------
@@ -171,7 +180,7 @@ def run_corner(
     """
     clock = time.perf_counter()
     (window,) = windows(board, firing)
-    deck = assemble(board, firing, corner, window)
+    deck = assembled(board, firing, corner, window)
     seconds = {"assemble": time.perf_counter() - clock, "simulate": 0.0, "read": 0.0}
     floor = 1e-3 * max(_full_energy(board, corner))
     entries: list[AuditEntry] = []

@@ -4,14 +4,21 @@ from __future__ import annotations
 
 from boardsim.board.corners import corners, slow_rail
 from boardsim.board.reader import Board
-from boardsim.circuit.assemble import assemble, windows
+from boardsim.circuit.assemble import Detail, assemble, windows
 from boardsim.firing.pattern import Pattern
 from boardsim.firing.schedule import fire
 from boardsim.scenarios.audited import FINE, LADDER, fitted
 
 
-def write_deck(board: Board, pattern: Pattern, number: int) -> tuple[tuple[str, ...], str | None]:
+def write_deck(
+    board: Board, pattern: Pattern, number: int, detail: Detail = "edges"
+) -> tuple[tuple[str, ...], str | None]:
     """The names of the board's corners, and the deck of corner `number` (from 1); None if there is no such corner.
+
+    Raises
+    ------
+    InputError
+        If the pattern is too long for clocked registers.
 
     Notes
     -----
@@ -25,5 +32,5 @@ def write_deck(board: Board, pattern: Pattern, number: int) -> tuple[tuple[str, 
         return names, None
     firing = fire(board, pattern)
     (window,) = windows(board, firing)
-    deck = assemble(board, firing, wanted[number - 1], window)
+    deck = assemble(board, firing, wanted[number - 1], window, detail)
     return names, deck.text(fitted(LADDER, board)[FINE])

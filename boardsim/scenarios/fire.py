@@ -10,6 +10,7 @@ from pathlib import Path
 
 from boardsim.board.corners import corners, slow_rail
 from boardsim.board.reader import Board
+from boardsim.circuit.assemble import Detail, assemble, refuse_too_many
 from boardsim.firing.pattern import Pattern
 from boardsim.firing.schedule import Firing, fire
 from boardsim.quantities import in_units
@@ -42,6 +43,7 @@ def fire_pattern(
     measure: Measure | None = None,
     pictured: bool = True,
     firmware: bool = True,
+    detail: Detail = "edges",
 ) -> Result:
     """Fire a pattern on a board.
 
@@ -59,25 +61,30 @@ def fire_pattern(
         See `run_corner`.
     firmware : bool
         Whether the rules for the firmware are judged; a question's own pulses are not the firmware's.
+    detail : {"edges", "clocked"}
+        Registers as their known output edges, or flip-flop by flip-flop.
 
     Raises
     ------
     EngineMissing, EngineStopped
         If there is no engine, or the run was interrupted.
     InputError
-        If the waveforms would not fit on the disk.
+        If the waveforms would not fit on the disk, or the pattern is too long for clocked registers.
     """
     if crew is None:
         with Crew() as own:
-            return fire_pattern(board, pattern, keep, strict, own, progress, measure, pictured, firmware)
+            return fire_pattern(board, pattern, keep, strict, own, progress, measure, pictured, firmware, detail)
     began = time.perf_counter()
     firing = fire(board, pattern)
     spent_firing = time.perf_counter() - began
+    if detail == "clocked":
+        refuse_too_many(board, firing)
     switching = [*judge_switching(board, firing), *judge_recorded(board, firing)]
     switching += judge_firmware(board, firing) if firmware else []
     wanted = corners(board, min(p.width for p in pattern.pulses))
     began = time.perf_counter()
-    run = partial(run_corners, board, firing, also=switching, measure=measure, pictured=pictured)
+    made = partial(assemble, detail=detail)
+    run = partial(run_corners, board, firing, also=switching, measure=measure, pictured=pictured, assembled=made)
     results = run(wanted, keep, crew, progress)
     longest = slow_rail(board)
     if longest is not None and any(dips(board, r) for r in results):
@@ -98,7 +105,7 @@ def fire_pattern(
         tuple(findings),
         (*assumptions_of(board, sampled), *assumptions_of_capture(firing)),
         tuple(r.audit for r in results),
-        _firing_sentences(board, firing, firmware),
+        _firing_sentences(board, firing, firmware, detail),
         _traces(board, firing, shown),
         _deciding_deck(findings, sampled),
         (Timing("register frames", spent_firing), *timings_of(results, spent_running)),
@@ -124,7 +131,7 @@ def edge_times(board: Board, firing: Firing) -> tuple[EdgeTimes, ...]:
     )
 
 
-def _firing_sentences(board: Board, firing: Firing, firmware: bool) -> tuple[str, ...]:
+def _firing_sentences(board: Board, firing: Firing, firmware: bool, detail: Detail) -> tuple[str, ...]:
     rules = not_given(board) if firmware else ""
     missing = (rules,) if rules else ()
     if firing.recorded is not None:
@@ -143,6 +150,8 @@ def _firing_sentences(board: Board, firing: Firing, firmware: bool) -> tuple[str
             f"their width changes by up to {in_units(abs(change) if abs(change) > 1e-12 else 0.0, 's')}"
         )
         lines += _rounded(board, firing)
+    if detail == "clocked":
+        lines.append("the registers were run flip-flop by flip-flop, clocked by their lines")
     return (*lines, *missing)
 
 

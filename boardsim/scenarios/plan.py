@@ -23,7 +23,14 @@ from boardsim.quantities import POSITIVE_TIME, TEMPERATURE, VOLTAGE, Quantity
 from boardsim.verdict.expectations import Expectation, Expected, KnownFailure
 
 FILE_NAME = "scenarios.toml"
-_ONLY_FOR = {"pattern": "fire", "channel": "release", "every_clamp": "release", "width": "volley", "at_least": "volley"}
+_ONLY_FOR = {
+    "pattern": "fire",
+    "channel": "release",
+    "every_clamp": "release",
+    "width": "volley",
+    "at_least": "volley",
+    "random": "power-up",
+}
 
 
 def _day(value: Any) -> datetime.date:
@@ -67,7 +74,7 @@ class ConditionsRecord(Record):
 class ScenarioRecord(Record):
     """One question put to a board."""
 
-    question: Literal["fire", "release", "volley", "chain"] = "fire"
+    question: Literal["fire", "release", "volley", "chain", "power-up"] = "fire"
     board: str | None = Field(None, description="board file, relative to this one; the file's own if absent")
     pattern: str | None = Field(None, description="for fire: pattern file, relative to this one")
     channel: Annotated[int, Field(strict=True, ge=0)] | None = Field(None, description="for release: which channel")
@@ -75,6 +82,9 @@ class ScenarioRecord(Record):
     width: Annotated[Quantity, POSITIVE_TIME] | None = Field(None, description="for volley: width of the pulse")
     at_least: Annotated[int, Field(strict=True, ge=1)] | None = Field(
         None, description="for volley: how many channels must pass at once; the board's most_on if absent"
+    )
+    random: Annotated[int, Field(strict=True, ge=0)] | None = Field(
+        None, description="for power-up: random number from which random register contents are made"
     )
     conditions: ConditionsRecord = ConditionsRecord()
     strict: bool | None = Field(
@@ -104,12 +114,12 @@ class Scenario:
         As its file calls it.
     path : Path
         Of the file.
-    question : {"fire", "release", "volley", "chain"}
+    question : {"fire", "release", "volley", "chain", "power-up"}
     board : Board
         Under the scenario's conditions.
     pattern : Pattern or None
         For fire.
-    channel, every_clamp, width, at_least
+    channel, every_clamp, width, at_least, random
         As in the file. Width in [s].
     conditions : str
         What differs from the board file, in words; empty if nothing does.
@@ -117,7 +127,7 @@ class Scenario:
 
     name: str
     path: Path
-    question: Literal["fire", "release", "volley", "chain"]
+    question: Literal["fire", "release", "volley", "chain", "power-up"]
     board: Board
     pattern: Pattern | None
     channel: int | None
@@ -128,6 +138,7 @@ class Scenario:
     strict: bool
     expectation: Expectation
     known: tuple[KnownFailure, ...]
+    random: int | None = None
 
 
 def find_files(paths: Iterable[Path]) -> tuple[Path, ...]:
@@ -245,6 +256,7 @@ def _scenario(
         raw.strict if record.strict is None else record.strict,
         Expectation("fail" if record.breaks else record.expect, record.breaks),
         tuple(known),
+        record.random,
     )
 
 
@@ -256,7 +268,9 @@ def _misplaced(record: ScenarioRecord, file: TomlFile, keys: Keys) -> list[Probl
             text = f'belongs to question = "{question}"; this scenario asks "{record.question}"'
             problems.append(file.problem_at((*keys, key), text))
     if record.question == "fire" and record.pattern is None:
-        problems.append(file.problem_at(keys, 'needs a "pattern", or another "question": release, volley, chain'))
+        problems.append(
+            file.problem_at(keys, 'needs a "pattern", or another "question": release, volley, chain, power-up')
+        )
     if record.breaks and record.expect not in (None, "fail"):
         text = f'names checks that have to break, but expect is "{record.expect}"; leave one of the two out'
         problems.append(file.problem_at((*keys, "breaks"), text))

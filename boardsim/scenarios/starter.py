@@ -36,6 +36,7 @@ clock = "2 MHz"
 # bit_order = "msb"                   # which bit of a byte is sent first: "msb" or "lsb"
 # first_out = "far"                   # whose byte is sent first: the "far" or the "near" register's
 # active = "high"                     # output level by which the firmware means on
+# output_enable = { pull_up = "10 kohm", pin = true }    # keeps outputs off until the firmware runs (`boardsim power-up`)
 
 [controller]                          # what drives the registers; on the logic rail unless it has a voltage of its own
 # voltage = "3.3 V +/- 3 %"

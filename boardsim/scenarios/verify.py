@@ -18,6 +18,7 @@ from boardsim.scenarios.chosen import Chosen
 from boardsim.scenarios.crew import Crew
 from boardsim.scenarios.fire import fire_pattern
 from boardsim.scenarios.plan import Scenario
+from boardsim.scenarios.power_up import power_up
 from boardsim.scenarios.release import release_channel
 from boardsim.scenarios.volley import volley
 from boardsim.verdict.expectations import IDLE, Outcome, accept, compare
@@ -57,6 +58,8 @@ def run_scenario(
             result = volley(s.board, keep, s.strict, crew, progress, s.width, s.at_least)
         case "chain":
             result = check_chain(s.board, s.strict)
+        case "power-up":
+            result = power_up(s.board, keep, s.strict, crew, progress, s.random)
         case "fire":
             assert s.pattern is not None  # a fire scenario without one is refused when it is read
             result = fire_pattern(s.board, s.pattern, keep, s.strict, crew, progress)

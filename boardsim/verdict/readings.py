@@ -78,6 +78,7 @@ class Readings:
     guarded : tuple of Dip
         Below the level plus the guard band.
     points : int
+        Without those in stretches in which a clocked line sets them: a finer run has no more of these.
     pulses : mapping of (channel, quantities, share) to tuple of OnePulse
         Share of its peak above which a pulse counts as lasting.
     """
@@ -164,6 +165,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     falls = Falls(len(deck.ports))
     shown = {"rail": (None, "v_rail"), "total": (None, "i_total"), "supply": (None, "i_supply")}
     slices = Slices(np.linspace(start, stop, SLICES + 1), len(shown))
+    points = waves.points
 
     for block in waves.blocks():
         if not np.isfinite(block).all():
@@ -189,6 +191,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             watched.feed(t, np.prod([y[row[channel, q]] for q in qs], axis=0))
         _feed_falls(falls, deck, row, t, y)
         slices.feed(t, y[[row[key] for key in shown.values()]])
+        points -= sum(int(np.sum((t > a) & (t <= b))) for a, b in deck.clocked)
 
     span = stop - start
     held: dict[int | None, float] = {}
@@ -228,7 +231,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             for i, (c, label, p) in enumerate(deck.ports)
         ),
         tuple(guarded.all()),
-        waves.points,
+        points,
         {
             name: Envelope(name, deck.units[key], slices.edges, slices.low[i], slices.high[i])
             for i, (name, key) in enumerate(shown.items())

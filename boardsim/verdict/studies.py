@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 from boardsim.verdict.findings import Envelope, Verdict
@@ -307,3 +308,87 @@ class ChainStudy:
             for r in self.rows
         )
         return Table(columns, rows)
+
+
+@dataclass(frozen=True)
+class BootRow:
+    """One way in which the board comes up, each reading in its worst corner.
+
+    Attributes
+    ----------
+    name : str
+        What the registers hold.
+    contents : str
+        The storage stage, output 0 on the right, in hexadecimal.
+    current : float or None
+        Highest uncommanded current of any coil; None where no run came to an end. [A]
+    label : str
+        Whose.
+    count : int
+        Channels whose current counts.
+    energy : float or None
+        That all coils together took before the first enabled frame. [J]
+    stays : bool
+        Whether only the first frame ends it.
+    verdict : Verdict
+    """
+
+    name: str
+    contents: str
+    current: float | None
+    label: str
+    count: int
+    energy: float | None
+    stays: bool
+    verdict: Verdict
+
+
+@dataclass(frozen=True)
+class PowerUp:
+    """What a board does before its first enabled frame.
+
+    Attributes
+    ----------
+    rows : tuple of BootRow
+    shown : int
+        The row that is the worst, which the picture shows.
+    corner : str
+        In which it is.
+    since, until : float
+        Between the two nothing may flow. [s]
+    frame : float
+        Start of the first register frame. [s]
+    limit : float
+        The smallest current of a coil that counts. [A]
+    waves : mapping of quantity to Envelope
+        "v_rail", "v_logic", "v_enable" and "v_clear" where these are lines of their own [V], "enabled" [1], "i_total" [A].
+    """
+
+    rows: tuple[BootRow, ...]
+    shown: int
+    corner: str
+    since: float
+    until: float
+    frame: float
+    limit: float
+    waves: Mapping[str, Envelope]
+
+    @property
+    def table(self) -> Table:
+        """One row per way to come up."""
+        columns = (
+            Column("registers hold"),
+            Column("storage"),
+            Column("highest current", "A"),
+            Column("of"),
+            Column("coils on"),
+            Column("energy", "J"),
+            Column("ended by"),
+            Column("verdict"),
+        )
+        return Table(columns, tuple(_boot_row(row) for row in self.rows))
+
+
+def _boot_row(row: BootRow) -> tuple[Cell, ...]:
+    ended = "the first frame" if row.stays else "itself" if row.count else "-"
+    return (row.name, row.contents, row.current, row.label, row.count, row.energy, ended, row.verdict)

@@ -230,3 +230,9 @@ def test_the_starter_and_the_demonstrations_can_be_run(tmp_path: Path) -> None:
         found, problems = read_scenarios(path)
         assert found
         assert problems == ()
+
+
+def test_power_up_is_a_question_with_a_random_number_of_its_own(tmp_path: Path) -> None:
+    found = read(tmp_path, '[scenarios.on]\nquestion = "power-up"\nrandom = 7\n')["on"]
+    assert (found.question, found.random) == ("power-up", 7)
+    assert 'belongs to question = "power-up"' in mistakes(tmp_path, '[scenarios.on]\nquestion = "volley"\nrandom = 7\n')

@@ -43,6 +43,10 @@ class DarlingtonStage(Part):
         """What the corners vary in this stage: where its output breaks down."""
         return {"breakdown": self.part.output_voltage}
 
+    def held_off(self) -> bool:
+        """Always: the resistors across its base-emitter junctions are in the package."""
+        return True
+
     def per_package(self) -> int:
         """Outputs of the package. [1]"""
         return int(self.part.outputs)

@@ -417,6 +417,10 @@ class NMosfetStage(Part):
         """Through gate resistor and pull-down; a gate by itself takes none. [V], [ohm] -> [A]"""
         return 0.0 if self.pulldown is None else volts / (resistance + self.gate.min + self.pulldown.min)
 
+    def held_off(self) -> bool:
+        """Whether it has a pull-down."""
+        return self.pulldown is not None
+
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
         """The stage between the register's node `pin` and the coil's node `drain`."""
         part: NMosfet = self.part

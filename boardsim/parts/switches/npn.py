@@ -286,6 +286,10 @@ class NpnStage(Part):
         """Through the base resistor into base and pull-down, which a junction holds at 0.6 V at least (from memory). [A]"""
         return max(volts - _LEAST_JUNCTION, 0.0) / (resistance + self.base.min)
 
+    def held_off(self) -> bool:
+        """Whether it has a pull-down."""
+        return self.pulldown is not None
+
     def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
         """The stage between the register's node `pin` and the coil's node `drain`."""
         part: Npn = self.part
