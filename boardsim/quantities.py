@@ -138,6 +138,7 @@ class Dimension:
 RESISTANCE = Dimension("resistance", "ohm", "16 ohm +/- 10 %", 1e-6, 1e12, zero=True)
 POSITIVE_RESISTANCE = replace(RESISTANCE, zero=False)  # where 0 ohm would be a short that no model can take
 INDUCTANCE = Dimension("inductance", "H", "12 mH +/- 20 %", 1e-10, 1e3)
+TRANSCONDUCTANCE = Dimension("transconductance", "S", "26 S", 1e-6, 1e5)
 CAPACITANCE = Dimension("capacitance", "F", "4700 uF -20/+50 %", 1e-14, 1e2)
 VOLTAGE = Dimension("voltage", "V", "24 V +/- 5 %", 1e-3, 1e4)
 CURRENT = Dimension("current", "A", "0.8 A", 1e-9, 1e4)

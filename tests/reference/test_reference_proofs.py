@@ -134,10 +134,11 @@ def test_a_bound_without_a_band_proves_nothing() -> None:
 # IR PD-97390; IR IRLZ44N (8/25/97). Typical and printed maximum, None where not printed.
 PRINTED = {
     "AO3400A": [(22e-3, 26.5e-3), (25.4e-3, 32e-3), (34e-3, 48e-3), (1.0, 1.5), (30.0, None), (3.75e-9, None),
-                (1.8e-9, None), (10e-9, 13e-9), (900e-12, None), (6.7e-9, None), (24.2e-9, None)],
+                (1.8e-9, None), (10e-9, 13e-9), (900e-12, 1.1e-9), (6.7e-9, None), (24.2e-9, None), (31e-3, 38e-3), (26.0, None),
+                (0.72, 1.0)],
     "IRLB8721": [(6.5e-3, 8.7e-3), (13.1e-3, 16e-3), (1.8, 2.35), (3.4e-9, None), (3.1e-9, None), (7.6e-9, 13e-9)],
     "IRLZ44N": [(None, 22e-3), (None, 25e-3), (None, 35e-3), (None, 2.0), (55.0, None), (None, 48e-9), (None, 8.6e-9),
-                (None, 25e-9), (95e-9, None), (41e-9, None)],
+                (None, 25e-9), (95e-9, None), (41e-9, None), (None, 1.3)],
 }  # fmt: skip
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field, model_validator
@@ -24,6 +25,14 @@ from boardsim.parts.elements import (
     voltage,
 )
 from boardsim.parts.heat import junction_heat
+from boardsim.parts.mosfet_channel import (
+    BODY_EMISSION,
+    BODY_RESISTANCE,
+    Channel,
+    body_saturation,
+    mobility,
+    only_bounds,
+)
 from boardsim.parts.mosfet_charge import GateFigures, gate_capacitances
 from boardsim.parts.mosfet_proofs import mosfet_proofs
 from boardsim.parts.proof import Proof
@@ -36,11 +45,14 @@ from boardsim.quantities import (
     CURRENT,
     ENERGY,
     GROWTH,
+    INDUCTANCE,
     POSITIVE_RESISTANCE,
     POSITIVE_TIME,
     RESISTANCE,
     TEMPERATURE,
     THERMAL_RESISTANCE,
+    TIME,
+    TRANSCONDUCTANCE,
     VOLTAGE,
     VOLTAGE_DRIFT,
     Quantity,
@@ -50,6 +62,7 @@ from boardsim.quantities import (
 _BODY_DIODE_POTENTIAL = 0.75  # [V], grading exponent 1/2: an abrupt junction, from memory
 _BODY_DRIFT = -2e-3  # [V/K] of the body diode's forward voltage at 1 A, silicon, common practice
 _SUBTHRESHOLD = 0.1  # [V], ngspice's own default for the rounding near threshold
+_ROUNDS = 60  # until threshold and channel agree
 _BREAKDOWN_CURRENT = 250e-6  # [A], at which V_(BR)DSS is specified, common practice
 
 
@@ -81,6 +94,9 @@ class SwitchingTimes(Record):
     rise: Annotated[Quantity, POSITIVE_TIME] | None = None
     delay_off: Annotated[Quantity, POSITIVE_TIME] | None = None
     fall: Annotated[Quantity, POSITIVE_TIME] | None = None
+    edge: Annotated[Quantity, TIME] = assume(
+        "5 ns", TIME, "rise and fall of the pulse generator in such circuits, few datasheets print it, from memory"
+    )
 
 
 class NMosfet(Part):
@@ -116,6 +132,23 @@ class NMosfet(Part):
         "2 ohm", RESISTANCE, "internal gate resistance, from memory"
     )
     switching: SwitchingTimes | None = None
+    source_inductance: Annotated[Quantity, INDUCTANCE] | None = Field(
+        default=None,
+        description="of the package, from its lead to the chip; counts in the proof of the switching times",
+    )
+    drain_inductance: Annotated[Quantity, INDUCTANCE] | None = Field(
+        default=None,
+        description="of the package, from its lead to the chip; counts in the proof of the switching times",
+    )
+    transconductance: Annotated[Quantity, TRANSCONDUCTANCE] | None = Field(
+        default=None, description="g_fs; a band such as 21 to 60 S only bounds it"
+    )
+    transconductance_current: Annotated[Quantity, CURRENT] | None = None
+    transconductance_voltage: Annotated[Quantity, VOLTAGE] | None = None
+    source_drain: Annotated[Quantity, VOLTAGE] | None = Field(
+        default=None, description="forward voltage of the body diode; a band such as 0.6 to 1.3 V only bounds it"
+    )
+    source_drain_current: Annotated[Quantity, CURRENT] | None = None
     thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
     junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
     threshold_drift: Annotated[Quantity, VOLTAGE_DRIFT] = assume(
@@ -133,6 +166,13 @@ class NMosfet(Part):
 
     @model_validator(mode="after")
     def _coherent(self) -> NMosfet:
+        for needs, needed in (
+            ("transconductance", ("transconductance_current", "transconductance_voltage")),
+            ("source_drain", ("source_drain_current",)),
+        ):
+            for name in needed:
+                if (getattr(self, needs) is None) != (getattr(self, name) is None):
+                    raise QuantityError(f'"{needs}" and "{name}" go together: a figure and what it is measured at')
         self.parameters(self.breakdown.typ)
         if self.leakage:
             reverse_current(self.leakages(), T_MODEL)
@@ -240,16 +280,21 @@ class NMosfet(Part):
 
         Notes
         -----
-        R_DS(on) = R_D + 1 / (K_P u) from two points, or from one with half of it as R_D; V_GS(th) is where
-        I = K_P u^2 / 2; u = k ln(1 + exp((V_GS - V_TO) / k)) with k = 0.1 V is the model's overdrive. The gate's
+        R_DS(on) = R_D + (1 + theta u) / (K_P (u - v / 2)), v being what the channel drops at the printed current, from the
+        points at the lowest and the highest gate voltage, or from one with half of it as R_D; V_GS(th) is where
+        I = K_P u^2 / 2; theta from the transconductance where it is printed (`mobility`), else 0; u = k ln(1 + exp((V_GS - V_TO) / k)) with k = 0.1 V is the model's overdrive. The gate's
         capacitances follow from C_iss, C_rss, Q_gd and, where it is printed, Q_g (`gate_capacitances`). Output capacitance
-        as an abrupt junction. At 25 degC; `at_temperature` takes them elsewhere.
+        as an abrupt junction. The body diode from V_SD where it is printed. At 25 degC; `at_temperature` takes them elsewhere.
 
         References
         ----------
         ngspice manual, VDMOS model (equations of the gate-drain capacitance and of the triode region).
         """
-        points = sorted((p.gate.typ, p.value.typ) for p in self.on_resistance if p.kelvin == T_MODEL)
+        points = sorted(
+            (p.gate.typ, p.value.typ, p.current.typ if p.current is not None else 0.0)
+            for p in self.on_resistance
+            if p.kelvin == T_MODEL
+        )
         if not points:
             raise QuantityError('on_resistance needs a point at 25 degC (one without "at")')
         v_th, i_th = self.threshold.typ, self.threshold_current.typ
@@ -257,25 +302,17 @@ class NMosfet(Part):
             raise QuantityError(
                 f"on_resistance at a gate voltage of {points[0][0]:.3g} V, below the threshold of {v_th:.3g} V"
             )
-        v_to = v_th
-
-        def drive(v_gs: float) -> float:
-            return overdrive(v_gs, v_to)
-
-        for _ in range(60):  # V_TO and K_P depend weakly on each other
-            if len(points) == 1:
-                r_d, k_p = points[0][1] / 2, 2 / (points[0][1] * drive(points[0][0]))
-            else:
-                (v1, r1), (v2, r2) = points[0], points[-1]
-                k_p = (1 / drive(v1) - 1 / drive(v2)) / (r1 - r2) if r1 > r2 and v2 > v1 else math.inf
-                r_d = r1 - 1 / (k_p * drive(v1))
-            if not (0 < k_p < math.inf) or r_d < 0:
+        v_to, found = v_th, Channel(math.inf, 0.0, 0.0)
+        for _ in range(_ROUNDS):  # threshold, channel and what it drops depend weakly on each other
+            found = self._channel(points, v_to, found)
+            if not (0 < found.k_p < math.inf) or found.r_d < 0:
                 raise QuantityError(
                     "on_resistance at the gate voltages given and threshold contradict each other: the resistance must fall "
                     "with gate voltage, and not faster than the channel alone; use the typical figures of one table"
                 )
-            above = math.sqrt(2 * i_th / k_p) / _SUBTHRESHOLD
+            above = math.sqrt(2 * i_th / found.k_p) / _SUBTHRESHOLD
             v_to = v_th - _SUBTHRESHOLD * (above + math.log(-math.expm1(-above)))
+        k_p, r_d, fall = found.k_p, found.r_d, found.fall
         c_iss, c_oss, c_rss = (
             c.typ for c in (self.input_capacitance, self.output_capacitance, self.reverse_capacitance)
         )
@@ -302,22 +339,42 @@ class NMosfet(Part):
         return {
             "VTO": v_to,
             "KSUBTHRES": _SUBTHRESHOLD,
-            "KP": k_p,
+            "KP": k_p / (1 - fall * v_to),  # ngspice's THETA counts from V_GS = 0
+            "THETA": fall / (1 - fall * v_to),
             "RD": r_d,
             "RS": 0.0,
             "RG": self.gate_resistance.typ,
-            "RB": 0.005,
+            "RB": BODY_RESISTANCE,
             **gate_capacitances(figures),
             "CJO": junction,
             "VJ": _BODY_DIODE_POTENTIAL,
             "M": 0.5,
-            "IS": 1e-12,
-            "N": 1.1,
+            "IS": body_saturation(self.source_drain, self.source_drain_current, T_MODEL),
+            "N": BODY_EMISSION,
             "TT": 50e-9,
             "BV": breakdown,
             "IBV": _BREAKDOWN_CURRENT,
             "TNOM": 25.0,
         }
+
+    def _channel(self, points: Sequence[tuple[float, float, float]], v_to: float, before: Channel) -> Channel:
+        """The channel of the first and the last of the points, with what it drops and how it falls off as `before`."""
+        x, r = [], []
+        for gate, ohms, amperes in (points[0], points[-1]):
+            u = overdrive(gate, v_to)
+            drop = amperes * (ohms - before.r_d) if before.k_p < math.inf else 0.0
+            x.append((1 + before.fall * u) / max(u - drop / 2, u / 2))
+            r.append(ohms)
+        if len(points) == 1:
+            k_p, r_d = 2 * x[0] / r[0], r[0] / 2
+        else:
+            k_p = (x[0] - x[1]) / (r[0] - r[1]) if r[0] > r[1] and x[0] > x[1] else math.inf
+            r_d = r[0] - x[0] / k_p
+        g, at = self.transconductance, self.transconductance_current
+        if g is None or at is None or only_bounds(g) or not 0 < k_p < math.inf:
+            return Channel(k_p, r_d, 0.0)
+        wanted = mobility(k_p, v_to, r_d + before.fall / k_p, g.typ, at.typ)
+        return Channel(k_p, r_d, 0.5 * (before.fall + wanted))
 
 
 def overdrive(v_gs: float, v_to: float) -> float:

@@ -27,8 +27,6 @@ from boardsim.parts.elements import (
     GROUND,
     Ammeter,
     Bipolar,
-    CurrentDrive,
-    Drive,
     Element,
     Model,
     Port,
@@ -40,7 +38,8 @@ from boardsim.parts.elements import (
     voltage,
 )
 from boardsim.parts.heat import junction_heat
-from boardsim.parts.proof import AtEnd, Between, Proof, Ratio
+from boardsim.parts.npn_proofs import npn_proofs
+from boardsim.parts.proof import Proof
 from boardsim.parts.record import Record
 from boardsim.parts.rules import BreakdownRule, DriveRule, HeatRule, Limit, MeanRule, PeakRule
 from boardsim.quantities import (
@@ -63,8 +62,6 @@ _REVERSE_GAIN = (
 _REVERSE_GAINS = tuple(0.25 * 1.1**k for k in range(47))  # [1], what is tried where several points decide: 0.25 to 20
 _TYPICAL_OVER_LEAST = 1.5  # [1], of gains where only the least is printed, from memory
 _CLEARLY_MORE = 1.05  # [1], typical over least gain, or a weakly driven transistor would carry just what is allowed
-_PROOF_VOLTAGE = 5.0  # [V], collector voltage of the gain's test circuit; without Early effect it does not matter
-_PROOF_TIME = 1e-4  # [s]
 
 
 _LEAST_JUNCTION = 0.6  # [V] across a base that conducts, from memory
@@ -266,84 +263,7 @@ class Npn(Part):
 
     def proofs(self) -> tuple[Proof, ...]:
         """Its saturation voltages, gains, base-emitter voltages and storage time."""
-        return (
-            *(self._voltage_proof(p, "c", "V_CE(sat)") for p in self.saturation),
-            *(self._voltage_proof(p, "b", "V_BE(sat)") for p in self.base_emitter),
-            *(self._gain_proof(g) for g in self.gain),
-            *(() if self.storage_time.assumed() else (self._storage_proof(),)),
-        )
-
-    def _transistor(self) -> Bipolar:
-        return Bipolar("dut", "c", "b", GROUND, Model("dut_m", "NPN", self.parameters()))
-
-    def _voltage_proof(self, point: Saturation, node: str, what: str) -> Proof:
-        elements: tuple[Element, ...] = (
-            self._transistor(),
-            _steady("collector", "c", point.current.typ),
-            _steady("base", "b", point.base.typ),
-        )
-        return Proof(
-            f"{what} at {point.current} with {point.base}",
-            "V",
-            point.printed,
-            elements,
-            _PROOF_TIME,
-            AtEnd(voltage(node)),
-            why="of more points than parameters the model meets none exactly",
-        )
-
-    def _gain_proof(self, gain: Gain) -> Proof:
-        collector, base = Ammeter("collector", "supply", "c"), Ammeter("base", "inp", "b")
-        volts = ((0.0, _PROOF_VOLTAGE), (_PROOF_TIME, _PROOF_VOLTAGE))
-        elements: tuple[Element, ...] = (
-            self._transistor(),
-            Drive("supply", "supply", GROUND, volts),
-            _steady("drive", "inp", gain.current.typ / gain.typ),
-            collector,
-            base,
-        )
-        return Proof(
-            f"gain at {gain.current}",
-            "A/A",
-            Quantity(gain.typ, float(gain.least), gain.typ, "A/A", gain.current.origin),
-            elements,
-            _PROOF_TIME,
-            Ratio(current(collector), current(base)),
-            why="of more points than parameters the model meets none exactly",
-            shapes=gain.typical is not None,
-        )
-
-    def _storage_proof(self) -> Proof:
-        """From the base current's reversal until the collector current has fallen to 90 %."""
-        point = self.saturation[0]
-        i_c, i_b, start, edge = point.current.typ, point.base.typ, 10e-6, 1e-9
-        load = (10.0 - point.voltage.typ) / i_c
-        meter = Ammeter("collector", "load", "c")
-        reversal = ((0.0, i_b), (start, i_b), (start + edge, -i_b))
-        base = Ammeter("base", "inp", "b")
-        elements: tuple[Element, ...] = (
-            self._transistor(),
-            Drive("supply", "supply", GROUND, ((0.0, 10.0), (1.0, 10.0))),
-            Resistor("load", "supply", "load", load),
-            meter,
-            base,
-            CurrentDrive("drive", "inp", GROUND, reversal),
-        )
-        return Proof(
-            f"storage time at {point.current} with {point.base} both ways",
-            "s",
-            self.storage_time,
-            elements,
-            start + 2 * self.storage_time.typ,
-            Between(current(base), 0.0, "fall", current(meter), 0.9 * i_c, "fall"),
-            tolerance=0.3,
-            why="Moll's formula holds for low-level injection and to the end of saturation, not to 90 %",
-        )
-
-
-def _steady(name: str, node: str, amperes: float) -> CurrentDrive:
-    """A constant current into a node."""
-    return CurrentDrive(name, node, GROUND, ((0.0, amperes), (_PROOF_TIME, amperes)))
+        return npn_proofs(self)
 
 
 class NpnStage(Part):
