@@ -50,8 +50,8 @@ def refused(outcome: tuple[int, str, str], *texts: str) -> None:
 BAD_BOARDS: dict[str, tuple[bytes, str]] = {
     "misspelt key": (BOARD.replace("esr", "ers").encode(), 'board.toml:7: bulk.ers: "ers" is not known here (did you mean "esr"?)'),
     "bare number": (BOARD.replace('"1.8 m"', "1.8").encode(), "board.toml:6: cable.length: 1.8 has no unit"),
-    "unknown part": (BOARD.replace("24v-5w", "24v5w").encode(), '(did you mean "24v-5w"?)'),
-    "wrong kind": (BOARD.replace("24v-5w", "fast-2a").encode(), '"fast-2a" is a diode; a zener or tvs is needed here'),
+    "unknown part": (BOARD.replace("20v-5w", "20v5w").encode(), '(did you mean "20v-5w"?)'),
+    "wrong kind": (BOARD.replace("20v-5w", "fast-2a").encode(), '"fast-2a" is a diode; a zener or tvs is needed here'),
     "command in a label": (BOARD.replace("lane {n}", "a\\n.control").encode(), "cannot be a name"),
     "command in a coil": (BOARD.replace("[coils.ejector]", '[coils."a\\n.control"]').encode(), "cannot be a name"),
     "channels outside": (BOARD.replace("count = 3", "count = 2").encode(), "outputs 16-23 are outside the chain: 2 registers have outputs 0-15"),

@@ -51,12 +51,13 @@ def judge_warmth(found: Sequence[Finding], bench: Bench) -> Iterator[Finding]:
     """Whether the warmest junction is no warmer than what the hot corners took semiconductors' figures at.
 
     A junction above that has a higher breakdown and on-resistance and a lower forward voltage than the run knew. With a
-    rise that was assumed the rest of the way is a missing number, with one that was given the run is no proof.
+    rise that was assumed the rest of the way is a missing number, with one that was given the run is no proof. Not asked of a
+    volley, which is fired once: its average power is nobody's.
     """
     around = bench.board.around
     # One that is above its own limit has failed already; what its figures would be there is no matter any more.
     hot = [f for f in found if f.check == "overheating" and f.unit == "K" and f.margin is not None and f.margin >= 0]
-    if around is None or not hot:
+    if around is None or not hot or bench.repeated:
         return
     warmest = max(hot, key=lambda f: f.value)
     taken, rise = hot_junction(bench.board), bench.board.junction_rise

@@ -10,7 +10,7 @@ from boardsim.errors import InputError, Problem
 NETLISTS = Path(__file__).parents[2] / "netlists"
 FRUIT_SORTER = NETLISTS / "fruit-sorter" / "board.toml"
 TEXT = FRUIT_SORTER.read_text(encoding="utf-8")
-CLAMP = 'clamp = { kind = "diode-zener", to = "rail", diode = "fast-2a", zener = "24v-5w" }'
+CLAMP = 'clamp = { kind = "diode-zener", to = "rail", diode = "fast-2a", zener = "20v-5w" }'
 MORE_CHANNELS = """[channels."{}"]
 {}
 coil = "ejector"

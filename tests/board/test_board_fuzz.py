@@ -110,7 +110,19 @@ def may_be(what: str, key: str) -> bool:
 
 
 def test_every_key_that_goes_missing_leaves_a_valid_board_or_a_located_problem(tmp_path: Path) -> None:
-    optional = {"name", "ambient", "limits", "most_on", "brown_out", "label", "to", "pulldown", "pull_in", "release"}
+    optional = {
+        "name",
+        "ambient",
+        "junction_rise",
+        "limits",
+        "most_on",
+        "brown_out",
+        "label",
+        "to",
+        "pulldown",
+        "pull_in",
+        "release",
+    }
     optional |= {"at", "rise", "current_ceiling", "esl", "rated", "resistance"}
     optional |= {"controller", "high_drop", "low_output", "spi_mode", "tick", "jitter", "frame_gap"}
     optional |= {"lateness", "clock_line", "latch_line", "pull_down"}

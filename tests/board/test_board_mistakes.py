@@ -50,14 +50,14 @@ NAME_RULE = (
         (changed('"diode-zener"', '"diod-zener"'), 27, 'channels."0-23".clamp: kind "diod-zener" is not known for "clamp" (did you mean "diode-zener"?); known: "array", "avalanche", "diode", "diode-zener"'),
         (changed('"rail"', '"ground"'), 27, "channels.\"0-23\".clamp.to: 'ground' is not allowed for \"to\"; allowed: \"rail\""),
         (changed(CLAMP, '[channels."0-23".clamp]\nkind = "diode"\ndiode = "fast-2a"\nto = "ground"'), 30, "channels.\"0-23\".clamp.to: 'ground' is not allowed for \"to\""),
-        (changed(CLAMP, '[channels."0-23".clamp]\nkind = "diode"\ndiode = "fast-2a"\nzener = "24v-5w"'), 30, 'channels."0-23".clamp.zener: "zener" is not known here; known: kind, title, to, at, diode'),
+        (changed(CLAMP, '[channels."0-23".clamp]\nkind = "diode"\ndiode = "fast-2a"\nzener = "20v-5w"'), 30, 'channels."0-23".clamp.zener: "zener" is not known here; known: kind, title, to, at, diode'),
         (changed("count = 3", 'count = 3\nactive = "hi"'), 13, "chain.active: 'hi' is not allowed for \"active\" (did you mean \"high\"?); allowed: \"high\", \"low\""),
         (changed("count = 3", "count = 3\nbit_order = 4"), 13, 'chain.bit_order: 4 is not allowed for "bit_order"; allowed: "msb", "lsb"'),
         (with_part('kind = "zenner"'), 29, 'parts.mine: kind "zenner" is not known for "mine" (did you mean "zener"?); known: "darlington-array", "diode",'),
         # parts by name
         (changed('"74HC595"', '"74HC596"'), 11, 'chain.register: shift-register "74HC596" is neither in this file nor in the library (did you mean "74HC595"?); known: 74AHC595, 74AHCT595, 74HC595, 74HCT595, 74LV595, SN74HC595'),
-        (changed('"24v-5w"', '"24v5w"'), 27, 'channels."0-23".clamp.zener: zener or tvs "24v5w" is neither in this file nor in the library (did you mean "24v-5w"?); known: 12v-5w, 24v-5w'),
-        (changed('"24v-5w"', '"fast-2a"'), 27, 'channels."0-23".clamp.zener: "fast-2a" is a diode; a zener or tvs is needed here'),
+        (changed('"20v-5w"', '"20v5w"'), 27, 'channels."0-23".clamp.zener: zener or tvs "20v5w" is neither in this file nor in the library (did you mean "20v-5w"?); known: 12v-5w, 20v-5w'),
+        (changed('"20v-5w"', '"fast-2a"'), 27, 'channels."0-23".clamp.zener: "fast-2a" is a diode; a zener or tvs is needed here'),
         (changed('"n-logic-60v"', '"fast-2a"'), 26, 'channels."0-23".switch.part: "fast-2a" is a diode; an n-mosfet is needed here'),
         (changed('"n-logic-60v"', '"n-logic60v"'), 26, 'channels."0-23".switch.part: n-mosfet "n-logic60v" is neither in this file nor in the library (did you mean "n-logic-60v"?)'),
         (changed('"n-logic-60v"', '{ kind = "zener", voltage = "3 V" }'), 26, 'channels."0-23".switch.part: this is a zener; an n-mosfet is needed here'),
@@ -192,7 +192,7 @@ def test_mistakes_that_only_the_layout_shows_come_together(tmp_path: Path) -> No
 
 
 def test_a_part_with_a_mistake_is_reported_once_at_the_part(tmp_path: Path) -> None:
-    content = with_part(ZENER.replace('"12 V"', '"12 X"')).replace('"24v-5w"', '"mine"')
+    content = with_part(ZENER.replace('"12 V"', '"12 X"')).replace('"20v-5w"', '"mine"')
     assert said(tmp_path, content) == [
         "31: parts.mine.voltage: unit 'X' is not known; write a voltage such as '24 V +/- 5 %'"
     ]
@@ -278,7 +278,7 @@ def test_bits_follow_the_outputs_where_they_are_not_given(tmp_path: Path) -> Non
 
 def test_a_part_of_the_file_stands_before_one_of_the_library(tmp_path: Path) -> None:
     path = tmp_path / "board.toml"
-    path.write_text(with_part(ZENER).replace("[parts.mine]", '[parts."24v-5w"]'), encoding="utf-8")
+    path.write_text(with_part(ZENER).replace("[parts.mine]", '[parts."20v-5w"]'), encoding="utf-8")
     zener = read_board(path).channels[0].clamp.zener
     assert zener.voltage.typ == 12.0
     assert str(zener.voltage.origin) == "given: board.toml"

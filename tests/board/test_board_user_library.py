@@ -12,7 +12,7 @@ from boardsim.errors import InputError
 
 MY_ZENER = f'[my-zener]\n{ZENER}source = "the maker\'s sheet, page 3"\n'
 LOW, HIGH = (f'{{ value = "55 mohm", gate = "{gate}" }}' for gate in ("1 V", "4.5 V"))
-USES_MINE = changed('zener = "24v-5w"', 'zener = "my-zener"')
+USES_MINE = changed('zener = "20v-5w"', 'zener = "my-zener"')
 
 
 def put(folder: Path, board: str = USES_MINE, **files: str) -> Path:
@@ -61,10 +61,10 @@ def test_a_folder_elsewhere_is_used_when_it_is_named(tmp_path: Path) -> None:
 
 
 def test_the_boards_own_part_wins_over_the_users_and_that_over_the_built_in_one(tmp_path: Path) -> None:
-    mine = MY_ZENER.replace("[my-zener]", "[24v-5w]")
-    assert zener_of(read_board(put(tmp_path, TEXT))).voltage.typ == 24.0
+    mine = MY_ZENER.replace("[my-zener]", "[20v-5w]")
+    assert zener_of(read_board(put(tmp_path, TEXT))).voltage.typ == 20.0
     assert zener_of(read_board(put(tmp_path, TEXT, library__mine=mine))).voltage.typ == 12.0
-    own = changed("[limits]", "[parts.24v-5w]\n" + ZENER.replace("12 V", "18 V") + "[limits]")
+    own = changed("[limits]", "[parts.20v-5w]\n" + ZENER.replace("12 V", "18 V") + "[limits]")
     zener = zener_of(read_board(put(tmp_path, own, library__mine=mine)))
     assert zener.voltage.typ == 18.0
     assert zener.voltage.origin.kind == "given"
@@ -131,7 +131,7 @@ def test_a_folder_that_is_none_or_holds_no_parts_is_refused(tmp_path: Path) -> N
 def test_an_empty_folder_library_beside_a_board_changes_nothing(tmp_path: Path) -> None:
     path = put(tmp_path, TEXT)
     (tmp_path / "library").mkdir()
-    assert zener_of(read_board(path)).voltage.typ == 24.0
+    assert zener_of(read_board(path)).voltage.typ == 20.0
 
 
 def test_a_switch_stage_is_of_the_kind_of_a_transistor_in_the_users_library(tmp_path: Path) -> None:
