@@ -7,10 +7,10 @@ from typing import Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Corner, Part, Stamp, Surroundings, listed
+from boardsim.parts.base import Assumption, Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
 from boardsim.parts.elements import Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
-from boardsim.parts.rules import Limit, PullInRule, ReleaseRule
+from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule
 from boardsim.quantities import (
     CURRENT,
     INDUCTANCE,
@@ -24,6 +24,7 @@ from boardsim.quantities import (
 )
 
 _CORE_LOSS_FACTOR = 200
+IDLE_SHARE = 0.1  # of the settled current, where no release current is given: below it nothing is held, from memory
 
 
 class Coil(Part):
@@ -99,6 +100,9 @@ class Coil(Part):
             core_loss_resistance=self.loss,
             temperature_rise_of_the_winding=self.rise,
         )
+        if self.release is None:
+            why = "no release current given: what a coil that is off may carry, from memory"
+            assumed += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
         return Stamp(
             elements=(
                 Resistor(f"{name}_r", a, mid, self.winding(corner, around)),
@@ -121,6 +125,12 @@ class Coil(Part):
                     "overlap",
                     "i_coil",
                     Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None),
+                ),
+                IdleRule(
+                    "uncommanded",
+                    "i_coil",
+                    Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None),
+                    IDLE_SHARE,
                 ),
             ),
             assumptions=assumed,

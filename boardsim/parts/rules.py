@@ -166,6 +166,19 @@ class ReleaseRule:
 
 
 @dataclass(frozen=True)
+class IdleRule:
+    """Before its first pulse and after its last a channel's coil must carry less than the release current.
+
+    `limit` is that current; where it was not given, `share` of the current that settles in the coil at the lowest supply.
+    """
+
+    check: str
+    quantity: str
+    limit: Limit
+    share: float
+
+
+@dataclass(frozen=True)
 class DriveRule:
     """At the end of every pulse, when its current is highest, a switch must be driven as hard as that current needs.
 
@@ -217,6 +230,7 @@ Rule = (
     | BreakdownRule
     | PullInRule
     | ReleaseRule
+    | IdleRule
     | DipRule
     | CeilingRule
 )

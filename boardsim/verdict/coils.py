@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 import numpy as np
 
 from boardsim.circuit.deck import PlacedRule
-from boardsim.parts.rules import PullInRule, ReleaseRule
+from boardsim.parts.rules import IdleRule, PullInRule, ReleaseRule
 from boardsim.quantities import in_units
-from boardsim.verdict.bench import Bench
+from boardsim.verdict.bench import Bench, when
 from boardsim.verdict.findings import Finding, Floats
 
 
@@ -45,6 +46,38 @@ def judge_release(
     )
     said += _held(placed, bound, margin, "lets go below", "release", "a longer pause, or a clamp of higher voltage")
     yield bench.finding(placed, rule.limit, "coil current when fired again", value, margin, at, said)
+
+
+def judge_idle(rule: IdleRule, placed: PlacedRule, samples: tuple[Floats, Floats], bench: Bench) -> Iterator[Finding]:
+    """What the coil carries while its channel is off, at rest before everything and when all has settled after it.
+
+    Notes
+    -----
+    A clamp that conducts at the rail, a switch that leaks or does not turn off: the current flows whatever the firmware
+    does, and no pulse shows it. At other moments a coil that is off carries what its last pulse left.
+    """
+    times, values = samples
+    if not len(values):
+        return
+    k = int(np.argmax(np.abs(values)))
+    value, at = float(abs(values[k])), float(times[k])
+    limit, board = rule.limit, bench.board
+    coil = board.channel(placed.channel or 0).coil
+    stands = f"{placed.part} lets go below"
+    if limit.value is None:
+        settled = board.supply.voltage.min / (coil.resistance.max + board.supply.resistance.max)
+        why = f"{rule.share:.0%} of the settled current, since no release current was given: from memory"
+        limit = replace(limit, value=rule.share * settled, source=f"assumed: {why}", name="harmless current")
+        stands = f"a tenth of the settled current of {placed.part}, for want of a release current, is"
+    bound = limit.value or 0.0
+    margin = (bound - value) / bound
+    said = (
+        f"{placed.label}: with its channel off{when(at)} the coil carries {in_units(value, 'A')}; {stands} "
+        f"{in_units(bound, 'A')}"
+    )
+    if margin < 0:
+        said += "; try: a clamp that blocks the highest rail, or a switch that is off at its gate's or base's level"
+    yield bench.finding(placed, limit, "coil current while off", value, margin, at, said)
 
 
 def _held(placed: PlacedRule, bound: float | None, margin: float | None, does: str, name: str, remedy: str) -> str:

@@ -15,6 +15,7 @@ from boardsim.parts.rules import (
     EnergyRule,
     FloorRule,
     HeatRule,
+    IdleRule,
     MeanRule,
     PeakRule,
     PullInRule,
@@ -25,7 +26,7 @@ from boardsim.parts.rules import (
 from boardsim.quantities import in_units
 from boardsim.verdict.avalanche import judge_breakdown
 from boardsim.verdict.bench import Bench, upper
-from boardsim.verdict.coils import judge_pull_in, judge_release
+from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.heat import judge_heat, judge_warmth
@@ -133,6 +134,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], bench)
         case ReleaseRule() as rule:
             yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
+        case IdleRule() as rule:
+            yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
         case DipRule() as rule:
             yield judge_dip(rule, placed, readings, firing, bench)
         case CeilingRule() as rule:

@@ -19,6 +19,7 @@ from boardsim.parts.rules import (
     DriveRule,
     EnergyRule,
     HeatRule,
+    IdleRule,
     MeanRule,
     PullInRule,
     PulseRule,
@@ -81,6 +82,8 @@ class Readings:
         Without those in stretches in which a clocked line sets them: a finer run has no more of these.
     pulses : mapping of (channel, quantities, share) to tuple of OnePulse
         Share of its peak above which a pulse counts as lasting.
+    idle : mapping of channel to (times, currents)
+        Of channels that are off, before everything and after it.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -97,6 +100,7 @@ class Readings:
     points: int
     envelopes: Mapping[str, Envelope]
     pulses: Mapping[PulseKey, tuple[OnePulse, ...]] = field(default_factory=dict)
+    idle: Mapping[int, tuple[Floats, Floats]] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -153,6 +157,9 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for c, r in rules
         if isinstance(r, ReleaseRule) and c is not None
     }
+    idle = {
+        c: Samples(_at_rest(firing.on[c], start, stop)) for c, r in rules if isinstance(r, IdleRule) and c is not None
+    }
     drive = {
         (c, quantity): Samples(_within(firing.on[c][:, 1], start, stop))
         for c, r in rules
@@ -180,7 +187,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for dip in (dips, guarded):
             dip.feed(t, y[row[None, "v_rail"]])
         ceiling.feed(t, y[row[None, "i_supply"]])
-        for samples in (pull_in, release):
+        for samples in (pull_in, release, idle):
             for c, sample in samples.items():
                 sample.feed(t, y[row[c, "i_coil"]])
         for (c, quantity), sample in drive.items():
@@ -237,6 +244,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             for i, (name, key) in enumerate(shown.items())
         },
         {key: tuple(watched.all()) for key, watched in pulses.items()},
+        {c: (s.times, s.values) for c, s in idle.items()},
     )
 
 
@@ -281,6 +289,12 @@ def our_name(name: str) -> str:
 def _within(times: Floats, start: float, stop: float) -> Floats:
     inside: Floats = times[(times >= start) & (times <= stop)]
     return inside
+
+
+def _at_rest(on: Floats, start: float, stop: float) -> Floats:
+    """The run's start and its end, where a channel is off then. [s]"""
+    times = [t for t in (start, stop) if not np.any((on[:, 0] <= t) & (t <= on[:, 1]))]
+    return np.array(times)
 
 
 def _largest(extremes: Extremes, i: int) -> float:
