@@ -19,6 +19,8 @@ _INPUT_NAMES = {
     "clamp_voltage": "clamp voltage",
     "breakdown": "breakdown voltage",
     "logic": "logic rail",
+    "on_resistance": "on-resistance",
+    "threshold": "threshold",
 }
 
 
@@ -70,7 +72,8 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min"}
-    stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max"}
+    # Hot: the least threshold leaks most, the largest on-resistance heats most.
+    stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max", "on_resistance": "max", "threshold": "min"}
     soft: dict[str, Bound] = {"clamp_voltage": "min", "breakdown": "min"}
     warm, cool = hot_junction(board), cold_junction(board)
     wanted = [
@@ -86,7 +89,12 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
             "cold",
             junction=cool,
         ),
-        Corner("supply low, coils hot", {**weak, "coil_resistance": "max", "inductance": "max"}, "hot", junction=warm),
+        Corner(
+            "supply low, coils hot",
+            {**weak, "coil_resistance": "max", "inductance": "max", "on_resistance": "max"},
+            "hot",
+            junction=warm,
+        ),
         Corner(
             "supply low, coils cold", {**weak, "coil_resistance": "min", "inductance": "min"}, "cold", junction=cool
         ),

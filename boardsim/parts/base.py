@@ -39,6 +39,10 @@ class Part(Record):
         """What the corners vary in this part, by the keys of `Corner.ends`."""
         return {}
 
+    def derived(self) -> dict[str, Quantity]:
+        """Numbers by the names of fields that follow from others, or are assumed where the field was not given."""
+        return {}
+
     def proofs(self) -> tuple[Proof, ...]:
         """What of its datasheet the model can be held against; none for a part that has no model of its own."""
         return ()

@@ -60,6 +60,8 @@ _MOST_FOLDS = 250  # e-folds of current: about 11 V across the junction alone, m
 _RECOVERY_CURRENTS = 0.5  # forward over reverse current at which recovery times are given (0.5 A, 1 A), common practice
 EMISSION = 1.75  # silicon rectifier in its working range, from memory
 RAMP, SETTLE = 1e-3, 10e-3  # [s], of a test current: from nothing to its value, and until it is read
+_FAR = 20.0  # [K] from 25 degC, nearer than which rounding of the printed voltages decides the drift
+_STEEPEST = 10e-3  # [V/K], three times what stacked junctions have, from memory
 _DRIFT, _DRIFT_SHARE = 2e-3, 3e-3  # [V/K], [1/K] see Diode.drift
 _BASE = 0.1  # share of its peak above which a half sine lasts for 94 % of its base, by which surge ratings count
 
@@ -217,6 +219,11 @@ class Diode(Part):
             If the points do not rise, or cannot be those of one junction.
         """
         return junction_parameters(self.forward, self.drift, EMISSION, t)
+
+    def derived(self) -> dict[str, Quantity]:
+        """What is assumed for want of a number."""
+        shown = any(p.kelvin != T_MODEL for p in self.forward)
+        return {} if shown else {"forward drift": self.drift}
 
     @property
     def drift(self) -> Quantity:
@@ -405,11 +412,21 @@ def junction_parameters(
     i_s, n, r_s = forward_parameters(cold, emission)
     reference, slope = cold[-1][1], drift.typ
     hot = [p for p in points if p.kelvin != T_MODEL]
-    if hot and drift.assumed():
+    if hot and not drift.assumed():
+        raise QuantityError("give forward points at another temperature or forward_drift, not both")
+    if hot:
         point = max(hot, key=lambda p: abs(p.kelvin - T_MODEL))
         reference = point.current.typ
         volts = n * THERMAL_VOLTAGE * math.log(reference / i_s) + r_s * reference
+        if abs(point.kelvin - T_MODEL) < _FAR:
+            raise QuantityError(
+                f"a forward point at {celsius(point.kelvin)} is too near to 25 degC to show how the voltage moves"
+            )
         slope = (point.voltage.typ - volts) / (point.kelvin - T_MODEL)
+        if abs(slope) > _STEEPEST:
+            raise QuantityError(
+                f"forward points move by {slope * 1e3:.3g} mV/K, more than a junction does; check them and their temperatures"
+            )
     left = n * THERMAL_VOLTAGE * math.log(reference / i_s) + slope * (HOTTEST - T_MODEL)
     if left <= 0:
         raise QuantityError(

@@ -9,10 +9,21 @@ from pydantic import Field, model_validator
 from boardsim.parts.base import NOMINAL, T_MODEL, Corner, Part, Stamp, listed
 from boardsim.parts.diode import ForwardPoint, drift_listed, forward_proofs, junction_parameters
 from boardsim.parts.elements import Junction, Model, Port, Probe, Resistor, Signal, scaled, voltage
+from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import Proof
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule
 from boardsim.parts.temperature import in_celsius, reverse_current
-from boardsim.quantities import CAPACITANCE, CURRENT, POSITIVE_TIME, VOLTAGE, VOLTAGE_DRIFT, Quantity, assume
+from boardsim.quantities import (
+    CAPACITANCE,
+    CURRENT,
+    POSITIVE_TIME,
+    TEMPERATURE,
+    THERMAL_RESISTANCE,
+    VOLTAGE,
+    VOLTAGE_DRIFT,
+    Quantity,
+    assume,
+)
 
 _EMISSION = 2.0  # recombination in the junction of wide-gap semiconductors, from memory
 
@@ -40,6 +51,8 @@ class Led(Part):
     )
     leakage: Annotated[Quantity, CURRENT] = assume("1 uA", CURRENT, "at a reverse voltage of 5 V, from memory")
     capacitance: Annotated[Quantity, CAPACITANCE] = assume("50 pF", CAPACITANCE, "chip of a 5 mm LED, from memory")
+    thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
+    junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
     forward_drift: Annotated[Quantity, VOLTAGE_DRIFT] = assume(
         "-3 mV/K", VOLTAGE_DRIFT, "forward voltage of an LED against temperature, -2 to -4 mV/K, from memory"
     )
@@ -119,6 +132,15 @@ class Led(Part):
                     f"average current of the {label}",
                     "take the coil's current over with another clamp, or fire less often",
                     part=name_of,
+                ),
+                junction_heat(
+                    name_of,
+                    label,
+                    ((v, i),),
+                    self.thermal_resistance,
+                    self.junction_rating,
+                    corner.ambient,
+                    "take the coil's current over with another clamp, or fire less often",
                 ),
             ),
             assumptions=listed(

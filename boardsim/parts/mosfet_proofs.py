@@ -33,7 +33,7 @@ from boardsim.parts.proof import AtEnd, Between, Proof, Ratio
 from boardsim.quantities import Quantity, in_units
 
 if TYPE_CHECKING:
-    from boardsim.parts.switches.n_mosfet import NMosfet, SwitchingTimes
+    from boardsim.parts.mosfet import NMosfet, SwitchingTimes
 
 _BREAKDOWN_CURRENT = 250e-6  # [A] at which V_(BR)DSS is specified, common practice
 _SETTLED = 1e-3  # [s] after which the slowest circuit, 250 uA into the capacitances at the drain, stands still

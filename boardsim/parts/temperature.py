@@ -14,6 +14,7 @@ from boardsim.quantities import CURRENT, TEMPERATURE, ZERO_CELSIUS, Quantity
 BOLTZMANN = 8.617333e-5  # [V/K] k / q, CODATA
 COLDEST, HOTTEST = 218.15, 448.15  # [K], -55 to 175 degC: what power semiconductors are rated for at most
 LEAST_SATURATION = 1e-28  # [A], what ngspice 39 takes instead of anything below it, measured
+_MOST_DRIFT = 3e-3  # [1/K]
 DOUBLING = 10.0  # [K] by which a junction warms until its reverse current has doubled, common practice for silicon
 
 
@@ -137,6 +138,29 @@ def reverse_current(points: Sequence[tuple[float, float]], t: float) -> float:
             raise QuantityError("leakage must rise with temperature from each point to the next")
         doubling = (t_1 - t_0) / math.log2(i_1 / i_0)
     return i_0 * math.pow(2.0, (t - t_0) / doubling)
+
+
+def refuse_drift(field: str, drift: float, volts: float) -> None:
+    """Refuse a drift that no junction in breakdown has.
+
+    Parameters
+    ----------
+    field : str
+        The key of the file.
+    drift : float
+        [V/K]
+    volts : float
+        The voltage that moves. [V]
+
+    Raises
+    ------
+    QuantityError
+        If it is more than 0.3 %/K of the voltage, three times what datasheets print (0.03 to 0.13 %/K).
+    """
+    if abs(drift) > _MOST_DRIFT * volts:
+        raise QuantityError(
+            f"{field} of {drift * 1e3:.4g} mV/K is {abs(drift) / volts:.1%} of {volts:.4g} V per kelvin; datasheets print about 0.1 %/K"
+        )
 
 
 def grown(value: float, growth: float, t: float) -> float:

@@ -25,7 +25,7 @@ from boardsim.parts.elements import (
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule, Rule
-from boardsim.parts.temperature import in_celsius, reverse_current, thermal_voltage
+from boardsim.parts.temperature import in_celsius, refuse_drift, reverse_current, thermal_voltage
 from boardsim.parts.zener import steady_current
 from boardsim.quantities import (
     CAPACITANCE,
@@ -97,6 +97,7 @@ class Tvs(Part):
             raise QuantityError("clamping_current must be above the test_current of the breakdown voltage")
         if self.resistance < 0:
             raise QuantityError("clamping_voltage must be above the highest breakdown voltage")
+        refuse_drift("drift", self.breakdown_drift.typ, self.breakdown.typ)
         return self
 
     @property
@@ -110,6 +111,10 @@ class Tvs(Part):
         return self.drift or assume(
             f"{1e-3 * self.breakdown.typ:.4g} V/K", VOLTAGE_DRIFT, "0.1 %/K of the breakdown voltage, from memory"
         )
+
+    def derived(self) -> dict[str, Quantity]:
+        """What is assumed for want of a number."""
+        return {"drift": self.breakdown_drift}
 
     @property
     def clamping(self) -> Quantity:

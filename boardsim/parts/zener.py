@@ -13,7 +13,7 @@ from boardsim.parts.elements import GROUND, CurrentDrive, Junction, Model, Port,
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.rules import EnergyRule, Limit, MeanRule, PeakRule, Rule
-from boardsim.parts.temperature import in_celsius, reverse_current
+from boardsim.parts.temperature import in_celsius, refuse_drift, reverse_current
 from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
@@ -67,6 +67,7 @@ class Zener(Part):
                 f"impedance times test_current is {in_units(drop, 'V')}, which leaves nothing of the voltage of "
                 f"{in_units(self.voltage.min, 'V')}"
             )
+        refuse_drift("drift", self.voltage_drift.typ, self.voltage.typ)
         return self
 
     @property
@@ -83,6 +84,10 @@ class Zener(Part):
             VOLTAGE_DRIFT,
             "1 mV/K for each volt above 5 V, the middle of the bands that Zeners' datasheets print",
         )
+
+    def derived(self) -> dict[str, Quantity]:
+        """What is assumed for want of a number."""
+        return {"drift": self.voltage_drift}
 
     @property
     def clamping(self) -> Quantity:

@@ -16,6 +16,7 @@ from boardsim.report.wording import many, plain
 from boardsim.verdict.proving import PartProofs, ProofLine
 
 SCHEMA = "boardsim-proofs/1"
+_EXACT = 1e-3  # share of a printed number within which it is met exactly
 _STYLES = {"pass": "green", "fail": "bold red", "unproven": "bold magenta"}
 
 
@@ -79,6 +80,8 @@ def print_part(name: str, kind: str, details: Sequence[tuple[str, Quantity | str
 
 def _written(value: float, unit: str) -> str:
     """Kelvin above any thermal resistance's scale is a temperature, which people read in degrees Celsius."""
+    if unit == "1/K":
+        return f"{value:.3%}/K"
     return celsius(value) if unit == "K" and value > 200 else in_units(value, unit)
 
 
@@ -127,7 +130,14 @@ def print_proofs(parts: Sequence[PartProofs], console: Console) -> None:
     counts = Counter(line.verdict for part in parts for line in part.lines)
     said = ", ".join(f"{counts[v]} {v}" for v in ("fail", "unproven", "pass") if counts[v])
     proven = sum(1 for part in parts if part.lines)
+    exact = sum(
+        1 for part in parts for line in part.lines if line.deviation is not None and abs(line.deviation) < _EXACT
+    )
     console.print(f"{many(sum(counts.values()), 'printed number')} of {many(proven, 'part')}: {said or 'none'}")
+    if exact:
+        console.print(
+            f"{exact} of them are met within {_EXACT:.1%}: most of these shape the model, which passes through them by construction"
+        )
 
 
 def _printed(line: ProofLine) -> str:

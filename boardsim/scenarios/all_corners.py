@@ -112,7 +112,11 @@ def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
         if worse and mine.verdict != "unproven":
             more = f"; unproven, but worse: {in_units(f.value, f.unit)} ({f.corner})"
             kept[f.key] = replace(mine, sentence=mine.sentence + more)
-    return sorted(kept.values(), key=severity)
+    found = kept.values()
+    if any(f.check == "overheating" and f.verdict == "fail" for f in found):
+        # What figures would be at a temperature that no junction may reach is no question any more.
+        found = [f for f in found if f.check != "warming"]  # type: ignore[assignment]
+    return sorted(found, key=severity)
 
 
 def dips(board: Board, result: CornerResult) -> bool:

@@ -93,11 +93,18 @@ def _shape(rule: Rule, finding: Finding) -> Shape:
 
 def _beside_the_point(name: str, placed: PlacedRule) -> bool:
     """Whether a number that was run at its nominal value only does not bear on a rule's reading."""
-    of_the_rail = name in ("bulk capacitance", "bulk series resistance")
-    in_a_channel = placed.channel is not None and not isinstance(placed.rule, PullInRule)
-    return (name == "breakdown voltage" and not isinstance(placed.rule, BreakdownRule)) or (
-        of_the_rail and in_a_channel
-    )
+    rule = placed.rule
+    match name:
+        case "breakdown voltage":
+            return not isinstance(rule, BreakdownRule)
+        case "on-resistance":
+            return not isinstance(rule, HeatRule | PullInRule)
+        case "threshold":
+            return not isinstance(rule, IdleRule)
+        case "bulk capacitance" | "bulk series resistance":
+            return placed.channel is not None and not isinstance(rule, PullInRule)
+        case _:
+            return False
 
 
 def _assumed(placed: PlacedRule, deck: Deck) -> tuple[str, ...]:

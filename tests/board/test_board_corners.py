@@ -90,7 +90,12 @@ def test_without_an_ambient_semiconductors_are_at_25_degc(tmp_path: Path) -> Non
 
 
 def test_what_was_given_without_tolerance_is_named(tmp_path: Path) -> None:
-    assert nominal_only(read_board(FRUIT_SORTER)) == ("bulk series resistance", "breakdown voltage")
+    assert nominal_only(read_board(FRUIT_SORTER)) == (
+        "bulk series resistance",
+        "breakdown voltage",
+        "on-resistance",
+        "threshold",
+    )
     assert set(nominal_only(board(tmp_path, tolerances=False, ambient=False))) == {
         "supply voltage",
         "coil resistance",
@@ -99,6 +104,8 @@ def test_what_was_given_without_tolerance_is_named(tmp_path: Path) -> None:
         "bulk series resistance",
         "clamp voltage",
         "breakdown voltage",
+        "on-resistance",
+        "threshold",
         "logic rail",
         "winding temperature",
     }

@@ -211,7 +211,7 @@ def test_surge_points_that_rise_with_length_are_refused(points: list[tuple[str, 
         (Diode.model_validate({"forward": FORWARD}), {"overvoltage", "overcurrent", "overheating"}),
         (Zener.model_validate(ZENER), {"overcurrent", "overpower", "overheating"}),
         (Tvs.model_validate(TVS), {"surge", "overpower", "overheating"}),
-        (Led.model_validate({"forward": FORWARD}), {"overvoltage", "overcurrent", "surge"}),
+        (Led.model_validate({"forward": FORWARD}), {"overvoltage", "overcurrent", "surge", "overheating"}),
     ],
     ids=["diode", "zener", "tvs", "led"],
 )
@@ -254,7 +254,7 @@ def test_a_surge_and_a_pulse_energy_are_judged_where_they_are_given() -> None:
 
 def test_an_led_is_held_against_its_reverse_voltage_its_peak_and_its_mean() -> None:
     found = rules_of(library_part("led-white-5mm"))
-    expected = [(PeakRule, 5.0), (PulseRule, 0.1), (PeakRule, 0.1), (MeanRule, 0.025)]
+    expected = [(PeakRule, 5.0), (PulseRule, 0.1), (PeakRule, 0.1), (MeanRule, 0.025), (HeatRule, 373.15)]
     assert [(type(r), r.limit.value) for r in found] == expected  # type: ignore[union-attr]
 
 

@@ -15,9 +15,9 @@ from boardsim.parts.coil import Coil
 from boardsim.parts.copper import pair_inductance
 from boardsim.parts.diode import THERMAL_VOLTAGE, Diode, forward_parameters
 from boardsim.parts.elements import plus, scaled, voltage
+from boardsim.parts.mosfet import NMosfet
 from boardsim.parts.record import name_from, named_like, nearest, shown
 from boardsim.parts.supply import Supply
-from boardsim.parts.switches.n_mosfet import NMosfet
 from boardsim.quantities import CAPACITANCE, CHARGE, CURRENT, RESISTANCE, VOLTAGE, Dimension
 
 

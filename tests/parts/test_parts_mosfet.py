@@ -14,10 +14,11 @@ from boardsim.board.reader import library_part
 from boardsim.errors import QuantityError
 from boardsim.parts.base import NOMINAL
 from boardsim.parts.library import records
+from boardsim.parts.mosfet import NMosfet
 from boardsim.parts.mosfet_channel import mobility, overdrive_at
 from boardsim.parts.mosfet_charge import GateFigures, gate_capacitances
 from boardsim.parts.rules import HeatRule
-from boardsim.parts.switches.n_mosfet import NMosfet, NMosfetStage
+from boardsim.parts.switches.n_mosfet import NMosfetStage
 
 FIGURES = GateFigures(c_iss=900e-12, c_rss=65e-12, c_at=15.0, q_gd=3.75e-9, q_at=15.0, v_th=1.0, v_to=1.27)
 

@@ -15,9 +15,11 @@ from boardsim.parts.diode import Diode
 from boardsim.parts.elements import Resistor
 from boardsim.parts.heat import settled_temperature
 from boardsim.parts.led import Led
+from boardsim.parts.mosfet import NMosfet
 from boardsim.parts.rules import BreakdownRule, HeatRule
-from boardsim.parts.switches.n_mosfet import NMosfet, NMosfetStage
+from boardsim.parts.switches.n_mosfet import NMosfetStage
 from boardsim.parts.temperature import grown, in_celsius, junction_at, reverse_current, thermal_voltage
+from boardsim.parts.zener import Zener
 
 HOT, COLD = Corner("hot", junction=398.15), Corner("cold", junction=248.15)
 SCHOTTKY = {
@@ -151,7 +153,7 @@ def test_a_cold_transistor_breaks_down_earlier_and_is_rated_less() -> None:
 def test_an_on_resistance_at_another_temperature_sets_how_fast_it_grows() -> None:
     hot = {"value": "30.6 mohm", "gate": "10 V", "at": "125 degC"}
     part = NMosfet.model_validate({**MOSFET, "on_resistance": [*MOSFET["on_resistance"], hot]})  # type: ignore[misc]
-    assert grown(17e-3, part.growth, 398.15) == pytest.approx(30.6e-3)
+    assert grown(17e-3, part.growth.typ, 398.15) == pytest.approx(30.6e-3)
     with pytest.raises(ValidationError, match="needs one at 25 degC"):
         NMosfet.model_validate({**MOSFET, "on_resistance": [*MOSFET["on_resistance"], {**hot, "gate": "5 V"}]})  # type: ignore[misc]
 
@@ -181,3 +183,62 @@ def test_a_transistors_heat_is_judged_with_the_growth_of_its_on_resistance() -> 
     stage = NMosfetStage.model_validate({"kind": "n-mosfet", "part": part, "gate": "100 ohm"})
     (rule,) = (r for r in stage.stamp("s", "pin", "d", HOT).rules if isinstance(r, HeatRule))
     assert rule.growth == pytest.approx(0.004)
+
+
+@pytest.mark.parametrize(
+    ("changes", "text"),
+    [
+        ({"threshold_drift": "-12 mV/K"}, "leaves no threshold at 175 degC"),
+        ({"breakdown_drift": "-3 V/K"}, "5.5% of 55 V per kelvin"),
+        ({"on_resistance": [*MOSFET["on_resistance"], {"value": "15 mohm", "gate": "10 V", "at": "125 degC"}]}, "has to rise"),  # type: ignore[misc]
+        (
+            {"on_resistance": [*MOSFET["on_resistance"], {"value": "30 mohm", "gate": "10 V", "at": "125 degC"}],  # type: ignore[misc]
+             "on_resistance_growth": "0.4 %/K"},
+            "not both",
+        ),
+    ],
+)  # fmt: skip
+def test_what_no_transistor_does_is_refused(changes: dict[str, object], text: str) -> None:
+    with pytest.raises(ValidationError, match=text):
+        NMosfet.model_validate({**MOSFET, **changes})
+
+
+@pytest.mark.parametrize(
+    ("points", "drift", "text"),
+    [
+        ([{"voltage": "0.54 V", "current": "1 A", "at": "26 degC"}], None, "too near to 25 degC"),
+        ([{"voltage": "0.44 V", "current": "1 A", "at": "100 degC"}], "-1 mV/K", "not both"),
+        ([{"voltage": "1.9 V", "current": "1 A", "at": "100 degC"}], None, "more than a junction does"),
+    ],
+)
+def test_forward_points_that_cannot_show_a_drift_are_refused(
+    points: list[dict[str, str]], drift: str | None, text: str
+) -> None:
+    more = {} if drift is None else {"forward_drift": drift}
+    with pytest.raises(ValidationError, match=text):
+        Diode.model_validate({**SCHOTTKY, "forward": [*SCHOTTKY["forward"], *points], **more})  # type: ignore[misc]
+
+
+def test_a_zener_that_moves_more_than_any_does_is_refused() -> None:
+    fields = {"kind": "zener", "voltage": "24 V", "test_current": "50 mA", "impedance": "3.5 ohm"}
+    with pytest.raises(ValidationError, match=r"datasheets print about 0\.1 %/K"):
+        Zener.model_validate({**fields, "drift": "-500 mV/K"})
+
+
+def test_the_hot_corner_takes_the_largest_on_resistance_and_the_least_threshold() -> None:
+    """AO3400A: 22 (26.5) mohm at 10 V; the largest ratio is that at 2.5 V, 48 over 34 (rev. 1, May 2008)."""
+    part = library_part("AO3400A")
+    assert isinstance(part, NMosfet)
+    assert part.spread.max == pytest.approx(48 / 34)
+    worst = part.at_temperature(30.0, 298.15, part.spread.max, -0.3)
+    usual = part.at_temperature(30.0, 298.15)
+    assert worst["RD"] == pytest.approx(usual["RD"] * 48 / 34)
+    assert worst["VTO"] == pytest.approx(usual["VTO"] - 0.3)
+
+
+def test_a_part_tells_what_it_assumes_for_want_of_a_number() -> None:
+    part = NMosfet.model_validate({k: v for k, v in MOSFET.items() if not k.endswith("_drift")})
+    found = part.derived()
+    assert found["threshold drift"].typ == pytest.approx(-4.5e-3)
+    assert found["breakdown drift"].typ == pytest.approx(55e-3)
+    assert all(q.assumed() for q in found.values())

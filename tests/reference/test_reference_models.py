@@ -13,7 +13,7 @@ from boardsim.engine.run import Engine
 from boardsim.parts.base import NOMINAL
 from boardsim.parts.diode import Diode
 from boardsim.parts.elements import Junction
-from boardsim.parts.switches.n_mosfet import NMosfet
+from boardsim.parts.mosfet import NMosfet
 from boardsim.parts.zener import Zener
 
 pytestmark = pytest.mark.engine

@@ -13,7 +13,7 @@ from boardsim.board.reader import library_part
 from boardsim.engine.run import Engine
 from boardsim.parts.base import Corner
 from boardsim.parts.elements import Junction
-from boardsim.parts.switches.n_mosfet import NMosfet
+from boardsim.parts.mosfet import NMosfet
 from boardsim.parts.switches.npn import Npn
 from boardsim.parts.zener import Zener
 
