@@ -23,9 +23,10 @@ from boardsim.parts.coil import Coil
 from boardsim.parts.controller import Controller
 from boardsim.parts.kinds import kinds
 from boardsim.parts.leads import Leads
-from boardsim.parts.logic import Logic
+from boardsim.parts.logic import LogicRail
 from boardsim.parts.record import name_from, named_like, nearest, said, shortened
 from boardsim.parts.register import Register
+from boardsim.parts.regulator import Regulator
 from boardsim.parts.supply import Supply
 from boardsim.quantities import Origin, Quantity
 
@@ -58,7 +59,7 @@ class Board:
     supply: Supply
     cable: Cable
     bulk: Bulk
-    logic: Logic
+    logic: LogicRail
     chain: Chain
     channels: tuple[Channel, ...]
     limits: Limits
@@ -216,6 +217,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     if brown_out is not None and brown_out.voltage.max >= board.supply.voltage.min:
         text = f"brown_out.voltage of {brown_out.voltage} is not below the supply's lowest voltage of {board.supply.voltage.min:g} V"
         problems.append(file.problem(("limits", "brown_out"), text))
+    problems += _of_the_logic_rail(board, file)
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
     around = None
@@ -257,6 +259,33 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     )
 
 
+def _of_the_logic_rail(board: BoardFile, file: TomlFile) -> list[Problem]:
+    """What cannot be, of a logic rail: a reset at its own voltage, a supply below it, a rise of its own where it has none."""
+    found: list[Problem] = []
+    rail: LogicRail = board.logic
+    level = board.limits.logic_brown_out
+    if level is not None and level.voltage.max >= rail.voltage.min:
+        text = f"logic_brown_out.voltage of {level.voltage} is not below the logic rail's lowest voltage of {rail.voltage.min:g} V"
+        found.append(file.problem(("limits", "logic_brown_out"), text))
+    if not isinstance(rail, Regulator):
+        return found
+    needed = rail.needed_input(rail.voltage.max)
+    if needed > board.supply.voltage.min:
+        text = (
+            f"the {rail.kind} needs {needed:.4g} V for {rail.voltage}, and the supply gives {board.supply.voltage.min:g} V at least; "
+            "lower the dropout or the logic rail, or raise the supply"
+        )
+        found.append(file.problem(("logic",), text))
+    if rail.current_ceiling is not None and rail.load.max >= rail.current_ceiling.min:
+        text = f"the load of {rail.load} is not below the regulator's current ceiling of {rail.current_ceiling}"
+        found.append(file.problem(("logic", "load"), text))
+    for key in ("logic_at", "logic_rise"):
+        if key in board.power_up.model_fields_set:
+            text = f"the logic rail comes from the coil rail through a {rail.kind} and rises with it; leave {key} out"
+            found.append(file.problem(("power_up", key), text))
+    return found
+
+
 def _of_the_chain(board: BoardFile) -> tuple[Assumption, ...]:
     """What had to be supplied of controller, lines and register."""
     chain = board.chain
@@ -267,6 +296,9 @@ def _of_the_chain(board: BoardFile) -> tuple[Assumption, ...]:
     for name, line in (("data", chain.data_line), ("clock", chain.clock_line), ("latch", chain.latch_line)):
         found += listed(f"line {name}", series=line.series, capacitance=line.capacitance)
     register: Register = chain.register_
+    if chain.decoupling is not None:
+        found += listed("chain", inductance_of_the_logic_supply=chain.supply_inductance)
+        found += listed(register.title or "register", power_dissipation_capacitance=register.power_capacitance)
     return found + register.assumed()
 
 

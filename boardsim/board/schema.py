@@ -24,6 +24,7 @@ from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
     FREQUENCY,
+    INDUCTANCE,
     POSITIVE_RESISTANCE,
     RESISTANCE,
     SHARE,
@@ -65,8 +66,16 @@ def _likely_kind(value: dict[str, Any]) -> str:
     return max(kinds("switch"), key=fit)
 
 
+def _stiff_unless_said(value: Any) -> Any:
+    """A logic rail without a kind is a supply of its own, as it has always been."""
+    if isinstance(value, dict) and "kind" not in value:
+        return {"kind": Logic.model_fields["kind"].default, **value}
+    return value
+
+
 AnyClamp = _any_kind("clamp")
 AnySwitch = _any_kind("switch")
+AnyLogic = _any_kind("logic")
 AnyComponent = _any_kind("component", "register")
 
 
@@ -114,6 +123,13 @@ class Chain(Record):
         None, description="what holds the registers' clear (active low); taken as tied high if absent"
     )
 
+    decoupling: Annotated[Quantity, CAPACITANCE] | None = Field(
+        None, description="capacitor at the supply pin of each register"
+    )
+    supply_inductance: Annotated[Quantity, INDUCTANCE] = assume(
+        "20 nH", INDUCTANCE, "from the logic rail's capacitor to each register, 2 cm of trace at 10 nH/cm, from memory"
+    )
+
     @model_validator(mode="after")
     def _can_work(self) -> Chain:
         check_lines(self.output_enable, self.clear)
@@ -158,7 +174,7 @@ class ChannelRange(Record):
 
 
 class BrownOut(Record):
-    """Below this voltage of the coil rail, for longer than this, the board no longer works."""
+    """Below this voltage of a rail, for longer than this, the board no longer works."""
 
     voltage: Annotated[Quantity, VOLTAGE]
     lasting: Annotated[Quantity, TIME]
@@ -187,7 +203,10 @@ class Limits(Record):
         None, description="what all coils together may carry at once"
     )
     all_off: AllOff | None = Field(None, description="when all must be off after the last register frame")
-    brown_out: BrownOut | None = None
+    brown_out: BrownOut | None = Field(None, description="of the coil rail")
+    logic_brown_out: BrownOut | None = Field(
+        None, description="of the logic rail: where the controller resets, and how long a dip that counts is"
+    )
     exclusive: tuple[Exclusive, ...] = ()
     pulse_error: Annotated[Quantity, SHARE] = assume(
         "10 %", SHARE, "share of its width by which a pulse may come late or change, common practice"
@@ -219,7 +238,7 @@ class BoardFile(Record):
     supply: Supply
     cable: Cable
     bulk: Bulk
-    logic: Logic
+    logic: Annotated[AnyLogic, BeforeValidator(_stiff_unless_said)]  # type: ignore[valid-type]
     chain: Chain
     controller: Controller | None = None
     coils: dict[Name, Coil] = Field(default_factory=dict)

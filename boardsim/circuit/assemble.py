@@ -10,19 +10,19 @@ from typing import Literal
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
+from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
 from boardsim.firing.registers import ChainState, send
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
-from boardsim.parts.clocked import Contents, Nets, flip_flops, output_pin
+from boardsim.parts.clocked import Contents, Nets, comparator, flip_flops, output_pin
 from boardsim.parts.elements import GROUND, Drive, Element, Port, Signal, VoltageLaw, plus
 from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule
 from boardsim.quantities import Quantity
 
 RAIL = "rail"
 SUPPLY = "supply_out"
-LOGIC = "logic_rail"
 
 Detail = Literal["edges", "clocked"]
 """Registers as known edges on their outputs, or flip-flop by flip-flop; the same edges either way."""
@@ -127,6 +127,9 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
     """
     parts = Assembly()
     add_rail(parts, board, corner)
+    if board.logic.derived:
+        add_logic(parts, board, corner)
+        parts.add(clear_line(board, corner), None, "clear line", "chain")
     outputs: Outputs = partial(_known_edges, board, firing, corner, window)
     frames: Frames = ()
     if detail == "clocked":
@@ -167,6 +170,9 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
 def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> Stamp:
     """An output that does what the bits say, as a source."""
     register, name = board.chain.register_, f"c{channel.number}_q"
+    if board.logic.derived:
+        shares = gate_points(firing.levels[channel.output], window, 1.0, register.output_edge.typ)
+        return known_output(register, name, channel.output, shares)
     volts = board.logic.level(corner)
     points = gate_points(firing.levels[channel.output], window, volts, register.output_edge.typ)
     driven: Stamp = register.drive(name, name, points)
@@ -181,14 +187,18 @@ def _clocked(parts: Assembly, board: Board, frames: Frames, image: int, corner: 
         state, on_wire = send(state, image, chain, board.spi_mode, on_wire)
     volts = board.logic.level(corner)
     span = window.stop - window.start
-    rail: Element = Drive("logic", LOGIC, GROUND, ((0.0, volts), (span + 1e-6, volts)))
-    nets = Nets(LOGIC, *add_lines(parts, board, frames, span, on_wire))
+    lines = add_lines(parts, board, frames, span, on_wire)
+    rail: tuple[Element, ...] = (Drive("logic", LOGIC, GROUND, ((0.0, volts), (span + 1e-6, volts))),)
+    if board.logic.derived:  # its node is there already; too low, it takes the registers' contents with it
+        rail = comparator("chain_lost", LOGIC, repr(register.keeps_from), inverted=True)
+    nets = Nets(LOGIC, *lines, "chain_lost" if board.logic.derived else "")
     stages = flip_flops(register, chain.count, nets, Contents(state.shift, state.storage), volts)
-    parts.add(Stamp(elements=(rail, *stages)), None, register.title or "register", "chain")
+    parts.add(Stamp(elements=(*rail, *stages)), None, register.title or "register", "chain")
 
     def driven(channel: Channel) -> Stamp:
         name = f"c{channel.number}_q"
-        return Stamp(elements=output_pin(register, name, name, channel.output, LOGIC))
+        pin = output_pin(register, name, name, channel.output, LOGIC, loads_rail=board.logic.derived)
+        return Stamp(elements=pin)
 
     return driven
 
@@ -212,6 +222,11 @@ def add_rail(parts: Assembly, board: Board, corner: Corner, setting: str = "") -
     parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
 
 
+def add_logic(parts: Assembly, board: Board, corner: Corner) -> None:
+    """A logic rail that hangs on the coil rail."""
+    parts.add(regulated(board, corner, RAIL), None, board.logic.title or board.logic.kind, "logic rail")
+
+
 def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> Deck:
     """What was collected as a deck: sums over packages and over all coils, and the rail's own rule."""
     parts.add_totals()
@@ -219,6 +234,8 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
     parts.signals[None, "i_total"] = total
     parts.units[None, "i_total"] = "A"
     parts.rules.append(PlacedRule(_rail_rule(board), None, "coil rail", "board"))
+    if board.logic.derived:
+        parts.rules += logic_rules(board)
     if board.limits.most_current is not None:
         parts.rules.append(PlacedRule(_current_rule(board.limits.most_current), None, "[limits]", "board"))
     vectors = dict.fromkeys(name for signal in parts.signals.values() for _, name in signal)
@@ -284,6 +301,8 @@ def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
         "i_d": ("MAX",),
         "v_gs": ("MAX",),
     }
+    if (None, "i_regulator") in signals:  # a logic rail that can move
+        wanted["v_logic"] = ("MIN",)
     lines = []
     for (channel, quantity), signal in signals.items():
         if quantity in wanted and len(signal) == 1 and signal[0][0] == 1.0:

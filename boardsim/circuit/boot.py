@@ -8,7 +8,6 @@ from dataclasses import dataclass, replace
 from boardsim.board.power_up import ControlLine
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.assemble import (
-    LOGIC,
     MOST_CLOCKED,
     RAIL,
     Assembly,
@@ -16,10 +15,12 @@ from boardsim.circuit.assemble import (
     Outputs,
     add_channel,
     add_lines,
+    add_logic,
     add_rail,
     finished,
 )
 from boardsim.circuit.deck import Deck, Window
+from boardsim.circuit.logic import LOGIC
 from boardsim.circuit.serial import Frames, Points, as_points, busy
 from boardsim.firing.registers import ChainState, frame_time, send
 from boardsim.parts.base import Assumption, Corner, Stamp, listed
@@ -106,7 +107,8 @@ def boot_deck(board: Board, boot: Boot, corner: Corner, detail: Detail) -> Deck:
 
     Notes
     -----
-    The rails are ideal in shape: the coil supply's set voltage and the logic rail rise on straight lines. Outputs count as
+    The rails are ideal in shape: the coil supply's set voltage and the logic rail rise on straight lines; a logic rail that hangs
+    on the coil rail rises as its regulator lets it. Outputs count as
     enabled until output enable is surely high, and the shift stage as cleared until clear is surely high. An output that is not
     enabled has its leakage left, and so has a line without a pull; where they drift is `Boot.leans_on`. A gate drifts up to the
     logic rail's full voltage as soon as either rail is there.
@@ -114,11 +116,13 @@ def boot_deck(board: Board, boot: Boot, corner: Corner, detail: Detail) -> Deck:
     parts = Assembly()
     volts, v_set = board.logic.level(corner), corner.take(board.supply.voltage, "supply")
     window = Window(0.0, boot.duration, tuple(c.number for c in board.channels))
-    rails = (
-        Drive("logic", LOGIC, GROUND, tuple((t, volts * share) for t, share in boot.logic)),
-        Drive("setting", "supply_set", GROUND, tuple((t, v_set * share) for t, share in boot.coils)),
-    )
-    parts.add(Stamp(elements=rails, probes=(Probe("v_logic", voltage(LOGIC), "V"),)), None, "logic rail", "board")
+    setting = Drive("setting", "supply_set", GROUND, tuple((t, v_set * share) for t, share in boot.coils))
+    if board.logic.derived:
+        parts.add(Stamp(elements=(setting,)), None, "supply", "board")
+        add_logic(parts, board, corner)
+    else:
+        rails = (Drive("logic", LOGIC, GROUND, tuple((t, volts * share) for t, share in boot.logic)), setting)
+        parts.add(Stamp(elements=rails, probes=(Probe("v_logic", voltage(LOGIC), "V"),)), None, "logic rail", "board")
     add_rail(parts, board, corner, "supply_set")
     outputs = _chain(parts, board, boot, volts, detail)
     for channel in board.channels:
@@ -173,7 +177,8 @@ def _chain(parts: Assembly, board: Board, boot: Boot, volts: float, detail: Deta
         name = f"c{channel.number}_q"
         upwards = (channel.switch.active == "high") == boot.leans_on
         leaning = Leaning(upwards, register.off_leakage.typ, f"min(max(V({LOGIC}),V({RAIL})),{volts!r})")
-        return Stamp(elements=output_pin(register, name, name, channel.output, LOGIC, ENABLED, leaning))
+        loads = board.logic.derived
+        return Stamp(elements=output_pin(register, name, name, channel.output, LOGIC, ENABLED, leaning, loads))
 
     return driven
 

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import inspect
 import itertools
+import math
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Annotated, Any, ClassVar, Literal, Self, Union
@@ -76,6 +77,14 @@ class Part(Record):
     def steady_input(self, volts: float, resistance: float) -> float:
         """Highest current that a switch draws from an output that stays at `volts` behind `resistance`. [V], [ohm] -> [A]"""
         return 0.0
+
+    def edge_input(self, volts: float, resistance: float) -> tuple[float, float]:
+        """Charge that a switch takes from an output that rises to `volts` behind `resistance`, and the current at first.
+
+        Its steady current, for ever, unless a kind says better. [V], [ohm] -> [C], [A]
+        """
+        current = self.steady_input(volts, resistance)
+        return math.inf if current > 0 else 0.0, current
 
     @classmethod
     def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[Self, ...]:

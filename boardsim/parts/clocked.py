@@ -197,7 +197,14 @@ class Leaning:
 
 
 def output_pin(
-    register: Register, name: str, pin: str, output: int, rail: str, enabled: str = "", leaning: Leaning | None = None
+    register: Register,
+    name: str,
+    pin: str,
+    output: int,
+    rail: str,
+    enabled: str = "",
+    leaning: Leaning | None = None,
+    loads_rail: bool = False,
 ) -> tuple[Element, ...]:
     """One output of a chain.
 
@@ -214,22 +221,35 @@ def output_pin(
         Node that is 1 V while outputs are enabled and 0 V while not; always if empty.
     leaning : Leaning or None
         The leakage of an output that is not enabled.
+    loads_rail : bool
+        Whether what a high output gives comes out of the rail's node; else it is a stiff rail's, and nobody asks.
 
     Notes
     -----
     i = e g (q V_CC - v) into the pin: q is 0 to 1 while the storage stage changes, g one over the output resistance, e the
     enabling: 1 while enabled and the rail is above `drives_from`, else 0. Not enabled only the leakage is left, which fades
-    where the pin has arrived. Ignores the diodes from the pin to rail and ground: a voltage that a floating gate drifts
+    where the pin has arrived. What comes from the rail is its pull-up's share, e g q (V_CC - v), and the rest, -e g (1 - q) v, the
+    pull-down's to ground. Ignores the diodes from the pin to rail and ground: a voltage that a floating gate drifts
     to is not held by them.
     """
-    source = f"(V({held(output)})*V({rail})-V({pin}))/{register.output_resistance.typ!r}"
+    q, ohms = f"V({held(output)})", repr(register.output_resistance.typ)
+    source = f"({q}*V({rail})-V({pin}))/{ohms}"
+    if not enabled and loads_rail:
+        return (
+            CurrentLaw(f"{name}_up", pin, rail, f"{q}*(V({rail})-V({pin}))/{ohms}"),
+            CurrentLaw(f"{name}_down", pin, GROUND, f"({q}-1)*V({pin})/{ohms}"),
+        )
     if not enabled:
         return (CurrentLaw(name, pin, GROUND, source),)
     alive = f"(0.5+0.5*tanh((V({rail})-{register.drives_from.typ!r})/{2 * _ENABLING!r}))"
     drive = f"V({enabled})*{alive}"
-    if leaning is None:
-        return (CurrentLaw(name, pin, GROUND, f"{drive}*{source}"),)
-    return (CurrentLaw(name, pin, GROUND, f"{drive}*{source}+(1-{drive})*({drift(leaning, pin)})"),)
+    idle = "" if leaning is None else f"+(1-{drive})*({drift(leaning, pin)})"
+    if loads_rail:
+        return (
+            CurrentLaw(f"{name}_up", pin, rail, f"{drive}*{q}*(V({rail})-V({pin}))/{ohms}"),
+            CurrentLaw(f"{name}_down", pin, GROUND, f"{drive}*({q}-1)*V({pin})/{ohms}{idle}"),
+        )
+    return (CurrentLaw(name, pin, GROUND, f"{drive}*{source}{idle}"),)
 
 
 def drift(leaning: Leaning, pin: str) -> str:

@@ -97,6 +97,11 @@ class Register(Part):
     drives_from: Annotated[Quantity, VOLTAGE] = assume(
         "1 V", VOLTAGE, "logic rail from which an output's transistors can conduct, from memory"
     )
+    power_capacitance: Annotated[Quantity, CAPACITANCE] = assume(
+        "115 pF",
+        CAPACITANCE,
+        "power dissipation capacitance C_PD, NXP 74HC595; 74HCT595 rev. 6 (12 Dec 2011), table 7, for parts of this class",
+    )
     off_leakage: Annotated[Quantity, CURRENT] = assume(
         "10 uA",
         CURRENT,

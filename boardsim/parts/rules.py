@@ -210,6 +210,44 @@ class DipRule:
 
 
 @dataclass(frozen=True)
+class LeastRule:
+    """The lowest value of a probe must stay above a limit.
+
+    `soft` says that what is below it is judged elsewhere by what follows from it: then it is tight, and never fails.
+    """
+
+    check: str
+    quantity: str
+    limit: Limit
+    what: str
+    advice: str
+    soft: bool = False
+
+
+@dataclass(frozen=True)
+class FallRule:
+    """A voltage may fall below a level for less than a given time. [s]
+
+    Parts of the board other than the coil rail, which has its `DipRule`. `guard` is the share above the level from which on
+    a fall that lasts is tight. `doubtful` says that a shorter fall may or may not count, and is tight; else it counts for nothing.
+    `happens` says what a fall that lasts means. Without a value `unknown` says why nothing can be said below the lowest level,
+    `floor`, at which something is known [unit of the limit].
+    """
+
+    check: str
+    quantity: str
+    limit: Limit
+    lasting: float
+    what: str
+    happens: str
+    advice: str
+    guard: float = 0.0
+    doubtful: bool = False
+    unknown: str = ""
+    floor: float | None = None
+
+
+@dataclass(frozen=True)
 class CeilingRule:
     """A supply's current must stay below its ceiling."""
 
@@ -232,5 +270,7 @@ Rule = (
     | ReleaseRule
     | IdleRule
     | DipRule
+    | LeastRule
+    | FallRule
     | CeilingRule
 )

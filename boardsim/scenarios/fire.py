@@ -29,6 +29,7 @@ from boardsim.scenarios.crew import Crew
 from boardsim.verdict.closeups import Closeup, take_closeups, wants_closeup
 from boardsim.verdict.findings import EdgeTimes, Finding, Result, Timing, Traces, overall
 from boardsim.verdict.firmware import judge_firmware, not_given
+from boardsim.verdict.logic_rail import judge_sagged_chain
 from boardsim.verdict.recorded import assumptions_of_capture, judge_recorded, told
 from boardsim.verdict.switching import judge_switching
 
@@ -91,7 +92,8 @@ def fire_pattern(
         results += run((longest,), keep / "longest", crew)
     spent_running = time.perf_counter() - began
 
-    findings = worst([*by_corner(results), switching])
+    sagged = judge_sagged_chain(board, firing, [r.trial.readings for r in results if r.trial is not None])
+    findings = worst([*by_corner(results), switching, sagged])
     if not any(r.trial for r in results):
         findings = [f for f in findings if f.verdict == "fail"]  # what is left was never put to a circuit
     proven = all(r.audit.proven for r in results)

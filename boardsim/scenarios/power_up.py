@@ -20,7 +20,8 @@ from boardsim.firing.registers import ChainState, frame_time, shift_in
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, listed
 from boardsim.parts.clocked import Contents
-from boardsim.quantities import in_units
+from boardsim.parts.regulator import Regulator
+from boardsim.quantities import Quantity, in_units
 from boardsim.scenarios.all_corners import (
     assumptions_of,
     by_corner,
@@ -191,9 +192,10 @@ def boots(board: Board, seed: int) -> Iterator[Boot]:
 def _switched_on(board: Board, name: str, contents: Contents, leans_on: bool) -> Boot:
     """From no rail at all to the first frame, all off, and its release."""
     table, chain = board.power_up, board.chain
-    logic = _rise(table.logic_at.typ, table.logic_rise.typ)
     coils = _rise(table.coils_at.typ, table.coils_rise.typ)
-    first = table.logic_at.typ + table.logic_rise.typ + table.first_frame.max
+    at, rise = logic_comes(board)
+    logic = _rise(at, rise)
+    first = at + rise + table.first_frame.max
     enabled = _enabled(board, first)
     duration = enabled + _release_time(board)
     return Boot(
@@ -208,6 +210,22 @@ def _switched_on(board: Board, name: str, contents: Contents, leans_on: bool) ->
         enabled,
         duration,
     )
+
+
+def logic_comes(board: Board) -> tuple[float, float]:
+    """When the logic rail begins to rise, and how long it takes; one that hangs on the coil rail comes with that. [s]
+
+    Notes
+    -----
+    A regulator's output counts as full when the coil rail is, and its capacitor has been charged with what its ceiling
+    leaves beside the load, C V / (I - I_load); at once where no ceiling was given.
+    """
+    table, part = board.power_up, board.logic
+    if not isinstance(part, Regulator):
+        return table.logic_at.typ, table.logic_rise.typ
+    spare = None if part.current_ceiling is None else part.current_ceiling.min - part.load.max
+    charging = 0.0 if spare is None else part.capacitance.max * part.voltage.max / spare
+    return table.coils_at.typ, table.coils_rise.typ + charging
 
 
 def _reset(board: Board) -> Boot:
@@ -348,8 +366,7 @@ def _assumed(board: Board) -> Iterator[Assumption]:
         "power-up",
         start_of_the_coil_rail=table.coils_at,
         rise_of_the_coil_rail=table.coils_rise,
-        start_of_the_logic_rail=table.logic_at,
-        rise_of_the_logic_rail=table.logic_rise,
+        **_own_rail(board),
         first_frame=table.first_frame,
         current_that_does_not_matter=table.harmless,
     )
@@ -361,12 +378,26 @@ def _assumed(board: Board) -> Iterator[Assumption]:
     yield from dict.fromkeys(release_assumed(board))
 
 
+def _own_rail(board: Board) -> dict[str, Quantity]:
+    """How a logic rail of its own comes; one that hangs on the coil rail comes with that."""
+    table = board.power_up
+    own = {"start_of_the_logic_rail": table.logic_at, "rise_of_the_logic_rail": table.logic_rise}
+    return {} if board.logic.derived else own
+
+
+def _how_logic_comes(board: Board) -> str:
+    at, rise = (in_units(t, "s") for t in logic_comes(board))
+    if board.logic.derived:
+        return f"logic rail through its {board.logic.kind}, counted as full {rise} after {at}"
+    return f"logic rail from {at} on within {rise}"
+
+
 def _told(board: Board, all_boots: Sequence[Boot], seed: int) -> Iterator[str]:
     """What was done, for the report."""
     chain, table = board.chain, board.power_up
     on = all_boots[0]
     yield (
-        f"switched on: logic rail from {in_units(table.logic_at.typ, 's')} on within {in_units(table.logic_rise.typ, 's')}, "
+        f"switched on: {_how_logic_comes(board)}, "
         f"coil rail from {in_units(table.coils_at.typ, 's')} on within {in_units(table.coils_rise.typ, 's')}; first register "
         f"frame, all off, at {in_units(on.frames[0][0], 's', 4)}, outputs enabled with it at {in_units(on.until, 's', 4)}"
     )

@@ -36,14 +36,14 @@ def judge_loads(board: Board, firing: Firing) -> Iterator[Finding]:
     by_register: dict[int, list[Channel]] = {}
     for c in board.channels:
         by_register.setdefault(c.output // size, []).append(c)
-    totals = {k: _together(firing, channels, each) for k, channels in by_register.items()}
+    totals = {k: together_at_most(firing, channels, each) for k, channels in by_register.items()}
     k = max(totals, key=lambda k: totals[k])
     said = f"outputs of register {k + 1} that are on together give up to {in_units(totals[k], 'A')}"
     total = None if family is None else family.total_current
     yield _against(board, "current of all outputs of a register", totals[k], total, "total_current", said, volts)
 
 
-def _together(firing: Firing, channels: list[Channel], each: dict[int, float]) -> float:
+def together_at_most(firing: Firing, channels: list[Channel], each: dict[int, float]) -> float:
     """The largest sum of the currents of channels that are on at one time. [A]"""
     starts = [(float(t), each[c.number]) for c in channels for t in firing.on[c.number][:, 0]]
     stops = [(float(t), -each[c.number]) for c in channels for t in firing.on[c.number][:, 1]]

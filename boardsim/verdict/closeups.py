@@ -28,10 +28,15 @@ _BOARD_CAUSES: Mapping[str, tuple[Key, ...]] = {
     "overlap": ((None, "i_total"),),
     "rail-sag": ((None, "i_supply"), (None, "i_total")),
     "supply-ceiling": ((None, "i_total"), (None, "v_rail")),
+    "logic-sag": ((None, "v_rail"), (None, "i_total")),
+    "uncommanded-edge": ((None, "v_rail"), (None, "i_total")),
+    "regulator": ((None, "v_logic"), (None, "i_total")),
 }
 """What is shown beside a reading of the whole board, by its check."""
 _WORDS = {
     "v_rail": "coil rail at the board",
+    "v_logic": "logic rail",
+    "clear_share": "clear line as a share of its high level",
     "i_total": "all coils together",
     "i_supply": "out of the supply",
     "i_coil": "coil current",

@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import replace
 
+import numpy as np
+
 from boardsim.circuit.deck import Deck, PlacedRule
 from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import (
@@ -13,9 +15,11 @@ from boardsim.parts.rules import (
     DipRule,
     DriveRule,
     EnergyRule,
+    FallRule,
     FloorRule,
     HeatRule,
     IdleRule,
+    LeastRule,
     MeanRule,
     PeakRule,
     PullInRule,
@@ -30,6 +34,7 @@ from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.heat import judge_heat, judge_warmth
+from boardsim.verdict.logic_rail import judge_fall, judge_least
 from boardsim.verdict.rail import judge_ceiling, judge_dip
 from boardsim.verdict.readings import Readings, pulse_key
 from boardsim.verdict.surges import judge_pulses
@@ -145,6 +150,10 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
         case DipRule() as rule:
             yield judge_dip(rule, placed, readings, firing, bench)
+        case LeastRule() as rule:
+            yield judge_least(rule, placed, readings, bench)
+        case FallRule() as rule:
+            yield judge_fall(rule, placed, readings, firing, bench)
         case CeilingRule() as rule:
             yield judge_ceiling(rule, placed, readings, firing, bench)
 
@@ -171,9 +180,18 @@ def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firi
     if not len(firing.on[_channel(placed)]):
         return
     value, at = readings.high[placed.channel, rule.quantity]
+    times, values = readings.at_ends.get((_channel(placed), rule.quantity), ((), ()))
+    weakest = ""
+    if len(values):  # the logic rail moves: of all pulses the weakest counts, where its current is highest
+        k = int(np.argmin(values))
+        value, at, weakest = (
+            float(values[k]),
+            float(times[k]),
+            f" at the end of its pulse at {in_units(times[k], 's', 4)}",
+        )
     bound = rule.limit.value
     margin = None if bound is None else (value - bound) / bound
-    said = f"{placed.label}: {rule.what} reaches {in_units(value, rule.limit.unit)}; the {rule.limit.name} of {placed.part} is "
+    said = f"{placed.label}: {rule.what} reaches {in_units(value, rule.limit.unit)}{weakest}; the {rule.limit.name} of {placed.part} is "
     said += "not given" if bound is None else in_units(bound, rule.limit.unit)
     said += f"; try: {rule.advice}" if margin is not None and margin < 0 else ""
     yield bench.finding(placed, rule.limit, rule.what, value, margin, at, said, rule.consequence, worse="low")

@@ -15,7 +15,7 @@ from boardsim.verdict.readings import Readings
 _JUST_BEFORE = 2e-6  # [s], longer than a switch takes
 
 
-def _together(board: Board, firing: Firing, at: float) -> str:
+def together(board: Board, firing: Firing, at: float) -> str:
     """Who was on just before a time: at the very edge the outputs have already changed."""
     on = firing.channels_on(at - _JUST_BEFORE) or firing.channels_on(at) or firing.channels_on(at - 50 * _JUST_BEFORE)
     number = len(on)
@@ -65,7 +65,7 @@ def judge_dip(rule: DipRule, placed: PlacedRule, readings: Readings, firing: Fir
 
 
 def _dip_sentence(rule: DipRule, firing: Firing, bench: Bench, lowest: str, at: float) -> str:
-    return f"{_together(bench.board, firing, at)} at {in_units(at, 's', 4)}: the {rule.what} fell to {lowest}"
+    return f"{together(bench.board, firing, at)} at {in_units(at, 's', 4)}: the {rule.what} fell to {lowest}"
 
 
 def _fewer(board: Board) -> str:
@@ -99,7 +99,7 @@ def judge_ceiling(rule: CeilingRule, placed: PlacedRule, readings: Readings, fir
         return bench.finding(placed, rule.limit, "supply current", value, (bound - value) / bound, at, _sentence(said))
     said = (
         f"the supply came within 1 % of its ceiling of {in_units(bound, 'A')} for {in_units(total, 's')}, first at {in_units(since, 's', 4)} "
-        f"({_together(bench.board, firing, since)}): a supply that trips or hiccups instead of limiting would drop the rail"
+        f"({together(bench.board, firing, since)}): a supply that trips or hiccups instead of limiting would drop the rail"
         "; try: fewer channels at once, or a larger supply"
     )
     # The modelled supply never exceeds its ceiling: being at it is what breaks the limit.

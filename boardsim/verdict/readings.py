@@ -9,6 +9,7 @@ import numpy as np
 import scipy.sparse
 
 from boardsim.circuit.deck import Deck
+from boardsim.circuit.logic import LOGIC
 from boardsim.engine.waves import Waves
 from boardsim.errors import NoConvergence
 from boardsim.firing.schedule import Firing
@@ -18,6 +19,8 @@ from boardsim.parts.rules import (
     DipRule,
     DriveRule,
     EnergyRule,
+    FallRule,
+    FloorRule,
     HeatRule,
     IdleRule,
     MeanRule,
@@ -84,6 +87,12 @@ class Readings:
         Share of its peak above which a pulse counts as lasting.
     idle : mapping of channel to (times, currents)
         Of channels that are off, before everything and after it.
+    falls : mapping of FallRule to two tuples of Dip
+        Below its level, and below its level plus the guard band.
+    framed : float or None
+        Lowest logic rail at the beginning and the latch edge of any register frame; None where it is no node, or no frame is known. [V]
+    at_ends : mapping of (channel, quantity) to (times, values), at the ends of pulses
+        What must reach a limit in every pulse, on boards whose logic rail moves: the best pulse then does not speak for all.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -101,6 +110,9 @@ class Readings:
     envelopes: Mapping[str, Envelope]
     pulses: Mapping[PulseKey, tuple[OnePulse, ...]] = field(default_factory=dict)
     idle: Mapping[int, tuple[Floats, Floats]] = field(default_factory=dict)
+    falls: Mapping[FallRule, tuple[tuple[Dip, ...], tuple[Dip, ...]]] = field(default_factory=dict)
+    framed: float | None = None
+    at_ends: Mapping[tuple[int, str], tuple[Floats, Floats]] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -166,9 +178,17 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if isinstance(r, DriveRule) and c is not None
         for quantity in (r.quantity, r.current)
     }
+    moving = (None, "i_regulator") in row
+    at_ends = {
+        (c, r.quantity): Samples(_within(firing.on[c][:, 1], start, stop))
+        for c, r in rules
+        if moving and isinstance(r, FloorRule) and c is not None
+    }
     avalanches = {c: (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None}
     asked = dict.fromkeys(pulse_key(c, r) for c, r in rules)
     pulses = {of: Pulses(of[2]) for of in asked if of is not None}
+    fallen = {r: _below(r) for _, r in rules if isinstance(r, FallRule)}
+    framed = Samples(_ends_of_frames(firing, start, stop)) if moving else None
     falls = Falls(len(deck.ports))
     shown = {"rail": (None, "v_rail"), "total": (None, "i_total"), "supply": (None, "i_supply")}
     slices = Slices(np.linspace(start, stop, SLICES + 1), len(shown))
@@ -180,17 +200,24 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         t = block[:, 0] + start
         y = table.values(block)
         if t[0] == start:
-            _refuse_false_start(float(y[row[None, "v_rail"], 0]), float(y[row[None, "i_total"], 0]), deck)
+            _refuse_false_start(float(y[row[None, "v_rail"], 0]), float(y[row[None, "i_total"], 0]), deck, moving)
+            if moving:
+                _refuse_false_logic(float(y[row[None, "v_logic"], 0]), deck)
         extremes.feed(t, y)
         if mean_keys:
             integrals.feed(t, np.stack([np.prod([y[row[c, q]] for q in qs], axis=0) for c, qs in mean_keys]))
         for dip in (dips, guarded):
             dip.feed(t, y[row[None, "v_rail"]])
         ceiling.feed(t, y[row[None, "i_supply"]])
+        if framed is not None:
+            framed.feed(t, y[row[None, "v_logic"]])
+        for fall, both in fallen.items():
+            for dip in both:
+                dip.feed(t, y[row[None, fall.quantity]])
         for samples in (pull_in, release, idle):
             for c, sample in samples.items():
                 sample.feed(t, y[row[c, "i_coil"]])
-        for (c, quantity), sample in drive.items():
+        for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for c, (watch, rule) in avalanches.items():
             watch.feed(t, y[row[c, rule.voltage]], y[row[c, rule.current]])
@@ -245,7 +272,22 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         },
         {key: tuple(watched.all()) for key, watched in pulses.items()},
         {c: (s.times, s.values) for c, s in idle.items()},
+        {rule: (tuple(own.all()), tuple(near.all())) for rule, (own, near) in fallen.items()},
+        float(framed.values.min()) if framed is not None and len(framed.values) else None,
+        {key: (sample.times, sample.values) for key, sample in at_ends.items()},
     )
+
+
+def _ends_of_frames(firing: Firing, start: float, stop: float) -> Floats:
+    """When register frames begin and when their latch edge comes, in a window. [s]"""
+    begins = np.array([at for at, _ in firing.sent])
+    return _within(np.sort(np.concatenate([begins, begins + firing.frame_time])), start, stop)
+
+
+def _below(rule: FallRule) -> tuple[Dips, Dips]:
+    """What is watched for a rule: below its level, and below that plus the guard band; nothing without a level."""
+    level = -np.inf if rule.limit.value is None else rule.limit.value
+    return Dips(level), Dips(level * (1 + rule.guard))
 
 
 def pulse_key(channel: int | None, rule: Rule) -> PulseKey | None:
@@ -270,15 +312,27 @@ def _averaged(channel: int | None, rule: Rule) -> list[tuple[int | None, tuple[s
             return []
 
 
-def _refuse_false_start(rail: float, total: float, deck: Deck) -> None:
+def _refuse_false_start(rail: float, total: float, deck: Deck, regulator: bool = False) -> None:
     """Refuse a run that does not begin at rest: ngspice's search for the operating point can end far off without a word.
 
     A supply feeds the rail through resistances and takes nothing back: the rail is nowhere above the supply's own
-    voltage, and where no coil draws anything it is at it (Kirchhoff). 1 %, to leave room for leakages.
+    voltage, and where no coil draws anything it is at it (Kirchhoff). 1 %, to leave room for leakages; 10 % where a regulator
+    draws its current all the time.
     """
+    least = 0.9 if regulator else 0.99
     volts = max(deck.rest.values(), default=None)  # the supply's
-    if volts is not None and (rail > 1.01 * volts or (abs(total) < 1e-3 and rail < 0.99 * volts)):
+    if volts is not None and (rail > 1.01 * volts or (abs(total) < 1e-3 and rail < least * volts)):
         raise NoConvergence(f"ngspice began with a rail of {rail:.4g} V, which a supply of {volts:.4g} V does not make")
+
+
+def _refuse_false_logic(volts: float, deck: Deck) -> None:
+    """Refuse a run whose logic rail begins above what its regulator is set to: that would hide a dip. [V]
+
+    One that begins too low is in plain view as a dip of its own.
+    """
+    highest = deck.rest.get(LOGIC)
+    if highest is not None and volts > 1.01 * highest:
+        raise NoConvergence(f"ngspice began with a logic rail of {volts:.4g} V, which is set to {highest:.4g} V")
 
 
 def our_name(name: str) -> str:

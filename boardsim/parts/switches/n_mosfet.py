@@ -57,6 +57,21 @@ class NMosfetStage(Part):
         """Through gate resistor and pull-down; a gate by itself takes none. [V], [ohm] -> [A]"""
         return 0.0 if self.pulldown is None else volts / (resistance + self.gate.min + self.pulldown.min)
 
+    def edge_input(self, volts: float, resistance: float) -> tuple[float, float]:
+        """The gate's charge, through the gate resistor. [V], [ohm] -> [C], [A]
+
+        Notes
+        -----
+        Printed gate charge, in proportion where the gate goes higher than it was printed for; else C_iss V + Q_gd, the charge of
+        the capacitances and of the plateau. The charge counts as a store that is empty at first: I_0 = V / R.
+        """
+        part: NMosfet = self.part
+        given, at = part.gate_charge, part.charge_gate
+        charge = part.input_capacitance.max * volts + part.gate_drain_charge.max
+        if given is not None and at is not None:
+            charge = given.max * max(volts / at.typ, 1.0)
+        return charge, volts / (resistance + self.gate.min + part.gate_resistance.min)
+
     def held_off(self) -> bool:
         """Whether it has a pull-down."""
         return self.pulldown is not None
