@@ -110,9 +110,15 @@ def _reset_rule(board: Board) -> FallRule:
         "logic rail voltage",
         "the controller resets",
         "fewer channels at once, a larger capacitor behind the regulator, or a lower dropout",
-        board.limits.guard_band.typ,
+        _guard(board, limit.value),
         unknown="no brown-out level was given to hold it against ([limits] logic_brown_out)",
     )
+
+
+def _guard(board: Board, level: float | None) -> float:
+    """The guard band above a level, at most half of the way to the rail at rest: that is no dip, however near it lies. [V] -> [1]"""
+    guard = board.limits.guard_band.typ
+    return guard if level is None else min(guard, 0.5 * (board.logic.voltage.min - level) / level)
 
 
 def _edge_rules(board: Board) -> Iterator[FallRule]:
@@ -133,7 +139,7 @@ def _edge_rules(board: Board) -> Iterator[FallRule]:
             f"logic rail that holds the {line.name} line",
             happens,
             advice,
-            board.limits.guard_band.typ,
+            _guard(board, limit.value),
             doubtful=True,
             unknown=line.unknown,
             floor=line.floor,

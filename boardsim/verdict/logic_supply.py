@@ -81,17 +81,51 @@ def _regulator(board: Board, part: Regulator, firing: Firing) -> Finding:
     )
 
 
+def clock_charge(register: Register, volts: float) -> float:
+    """What a register takes from its supply for one period of its clock, C_PD V. [V] -> [C]
+
+    Notes
+    -----
+    P_D = C_PD V^2 f_i (NXP 74HC595 rev. 6, table 7, note 6) is that charge, f_i times a second, at V.
+    """
+    return float(register.power_capacitance.max * volts)
+
+
+def edge_dip(charge: float, current: float, farads: float, henries: float) -> float:
+    """The most that the edges of one frame pull down a capacitor that is fed through an inductance: its first dip. [V]
+
+    Parameters
+    ----------
+    charge : float
+        That they take in all; infinite where they go on taking. [C]
+    current : float
+        With which they begin, and which does not grow. [A]
+    farads, henries : float
+        Of the capacitor, and of its way to a rail that is stiff for so short a time. [F], [H]
+
+    Notes
+    -----
+    min(Q / C, I_0 sqrt(L / C)). Without the way to the rail nothing more than the charge can be taken. With it the voltage is the
+    integral of i(s) cos(w (t - s)) / C; while w t < pi a current that never grows makes at most what a lasting one of I_0 does,
+    I_0 sin(w t) / (w C) (second mean value theorem), with w = 1 / sqrt(L C). Without losses.
+
+    Examples
+    --------
+    >>> round(edge_dip(80e-9, 0.3, 100e-9, 20e-9), 4)
+    0.1342
+    """
+    return min(charge / farads, current * math.sqrt(henries / farads))
+
+
 def judge_decoupling(board: Board, firing: Firing) -> Iterator[Finding]:
     """How far the edges of one frame pull down the supply pin of one register, against what its lines bear.
 
     Notes
     -----
     What an edge takes is charge: C_PD V for the register's own clock period, and for every output that rises the charge of its
-    load; per second that is P_D = C_PD V^2 f_i + sum C_L V^2 f_o (NXP 74HC595 rev. 6, table 7, note 6, over V). From the capacitor
-    at the pin alone it takes dV = Q / C. The logic rail refills it through the trace's inductance L, so that a current that
-    starts at I_0 and does not grow makes a first dip of at most I_0 sqrt(L / C) (response of L and C to a step, without
-    losses). Both bounds hold: the smaller counts. The dip must leave the rail above where a held line is lost (`held_lines`), and
-    above the register's lowest supply. The logic rail's own sag is in it where it is judged at that (`judge_sagged_chain`).
+    load; per second that is P_D = C_PD V^2 f_i + sum C_L V^2 f_o (NXP 74HC595 rev. 6, table 7, note 6), over V.
+    `edge_dip` bounds the dip that this makes. It must leave the rail above where a line at rest is lost (`held_lines`), and above the
+    register's lowest supply. The logic rail's own sag is in it where it is judged at that (`judge_sagged_chain`).
     Ignores the capacitor's own inductance, what falling outputs do to the ground pin, and ringing after the first dip.
     """
     farads = board.chain.decoupling
@@ -99,7 +133,7 @@ def judge_decoupling(board: Board, firing: Firing) -> Iterator[Finding]:
         return
     volts, register = board.logic.voltage.min, board.chain.register_
     charge, current, number = _worst_edge(board, firing, board.logic.voltage.max)
-    own = register.power_capacitance.max * board.logic.voltage.max
+    own = clock_charge(register, board.logic.voltage.max)
     quantity = "dip at a register's supply pin"
     taken = f"register {number + 1}: the edges of one frame take {_charge(own + charge, current)} from its supply pin"
     if farads is None:
@@ -107,7 +141,7 @@ def judge_decoupling(board: Board, firing: Firing) -> Iterator[Finding]:
         yield chain_finding(board, "decoupling", quantity, 0.0, None, "V", said, volts=volts)
         return
     c, inductance = farads.min, board.chain.supply_inductance
-    dip = own / c + min(charge / c, current * math.sqrt(inductance.max / c))
+    dip = own / c + edge_dip(charge, current, c, inductance.max)
     # A line whose level is not known, or is lost without any dip, has a finding of its own; the lowest supply holds in any case.
     lost = [line.lost_below for line in held_lines(board) if line.lost_below is not None and line.lost_below < volts]
     least = max([register.supply_low.typ, *lost])
