@@ -159,7 +159,7 @@ def _edge_rules(board: Board) -> Iterator[FallRule]:
             "level that is surely high",
         ),
         least_pulse(register, "clear", board.logic.voltage.min),
-        "clear line against what is surely high",
+        "clear line as a share of its high level",
         "the shift stages may be cleared",
         "a smaller capacitor or pull-up at clear, or a controller pin that holds it",
         board.limits.guard_band.typ,

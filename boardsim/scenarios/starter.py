@@ -27,7 +27,7 @@ ambient = "10 to 40 degC"             # air around the board: cold windings draw
 supply = { voltage = "24 V +/- 5 %", resistance = "20 mohm", current_ceiling = "3 A" }
 cable = { gauge = "18 AWG", length = "1 m" }     # or area = "1 mm2"; out and back are counted
 bulk = { capacitance = "2200 uF +/- 20 %", esr = "60 mohm", rated = "35 V" }
-logic = { voltage = "5 V +/- 5 %" }
+logic = { voltage = "5 V +/- 5 %" }   # a supply of its own; from the coil rail: kind = "linear-regulator", "buck-regulator"
 
 [chain]                               # the shift registers, and how the firmware writes them
 register = "74HC595"

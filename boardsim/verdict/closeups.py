@@ -29,7 +29,7 @@ _BOARD_CAUSES: Mapping[str, tuple[Key, ...]] = {
     "rail-sag": ((None, "i_supply"), (None, "i_total")),
     "supply-ceiling": ((None, "i_total"), (None, "v_rail")),
     "logic-sag": ((None, "v_rail"), (None, "i_total")),
-    "uncommanded-edge": ((None, "v_rail"), (None, "i_total")),
+    "uncommanded-edge": ((None, "v_logic"), (None, "v_rail"), (None, "i_total")),
     "regulator": ((None, "v_logic"), (None, "i_total")),
 }
 """What is shown beside a reading of the whole board, by its check."""

@@ -14,7 +14,7 @@ from boardsim.verdict.findings import Result
 pytestmark = pytest.mark.engine
 
 HERE = Path(__file__).parent
-CLOCK, CLEAR = "logic rail that holds the clock line", "clear line against what is surely high"
+CLOCK, CLEAR = "logic rail that holds the clock line", "clear line as a share of its high level"
 # What fails on the bad board, and nothing else does. A clock that is not surely high is an edge while it rests, and a wrong level
 # in the frame that is sent in the dip.
 CASES = {
