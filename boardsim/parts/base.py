@@ -40,7 +40,7 @@ class Part(Record):
         """What the corners vary in this part, by the keys of `Corner.ends`."""
         return {}
 
-    def derived(self) -> dict[str, Quantity]:
+    def implied(self) -> dict[str, Quantity]:
         """Numbers by the names of fields that follow from others, or are assumed where the field was not given."""
         return {}
 

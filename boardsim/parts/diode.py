@@ -220,7 +220,7 @@ class Diode(Part):
         """
         return junction_parameters(self.forward, self.drift, EMISSION, t)
 
-    def derived(self) -> dict[str, Quantity]:
+    def implied(self) -> dict[str, Quantity]:
         """What is assumed for want of a number."""
         shown = any(p.kelvin != T_MODEL for p in self.forward)
         return {} if shown else {"forward drift": self.drift}

@@ -245,7 +245,7 @@ class NMosfet(Part):
         low, high = min(v.min / v.typ for v in cold), max(v.max / v.typ for v in cold)
         return Quantity(1.0, min(low, 1.0), max(high, 1.0), "1", self.on_resistance[0].value.origin)
 
-    def derived(self) -> dict[str, Quantity]:
+    def implied(self) -> dict[str, Quantity]:
         """What follows from its numbers, or is assumed for want of one."""
         return {
             "threshold drift": self.drift_of_threshold,

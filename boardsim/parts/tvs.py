@@ -112,7 +112,7 @@ class Tvs(Part):
             f"{1e-3 * self.breakdown.typ:.4g} V/K", VOLTAGE_DRIFT, "0.1 %/K of the breakdown voltage, from memory"
         )
 
-    def derived(self) -> dict[str, Quantity]:
+    def implied(self) -> dict[str, Quantity]:
         """What is assumed for want of a number."""
         return {"drift": self.breakdown_drift}
 

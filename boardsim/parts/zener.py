@@ -85,7 +85,7 @@ class Zener(Part):
             "1 mV/K for each volt above 5 V, the middle of the bands that Zeners' datasheets print",
         )
 
-    def derived(self) -> dict[str, Quantity]:
+    def implied(self) -> dict[str, Quantity]:
         """What is assumed for want of a number."""
         return {"drift": self.voltage_drift}
 

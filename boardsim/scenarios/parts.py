@@ -138,10 +138,10 @@ def show_part(name: str, libraries: Sequence[Path] = ()) -> tuple[Part, tuple[De
         If there is no such part.
     """
     _, part = find_part(name, libraries)
-    derived = part.derived()
+    implied = part.implied()
     shown = [d for field in type(part).model_fields for d in _details(field, getattr(part, field))]
-    given = [d for d in shown if d.field not in derived or d.value is not None]
-    return part, (*given, *(Detail(name, q) for name, q in derived.items() if name not in {d.field for d in given}))
+    given = [d for d in shown if d.field not in implied or d.value is not None]
+    return part, (*given, *(Detail(name, q) for name, q in implied.items() if name not in {d.field for d in given}))
 
 
 def _details(field: str, value: Any) -> Iterable[Detail]:

@@ -238,7 +238,7 @@ def test_the_hot_corner_takes_the_largest_on_resistance_and_the_least_threshold(
 
 def test_a_part_tells_what_it_assumes_for_want_of_a_number() -> None:
     part = NMosfet.model_validate({k: v for k, v in MOSFET.items() if not k.endswith("_drift")})
-    found = part.derived()
+    found = part.implied()
     assert found["threshold drift"].typ == pytest.approx(-4.5e-3)
     assert found["breakdown drift"].typ == pytest.approx(55e-3)
     assert all(q.assumed() for q in found.values())
