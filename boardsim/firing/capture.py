@@ -12,7 +12,7 @@ from boardsim.board.ranges import write_labels
 from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import Keys, TomlFile
 from boardsim.errors import InputError, Problem
-from boardsim.firing.bus import LINES, Line, Recorded, Replayed, measured, replay
+from boardsim.firing.bus import LINES, Line, Recorded, Replayed, disabled_in, measured, replay
 from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, snapped
 from boardsim.firing.schedule import Firing, on_times, settling_time
 from boardsim.firing.vcd import Dump, read_dump
@@ -142,14 +142,12 @@ class _Decoding:
             if not self.first <= time <= self.last:
                 ends = " to ".join(in_units(t, "s", 6) for t in (self.first, self.last))
                 raise self.refuse((key,), f"is outside the capture, which holds {ends}")
+        if blind := [*self._blind()]:
+            raise InputError(blind)
         for word in ("clock", "latch"):
             if not len(self.bus[word].edges(True)):
                 text = f"never rises in {dump.path.name}: no frame reaches the outputs; is it the right signal, or inverted?"
                 raise self.refuse(("signals", word), f'"{getattr(raw.signals, word)}" {text}')
-        rises = self.bus["clock"].edges(True)
-        if len(blind := rises[self.bus["data"].before(rises) < 0]):
-            text = f"has no level yet at the clock edge of {in_units(float(blind[0]), 's', 6)}; capture it from before the first clock edge on"
-            raise self.refuse(("signals", "data"), f'"{raw.signals.data}" {text}')
         off = sum(1 << output for output, active in self.active.items() if not active)
         replayed = replay(self.bus, self.board.chain.outputs, off)
         count, begun = replayed.trailing
@@ -162,6 +160,28 @@ class _Decoding:
             text += "" if quiet is None else f' in {self.file.path.name}, such as "{quiet * 1e9:.0f} ns"'
             raise InputError([Problem(str(dump.path), dump.last_line, text)])
         return self._pattern(replayed, start, stop)
+
+    def _blind(self) -> Iterator[Problem]:
+        """Lines of which the capture does not tell the level while the registers act on it.
+
+        A clock or latch that is high at its first level has risen since the capture's begin, or was high before: the edge may
+        count or not. Whatever else has no level at a clock edge leaves open what the registers took.
+        """
+        clock = self.bus["clock"]
+        rises = clock.edges(True)
+        for word in ("clock", "latch", "data", "clear"):
+            line = self.bus.get(word)
+            if line is None:
+                continue
+            name, at = f'"{getattr(self.raw.signals, word)}"', float(line.times[0]) if len(line.times) else 0.0
+            begin = "capture it from before the first clock edge on"
+            if word in ("clock", "latch") and line.levels[:1].any() and at > self.first:
+                text = f"{name} has no level before {in_units(at, 's', 6)}, so that nothing tells whether it rises then; {begin}"
+            elif word != "clock" and len(blind := rises[line.before(rises) < 0]):
+                text = f"{name} has no level yet at the clock edge of {in_units(float(blind[0]), 's', 6)}; {begin}"
+            else:
+                continue
+            yield self.file.problem_at(("signals", word), text)
 
     def _pattern(self, replayed: Replayed, start: float, stop: float) -> Pattern:
         edges = self._edges(replayed, start)
@@ -197,7 +217,7 @@ class _Decoding:
             frames,
             {what: found.within(start, stop) for what, found in measured(self.bus).items()},
             unfinished,
-            replayed.disabled,
+            disabled_in(self.bus.get("enable"), start, stop),
         )
         longest = float((frames.latched - frames.begun).max()) if len(frames.latched) else 0.0
         firing = Firing(duration, inside, on, (), (), (), (), len(frames.latched), longest, pulses, recorded=recorded)

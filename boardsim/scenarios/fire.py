@@ -103,7 +103,7 @@ def fire_pattern(
         firing.duration,
         overall(findings, proven, strict),
         tuple(findings),
-        (*assumptions_of(board, sampled), *assumptions_of_capture(firing)),
+        (*assumptions_of(board, sampled), *assumptions_of_capture(board, firing)),
         tuple(r.audit for r in results),
         _firing_sentences(board, firing, firmware, detail),
         _traces(board, firing, shown),

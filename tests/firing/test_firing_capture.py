@@ -198,7 +198,7 @@ def test_enable_turns_outputs_off_and_on_again_and_clear_empties_the_shift_stage
         pytest.approx((3.5e-3 + PROPAGATION, 5e-3 + PROPAGATION)),
     ]
     assert found.recorded is not None
-    assert found.recorded.disabled
+    assert found.recorded.disabled.tolist() == [[0.5e-3, 2e-3], [3e-3, 3.5e-3]]
     assert found.recorded.frames.cleared.tolist() == [False, True]
 
 
@@ -320,6 +320,41 @@ def test_a_capture_that_tells_too_little_is_refused(tmp_path: Path) -> None:
         'capture.toml:3: signals.data: "data" has no level yet at the clock edge of 500.000 ns; capture it from before the '
         "first clock edge on"
     )
+
+
+@pytest.mark.parametrize("line", ["clock", "latch"])
+def test_a_line_that_is_high_at_its_first_level_is_refused_since_it_may_have_risen_then(
+    tmp_path: Path, line: str
+) -> None:
+    text = two_pulses().text(5_000_000, idle=IDLE | {line: None})
+    at = {"clock": "1.00050 ms", "latch": "1.01700 ms"}[line]  # of the first frame: half a period on, and 17 us on
+    assert f"has no level before {at}, so that nothing tells whether it rises then" in said(tmp_path, text)
+
+
+def test_a_line_that_gets_its_level_before_anything_is_sent_is_taken(tmp_path: Path) -> None:
+    bus = two_pulses()
+    for line in ("data", "clock", "latch"):
+        bus.put(200, line, 0)
+    text = bus.text(5_000_000, idle={**IDLE, "data": None, "clock": None, "latch": None})
+    assert len(firing(tmp_path, text).asked) == 2
+
+
+def test_clear_without_a_level_at_a_clock_edge_is_refused(tmp_path: Path) -> None:
+    bus = two_pulses()
+    bus.put(1_005_000, "clear", 1)
+    text = bus.text(5_000_000, lines=("data", "clock", "latch", "clear"), idle=IDLE | {"clear": None})
+    assert '"clear" has no level yet at the clock edge of 1.00050 ms' in said(
+        tmp_path, text, CAPTURE + 'clear = "clear"\n'
+    )
+
+
+def test_outputs_count_as_disabled_until_enable_has_a_level(tmp_path: Path) -> None:
+    bus = two_pulses()
+    bus.put(500_000, "enable", 0)
+    text = bus.text(5_000_000, lines=("data", "clock", "latch", "enable"), idle=IDLE | {"enable": None})
+    found = firing(tmp_path, text, CAPTURE + 'enable = "enable"\n').recorded
+    assert found is not None
+    assert found.disabled.tolist() == [[0.0, 0.5e-3]]
 
 
 def test_a_dump_too_coarse_for_the_clock_is_refused(tmp_path: Path) -> None:
