@@ -10,6 +10,7 @@ from boardsim.board.reader import Board, Channel
 from boardsim.circuit.boot import Boot
 from boardsim.parts.base import Corner
 from boardsim.quantities import in_units
+from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.findings import Finding, verdict_of
 from boardsim.verdict.power_up import BootReading, harmless, settled
 
@@ -21,7 +22,7 @@ def judge_boot(board: Board, boot: Boot, found: BootReading, corner: Corner, nom
     judged = _judge_channel if boot.reset is None else _judge_reset
     findings = [judged(board, boot, c, found, corner, nominal) for c in board.channels]
     if found.cleared_until is not None and boot.reset is None:
-        findings.append(_judge_clear(board, boot, found, nominal))
+        findings += where_limits_hold(board, [_judge_clear(board, boot, found, nominal)])
     return findings
 
 

@@ -14,6 +14,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption
 from boardsim.parts.register import Register
 from boardsim.quantities import apart, in_units
+from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.findings import Finding, Verdict, verdict_of
 
 _SAME = 0.5e-12  # [s], what recorded times are rounded to; less apart than this they are one
@@ -101,9 +102,9 @@ def judge_recorded(board: Board, firing: Firing, needed: NeededTimes | None = No
     rail = board.logic.voltage.min
     needed = needed or timing_of(board.chain.register_, rail)
     found = [_interval(board, recorded, what, needed) for what in _SAID if what in recorded.intervals]
+    of_register = [*(f for f in found if f is not None), *_clock(board, recorded, needed)]
     return [
-        *(f for f in found if f is not None),
-        *_clock(board, recorded, needed),
+        *where_limits_hold(board, of_register),
         _bits(board, recorded),
         *_unfinished(board, firing, recorded),
         *_let_go(board, recorded),
