@@ -40,6 +40,10 @@ class CaptureFile(Record):
     signals: Signals
     start: Annotated[Quantity, TIME] | None = Field(None, description="time in the dump from which on to look")
     stop: Annotated[Quantity, TIME] | None = Field(None, description="time in the dump until which to look")
+    duration: Annotated[Quantity, TIME] | None = Field(
+        None,
+        description="look at least this long, all off after the stretch: averages are taken over it; the stretch if absent",
+    )
     sample_period: Annotated[Quantity, POSITIVE_TIME] | None = Field(
         None, description="of the analyser; the step of the dump's times if absent"
     )
@@ -82,7 +86,7 @@ def _mistakes(raw: CaptureFile, wanted: Mapping[str, str], file: TomlFile, board
     for line, name in wanted.items():
         if not name.strip():
             yield file.problem_at(("signals", line), "names no signal")
-    for key in ("start", "stop", "sample_period"):
+    for key in ("start", "stop", "duration", "sample_period"):
         time: Quantity | None = getattr(raw, key)
         if time is not None and time.toleranced:
             yield file.problem_at((key,), "a time of the capture has no tolerance; leave it out")
@@ -195,6 +199,9 @@ class _Decoding:
         inside = {o: tuple(e for e in rows if e[0] <= latest) for o, rows in edges.items()}
         last = max((rows[-1][0] for rows in inside.values()), default=0.0)
         duration = latest if unfinished else max(snapped(stop - start), last + settling_time(self.board))
+        if (asked := self.raw.duration) is not None:
+            self._refuse_duration(asked.typ, snapped(stop - start), unfinished)
+            duration = max(duration, asked.typ)
         on = {c.number: on_times(inside[c.output], self.active[c.output], duration) for c in self.board.channels}
         pulses = by_start(
             Pulse(number, float(a), snapped(float(b - a))) for number, rows in on.items() for a, b in rows.tolist()
@@ -220,9 +227,27 @@ class _Decoding:
             disabled_in(self.bus.get("enable"), start, stop),
         )
         longest = float((frames.latched - frames.begun).max()) if len(frames.latched) else 0.0
-        firing = Firing(duration, inside, on, (), (), (), (), len(frames.latched), longest, pulses, recorded=recorded)
+        span = "the capture's own" if asked is None else "the capture's"
+        sent = len(frames.latched)
+        firing = Firing(duration, inside, on, (), (), (), (), sent, longest, pulses, recorded=recorded, span=span)
         name = self.raw.name or name_from(self.file.path.stem, "capture")
-        return Pattern(self.file.path, name, None, pulses, firing)
+        return Pattern(self.file.path, name, None, pulses, firing, span)
+
+    def _refuse_duration(self, asked: float, stretch: float, unfinished: tuple[int, ...]) -> None:
+        """Refuse a duration that the capture contradicts. [s]
+
+        Raises
+        ------
+        InputError
+            If it is shorter than what was captured, or channels are on where that ends.
+        """
+        if asked < stretch * (1 - 1e-9):
+            text = f"{in_units(asked, 's', 4)} is shorter than the stretch that is looked at, {in_units(stretch, 's', 4)}; set a stop"
+            raise self.refuse(("duration",), text)
+        if unfinished:
+            labels = write_labels([self.board.channel(n).label for n in unfinished])
+            verb = "is" if len(unfinished) == 1 else "are"
+            raise self.refuse(("duration",), f"{labels} {verb} on where the capture ends: what follows is not known")
 
     def _edges(self, replayed: Replayed, start: float) -> dict[int, tuple[tuple[float, bool], ...]]:
         """Every watched output from the start on, its first entry at 0; propagation included. [s]"""

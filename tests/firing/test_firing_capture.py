@@ -253,6 +253,23 @@ def test_what_is_on_where_the_capture_ends_stays_on_and_is_named(tmp_path: Path)
     assert found.duration == pytest.approx(2e-3 + PROPAGATION)
 
 
+def test_a_capture_is_looked_at_as_long_as_its_file_says(tmp_path: Path) -> None:
+    own = firing(tmp_path, two_pulses().text(5_000_000))
+    single = firing(tmp_path, two_pulses().text(5_000_000), 'duration = "2 s"\n' + CAPTURE)
+    assert single.duration == 2.0
+    assert spans(single, 3) == spans(own, 3)
+    assert (own.averaged_over, own.goes_on) == ("over the capture's own 5.00 ms", True)
+    assert (single.averaged_over, single.goes_on) == ("over the capture's 2.00 s", False)
+
+
+def test_what_follows_on_a_capture_that_ends_with_channels_on_is_not_made_up(tmp_path: Path) -> None:
+    bus = writer()
+    bus.frame(1_000_000, {3, 4})
+    assert "channels 3, 4 are on where the capture ends: what follows is not known" in said(
+        tmp_path, bus.text(2_000_000), 'duration = "2 s"\n' + CAPTURE
+    )
+
+
 def test_the_last_edge_of_a_capture_counts_though_nothing_follows_it(tmp_path: Path) -> None:
     bus = writer()
     bus.frame(1_000_000, {3})
@@ -288,6 +305,7 @@ def two_pulses() -> BusWriter:
         ('start = "4 ms"\n' + CAPTURE, "capture.toml:2: capture: no channel is turned on in this stretch of the capture"),
         ('start = "4 ms"\nstop = "3 ms"\n' + CAPTURE, "capture.toml:2: stop: is not after the start"),
         ('start = "4 ms +/- 1 ms"\n' + CAPTURE, "capture.toml:1: start: a time of the capture has no tolerance"),
+        ('duration = "4 ms"\n' + CAPTURE, "capture.toml:1: duration: 4.000 ms is shorter than the stretch that is looked at, 5.000 ms; set a stop"),
         ('sample_period = "500 ns"\n' + CAPTURE, "capture.toml:1: sample_period: the capture was sampled every 500 ns, but a clock of 1.00 MHz is high and low for 500 ns each, so that edges are missed; capture at least every 250 ns"),
         ('inverted = ["enable"]\n' + CAPTURE, 'capture.toml:1: inverted: "enable" is not among the signals'),
         ('inverted = ["clk"]\n' + CAPTURE, 'capture.toml:1: inverted.0: \'clk\' is not allowed'),
