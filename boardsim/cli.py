@@ -59,7 +59,7 @@ PatternFile = Annotated[
     typer.Argument(
         metavar="PATTERN",
         help="pattern file, such as netlists/fruit-sorter/patterns/steady.toml; a list of events, events.csv; or a TOML"
-        " file that names a capture of the bus",
+        " file that names a list or a capture of the bus",
     ),
 ]
 Libraries = Annotated[
@@ -91,7 +91,10 @@ def fire(
     ] = None,
     edges: Annotated[
         Path | None,
-        typer.Option(metavar="FILE.vcd", help="also write the edges of the register outputs, as a value change dump"),
+        typer.Option(
+            metavar="FILE.vcd",
+            help="also write the edges of the register outputs, as a value change dump; its folder is made if it is missing",
+        ),
     ] = None,
     clocked: Clocked = False,
     strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
@@ -114,8 +117,9 @@ def fire(
     if edges is not None:
         check_place(edges, (board, pattern), the_pattern)
     folder = out or Path("out") / f"{plain_path(the_board.name)}-{plain_path(the_pattern.name)}"
-    make_ready(folder, (board, pattern))
+    make_ready(folder, (board, pattern, the_pattern.path))
     if edges is not None:
+        _say_new_folder(edges)
         write_edges(the_board, the_pattern, edges)
     with _working(f"{the_board.name}, {the_pattern.name}", time_limit) as (crew, progress):
         detail: Literal["edges", "clocked"] = "clocked" if clocked else "edges"
@@ -215,7 +219,11 @@ def deck(
     board: BoardFile,
     pattern: PatternFile,
     to: Annotated[
-        Path | None, typer.Option(metavar="FILE", help="where to write it; standard output if not given")
+        Path | None,
+        typer.Option(
+            metavar="FILE",
+            help="where to write it, in a folder that is made if it is missing; standard output if not given",
+        ),
     ] = None,
     corner: Annotated[
         int,
@@ -245,6 +253,7 @@ def deck(
     if to is None:
         sys.stdout.write(text)
     else:
+        _say_new_folder(to)
         write_text(to, text)
         typer.echo(f"corner {corner}, {names[corner - 1]}: {to}", err=True)
 
@@ -352,17 +361,17 @@ def power_up(
 @app.command(epilog="Example: boardsim schema > board.schema.json")
 def schema(
     what: Annotated[
-        str, typer.Argument(metavar="[board|pattern|capture|scenarios]", help="which kind of file")
+        str, typer.Argument(metavar="[board|pattern|capture|events|scenarios]", help="which kind of file")
     ] = "board",
 ) -> None:
-    """Print the JSON Schema of board, pattern, capture or scenario files, for editors that complete and check TOML."""
+    """Print the JSON Schema of board, pattern, capture, event or scenario files, for editors that complete and check TOML."""
     import json
 
     from boardsim.scenarios.starter import json_schema
 
     found = json_schema(what)
     if found is None:
-        raise InputError(f'"{what}" is not a kind of file; say board, pattern, capture or scenarios')
+        raise InputError(f'"{what}" is not a kind of file; say board, pattern, capture, events or scenarios')
     typer.echo(json.dumps(found, indent=2, ensure_ascii=False))
 
 
@@ -546,6 +555,12 @@ def _reader_may_leave() -> Iterator[None]:
     except OSError:  # a pipe that nobody reads, or a full disk behind the output
         with contextlib.suppress(OSError, ValueError):
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+def _say_new_folder(path: Path) -> None:
+    """Say that a file's folder is made: a slip of the pen must not leave folders about unseen."""
+    if not path.parent.exists():
+        _say(f"{path.parent}: did not exist; made for {path.name}")
 
 
 def _say(line: str) -> None:

@@ -147,12 +147,34 @@ def test_a_corner_that_the_board_has_not_is_refused_with_those_that_it_has(run: 
     refused(run("deck", "board.toml", "pattern.toml", "--corner", "9"), "--corner 9: this board has 5: 1 supply high")
 
 
-def test_schema_prints_json_and_knows_four_kinds_of_file(run: Run) -> None:
-    for arguments in (("schema",), *(("schema", kind) for kind in ("board", "pattern", "capture", "scenarios"))):
+def test_a_list_that_a_toml_file_names_is_neither_overwritten_nor_buried_under_results(
+    run: Run, tmp_path: Path
+) -> None:
+    (tmp_path / "shots").mkdir()
+    (tmp_path / "shots" / "edges.csv").write_text("channel,start,width\n0,1 ms,1 ms\n")
+    (tmp_path / "one.toml").write_text('events = "shots/edges.csv"\nduration = "1 s"\n')
+    refused(run("fire", "board.toml", "one.toml", "--edges", "shots/edges.csv"), "is one of the files to read")
+    refused(run("fire", "board.toml", "one.toml", "--out", "shots"), "shots: holds edges.csv")
+    assert (tmp_path / "shots" / "edges.csv").read_text().startswith("channel")
+
+
+def test_a_folder_that_a_deck_makes_is_said(run: Run, tmp_path: Path) -> None:
+    status, _, err = run("deck", "board.toml", "pattern.toml", "--to", "nwe/rush.cir")
+    assert status == 0
+    assert "nwe: did not exist; made for rush.cir" in err
+    assert (tmp_path / "nwe" / "rush.cir").is_file()
+    assert "did not exist" not in run("deck", "board.toml", "pattern.toml", "--to", "nwe/rush.cir")[2]
+
+
+def test_schema_prints_json_and_knows_five_kinds_of_file(run: Run) -> None:
+    for arguments in (
+        ("schema",),
+        *(("schema", kind) for kind in ("board", "pattern", "capture", "events", "scenarios")),
+    ):
         status, out, err = run(*arguments)
         assert (status, err) == (0, "")
         assert json.loads(out)["$schema"]
-    refused(run("schema", "deck"), '"deck" is not a kind of file; say board, pattern, capture or scenarios')
+    refused(run("schema", "deck"), '"deck" is not a kind of file; say board, pattern, capture, events or scenarios')
 
 
 def test_begin_writes_files_once_and_never_over_others(run: Run, tmp_path: Path) -> None:

@@ -164,7 +164,7 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     """Tolerances that were given but that no corner varies, so that nobody takes them for covered."""
     used = [q for found in _varied(board).values() for q in found]
     # Judged at their worse end, or only read as a band.
-    used += [board.chain.clock, *(q for _, q in _of_the_chain(board))]
+    used += [board.chain.clock, board.chain.register_.times_hold_at, *(q for _, q in _of_the_chain(board))]
     used += [q for q in (board.supply.current_ceiling,) if q is not None]
     for channel in board.channels:
         coil = channel.coil

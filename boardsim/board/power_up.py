@@ -8,7 +8,16 @@ from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.record import Record
-from boardsim.quantities import CAPACITANCE, POSITIVE_RESISTANCE, POSITIVE_TIME, SHARE, TIME, Quantity, assume
+from boardsim.quantities import (
+    CAPACITANCE,
+    POSITIVE_RESISTANCE,
+    POSITIVE_TIME,
+    SHARE,
+    TIME,
+    Quantity,
+    assume,
+    in_units,
+)
 
 
 class ControlLine(Record):
@@ -83,3 +92,21 @@ class PowerUpTable(Record):
     harmless: Annotated[Quantity, SHARE] = assume(
         "10 %", SHARE, "share of the release current below which an uncommanded current moves nothing, from memory"
     )
+    reset_off: Annotated[Quantity, POSITIVE_TIME] = assume(
+        "1 ms",
+        POSITIVE_TIME,
+        "from a reset until a channel that was on has to be off: short against what a coil moves in, long against how fast a "
+        "pull-down empties a gate, from memory",
+    )
+
+    @model_validator(mode="after")
+    def _leaves_time(self) -> PowerUpTable:
+        """A first frame that comes before a reset has to have turned channels off would leave nothing to judge."""
+        first, off = self.first_frame.max, self.reset_off.max
+        if first <= off:
+            raise QuantityError(
+                f"first_frame = {in_units(first, 's')} is not after reset_off = {in_units(off, 's')}"
+                f"{' (assumed)' if self.reset_off.assumed() else ''}: no time is left in which a channel that a reset leaves on "
+                "would be seen; give a later first_frame or a shorter reset_off"
+            )
+        return self

@@ -293,7 +293,10 @@ def _of_the_chain(board: BoardFile) -> tuple[Assumption, ...]:
     if board.controller is None:
         text = "nothing is known of its levels; its serial port and timer are as follows"
         found = (Assumption("controller", "controller", "not given", text), *found)
-    for name, line in (("data", chain.data_line), ("clock", chain.clock_line), ("latch", chain.latch_line)):
+    lines = (("data", chain.data_line), ("clock", chain.clock_line), ("latch", chain.latch_line))
+    if any(line.pull is not None for _, line in lines):
+        found += listed("controller", level_current=(board.controller or Controller()).level_current)
+    for name, line in lines:
         found += listed(f"line {name}", series=line.series, capacitance=line.capacitance)
     register: Register = chain.register_
     if chain.decoupling is not None:

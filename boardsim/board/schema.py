@@ -66,6 +66,9 @@ def _likely_kind(value: dict[str, Any]) -> str:
     return max(kinds("switch"), key=fit)
 
 
+_ROUNDING = 1e-6  # [K], of a temperature that was turned from degC: a range that ends at a bound is within it
+
+
 def _stiff_unless_said(value: Any) -> Any:
     """A logic rail without a kind is a supply of its own, as it has always been."""
     if isinstance(value, dict) and "kind" not in value:
@@ -94,6 +97,11 @@ class Line(Record):
         if self.pull_up is not None and self.pull_down is not None:
             raise QuantityError("give pull_up or pull_down, not both")
         return self
+
+    @property
+    def pull(self) -> Quantity | None:
+        """What holds it, whichever way; None where nothing does. [ohm]"""
+        return self.pull_down or self.pull_up
 
 
 class Chain(Record):
@@ -271,7 +279,7 @@ def refuse_extremes(ambient: Quantity, rise: Quantity) -> None:
         If they go beyond it.
     """
     low, high = ambient.min, ambient.max + rise.typ
-    if low < COLDEST or high > HOTTEST:
+    if low < COLDEST - _ROUNDING or high > HOTTEST + _ROUNDING:
         raise QuantityError(
             f"ambient and junction_rise take semiconductors from {celsius(low)} to {celsius(high)}; their models hold from "
             f"{celsius(COLDEST)} to {celsius(HOTTEST)}"

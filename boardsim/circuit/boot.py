@@ -76,11 +76,11 @@ class Boot:
     driven : tuple of (start, stop)
         When the firmware drives output enable low, and clear high. [s]
     since, until : float
-        Between the two no coil may be on: from switch-on, or a little after a reset, to the first enabled frame. [s]
+        Between the two no coil may be on: from switch-on, or from when a reset may have lasted, to the first enabled frame. [s]
     duration : float
         [s]
-    reset : bool
-        Whether it begins in operation, with both rails up.
+    reset : float or None
+        When the reset comes, of one that begins in operation, with both rails up. [s]
     """
 
     name: str
@@ -93,7 +93,7 @@ class Boot:
     since: float
     until: float
     duration: float
-    reset: bool = False
+    reset: float | None = None
 
 
 def detail_of(board: Board, boot: Boot) -> Detail:
@@ -128,12 +128,12 @@ def boot_deck(board: Board, boot: Boot, corner: Corner, detail: Detail) -> Deck:
     for channel in board.channels:
         add_channel(parts, board, corner, channel, outputs(channel))
     deck = finished(parts, board, corner, window)
-    rules = () if boot.reset else tuple(p for p in deck.rules if isinstance(p.rule, _JUDGED))
+    rules = () if boot.reset is not None else tuple(p for p in deck.rules if isinstance(p.rule, _JUDGED))
     clocked = detail == "clocked"
     return replace(
         deck,
         rules=rules,
-        rest={"supply_in": v_set} if boot.reset else {},
+        rest={"supply_in": v_set} if boot.reset is not None else {},
         digital=True,
         clocked=busy(boot.frames, board.chain) if clocked else (),
     )

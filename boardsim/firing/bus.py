@@ -111,8 +111,8 @@ class Recorded:
         How long things took, by their names in `measured`.
     unfinished : tuple of int
         Channels that are on where the capture ends.
-    disabled : bool
-        Whether the outputs were disabled at any time.
+    disabled : (n, 2) array
+        From when to when the outputs were disabled, counted from the run's begin. [s]
     """
 
     capture: Path
@@ -123,7 +123,7 @@ class Recorded:
     frames: Frames
     intervals: Mapping[str, Intervals]
     unfinished: tuple[int, ...]
-    disabled: bool
+    disabled: Floats
 
 
 def measured(bus: Mapping[str, Line]) -> dict[str, Intervals]:
@@ -174,6 +174,31 @@ def _width(line: Line, high: bool) -> Intervals:
     return Intervals(line.times[2:][keep], np.diff(line.times[1:])[keep])
 
 
+def disabled_in(enable: Line | None, start: float, stop: float) -> Floats:
+    """From when to when the outputs are disabled: enable is high, or not known yet.
+
+    Parameters
+    ----------
+    enable : Line or None
+        Always enabled if absent.
+    start, stop : float
+        Stretch to look at. [s]
+
+    Returns
+    -------
+    (n, 2) array
+        Counted from `start`. [s]
+    """
+    if enable is None:
+        return np.zeros((0, 2))
+    begins = np.concatenate([[-np.inf], enable.times])
+    ends = np.concatenate([enable.times, [np.inf]])
+    off = np.concatenate([[True], enable.levels])
+    spans = np.column_stack([np.maximum(begins, start), np.minimum(ends, stop)])[off] - start
+    found: Floats = np.round(spans[spans[:, 1] > spans[:, 0]], 12)
+    return found
+
+
 @dataclass(frozen=True)
 class Replayed:
     """What the chain's outputs did.
@@ -185,14 +210,11 @@ class Replayed:
     frames : Frames
     trailing : (clocks, time)
         Clock edges after the last latch edge, and when the first of them was. [s]
-    disabled : bool
-        Whether they were disabled at any time after the first latch edge.
     """
 
     words: tuple[tuple[float, int], ...]
     frames: Frames
     trailing: tuple[int, float]
-    disabled: bool
 
 
 _LATCH, _CLOCK, _CLEAR, _ENABLE = range(4)  # the order in which edges of one time count
@@ -217,7 +239,8 @@ def replay(bus: Mapping[str, Line], width: int, off: int) -> Replayed:
     before where both rise together; clear, while it is low, empties the shift stages and leaves the outputs alone;
     enable, while it is high, turns the outputs off. Until the first latch edge the storage is what the supply's rise
     left there; it is taken as `off`, and so are bits that were never shifted in. While enable is high, or not yet known,
-    pull resistors hold the switches, and that is taken as `off` too.
+    the outputs let go, and that is taken as `off` too: true of switches that something else holds off, which is judged
+    elsewhere.
     """
     latches, clocks = bus["latch"].edges(True), bus["clock"].edges(True)
     bits = bus["data"].before(clocks)
@@ -246,7 +269,7 @@ def replay(bus: Mapping[str, Line], width: int, off: int) -> Replayed:
 def _run(
     state: ChainState, off: int, enabled: bool, times: Sequence[float], kinds: Sequence[int], values: Sequence[int]
 ) -> Replayed:
-    clearing = cleared = disabled = False
+    clearing = cleared = False
     shown, words = off, [(0.0, off)]
     begun: float | None = None
     count = 0
@@ -269,11 +292,10 @@ def _run(
                 cleared = True
         else:
             enabled = value == 0
-        disabled = disabled or (not enabled and bool(rows))
         now = state.storage if enabled else off
         if now != shown:
             words.append((t, now))
             shown = now
     columns = np.array(rows, dtype=np.float64).reshape(-1, 4)
     frames = Frames(columns[:, 0], columns[:, 1], columns[:, 2].astype(np.int64), columns[:, 3] > 0)
-    return Replayed(tuple(words), frames, (count, begun or 0.0), disabled)
+    return Replayed(tuple(words), frames, (count, begun or 0.0))

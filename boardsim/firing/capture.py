@@ -12,7 +12,7 @@ from boardsim.board.ranges import write_labels
 from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import Keys, TomlFile
 from boardsim.errors import InputError, Problem
-from boardsim.firing.bus import LINES, Line, Recorded, Replayed, measured, replay
+from boardsim.firing.bus import LINES, Line, Recorded, Replayed, disabled_in, measured, replay
 from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, snapped
 from boardsim.firing.schedule import Firing, on_times, settling_time
 from boardsim.firing.vcd import Dump, read_dump
@@ -40,6 +40,10 @@ class CaptureFile(Record):
     signals: Signals
     start: Annotated[Quantity, TIME] | None = Field(None, description="time in the dump from which on to look")
     stop: Annotated[Quantity, TIME] | None = Field(None, description="time in the dump until which to look")
+    duration: Annotated[Quantity, TIME] | None = Field(
+        None,
+        description="look at least this long, all off after the stretch: averages are taken over it; the stretch if absent",
+    )
     sample_period: Annotated[Quantity, POSITIVE_TIME] | None = Field(
         None, description="of the analyser; the step of the dump's times if absent"
     )
@@ -82,7 +86,7 @@ def _mistakes(raw: CaptureFile, wanted: Mapping[str, str], file: TomlFile, board
     for line, name in wanted.items():
         if not name.strip():
             yield file.problem_at(("signals", line), "names no signal")
-    for key in ("start", "stop", "sample_period"):
+    for key in ("start", "stop", "duration", "sample_period"):
         time: Quantity | None = getattr(raw, key)
         if time is not None and time.toleranced:
             yield file.problem_at((key,), "a time of the capture has no tolerance; leave it out")
@@ -142,14 +146,12 @@ class _Decoding:
             if not self.first <= time <= self.last:
                 ends = " to ".join(in_units(t, "s", 6) for t in (self.first, self.last))
                 raise self.refuse((key,), f"is outside the capture, which holds {ends}")
+        if blind := [*self._blind()]:
+            raise InputError(blind)
         for word in ("clock", "latch"):
             if not len(self.bus[word].edges(True)):
                 text = f"never rises in {dump.path.name}: no frame reaches the outputs; is it the right signal, or inverted?"
                 raise self.refuse(("signals", word), f'"{getattr(raw.signals, word)}" {text}')
-        rises = self.bus["clock"].edges(True)
-        if len(blind := rises[self.bus["data"].before(rises) < 0]):
-            text = f"has no level yet at the clock edge of {in_units(float(blind[0]), 's', 6)}; capture it from before the first clock edge on"
-            raise self.refuse(("signals", "data"), f'"{raw.signals.data}" {text}')
         off = sum(1 << output for output, active in self.active.items() if not active)
         replayed = replay(self.bus, self.board.chain.outputs, off)
         count, begun = replayed.trailing
@@ -163,6 +165,28 @@ class _Decoding:
             raise InputError([Problem(str(dump.path), dump.last_line, text)])
         return self._pattern(replayed, start, stop)
 
+    def _blind(self) -> Iterator[Problem]:
+        """Lines of which the capture does not tell the level while the registers act on it.
+
+        A clock or latch that is high at its first level has risen since the capture's begin, or was high before: the edge may
+        count or not. Whatever else has no level at a clock edge leaves open what the registers took.
+        """
+        clock = self.bus["clock"]
+        rises = clock.edges(True)
+        for word in ("clock", "latch", "data", "clear"):
+            line = self.bus.get(word)
+            if line is None:
+                continue
+            name, at = f'"{getattr(self.raw.signals, word)}"', float(line.times[0]) if len(line.times) else 0.0
+            begin = "capture it from before the first clock edge on"
+            if word in ("clock", "latch") and line.levels[:1].any() and at > self.first:
+                text = f"{name} has no level before {in_units(at, 's', 6)}, so that nothing tells whether it rises then; {begin}"
+            elif word != "clock" and len(blind := rises[line.before(rises) < 0]):
+                text = f"{name} has no level yet at the clock edge of {in_units(float(blind[0]), 's', 6)}; {begin}"
+            else:
+                continue
+            yield self.file.problem_at(("signals", word), text)
+
     def _pattern(self, replayed: Replayed, start: float, stop: float) -> Pattern:
         edges = self._edges(replayed, start)
         # What an edge of the capture does counts, though the dump may end before it has gone through the register.
@@ -175,6 +199,9 @@ class _Decoding:
         inside = {o: tuple(e for e in rows if e[0] <= latest) for o, rows in edges.items()}
         last = max((rows[-1][0] for rows in inside.values()), default=0.0)
         duration = latest if unfinished else max(snapped(stop - start), last + settling_time(self.board))
+        if (asked := self.raw.duration) is not None:
+            self._refuse_duration(asked.typ, snapped(stop - start), unfinished)
+            duration = max(duration, asked.typ)
         on = {c.number: on_times(inside[c.output], self.active[c.output], duration) for c in self.board.channels}
         pulses = by_start(
             Pulse(number, float(a), snapped(float(b - a))) for number, rows in on.items() for a, b in rows.tolist()
@@ -197,12 +224,30 @@ class _Decoding:
             frames,
             {what: found.within(start, stop) for what, found in measured(self.bus).items()},
             unfinished,
-            replayed.disabled,
+            disabled_in(self.bus.get("enable"), start, stop),
         )
         longest = float((frames.latched - frames.begun).max()) if len(frames.latched) else 0.0
-        firing = Firing(duration, inside, on, (), (), (), (), len(frames.latched), longest, pulses, recorded=recorded)
+        span = "the capture's own" if asked is None else "the capture's"
+        sent = len(frames.latched)
+        firing = Firing(duration, inside, on, (), (), (), (), sent, longest, pulses, recorded=recorded, span=span)
         name = self.raw.name or name_from(self.file.path.stem, "capture")
-        return Pattern(self.file.path, name, None, pulses, firing)
+        return Pattern(self.file.path, name, None, pulses, firing, span)
+
+    def _refuse_duration(self, asked: float, stretch: float, unfinished: tuple[int, ...]) -> None:
+        """Refuse a duration that the capture contradicts. [s]
+
+        Raises
+        ------
+        InputError
+            If it is shorter than what was captured, or channels are on where that ends.
+        """
+        if asked < stretch * (1 - 1e-9):
+            text = f"{in_units(asked, 's', 4)} is shorter than the stretch that is looked at, {in_units(stretch, 's', 4)}; set a stop"
+            raise self.refuse(("duration",), text)
+        if unfinished:
+            labels = write_labels([self.board.channel(n).label for n in unfinished])
+            verb = "is" if len(unfinished) == 1 else "are"
+            raise self.refuse(("duration",), f"{labels} {verb} on where the capture ends: what follows is not known")
 
     def _edges(self, replayed: Replayed, start: float) -> dict[int, tuple[tuple[float, bool], ...]]:
         """Every watched output from the start on, its first entry at 0; propagation included. [s]"""

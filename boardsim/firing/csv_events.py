@@ -5,19 +5,24 @@ from __future__ import annotations
 import csv
 import re
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import Annotated
 
-from boardsim.board.reader import Board
+from pydantic import Field, ValidationError
+
+from boardsim.board.reader import Board, problems_of
+from boardsim.board.toml_file import TomlFile
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, snapped
-from boardsim.parts.record import name_from, nearest, shortened
-from boardsim.quantities import TIME, parse
+from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, refuse_early_end, snapped
+from boardsim.parts.record import Name, Record, name_from, nearest, shortened
+from boardsim.quantities import TIME, Quantity, parse
 
 LARGEST_FILE = 128 * 1024 * 1024  # [byte]; the most pulses that a pattern may have fill a third of it
 _MOST_PROBLEMS = 20  # told one by one; a column in the wrong unit is a mistake in every line
 _DELIMITERS = ",;\t"
-_COLUMNS = ("channel", "start", "width", "stop")
+_WHO = ("channel", "number", "label")  # number or label, whichever only one channel has; and either by its name
+_COLUMNS = ("channel", "start", "width", "stop", "number", "label")
 _TITLE = re.compile(r"(\w+)\s*(?:[\[(]\s*([^\])]+?)\s*[\])])?")
 _NUMBER = re.compile(r"[0-9]*\.?[0-9]+(?:[eE][+-]?[0-9]+)?|[0-9]+\.")
 
@@ -41,7 +46,8 @@ def read_events(path: Path, board: Board) -> Pattern:
     Notes
     -----
     The first line that is neither empty nor begins with "#" names the columns: `channel` (its number, or its label on
-    the board), `start`, and either `width` or `stop`, in any order. Times carry their unit ("10 ms"), or the title does,
+    the board; `number` or `label` where a label looks like another channel's number), `start`, and either `width` or `stop`,
+    in any order. Times carry their unit ("10 ms"), or the title does,
     in brackets: `start [ms]`. Columns are separated by comma, semicolon or tab, numbers have a decimal point.
     """
     text = _text(path)
@@ -58,12 +64,15 @@ def read_events(path: Path, board: Board) -> Pattern:
     except QuantityError as err:
         raise InputError([Problem(str(path), number, str(err))]) from None
     columns = _columns(titles, path, number)
-    known = {c.label: c.number for c in board.channels} | {str(c.number): c.number for c in board.channels}
+    names = {
+        "label": {c.label: c.number for c in board.channels},
+        "number": {str(c.number): c.number for c in board.channels},
+    }
     problems: list[Problem] = []
     pulses: list[Pulse] = []
     for k, line in wanted[1:]:
         try:
-            pulses.append(_pulse(_cells(line, delimiter), columns, known, board))
+            pulses.append(_pulse(_cells(line, delimiter), columns, names, board))
         except QuantityError as err:
             problems.append(Problem(str(path), k, str(err)))
             if len(problems) == _MOST_PROBLEMS:
@@ -76,7 +85,41 @@ def read_events(path: Path, board: Board) -> Pattern:
         problems.append(Problem(str(path), number, "no pulse follows the line of titles; write one per line"))
     if problems:
         raise InputError(problems)
-    return Pattern(path, name_from(path.stem, "events"), None, by_start(pulses))
+    return Pattern(path, name_from(path.stem, "events"), None, by_start(pulses), span="the list's own")
+
+
+class EventsFile(Record):
+    """A list of events, and how long to look: a shot that is not fired again at once."""
+
+    name: Name | None = None
+    events: str = Field(description="list of events (.csv), relative to this file")
+    duration: Annotated[Quantity, TIME] | None = Field(
+        None, description="look at least this long, over which averages are taken; the list's own length if absent"
+    )
+
+
+def events_of(file: TomlFile, board: Board) -> Pattern:
+    """The pattern of a list of events that a TOML file names.
+
+    Raises
+    ------
+    InputError
+        If the file, or the list that it names, cannot be used; says where.
+    """
+    try:
+        raw = EventsFile.model_validate(file.data)
+    except ValidationError as err:
+        raise InputError(problems_of(err, file)) from None
+    if not raw.events.strip():
+        raise InputError([file.problem_at(("events",), "names no file")])
+    found = read_events(file.path.parent / raw.events, board)
+    duration = raw.duration
+    if duration is not None:
+        if duration.toleranced:
+            raise InputError([file.problem_at(("duration",), "a commanded time has no tolerance; leave it out")])
+        refuse_early_end(file, duration.typ, found.pulses)
+        found = replace(found, duration=duration.typ, span="the list's")
+    return replace(found, name=raw.name or name_from(file.path.stem, "events"))
 
 
 def _text(path: Path) -> str:
@@ -133,10 +176,13 @@ def _columns(titles: list[str], path: Path, line: int) -> Mapping[str, _Column]:
                 found[name] = _Column(place, None if unit is None else parse(f"1 {unit}", TIME).typ)
             except QuantityError as err:
                 problems.append(f'column "{shortened(title)}": {err}')
-            if name == "channel" and unit is not None:
-                problems.append('column "channel" has no unit; write its number or its label')
+            if name in _WHO and unit is not None:
+                problems.append(f'column "{name}" has no unit; write its number or its label')
     if not problems:
-        problems += [f'column "{name}" is missing' for name in ("channel", "start") if name not in found]
+        who = [name for name in _WHO if name in found]
+        problems += [] if who else ['column "channel" is missing']
+        problems += [f'columns "{who[0]}" and "{who[1]}" both name channels; leave one out'] if len(who) > 1 else []
+        problems += [] if "start" in found else ['column "start" is missing']
         if ("width" in found) == ("stop" in found):
             problems.append('needs one of the columns "width" and "stop", and not both')
     if problems:
@@ -144,7 +190,9 @@ def _columns(titles: list[str], path: Path, line: int) -> Mapping[str, _Column]:
     return found
 
 
-def _pulse(cells: list[str], columns: Mapping[str, _Column], known: Mapping[str, int], board: Board) -> Pulse:
+def _pulse(
+    cells: list[str], columns: Mapping[str, _Column], names: Mapping[str, Mapping[str, int]], board: Board
+) -> Pulse:
     """The pulse of one line.
 
     Raises
@@ -154,13 +202,7 @@ def _pulse(cells: list[str], columns: Mapping[str, _Column], known: Mapping[str,
     """
     if len(cells) != len(columns):
         raise QuantityError(f"has {len(cells)} columns where the titles name {len(columns)}")
-    named = cells[columns["channel"].place]
-    channel = known.get(named)
-    if channel is None:
-        raise QuantityError(
-            f"channel {shortened(named)!r} is not on the board {board.path.name}{nearest(named, [*known])}; "
-            "write its number or its label"
-        )
+    channel = _channel(cells, columns, names, board)
     times = dict(_times(cells, columns))
     start = snapped(times["start"])
     width = snapped(times["width"] if "width" in times else times["stop"] - start)
@@ -168,6 +210,35 @@ def _pulse(cells: list[str], columns: Mapping[str, _Column], known: Mapping[str,
         text = "a pulse of 0 s is none; give its on-time" if "width" in times else "the pulse stops before it starts"
         raise QuantityError(text)
     return Pulse(channel, start, width)
+
+
+def _channel(
+    cells: list[str], columns: Mapping[str, _Column], names: Mapping[str, Mapping[str, int]], board: Board
+) -> int:
+    """The channel that a line names.
+
+    Raises
+    ------
+    QuantityError
+        If there is none, or if number and label mean two of them.
+    """
+    (title,) = (name for name in _WHO if name in columns)
+    named = cells[columns[title].place]
+    ways = ("number", "label") if title == "channel" else (title,)
+    found = {way: names[way][named] for way in ways if named in names[way]}
+    if not found:
+        known = [name for way in ways for name in names[way]]
+        allowed = "number or its label" if title == "channel" else title
+        raise QuantityError(
+            f"{title} {shortened(named)!r} is not on the board {board.path.name}{nearest(named, known)}; write its {allowed}"
+        )
+    if len({*found.values()}) > 1:
+        other = board.channel(found["number"]).label
+        raise QuantityError(
+            f'channel {named!r} may be channel {found["number"]}, labelled "{other}", or channel {found["label"]}, labelled '
+            f'"{named}"; name the column "number" or "label" in place of "channel"'
+        )
+    return next(iter(found.values()))
 
 
 def _times(cells: list[str], columns: Mapping[str, _Column]) -> Iterator[tuple[str, float]]:
@@ -179,7 +250,7 @@ def _times(cells: list[str], columns: Mapping[str, _Column]) -> Iterator[tuple[s
         If one is no time.
     """
     for name, column in columns.items():
-        if name == "channel":
+        if name in _WHO:
             continue
         text = cells[column.place]
         if column.unit is None:

@@ -70,7 +70,8 @@ class Pulse:
 class Pattern:
     """Pulses by start, and the time until which a run looks. [s]
 
-    `recorded` is what the outputs really did, where the pulses were read from a capture of the bus.
+    `recorded` is what the outputs really did, where the pulses were read from a capture of the bus; `span` says whose time
+    averages are taken over.
     """
 
     path: Path
@@ -78,6 +79,7 @@ class Pattern:
     duration: float | None
     pulses: tuple[Pulse, ...]
     recorded: Firing | None = None
+    span: str = "the pattern's"
 
 
 def read_pattern(path: Path, board: Board) -> Pattern:
@@ -115,18 +117,25 @@ def pattern_of(file: TomlFile, board: Board) -> Pattern:
             )
             break
     duration = raw.duration.typ if raw.duration else None
-    if not problems and duration is not None:
-        last = max(pulses, key=lambda p: p.stop)
-        if last.stop > duration * (1 + 1e-9):
-            problems.append(
-                file.problem_at(
-                    ("duration",),
-                    f"{in_units(duration, 's', 4)} ends before the last pulse does, at {in_units(last.stop, 's', 4)}",
-                )
-            )
     if problems:
         raise InputError(problems)
+    if duration is not None:
+        refuse_early_end(file, duration, pulses)
     return Pattern(file.path, raw.name or name_from(file.path.stem, "pattern"), duration, by_start(pulses))
+
+
+def refuse_early_end(file: TomlFile, duration: float, pulses: Iterable[Pulse]) -> None:
+    """Refuse a duration [s] that ends before the last pulse does.
+
+    Raises
+    ------
+    InputError
+        With its line.
+    """
+    last = max(p.stop for p in pulses)
+    if last > duration * (1 + 1e-9):
+        said = f"{in_units(duration, 's', 4)} ends before the last pulse does, at {in_units(last, 's', 4)}"
+        raise InputError([file.problem_at(("duration",), said)])
 
 
 def by_start(pulses: Iterable[Pulse]) -> tuple[Pulse, ...]:

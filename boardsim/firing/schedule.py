@@ -14,6 +14,7 @@ from boardsim.firing.bus import Recorded
 from boardsim.firing.pattern import Pattern, Pulse, snapped
 from boardsim.firing.registers import ChainState, frame_time, last_bit, shift_in
 from boardsim.parts.controller import Controller
+from boardsim.quantities import in_units
 
 Floats = NDArray[np.float64]
 
@@ -94,6 +95,8 @@ class Firing:
         The bus as it was captured, where it was: then nothing but the outputs tells what was commanded.
     sent : tuple of (time, image)
         When the controller starts each register frame, and the image that it sends. [s]
+    span : str
+        Whose time it is that averages are taken over, such as "the pattern's".
     """
 
     duration: float
@@ -109,6 +112,17 @@ class Firing:
     jitter: float = 0.0
     recorded: Recorded | None = None
     sent: tuple[tuple[float, int], ...] = ()
+    span: str = "the pattern's"
+
+    @property
+    def averaged_over(self) -> str:
+        """What averages are taken over, for people."""
+        return f"over {self.span} {in_units(self.duration, 's')}"
+
+    @property
+    def goes_on(self) -> bool:
+        """Whether averages take what is fired once for something that goes on, since nobody said how long to look."""
+        return self.span.endswith(" own")
 
     def channels_on(self, t: float) -> tuple[int, ...]:
         """The channels that are on at a time."""
@@ -194,6 +208,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         pattern.pulses,
         controller.jitter.max,
         sent=tuple(sent),
+        span=pattern.span,
     )
 
 

@@ -8,7 +8,7 @@ from boardsim.board.reader import Board
 from boardsim.board.toml_file import read_toml
 from boardsim.errors import InputError, Problem
 from boardsim.firing.capture import capture_of
-from boardsim.firing.csv_events import read_events
+from boardsim.firing.csv_events import events_of, read_events
 from boardsim.firing.pattern import Pattern, pattern_of
 
 _DUMP = (
@@ -18,7 +18,7 @@ _DUMP = (
 
 
 def read_source(path: Path, board: Board) -> Pattern:
-    """Read a pattern from whatever kind of file tells it: TOML with pulses, TOML that names a capture, or CSV.
+    """Read a pattern from whatever kind of file tells it: TOML with pulses, TOML that names a capture or a list, or CSV.
 
     Raises
     ------
@@ -33,4 +33,6 @@ def read_source(path: Path, board: Board) -> Pattern:
     file = read_toml(path, "pattern")
     if "capture" in file.data or ("signals" in file.data and "pulses" not in file.data):
         return capture_of(file, board)
+    if "events" in file.data and "pulses" not in file.data:
+        return events_of(file, board)
     return pattern_of(file, board)

@@ -172,6 +172,10 @@ class _Reader:
                 self._advance(token.time_change)
             elif isinstance(data, RealChange | StringChange):
                 self._known(data.id_code)
+                if (word := self.place.get(data.id_code)) is not None:
+                    raise self.refuse(
+                        f"{word} is {_plain(str(data.value))} here; a line of the bus is 0 or 1", self.line
+                    )
             elif kind in _IN_HEADER:
                 self._declare(token)
             elif kind in _SECTIONS:

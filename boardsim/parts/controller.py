@@ -15,7 +15,8 @@ class Controller(Part):
 
     Notes
     -----
-    A pin is a step between 0 and the controller's supply behind one resistance; loaded levels are those that are given.
+    A pin is a step between 0 and the controller's supply behind one resistance; loaded levels are those that are given, up
+    to the load that they are given for.
     In SPI modes 0 and 3 data change half a period before the clock's rising edge, at which the registers take them. In modes
     1 and 2 they change at that very edge (Motorola SPI Block Guide V03.06, section 4.3: CPOL and CPHA). In mode 1 the
     registers then take the bit before: every bit comes one place late.
@@ -32,6 +33,9 @@ class Controller(Part):
     )
     resistance: Annotated[Quantity, POSITIVE_RESISTANCE] = assume(
         "50 ohm", POSITIVE_RESISTANCE, "of an output at usual drive strength, from memory"
+    )
+    level_current: Annotated[Quantity, CURRENT] = assume(
+        "4 mA", CURRENT, "load up to which high_drop and low_output hold, at usual drive strength, from memory"
     )
     spi_mode: Annotated[int, Field(strict=True, ge=0, le=3)] = Field(
         0, description="clock polarity and phase; registers take data on the rising edge, as modes 0 and 3 do"

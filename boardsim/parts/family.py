@@ -9,9 +9,9 @@ from typing import Annotated, ClassVar, Literal, NamedTuple
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import Part
+from boardsim.parts.base import Assumption, Part
 from boardsim.parts.record import Record
-from boardsim.quantities import CAPACITANCE, CURRENT, POSITIVE_TIME, VOLTAGE, Quantity, assume
+from boardsim.quantities import CAPACITANCE, CURRENT, POSITIVE_TIME, TEMPERATURE, VOLTAGE, Quantity, assume, celsius
 
 _SAME = 1e-9  # share by which two supplies may differ and still be one: rounding of tolerances
 
@@ -65,6 +65,23 @@ def rising(supplies: Sequence[float], table: str) -> None:
         raise QuantityError(f"{table}: list each supply once, the lowest first")
 
 
+def of_columns() -> Quantity:
+    """Air in which a record's limits hold, where it does not say. [K]"""
+    return assume(
+        "-40 to 85 degC",
+        TEMPERATURE,
+        "air in which levels and times hold: the column that data sheets of logic print first, common practice",
+    )
+
+
+def columns_assumed(part: str, what: str, temperatures: Quantity) -> tuple[Assumption, ...]:
+    """The air in which a record's limits hold [K], where that was assumed."""
+    if not temperatures.assumed():
+        return ()
+    value = f"{celsius(temperatures.min)} to {celsius(temperatures.max)}"
+    return (Assumption(part, f"air in which its {what} hold", value, temperatures.origin.source),)
+
+
 class InputLevel(Record):
     """At one printed supply: what an input takes for low and for high."""
 
@@ -101,6 +118,7 @@ class LogicFamily(Part):
     edges: tuple[SlowestEdge, ...] = Field(
         (), description="how slowly a clock input may change, the lowest supply first"
     )
+    levels_hold_at: Annotated[Quantity, TEMPERATURE] = of_columns()
     high_drop: Annotated[Quantity, VOLTAGE] = Field(
         description="how far a lightly loaded high output may stay below the supply, as one that drives the next register's input"
     )

@@ -10,7 +10,7 @@ from pydantic import Field, model_validator
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Part, Stamp, listed, named_part
 from boardsim.parts.elements import GROUND, Drive, Resistor
-from boardsim.parts.family import LogicFamily, place_in, rising
+from boardsim.parts.family import LogicFamily, columns_assumed, of_columns, place_in, rising
 from boardsim.parts.record import Record
 from boardsim.quantities import (
     CAPACITANCE,
@@ -18,6 +18,7 @@ from boardsim.quantities import (
     FREQUENCY,
     POSITIVE_RESISTANCE,
     POSITIVE_TIME,
+    TEMPERATURE,
     TIME,
     VOLTAGE,
     Quantity,
@@ -81,6 +82,7 @@ class Register(Part):
     family: named_part(LogicFamily) | None = Field(  # type: ignore[valid-type]
         None, description="logic family: levels and ratings of its pins"
     )
+    times_hold_at: Annotated[Quantity, TEMPERATURE] = of_columns()
     times: tuple[TimingPoint, ...] = Field((), description="times at each printed supply, the lowest first")
     highest_clock: Annotated[Quantity, FREQUENCY] | None = Field(
         None, description="of one register alone, where there is no table of times"
@@ -138,6 +140,13 @@ class Register(Part):
         if family is None:
             return tuple((v, 0.3 * v, 0.7 * v) for v in (self.supply_low.typ, self.supply_high.typ))
         return tuple((level.supply.typ, level.low.min, level.high.max) for level in family.inputs)
+
+    @property
+    def holds_in(self) -> tuple[float, float]:
+        """Coldest and warmest air in which its own limits and those of its family hold. [K]"""
+        family: LogicFamily | None = self.family
+        ranges = [self.times_hold_at, *([family.levels_hold_at] if family is not None else [])]
+        return max(q.min for q in ranges), min(q.max for q in ranges)
 
     @property
     def keeps_from(self) -> float:
@@ -211,7 +220,10 @@ class Register(Part):
         """What had to be supplied for the timing of a chain of these."""
         name = self.title or "register"
         family: LogicFamily | None = self.family
-        found = listed(family.title or "logic family", test_load=family.test_load) if family is not None else ()
+        found = columns_assumed(name, "times", self.times_hold_at)
+        if family is not None:
+            found += columns_assumed(family.title or "logic family", "levels", family.levels_hold_at)
+            found += listed(family.title or "logic family", test_load=family.test_load)
         without = [row for row in self.times if row.shift_delay_least is None]
         if without:
             values = ", ".join(f"{_least(row) * 1e9:.3g} ns at {row.supply}" for row in without)

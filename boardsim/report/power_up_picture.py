@@ -95,11 +95,11 @@ def power_up_figure(result: Result) -> Figure:
     _rail(panels[2], study, scale)
     _lines(panels[3], study, scale)
     for axes in panels:
-        for at in (study.since, study.until):
-            if at > 0:
+        for at in (study.reset, study.until):
+            if at is not None:
                 axes.axvline(at * scale, color=INK, linewidth=1.1, linestyle=_DOTS, zorder=4.5)
-    if study.since > 0:
-        beside(panels[0], 0.5, f"reset {in_units(study.since, 's', 3)}", INK)
+    if study.reset is not None:
+        beside(panels[0], 0.5, f"reset {in_units(study.reset, 's', 3)}", INK)
     panels[-1].tick_params(axis="x", labelbottom=True)
     panels[-1].set_xlabel(f"time [{unit}]", fontsize=TEXT, color=INK)
     make_room(figure, panels)

@@ -9,6 +9,7 @@ from boardsim.board.reader import Board
 from boardsim.firing.registers import frame_time
 from boardsim.quantities import in_units
 from boardsim.verdict.chain import judge_chain
+from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.chain_levels import judge_floating
 from boardsim.verdict.chain_study import chain_study, judge_lateness
 from boardsim.verdict.chain_times import controller_of
@@ -33,7 +34,8 @@ def check_chain(board: Board, strict: bool = False) -> Result:
         With a `ChainStudy` as its study. Nothing is simulated, so that there is no audit.
     """
     began = time.perf_counter()
-    findings = sorted([*judge_chain(board), judge_lateness(board), *judge_floating(board)], key=severity)
+    others = where_limits_hold(board, [judge_lateness(board), *judge_floating(board)])
+    findings = sorted([*judge_chain(board), *others], key=severity)
     study = chain_study(board, findings)
     return Result(
         board.name,

@@ -14,7 +14,7 @@ from boardsim.report.files import write_text
 
 
 def check_place(path: Path, inputs: Iterable[Path], pattern: Pattern) -> None:
-    """Refuse to write edges over a file that was read; a capture is one of them.
+    """Refuse to write edges over a file that was read; a capture and a list of events are among them.
 
     Raises
     ------
@@ -22,7 +22,7 @@ def check_place(path: Path, inputs: Iterable[Path], pattern: Pattern) -> None:
         If it is one, or a folder.
     """
     recorded = pattern.recorded.recorded if pattern.recorded is not None else None
-    read = [*inputs, *([recorded.capture] if recorded is not None else [])]
+    read = [*inputs, pattern.path, *([recorded.capture] if recorded is not None else [])]
     if path.is_dir():
         raise InputError(f"--edges {path}: is a folder; name a file in it")
     if any(path.exists() and one.exists() and path.samefile(one) for one in read):

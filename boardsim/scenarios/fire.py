@@ -105,7 +105,7 @@ def fire_pattern(
         firing.duration,
         overall(findings, proven, strict),
         tuple(findings),
-        (*assumptions_of(board, sampled), *assumptions_of_capture(firing)),
+        (*assumptions_of(board, sampled), *assumptions_of_capture(board, firing)),
         tuple(r.audit for r in results),
         _firing_sentences(board, firing, firmware, detail),
         _traces(board, firing, shown),
@@ -136,6 +136,9 @@ def edge_times(board: Board, firing: Firing) -> tuple[EdgeTimes, ...]:
 def _firing_sentences(board: Board, firing: Firing, firmware: bool, detail: Detail) -> tuple[str, ...]:
     rules = not_given(board) if firmware else ""
     missing = (rules,) if rules else ()
+    if firing.goes_on:
+        said = f"powers and temperatures are averages {firing.averaged_over}, as if it were fired again and again"
+        missing = (f"{said}; a duration in the TOML file that names it says how long it is until then", *missing)
     if firing.recorded is not None:
         return (*told(firing), *missing)
     lines = [

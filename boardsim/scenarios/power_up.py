@@ -40,10 +40,9 @@ from boardsim.verdict.power_up import (
     BootWatch,
     Uncommanded,
     harmless,
-    judge_boot,
-    quantity_of,
     release_assumed,
 )
+from boardsim.verdict.power_up_findings import judge_boot, quantity_of
 from boardsim.verdict.studies import BootRow, PowerUp
 
 NAME = "power-up"
@@ -51,10 +50,6 @@ SEED = 1
 _SETTLED = 5.0  # L/R times
 _LONGEST_PULSE = 0.1  # [s], that a reset interrupts; a slower coil is not followed to its settled current
 _RESET_BEGINS = 1e-3  # [s]
-_TURNED_OFF = 100e-6  # [s]
-RESET_TIME = Assumption(
-    "board", "time that a reset may take to turn switches off", "100 us", "far below what a coil moves in, from memory"
-)
 
 
 @dataclass(frozen=True)
@@ -247,10 +242,10 @@ def _reset(board: Board) -> Boot:
         steady,
         ((_RESET_BEGINS, image), (first, 0)),
         ((-1.0, reset), (first + frame_time(chain) + chain.latch_time.typ, duration + 1.0)),
-        reset + _TURNED_OFF,
+        reset + board.power_up.reset_off.min,
         enabled,
         duration,
-        reset=True,
+        reset,
     )
 
 
@@ -312,7 +307,7 @@ def _named(findings: Sequence[Finding], boot: Boot) -> list[Finding]:
 def _study(board: Board, done: Sequence[_Done], wanted: Sequence[Corner]) -> PowerUp:
     rows = tuple(_row(board, d, wanted) for d in done)
     # Of equally many coils switch-on is shown, which tells more than a reset.
-    shown = max(range(len(rows)), key=lambda k: (rows[k].count, not done[k].boot.reset, rows[k].energy or 0.0, -k))
+    shown = max(range(len(rows)), key=lambda k: (rows[k].count, done[k].boot.reset is None, rows[k].energy or 0.0, -k))
     found = list(done[shown].watch.found.values())
     reading = max(found, key=_energy, default=None)
     boot = done[shown].boot
@@ -325,6 +320,7 @@ def _study(board: Board, done: Sequence[_Done], wanted: Sequence[Corner]) -> Pow
         boot.frames[-1][0],
         min(harmless(board, c, corner) for c in board.channels for corner in wanted),
         reading.waves if reading is not None else {},
+        boot.reset,
     )
 
 
@@ -348,7 +344,7 @@ def _row(board: Board, done: _Done, wanted: Sequence[Corner]) -> BootRow:
     mine = [f for f in done.findings if f.quantity == quantity_of(done.boot)]
     verdict: Verdict = min(mine, key=severity).verdict if mine else "unproven"
     return BootRow(
-        ("after a reset, " if done.boot.reset else "") + done.boot.name,
+        ("after a reset, " if done.boot.reset is not None else "") + done.boot.name,
         f"{done.boot.contents.storage:0{math.ceil(board.chain.outputs / 4)}X}",
         worst_of[loudest].peak if loudest is not None else None,
         board.channel(loudest).label if loudest is not None and counting else "-",
@@ -369,8 +365,8 @@ def _assumed(board: Board) -> Iterator[Assumption]:
         **_own_rail(board),
         first_frame=table.first_frame,
         current_that_does_not_matter=table.harmless,
+        time_in_which_a_reset_has_to_turn_channels_off=table.reset_off,
     )
-    yield RESET_TIME
     if chain.output_enable is None:
         yield Assumption("chain", "output enable", "tied low", "not given: the wiring with which most goes wrong")
     if chain.clear is None:
@@ -409,5 +405,5 @@ def _told(board: Board, all_boots: Sequence[Boot], seed: int) -> Iterator[str]:
         yield "all ones turn on every coil: each switch of this board is on while its output is high"
     if any("one coil" in boot.name for boot in all_boots):
         yield "one coil of each build alone shows what it carries where the others do not pull the rail down"
-    reset = all_boots[-1]
-    yield f"reset at {in_units(reset.since - _TURNED_OFF, 's', 4)} with every channel on: registers keep their frame, pins float"
+    reset = all_boots[-1].reset or 0.0
+    yield f"reset at {in_units(reset, 's', 4)} with every channel on: registers keep their frame, pins float"

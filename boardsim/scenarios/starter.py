@@ -11,6 +11,7 @@ from pydantic.json_schema import GenerateJsonSchema
 from boardsim.board.schema import BoardFile
 from boardsim.errors import InputError
 from boardsim.firing.capture import CaptureFile
+from boardsim.firing.csv_events import EventsFile
 from boardsim.firing.pattern import PatternFile
 from boardsim.parts.record import Record
 from boardsim.quantities import Quantity
@@ -143,11 +144,12 @@ def write_starter(folder: Path) -> tuple[Path, Path, Path]:
 
 
 def json_schema(what: str) -> dict[str, Any] | None:
-    """The JSON Schema of "board", "pattern", "capture" or "scenarios" files; None for any other word."""
+    """The JSON Schema of "board", "pattern", "capture", "events" or "scenarios" files; None for any other word."""
     models: dict[str, type[Record]] = {
         "board": BoardFile,
         "pattern": PatternFile,
         "capture": CaptureFile,
+        "events": EventsFile,
         "scenarios": ScenarioFile,
     }
     model = models.get(what)

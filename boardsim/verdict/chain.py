@@ -9,7 +9,13 @@ from boardsim.board.reader import Board
 from boardsim.parts.register import Register
 from boardsim.parts.rules import Consequence
 from boardsim.quantities import Quantity, apart, in_units
-from boardsim.verdict.chain_findings import assumed_among, chain_finding, register_name, share_left
+from boardsim.verdict.chain_findings import (
+    assumed_among,
+    chain_finding,
+    register_name,
+    share_left,
+    where_limits_hold,
+)
 from boardsim.verdict.chain_levels import judge_edges, judge_levels
 from boardsim.verdict.chain_times import ChainTimes, Window, controller_of, supplies_to_judge, times_at
 from boardsim.verdict.findings import Finding
@@ -27,13 +33,14 @@ _TRY = {
 def judge_chain(board: Board) -> list[Finding]:
     """What holds of the chain whatever is fired: clock, timing, levels, edges, logic rail; each where it is worst."""
     known = all_times(board)
-    return [
+    found = [
         _clock(board, known),
         *_windows(board, known),
         *judge_levels(board),
         *judge_edges(board),
         *_rail(board),
     ]
+    return where_limits_hold(board, found)
 
 
 def all_times(board: Board) -> list[ChainTimes] | None:
@@ -73,6 +80,12 @@ def _not_known(board: Board) -> str:
     return f"times and levels of {name} are given for {lowest} to {highest}; the logic rail is {reaches}"
 
 
+def _not_sure(known: Sequence[ChainTimes]) -> str:
+    """Which level of the controller the registers do not surely take for what it is."""
+    high = any(not math.isfinite(line.rise.late) for times in known for line in (times.clock, times.latch, times.data))
+    return f"the controller's {'high level is not surely high' if high else 'low level is not surely low'} for the registers"
+
+
 def _windows(board: Board, known: Sequence[ChainTimes] | None) -> Iterator[Finding]:
     if known is None:
         said = f"set-up, hold and pulse widths cannot be judged: {_not_known(board)}"
@@ -80,7 +93,7 @@ def _windows(board: Board, known: Sequence[ChainTimes] | None) -> Iterator[Findi
         return
     found = worst_windows(known)
     if any(not math.isfinite(window.needed) for _, window in found):
-        said = "set-up, hold and pulse widths cannot be judged: the controller's high level is not surely high for the registers"
+        said = f"set-up, hold and pulse widths cannot be judged: {_not_sure(known)}"
         period = 1 / board.chain.clock.max
         yield chain_finding(board, "chain-timing", "set-up and hold", period, None, "s", said, margin=math.nan)
         return
@@ -182,9 +195,7 @@ def _clock(board: Board, known: Sequence[ChainTimes] | None) -> Finding:
         slowest = min(known, key=lambda times: highest_clock(times)[0])
         limit, decides = highest_clock(slowest)
         if limit <= 0:
-            said += (
-                "how fast it follows cannot be judged: the controller's high level is not surely high for the registers"
-            )
+            said += f"how fast it follows cannot be judged: {_not_sure(known)}"
         else:
             said += f"{chain.count} {register_name(board)} follow up to {in_units(limit, 'Hz')} at {in_units(slowest.volts, 'V')} ({decides})"
         return chain_finding(

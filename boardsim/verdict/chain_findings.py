@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+from dataclasses import replace
 from typing import Literal
 
 from boardsim.board.reader import Board
-from boardsim.quantities import Quantity, in_units
+from boardsim.parts.register import Register
+from boardsim.quantities import Quantity, celsius, in_units
 from boardsim.verdict.findings import Finding, Verdict, verdict_of
 
 
@@ -82,3 +85,28 @@ def chain_finding(
 def assumed_among(**quantities: Quantity) -> tuple[str, ...]:
     """The assumed numbers among these, by name."""
     return tuple(name.replace("_", " ") for name, q in quantities.items() if q.assumed())
+
+
+def where_limits_hold(board: Board, findings: Iterable[Finding]) -> list[Finding]:
+    """Findings on the register's printed limits, of which none passes in air for which they were not printed.
+
+    Notes
+    -----
+    Data sheets print levels, times and ratings of logic in columns, each for a range of ambient temperature; CMOS gets slower
+    and leaks more as it gets warmer, and nothing is promised beyond. What breaks a limit that is printed for less stays broken.
+    """
+    register: Register = board.chain.register_
+    low, high = register.holds_in
+    around = board.around
+    if around is None or (low <= around.ambient_low and around.ambient_high <= high):
+        return list(findings)
+    air = f"{celsius(around.ambient_low)} to {celsius(around.ambient_high)}"
+    if around.ambient_low == around.ambient_high:
+        air = celsius(around.ambient_high)
+    why = f"figures of {register_name(board)} hold from {celsius(low)} to {celsius(high)}, the air is {air}"
+    return [
+        replace(f, limit=None, margin=None, verdict="limit-missing", sentence=f"{f.sentence}; but {why}")
+        if f.verdict in ("pass", "tight")
+        else f
+        for f in findings
+    ]

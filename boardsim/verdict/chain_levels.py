@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import dataclass
 
 from boardsim.board.reader import Board
 from boardsim.parts.family import LogicFamily
 from boardsim.quantities import apart, in_units
 from boardsim.verdict.chain_findings import assumed_among, chain_finding, register_name
-from boardsim.verdict.chain_times import controller_of, controller_supply, lines_at, supplies_to_judge
+from boardsim.verdict.chain_times import controller_of, controller_supply, lines_at, loaded, supplies_to_judge
 from boardsim.verdict.findings import Finding, severity
 
 _FIRST, _ON = "from the controller", "from register to register"
@@ -40,33 +41,83 @@ def judge_levels(board: Board) -> list[Finding]:
 
 def _levels(board: Board, family: LogicFamily, volts: float) -> Iterator[Finding]:
     levels = family.input_levels(volts)
-    at = f"at a logic rail of {in_units(volts, 'V')}"
     if levels is None:
-        printed = f"{in_units(family.printed[0], 'V')} to {in_units(family.printed[-1], 'V')}"
-        said = f"{register_name(board)}: input levels of {family.title or 'its family'} are given for {printed} only, not {at}"
+        said = f"{register_name(board)}: {_levels_elsewhere(board, family, volts)}"
         yield chain_finding(board, "logic-level", "logic levels", volts, None, "V", said, volts=volts)
         return
     yield from _from_controller(board, family, volts, levels)
     if board.chain.count > 1:
         sources = (str(family.inputs[0].low.origin),) * 2
-        yield _high(board, volts, levels[1], volts - family.high_drop.max, _ON, "a register", sources[0])
-        yield _low(board, volts, levels[0], family.low_output.max, _ON, "a register", sources[1])
+        yield _high(board, volts, levels[1], _Given(volts - family.high_drop.max), _ON, "a register", sources[0])
+        yield _low(board, volts, levels[0], _Given(family.low_output.max), _ON, "a register", sources[1])
+
+
+@dataclass(frozen=True)
+class _Given:
+    """A level that the controller gives at the inputs: how high [V], on which line, and what it hangs on."""
+
+    volts: float
+    where: str = ""
+    assumed: tuple[str, ...] = ()
+
+
+def _given(board: Board, volts: float, high: bool) -> _Given | None:
+    """The controller's lowest high level, or its highest low one, of all lines; None where it was not given.
+
+    Parameters
+    ----------
+    volts : float
+        The logic rail. [V]
+    high : bool
+        Which of the two.
+
+    Notes
+    -----
+    Levels are printed for a load. A pull resistor R_p that loads the pin no more leaves the printed level behind the resistor R_s
+    in series: the current (V - V_pull) / (R_s + R_p) drops across R_s only. Under a heavier load the pin is its output
+    resistance, and the level what Ohm's law leaves; where the printed one is worse still that counts.
+    """
+    controller, chain = controller_of(board), board.chain
+    printed = controller.high_drop if high else controller.low_output
+    if printed is None:
+        return None
+    lowest, _ = controller_supply(board, volts)
+    level = lowest - printed.max if high else printed.max
+    found = []
+    for name, line in (("data", chain.data_line), ("clock", chain.clock_line), ("latch", chain.latch_line)):
+        pull = line.pull_down if high else line.pull_up
+        if pull is None:  # a pull towards the level only helps
+            found.append(_Given(level))
+            continue
+        end = 0.0 if high else volts
+        load = abs(level - end) / (line.series.max + pull.min)
+        behind = level + (end - level) * line.series.max / (line.series.max + pull.min)
+        where = f" on the {name} line, which {in_units(pull.typ, 'ohm')} pull {'down' if high else 'up'}"
+        hangs = {"load_of_the_printed_levels": controller.level_current}
+        if load > controller.level_current.min:
+            supply, floor, _ = loaded(board, line, volts)
+            behind = min(behind, supply[0]) if high else max(behind, floor[1])
+            hangs["output_resistance_of_the_controller"] = controller.resistance
+        found.append(_Given(behind, where, assumed_among(**hangs)))
+    return (min if high else max)(found, key=lambda g: g.volts)
 
 
 def _from_controller(board: Board, family: LogicFamily, volts: float, levels: tuple[float, float]) -> Iterator[Finding]:
     controller, name = controller_of(board), register_name(board)
-    lowest, highest = controller_supply(board, volts)
+    _, highest = controller_supply(board, volts)
     low, high = levels
     source = str(family.inputs[0].low.origin)
-    if controller.high_drop is None:
+    given = _given(board, volts, high=True)
+    if given is None:
         said = (
             f"{name} takes {in_units(high, 'V')} and more for high at a logic rail of {in_units(volts, 'V')}; how far the "
             "controller's high level stays below its supply was not given ([controller] high_drop)"
         )
         yield chain_finding(board, "logic-level", "high level that the inputs need", high, None, "V", said, volts=volts)
     else:
-        yield _high(board, volts, high, lowest - controller.high_drop.max, _FIRST, "the controller", source)
-    if controller.low_output is None:
+        yield _high(board, volts, high, given, _FIRST, "the controller", source)
+    given = _given(board, volts, high=False)
+    if given is None:
         said = (
             f"{name} takes {in_units(low, 'V')} and less for low at a logic rail of {in_units(volts, 'V')}; the controller's "
             "low level was not given ([controller] low_output)"
@@ -75,18 +126,20 @@ def _from_controller(board: Board, family: LogicFamily, volts: float, levels: tu
             board, "logic-level", "low level that the inputs need", low, None, "V", said, volts=volts, worse="low"
         )
     else:
-        yield _low(board, volts, low, controller.low_output.max, _FIRST, "the controller", source)
+        yield _low(board, volts, low, given, _FIRST, "the controller", source)
     if controller.voltage is not None:  # on the registers' own supply it cannot be above it
         yield _too_high(board, family, volts, highest)
 
 
-def _high(board: Board, volts: float, needed: float, given: float, where: str, who: str, source: str) -> Finding:
+def _high(board: Board, volts: float, needed: float, level: _Given, where: str, who: str, source: str) -> Finding:
+    given = level.volts
     reading, limit = apart(given, needed, "V")
     said = (
-        f"{who} gives a high level of {reading} at least; at a logic rail of {in_units(volts, 'V')} {register_name(board)} "
+        f"{who} gives a high level of {reading} at least{level.where}; at a logic rail of {in_units(volts, 'V')} {register_name(board)} "
         f"takes {limit} and more for high"
     )
     advice = "a family with TTL levels (HCT, AHCT), a level shifter, or registers on the controller's supply"
+    advice = f"a larger pull resistor; {advice}" if level.where else advice
     margin = (given - needed) / needed
     return chain_finding(
         board,
@@ -100,14 +153,16 @@ def _high(board: Board, volts: float, needed: float, given: float, where: str, w
         volts=volts,
         source=source,
         worse="low",
+        assumed=level.assumed,
         advice=advice,
     )
 
 
-def _low(board: Board, volts: float, needed: float, given: float, where: str, who: str, source: str) -> Finding:
+def _low(board: Board, volts: float, needed: float, level: _Given, where: str, who: str, source: str) -> Finding:
+    given = level.volts
     reading, limit = apart(given, needed, "V")
     said = (
-        f"{who} gives a low level of {reading} at most; at a logic rail of {in_units(volts, 'V')} {register_name(board)} takes "
+        f"{who} gives a low level of {reading} at most{level.where}; at a logic rail of {in_units(volts, 'V')} {register_name(board)} takes "
         f"{limit} and less for low"
     )
     return chain_finding(
@@ -121,7 +176,8 @@ def _low(board: Board, volts: float, needed: float, given: float, where: str, wh
         margin=(needed - given) / needed,
         volts=volts,
         source=source,
-        advice="less load on the line, or a stronger driver",
+        assumed=level.assumed,
+        advice="less load on the line, such as a larger pull resistor, or a stronger driver",
     )
 
 
@@ -208,6 +264,22 @@ def judge_edges(board: Board) -> Iterator[Finding]:
         )
 
 
+def _not_known(board: Board, volts: float) -> str:
+    """Why it is not known what the inputs' leakage does to a line at a logic rail. [V]"""
+    family: LogicFamily | None = board.chain.register_.family
+    name = register_name(board)
+    if family is None:
+        return f"no logic family of {name} was given, so that leakage and levels of its inputs are not known"
+    if family.input_levels(volts) is None:
+        return _levels_elsewhere(board, family, volts)
+    return f"what an input of {name} leaks was not given (input_leakage of its logic family)"
+
+
+def _levels_elsewhere(board: Board, family: LogicFamily, volts: float) -> str:
+    printed = f"{in_units(family.printed[0], 'V')} to {in_units(family.printed[-1], 'V')}"
+    return f"input levels of {family.title or 'its family'} are given for {printed} only, not at a logic rail of {in_units(volts, 'V')}"
+
+
 def judge_floating(board: Board) -> Iterator[Finding]:
     """Clock and latch while the controller's pins float: a pull resistor has to hold them against all leakage.
 
@@ -233,7 +305,7 @@ def judge_floating(board: Board) -> Iterator[Finding]:
         for volts in supplies_to_judge(board):
             levels = board.chain.register_.input_levels(volts)
             if levels is None or family is None or family.input_leakage is None:
-                said = f"the {which} line is held by {resistor}; leakage and levels of {register_name(board)}'s inputs were not given"
+                said = f"the {which} line is held by {resistor}; {_not_known(board, volts)}"
                 found.append(chain_finding(board, "floating-line", quantity, 0.0, None, "V", said, volts=volts))
                 continue
             leak = controller.pin_leakage.max + board.chain.count * family.input_leakage.max

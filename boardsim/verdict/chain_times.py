@@ -3,7 +3,8 @@
 A line is one resistance, that of its driver with the resistor behind it, into the sum of all capacitances on it. That is the
 delay of Elmore (J. Appl. Phys. 19 (1948) 55) for a line whose own resistance is small against the driver's, and exact for
 the single pole that is left: a step to V reaches a level u after t = R C ln(V / (V - u)), one down from V after R C ln(V / u).
-It holds for lines that are short against the edges on them: as long as an edge lasts longer than about six times the run
+A resistor R_p that pulls the line up or down loads the driver (Thevenin's theorem): the step is behind R R_p / (R + R_p), and
+ends where the divider of the two puts it. It holds for lines that are short against the edges on them: as long as an edge lasts longer than about six times the run
 along the line (about 6 ns/m, both from memory). Reflections on longer ones are not in it.
 """
 
@@ -37,7 +38,7 @@ class Span:
 
 @dataclass(frozen=True)
 class Driven:
-    """A line, from 0 to a supply behind a resistance, into a capacitance.
+    """A line, from ground (or where a pull-up leaves it) to a supply behind a resistance, into a capacitance.
 
     Attributes
     ----------
@@ -46,15 +47,18 @@ class Driven:
     capacitance : float
         [F]
     supply : (float, float)
-        Lowest and highest of the driver. [V]
+        Lowest and highest of the driver, as the line's pull resistor leaves it. [V]
     levels : (float, float)
         Highest that counts as low, lowest that counts as high at the inputs. [V]
+    floor : (float, float)
+        Lowest and highest that the driver pulls it down to. [V]
     """
 
     resistance: float
     capacitance: float
     supply: tuple[float, float]
     levels: tuple[float, float]
+    floor: tuple[float, float] = (0.0, 0.0)
 
     @property
     def tau(self) -> float:
@@ -70,21 +74,29 @@ class Driven:
     def rise(self) -> Span:
         """When a rising edge is seen, counted from the driver's own: from the low level on it may, from the high level on it is. [s]"""
         low, high = self.levels
-        return Span(self._up(self.supply[1], low), self._up(self.supply[0], high))
+        lowest, highest = self.floor
+        return Span(
+            self._until(self.supply[1] - highest, low - highest), self._until(self.supply[0] - lowest, high - lowest)
+        )
 
     @property
     def fall(self) -> Span:
         """The same of a falling edge. [s]"""
         low, high = self.levels
-        return Span(self.tau * max(math.log(self.supply[0] / high), 0.0), self.tau * math.log(self.supply[1] / low))
+        (lowest, highest), (weakest, strongest) = self.floor, self.supply
+        early = self._until(weakest - lowest, weakest - high)
+        return Span(early, self._until(strongest - highest, strongest - low))
 
     @property
     def either(self) -> Span:
         """Of an edge of either sense, as data have them. [s]"""
         return Span(min(self.rise.early, self.fall.early), max(self.rise.late, self.fall.late))
 
-    def _up(self, supply: float, level: float) -> float:
-        return self.tau * math.log(supply / (supply - level)) if level < supply else math.inf
+    def _until(self, step: float, way: float) -> float:
+        """After which a step has gone so far; at once where it need not move, never where it does not get there. [V] -> [s]"""
+        if way <= 0:
+            return 0.0
+        return self.tau * math.log(step / (step - way)) if way < step else math.inf
 
 
 @dataclass(frozen=True)
@@ -159,19 +171,48 @@ def controller_supply(board: Board, volts: float) -> tuple[float, float]:
     return (volts, volts) if own is None else (own.min, own.max)
 
 
+def loaded(board: Board, line: Line, volts: float) -> tuple[tuple[float, float], tuple[float, float], float]:
+    """What a line's pull resistor leaves of its driver's step, by Ohm's law.
+
+    Parameters
+    ----------
+    volts : float
+        The logic rail. [V]
+
+    Returns
+    -------
+    tuple of (float, float), (float, float) and float
+        Lowest and highest of its high level and of its low one [V], and the largest resistance behind the step. [ohm]
+
+    Notes
+    -----
+    The driver's pin and the resistor in series with it lie on one side of the line, the pull resistor on the other, to ground
+    or to the logic rail. Without a pull resistor the step is that of the supply.
+    """
+    pin, supply, pull = controller_of(board).resistance, controller_supply(board, volts), line.pull
+    most, least = pin.max + line.series.max, pin.min + line.series.min
+    if pull is None:
+        return supply, (0.0, 0.0), most
+    behind = most * pull.max / (most + pull.max)
+    heavy, light = most / (most + pull.min), least / (least + pull.max)  # shares of the step that the driver loses
+    if line.pull_down is not None:
+        return (supply[0] * (1 - heavy), supply[1] * (1 - light)), (0.0, 0.0), behind
+    ends = [v + share * (volts - v) for v in supply for share in (light, heavy)]
+    return (min(ends), max(ends)), (light * volts, heavy * volts), behind
+
+
 def lines_at(board: Board, volts: float) -> tuple[Driven, Driven, Driven, Driven] | None:
     """Clock, latch, data and link at a voltage of the logic rail; None where levels are not known. [V]"""
     chain, register = board.chain, board.chain.register_
     levels, family = register.input_levels(volts), register.family
     if levels is None or family is None:
         return None
-    pin = controller_of(board).resistance.max
-    supply = controller_supply(board, volts)
     inputs = family.input_capacitance.max
 
     def driven(line: Line, registers: int) -> Driven:
         load = registers * (inputs + line.capacitance.max)
-        return Driven(pin + line.series.max, load, supply, levels)
+        supply, floor, resistance = loaded(board, line, volts)
+        return Driven(resistance, load, supply, levels, floor)
 
     # A register's delay is printed with the test load in it: only what goes beyond that comes on top.
     beyond = max(inputs + chain.data_line.capacitance.max - family.test_load.typ, 0.0)

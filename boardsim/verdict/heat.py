@@ -31,7 +31,7 @@ def judge_heat(
     members = rule.channels or (placed.channel,)
     power = sum(readings.means[c, pair] for c in members for pair in rule.powers)
     among = f" of its {len(members)} channels" if rule.channels else ""
-    said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average over the pattern's {in_units(firing.duration, 's')}"
+    said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average {firing.averaged_over}"
     r_th, limit = rule.resistance.value, rule.limit.value
     air = f"air of {celsius(rule.ambient)}"
     if r_th is None or limit is None:

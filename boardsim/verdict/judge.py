@@ -130,7 +130,7 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_drive(rule, placed, readings.drive[_channel(placed), rule.quantity, rule.current], bench)
         case MeanRule() as rule:
             value = readings.means[placed.channel, rule.quantities]
-            over = f" over the pattern's {in_units(firing.duration, 's')}"
+            over = f" {firing.averaged_over}"
             yield upper(
                 rule.what, rule.limit, rule.consequence, placed, bench, value, None, rule.advice, over, part=rule.part
             )

@@ -1,4 +1,4 @@
-"""What flows before the first enabled frame: read from the waveforms of a boot, and held against what matters."""
+"""What flows before the first enabled frame, read from the waveforms of a boot."""
 
 from __future__ import annotations
 
@@ -14,13 +14,11 @@ from boardsim.engine.waves import Waves
 from boardsim.errors import NoConvergence
 from boardsim.parts.base import Assumption, Corner
 from boardsim.parts.clocked import level_points
-from boardsim.quantities import in_units
-from boardsim.verdict.findings import Envelope, Finding, Floats, Reading, verdict_of
+from boardsim.verdict.findings import Envelope, Floats, Reading
 from boardsim.verdict.readings import Key, SignalTable, our_name
 from boardsim.verdict.release import Crossings, from_time
 from boardsim.verdict.watch import Extremes, Integrals, Slices
 
-CHECK = "uncommanded"
 SLICES = 1600  # across a picture
 _AT_REST = (
     0.05  # [V], within which a rail that is off has to begin; the supply's rounded bend alone leaves some millivolts
@@ -43,17 +41,20 @@ class Uncommanded:
     Attributes
     ----------
     peak, at : float
-        Highest current [A], and when [s].
+        Highest current of the coil [A], and when [s]; after a reset while it is still fed though it has to be off.
     energy : float
-        That the coil took. [J]
+        That the coil took at its own terminals, from switch-on or the reset on; what it gives back is not counted off. [J]
     last : float
-        Current when the first enabled frame came. [A]
+        Current when the first enabled frame came; after a reset 0 where it is no longer fed. [A]
+    fed : float
+        After a reset: how long the coil is still fed; infinite where only the first enabled frame ends that. [s]
     """
 
     peak: float
     at: float
     energy: float
     last: float
+    fed: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -102,7 +103,11 @@ class BootWatch:
             mine = taken.channels[c.number]
             full = settled(self.board, c, deck.corner)
             held = 0.5 * deck.corner.take(c.coil.inductance, "inductance") * full**2
-            found.append(Reading("highest current before the first frame", c.label, mine.peak, "A", full))
+            if self.boot.reset is None:
+                found.append(Reading("highest current before the first frame", c.label, mine.peak, "A", full))
+            else:
+                fed = min(mine.fed, self.boot.until - self.boot.reset)
+                found.append(Reading("time fed after the reset", c.label, fed, "s", self.board.power_up.reset_off.typ))
             found.append(Reading("energy before the first frame", c.label, mine.energy, "J", held))
             found.append(Reading("current at the first frame", c.label, mine.last, "A", full))
         if taken.cleared_until is not None and np.isfinite(taken.cleared_until):
@@ -125,8 +130,10 @@ def take_boot(waves: Waves, deck: Deck, board: Board, boot: Boot) -> BootReading
 
     Notes
     -----
-    From switch-on the coil's own current counts. After a reset the switch's: what a coil still holds from its last pulse runs
-    down through its clamp, whatever the outputs do.
+    From switch-on the coil's own current counts. After a reset what a coil still holds from its last pulse runs down through
+    its clamp, whatever the outputs do: there it counts how long the coil is fed. It is fed while it carries a current that
+    counts and the voltage across it drives that current on; once its switch has turned off, the clamp's voltage opposes it.
+    The moment at which one turns into the other lies on the steep flank of that voltage, and hardly depends on where points are.
     """
     watch = _Watch(deck, board, boot)
     table = SignalTable(deck, tuple(our_name(name) for name in waves.names), watch.keys)
@@ -141,10 +148,9 @@ class _Watch:
     def __init__(self, deck: Deck, board: Board, boot: Boot):
         self.deck, self.boot = deck, boot
         self.numbers = [c.number for c in board.channels]
-        through = "i_d" if boot.reset else "i_coil"
         shown = [name for name in _SHOWN if (None, name) in deck.signals]
         self.keys: tuple[Key, ...] = (
-            *((c, through) for c in self.numbers),
+            *((c, "i_coil") for c in self.numbers),
             *((c, "v_coil") for c in self.numbers),
             *((None, name) for name in shown),
         )
@@ -152,6 +158,8 @@ class _Watch:
         self.shown = {name: 2 * n + k for k, name in enumerate(shown)}
         self.peak, self.taken = Extremes(n), Integrals(n)
         self.last = np.zeros(n)
+        self.counts = np.array([harmless(board, c, deck.corner) for c in board.channels])[:, None]
+        self.fed = [Crossings(0.0) for _ in self.numbers]
         self.slices = Slices(np.linspace(0.0, boot.duration, SLICES + 1), len(shown))
         self.rails, self.highs = np.array(level_points(board.chain.register_, "high")).T
         corner = deck.corner
@@ -173,7 +181,7 @@ class _Watch:
         NoConvergence
             If a rail that is off does not begin at 0 V.
         """
-        if t[0] == 0.0 and not self.boot.reset:
+        if t[0] == 0.0 and self.boot.reset is None:
             for name, full in self.full.items():
                 begun = float(y[self.shown[name], 0])
                 if abs(begun) > _AT_REST * full:
@@ -184,12 +192,28 @@ class _Watch:
             # Without a rail nothing is high, whatever the line's rounding errors say.
             over = np.where(bound > _AT_REST * self.full["v_logic"], y[self.shown["v_clear"]] - bound, -1.0)
             self.clear.feed(t, over)
-        if (part := between(self.boot.since, self.boot.until, t, y)) is not None:
-            n = len(self.numbers)
-            current, volts = part[1][:n], part[1][n : 2 * n]
-            self.peak.feed(part[0], np.abs(current))
-            self.taken.feed(part[0], current * volts)
-            self.last = np.abs(current[:, -1])
+        begins = self.boot.since if self.boot.reset is None else self.boot.reset
+        n = len(self.numbers)
+        if (part := between(begins, self.boot.until, t, y[: 2 * n])) is not None:
+            current, volts = part[1][:n], part[1][n:]
+            self.taken.feed(part[0], np.maximum(current * volts, 0.0))
+            if self.boot.reset is None:
+                self._uncommanded(part[0], np.abs(current))
+            else:
+                self._after_reset(part[0], current, volts)
+
+    def _uncommanded(self, t: Floats, current: Floats) -> None:
+        """Currents that nothing commanded: times (m,) [s], and (n, m). [A]"""
+        self.peak.feed(t, current)
+        self.last = current[:, -1]
+
+    def _after_reset(self, t: Floats, current: Floats, volts: Floats) -> None:
+        """Which coils are still fed: times (m,) [s], currents [A] and voltages [V] of the coils (n, m)."""
+        driven = np.minimum(current / self.counts - 1, volts / self.full["v_rail"])
+        for one, y in zip(self.fed, driven, strict=True):
+            one.feed(t, y)
+        if (late := between(self.boot.since, self.boot.until, t, np.where(driven >= 0, current, 0.0))) is not None:
+            self._uncommanded(*late)
 
     def reading(self) -> BootReading:
         """What was found once every block was fed."""
@@ -204,6 +228,7 @@ class _Watch:
                     float(self.peak.high_at[k]),
                     float(self.taken.total[k]),
                     float(self.last[k]),
+                    self._fed(k),
                 )
                 for k, c in enumerate(self.numbers)
             },
@@ -219,6 +244,13 @@ class _Watch:
                 for k, name in enumerate(self.shown)
             },
         )
+
+    def _fed(self, k: int) -> float:
+        """How long after a reset a coil is still fed. [s]"""
+        if self.boot.reset is None:
+            return 0.0
+        ended = self.fed[k].below_since
+        return np.inf if ended is None else ended - self.boot.reset
 
 
 def between(start: float, stop: float, t: Floats, rows: Floats) -> tuple[Floats, Floats] | None:
@@ -267,118 +299,3 @@ def release_assumed(board: Board) -> Iterator[Assumption]:
         if channel.coil.release is None:
             why = "not given; of a coil that lets go late, from memory"
             yield Assumption(f"coil {channel.coil_name}", "release current", "10 % of the settled current", why)
-
-
-def judge_boot(board: Board, boot: Boot, found: BootReading, corner: Corner, nominal: tuple[str, ...]) -> list[Finding]:
-    """Every channel's current before the first enabled frame against what counts, and the end of clear against the frame."""
-    findings = [_judge_channel(board, boot, c, found, corner, nominal) for c in board.channels]
-    if found.cleared_until is not None and not boot.reset:
-        findings.append(_judge_clear(board, boot, found, nominal))
-    return findings
-
-
-def quantity_of(boot: Boot) -> str:
-    """What a boot's current is called."""
-    return f"current {'after a reset' if boot.reset else 'before the first frame'}, {boot.name}"
-
-
-def _judge_channel(
-    board: Board, boot: Boot, c: Channel, found: BootReading, corner: Corner, nominal: tuple[str, ...]
-) -> Finding:
-    mine = found.channels[c.number]
-    limit = harmless(board, c, corner)
-    margin = (limit - mine.peak) / limit
-    lasts = mine.last > limit
-    given = c.coil.release
-    share = f"{board.power_up.harmless.typ:.0%} of {c.coil_name}'s "
-    share += f"release current{'' if given is not None else ', taken as 10 % of its settled one'}"
-    what = "after a reset its switch still carries" if boot.reset else "before the first enabled frame it carries"
-    said = f"{c.label}: {what} up to {in_units(mine.peak, 'A')} ({boot.name}); {in_units(limit, 'A')} count ({share})"
-    if margin < 0:
-        said = f"{c.label}: {what} {in_units(mine.peak, 'A')} at {in_units(mine.at, 's', 4)} ({boot.name}) and takes "
-        said += f"{in_units(mine.energy, 'J')}; {in_units(limit, 'A')} count ({share}); "
-        said += (
-            f"only the first enabled frame at {in_units(boot.until, 's', 4)} ends it, and a controller that is being "
-            "programmed or held in reset sends none"
-            if lasts
-            else "it ends by itself"
-        )
-        said += f"; try: {_remedy(board, c)}"
-    return Finding(
-        CHECK,
-        quantity_of(boot),
-        c.coil_name,
-        c.number,
-        c.label,
-        mine.peak,
-        limit,
-        "A",
-        margin,
-        mine.at,
-        "destroy" if lasts else "misbehave",
-        verdict_of(margin, board.limits.guard_band.typ),
-        said,
-        found.corner,
-        str(given.origin if given is not None else board.power_up.harmless.origin),
-        nominal_only=nominal,
-        assumed=tuple(_hangs_on(board)),
-        scale=settled(board, c, corner),
-        probes=("i_d" if boot.reset else "i_coil",),
-    )
-
-
-def _hangs_on(board: Board) -> Iterator[str]:
-    """Assumed numbers that the current before the first frame hangs on."""
-    table = board.power_up
-    for name, field in (("rails' order", table.coils_at), ("rails' rise", table.coils_rise)):
-        if field.assumed():
-            yield name
-    if table.first_frame.assumed():
-        yield "time of the first frame"
-    if board.chain.output_enable is None:
-        yield "output enable tied low"
-
-
-def _remedy(board: Board, c: Channel) -> str:
-    """What usually keeps a channel off until the first frame."""
-    line = board.chain.output_enable
-    if line is None or line.rests == "low" or line.rests is None:
-        return "hold output enable high with a pull_up, and let the firmware pull it low after its first frame"
-    if line.capacitance is not None:
-        return "a smaller capacitor or pull-up at output enable: it lags behind the logic rail"
-    if not c.switch.held_off():
-        return "a pull-down at its gate, which floats while the outputs are not enabled"
-    return "a smaller pull-down at its gate, and the coil rail after the logic rail"
-
-
-def _judge_clear(board: Board, boot: Boot, found: BootReading, nominal: tuple[str, ...]) -> Finding:
-    """Clear must have ended before anything is shifted in: what comes earlier is lost."""
-    assert found.cleared_until is not None
-    first = boot.frames[0][0]
-    until = found.cleared_until
-    never = not np.isfinite(until)
-    value = boot.duration if never else until
-    margin = (first - value) / first
-    when = "never surely high" if never else f"surely high from {in_units(until, 's', 4)} on"
-    said = f"chain: clear is {when}; "
-    said += f"the first register frame starts at {in_units(first, 's', 4)}"
-    said += "; what is shifted in before is lost; try: a smaller resistor or capacitor at clear" if margin < 0 else ""
-    return Finding(
-        "clear",
-        f"end of clear before the first frame, {boot.name}",
-        "chain",
-        None,
-        "chain",
-        value,
-        first,
-        "s",
-        margin,
-        value,
-        "misbehave",
-        verdict_of(margin, board.limits.guard_band.typ),
-        said,
-        found.corner,
-        str(board.power_up.first_frame.origin),
-        nominal_only=nominal,
-        assumed=("time of the first frame",) if board.power_up.first_frame.assumed() else (),
-    )

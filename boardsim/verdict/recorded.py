@@ -14,6 +14,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption
 from boardsim.parts.register import Register
 from boardsim.quantities import apart, in_units
+from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.findings import Finding, Verdict, verdict_of
 
 _SAME = 0.5e-12  # [s], what recorded times are rounded to; less apart than this they are one
@@ -101,11 +102,12 @@ def judge_recorded(board: Board, firing: Firing, needed: NeededTimes | None = No
     rail = board.logic.voltage.min
     needed = needed or timing_of(board.chain.register_, rail)
     found = [_interval(board, recorded, what, needed) for what in _SAID if what in recorded.intervals]
+    of_register = [*(f for f in found if f is not None), *_clock(board, recorded, needed)]
     return [
-        *(f for f in found if f is not None),
-        *_clock(board, recorded, needed),
+        *where_limits_hold(board, of_register),
         _bits(board, recorded),
         *_unfinished(board, firing, recorded),
+        *_let_go(board, recorded),
     ]
 
 
@@ -278,7 +280,48 @@ def _unfinished(board: Board, firing: Firing, recorded: Recorded) -> Iterator[Fi
     )
 
 
-def assumptions_of_capture(firing: Firing) -> tuple[Assumption, ...]:
+def _not_held(board: Board) -> tuple[int, ...]:
+    """Channels whose switch nothing keeps off while the register's output lets go."""
+    return tuple(c.number for c in board.channels if not c.switch.held_off())
+
+
+def _let_go(board: Board, recorded: Recorded) -> Iterator[Finding]:
+    """Channels that nothing holds off while the outputs are disabled: what they do then is not in a capture of the bus.
+
+    Notes
+    -----
+    A disabled output of a 74HC595 is in high impedance (NXP 74HC595; 74HCT595 rev. 6, table 3). A gate or base without a
+    resistor to ground keeps the charge that it has, and leakage of either sign moves it: the run, which takes it as off, shows
+    nothing of it.
+    """
+    loose, spans = _not_held(board), recorded.disabled
+    if not loose or not len(spans):
+        return
+    labels = write_labels([board.channel(n).label for n in loose])
+    times = f" ({len(spans)} times)" if len(spans) > 1 else ""
+    start, stop = (float(t) for t in spans[0])
+    yield Finding(
+        "capture",
+        "channels that nothing holds off while outputs are disabled",
+        "capture",
+        None,
+        "board",
+        float(len(loose)),
+        0.0,
+        "1",
+        -1.0,
+        start,
+        "destroy",
+        "unproven",
+        f"the outputs are disabled from {in_units(start, 's', 6)} to {in_units(stop, 's', 6)}{times}, and nothing holds {labels} off "
+        "then: the inputs of their switches float, on, off or half on; try: a pulldown in their switch",
+        source="what was not captured is not shown",
+        lasting=float((spans[:, 1] - spans[:, 0]).max()),
+        channels=loose,
+    )
+
+
+def assumptions_of_capture(board: Board, firing: Firing) -> tuple[Assumption, ...]:
     """What had to be supposed to make a run of a recorded bus."""
     recorded = firing.recorded
     if recorded is None:
@@ -294,11 +337,22 @@ def assumptions_of_capture(firing: Firing) -> tuple[Assumption, ...]:
         found.append(
             Assumption(name, "resolution", step, "the step of its times; sample_period tells that of an analyser")
         )
-    if recorded.disabled:
+    if len(recorded.disabled):
+        loose = _not_held(board)
+        why = (
+            f"nothing holds {write_labels([board.channel(n).label for n in loose])}, what they do is not known; "
+            if loose
+            else ""
+        )
+        why += (
+            ""
+            if len(loose) == len(board.channels)
+            else "a resistor of their own holds the others; "
+            if loose
+            else "a resistor of its own holds each; "
+        )
         found.append(
-            Assumption(
-                name, "switches while outputs are disabled", "off", "their pull resistors hold them; not simulated"
-            )
+            Assumption(name, "switches while outputs are disabled", "off", f"{why}not simulated (power-up does)")
         )
     if "enable" not in recorded.mapped:
         found.append(Assumption(name, "enable", "always enabled", "no signal was named for it"))

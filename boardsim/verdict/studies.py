@@ -321,13 +321,14 @@ class BootRow:
     contents : str
         The storage stage, output 0 on the right, in hexadecimal.
     current : float or None
-        Highest uncommanded current of any coil; None where no run came to an end. [A]
+        Highest uncommanded current of any coil; after a reset of those that are still fed when they have to be off, else 0;
+        None where no run came to an end. [A]
     label : str
         Whose.
     count : int
         Channels whose current counts.
     energy : float or None
-        That all coils together took before the first enabled frame. [J]
+        That all coils together took at their terminals, from switch-on or the reset to the first enabled frame. [J]
     stays : bool
         Whether only the first frame ends it.
     verdict : Verdict
@@ -362,6 +363,8 @@ class PowerUp:
         The smallest current of a coil that counts. [A]
     waves : mapping of quantity to Envelope
         "v_rail", "v_logic", "v_enable" and "v_clear" where these are lines of their own [V], "enabled" [1], "i_total" [A].
+    reset : float or None
+        When the reset is; None at switch-on. [s]
     """
 
     rows: tuple[BootRow, ...]
@@ -372,6 +375,7 @@ class PowerUp:
     frame: float
     limit: float
     waves: Mapping[str, Envelope]
+    reset: float | None = None
 
     @property
     def table(self) -> Table:

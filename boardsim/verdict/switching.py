@@ -13,6 +13,7 @@ from boardsim.firing.schedule import Firing, MovedPulse
 from boardsim.parts.controller import Controller
 from boardsim.quantities import apart, in_units
 from boardsim.verdict.chain import judge_chain
+from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.chain_loads import judge_loads
 from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
 from boardsim.verdict.logic_supply import judge_supply
@@ -34,7 +35,8 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     for members, most, reason in board.exclusive:
         label = f"channels {write_range(members)}"
         found.append(_at_once(board, firing, members, most, "exclusive channels on at once", label, reason))
-    return [*found, *judge_loads(board, firing), *judge_chain(board), *judge_supply(board, firing)]
+    loads = where_limits_hold(board, judge_loads(board, firing))
+    return [*found, *loads, *judge_chain(board), *judge_supply(board, firing)]
 
 
 def _plain(quantity: str, check: str, channel: int, label: str, count: int, at: float, sentence: str) -> Finding:

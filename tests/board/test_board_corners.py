@@ -82,6 +82,14 @@ def test_temperatures_at_which_no_semiconductor_works_are_refused(tmp_path: Path
         read_board(path)
 
 
+def test_a_range_that_ends_where_the_models_end_is_taken(tmp_path: Path) -> None:
+    path = tmp_path / "board.toml"
+    changed = TEXT.replace('ambient = "5 to 45 degC"', 'ambient = "-55 to 125 degC"').replace('"35 K"', '"50 K"')
+    assert "-55" in changed
+    path.write_text(changed, encoding="utf-8")
+    assert max(c.junction for c in corners(read_board(path))) == pytest.approx(448.15)
+
+
 def test_without_an_ambient_semiconductors_are_at_25_degc(tmp_path: Path) -> None:
     found = board(tmp_path, tolerances=True, ambient=False)
     assert {c.junction for c in corners(found)} == {298.15}

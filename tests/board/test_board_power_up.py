@@ -34,6 +34,12 @@ def changed(folder: Path, old: str, new: str) -> Path:
         (CLEAR, 'clear = { tied = "low" }', "nothing could ever be shifted in; add pin = true"),
         (CLEAR, 'clear = { pull_down = "10 kohm" }', "nothing could ever be shifted in; add pin = true"),
         ('first_frame = "30 ms"', 'first_frame = "0 s"', "must be positive here"),
+        ('first_frame = "30 ms"', 'first_frame = "1 us"', "1.00 us is not after reset_off = 1.00 ms (assumed)"),
+        (
+            'first_frame = "30 ms"',
+            'first_frame = "30 ms"\nreset_off = "0.1 s"',
+            "is not after reset_off = 100 ms: no time is left",
+        ),
         ('coils_rise = "5 ms"', 'coils_raise = "5 ms"', "coils_raise"),
     ],
 )

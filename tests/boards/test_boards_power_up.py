@@ -114,6 +114,48 @@ def test_a_capacitor_at_output_enable_lags_behind_the_rail_and_lets_a_pulse_thro
     assert one.at == pytest.approx(nanofarads * 1e-5 * np.log(1 / 0.3) + 0.5e-3, abs=0.15e-3 + 5e-9 * nanofarads)
 
 
+@pytest.mark.parametrize("allowed", ["", 'reset_off = "8 ms"'])
+def test_after_a_reset_a_slow_output_enable_goes_on_feeding_coils_and_is_held_against_what_a_reset_may_take(
+    tmp_path: Path, allowed: str
+) -> None:
+    """The pin lets go of a line of 10 kohm and 470 nF: 70 % of the rail after RC ln(1 / 0.3) = 5.66 ms (R C by hand). Until then
+    25.2 V lie at windings of 55.9 ohm (15 degC, 95 % of 60 ohm at 20 degC), settled before the reset: U^2 t / R each.
+    """
+    text = (HERE / F03 / "repaired.toml").read_text(encoding="utf-8")
+    text = text.replace('pull_up = "10 kohm", pin', 'pull_up = "10 kohm", capacitance = "470 nF", pin')
+    text = text.replace('first_frame = "30 ms"', f'first_frame = "30 ms"\n{allowed}')
+    (tmp_path / "board.toml").write_text(text, encoding="utf-8")
+    result = power_up(read_board(tmp_path / "board.toml"), tmp_path / "kept")
+    found = [f for f in result.findings if f.quantity == "time fed after a reset, every channel was on"]
+    assert [f.label for f in found] == ["gate 0", "gate 1"]
+    seconds = 10e3 * 470e-9 * np.log(1 / 0.3)
+    for f in found:
+        assert f.value == pytest.approx(seconds, abs=0.3e-3)  # the gate's own 0.2 ms come on top
+        energy = float(f.sentence.split(" mJ")[0].split()[-1]) * 1e-3
+        # 4 %: before the end the gate takes 0.1 ms to empty; supply, cable and switch take 0.4 % of the voltage.
+        assert energy == pytest.approx(25.2**2 / (0.95 * 60 * (1 - 0.00393 * 5)) * f.value, rel=4e-2)
+        assert "its coil is fed for" in f.sentence
+        assert f.verdict == ("pass" if allowed else "fail")
+        assert f.consequence == "misbehave"
+        assert not {"rails' order", "rails' rise", "time of the first frame"} & {*f.assumed}
+        assert ("time that a reset may take" in f.assumed) == (not allowed)
+        if not allowed:
+            assert f.sentence.endswith(
+                "a smaller capacitor or pull-up at output enable: it rises slowly once its pin lets go"
+            )
+    assert any("turn channels off" in a.quantity for a in result.assumptions) == (not allowed)
+
+
+def test_after_a_reset_with_outputs_enabled_only_the_first_frame_ends_what_coils_take(tmp_path: Path) -> None:
+    found = broken(looked_at(F03, "bad", tmp_path))["time fed after a reset, every channel was on", "gate 0"]
+    assert found.value == pytest.approx(30e-3, rel=1e-3)  # first_frame of the board, and 2.5 us of frame
+    assert found.consequence == "destroy"
+    assert "hold output enable high with a pull_up" in found.sentence
+    energy = float(found.sentence.split(" mJ")[0].split()[-1]) * 1e-3
+    # 2 %: U^2 R / (R + r)^2, where cable and supply carry both coils and r is 0.3 ohm of 56.
+    assert energy == pytest.approx(25.2**2 / (0.95 * 60 * (1 - 0.00393 * 5)) * 30e-3, rel=2e-2)
+
+
 def test_the_command_leaves_what_other_questions_leave(tmp_path: Path) -> None:
     board = HERE / F04 / "repaired.toml"
     call = [

@@ -31,7 +31,7 @@ inductance = "9 mH"
 
 [channels."{channels}"]
 coil = "needle"
-switch = {{ part = "n-logic-60v", gate = "100 ohm", pulldown = "10 kohm" }}
+switch = {{ part = "n-logic-60v", gate = "100 ohm"{pulldown} }}
 clamp = {{ kind = "diode", diode = "fast-2a" }}
 {columns}
 """
@@ -49,8 +49,9 @@ def board(
     channels: str = "",
     columns: str = "",
     controller: str = "",
+    held: bool = True,
 ) -> Board:
-    """A board with a coil on every output of its chain, unless told otherwise."""
+    """A board with a coil on every output of its chain, unless told otherwise; `held` by a pull-down at each gate."""
     path = folder / "board.toml"
     path.write_text(
         TEXT.format(
@@ -62,6 +63,7 @@ def board(
             active=active,
             channels=channels or f"0-{8 * count - 1}",
             columns=columns,
+            pulldown=', pulldown = "10 kohm"' if held else "",
             controller=f"[controller]\n{controller}" if controller else "",
         ),
         encoding="utf-8",

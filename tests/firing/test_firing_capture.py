@@ -198,7 +198,7 @@ def test_enable_turns_outputs_off_and_on_again_and_clear_empties_the_shift_stage
         pytest.approx((3.5e-3 + PROPAGATION, 5e-3 + PROPAGATION)),
     ]
     assert found.recorded is not None
-    assert found.recorded.disabled
+    assert found.recorded.disabled.tolist() == [[0.5e-3, 2e-3], [3e-3, 3.5e-3]]
     assert found.recorded.frames.cleared.tolist() == [False, True]
 
 
@@ -253,6 +253,23 @@ def test_what_is_on_where_the_capture_ends_stays_on_and_is_named(tmp_path: Path)
     assert found.duration == pytest.approx(2e-3 + PROPAGATION)
 
 
+def test_a_capture_is_looked_at_as_long_as_its_file_says(tmp_path: Path) -> None:
+    own = firing(tmp_path, two_pulses().text(5_000_000))
+    single = firing(tmp_path, two_pulses().text(5_000_000), 'duration = "2 s"\n' + CAPTURE)
+    assert single.duration == 2.0
+    assert spans(single, 3) == spans(own, 3)
+    assert (own.averaged_over, own.goes_on) == ("over the capture's own 5.00 ms", True)
+    assert (single.averaged_over, single.goes_on) == ("over the capture's 2.00 s", False)
+
+
+def test_what_follows_on_a_capture_that_ends_with_channels_on_is_not_made_up(tmp_path: Path) -> None:
+    bus = writer()
+    bus.frame(1_000_000, {3, 4})
+    assert "channels 3, 4 are on where the capture ends: what follows is not known" in said(
+        tmp_path, bus.text(2_000_000), 'duration = "2 s"\n' + CAPTURE
+    )
+
+
 def test_the_last_edge_of_a_capture_counts_though_nothing_follows_it(tmp_path: Path) -> None:
     bus = writer()
     bus.frame(1_000_000, {3})
@@ -288,6 +305,7 @@ def two_pulses() -> BusWriter:
         ('start = "4 ms"\n' + CAPTURE, "capture.toml:2: capture: no channel is turned on in this stretch of the capture"),
         ('start = "4 ms"\nstop = "3 ms"\n' + CAPTURE, "capture.toml:2: stop: is not after the start"),
         ('start = "4 ms +/- 1 ms"\n' + CAPTURE, "capture.toml:1: start: a time of the capture has no tolerance"),
+        ('duration = "4 ms"\n' + CAPTURE, "capture.toml:1: duration: 4.000 ms is shorter than the stretch that is looked at, 5.000 ms; set a stop"),
         ('sample_period = "500 ns"\n' + CAPTURE, "capture.toml:1: sample_period: the capture was sampled every 500 ns, but a clock of 1.00 MHz is high and low for 500 ns each, so that edges are missed; capture at least every 250 ns"),
         ('inverted = ["enable"]\n' + CAPTURE, 'capture.toml:1: inverted: "enable" is not among the signals'),
         ('inverted = ["clk"]\n' + CAPTURE, 'capture.toml:1: inverted.0: \'clk\' is not allowed'),
@@ -320,6 +338,41 @@ def test_a_capture_that_tells_too_little_is_refused(tmp_path: Path) -> None:
         'capture.toml:3: signals.data: "data" has no level yet at the clock edge of 500.000 ns; capture it from before the '
         "first clock edge on"
     )
+
+
+@pytest.mark.parametrize("line", ["clock", "latch"])
+def test_a_line_that_is_high_at_its_first_level_is_refused_since_it_may_have_risen_then(
+    tmp_path: Path, line: str
+) -> None:
+    text = two_pulses().text(5_000_000, idle=IDLE | {line: None})
+    at = {"clock": "1.00050 ms", "latch": "1.01700 ms"}[line]  # of the first frame: half a period on, and 17 us on
+    assert f"has no level before {at}, so that nothing tells whether it rises then" in said(tmp_path, text)
+
+
+def test_a_line_that_gets_its_level_before_anything_is_sent_is_taken(tmp_path: Path) -> None:
+    bus = two_pulses()
+    for line in ("data", "clock", "latch"):
+        bus.put(200, line, 0)
+    text = bus.text(5_000_000, idle={**IDLE, "data": None, "clock": None, "latch": None})
+    assert len(firing(tmp_path, text).asked) == 2
+
+
+def test_clear_without_a_level_at_a_clock_edge_is_refused(tmp_path: Path) -> None:
+    bus = two_pulses()
+    bus.put(1_005_000, "clear", 1)
+    text = bus.text(5_000_000, lines=("data", "clock", "latch", "clear"), idle=IDLE | {"clear": None})
+    assert '"clear" has no level yet at the clock edge of 1.00050 ms' in said(
+        tmp_path, text, CAPTURE + 'clear = "clear"\n'
+    )
+
+
+def test_outputs_count_as_disabled_until_enable_has_a_level(tmp_path: Path) -> None:
+    bus = two_pulses()
+    bus.put(500_000, "enable", 0)
+    text = bus.text(5_000_000, lines=("data", "clock", "latch", "enable"), idle=IDLE | {"enable": None})
+    found = firing(tmp_path, text, CAPTURE + 'enable = "enable"\n').recorded
+    assert found is not None
+    assert found.disabled.tolist() == [[0.0, 0.5e-3]]
 
 
 def test_a_dump_too_coarse_for_the_clock_is_refused(tmp_path: Path) -> None:

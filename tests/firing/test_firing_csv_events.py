@@ -9,6 +9,7 @@ from hypothesis import strategies as st
 
 from boardsim.errors import InputError
 from boardsim.firing.pattern import Pattern
+from boardsim.firing.schedule import fire
 from boardsim.firing.sources import read_source
 
 
@@ -58,6 +59,73 @@ def test_a_label_stands_for_its_channel_and_a_number_is_always_the_channels_own(
 def test_a_list_takes_its_name_from_its_file_and_looks_until_the_coils_are_at_rest(tmp_path: Path) -> None:
     found = read(tmp_path, "channel,start,width\n3,5 ms,2 ms\n")
     assert (found.name, found.duration, found.recorded) == ("events", None, None)
+
+
+REVERSED, OWN = (f'label = "1{{n}}"\nnumbers = "{n}"' for n in ("5-0", "0-5"))  # channels 10 to 15
+
+
+def read_ten(folder: Path, text: str, columns: str) -> Pattern:
+    (folder / "events.csv").write_text(text, encoding="utf-8")
+    return read_source(folder / "events.csv", board(folder, channels="10-15", columns=columns))
+
+
+def test_a_number_that_is_another_channels_label_is_refused_with_both_meanings(tmp_path: Path) -> None:
+    with pytest.raises(InputError) as caught:
+        read_ten(tmp_path, "channel,start,width\n13,0 s,1 ms\n", REVERSED)
+    meanings = 'channel 13, labelled "12", or channel 12, labelled "13"'
+    way_out = 'name the column "number" or "label" in place of "channel"'
+    assert f"events.csv:2: channel '13' may be {meanings}; {way_out}" in str(caught.value)
+
+
+@pytest.mark.parametrize(("title", "channel"), [("number", 13), ("label", 12)])
+def test_a_column_of_numbers_or_of_labels_says_which_channel_is_meant(tmp_path: Path, title: str, channel: int) -> None:
+    assert rows(read_ten(tmp_path, f"{title},start,width\n13,0 s,1 ms\n", REVERSED)) == [(channel, 0.0, 0.001)]
+    assert said(tmp_path, f"{title},start,width\nfour,0 s,1 ms\n") == [
+        f"2: {title} 'four' is not on the board board.toml; write its {title}"
+    ]
+    assert said(tmp_path, f"channel,{title},start,width\n3,3,0 s,1 ms\n") == [
+        f'1: columns "channel" and "{title}" both name channels; leave one out'
+    ]
+
+
+def test_labels_that_are_the_channels_own_numbers_leave_nothing_open(tmp_path: Path) -> None:
+    assert rows(read_ten(tmp_path, "channel,start,width\n13,0 s,1 ms\n", OWN)) == [(13, 0.0, 0.001)]
+
+
+def named(folder: Path, file: str, text: str = "channel,start,width\n3,5 ms,2 ms\n") -> Pattern:
+    (folder / "events.csv").write_text(text, encoding="utf-8")
+    (folder / "shot.toml").write_text(file, encoding="utf-8")
+    return read_source(folder / "shot.toml", board(folder))
+
+
+def test_a_list_that_a_file_names_is_looked_at_as_long_as_it_says(tmp_path: Path) -> None:
+    the_board = board(tmp_path)
+    single = fire(the_board, named(tmp_path, 'events = "events.csv"\nduration = "10 s"\n'))
+    assert single.duration == 10.0
+    assert (single.averaged_over, single.goes_on) == ("over the list's 10.0 s", False)
+    bare = fire(the_board, named(tmp_path, 'events = "events.csv"\nname = "one shot"\n'))
+    # The last turn-off is in: 7 ms, the frame, and five times 9 mH / 30 ohm.
+    assert bare.duration == pytest.approx(7e-3 + 17e-6 + 44e-9 + 5 * 9e-3 / 30, abs=2e-6)
+    assert (bare.averaged_over, bare.goes_on) == ("over the list's own 8.52 ms", True)
+    assert fire(the_board, read(tmp_path, "channel,start,width\n3,5 ms,2 ms\n")).goes_on
+    assert named(tmp_path, 'events = "events.csv"\nname = "one shot"\n').name == "one shot"
+
+
+@pytest.mark.parametrize(
+    ("file", "expected"),
+    [
+        ('events = " "\n', "shot.toml:1: events: names no file"),
+        ('events = "none.csv"\n', "none.csv: cannot be read"),
+        ('events = "events.csv"\nduration = "6 ms"\n', "shot.toml:2: duration: 6.000 ms ends before the last pulse does, at 7.000 ms"),
+        ('events = "events.csv"\nduration = "1 s +/- 5 %"\n', "shot.toml:2: duration: a commanded time has no tolerance"),
+        ('events = "events.csv"\nlasting = "1 s"\n', '"lasting" is not known here'),
+        ('events = "events.csv"\nduration = 10\n', "10 has no unit"),
+    ],
+)  # fmt: skip
+def test_a_file_that_names_a_list_says_on_which_line_what_is_wrong(tmp_path: Path, file: str, expected: str) -> None:
+    with pytest.raises(InputError) as caught:
+        named(tmp_path, file)
+    assert expected in str(caught.value)
 
 
 GOOD = "channel,start,width\n0,1 ms,1 ms\n"

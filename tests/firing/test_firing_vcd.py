@@ -114,6 +114,8 @@ def test_a_level_told_twice_at_the_first_time_counts_as_told_last(tmp_path: Path
         (HEAD + BODY + "#30\n1%\n", '31: "%" is no signal that the dump declares; this line is damaged'),
         (HEAD + BODY + "#30\nhello\n", '31: "ello" is no signal that the dump declares; this line is damaged'),
         (HEAD + BODY + "#30\nx!\n", "31: clock is 'x' here; a line of the bus is 0 or 1 from its first level on"),
+        (HEAD + BODY + "#30\nr1.5 !\n", "31: clock is 1.5 here; a line of the bus is 0 or 1"),
+        (HEAD + BODY + '#30\nsHIGH "\n', "31: data is HIGH here; a line of the bus is 0 or 1"),
         (HEAD + BODY + "$dumpoff\nx!\n$end\n", "31: clock is 'x' here"),
         (HEAD + BODY + "#30\n1!\n0!\n", "32: clock changes twice at #30; the dump's timescale is too coarse for this signal"),
         (HEAD + BODY + "$end\n", "30: $end closes nothing here"),

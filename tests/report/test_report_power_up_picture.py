@@ -31,7 +31,8 @@ def result(count: int, stays: bool = True, *, waves: bool = True, reset: bool = 
         BootRow("storage all zeros", "00", 1e-6, "-", 0, 1e-12, False, "pass"),
         BootRow("storage all ones", "FF", 0.4 if count else 1e-6, "gate 3", count, 0.5, stays, verdict),
     )
-    study = PowerUp(rows, 1, "supply high", 0.01 if reset else 0.0, 0.04, 0.0399, 6e-3, drawn)
+    at = 0.01 if reset else None
+    study = PowerUp(rows, 1, "supply high", 0.011 if reset else 0.0, 0.04, 0.0399, 6e-3, drawn, at)
     found = (finding(verdict, check="uncommanded"),)
     return Result("tray gates", "power-up", 0.05, verdict, found, (), audit(), (), None, "", study=study)
 

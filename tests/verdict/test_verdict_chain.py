@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -11,12 +12,15 @@ from boardsim.board.reader import Board, library_part, read_board
 from boardsim.firing.pattern import Pattern, Pulse
 from boardsim.firing.schedule import fire
 from boardsim.parts.switches.darlington import DarlingtonArray, DarlingtonStage
+from boardsim.quantities import FREQUENCY, parse
+from boardsim.scenarios.chain import check_chain
 from boardsim.verdict.chain import all_times, highest_clock, judge_chain
 from boardsim.verdict.chain_levels import judge_floating
 from boardsim.verdict.chain_loads import judge_loads
 from boardsim.verdict.chain_study import chain_study, judge_lateness, worst_lateness
 from boardsim.verdict.chain_times import Driven
 from boardsim.verdict.findings import Finding
+from boardsim.verdict.switching import judge_switching
 
 TEXT = """\
 name = "tray gates"
@@ -277,6 +281,153 @@ def test_lines_that_float_need_something_that_holds_them(tmp_path: Path) -> None
     assert found["clock"].verdict == "fail"  # 4 V away from the rail, 0.3 of it are allowed
     assert {f.verdict for f in floating(board(tmp_path)).values()} == {"limit-missing"}
     assert floating(board(tmp_path, more='at_reset = "low"')) == {}
+
+
+@pytest.mark.parametrize(
+    ("volts", "said"), [("2.5 V", "not at a logic rail of 2.50 V"), ("5 V", "(input_leakage of its logic family)")]
+)
+def test_what_is_missing_of_a_floating_line_is_said_at_the_rail_at_hand(tmp_path: Path, volts: str, said: str) -> None:
+    register = '"74AHC595"' if volts == "2.5 V" else RECORD.format(leakage="", more="", family="")
+    f = floating(board(tmp_path, register, logic=volts, lines='latch_line = { pull_down = "10 kohm" }'))["latch"]
+    assert f.verdict == "limit-missing"
+    assert said in f.sentence
+    if volts == "2.5 V":
+        assert "input levels of AHC are given for 3.00 V to 5.50 V only" in f.sentence
+        assert "leak" not in f.sentence
+
+
+RECORD = (
+    '{{ kind = "shift-register", title = "own", outputs = 8, output_resistance = "30 ohm", propagation = "20 ns", '
+    'output_edge = "10 ns", supply_low = "2 V", supply_high = "6 V"{more}, family = {{ kind = "logic-family", '
+    'inputs = [{{ supply = "4.5 V", low = "1.35 V", high = "3.15 V" }}, {{ supply = "6 V", low = "1.8 V", high = "4.2 V" }}], '
+    'high_drop = "0.1 V", low_output = "0.1 V", input_capacitance = "5 pF", test_load = "50 pF"{leakage}{family} }} }}'
+)
+
+
+# ------------------------------------------------------------------------------------------------ pull resistors
+
+
+PULLED = 'clock_line = {{ {way} = "{ohms} ohm" }}\nlatch_line = {{ {way} = "10 kohm" }}'
+
+
+def test_a_heavy_pull_down_takes_the_high_level_away(tmp_path: Path) -> None:
+    """Ohm's law by hand: 4.75 V behind 50 ohm into 10 ohm are 4.75 x 10 / 60 = 0.79 V, and V_IH is 0.7 of the rail."""
+    found = findings(board(tmp_path, lines=PULLED.format(way="pull_down", ohms=10)))
+    high = found["high level from the controller"]
+    assert (high.verdict, high.value) == ("fail", pytest.approx(4.75 * 10 / 60))
+    assert "on the clock line, which 10.0 ohm pull down" in high.sentence
+    assert "try: a larger pull resistor" in high.sentence
+    assert high.assumed == ("load of the printed levels", "output resistance of the controller")
+    assert found["low level from the controller"].value == pytest.approx(0.6)  # it helps the low level
+    assert "set-up, controller to register 1" not in found
+    assert "the controller's high level is not surely high" in found["set-up and hold"].sentence
+
+
+def test_a_heavy_pull_up_takes_the_low_level_away(tmp_path: Path) -> None:
+    """5.25 V over 10 ohm and 50 ohm leave 5.25 x 50 / 60 at the pin; at 4.75 V the share of V_IL is the same."""
+    found = findings(board(tmp_path, lines=PULLED.format(way="pull_up", ohms=10)))
+    low = found["low level from the controller"]
+    assert low.verdict == "fail"
+    assert low.value == pytest.approx(4.75 * 50 / 60) or low.value == pytest.approx(5.25 * 50 / 60)
+    assert "the controller's low level is not surely low" in found["set-up and hold"].sentence
+
+
+def test_a_light_pull_leaves_the_printed_levels(tmp_path: Path) -> None:
+    found = findings(board(tmp_path, lines=PULLED.format(way="pull_down", ohms=10_000)))
+    high = found["high level from the controller"]
+    assert (high.value, high.assumed) == (pytest.approx(4.75 - 0.8), ())
+    assert "pull" not in high.sentence.partition("try")[0]
+
+
+def test_behind_a_series_resistor_a_pull_within_the_printed_load_divides_the_printed_level(tmp_path: Path) -> None:
+    """3.95 V over 470 ohm and 4.7 kohm: 0.76 mA, within 4 mA; 3.95 x 4.7 / 5.17 = 3.591 V are left."""
+    lines = 'clock_line = { series = "470 ohm", pull_down = "4.7 kohm" }'
+    high = findings(board(tmp_path, lines=lines))["high level from the controller"]
+    assert high.value == pytest.approx(3.95 * 4.7 / 5.17)
+    assert high.assumed == ("load of the printed levels",)
+    given = findings(board(tmp_path, lines=lines, more='level_current = "8 mA"'))["high level from the controller"]
+    assert given.assumed == ()
+
+
+def test_beyond_the_printed_load_the_worse_of_printed_level_and_ohms_law_counts(tmp_path: Path) -> None:
+    """1 kohm takes 3.95 mA at the printed level, within 4 mA but not within 1 mA; Ohm's law would give 4.52 V, and 3.95 V are printed."""
+    lines = 'clock_line = { pull_down = "1 kohm" }'
+    high = findings(board(tmp_path, lines=lines, more='level_current = "1 mA"'))["high level from the controller"]
+    assert high.value == pytest.approx(3.95)
+
+
+def test_a_pulled_line_rises_through_the_parallel_resistance(tmp_path: Path) -> None:
+    """Thevenin: 50 ohm and 450 ohm side by side are 45 ohm; 2.197 x 45 ohm x 3 x 15 pF."""
+    found = findings(board(tmp_path, lines='clock_line = { pull_down = "450 ohm" }'))
+    assert found["rise time of the clock line"].value == pytest.approx(2.197 * 45 * 45e-12, rel=1e-3)
+    assert found["rise time of the latch line"].value == pytest.approx(2.197 * 50 * 45e-12, rel=1e-3)
+
+
+def test_edges_between_a_floor_and_a_divided_high_level_follow_one_exponential() -> None:
+    """t = R C ln((V_end - V_begin) / (V_end - u)), by hand for 45 ohm, 100 pF, from 0.5 V to 4.5 V, 1.5 V and 3.5 V."""
+    line = Driven(45.0, 100e-12, (4.5, 4.5), (1.5, 3.5), (0.5, 0.5))
+    assert line.rise.early == pytest.approx(4.5e-9 * math.log(4.0 / 3.0))
+    assert line.rise.late == pytest.approx(4.5e-9 * math.log(4.0 / 1.0))
+    assert line.fall.early == pytest.approx(4.5e-9 * math.log(4.0 / 3.0))
+    assert line.fall.late == pytest.approx(4.5e-9 * math.log(4.0 / 1.0))
+    assert Driven(45.0, 100e-12, (4.5, 4.5), (1.5, 3.5), (2.0, 2.0)).fall.late == math.inf
+
+
+# ------------------------------------------------------------------------------------------------ temperature
+
+
+def hot(folder: Path, ambient: str, register: str = '"74HC595"') -> Board:
+    the_board = board(folder, register, more='data_hold = "10 ns"', limits='lateness = "100 us"')
+    text = the_board.path.read_text(encoding="utf-8")
+    the_board.path.write_text(text.replace("supply =", f'ambient = "{ambient}"\nsupply =', 1), encoding="utf-8")
+    return read_board(the_board.path)
+
+
+@pytest.mark.parametrize(
+    ("ambient", "known"), [("-40 to 85 degC", True), ("60 to 110 degC", False), ("-50 to 20 degC", False)]
+)
+@pytest.mark.parametrize("register", ["74HC595", "74AHC595"])
+def test_beyond_the_temperatures_of_the_printed_columns_nothing_of_the_chain_passes(
+    tmp_path: Path, ambient: str, known: bool, register: str
+) -> None:
+    """NXP 74HC595; 74HCT595 rev. 6 (12 Dec 2011), tables 6 and 7, print what the library holds for -40 to 85 degC."""
+    the_board = hot(tmp_path, ambient, f'"{register}"')
+    found = [*judge_chain(the_board), *check_chain(the_board).findings]
+    passed = {f.verdict for f in found} & {"pass", "tight"}
+    assert bool(passed) == known
+    if not known:
+        assert all(
+            "hold from -40 degC to 85 degC, the air is" in f.sentence
+            for f in judge_chain(the_board)
+            if f.verdict != "fail"
+        )
+    shot = fire(the_board, Pattern(Path("made here"), "one", None, (Pulse(0, 1e-3, 1e-2),)))
+    fired = [f for f in judge_switching(the_board, shot) if f.label == "chain"]
+    assert ({f.verdict for f in fired} & {"pass", "tight"} != set()) == known
+
+
+def test_what_breaks_a_limit_stays_broken_in_hotter_air(tmp_path: Path) -> None:
+    the_board = hot(tmp_path, "60 to 110 degC")
+    slow = replace(the_board, chain=the_board.chain.model_copy(update={"clock": parse("40 MHz", FREQUENCY)}))
+    clock = {f.quantity: f for f in judge_chain(slow)}["clock"]
+    assert (clock.verdict, "hold from" in clock.sentence) == ("fail", False)
+
+
+def test_a_register_of_ones_own_holds_where_it_says(tmp_path: Path) -> None:
+    wide = RECORD.format(
+        leakage=', input_leakage = "1 uA"',
+        more=', times_hold_at = "-40 to 125 degC"',
+        family=', levels_hold_at = "-40 to 125 degC"',
+    )
+    bare = RECORD.format(leakage=', input_leakage = "1 uA"', more="", family="")
+    rails = {"highest logic rail", "lowest logic rail"}
+    assert {f.verdict for f in judge_chain(hot(tmp_path, "60 to 110 degC", wide)) if f.quantity in rails} == {"pass"}
+    the_board = hot(tmp_path, "60 to 110 degC", bare)
+    assert {f.verdict for f in judge_chain(the_board) if f.quantity in rails} == {"limit-missing"}
+    assert [(a.part, a.value) for a in the_board.assumptions if a.quantity.startswith("air in which")] == [
+        ("own", "-40 degC to 85 degC"),
+        ("logic family", "-40 degC to 85 degC"),
+    ]
 
 
 # ------------------------------------------------------------------------------------------------ lateness and study

@@ -193,16 +193,41 @@ def test_what_is_on_at_the_end_is_unproven_and_named(tmp_path: Path) -> None:
     assert found.sentence.startswith("channels 3, 4 are on where bus.vcd ends")
 
 
+@pytest.mark.parametrize("held", [True, False])
+def test_outputs_that_are_disabled_prove_nothing_of_channels_that_nothing_holds_off(tmp_path: Path, held: bool) -> None:
+    made = bus()
+    made.put(2_200_000, "enable", 1)
+    made.put(2_700_000, "enable", 0)
+    shot = firing(tmp_path, made, CAPTURE + 'enable = "enable"\n', lines=("data", "clock", "latch", "enable"))
+    of = board(tmp_path, held=held)
+    found = [f for f in judge_recorded(of, shot, Needed()) if f.check == "capture"]
+    (why,) = [a.why for a in assumptions_of_capture(of, shot) if "disabled" in a.quantity]
+    if held:
+        assert found == []
+        assert why.startswith("a resistor of its own holds each")
+        return
+    (one,) = found
+    assert (one.verdict, one.consequence, one.channels) == ("unproven", "destroy", tuple(range(16)))
+    assert "disabled from 2.20000 ms to 2.70000 ms, and nothing holds channels 0-15 off" in one.sentence
+    assert one.lasting == pytest.approx(0.5e-3)
+    assert "nothing holds channels 0-15, what they do is not known" in why
+
+
+def test_without_a_disabled_output_floating_gates_are_no_question_of_a_capture(tmp_path: Path) -> None:
+    shot = firing(tmp_path, bus())
+    assert [f for f in judge_recorded(board(tmp_path, held=False), shot, Needed()) if f.check == "capture"] == []
+
+
 def test_nothing_is_said_of_a_bus_that_was_not_recorded(tmp_path: Path) -> None:
     plain = firing(tmp_path, bus())
     commanded = Firing(1.0, {}, {}, (), (), (), (), 0, 0.0)
     assert judge_recorded(needles(), commanded) == []
-    assert told(commanded) == assumptions_of_capture(commanded) == ()
+    assert told(commanded) == assumptions_of_capture(needles(), commanded) == ()
     assert "is not judged (lost-pulse, pulse-timing, wrong-output)" in told(plain)[1]
 
 
 def test_what_had_to_be_supposed_is_listed(tmp_path: Path) -> None:
-    listed = {a.quantity: a.value for a in assumptions_of_capture(firing(tmp_path, bus()))}
+    listed = {a.quantity: a.value for a in assumptions_of_capture(needles(), firing(tmp_path, bus()))}
     assert listed == {
         "outputs before the first latch edge": "off",
         "resolution": "1.00 ns",
