@@ -225,3 +225,24 @@ def test_without_an_engine_the_status_is_3_and_the_message_says_what_to_install(
     assert done.returncode == 3
     assert "apt-get install ngspice libngspice0" in done.stderr
     assert "Traceback" not in done.stderr
+
+
+@pytest.mark.engine
+def test_a_single_shot_is_averaged_over_its_own_length_or_over_the_duration_that_is_given(tmp_path: Path) -> None:
+    """One pulse carries one charge through its switch: average current times time is the same however long one looks."""
+    (tmp_path / "board.toml").write_text(SMALL)
+    (tmp_path / "shot.csv").write_text("channel,start,width\n0,1 ms,20 ms\n")
+    (tmp_path / "shot.toml").write_text('events = "shot.csv"\nduration = "2 s"\n')
+    charge = []
+    for file, said, goes_on in (
+        ("shot.csv", "over the list's own 27.3 ms", True),
+        ("shot.toml", "over the list's 2.00 s", False),
+    ):
+        status, found, out, _ = command(tmp_path, tmp_path / "board.toml", tmp_path / file)
+        assert status == 0
+        mean = next(f for f in found["findings"] if f["quantity"] == "average current of the switch")
+        assert said in mean["sentence"]
+        assert all(said in f["sentence"] for f in found["findings"] if f["check"] == "overheating")
+        assert ("as if it were fired again and" in out) == goes_on
+        charge.append(mean["value"] * (2.0 if not goes_on else 27.3e-3))
+    assert charge[0] == pytest.approx(charge[1], rel=1e-2)  # 27.3 ms is rounded, and so are a run's points
