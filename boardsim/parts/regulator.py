@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from abc import abstractmethod
 from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field
@@ -94,13 +95,13 @@ class Regulator(LogicRail):
     )
     junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
 
+    @abstractmethod
     def needed_input(self, volts: float) -> float:
         """The input from which on it holds its output at a voltage. [V] -> [V]"""
-        raise NotImplementedError
 
+    @abstractmethod
     def law(self, corner: Corner, rail: str) -> tuple[Element, ...]:
         """The elements between node `rail` (through an ammeter), INSIDE and EMF; the current out of EMF is I(Vlogic_law)."""
-        raise NotImplementedError
 
     def beyond(self, v_set: float) -> str:
         """What the current takes from the output, as an expression that is subtracted: resistance, ceiling, one way. [V]"""
