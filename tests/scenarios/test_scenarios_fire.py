@@ -95,6 +95,7 @@ def test_a_sound_board_passes_and_leaves_every_file_of_the_contract(tmp_path: Pa
 
 
 @pytest.mark.engine
+@pytest.mark.slow
 def test_rush_names_lowest_rail_time_duration_and_lanes(tmp_path: Path) -> None:
     status, found, out, _ = command(tmp_path, SORTER / "board.toml", SORTER / "patterns" / "rush.toml")
     sag = worst(found, "rail-sag")
