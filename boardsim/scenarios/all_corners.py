@@ -18,6 +18,8 @@ from boardsim.scenarios.crew import Crew
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding, Timing, severity
 
+_ALIKE = 1e-4  # share of reading or limit below which two corners read alike: two runs of one corner may differ by 1 %
+
 
 def run_corners(
     board: Board,
@@ -99,12 +101,13 @@ def by_corner(results: Iterable[CornerResult]) -> Iterable[list[Finding]]:
 def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
     """Of every question the worst answer among the corners, broken limits first.
 
+    Of corners that read alike the first is named, so that the last digits of a run do not choose it.
     Where a corner whose audit failed reads worse than the answer that is kept, the sentence says so.
     """
     kept: dict[tuple[str, str, str, str], Finding] = {}
     for findings in runs:
         for f in findings:
-            if f.key not in kept or severity(f) < severity(kept[f.key]):
+            if f.key not in kept or _clearly_worse(f, kept[f.key]):
                 kept[f.key] = f
     for f in (f for findings in runs for f in findings if f.verdict == "unproven"):
         mine = kept[f.key]
@@ -117,6 +120,15 @@ def worst(runs: Sequence[Sequence[Finding]]) -> list[Finding]:
         # What figures would be at a temperature that no junction may reach is no question any more.
         found = [f for f in found if f.check != "warming"]  # type: ignore[assignment]
     return sorted(found, key=severity)
+
+
+def _clearly_worse(one: Finding, kept: Finding) -> bool:
+    """Whether a finding is worse than the one that is kept, by more than rounding."""
+    if one.verdict == kept.verdict and one.lasting == kept.lasting:
+        scale = max(abs(one.value), abs(kept.value), abs(kept.limit or 0.0))
+        if one.limit == kept.limit and abs(one.value - kept.value) <= _ALIKE * scale:
+            return False
+    return severity(one) < severity(kept)
 
 
 def dips(board: Board, result: CornerResult) -> bool:

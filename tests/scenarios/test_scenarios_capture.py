@@ -116,7 +116,7 @@ def assert_same(pattern: dict, capture: dict) -> None:
     The writer's edges lie on the dump's steps of 1 ns and so do the pattern's, so both runs see the same edges but for binary
     fractions (1e-16 s): verdicts are equal. Readings are to 1e-4 of themselves or of their limit: the engine chooses its
     steps anew when an edge moves by a last digit, which moved a peak by 1e-5; two runs of one deck may differ by 1 %. So where
-    two corners read alike either may be named, as those for the gate's voltage do; what is broken names the same.
+    two corners read nearly alike either may be named; what is broken or tight names the same.
     """
     first, second = by_question(pattern, COMMAND_CHECKS), by_question(capture, BUS_CHECKS)
     assert first.keys() == second.keys()
@@ -125,7 +125,7 @@ def assert_same(pattern: dict, capture: dict) -> None:
         assert (mine["verdict"], mine["limit"]) == (theirs["verdict"], theirs["limit"]), key
         scale = max(abs(mine["value"]), abs(mine["limit"] or 0.0))
         assert theirs["value"] == pytest.approx(mine["value"], abs=1e-4 * scale), key
-        if mine["verdict"] == "fail":
+        if mine["verdict"] != "pass":
             assert mine["corner"] == theirs["corner"], key
 
 
