@@ -342,7 +342,7 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
         if any(len(c) != len(numbers) for c in columns.values()):
             continue
         _claim(group, text, {"channel": numbers, **columns}, claimed, board.chain, file, problems)
-        packages = _packages(group, len(numbers), channels)
+        packages = _packages(group, columns["outputs"], channels)
         for number, output, bit, n, package in zip(
             numbers, columns["outputs"], columns["bits"], columns["numbers"], packages, strict=True
         ):
@@ -350,15 +350,14 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
     return channels
 
 
-def _packages(group: ChannelRange, count: int, before: list[Channel]) -> list[str]:
-    """Which package each channel of a range has its switch in: filled in the order of the range, numbered over the board."""
+def _packages(group: ChannelRange, outputs: tuple[int, ...], before: list[Channel]) -> list[str]:
+    """Which package each channel of a range has its switch in, numbered over the board."""
     switch: Any = group.switch  # a part of role "switch"
-    size = switch.per_package()
-    if not size:
-        return [""] * count
+    if not switch.per_package():
+        return [""] * len(outputs)
     name = switch.part.title or switch.kind
-    first = len({c.package for c in before if c.package.rpartition(" ")[0] == name}) + 1
-    return [f"{name} {first + i // size}" for i in range(count)]
+    first = 1 if switch.in_the_chain else len({c.package for c in before if c.package.rpartition(" ")[0] == name}) + 1
+    return [f"{name} {first + switch.package_of(i, output)}" for i, output in enumerate(outputs)]
 
 
 def _claim(

@@ -258,17 +258,23 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
 def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel, driven: Stamp) -> None:
     """A channel behind what drives its pin."""
     k, name, label = channel.number, f"c{channel.number}", channel.label
-    pin, drain = f"{name}_q", f"{name}_d"
-    coil_end = drain if channel.leads is None else f"{name}_k"
+    pin, load, stage = f"{name}_q", f"{name}_d", f"{name}_s"
+    coil_end = load if channel.leads is None else f"{name}_k"
+    low = channel.switch.side == "low"
     parts.add(driven, k, board.chain.register_.title or "register", label)
-    coil = channel.coil.stamp(name, channel.coil_name, RAIL, coil_end, corner, board.around)
+    ends = (RAIL, coil_end) if low else (coil_end, GROUND)
+    coil = channel.coil.stamp(name, channel.coil_name, *ends, corner, board.around)
     parts.add(coil, k, channel.coil_name, label)
     if channel.leads is not None:
-        parts.add(channel.leads.stamp(f"{name}_lead", coil_end, drain, corner, board.around), k, "leads", label)
-    switch = channel.switch.stamp(f"{name}_s", pin, drain, corner)
+        parts.add(channel.leads.stamp(f"{name}_lead", coil_end, load, corner, board.around), k, "leads", label)
+    switch = channel.switch.stamp(stage, pin, load, corner, RAIL)
     parts.add(switch, k, channel.switch.part.title or "switch", label, channel.package)
-    across = coil_end if channel.clamp.at_the_coil() else drain
-    clamp = channel.clamp.stamp(f"{name}_c", across, RAIL, corner)
+    end = coil_end if channel.clamp.at_the_coil() else load
+    if channel.clamp.across == "coil":
+        held = (end, RAIL) if low else (GROUND, end)
+    else:
+        held = (load, GROUND) if low else (RAIL, load)
+    clamp = channel.clamp.stamp(f"{name}_c", *held, corner, channel.switch.control(stage))
     parts.add(clamp, k, f"{channel.clamp.kind} clamp", label, channel.package or label)
 
 

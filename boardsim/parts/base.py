@@ -33,6 +33,12 @@ class Part(Record):
     """One component record. `kind` names the kind, `role` the place where it can be used."""
 
     role: ClassVar[str] = ""
+    side: ClassVar[Literal["low", "high"]] = "low"
+    """Of a switch: whether it ties the coil to ground, and the coil's other end lies at the rail, or the other way round."""
+    in_the_chain: ClassVar[bool] = False
+    """Of a switch: whether it is an output of the chain's own registers."""
+    across: ClassVar[Literal["coil", "switch"]] = "coil"
+    """Of a clamp: what it lies in parallel to."""
     kind: str
     title: Name | None = None
 
@@ -63,6 +69,17 @@ class Part(Record):
     def held_off(self) -> bool:
         """Whether a switch has a resistor of its own that keeps it off while nothing drives it."""
         return False
+
+    def control(self, name: str) -> str:
+        """The node of a switch's control terminal in its stamp of this name, such as its gate; empty where it has none."""
+        return ""
+
+    def package_of(self, place: int, output: int) -> int:
+        """Which of its packages a channel is in: `place` counts the channels of its range, `output` is the register's.
+
+        Filled in the order of the range, unless a kind says better.
+        """
+        return place // self.per_package()
 
     def beside(self, switch: Part) -> str:
         """What keeps a clamp from being used beside a switch, for people; nothing where it fits."""

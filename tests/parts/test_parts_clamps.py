@@ -62,7 +62,8 @@ def board_with(folder: Path, clamp: str, more: str = "", **named: str) -> Board:
 
 
 def stamped(folder: Path, clamp: str, corner: Corner = NOMINAL) -> Stamp:
-    found: Stamp = board_with(folder, clamp).channels[0].clamp.stamp("c", "drain", "rail", corner)
+    part = board_with(folder, clamp).channels[0].clamp
+    found: Stamp = part.stamp("c", "drain", "rail" if part.across == "coil" else "0", corner)
     return found
 
 

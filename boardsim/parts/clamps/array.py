@@ -66,22 +66,22 @@ class ArrayClamp(Part):
             "array, or choose another clamp"
         )
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
-        """The clamp between node `drain` and node `rail`."""
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
+        """The clamp from node `a` to node `b`: the coil's ends, in the direction of its current after the turn-off."""
         part: DarlingtonArray = self.part
         label, title = "array diode", part.title or "array"
         inside = f"{name}_in"
-        meter = Ammeter(f"{name}_a", drain, inside)
+        meter = Ammeter(f"{name}_a", a, inside)
         i_s, n, r_s = junction_parameters(part.clamp_forward or (), _DRIFT, EMISSION, corner.junction)
         tnom = in_celsius(corner.junction)
         model = Model(f"{name}_m", "D", {"IS": i_s, "N": n, "RS": r_s, "CJO": _CAPACITANCE, "TNOM": tnom})
         v, i, v_r = f"v_{label}", f"i_{label}", f"vr_{label}"
         rating = Limit.of(part.clamp_current, "clamp diode current", "A", "current")
         diode = Stamp(
-            elements=(Junction(f"{name}_d", inside, rail, model),),
+            elements=(Junction(f"{name}_d", inside, b, model),),
             probes=(
-                Probe(v, voltage(inside, rail), "V"),
-                Probe(v_r, scaled(-1, voltage(inside, rail)), "V"),
+                Probe(v, voltage(inside, b), "V"),
+                Probe(v_r, scaled(-1, voltage(inside, b)), "V"),
                 Probe(i, current(meter), "A"),
             ),
             ports=(Port(label, ((v, i),), holds=0.5 * _CAPACITANCE * part.output_voltage.typ**2),),

@@ -25,6 +25,6 @@ class AvalancheClamp(Part):
         """None: beside other clamps `none` shows the same circuit already."""
         return ()
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
         """Adds nothing."""
         return Stamp()

@@ -17,8 +17,8 @@ class DiodeClamp(CoilClamp):
     kind: Literal["diode"] = "diode"
     diode: named_part(Diode)  # type: ignore[valid-type]
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
-        """The clamp between node `drain` and node `rail`."""
-        meter = Ammeter(f"{name}_a", drain, f"{name}_in")
-        diode = self.diode.stamp(f"{name}_d", "clamp diode", f"{name}_in", rail, current(meter), corner)
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
+        """The clamp from node `a` to node `b`: the coil's ends, in the direction of its current after the turn-off."""
+        meter = Ammeter(f"{name}_a", a, f"{name}_in")
+        diode = self.diode.stamp(f"{name}_d", "clamp diode", f"{name}_in", b, current(meter), corner)
         return in_series((meter,), diode)

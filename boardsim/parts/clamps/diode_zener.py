@@ -35,13 +35,13 @@ class DiodeZenerClamp(CoilClamp):
         """What the corners vary in this clamp."""
         return {"clamp_voltage": self.zener.clamping}
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
-        """The clamp between node `drain` and node `rail`."""
-        meter = Ammeter(f"{name}_a", drain, f"{name}_in")
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
+        """The clamp from node `a` to node `b`: the coil's ends, in the direction of its current after the turn-off."""
+        meter = Ammeter(f"{name}_a", a, f"{name}_in")
         through = current(meter)
         diode = self.diode.stamp(f"{name}_d", "clamp diode", f"{name}_in", f"{name}_mid", through, corner)
         label = "clamp Zener" if isinstance(self.zener, Zener) else "clamp suppressor"
-        zener = self.zener.stamp(f"{name}_z", label, f"{name}_mid", rail, through, corner)
+        zener = self.zener.stamp(f"{name}_z", label, f"{name}_mid", b, through, corner)
         return in_series((meter,), diode, zener)
 
 

@@ -46,9 +46,9 @@ class LedClamp(CoilClamp):
         """The coil's current decays with L / (R + R_x) at its beginning. [ohm]"""
         return 0.0 if self.resistor is None else self.resistor.max
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
-        """The clamp between node `drain` and node `rail`."""
-        meter = Ammeter(f"{name}_a", drain, f"{name}_in")
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
+        """The clamp from node `a` to node `b`: the coil's ends, in the direction of its current after the turn-off."""
+        meter = Ammeter(f"{name}_a", a, f"{name}_in")
         through, node = current(meter), f"{name}_in"
         stamps: list[Stamp] = []
         if self.resistor is not None:
@@ -57,7 +57,7 @@ class LedClamp(CoilClamp):
         if self.diode is not None:
             stamps.append(self.diode.stamp(f"{name}_d", "series diode", node, f"{name}_k", through, corner))
             node = f"{name}_k"
-        stamps.append(self.led.stamp(f"{name}_led", "LED", node, rail, through, corner))
+        stamps.append(self.led.stamp(f"{name}_led", "LED", node, b, through, corner))
         return in_series((meter,), *stamps)
 
     def _resistor(self, name: str, a: str, b: str, through: Signal, corner: Corner) -> Stamp:

@@ -13,6 +13,6 @@ class NoClamp(Part):
     role: ClassVar[str] = "clamp"
     kind: Literal["none"] = "none"
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
         """Adds nothing."""
         return Stamp()

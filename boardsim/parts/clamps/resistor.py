@@ -51,14 +51,14 @@ class ResistorClamp(CoilClamp):
         """The coil's current decays with L / (R + R_x). [ohm]"""
         return self.resistance.max
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
-        """The clamp between node `drain` and node `rail`."""
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
+        """The clamp from node `a` to node `b`: the coil's ends, in the direction of its current after the turn-off."""
         label = "clamp resistor"
-        meter = Ammeter(f"{name}_a", drain, f"{name}_in")
+        meter = Ammeter(f"{name}_a", a, f"{name}_in")
         v, i = f"v_{label}", f"i_{label}"
         return Stamp(
-            elements=(meter, Resistor(f"{name}_r", f"{name}_in", rail, corner.take(self.resistance, "clamp_voltage"))),
-            probes=(Probe(v, voltage(f"{name}_in", rail), "V"), Probe(i, current(meter), "A")),
+            elements=(meter, Resistor(f"{name}_r", f"{name}_in", b, corner.take(self.resistance, "clamp_voltage"))),
+            probes=(Probe(v, voltage(f"{name}_in", b), "V"), Probe(i, current(meter), "A")),
             ports=(Port(label, ((v, i),)),),
             rules=(
                 MeanRule(

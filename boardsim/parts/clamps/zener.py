@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, ClassVar, Literal
 
 from boardsim.parts.base import Corner, Part, Shelf, Stamp, named_part
 from boardsim.parts.clamp import in_series
-from boardsim.parts.elements import GROUND, Ammeter, current
+from boardsim.parts.elements import Ammeter, current
 from boardsim.parts.tvs import Tvs
 from boardsim.parts.zener import Zener
 from boardsim.quantities import Quantity
@@ -31,6 +31,7 @@ class ZenerClamp(Part):
 
     role: ClassVar[str] = "clamp"
     kind: Literal["zener"] = "zener"
+    across: ClassVar[Literal["coil", "switch"]] = "switch"
     to: Literal["ground"] = "ground"
     zener: named_part(Zener, Tvs)  # type: ignore[valid-type]
 
@@ -47,9 +48,9 @@ class ZenerClamp(Part):
         """Whether its lowest voltage is above that of the rail, which lies across it while the coil is off. [V]"""
         return bool(self.zener.clamping.min > volts)
 
-    def stamp(self, name: str, drain: str, rail: str, corner: Corner) -> Stamp:
-        """The clamp between node `drain` and ground."""
-        meter = Ammeter(f"{name}_a", drain, f"{name}_in")
+    def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
+        """The clamp from node `a` to node `b`: the switch's ends, in the direction of its current."""
+        meter = Ammeter(f"{name}_a", a, f"{name}_in")
         label = "clamp Zener" if isinstance(self.zener, Zener) else "clamp suppressor"
-        zener = self.zener.stamp(f"{name}_z", label, f"{name}_in", GROUND, current(meter), corner)
+        zener = self.zener.stamp(f"{name}_z", label, f"{name}_in", b, current(meter), corner)
         return in_series((meter,), zener)

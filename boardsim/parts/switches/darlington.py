@@ -57,12 +57,12 @@ class DarlingtonStage(Part):
         least: float = min(over / amperes for over, amperes in printed if over > 0)
         return max(volts - _LEAST_JUNCTIONS, 0.0) / (resistance + least)
 
-    def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
-        """The sink between the register's node `pin` and the coil's node `drain`."""
+    def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
+        """The sink between the register's node `pin` and the coil's node `load`."""
         part: DarlingtonArray = self.part
         volts = corner.take(part.output_voltage, "breakdown")
         inside = f"{name}_ci"
-        meter = Ammeter(f"{name}_d", drain, inside)
+        meter = Ammeter(f"{name}_d", load, inside)
         sunk, driven = current(meter), scaled(1 / part.input_resistance.typ, voltage(pin, f"{name}_b1"))
         holds = part.stored(volts)
         return Stamp(

@@ -76,14 +76,18 @@ class NMosfetStage(Part):
         """Whether it has a pull-down."""
         return self.pulldown is not None
 
-    def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
-        """The stage between the register's node `pin` and the coil's node `drain`."""
+    def control(self, name: str) -> str:
+        """The gate."""
+        return f"{name}_g"
+
+    def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
+        """The stage between the register's node `pin` and the coil's node `load`."""
         part: NMosfet = self.part
         bv = corner.take(part.breakdown, "breakdown") + corner.drifted(part.drift_of_breakdown.typ)
         shift = corner.take(part.threshold, "threshold") - part.threshold.typ
         parameters = part.at_temperature(bv, corner.junction, corner.take(part.spread, "on_resistance"), shift)
-        gate, inside = f"{name}_g", f"{name}_di"
-        meter = Ammeter(f"{name}_d", drain, inside)
+        gate, inside = self.control(name), f"{name}_di"
+        meter = Ammeter(f"{name}_d", load, inside)
         r_gate = max(self.gate.typ, 1e-2)
         into_gate = scaled(1 / r_gate, voltage(pin, gate))
         elements: list[Element] = [

@@ -290,13 +290,13 @@ class NpnStage(Part):
         """Whether it has a pull-down."""
         return self.pulldown is not None
 
-    def stamp(self, name: str, pin: str, drain: str, corner: Corner) -> Stamp:
-        """The stage between the register's node `pin` and the coil's node `drain`."""
+    def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
+        """The stage between the register's node `pin` and the coil's node `load`."""
         part: Npn = self.part
         volts = corner.take(part.breakdown, "breakdown")
         parameters = part.parameters()
         base, inside = f"{name}_b", f"{name}_ci"
-        meter = Ammeter(f"{name}_d", drain, inside)
+        meter = Ammeter(f"{name}_d", load, inside)
         into_base = scaled(1 / self.base.typ, voltage(pin, base))
         network: list[Element] = [Resistor(f"{name}_base", pin, base, self.base.typ)]
         if self.pulldown is not None:
