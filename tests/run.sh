@@ -12,4 +12,4 @@ step "format" "$PYTHON" -m ruff format --check boardsim tests
 step "lint" "$PYTHON" -m ruff check boardsim tests
 step "types" "$PYTHON" -m mypy
 step "layers" .venv/bin/lint-imports
-step "tests" "$PYTHON" -m pytest -q "${select[@]}"
+step "tests" "$PYTHON" -m pytest -q -n auto --dist worksteal "${select[@]}"
