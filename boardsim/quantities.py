@@ -155,6 +155,11 @@ TEMPERATURE_RISE = Dimension("temperature rise", "K", "40 K", 1e-3, 600.0, zero=
 THERMAL_RESISTANCE = Dimension("thermal resistance", "K/W", "62 K/W", 1e-3, 1e4, scale_letters=False)
 VOLTAGE_DRIFT = Dimension("temperature drift", "V/K", "-2 mV/K", -10.0, 10.0, zero=True, scale_letters=False)
 GROWTH = Dimension("temperature coefficient", "1/K", "0.4 %/K", 0.0, 0.05, zero=True, scale_letters=False)
+MASS = Dimension("mass", "kg", "25 g", 1e-6, 100.0, scale_letters=False)
+FORCE = Dimension("force", "N", "1.2 N", 1e-4, 1e5, zero=True, scale_letters=False)
+STIFFNESS = Dimension("stiffness", "N/m", "300 N/m", 1e-2, 1e8, zero=True, scale_letters=False)
+DAMPING = Dimension("damping", "kg/s", "0.2 kg/s", 1e-6, 1e4, zero=True, scale_letters=False)
+FORCE_CONSTANT = Dimension("force constant", "N/A", "9.6 N/A", 1e-3, 1e4, scale_letters=False)
 SHARE = Dimension("share", "1", "80 %", 1e-6, 1.0, scale_letters=False)
 
 # IEC 60062 writes the scale letter in place of the decimal point; R stands for x1.
@@ -184,7 +189,16 @@ _LOWER_UPPER = re.compile(rf"\s*-\s*({_UNSIGNED})\s*({_UNIT})?\s*/\s*\+\s*({_UNS
 _BAND = re.compile(rf"\s*({_NUMBER})\s*({_UNIT})?\s+to\s+({_NUMBER})\s*({_UNIT})\s*")
 _PINT_NAMES = {"\u03a9": "ohm", "\u2126": "ohm", "°C": "degC", "%": "percent", "²": "2", "³": "3", "^": ""}
 _LONGEST_TEXT = 100  # letters; what no number with a unit and a tolerance needs
-_SI_NAMES = {"1": "", "m^2": "m**2", "K/W": "kelvin/watt", "V/K": "volt/kelvin", "1/K": "1/kelvin"}
+_SI_NAMES = {
+    "1": "",
+    "m^2": "m**2",
+    "K/W": "kelvin/watt",
+    "V/K": "volt/kelvin",
+    "1/K": "1/kelvin",
+    "N/m": "newton/meter",
+    "kg/s": "kilogram/second",
+    "N/A": "newton/ampere",
+}
 
 
 @functools.cache
@@ -378,7 +392,7 @@ def _written(value: float, unit: str) -> str:
 
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
 _IN_PERCENT = {"1": "%", "1/K": "%/K"}
-_UNPREFIXED = {"K/W", "1", "%", "m^2"}
+_UNPREFIXED = {"K/W", "1", "%", "m^2", "N/m", "N/A", "kg/s"}
 _LARGEST = {"K": 0, "m": 0, "F": -6}  # nobody writes kilokelvin, or 4.7 mF on a capacitor
 
 
@@ -403,6 +417,8 @@ def in_units(value: float, unit: str, digits: int = 3) -> str:
     """
     if unit == "1":
         return f"{value:.{digits}g}"
+    if unit == "kg":  # whose prefix is in its name already
+        value, unit = value * 1e3, "g"
     if not math.isfinite(value):
         return f"{value} {unit}"
     if unit in _UNPREFIXED or value == 0:

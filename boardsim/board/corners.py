@@ -42,7 +42,9 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
 def nominal_only(board: Board) -> tuple[str, ...]:
     """Names of the numbers that had no tolerance and so were run at their nominal value."""
     names = [
-        _INPUT_NAMES.get(key, key) for key, found in _varied(board).items() if not all(q.toleranced for q in found)
+        _INPUT_NAMES.get(key, key.replace("_", " "))
+        for key, found in _varied(board).items()
+        if not all(q.toleranced for q in found)
     ]
     return (*names, *(() if board.around else ("winding temperature",)))
 
@@ -71,6 +73,7 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     go together for long, which makes the first corner an upper bound.
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
+    strong["opposing_force"] = "min"
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min"}
     # Hot: the least threshold leaks most, the largest on-resistance heats most.
     stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max", "on_resistance": "max", "threshold": "min"}
@@ -91,7 +94,7 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
         ),
         Corner(
             "supply low, coils hot",
-            {**weak, "coil_resistance": "max", "inductance": "max", "on_resistance": "max"},
+            {**weak, "coil_resistance": "max", "inductance": "max", "on_resistance": "max", "opposing_force": "max"},
             "hot",
             junction=warm,
         ),
@@ -99,7 +102,7 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
             "supply low, coils cold", {**weak, "coil_resistance": "min", "inductance": "min"}, "cold", junction=cool
         ),
     ]
-    if shortest < 5 * max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels):
+    if shortest < 5 * max(c.coil.inductances[1] / c.coil.resistance.min for c in board.channels):
         high = "supply high, coils cold, low inductance"
         wanted += [
             Corner(f"{high}, clamps high and hot", {**strong, **stiff, "inductance": "min"}, "cold", junction=warm),

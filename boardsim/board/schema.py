@@ -76,9 +76,22 @@ def _stiff_unless_said(value: Any) -> Any:
     return value
 
 
+def _plain_unless_said(value: Any) -> Any:
+    """A coil without a kind is one of fixed inductance, whose motion is not described."""
+    if isinstance(value, dict) and "kind" not in value:
+        return {"kind": Coil.model_fields["kind"].default, **value}
+    return value
+
+
+def _further(role: str, first: type[Part]) -> list[type[Part]]:
+    """Every kind of a role but the one that a table in place is of where it does not say."""
+    return [cls for cls in kinds(role).values() if cls is not first]
+
+
 AnyClamp = _any_kind("clamp")
 AnySwitch = _any_kind("switch")
 AnyLogic = _any_kind("logic")
+AnyCoil = _any_kind("coil")
 AnyComponent = _any_kind("component", "register")
 
 
@@ -152,7 +165,7 @@ class Chain(Record):
 class ChannelRange(Record):
     """Channels that are built alike."""
 
-    coil: named_part(Coil)  # type: ignore[valid-type]
+    coil: named_part(Coil, *_further("coil", Coil))  # type: ignore[valid-type]
     switch: Annotated[AnySwitch, BeforeValidator(_with_kind)]  # type: ignore[valid-type]
     clamp: AnyClamp  # type: ignore[valid-type]
     leads: Leads | None = Field(
@@ -249,7 +262,9 @@ class BoardFile(Record):
     logic: Annotated[AnyLogic, BeforeValidator(_stiff_unless_said)]  # type: ignore[valid-type]
     chain: Chain
     controller: Controller | None = None
-    coils: dict[Name, Coil] = Field(default_factory=dict)
+    coils: dict[Name, Annotated[AnyCoil, BeforeValidator(_plain_unless_said)]] = Field(  # type: ignore[valid-type]
+        default_factory=dict
+    )
     parts: dict[Name, AnyComponent] = Field(default_factory=dict)  # type: ignore[valid-type]
     channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]
     power_up: PowerUpTable = PowerUpTable()

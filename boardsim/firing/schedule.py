@@ -23,7 +23,8 @@ _SETTLE = 5.0  # L/R times to look at after the last edge
 
 def settling_time(board: Board) -> float:
     """How long to look after the last edge, so that what a turn-off does to its switch is in the run. [s]"""
-    return _SETTLE * max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels)
+    coils = [c.coil for c in board.channels]
+    return max(_SETTLE * coil.inductances[1] / coil.resistance.min + coil.return_time for coil in coils)
 
 
 @dataclass(frozen=True)

@@ -9,9 +9,9 @@ from pydantic import Field, model_validator
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
-from boardsim.parts.elements import Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
+from boardsim.parts.elements import Ammeter, Element, Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
 from boardsim.parts.known_coil import MeasuredRise, inductance_from, resistance_from
-from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule
+from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule, Rule
 from boardsim.parts.winding import ENAMEL_SOURCE, Winding
 from boardsim.quantities import (
     CURRENT,
@@ -127,14 +127,77 @@ class Coil(Part):
             f"{_CORE_LOSS_FACTOR} times the winding resistance, from memory; solid iron loses more",
         )
 
+    @property
+    def inductances(self) -> tuple[float, float]:
+        """The least and the largest that it has. [H]"""
+        return self.inductance.min, self.inductance.max
+
+    @property
+    def return_time(self) -> float:
+        """How long what it moves needs to come back once the current is gone; 0 where motion is not described. [s]"""
+        return 0.0
+
+    def held(self, amperes: float, corner: Corner) -> float:
+        """The most that its field can hold at a current. [A] -> [J]"""
+        return 0.5 * corner.take(self.inductance, "inductance") * amperes**2
+
+    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Ammeter | Inductor]:
+        """What lies behind the winding's resistance, beside the core loss, and what measures its current."""
+        coil = Inductor(f"{name}_l", a, b, corner.take(self.inductance, "inductance"))
+        return (coil,), coil
+
+    def more_probes(self, name: str) -> tuple[Probe, ...]:
+        """What a kind reads beyond voltages and currents; the quantity "e_held" then is what it stores [J]."""
+        return ()
+
+    def more_rules(self) -> tuple[Rule, ...]:
+        """What a kind is held against beyond pull-in and release."""
+        return ()
+
+    def more_assumed(self, label: str) -> tuple[Assumption, ...]:
+        """What a kind had to suppose beyond what every coil does."""
+        return ()
+
     def stamp(self, name: str, label: str, a: str, b: str, corner: Corner, around: Surroundings | None) -> Stamp:
-        """The coil from node `a` (rail) to node `b` (switch)."""
+        """The coil from node `a`, where its current enters while it is on, to node `b`."""
         mid = f"{name}_w"
-        henries = corner.take(self.inductance, "inductance")
-        coil = Inductor(f"{name}_l", mid, b, henries)
+        elements, meter = self.field(name, mid, b, corner)
         core = self.loss.typ
-        through = plus(current(coil), scaled(1 / core, voltage(mid, b)))
-        assumed = listed(
+        through = plus(current(meter), scaled(1 / core, voltage(mid, b)))
+        probes = self.more_probes(name)
+        holds = any(probe.quantity == "e_held" for probe in probes)
+        port = (
+            Port("coil", (("v_coil", "i_coil"),), energy="e_held")
+            if holds
+            else Port("coil", (("v_coil", "i_coil"),), store=("i_l", corner.take(self.inductance, "inductance")))
+        )
+        pull_in = Limit.of(self.pull_in, "pull-in current", "A", None, self.pull_in.max if self.pull_in else None)
+        release = Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None)
+        return Stamp(
+            elements=(
+                Resistor(f"{name}_r", a, mid, self.ohms(corner, around)),
+                *elements,
+                Resistor(f"{name}_core", mid, b, core),
+            ),
+            probes=(
+                Probe("v_coil", voltage(a, b), "V"),
+                Probe("i_coil", through, "A"),
+                Probe("i_l", current(meter), "A"),
+                *probes,
+            ),
+            ports=(port,),
+            rules=(
+                PullInRule("pull-in", "i_coil", pull_in),
+                ReleaseRule("overlap", "i_coil", release),
+                IdleRule("uncommanded", "i_coil", release, IDLE_SHARE),
+                *self.more_rules(),
+            ),
+            assumptions=self._assumed(label),
+        )
+
+    def _assumed(self, label: str) -> tuple[Assumption, ...]:
+        """What had to be supplied."""
+        found = listed(
             f"coil {label}",
             temperature_of_the_given_resistance=self.at,
             core_loss_resistance=self.loss,
@@ -142,40 +205,8 @@ class Coil(Part):
         )
         if self.release is None:
             why = "no release current given: what a coil that is off may carry, from memory"
-            assumed += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
-        assumed += self._of_the_winding(label)
-        return Stamp(
-            elements=(
-                Resistor(f"{name}_r", a, mid, self.ohms(corner, around)),
-                coil,
-                Resistor(f"{name}_core", mid, b, core),
-            ),
-            probes=(
-                Probe("v_coil", voltage(a, b), "V"),
-                Probe("i_coil", through, "A"),
-                Probe("i_l", current(coil), "A"),
-            ),
-            ports=(Port("coil", (("v_coil", "i_coil"),), store=("i_l", henries)),),
-            rules=(
-                PullInRule(
-                    "pull-in",
-                    "i_coil",
-                    Limit.of(self.pull_in, "pull-in current", "A", None, self.pull_in.max if self.pull_in else None),
-                ),
-                ReleaseRule(
-                    "overlap",
-                    "i_coil",
-                    Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None),
-                ),
-                IdleRule(
-                    "uncommanded",
-                    "i_coil",
-                    Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None),
-                    IDLE_SHARE,
-                ),
-            ),
-            assumptions=assumed,
-        )
+            found += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
+        return (*found, *self._of_the_winding(label), *self.more_assumed(label))
 
     def _of_the_winding(self, label: str) -> tuple[Assumption, ...]:
         """What a winding comes out as, and what had to be supplied for it."""

@@ -247,6 +247,8 @@ class Port:
         Terminal power is the sum of their products. [W]
     holds : float
         Energy that the part's own capacitances can hold and return. [J]
+    energy : str
+        The quantity that says how much it stores, for a part whose store is not of that form; empty otherwise. [J]
     store : tuple or None
         (quantity, value): the part stores value/2 x quantity^2 (L with its current, C with its voltage); the
         energy that it has dissipated, not the terminal energy, must then never fall.
@@ -260,3 +262,4 @@ class Port:
     holds: float = 0.0
     store: tuple[str, float] | None = None
     from_rest: bool = False
+    energy: str = ""

@@ -178,6 +178,29 @@ class IdleRule:
     share: float
 
 
+Motions = Literal["stroke", "held-in", "impact", "second-impact", "return"]
+
+
+@dataclass(frozen=True)
+class MotionRule:
+    """What a coil moves between two stops: it arrives in time, stays while its pulse lasts, hits as hard as it should, comes back.
+
+    `check` says which of these is asked. `quantity` [m] and `speed` [m/s] are probes; `travel` [m] and `mass` [kg] of what
+    moves. `limit` is the latest arrival after the pulse begins [s], without a value the end of the pulse; or the most energy of the
+    blow [J], `least` being the least; or the share of the first blow's energy that a later one may have. `stays` is what to try where
+    it does not move at all.
+    """
+
+    check: Motions
+    quantity: str
+    speed: str
+    travel: float
+    mass: float
+    limit: Limit
+    least: float | None = None
+    stays: str = "a higher voltage, a weaker spring, or a smaller gap at rest"
+
+
 @dataclass(frozen=True)
 class DriveRule:
     """At the end of every pulse, when its current is highest, a switch must be driven as hard as that current needs.
@@ -269,6 +292,7 @@ Rule = (
     | PullInRule
     | ReleaseRule
     | IdleRule
+    | MotionRule
     | DipRule
     | LeastRule
     | FallRule

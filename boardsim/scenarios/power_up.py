@@ -262,7 +262,7 @@ def _enabled(board: Board, first: float) -> float:
 
 
 def _slowest(board: Board) -> float:
-    return max(c.coil.inductance.max / c.coil.resistance.min for c in board.channels)
+    return max(c.coil.inductances[1] / c.coil.resistance.min for c in board.channels)
 
 
 def _release_time(board: Board) -> float:

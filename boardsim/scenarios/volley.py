@@ -168,7 +168,7 @@ def settled_width(board: Board) -> float:
     """
     cold = Corner("cold", {"coil_resistance": "min"}, "cold")
     windings = [c.coil.ohms(cold, board.around) for c in board.channels]
-    coils = max(c.coil.inductance.max / r for c, r in zip(board.channels, windings, strict=True))
+    coils = max(c.coil.inductances[1] / r for c, r in zip(board.channels, windings, strict=True))
     warmest = board.around.ambient_high if board.around else T_20C
     resistance = board.supply.resistance.typ + board.cable.loop(warmest).typ + board.bulk.esr.max
     ceiling = board.supply.current_ceiling

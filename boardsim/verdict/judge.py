@@ -21,6 +21,7 @@ from boardsim.parts.rules import (
     IdleRule,
     LeastRule,
     MeanRule,
+    MotionRule,
     PeakRule,
     PullInRule,
     PulseRule,
@@ -35,6 +36,7 @@ from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.heat import judge_heat, judge_warmth
 from boardsim.verdict.logic_rail import judge_fall, judge_least
+from boardsim.verdict.motion import judge_motion
 from boardsim.verdict.rail import judge_ceiling, judge_dip
 from boardsim.verdict.readings import Readings, pulse_key
 from boardsim.verdict.surges import judge_pulses
@@ -148,6 +150,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
         case IdleRule() as rule:
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
+        case MotionRule() as rule:
+            yield from judge_motion(rule, placed, readings.motions[_channel(placed)], bench)
         case DipRule() as rule:
             yield judge_dip(rule, placed, readings, firing, bench)
         case LeastRule() as rule:

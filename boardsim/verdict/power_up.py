@@ -102,7 +102,7 @@ class BootWatch:
         for c in self.board.channels:
             mine = taken.channels[c.number]
             full = settled(self.board, c, deck.corner)
-            held = 0.5 * deck.corner.take(c.coil.inductance, "inductance") * full**2
+            held = c.coil.held(full, deck.corner)
             if self.boot.reset is None:
                 found.append(Reading("highest current before the first frame", c.label, mine.peak, "A", full))
             else:

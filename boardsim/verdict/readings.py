@@ -24,12 +24,14 @@ from boardsim.parts.rules import (
     HeatRule,
     IdleRule,
     MeanRule,
+    MotionRule,
     PullInRule,
     PulseRule,
     ReleaseRule,
     Rule,
 )
 from boardsim.verdict.findings import Envelope, Floats
+from boardsim.verdict.motion import Strokes, Travelled
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.watch import (
     Avalanche,
@@ -93,6 +95,8 @@ class Readings:
         Lowest logic rail at the beginning and the latch edge of any register frame; None where it is no node, or no frame is known. [V]
     at_ends : mapping of (channel, quantity) to (times, values), at the ends of pulses
         What must reach a limit in every pulse, on boards whose logic rail moves: the best pulse then does not speak for all.
+    motions : mapping of channel to tuple of Travelled
+        What its coil moved, pulse by pulse.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -113,6 +117,7 @@ class Readings:
     falls: Mapping[FallRule, tuple[tuple[Dip, ...], tuple[Dip, ...]]] = field(default_factory=dict)
     framed: float | None = None
     at_ends: Mapping[tuple[int, str], tuple[Floats, Floats]] = field(default_factory=dict)
+    motions: Mapping[int, tuple[Travelled, ...]] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -169,6 +174,11 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for c, r in rules
         if isinstance(r, ReleaseRule) and c is not None
     }
+    moving_parts = {
+        c: (Strokes(r.travel, firing.on[c], start, stop), r)
+        for c, r in rules
+        if isinstance(r, MotionRule) and r.check == "stroke" and c is not None
+    }
     idle = {
         c: Samples(_at_rest(firing.on[c], start, stop)) for c, r in rules if isinstance(r, IdleRule) and c is not None
     }
@@ -221,6 +231,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             sample.feed(t, y[row[c, quantity]])
         for c, (watch, rule) in avalanches.items():
             watch.feed(t, y[row[c, rule.voltage]], y[row[c, rule.current]])
+        for c, (strokes, motion) in moving_parts.items():
+            strokes.feed(t, y[row[c, motion.quantity]], y[row[c, motion.speed]])
         for (channel, qs, _), watched in pulses.items():
             watched.feed(t, np.prod([y[row[channel, q]] for q in qs], axis=0))
         _feed_falls(falls, deck, row, t, y)
@@ -230,7 +242,9 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     span = stop - start
     held: dict[int | None, float] = {}
     for channel, _, port in deck.ports:
-        if port.store and channel is not None:
+        if port.energy and channel is not None:
+            held[channel] = max(held.get(channel, 0.0), float(extremes.high[row[channel, port.energy]]))
+        elif port.store and channel is not None:
             energy = 0.5 * port.store[1] * _largest(extremes, row[channel, port.store[0]]) ** 2
             held[channel] = max(held.get(channel, 0.0), energy)
     held[None] = max(held.values(), default=0.0)
@@ -275,6 +289,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {rule: (tuple(own.all()), tuple(near.all())) for rule, (own, near) in fallen.items()},
         float(framed.values.min()) if framed is not None and len(framed.values) else None,
         {key: (sample.times, sample.values) for key, sample in at_ends.items()},
+        {c: strokes.all() for c, (strokes, _) in moving_parts.items()},
     )
 
 
@@ -365,6 +380,8 @@ def _feed_falls(falls: Falls, deck: Deck, row: Mapping[Key, int], t: Floats, y: 
     pairs, stored = [], np.zeros((len(deck.ports), len(t)))
     for i, (c, _, port) in enumerate(deck.ports):
         pairs.append([(voltage(i, c, v), y[row[c, a]]) for v, a in port.pairs])
-        if port.store is not None:
+        if port.energy:
+            stored[i] = y[row[c, port.energy]]
+        elif port.store is not None:
             stored[i] = 0.5 * port.store[1] * voltage(i, c, port.store[0]) ** 2
     falls.feed(t, pairs, stored)

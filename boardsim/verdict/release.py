@@ -247,7 +247,7 @@ class _TurnOffWatch:
             None if first is None else first - self.on,
             None if since is None else since - self.off,
             charge,
-            0.5 * self.deck.corner.take(self.coil.inductance, "inductance") * self.current**2,
+            self.coil.held(self.current, self.deck.corner),
             v_switch,
             i_coil,
         )

@@ -52,7 +52,7 @@ def stretch_of(finding: Finding, board: Board, firing: Firing) -> Stretch:
 
 def _reach(f: Finding, board: Board) -> float:
     return _TAUS * max(
-        c.coil.inductance.max / c.coil.resistance.min for c in board.channels if f.channel in (None, c.number)
+        c.coil.inductances[1] / c.coil.resistance.min for c in board.channels if f.channel in (None, c.number)
     )
 
 

@@ -1,0 +1,121 @@
+"""A solenoid that pulls an iron plunger into itself: the inductance grows as the gap closes, and the growth is the force."""
+
+from __future__ import annotations
+
+from typing import Annotated, ClassVar, Literal
+
+from pydantic import Field, model_validator
+
+from boardsim.errors import QuantityError
+from boardsim.parts.base import Assumption, Corner
+from boardsim.parts.coil import Coil
+from boardsim.parts.elements import (
+    GROUND,
+    Ammeter,
+    Capacitor,
+    CurrentLaw,
+    Element,
+    Probe,
+    Resistor,
+    VoltageLaw,
+    voltage,
+)
+from boardsim.parts.motion import Motion
+from boardsim.parts.rules import Rule
+from boardsim.quantities import INDUCTANCE, Quantity
+
+_MILLI = 1e3  # flux linkage is held in mVs: near 1, as ngspice's tolerances want it
+_LEAK = 1e9  # [ohm], the flux's way to ground at direct current
+_GIVE = 0.05  # share of the travel by which a stop may be passed before the gap's law ends
+
+
+class PlungerCoil(Coil):
+    """A coil with a plunger of iron in it.
+
+    Notes
+    -----
+    Flux linkage is the state: d(lambda)/dt = v - R i. The gap's reluctance falls in proportion to the way x that the plunger has
+    gone, so that with N turns 1/L = R_m/N^2 lies on a straight line between the open and the closed coil:
+
+        i = lambda g(x),  g(x) = 1/L_open + (1/L_closed - 1/L_open) x / s.
+
+    The force is that of the co-energy, F = dW'/dx at constant i, which in terms of lambda reads F = -lambda^2/2 dg/dx. What the source gives
+    is heat, field lambda^2 g / 2 and motion, to the last joule. Holds for one working gap with an even field and iron that
+    does not saturate; fringing makes the real force larger at a wide gap. The core-loss resistance lies across the flux.
+
+    References
+    ----------
+    A. E. Fitzgerald, C. Kingsley, S. D. Umans, Electric Machinery, chapter 3 (energy and co-energy of a singly excited
+    system); from memory.
+    """
+
+    role: ClassVar[str] = "coil"
+    kind: Literal["plunger"] = "plunger"  # type: ignore[assignment]  # a kind of its own
+    closed_inductance: Annotated[Quantity, INDUCTANCE] = Field(
+        description="with the plunger all the way in; inductance is that at its rest"
+    )
+    motion: Motion
+
+    @model_validator(mode="after")
+    def _pulls(self) -> PlungerCoil:
+        if self.closed_inductance.min <= self.inductance.max:
+            raise QuantityError(
+                "closed_inductance must be larger than inductance, which is that of the coil with its plunger at rest: the growth is its force"
+            )
+        return self
+
+    def tolerances(self) -> dict[str, Quantity]:
+        """What the corners vary in this part."""
+        return {**super().tolerances(), "closed_inductance": self.closed_inductance, **self.motion.tolerances()}
+
+    def held(self, amperes: float, corner: Corner) -> float:
+        """The most that its field can hold at a current, with the plunger in. [A] -> [J]"""
+        return 0.5 * corner.take(self.closed_inductance, "inductance") * amperes**2
+
+    @property
+    def inductances(self) -> tuple[float, float]:
+        """The least and the largest that it has. [H]"""
+        return self.inductance.min, self.closed_inductance.max
+
+    @property
+    def return_time(self) -> float:
+        """How long what it moves needs to come back. [s]"""
+        return self.motion.return_time
+
+    def _slopes(self, corner: Corner) -> tuple[float, float]:
+        """1/L at rest, and how much it falls with each metre. [1/H], [1/(H m)]"""
+        opened, closed = (corner.take(q, "inductance") for q in (self.inductance, self.closed_inductance))
+        return 1 / opened, (1 / closed - 1 / opened) / self.motion.travel.typ
+
+    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Ammeter]:
+        """Flux, its current, and the plunger."""
+        rest, slope = self._slopes(corner)
+        travel = self.motion.travel.typ
+        flux, x = f"V({name}_f)/{_MILLI!r}", f"V({name}_x)/1000.0"
+        within = f"min(max({x},{-_GIVE * travel!r}),{(1 + _GIVE) * travel!r})"
+        meter = Ammeter(f"{name}_m", a, f"{name}_mi")
+        force = f"{-slope / 2!r}*({flux})*({flux})"
+        gap = f"({rest!r}+{slope!r}*{within})"
+        return (
+            meter,
+            CurrentLaw(f"{name}_l", b, f"{name}_mi", f"({flux})*{gap}"),
+            Capacitor(f"{name}_f", f"{name}_f", GROUND, 1.0),
+            CurrentLaw(f"{name}_f", f"{name}_f", GROUND, f"{_MILLI!r}*(V({a})-V({b}))"),
+            Resistor(f"{name}_f", f"{name}_f", GROUND, _LEAK),
+            *self.motion.elements(name, force, corner),
+            VoltageLaw(
+                f"{name}_e", f"{name}_e", GROUND, f"({flux})*({flux})*{gap}/2+{self.motion.stored(name, corner)}"
+            ),
+        ), meter
+
+    def more_probes(self, name: str) -> tuple[Probe, ...]:
+        """What moves, and what field and motion hold."""
+        return (*self.motion.probes(name), Probe("e_held", voltage(f"{name}_e"), "J"))
+
+    def more_rules(self) -> tuple[Rule, ...]:
+        """What the motion is held against."""
+        return self.motion.rules()
+
+    def more_assumed(self, label: str) -> tuple[Assumption, ...]:
+        """What had to be supplied for the motion."""
+        return self.motion.assumed(f"coil {label}")
