@@ -115,6 +115,39 @@ class PulseRule:
     part: str = ""
 
 
+LINEAR_SHARE = 0.5
+"""Share of its peak to which a pulse in the linear region lasts: half of the base of a triangle, which has the same energy."""
+
+
+def linear_unknown() -> PulseRule:
+    """The rule of a switch of which nobody knows what it stands in its linear region."""
+    return linear_rule(Limit(None, "W", "power", "", "safe area or thermal impedance"), (), 0.0)
+
+
+def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: float) -> PulseRule:
+    """The rule that a switch stands every pulse of power that it takes in its linear region.
+
+    Parameters
+    ----------
+    limit : Limit
+    points : tuple of (length, power)
+        The lengths rising. [s], [W]
+    lasting : float
+        What it stands however long. [W]
+    """
+    return PulseRule(
+        "linear-region",
+        ("v_ds", "i_d"),
+        limit,
+        points,
+        lasting,
+        LINEAR_SHARE,
+        "destroy",
+        "power of the switch while it is its own clamp",
+        "a clamp that takes the energy itself, or a switch that stands more in its linear region",
+    )
+
+
 @dataclass(frozen=True)
 class EnergyRule:
     """The energy of every single pulse of a power (the product of two quantities) must stay below a limit. [J]"""

@@ -48,7 +48,7 @@ class ArrayClamp(Part):
     part: Annotated[named_part(DarlingtonArray), AfterValidator(_with_diode)]  # type: ignore[valid-type]
 
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[ArrayClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[ArrayClamp, ...]:
         """One array of each sort of diode: packages of seven and of eight have the same."""
         sorts = {
             (*((f.voltage.typ, f.current.typ) for f in p.clamp_forward), str(p.clamp_current), str(p.output_voltage)): p
@@ -56,6 +56,12 @@ class ArrayClamp(Part):
             if isinstance(p, DarlingtonArray) and p.clamp_forward is not None
         }
         return tuple(cls(part=p) for p in sorts.values())
+
+    def matched(self, switch: Part) -> Part:
+        """With the switch's own array, where the switch is in one that has diodes."""
+        part = getattr(switch, "part", None)
+        fits = isinstance(part, DarlingtonArray) and part.clamp_forward is not None
+        return self.model_copy(update={"part": part}) if fits else self
 
     def beside(self, switch: Part) -> str:
         """The diode belongs to the switch's own package: its heat and its ground are shared."""
