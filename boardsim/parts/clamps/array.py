@@ -24,7 +24,14 @@ _DRIFT = assume("-2 mV/K", VOLTAGE_DRIFT, "forward voltage of a silicon junction
 _CAPACITANCE = 10e-12  # [F] at 0 V, a part of what the output's own capacitance is given with; from memory
 
 
-def _with_diode(part: DarlingtonArray) -> DarlingtonArray:
+def with_diode(part: DarlingtonArray) -> DarlingtonArray:
+    """An array that has diodes of its own.
+
+    Raises
+    ------
+    QuantityError
+        If it has none.
+    """
     if part.clamp_forward is None:
         raise QuantityError(
             f"{part.title or 'the array'} has no clamp_forward: without a diode of its own it is no clamp"
@@ -45,7 +52,7 @@ class ArrayClamp(Part):
     role: ClassVar[str] = "clamp"
     kind: Literal["array"] = "array"
     to: Literal["rail"] = "rail"
-    part: Annotated[named_part(DarlingtonArray), AfterValidator(_with_diode)]  # type: ignore[valid-type]
+    part: Annotated[named_part(DarlingtonArray), AfterValidator(with_diode)]  # type: ignore[valid-type]
 
     @classmethod
     def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[ArrayClamp, ...]:
