@@ -29,7 +29,8 @@ def of_package(stamp: Stamp, package: str) -> Stamp:
             case EnergyRule():
                 return replace(rule, quantities=(named(rule.quantities[0]), named(rule.quantities[1])))
             case HeatRule():
-                return replace(rule, powers=tuple((named(v), named(i)) for v, i in rule.powers))
+                growing = None if rule.growing is None else (named(rule.growing[0]), named(rule.growing[1]))
+                return replace(rule, powers=tuple((named(v), named(i)) for v, i in rule.powers), growing=growing)
             case _:
                 raise TypeError(f"{type(rule).__name__} is judged on channels, not on a package")
 

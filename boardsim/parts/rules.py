@@ -76,7 +76,8 @@ class HeatRule:
 
     `powers` are pairs of quantities whose products add up to the power. `resistance` is R_th to the ambient [K/W], `ambient`
     the air around it in this run [K]; `limit` [K]. `channels` are those that share one package; empty: the rule's own.
-    `growth` is that of the power with the junction's own temperature [1/K].
+    `growth` is that of the power with the junction's own temperature [1/K]; of `growing`, where that is given, the product of two
+    quantities, times `factor`, and not of all of it.
     """
 
     check: str
@@ -90,6 +91,8 @@ class HeatRule:
     part: str = ""
     channels: tuple[int, ...] = ()
     growth: float = 0.0
+    growing: tuple[str, str] | None = None
+    factor: float = 1.0
 
 
 @dataclass(frozen=True)
@@ -124,7 +127,7 @@ def linear_unknown() -> PulseRule:
     return linear_rule(Limit(None, "W", "power", "", "safe area or thermal impedance"), (), 0.0)
 
 
-def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: float) -> PulseRule:
+def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: float, against: str = "") -> PulseRule:
     """The rule that a switch stands every pulse of power that it takes in its linear region.
 
     Parameters
@@ -134,6 +137,8 @@ def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: 
         The lengths rising. [s], [W]
     lasting : float
         What it stands however long. [W]
+    against : str
+        What it is held against, to tell two such rules apart.
     """
     return PulseRule(
         "linear-region",
@@ -143,7 +148,7 @@ def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: 
         lasting,
         LINEAR_SHARE,
         "destroy",
-        "power of the switch while it is its own clamp",
+        f"power of the switch while it is its own clamp{against}",
         "a clamp that takes the energy itself, or a switch that stands more in its linear region",
     )
 
