@@ -143,4 +143,5 @@ def in_series(first: tuple[Element, ...], *stamps: Stamp) -> Stamp:
         rules=tuple(r for s in stamps for r in s.rules),
         assumptions=tuple(a for s in stamps for a in s.assumptions),
         totals=tuple(t for s in stamps for t in s.totals),
+        joins=tuple(j for s in stamps for j in s.joins),
     )
