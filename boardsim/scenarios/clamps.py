@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Sequence
 
 import numpy as np
@@ -44,7 +45,7 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
         return [part for part in found if part is not None]
 
     rail = board.supply.voltage.typ
-    shown: list[Part] = []
+    shown: list[list[Part]] = []
     remarks: list[str] = []
     for kind, cls in kinds("clamp").items():
         like = {"at": "coil"} if channel.clamp.at_the_coil() and "at" in cls.model_fields else {}
@@ -68,8 +69,10 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
             remarks.append(
                 f"{MOST_OF_A_KIND} of {len(fit)} clamps of the kind {kind} are shown; for another one put it into the board file"
             )
-        shown += _spread(fit)
-    return shown, tuple(remarks)
+        shown.append(_spread(fit))
+    # The first of every kind before the second of any: a picture that has no room for all of them still has every kind.
+    rounds = itertools.zip_longest(*shown)
+    return [clamp for one in rounds for clamp in one if clamp is not None], tuple(remarks)
 
 
 def _carries(clamp: Part, current: float, bench: Bench) -> bool:
