@@ -334,6 +334,8 @@ def test_every_kind_is_offered_but_the_clamp_that_is_there(tmp_path: Path) -> No
     assert "zener: SMBJ24A" in words
     assert set(remarks) == {
         "not tried, rated for less than the coil's 1.00 A: diode: 1N4148",
+        "not tried, conducts at the rail of 24.0 V: active: 24v-5w, 1N4148; active: 20v-5w, 1N4148; active: 12v-5w, 1N4148; "
+        "active: SMAJ12A, 1N4148; active: SMAJ15A, 1N4148",
         "not tried, conducts at the rail of 24.0 V: zener: 24v-5w; zener: 20v-5w; zener: 12v-5w; zener: SMAJ12A; zener: SMAJ15A",
     }
 
