@@ -114,12 +114,13 @@ def linear_rules(
     of 25 degC, and are taken down with (T_j,max - T_0) / (T_j,max - 25 degC), as makers' application notes do (common
     practice). Both hold for single pulses; what they add up to is judged by average power and heat.
 
-    A clamped coil's pulse is no rectangle: it begins at V_clamp I_0 and falls to nothing, nearly straight. It counts as long as
-    it is above half of its peak, as a rectangle of the same energy. With Z_th ~ sqrt(t), the diffusion of heat into a chip
-    (one dimension), a straight fall from P over the time b heats by 0.471 Z_th(b) P at most, after b/2, and the rectangle P, b/2
-    by 0.707 Z_th(b) P; an exponential with the time constant T by 0.541 Z_th(T) P (Dawson's integral), and its rectangle, 0.69 T
-    long, by 0.833 Z_th(T) P: the rule errs on the safe side by a half. By a thermal impedance that rises less steeply it
-    errs by less, and never on the other side, since a rectangle ahead of the same energy is what heats most.
+    A clamped coil's pulse is no rectangle: it begins at V_clamp I_0 and falls, straight where the clamp is far above the rail and
+    as an exponential where it is close to it. It counts as a rectangle of its peak P as long as it is above P / e: an exponential's
+    time constant T, whose energy is that of P for T, and 0.63 of a triangle's base b, which has the energy of P for b / 2. Of
+    all pulses of a peak and an energy the rectangle heats a junction most, since Z_th rises ever more slowly and what comes
+    last counts most: the rule is an upper bound by any thermal impedance. Where heat diffuses into the chip, Z_th ~
+    sqrt(t), a triangle heats by 0.471 Z_th(b) P and an exponential by 0.541 Z_th(T) P (Dawson's integral): about 0.6 and 0.54 of
+    what it is taken for.
 
     From a thermal impedance alone nothing is seen of a chip that does not share its current evenly: at high voltage and low
     current modern transistors' charts fall below it (thermal instability). Where both are given both count. Above the

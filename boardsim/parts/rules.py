@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Literal
 
@@ -118,8 +119,8 @@ class PulseRule:
     part: str = ""
 
 
-LINEAR_SHARE = 0.5
-"""Share of its peak to which a pulse in the linear region lasts: half of the base of a triangle, which has the same energy."""
+LINEAR_SHARE = math.exp(-1.0)
+"""Share of its peak to which a pulse in the linear region lasts; see `boardsim.parts.linear.linear_rules`."""
 
 
 def linear_unknown() -> PulseRule:

@@ -24,7 +24,7 @@ from boardsim.parts.clamps.active import ActiveClamp
 from boardsim.parts.diode import Diode
 from boardsim.parts.linear import ImpedancePoint, SafeAreaPoint, linear_rules
 from boardsim.parts.mosfet import NMosfet
-from boardsim.parts.rules import LINEAR_SHARE, PeakRule, PulseRule
+from boardsim.parts.rules import PeakRule, PulseRule
 from boardsim.quantities import TEMPERATURE, THERMAL_RESISTANCE, parse
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.pulses import OnePulse
@@ -202,10 +202,10 @@ def test_a_pulse_that_is_just_allowed_keeps_the_junction_of_a_printed_ladder_bel
     shape: str, length: float
 ) -> None:
     """T(t) = T_0 + integral of P(s) dZ/dt(t - s) ds with the printed ladder: SciPy's quadrature, not the rule's rectangle."""
-    half = length / 2 if shape == "triangle" else length * math.log(2)  # [s] to half of the peak
-    assert LINEAR_SHARE == 0.5
-    (rule,) = linear_rules((), impedance((f"{z_th(half)!r} K/W", f"{half!r} s")), RATING, None, HOT)
+    long = length * (1 - math.exp(-1)) if shape == "triangle" else length  # [s] to 1/e of the peak
+    (rule,) = linear_rules((), impedance((f"{z_th(long)!r} K/W", f"{long!r} s")), RATING, None, HOT)
     assert isinstance(rule, PulseRule)
+    assert math.exp(-1) == pytest.approx(rule.share)
     watts = rule.points[0][1]
 
     def power(s: float) -> float:
@@ -230,8 +230,7 @@ def test_the_two_shapes_heat_as_much_as_is_said_of_them_where_heat_diffuses() ->
     t = np.linspace(0, 1, 2001)
     assert float(np.max(np.sqrt(t) - 2 / 3 * t**1.5)) == pytest.approx(0.471, abs=5e-4)
     assert float(np.max(dawsn(np.sqrt(np.linspace(0, 4, 4001))))) == pytest.approx(0.541, abs=5e-4)
-    assert math.sqrt(0.5) == pytest.approx(0.707, abs=5e-4)
-    assert math.sqrt(math.log(2)) == pytest.approx(0.833, abs=5e-4)
+    assert 0.471 / math.sqrt(1 - math.exp(-1)) == pytest.approx(0.6, abs=1e-2)
 
 
 @pytest.mark.parametrize(("watts", "verdict"), [(300.0, "pass"), (400.0, "tight"), (450.0, "fail")])
