@@ -11,6 +11,7 @@ from boardsim.board.reader import Board, Channel
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
+from boardsim.circuit.packages import of_package
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
 from boardsim.firing.registers import ChainState, send
@@ -81,6 +82,7 @@ class Assembly:
         self.rest: dict[str, float] = {}
         self.totals: dict[tuple[str, str, PeakRule, str], list[tuple[int, Signal]]] = {}
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
+        self.commons: dict[str, str] = {}
 
     def add(self, stamp: Stamp, channel: int | None, part: str, label: str, package: str = "") -> None:
         """Add one part's stamp at its place on the board."""
@@ -94,6 +96,8 @@ class Assembly:
         names = self.assumed.setdefault(channel, {})
         names.update(dict.fromkeys(f"{a.part} {a.quantity}" for a in stamp.assumptions))
         self.rest.update(stamp.rest)
+        for quantity, more in stamp.joins:
+            self.signals[channel, quantity] = plus(self.signals[channel, quantity], more)
         for total in stamp.totals:
             if channel is None:
                 continue
@@ -101,6 +105,18 @@ class Assembly:
                 self.heats.setdefault((package, total.rule.part or part), []).append((channel, total.rule))
             else:
                 self.totals.setdefault((package, part, total.rule, total.unit), []).append((channel, total.signal))
+
+    def add_common(self, channel: Channel, b: str, corner: Corner) -> str:
+        """Where a channel's clamp ends: at node `b`, or at what its package has in common, which is added once."""
+        package = channel.package or channel.label
+        node = self.commons.get(package, f"common{len(self.commons)}")
+        shared = channel.clamp.common(node, node, b, corner)
+        if shared is None:
+            return b
+        if package not in self.commons:
+            self.commons[package] = node
+            self.add(of_package(shared, package), None, f"{channel.clamp.kind} clamp", package)
+        return node
 
     def add_totals(self) -> None:
         """The sums over each package, and their rules."""
@@ -274,8 +290,12 @@ def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel,
         held = (end, RAIL) if low else (GROUND, end)
     else:
         held = (load, GROUND) if low else (RAIL, load)
-    clamp = channel.clamp.stamp(f"{name}_c", *held, corner, channel.switch.control(stage))
+    end_of_clamp = parts.add_common(channel, held[1], corner)
+    clamp = channel.clamp.stamp(f"{name}_c", held[0], end_of_clamp, corner, channel.switch.control(stage))
     parts.add(clamp, k, f"{channel.clamp.kind} clamp", label, channel.package or label)
+    if channel.clamp.holds_switch:
+        linear = Stamp(rules=channel.switch.linear(corner))
+        parts.add(linear, k, channel.switch.part.title or "switch", label, channel.package)
 
 
 def _rail_rule(board: Board) -> Rule:

@@ -347,6 +347,11 @@ class Diode(Part):
         )
 
 
+def most_current(diode: Diode) -> float:
+    """What a diode stands again and again, to choose among diodes; 0 where it is not given. [A]"""
+    return diode.repetitive_current.typ if diode.repetitive_current is not None else 0.0
+
+
 def surge_points(points: Sequence[SurgePoint]) -> tuple[tuple[float, float], ...]:
     """Lengths [s] and currents [A] of surge ratings, the lengths rising.
 

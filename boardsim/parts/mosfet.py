@@ -10,6 +10,7 @@ from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import T_MODEL, Part
+from boardsim.parts.linear import ImpedancePoint, SafeAreaPoint, refuse_incoherent
 from boardsim.parts.mosfet_channel import (
     BODY_EMISSION,
     BODY_RESISTANCE,
@@ -145,6 +146,12 @@ class NMosfet(Part):
     source_drain_current: Annotated[Quantity, CURRENT] | None = None
     thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
     junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
+    safe_area: tuple[SafeAreaPoint, ...] = Field(
+        (), description="single pulses of the safe operating area, read at the voltage at which the switch works"
+    )
+    thermal_impedance: tuple[ImpedancePoint, ...] = Field(
+        (), description="from junction to case for a single pulse of a length"
+    )
     threshold_drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = Field(
         None, description="of the threshold with temperature"
     )
@@ -180,6 +187,7 @@ class NMosfet(Part):
         if self.gate_charge is not None and self.charge_gate is None:
             raise QuantityError('"gate_charge" needs "charge_gate", the gate voltage up to which it counts')
         self._sensible_drifts()
+        refuse_incoherent(self.safe_area, self.thermal_impedance, self.junction_rating)
         return self
 
     def _sensible_drifts(self) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Literal
 
@@ -76,7 +77,8 @@ class HeatRule:
 
     `powers` are pairs of quantities whose products add up to the power. `resistance` is R_th to the ambient [K/W], `ambient`
     the air around it in this run [K]; `limit` [K]. `channels` are those that share one package; empty: the rule's own.
-    `growth` is that of the power with the junction's own temperature [1/K].
+    `growth` is that of the power with the junction's own temperature [1/K]; of `growing`, where that is given, the product of two
+    quantities, times `factor`, and not of all of it.
     """
 
     check: str
@@ -90,6 +92,8 @@ class HeatRule:
     part: str = ""
     channels: tuple[int, ...] = ()
     growth: float = 0.0
+    growing: tuple[str, str] | None = None
+    factor: float = 1.0
 
 
 @dataclass(frozen=True)
@@ -113,6 +117,41 @@ class PulseRule:
     what: str
     advice: str
     part: str = ""
+
+
+LINEAR_SHARE = math.exp(-1.0)
+"""Share of its peak to which a pulse in the linear region lasts; see `boardsim.parts.linear.linear_rules`."""
+
+
+def linear_unknown() -> PulseRule:
+    """The rule of a switch of which nobody knows what it stands in its linear region."""
+    return linear_rule(Limit(None, "W", "power", "", "safe area or thermal impedance"), (), 0.0)
+
+
+def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: float, against: str = "") -> PulseRule:
+    """The rule that a switch stands every pulse of power that it takes in its linear region.
+
+    Parameters
+    ----------
+    limit : Limit
+    points : tuple of (length, power)
+        The lengths rising. [s], [W]
+    lasting : float
+        What it stands however long. [W]
+    against : str
+        What it is held against, to tell two such rules apart.
+    """
+    return PulseRule(
+        "linear-region",
+        ("v_ds", "i_d"),
+        limit,
+        points,
+        lasting,
+        LINEAR_SHARE,
+        "destroy",
+        f"power of the switch while it is its own clamp{against}",
+        "a clamp that takes the energy itself, or a switch that stands more in its linear region",
+    )
 
 
 @dataclass(frozen=True)

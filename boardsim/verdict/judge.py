@@ -51,7 +51,8 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     """
     found: list[Finding] = []
     # Without a limit an idle part's power, which is noise, is compared on the scale of the busiest part's.
-    hottest = max((abs(mean) for (_, of), mean in readings.means.items() if len(of) == 2), default=0.0)
+    powers = [abs(mean) for (_, of), mean in readings.means.items() if len(of) == 2 and of[0] != of[1]]  # no squares
+    hottest = max(powers, default=0.0)
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
         nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))

@@ -307,7 +307,8 @@ def _averaged(channel: int | None, rule: Rule) -> list[tuple[int | None, tuple[s
         case MeanRule():
             return [(channel, rule.quantities)]
         case HeatRule():
-            return [(c, pair) for c in rule.channels or (channel,) for pair in rule.powers]
+            wanted = (*rule.powers, *(() if rule.growing is None else (rule.growing,)))
+            return [(c, pair) for c in rule.channels or (channel,) for pair in wanted]
         case _:
             return []
 

@@ -31,12 +31,16 @@ class ZenerClamp(Part):
 
     role: ClassVar[str] = "clamp"
     kind: Literal["zener"] = "zener"
-    across: ClassVar[Literal["coil", "switch"]] = "switch"
     to: Literal["ground"] = "ground"
     zener: named_part(Zener, Tvs)  # type: ignore[valid-type]
 
+    @property
+    def across(self) -> Literal["coil", "switch"]:
+        """The switch."""
+        return "switch"
+
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[ZenerClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[ZenerClamp, ...]:
         """Every suppressor and every Zener; the voltage that fits depends on the rail, which a coil does not know."""
         return tuple(cls(zener=part) for part in (*shelf(Zener), *shelf(Tvs)))
 

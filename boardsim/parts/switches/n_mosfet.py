@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
+from boardsim.parts.base import T_MODEL, Corner, Part, Stamp, listed, named_part
 from boardsim.parts.elements import (
     GROUND,
     Ammeter,
@@ -20,9 +20,10 @@ from boardsim.parts.elements import (
     voltage,
 )
 from boardsim.parts.heat import junction_heat
+from boardsim.parts.linear import linear_rules
 from boardsim.parts.mosfet import NMosfet
-from boardsim.parts.rules import BreakdownRule, FloorRule, Limit, MeanRule, PeakRule
-from boardsim.parts.temperature import reverse_current
+from boardsim.parts.rules import BreakdownRule, FloorRule, Limit, MeanRule, PeakRule, Rule
+from boardsim.parts.temperature import grown, reverse_current
 from boardsim.quantities import (
     POSITIVE_RESISTANCE,
     RESISTANCE,
@@ -79,6 +80,13 @@ class NMosfetStage(Part):
     def control(self, name: str) -> str:
         """The gate."""
         return f"{name}_g"
+
+    def linear(self, corner: Corner) -> tuple[Rule, ...]:
+        """Its safe area and its thermal impedance, as far as they are given."""
+        part: NMosfet = self.part
+        return linear_rules(
+            part.safe_area, part.thermal_impedance, part.junction_rating, part.thermal_resistance, corner
+        )
 
     def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
         """The stage between the register's node `pin` and the coil's node `load`."""
@@ -171,6 +179,9 @@ class NMosfetStage(Part):
                     corner.ambient,
                     "choose a switch of less on-resistance or with a better path for heat, or fire less often",
                     growth=part.growth.typ,
+                    # What a switch takes as its own clamp, or in avalanche, does not grow with its on-resistance.
+                    growing=("i_d", "i_d"),
+                    factor=self._highest_resistance(corner),
                 ),
             ),
             assumptions=listed(
@@ -183,6 +194,12 @@ class NMosfetStage(Part):
                 growth_of_the_on_resistance=part.growth,
             ),
         )
+
+    def _highest_resistance(self, corner: Corner) -> float:
+        """The on-resistance in this run at the lowest gate voltage that it is given for. [ohm]"""
+        part: NMosfet = self.part
+        cold = max(p.value.typ for p in part.on_resistance if p.kelvin == T_MODEL)
+        return grown(cold * corner.take(part.spread, "on_resistance"), part.growth.typ, corner.junction)
 
     def _rating(self, corner: Corner) -> float:
         """The rated voltage, which is given for 25 degC and above: a colder transistor breaks down earlier. [V]"""
