@@ -275,6 +275,7 @@ class PowerRegister(Register):
             drift_of_the_clamp=self.drift_of_clamp,
             growth_of_the_on_resistance=self.growth,
             output_capacitance=self.output_capacitance,
+            capacitance_of_its_gate=self.gate_capacitance,
             pulse_that_its_current_is_rated_for=self.pulse_lasting,
             turn_on_delay=s.turn_on,
             turn_off_delay=s.turn_off,

@@ -151,7 +151,13 @@ class PowerOutputStage(Part):
         )
 
     def _totals(self, corner: Corner, meter: Ammeter, derated: float | None) -> tuple[Total, ...]:
-        """What the outputs of one package add up to: current, heat, and what their clamps take at one time."""
+        """What the outputs of one package add up to: current, heat, and what their clamps take at one time.
+
+        Notes
+        -----
+        The whole of the power counts as growing with the junction's temperature, though only that of conduction does: where clamps
+        take most of it the junction comes out too hot.
+        """
         part: PowerRegister = self.part
         advice = "fewer outputs of one package at once, or spread the channels over more packages"
         together, less = part.avalanche_package, 1.0
