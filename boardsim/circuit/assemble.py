@@ -19,7 +19,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
 from boardsim.parts.clocked import Contents, Nets, comparator, flip_flops, output_pin
 from boardsim.parts.elements import GROUND, Drive, Element, Port, Signal, VoltageLaw, plus
-from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule
+from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule, TogetherRule
 from boardsim.quantities import Quantity
 
 RAIL = "rail"
@@ -83,6 +83,7 @@ class Assembly:
         self.totals: dict[tuple[str, str, PeakRule, str], list[tuple[int, Signal]]] = {}
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
         self.commons: dict[str, str] = {}
+        self.together: dict[tuple[str, str, TogetherRule], list[int]] = {}
 
     def add(self, stamp: Stamp, channel: int | None, part: str, label: str, package: str = "") -> None:
         """Add one part's stamp at its place on the board."""
@@ -103,6 +104,8 @@ class Assembly:
                 continue
             if isinstance(total.rule, HeatRule):
                 self.heats.setdefault((package, total.rule.part or part), []).append((channel, total.rule))
+            elif isinstance(total.rule, TogetherRule):
+                self.together.setdefault((package, part, total.rule), []).append(channel)
             else:
                 self.totals.setdefault((package, part, total.rule, total.unit), []).append((channel, total.signal))
 
@@ -131,6 +134,8 @@ class Assembly:
             channels = tuple(dict.fromkeys(channel for channel, _ in heated))
             whole = replace(heated[0][1], powers=powers, channels=channels)
             self.rules.append(PlacedRule(whole, None, part, package))
+        for (package, part, taken), members in self.together.items():
+            self.rules.append(PlacedRule(replace(taken, channels=tuple(members)), None, part, package))
 
 
 def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detail: Detail = "edges") -> Deck:

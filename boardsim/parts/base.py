@@ -19,7 +19,7 @@ from pydantic_core import InitErrorDetails, PydanticCustomError
 from boardsim.parts.elements import Element, Port, Probe, Signal
 from boardsim.parts.proof import Proof
 from boardsim.parts.record import Name, Record, named_like, said, shown
-from boardsim.parts.rules import HeatRule, PeakRule, Rule, linear_unknown
+from boardsim.parts.rules import HeatRule, PeakRule, Rule, TogetherRule, linear_unknown
 from boardsim.quantities import Bound, Quantity
 
 if TYPE_CHECKING:
@@ -230,14 +230,14 @@ class Total:
 
     Attributes
     ----------
-    rule : PeakRule or HeatRule
+    rule : PeakRule, HeatRule or TogetherRule
         Its quantity is that of the sum.
     signal : Signal
-        This channel's share of the sum; empty where the rule sums powers by itself.
+        This channel's share of the sum; empty where the rule sums powers or energies by itself.
     unit : str
     """
 
-    rule: PeakRule | HeatRule
+    rule: PeakRule | HeatRule | TogetherRule
     signal: Signal = ()
     unit: str = ""
 

@@ -187,6 +187,21 @@ class BreakdownRule:
 
 
 @dataclass(frozen=True)
+class TogetherRule:
+    """What the switches of one package take in avalanche at one time must stay below a limit. [J]
+
+    `limit` is the rating of the package. Where it was not given, a sum that `one` of its switches stands is allowed as well, and
+    nothing is known of more. `channels` are those that share the package.
+    """
+
+    check: str
+    limit: Limit
+    one: Limit
+    advice: str
+    channels: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
 class PullInRule:
     """At the end of every pulse the coil current must have reached the pull-in current."""
 
@@ -305,6 +320,7 @@ Rule = (
     | PulseRule
     | EnergyRule
     | BreakdownRule
+    | TogetherRule
     | PullInRule
     | ReleaseRule
     | IdleRule

@@ -26,9 +26,10 @@ from boardsim.parts.rules import (
     PulseRule,
     ReleaseRule,
     Rule,
+    TogetherRule,
 )
 from boardsim.quantities import in_units
-from boardsim.verdict.avalanche import judge_breakdown
+from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
@@ -79,7 +80,7 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
     match rule:
         case MeanRule() | PulseRule():
             return rule.quantities
-        case EnergyRule():
+        case EnergyRule() | TogetherRule():
             return ()  # a close-up counts the energy of avalanches only
         case HeatRule():
             return rule.powers[0] if len(rule.powers) == 1 and not rule.channels and finding.unit == "W" else ()
@@ -92,7 +93,7 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
 def _shape(rule: Rule, finding: Finding) -> Shape:
     if isinstance(rule, MeanRule):
         return "mean"
-    if isinstance(rule, EnergyRule):
+    if isinstance(rule, EnergyRule | TogetherRule):
         return "value"
     return "energy" if finding.unit == "J" else "value"
 
@@ -102,7 +103,7 @@ def _beside_the_point(name: str, placed: PlacedRule) -> bool:
     rule = placed.rule
     match name:
         case "breakdown voltage":
-            return not isinstance(rule, BreakdownRule)
+            return not isinstance(rule, BreakdownRule | TogetherRule)
         case "on-resistance":
             return not isinstance(rule, HeatRule | PullInRule)
         case "threshold":
@@ -143,6 +144,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield judge_pulses(rule, placed, readings.pulses[key], bench)
         case BreakdownRule() as rule:
             yield from judge_breakdown(rule, placed, readings, bench)
+        case TogetherRule() as rule:
+            yield from judge_together(rule, placed, readings, bench)
         case PullInRule() as rule:
             yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], bench)
         case ReleaseRule() as rule:
