@@ -119,7 +119,13 @@ PIECES = st.sampled_from(
 
 
 @settings(max_examples=300, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
-@given(st.one_of(st.text(max_size=120), st.lists(st.one_of(PIECES, st.text(max_size=12)), max_size=10).map("\n".join), st.binary(max_size=80)))
+@given(
+    st.one_of(
+        st.text(max_size=120),
+        st.lists(st.one_of(PIECES, st.text(max_size=12)), max_size=10).map("\n".join),
+        st.binary(max_size=80),
+    )
+)
 def test_any_text_is_read_or_refused_and_never_holds_a_command_then(tmp_path: Path, text: str | bytes) -> None:
     try:
         read(tmp_path, text.encode("utf-8", "surrogatepass") if isinstance(text, str) else text)

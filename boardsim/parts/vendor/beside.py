@@ -61,7 +61,7 @@ def held_off(
     return elements, Probe("i_off", current(meter), "A"), rule
 
 
-def stored(part: str, joules: float, of: str) -> Assumption:
-    """That the audit bounds what a vendor's part may give back by the record's figures. [J]"""
-    why = f"from the record's {of}: what the vendor's model stores is not read from its text; the audit's bound"
-    return Assumption(part, "energy that its capacitances may give back", in_units(joules, "J"), why)
+def stored(part: str, of: str) -> Assumption:
+    """That the audit bounds what a vendor's part may give back by the record's figures."""
+    why = "what the vendor's model stores is not read from its text; the audit's bound"
+    return Assumption(part, "energy that its capacitances may give back", f"by the record's {of}", why)

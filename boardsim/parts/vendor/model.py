@@ -147,14 +147,12 @@ def _device(card: ModelCard, worked: Worked, name: str, nodes: Mapping[str, str]
 
 
 def vendors_model(terminals: tuple[str, ...], *devices: str) -> Any:
-    """A field that takes a vendor's model of a part with these terminals.
+    """A field that takes a vendor's model of a part with these terminals, or none.
 
     Parameters
     ----------
     terminals : tuple of str
-        As the record's table `pins` names them.
-    devices : str
-        Types of a plain .model that fit, such as "d".
+        As the record's table `pins` names them; `devices` are types of a plain .model that fit, such as "d".
     """
 
     def fits(model: VendorsModel) -> VendorsModel:
@@ -169,7 +167,7 @@ def vendors_model(terminals: tuple[str, ...], *devices: str) -> Any:
         model.told("")  # every line of it is understood, or refused now
         return model
 
-    return Annotated[VendorsModel, AfterValidator(fits)]
+    return Annotated[VendorsModel, AfterValidator(fits)] | None
 
 
 def _refuse_pins(given: Mapping[str, str], circuit: Subcircuit, terminals: tuple[str, ...]) -> None:
