@@ -14,7 +14,9 @@ from boardsim.board.reader import library_part, read_board
 from boardsim.board.shelves import read_shelves
 from boardsim.engine.run import Engine
 from boardsim.errors import InputError
+from boardsim.firing.pattern import read_pattern
 from boardsim.parts.base import NOMINAL, Part
+from boardsim.scenarios.fire import fire_pattern
 from boardsim.scenarios.part_proofs import proof_text, prove
 
 NETLISTS = Path(__file__).parents[2] / "netlists" / "fruit-sorter"
@@ -218,3 +220,51 @@ def test_a_diodes_subcircuit_obeys_its_own_equation(tmp_path: Path, lines: str, 
     with Engine(tmp_path / "kept") as engine:
         line = prove("mine", "diode", part.proofs()[0], engine)
     assert line.value == pytest.approx(volts, rel=1e-3)
+
+
+PLAIN = """[npn-mine]
+kind = "npn"
+breakdown = "45 V"
+gain = [{ current = "100 mA", least = 60, typical = 200 }]
+saturation = [{ current = "500 mA", base = "50 mA", voltage = "0.3 V" }]
+base_emitter = [{ current = "500 mA", base = "50 mA", voltage = "0.9 V" }]
+model = { file = "plain.lib", model = "QMINE" }
+source = "made up for this test"
+
+[zener-mine]
+kind = "zener"
+voltage = "20 V"
+test_current = "50 mA"
+impedance = "2 ohm"
+model = { file = "plain.lib", model = "dmine" }
+source = "made up for this test"
+"""
+MODELS = ".model qmine npn(is=1e-14 bf=200 tnom=25)\n.model DMINE D(IS=1e-14 BV=19.9 IBV=50m RS=2 TNOM=25)\n"
+
+
+@pytest.mark.engine
+def test_plain_models_need_no_pins_and_are_read_by_the_same_circuits(tmp_path: Path) -> None:
+    """A Zener of B_V at I_BV and R_S in series reads B_V + R_S I at that current; a gain of B_F without a knee is B_F."""
+    (tmp_path / "parts.toml").write_text(PLAIN, encoding="utf-8")
+    (tmp_path / "plain.lib").write_text(MODELS, encoding="utf-8")
+    shelves = read_shelves([tmp_path])
+    with Engine(tmp_path / "kept") as engine:
+        for name, quantity, value in (("zener-mine", "Zener voltage", 20.0), ("npn-mine", "gain", 200.0)):
+            part = shelves[name].part(name)
+            assert part is not None
+            proof = next(p for p in part.proofs() if p.quantity.startswith(quantity))
+            assert prove(name, part.kind, proof, engine).value == pytest.approx(value, rel=2e-3)
+
+
+@pytest.mark.engine
+@pytest.mark.slow
+@pytest.mark.parametrize(("volts", "verdict"), [("50", "fail"), ("60.6", "pass")])
+def test_a_model_that_breaks_down_below_the_rating_is_a_finding_of_every_run(
+    tmp_path: Path, volts: str, verdict: str
+) -> None:
+    board = read_board(put(tmp_path, GOOD.replace("BV=60.6", f"BV={volts}"), USES_MINE))
+    (tmp_path / "one.toml").write_text(
+        'duration = "20 ms"\n[[pulses]]\nchannels = "0"\nstart = "2 ms"\nwidth = "10 ms"\n', encoding="utf-8"
+    )
+    result = fire_pattern(board, read_pattern(tmp_path / "one.toml", board), tmp_path / "kept")
+    assert {f.verdict for f in result.findings if f.check == "model-breakdown"} == {verdict}
