@@ -70,7 +70,7 @@ def mosfet_proofs(part: NMosfet) -> tuple[Proof, ...]:
     ramp reaches the test voltage. Charges: a constant current into the gate, the drain loaded with a constant current
     and held at the test voltage by an ideal diode; the plateau of V_GS reaches from where V_DS begins to fall to where
     V_GS rises again (method of JESD24-2, from memory). Transconductance: the difference of two devices in saturation whose
-    gates are a hundredth of the overdrive below and above. Body diode: a current from source to drain, gate at source.
+    gates are a hundredth of the overdrive below and above (of our own model only: a vendor's has another threshold). Body diode: a current from source to drain, gate at source.
 
     Times: resistive load, delay and edge together, since how the whole divides hangs on the knee of a curved edge; from 10 %
     (90 %) of the generator's edge to 10 % (90 %) of the drain's supply left. The generator's edges are part of the circuit,
