@@ -106,6 +106,12 @@ class _Shelf:
                 shelf.update({k: v for k, v in table.items() if isinstance(v, dict)})
         self.found: dict[tuple[str, str], Part] = {}
         self.name = file.path.name
+        self.folder = file.path.parent
+
+    @property
+    def context(self) -> dict[str, Any]:
+        """What records of the file itself need to be read; `folder` is where names of model files count from."""
+        return {"find": self.find, "kind_of": self.kind_of, "origin": self.origin, "folder": self.folder}
 
     def origin(self, field: str | None) -> Origin:
         """Where the numbers of the file itself come from."""
@@ -134,9 +140,10 @@ class _Shelf:
         kind = " or ".join(classes)
         mine: Mapping[str, Any] = self.coils if cls.role == "coil" else self.local
         record: Mapping[str, Any] | None = mine.get(name)
-        context: dict[str, Any] = {"find": self.find, "kind_of": self.kind_of, "origin": self.origin}
+        context = self.context
         if record is None and (entry := self.shelves.get(name)) is not None:
-            context["origin"], record = entry.origin, entry.body
+            context |= {"origin": entry.origin, "folder": entry.folder}
+            record = entry.body
         if record is None:
             same = [n for n, e in self.shelves.items() if e.kind in classes and n not in mine]
             same += [n for n, r in mine.items() if r.get("kind", "coil") in classes]
@@ -192,9 +199,8 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     if "pulses" in file.data and "supply" not in file.data:
         raise InputError([file.problem((), "is a pattern; name the board first, then the pattern")])
     shelf = _Shelf(file, read_shelves(libraries, path))
-    context = {"find": shelf.find, "kind_of": shelf.kind_of, "origin": shelf.origin}
     try:
-        board = BoardFile.model_validate(file.data, context=context)
+        board = BoardFile.model_validate(file.data, context=shelf.context)
     except ValidationError as err:
         raise InputError(problems_of(err, file)) from None
     problems: list[Problem] = []

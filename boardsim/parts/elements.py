@@ -54,6 +54,7 @@ class Junction:
     anode: str
     cathode: str
     model: Model
+    area: float = 1.0
 
 
 @dataclass(frozen=True)
@@ -76,6 +77,20 @@ class Bipolar:
     base: str
     emitter: str
     model: Model
+    area: float = 1.0
+
+
+@dataclass(frozen=True)
+class Mosfet:
+    """A MOSFET with a bulk (ngspice's levels 1 and 3); `size` holds L, W [m] and what else SPICE gives one."""
+
+    name: str
+    drain: str
+    gate: str
+    source: str
+    bulk: str
+    model: Model
+    size: tuple[tuple[str, float], ...]
 
 
 @dataclass(frozen=True)
@@ -175,6 +190,15 @@ class FlipFlop:
     start: bool
 
 
+@dataclass(frozen=True)
+class VendorsPart:
+    """A part whose model a vendor wrote: the plain elements that it comes to, and the file, for messages and decks."""
+
+    name: str
+    file: str
+    elements: tuple[Element, ...]
+
+
 Element = (
     Resistor
     | Inductor
@@ -182,6 +206,8 @@ Element = (
     | Junction
     | PowerMosfet
     | Bipolar
+    | Mosfet
+    | VendorsPart
     | Ammeter
     | Drive
     | CurrentDrive
@@ -197,6 +223,7 @@ Signal = tuple[tuple[float, str], ...]
 """A linear combination of saved vectors: ((coefficient, "v(node)" or "i(element)"), ...)."""
 
 GROUND = "0"
+MODEL_FILE = "with a vendor's model read from"  # in a comment of a deck, before the name of the file
 
 
 def voltage(a: str, b: str = GROUND) -> Signal:

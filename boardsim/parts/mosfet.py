@@ -32,6 +32,7 @@ from boardsim.parts.temperature import (
     refuse_drift,
     reverse_current,
 )
+from boardsim.parts.vendor.model import A_MODEL, vendors_model
 from boardsim.quantities import (
     CAPACITANCE,
     CHARGE,
@@ -164,6 +165,7 @@ class NMosfet(Part):
     leakage: tuple[LeakagePoint, ...] = Field(
         (), description="zero gate voltage drain current at the rated voltage, at one or two temperatures"
     )
+    model: vendors_model(("drain", "gate", "source"), "vdmos", "nmos") = Field(None, description=A_MODEL)  # type: ignore[valid-type]
 
     @model_validator(mode="after")
     def _coherent(self) -> NMosfet:
@@ -255,11 +257,8 @@ class NMosfet(Part):
 
     def implied(self) -> dict[str, Quantity]:
         """What follows from its numbers, or is assumed for want of one."""
-        return {
-            "threshold drift": self.drift_of_threshold,
-            "breakdown drift": self.drift_of_breakdown,
-            "on resistance growth": self.growth,
-        }
+        found = {"breakdown drift": self.drift_of_breakdown, "on resistance growth": self.growth}
+        return found if self.model is not None else {"threshold drift": self.drift_of_threshold, **found}
 
     def at_temperature(self, breakdown: float, t: float, spread: float = 1.0, shift: float = 0.0) -> dict[str, float]:
         """Parameters of ngspice's VDMOS model at a junction temperature.

@@ -50,7 +50,7 @@ class ZenerClamp(Part):
 
     def blocks(self, volts: float) -> bool:
         """Whether its lowest voltage is above that of the rail, which lies across it while the coil is off. [V]"""
-        return bool(self.zener.clamping.min > volts)
+        return bool(self.zener.lowest > volts)
 
     def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
         """The clamp from node `a` to node `b`: the switch's ends, in the direction of its current."""

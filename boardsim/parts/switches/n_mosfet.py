@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from boardsim.parts.base import T_MODEL, Corner, Part, Stamp, listed, named_part
+from boardsim.parts.base import T_MODEL, Assumption, Corner, Part, Stamp, listed, named_part
 from boardsim.parts.elements import (
     GROUND,
     Ammeter,
@@ -24,6 +24,8 @@ from boardsim.parts.linear import linear_rules
 from boardsim.parts.mosfet import NMosfet
 from boardsim.parts.rules import BreakdownRule, FloorRule, Limit, MeanRule, PeakRule, Rule
 from boardsim.parts.temperature import grown, reverse_current
+from boardsim.parts.vendor.beside import held_off, stored
+from boardsim.parts.vendor.model import typical
 from boardsim.quantities import (
     POSITIVE_RESISTANCE,
     RESISTANCE,
@@ -52,7 +54,8 @@ class NMosfetStage(Part):
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this stage: where the transistor breaks down, its on-resistance and its threshold."""
         part: NMosfet = self.part
-        return {"breakdown": part.breakdown, "on_resistance": part.spread, "threshold": part.threshold}
+        varied = {"breakdown": part.breakdown, "on_resistance": part.spread, "threshold": part.threshold}
+        return {key: typical(q, part.model) for key, q in varied.items()}
 
     def steady_input(self, volts: float, resistance: float) -> float:
         """Through gate resistor and pull-down; a gate by itself takes none. [V], [ohm] -> [A]"""
@@ -96,13 +99,17 @@ class NMosfetStage(Part):
         parameters = part.at_temperature(bv, corner.junction, corner.take(part.spread, "on_resistance"), shift)
         gate, inside = self.control(name), f"{name}_di"
         meter = Ammeter(f"{name}_d", load, inside)
+        vendors = None if part.model is None else self._vendors(name, inside, gate, corner)
         r_gate = max(self.gate.typ, 1e-2)
         into_gate = scaled(1 / r_gate, voltage(pin, gate))
         elements: list[Element] = [
             meter,
             PowerMosfet(name, inside, gate, GROUND, Model(f"{name}_m", "VDMOS", parameters)),
         ]
-        if part.leakage:
+        if vendors is not None:
+            elements[1:] = vendors.elements
+            bv = self._rating(corner)  # where the model breaks down is not known: what is above the rating counts
+        elif part.leakage:
             reverse = reverse_current(part.leakages(), corner.junction)
             elements.append(Resistor(f"{name}_leak", inside, GROUND, part.breakdown.typ / reverse))
         network: list[Element] = [Resistor(f"{name}_gate", pin, gate, r_gate)]
@@ -124,6 +131,7 @@ class NMosfetStage(Part):
                 Probe("i_d", current(meter), "A"),
                 Probe("v_gs", voltage(gate), "V"),
                 Probe("i_g", into_gate, "A"),
+                *(vendors.probes if vendors is not None else ()),
             ),
             ports=(Port("switch", (("v_ds", "i_d"), ("v_gs", "i_g")), holds=holds),),
             rules=(
@@ -183,16 +191,9 @@ class NMosfetStage(Part):
                     growing=("i_d", "i_d"),
                     factor=self._highest_resistance(corner),
                 ),
+                *(vendors.rules if vendors is not None else ()),
             ),
-            assumptions=listed(
-                "switch",
-                gate_resistance=part.gate_resistance,
-                capacitance_voltage=part.capacitance_voltage,
-                threshold_current=part.threshold_current,
-                drift_of_the_threshold=part.drift_of_threshold,
-                drift_of_the_breakdown=part.drift_of_breakdown,
-                growth_of_the_on_resistance=part.growth,
-            ),
+            assumptions=self._assumed(),
         )
 
     def _highest_resistance(self, corner: Corner) -> float:
@@ -200,6 +201,40 @@ class NMosfetStage(Part):
         part: NMosfet = self.part
         cold = max(p.value.typ for p in part.on_resistance if p.kelvin == T_MODEL)
         return grown(cold * corner.take(part.spread, "on_resistance"), part.growth.typ, corner.junction)
+
+    def _assumed(self) -> tuple[Assumption, ...]:
+        """What was supplied; with a vendor's model only what judges or audits it, and not what would shape ours."""
+        part: NMosfet = self.part
+        shaping = ("gate_resistance", "threshold_current", "drift_of_the_threshold") if part.model is not None else ()
+        numbers = {
+            "gate_resistance": part.gate_resistance,
+            "capacitance_voltage": part.capacitance_voltage,
+            "threshold_current": part.threshold_current,
+            "drift_of_the_threshold": part.drift_of_threshold,
+            "drift_of_the_breakdown": part.drift_of_breakdown,
+            "growth_of_the_on_resistance": part.growth,
+        }
+        found = listed("switch", **{name: q for name, q in numbers.items() if name not in shaping})
+        if part.model is None:
+            return found
+        return (*found, *part.model.told("switch"), stored("switch", "C_iss, C_oss and Q_gd"))
+
+    def _vendors(self, name: str, inside: str, gate: str, corner: Corner) -> Stamp:
+        """The vendor's model in the place of ours, and one beside it that shows whether it stands its rated voltage."""
+        part: NMosfet = self.part
+        assert part.model is not None
+        device = part.model.part(name, {"drain": inside, "gate": gate, "source": GROUND}, corner.junction)
+        at = f"{name}_off"
+        elements, probe, rule = held_off(
+            part.model,
+            name,
+            {"drain": at, "gate": GROUND, "source": GROUND},
+            at,
+            self._rating(corner),
+            str(part.breakdown.origin),
+            corner.junction,
+        )
+        return Stamp(elements=(device, *elements), probes=(probe,), rules=(rule,))
 
     def _rating(self, corner: Corner) -> float:
         """The rated voltage, which is given for 25 degC and above: a colder transistor breaks down earlier. [V]"""
