@@ -83,7 +83,7 @@ class Assembly:
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
 
     def add(self, stamp: Stamp, channel: int | None, part: str, label: str, package: str = "") -> None:
-        """Add one part's stamp at its place on the board."""
+        """Add one part's stamp at its place on the board, and those of what is inside it."""
         self.builder.add(stamp.elements)
         for probe in stamp.probes:
             self.signals[channel, probe.quantity] = probe.signal
@@ -101,6 +101,8 @@ class Assembly:
                 self.heats.setdefault((package, total.rule.part or part), []).append((channel, total.rule))
             else:
                 self.totals.setdefault((package, part, total.rule, total.unit), []).append((channel, total.signal))
+        for name, inner in stamp.inside:
+            self.add(inner, channel, name, label, package)
 
     def add_totals(self) -> None:
         """The sums over each package, and their rules."""

@@ -221,6 +221,8 @@ class Stamp:
     totals: tuple[Total, ...] = ()
     rest: Mapping[str, float] = field(default_factory=dict)
     """Node voltages that a run has to begin with. [V]"""
+    inside: tuple[tuple[str, Stamp], ...] = ()
+    """Further components at the same place, each under its own name, such as the second transistor of a half bridge."""
 
 
 @dataclass(frozen=True)

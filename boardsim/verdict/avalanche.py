@@ -20,7 +20,7 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     """Below breakdown by voltage, in avalanche by current, energy and repetition."""
     assert placed.channel is not None  # the rule of a channel's switch
     value, at = readings.high[placed.channel, rule.voltage]
-    events = readings.avalanches[placed.channel]
+    events = readings.avalanches[placed.channel, rule.voltage]
     if not events:
         yield upper(
             rule.what,

@@ -77,7 +77,7 @@ class Readings:
     lowest : (value, time) of the rail
     ceiling : (time at the ceiling, since when)
     pull_in, release : mapping of channel to (times, currents)
-    avalanches : mapping of channel to list of Avalanche
+    avalanches : mapping of (channel, voltage) to list of Avalanche
     drive : mapping of (channel, drive, current) to (times, drives, currents), at the ends of pulses
     guarded : tuple of Dip
         Below the level plus the guard band.
@@ -102,7 +102,7 @@ class Readings:
     ceiling: tuple[float, float | None]
     pull_in: Mapping[int, tuple[Floats, Floats]]
     release: Mapping[int, tuple[Floats, Floats]]
-    avalanches: Mapping[int, tuple[Avalanche, ...]]
+    avalanches: Mapping[tuple[int, str], tuple[Avalanche, ...]]
     drive: Mapping[tuple[int, str, str], tuple[Floats, Floats, Floats]]
     ports: tuple[PortReading, ...]
     guarded: tuple[Dip, ...]
@@ -184,7 +184,9 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for c, r in rules
         if moving and isinstance(r, FloorRule) and c is not None
     }
-    avalanches = {c: (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None}
+    avalanches = {
+        (c, r.voltage): (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None
+    }
     asked = dict.fromkeys(pulse_key(c, r) for c, r in rules)
     pulses = {of: Pulses(of[2]) for of in asked if of is not None}
     fallen = {r: _below(r) for _, r in rules if isinstance(r, FallRule)}
@@ -219,7 +221,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
                 sample.feed(t, y[row[c, "i_coil"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
-        for c, (watch, rule) in avalanches.items():
+        for (c, _), (watch, rule) in avalanches.items():
             watch.feed(t, y[row[c, rule.voltage]], y[row[c, rule.current]])
         for (channel, qs, _), watched in pulses.items():
             watched.feed(t, np.prod([y[row[channel, q]] for q in qs], axis=0))
@@ -242,7 +244,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         (ceiling.total, ceiling.first),
         {c: (s.times, s.values) for c, s in pull_in.items()},
         {c: (s.times, s.values) for c, s in release.items()},
-        {c: tuple(w.all()) for c, (w, _) in avalanches.items()},
+        {key: tuple(w.all()) for key, (w, _) in avalanches.items()},
         {
             (c, r.quantity, r.current): (
                 drive[c, r.quantity].times,
