@@ -74,6 +74,13 @@ class Part(Record):
         """The node of a switch's control terminal in its stamp of this name, such as its gate; empty where it has none."""
         return ""
 
+    def follows_within(self) -> float:
+        """How long a switch takes to follow an edge at its input, where that is long against the edge; else 0.
+
+        A run looks closely for as long after each edge. [s]
+        """
+        return 0.0
+
     def package_of(self, place: int, output: int) -> int:
         """Which of its packages a channel is in: `place` counts the channels of its range, `output` is the register's.
 

@@ -120,6 +120,7 @@ def mosfet_stamp(part: Mosfet, name: str, place: Place, into_gate: Signal, corne
                 Limit.of(part.avalanche_current, "avalanche current", "A", "current"),
                 Limit.of(part.avalanche_energy, "single-pulse avalanche energy", "J", "energy"),
                 Limit.of(part.avalanche_repetitive, "repetitive avalanche energy", "J", "energy"),
+                of="" if place.who == "switch" else f" of the {place.who}",
             ),
             *_gate_rules(part, place),
             *_current_rules(part, place),

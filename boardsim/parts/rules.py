@@ -133,7 +133,7 @@ class BreakdownRule:
     """The drain voltage of a switch: below breakdown against the rating, in avalanche by current and energy.
 
     `single`, `repetitive` [J] and `current` [A] are the avalanche ratings; `breakdown` [V] is where the model of
-    this run conducts.
+    this run conducts. `of` says whose, for people, where a channel has several switches.
     """
 
     check: str
@@ -145,6 +145,7 @@ class BreakdownRule:
     single: Limit
     repetitive: Limit
     what: str = "drain-source voltage"
+    of: str = ""
 
 
 @dataclass(frozen=True)
