@@ -249,6 +249,22 @@ class FallRule:
 
 
 @dataclass(frozen=True)
+class ShootThroughRule:
+    """The two transistors of a leg must not conduct at once.
+
+    `gates` and `currents` are quantities of the high and the low one, `turn_on` the gate voltages at which they begin to
+    conduct [V]; `dead_time` is the driver's [s], and `source` where that comes from.
+    """
+
+    check: str
+    gates: tuple[str, str]
+    currents: tuple[str, str]
+    turn_on: tuple[float, float]
+    dead_time: float
+    source: str
+
+
+@dataclass(frozen=True)
 class CeilingRule:
     """A supply's current must stay below its ceiling."""
 
@@ -274,4 +290,5 @@ Rule = (
     | LeastRule
     | FallRule
     | CeilingRule
+    | ShootThroughRule
 )

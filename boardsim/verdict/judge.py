@@ -26,10 +26,12 @@ from boardsim.parts.rules import (
     PulseRule,
     ReleaseRule,
     Rule,
+    ShootThroughRule,
 )
 from boardsim.quantities import in_units
 from boardsim.verdict.avalanche import judge_breakdown
 from boardsim.verdict.bench import Bench, upper
+from boardsim.verdict.bridges import judge_leg
 from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
@@ -78,6 +80,8 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
     match rule:
         case MeanRule() | PulseRule():
             return rule.quantities
+        case ShootThroughRule():
+            return ()
         case EnergyRule():
             return ()  # a close-up counts the energy of avalanches only
         case HeatRule():
@@ -154,6 +158,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield judge_least(rule, placed, readings, bench)
         case FallRule() as rule:
             yield judge_fall(rule, placed, readings, firing, bench)
+        case ShootThroughRule() as rule:
+            if (leg := judge_leg(rule, placed, readings.legs[_channel(placed)], bench)) is not None:
+                yield leg
         case CeilingRule() as rule:
             yield judge_ceiling(rule, placed, readings, firing, bench)
 
