@@ -49,7 +49,7 @@ class Builder:
 
     def __init__(self) -> None:
         self._circuit = Circuit(TITLE)
-        self._models: dict[tuple[str, tuple[tuple[str, float], ...]], str] = {}
+        self._models: dict[tuple[str, tuple[str, ...], tuple[tuple[str, float], ...]], str] = {}
         self._vendors: set[str] = set()
 
     def add(self, elements: Iterable[Element]) -> None:
@@ -120,11 +120,15 @@ class Builder:
         self._circuit.raw_spice += f"a{e.name} {nodes} {self._model(model)}\n"
 
     def _model(self, model: Model) -> str:
-        key = (model.type, tuple(sorted(model.parameters.items())))
+        key = (model.type, model.flags, tuple(sorted(model.parameters.items())))
         if key not in self._models:
             # A name that contains "vdmos" sends ngspice 39 into an endless loop while it reads the deck.
             self._models[key] = f"model{len(self._models)}"
-            self._circuit.model(self._models[key], model.type, **model.parameters)
+            if model.flags:  # PySpice writes every parameter with a value
+                inside = " ".join((*model.flags, *(f"{name}={value!r}" for name, value in model.parameters.items())))
+                self._circuit.raw_spice += f".model {self._models[key]} {model.type} ({inside})\n"
+            else:
+                self._circuit.model(self._models[key], model.type, **model.parameters)
         return self._models[key]
 
     def netlist(self) -> str:

@@ -86,6 +86,13 @@ class Part(Record):
         """What judges a switch that takes a coil's energy in its linear region: a limit that nobody knows unless a kind says."""
         return (linear_unknown(),)
 
+    def follows_within(self) -> float:
+        """How long a switch takes to follow an edge at its input, where that is long against the edge; else 0.
+
+        A run looks closely for as long after each edge. [s]
+        """
+        return 0.0
+
     def package_of(self, place: int, output: int) -> int:
         """Which of its packages a channel is in: `place` counts the channels of its range, `output` is the register's.
 
@@ -256,6 +263,8 @@ class Stamp:
     """Node voltages that a run has to begin with. [V]"""
     joins: tuple[tuple[str, Signal], ...] = ()
     """What is added to quantities of the same channel's other parts, such as a clamp's current to that into the gate."""
+    inside: tuple[tuple[str, Stamp], ...] = ()
+    """Further components at the same place, each under its own name, such as the second transistor of a half bridge."""
 
 
 @dataclass(frozen=True)

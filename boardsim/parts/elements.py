@@ -39,11 +39,12 @@ class Capacitor:
 
 @dataclass(frozen=True)
 class Model:
-    """A .model line: device type and parameters in SI units, ngspice's own names."""
+    """A .model line: device type, parameters in SI units, and flags that stand without a value; ngspice's own names."""
 
     name: str
     type: str
     parameters: Mapping[str, float]
+    flags: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)

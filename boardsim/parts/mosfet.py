@@ -1,15 +1,16 @@
-"""An N-channel power MOSFET, from its datasheet's typical figures."""
+"""A power MOSFET of either polarity, from its datasheet's typical figures; the N-channel one."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
-from typing import Annotated, ClassVar, Literal
+from collections.abc import Mapping, Sequence
+from typing import Annotated, ClassVar, Literal, Self
 
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import T_MODEL, Part
+from boardsim.parts.elements import Model
 from boardsim.parts.linear import ImpedancePoint, SafeAreaPoint, refuse_incoherent
 from boardsim.parts.mosfet_channel import (
     BODY_EMISSION,
@@ -95,11 +96,14 @@ class SwitchingTimes(Record):
     )
 
 
-class NMosfet(Part):
-    """An enhancement N-channel power MOSFET with its ratings. Typical figures shape the model; ratings judge it."""
+class Mosfet(Part):
+    """An enhancement power MOSFET with its ratings. Typical figures shape the model; ratings judge it.
 
-    role: ClassVar[str] = "component"
-    kind: Literal["n-mosfet"] = "n-mosfet"
+    All numbers are those of an N-channel part, or magnitudes: a P-channel part is its mirror image.
+    """
+
+    mirrored: ClassVar[bool] = False
+    """Whether voltages and currents have the opposite sign, as those of a P-channel part."""
     breakdown: Annotated[Quantity, VOLTAGE]
     gate_rating: Annotated[Quantity, VOLTAGE] | None = None
     continuous_current: Annotated[Quantity, CURRENT] | None = None
@@ -168,7 +172,7 @@ class NMosfet(Part):
     model: vendors_model(("drain", "gate", "source"), "vdmos", "nmos") = Field(None, description=A_MODEL)  # type: ignore[valid-type]
 
     @model_validator(mode="after")
-    def _coherent(self) -> NMosfet:
+    def _coherent(self) -> Self:
         for needs, needed in (
             ("transconductance", ("transconductance_current", "transconductance_voltage")),
             ("source_drain", ("source_drain_current",)),
@@ -209,6 +213,22 @@ class NMosfet(Part):
     def proofs(self) -> tuple[Proof, ...]:
         """What its datasheet prints, measured on the model as the datasheet measures it."""
         return mosfet_proofs(self)
+
+    def card(self, name: str, parameters: Mapping[str, float]) -> Model:
+        """ngspice's model of these parameters, in this part's polarity.
+
+        Notes
+        -----
+        With the flag `pchan` ngspice's VDMOS takes all voltages and currents with the opposite sign; its threshold is then
+        written as a negative number, all else as for an N-channel part.
+
+        References
+        ----------
+        ngspice manual, VDMOS model, parameter pchan.
+        """
+        if not self.mirrored:
+            return Model(name, "VDMOS", parameters)
+        return Model(name, "VDMOS", {**parameters, "VTO": -parameters["VTO"]}, ("pchan",))
 
     def leakages(self) -> list[tuple[float, float]]:
         """Temperatures and zero gate voltage drain currents that were given, temperatures rising. [K], [A]"""
@@ -425,6 +445,13 @@ class NMosfet(Part):
             return Channel(k_p, r_d, 0.0)
         wanted = mobility(k_p, v_to, r_d + before.fall / k_p, g.typ, at.typ)
         return Channel(k_p, r_d, 0.5 * (before.fall + wanted))
+
+
+class NMosfet(Mosfet):
+    """An N-channel part."""
+
+    role: ClassVar[str] = "component"
+    kind: Literal["n-mosfet"] = "n-mosfet"
 
 
 def overdrive(v_gs: float, v_to: float) -> float:

@@ -172,7 +172,7 @@ class BreakdownRule:
     """The drain voltage of a switch: below breakdown against the rating, in avalanche by current and energy.
 
     `single`, `repetitive` [J] and `current` [A] are the avalanche ratings; `breakdown` [V] is where the model of
-    this run conducts.
+    this run conducts. `of` says whose, for people, where a channel has several switches.
     """
 
     check: str
@@ -184,6 +184,7 @@ class BreakdownRule:
     single: Limit
     repetitive: Limit
     what: str = "drain-source voltage"
+    of: str = ""
 
 
 @dataclass(frozen=True)
@@ -191,13 +192,14 @@ class TogetherRule:
     """What the switches of one package take in avalanche at one time must stay below a limit. [J]
 
     `limit` is the rating of the package. Where it was not given, a sum that `one` of its switches stands is allowed as well, and
-    nothing is known of more. `channels` are those that share the package.
+    nothing is known of more. `channels` are those that share the package, `voltage` the quantity whose avalanche is meant.
     """
 
     check: str
     limit: Limit
     one: Limit
     advice: str
+    voltage: str = "v_ds"
     channels: tuple[int, ...] = ()
 
 
@@ -302,6 +304,22 @@ class FallRule:
 
 
 @dataclass(frozen=True)
+class ShootThroughRule:
+    """The two transistors of a leg must not conduct at once.
+
+    `gates` and `currents` are quantities of the high and the low one, `turn_on` the gate voltages at which they begin to
+    conduct [V]; `dead_time` is the driver's [s], and `source` where that comes from.
+    """
+
+    check: str
+    gates: tuple[str, str]
+    currents: tuple[str, str]
+    turn_on: tuple[float, float]
+    dead_time: float
+    source: str
+
+
+@dataclass(frozen=True)
 class CeilingRule:
     """A supply's current must stay below its ceiling."""
 
@@ -328,4 +346,5 @@ Rule = (
     | LeastRule
     | FallRule
     | CeilingRule
+    | ShootThroughRule
 )

@@ -20,10 +20,10 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     """Below breakdown by voltage, in avalanche by current, energy and repetition."""
     assert placed.channel is not None  # the rule of a channel's switch
     value, at = readings.high[placed.channel, rule.voltage]
-    events = readings.avalanches[placed.channel]
+    events = readings.avalanches[placed.channel, rule.voltage]
     if not events:
         yield upper(
-            rule.what,
+            f"{rule.what}{rule.of}",
             rule.rating,
             "destroy",
             placed,
@@ -39,7 +39,7 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     if all(limit.value is None for limit in (rule.avalanche_current, rule.single, rule.repetitive)):
         yield Finding(
             rule.check,
-            "avalanche energy",
+            f"avalanche energy{rule.of}",
             placed.part,
             placed.channel,
             placed.label,
@@ -57,7 +57,7 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
         return
     current = max(events, key=lambda e: e.current)
     yield upper(
-        "avalanche current",
+        f"avalanche current{rule.of}",
         rule.avalanche_current,
         "destroy",
         placed,
@@ -80,7 +80,7 @@ def _avalanche_energy(
 ) -> Iterator[Finding]:
     """A single-pulse rating covers one pulse; repeated avalanche needs a repetitive rating."""
     single = upper(
-        "avalanche energy",
+        f"avalanche energy{rule.of}",
         rule.single,
         "destroy",
         placed,
@@ -108,7 +108,7 @@ def _avalanche_energy(
         )
         return
     yield upper(
-        "avalanche energy",
+        f"avalanche energy{rule.of}",
         rule.repetitive,
         "destroy",
         placed,
@@ -133,7 +133,7 @@ def judge_together(rule: TogetherRule, placed: PlacedRule, readings: Readings, b
     found = sorted(
         (event.start, event.start + event.lasting, event.energy, c)
         for c in rule.channels
-        for event in readings.avalanches[c]
+        for event in readings.avalanches[c, rule.voltage]
     )
     groups: list[tuple[float, float, float, frozenset[int]]] = []
     for start, stop, energy, channel in found:

@@ -26,11 +26,13 @@ from boardsim.parts.rules import (
     PulseRule,
     ReleaseRule,
     Rule,
+    ShootThroughRule,
     TogetherRule,
 )
 from boardsim.quantities import in_units
 from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
+from boardsim.verdict.bridges import judge_leg
 from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
@@ -80,6 +82,8 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
     match rule:
         case MeanRule() | PulseRule():
             return rule.quantities
+        case ShootThroughRule():
+            return ()
         case EnergyRule() | TogetherRule():
             return ()  # a close-up counts the energy of avalanches only
         case HeatRule():
@@ -158,6 +162,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield judge_least(rule, placed, readings, bench)
         case FallRule() as rule:
             yield judge_fall(rule, placed, readings, firing, bench)
+        case ShootThroughRule() as rule:
+            if (leg := judge_leg(rule, placed, readings.legs[_channel(placed)], bench)) is not None:
+                yield leg
         case CeilingRule() as rule:
             yield judge_ceiling(rule, placed, readings, firing, bench)
 

@@ -28,7 +28,9 @@ from boardsim.parts.rules import (
     PulseRule,
     ReleaseRule,
     Rule,
+    ShootThroughRule,
 )
+from boardsim.verdict.bridges import Leg
 from boardsim.verdict.findings import Envelope, Floats
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.watch import (
@@ -77,7 +79,7 @@ class Readings:
     lowest : (value, time) of the rail
     ceiling : (time at the ceiling, since when)
     pull_in, release : mapping of channel to (times, currents)
-    avalanches : mapping of channel to list of Avalanche
+    avalanches : mapping of (channel, voltage) to list of Avalanche
     drive : mapping of (channel, drive, current) to (times, drives, currents), at the ends of pulses
     guarded : tuple of Dip
         Below the level plus the guard band.
@@ -93,6 +95,8 @@ class Readings:
         Lowest logic rail at the beginning and the latch edge of any register frame; None where it is no node, or no frame is known. [V]
     at_ends : mapping of (channel, quantity) to (times, values), at the ends of pulses
         What must reach a limit in every pulse, on boards whose logic rail moves: the best pulse then does not speak for all.
+    legs : mapping of channel to Leg
+        What the two transistors of a bridge's leg do.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -102,7 +106,7 @@ class Readings:
     ceiling: tuple[float, float | None]
     pull_in: Mapping[int, tuple[Floats, Floats]]
     release: Mapping[int, tuple[Floats, Floats]]
-    avalanches: Mapping[int, tuple[Avalanche, ...]]
+    avalanches: Mapping[tuple[int, str], tuple[Avalanche, ...]]
     drive: Mapping[tuple[int, str, str], tuple[Floats, Floats, Floats]]
     ports: tuple[PortReading, ...]
     guarded: tuple[Dip, ...]
@@ -113,6 +117,7 @@ class Readings:
     falls: Mapping[FallRule, tuple[tuple[Dip, ...], tuple[Dip, ...]]] = field(default_factory=dict)
     framed: float | None = None
     at_ends: Mapping[tuple[int, str], tuple[Floats, Floats]] = field(default_factory=dict)
+    legs: Mapping[int, Leg] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -184,7 +189,10 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for c, r in rules
         if moving and isinstance(r, FloorRule) and c is not None
     }
-    avalanches = {c: (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None}
+    avalanches = {
+        (c, r.voltage): (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None
+    }
+    legs = {c: (Leg(r.turn_on), r) for c, r in rules if isinstance(r, ShootThroughRule) and c is not None}
     asked = dict.fromkeys(pulse_key(c, r) for c, r in rules)
     pulses = {of: Pulses(of[2]) for of in asked if of is not None}
     fallen = {r: _below(r) for _, r in rules if isinstance(r, FallRule)}
@@ -219,8 +227,10 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
                 sample.feed(t, y[row[c, "i_coil"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
-        for c, (watch, rule) in avalanches.items():
+        for (c, _), (watch, rule) in avalanches.items():
             watch.feed(t, y[row[c, rule.voltage]], y[row[c, rule.current]])
+        for c, (leg, shoot) in legs.items():
+            leg.feed(t, *(y[[row[c, q] for q in qs]] for qs in (shoot.gates, shoot.currents)))
         for (channel, qs, _), watched in pulses.items():
             watched.feed(t, np.prod([y[row[channel, q]] for q in qs], axis=0))
         _feed_falls(falls, deck, row, t, y)
@@ -242,7 +252,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         (ceiling.total, ceiling.first),
         {c: (s.times, s.values) for c, s in pull_in.items()},
         {c: (s.times, s.values) for c, s in release.items()},
-        {c: tuple(w.all()) for c, (w, _) in avalanches.items()},
+        {key: tuple(w.all()) for key, (w, _) in avalanches.items()},
         {
             (c, r.quantity, r.current): (
                 drive[c, r.quantity].times,
@@ -275,6 +285,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {rule: (tuple(own.all()), tuple(near.all())) for rule, (own, near) in fallen.items()},
         float(framed.values.min()) if framed is not None and len(framed.values) else None,
         {key: (sample.times, sample.values) for key, sample in at_ends.items()},
+        {c: leg for c, (leg, _) in legs.items()},
     )
 
 
