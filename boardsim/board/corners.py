@@ -185,7 +185,7 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
             part,
             name.replace("_", " "),
             in_units(q.typ, q.unit),
-            "its tolerance is not varied; the typical value is used",
+            "its tolerance is not varied; the typical value, or what a vendor's model of the part has, is used",
         ): None
         for part, record in parts
         for name, q in _quantities(record)

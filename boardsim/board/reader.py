@@ -10,6 +10,7 @@ from typing import Any
 
 from pydantic import ValidationError
 
+from boardsim.board.chain_outputs import refuse_wrong_outputs
 from boardsim.board.power_up import PowerUpTable
 from boardsim.board.ranges import read_range, write_range
 from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits
@@ -105,6 +106,12 @@ class _Shelf:
                 shelf.update({k: v for k, v in table.items() if isinstance(v, dict)})
         self.found: dict[tuple[str, str], Part] = {}
         self.name = file.path.name
+        self.folder = file.path.parent
+
+    @property
+    def context(self) -> dict[str, Any]:
+        """What records of the file itself need to be read; `folder` is where names of model files count from."""
+        return {"find": self.find, "kind_of": self.kind_of, "origin": self.origin, "folder": self.folder}
 
     def origin(self, field: str | None) -> Origin:
         """Where the numbers of the file itself come from."""
@@ -132,29 +139,31 @@ class _Shelf:
         classes = {c.model_fields["kind"].default: c for c in (cls, *others)}
         kind = " or ".join(classes)
         mine: Mapping[str, Any] = self.coils if cls.role == "coil" else self.local
-        if (kind, name) not in self.found:
-            record: Mapping[str, Any] | None = mine.get(name)
-            context: dict[str, Any] = {"find": self.find, "kind_of": self.kind_of, "origin": self.origin}
-            if record is None and (entry := self.shelves.get(name)) is not None:
-                context["origin"], record = entry.origin, entry.body
-            if record is None:
-                same = [n for n, e in self.shelves.items() if e.kind in classes and n not in mine]
-                same += [n for n, r in mine.items() if r.get("kind", "coil") in classes]
-                known = ", ".join(sorted(same)) or "none"
-                raise said(
-                    f'{kind} "{shortened(name)}" is neither in this file nor in the library'
-                    f"{nearest(shortened(name), same)}; known: {known}"
-                )
-            named = record.get("kind", next(iter(classes)))
-            wanted = classes.get(named) if isinstance(named, str) else None
-            if wanted is None:
-                found = named_like(shortened(str(record["kind"])) or "part without a kind")
-                raise said(f'"{name}" is {found}; {named_like(kind)} is needed here')
+        record: Mapping[str, Any] | None = mine.get(name)
+        context = self.context
+        if record is None and (entry := self.shelves.get(name)) is not None:
+            context |= {"origin": entry.origin, "folder": entry.folder}
+            record = entry.body
+        if record is None:
+            same = [n for n, e in self.shelves.items() if e.kind in classes and n not in mine]
+            same += [n for n, r in mine.items() if r.get("kind", "coil") in classes]
+            known = ", ".join(sorted(same)) or "none"
+            raise said(
+                f'{kind} "{shortened(name)}" is neither in this file nor in the library'
+                f"{nearest(shortened(name), same)}; known: {known}"
+            )
+        named = record.get("kind", next(iter(classes)))
+        wanted = classes.get(named) if isinstance(named, str) else None
+        if wanted is None:
+            found = named_like(shortened(str(record["kind"])) or "part without a kind")
+            raise said(f'"{name}" is {found}; {named_like(kind)} is needed here')
+        key = wanted.model_fields["kind"].default, name  # one part, whoever asks for it
+        if key not in self.found:
             try:
-                self.found[kind, name] = wanted.model_validate({"title": name, **record}, context=context)
+                self.found[key] = wanted.model_validate({"title": name, **record}, context=context)
             except ValidationError as err:
                 raise said(f'"{name}" has mistakes of its own') from err
-        return self.found[kind, name]
+        return self.found[key]
 
 
 def library_part(name: str) -> Part:
@@ -190,9 +199,8 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     if "pulses" in file.data and "supply" not in file.data:
         raise InputError([file.problem((), "is a pattern; name the board first, then the pattern")])
     shelf = _Shelf(file, read_shelves(libraries, path))
-    context = {"find": shelf.find, "kind_of": shelf.kind_of, "origin": shelf.origin}
     try:
-        board = BoardFile.model_validate(file.data, context=context)
+        board = BoardFile.model_validate(file.data, context=shelf.context)
     except ValidationError as err:
         raise InputError(problems_of(err, file)) from None
     problems: list[Problem] = []
@@ -218,6 +226,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         text = f"brown_out.voltage of {brown_out.voltage} is not below the supply's lowest voltage of {board.supply.voltage.min:g} V"
         problems.append(file.problem(("limits", "brown_out"), text))
     problems += _of_the_logic_rail(board, file)
+    problems += refuse_wrong_outputs(board, file)
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
     around = None

@@ -17,7 +17,7 @@ from boardsim.parts.kinds import kinds
 from boardsim.parts.leads import Leads
 from boardsim.parts.logic import Logic
 from boardsim.parts.record import Name, Record
-from boardsim.parts.register import Register
+from boardsim.parts.register import ShiftRegister
 from boardsim.parts.supply import Supply
 from boardsim.parts.temperature import COLDEST, HOTTEST
 from boardsim.quantities import (
@@ -93,6 +93,7 @@ AnySwitch = _any_kind("switch")
 AnyLogic = _any_kind("logic")
 AnyCoil = _any_kind("coil")
 AnyComponent = _any_kind("component", "register")
+_OTHERS = [cls for cls in kinds("register").values() if cls is not ShiftRegister]
 
 
 class Line(Record):
@@ -120,7 +121,7 @@ class Line(Record):
 class Chain(Record):
     """The chain of registers and how the controller writes it."""
 
-    register_: named_part(Register) = Field(alias="register")  # type: ignore[valid-type]
+    register_: named_part(ShiftRegister, *_OTHERS) = Field(alias="register")  # type: ignore[valid-type]
     count: Annotated[int, Field(strict=True, ge=1, le=64)]
     clock: Annotated[Quantity, FREQUENCY]
     bit_order: Literal["msb", "lsb"] = Field("msb", description="which bit of each byte is sent first")

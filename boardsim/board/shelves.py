@@ -40,12 +40,15 @@ class Entry:
         Short name of the user's file for the origin of its numbers; empty for the built-in library.
     beside : mapping
         The shelves that it stands on, where the parts are found that it names, as a register names its family.
+    folder : Path or None
+        Of the user's file, from which names of model files count; None for the built-in library.
     """
 
     record: Mapping[str, Any]
     place: str = ""
     file: str = ""
     beside: Mapping[str, Entry] = field(default_factory=dict, repr=False, compare=False)
+    folder: Path | None = None
 
     @property
     def kind(self) -> str:
@@ -72,7 +75,7 @@ class Entry:
         """
         cls = component_class(self.kind)
         body = {"title": name, **self.body}
-        context = {"origin": self.origin, "find": self._find}
+        context = {"origin": self.origin, "find": self._find, "folder": self.folder}
         return None if cls is None else cls.model_validate(body, context=context)
 
     def _find(self, cls: type[Part], name: str, *others: type[Part]) -> Part:
@@ -151,7 +154,7 @@ def _add_users(shelves: dict[str, Entry], files: Iterable[Path]) -> None:
             if not isinstance(record, dict):
                 problems.append(file.problem_at(keys, 'must be a table of a part, with a "kind"'))
                 continue
-            found[name] = (Entry(record, place, short, shelves), file, keys)
+            found[name] = (Entry(record, place, short, shelves, path.parent), file, keys)
     shelves.update({name: entry for name, (entry, _, _) in found.items()})
     problems += [problem for one in found.values() for problem in _mistakes(*one)]
     if problems:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Callable
 from dataclasses import replace
 from functools import partial
@@ -11,6 +12,7 @@ from boardsim.board.reader import Board, Channel
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
+from boardsim.circuit.packages import of_package
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
 from boardsim.firing.registers import ChainState, send
@@ -18,7 +20,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
 from boardsim.parts.clocked import Contents, Nets, comparator, flip_flops, output_pin
 from boardsim.parts.elements import GROUND, Drive, Element, Port, Signal, VoltageLaw, plus
-from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule
+from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule, TogetherRule
 from boardsim.quantities import Quantity
 
 RAIL = "rail"
@@ -28,6 +30,9 @@ Detail = Literal["edges", "clocked"]
 """Registers as known edges on their outputs, or flip-flop by flip-flop; the same edges either way."""
 MOST_CLOCKED = 50_000
 """Clock edges times channels that are worth a circuit: about ten seconds for a run, from measurements on 24 channels."""
+
+STOPS = 16
+"""Steps at least, while a switch that is slow follows an edge."""
 
 Outputs = Callable[[Channel], Stamp]
 """What drives a channel's pin."""
@@ -67,6 +72,32 @@ def gate_points(
     return tuple(points)
 
 
+def looked_at(points: tuple[tuple[float, float], ...], lasting: float) -> tuple[tuple[float, float], ...]:
+    """The same straight lines with further points after each edge, at every one of which ngspice makes a step.
+
+    Parameters
+    ----------
+    points : tuple of (time, voltage)
+        [s], [V]
+    lasting : float
+        How long after an edge. [s]; 0 leaves the points as they are
+
+    Notes
+    -----
+    Its own estimate of the error lets ngspice step over most of what a slow gate does after its edge, and so miss a tenth of the
+    energy that its transistor takes meanwhile.
+    """
+    if lasting <= 0:
+        return points
+    found: list[tuple[float, float]] = []
+    for (t, volts), (then, _) in itertools.pairwise(points):
+        found.append((t, volts))
+        if found[:-1] and found[-2][1] != volts:
+            stops = (t + lasting * k / STOPS for k in range(1, STOPS + 1))
+            found += [(at, volts) for at in stops if at < then - lasting / STOPS / 2]
+    return (*found, points[-1])
+
+
 class Assembly:
     """What the stamps add up to."""
 
@@ -81,9 +112,11 @@ class Assembly:
         self.rest: dict[str, float] = {}
         self.totals: dict[tuple[str, str, PeakRule, str], list[tuple[int, Signal]]] = {}
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
+        self.commons: dict[str, str] = {}
+        self.together: dict[tuple[str, str, TogetherRule], list[int]] = {}
 
     def add(self, stamp: Stamp, channel: int | None, part: str, label: str, package: str = "") -> None:
-        """Add one part's stamp at its place on the board."""
+        """Add one part's stamp at its place on the board, and those of what is inside it."""
         self.builder.add(stamp.elements)
         for probe in stamp.probes:
             self.signals[channel, probe.quantity] = probe.signal
@@ -94,13 +127,31 @@ class Assembly:
         names = self.assumed.setdefault(channel, {})
         names.update(dict.fromkeys(f"{a.part} {a.quantity}" for a in stamp.assumptions))
         self.rest.update(stamp.rest)
+        for quantity, more in stamp.joins:
+            self.signals[channel, quantity] = plus(self.signals[channel, quantity], more)
         for total in stamp.totals:
             if channel is None:
                 continue
             if isinstance(total.rule, HeatRule):
                 self.heats.setdefault((package, total.rule.part or part), []).append((channel, total.rule))
+            elif isinstance(total.rule, TogetherRule):
+                self.together.setdefault((package, part, total.rule), []).append(channel)
             else:
                 self.totals.setdefault((package, part, total.rule, total.unit), []).append((channel, total.signal))
+        for name, inner in stamp.inside:
+            self.add(inner, channel, name, label, package)
+
+    def add_common(self, channel: Channel, b: str, corner: Corner) -> str:
+        """Where a channel's clamp ends: at node `b`, or at what its package has in common, which is added once."""
+        package = channel.package or channel.label
+        node = self.commons.get(package, f"common{len(self.commons)}")
+        shared = channel.clamp.common(node, node, b, corner)
+        if shared is None:
+            return b
+        if package not in self.commons:
+            self.commons[package] = node
+            self.add(of_package(shared, package), None, f"{channel.clamp.kind} clamp", package)
+        return node
 
     def add_totals(self) -> None:
         """The sums over each package, and their rules."""
@@ -115,6 +166,8 @@ class Assembly:
             channels = tuple(dict.fromkeys(channel for channel, _ in heated))
             whole = replace(heated[0][1], powers=powers, channels=channels)
             self.rules.append(PlacedRule(whole, None, part, package))
+        for (package, part, taken), members in self.together.items():
+            self.rules.append(PlacedRule(replace(taken, channels=tuple(members)), None, part, package))
 
 
 def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detail: Detail = "edges") -> Deck:
@@ -170,11 +223,11 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
 def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> Stamp:
     """An output that does what the bits say, as a source."""
     register, name = board.chain.register_, f"c{channel.number}_q"
-    if board.logic.derived:
-        shares = gate_points(firing.levels[channel.output], window, 1.0, register.output_edge.typ)
-        return known_output(register, name, channel.output, shares)
-    volts = board.logic.level(corner)
+    volts = 1.0 if board.logic.derived else board.logic.level(corner)
     points = gate_points(firing.levels[channel.output], window, volts, register.output_edge.typ)
+    points = looked_at(points, channel.switch.follows_within())
+    if board.logic.derived:
+        return known_output(register, name, channel.output, points)
     driven: Stamp = register.drive(name, name, points)
     return driven
 
@@ -274,8 +327,12 @@ def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel,
         held = (end, RAIL) if low else (GROUND, end)
     else:
         held = (load, GROUND) if low else (RAIL, load)
-    clamp = channel.clamp.stamp(f"{name}_c", *held, corner, channel.switch.control(stage))
+    end_of_clamp = parts.add_common(channel, held[1], corner)
+    clamp = channel.clamp.stamp(f"{name}_c", held[0], end_of_clamp, corner, channel.switch.control(stage))
     parts.add(clamp, k, f"{channel.clamp.kind} clamp", label, channel.package or label)
+    if channel.clamp.holds_switch:
+        linear = Stamp(rules=channel.switch.linear(corner))
+        parts.add(linear, k, channel.switch.part.title or "switch", label, channel.package)
 
 
 def _rail_rule(board: Board) -> Rule:

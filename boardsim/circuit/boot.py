@@ -110,7 +110,7 @@ def boot_deck(board: Board, boot: Boot, corner: Corner, detail: Detail) -> Deck:
     The rails are ideal in shape: the coil supply's set voltage and the logic rail rise on straight lines; a logic rail that hangs
     on the coil rail rises as its regulator lets it. Outputs count as
     enabled until output enable is surely high, and the shift stage as cleared until clear is surely high. An output that is not
-    enabled has its leakage left, and so has a line without a pull; where they drift is `Boot.leans_on`. A gate drifts up to the
+    enabled has its leakage left (an open-drain one is off), and so has a line without a pull; where they drift is `Boot.leans_on`. A gate drifts up to the
     logic rail's full voltage as soon as either rail is there.
     """
     parts = Assembly()
@@ -162,10 +162,11 @@ def _chain(parts: Assembly, board: Board, boot: Boot, volts: float, detail: Deta
         elements += flip_flops(register, chain.count, nets, boot.contents, board.logic.voltage.typ)
     else:
         elements += _known_stages(board, boot)
+    leaks = {} if register.open_drain else {"off_leakage": register.off_leakage}
     numbers = listed(
         "register",
         supply_from_which_outputs_drive=register.drives_from,
-        off_leakage=register.off_leakage,
+        **leaks,
         input_leakage=register.input_leakage,
         input_capacitance=register.input_capacitance,
     )
@@ -175,8 +176,10 @@ def _chain(parts: Assembly, board: Board, boot: Boot, volts: float, detail: Deta
 
     def driven(channel: Channel) -> Stamp:
         name = f"c{channel.number}_q"
-        upwards = (channel.switch.active == "high") == boot.leans_on
-        leaning = Leaning(upwards, register.off_leakage.typ, f"min(max(V({LOGIC}),V({RAIL})),{volts!r})")
+        leaning = None
+        if not register.open_drain:
+            upwards = (channel.switch.active == "high") == boot.leans_on
+            leaning = Leaning(upwards, register.off_leakage.typ, f"min(max(V({LOGIC}),V({RAIL})),{volts!r})")
         loads = board.logic.derived
         return Stamp(elements=output_pin(register, name, name, channel.output, LOGIC, ENABLED, leaning, loads))
 
@@ -211,7 +214,10 @@ def _control(board: Board, boot: Boot, line: ControlLine | None, node: str, low_
 
 
 def _known_stages(board: Board, boot: Boot) -> Iterator[Element]:
-    """The storage stage of every output that a channel is wired to, computed bit by bit: a source of 0 V or 1 V each."""
+    """The storage stage of every output that a channel is wired to, computed bit by bit: a source of 0 V or 1 V each.
+
+    A clear that empties it too is left out: what it wakes up with then counts until the first frame, which errs to the safe side.
+    """
     chain, register = board.chain, board.chain.register_
     state = ChainState(chain.outputs, boot.contents.shift, boot.contents.storage)
     changes: dict[int, list[tuple[float, bool]]] = {c.output: [] for c in board.channels}

@@ -8,6 +8,7 @@ from PySpice.Spice.ElementParameter import ModelPositionalParameter
 from PySpice.Spice.Netlist import Circuit, FixedPinElement
 
 from boardsim.parts.elements import (
+    MODEL_FILE,
     Ammeter,
     Bipolar,
     Capacitor,
@@ -20,14 +21,18 @@ from boardsim.parts.elements import (
     Inductor,
     Junction,
     Model,
+    Mosfet,
     PowerMosfet,
     Resistor,
     ToAnalog,
     ToDigital,
+    VendorsPart,
     VoltageLaw,
 )
 
 TITLE = "boardsim deck"
+_PYSPICE = {"l": "length", "w": "width", "ad": "drain_area", "as": "source_area", "pd": "drain_perimeter", "ps": "source_perimeter",
+            "nrd": "drain_number_square", "nrs": "source_number_square"}  # fmt: skip
 LEAST_DELAY = 1e-9  # [s], of every digital device of ngspice
 
 
@@ -44,7 +49,8 @@ class Builder:
 
     def __init__(self) -> None:
         self._circuit = Circuit(TITLE)
-        self._models: dict[tuple[str, tuple[tuple[str, float], ...]], str] = {}
+        self._models: dict[tuple[str, tuple[str, ...], tuple[tuple[str, float], ...]], str] = {}
+        self._vendors: set[str] = set()
 
     def add(self, elements: Iterable[Element]) -> None:
         """Add elements to the netlist."""
@@ -58,11 +64,16 @@ class Builder:
                 case Capacitor():
                     c.C(e.name, e.a, e.b, e.farads)
                 case Junction():
-                    c.D(e.name, e.anode, e.cathode, model=self._model(e.model))
+                    c.D(e.name, e.anode, e.cathode, model=self._model(e.model), **_area(e.area))
                 case PowerMosfet():
                     VerticalMosfet(c, e.name, e.drain, e.gate, e.source, model=self._model(e.model))
                 case Bipolar():
-                    c.BJT(e.name, e.collector, e.base, e.emitter, model=self._model(e.model))
+                    c.BJT(e.name, e.collector, e.base, e.emitter, model=self._model(e.model), **_area(e.area))
+                case Mosfet():
+                    size = {_PYSPICE.get(k, k): v for k, v in e.size}
+                    c.M(e.name, e.drain, e.gate, e.source, e.bulk, model=self._model(e.model), **size)
+                case VendorsPart():
+                    self._vendors_part(e)
                 case Ammeter():
                     c.V(e.name, e.a, e.b, 0)
                 case Drive():
@@ -77,6 +88,13 @@ class Builder:
                     c.BehavioralSource(e.name, e.plus, e.minus, voltage_expression=e.expression)
                 case ToDigital() | ToAnalog() | Gate() | FlipFlop():
                     self._digital(e)
+
+    def _vendors_part(self, e: VendorsPart) -> None:
+        """What a vendor's model comes to; the deck names its file, which messages about a failed run then can."""
+        if e.file not in self._vendors:
+            self._vendors.add(e.file)
+            self._circuit.raw_spice += f"* {MODEL_FILE} {e.file}\n"
+        self.add(e.elements)
 
     def _digital(self, e: ToDigital | ToAnalog | Gate | FlipFlop) -> None:
         """ngspice's event-driven devices ("A" lines), which PySpice has no elements for: vectors of nodes in brackets."""
@@ -102,13 +120,21 @@ class Builder:
         self._circuit.raw_spice += f"a{e.name} {nodes} {self._model(model)}\n"
 
     def _model(self, model: Model) -> str:
-        key = (model.type, tuple(sorted(model.parameters.items())))
+        key = (model.type, model.flags, tuple(sorted(model.parameters.items())))
         if key not in self._models:
             # A name that contains "vdmos" sends ngspice 39 into an endless loop while it reads the deck.
             self._models[key] = f"model{len(self._models)}"
-            self._circuit.model(self._models[key], model.type, **model.parameters)
+            if model.flags:  # PySpice writes every parameter with a value
+                inside = " ".join((*model.flags, *(f"{name}={value!r}" for name, value in model.parameters.items())))
+                self._circuit.raw_spice += f".model {self._models[key]} {model.type} ({inside})\n"
+            else:
+                self._circuit.model(self._models[key], model.type, **model.parameters)
         return self._models[key]
 
     def netlist(self) -> str:
         """The text of elements and models."""
         return str(self._circuit)
+
+
+def _area(area: float) -> dict[str, float]:
+    return {} if area == 1.0 else {"area": area}

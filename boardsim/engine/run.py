@@ -27,6 +27,7 @@ from boardsim.errors import (
     EngineTimeout,
     NoConvergence,
 )
+from boardsim.parts.elements import MODEL_FILE
 
 DEFAULT_TIME_LIMIT = 900.0  # [s] per run
 _KEPT_DECK, _KEPT_LOG = "failed.cir", "failed.log"
@@ -218,12 +219,20 @@ class Engine:
         self.keep.mkdir(parents=True, exist_ok=True)
         kept_deck, kept_log = self.keep / _KEPT_DECK, self.keep / _KEPT_LOG
         shutil.copyfile(deck, kept_deck)
+        if files := _model_files(deck):
+            text += f" (in it are vendors' models, which can be the cause: {', '.join(files)})"
         log = self.folder / "ngspice.log"
         if log.exists():
             shutil.copyfile(log, kept_log)
         else:
             kept_log.write_text("ngspice wrote no log\n", encoding="utf-8")
         return kind(text, kept_deck, kept_log)
+
+
+def _model_files(deck: Path) -> tuple[str, ...]:
+    """The vendors' files that a deck names."""
+    lines = deck.read_text(encoding="utf-8").splitlines()
+    return tuple(line.rpartition(MODEL_FILE)[2].strip() for line in lines if line.startswith(f"* {MODEL_FILE}"))
 
 
 def _forward(stream: IO[str] | None, answers: queue.Queue[str | None]) -> None:

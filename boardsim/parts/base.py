@@ -19,7 +19,7 @@ from pydantic_core import InitErrorDetails, PydanticCustomError
 from boardsim.parts.elements import Element, Port, Probe, Signal
 from boardsim.parts.proof import Proof
 from boardsim.parts.record import Name, Record, named_like, said, shown
-from boardsim.parts.rules import HeatRule, PeakRule, Rule
+from boardsim.parts.rules import HeatRule, PeakRule, Rule, TogetherRule, linear_unknown
 from boardsim.quantities import Bound, Quantity
 
 if TYPE_CHECKING:
@@ -37,10 +37,15 @@ class Part(Record):
     """Of a switch: whether it ties the coil to ground, and the coil's other end lies at the rail, or the other way round."""
     in_the_chain: ClassVar[bool] = False
     """Of a switch: whether it is an output of the chain's own registers."""
-    across: ClassVar[Literal["coil", "switch"]] = "coil"
-    """Of a clamp: what it lies in parallel to."""
+    holds_switch: ClassVar[bool] = False
+    """Of a clamp: whether it turns the switch on again, so that the switch takes the coil's energy in its linear region."""
     kind: str
     title: Name | None = None
+
+    @property
+    def across(self) -> Literal["coil", "switch"]:
+        """Of a clamp: what it lies in parallel to."""
+        return "coil"
 
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this part, by the keys of `Corner.ends`."""
@@ -71,8 +76,22 @@ class Part(Record):
         return False
 
     def control(self, name: str) -> str:
-        """The node of a switch's control terminal in its stamp of this name, such as its gate; empty where it has none."""
+        """The node of a switch's control terminal in its stamp of this name, such as its gate; empty where it has none.
+
+        A switch that has one probes the current into that terminal as `i_g`.
+        """
         return ""
+
+    def linear(self, corner: Corner) -> tuple[Rule, ...]:
+        """What judges a switch that takes a coil's energy in its linear region: a limit that nobody knows unless a kind says."""
+        return (linear_unknown(),)
+
+    def follows_within(self) -> float:
+        """How long a switch takes to follow an edge at its input, where that is long against the edge; else 0.
+
+        A run looks closely for as long after each edge. [s]
+        """
+        return 0.0
 
     def package_of(self, place: int, output: int) -> int:
         """Which of its packages a channel is in: `place` counts the channels of its range, `output` is the register's.
@@ -85,10 +104,29 @@ class Part(Record):
         """What keeps a clamp from being used beside a switch, for people; nothing where it fits."""
         return ""
 
+    def matched(self, switch: Part) -> Part:
+        """A clamp that is offered for comparison, as it would be built beside a switch: of its package, where it is in one."""
+        return self
+
+    def common(self, name: str, a: str, b: str, corner: Corner) -> Stamp | None:
+        """What a clamp has once for all channels of a package, from the node `a` where theirs end to the node `b`.
+
+        None where every channel's clamp is whole by itself and ends at `b`.
+        """
+        return None
+
+    def takes_over(self, current: float) -> float:
+        """Highest current that a clamp's own parts are known to meet when the coil carries this much. [A]"""
+        return current
+
     def in_the_way(self) -> float:
         """Highest resistance that a coil's current meets in this part once its switch is off: it sets how finely the decay
         has to be followed. [ohm]
         """
+        return 0.0
+
+    def swings_with(self) -> float:
+        """Least capacitance that a coil's current goes into once its switch is off: the two then swing; 0 if none. [F]"""
         return 0.0
 
     def steady_input(self, volts: float, resistance: float) -> float:
@@ -104,7 +142,7 @@ class Part(Record):
         return math.inf if current > 0 else 0.0, current
 
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[Self, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[Self, ...]:
         """This kind as a library could build it, to be set beside other kinds of its role.
 
         Every combination of library parts for the fields that take a part. A kind that needs more than parts, such
@@ -116,6 +154,8 @@ class Part(Record):
             The library's parts of a class.
         coil : Coil
             That it is to serve.
+        rail : float
+            What feeds that coil. [V]
         """
         classes = {name: field.annotation for name, field in cls.model_fields.items()}
         fields = {name: c for name, c in classes.items() if inspect.isclass(c) and issubclass(c, Part)}
@@ -197,14 +237,14 @@ class Total:
 
     Attributes
     ----------
-    rule : PeakRule or HeatRule
+    rule : PeakRule, HeatRule or TogetherRule
         Its quantity is that of the sum.
     signal : Signal
-        This channel's share of the sum; empty where the rule sums powers by itself.
+        This channel's share of the sum; empty where the rule sums powers or energies by itself.
     unit : str
     """
 
-    rule: PeakRule | HeatRule
+    rule: PeakRule | HeatRule | TogetherRule
     signal: Signal = ()
     unit: str = ""
 
@@ -221,6 +261,10 @@ class Stamp:
     totals: tuple[Total, ...] = ()
     rest: Mapping[str, float] = field(default_factory=dict)
     """Node voltages that a run has to begin with. [V]"""
+    joins: tuple[tuple[str, Signal], ...] = ()
+    """What is added to quantities of the same channel's other parts, such as a clamp's current to that into the gate."""
+    inside: tuple[tuple[str, Stamp], ...] = ()
+    """Further components at the same place, each under its own name, such as the second transistor of a half bridge."""
 
 
 @dataclass(frozen=True)

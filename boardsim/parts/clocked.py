@@ -14,7 +14,6 @@ from typing import Literal
 from boardsim.parts.elements import (
     GROUND,
     Capacitor,
-    CurrentLaw,
     Element,
     FlipFlop,
     Gate,
@@ -125,8 +124,8 @@ def flip_flops(
     Notes
     -----
     Rising edges of the clock move every bit to the next higher output, across registers; rising edges of the latch copy the
-    shift stage into the storage stage. Clear holds the shift stage at zero and leaves the storage stage alone; the output
-    enable leaves both alone (NXP 74HC595 rev. 6, table 3). While the rail is lost both stages are held at `start`, which
+    shift stage into the storage stage. Clear holds the shift stage at zero, and leaves the storage stage alone in registers whose
+    `clears` says so; the output enable leaves both alone (NXP 74HC595 rev. 6, table 3). While the rail is lost both stages are held at `start`, which
     stands for whatever they wake up with: a clear that is active outlasts it.
 
     The printed propagation delays count from the threshold of the line to the output's edge; the comparator's own delay is
@@ -158,6 +157,8 @@ def flip_flops(
             )
         )
         woken = (nets.lost, "") if then else ("", nets.lost)
+        if register.clears == "all":
+            woken = (sets, nets.clear) if then else ("", resets)
         elements.append(FlipFlop(f"store{k}", f"shift{k}", "chain_latch", *woken, f"store{k}", delay, then))
         before = f"shift{k}"
     outputs = range(count * size)
@@ -220,36 +221,20 @@ def output_pin(
     enabled : str
         Node that is 1 V while outputs are enabled and 0 V while not; always if empty.
     leaning : Leaning or None
-        The leakage of an output that is not enabled.
+        The leakage of an output that is not enabled; an open-drain one is off then.
     loads_rail : bool
         Whether what a high output gives comes out of the rail's node; else it is a stiff rail's, and nobody asks.
 
     Notes
     -----
-    i = e g (q V_CC - v) into the pin: q is 0 to 1 while the storage stage changes, g one over the output resistance, e the
-    enabling: 1 while enabled and the rail is above `drives_from`, else 0. Not enabled only the leakage is left, which fades
-    where the pin has arrived. What comes from the rail is its pull-up's share, e g q (V_CC - v), and the rest, -e g (1 - q) v, the
-    pull-down's to ground. Ignores the diodes from the pin to rail and ground: a voltage that a floating gate drifts
-    to is not held by them.
+    What the output makes of its bit is its kind's matter (`Register.follows`). It drives while it is enabled and the rail is above
+    `drives_from`; not enabled only the leakage is left, which fades where the pin has arrived.
     """
-    q, ohms = f"V({held(output)})", repr(register.output_resistance.typ)
-    source = f"({q}*V({rail})-V({pin}))/{ohms}"
-    if not enabled and loads_rail:
-        return (
-            CurrentLaw(f"{name}_up", pin, rail, f"{q}*(V({rail})-V({pin}))/{ohms}"),
-            CurrentLaw(f"{name}_down", pin, GROUND, f"({q}-1)*V({pin})/{ohms}"),
-        )
-    if not enabled:
-        return (CurrentLaw(name, pin, GROUND, source),)
-    alive = f"(0.5+0.5*tanh((V({rail})-{register.drives_from.typ!r})/{2 * _ENABLING!r}))"
-    drive = f"V({enabled})*{alive}"
-    idle = "" if leaning is None else f"+(1-{drive})*({drift(leaning, pin)})"
-    if loads_rail:
-        return (
-            CurrentLaw(f"{name}_up", pin, rail, f"{drive}*{q}*(V({rail})-V({pin}))/{ohms}"),
-            CurrentLaw(f"{name}_down", pin, GROUND, f"{drive}*({q}-1)*V({pin})/{ohms}{idle}"),
-        )
-    return (CurrentLaw(name, pin, GROUND, f"{drive}*{source}{idle}"),)
+    drives = f"(0.5+0.5*tanh((V({rail})-{register.drives_from.typ!r})/{2 * _ENABLING!r}))"
+    if enabled:
+        drives = f"V({enabled})*{drives}"
+    idle = "" if leaning is None or not enabled else drift(leaning, pin)
+    return register.follows(name, pin, f"V({held(output)})", drives, rail, enabled != "", idle, loads_rail)
 
 
 def drift(leaning: Leaning, pin: str) -> str:

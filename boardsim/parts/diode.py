@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
-from boardsim.parts.base import NOMINAL, T_MODEL, Corner, Part, Stamp, listed
+from boardsim.parts.base import NOMINAL, T_MODEL, Assumption, Corner, Part, Stamp, listed
 from boardsim.parts.elements import (
     GROUND,
     CurrentDrive,
@@ -37,6 +37,8 @@ from boardsim.parts.temperature import (
     reverse_current,
     thermal_voltage,
 )
+from boardsim.parts.vendor.beside import stored
+from boardsim.parts.vendor.model import A_MODEL, vendors_model
 from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
@@ -194,6 +196,7 @@ class Diode(Part):
     leakage: tuple[LeakagePoint, ...] = Field(
         (), description="reverse current at the rated voltage, at one or two temperatures"
     )
+    model: vendors_model(("anode", "cathode"), "d") = Field(None, description=A_MODEL)  # type: ignore[valid-type]
 
     @model_validator(mode="after")
     def _coherent(self) -> Diode:
@@ -222,7 +225,7 @@ class Diode(Part):
 
     def implied(self) -> dict[str, Quantity]:
         """What is assumed for want of a number."""
-        shown = any(p.kelvin != T_MODEL for p in self.forward)
+        shown = any(p.kelvin != T_MODEL for p in self.forward) or self.model is not None
         return {} if shown else {"forward drift": self.drift}
 
     @property
@@ -264,7 +267,9 @@ class Diode(Part):
             },
         )
         elements: list[Element] = [Junction(name, anode, cathode, model)]
-        if self.leakage and self.reverse_voltage is not None:
+        if self.model is not None:
+            elements = [self.model.part(name, {"anode": anode, "cathode": cathode}, corner.junction)]
+        elif self.leakage and self.reverse_voltage is not None:
             reverse = reverse_current(self._leakages(), corner.junction)
             elements.append(Resistor(f"{name}_leak", cathode, anode, self.reverse_voltage.typ / reverse))
         name_of = self.title or label
@@ -323,12 +328,17 @@ class Diode(Part):
             ),
             ports=(Port(label, ((v, i),), holds=holds),),
             rules=rules,
-            assumptions=listed(
-                name_of,
-                capacitance=self.capacitance,
-                recovery_time=self.recovery,
-                **drift_listed(self.forward, self.drift),
-            ),
+            assumptions=self._assumed(name_of),
+        )
+
+    def _assumed(self, part: str) -> tuple[Assumption, ...]:
+        if self.model is not None:
+            return (*self.model.told(part), stored(part, "capacitance and recovery time"))
+        return listed(
+            part,
+            capacitance=self.capacitance,
+            recovery_time=self.recovery,
+            **drift_listed(self.forward, self.drift),
         )
 
     def _surge_rule(self, part: str, label: str, i: str) -> PulseRule:
@@ -345,6 +355,11 @@ class Diode(Part):
             "choose a larger diode",
             part=part,
         )
+
+
+def most_current(diode: Diode) -> float:
+    """What a diode stands again and again, to choose among diodes; 0 where it is not given. [A]"""
+    return diode.repetitive_current.typ if diode.repetitive_current is not None else 0.0
 
 
 def surge_points(points: Sequence[SurgePoint]) -> tuple[tuple[float, float], ...]:

@@ -39,11 +39,12 @@ class Capacitor:
 
 @dataclass(frozen=True)
 class Model:
-    """A .model line: device type and parameters in SI units, ngspice's own names."""
+    """A .model line: device type, parameters in SI units, and flags that stand without a value; ngspice's own names."""
 
     name: str
     type: str
     parameters: Mapping[str, float]
+    flags: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -54,6 +55,7 @@ class Junction:
     anode: str
     cathode: str
     model: Model
+    area: float = 1.0
 
 
 @dataclass(frozen=True)
@@ -76,6 +78,20 @@ class Bipolar:
     base: str
     emitter: str
     model: Model
+    area: float = 1.0
+
+
+@dataclass(frozen=True)
+class Mosfet:
+    """A MOSFET with a bulk (ngspice's levels 1 and 3); `size` holds L, W [m] and what else SPICE gives one."""
+
+    name: str
+    drain: str
+    gate: str
+    source: str
+    bulk: str
+    model: Model
+    size: tuple[tuple[str, float], ...]
 
 
 @dataclass(frozen=True)
@@ -175,6 +191,15 @@ class FlipFlop:
     start: bool
 
 
+@dataclass(frozen=True)
+class VendorsPart:
+    """A part whose model a vendor wrote: the plain elements that it comes to, and the file, for messages and decks."""
+
+    name: str
+    file: str
+    elements: tuple[Element, ...]
+
+
 Element = (
     Resistor
     | Inductor
@@ -182,6 +207,8 @@ Element = (
     | Junction
     | PowerMosfet
     | Bipolar
+    | Mosfet
+    | VendorsPart
     | Ammeter
     | Drive
     | CurrentDrive
@@ -197,6 +224,7 @@ Signal = tuple[tuple[float, str], ...]
 """A linear combination of saved vectors: ((coefficient, "v(node)" or "i(element)"), ...)."""
 
 GROUND = "0"
+MODEL_FILE = "with a vendor's model read from"  # in a comment of a deck, before the name of the file
 
 
 def voltage(a: str, b: str = GROUND) -> Signal:

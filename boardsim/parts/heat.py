@@ -19,6 +19,8 @@ def junction_heat(
     ambient: float,
     advice: str,
     growth: float = 0.0,
+    growing: tuple[str, str] | None = None,
+    factor: float = 1.0,
 ) -> HeatRule:
     """The rule that a junction stays cool enough at the average power of the pattern.
 
@@ -36,6 +38,10 @@ def junction_heat(
     advice : str
     growth : float
         Of the power with the junction's temperature, compounded, as that of an on-resistance. [1/K]
+    growing : tuple of two quantity names, or None
+        Their product times `factor` is the power that grows, at most all of it. None: all of it grows.
+    factor : float
+        For a current that is named twice the on-resistance. [ohm]
 
     Notes
     -----
@@ -55,10 +61,14 @@ def junction_heat(
         advice,
         part=part,
         growth=growth,
+        growing=growing,
+        factor=factor,
     )
 
 
-def settled_temperature(ambient: float, resistance: float, power: float, growth: float, at: float) -> float:
+def settled_temperature(
+    ambient: float, resistance: float, power: float, growth: float, at: float, steady: float = 0.0
+) -> float:
     """Where a junction settles whose power grows with its own temperature.
 
     Parameters
@@ -73,11 +83,13 @@ def settled_temperature(ambient: float, resistance: float, power: float, growth:
         [1/K]
     at : float
         [K]
+    steady : float
+        What there is of power besides that does not grow. [W]
 
     Returns
     -------
     float
-        The lower solution of T = T_ambient + R_th P (1 + g)^(T - at), which is the stable one; infinite where there is
+        The lower solution of T = T_ambient + R_th (P_steady + P (1 + g)^(T - at)), which is the stable one; infinite where there is
         none: the junction runs away. [K]
 
     Notes
@@ -92,12 +104,14 @@ def settled_temperature(ambient: float, resistance: float, power: float, growth:
     364.7
     >>> settled_temperature(300.0, 200.0, 1.0, 0.01, 300.0)
     inf
+    >>> settled_temperature(300.0, 200.0, 0.0, 0.01, 300.0, 1.0)
+    500.0
     """
     t = ambient
     for _ in range(2000):
         if t > _BEYOND:
             return math.inf
-        nearer = ambient + resistance * power * math.pow(1 + growth, t - at)
+        nearer = ambient + resistance * (steady + power * math.pow(1 + growth, t - at))
         if abs(nearer - t) < 1e-6:
             return nearer
         t = nearer

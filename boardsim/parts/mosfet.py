@@ -1,15 +1,17 @@
-"""An N-channel power MOSFET, from its datasheet's typical figures."""
+"""A power MOSFET of either polarity, from its datasheet's typical figures; the N-channel one."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
-from typing import Annotated, ClassVar, Literal
+from collections.abc import Mapping, Sequence
+from typing import Annotated, ClassVar, Literal, Self
 
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import T_MODEL, Part
+from boardsim.parts.elements import Model
+from boardsim.parts.linear import ImpedancePoint, SafeAreaPoint, refuse_incoherent
 from boardsim.parts.mosfet_channel import (
     BODY_EMISSION,
     BODY_RESISTANCE,
@@ -31,6 +33,7 @@ from boardsim.parts.temperature import (
     refuse_drift,
     reverse_current,
 )
+from boardsim.parts.vendor.model import A_MODEL, vendors_model
 from boardsim.quantities import (
     CAPACITANCE,
     CHARGE,
@@ -93,11 +96,14 @@ class SwitchingTimes(Record):
     )
 
 
-class NMosfet(Part):
-    """An enhancement N-channel power MOSFET with its ratings. Typical figures shape the model; ratings judge it."""
+class Mosfet(Part):
+    """An enhancement power MOSFET with its ratings. Typical figures shape the model; ratings judge it.
 
-    role: ClassVar[str] = "component"
-    kind: Literal["n-mosfet"] = "n-mosfet"
+    All numbers are those of an N-channel part, or magnitudes: a P-channel part is its mirror image.
+    """
+
+    mirrored: ClassVar[bool] = False
+    """Whether voltages and currents have the opposite sign, as those of a P-channel part."""
     breakdown: Annotated[Quantity, VOLTAGE]
     gate_rating: Annotated[Quantity, VOLTAGE] | None = None
     continuous_current: Annotated[Quantity, CURRENT] | None = None
@@ -145,6 +151,12 @@ class NMosfet(Part):
     source_drain_current: Annotated[Quantity, CURRENT] | None = None
     thermal_resistance: Annotated[Quantity, THERMAL_RESISTANCE] | None = None
     junction_rating: Annotated[Quantity, TEMPERATURE] | None = None
+    safe_area: tuple[SafeAreaPoint, ...] = Field(
+        (), description="single pulses of the safe operating area, read at the voltage at which the switch works"
+    )
+    thermal_impedance: tuple[ImpedancePoint, ...] = Field(
+        (), description="from junction to case for a single pulse of a length"
+    )
     threshold_drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = Field(
         None, description="of the threshold with temperature"
     )
@@ -157,9 +169,10 @@ class NMosfet(Part):
     leakage: tuple[LeakagePoint, ...] = Field(
         (), description="zero gate voltage drain current at the rated voltage, at one or two temperatures"
     )
+    model: vendors_model(("drain", "gate", "source"), "vdmos", "nmos") = Field(None, description=A_MODEL)  # type: ignore[valid-type]
 
     @model_validator(mode="after")
-    def _coherent(self) -> NMosfet:
+    def _coherent(self) -> Self:
         for needs, needed in (
             ("transconductance", ("transconductance_current", "transconductance_voltage")),
             ("source_drain", ("source_drain_current",)),
@@ -180,6 +193,7 @@ class NMosfet(Part):
         if self.gate_charge is not None and self.charge_gate is None:
             raise QuantityError('"gate_charge" needs "charge_gate", the gate voltage up to which it counts')
         self._sensible_drifts()
+        refuse_incoherent(self.safe_area, self.thermal_impedance, self.junction_rating)
         return self
 
     def _sensible_drifts(self) -> None:
@@ -199,6 +213,22 @@ class NMosfet(Part):
     def proofs(self) -> tuple[Proof, ...]:
         """What its datasheet prints, measured on the model as the datasheet measures it."""
         return mosfet_proofs(self)
+
+    def card(self, name: str, parameters: Mapping[str, float]) -> Model:
+        """ngspice's model of these parameters, in this part's polarity.
+
+        Notes
+        -----
+        With the flag `pchan` ngspice's VDMOS takes all voltages and currents with the opposite sign; its threshold is then
+        written as a negative number, all else as for an N-channel part.
+
+        References
+        ----------
+        ngspice manual, VDMOS model, parameter pchan.
+        """
+        if not self.mirrored:
+            return Model(name, "VDMOS", parameters)
+        return Model(name, "VDMOS", {**parameters, "VTO": -parameters["VTO"]}, ("pchan",))
 
     def leakages(self) -> list[tuple[float, float]]:
         """Temperatures and zero gate voltage drain currents that were given, temperatures rising. [K], [A]"""
@@ -247,11 +277,8 @@ class NMosfet(Part):
 
     def implied(self) -> dict[str, Quantity]:
         """What follows from its numbers, or is assumed for want of one."""
-        return {
-            "threshold drift": self.drift_of_threshold,
-            "breakdown drift": self.drift_of_breakdown,
-            "on resistance growth": self.growth,
-        }
+        found = {"breakdown drift": self.drift_of_breakdown, "on resistance growth": self.growth}
+        return found if self.model is not None else {"threshold drift": self.drift_of_threshold, **found}
 
     def at_temperature(self, breakdown: float, t: float, spread: float = 1.0, shift: float = 0.0) -> dict[str, float]:
         """Parameters of ngspice's VDMOS model at a junction temperature.
@@ -418,6 +445,13 @@ class NMosfet(Part):
             return Channel(k_p, r_d, 0.0)
         wanted = mobility(k_p, v_to, r_d + before.fall / k_p, g.typ, at.typ)
         return Channel(k_p, r_d, 0.5 * (before.fall + wanted))
+
+
+class NMosfet(Mosfet):
+    """An N-channel part."""
+
+    role: ClassVar[str] = "component"
+    kind: Literal["n-mosfet"] = "n-mosfet"
 
 
 def overdrive(v_gs: float, v_to: float) -> float:

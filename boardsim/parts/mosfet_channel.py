@@ -1,4 +1,4 @@
-"""The channel of an N-MOSFET at high currents, from its transconductance, and its body diode from its forward voltage."""
+"""The channel of a MOSFET at high currents, from its transconductance, and its body diode from its forward voltage."""
 
 from __future__ import annotations
 

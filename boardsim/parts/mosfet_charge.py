@@ -1,4 +1,4 @@
-"""The gate's capacitances of an N-MOSFET model, from the charges and capacitances that its datasheet prints."""
+"""The gate's capacitances of a MOSFET model, from the charges and capacitances that its datasheet prints."""
 
 from __future__ import annotations
 

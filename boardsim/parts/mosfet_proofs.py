@@ -1,4 +1,4 @@
-"""What the datasheet of an N-MOSFET prints, and the test circuits that measure it on the model.
+"""What the datasheet of a MOSFET prints, and the test circuits that measure it on the model.
 
 Where printed figures contradict each other the model follows, in this order: the on-resistance at the gate voltages given,
 the threshold, the gate-drain charge, the total gate charge, the capacitances. The proof of the others then shows by how
@@ -8,6 +8,7 @@ much they are missed.
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from boardsim.parts.base import T_MODEL
@@ -23,6 +24,7 @@ from boardsim.parts.elements import (
     PowerMosfet,
     Resistor,
     Signal,
+    VendorsPart,
     current,
     plus,
     scaled,
@@ -33,7 +35,7 @@ from boardsim.parts.proof import AtEnd, Between, Proof, Ratio
 from boardsim.quantities import Quantity, in_units
 
 if TYPE_CHECKING:
-    from boardsim.parts.mosfet import NMosfet, SwitchingTimes
+    from boardsim.parts.mosfet import Mosfet, SwitchingTimes
 
 _BREAKDOWN_CURRENT = 250e-6  # [A] at which V_(BR)DSS is specified, common practice
 _SETTLED = 1e-3  # [s] after which the slowest circuit, 250 uA into the capacitances at the drain, stands still
@@ -58,7 +60,7 @@ _FIXTURE = (
 )
 
 
-def mosfet_proofs(part: NMosfet) -> tuple[Proof, ...]:
+def mosfet_proofs(part: Mosfet) -> tuple[Proof, ...]:
     """Every printed figure of a MOSFET with its test circuit.
 
     Notes
@@ -69,7 +71,7 @@ def mosfet_proofs(part: NMosfet) -> tuple[Proof, ...]:
     ramp reaches the test voltage. Charges: a constant current into the gate, the drain loaded with a constant current
     and held at the test voltage by an ideal diode; the plateau of V_GS reaches from where V_DS begins to fall to where
     V_GS rises again (method of JESD24-2, from memory). Transconductance: the difference of two devices in saturation whose
-    gates are a hundredth of the overdrive below and above. Body diode: a current from source to drain, gate at source.
+    gates are a hundredth of the overdrive below and above (of our own model only: a vendor's has another threshold). Body diode: a current from source to drain, gate at source.
 
     Times: resistive load, delay and edge together, since how the whole divides hangs on the knee of a curved edge; from 10 %
     (90 %) of the generator's edge to 10 % (90 %) of the drain's supply left. The generator's edges are part of the circuit,
@@ -77,7 +79,40 @@ def mosfet_proofs(part: NMosfet) -> tuple[Proof, ...]:
     printed, in the path of the load. The gate returns to the source at the chip's side of them: with all of 7.5 nH in the
     gate's loop, as TO-220 parts print for lead and bond wires, 20 A could not fall in the 15 ns that the same sheet prints,
     since they would induce 10 V. 25 degC, or where an on-resistance is printed for another temperature that.
+
+    A P-channel part is measured in the mirror image of the same circuits.
     """
+    found = _of_either(part)
+    return tuple(mirror_image(proof) for proof in found) if part.mirrored else found
+
+
+def mirror_image(proof: Proof) -> Proof:
+    """The same circuit with every voltage and current of the opposite sign; its readings are the same magnitudes.
+
+    Sources change their sign, diodes are turned round, and readings are taken of negated signals. The transistors are in it as
+    they are.
+    """
+    elements: list[Element] = []
+    for e in proof.elements:
+        match e:
+            case Drive() | CurrentDrive():
+                elements.append(replace(e, points=tuple((t, -value) for t, value in e.points)))
+            case Junction():
+                elements.append(replace(e, anode=e.cathode, cathode=e.anode))
+            case _:
+                elements.append(e)
+    reading = proof.reading
+    match reading:
+        case AtEnd():
+            reading = AtEnd(scaled(-1.0, reading.signal))
+        case Between():
+            reading = replace(reading, first=scaled(-1.0, reading.first), second=scaled(-1.0, reading.second))
+        case Ratio():  # of two that both change their sign
+            pass
+    return replace(proof, elements=tuple(elements), reading=reading)
+
+
+def _of_either(part: Mosfet) -> tuple[Proof, ...]:
     return (
         *_on_resistances(part),
         _threshold(part),
@@ -90,8 +125,13 @@ def mosfet_proofs(part: NMosfet) -> tuple[Proof, ...]:
     )
 
 
-def _device(part: NMosfet, drain: str = "d", gate: str = "g", name: str = "dut", t: float = T_MODEL) -> PowerMosfet:
-    model = Model("m", "VDMOS", part.at_temperature(part.breakdown.typ, t))
+def _device(
+    part: Mosfet, drain: str = "d", gate: str = "g", name: str = "dut", t: float = T_MODEL
+) -> PowerMosfet | VendorsPart:
+    if part.model is not None:
+        vendors: VendorsPart = part.model.part(name, {"drain": drain, "gate": gate, "source": GROUND}, t)
+        return vendors
+    model = part.card("m", part.at_temperature(part.breakdown.typ, t))
     return PowerMosfet(name, drain, gate, GROUND, model)
 
 
@@ -103,7 +143,7 @@ def _ramped(level: float, rise: float, duration: float) -> tuple[tuple[float, fl
     return ((0.0, 0.0), (rise, level), (duration, level))
 
 
-def _on_resistances(part: NMosfet) -> Iterator[Proof]:
+def _on_resistances(part: Mosfet) -> Iterator[Proof]:
     duration = _SETTLED
     for point in part.on_resistance:
         if point.current is not None:
@@ -129,7 +169,7 @@ def _on_resistances(part: NMosfet) -> Iterator[Proof]:
         )
 
 
-def _threshold(part: NMosfet) -> Proof:
+def _threshold(part: Mosfet) -> Proof:
     amperes = part.threshold_current.typ
     # 250 uA take some 10 us to charge a nanofarad; a smaller test current takes longer.
     duration = _SETTLED * max(1.0, _BREAKDOWN_CURRENT / amperes)
@@ -145,7 +185,7 @@ def _threshold(part: NMosfet) -> Proof:
     )
 
 
-def _breakdown(part: NMosfet) -> Proof:
+def _breakdown(part: Mosfet) -> Proof:
     load = CurrentDrive("load", "d", GROUND, _ramped(_BREAKDOWN_CURRENT, 0.1 * _SETTLED, _SETTLED))
     return Proof(
         f"breakdown at {in_units(_BREAKDOWN_CURRENT, 'A')}",
@@ -158,7 +198,7 @@ def _breakdown(part: NMosfet) -> Proof:
     )
 
 
-def _charges(part: NMosfet) -> Iterator[Proof]:
+def _charges(part: Mosfet) -> Iterator[Proof]:
     volts = part.charge_voltage.typ
     amperes = _charge_current(part)
     # The model's largest possible charge bounds how long the gate takes.
@@ -214,7 +254,7 @@ def _charges(part: NMosfet) -> Iterator[Proof]:
         )
 
 
-def _charge_current(part: NMosfet) -> float:
+def _charge_current(part: Mosfet) -> float:
     """Drain current of the charge circuit: the printed one, or a tenth of the continuous rating, or ten times the threshold's.
 
     The plateau's level, and little of its length, hang on it. [A]
@@ -224,7 +264,7 @@ def _charge_current(part: NMosfet) -> float:
     return 0.1 * part.continuous_current.typ if part.continuous_current is not None else 10 * part.threshold_current.typ
 
 
-def _capacitances(part: NMosfet) -> Iterator[Proof]:
+def _capacitances(part: Mosfet) -> Iterator[Proof]:
     volts, duration = part.capacitance_voltage.typ, 1e-6
     slope = _SMALL / duration  # [V/s]
     # Ramps go on beyond the end: a corner there would be what the last point shows.
@@ -254,10 +294,12 @@ def _capacitances(part: NMosfet) -> Iterator[Proof]:
         )
 
 
-def _transconductance(part: NMosfet) -> Iterator[Proof]:
+def _transconductance(part: Mosfet) -> Iterator[Proof]:
     printed, amperes, volts = part.transconductance, part.transconductance_current, part.transconductance_voltage
     if printed is None or amperes is None or volts is None:
         return
+    if part.model is not None:
+        return  # the gates' voltages would be those of our own model, and so the current not the printed one
     p = part.parameters(part.breakdown.typ)
     from_zero = 1 + p["THETA"] * p["VTO"]  # see `mobility`
     over = overdrive_at(p["KP"] / from_zero, p["THETA"] / from_zero, amperes.typ)
@@ -287,7 +329,7 @@ def _transconductance(part: NMosfet) -> Iterator[Proof]:
     )
 
 
-def _body_diode(part: NMosfet) -> Iterator[Proof]:
+def _body_diode(part: Mosfet) -> Iterator[Proof]:
     """The channel is off, and the current flows from the source at ground to the drain below it."""
     printed, amperes = part.source_drain, part.source_drain_current
     if printed is None or amperes is None:
@@ -306,7 +348,7 @@ def _body_diode(part: NMosfet) -> Iterator[Proof]:
     )
 
 
-def _times(part: NMosfet, circuit: SwitchingTimes) -> Iterator[Proof]:
+def _times(part: Mosfet, circuit: SwitchingTimes) -> Iterator[Proof]:
     volts, drive, ohms = circuit.supply.typ, circuit.drive.typ, circuit.gate_resistor.typ + part.gate_resistance.typ
     edge = max(circuit.edge.typ, _LEAST_EDGE)
     leads = sum(x.typ for x in (part.source_inductance, part.drain_inductance) if x is not None)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from boardsim.parts.base import T_MODEL
 from boardsim.parts.bipolar import Saturation
 from boardsim.parts.elements import (
     GROUND,
@@ -12,8 +13,8 @@ from boardsim.parts.elements import (
     CurrentDrive,
     Drive,
     Element,
-    Model,
     Resistor,
+    VendorsPart,
     current,
     voltage,
 )
@@ -43,8 +44,8 @@ def npn_proofs(part: Npn) -> tuple[Proof, ...]:
     )
 
 
-def _transistor(part: Npn) -> Bipolar:
-    return Bipolar("dut", "c", "b", GROUND, Model("dut_m", "NPN", part.parameters()))
+def _transistor(part: Npn) -> Bipolar | VendorsPart:
+    return part.device("dut", "c", "b", T_MODEL)
 
 
 def _voltage_proof(part: Npn, point: Saturation, node: str, what: str) -> Proof:

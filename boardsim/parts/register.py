@@ -1,15 +1,15 @@
-"""A shift register with a storage stage, 74HC595 type: the outputs that drive the switches, and how fast it follows."""
+"""A shift register with a storage stage: what it asks of its lines, how fast it follows, and outputs of the 74HC595 type."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Annotated, ClassVar, Literal
+from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Part, Stamp, listed, named_part
-from boardsim.parts.elements import GROUND, Drive, Resistor
+from boardsim.parts.elements import GROUND, CurrentLaw, Drive, Element, Resistor
 from boardsim.parts.family import LogicFamily, columns_assumed, of_columns, place_in, rising
 from boardsim.parts.record import Record
 from boardsim.quantities import (
@@ -65,20 +65,22 @@ class EdgeTimes:
 
 
 class Register(Part):
-    """Serial in, parallel out, all outputs change on the latch edge.
+    """What all registers of a chain have in common: serial in, all outputs change on the latch edge.
 
     Notes
     -----
-    An output is a voltage step from 0 to the logic rail behind one resistance, the mean of pull-up and pull-down.
-    Ignores that a real output delivers a little less current near its rail.
+    Kinds differ in their outputs. Each gives `propagation`, the time from the latch edge to where an output begins to follow,
+    `output_edge`, how long the step of the bit behind it lasts, `output_resistance`, that of an output that is a logic pin, and
+    `serial_resistance`, that of the output which drives the next register; and `drive`, an output whose bits are known.
     """
 
-    role: ClassVar[str] = "register"
-    kind: Literal["shift-register"] = "shift-register"
+    open_drain: ClassVar[bool] = False
+    """Whether its outputs are switches of coils, and no logic pins."""
+    clears: Literal["shift", "all"] = Field(
+        "shift",
+        description='what clear empties: the shift stage only, or "all": the storage stage, and so the outputs, too',
+    )
     outputs: Annotated[int, Field(strict=True, ge=1, le=64)]
-    output_resistance: Annotated[Quantity, POSITIVE_RESISTANCE]
-    propagation: Annotated[Quantity, TIME] = Field(description="from the latch edge to the outputs, for firing")
-    output_edge: Annotated[Quantity, POSITIVE_TIME]
     family: named_part(LogicFamily) | None = Field(  # type: ignore[valid-type]
         None, description="logic family: levels and ratings of its pins"
     )
@@ -104,11 +106,27 @@ class Register(Part):
         CAPACITANCE,
         "power dissipation capacitance C_PD, NXP 74HC595; 74HCT595 rev. 6 (12 Dec 2011), table 7, for parts of this class",
     )
-    off_leakage: Annotated[Quantity, CURRENT] = assume(
-        "10 uA",
-        CURRENT,
-        "3-state off current, maximum up to 125 degC, Philips 74HC595; 74HCT595 (25 June 2003), p. 12, for parts of this class",
-    )
+    if TYPE_CHECKING:  # fields of one kind, properties of another
+
+        @property
+        def propagation(self) -> Quantity:
+            """From the latch edge to where an output begins to follow. [s]"""
+            raise NotImplementedError
+
+        @property
+        def output_edge(self) -> Quantity:
+            """How long the step of the bit behind an output lasts. [s]"""
+            raise NotImplementedError
+
+        @property
+        def output_resistance(self) -> Quantity:
+            """Of an output that is a logic pin. [ohm]"""
+            raise NotImplementedError
+
+        @property
+        def serial_resistance(self) -> Quantity:
+            """Of the output that drives the next register. [ohm]"""
+            raise NotImplementedError
 
     @property
     def input_leakage(self) -> Quantity:
@@ -231,6 +249,69 @@ class Register(Part):
         return found
 
     def drive(self, name: str, pin: str, points: tuple[tuple[float, float], ...]) -> Stamp:
+        """One output whose voltage is known, as straight lines [s], [V]; node `pin` goes to the channel's switch.
+
+        Raises
+        ------
+        NotImplementedError
+            In kinds that do not say what their outputs are.
+        """
+        raise NotImplementedError
+
+    def follows(
+        self, name: str, pin: str, bit: str, drives: str, rail: str, lets_go: bool, idle: str, loads_rail: bool
+    ) -> tuple[Element, ...]:
+        """One output that follows its bit at circuit level; node `pin` goes to the channel's switch.
+
+        Parameters
+        ----------
+        bit : str
+            0 to 1, as an expression.
+        drives : str
+            1 while the output drives, 0 while it does not, as an expression.
+        rail : str
+            Node of the logic rail.
+        lets_go : bool
+            Whether it can stop to drive in operation; else only a rail that is too low could make it.
+        idle : str
+            What flows into the pin while it does not drive, as an expression; nothing if empty. [A]
+        loads_rail : bool
+            Whether what the output gives comes out of the rail's node.
+
+        Raises
+        ------
+        NotImplementedError
+            In kinds that do not say what their outputs are.
+        """
+        raise NotImplementedError
+
+
+class ShiftRegister(Register):
+    """The 74HC595 type, whose outputs are logic pins that drive switches.
+
+    Notes
+    -----
+    An output is a voltage step from 0 to the logic rail behind one resistance, the mean of pull-up and pull-down.
+    Ignores that a real output delivers a little less current near its rail.
+    """
+
+    role: ClassVar[str] = "register"
+    kind: Literal["shift-register"] = "shift-register"
+    output_resistance: Annotated[Quantity, POSITIVE_RESISTANCE]
+    propagation: Annotated[Quantity, TIME] = Field(description="from the latch edge to the outputs, for firing")
+    output_edge: Annotated[Quantity, POSITIVE_TIME]
+    off_leakage: Annotated[Quantity, CURRENT] = assume(
+        "10 uA",
+        CURRENT,
+        "3-state off current, maximum up to 125 degC, Philips 74HC595; 74HCT595 (25 June 2003), p. 12, for parts of this class",
+    )
+
+    @property
+    def serial_resistance(self) -> Quantity:
+        """Of the serial output, which is like the others. [ohm]"""
+        return self.output_resistance
+
+    def drive(self, name: str, pin: str, points: tuple[tuple[float, float], ...]) -> Stamp:
         """One output as a source and its resistance; node `pin` goes to the channel's gate network."""
         return Stamp(
             elements=(
@@ -238,6 +319,28 @@ class Register(Part):
                 Resistor(f"{name}_out", f"{name}_in", pin, self.output_resistance.typ),
             )
         )
+
+    def follows(
+        self, name: str, pin: str, bit: str, drives: str, rail: str, lets_go: bool, idle: str, loads_rail: bool
+    ) -> tuple[Element, ...]:
+        """One output that follows its bit, as currents.
+
+        Notes
+        -----
+        i = e g (q V_CC - v) into the pin: q is the bit, g one over the output resistance, e 1 while it drives and
+        else 0. What comes from the rail is its pull-up's share, e g q (V_CC - v), and the rest, -e g (1 - q) v, the
+        pull-down's to ground. Ignores the diodes from the pin to rail and ground: a voltage that a floating gate drifts
+        to is not held by them.
+        """
+        ohms = repr(self.output_resistance.typ)
+        factor = f"{drives}*" if lets_go else ""
+        leaks = f"+(1-{drives})*({idle})" if idle else ""
+        if loads_rail:
+            return (
+                CurrentLaw(f"{name}_up", pin, rail, f"{factor}{bit}*(V({rail})-V({pin}))/{ohms}"),
+                CurrentLaw(f"{name}_down", pin, GROUND, f"{factor}({bit}-1)*V({pin})/{ohms}{leaks}"),
+            )
+        return (CurrentLaw(name, pin, GROUND, f"{factor}({bit}*V({rail})-V({pin}))/{ohms}{leaks}"),)
 
 
 def _least(row: TimingPoint) -> float:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Literal
 
@@ -76,7 +77,8 @@ class HeatRule:
 
     `powers` are pairs of quantities whose products add up to the power. `resistance` is R_th to the ambient [K/W], `ambient`
     the air around it in this run [K]; `limit` [K]. `channels` are those that share one package; empty: the rule's own.
-    `growth` is that of the power with the junction's own temperature [1/K].
+    `growth` is that of the power with the junction's own temperature [1/K]; of `growing`, where that is given, the product of two
+    quantities, times `factor`, and not of all of it.
     """
 
     check: str
@@ -90,6 +92,8 @@ class HeatRule:
     part: str = ""
     channels: tuple[int, ...] = ()
     growth: float = 0.0
+    growing: tuple[str, str] | None = None
+    factor: float = 1.0
 
 
 @dataclass(frozen=True)
@@ -115,6 +119,41 @@ class PulseRule:
     part: str = ""
 
 
+LINEAR_SHARE = math.exp(-1.0)
+"""Share of its peak to which a pulse in the linear region lasts; see `boardsim.parts.linear.linear_rules`."""
+
+
+def linear_unknown() -> PulseRule:
+    """The rule of a switch of which nobody knows what it stands in its linear region."""
+    return linear_rule(Limit(None, "W", "power", "", "safe area or thermal impedance"), (), 0.0)
+
+
+def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: float, against: str = "") -> PulseRule:
+    """The rule that a switch stands every pulse of power that it takes in its linear region.
+
+    Parameters
+    ----------
+    limit : Limit
+    points : tuple of (length, power)
+        The lengths rising. [s], [W]
+    lasting : float
+        What it stands however long. [W]
+    against : str
+        What it is held against, to tell two such rules apart.
+    """
+    return PulseRule(
+        "linear-region",
+        ("v_ds", "i_d"),
+        limit,
+        points,
+        lasting,
+        LINEAR_SHARE,
+        "destroy",
+        f"power of the switch while it is its own clamp{against}",
+        "a clamp that takes the energy itself, or a switch that stands more in its linear region",
+    )
+
+
 @dataclass(frozen=True)
 class EnergyRule:
     """The energy of every single pulse of a power (the product of two quantities) must stay below a limit. [J]"""
@@ -133,7 +172,7 @@ class BreakdownRule:
     """The drain voltage of a switch: below breakdown against the rating, in avalanche by current and energy.
 
     `single`, `repetitive` [J] and `current` [A] are the avalanche ratings; `breakdown` [V] is where the model of
-    this run conducts.
+    this run conducts. `of` says whose, for people, where a channel has several switches.
     """
 
     check: str
@@ -145,6 +184,23 @@ class BreakdownRule:
     single: Limit
     repetitive: Limit
     what: str = "drain-source voltage"
+    of: str = ""
+
+
+@dataclass(frozen=True)
+class TogetherRule:
+    """What the switches of one package take in avalanche at one time must stay below a limit. [J]
+
+    `limit` is the rating of the package. Where it was not given, a sum that `one` of its switches stands is allowed as well, and
+    nothing is known of more. `channels` are those that share the package, `voltage` the quantity whose avalanche is meant.
+    """
+
+    check: str
+    limit: Limit
+    one: Limit
+    advice: str
+    voltage: str = "v_ds"
+    channels: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -271,6 +327,22 @@ class FallRule:
 
 
 @dataclass(frozen=True)
+class ShootThroughRule:
+    """The two transistors of a leg must not conduct at once.
+
+    `gates` and `currents` are quantities of the high and the low one, `turn_on` the gate voltages at which they begin to
+    conduct [V]; `dead_time` is the driver's [s], and `source` where that comes from.
+    """
+
+    check: str
+    gates: tuple[str, str]
+    currents: tuple[str, str]
+    turn_on: tuple[float, float]
+    dead_time: float
+    source: str
+
+
+@dataclass(frozen=True)
 class CeilingRule:
     """A supply's current must stay below its ceiling."""
 
@@ -289,6 +361,7 @@ Rule = (
     | PulseRule
     | EnergyRule
     | BreakdownRule
+    | TogetherRule
     | PullInRule
     | ReleaseRule
     | IdleRule
@@ -297,4 +370,5 @@ Rule = (
     | LeastRule
     | FallRule
     | CeilingRule
+    | ShootThroughRule
 )

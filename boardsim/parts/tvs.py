@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field, model_validator
@@ -26,6 +27,8 @@ from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, PulseRule, Rule
 from boardsim.parts.temperature import in_celsius, refuse_drift, reverse_current, thermal_voltage
+from boardsim.parts.vendor.beside import stored
+from boardsim.parts.vendor.model import A_MODEL, typical, vendors_model
 from boardsim.parts.zener import steady_current
 from boardsim.quantities import (
     CAPACITANCE,
@@ -88,6 +91,7 @@ class Tvs(Part):
     drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = Field(
         None, description="of its breakdown voltage with temperature"
     )
+    model: vendors_model(("anode", "cathode"), "d") = Field(None, description=A_MODEL)  # type: ignore[valid-type]
 
     @model_validator(mode="after")
     def _coherent(self) -> Tvs:
@@ -114,12 +118,17 @@ class Tvs(Part):
 
     def implied(self) -> dict[str, Quantity]:
         """What is assumed for want of a number."""
-        return {"drift": self.breakdown_drift}
+        return {"drift": self.breakdown_drift} if self.model is None else {}
 
     @property
     def clamping(self) -> Quantity:
-        """What its corners vary: its breakdown voltage at the test current. [V]"""
-        return self.breakdown
+        """What its corners vary: its breakdown voltage at the test current; a vendor's model has its own. [V]"""
+        return typical(self.breakdown, self.model)
+
+    @property
+    def lowest(self) -> float:
+        """The least breakdown voltage at the test current. [V]"""
+        return self.breakdown.min
 
     @property
     def resistance(self) -> float:
@@ -135,6 +144,19 @@ class Tvs(Part):
         """Breakdown at the test current, and the clamping voltage of a part at the upper end at the peak current."""
         i_t, i_pp = self.test_current.typ, self.clamping_current.typ
         upper = Corner("upper end", {"clamp_voltage": "max"})
+        if self.model is not None:  # of a typical part, which clamps between its own breakdown and the printed maximum
+            ends = Quantity(
+                self.clamping_voltage.typ,
+                self.breakdown.min,
+                self.clamping_voltage.typ,
+                "V",
+                self.clamping_voltage.origin,
+            )
+            at_peak = self._proof(f"clamping voltage at {in_units(i_pp, 'A')}", ends, i_pp, NOMINAL)
+            return (
+                self._proof(f"breakdown voltage at {in_units(i_t, 'A')}", self.breakdown, i_t, NOMINAL),
+                replace(at_peak, shapes=False, why="the printed clamping voltage is a maximum"),
+            )
         return (
             self._proof(f"breakdown voltage at {in_units(i_t, 'A')}", self.breakdown, i_t, NOMINAL),
             self._proof(
@@ -166,17 +188,23 @@ class Tvs(Part):
         v, i = f"v_{label}", f"i_{label}"
         v_br = corner.take(self.breakdown, "clamp_voltage") + corner.drifted(self.breakdown_drift.typ)
         leak = reverse_current([(T_MODEL, self.leakage.typ)], corner.junction)
+        elements: tuple[Element, ...] = (
+            *self._junctions(name, positive, negative, v_br, corner.junction),
+            Resistor(f"{name}_leak", positive, negative, self.stand_off.typ / leak),
+        )
+        holds = 0.5 * self.capacitance.typ * self.clamping_voltage.typ**2
+        assumed = listed(
+            name_of, leakage=self.leakage, capacitance=self.capacitance, drift_of_the_voltage=self.breakdown_drift
+        )
+        if self.model is not None:
+            elements = (self.model.part(name, {"anode": negative, "cathode": positive}, corner.junction),)
+            assumed = (*self.model.told(name_of), stored(name_of, "capacitance"))
         return Stamp(
-            elements=(
-                *self._junctions(name, positive, negative, v_br, corner.junction),
-                Resistor(f"{name}_leak", positive, negative, self.stand_off.typ / leak),
-            ),
+            elements=elements,
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
-            ports=(Port(label, ((v, i),), holds=0.5 * self.capacitance.typ * self.clamping_voltage.typ**2),),
+            ports=(Port(label, ((v, i),), holds=holds),),
             rules=self._rules(name_of, label, v, i, corner),
-            assumptions=listed(
-                name_of, leakage=self.leakage, capacitance=self.capacitance, drift_of_the_voltage=self.breakdown_drift
-            ),
+            assumptions=assumed,
         )
 
     def _junctions(self, name: str, positive: str, negative: str, v_br: float, t: float) -> tuple[Element, ...]:

@@ -9,11 +9,24 @@ from pydantic import Field, model_validator
 from boardsim.errors import QuantityError
 from boardsim.parts.base import NOMINAL, T_MODEL, Corner, Part, Stamp, listed
 from boardsim.parts.diode import RAMP, SETTLE, THERMAL_VOLTAGE
-from boardsim.parts.elements import GROUND, CurrentDrive, Junction, Model, Port, Probe, Resistor, Signal, voltage
+from boardsim.parts.elements import (
+    GROUND,
+    CurrentDrive,
+    Element,
+    Junction,
+    Model,
+    Port,
+    Probe,
+    Resistor,
+    Signal,
+    voltage,
+)
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.rules import EnergyRule, Limit, MeanRule, PeakRule, Rule
 from boardsim.parts.temperature import in_celsius, refuse_drift, reverse_current
+from boardsim.parts.vendor.beside import stored
+from boardsim.parts.vendor.model import A_MODEL, typical, vendors_model
 from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
@@ -58,6 +71,7 @@ class Zener(Part):
     )
     capacitance: Annotated[Quantity, CAPACITANCE] = assume("500 pF", CAPACITANCE, "Zener of some watts, from memory")
     drift: Annotated[Quantity, VOLTAGE_DRIFT] | None = Field(None, description="of its voltage with temperature")
+    model: vendors_model(("anode", "cathode"), "d") = Field(None, description=A_MODEL)  # type: ignore[valid-type]
 
     @model_validator(mode="after")
     def _coherent(self) -> Zener:
@@ -87,12 +101,17 @@ class Zener(Part):
 
     def implied(self) -> dict[str, Quantity]:
         """What is assumed for want of a number."""
-        return {"drift": self.voltage_drift}
+        return {"drift": self.voltage_drift} if self.model is None else {}
 
     @property
     def clamping(self) -> Quantity:
-        """What its corners vary: the voltage that it holds at the test current. [V]"""
-        return self.voltage
+        """What its corners vary: the voltage that it holds at the test current; a vendor's model has its own. [V]"""
+        return typical(self.voltage, self.model)
+
+    @property
+    def lowest(self) -> float:
+        """The least voltage that it may hold at the test current. [V]"""
+        return self.voltage.min
 
     def proofs(self) -> tuple[Proof, ...]:
         """Its voltage at the test current."""
@@ -133,17 +152,23 @@ class Zener(Part):
         )
         name_of = self.title or label
         v, i = f"v_{label}", f"i_{label}"
+        elements: tuple[Element, ...] = (
+            Junction(name, negative, positive, model),
+            Resistor(f"{name}_leak", positive, negative, 0.75 * self.voltage.typ / leak),
+        )
+        holds = 0.5 * self.capacitance.typ * v_z**2
+        assumed = listed(
+            name_of, leakage=self.leakage, capacitance=self.capacitance, drift_of_the_voltage=self.voltage_drift
+        )
+        if self.model is not None:
+            elements = (self.model.part(name, {"anode": negative, "cathode": positive}, corner.junction),)
+            assumed = (*self.model.told(name_of), stored(name_of, "capacitance"))
         return Stamp(
-            elements=(
-                Junction(name, negative, positive, model),
-                Resistor(f"{name}_leak", positive, negative, 0.75 * self.voltage.typ / leak),
-            ),
+            elements=elements,
             probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
-            ports=(Port(label, ((v, i),), holds=0.5 * self.capacitance.typ * v_z**2),),
+            ports=(Port(label, ((v, i),), holds=holds),),
             rules=self._rules(name_of, label, v, i, corner),
-            assumptions=listed(
-                name_of, leakage=self.leakage, capacitance=self.capacitance, drift_of_the_voltage=self.voltage_drift
-            ),
+            assumptions=assumed,
         )
 
     def _rules(self, name_of: str, label: str, v: str, i: str, corner: Corner) -> tuple[Rule, ...]:

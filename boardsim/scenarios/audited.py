@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import shutil
 import threading
 import time
@@ -9,7 +10,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
-from boardsim.board.reader import Board
+from boardsim.board.reader import Board, Channel
 from boardsim.circuit.assemble import assemble, windows
 from boardsim.circuit.deck import Deck, Settings, Window
 from boardsim.engine.run import DEFAULT_TIME_LIMIT, Engine
@@ -43,14 +44,22 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
     """The ladder with steps that the fastest coil of the board can be followed with.
 
     The engine's estimate of its error alone lets it step over most of an exponential when nothing else happens. A clamp
-    that is a resistor R_x takes the current down with L / (R + R_x).
+    that is a resistor R_x takes the current down with L / (R + R_x), one that is a capacitor makes it swing with sqrt(L C): as
+    many steps then fall on a sixth of its period.
     """
-    tau = min(c.coil.inductances[0] / max(c.coil.resistance.max + c.clamp.in_the_way(), 1e-3) for c in board.channels)
+    tau = min(_fastest(c) for c in board.channels)
     counts = (*_STEPS_PER_TAU, *[_STEPS_PER_TAU[-1]] * len(ladder))
     return tuple(
         replace(s, max_step=min(s.max_step, max(tau, _SHORTEST_STEP * _STEPS_PER_TAU[0]) / n))
         for s, n in zip(ladder, counts, strict=False)
     )
+
+
+def _fastest(channel: Channel) -> float:
+    """The shortest time in which a coil's current changes. [s]"""
+    henries, farads = channel.coil.inductances[0], channel.clamp.swings_with()
+    decay: float = henries / max(channel.coil.resistance.max + channel.clamp.in_the_way(), 1e-3)
+    return min(decay, math.sqrt(henries * farads)) if farads else decay
 
 
 Progress = Callable[[float], None]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Sequence
 
 import numpy as np
@@ -43,12 +44,17 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
         found = (entry.part(name) for name, entry in shelves.items() if entry.kind == kind)
         return [part for part in found if part is not None]
 
-    shown: list[Part] = []
+    rail = board.supply.voltage.typ
+    shown: list[list[Part]] = []
     remarks: list[str] = []
     for kind, cls in kinds("clamp").items():
         like = {"at": "coil"} if channel.clamp.at_the_coil() and "at" in cls.model_fields else {}
-        offered = [c.model_copy(update=like) for c in cls.candidates(on_the_shelves, channel.coil)]
-        offered = [c for c in offered if c != channel.clamp]
+        offered = list(cls.candidates(on_the_shelves, channel.coil, rail))
+        offered = [c.model_copy(update=like) if c.across == "coil" else c for c in offered]
+        offered = list(dict.fromkeys(c.matched(channel.switch) for c in offered))
+        unfit = dict.fromkeys(said for c in offered if (said := c.beside(channel.switch)))
+        remarks += [f"not tried, {kind}: {said}" for said in unfit]
+        offered = [c for c in offered if c != channel.clamp and not c.beside(channel.switch)]
         blocking = [c for c in offered if c.blocks(board.supply.voltage.max)]
         if blocking and len(blocking) < len(offered):
             through = "; ".join(clamp_in_words(c) for c in offered if c not in blocking)
@@ -63,15 +69,19 @@ def other_clamps(board: Board, channel: Channel, current: float) -> tuple[list[P
             remarks.append(
                 f"{MOST_OF_A_KIND} of {len(fit)} clamps of the kind {kind} are shown; for another one put it into the board file"
             )
-        shown += _spread(fit)
-    return shown, tuple(remarks)
+        shown.append(_spread(fit))
+    # The first of every kind before the second of any: a picture that has no room for all of them still has every kind.
+    rounds = itertools.zip_longest(*shown)
+    return [clamp for one in rounds for clamp in one if clamp is not None], tuple(remarks)
 
 
 def _carries(clamp: Part, current: float, bench: Bench) -> bool:
-    """Whether no part of a clamp is rated for less than a current. [A]"""
-    rules = clamp.stamp("c", "drain", "rail", NOMINAL).rules  # type: ignore[attr-defined]  # every clamp has it
+    """Whether no part of a clamp is rated for less than what it meets of a coil's current. [A]"""
+    stamps = [clamp.stamp("c", "drain", "rail", NOMINAL), clamp.common("c", "pin", "rail", NOMINAL)]  # type: ignore[attr-defined]
+    rules = [rule for stamp in stamps if stamp is not None for rule in stamp.rules]
     limits = [r.limit for r in rules if isinstance(r, PeakRule) and r.limit.unit == "A"]
-    return all(limit.value is None or limit.value * bench.derating(limit.derating) >= current for limit in limits)
+    met = clamp.takes_over(current)
+    return all(limit.value is None or limit.value * bench.derating(limit.derating) >= met for limit in limits)
 
 
 def _spread(clamps: Sequence[Part]) -> list[Part]:
@@ -82,6 +92,7 @@ def _spread(clamps: Sequence[Part]) -> list[Part]:
 def clamp_in_words(clamp: Part) -> str:
     """A clamp's kind with its parts and its numbers, such as "diode-zener: fast-2a, 24v-5w"."""
     found = ["at the coil"] if clamp.at_the_coil() else []
+    found += [f"across the {clamp.across}"] if "place" in type(clamp).model_fields else []
     found += [value.title or value.kind for _, value in clamp if isinstance(value, Part)]
     found += [in_units(value.typ, value.unit) for _, value in clamp if isinstance(value, Quantity)]
     return clamp.kind + (f": {', '.join(found)}" if found else "")

@@ -84,7 +84,7 @@ def release_channel(
     The channel is alone on its board: the others neither draw from its rail nor load it, so that its current, its peak
     and its energies are the highest that it can reach. It is on for at least seven times the longest L/R of all
     corners (0.1 % short of its settled current), and off for as long as an exponential of that L/R takes to well below
-    its release current: no clamp makes it slower.
+    its release current, or twice as long where a capacitor makes it swing: no clamp makes it slower.
     """
     if crew is None:
         with Crew() as own:
@@ -167,7 +167,9 @@ def release_pattern(board: Board) -> Pattern:
     frame = frame_time(board.chain)
     width = max(_SETTLED * tau, _FRAMES * frame / board.limits.pulse_error.typ)
     held = math.log(_highest_current(board) / coil.release.min) + 2.0 if coil.release is not None else 0.0
-    period = width + 2 * frame + tau * max(_SETTLED, held)
+    # What swings dies out with 2 L / R, half as fast as what only decays.
+    longer = 2.0 if channel.clamp.swings_with() else 1.0
+    period = width + 2 * frame + longer * tau * max(_SETTLED, held)
     pulses = tuple(Pulse(channel.number, start, width) for start in (0.0, period))
     return Pattern(board.path, NAME, 2 * period, pulses)
 

@@ -162,7 +162,14 @@ def json_schema(what: str) -> dict[str, Any] | None:
 
 
 class _Schema(GenerateJsonSchema):
-    """Writes the default of a quantity as a file would: as text."""
+    """Writes the default of a quantity as a file would: as text. A table without a kind may fit several of them."""
+
+    def tagged_union_schema(self, schema: Any) -> dict[str, Any]:
+        """Kinds told apart by `kind`; one that is told by the part it names looks like any that has the same keys."""
+        found = super().tagged_union_schema(schema)
+        if "oneOf" in found:
+            found["anyOf"] = found.pop("oneOf")
+        return found
 
     def encode_default(self, dft: Any) -> Any:
         """What the schema names as the default; none of a whole table, since its keys have their own."""

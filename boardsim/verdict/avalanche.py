@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from dataclasses import replace
 
 from boardsim.circuit.deck import PlacedRule
-from boardsim.parts.rules import BreakdownRule
+from boardsim.parts.rules import BreakdownRule, TogetherRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench, upper, when
 from boardsim.verdict.findings import Finding
@@ -20,10 +20,10 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     """Below breakdown by voltage, in avalanche by current, energy and repetition."""
     assert placed.channel is not None  # the rule of a channel's switch
     value, at = readings.high[placed.channel, rule.voltage]
-    events = readings.avalanches[placed.channel]
+    events = readings.avalanches[placed.channel, rule.voltage]
     if not events:
         yield upper(
-            rule.what,
+            f"{rule.what}{rule.of}",
             rule.rating,
             "destroy",
             placed,
@@ -39,7 +39,7 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
     if all(limit.value is None for limit in (rule.avalanche_current, rule.single, rule.repetitive)):
         yield Finding(
             rule.check,
-            "avalanche energy",
+            f"avalanche energy{rule.of}",
             placed.part,
             placed.channel,
             placed.label,
@@ -57,7 +57,7 @@ def judge_breakdown(rule: BreakdownRule, placed: PlacedRule, readings: Readings,
         return
     current = max(events, key=lambda e: e.current)
     yield upper(
-        "avalanche current",
+        f"avalanche current{rule.of}",
         rule.avalanche_current,
         "destroy",
         placed,
@@ -80,7 +80,7 @@ def _avalanche_energy(
 ) -> Iterator[Finding]:
     """A single-pulse rating covers one pulse; repeated avalanche needs a repetitive rating."""
     single = upper(
-        "avalanche energy",
+        f"avalanche energy{rule.of}",
         rule.single,
         "destroy",
         placed,
@@ -108,7 +108,7 @@ def _avalanche_energy(
         )
         return
     yield upper(
-        "avalanche energy",
+        f"avalanche energy{rule.of}",
         rule.repetitive,
         "destroy",
         placed,
@@ -117,4 +117,50 @@ def _avalanche_energy(
         hardest.start,
         _CLAMP,
         detail,
+    )
+
+
+def judge_together(rule: TogetherRule, placed: PlacedRule, readings: Readings, bench: Bench) -> Iterator[Finding]:
+    """What the switches of one package take in avalanche at one time; nothing where at no time two of them do.
+
+    Notes
+    -----
+    Stretches of avalanche that overlap count as one, with the sum of their energies: they are over in milliseconds, in which heat
+    spreads through a chip. Ratings for a single switch hold with the others idle. All of the energy in that one switch would
+    heat it more than a share in each of several does, so a sum that it stands is allowed; above that only the package's own
+    rating says anything.
+    """
+    found = sorted(
+        (event.start, event.start + event.lasting, event.energy, c)
+        for c in rule.channels
+        for event in readings.avalanches[c, rule.voltage]
+    )
+    groups: list[tuple[float, float, float, frozenset[int]]] = []
+    for start, stop, energy, channel in found:
+        if groups and start <= groups[-1][1]:
+            begun, until, so_far, members = groups[-1]
+            groups[-1] = (begun, max(until, stop), so_far + energy, members | {channel})
+        else:
+            groups.append((start, stop, energy, frozenset({channel})))
+    shared = [group for group in groups if len(group[3]) > 1]
+    if not shared:
+        return
+    at, _, energy, members = max(shared, key=lambda group: group[2])
+    what, detail = "clamp energy of the package", f" in the clamps of {len(members)} outputs"
+    if rule.limit.value is not None:
+        yield upper(what, rule.limit, "destroy", placed, bench, energy, at, rule.advice, detail)
+        return
+    single = upper(what, rule.one, "destroy", placed, bench, energy, at, rule.advice, detail)
+    if single.margin is not None and single.margin >= 0:
+        yield single
+        return
+    stands = "" if single.limit is None else f", {in_units(single.limit, 'J')} in one of them with the others idle"
+    yield replace(
+        single,
+        limit=None,
+        margin=None,
+        verdict="limit-missing",
+        source="",
+        sentence=f"{placed.label}: {what} is {in_units(energy, 'J')}{when(at)}{detail}; what {placed.part} stands in all of them "
+        f"together was not given{stands}; try: {rule.advice}",
     )

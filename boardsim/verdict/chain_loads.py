@@ -21,8 +21,10 @@ def judge_loads(board: Board, firing: Firing) -> Iterator[Finding]:
     -----
     Ohm's law from the rail through the register's output into the switch's input network. What charges a gate, for some
     tens of nanoseconds, is not in it: ratings are those of continuous current. Of each register the channels that are ever on
-    at one time count together.
+    at one time count together. Open-drain outputs are switches themselves: what they sink is judged there.
     """
+    if board.chain.register_.open_drain:
+        return
     volts, register = board.logic.voltage.max, board.chain.register_
     family: LogicFamily | None = register.family
     each = {c.number: c.switch.steady_input(volts, register.output_resistance.min) for c in board.channels}

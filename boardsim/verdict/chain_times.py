@@ -220,7 +220,7 @@ def lines_at(board: Board, volts: float) -> tuple[Driven, Driven, Driven, Driven
         driven(chain.clock_line, chain.count),
         driven(chain.latch_line, chain.count),
         driven(chain.data_line, 1),
-        Driven(register.output_resistance.max, beyond, (volts, volts), levels),
+        Driven(register.serial_resistance.max, beyond, (volts, volts), levels),
     )
 
 

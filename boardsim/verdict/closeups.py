@@ -242,8 +242,9 @@ def _causes(f: Finding, board: Board, deck: Deck | None) -> tuple[Key, ...]:
 def _breakdown(f: Finding, deck: Deck | None) -> float:
     """Where the model of a finding's switch conducts; minus infinity where there is none. [V]"""
     placed = deck.rules if deck is not None else ()
-    found = (p.rule.breakdown for p in placed if p.channel == f.channel and isinstance(p.rule, BreakdownRule))
-    return next(found, -np.inf)
+    mine = [p.rule for p in placed if p.channel == f.channel and isinstance(p.rule, BreakdownRule)]
+    found = [r.breakdown for r in mine if r.voltage in f.probes] or [r.breakdown for r in mine]
+    return found[0] if found else -np.inf
 
 
 def _feed(cuts: Sequence[_Cut], waves: Waves, deck: Deck) -> None:

@@ -38,7 +38,10 @@ def judge_heat(
         missing = replace(rule.resistance if r_th is None else rule.limit, unit="W")  # of what is known: the power
         said += f"; no {missing.name} of {part} was given to tell how hot it gets in {air}"
         return bench.finding(placed, missing, rule.what, power, None, None, said, rule.consequence, part=part)
-    hot = settled_temperature(rule.ambient, r_th, power, rule.growth, corner.junction)
+    grows = power
+    if rule.growing is not None:
+        grows = min(power, rule.factor * sum(readings.means[c, rule.growing] for c in members))
+    hot = settled_temperature(rule.ambient, r_th, grows, rule.growth, corner.junction, power - grows)
     reached = celsius(hot) if math.isfinite(hot) else "ever hotter, since its power grows with its temperature,"
     hot = min(hot, _HOTTEST)
     margin = (limit - hot) / (limit - rule.ambient) if limit > rule.ambient else -1.0

@@ -27,10 +27,13 @@ from boardsim.parts.rules import (
     PulseRule,
     ReleaseRule,
     Rule,
+    ShootThroughRule,
+    TogetherRule,
 )
 from boardsim.quantities import in_units
-from boardsim.verdict.avalanche import judge_breakdown
+from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
+from boardsim.verdict.bridges import judge_leg
 from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
@@ -53,7 +56,8 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     """
     found: list[Finding] = []
     # Without a limit an idle part's power, which is noise, is compared on the scale of the busiest part's.
-    hottest = max((abs(mean) for (_, of), mean in readings.means.items() if len(of) == 2), default=0.0)
+    powers = [abs(mean) for (_, of), mean in readings.means.items() if len(of) == 2 and of[0] != of[1]]  # no squares
+    hottest = max(powers, default=0.0)
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
         nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))
@@ -80,7 +84,9 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
     match rule:
         case MeanRule() | PulseRule():
             return rule.quantities
-        case EnergyRule():
+        case ShootThroughRule():
+            return ()
+        case EnergyRule() | TogetherRule():
             return ()  # a close-up counts the energy of avalanches only
         case HeatRule():
             return rule.powers[0] if len(rule.powers) == 1 and not rule.channels and finding.unit == "W" else ()
@@ -93,7 +99,7 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
 def _shape(rule: Rule, finding: Finding) -> Shape:
     if isinstance(rule, MeanRule):
         return "mean"
-    if isinstance(rule, EnergyRule):
+    if isinstance(rule, EnergyRule | TogetherRule):
         return "value"
     return "energy" if finding.unit == "J" else "value"
 
@@ -103,7 +109,7 @@ def _beside_the_point(name: str, placed: PlacedRule) -> bool:
     rule = placed.rule
     match name:
         case "breakdown voltage":
-            return not isinstance(rule, BreakdownRule)
+            return not isinstance(rule, BreakdownRule | TogetherRule)
         case "on-resistance":
             return not isinstance(rule, HeatRule | PullInRule)
         case "threshold":
@@ -144,6 +150,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield judge_pulses(rule, placed, readings.pulses[key], bench)
         case BreakdownRule() as rule:
             yield from judge_breakdown(rule, placed, readings, bench)
+        case TogetherRule() as rule:
+            yield from judge_together(rule, placed, readings, bench)
         case PullInRule() as rule:
             yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], bench)
         case ReleaseRule() as rule:
@@ -158,6 +166,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield judge_least(rule, placed, readings, bench)
         case FallRule() as rule:
             yield judge_fall(rule, placed, readings, firing, bench)
+        case ShootThroughRule() as rule:
+            if (leg := judge_leg(rule, placed, readings.legs[_channel(placed)], bench)) is not None:
+                yield leg
         case CeilingRule() as rule:
             yield judge_ceiling(rule, placed, readings, firing, bench)
 

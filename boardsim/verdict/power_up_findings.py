@@ -125,7 +125,8 @@ def _reset_hangs_on(board: Board, lasts: bool) -> Iterator[str]:
         yield "output enable tied low"
     if lasts and table.first_frame.assumed():
         yield "time of the first frame"
-    if chain.output_enable is not None and chain.register_.off_leakage.assumed():
+    register = chain.register_
+    if chain.output_enable is not None and not register.open_drain and register.off_leakage.assumed():
         yield "leakage of outputs that are not enabled"
 
 
@@ -155,6 +156,8 @@ def _remedy(board: Board, c: Channel, after_reset: bool) -> str:
         return f"a smaller capacitor or pull-up at output enable: it {behind}"
     if not c.switch.held_off():
         return "a pull-down at its gate, which floats while the outputs are not enabled"
+    if c.switch.in_the_chain:
+        return "a smaller pull-up at output enable"
     if after_reset:
         return "a smaller pull-down at its gate, or a longer reset_off in [power_up] where that does no harm"
     return "a smaller pull-down at its gate, and the coil rail after the logic rail"

@@ -29,7 +29,9 @@ from boardsim.parts.rules import (
     PulseRule,
     ReleaseRule,
     Rule,
+    ShootThroughRule,
 )
+from boardsim.verdict.bridges import Leg
 from boardsim.verdict.findings import Envelope, Floats
 from boardsim.verdict.motion import Strokes, Travelled
 from boardsim.verdict.pulses import OnePulse, Pulses
@@ -79,7 +81,7 @@ class Readings:
     lowest : (value, time) of the rail
     ceiling : (time at the ceiling, since when)
     pull_in, release : mapping of channel to (times, currents)
-    avalanches : mapping of channel to list of Avalanche
+    avalanches : mapping of (channel, voltage) to list of Avalanche
     drive : mapping of (channel, drive, current) to (times, drives, currents), at the ends of pulses
     guarded : tuple of Dip
         Below the level plus the guard band.
@@ -97,6 +99,8 @@ class Readings:
         What must reach a limit in every pulse, on boards whose logic rail moves: the best pulse then does not speak for all.
     motions : mapping of channel to tuple of Travelled
         What its coil moved, pulse by pulse.
+    legs : mapping of channel to Leg
+        What the two transistors of a bridge's leg do.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -106,7 +110,7 @@ class Readings:
     ceiling: tuple[float, float | None]
     pull_in: Mapping[int, tuple[Floats, Floats]]
     release: Mapping[int, tuple[Floats, Floats]]
-    avalanches: Mapping[int, tuple[Avalanche, ...]]
+    avalanches: Mapping[tuple[int, str], tuple[Avalanche, ...]]
     drive: Mapping[tuple[int, str, str], tuple[Floats, Floats, Floats]]
     ports: tuple[PortReading, ...]
     guarded: tuple[Dip, ...]
@@ -118,6 +122,7 @@ class Readings:
     framed: float | None = None
     at_ends: Mapping[tuple[int, str], tuple[Floats, Floats]] = field(default_factory=dict)
     motions: Mapping[int, tuple[Travelled, ...]] = field(default_factory=dict)
+    legs: Mapping[int, Leg] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -194,7 +199,10 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for c, r in rules
         if moving and isinstance(r, FloorRule) and c is not None
     }
-    avalanches = {c: (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None}
+    avalanches = {
+        (c, r.voltage): (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None
+    }
+    legs = {c: (Leg(r.turn_on), r) for c, r in rules if isinstance(r, ShootThroughRule) and c is not None}
     asked = dict.fromkeys(pulse_key(c, r) for c, r in rules)
     pulses = {of: Pulses(of[2]) for of in asked if of is not None}
     fallen = {r: _below(r) for _, r in rules if isinstance(r, FallRule)}
@@ -229,10 +237,12 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
                 sample.feed(t, y[row[c, "i_coil"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
-        for c, (watch, rule) in avalanches.items():
+        for (c, _), (watch, rule) in avalanches.items():
             watch.feed(t, y[row[c, rule.voltage]], y[row[c, rule.current]])
         for c, (strokes, motion) in moving_parts.items():
             strokes.feed(t, y[row[c, motion.quantity]], y[row[c, motion.speed]])
+        for c, (leg, shoot) in legs.items():
+            leg.feed(t, *(y[[row[c, q] for q in qs]] for qs in (shoot.gates, shoot.currents)))
         for (channel, qs, _), watched in pulses.items():
             watched.feed(t, np.prod([y[row[channel, q]] for q in qs], axis=0))
         _feed_falls(falls, deck, row, t, y)
@@ -256,7 +266,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         (ceiling.total, ceiling.first),
         {c: (s.times, s.values) for c, s in pull_in.items()},
         {c: (s.times, s.values) for c, s in release.items()},
-        {c: tuple(w.all()) for c, (w, _) in avalanches.items()},
+        {key: tuple(w.all()) for key, (w, _) in avalanches.items()},
         {
             (c, r.quantity, r.current): (
                 drive[c, r.quantity].times,
@@ -290,6 +300,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         float(framed.values.min()) if framed is not None and len(framed.values) else None,
         {key: (sample.times, sample.values) for key, sample in at_ends.items()},
         {c: strokes.all() for c, (strokes, _) in moving_parts.items()},
+        {c: leg for c, (leg, _) in legs.items()},
     )
 
 
@@ -322,7 +333,8 @@ def _averaged(channel: int | None, rule: Rule) -> list[tuple[int | None, tuple[s
         case MeanRule():
             return [(channel, rule.quantities)]
         case HeatRule():
-            return [(c, pair) for c in rule.channels or (channel,) for pair in rule.powers]
+            wanted = (*rule.powers, *(() if rule.growing is None else (rule.growing,)))
+            return [(c, pair) for c in rule.channels or (channel,) for pair in wanted]
         case _:
             return []
 

@@ -2,17 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass
 
 import numpy as np
 
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.deck import Deck
+from boardsim.circuit.packages import of_package
 from boardsim.engine.waves import Waves
 from boardsim.firing.schedule import Firing
-from boardsim.parts.base import Corner
-from boardsim.parts.elements import Port
+from boardsim.parts.base import Corner, Stamp
 from boardsim.parts.rules import BreakdownRule
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Envelope, Floats, Reading
@@ -194,14 +193,20 @@ class _TurnOffWatch:
 
     def __init__(self, deck: Deck, channel: Channel, on: float, off: float):
         self.deck, self.coil, self.on, self.off = deck, channel.coil, on, off
-        switch = _pairs(channel.switch.stamp("s", "pin", "drain", deck.corner).ports)
-        clamp = _pairs(channel.clamp.stamp("c", "drain", "rail", deck.corner).ports)
+        k = channel.number
+        switch = _pairs(k, channel.switch.stamp("s", "pin", "drain", deck.corner))
+        clamp = _pairs(k, channel.clamp.stamp("c", "drain", "rail", deck.corner))
+        shared = channel.clamp.common("p", "pin", "rail", deck.corner)
+        if shared is not None:  # the channel is alone on its board: what its package has once is all its own
+            clamp += _pairs(None, of_package(shared, channel.package or channel.label))
         rule = breakdown_rule(channel)
-        v_switch = rule.voltage if rule is not None else switch[0][0]
-        names = dict.fromkeys([v_switch, "i_coil", "i_l", *(q for pair in (*switch, *clamp) for q in pair)])
-        self.keys: tuple[Key, ...] = tuple((channel.number, name) for name in names)
-        row = {name: k for k, name in enumerate(names)}
-        self.v_switch, self.i_coil, self.i_l = row[v_switch], row["i_coil"], row["i_l"]
+        v_switch = (k, rule.voltage) if rule is not None else switch[0][0]
+        i_coil, i_l = (k, "i_coil"), (k, "i_l")
+        self.keys: tuple[Key, ...] = tuple(
+            dict.fromkeys([v_switch, i_coil, i_l, *(q for pair in (*switch, *clamp) for q in pair)])
+        )
+        row = {key: place for place, key in enumerate(self.keys)}
+        self.v_switch, self.i_coil, self.i_l = row[v_switch], row[i_coil], row[i_l]
         self.ports = [[(row[v], row[i]) for v, i in pairs] for pairs in (clamp, switch)]
 
         pull_in, release = self.coil.pull_in, self.coil.release
@@ -253,6 +258,6 @@ class _TurnOffWatch:
         )
 
 
-def _pairs(ports: Iterable[Port]) -> list[tuple[str, str]]:
-    """The voltages and currents whose products are the power into these ports."""
-    return [pair for port in ports for pair in port.pairs]
+def _pairs(channel: int | None, stamp: Stamp) -> list[tuple[Key, Key]]:
+    """The voltages and currents whose products are the power into a stamp's ports."""
+    return [((channel, v), (channel, i)) for port in stamp.ports for v, i in port.pairs]

@@ -47,7 +47,7 @@ NAME_RULE = (
         (changed('kind = "diode-zener", ', ""), 27, 'channels."0-23".clamp: "clamp" needs a "kind"'),
         (with_part('voltage = "3 V"'), 29, 'parts.mine: "mine" needs a "kind"'),
         # words
-        (changed('"diode-zener"', '"diod-zener"'), 27, 'channels."0-23".clamp: kind "diod-zener" is not known for "clamp" (did you mean "diode-zener"?); known: "array", "avalanche", "diode", "diode-zener"'),
+        (changed('"diode-zener"', '"diod-zener"'), 27, 'channels."0-23".clamp: kind "diod-zener" is not known for "clamp" (did you mean "diode-zener"?); known: "active", "array", "array-zener", "avalanche", "diode", "diode-zener"'),
         (changed('"rail"', '"ground"'), 27, "channels.\"0-23\".clamp.to: 'ground' is not allowed for \"to\"; allowed: \"rail\""),
         (changed(CLAMP, '[channels."0-23".clamp]\nkind = "diode"\ndiode = "fast-2a"\nto = "ground"'), 30, "channels.\"0-23\".clamp.to: 'ground' is not allowed for \"to\""),
         (changed(CLAMP, '[channels."0-23".clamp]\nkind = "diode"\ndiode = "fast-2a"\nzener = "20v-5w"'), 30, 'channels."0-23".clamp.zener: "zener" is not known here; known: kind, title, to, at, diode'),
@@ -55,7 +55,7 @@ NAME_RULE = (
         (changed("count = 3", "count = 3\nbit_order = 4"), 13, 'chain.bit_order: 4 is not allowed for "bit_order"; allowed: "msb", "lsb"'),
         (with_part('kind = "zenner"'), 29, 'parts.mine: kind "zenner" is not known for "mine" (did you mean "zener"?); known: "darlington-array", "diode",'),
         # parts by name
-        (changed('"74HC595"', '"74HC596"'), 11, 'chain.register: shift-register "74HC596" is neither in this file nor in the library (did you mean "74HC595"?); known: 74AHC595, 74AHCT595, 74HC595, 74HCT595, 74LV595, SN74HC595'),
+        (changed('"74HC595"', '"74HC596"'), 11, 'chain.register: shift-register or power-shift-register "74HC596" is neither in this file nor in the library (did you mean "74HC595"?); known: 74AHC595, 74AHCT595, 74HC595, 74HCT595, 74LV595, SN74HC595'),
         (changed('"20v-5w"', '"20v5w"'), 27, 'channels."0-23".clamp.zener: zener or tvs "20v5w" is neither in this file nor in the library (did you mean "20v-5w"?); known: 12v-5w, 20v-5w'),
         (changed('"20v-5w"', '"fast-2a"'), 27, 'channels."0-23".clamp.zener: "fast-2a" is a diode; a zener or tvs is needed here'),
         (changed('"n-logic-60v"', '"fast-2a"'), 26, 'channels."0-23".switch.part: "fast-2a" is a diode; an n-mosfet is needed here'),
@@ -64,7 +64,7 @@ NAME_RULE = (
         (changed('coil = "ejector"', 'coil = "ejektor"'), 25, 'channels."0-23".coil: coil "ejektor" is neither in this file nor in the library (did you mean "ejector"?); known: ejector'),
         # kinds of value
         (changed('coil = "ejector"', "coil = 4"), 25, 'channels."0-23".coil: must be the name of a coil in quotes, or a table { ... }; found 4'),
-        (changed('"74HC595"', "[595]"), 11, "chain.register: must be the name of a shift-register in quotes, or a table { ... }; found a list"),
+        (changed('"74HC595"', "[595]"), 11, "chain.register: must be the name of a shift-register or power-shift-register in quotes, or a table { ... }; found a list"),
         (changed(CLAMP, 'clamp = "diode"'), 27, "channels.\"0-23\".clamp: \"clamp\" must be a table, such as { ... }; found 'diode'"),
         (changed('logic = { voltage = "5 V +/- 5 %" }', 'logic = "5 V"'), 8, "logic: \"logic\" must be a table, such as { ... }; found '5 V'"),
         (with_table('[parts]\nmine = "12 V"'), 30, "parts.mine: \"mine\" must be a table, such as { ... }; found '12 V'"),

@@ -16,9 +16,9 @@ pytestmark = pytest.mark.engine
 HERE = Path(__file__).parent
 
 
-def fired(folder: str, board: str, keep: Path) -> Result:
+def fired(folder: str, board: str, keep: Path, pattern: str = "pattern") -> Result:
     read = read_board(HERE / folder / f"{board}.toml")
-    result = fire_pattern(read, read_pattern(HERE / folder / "pattern.toml", read), keep / "kept")
+    result = fire_pattern(read, read_pattern(HERE / folder / f"{pattern}.toml", read), keep / "kept")
     assert result.proven
     return result
 
@@ -32,6 +32,10 @@ CASES = {
     "f09_clamp_overstressed": {
         ("overpower", "average power of the clamp Zener"),
         ("overheating", "junction of the clamp Zener"),
+    },
+    "f09_common_zener": {
+        ("overcurrent", "peak current of the common Zener"),
+        ("surge", "energy of a pulse in the common Zener"),
     },
     "f20_led": {
         ("overvoltage", "reverse voltage of the LED"),
@@ -63,3 +67,18 @@ def test_an_led_across_a_coil_sees_the_rail_backwards_and_the_coils_current_forw
     assert found["overvoltage", "reverse voltage of the LED"].value == pytest.approx(25.2, rel=1e-2)
     amperes = 25.2 / (95.0 * (1 - 0.00393 * 5))
     assert found["overcurrent", "peak current of the LED"].value == pytest.approx(amperes, rel=1e-2)
+
+
+def test_a_common_zener_that_fails_with_a_whole_row_stands_one_output(tmp_path: Path) -> None:
+    """Seven currents of 12.6 V / (57 ohm at 20 degC, 1 - 0.00393 x 5 at 15 degC) less 0.9 V of the output, against one of them."""
+    one = fired("f09_common_zener", "bad", tmp_path, "one")
+    assert broken(one) == {}
+    single, row = (
+        next(f for f in result.findings if f.quantity == "peak current of the common Zener")
+        for result in (one, fired("f09_common_zener", "bad", tmp_path))
+    )
+    assert (row.channel, row.label, row.part) == (None, "sink-array-8 1", "common")
+    amperes = (12.6 - 0.9) / (57.0 * (1 - 0.00393 * 5))
+    # 3 %: the output drops 0.8 to 1.0 V; the transistors turn off in a microsecond or two.
+    assert single.value == pytest.approx(amperes, rel=3e-2)
+    assert row.value == pytest.approx(7 * amperes, rel=3e-2)

@@ -144,7 +144,7 @@ def test_an_array_without_diodes_of_its_own_is_no_clamp(tmp_path: Path) -> None:
 
 def test_every_clamp_between_the_coils_ends_can_sit_at_the_coil() -> None:
     there = {kind for kind, cls in kinds("clamp").items() if issubclass(cls, CoilClamp)}
-    assert there == {"diode", "diode-zener", "led", "resistor"}
+    assert there == {"diode", "diode-zener", "led", "resistor", "resistor-diode"}
     assert not kinds("clamp")["none"]().at_the_coil()
 
 
@@ -271,9 +271,9 @@ def test_an_array_is_offered_once_although_the_library_has_packages_of_seven_and
         return [library_part(name) for name, record in records().items() if record["kind"] == kind]
 
     coil = library_coil()
-    assert len(kinds("clamp")["array"].candidates(shelf, coil)) == 1
-    assert len(kinds("clamp")["diode-zener"].candidates(shelf, coil)) == len(shelf(Zener))
-    assert kinds("clamp")["avalanche"].candidates(shelf, coil) == ()
+    assert len(kinds("clamp")["array"].candidates(shelf, coil, 24.0)) == 1
+    assert len(kinds("clamp")["diode-zener"].candidates(shelf, coil, 24.0)) == len(shelf(Zener))
+    assert kinds("clamp")["avalanche"].candidates(shelf, coil, 24.0) == ()
 
 
 def library_coil() -> Any:

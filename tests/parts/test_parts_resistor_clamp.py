@@ -106,14 +106,14 @@ def test_it_lies_between_switch_and_rail_and_the_audit_sums_all_of_its_power() -
 
 @pytest.mark.parametrize("kind", sorted(set(kinds("clamp")) - {"avalanche"}))  # the circuit of "none" again
 def test_every_kind_of_clamp_offers_itself_for_comparison(kind: str) -> None:
-    offered = kinds("clamp")[kind].candidates(shelf, COIL)
+    offered = kinds("clamp")[kind].candidates(shelf, COIL, 24.0)
     assert offered
     assert all(type(clamp) is kinds("clamp")[kind] for clamp in offered)
     assert len(set(offered)) == len(offered)
 
 
 def test_the_resistor_offers_once_and_twice_the_coils_resistance_and_says_where_they_come_from() -> None:
-    offered = ResistorClamp.candidates(shelf, COIL)
+    offered = ResistorClamp.candidates(shelf, COIL, 24.0)
     assert [clamp.resistance.typ for clamp in offered] == [16.0, 32.0]
     assert all(clamp.resistance.origin.kind == "computed" for clamp in offered)
     assert all("16.0 ohm of the coil" in clamp.resistance.origin.source for clamp in offered)
@@ -127,13 +127,13 @@ def test_a_kind_with_two_parts_offers_every_combination_of_the_shelf() -> None:
         second: named_part(Zener)  # type: ignore[valid-type]
         more: Annotated[Quantity, POWER] | None = None
 
-    offered = Pair.candidates(shelf, COIL)
+    offered = Pair.candidates(shelf, COIL, 24.0)
     assert {(p.first.title, p.second.title) for p in offered} == {
         (d.title, z.title) for d in shelf(Diode) for z in shelf(Zener)
     }
 
 
 def test_a_kind_without_parts_offers_itself() -> None:
-    (only,) = kinds("clamp")["none"].candidates(lambda _: [], COIL)
+    (only,) = kinds("clamp")["none"].candidates(lambda _: [], COIL, 24.0)
     assert only.kind == "none"
     assert parse("16 ohm", RESISTANCE).typ == COIL.resistance.typ  # the coil of these tests is what it says

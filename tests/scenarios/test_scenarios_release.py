@@ -8,6 +8,7 @@ import subprocess
 import sys
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import pytest
 
@@ -100,6 +101,12 @@ def command(folder: Path, *options: str) -> tuple[int, str, str]:
     return done.returncode, done.stdout, done.stderr
 
 
+def kinds_beside(switch: Any) -> set[str]:
+    """Every kind of clamp that a board file may put beside a switch, but "avalanche", which is the circuit of "none" again."""
+    arrays = set() if switch.kind == "darlington-array" else {k for k in clamps.kinds("clamp") if k.startswith("array")}
+    return {*clamps.kinds("clamp")} - {"avalanche"} - arrays
+
+
 # ------------------------------------------------------------------------------------------------------ rows
 
 
@@ -137,9 +144,7 @@ def test_what_is_beside_the_board_s_own_clamp_does_not_touch_its_verdict(tmp_pat
     own, *others = rows(result)
     assert (own.own, own.clamp, own.channel) == (True, "diode: fast-2a", 0)
     assert not any(r.own for r in others)
-    assert {r.clamp.partition(":")[0] for r in others} == {*clamps.kinds("clamp")} - {
-        "avalanche"
-    }  # the circuit of "none"
+    assert {r.clamp.partition(":")[0] for r in others} == kinds_beside(board(tmp_path).channels[0].switch)
     assert own.clamp not in {r.clamp for r in others}
     # A switch without an avalanche rating must not break down; the sentence that says so stands in the row.
     none = next(r for r in others if r.clamp == "none")
@@ -315,13 +320,22 @@ def offered(folder: Path, current: float) -> tuple[list[str], tuple[str, ...]]:
 
 def test_every_kind_is_offered_but_the_clamp_that_is_there(tmp_path: Path) -> None:
     words, remarks = offered(tmp_path, 1.0)
-    assert {w.partition(":")[0] for w in words} == {*clamps.kinds("clamp")} - {"avalanche"}  # the circuit of "none"
+    beside = kinds_beside(board(tmp_path).channels[0].switch)
+    assert {w.partition(":")[0] for w in words} == beside
+    # What no board file may put beside this switch is not offered, and said.
+    refused = {*clamps.kinds("clamp")} - beside - {"avalanche"}
+    assert refused == {
+        r.partition("not tried, ")[2].partition(":")[0] for r in remarks if "the switch is another part" in r
+    }
+    remarks = tuple(r for r in remarks if "the switch is another part" not in r)
     assert "diode: fast-2a" not in words
     assert "diode: rectifier-1a" in words
     assert {"resistor: 24.0 ohm", "resistor: 48.0 ohm"} <= set(words)
     assert "zener: SMBJ24A" in words
     assert set(remarks) == {
         "not tried, rated for less than the coil's 1.00 A: diode: 1N4148",
+        "not tried, conducts at the rail of 24.0 V: active: 24v-5w, 1N4148; active: 20v-5w, 1N4148; active: 12v-5w, 1N4148; "
+        "active: SMAJ12A, 1N4148; active: SMAJ15A, 1N4148",
         "not tried, conducts at the rail of 24.0 V: zener: 24v-5w; zener: 20v-5w; zener: 12v-5w; zener: SMAJ12A; zener: SMAJ15A",
     }
 

@@ -153,7 +153,7 @@ def test_density_of_points_alone_does_not_see_the_wrong_run(trap: Trap) -> None:
 def test_a_coarse_trapezoidal_run_of_the_full_model_is_refused_as_well(trap: Trap) -> None:
     """With the body diode's charge nothing rings, but 200 us are too coarse: some 3 % too much, and the coil gives it out."""
     readings = trap.readings(trap.good, TRAP_200_US)
-    assert readings.avalanches[0][0].energy > 1.02 * TRUE
+    assert readings.avalanches[0, "v_ds"][0].energy > 1.02 * TRUE
     assert not passive(readings).passed
 
 
@@ -166,7 +166,7 @@ def test_what_the_audit_accepts_is_right(trap: Trap, tmp_path: Path) -> None:
     assert all(e.passed for e in result.audit.entries)
     assert result.trial is not None
     # 2 %: the closed form has one breakdown voltage, one rail voltage and no capacitance at the drain.
-    assert result.trial.readings.avalanches[0][0].energy == pytest.approx(TRUE, rel=2e-2)
+    assert result.trial.readings.avalanches[0, "v_ds"][0].energy == pytest.approx(TRUE, rel=2e-2)
 
 
 @pytest.mark.engine
@@ -174,7 +174,7 @@ def test_passivity_accepts_the_same_model_run_well(trap: Trap) -> None:
     """It is the run that is refused above, not the model."""
     readings = trap.readings(trap.bare, LADDER[1])
     assert passive(readings).passed
-    assert readings.avalanches[0][0].energy == pytest.approx(TRUE, rel=2e-2)
+    assert readings.avalanches[0, "v_ds"][0].energy == pytest.approx(TRUE, rel=2e-2)
 
 
 @pytest.mark.engine

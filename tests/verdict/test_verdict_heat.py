@@ -85,3 +85,22 @@ def test_a_junction_that_runs_away_fails_by_name(growth: float, verdict: str) ->
     )
     assert found.verdict == verdict
     assert ("ever hotter" in found.sentence) == (growth > 0)
+
+
+@pytest.mark.parametrize(("square", "verdict"), [(0.1, "pass"), (0.9, "fail"), (9.0, "fail")])
+def test_only_what_the_on_resistance_takes_grows_with_it(square: float, verdict: str) -> None:
+    """0.9 W in all at 62 K/W: with 0.1 A^2 in 1 ohm it settles at 45 + 62 (0.8 + 0.1 x 1.01^(T - 25)) degC, with 0.9 A^2 nowhere."""
+    board = read_board(FRUIT_SORTER)
+    rule = junction_heat(
+        "n-logic-60v", "switch", (("v_ds", "i_d"),), parse("62 K/W", THERMAL_RESISTANCE), parse("175 degC", TEMPERATURE),
+        318.15, "less heat", growth=0.01, growing=("i_d", "i_d"), factor=1.0,
+    )  # fmt: skip
+    means: dict[tuple[int | None, tuple[str, ...]], float] = {(3, ("v_ds", "i_d")): 0.9, (3, ("i_d", "i_d")): square}
+    readings = Readings({}, {}, means, (), (0.0, None), {}, {}, {}, {}, (), (), 0, {})
+    firing = fire(board, Pattern(Path("one.toml"), "one", None, (Pulse(3, 0.0, 0.01),)))
+    placed = PlacedRule(rule, 3, "n-logic-60v", "lane 3")
+    found = judge_heat(rule, placed, readings, firing, Corner("cool"), bench(board))
+    assert found.verdict == verdict
+    if verdict == "pass":
+        t = found.value - 273.15
+        assert t == pytest.approx(45 + 62 * (0.8 + 0.1 * 1.01 ** (t - 25)), abs=1e-3)

@@ -24,7 +24,14 @@ _DRIFT = assume("-2 mV/K", VOLTAGE_DRIFT, "forward voltage of a silicon junction
 _CAPACITANCE = 10e-12  # [F] at 0 V, a part of what the output's own capacitance is given with; from memory
 
 
-def _with_diode(part: DarlingtonArray) -> DarlingtonArray:
+def with_diode(part: DarlingtonArray) -> DarlingtonArray:
+    """An array that has diodes of its own.
+
+    Raises
+    ------
+    QuantityError
+        If it has none.
+    """
     if part.clamp_forward is None:
         raise QuantityError(
             f"{part.title or 'the array'} has no clamp_forward: without a diode of its own it is no clamp"
@@ -45,10 +52,10 @@ class ArrayClamp(Part):
     role: ClassVar[str] = "clamp"
     kind: Literal["array"] = "array"
     to: Literal["rail"] = "rail"
-    part: Annotated[named_part(DarlingtonArray), AfterValidator(_with_diode)]  # type: ignore[valid-type]
+    part: Annotated[named_part(DarlingtonArray), AfterValidator(with_diode)]  # type: ignore[valid-type]
 
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[ArrayClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[ArrayClamp, ...]:
         """One array of each sort of diode: packages of seven and of eight have the same."""
         sorts = {
             (*((f.voltage.typ, f.current.typ) for f in p.clamp_forward), str(p.clamp_current), str(p.output_voltage)): p
@@ -56,6 +63,12 @@ class ArrayClamp(Part):
             if isinstance(p, DarlingtonArray) and p.clamp_forward is not None
         }
         return tuple(cls(part=p) for p in sorts.values())
+
+    def matched(self, switch: Part) -> Part:
+        """With the switch's own array, where the switch is in one that has diodes."""
+        part = getattr(switch, "part", None)
+        fits = isinstance(part, DarlingtonArray) and part.clamp_forward is not None
+        return self.model_copy(update={"part": part}) if fits else self
 
     def beside(self, switch: Part) -> str:
         """The diode belongs to the switch's own package: its heat and its ground are shared."""

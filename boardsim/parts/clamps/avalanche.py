@@ -21,7 +21,7 @@ class AvalancheClamp(Part):
     kind: Literal["avalanche"] = "avalanche"
 
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[AvalancheClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[AvalancheClamp, ...]:
         """None: beside other clamps `none` shows the same circuit already."""
         return ()
 

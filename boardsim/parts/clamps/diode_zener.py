@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, ClassVar, Literal
 
 from boardsim.parts.base import Corner, Shelf, Stamp, named_part
 from boardsim.parts.clamp import CoilClamp, in_series
-from boardsim.parts.diode import Diode
+from boardsim.parts.diode import Diode, most_current
 from boardsim.parts.elements import Ammeter, current
 from boardsim.parts.tvs import Tvs
 from boardsim.parts.zener import Zener
@@ -25,9 +25,9 @@ class DiodeZenerClamp(CoilClamp):
     zener: named_part(Zener, Tvs)  # type: ignore[valid-type]
 
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[DiodeZenerClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[DiodeZenerClamp, ...]:
         """Every Zener with the diode that stands the most current: which diode carries it hardly changes the release."""
-        strongest = max(shelf(Diode), key=_current, default=None)  # type: ignore[arg-type]  # a shelf of diodes
+        strongest = max(shelf(Diode), key=most_current, default=None)  # type: ignore[arg-type]  # a shelf of diodes
         zeners = shelf(Zener)
         return tuple(cls(diode=strongest, zener=z) for z in zeners) if strongest is not None else ()
 
@@ -43,7 +43,3 @@ class DiodeZenerClamp(CoilClamp):
         label = "clamp Zener" if isinstance(self.zener, Zener) else "clamp suppressor"
         zener = self.zener.stamp(f"{name}_z", label, f"{name}_mid", b, through, corner)
         return in_series((meter,), diode, zener)
-
-
-def _current(diode: Diode) -> float:
-    return diode.repetitive_current.typ if diode.repetitive_current is not None else 0.0

@@ -34,7 +34,7 @@ class LedClamp(CoilClamp):
     diode: named_part(Diode) | None = None  # type: ignore[valid-type]
 
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[LedClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[LedClamp, ...]:
         """The first LED of the library, alone: what one meets on boards."""
         return tuple(cls(led=part) for part in shelf(Led)[:1])
 

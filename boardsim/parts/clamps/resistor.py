@@ -37,7 +37,7 @@ class ResistorClamp(CoilClamp):
     power: Annotated[Quantity, POWER] | None = None
 
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[ResistorClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[ResistorClamp, ...]:
         """Once and twice the coil's resistance: peaks of about two and three times the rail; no power rating."""
         typ = coil.resistance.typ
         said = [(k, f"{k} times the {in_units(typ, 'ohm')} of the coil") for k in _SHARES]

@@ -31,12 +31,16 @@ class ZenerClamp(Part):
 
     role: ClassVar[str] = "clamp"
     kind: Literal["zener"] = "zener"
-    across: ClassVar[Literal["coil", "switch"]] = "switch"
     to: Literal["ground"] = "ground"
     zener: named_part(Zener, Tvs)  # type: ignore[valid-type]
 
+    @property
+    def across(self) -> Literal["coil", "switch"]:
+        """The switch."""
+        return "switch"
+
     @classmethod
-    def candidates(cls, shelf: Shelf, coil: Coil) -> tuple[ZenerClamp, ...]:
+    def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[ZenerClamp, ...]:
         """Every suppressor and every Zener; the voltage that fits depends on the rail, which a coil does not know."""
         return tuple(cls(zener=part) for part in (*shelf(Zener), *shelf(Tvs)))
 
@@ -46,7 +50,7 @@ class ZenerClamp(Part):
 
     def blocks(self, volts: float) -> bool:
         """Whether its lowest voltage is above that of the rail, which lies across it while the coil is off. [V]"""
-        return bool(self.zener.clamping.min > volts)
+        return bool(self.zener.lowest > volts)
 
     def stamp(self, name: str, a: str, b: str, corner: Corner, control: str = "") -> Stamp:
         """The clamp from node `a` to node `b`: the switch's ends, in the direction of its current."""

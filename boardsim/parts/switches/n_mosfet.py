@@ -2,38 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Annotated, ClassVar, Literal
 
-from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
-from boardsim.parts.elements import (
-    GROUND,
-    Ammeter,
-    Element,
-    Model,
-    Port,
-    PowerMosfet,
-    Probe,
-    Resistor,
-    current,
-    plus,
-    scaled,
-    voltage,
-)
-from boardsim.parts.heat import junction_heat
+from boardsim.parts.base import Corner, Part, Stamp, named_part
+from boardsim.parts.elements import GROUND, Element, Resistor, plus, scaled, voltage
+from boardsim.parts.linear import linear_rules
 from boardsim.parts.mosfet import NMosfet
-from boardsim.parts.rules import BreakdownRule, FloorRule, Limit, MeanRule, PeakRule
-from boardsim.parts.temperature import reverse_current
-from boardsim.quantities import (
-    POSITIVE_RESISTANCE,
-    RESISTANCE,
-    Quantity,
-)
-
-_BODY_DIODE_POTENTIAL = 0.75  # [V], grading exponent 1/2: an abrupt junction, from memory
-_BODY_DRIFT = -2e-3  # [V/K] of the body diode's forward voltage at 1 A, silicon, common practice
-_SUBTHRESHOLD = 0.1  # [V], ngspice's own default for the rounding near threshold
-_ROUNDS = 60  # until threshold and channel agree
-_BREAKDOWN_CURRENT = 250e-6  # [A], at which V_(BR)DSS is specified, common practice
+from boardsim.parts.mosfet_stamp import Place, mosfet_stamp
+from boardsim.parts.rules import Rule
+from boardsim.parts.vendor.model import typical
+from boardsim.quantities import POSITIVE_RESISTANCE, RESISTANCE, Quantity
 
 
 class NMosfetStage(Part):
@@ -51,7 +30,8 @@ class NMosfetStage(Part):
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this stage: where the transistor breaks down, its on-resistance and its threshold."""
         part: NMosfet = self.part
-        return {"breakdown": part.breakdown, "on_resistance": part.spread, "threshold": part.threshold}
+        varied = {"breakdown": part.breakdown, "on_resistance": part.spread, "threshold": part.threshold}
+        return {key: typical(q, part.model) for key, q in varied.items()}
 
     def steady_input(self, volts: float, resistance: float) -> float:
         """Through gate resistor and pull-down; a gate by itself takes none. [V], [ohm] -> [A]"""
@@ -80,111 +60,21 @@ class NMosfetStage(Part):
         """The gate."""
         return f"{name}_g"
 
+    def linear(self, corner: Corner) -> tuple[Rule, ...]:
+        """Its safe area and its thermal impedance, as far as they are given."""
+        part: NMosfet = self.part
+        return linear_rules(
+            part.safe_area, part.thermal_impedance, part.junction_rating, part.thermal_resistance, corner
+        )
+
     def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
         """The stage between the register's node `pin` and the coil's node `load`."""
-        part: NMosfet = self.part
-        bv = corner.take(part.breakdown, "breakdown") + corner.drifted(part.drift_of_breakdown.typ)
-        shift = corner.take(part.threshold, "threshold") - part.threshold.typ
-        parameters = part.at_temperature(bv, corner.junction, corner.take(part.spread, "on_resistance"), shift)
-        gate, inside = self.control(name), f"{name}_di"
-        meter = Ammeter(f"{name}_d", load, inside)
+        gate = self.control(name)
         r_gate = max(self.gate.typ, 1e-2)
         into_gate = scaled(1 / r_gate, voltage(pin, gate))
-        elements: list[Element] = [
-            meter,
-            PowerMosfet(name, inside, gate, GROUND, Model(f"{name}_m", "VDMOS", parameters)),
-        ]
-        if part.leakage:
-            reverse = reverse_current(part.leakages(), corner.junction)
-            elements.append(Resistor(f"{name}_leak", inside, GROUND, part.breakdown.typ / reverse))
         network: list[Element] = [Resistor(f"{name}_gate", pin, gate, r_gate)]
         if self.pulldown is not None:
             network.append(Resistor(f"{name}_pulldown", gate, GROUND, self.pulldown.typ))
             into_gate = plus(into_gate, scaled(-1 / self.pulldown.typ, voltage(gate)))
-        peak = Limit.of(part.pulse_current, "pulsed drain current", "A", "current")
-        if part.pulse_current is None:
-            peak = Limit.of(part.continuous_current, "continuous drain current (no pulse rating given)", "A", "current")
-        lowest = min(part.on_resistance, key=lambda p: p.gate.typ)
-        holds = (
-            0.5 * (parameters["CJO"] + parameters["CGDMAX"]) * bv**2
-            + 0.5 * (part.input_capacitance.typ + parameters["CGDMAX"]) * 20.0**2
-        )
-        return Stamp(
-            elements=(*elements, *network),
-            probes=(
-                Probe("v_ds", voltage(inside), "V"),
-                Probe("i_d", current(meter), "A"),
-                Probe("v_gs", voltage(gate), "V"),
-                Probe("i_g", into_gate, "A"),
-            ),
-            ports=(Port("switch", (("v_ds", "i_d"), ("v_gs", "i_g")), holds=holds),),
-            rules=(
-                BreakdownRule(
-                    "overvoltage",
-                    "v_ds",
-                    "i_d",
-                    bv,
-                    Limit.of(part.breakdown, "drain-source voltage", "V", "voltage", self._rating(corner)),
-                    Limit.of(part.avalanche_current, "avalanche current", "A", "current"),
-                    Limit.of(part.avalanche_energy, "single-pulse avalanche energy", "J", "energy"),
-                    Limit.of(part.avalanche_repetitive, "repetitive avalanche energy", "J", "energy"),
-                ),
-                PeakRule(
-                    "overvoltage",
-                    "v_gs",
-                    Limit.of(part.gate_rating, "gate-source voltage", "V", "voltage"),
-                    "destroy",
-                    "gate-source voltage of the switch",
-                    "lower the logic rail, or choose a gate rating that stands it",
-                    magnitude=True,
-                ),
-                FloorRule(
-                    "under-drive",
-                    "v_gs",
-                    Limit.of(lowest.gate, "lowest gate voltage with an on-resistance", "V", None),
-                    "destroy",
-                    "gate drive of the switch",
-                    "raise the logic rail, or choose a switch that is specified at this gate voltage",
-                ),
-                PeakRule(
-                    "overcurrent",
-                    "i_d",
-                    peak,
-                    "destroy",
-                    "peak current of the switch",
-                    "choose a larger switch",
-                ),
-                MeanRule(
-                    "overcurrent",
-                    ("i_d",),
-                    Limit.of(part.continuous_current, "continuous drain current", "A", "current"),
-                    "destroy",
-                    "average current of the switch",
-                    "choose a larger switch, or fire less often",
-                ),
-                junction_heat(
-                    part.title or "switch",
-                    "switch",
-                    (("v_ds", "i_d"), ("v_gs", "i_g")),
-                    part.thermal_resistance,
-                    part.junction_rating,
-                    corner.ambient,
-                    "choose a switch of less on-resistance or with a better path for heat, or fire less often",
-                    growth=part.growth.typ,
-                ),
-            ),
-            assumptions=listed(
-                "switch",
-                gate_resistance=part.gate_resistance,
-                capacitance_voltage=part.capacitance_voltage,
-                threshold_current=part.threshold_current,
-                drift_of_the_threshold=part.drift_of_threshold,
-                drift_of_the_breakdown=part.drift_of_breakdown,
-                growth_of_the_on_resistance=part.growth,
-            ),
-        )
-
-    def _rating(self, corner: Corner) -> float:
-        """The rated voltage, which is given for 25 degC and above: a colder transistor breaks down earlier. [V]"""
-        part: NMosfet = self.part
-        return part.breakdown.min + min(0.0, corner.drifted(part.drift_of_breakdown.typ))
+        found = mosfet_stamp(self.part, name, Place(load, gate, GROUND), into_gate, corner)
+        return replace(found, elements=(*found.elements, *network))

@@ -32,6 +32,7 @@ from boardsim.parts.elements import (
     Port,
     Probe,
     Resistor,
+    VendorsPart,
     current,
     plus,
     scaled,
@@ -42,6 +43,8 @@ from boardsim.parts.npn_proofs import npn_proofs
 from boardsim.parts.proof import Proof
 from boardsim.parts.record import Record
 from boardsim.parts.rules import BreakdownRule, DriveRule, HeatRule, Limit, MeanRule, PeakRule
+from boardsim.parts.vendor.beside import held_off, stored
+from boardsim.parts.vendor.model import A_MODEL, vendors_model
 from boardsim.quantities import (
     CAPACITANCE,
     CURRENT,
@@ -114,6 +117,14 @@ class Npn(Part):
     storage_time: Annotated[Quantity, TIME] = assume(
         "250 ns", TIME, "at the first saturation point, with the base current reversed, from memory"
     )
+    model: vendors_model(("collector", "base", "emitter"), "npn") = Field(None, description=A_MODEL)  # type: ignore[valid-type]
+
+    def device(self, name: str, collector: str, base: str, t: float) -> Bipolar | VendorsPart:
+        """The transistor with its emitter at ground: as its vendor has it, or from its figures. `t` is the junction's. [K]"""
+        if self.model is not None:
+            found: VendorsPart = self.model.part(name, {"collector": collector, "base": base, "emitter": GROUND}, t)
+            return found
+        return Bipolar(name, collector, base, GROUND, Model(f"{name}_m", "NPN", self.parameters()))
 
     @model_validator(mode="after")
     def _coherent(self) -> Npn:
@@ -241,7 +252,9 @@ class Npn(Part):
         return ((0.0, 0.0), *points)
 
     def assumed(self) -> tuple[Assumption, ...]:
-        """What was assumed of the transistor."""
+        """What was assumed of the transistor; of a vendor's model nothing."""
+        if self.model is not None:
+            return ()
         numbers = listed(
             "switch",
             output_capacitance=self.output_capacitance,
@@ -305,12 +318,14 @@ class NpnStage(Part):
         # The junctions give back what they hold at the breakdown voltage, the base its carriers at about 1 V.
         carriers = part.storage_time.typ * max(p.base.typ for p in part.saturation)
         holds = 0.5 * parameters["CJC"] * volts**2 + 0.5 * (parameters["CJE"] + parameters["CJC"]) + carriers
+        vendors = self._vendors(name, corner)
         return Stamp(
             elements=(
                 meter,
-                Bipolar(name, inside, base, GROUND, Model(f"{name}_m", "NPN", parameters)),
+                part.device(name, inside, base, corner.junction),
                 breakdown_junction(f"{name}_bv", inside, volts),
                 *network,
+                *vendors.elements,
             ),
             # The house's names for voltage and current of a switch, whatever its kind.
             probes=(
@@ -318,11 +333,30 @@ class NpnStage(Part):
                 Probe("i_d", current(meter), "A"),
                 Probe("v_be", voltage(base), "V"),
                 Probe("i_b", into_base, "A"),
+                *vendors.probes,
             ),
             ports=(Port("switch", (("v_ds", "i_d"), ("v_be", "i_b")), holds=holds),),
-            rules=self._rules(volts, corner),
-            assumptions=part.assumed(),
+            rules=(*self._rules(volts, corner), *vendors.rules),
+            assumptions=(*part.assumed(), *vendors.assumptions),
         )
+
+    def _vendors(self, name: str, corner: Corner) -> Stamp:
+        """What stands beside a vendor's model: one that shows whether it stands its rated voltage. Nothing beside ours."""
+        part: Npn = self.part
+        if part.model is None:
+            return Stamp()
+        at = f"{name}_off"
+        nodes = {"collector": at, "base": GROUND, "emitter": GROUND}
+        source = str(part.breakdown.origin)
+        elements, probe, rule = held_off(part.model, name, nodes, at, part.breakdown.min, source, corner.junction)
+        added = Assumption(
+            "switch",
+            "breakdown",
+            str(part.breakdown),
+            "a junction beside the vendor's model, as beside ours; corners vary it",
+        )
+        told = (*part.model.told("switch"), stored("switch", "capacitances and storage time"), added)
+        return Stamp(elements=elements, probes=(probe,), rules=(rule,), assumptions=told)
 
     def _rules(
         self, volts: float, corner: Corner

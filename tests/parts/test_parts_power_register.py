@@ -1,0 +1,121 @@
+"""Power shift registers: limits as printed, boards that fit them, and refusals that name what does not."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+import pytest
+
+from boardsim.board.reader import Board, library_part, read_board
+from boardsim.errors import InputError
+from boardsim.parts.base import Corner
+from boardsim.parts.power_register import PowerRegister
+from boardsim.parts.power_switching import gate_shape
+from boardsim.parts.rules import BreakdownRule
+from boardsim.parts.switches.power_output import PowerOutputStage
+from boardsim.verdict.chain import judge_chain
+
+BOARD = Path(__file__).parents[2] / "netlists" / "bean-planter" / "board.toml"
+
+
+def register(name: str = "TPIC6B595") -> PowerRegister:
+    part = library_part(name)
+    assert isinstance(part, PowerRegister)
+    return part
+
+
+def changed(tmp_path: Path, *swaps: tuple[str, str]) -> Board:
+    text = BOARD.read_text(encoding="utf-8")
+    for old, new in swaps:
+        assert old in text
+        text = text.replace(old, new)
+    path = tmp_path / "board.toml"
+    path.write_text(text, encoding="utf-8")
+    return read_board(path)
+
+
+def test_limits_are_those_of_the_data_sheet() -> None:
+    """TI SLIS032A pp. 3-5: 0.85 and 0.15 V_CC; 20, 20, 40 ns; 150 mA and 500 mA; factor 1.62 of the on-resistance at 125 degC."""
+    part = register()
+    for volts in (4.5, 5.0, 5.5):
+        assert part.input_levels(volts) == pytest.approx((0.15 * volts, 0.85 * volts))
+    times = part.timing(5.0)
+    assert times is not None
+    assert (times.setup, times.hold, times.clock_width) == pytest.approx((20e-9, 20e-9, 40e-9))
+    assert part.output_current is not None
+    assert part.pulse_current is not None
+    assert (part.output_current.typ, part.pulse_current.typ) == pytest.approx((0.15, 0.5))
+    assert (1 + part.growth.typ) ** 100 == pytest.approx(1.62, rel=1e-3)
+
+
+def test_resistance_is_a_straight_line_through_the_printed_points() -> None:
+    r_0, r_1 = register().resistances
+    assert r_0 + 0.1 * r_1 == pytest.approx(4.2)  # TI SLIS032A p. 4
+    assert r_0 + 0.35 * r_1 == pytest.approx(5.5)
+    amperes = register().conducts(2.0)
+    assert (r_0 + r_1 * amperes) * amperes == pytest.approx(2.0)
+
+
+def test_the_gate_gives_the_printed_delays_and_edges() -> None:
+    """Conductances where the drain is at 10, 50 and 90 % of 24 V through 235 ohm, put back into the exponentials."""
+    part = register()
+    shape = gate_shape(part.switching, part.conducts)
+    at = {}
+    for k in (0.1, 0.5, 0.9):
+        u = (1 - k) * 24 / 235 / part.conducts(k * 24)
+        g = 1 / (1 + (1 / u - 1) / shape.shape)
+        at[k] = (-shape.on * math.log(1 - g), -shape.off * math.log(g))
+    assert at[0.1][0] - at[0.9][0] == pytest.approx(200e-9, rel=1e-6)
+    assert at[0.9][1] - at[0.1][1] == pytest.approx(200e-9, rel=1e-6)
+    assert shape.dead + at[0.5][0] == pytest.approx(90e-9, rel=1e-3)
+    assert shape.dead + at[0.5][1] == pytest.approx(150e-9, rel=1e-3)
+
+
+def test_a_warm_junction_stands_less_of_a_single_pulse() -> None:
+    """30 mJ from 25 degC to 150 degC: two fifths of it are left from 100 degC; none for a repeated one without thermal data."""
+    stage = PowerOutputStage(part=register())
+    hot = Corner("hot", junction=373.15)
+    (rule,) = [r for r in stage.stamp("s", "q", "d", hot).rules if isinstance(r, BreakdownRule)]
+    assert rule.single.value == pytest.approx(0.4 * 30e-3)
+    assert rule.repetitive.value == pytest.approx(0.4 * 30e-3)
+    bare = PowerOutputStage(part=register().model_copy(update={"thermal_resistance": None}))
+    (rule,) = [r for r in bare.stamp("s", "q", "d", hot).rules if isinstance(r, BreakdownRule)]
+    assert rule.repetitive.value is None
+
+
+def test_single_pulse_rating_is_that_of_the_definition() -> None:
+    """I_AS 1 A and E_AS 75 mJ at V_(BR) 50 V: t_av = 2 E / (I V) = 3.0 ms (TI ZHCSXY6B, fig. 6-4)."""
+    part = register("TPIC6595")
+    assert part.avalanche_energy is not None
+    assert part.avalanche_current is not None
+    assert 2 * part.avalanche_energy.typ / (part.avalanche_current.typ * 50.0) == pytest.approx(3.0e-3)
+
+
+def test_packages_follow_from_outputs_and_the_chain_knows_no_gate_loads() -> None:
+    board = read_board(BOARD)
+    packages = [c.package for c in board.channels]
+    assert packages == ["TPIC6B595 1"] * 6 + ["TPIC6B595 2"] * 6
+    assert all(c.switch.part is board.chain.register_ for c in board.channels)
+    assert {f.verdict for f in judge_chain(board)} <= {"pass", "tight"}
+
+
+def test_a_switch_of_another_register_is_refused(tmp_path: Path) -> None:
+    with pytest.raises(
+        InputError, match=r"the switch is an output of TPIC6595, and the registers of \[chain\] are TPIC6B595"
+    ):
+        changed(tmp_path, ('part = "TPIC6B595"', 'part = "TPIC6595"'))
+    with pytest.raises(InputError, match=r"an output of TPIC6B595, and the registers of \[chain\] are 74HC595"):
+        changed(tmp_path, ('register = "TPIC6B595"', 'register = "74HC595"'))
+
+
+def test_an_open_drain_output_drives_no_other_switch(tmp_path: Path) -> None:
+    with pytest.raises(InputError, match=r"outputs of TPIC6B595 are open-drain switches and cannot drive an n-mosfet"):
+        changed(tmp_path, ('switch = { part = "TPIC6B595" }', 'switch = { part = "n-logic-60v", gate = "100 ohm" }'))
+
+
+def test_a_load_that_the_output_cannot_pull_down_is_named() -> None:
+    part = register()
+    heavy = part.switching.model_copy(update={"load": part.switching.load.__class__(5.0, 5.0, 5.0, "ohm")})
+    with pytest.raises(ValueError, match="would not pull it down to a tenth"):
+        gate_shape(heavy, part.conducts)

@@ -1,0 +1,146 @@
+"""Vendors' model files as untrusted text: what is refused, what is understood, and that nothing of a text reaches a deck."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+import pytest
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
+
+from boardsim.errors import QuantityError
+from boardsim.parts.vendor.cards import read_library
+from boardsim.parts.vendor.expressions import Scope, number_of, parse, read_number, resolved, written
+from boardsim.parts.vendor.flatten import flatten
+from boardsim.parts.vendor.text import ModelTextError, Place, read_statements
+
+HERE = Place("x.lib", 1)
+NOTHING = Scope(lambda name: {"p": 3.0}.get(name), {})
+
+
+def value(text: str) -> float:
+    return number_of(parse(text, HERE), NOTHING, HERE)
+
+
+def law(text: str) -> str:
+    return written(resolved(parse(text, HERE), NOTHING, HERE), lambda n: f"n_{n}", lambda s: f"Vx_{s}", HERE)
+
+
+@pytest.mark.parametrize(
+    ("text", "number"),
+    [
+        ("4.7k", 4.7e3), ("10pF", 1e-11), ("2MEG", 2e6), ("1m", 1e-3), ("1f", 1e-15), ("5mA", 5e-3), ("25V", 25.0),
+        ("1e-14", 1e-14), (".5", 0.5), ("-3u", -3e-6), ("1mil", 25.4e-6),
+    ],
+)  # fmt: skip
+def test_numbers_are_read_as_spice_writes_them(text: str, number: float) -> None:
+    """Scale factors of SPICE 2G6's user guide."""
+    assert read_number(text.lower(), HERE) == pytest.approx(number)
+
+
+@pytest.mark.parametrize("text", ["5a", "4k7", "1x", "1e", "--1", "", "1e999", "0x10", "k"])
+def test_numbers_that_programs_read_differently_are_refused(text: str) -> None:
+    with pytest.raises(ModelTextError):
+        read_number(text, HERE)
+
+
+@pytest.mark.parametrize(
+    ("text", "number"),
+    [
+        ("1+2*3", 7), ("{(1+2)*3}", 9), ("2**3", 8), ("2*-p", -6), ("8/4/2", 1), ("5-2-1", 2), ("if(p>2, 1, 0)", 1),
+        ("p<2 ? 1 : p<4 ? 2 : 3", 2), ("log(exp(2))", 2), ("pwr(-2, 3)", 8), ("pwrs(-2, 3)", -8),
+        ("limit(9, 0, 5)", 5), ("table(1.5, 1, 10, 2, 20)", 15), ("table(9, 1, 10, 2, 20)", 20), ("sgn(-3)", -1),
+        ("!(1>2) && 2>1 ? 4 : 5", 4), ("uramp(-1)+stp(2)", 1), ("-(2**2)", -4), ("max(1,2)+min(1,2)", 3), ("pi", math.pi),
+    ],
+)  # fmt: skip
+def test_expressions_come_to_what_arithmetic_says(text: str, number: float) -> None:
+    assert value(text) == pytest.approx(number)
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "2^3", "-2**2", "2**3**2", "v(a)**0.5", "v(a)**v(b)", "q", "time", "rand(1)", "ddt(v(a))", "1/0", "sqrt(-1)", "ln(0)",
+        "file(1)", "if(1, 2, 3)", "1+(2>1)", "(((", "1 2", "", "table(v(a), 2, 1, 1, 2)", "limit(v(a), 5, 1)", "~1",
+        "(" * 500 + "1" + ")" * 500, "v(a", "i(a,b)", "system(1)", "abs()", "1<2<3",
+    ],
+)  # fmt: skip
+def test_expressions_that_are_ambiguous_or_unknown_are_refused(text: str) -> None:
+    with pytest.raises(ModelTextError, match=r"x\.lib:1"):
+        law(text)
+
+
+def test_a_whole_power_is_a_product_since_ngspices_own_drops_the_sign_of_its_base() -> None:
+    assert law("v(a)**3") == "(V(n_a) * V(n_a) * V(n_a))"
+    assert law("pwr(v(a), 3)") == "pow(abs(V(n_a)), 3.0)"
+
+
+def test_an_expression_that_doubles_at_every_step_is_refused_and_not_waited_for() -> None:
+    functions = "\n".join(f".func f{i}(x) {{f{i - 1}(x)+f{i - 1}(x)}}" for i in range(1, 40))
+    text = f".func f0(x) {{x+v(a)}}\n{functions}\n.subckt s a b\nb1 a b i=f39(v(b))\n.ends\n"
+    with pytest.raises(ModelTextError):
+        understood(text)
+
+
+def read(folder: Path, content: bytes | str, name: str = "m.lib") -> object:
+    (folder / name).write_bytes(content.encode() if isinstance(content, str) else content)
+    return read_library(read_statements(folder / name, folder))
+
+
+def understood(text: str) -> object:
+    from boardsim.parts.vendor.text import Statement
+
+    lines = tuple(Statement(Place("x.lib", i), t.lower()) for i, t in enumerate(text.splitlines(), 1))
+    library = read_library(lines)
+    found = library.subcircuits["s"]
+    return flatten(library, found, "p", {pin: f"deck_{pin}" for pin in found.pins}, 25.0)
+
+
+@pytest.mark.parametrize(
+    "line",
+    [
+        "a1 [a b] fs", "k1 l1 l2 0.9", "s1 a b a b sw", "r1 a b -5", "r1 a b", "r1 a b {v(a)}", "c1 a b 1n ic=3", "e1 a b poly(1) a b 0 1",
+        "e1 a b laplace {v(a)} {1}", "b1 a b v=table(file)", "d1 a b nothing", "x1 a b nothing", "v1 a b pulse(0 1 0)",
+        "v1 a b sin(0 1 1k)", "b1 a b v=i(v9)", "b1 a b v=v(nowhere)", "r1 a b 1 m=2", "d1 a b dm off", "f1 a b v9 2", "x1 a s",
+        "d1 a b dx", "d1 a b dbv", "d1 a b dibvl", "m1 a b b b mo", "i1 a b ac 1",
+    ],
+)  # fmt: skip
+def test_lines_that_cannot_be_translated_without_a_change_are_refused(line: str) -> None:
+    models = ".model dm d(is=1e-14)\n.model dx d(is=1e-14 foo=3)\n.model dbv d(is=1e-14 bv=5)\n.model dibvl d(is=1e-14 ibvl=1u)\n"
+    with pytest.raises(QuantityError, match=r"x\.lib:\d"):
+        understood(f"{models}.model mo nmos(level=7 vto=1)\n.subckt s a b\n{line}\n.ends\n")
+
+
+PIECES = st.sampled_from(
+    [".subckt s a b", ".ends", ".model m d(is=1e-14)", "r1 a b 1k", "b1 a b i=v(a)*2", ".param x=2", "*# shell touch x", ".control",
+     "+ rs=1", "* comment", ".include m.lib", ".endc", "d1 a b m", "shell touch x", "\x00", "x1 a b s", "{", "`id`", "\t.control"]
+)  # fmt: skip
+
+
+@settings(max_examples=300, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@given(
+    st.one_of(
+        st.text(max_size=120),
+        st.lists(st.one_of(PIECES, st.text(max_size=12)), max_size=10).map("\n".join),
+        st.binary(max_size=80),
+    )
+)
+def test_any_text_is_read_or_refused_and_never_holds_a_command_then(tmp_path: Path, text: str | bytes) -> None:
+    try:
+        read(tmp_path, text.encode("utf-8", "surrogatepass") if isinstance(text, str) else text)
+    except QuantityError:
+        return
+    content = text.decode("latin-1") if isinstance(text, bytes) else text
+    for line in content.replace("\r", "\n").split("\n"):
+        assert not line.strip().lower().startswith((".control", "shell", "*# shell", ".endc"))
+
+
+@settings(max_examples=300, deadline=None)
+@given(st.text(alphabet="0123456789.+-*/()<>=&|!?:,{} abvipxe", max_size=40))
+def test_any_expression_is_written_in_plain_characters_or_refused(text: str) -> None:
+    try:
+        found = law(text)
+    except ModelTextError:
+        return
+    assert set(found) <= set("0123456789.+-*/()<>=&|!?:, _abcdefghijklmnopqrstuvwxyzV")
