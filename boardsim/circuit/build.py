@@ -26,6 +26,7 @@ from boardsim.parts.elements import (
     Resistor,
     ToAnalog,
     ToDigital,
+    Transfer,
     VendorsPart,
     VoltageLaw,
 )
@@ -84,6 +85,8 @@ class Builder:
                 case CurrentLaw():
                     # A B source's current flows from its first node through it to the second.
                     c.BehavioralSource(e.name, e.minus, e.plus, current_expression=e.expression)
+                case Transfer():
+                    c.VCCS(e.name, e.minus, e.plus, e.a, e.b, transconductance=e.siemens)
                 case VoltageLaw():
                     c.BehavioralSource(e.name, e.plus, e.minus, voltage_expression=e.expression)
                 case ToDigital() | ToAnalog() | Gate() | FlipFlop():

@@ -9,7 +9,19 @@ from pydantic import Field, model_validator
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
-from boardsim.parts.elements import Ammeter, Element, Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
+from boardsim.parts.elements import (
+    Ammeter,
+    Element,
+    Inductor,
+    Port,
+    Probe,
+    Resistor,
+    Stored,
+    current,
+    plus,
+    scaled,
+    voltage,
+)
 from boardsim.parts.known_coil import MeasuredRise, inductance_from, resistance_from
 from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule, Rule
 from boardsim.parts.winding import ENAMEL_SOURCE, Winding
@@ -147,8 +159,12 @@ class Coil(Part):
         return (coil,), coil
 
     def more_probes(self, name: str) -> tuple[Probe, ...]:
-        """What a kind reads beyond voltages and currents; the quantity "e_held" then is what it stores [J]."""
+        """What a kind reads beyond voltages and currents."""
         return ()
+
+    def stored(self, corner: Corner) -> Stored | None:
+        """What a kind stores, where that is not L i^2 / 2."""
+        return None
 
     def more_rules(self) -> tuple[Rule, ...]:
         """What a kind is held against beyond pull-in and release."""
@@ -164,13 +180,9 @@ class Coil(Part):
         elements, meter = self.field(name, mid, b, corner)
         core = self.loss.typ
         through = plus(current(meter), scaled(1 / core, voltage(mid, b)))
-        probes = self.more_probes(name)
-        holds = any(probe.quantity == "e_held" for probe in probes)
-        port = (
-            Port("coil", (("v_coil", "i_coil"),), energy="e_held")
-            if holds
-            else Port("coil", (("v_coil", "i_coil"),), store=("i_l", corner.take(self.inductance, "inductance")))
-        )
+        pairs, more = (("v_coil", "i_coil"),), self.stored(corner)
+        store = ("i_l", corner.take(self.inductance, "inductance")) if more is None else None
+        port = Port("coil", pairs, store=store, energy=more)
         pull_in = Limit.of(self.pull_in, "pull-in current", "A", None, self.pull_in.max if self.pull_in else None)
         release = Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None)
         return Stamp(
@@ -183,7 +195,7 @@ class Coil(Part):
                 Probe("v_coil", voltage(a, b), "V"),
                 Probe("i_coil", through, "A"),
                 Probe("i_l", current(meter), "A"),
-                *probes,
+                *self.more_probes(name),
             ),
             ports=(port,),
             rules=(

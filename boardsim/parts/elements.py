@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
-from typing import Literal
+from typing import Any, Literal
 
 
 @dataclass(frozen=True)
@@ -134,6 +134,21 @@ class CurrentLaw:
 
 
 @dataclass(frozen=True)
+class Transfer:
+    """A current from minus to plus through the source, in proportion to the voltage from a to b. [S]
+
+    A law that is a straight line: ngspice works it out several times faster than an expression.
+    """
+
+    name: str
+    plus: str
+    minus: str
+    a: str
+    b: str
+    siemens: float
+
+
+@dataclass(frozen=True)
 class VoltageLaw:
     """A voltage from plus to minus, given by an expression of node voltages and of currents of ammeters. [V]"""
 
@@ -213,6 +228,7 @@ Element = (
     | Drive
     | CurrentDrive
     | CurrentLaw
+    | Transfer
     | VoltageLaw
     | ToDigital
     | ToAnalog
@@ -264,6 +280,14 @@ class Probe:
 
 
 @dataclass(frozen=True)
+class Stored:
+    """What a part stores, as a law of quantities that are read from it: arrays of the same length in, an array out. [J]"""
+
+    quantities: tuple[str, ...]
+    law: Callable[..., Any]
+
+
+@dataclass(frozen=True)
 class Port:
     """What the passivity audit sums for one part: pairs of voltage and current probes, current into the part.
 
@@ -275,8 +299,8 @@ class Port:
         Terminal power is the sum of their products. [W]
     holds : float
         Energy that the part's own capacitances can hold and return. [J]
-    energy : str
-        The quantity that says how much it stores, for a part whose store is not of that form; empty otherwise. [J]
+    energy : Stored or None
+        How much it stores, for a part whose store is not of that form. [J]
     store : tuple or None
         (quantity, value): the part stores value/2 x quantity^2 (L with its current, C with its voltage); the
         energy that it has dissipated, not the terminal energy, must then never fall.
@@ -290,4 +314,4 @@ class Port:
     holds: float = 0.0
     store: tuple[str, float] | None = None
     from_rest: bool = False
-    energy: str = ""
+    energy: Stored | None = None

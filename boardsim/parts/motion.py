@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 import math
-from typing import Annotated, Literal
+from typing import TYPE_CHECKING, Annotated, Literal
 
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, listed
-from boardsim.parts.elements import GROUND, Capacitor, CurrentLaw, Element, Probe, Resistor, scaled, voltage
+from boardsim.parts.elements import GROUND, Capacitor, CurrentLaw, Element, Probe, Resistor, Transfer, scaled, voltage
 from boardsim.parts.record import Record
 from boardsim.parts.rules import Limit, MotionRule, Motions
 from boardsim.quantities import (
@@ -24,6 +24,12 @@ from boardsim.quantities import (
     Quantity,
     assume,
 )
+
+if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
+    Floats = NDArray[np.float64]
 
 GRAVITY = 9.80665  # [m/s^2], standard acceleration of free fall
 _CREEP = 2e-3  # [m/s], below which dry friction fades: a slope for Newton's method
@@ -158,34 +164,52 @@ class Motion(Record):
         """The mass in a deck: node `name`_x holds its position [mm], `name`_v its speed [m/s]; `force` is an expression. [N]"""
         x, v = f"V({name}_x)", f"V({name}_v)"
         s, m = self.travel.typ * _MM, self.mass.typ
-        stiff = m * (math.pi / self.contact.typ) ** 2 / _MM  # [N/mm]
+        stiff = self._stiffness / _MM  # [N/mm]
         dash = 2 * damping_of_bounce(self.restitution.typ) * math.pi / self.contact.typ * m
-        forces = [f"({force})", f"-({self._steady(corner)!r}+{self.spring_rate.typ / _MM!r}*{x})"]
-        if self.friction.typ:
-            forces.append(f"-{self.friction.typ!r}*tanh({v}/{_CREEP!r})")
-        if self.damping.typ:
-            forces.append(f"-{self.damping.typ!r}*{v}")
-        forces.append(f"+({x}<0 ? max(-({stiff!r}*{x}+{dash!r}*{v}),0) : 0)")
-        forces.append(f"-({x}>{s!r} ? max({stiff!r}*({x}-{s!r})+{dash!r}*{v},0) : 0)")
-        return (
-            Capacitor(f"{name}_v", f"{name}_v", GROUND, 1.0),
-            CurrentLaw(f"{name}_v", f"{name}_v", GROUND, f"({''.join(forces)})/{m!r}"),
+        near, far = f"-({stiff!r}*{x}+{dash!r}*{v})", f"-({stiff!r}*({x}-{s!r})+{dash!r}*{v})"
+        node = f"{name}_v"
+        # One source for each law: ngspice works out an expression once more for each node in it. What is a straight line is none.
+        found: list[Element] = [
+            Capacitor(node, node, GROUND, m),  # of 1 F per kg: a force is a current
+            CurrentLaw(node, node, GROUND, f"{force}-{self._steady(corner)!r}"),
+            CurrentLaw(f"{name}_stops", node, GROUND, f"{x}<0 ? max({near},0) : ({x}>{s!r} ? min({far},0) : 0)"),
             Capacitor(f"{name}_x", f"{name}_x", GROUND, 1.0),
-            CurrentLaw(f"{name}_x", f"{name}_x", GROUND, f"{_MM!r}*{v}"),
+            Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, _MM),
             Resistor(f"{name}_x", f"{name}_x", GROUND, _LEAK),
-        )
+        ]
+        if self.spring_rate.typ:
+            found.append(Transfer(f"{name}_spring", GROUND, node, f"{name}_x", GROUND, self.spring_rate.typ / _MM))
+        if self.friction.typ:
+            found.append(CurrentLaw(f"{name}_rub", node, GROUND, f"-{self.friction.typ!r}*tanh({v}/{_CREEP!r})"))
+        if self.damping.typ:
+            found.append(Resistor(f"{name}_drag", node, GROUND, 1 / self.damping.typ))
+        return tuple(found)
 
-    def stored(self, name: str, corner: Corner) -> str:
-        """Energy of the moving mass, its spring, gravity and what its stops hold, as an expression. [J]"""
-        x, v = f"V({name}_x)", f"V({name}_v)"
-        s, m = self.travel.typ * _MM, self.mass.typ
-        stiff = m * (math.pi / self.contact.typ) ** 2
-        past = f"max({x}-{s!r},0)"
-        before = f"max(-{x},0)"
-        return (
-            f"{m / 2!r}*{v}*{v}+({self._steady(corner)!r}+{self.spring_rate.typ / 2 / _MM!r}*{x})*{x}/{_MM!r}"
-            f"+{stiff / 2 / _MM**2!r}*({past}*{past}+{before}*{before})"
-        )
+    @property
+    def _stiffness(self) -> float:
+        """Of a stop. [N/m]"""
+        return self.mass.typ * (math.pi / self.contact.typ) ** 2
+
+    def stored(self, x: Floats, v: Floats, corner: Corner) -> Floats:
+        """Energy of the moving mass, its spring, gravity and what its stops hold.
+
+        Parameters
+        ----------
+        x, v : (n,) array
+            Position [m] and speed [m/s].
+        corner : Corner
+
+        Returns
+        -------
+        (n,) array
+            [J]
+        """
+        import numpy as np
+
+        past = np.maximum(x - self.travel.typ, 0.0) + np.minimum(x, 0.0)
+        spring = (self._steady(corner) + self.spring_rate.typ / 2 * x) * x
+        found: Floats = self.mass.typ / 2 * v**2 + spring + self._stiffness / 2 * past**2
+        return found
 
     def probes(self, name: str) -> tuple[Probe, ...]:
         """Where it is, and how fast it moves."""

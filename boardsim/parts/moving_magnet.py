@@ -2,16 +2,19 @@
 
 from __future__ import annotations
 
-from typing import Annotated, ClassVar, Literal
+from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 
 from pydantic import Field
 
 from boardsim.parts.base import Assumption, Corner
 from boardsim.parts.coil import Coil
-from boardsim.parts.elements import GROUND, Ammeter, Element, Inductor, Probe, VoltageLaw, voltage
+from boardsim.parts.elements import Ammeter, Element, Inductor, Probe, Stored, VoltageLaw
 from boardsim.parts.motion import Motion
 from boardsim.parts.rules import Rule
 from boardsim.quantities import FORCE_CONSTANT, Quantity
+
+if TYPE_CHECKING:
+    from boardsim.parts.motion import Floats
 
 _POLARITY = "the other polarity (wired), more current, or a weaker spring"
 
@@ -61,12 +64,20 @@ class MovingMagnetCoil(Coil):
             meter,
             VoltageLaw(f"{name}_b", f"{name}_mi", b, f"{k!r}*V({name}_v)"),
             *self.motion.elements(name, f"{k!r}*{i}", corner),
-            VoltageLaw(f"{name}_e", f"{name}_e", GROUND, f"{henries / 2!r}*{i}*{i}+{self.motion.stored(name, corner)}"),
         ), coil
 
+    def stored(self, corner: Corner) -> Stored:
+        """What field and motion hold."""
+        henries = corner.take(self.inductance, "inductance")
+
+        def law(i: Floats, x: Floats, v: Floats) -> Floats:
+            return henries / 2 * i**2 + self.motion.stored(x, v, corner)
+
+        return Stored(("i_l", "position", "speed"), law)
+
     def more_probes(self, name: str) -> tuple[Probe, ...]:
-        """What moves, and what field and motion hold."""
-        return (*self.motion.probes(name), Probe("e_held", voltage(f"{name}_e"), "J"))
+        """What moves."""
+        return self.motion.probes(name)
 
     def more_rules(self) -> tuple[Rule, ...]:
         """What the motion is held against."""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Annotated, ClassVar, Literal
+from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 
 from pydantic import Field, model_validator
 
@@ -17,16 +17,21 @@ from boardsim.parts.elements import (
     Element,
     Probe,
     Resistor,
-    VoltageLaw,
+    Stored,
+    Transfer,
+    scaled,
     voltage,
 )
 from boardsim.parts.motion import Motion
 from boardsim.parts.rules import Rule
 from boardsim.quantities import INDUCTANCE, Quantity
 
+if TYPE_CHECKING:
+    from boardsim.parts.motion import Floats
+
 _MILLI = 1e3  # flux linkage is held in mVs: near 1, as ngspice's tolerances want it
 _LEAK = 1e9  # [ohm], the flux's way to ground at direct current
-_GIVE = 0.05  # share of the travel by which a stop may be passed before the gap's law ends
+_MM = 1e3  # and positions in mm
 
 
 class PlungerCoil(Coil):
@@ -90,27 +95,30 @@ class PlungerCoil(Coil):
     def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Ammeter]:
         """Flux, its current, and the plunger."""
         rest, slope = self._slopes(corner)
-        travel = self.motion.travel.typ
-        flux, x = f"V({name}_f)/{_MILLI!r}", f"V({name}_x)/1000.0"
-        within = f"min(max({x},{-_GIVE * travel!r}),{(1 + _GIVE) * travel!r})"
+        flux, x = f"V({name}_f)", f"V({name}_x)"  # [mVs], [mm]
         meter = Ammeter(f"{name}_m", a, f"{name}_mi")
-        force = f"{-slope / 2!r}*({flux})*({flux})"
-        gap = f"({rest!r}+{slope!r}*{within})"
+        gap = f"({rest / _MILLI!r}+{slope / _MILLI / _MM!r}*{x})"
         return (
             meter,
-            CurrentLaw(f"{name}_l", b, f"{name}_mi", f"({flux})*{gap}"),
+            CurrentLaw(f"{name}_l", b, f"{name}_mi", f"{flux}*{gap}"),
             Capacitor(f"{name}_f", f"{name}_f", GROUND, 1.0),
-            CurrentLaw(f"{name}_f", f"{name}_f", GROUND, f"{_MILLI!r}*(V({a})-V({b}))"),
+            Transfer(f"{name}_f", f"{name}_f", GROUND, a, b, _MILLI),
             Resistor(f"{name}_f", f"{name}_f", GROUND, _LEAK),
-            *self.motion.elements(name, force, corner),
-            VoltageLaw(
-                f"{name}_e", f"{name}_e", GROUND, f"({flux})*({flux})*{gap}/2+{self.motion.stored(name, corner)}"
-            ),
+            *self.motion.elements(name, f"{-slope / 2 / _MILLI**2!r}*{flux}*{flux}", corner),
         ), meter
 
+    def stored(self, corner: Corner) -> Stored:
+        """What field and motion hold."""
+        rest, slope = self._slopes(corner)
+
+        def law(flux: Floats, x: Floats, v: Floats) -> Floats:
+            return flux**2 * (rest + slope * x) / 2 + self.motion.stored(x, v, corner)
+
+        return Stored(("flux", "position", "speed"), law)
+
     def more_probes(self, name: str) -> tuple[Probe, ...]:
-        """What moves, and what field and motion hold."""
-        return (*self.motion.probes(name), Probe("e_held", voltage(f"{name}_e"), "J"))
+        """Its flux linkage, and what moves."""
+        return (Probe("flux", scaled(1 / _MILLI, voltage(f"{name}_f")), "Wb"), *self.motion.probes(name))
 
     def more_rules(self) -> tuple[Rule, ...]:
         """What the motion is held against."""

@@ -251,9 +251,9 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
 
     span = stop - start
     held: dict[int | None, float] = {}
-    for channel, _, port in deck.ports:
-        if port.energy and channel is not None:
-            held[channel] = max(held.get(channel, 0.0), float(extremes.high[row[channel, port.energy]]))
+    for i, (channel, _, port) in enumerate(deck.ports):
+        if port.energy is not None and channel is not None:
+            held[channel] = max(held.get(channel, 0.0), float(falls.most[i]))
         elif port.store and channel is not None:
             energy = 0.5 * port.store[1] * _largest(extremes, row[channel, port.store[0]]) ** 2
             held[channel] = max(held.get(channel, 0.0), energy)
@@ -392,8 +392,8 @@ def _feed_falls(falls: Falls, deck: Deck, row: Mapping[Key, int], t: Floats, y: 
     pairs, stored = [], np.zeros((len(deck.ports), len(t)))
     for i, (c, _, port) in enumerate(deck.ports):
         pairs.append([(voltage(i, c, v), y[row[c, a]]) for v, a in port.pairs])
-        if port.energy:
-            stored[i] = y[row[c, port.energy]]
+        if port.energy is not None:
+            stored[i] = port.energy.law(*(y[row[c, q]] for q in port.energy.quantities))
         elif port.store is not None:
             stored[i] = 0.5 * port.store[1] * voltage(i, c, port.store[0]) ** 2
     falls.feed(t, pairs, stored)

@@ -61,6 +61,8 @@ class Falls:
         uncertain by for want of points. [J]
     through : (n,) array
         Sum of the energies that went in or out. [J]
+    most : (n,) array
+        The most that each has stored. [J]
     rest : dict
         First values, for parts that are counted from their rest.
     """
@@ -69,6 +71,7 @@ class Falls:
     drop: Floats = field(init=False)
     spread: Floats = field(init=False)
     through: Floats = field(init=False)
+    most: Floats = field(init=False)
     _total: Floats = field(init=False)
     _top: Floats = field(init=False)
     rest: dict[tuple[int, str], float] = field(default_factory=dict)
@@ -76,13 +79,14 @@ class Falls:
 
     def __post_init__(self) -> None:
         self.drop, self.spread, self._total = np.zeros(self.n), np.zeros(self.n), np.zeros(self.n)
-        self._top, self.through = np.zeros(self.n), np.zeros(self.n)
+        self._top, self.through, self.most = np.zeros(self.n), np.zeros(self.n), np.zeros(self.n)
 
     def feed(self, t: Floats, pairs: list[list[tuple[Floats, Floats]]], stored: Floats) -> None:
         """Times (m,) [s]; per part its pairs of voltage and current (m,); stored energies (n, m). [J]"""
         dt = np.diff(t)
         if self._first is None:
             self._first = stored[:, 0]
+        self.most = np.maximum(self.most, stored.max(axis=1))
         for k, terminals in enumerate(pairs):
             step = np.zeros_like(dt)
             for v, i in terminals:
