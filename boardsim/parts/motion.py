@@ -36,7 +36,11 @@ _CREEP = 2e-3  # [m/s], below which dry friction fades: a slope for Newton's met
 _MM = 1e3  # positions are held in mm: near 1, as ngspice's tolerances want it
 _STIFFEST = 20.0  # damping ratio of a stop that gives back nothing to speak of
 _NEAR_ONE = 1e-7  # where both formulas divide by nothing
-_LEAK = 1e9  # [ohm], gives the integrators a way to ground at direct current; hours against a run
+SMALL = (
+    1e-3  # of what integrators would be with one ampere for each newton, volt or m/s: at picosecond steps the rounding
+)
+# of the charge of a farad makes milliamperes, which Newton's method cannot meet
+_LEAK = 1e12  # [ohm], gives the integrators a way to ground at direct current; hours against a run
 
 
 def damping_of_bounce(restitution: float) -> float:
@@ -166,23 +170,28 @@ class Motion(Record):
         s, m = self.travel.typ * _MM, self.mass.typ
         stiff = self._stiffness / _MM  # [N/mm]
         dash = 2 * damping_of_bounce(self.restitution.typ) * math.pi / self.contact.typ * m
+        stiff, dash = SMALL * stiff, SMALL * dash
         near, far = f"-({stiff!r}*{x}+{dash!r}*{v})", f"-({stiff!r}*({x}-{s!r})+{dash!r}*{v})"
         node = f"{name}_v"
         # One source for each law: ngspice works out an expression once more for each node in it. What is a straight line is none.
         found: list[Element] = [
-            Capacitor(node, node, GROUND, m),  # of 1 F per kg: a force is a current
-            CurrentLaw(node, node, GROUND, f"{force}-{self._steady(corner)!r}"),
+            Capacitor(node, node, GROUND, SMALL * m),  # a force is a current
+            CurrentLaw(node, node, GROUND, f"{SMALL!r}*({force}-{self._steady(corner)!r})"),
             CurrentLaw(f"{name}_stops", node, GROUND, f"{x}<0 ? max({near},0) : ({x}>{s!r} ? min({far},0) : 0)"),
-            Capacitor(f"{name}_x", f"{name}_x", GROUND, 1.0),
-            Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, _MM),
+            Capacitor(f"{name}_x", f"{name}_x", GROUND, SMALL),
+            Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, SMALL * _MM),
             Resistor(f"{name}_x", f"{name}_x", GROUND, _LEAK),
         ]
         if self.spring_rate.typ:
-            found.append(Transfer(f"{name}_spring", GROUND, node, f"{name}_x", GROUND, self.spring_rate.typ / _MM))
+            found.append(
+                Transfer(f"{name}_spring", GROUND, node, f"{name}_x", GROUND, SMALL * self.spring_rate.typ / _MM)
+            )
         if self.friction.typ:
-            found.append(CurrentLaw(f"{name}_rub", node, GROUND, f"-{self.friction.typ!r}*tanh({v}/{_CREEP!r})"))
+            found.append(
+                CurrentLaw(f"{name}_rub", node, GROUND, f"-{SMALL * self.friction.typ!r}*tanh({v}/{_CREEP!r})")
+            )
         if self.damping.typ:
-            found.append(Resistor(f"{name}_drag", node, GROUND, 1 / self.damping.typ))
+            found.append(Resistor(f"{name}_drag", node, GROUND, 1 / (SMALL * self.damping.typ)))
         return tuple(found)
 
     @property

@@ -22,7 +22,7 @@ from boardsim.parts.elements import (
     scaled,
     voltage,
 )
-from boardsim.parts.motion import Motion
+from boardsim.parts.motion import SMALL, Motion
 from boardsim.parts.rules import Rule
 from boardsim.quantities import INDUCTANCE, Quantity
 
@@ -30,7 +30,7 @@ if TYPE_CHECKING:
     from boardsim.parts.motion import Floats
 
 _MILLI = 1e3  # flux linkage is held in mVs: near 1, as ngspice's tolerances want it
-_LEAK = 1e9  # [ohm], the flux's way to ground at direct current
+_LEAK = 1e12  # [ohm], the flux's way to ground at direct current
 _MM = 1e3  # and positions in mm
 
 
@@ -101,8 +101,8 @@ class PlungerCoil(Coil):
         return (
             meter,
             CurrentLaw(f"{name}_l", b, f"{name}_mi", f"{flux}*{gap}"),
-            Capacitor(f"{name}_f", f"{name}_f", GROUND, 1.0),
-            Transfer(f"{name}_f", f"{name}_f", GROUND, a, b, _MILLI),
+            Capacitor(f"{name}_f", f"{name}_f", GROUND, SMALL),
+            Transfer(f"{name}_f", f"{name}_f", GROUND, a, b, SMALL * _MILLI),
             Resistor(f"{name}_f", f"{name}_f", GROUND, _LEAK),
             *self.motion.elements(name, f"{-slope / 2 / _MILLI**2!r}*{flux}*{flux}", corner),
         ), meter
