@@ -48,7 +48,10 @@ class PeakRule:
 
 @dataclass(frozen=True)
 class FloorRule:
-    """The highest value of a probe of a channel that is fired must reach a limit."""
+    """The highest value of a probe of a channel that is fired must reach a limit.
+
+    `any_time` says that the logic rail does not bear on it, so that the best moment speaks for every pulse.
+    """
 
     check: str
     quantity: str
@@ -56,6 +59,7 @@ class FloorRule:
     consequence: Consequence
     what: str
     advice: str
+    any_time: bool = False
 
 
 @dataclass(frozen=True)

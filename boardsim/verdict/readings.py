@@ -187,7 +187,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     at_ends = {
         (c, r.quantity): Samples(_within(firing.on[c][:, 1], start, stop))
         for c, r in rules
-        if moving and isinstance(r, FloorRule) and c is not None
+        if moving and isinstance(r, FloorRule) and not r.any_time and c is not None
     }
     avalanches = {
         (c, r.voltage): (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None
