@@ -10,6 +10,7 @@ from typing import Any
 
 from pydantic import ValidationError
 
+from boardsim.board.bridges import backwards, refuse_wrong_bridges, with_opposites
 from boardsim.board.chain_outputs import refuse_wrong_outputs
 from boardsim.board.power_up import PowerUpTable
 from boardsim.board.ranges import read_range, write_range
@@ -46,6 +47,8 @@ class Channel:
     clamp: Any  # a part of role "clamp"
     leads: Leads | None = None  # between coil and board; none: the coil sits on the board
     package: str = ""  # which one of several channels' packages its switch is in, such as "array 2"
+    opposite: int | None = None  # the channel that drives the same coil the other way, of a full bridge
+    forwards: bool = True  # whether it drives the coil forwards; the other way round its readings change sign
 
 
 @dataclass(frozen=True)
@@ -204,7 +207,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     except ValidationError as err:
         raise InputError(problems_of(err, file)) from None
     problems: list[Problem] = []
-    channels = _lay_out(board, file, problems)
+    channels = with_opposites(_lay_out(board, file, problems), board)
     _refuse_shared_labels(channels, file, problems)
     exclusive = []
     numbers = {c.number for c in channels}
@@ -227,6 +230,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         problems.append(file.problem(("limits", "brown_out"), text))
     problems += _of_the_logic_rail(board, file)
     problems += refuse_wrong_outputs(board, file)
+    problems += refuse_wrong_bridges(board, file)
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
     around = None
@@ -331,18 +335,26 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
     """One Channel per number of each range; complains of what is claimed twice or lies outside the chain."""
     channels: list[Channel] = []
     claimed: dict[str, dict[int, str]] = {"channel": {}, "output": {}, "bit": {}}
-    for text, group in board.channels.items():
-        keys: Keys = ("channels", text)
-        numbers = _range(text, file, keys, problems)
+    ranges = [(text, group, "") for text, group in board.channels.items()]
+    ranges += [
+        (text, backwards(text, group), "reverse_")
+        for text, group in board.channels.items()
+        if group.reverse is not None
+    ]
+    for text, group, prefix in ranges:
+        keys: Keys = ("channels", text, "reverse") if prefix else ("channels", text)
+        numbers = _range(group.reverse or "" if prefix else text, file, keys, problems)
         columns = {"outputs": numbers, "bits": numbers, "numbers": numbers}
         for column in columns:
             given = getattr(group, column)
             if given is not None:
-                columns[column] = _range(given, file, (*keys, column), problems)
-                if len(columns[column]) not in (0, len(numbers)):
+                place = ("channels", text, prefix + column)
+                told = bool(prefix) and column == "numbers"  # by the channels that these are the reverse of
+                columns[column] = _range(given, file, place, [] if told else problems)
+                if len(columns[column]) not in (0, len(numbers)) and not told:
                     problems.append(
                         file.problem_at(
-                            (*keys, column),
+                            place,
                             f"names {len(columns[column])} where the range has {len(numbers)} channels",
                         )
                     )
@@ -350,7 +362,7 @@ def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[
                 columns[column] = columns["outputs"]
         if any(len(c) != len(numbers) for c in columns.values()):
             continue
-        _claim(group, text, {"channel": numbers, **columns}, claimed, board.chain, file, problems)
+        _claim(group, text, {"channel": numbers, **columns}, claimed, board.chain, file, problems, prefix)
         packages = _packages(group, columns["outputs"], channels)
         for number, output, bit, n, package in zip(
             numbers, columns["outputs"], columns["bits"], columns["numbers"], packages, strict=True
@@ -377,6 +389,7 @@ def _claim(
     chain: Chain,
     file: TomlFile,
     problems: list[Problem],
+    prefix: str = "",
 ) -> None:
     """Complain of numbers that an earlier range has, or that lie outside the chain; once where one follows from another."""
     registers = "1 register has" if chain.count == 1 else f"{chain.count} registers have"
@@ -384,7 +397,8 @@ def _claim(
     for what, column in (("channel", "channel"), ("output", "outputs"), ("bit", "bits")):
         own = column != "channel" and getattr(group, column) is not None
         blamed = set() if own else blamed
-        keys: Keys = ("channels", text, column) if own else ("channels", text)
+        whole: Keys = ("channels", text, "reverse") if prefix else ("channels", text)
+        keys: Keys = ("channels", text, prefix + column) if own else whole
         values = columns[column]
         fresh = [n for n in values if n not in blamed]
         if twice := [n for n in fresh if n in claimed[what]]:

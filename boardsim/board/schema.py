@@ -169,6 +169,14 @@ class ChannelRange(Record):
     )
     label: Name = Field("channel {n}", description="name for reports; {n} is the channel's number")
     numbers: str | None = Field(None, description="numbers for {n}, in order; the channel numbers if absent")
+    reverse: str | None = Field(
+        None, description="of a full bridge: further channel numbers that fire the same coils backwards, in order"
+    )
+    reverse_outputs: str | None = Field(None, description="their register outputs; their channel numbers if absent")
+    reverse_bits: str | None = Field(None, description="their bits of the firmware's image; their outputs if absent")
+    reverse_label: Name | None = Field(
+        None, description='their name for reports, with {n} as in label; the label and "back" if absent'
+    )
 
     @model_validator(mode="after")
     def _fits_together(self) -> ChannelRange:

@@ -9,6 +9,7 @@ from functools import partial
 from typing import Literal
 
 from boardsim.board.reader import Board, Channel
+from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
@@ -283,8 +284,7 @@ def add_logic(parts: Assembly, board: Board, corner: Corner) -> None:
 def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> Deck:
     """What was collected as a deck: sums over packages and over all coils, and the rail's own rule."""
     parts.add_totals()
-    total = plus(*(s for (_, quantity), s in parts.signals.items() if quantity == "i_coil"))
-    parts.signals[None, "i_total"] = total
+    parts.signals[None, "i_total"] = plus(*drawn(parts.signals))
     parts.units[None, "i_total"] = "A"
     parts.rules.append(PlacedRule(_rail_rule(board), None, "coil rail", "board"))
     if board.logic.derived:
@@ -310,6 +310,9 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
 
 def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel, driven: Stamp) -> None:
     """A channel behind what drives its pin."""
+    if channel.opposite is not None:
+        add_bridge_channel(parts, board, corner, channel, driven, RAIL)
+        return
     k, name, label = channel.number, f"c{channel.number}", channel.label
     pin, load, stage = f"{name}_q", f"{name}_d", f"{name}_s"
     coil_end = load if channel.leads is None else f"{name}_k"

@@ -35,6 +35,8 @@ class Part(Record):
     role: ClassVar[str] = ""
     side: ClassVar[Literal["low", "high"]] = "low"
     """Of a switch: whether it ties the coil to ground, and the coil's other end lies at the rail, or the other way round."""
+    both_ways: ClassVar[bool] = False
+    """Of a switch: whether its coil lies between two of it, each on a channel number of its own, and takes either direction."""
     in_the_chain: ClassVar[bool] = False
     """Of a switch: whether it is an output of the chain's own registers."""
     holds_switch: ClassVar[bool] = False

@@ -218,11 +218,15 @@ class PullInRule:
 
 @dataclass(frozen=True)
 class ReleaseRule:
-    """When a channel is fired again its coil current must have fallen below the release current."""
+    """When a channel is fired again its coil current must have fallen below the release current.
+
+    `besides` are channels that drive the same coil the other way: what they left counts too, in either direction.
+    """
 
     check: str
     quantity: str
     limit: Limit
+    besides: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -230,12 +234,14 @@ class IdleRule:
     """Before its first pulse and after its last a channel's coil must carry less than the release current.
 
     `limit` is that current; where it was not given, `share` of the current that settles in the coil at the lowest supply.
+    `besides` are channels that drive the same coil the other way, at their command.
     """
 
     check: str
     quantity: str
     limit: Limit
     share: float
+    besides: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
