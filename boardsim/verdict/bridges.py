@@ -1,13 +1,16 @@
-"""Legs of bridges: whether both transistors of one conduct at once."""
+"""Bridges: whether both transistors of a leg conduct at once, and both directions of a coil are asked for at once."""
 
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 
 import numpy as np
 
+from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
+from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import Limit, ShootThroughRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench, when
@@ -63,3 +66,75 @@ def judge_leg(rule: ShootThroughRule, placed: PlacedRule, leg: Leg, bench: Bench
     said = f"{placed.label}: between the transistors of its leg at least {left} are left{when(least.start)}"
     margin = least.lasting / rule.dead_time if rule.dead_time > 0 else math.nan
     return bench.finding(placed, limit, what, least.lasting, margin, least.start, said, "destroy", worse="low")
+
+
+def fired_again(firing: Firing, channel: int, besides: tuple[int, ...] = ()) -> Floats:
+    """When a channel is fired while an earlier pulse, of it or of those `besides`, may have left current in its coil. [s]"""
+    starts = firing.on[channel][:, 0]
+    earliest = min((float(s[0, 0]) for c in (channel, *besides) if len(s := firing.on[c])), default=math.inf)
+    later: Floats = starts[starts > earliest]
+    return later
+
+
+def both_at_once(one: Floats, other: Floats) -> Floats:
+    """The stretches in which two channels are on together: rows (from, to) of each [s], (n, 2), into such rows. [s]"""
+    rows: list[tuple[float, float]] = []
+    i = j = 0
+    while i < len(one) and j < len(other):
+        start, stop = max(one[i, 0], other[j, 0]), min(one[i, 1], other[j, 1])
+        if start < stop:
+            rows.append((float(start), float(stop)))
+        if one[i, 1] < other[j, 1]:
+            i += 1
+        else:
+            j += 1
+    return np.array(rows, dtype=np.float64).reshape(-1, 2)
+
+
+def judge_directions(board: Board, firing: Firing) -> Iterator[Finding]:
+    """Whether both directions of a coil are on at once; nothing of a coil of which only one is ever fired.
+
+    Notes
+    -----
+    Both legs then hold their end of the coil at the rail: it gets no voltage, whatever both channels were meant to do, and
+    what current it has runs on round through both upper transistors.
+    """
+    for channel in board.channels:
+        if channel.opposite is None or not channel.forwards:
+            continue
+        spans = firing.on[channel.number], firing.on[channel.opposite]
+        if not all(len(s) for s in spans):
+            continue
+        found = both_at_once(*spans)
+        lengths = found[:, 1] - found[:, 0]
+        back = board.channel(channel.opposite).label
+        said = f"{channel.label} and {back}: "
+        if len(found):
+            k = int(np.argmax(lengths))
+            times = f" ({len(found)} times)" if len(found) > 1 else ""
+            said += (
+                f"both directions of one coil are on at once for {in_units(float(lengths[k]), 's')} from "
+                f"{in_units(float(found[k, 0]), 's', 4)} on{times}, and it gets no voltage; one at a time may be; "
+                "try: end one before the other starts"
+            )
+        else:
+            said += "the two directions of their coil are never on at once"
+        at = float(found[int(np.argmax(lengths)), 0]) if len(found) else None
+        yield Finding(
+            "overlap",
+            "directions of one coil on at once",
+            "firing",
+            channel.number,
+            channel.label,
+            2.0 if len(found) else 1.0,
+            1.0,
+            "1",
+            -1.0 if len(found) else 0.0,
+            at,
+            "misbehave",
+            "fail" if len(found) else "pass",
+            said,
+            source="one voltage lies across a coil",
+            shape="count",
+            channels=(channel.number, channel.opposite),
+        )

@@ -38,13 +38,14 @@ def judge_release(
     times, values = samples
     if not len(values):
         return
-    k = int(np.argmax(values))
-    value, at, bound = max(float(values[k]), 0.0), float(times[k]), rule.limit.value
+    left = np.abs(values) if rule.besides else np.maximum(values, 0.0)
+    k = int(np.argmax(left))
+    value, at, bound = float(left[k]), float(times[k]), rule.limit.value
     margin = None if bound is None else (bound - value) / bound
-    said = (
-        f"{placed.label}: fired again at {in_units(at, 's', 4)} while its coil still carries {in_units(value, 'A')}; "
-    )
-    said += _held(placed, bound, margin, "lets go below", "release", "a longer pause, or a clamp of higher voltage")
+    other_way = " the other way" if rule.besides and values[k] < 0 else ""
+    said = f"{placed.label}: fired again at {in_units(at, 's', 4)} while its coil still carries {in_units(value, 'A')}{other_way}; "
+    remedy = "a longer pause" if rule.besides else "a longer pause, or a clamp of higher voltage"
+    said += _held(placed, bound, margin, "lets go below", "release", remedy)
     yield bench.finding(placed, rule.limit, "coil current when fired again", value, margin, at, said)
 
 

@@ -59,7 +59,7 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
         nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))
-        scale = readings.high.get((placed.channel, "i_coil"), (0.0, 0.0))[0]
+        scale = max(abs(of.get((placed.channel, "i_coil"), (0.0, 0.0))[0]) for of in (readings.high, readings.low))
         for finding in _apply(placed, readings, firing, deck, bench):
             size = scale if finding.unit == "A" else 0.0
             size = hottest if finding.unit == "W" and finding.limit is None else size

@@ -30,7 +30,7 @@ from boardsim.parts.rules import (
     Rule,
     ShootThroughRule,
 )
-from boardsim.verdict.bridges import Leg
+from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.watch import (
@@ -170,12 +170,14 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if isinstance(r, PullInRule) and c is not None
     }
     release = {
-        c: Samples(_within(firing.on[c][1:, 0], start, stop))
+        c: Samples(_within(fired_again(firing, c, r.besides), start, stop))
         for c, r in rules
         if isinstance(r, ReleaseRule) and c is not None
     }
     idle = {
-        c: Samples(_at_rest(firing.on[c], start, stop)) for c, r in rules if isinstance(r, IdleRule) and c is not None
+        c: Samples(_at_rest(np.concatenate([firing.on[k] for k in (c, *r.besides)]), start, stop))
+        for c, r in rules
+        if isinstance(r, IdleRule) and c is not None
     }
     drive = {
         (c, quantity): Samples(_within(firing.on[c][:, 1], start, stop))

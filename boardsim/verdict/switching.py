@@ -12,6 +12,7 @@ from boardsim.firing.pattern import Pulse
 from boardsim.firing.schedule import Firing, MovedPulse
 from boardsim.parts.controller import Controller
 from boardsim.quantities import apart, in_units
+from boardsim.verdict.bridges import judge_directions
 from boardsim.verdict.chain import judge_chain
 from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.chain_loads import judge_loads
@@ -35,6 +36,7 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     for members, most, reason in board.exclusive:
         label = f"channels {write_range(members)}"
         found.append(_at_once(board, firing, members, most, "exclusive channels on at once", label, reason))
+    found += judge_directions(board, firing)
     loads = where_limits_hold(board, judge_loads(board, firing))
     return [*found, *loads, *judge_chain(board), *judge_supply(board, firing)]
 

@@ -1,0 +1,79 @@
+"""Both directions of a coil at once, and when a coil between two legs counts as fired again; no waveforms needed."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+
+from boardsim.board.reader import Board, read_board
+from boardsim.circuit.assemble import assemble, windows
+from boardsim.circuit.deck import Deck
+from boardsim.firing.pattern import Pattern, Pulse
+from boardsim.firing.schedule import Firing, fire
+from boardsim.parts.base import NOMINAL
+from boardsim.parts.rules import IdleRule, ReleaseRule
+from boardsim.verdict.bridges import both_at_once, fired_again, judge_directions
+
+FOLDER = Path(__file__).parents[1] / "boards" / "f15_both_directions"
+
+
+def fired(*pulses: tuple[int, float, float]) -> tuple[Board, Firing]:
+    board = read_board(FOLDER / "board.toml")
+    return board, fire(board, Pattern(board.path, "p", None, tuple(Pulse(*p) for p in pulses)))
+
+
+def made(*pulses: tuple[int, float, float]) -> Deck:
+    board, firing = fired(*pulses)
+    return assemble(board, firing, NOMINAL, windows(board, firing)[0])
+
+
+def test_stretches_of_both_are_those_of_a_comparison_of_every_pair() -> None:
+    dice = np.random.default_rng(5)
+    one, other = (np.sort(dice.uniform(0, 1, 60)).reshape(-1, 2) for _ in range(2))
+    pairs = [(max(a, c), min(b, d)) for a, b in one for c, d in other if max(a, c) < min(b, d)]
+    assert len(pairs) > 10
+    np.testing.assert_allclose(both_at_once(one, other), sorted(pairs))
+    assert both_at_once(one, np.zeros((0, 2))).shape == (0, 2)
+
+
+def test_directions_on_together_fail_and_say_for_how_long() -> None:
+    """Commanded 1 to 5 ms and 4 to 8 ms: both from 4 to 5 ms, and a register frame of 2.5 us later."""
+    (f,) = judge_directions(*fired((0, 1e-3, 4e-3), (4, 4e-3, 4e-3)))
+    assert (f.check, f.verdict, f.value, f.limit, f.consequence) == ("overlap", "fail", 2.0, 1.0, "misbehave")
+    assert f.sentence.startswith(
+        "gate 0 and gate 0 back: both directions of one coil are on at once for 1.00 ms from 4.003 ms on"
+    )
+
+
+def test_one_after_the_other_passes_also_on_one_latch() -> None:
+    (f,) = judge_directions(*fired((0, 1e-3, 4e-3), (4, 5e-3, 4e-3)))
+    assert (f.verdict, f.margin) == ("pass", 0.0)
+
+
+def test_nothing_is_said_where_one_direction_is_never_fired() -> None:
+    assert not [*judge_directions(*fired((4, 1e-3, 4e-3)))]
+
+
+def test_the_first_pulse_back_is_a_repeat_of_the_pulse_forwards() -> None:
+    _, firing = fired((0, 1e-3, 2e-3), (4, 9e-3, 2e-3), (0, 20e-3, 2e-3))
+    alone, back, forth = fired_again(firing, 0), fired_again(firing, 4, (0,)), fired_again(firing, 0, (4,))
+    np.testing.assert_allclose(alone, [20e-3], atol=10e-6)
+    np.testing.assert_allclose(back, [9e-3], atol=10e-6)
+    np.testing.assert_allclose(forth, [20e-3], atol=10e-6)
+    assert not len(fired_again(firing, 4))
+
+
+def test_a_bridge_has_one_coil_whose_current_changes_sign_with_the_channel_and_counts_once_by_magnitude() -> None:
+    deck = made((0, 1e-3, 1e-3))
+    ours, theirs = (
+        {n: k for k, n in deck.signals[0, "i_coil"]},
+        {n: k for k, n in deck.signals[4, "i_coil"]},
+    )
+    assert theirs == {name: -share for name, share in ours.items()}
+    assert deck.signals[None, "i_total"] == ((1.0, "v(c0_size)"),)
+    coils = [line for line in deck.netlist.splitlines() if line.startswith("L") and "c0_l" in line]
+    assert len(coils) == 1
+    idle = [p.rule for p in deck.rules if isinstance(p.rule, IdleRule)]
+    assert [r.besides for r in idle] == [(4,)]
+    assert {p.channel: p.rule.besides for p in deck.rules if isinstance(p.rule, ReleaseRule)} == {0: (4,), 4: (0,)}
