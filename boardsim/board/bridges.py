@@ -13,7 +13,7 @@ from boardsim.errors import Problem, QuantityError
 from boardsim.parts.record import named_like
 
 if TYPE_CHECKING:
-    from boardsim.board.reader import Channel
+    from boardsim.board.reader import Board, Channel
 
 _OF_REVERSE = ("reverse_outputs", "reverse_bits", "reverse_label")
 
@@ -31,6 +31,11 @@ def backwards(text: str, group: ChannelRange) -> ChannelRange:
             "numbers": group.numbers or text,
         }
     )
+
+
+def forwards(board: Board) -> tuple[Channel, ...]:
+    """One channel for every coil of a board: of a full bridge the one that drives it forwards."""
+    return tuple(c for c in board.channels if c.forwards)
 
 
 def with_opposites(channels: list[Channel], board: BoardFile) -> list[Channel]:

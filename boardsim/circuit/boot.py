@@ -178,7 +178,8 @@ def _chain(parts: Assembly, board: Board, boot: Boot, volts: float, detail: Deta
         name = f"c{channel.number}_q"
         leaning = None
         if not register.open_drain:
-            upwards = (channel.switch.active == "high") == boot.leans_on
+            # Both legs of a bridge at the same level would give its coil nothing.
+            upwards = (channel.switch.active == "high") == (boot.leans_on and channel.forwards)
             leaning = Leaning(upwards, register.off_leakage.typ, f"min(max(V({LOGIC}),V({RAIL})),{volts!r})")
         loads = board.logic.derived
         return Stamp(elements=output_pin(register, name, name, channel.output, LOGIC, ENABLED, leaning, loads))

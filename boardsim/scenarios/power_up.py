@@ -12,6 +12,7 @@ from pathlib import Path
 
 import numpy as np
 
+from boardsim.board.bridges import forwards
 from boardsim.board.corners import corners, nominal_only
 from boardsim.board.reader import Board
 from boardsim.circuit.boot import Boot, boot_deck, detail_of
@@ -102,7 +103,7 @@ def power_up(
     -----
     What a storage stage wakes up with is unknown (NXP 74HC595 rev. 6: clear does not touch it), so that every word has to be
     harmless. All ones turn on every switch that is on while its output is high, all zeros every other; where a board has both,
-    a word that turns on all is added. On a supply that gives way under them a coil carries most alone: one of every build
+    a word that turns on all is added, as where a board has full bridges, whose coils get nothing of all ones. On a supply that gives way under them a coil carries most alone: one of every build
     does. A random word shows what else may come. A latch line that floats can at worst copy one unknown word over another. The corners are those with the supply high and the coils cold,
     which give every uncommanded current its highest value.
     """
@@ -168,12 +169,13 @@ def boots(board: Board, seed: int) -> Iterator[Boot]:
         "storage all zeros": 0,
         f"storage random (random number {seed})": dice.getrandbits(width),
     }
-    on = sum(1 << c.output for c in board.channels if c.switch.active == "high")
-    if any(c.switch.active == "low" for c in board.channels) and on:
+    on = sum(1 << c.output for c in forwards(board) if c.switch.active == "high")
+    bridges = sum(1 << c.output for c in board.channels if c.opposite is not None)
+    if (any(c.switch.active == "low" for c in board.channels) and on) or bridges:
         words["storage with every coil on"] = on
     alone = [build[0] for build in alike(board)]
-    if len(alone) < len(board.channels):
-        off = ones & ~on
+    if len(alone) < len(forwards(board)):
+        off = ones & ~(on | bridges)
         words["storage with one coil of each build on"] = off ^ sum(1 << board.channel(n).output for n in alone)
     for name, word in words.items():
         yield _switched_on(board, name, Contents(dice.getrandbits(width) if "random" in name else word, word), True)
@@ -224,10 +226,10 @@ def logic_comes(board: Board) -> tuple[float, float]:
 
 
 def _reset(board: Board) -> Boot:
-    """Every channel on as the firmware means it, then a reset: pins float until the first frame, all off."""
+    """Every coil on as the firmware means it, then a reset: pins float until the first frame, all off."""
     chain = board.chain
     off = shift_in(ChainState(chain.outputs), 0, chain)
-    image = sum(1 << c.bit for c in board.channels)
+    image = sum(1 << c.bit for c in forwards(board))
     on = _RESET_BEGINS + frame_time(chain)
     reset = on + min(_SETTLED * _slowest(board), _LONGEST_PULSE)
     first = reset + board.power_up.first_frame.max
@@ -401,7 +403,9 @@ def _told(board: Board, all_boots: Sequence[Boot], seed: int) -> Iterator[str]:
         f"what the storage stage of {chain.count * chain.register_.outputs} outputs wakes up with is unknown: run with all "
         f"ones, all zeros and a random word (random number {seed})"
     )
-    if all(c.switch.active == "high" for c in board.channels):
+    if any(c.opposite is not None for c in board.channels):
+        yield "a full bridge whose outputs are both high gives its coil nothing: a word that drives every coil forwards is run too"
+    elif all(c.switch.active == "high" for c in board.channels):
         yield "all ones turn on every coil: each switch of this board is on while its output is high"
     if any("one coil" in boot.name for boot in all_boots):
         yield "one coil of each build alone shows what it carries where the others do not pull the rail down"

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from boardsim.board.bridges import forwards
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.boot import Boot
 from boardsim.parts.base import Corner
@@ -20,7 +21,7 @@ CHECK = "uncommanded"
 def judge_boot(board: Board, boot: Boot, found: BootReading, corner: Corner, nominal: tuple[str, ...]) -> list[Finding]:
     """Every channel's current before the first enabled frame against what counts, and the end of clear against the frame."""
     judged = _judge_channel if boot.reset is None else _judge_reset
-    findings = [judged(board, boot, c, found, corner, nominal) for c in board.channels]
+    findings = [judged(board, boot, c, found, corner, nominal) for c in forwards(board)]
     if found.cleared_until is not None and boot.reset is None:
         findings += where_limits_hold(board, [_judge_clear(board, boot, found, nominal)])
     return findings
