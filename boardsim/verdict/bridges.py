@@ -17,6 +17,10 @@ from boardsim.verdict.bench import Bench, when
 from boardsim.verdict.findings import Finding, Floats
 from boardsim.verdict.watch import Dips
 
+_COUPLED = (
+    "a lower resistance that holds the gate which is off, a slower one that turns on, or a transistor of less gate-drain "
+    "capacitance: a gate that was off already was taken up again by the leg's own edge, and no dead time keeps it from that"
+)
 _MORE = 1.2  # times the overlap that a hint adds to the dead time
 
 
@@ -44,18 +48,26 @@ class Leg:
 
 
 def judge_leg(rule: ShootThroughRule, placed: PlacedRule, leg: Leg, bench: Bench) -> Finding | None:
-    """The least time that was left between one gate's turn-off and the other's turn-on; negative where they overlap."""
+    """The least time that was left between one gate's turn-off and the other's turn-on; negative where they overlap.
+
+    Notes
+    -----
+    Gates overlap because one turns off too late, or because one that was off is lifted again by C_GD dv/dt as the leg's middle
+    moves: then neither was on a moment before, which tells the two apart.
+    """
     both, neither = leg.both.all(), leg.neither.all()
     limit = Limit(0.0, "s", None, rule.source, "time between one transistor's turn-off and the other's turn-on")
     what = "dead time left at the gates"
     if both:
         longest = max(both, key=lambda d: d.lasting)
         needed = rule.dead_time + _MORE * longest.lasting
+        longer = f"a dead time of at least {in_units(needed, 's')}, or faster gates"
+        coupled = any(0 <= longest.start - (d.start + d.lasting) <= rule.dead_time for d in neither)
         said = (
             f"{placed.label}: both transistors of its leg conduct at once for {in_units(longest.lasting, 's')}"
             f"{when(longest.start)}, {len(both)} times: up to {in_units(leg.peak, 'A')} flow from the rail to ground, "
             f"{in_units(leg.charge / len(both), 'C')} each time on average; the driver's dead time is "
-            f"{in_units(rule.dead_time, 's')}; try: a dead time of at least {in_units(needed, 's')}, or faster gates"
+            f"{in_units(rule.dead_time, 's')}; try: {_COUPLED if coupled else longer}"
         )
         margin = -longest.lasting / max(rule.dead_time, longest.lasting)
         return bench.finding(placed, limit, what, -longest.lasting, margin, longest.start, said, "destroy", worse="low")

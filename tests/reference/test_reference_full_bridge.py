@@ -38,16 +38,17 @@ PARTS = PERFECT_SWITCH.format(breakdown="100 V") + DIODE
 MIRRORED = PARTS.replace("[parts.perfect]", "[parts.perfect-p]").replace('"n-mosfet"', '"p-mosfet"')
 
 
-def text(rated: str = "50 V") -> str:
+def text(rated: str = "50 V", channels: str = "0", reverse: str = "4") -> str:
     driver = (
         '{ supply = "12 V", delay = "1 us", dead_time = "60 us", output_resistance = "1 ohm", pulldown = "10 kohm" }'
     )
-    switch = f'{{ kind = "full-bridge", high = "perfect-p", low = "perfect", gate = "0 ohm", driver = {driver} }}\nreverse = "4"'
+    switch = f'{{ kind = "full-bridge", high = "perfect-p", low = "perfect", gate = "0 ohm", driver = {driver} }}\nreverse = "{reverse}"'
     return board_text(
         supply=f'voltage = "24 V", resistance = "50 mohm", internal_load = "{R_LOAD:g} ohm"',
         cable='{ area = "0.75 mm2", length = "3 m" }',
         coil=f'resistance = "8 ohm"\ninductance = "9 mH"\n{NO_LOSS}',
         clamp='{ kind = "none" }',
+        channels=channels,
         bulk=f'{{ capacitance = "220 uF", esr = "20 mohm", esl = "0.1 nH", rated = "{rated}" }}',
         switch=switch,
         parts=PARTS + MIRRORED,
@@ -155,3 +156,16 @@ def test_energy_that_comes_back_is_seen_at_the_bulk_capacitor_and_the_audit_hold
     assert (
         total["coil current when fired again"].verdict == "limit-missing"
     )  # no release current was given, and it says so
+
+
+def test_coils_that_are_driven_opposite_ways_do_not_cancel_in_the_sum(engine: Engine, tmp_path: Path) -> None:
+    """Each V/R (1 - exp(-t R/L)), of opposite sign; what all coils carry is twice that."""
+    fired = pattern_text(pulse("0.2 ms", "1 ms", "0"), pulse("0.2 ms", "1 ms", "5"))
+    found = run_board(engine, tmp_path, text(channels="0-1", reverse="4-5"), fired, Settings("gear", 1e-4, 50e-6))
+    _, off = found.on(0)
+    forth, back = (float(found.at(off, "i_coil", c)) for c in (0, 1))
+    one = V / R * (1 - math.exp(-(1e-3 - DEAD) * R / L))
+    # 2 %: supply and cable take 0.19 ohm of 4 ohm, as far as the bulk capacitor lets them.
+    assert forth == pytest.approx(one, rel=0.02)
+    assert back == pytest.approx(-forth, rel=1e-3)
+    assert found.at(off, "i_total") == pytest.approx(forth - back, rel=1e-6)

@@ -8,12 +8,13 @@ import numpy as np
 
 from boardsim.board.reader import Board, read_board
 from boardsim.circuit.assemble import assemble, windows
-from boardsim.circuit.deck import Deck
+from boardsim.circuit.deck import Deck, PlacedRule
 from boardsim.firing.pattern import Pattern, Pulse
 from boardsim.firing.schedule import Firing, fire
 from boardsim.parts.base import NOMINAL
-from boardsim.parts.rules import IdleRule, ReleaseRule
-from boardsim.verdict.bridges import both_at_once, fired_again, judge_directions
+from boardsim.parts.rules import IdleRule, ReleaseRule, ShootThroughRule
+from boardsim.verdict.bench import Bench
+from boardsim.verdict.bridges import Leg, both_at_once, fired_again, judge_directions, judge_leg
 
 FOLDER = Path(__file__).parents[1] / "boards" / "f15_both_directions"
 
@@ -77,3 +78,23 @@ def test_a_bridge_has_one_coil_whose_current_changes_sign_with_the_channel_and_c
     idle = [p.rule for p in deck.rules if isinstance(p.rule, IdleRule)]
     assert [r.besides for r in idle] == [(4,)]
     assert {p.channel: p.rule.besides for p in deck.rules if isinstance(p.rule, ReleaseRule)} == {0: (4,), 4: (0,)}
+
+
+def hint(*moments: tuple[float, float, float]) -> str:
+    """What is tried where the high and the low gate of a leg go through these times [us] and voltages, at thresholds of 2 V."""
+    rule = ShootThroughRule("shoot-through", ("v_gs", "v_gs_low"), ("i_d", "i_d_low"), (2.0, 2.0), 1e-6, "given")
+    leg = Leg(rule.turn_on)
+    t, high, low = np.array(moments).T
+    leg.feed(t * 1e-6, np.stack([high, low]), np.ones((2, len(t))))
+    board = read_board(FOLDER / "board.toml")
+    found = judge_leg(rule, PlacedRule(rule, 0, "part", "gate 0"), leg, Bench(board, "nominal", ()))
+    assert found is not None
+    assert found.verdict == "fail"
+    return found.sentence.partition("; try: ")[2]
+
+
+def test_a_gate_that_turns_off_too_late_needs_dead_time_and_one_that_is_lifted_again_does_not() -> None:
+    late = hint((0, 0, 10), (1, 0, 10), (1.1, 10, 9), (1.4, 10, 0), (5, 10, 0))
+    lifted = hint((0, 0, 10), (1, 0, 10), (1.1, 0, 0), (2, 0, 0), (2.1, 4, 0), (2.2, 10, 4), (2.3, 10, 0), (5, 10, 0))
+    assert late.startswith("a dead time of at least")
+    assert lifted.startswith("a lower resistance that holds the gate which is off")
