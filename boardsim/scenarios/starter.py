@@ -7,6 +7,7 @@ from typing import Any
 
 from pydantic import BaseModel
 from pydantic.json_schema import GenerateJsonSchema
+from pydantic_core.core_schema import TaggedUnionSchema
 
 from boardsim.board.schema import BoardFile
 from boardsim.errors import InputError
@@ -162,7 +163,17 @@ def json_schema(what: str) -> dict[str, Any] | None:
 
 
 class _Schema(GenerateJsonSchema):
-    """Writes the default of a quantity as a file would: as text."""
+    """Writes the default of a quantity as a file would: as text. A table of one of several kinds may be like several of them.
+
+    A switch is of the kind of the part that it names, which a schema cannot look up.
+    """
+
+    def tagged_union_schema(self, schema: TaggedUnionSchema) -> dict[str, Any]:
+        """One of several kinds of part, or more than one where the kind is left out."""
+        found = super().tagged_union_schema(schema)
+        if "oneOf" in found:
+            found["anyOf"] = found.pop("oneOf")
+        return found
 
     def encode_default(self, dft: Any) -> Any:
         """What the schema names as the default; none of a whole table, since its keys have their own."""
