@@ -81,6 +81,11 @@ class Channel:
         return None if self.crossing is None else self.crossing.diode
 
     @property
+    def held_off(self) -> bool:
+        """Whether a switch of its own resistors keeps its coil off while nothing drives the registers' outputs."""
+        return any(d.switch.held_off() for d in self.drivers)
+
+    @property
     def build(self) -> tuple[object, ...]:
         """What a circuit knows of it beside the package: channels of one build differ in their names only."""
         own = (self.coil, self.coil_name, self.switch, self.clamp, self.leads)

@@ -133,7 +133,7 @@ def chosen_channels(board: Board, number: int | None, only_one: bool) -> list[Ch
         return [board.channel(number)]
     builds: dict[tuple[object, ...], Channel] = {}
     for c in board.channels:
-        builds.setdefault((c.coil, c.coil_name, c.switch, c.clamp, c.leads), c)
+        builds.setdefault(c.build, c)
     first = list(builds.values())
     return first[:1] if only_one else first
 
