@@ -7,10 +7,12 @@ from dataclasses import replace
 from functools import partial
 from typing import Literal
 
+from boardsim.board.matrix import LINES_FROM, Line
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
+from boardsim.circuit.matrix import add_crossing, add_line
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
 from boardsim.firing.registers import ChainState, send
@@ -29,8 +31,8 @@ Detail = Literal["edges", "clocked"]
 MOST_CLOCKED = 50_000
 """Clock edges times channels that are worth a circuit: about ten seconds for a run, from measurements on 24 channels."""
 
-Outputs = Callable[[Channel], Stamp]
-"""What drives a channel's pin."""
+Outputs = Callable[[Channel | Line], Stamp]
+"""What drives the pin of a channel's switch, or of a line's."""
 
 
 def windows(board: Board, firing: Firing) -> tuple[Window, ...]:
@@ -137,12 +139,23 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
         frames = [(start - window.start, image) for start, image in firing.sent if start >= window.start]
         before = [image for start, image in firing.sent if start < window.start]
         outputs = _clocked(parts, board, frames, before[-1] if before else 0, corner, window)
-    for channel in board.channels:
-        if channel.number in window.channels:
-            add_channel(parts, board, corner, channel, outputs(channel))
+    add_loads(parts, board, corner, outputs, window)
     deck = finished(parts, board, corner, window)
     stretches = tuple((a + window.start, b + window.start) for a, b in busy(frames, board.chain))
     return replace(deck, digital=detail == "clocked", clocked=stretches)
+
+
+def add_loads(parts: Assembly, board: Board, corner: Corner, outputs: Outputs, window: Window) -> None:
+    """Lines, and the channels of a window."""
+    for line in board.lines:
+        add_line(parts, board, corner, line, outputs(line), RAIL)
+    for channel in board.channels:
+        if channel.number not in window.channels:
+            continue
+        if channel.crossing is not None:
+            add_crossing(parts, board, corner, channel, channel.crossing)
+        else:
+            add_channel(parts, board, corner, channel, outputs(channel))
 
 
 def refuse_too_many(board: Board, firing: Firing) -> None:
@@ -167,14 +180,14 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
         )
 
 
-def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> Stamp:
+def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, driver: Channel | Line) -> Stamp:
     """An output that does what the bits say, as a source."""
-    register, name = board.chain.register_, f"c{channel.number}_q"
+    register, name = board.chain.register_, f"{driver.stem}_q"
     if board.logic.derived:
-        shares = gate_points(firing.levels[channel.output], window, 1.0, register.output_edge.typ)
-        return known_output(register, name, channel.output, shares)
+        shares = gate_points(firing.levels[driver.output], window, 1.0, register.output_edge.typ)
+        return known_output(register, name, driver.output, shares)
     volts = board.logic.level(corner)
-    points = gate_points(firing.levels[channel.output], window, volts, register.output_edge.typ)
+    points = gate_points(firing.levels[driver.output], window, volts, register.output_edge.typ)
     driven: Stamp = register.drive(name, name, points)
     return driven
 
@@ -195,9 +208,9 @@ def _clocked(parts: Assembly, board: Board, frames: Frames, image: int, corner: 
     stages = flip_flops(register, chain.count, nets, Contents(state.shift, state.storage), volts)
     parts.add(Stamp(elements=(*rail, *stages)), None, register.title or "register", "chain")
 
-    def driven(channel: Channel) -> Stamp:
-        name = f"c{channel.number}_q"
-        pin = output_pin(register, name, name, channel.output, LOGIC, loads_rail=board.logic.derived)
+    def driven(driver: Channel | Line) -> Stamp:
+        name = f"{driver.stem}_q"
+        pin = output_pin(register, name, name, driver.output, LOGIC, loads_rail=board.logic.derived)
         return Stamp(elements=pin)
 
     return driven
@@ -252,12 +265,13 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
         {channel: tuple(names) for channel, names in parts.assumed.items()},
         _measures(parts.signals),
         parts.rest,
+        lines={line.number: line.channels for line in board.lines},
     )
 
 
 def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel, driven: Stamp) -> None:
     """A channel behind what drives its pin."""
-    k, name, label = channel.number, f"c{channel.number}", channel.label
+    k, name, label = channel.number, channel.stem, channel.label
     pin, load, stage = f"{name}_q", f"{name}_d", f"{name}_s"
     coil_end = load if channel.leads is None else f"{name}_k"
     low = channel.switch.side == "low"
@@ -312,6 +326,8 @@ def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
     lines = []
     for (channel, quantity), signal in signals.items():
         if quantity in wanted and len(signal) == 1 and signal[0][0] == 1.0:
-            prefix = "board" if channel is None else f"c{channel}"
+            prefix = (
+                "board" if channel is None else f"c{channel}" if channel < LINES_FROM else f"line{channel - LINES_FROM}"
+            )
             lines += [f".meas tran {prefix}_{quantity}_{how.lower()} {how} {signal[0][1]}" for how in wanted[quantity]]
     return tuple(lines)

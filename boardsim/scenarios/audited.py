@@ -45,7 +45,10 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
     The engine's estimate of its error alone lets it step over most of an exponential when nothing else happens. A clamp
     that is a resistor R_x takes the current down with L / (R + R_x).
     """
-    tau = min(c.coil.inductance.min / max(c.coil.resistance.max + c.clamp.in_the_way(), 1e-3) for c in board.channels)
+    tau = min(
+        c.coil.inductance.min / max(c.coil.resistance.max + sum(d.clamp.in_the_way() for d in c.drivers), 1e-3)
+        for c in board.channels
+    )
     counts = (*_STEPS_PER_TAU, *[_STEPS_PER_TAU[-1]] * len(ladder))
     return tuple(
         replace(s, max_step=min(s.max_step, max(tau, _SHORTEST_STEP * _STEPS_PER_TAU[0]) / n))

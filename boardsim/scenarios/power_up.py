@@ -284,6 +284,7 @@ def _run(
     watch = BootWatch(board, boot)
     none = np.zeros((0, 2))
     firing = Firing(boot.duration, {}, {c.number: none for c in board.channels}, (), (), (), (), len(boot.frames), 0.0)
+    firing = replace(firing, lines={line.number: none for line in board.lines})
     detail = detail_of(board, boot)
 
     def made(on: Board, _firing: Firing, corner: Corner, _window: Window) -> Deck:

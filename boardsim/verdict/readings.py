@@ -28,9 +28,11 @@ from boardsim.parts.rules import (
     PulseRule,
     ReleaseRule,
     Rule,
+    SneakRule,
 )
 from boardsim.verdict.findings import Envelope, Floats
 from boardsim.verdict.pulses import OnePulse, Pulses
+from boardsim.verdict.sneak import Growth
 from boardsim.verdict.watch import (
     Avalanche,
     Avalanches,
@@ -93,6 +95,8 @@ class Readings:
         Lowest logic rail at the beginning and the latch edge of any register frame; None where it is no node, or no frame is known. [V]
     at_ends : mapping of (channel, quantity) to (times, values), at the ends of pulses
         What must reach a limit in every pulse, on boards whose logic rail moves: the best pulse then does not speak for all.
+    sneaks : mapping of channel to Growth
+        What others drive through its coil, of channels of a matrix.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -113,6 +117,7 @@ class Readings:
     falls: Mapping[FallRule, tuple[tuple[Dip, ...], tuple[Dip, ...]]] = field(default_factory=dict)
     framed: float | None = None
     at_ends: Mapping[tuple[int, str], tuple[Floats, Floats]] = field(default_factory=dict)
+    sneaks: Mapping[int, Growth] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -160,27 +165,30 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     ceiling_rule = next((r for _, r in rules if isinstance(r, CeilingRule)), None)
     ceiling = TimeAbove(AT_CEILING * ceiling_rule.limit.value if ceiling_rule and ceiling_rule.limit.value else np.inf)
     pull_in = {
-        c: Samples(_within(firing.on[c][:, 1], start, stop))
+        c: Samples(_within(firing.spans(c)[:, 1], start, stop))
         for c, r in rules
         if isinstance(r, PullInRule) and c is not None
     }
     release = {
-        c: Samples(_within(firing.on[c][1:, 0], start, stop))
+        c: Samples(_within(firing.spans(c)[1:, 0], start, stop))
         for c, r in rules
         if isinstance(r, ReleaseRule) and c is not None
     }
     idle = {
-        c: Samples(_at_rest(firing.on[c], start, stop)) for c, r in rules if isinstance(r, IdleRule) and c is not None
+        c: Samples(_at_rest(firing.spans(c), start, stop))
+        for c, r in rules
+        if isinstance(r, IdleRule) and c is not None
     }
+    sneaks = {c: Growth(firing.spans(c)) for c, r in rules if isinstance(r, SneakRule) and c is not None}
     drive = {
-        (c, quantity): Samples(_within(firing.on[c][:, 1], start, stop))
+        (c, quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
         for c, r in rules
         if isinstance(r, DriveRule) and c is not None
         for quantity in (r.quantity, r.current)
     }
     moving = (None, "i_regulator") in row
     at_ends = {
-        (c, r.quantity): Samples(_within(firing.on[c][:, 1], start, stop))
+        (c, r.quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
         for c, r in rules
         if moving and isinstance(r, FloorRule) and c is not None
     }
@@ -217,6 +225,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for samples in (pull_in, release, idle):
             for c, sample in samples.items():
                 sample.feed(t, y[row[c, "i_coil"]])
+        for c, growth in sneaks.items():
+            growth.feed(t, y[row[c, "i_coil"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for c, (watch, rule) in avalanches.items():
@@ -233,6 +243,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if port.store and channel is not None:
             energy = 0.5 * port.store[1] * _largest(extremes, row[channel, port.store[0]]) ** 2
             held[channel] = max(held.get(channel, 0.0), energy)
+    held |= {line: max(held.get(c, 0.0) for c in along) for line, along in deck.lines.items()}
     held[None] = max(held.values(), default=0.0)
     return Readings(
         {k: (float(extremes.high[i]), float(extremes.high_at[i])) for k, i in row.items()},
@@ -275,6 +286,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {rule: (tuple(own.all()), tuple(near.all())) for rule, (own, near) in fallen.items()},
         float(framed.values.min()) if framed is not None and len(framed.values) else None,
         {key: (sample.times, sample.values) for key, sample in at_ends.items()},
+        sneaks,
     )
 
 

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -194,14 +194,16 @@ class _TurnOffWatch:
 
     def __init__(self, deck: Deck, channel: Channel, on: float, off: float):
         self.deck, self.coil, self.on, self.off = deck, channel.coil, on, off
-        switch = _pairs(channel.switch.stamp("s", "pin", "drain", deck.corner).ports)
-        clamp = _pairs(channel.clamp.stamp("c", "drain", "rail", deck.corner).ports)
-        rule = breakdown_rule(channel)
-        v_switch = rule.voltage if rule is not None else switch[0][0]
-        names = dict.fromkeys([v_switch, "i_coil", "i_l", *(q for pair in (*switch, *clamp) for q in pair)])
-        self.keys: tuple[Key, ...] = tuple((channel.number, name) for name in names)
+        # Of a matrix both lines' switches and clamps take the coil's energy; the voltage is the column's.
+        switch = [pair for d in channel.drivers for pair in _pairs(d.switch, d.number, deck.corner, "rail")]
+        clamp = [pair for d in channel.drivers for pair in _pairs(d.clamp, d.number, deck.corner)]
+        rule, place = breakdown_rule(channel), channel.drivers[-1].number
+        v_switch = (place, rule.voltage) if rule is not None else switch[-1][0]
+        coil = [(channel.number, "i_coil"), (channel.number, "i_l")]
+        names = dict.fromkeys([v_switch, *coil, *(q for pair in (*switch, *clamp) for q in pair)])
+        self.keys: tuple[Key, ...] = tuple(names)
         row = {name: k for k, name in enumerate(names)}
-        self.v_switch, self.i_coil, self.i_l = row[v_switch], row["i_coil"], row["i_l"]
+        self.v_switch, self.i_coil, self.i_l = row[v_switch], row[coil[0]], row[coil[1]]
         self.ports = [[(row[v], row[i]) for v, i in pairs] for pairs in (clamp, switch)]
 
         pull_in, release = self.coil.pull_in, self.coil.release
@@ -253,6 +255,7 @@ class _TurnOffWatch:
         )
 
 
-def _pairs(ports: Iterable[Port]) -> list[tuple[str, str]]:
-    """The voltages and currents whose products are the power into these ports."""
-    return [pair for port in ports for pair in port.pairs]
+def _pairs(part: Any, place: int, corner: Corner, *more: str) -> list[tuple[Key, Key]]:
+    """The voltages and currents at a place whose products are the power into a switch or a clamp there."""
+    ports: tuple[Port, ...] = part.stamp("s", "a", "b", corner, *more).ports
+    return [((place, v), (place, i)) for port in ports for v, i in port.pairs]
