@@ -36,7 +36,7 @@ _AREAS = 10.0  # [1] of the second NPN's emitter over the first's, from memory; 
 _INPUT_VOLTAGE = 0.65  # [V] of the input transistor's base at its current, from memory
 _DIFFUSION = 1e-9  # [s] forward transit time of the NPN transistors, from memory; the PNP's storage is far longer
 _CAPACITANCE = 10e-12  # [F] of the clamp diode at 0 V, a part of the output's own capacitance; from memory
-_USUAL = "delays and test circuit of bipolar source arrays, from memory"
+_USUAL = "turn-off and test circuit of bipolar source arrays, from memory"
 
 
 class SourcePoint(Record):
@@ -57,9 +57,8 @@ class SourceInput(Record):
 
 
 class SourceSwitching(Record):
-    """Delays between the halves of the edges with a resistive load to ground: output rising and falling."""
+    """Delay between the halves of the falling edges of input and output, with a resistive load to ground."""
 
-    turn_on: Annotated[Quantity, POSITIVE_TIME] = assume("0.3 us", POSITIVE_TIME, _USUAL)
     turn_off: Annotated[Quantity, POSITIVE_TIME] = assume("2 us", POSITIVE_TIME, _USUAL)
     supply: Annotated[Quantity, VOLTAGE] = assume("35 V", VOLTAGE, _USUAL)
     load: Annotated[Quantity, POSITIVE_RESISTANCE] = assume("100 ohm", POSITIVE_RESISTANCE, _USUAL)
