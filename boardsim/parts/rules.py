@@ -235,6 +235,19 @@ class IdleRule:
 
 
 @dataclass(frozen=True)
+class SneakRule:
+    """While its channel is off a coil's current must not grow to the release current: what others' currents find a way through.
+
+    `limit` and `share` are those of `IdleRule`.
+    """
+
+    check: str
+    quantity: str
+    limit: Limit
+    share: float
+
+
+@dataclass(frozen=True)
 class DriveRule:
     """At the end of every pulse, when its current is highest, a switch must be driven as hard as that current needs.
 
@@ -342,6 +355,7 @@ Rule = (
     | PullInRule
     | ReleaseRule
     | IdleRule
+    | SneakRule
     | DipRule
     | LeastRule
     | FallRule

@@ -36,6 +36,7 @@ WHOLE = {
     "array": 'part = "sink-array-8", to = "rail"',
     "array-zener": 'part = "sink-array-8", zener = "24v-5w", to = "rail"',
     "avalanche": "",
+    "built-in": "",
     "diode": 'diode = "fast-2a", to = "rail", at = "coil"',
     "diode-zener": 'diode = "fast-2a", zener = "24v-5w", to = "rail", at = "board"',
     "led": 'led = "led-white-5mm", resistor = "47 ohm", power = "1 W", diode = "fast-2a"',
