@@ -199,8 +199,8 @@ class TogetherRule:
     limit: Limit
     one: Limit
     advice: str
-    voltage: str = "v_ds"
     channels: tuple[int, ...] = ()
+    voltage: str = "v_ds"
 
 
 @dataclass(frozen=True)

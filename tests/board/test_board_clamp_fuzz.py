@@ -56,6 +56,8 @@ def data_of(kind: str) -> dict[str, Any]:
     )["clamp"]
     if kind.startswith("array"):
         data["channels"]["0"]["switch"] = {"part": "sink-array-8"}
+    if kind == "built-in":
+        data["channels"]["0"]["switch"] = {"part": "source-array-8"}
     return data
 
 
