@@ -73,6 +73,10 @@ def refuse_wrong_bridges(board: BoardFile, file: TomlFile) -> Iterator[Problem]:
                     ("channels", text, key), f"{key} says something of reverse channels; give reverse too"
                 )
             continue
+        if group.matrix is not None:
+            said = "a matrix drives its coils one way; leave reverse out"
+            yield file.problem_at(("channels", text, "reverse"), said)
+            continue
         if not switch.both_ways:
             said = f"reverse needs a switch that drives its coil both ways (a full-bridge); this is {named_like(switch.kind)}"
             yield file.problem_at(("channels", text, "reverse"), said)

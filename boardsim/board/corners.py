@@ -32,8 +32,8 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
         "esr": [board.bulk.esr],
         "logic": [board.logic.voltage],
     }
-    for channel in board.channels:
-        for part in (channel.coil, channel.switch, channel.clamp):
+    for parts in ((c.coil for c in board.channels), *((d.switch, d.clamp) for d in board.drivers)):
+        for part in parts:
             for key, quantity in part.tolerances().items():
                 found.setdefault(key, []).append(quantity)
     return found
@@ -176,7 +176,10 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
         ("chain", board.chain),
     ]
     for channel in board.channels:
-        parts += [(f"coil {channel.coil_name}", channel.coil), ("switch", channel.switch), ("clamp", channel.clamp)]
+        parts += [(f"coil {channel.coil_name}", channel.coil)]
+        parts += [("series diode", channel.diode)] if channel.diode is not None else []
+    for driver in board.drivers:
+        parts += [("switch", driver.switch), ("clamp", driver.clamp)]
     found = {
         Assumption(
             part,

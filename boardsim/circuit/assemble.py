@@ -8,11 +8,14 @@ from dataclasses import replace
 from functools import partial
 from typing import Literal
 
+from boardsim.board.matrix import LINES_FROM, Line
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
+from boardsim.circuit.drivers import add_driver
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
+from boardsim.circuit.matrix import add_crossing, add_line
 from boardsim.circuit.packages import of_package
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
@@ -35,8 +38,8 @@ MOST_CLOCKED = 50_000
 STOPS = 16
 """Steps at least, while a switch that is slow follows an edge."""
 
-Outputs = Callable[[Channel], Stamp]
-"""What drives a channel's pin."""
+Outputs = Callable[[Channel | Line], Stamp]
+"""What drives the pin of a channel's switch, or of a line's."""
 
 
 def windows(board: Board, firing: Firing) -> tuple[Window, ...]:
@@ -142,7 +145,7 @@ class Assembly:
         for name, inner in stamp.inside:
             self.add(inner, channel, name, label, package)
 
-    def add_common(self, channel: Channel, b: str, corner: Corner) -> str:
+    def add_common(self, channel: Channel | Line, b: str, corner: Corner) -> str:
         """Where a channel's clamp ends: at node `b`, or at what its package has in common, which is added once."""
         package = channel.package or channel.label
         node = self.commons.get(package, f"common{len(self.commons)}")
@@ -191,12 +194,23 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
         frames = [(start - window.start, image) for start, image in firing.sent if start >= window.start]
         before = [image for start, image in firing.sent if start < window.start]
         outputs = _clocked(parts, board, frames, before[-1] if before else 0, corner, window)
-    for channel in board.channels:
-        if channel.number in window.channels:
-            add_channel(parts, board, corner, channel, outputs(channel))
+    add_loads(parts, board, corner, outputs, window)
     deck = finished(parts, board, corner, window)
     stretches = tuple((a + window.start, b + window.start) for a, b in busy(frames, board.chain))
     return replace(deck, digital=detail == "clocked", clocked=stretches)
+
+
+def add_loads(parts: Assembly, board: Board, corner: Corner, outputs: Outputs, window: Window) -> None:
+    """Lines, and the channels of a window."""
+    for line in board.lines:
+        add_line(parts, board, corner, line, outputs(line), RAIL)
+    for channel in board.channels:
+        if channel.number not in window.channels:
+            continue
+        if channel.crossing is not None:
+            add_crossing(parts, board, corner, channel, channel.crossing)
+        else:
+            add_channel(parts, board, corner, channel, outputs(channel))
 
 
 def refuse_too_many(board: Board, firing: Firing) -> None:
@@ -221,14 +235,14 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
         )
 
 
-def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> Stamp:
+def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, driver: Channel | Line) -> Stamp:
     """An output that does what the bits say, as a source."""
-    register, name = board.chain.register_, f"c{channel.number}_q"
+    register, name = board.chain.register_, f"{driver.stem}_q"
     volts = 1.0 if board.logic.derived else board.logic.level(corner)
-    points = gate_points(firing.levels[channel.output], window, volts, register.output_edge.typ)
-    points = looked_at(points, channel.switch.follows_within())
+    points = gate_points(firing.levels[driver.output], window, volts, register.output_edge.typ)
+    points = looked_at(points, driver.switch.follows_within())
     if board.logic.derived:
-        return known_output(register, name, channel.output, points)
+        return known_output(register, name, driver.output, points)
     driven: Stamp = register.drive(name, name, points)
     return driven
 
@@ -249,9 +263,9 @@ def _clocked(parts: Assembly, board: Board, frames: Frames, image: int, corner: 
     stages = flip_flops(register, chain.count, nets, Contents(state.shift, state.storage), volts)
     parts.add(Stamp(elements=(*rail, *stages)), None, register.title or "register", "chain")
 
-    def driven(channel: Channel) -> Stamp:
-        name = f"c{channel.number}_q"
-        pin = output_pin(register, name, name, channel.output, LOGIC, loads_rail=board.logic.derived)
+    def driven(driver: Channel | Line) -> Stamp:
+        name = f"{driver.stem}_q"
+        pin = output_pin(register, name, name, driver.output, LOGIC, loads_rail=board.logic.derived)
         return Stamp(elements=pin)
 
     return driven
@@ -305,6 +319,7 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
         {channel: tuple(names) for channel, names in parts.assumed.items()},
         _measures(parts.signals),
         parts.rest,
+        lines={line.number: line.channels for line in board.lines},
     )
 
 
@@ -313,8 +328,8 @@ def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel,
     if channel.opposite is not None:
         add_bridge_channel(parts, board, corner, channel, driven, RAIL)
         return
-    k, name, label = channel.number, f"c{channel.number}", channel.label
-    pin, load, stage = f"{name}_q", f"{name}_d", f"{name}_s"
+    k, name, label = channel.number, channel.stem, channel.label
+    load = f"{name}_d"
     coil_end = load if channel.leads is None else f"{name}_k"
     low = channel.switch.side == "low"
     parts.add(driven, k, board.chain.register_.title or "register", label)
@@ -323,19 +338,7 @@ def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel,
     parts.add(coil, k, channel.coil_name, label)
     if channel.leads is not None:
         parts.add(channel.leads.stamp(f"{name}_lead", coil_end, load, corner, board.around), k, "leads", label)
-    switch = channel.switch.stamp(stage, pin, load, corner, RAIL)
-    parts.add(switch, k, channel.switch.part.title or "switch", label, channel.package)
-    end = coil_end if channel.clamp.at_the_coil() else load
-    if channel.clamp.across == "coil":
-        held = (end, RAIL) if low else (GROUND, end)
-    else:
-        held = (load, GROUND) if low else (RAIL, load)
-    end_of_clamp = parts.add_common(channel, held[1], corner)
-    clamp = channel.clamp.stamp(f"{name}_c", held[0], end_of_clamp, corner, channel.switch.control(stage))
-    parts.add(clamp, k, f"{channel.clamp.kind} clamp", label, channel.package or label)
-    if channel.clamp.holds_switch:
-        linear = Stamp(rules=channel.switch.linear(corner))
-        parts.add(linear, k, channel.switch.part.title or "switch", label, channel.package)
+    add_driver(parts, corner, channel, load, coil_end if channel.clamp.at_the_coil() else load, RAIL)
 
 
 def _rail_rule(board: Board) -> Rule:
@@ -372,6 +375,8 @@ def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
     lines = []
     for (channel, quantity), signal in signals.items():
         if quantity in wanted and len(signal) == 1 and signal[0][0] == 1.0:
-            prefix = "board" if channel is None else f"c{channel}"
+            prefix = (
+                "board" if channel is None else f"c{channel}" if channel < LINES_FROM else f"line{channel - LINES_FROM}"
+            )
             lines += [f".meas tran {prefix}_{quantity}_{how.lower()} {how} {signal[0][1]}" for how in wanted[quantity]]
     return tuple(lines)

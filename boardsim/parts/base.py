@@ -77,6 +77,10 @@ class Part(Record):
         """Whether a switch has a resistor of its own that keeps it off while nothing drives it."""
         return False
 
+    def clamped(self) -> bool:
+        """Whether a switch has a clamp in its own package, which its stamp holds."""
+        return False
+
     def control(self, name: str) -> str:
         """The node of a switch's control terminal in its stamp of this name, such as its gate; empty where it has none.
 

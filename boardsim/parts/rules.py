@@ -203,8 +203,8 @@ class TogetherRule:
     limit: Limit
     one: Limit
     advice: str
-    voltage: str = "v_ds"
     channels: tuple[int, ...] = ()
+    voltage: str = "v_ds"
 
 
 @dataclass(frozen=True)
@@ -242,6 +242,19 @@ class IdleRule:
     limit: Limit
     share: float
     besides: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
+class SneakRule:
+    """While its channel is off a coil's current must not grow to the release current: what others' currents find a way through.
+
+    `limit` and `share` are those of `IdleRule`.
+    """
+
+    check: str
+    quantity: str
+    limit: Limit
+    share: float
 
 
 @dataclass(frozen=True)
@@ -352,6 +365,7 @@ Rule = (
     | PullInRule
     | ReleaseRule
     | IdleRule
+    | SneakRule
     | DipRule
     | LeastRule
     | FallRule

@@ -14,6 +14,7 @@ import numpy as np
 
 from boardsim.board.bridges import forwards
 from boardsim.board.corners import corners, nominal_only
+from boardsim.board.matrix import Line
 from boardsim.board.reader import Board
 from boardsim.circuit.boot import Boot, boot_deck, detail_of
 from boardsim.circuit.deck import Deck, Window
@@ -169,19 +170,22 @@ def boots(board: Board, seed: int) -> Iterator[Boot]:
         "storage all zeros": 0,
         f"storage random (random number {seed})": dice.getrandbits(width),
     }
-    on = sum(1 << c.output for c in forwards(board) if c.switch.active == "high")
+    driving = [d for d in board.drivers if isinstance(d, Line) or d.forwards]
+    on = sum(1 << d.output for d in driving if d.switch.active == "high")
     bridges = sum(1 << c.output for c in board.channels if c.opposite is not None)
-    if (any(c.switch.active == "low" for c in board.channels) and on) or bridges:
+    if (any(d.switch.active == "low" for d in board.drivers) and on) or bridges:
         words["storage with every coil on"] = on
     alone = [build[0] for build in alike(board)]
     if len(alone) < len(forwards(board)):
         off = ones & ~(on | bridges)
-        words["storage with one coil of each build on"] = off ^ sum(1 << board.channel(n).output for n in alone)
+        words["storage with one coil of each build on"] = off ^ sum(
+            {1 << output for n in alone for output in board.channel(n).outputs}
+        )
     for name, word in words.items():
         yield _switched_on(board, name, Contents(dice.getrandbits(width) if "random" in name else word, word), True)
     line = board.chain.output_enable
     floating = line is not None and line.rests is None
-    if floating or not all(c.switch.held_off() for c in board.channels):
+    if floating or not all(c.held_off for c in board.channels):
         yield _switched_on(board, "storage all ones, what floats drifts to off", Contents(ones, ones), False)
     yield _reset(board)
 
@@ -229,7 +233,7 @@ def _reset(board: Board) -> Boot:
     """Every coil on as the firmware means it, then a reset: pins float until the first frame, all off."""
     chain = board.chain
     off = shift_in(ChainState(chain.outputs), 0, chain)
-    image = sum(1 << c.bit for c in forwards(board))
+    image = sum({1 << bit for c in forwards(board) for bit in c.bits})
     on = _RESET_BEGINS + frame_time(chain)
     reset = on + min(_SETTLED * _slowest(board), _LONGEST_PULSE)
     first = reset + board.power_up.first_frame.max
@@ -284,6 +288,7 @@ def _run(
     watch = BootWatch(board, boot)
     none = np.zeros((0, 2))
     firing = Firing(boot.duration, {}, {c.number: none for c in board.channels}, (), (), (), (), len(boot.frames), 0.0)
+    firing = replace(firing, lines={line.number: none for line in board.lines})
     detail = detail_of(board, boot)
 
     def made(on: Board, _firing: Firing, corner: Corner, _window: Window) -> Deck:
@@ -405,7 +410,7 @@ def _told(board: Board, all_boots: Sequence[Boot], seed: int) -> Iterator[str]:
     )
     if any(c.opposite is not None for c in board.channels):
         yield "a full bridge whose outputs are both high gives its coil nothing: a word that drives every coil forwards is run too"
-    elif all(c.switch.active == "high" for c in board.channels):
+    elif all(d.switch.active == "high" for d in board.drivers):
         yield "all ones turn on every coil: each switch of this board is on while its output is high"
     if any("one coil" in boot.name for boot in all_boots):
         yield "one coil of each build alone shows what it carries where the others do not pull the rail down"

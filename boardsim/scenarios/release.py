@@ -17,7 +17,7 @@ from boardsim.firing.registers import frame_time
 from boardsim.firing.schedule import fire
 from boardsim.quantities import in_units
 from boardsim.scenarios.all_corners import worst
-from boardsim.scenarios.clamps import clamp_in_words, other_clamps
+from boardsim.scenarios.clamps import clamps_of, other_clamps
 from boardsim.scenarios.crew import Crew
 from boardsim.scenarios.fire import fire_pattern
 from boardsim.verdict.findings import Finding, Result, Timing, overall
@@ -78,7 +78,8 @@ def release_channel(
     EngineMissing, EngineStopped
         If there is no engine, or the run was interrupted.
     InputError
-        If the board has no such channel, a full bridge feeds its coil, or the waveforms would not fit on the disk.
+        If the board has no such channel, a full bridge feeds its coil, another clamp is to be tried in a matrix, or the waveforms would
+        not fit on the disk.
 
     Notes
     -----
@@ -93,6 +94,11 @@ def release_channel(
     chosen = chosen_channels(board, channel, every_clamp)
     tried: list[Channel] = []
     left_out: tuple[str, ...] = ()
+    if every_clamp and chosen[0].crossing is not None:
+        raise InputError(
+            f"{chosen[0].label} lies in a matrix, whose lines have clamps for all coils along them; leave --every-clamp out, and change "
+            "clamp or row_clamp in the board file"
+        )
     if every_clamp:
         one = _alone(board, chosen[0])
         clamps, left_out = other_clamps(one, chosen[0], _highest_current(one))
@@ -143,7 +149,7 @@ def chosen_channels(board: Board, number: int | None, only_one: bool) -> list[Ch
         return able
     builds: dict[tuple[object, ...], Channel] = {}
     for c in able:
-        builds.setdefault((c.coil, c.coil_name, c.switch, c.clamp, c.leads), c)
+        builds.setdefault(c.build, c)
     first = list(builds.values())
     return first[:1] if only_one else first
 
@@ -243,7 +249,7 @@ def _row(channel: Channel, own: bool, watch: ReleaseWatch, result: Result, prove
 
     slowest = max(found, key=lambda f: _slowness(f, coil.release is not None), default=None)
     return ReleaseRow(
-        clamp_in_words(channel.clamp),
+        clamps_of(channel),
         own,
         channel.number,
         channel.label,

@@ -68,7 +68,7 @@ def volley(
     EngineMissing, EngineStopped
         If there is no engine, or the run was interrupted.
     InputError
-        If more channels are asked for than there are, or the waveforms would not fit on the disk.
+        If more channels are asked for than there are, the board has a matrix, or the waveforms would not fit on the disk.
 
     Notes
     -----
@@ -138,13 +138,18 @@ def read_width(text: str) -> float:
 
 
 def check_wanted(board: Board, at_least: int | None) -> None:
-    """Refuse to ask for more channels than there are.
+    """Refuse to ask for more channels than there are, or for any choice of channels of a matrix.
 
     Raises
     ------
     InputError
-        If so many channels cannot be on at once.
+        If so many channels cannot be on at once, or some of them would turn others on.
     """
+    if board.lines:
+        raise InputError(
+            f"volley fires any choice of channels together, and {board.name} has a matrix, where two coils of different rows and "
+            "columns turn on others as well; ask with the patterns that its firmware sends (boardsim fire)"
+        )
     count = len(forwards(board))
     if at_least is not None and not 1 <= at_least <= count:
         channels = "1 channel" if count == 1 else f"{count} channels"

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import replace
 
 import numpy as np
 
@@ -25,7 +24,7 @@ def alike(board: Board) -> tuple[Choice, ...]:
     """
     builds: list[tuple[object, list[int]]] = []
     for channel in forwards(board):
-        build = replace(channel, number=0, output=0, bit=0, label="", opposite=None)
+        build = (channel.build, channel.package)
         mine = next((numbers for other, numbers in builds if other == build), None)
         if mine is None:
             builds.append((build, [channel.number]))

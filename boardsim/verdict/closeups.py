@@ -168,7 +168,7 @@ class _Cut:
 
     @property
     def subject(self) -> tuple[Key, ...]:
-        return tuple((self.finding.channel, q) for q in self.finding.probes)
+        return tuple((_place(self.finding), q) for q in self.finding.probes)
 
     def feed(self, t: Floats, y: Mapping[Key, Floats]) -> None:
         """Times (m,) [s] and the values of every signal (m,)."""
@@ -218,6 +218,11 @@ class _Cut:
         return Envelope(label, unit, self.slices.edges, self.slices.low[row], self.slices.high[row])
 
 
+def _place(f: Finding) -> int | None:
+    """Under which a finding's waveforms are found."""
+    return f.channel if f.channel is not None else f.place
+
+
 def _title(waves: Sequence[Envelope]) -> str:
     name = waves[0].label if len(waves) == 1 else _SEVERAL.get(waves[0].unit, waves[0].label)
     return name[:1].upper() + name[1:]
@@ -231,18 +236,20 @@ def _causes(f: Finding, board: Board, deck: Deck | None) -> tuple[Key, ...]:
     who = channels_in_question(f, board)
     if f.check == "pull-in":
         causes = ((None, "v_rail"),)
+    elif f.place is not None:
+        causes = ((f.place, "i_d"), (f.place, "v_ds"))
     elif len(who) == 1 and f.shape != "count":
         causes = ((who[0], "i_coil"), (who[0], "v_ds")) if f.unit in ("A", "J") else ((who[0], "i_coil"),)
     else:
         causes = _BOARD_CAUSES.get(f.check, ((None, "i_total"), (None, "i_supply")))
-    mine = [(f.channel, q) for q in f.probes] if len(f.probes) == 1 else []  # of a product neither is shown
+    mine = [(_place(f), q) for q in f.probes] if len(f.probes) == 1 else []  # of a product neither is shown
     return tuple(key for key in causes if key in deck.signals and key not in mine)
 
 
 def _breakdown(f: Finding, deck: Deck | None) -> float:
     """Where the model of a finding's switch conducts; minus infinity where there is none. [V]"""
     placed = deck.rules if deck is not None else ()
-    mine = [p.rule for p in placed if p.channel == f.channel and isinstance(p.rule, BreakdownRule)]
+    mine = [p.rule for p in placed if p.channel == _place(f) and isinstance(p.rule, BreakdownRule)]
     found = [r.breakdown for r in mine if r.voltage in f.probes] or [r.breakdown for r in mine]
     return found[0] if found else -np.inf
 

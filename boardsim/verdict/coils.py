@@ -8,7 +8,7 @@ from dataclasses import replace
 import numpy as np
 
 from boardsim.circuit.deck import PlacedRule
-from boardsim.parts.rules import IdleRule, PullInRule, ReleaseRule
+from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule, SneakRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench, when
 from boardsim.verdict.findings import Finding, Floats
@@ -62,14 +62,7 @@ def judge_idle(rule: IdleRule, placed: PlacedRule, samples: tuple[Floats, Floats
         return
     k = int(np.argmax(np.abs(values)))
     value, at = float(abs(values[k])), float(times[k])
-    limit, board = rule.limit, bench.board
-    coil = board.channel(placed.channel or 0).coil
-    stands = f"{placed.part} lets go below"
-    if limit.value is None:
-        settled = board.supply.voltage.min / (coil.resistance.max + board.supply.resistance.max)
-        why = f"{rule.share:.0%} of the settled current, since no release current was given: from memory"
-        limit = replace(limit, value=rule.share * settled, source=f"assumed: {why}", name="harmless current")
-        stands = f"a tenth of the settled current of {placed.part}, for want of a release current, is"
+    limit, stands = harmless_limit(rule, placed, bench)
     bound = limit.value or 0.0
     margin = (bound - value) / bound
     said = (
@@ -79,6 +72,18 @@ def judge_idle(rule: IdleRule, placed: PlacedRule, samples: tuple[Floats, Floats
     if margin < 0:
         said += "; try: a clamp that blocks the highest rail, or a switch that is off at its gate's or base's level"
     yield bench.finding(placed, limit, "coil current while off", value, margin, at, said)
+
+
+def harmless_limit(rule: IdleRule | SneakRule, placed: PlacedRule, bench: Bench) -> tuple[Limit, str]:
+    """What a coil that is off may carry, and the words for it: its release current, or a share of its settled current."""
+    limit, board = rule.limit, bench.board
+    if limit.value is not None:
+        return limit, f"{placed.part} lets go below"
+    coil = board.channel(placed.channel or 0).coil
+    settled = board.supply.voltage.min / (coil.resistance.max + board.supply.resistance.max)
+    why = f"{rule.share:.0%} of the settled current, since no release current was given: from memory"
+    limit = replace(limit, value=rule.share * settled, source=f"assumed: {why}", name="harmless current")
+    return limit, f"a tenth of the settled current of {placed.part}, for want of a release current, is"
 
 
 def _held(placed: PlacedRule, bound: float | None, margin: float | None, does: str, name: str, remedy: str) -> str:

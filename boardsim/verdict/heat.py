@@ -7,6 +7,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import replace
 
 from boardsim.board.corners import hot_junction
+from boardsim.board.matrix import LINES_FROM
 from boardsim.circuit.deck import PlacedRule
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Corner
@@ -30,7 +31,7 @@ def judge_heat(
     part = rule.part or placed.part
     members = rule.channels or (placed.channel,)
     power = sum(readings.means[c, pair] for c in members for pair in rule.powers)
-    among = f" of its {len(members)} channels" if rule.channels else ""
+    among = f" of its {len(members)} {_members(rule)}" if rule.channels else ""
     said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average {firing.averaged_over}"
     r_th, limit = rule.resistance.value, rule.limit.value
     air = f"air of {celsius(rule.ambient)}"
@@ -48,6 +49,11 @@ def judge_heat(
     said += f": {reached} in {air} with {in_units(r_th, 'K/W')}; the {rule.limit.name} of {part} is {celsius(limit)}"
     said += f"; try: {rule.advice}" if margin < 0 else ""
     return bench.finding(placed, rule.limit, rule.what, hot, margin, None, said, rule.consequence, part=part)
+
+
+def _members(rule: HeatRule) -> str:
+    """Who shares a package: channels, or lines of a matrix."""
+    return "lines" if any(place >= LINES_FROM for place in rule.channels) else "channels"
 
 
 def judge_warmth(found: Sequence[Finding], bench: Bench) -> Iterator[Finding]:

@@ -27,6 +27,7 @@ from boardsim.parts.rules import (
     ReleaseRule,
     Rule,
     ShootThroughRule,
+    SneakRule,
     TogetherRule,
 )
 from boardsim.quantities import in_units
@@ -40,6 +41,7 @@ from boardsim.verdict.heat import judge_heat, judge_warmth
 from boardsim.verdict.logic_rail import judge_fall, judge_least
 from boardsim.verdict.rail import judge_ceiling, judge_dip
 from boardsim.verdict.readings import Readings, pulse_key
+from boardsim.verdict.sneak import judge_sneak
 from boardsim.verdict.surges import judge_pulses
 
 
@@ -59,13 +61,17 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
         nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))
-        scale = max(abs(of.get((placed.channel, "i_coil"), (0.0, 0.0))[0]) for of in (readings.high, readings.low))
+        line = placed.channel if placed.channel in deck.lines else None
+        carried = (placed.channel, "i_coil" if line is None else "i_d")
+        scale = max(abs(of.get(carried, (0.0, 0.0))[0]) for of in (readings.high, readings.low))
         for finding in _apply(placed, readings, firing, deck, bench):
             size = scale if finding.unit == "A" else 0.0
             size = hottest if finding.unit == "W" and finding.limit is None else size
             found.append(
                 replace(
                     finding,
+                    channel=finding.channel if line is None else None,
+                    place=line,
                     corner=bench.corner,
                     nominal_only=nominal,
                     assumed=assumed,
@@ -156,6 +162,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
         case IdleRule() as rule:
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
+        case SneakRule() as rule:
+            yield judge_sneak(rule, placed, readings.sneaks[_channel(placed)], firing, bench)
         case DipRule() as rule:
             yield judge_dip(rule, placed, readings, firing, bench)
         case LeastRule() as rule:
@@ -188,7 +196,7 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
 
 
 def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:
-    if not len(firing.on[_channel(placed)]):
+    if not len(firing.spans(_channel(placed))):
         return
     value, at = readings.high[placed.channel, rule.quantity]
     times, values = readings.at_ends.get((_channel(placed), rule.quantity), ((), ()))
@@ -209,6 +217,6 @@ def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firi
 
 
 def _channel(placed: PlacedRule) -> int:
-    """The channel of a rule that only channels have."""
+    """The channel of a rule that only channels have, or the line."""
     assert placed.channel is not None
     return placed.channel

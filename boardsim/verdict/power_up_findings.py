@@ -155,7 +155,7 @@ def _remedy(board: Board, c: Channel, after_reset: bool) -> str:
     if line.capacitance is not None:
         behind = "rises slowly once its pin lets go" if after_reset else "lags behind the logic rail"
         return f"a smaller capacitor or pull-up at output enable: it {behind}"
-    if not c.switch.held_off():
+    if not c.held_off:
         return "a pull-down at its gate, which floats while the outputs are not enabled"
     if c.switch.in_the_chain:
         return "a smaller pull-up at output enable"

@@ -193,19 +193,21 @@ class _TurnOffWatch:
 
     def __init__(self, deck: Deck, channel: Channel, on: float, off: float):
         self.deck, self.coil, self.on, self.off = deck, channel.coil, on, off
-        k = channel.number
-        switch = _pairs(k, channel.switch.stamp("s", "pin", "drain", deck.corner))
-        clamp = _pairs(k, channel.clamp.stamp("c", "drain", "rail", deck.corner))
-        shared = channel.clamp.common("p", "pin", "rail", deck.corner)
-        if shared is not None:  # the channel is alone on its board: what its package has once is all its own
-            clamp += _pairs(None, of_package(shared, channel.package or channel.label))
-        rule = breakdown_rule(channel)
-        v_switch = (k, rule.voltage) if rule is not None else switch[0][0]
-        i_coil, i_l = (k, "i_coil"), (k, "i_l")
+        # Of a matrix both lines' switches and clamps take the coil's energy; the voltage is the column's.
+        drivers, corner = channel.drivers, deck.corner
+        switch = [pair for d in drivers for pair in _pairs(d.number, d.switch.stamp("s", "a", "b", corner, "rail"))]
+        clamp = [pair for d in drivers for pair in _pairs(d.number, d.clamp.stamp("c", "a", "b", corner))]
+        for d in drivers:
+            shared = d.clamp.common("p", "a", "b", corner)
+            if shared is not None:  # the channel is alone on its board: what its package has once is all its own
+                clamp += _pairs(None, of_package(shared, d.package or d.label))
+        rule, place = breakdown_rule(channel), drivers[-1].number
+        v_switch = (place, rule.voltage) if rule is not None else switch[-1][0]
+        i_coil, i_l = (channel.number, "i_coil"), (channel.number, "i_l")
         self.keys: tuple[Key, ...] = tuple(
             dict.fromkeys([v_switch, i_coil, i_l, *(q for pair in (*switch, *clamp) for q in pair)])
         )
-        row = {key: place for place, key in enumerate(self.keys)}
+        row = {key: k for k, key in enumerate(self.keys)}
         self.v_switch, self.i_coil, self.i_l = row[v_switch], row[i_coil], row[i_l]
         self.ports = [[(row[v], row[i]) for v, i in pairs] for pairs in (clamp, switch)]
 

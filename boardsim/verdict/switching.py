@@ -6,10 +6,10 @@ from collections.abc import Callable, Iterable, Iterator, Mapping
 
 import numpy as np
 
-from boardsim.board.ranges import write_range
-from boardsim.board.reader import Board
+from boardsim.board.ranges import write_labels, write_range
+from boardsim.board.reader import Board, Channel
 from boardsim.firing.pattern import Pulse
-from boardsim.firing.schedule import Firing, MovedPulse
+from boardsim.firing.schedule import Firing, MovedPulse, WrongOutput
 from boardsim.parts.controller import Controller
 from boardsim.quantities import apart, in_units
 from boardsim.verdict.bridges import judge_directions
@@ -198,13 +198,35 @@ def _lost_pauses(board: Board, firing: Firing) -> Iterator[Finding]:
 def _wrong(board: Board, firing: Firing) -> Iterator[Finding]:
     for w in firing.wrong:
         channel = board.channel(w.channel)
+        if w.by:
+            yield _ghost(board, w)
+            continue
         did = "stays off although it is commanded on" if w.commanded else "is on although nothing commands it"
         said = (
-            f"{channel.label} (output {channel.output}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, "
+            f"{channel.label} ({_outputs(channel)}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, "
             "active level and the map from channel to output and bit do not fit together; try: bit_order, first_out, "
             "active, outputs, bits"
         )
         yield _plain("output against command", "wrong-output", w.channel, channel.label, 1, w.at, said)
+
+
+def _outputs(channel: Channel) -> str:
+    """ "output 3", or "outputs 0 and 8" of its row and column."""
+    numbers = " and ".join(str(output) for output in channel.outputs)
+    return f"output{'s' if len(channel.outputs) > 1 else ''} {numbers}"
+
+
+def _ghost(board: Board, w: WrongOutput) -> Finding:
+    """A channel of a matrix that others turn on: their rows and columns cross at its coil as well."""
+    channel = board.channel(w.channel)
+    row, column = (driver.label for driver in channel.drivers)
+    who = write_labels([board.channel(n).label for n in w.by])
+    said = (
+        f"{channel.label}: is on from {in_units(w.at, 's', 4)} although nothing commands it: {who} are on together, and "
+        f"{row} of one and {column} of the other cross at its coil; try: one row after the other, or only channels along one "
+        "line at once"
+    )
+    return _plain("output against command", "wrong-output", w.channel, channel.label, 1, w.at, said)
 
 
 def most_together(firing: Firing, channels: tuple[int, ...]) -> tuple[int, float]:

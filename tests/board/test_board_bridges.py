@@ -89,6 +89,14 @@ def test_a_wrong_bridge_is_refused_with_its_line(
     assert any(one.startswith(f"{line}: ") and text in one for one in found), found
 
 
+def test_a_matrix_drives_its_coils_one_way(tmp_path: Path) -> None:
+    matrix = 'matrix = { rows = "0-1", columns = "2-3", row_switch = { part = "IRF9540N", gate = "10 ohm", pullup = "10 kohm", shifter = { part = "n-logic-60v", gate = "100 ohm" } }, row_clamp = { kind = "none" } }'
+    found = said(tmp_path, changed(('reverse = "8-11"', f'reverse = "8-11"\n{matrix}')))
+    assert any(
+        one.startswith("15: ") and "a matrix drives its coils one way; leave reverse out" in one for one in found
+    ), found
+
+
 HALF = (('reverse = "8-11"\n', ""), ("full-bridge", "half-bridge"))
 
 

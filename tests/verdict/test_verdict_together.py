@@ -26,7 +26,10 @@ def judged(
     limits = [Limit(value, "J", "energy", "sheet", name) for value, name in ((whole, "whole"), (one, "one"))]
     rule = TogetherRule("overvoltage", limits[0], limits[1], "less at once", (0, 1, 2))
     readings: Any = SimpleNamespace(
-        avalanches={c: tuple(Avalanche(t, lasts, e, 0.1, 50.0) for t, lasts, e in events.get(c, [])) for c in (0, 1, 2)}
+        avalanches={
+            (c, "v_ds"): tuple(Avalanche(t, lasts, e, 0.1, 50.0) for t, lasts, e in events.get(c, []))
+            for c in (0, 1, 2)
+        }
     )
     bench = Bench(read_board(BOARD), "corner", ())
     return list(judge_together(rule, PlacedRule(rule, None, "part", "package 1"), readings, bench))
