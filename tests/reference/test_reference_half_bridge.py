@@ -12,6 +12,7 @@ from test_reference_high_side import PERFECT_P
 
 from boardsim.circuit.deck import Settings
 from boardsim.engine.run import Engine
+from boardsim.parts.rules import MeanRule, PeakRule
 
 pytestmark = pytest.mark.engine
 
@@ -58,3 +59,13 @@ def test_the_coil_freewheels_through_the_low_transistor(engine: Engine, tmp_path
     assert found.at(off, "i_coil", 0) == pytest.approx(peak, rel=5e-3)
     # 0.5 % of the peak: 300 ns of 750 us, and the supply's and transistors' milliohms.
     assert np.abs(found.at(off + times, "i_coil", 0) - peak * np.exp(-times * R / L)).max() < 5e-3 * peak
+    # Backwards through the low transistor all the time: its average counts by magnitude, and is the coil's.
+    after = found.t > off + 1e-5
+    backwards, size = (found.signal(quantity, 0)[after] for quantity in ("i_d_low", "i_d_size_low"))
+    assert backwards.max() < 1e-3
+    np.testing.assert_allclose(size, np.abs(backwards), atol=1e-6)
+    low = [
+        p.rule for p in found.deck.rules if isinstance(p.rule, PeakRule | MeanRule) and p.rule.check == "overcurrent"
+    ]
+    assert {r.quantity for r in low if isinstance(r, PeakRule) and r.magnitude} == {"i_d", "i_d_low"}
+    assert {r.quantities for r in low if isinstance(r, MeanRule)} == {("i_d_size",), ("i_d_size_low",)}
