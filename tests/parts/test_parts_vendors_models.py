@@ -286,3 +286,29 @@ def test_a_run_that_a_vendors_model_spoils_is_told_with_the_name_of_its_file(tmp
     ):
         pass
     assert "read from d.lib" in (tmp_path / "kept" / "failed.cir").read_text(encoding="utf-8")
+
+
+@pytest.mark.parametrize(
+    ("name", "given", "missing"),
+    [
+        ("zener-mine", 'voltage = "20 V +/- 5 %"', False),
+        ("zener-mine", 'voltage = "20 V"', True),
+        ("diode-mine", 'reverse_voltage = "100 V"', False),
+        ("diode-mine", "", True),
+    ],
+)
+def test_what_a_model_cannot_be_held_against_is_a_missing_limit_and_no_pass(
+    tmp_path: Path, name: str, given: str, missing: bool
+) -> None:
+    """A Zener of one number has no band, a diode without a rated voltage nothing that it has to stand."""
+    diode = '[diode-mine]\nkind = "diode"\nforward = [{ voltage = "0.8 V", current = "1 A" }]\nREVERSE\nmodel = { file = "plain.lib", model = "dmine" }\nsource = "made up for this test"\n'
+    text = PLAIN.replace('voltage = "20 V"', given) if name == "zener-mine" else PLAIN
+    (tmp_path / "parts.toml").write_text(text + diode.replace("REVERSE", given if name == "diode-mine" else ""))
+    (tmp_path / "plain.lib").write_text(MODELS, encoding="utf-8")
+    part = read_shelves([tmp_path])[name].part(name)
+    assert part is not None
+    stamp = part.stamp("x", "clamp part", "a", "b", (), NOMINAL)  # type: ignore[attr-defined]
+    rules = [r for r in stamp.rules if r.check == "model-breakdown"]
+    assert rules
+    assert {r.limit.value is None for r in rules} == {missing}
+    assert {r.quantity for r in rules} <= {p.quantity for p in stamp.probes}
