@@ -6,16 +6,19 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from reference_boards import STIFF, Floats, Run, board_text, pattern_text, pulse, run_board
+from reference_boards import STIFF, Floats, Run, board_text, pattern_text, pulse, run_board, run_plain
 from scipy.integrate import solve_ivp
 
 from boardsim.board.reader import library_part
 from boardsim.circuit.deck import Settings
 from boardsim.engine.run import Engine
 from boardsim.parts.base import NOMINAL
-from boardsim.parts.elements import PowerMosfet
+from boardsim.parts.elements import PowerMosfet, Resistor
 from boardsim.parts.mosfet import NMosfet
 from boardsim.parts.switches.n_mosfet import NMosfetStage
+from boardsim.parts.vendor.cards import read_library
+from boardsim.parts.vendor.flatten import flatten
+from boardsim.parts.vendor.text import read_statements
 from boardsim.scenarios.parts import copy_part
 
 pytestmark = pytest.mark.engine
@@ -144,3 +147,17 @@ def test_a_coil_that_freewheels_through_a_diode_of_a_file_decays_as_shockleys_eq
     drop = run.at(began + after, "v_clamp diode", 0)
     shockley = EMISSION * THERMAL * np.log1p(found / SATURATION) + SERIES * found
     assert np.abs(drop - shockley)[found > 1e-3].max() < 1e-3
+
+
+def test_a_resistors_temperature_coefficients_are_worked_out_as_ngspice_itself_does(
+    engine: Engine, tmp_path: Path
+) -> None:
+    """The file's line as it stands in a deck at 127 degC, against the number that goes into ours."""
+    line = "100 tc1=0.003 tc2=2e-5"
+    plain = f".title plain\nI1 0 a 1m\nR1 a 0 {line}\n.options temp=127\n.save v(a)\n.tran 1u 10u\n.end\n"
+    theirs = run_plain(engine, plain, 10e-6)["v(a)"][-1] / 1e-3
+    (tmp_path / "r.lib").write_text(f".subckt s a b\nR1 a b {line}\n.ends\n", encoding="utf-8")
+    library = read_library(read_statements(tmp_path / "r.lib", tmp_path))
+    (found,) = flatten(library, library.subcircuits["s"], "x", {"a": "a", "b": "0"}, 127.0).elements
+    assert isinstance(found, Resistor)
+    assert found.ohms == pytest.approx(theirs, rel=1e-6)

@@ -25,7 +25,7 @@ from boardsim.parts.elements import (
 )
 from boardsim.parts.record import nearest, shortened
 from boardsim.parts.vendor.cards import Definitions, Library, ModelCard, Subcircuit, split_assignments
-from boardsim.parts.vendor.devices import Worked, device_model, passive
+from boardsim.parts.vendor.devices import MEASURED, TNOM, Worked, device_model, passive
 from boardsim.parts.vendor.expressions import Function, Scope, Work, number_of, parse, resolved, volts, written
 from boardsim.parts.vendor.text import Place, Statement, some_of
 
@@ -36,6 +36,7 @@ _LONGEST_LAWS = 200_000  # characters of all laws of one part as they stand in a
 SIDE = 1e-4  # [m], length and width of a MOSFET that names none, as in SPICE
 _TOKEN = re.compile(r"\{[^{}]*\}|[^\s(),{}=]+")
 _BY_LAW = re.compile(r"\s(value|table)\b")
+_TEMPERATURE = {"tc1", "tc2", "tnom", *MEASURED}  # of a resistor's, capacitor's or inductor's model
 _GROUNDS = ("0", "gnd")
 
 
@@ -279,6 +280,11 @@ class _Instance:
                 raise self.place.refuse(
                     f'model "{shortened(models[0])}" is of type {card.device.upper()}, which does not fit here'
                 )
+            if given.keys() & {"tc", "tc1", "tc2"} and card.parameters.keys() & _TEMPERATURE:
+                raise self.place.refuse(
+                    f'{shortened(text)!r} has temperature coefficients beside those of its model "{shortened(models[0])}"; programs '
+                    "differ about which count, and from what temperature: give them in one of the two places"
+                )
             size *= passive(card, lambda e: number_of(e, self.values.scope(), card.place), self.celsius)
         if size < 0:
             raise self.place.refuse(f"{shortened(text)!r} comes to {size:g}; no part has less than nothing")
@@ -301,14 +307,14 @@ class _Instance:
             self.put(Capacitor(name, first, last, size))
 
     def growth(self, given: Mapping[str, str]) -> float:
-        """1 + TC1 dT + TC2 dT^2 from 27 degC. [1]"""
+        """1 + TC1 dT + TC2 dT^2 from 27 degC: SPICE's nominal temperature, which only .options could change. [1]"""
         both = [self.number(t) for t in re.split(r"[\s,]+", given["tc"])] if "tc" in given else []
         if len(both) > 2 or (both and ("tc1" in given or "tc2" in given)):
             raise self.place.refuse("tc takes one or two numbers, and tc1 and tc2 in its place")
         first, second = [*both, 0.0, 0.0][:2]
         first += self.number(given["tc1"]) if "tc1" in given else 0.0
         second += self.number(given["tc2"]) if "tc2" in given else 0.0
-        shift = self.celsius - 27.0
+        shift = self.celsius - TNOM
         return 1 + first * shift + second * shift**2
 
     def area(self, words: list[str], given: Mapping[str, str]) -> float:
