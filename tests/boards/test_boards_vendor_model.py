@@ -10,7 +10,11 @@ from pathlib import Path
 import pytest
 
 from boardsim.board.reader import read_board
+from boardsim.circuit.assemble import assemble, windows
 from boardsim.firing.pattern import read_pattern
+from boardsim.firing.schedule import fire
+from boardsim.parts.base import NOMINAL
+from boardsim.parts.rules import LeastRule, PeakRule
 from boardsim.scenarios.fire import fire_pattern
 from boardsim.verdict.findings import Result
 
@@ -112,6 +116,26 @@ def test_a_zener_that_does_not_move_with_its_junction_lies_outside_of_its_band_w
     (folder / "board.toml").write_text(text.replace("\nsupply", f"{hot}\nsupply", 1), encoding="utf-8")
     checked = model_checks(fired(folder, tmp_path))
     assert checked["1", ZENER.format("least")] == verdict
+
+
+def test_a_zener_that_a_package_has_once_is_held_at_its_band_once(tmp_path: Path) -> None:
+    """One Zener behind the common pin of seven outputs: two limits of the board, and not fourteen of its channels."""
+    shutil.copytree(HERE.parent / "f09_common_zener", tmp_path / "board")
+    path = tmp_path / "board" / "repaired.toml"
+    shutil.copy(HERE / "models.lib", path.parent)
+    text = path.read_text(encoding="utf-8")
+    model = 'kind = "zener"\nmodel = { file = "models.lib", model = "Z20" }'
+    assert text.count('kind = "zener"') == 1
+    path.write_text(text.replace('kind = "zener"', model), encoding="utf-8")
+    board = read_board(path)
+    firing = fire(board, read_pattern(path.parent / "pattern.toml", board))
+    deck = assemble(board, firing, NOMINAL, windows(board, firing)[0])
+    placed = [p for p in deck.rules if p.rule.check == "model-breakdown"]
+    assert [type(p.rule) for p in placed] == [PeakRule, LeastRule]
+    for p in placed:
+        assert isinstance(p.rule, PeakRule | LeastRule)
+        assert p.channel is None
+        assert (None, p.rule.quantity) in deck.signals
 
 
 HOSTILE = {

@@ -185,6 +185,7 @@ def in_its_band(
                 high,
                 f"{takes} at the highest voltage of its band",
                 f"{advice} breaks down above its band",
+                part=part,
             ),
         ),
     )
