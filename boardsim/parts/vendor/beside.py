@@ -115,7 +115,10 @@ def blocking(
     if leakage:
         source = f"printed leakage and {source}"
     limit = Limit(most, "A", None, source, "breakdown current")
-    advice = f"another model: this one breaks down, or leaks more than the record's leakage, at the rated {in_units(rated.typ, 'V')}"
+    advice = (
+        f"another model: this one breaks down below {in_units(rated.typ, 'V')}; or, of a Schottky diode that leaks as much, "
+        "the record's leakage as its datasheet prints it"
+    )
     return Stamp(
         elements=(*held, device),
         probes=(Probe(quantity, current(meter), "A"),),
