@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 from boardsim.parts.base import Stamp
-from boardsim.parts.rules import EnergyRule, HeatRule, MeanRule, PeakRule, PulseRule, Rule
+from boardsim.parts.rules import EnergyRule, HeatRule, LeastRule, MeanRule, PeakRule, PulseRule, Rule
 
 
 def of_package(stamp: Stamp, package: str) -> Stamp:
@@ -22,7 +22,7 @@ def of_package(stamp: Stamp, package: str) -> Stamp:
 
     def rule_of(rule: Rule) -> Rule:
         match rule:
-            case PeakRule():
+            case PeakRule() | LeastRule():
                 return replace(rule, quantity=named(rule.quantity))
             case MeanRule() | PulseRule():
                 return replace(rule, quantities=tuple(named(q) for q in rule.quantities))

@@ -290,7 +290,7 @@ class DipRule:
 
 @dataclass(frozen=True)
 class LeastRule:
-    """The lowest value of a probe must stay above a limit.
+    """The lowest value of a probe must stay above a limit; `part` if not the stamp's own.
 
     `soft` says that what is below it is judged elsewhere by what follows from it: then it is tight, and never fails.
     """
@@ -301,6 +301,7 @@ class LeastRule:
     what: str
     advice: str
     soft: bool = False
+    part: str = ""
 
 
 @dataclass(frozen=True)

@@ -88,13 +88,13 @@ def read(folder: Path, content: bytes | str, name: str = "m.lib") -> object:
     return read_library(read_statements(folder / name, folder))
 
 
-def understood(text: str) -> object:
+def understood(text: str, celsius: float = 25.0) -> object:
     from boardsim.parts.vendor.text import Statement
 
     lines = tuple(Statement(Place("x.lib", i), t.lower()) for i, t in enumerate(text.splitlines(), 1))
     library = read_library(lines)
     found = library.subcircuits["s"]
-    return flatten(library, found, "p", {pin: f"deck_{pin}" for pin in found.pins}, 25.0)
+    return flatten(library, found, "p", {pin: f"deck_{pin}" for pin in found.pins}, celsius)
 
 
 @pytest.mark.parametrize(
@@ -110,6 +110,49 @@ def test_lines_that_cannot_be_translated_without_a_change_are_refused(line: str)
     models = ".model dm d(is=1e-14)\n.model dx d(is=1e-14 foo=3)\n.model dbv d(is=1e-14 bv=5)\n.model dibvl d(is=1e-14 ibvl=1u)\n"
     with pytest.raises(QuantityError, match=r"x\.lib:\d"):
         understood(f"{models}.model mo nmos(level=7 vto=1)\n.subckt s a b\n{line}\n.ends\n")
+
+
+COLD = """.model rm res(tc1=0.01)
+.model rt res(r=2 tc1=0.01 t_measured=25)
+.model cm cap(c=1 tc1=0.01)
+.subckt s a b
+"""
+
+
+@pytest.mark.parametrize(
+    ("line", "value"),
+    [
+        ("r1 a b 100 tc=0.01", 200.0),
+        ("r1 a b 100 tc=0.01,0.0001", 300.0),
+        ("r1 a b 100 tc1=0.01 tc2=0.0001", 300.0),
+        ("r1 a b rm 100", 200.0),
+        ("r1 a b rt 100", 2 * 202.0),
+        ("c1 a b 1n tc1=0.01", 2e-9),
+        ("c1 a b cm 1n", 2e-9),
+        ("l1 a b 1u tc1=-0.002", 0.8e-6),
+    ],
+)
+def test_temperature_coefficients_count_from_27_degc_unless_the_model_says_from_where(line: str, value: float) -> None:
+    """R(T) = R (1 + TC1 dT + TC2 dT^2) with dT from SPICE's nominal 27 degC: SPICE 2G6's user guide. At 127 degC dT is 100 K."""
+    (found,) = understood(f"{COLD}{line}\n.ends\n", 127.0).elements  # type: ignore[attr-defined]
+    assert next(v for v in vars(found).values() if isinstance(v, float)) == pytest.approx(value)
+
+
+@pytest.mark.parametrize(
+    "line",
+    [
+        "r1 a b rm 100 tc=0.01",
+        "r1 a b rt 100 tc1=0.01",
+        "c1 a b cm 1n tc2=1u",
+        "r1 a b 1 tc=1,2,3",
+        "r1 a b 1 tc=1 tc1=1",
+        "r1 a b 1 tc=-0.02",
+    ],
+)
+def test_temperature_coefficients_that_programs_count_differently_are_refused(line: str) -> None:
+    """Beside those of a model; more than two; one twice; and what leaves less than nothing of a part at 127 degC."""
+    with pytest.raises(QuantityError, match=r"x\.lib:5"):
+        understood(f"{COLD}{line}\n.ends\n", 127.0)
 
 
 PIECES = st.sampled_from(

@@ -39,7 +39,6 @@ _NOT = {
 _STATEMENTS = ".subckt, .ends, .model, .param, .func, .include and .lib FILE"
 _NAME = re.compile(r"[a-z0-9_][a-z0-9_.+\-]*")
 _ASSIGNED = re.compile(r"(?<![<>=!\w.])([a-z_][a-z0-9_.]*)\s*=(?!=)")
-_MOST = 20_000  # statements of one model
 
 
 @dataclass(frozen=True)
@@ -90,15 +89,13 @@ def read_library(statements: tuple[Statement, ...]) -> Library:
     """
     library = Library()
     inside: Subcircuit | None = None
-    if len(statements) > _MOST:
-        raise statements[_MOST].place.refuse(f"more than {_MOST} statements are no model")
     for s in statements:
         if not s.text.startswith("."):
             _check_element(s, inside)
             assert inside is not None
             inside.lines.append(s)
             continue
-        word, _, rest = s.text.partition(" ") if "\t" not in s.text else s.text.replace("\t", " ").partition(" ")
+        word, _, rest = s.text.partition(" ")
         rest = rest.strip()
         if word == ".subckt":
             if inside is not None:

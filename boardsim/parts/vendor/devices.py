@@ -16,8 +16,8 @@ from boardsim.parts.temperature import LEAST_SATURATION
 from boardsim.parts.vendor.cards import ModelCard
 from boardsim.parts.vendor.expressions import Expression, parse
 
-_TNOM = 27.0  # [degC], SPICE's own, at which a model's figures count that does not say another
-_MEASURED = {"t_measured": "tnom", "tref": "tnom"}
+TNOM = 27.0  # [degC], SPICE's own, at which a model's figures count that does not say another
+MEASURED = {"t_measured": "tnom", "tref": "tnom"}
 _DISPLAY = {
     "mfg",
     "type",
@@ -76,7 +76,7 @@ _JUNCTION = {"is": (LEAST_SATURATION, math.inf), "n": (1e-3, math.inf), "fc": (0
 _DIODE = Device(
     "D",
     _words("is tnom rs trs1 trs2 n tt cjo vj m tm1 tm2 ikf nbv eg xti kf af fc bv ibv tcv isr nr"),
-    {**_MEASURED, "js": "is", "cj0": "cjo", "cj": "cjo", "pb": "vj", "mj": "m", "ik": "ikf", "vb": "bv", "ib": "ibv", "trs": "trs1"},
+    {**MEASURED, "js": "is", "cj0": "cjo", "cj": "cjo", "pb": "vj", "mj": "m", "ik": "ikf", "vb": "bv", "ib": "ibv", "trs": "trs1"},
     {**_JUNCTION, "m": (0.0, _MOST_GRADING), "bv": (1e-3, math.inf), "ibv": (0.0, math.inf)},
     _words("ikf isr cjo tt rs"),
     {
@@ -97,7 +97,7 @@ _BIPOLAR = Device(
         "xtb eg xti fc kf af nkf iss ns tnom trb1 trb2 trm1 trm2 trc1 trc2 tre1 tre2"
     ),
     {
-        **_MEASURED, "va": "vaf", "ik": "ikf", "vb": "var", "pe": "vje", "me": "mje", "pc": "vjc", "mc": "mjc", "ccs": "cjs",
+        **MEASURED, "va": "vaf", "ik": "ikf", "vb": "var", "pe": "vje", "me": "mje", "pc": "vjc", "mc": "mjc", "ccs": "cjs",
         "csub": "cjs", "ps": "vjs", "ms": "mjs", "nk": "nkf", "pt": "xti",
     },
     {"is": (1e-40, math.inf), "fc": (0.0, _MOST_FC), "bf": (1e-3, math.inf), "br": (1e-6, math.inf)},
@@ -113,7 +113,7 @@ _POWER = Device(
         "vto kp phi lambda theta rd rs rg tnom kf af mtriode tcvth mu texp0 texp1 trd1 trd2 trg1 trg2 trs1 trs2 trb1 trb2 ksubthres "
         "tksubthres1 tksubthres2 subshift bv ibv nbv rds rb n tt eg xti is vj cjo m fc cgdmin cgdmax a cgs rq vq"
     ),
-    {**_MEASURED, "vt0": "vto", "vth0": "vto", "vtotc": "tcvth", "bex": "mu"},
+    {**MEASURED, "vt0": "vto", "vth0": "vto", "vtotc": "tcvth", "bex": "mu"},
     {**_JUNCTION, "kp": (1e-9, math.inf), "rds": (1.0, math.inf)},
     frozenset(),
     {"subthres": "ngspice rounds the threshold by KSUBTHRES (in volts) only; give this in its place"},
@@ -121,7 +121,7 @@ _POWER = Device(
     ("vto", "kp", "cgs", "cgdmin", "cgdmax", "cjo", "is"),
 )
 _COMMON_MOS = "vto kp gamma phi lambda rd rs cbd cbs is pb cgso cgdo cgbo rsh cj mj cjsw mjsw js tox ld uo fc nsub tpg nss tnom kf af"
-_MOS_ALIASES = {**_MEASURED, "vt0": "vto", "u0": "uo"}
+_MOS_ALIASES = {**MEASURED, "vt0": "vto", "u0": "uo"}
 _MOS_REFUSED = {
     **dict.fromkeys(("rg", "rds", "rb"), "ngspice has no such resistance in this model; write it as an element"),
     "n": "ngspice's bulk diodes have no emission coefficient in this model",
@@ -176,7 +176,7 @@ def device_model(card: ModelCard, number: Callable[[Expression], float], celsius
     found, remarks, size = _numbers(card, device, number)
     if card.device in ("nmos", "pmos"):
         found["level"] = level
-    shift = celsius - found.get("tnom", _TNOM)
+    shift = celsius - found.get("tnom", TNOM)
     if device is _DIODE:
         _breakdown(card, found, shift)
     for name, (least, most) in device.bounds.items():
@@ -197,7 +197,7 @@ def device_model(card: ModelCard, number: Callable[[Expression], float], celsius
         remarks.append(
             "MU or TEXP0 is not given: with temperature K_P and RD move by ngspice's own exponents, -1.5 and 1.5"
         )
-    found.setdefault("tnom", _TNOM)
+    found.setdefault("tnom", TNOM)
     kind = {"pnp": "PNP", "pmos": "PMOS"}.get(card.device, device.type)
     return Worked(Model(card.name, kind, {k.upper(): v for k, v in found.items()}), tuple(remarks), size)
 
@@ -298,9 +298,9 @@ def passive(card: ModelCard, number: Callable[[Expression], float], celsius: flo
         If it has other parameters.
     """
     multiplier = card.device[0]
-    found = {multiplier: 1.0, "tc1": 0.0, "tc2": 0.0, "tnom": _TNOM}
+    found = {multiplier: 1.0, "tc1": 0.0, "tc2": 0.0, "tnom": TNOM}
     for key, text in card.parameters.items():
-        name = _MEASURED.get(key, key)
+        name = MEASURED.get(key, key)
         if name not in found:
             raise card.place.refuse(
                 f'parameter "{shortened(key).upper()}" of a {card.device.upper()} model is not translated; known: '

@@ -22,6 +22,7 @@ _LONGEST = 4000  # characters of an expression
 _DEEPEST = 30  # brackets within brackets
 _MOST = 20_000  # parts of an expression once functions are written out
 _LONGEST_LAW = 8000  # characters of a law as it stands in a deck
+_MOST_WORK = 50_000  # parts of all expressions of one model; a large macro model has some thousands
 _HIGHEST_POWER = 16  # that is written as a product
 
 _SCALES = {
@@ -268,6 +269,13 @@ class _Reader:
 # ------------------------------------------------------------------------------------------------------ names and numbers
 
 
+@dataclass
+class Work:
+    """How much was worked out for one model so far, so that many expressions together stay bounded as well as each."""
+
+    steps: int = 0
+
+
 @dataclass(frozen=True)
 class Scope:
     """What names mean where an expression stands.
@@ -277,10 +285,13 @@ class Scope:
     value : callable
         The number of a parameter; None where there is none of this name.
     functions : mapping of name to Function
+    work : Work
+        Of the model, which all its scopes share.
     """
 
     value: Callable[[str], float | None]
     functions: Mapping[str, Function]
+    work: Work = field(default_factory=Work)
 
 
 def resolved(found: Expression, scope: Scope, place: Place) -> Expression:
@@ -316,6 +327,11 @@ class _Resolver:
         self.count += 1
         if self.count > _MOST or depth > 4 * _DEEPEST:
             raise self.place.refuse("an expression grows without bound once its functions are written out")
+        self.scope.work.steps += 1
+        if self.scope.work.steps > _MOST_WORK:
+            raise self.place.refuse(
+                f"the expressions of this model have more than {_MOST_WORK} parts once functions are written out"
+            )
         if isinstance(found, Number):
             return found
         if isinstance(found, Name):
