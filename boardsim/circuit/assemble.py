@@ -76,7 +76,9 @@ def gate_points(
     return tuple(points)
 
 
-def looked_at(points: tuple[tuple[float, float], ...], lasting: float) -> tuple[tuple[float, float], ...]:
+def looked_at(
+    points: tuple[tuple[float, float], ...], lasting: float, moments: tuple[float, ...] = ()
+) -> tuple[tuple[float, float], ...]:
     """The same straight lines with further points after each edge, at every one of which ngspice makes a step.
 
     Parameters
@@ -85,20 +87,23 @@ def looked_at(points: tuple[tuple[float, float], ...], lasting: float) -> tuple[
         [s], [V]
     lasting : float
         How long after an edge. [s]; 0 leaves the points as they are
+    moments : tuple of float
+        Further times after an edge. [s]
 
     Notes
     -----
     Its own estimate of the error lets ngspice step over most of what a slow gate does after its edge, and so miss a tenth of the
     energy that its transistor takes meanwhile.
     """
-    if lasting <= 0:
+    if lasting <= 0 and not moments:
         return points
+    steps = sorted({*(lasting * k / STOPS for k in range(1, STOPS + 1) if lasting > 0), *moments})
+    clear = lasting / STOPS / 2 if lasting > 0 else steps[0] / 2  # of the next edge
     found: list[tuple[float, float]] = []
     for (t, volts), (then, _) in itertools.pairwise(points):
         found.append((t, volts))
         if found[:-1] and found[-2][1] != volts:
-            stops = (t + lasting * k / STOPS for k in range(1, STOPS + 1))
-            found += [(at, volts) for at in stops if at < then - lasting / STOPS / 2]
+            found += [(t + step, volts) for step in steps if t + step < then - clear]
     return (*found, points[-1])
 
 
@@ -240,7 +245,7 @@ def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, d
     register, name = board.chain.register_, f"{driver.stem}_q"
     volts = 1.0 if board.logic.derived else board.logic.level(corner)
     points = gate_points(firing.levels[driver.output], window, volts, register.output_edge.typ)
-    points = looked_at(points, driver.switch.follows_within())
+    points = looked_at(points, driver.switch.follows_within(), driver.switch.moments())
     if board.logic.derived:
         return known_output(register, name, driver.output, points)
     driven: Stamp = register.drive(name, name, points)

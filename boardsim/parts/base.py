@@ -147,6 +147,12 @@ class Part(Record):
         current = self.steady_input(volts, resistance)
         return math.inf if current > 0 else 0.0, current
 
+    def moments(self) -> tuple[float, ...]:
+        """When, after an edge at a switch's input, a run makes a step whatever its estimate of the error: where the switch
+        itself makes an edge that comes late and is short against how long it took to come. [s]
+        """
+        return ()
+
     @classmethod
     def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[Self, ...]:
         """This kind as a library could build it, to be set beside other kinds of its role.

@@ -19,6 +19,7 @@ from boardsim.quantities import RESISTANCE, Quantity
 
 _TOO_HIGH = "a driver with a lower supply, or a gate rating that stands it"
 _TOO_LOW = "a driver with a higher supply, or a transistor that is specified at this gate voltage"
+_STOPS = 24  # while a gate follows the driver
 
 
 class Leg(Part):
@@ -67,9 +68,22 @@ class Leg(Part):
         """Whether the driver's input has a pull-down."""
         return self.driver.pulldown is not None
 
-    def follows_within(self) -> float:
-        """Four times delay and dead time. [s]"""
-        return 4 * (self.driver.delay.typ + self.driver.dead_time.max)
+    def moments(self) -> tuple[float, ...]:
+        """Over both of the driver's edges, and from each on until the gates have followed: five times (R_o + R + R_g) Q / V. [s]
+
+        What charges a gate to the driver's supply V is taken as C_iss V + Q_gd.
+        """
+        first = self.driver.delay.typ
+        edge, both = self.driver.edge.typ, first + self.driver.dead_time.min
+        last = max(self._settles(part) for part in (self.high, self.low))
+        # The lags start where the register's edge crosses the threshold, somewhat before its end.
+        after = (*(0.25 * edge * k for k in range(-8, 5)), *(last * k / _STOPS for k in range(1, _STOPS + 1)))
+        return tuple(start + step for start in dict.fromkeys((first, both)) for step in after if start + step > 0)
+
+    def _settles(self, part: Mosfet) -> float:
+        """Five times what the driver takes for a gate's charge. [s]"""
+        ohms = self.driver.output_resistance.max + self.gate.max + part.gate_resistance.max
+        return 5 * ohms * (part.input_capacitance.max + part.gate_drain_charge.max / self.driver.supply.typ)
 
     def control(self, name: str) -> str:
         """The high transistor's gate."""
@@ -104,6 +118,7 @@ class Leg(Part):
         numbers = listed(
             "gate driver",
             delay=self.driver.delay,
+            edge=self.driver.edge,
             output_resistance=self.driver.output_resistance,
             input_threshold=self.driver.threshold,
         )
