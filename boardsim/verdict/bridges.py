@@ -63,10 +63,11 @@ def judge_leg(rule: ShootThroughRule, placed: PlacedRule, leg: Leg, bench: Bench
         needed = rule.dead_time + _MORE * longest.lasting
         longer = f"a dead time of at least {in_units(needed, 's')}, or faster gates"
         coupled = any(0 <= longest.start - (d.start + d.lasting) <= rule.dead_time for d in neither)
+        often, each = (f", {len(both)} times", " each time on average") if len(both) > 1 else (", once", "")
         said = (
             f"{placed.label}: both transistors of its leg conduct at once for {in_units(longest.lasting, 's')}"
-            f"{when(longest.start)}, {len(both)} times: up to {in_units(leg.peak, 'A')} flow from the rail to ground, "
-            f"{in_units(leg.charge / len(both), 'C')} each time on average; the driver's dead time is "
+            f"{when(longest.start)}{often}: up to {in_units(leg.peak, 'A')} flow from the rail to ground, "
+            f"{in_units(leg.charge / len(both), 'C')}{each}; the driver's dead time is "
             f"{in_units(rule.dead_time, 's')}; try: {_COUPLED if coupled else longer}"
         )
         margin = -longest.lasting / max(rule.dead_time, longest.lasting)

@@ -31,6 +31,7 @@ from boardsim.parts.rules import (
     TogetherRule,
 )
 from boardsim.quantities import in_units
+from boardsim.verdict.audit import SMALL
 from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.bridges import judge_leg
@@ -67,6 +68,10 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
         for finding in _apply(placed, readings, firing, deck, bench):
             size = scale if finding.unit == "A" else 0.0
             size = hottest if finding.unit == "W" and finding.limit is None else size
+            if isinstance(placed.rule, ShootThroughRule):
+                # The difference of two edges that come a dead time apart; of a gate that only just touches its threshold the
+                # time above it is ill-conditioned, and a hundredth of the dead time is a tenth of the guard band.
+                size = placed.rule.dead_time / SMALL
             found.append(
                 replace(
                     finding,
