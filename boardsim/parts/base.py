@@ -53,6 +53,14 @@ class Part(Record):
         """What the corners vary in this part, by the keys of `Corner.ends`."""
         return {}
 
+    def tolerances_too(self) -> tuple[tuple[str, Quantity], ...]:
+        """Further numbers that the same ends vary, such as those of a stage's second transistor."""
+        return ()
+
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """Numbers whose worse end counts in every corner, or that lie within one that `tolerances` holds."""
+        return ()
+
     def implied(self) -> dict[str, Quantity]:
         """Numbers by the names of fields that follow from others, or are assumed where the field was not given."""
         return {}

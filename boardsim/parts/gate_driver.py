@@ -8,6 +8,7 @@ from typing import Annotated
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
+from boardsim.parts.base import Corner
 from boardsim.parts.elements import GROUND, Capacitor, Element, Resistor, VoltageLaw
 from boardsim.parts.record import Record
 from boardsim.quantities import POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity, assume, in_units
@@ -64,7 +65,7 @@ class GateDriver(Record):
             )
         return self
 
-    def elements(self, name: str, pin: str, rail: str) -> tuple[tuple[Element, ...], str, str]:
+    def elements(self, name: str, pin: str, rail: str, corner: Corner) -> tuple[tuple[Element, ...], str, str]:
         """The input and both lags; what the high and the low gate get, as expressions. [V]"""
         level = f"(V({pin})-{self.threshold.typ!r})/{_INPUT!r}"
         first = self.delay.typ / math.log(2)
@@ -85,7 +86,7 @@ class GateDriver(Record):
             up, down = f"{up}*{_past(lag, steep)}", f"{down}*{_past(lag, -steep)}"
         if self.pulldown is not None:
             found.append(Resistor(f"{name}_pulldown", pin, GROUND, self.pulldown.typ))
-        volts = f"min({self.supply.typ!r},V({rail}))"
+        volts = f"min({corner.take(self.supply, 'gate_supply')!r},V({rail}))"
         return tuple(found), f"{volts}*{up}", f"{volts}*{down}"
 
 

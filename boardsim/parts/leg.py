@@ -11,6 +11,7 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
 from boardsim.parts.elements import GROUND, Element, Probe, Resistor, VoltageLaw, scaled, voltage
 from boardsim.parts.gate_driver import GateDriver
+from boardsim.parts.gate_spread import RESISTANCES, charge_spread, paced, resistance_spread, times_in
 from boardsim.parts.mosfet import Mosfet, NMosfet
 from boardsim.parts.mosfet_stamp import Place, mosfet_stamp
 from boardsim.parts.p_mosfet import PMosfet
@@ -57,8 +58,33 @@ class Leg(Part):
         return found
 
     def tolerances(self) -> dict[str, Quantity]:
-        """What the corners vary: breakdown, on-resistance and threshold of the high transistor, and of the low one alike."""
-        return {"breakdown": self.high.breakdown, "on_resistance": self.high.spread, "threshold": self.high.threshold}
+        """What the corners vary: breakdown, on-resistance and threshold, the driver's supply, and how quickly gates follow it."""
+        return {
+            "breakdown": self.high.breakdown,
+            "on_resistance": self.high.spread,
+            "threshold": self.high.threshold,
+            "gate_supply": self.driver.supply,
+            "charge_high": charge_spread(self.high),
+            "charge_low": charge_spread(self.low),
+            RESISTANCES: self._resistance_spread(),
+        }
+
+    def tolerances_too(self) -> tuple[tuple[str, Quantity], ...]:
+        """The low transistor's, as the high one's."""
+        low: Mosfet = self.low
+        return ("breakdown", low.breakdown), ("on_resistance", low.spread), ("threshold", low.threshold)
+
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """The least dead time and the longest delay count; charges, resistances and on-resistances lie within what is varied."""
+        found = [self.driver.dead_time, self.driver.delay, self.driver.output_resistance, self.gate]
+        for part in (self.high, self.low):
+            found += [part.gate_drain_charge, part.gate_resistance, *(p.value for p in part.on_resistance)]
+            found += [part.gate_charge] if part.gate_charge is not None else []
+        return tuple(found)
+
+    def _resistance_spread(self) -> Quantity:
+        ways = ((self.driver.output_resistance, self.gate, part.gate_resistance) for part in (self.high, self.low))
+        return resistance_spread(*ways)
 
     def steady_input(self, volts: float, resistance: float) -> float:
         """Through the driver's pull-down. [V], [ohm] -> [A]"""
@@ -83,7 +109,7 @@ class Leg(Part):
     def _settles(self, part: Mosfet) -> float:
         """Five times what the driver takes for a gate's charge. [s]"""
         ohms = self.driver.output_resistance.max + self.gate.max + part.gate_resistance.max
-        return 5 * ohms * (part.input_capacitance.max + part.gate_drain_charge.max / self.driver.supply.typ)
+        return 5 * ohms * (part.input_capacitance.max + part.gate_drain_charge.max / self.driver.supply.min)
 
     def control(self, name: str) -> str:
         """The high transistor's gate."""
@@ -91,15 +117,20 @@ class Leg(Part):
 
     def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
         """The leg between rail and ground, driven from `pin`, with its middle at the coil's node `load`."""
-        driver, up, down = self.driver.elements(name, pin, rail)
+        driver, up, down = self.driver.elements(name, pin, rail, corner)
         sources = {"h": rail if self.high.mirrored else load, "l": GROUND}
         elements: list[Element] = [*driver]
         stamps: dict[str, Stamp] = {}
         for end, part, law, who in (("h", self.high, up, "high transistor"), ("l", self.low, down, "low transistor")):
             sign, gate, out = (-1.0 if part.mirrored else 1.0), f"{name}_g{end}", f"{name}_o{end}"
             ohms = self.driver.output_resistance.typ + self.gate.typ + part.gate_resistance.typ
-            law = law if sign > 0 else f"-({law})"
-            elements += [VoltageLaw(out, out, sources[end], law), Resistor(f"{name}_r{end}", out, gate, ohms)]
+            slow, quick = times_in(corner, end, charge_spread(part), self._resistance_spread())
+            wanted, held = f"V({name}_w{end})", f"{sign!r}*(V({gate})-V({sources[end]}))"
+            elements += [
+                VoltageLaw(f"{name}_w{end}", f"{name}_w{end}", GROUND, law),
+                VoltageLaw(out, out, sources[end], f"{sign!r}*({paced(wanted, held, slow, quick)})"),
+            ]
+            elements += [Resistor(f"{name}_r{end}", out, gate, ohms)]
             into = scaled(sign / ohms, voltage(out, gate))
             drain = load if part.mirrored or end == "l" else rail
             place = Place(drain, gate, sources[end], who, "" if end == "h" else "_low", _TOO_HIGH, _TOO_LOW)

@@ -123,6 +123,10 @@ def _beside_the_point(name: str, placed: PlacedRule) -> bool:
             return not isinstance(rule, HeatRule | PullInRule)
         case "threshold":
             return not isinstance(rule, IdleRule)
+        case "gate driver's supply":
+            return not isinstance(rule, ShootThroughRule | FloorRule | PeakRule | HeatRule)
+        case "gate charge of the high transistor" | "gate charge of the low transistor" | "gate resistances":
+            return not isinstance(rule, ShootThroughRule | HeatRule)
         case "bulk capacitance" | "bulk series resistance":
             return placed.channel is not None and not isinstance(rule, PullInRule)
         case _:
