@@ -13,7 +13,7 @@ from boardsim.board.reader import Board, Channel
 from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
-from boardsim.circuit.drivers import add_driver
+from boardsim.circuit.drivers import add_driver, refuse_too_short
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
 from boardsim.circuit.matrix import add_crossing, add_line
 from boardsim.circuit.packages import of_package
@@ -185,8 +185,9 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
     Raises
     ------
     InputError
-        If the pattern is too long for clocked registers.
+        If the pattern is too long for clocked registers, or has pulses too short for the models of switches.
     """
+    refuse_too_short(board, firing)
     parts = Assembly()
     add_rail(parts, board, corner)
     if board.logic.derived:

@@ -155,6 +155,16 @@ class Part(Record):
         current = self.steady_input(volts, resistance)
         return math.inf if current > 0 else 0.0, current
 
+    def delays(self) -> tuple[float, float]:
+        """By how much a switch turns on and off later than an edge at its input by design, at most; what its gate takes besides
+        is left out. [s]
+        """
+        return 0.0, 0.0
+
+    def steady_for(self) -> float:
+        """How long a level at a switch's input has to last at least for its model to hold. [s]"""
+        return 0.0
+
     def moments(self) -> tuple[float, ...]:
         """When, after an edge at a switch's input, a run makes a step whatever its estimate of the error: where the switch
         itself makes an edge that comes late and is short against how long it took to come. [s]

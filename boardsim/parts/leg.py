@@ -94,6 +94,14 @@ class Leg(Part):
         """Whether the driver's input has a pull-down."""
         return self.driver.pulldown is not None
 
+    def delays(self) -> tuple[float, float]:
+        """The driver's delay, with the dead time before turning on. [s]"""
+        return self.driver.delay.max + self.driver.dead_time.max, self.driver.delay.max
+
+    def steady_for(self) -> float:
+        """Seven times delay and dead time, see `GateDriver`. [s]"""
+        return 7 * (self.driver.delay.typ + self.driver.dead_time.min)
+
     def moments(self) -> tuple[float, ...]:
         """Over both of the driver's edges, and from each on until the gates have followed: five times (R_o + R + R_g) Q / V. [s]
 
