@@ -147,6 +147,10 @@ class Part(Record):
         """Highest current that a switch draws from an output that stays at `volts` behind `resistance`. [V], [ohm] -> [A]"""
         return 0.0
 
+    def input_threshold(self) -> Quantity | None:
+        """Of a switch with a logic input of its own, between which voltages that switches; None of any other. [V]"""
+        return None
+
     def edge_input(self, volts: float, resistance: float) -> tuple[float, float]:
         """Charge that a switch takes from an output that rises to `volts` behind `resistance`, and the current at first.
 

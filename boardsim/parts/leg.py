@@ -75,8 +75,14 @@ class Leg(Part):
         return ("breakdown", low.breakdown), ("on_resistance", low.spread), ("threshold", low.threshold)
 
     def taken_at_ends(self) -> tuple[Quantity, ...]:
-        """The least dead time and the longest delay count; charges, resistances and on-resistances lie within what is varied."""
-        found = [self.driver.dead_time, self.driver.delay, self.driver.output_resistance, self.gate]
+        """The least dead time, the longest delay and either end of the threshold count; charges, resistances and on-resistances lie within what is varied."""
+        found = [
+            self.driver.dead_time,
+            self.driver.delay,
+            self.driver.threshold,
+            self.driver.output_resistance,
+            self.gate,
+        ]
         for part in (self.high, self.low):
             found += [part.gate_drain_charge, part.gate_resistance, *(p.value for p in part.on_resistance)]
             found += [part.gate_charge] if part.gate_charge is not None else []
@@ -89,6 +95,10 @@ class Leg(Part):
     def steady_input(self, volts: float, resistance: float) -> float:
         """Through the driver's pull-down. [V], [ohm] -> [A]"""
         return 0.0 if self.driver.pulldown is None else volts / (resistance + self.driver.pulldown.min)
+
+    def input_threshold(self) -> Quantity | None:
+        """The driver's."""
+        return self.driver.threshold
 
     def held_off(self) -> bool:
         """Whether the driver's input has a pull-down."""

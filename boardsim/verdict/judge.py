@@ -180,7 +180,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
         case FallRule() as rule:
             yield judge_fall(rule, placed, readings, firing, bench)
         case ShootThroughRule() as rule:
-            if (leg := judge_leg(rule, placed, readings.legs[_channel(placed)], bench)) is not None:
+            place = _channel(placed)
+            fired = bool(len(firing.spans(place)))
+            if (leg := judge_leg(rule, placed, readings.legs[place], bench, fired=fired)) is not None:
                 yield leg
         case CeilingRule() as rule:
             yield judge_ceiling(rule, placed, readings, firing, bench)

@@ -16,6 +16,7 @@ from boardsim.verdict.bridges import judge_directions
 from boardsim.verdict.chain import judge_chain
 from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.chain_loads import judge_loads
+from boardsim.verdict.driver_levels import judge_driver_levels
 from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
 from boardsim.verdict.logic_supply import judge_supply
 
@@ -37,6 +38,7 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
         label = f"channels {write_range(members)}"
         found.append(_at_once(board, firing, members, most, "exclusive channels on at once", label, reason))
     found += judge_directions(board, firing)
+    found += judge_driver_levels(board)
     loads = where_limits_hold(board, judge_loads(board, firing))
     return [*found, *loads, *judge_chain(board), *judge_supply(board, firing)]
 

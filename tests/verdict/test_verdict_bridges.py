@@ -17,6 +17,7 @@ from boardsim.parts.base import NOMINAL
 from boardsim.parts.rules import IdleRule, ReleaseRule, ShootThroughRule
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.bridges import Leg, both_at_once, fired_again, judge_directions, judge_leg
+from boardsim.verdict.findings import Finding
 from boardsim.verdict.switching import judge_switching
 
 FOLDER = Path(__file__).parents[1] / "boards" / "f15_both_directions"
@@ -133,3 +134,43 @@ def test_pulses_that_are_short_against_a_drivers_lags_are_refused(tmp_path: Path
                 assemble(board, firing, NOMINAL, windows(board, firing)[0])
         else:
             assert assemble(board, firing, NOMINAL, windows(board, firing)[0]).rules
+
+
+def flat(fired_at_all: bool) -> Finding | None:
+    """A leg whose high gate stays at 1 V, below its 2 V, while the low one goes off and on."""
+    rule = ShootThroughRule("shoot-through", ("v_gs", "v_gs_low"), ("i_d", "i_d_low"), (2.0, 2.0), 1e-6, "given")
+    leg = Leg(rule.turn_on)
+    low = np.array([10.0, 10.0, 0.0, 0.0, 10.0])
+    leg.feed(np.arange(5) * 1e-6, np.stack([np.ones(5), low]), np.zeros((2, 5)))
+    bench = Bench(read_board(FOLDER / "board.toml"), "nominal", ())
+    return judge_leg(rule, PlacedRule(rule, 0, "part", "gate 0"), leg, bench, fired=fired_at_all)
+
+
+def test_a_leg_that_is_fired_and_never_turns_on_is_not_judged_and_says_so() -> None:
+    found = flat(True)
+    assert found is not None
+    assert (found.verdict, found.limit) == ("limit-missing", None)
+    assert "was not judged: the gate of its high transistor never turned that on" in found.sentence
+    assert flat(False) is None
+
+
+@pytest.mark.parametrize(
+    ("threshold", "high", "low"),
+    [
+        ("1.5 V", "pass", "pass"),
+        ("0.8 to 5.2 V", "fail", "pass"),
+        ("0.05 to 2 V", "pass", "fail"),
+        ("1 to 4.9 V", "tight", "pass"),
+    ],
+)
+def test_a_drivers_threshold_lies_between_the_levels_of_the_output_that_drives_it(
+    tmp_path: Path, threshold: str, high: str, low: str
+) -> None:
+    """74HC595: at least 4.9 V of 5 V, at most 0.1 V, at 20 uA (its family's datasheet, in the library)."""
+    board, firing = of_half_bridge(tmp_path, 1e-3, dead_time="1 us", threshold=threshold)
+    found = {f.quantity: f for f in judge_switching(board, firing) if f.quantity.endswith("at the gate driver")}
+    assert found["high level at the gate driver"].verdict == high
+    assert found["low level at the gate driver"].verdict == low
+    assert (found["high level at the gate driver"].value, found["low level at the gate driver"].value) == pytest.approx(
+        (4.9, 0.1)
+    )
