@@ -13,7 +13,7 @@ from boardsim.board.reader import Board, Channel
 from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
-from boardsim.circuit.drivers import add_driver
+from boardsim.circuit.drivers import add_driver, refuse_too_short
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
 from boardsim.circuit.matrix import add_crossing, add_line
 from boardsim.circuit.packages import of_package
@@ -76,7 +76,9 @@ def gate_points(
     return tuple(points)
 
 
-def looked_at(points: tuple[tuple[float, float], ...], lasting: float) -> tuple[tuple[float, float], ...]:
+def looked_at(
+    points: tuple[tuple[float, float], ...], lasting: float, moments: tuple[float, ...] = ()
+) -> tuple[tuple[float, float], ...]:
     """The same straight lines with further points after each edge, at every one of which ngspice makes a step.
 
     Parameters
@@ -85,20 +87,23 @@ def looked_at(points: tuple[tuple[float, float], ...], lasting: float) -> tuple[
         [s], [V]
     lasting : float
         How long after an edge. [s]; 0 leaves the points as they are
+    moments : tuple of float
+        Further times after an edge. [s]
 
     Notes
     -----
     Its own estimate of the error lets ngspice step over most of what a slow gate does after its edge, and so miss a tenth of the
     energy that its transistor takes meanwhile.
     """
-    if lasting <= 0:
+    if lasting <= 0 and not moments:
         return points
+    steps = sorted({*(lasting * k / STOPS for k in range(1, STOPS + 1) if lasting > 0), *moments})
+    clear = lasting / STOPS / 2 if lasting > 0 else steps[0] / 2  # of the next edge
     found: list[tuple[float, float]] = []
     for (t, volts), (then, _) in itertools.pairwise(points):
         found.append((t, volts))
         if found[:-1] and found[-2][1] != volts:
-            stops = (t + lasting * k / STOPS for k in range(1, STOPS + 1))
-            found += [(at, volts) for at in stops if at < then - lasting / STOPS / 2]
+            found += [(t + step, volts) for step in steps if t + step < then - clear]
     return (*found, points[-1])
 
 
@@ -180,8 +185,9 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
     Raises
     ------
     InputError
-        If the pattern is too long for clocked registers.
+        If the pattern is too long for clocked registers, or has pulses too short for the models of switches.
     """
+    refuse_too_short(board, firing)
     parts = Assembly()
     add_rail(parts, board, corner)
     if board.logic.derived:
@@ -240,7 +246,7 @@ def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, d
     register, name = board.chain.register_, f"{driver.stem}_q"
     volts = 1.0 if board.logic.derived else board.logic.level(corner)
     points = gate_points(firing.levels[driver.output], window, volts, register.output_edge.typ)
-    points = looked_at(points, driver.switch.follows_within())
+    points = looked_at(points, driver.switch.follows_within(), driver.switch.moments())
     if board.logic.derived:
         return known_output(register, name, driver.output, points)
     driven: Stamp = register.drive(name, name, points)

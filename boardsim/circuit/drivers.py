@@ -2,15 +2,48 @@
 
 from __future__ import annotations
 
+import itertools
 from typing import TYPE_CHECKING
 
 from boardsim.board.matrix import Line
-from boardsim.board.reader import Channel
+from boardsim.board.reader import Board, Channel
+from boardsim.errors import InputError
+from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Corner, Stamp
 from boardsim.parts.elements import GROUND
+from boardsim.quantities import in_units
 
 if TYPE_CHECKING:
     from boardsim.circuit.assemble import Assembly
+
+
+def refuse_too_short(board: Board, firing: Firing) -> None:
+    """Refuse pulses and pauses that are too short for what models of switches are made for.
+
+    Raises
+    ------
+    InputError
+        With the shortest of all.
+    """
+    found = [
+        (again - t, t, driver)
+        for driver in board.drivers
+        if driver.switch.steady_for() > 0
+        for (t, was), (again, level) in itertools.pairwise(_changes(firing.levels[driver.output]))
+        if was != level and again - t < driver.switch.steady_for()
+    ]
+    if found:
+        gap, t, driver = min(found, key=lambda f: f[0])
+        raise InputError(
+            f"{driver.label}: its output changes at {in_units(t, 's', 4)} and changes back {in_units(gap, 's')} later; the model of its "
+            f"{driver.switch.kind} holds for pulses and pauses of {in_units(driver.switch.steady_for(), 's')} or more, seven times "
+            "the gate driver's delay and dead time; lengthen the pulse or pause, or take a driver with less delay and dead time"
+        )
+
+
+def _changes(levels: tuple[tuple[float, bool], ...]) -> tuple[tuple[float, bool], ...]:
+    """Only the edges: what an output is at first has been so for long."""
+    return tuple(now for before, now in itertools.pairwise(levels) if before[1] != now[1])
 
 
 def add_driver(parts: Assembly, corner: Corner, driver: Channel | Line, load: str, end: str, rail: str) -> None:

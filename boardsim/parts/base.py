@@ -53,6 +53,14 @@ class Part(Record):
         """What the corners vary in this part, by the keys of `Corner.ends`."""
         return {}
 
+    def tolerances_too(self) -> tuple[tuple[str, Quantity], ...]:
+        """Further numbers that the same ends vary, such as those of a stage's second transistor."""
+        return ()
+
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """Numbers whose worse end counts in every corner, or that lie within one that `tolerances` holds."""
+        return ()
+
     def implied(self) -> dict[str, Quantity]:
         """Numbers by the names of fields that follow from others, or are assumed where the field was not given."""
         return {}
@@ -139,6 +147,10 @@ class Part(Record):
         """Highest current that a switch draws from an output that stays at `volts` behind `resistance`. [V], [ohm] -> [A]"""
         return 0.0
 
+    def input_threshold(self) -> Quantity | None:
+        """Of a switch with a logic input of its own, between which voltages that switches; None of any other. [V]"""
+        return None
+
     def edge_input(self, volts: float, resistance: float) -> tuple[float, float]:
         """Charge that a switch takes from an output that rises to `volts` behind `resistance`, and the current at first.
 
@@ -146,6 +158,22 @@ class Part(Record):
         """
         current = self.steady_input(volts, resistance)
         return math.inf if current > 0 else 0.0, current
+
+    def delays(self) -> tuple[float, float]:
+        """By how much a switch turns on and off later than an edge at its input by design, at most; what its gate takes besides
+        is left out. [s]
+        """
+        return 0.0, 0.0
+
+    def steady_for(self) -> float:
+        """How long a level at a switch's input has to last at least for its model to hold. [s]"""
+        return 0.0
+
+    def moments(self) -> tuple[float, ...]:
+        """When, after an edge at a switch's input, a run makes a step whatever its estimate of the error: where the switch
+        itself makes an edge that comes late and is short against how long it took to come. [s]
+        """
+        return ()
 
     @classmethod
     def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[Self, ...]:

@@ -11,6 +11,7 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
 from boardsim.parts.elements import GROUND, Element, Probe, Resistor, VoltageLaw, scaled, voltage
 from boardsim.parts.gate_driver import GateDriver
+from boardsim.parts.gate_spread import RESISTANCES, charge_spread, paced, resistance_spread, times_in
 from boardsim.parts.mosfet import Mosfet, NMosfet
 from boardsim.parts.mosfet_stamp import Place, mosfet_stamp
 from boardsim.parts.p_mosfet import PMosfet
@@ -19,6 +20,7 @@ from boardsim.quantities import RESISTANCE, Quantity
 
 _TOO_HIGH = "a driver with a lower supply, or a gate rating that stands it"
 _TOO_LOW = "a driver with a higher supply, or a transistor that is specified at this gate voltage"
+_STOPS = 24  # while a gate follows the driver
 
 
 class Leg(Part):
@@ -56,20 +58,76 @@ class Leg(Part):
         return found
 
     def tolerances(self) -> dict[str, Quantity]:
-        """What the corners vary: breakdown, on-resistance and threshold of the high transistor, and of the low one alike."""
-        return {"breakdown": self.high.breakdown, "on_resistance": self.high.spread, "threshold": self.high.threshold}
+        """What the corners vary: breakdown, on-resistance and threshold, the driver's supply, and how quickly gates follow it."""
+        return {
+            "breakdown": self.high.breakdown,
+            "on_resistance": self.high.spread,
+            "threshold": self.high.threshold,
+            "gate_supply": self.driver.supply,
+            "charge_high": charge_spread(self.high),
+            "charge_low": charge_spread(self.low),
+            RESISTANCES: self._resistance_spread(),
+        }
+
+    def tolerances_too(self) -> tuple[tuple[str, Quantity], ...]:
+        """The low transistor's, as the high one's."""
+        low: Mosfet = self.low
+        return ("breakdown", low.breakdown), ("on_resistance", low.spread), ("threshold", low.threshold)
+
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """The least dead time, the longest delay and either end of the threshold count; charges, resistances and on-resistances lie within what is varied."""
+        found = [
+            self.driver.dead_time,
+            self.driver.delay,
+            self.driver.threshold,
+            self.driver.output_resistance,
+            self.gate,
+        ]
+        for part in (self.high, self.low):
+            found += [part.gate_drain_charge, part.gate_resistance, *(p.value for p in part.on_resistance)]
+            found += [part.gate_charge] if part.gate_charge is not None else []
+        return tuple(found)
+
+    def _resistance_spread(self) -> Quantity:
+        ways = ((self.driver.output_resistance, self.gate, part.gate_resistance) for part in (self.high, self.low))
+        return resistance_spread(*ways)
 
     def steady_input(self, volts: float, resistance: float) -> float:
         """Through the driver's pull-down. [V], [ohm] -> [A]"""
         return 0.0 if self.driver.pulldown is None else volts / (resistance + self.driver.pulldown.min)
 
+    def input_threshold(self) -> Quantity | None:
+        """The driver's."""
+        return self.driver.threshold
+
     def held_off(self) -> bool:
         """Whether the driver's input has a pull-down."""
         return self.driver.pulldown is not None
 
-    def follows_within(self) -> float:
-        """Four times delay and dead time. [s]"""
-        return 4 * (self.driver.delay.typ + self.driver.dead_time.max)
+    def delays(self) -> tuple[float, float]:
+        """The driver's delay, with the dead time before turning on. [s]"""
+        return self.driver.delay.max + self.driver.dead_time.max, self.driver.delay.max
+
+    def steady_for(self) -> float:
+        """Seven times delay and dead time, see `GateDriver`. [s]"""
+        return 7 * (self.driver.delay.typ + self.driver.dead_time.min)
+
+    def moments(self) -> tuple[float, ...]:
+        """Over both of the driver's edges, and from each on until the gates have followed: five times (R_o + R + R_g) Q / V. [s]
+
+        What charges a gate to the driver's supply V is taken as C_iss V + Q_gd.
+        """
+        first = self.driver.delay.typ
+        edge, both = self.driver.edge.typ, first + self.driver.dead_time.min
+        last = max(self._settles(part) for part in (self.high, self.low))
+        # The lags start where the register's edge crosses the threshold, somewhat before its end.
+        after = (*(0.25 * edge * k for k in range(-8, 5)), *(last * k / _STOPS for k in range(1, _STOPS + 1)))
+        return tuple(start + step for start in dict.fromkeys((first, both)) for step in after if start + step > 0)
+
+    def _settles(self, part: Mosfet) -> float:
+        """Five times what the driver takes for a gate's charge. [s]"""
+        ohms = self.driver.output_resistance.max + self.gate.max + part.gate_resistance.max
+        return 5 * ohms * (part.input_capacitance.max + part.gate_drain_charge.max / self.driver.supply.min)
 
     def control(self, name: str) -> str:
         """The high transistor's gate."""
@@ -77,15 +135,20 @@ class Leg(Part):
 
     def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
         """The leg between rail and ground, driven from `pin`, with its middle at the coil's node `load`."""
-        driver, up, down = self.driver.elements(name, pin, rail)
+        driver, up, down = self.driver.elements(name, pin, rail, corner)
         sources = {"h": rail if self.high.mirrored else load, "l": GROUND}
         elements: list[Element] = [*driver]
         stamps: dict[str, Stamp] = {}
         for end, part, law, who in (("h", self.high, up, "high transistor"), ("l", self.low, down, "low transistor")):
             sign, gate, out = (-1.0 if part.mirrored else 1.0), f"{name}_g{end}", f"{name}_o{end}"
             ohms = self.driver.output_resistance.typ + self.gate.typ + part.gate_resistance.typ
-            law = law if sign > 0 else f"-({law})"
-            elements += [VoltageLaw(out, out, sources[end], law), Resistor(f"{name}_r{end}", out, gate, ohms)]
+            slow, quick = times_in(corner, end, charge_spread(part), self._resistance_spread())
+            wanted, held = f"V({name}_w{end})", f"{sign!r}*(V({gate})-V({sources[end]}))"
+            elements += [
+                VoltageLaw(f"{name}_w{end}", f"{name}_w{end}", GROUND, law),
+                VoltageLaw(out, out, sources[end], f"{sign!r}*({paced(wanted, held, slow, quick)})"),
+            ]
+            elements += [Resistor(f"{name}_r{end}", out, gate, ohms)]
             into = scaled(sign / ohms, voltage(out, gate))
             drain = load if part.mirrored or end == "l" else rail
             place = Place(drain, gate, sources[end], who, "" if end == "h" else "_low", _TOO_HIGH, _TOO_LOW)
@@ -104,6 +167,7 @@ class Leg(Part):
         numbers = listed(
             "gate driver",
             delay=self.driver.delay,
+            edge=self.driver.edge,
             output_resistance=self.driver.output_resistance,
             input_threshold=self.driver.threshold,
         )

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -36,10 +36,13 @@ class Leg:
     neither: Dips = field(default_factory=lambda: Dips(0.0))
     peak: float = 0.0
     charge: float = 0.0
+    most: list[float] = field(default_factory=lambda: [-math.inf, -math.inf])
+    """How far each gate came beyond what turns its transistor on. [V]"""
 
     def feed(self, t: Floats, gates: Floats, currents: Floats) -> None:
         """Times (m,) [s], gate voltages (2, m) [V] and currents of the transistors (2, m). [A]"""
         beyond = gates - np.array(self.turn_on)[:, None]
+        self.most = [max(*pair) for pair in zip(self.most, beyond.max(axis=1).tolist(), strict=True)]
         self.both.feed(t, -beyond.min(axis=0))
         self.neither.feed(t, beyond.max(axis=0))
         through = np.where(beyond.min(axis=0) > 0, np.maximum(currents.min(axis=0), 0.0), 0.0)
@@ -47,8 +50,12 @@ class Leg:
         self.charge += float(np.trapezoid(through, t))
 
 
-def judge_leg(rule: ShootThroughRule, placed: PlacedRule, leg: Leg, bench: Bench) -> Finding | None:
+def judge_leg(
+    rule: ShootThroughRule, placed: PlacedRule, leg: Leg, bench: Bench, *, fired: bool = True
+) -> Finding | None:
     """The least time that was left between one gate's turn-off and the other's turn-on; negative where they overlap.
+
+    Not judged where it was `fired` and yet one of its gates never turned on; None where it never was.
 
     Notes
     -----
@@ -63,16 +70,27 @@ def judge_leg(rule: ShootThroughRule, placed: PlacedRule, leg: Leg, bench: Bench
         needed = rule.dead_time + _MORE * longest.lasting
         longer = f"a dead time of at least {in_units(needed, 's')}, or faster gates"
         coupled = any(0 <= longest.start - (d.start + d.lasting) <= rule.dead_time for d in neither)
+        often, each = (f", {len(both)} times", " each time on average") if len(both) > 1 else (", once", "")
         said = (
             f"{placed.label}: both transistors of its leg conduct at once for {in_units(longest.lasting, 's')}"
-            f"{when(longest.start)}, {len(both)} times: up to {in_units(leg.peak, 'A')} flow from the rail to ground, "
-            f"{in_units(leg.charge / len(both), 'C')} each time on average; the driver's dead time is "
+            f"{when(longest.start)}{often}: up to {in_units(leg.peak, 'A')} flow from the rail to ground, "
+            f"{in_units(leg.charge / len(both), 'C')}{each}; the driver's dead time is "
             f"{in_units(rule.dead_time, 's')}; try: {_COUPLED if coupled else longer}"
         )
         margin = -longest.lasting / max(rule.dead_time, longest.lasting)
         return bench.finding(placed, limit, what, -longest.lasting, margin, longest.start, said, "destroy", worse="low")
-    if not neither:
+    if not fired:
         return None
+    if not neither or min(leg.most) <= 0:
+        never = " and ".join(who for who, most in zip(("high", "low"), leg.most, strict=True) if most <= 0)
+        said = f"{placed.label}: whether both transistors of its leg conduct at once was not judged: "
+        said += (
+            f"the gate of its {never} transistor never turned that on, though it is fired; try: mend what else is found of its drive"
+            if never
+            else "its gates never passed their thresholds one after the other"
+        )
+        unknown = replace(limit, value=None, source="")
+        return bench.finding(placed, unknown, what, 0.0, None, None, said, "destroy", worse="low")
     least = min(neither, key=lambda d: d.lasting)
     left = f"{in_units(least.lasting, 's')} of its dead time of {in_units(rule.dead_time, 's')}"
     said = f"{placed.label}: between the transistors of its leg at least {left} are left{when(least.start)}"

@@ -31,6 +31,7 @@ from boardsim.parts.rules import (
     TogetherRule,
 )
 from boardsim.quantities import in_units
+from boardsim.verdict.audit import SMALL
 from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.bridges import judge_leg
@@ -67,6 +68,10 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
         for finding in _apply(placed, readings, firing, deck, bench):
             size = scale if finding.unit == "A" else 0.0
             size = hottest if finding.unit == "W" and finding.limit is None else size
+            if isinstance(placed.rule, ShootThroughRule):
+                # The difference of two edges that come a dead time apart; of a gate that only just touches its threshold the
+                # time above it is ill-conditioned, and a hundredth of the dead time is a tenth of the guard band.
+                size = placed.rule.dead_time / SMALL
             found.append(
                 replace(
                     finding,
@@ -118,6 +123,10 @@ def _beside_the_point(name: str, placed: PlacedRule) -> bool:
             return not isinstance(rule, HeatRule | PullInRule)
         case "threshold":
             return not isinstance(rule, IdleRule)
+        case "gate driver's supply":
+            return not isinstance(rule, ShootThroughRule | FloorRule | PeakRule | HeatRule)
+        case "gate charge of the high transistor" | "gate charge of the low transistor" | "gate resistances":
+            return not isinstance(rule, ShootThroughRule | HeatRule)
         case "bulk capacitance" | "bulk series resistance":
             return placed.channel is not None and not isinstance(rule, PullInRule)
         case _:
@@ -171,7 +180,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
         case FallRule() as rule:
             yield judge_fall(rule, placed, readings, firing, bench)
         case ShootThroughRule() as rule:
-            if (leg := judge_leg(rule, placed, readings.legs[_channel(placed)], bench)) is not None:
+            place = _channel(placed)
+            fired = bool(len(firing.spans(place)))
+            if (leg := judge_leg(rule, placed, readings.legs[place], bench, fired=fired)) is not None:
                 yield leg
         case CeilingRule() as rule:
             yield judge_ceiling(rule, placed, readings, firing, bench)

@@ -16,6 +16,7 @@ from boardsim.verdict.bridges import judge_directions
 from boardsim.verdict.chain import judge_chain
 from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.chain_loads import judge_loads
+from boardsim.verdict.driver_levels import judge_driver_levels
 from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
 from boardsim.verdict.logic_supply import judge_supply
 
@@ -37,6 +38,7 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
         label = f"channels {write_range(members)}"
         found.append(_at_once(board, firing, members, most, "exclusive channels on at once", label, reason))
     found += judge_directions(board, firing)
+    found += judge_driver_levels(board)
     loads = where_limits_hold(board, judge_loads(board, firing))
     return [*found, *loads, *judge_chain(board), *judge_supply(board, firing)]
 
@@ -96,13 +98,19 @@ def _swallowed(board: Board, firing: Firing) -> Iterator[Finding]:
 def _moved(board: Board, firing: Firing) -> list[Finding]:
     """The pulse that ticks, register frames and jitter distort most, as a share of its own width; and the latest of all.
 
-    An output turns on and off at the times of `firing` or up to the jitter later, each edge by itself.
+    An output turns on and off at the times of `firing` or up to the jitter later, each edge by itself. What a switch takes by
+    design, such as a gate driver's delay and dead time, comes on top.
     """
     seen = [m for m in firing.moved if not m.swallowed]
     if not seen:
         return []
-    late = {m: max(m.start - m.pulse.start + firing.jitter, m.pulse.start - m.start) for m in seen}
-    changed = {m: abs(m.stop - m.start - m.pulse.width) + firing.jitter for m in seen}
+    own = {c: _delays(board.channel(c)) for c in dict.fromkeys(m.pulse.channel for m in seen)}
+    late, changed = {}, {}
+    for m in seen:
+        on, off = own[m.pulse.channel]
+        late[m] = max(m.start - m.pulse.start + firing.jitter + on, m.pulse.start - m.start)
+        wider = m.stop - m.start - m.pulse.width
+        changed[m] = max(abs(wider), abs(wider + off - on)) + firing.jitter
     found = [
         _distorted(board, late, "lateness of a pulse", _LATE),
         _distorted(board, changed, "change of a pulse's width", "changes its width by"),
@@ -121,6 +129,12 @@ def _moved(board: Board, firing: Firing) -> list[Finding]:
             )
         )
     return found
+
+
+def _delays(channel: Channel) -> tuple[float, float]:
+    """What a channel's switches take to turn on and off by design, at most; of a matrix the slower of both. [s]"""
+    each = [driver.switch.delays() for driver in channel.drivers]
+    return max(on for on, _ in each), max(off for _, off in each)
 
 
 def _timing(

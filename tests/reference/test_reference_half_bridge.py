@@ -32,9 +32,9 @@ def run(engine: Engine, tmp_path: Path, delay: str, dead: str) -> Run:
     return run_board(engine, tmp_path, text, pattern_text(pulse("100 us", "2 ms")), Settings("gear", 1e-5, 50e-6))
 
 
-def crosses(found: Run, quantity: str, after: float, *, rises: bool) -> float:
-    """When a gate passes 1.5 V after an edge. [s]"""
-    y = found.signal(quantity, 0) - 1.5
+def crosses(found: Run, quantity: str, after: float, *, rises: bool, level: float = 1.5) -> float:
+    """When a gate passes a level after an edge. [V] -> [s]"""
+    y = found.signal(quantity, 0) - level
     k = np.flatnonzero((found.t[1:] > after) & ((y[:-1] < 0) == rises) & ((y[1:] >= 0) == rises))[0]
     return float(found.t[k] - y[k] * (found.t[k + 1] - found.t[k]) / (y[k + 1] - y[k])) - after
 
@@ -48,6 +48,20 @@ def test_each_edge_comes_after_its_delay_and_the_dead_time(engine: Engine, tmp_p
     assert crosses(found, "v_gs", on, rises=True) == pytest.approx(5e-6, rel=0.05)
     assert crosses(found, "v_gs", off, rises=False) == pytest.approx(2e-6, rel=0.05)
     assert crosses(found, "v_gs_low", off, rises=True) == pytest.approx(5e-6, rel=0.05)
+
+
+def test_an_edge_lasts_as_long_after_a_long_dead_time_as_after_a_short_one(engine: Engine, tmp_path: Path) -> None:
+    """The driver's 10 ns, and what 300 pF and the charge of the drain take at 1 + 2 ohm: 12 nC / 12 V at 3 ohm, 7 ns from 10 to 90 %."""
+    lasting = []
+    for n, dead in enumerate(("200 ns", "5 us")):
+        (tmp_path / str(n)).mkdir()
+        found = run(engine, tmp_path / str(n), "100 ns", dead)
+        on, _ = found.on()
+        begins, ends = (crosses(found, "v_gs", on, rises=True, level=share * 12) for share in (0.1, 0.9))
+        lasting.append(ends - begins)
+        assert begins == pytest.approx(100e-9 + float(dead[:-3]) * {"ns": 1e-9, "us": 1e-6}[dead[-2:]], rel=0.05)
+    assert lasting[1] == pytest.approx(lasting[0], rel=0.05)
+    assert 10e-9 < lasting[0] < 17e-9  # the two stages one after the other: between the slower one and their sum
 
 
 def test_the_coil_freewheels_through_the_low_transistor(engine: Engine, tmp_path: Path) -> None:
