@@ -144,6 +144,12 @@ class PowerRegister(Register):
         if self.leakage:
             reverse_current(self.leakages(), T_MODEL)
         refuse_drift("clamp_drift", self.drift_of_clamp.typ, self.clamp_voltage.typ)
+        top = self.junction_rating
+        if top is not None and self.avalanche_energy is not None and top.min <= self.avalanche_from.max:
+            raise QuantityError(
+                f"junction_rating of {celsius(top.min)} is not above avalanche_from, {celsius(self.avalanche_from.max)}: a junction that "
+                "begins at its rating stands no clamp energy at all; datasheets rate it from 25 degC, and print 150 degC for the junction"
+            )
         self.gate  # noqa: B018  # says what is wrong with the times
         return self
 

@@ -6,6 +6,7 @@ import math
 from pathlib import Path
 
 import pytest
+from pydantic import ValidationError
 
 from boardsim.board.reader import Board, library_part, read_board
 from boardsim.errors import InputError
@@ -47,6 +48,16 @@ def test_limits_are_those_of_the_data_sheet() -> None:
     assert part.pulse_current is not None
     assert (part.output_current.typ, part.pulse_current.typ) == pytest.approx((0.15, 0.5))
     assert (1 + part.growth.typ) ** 100 == pytest.approx(1.62, rel=1e-3)
+
+
+def test_a_clamp_energy_that_is_rated_from_beyond_the_highest_junction_is_refused() -> None:
+    """Nothing is left between the two to derate over: the whole energy would be allowed at any temperature."""
+    part = register()
+    known = {k: getattr(part, k) for k in part.model_fields_set}
+    for start in ("150 degC", "160 degC"):
+        with pytest.raises(ValidationError, match=r"150 degC is not above avalanche_from"):
+            PowerRegister.model_validate({**known, "junction_rating": "150 degC", "avalanche_from": start})
+    PowerRegister.model_validate({**known, "junction_rating": "150 degC", "avalanche_from": "100 degC"})
 
 
 def test_resistance_is_a_straight_line_through_the_printed_points() -> None:

@@ -97,7 +97,7 @@ class PowerOutputStage(Part):
         """
         part: PowerRegister = self.part
         single, top, rated = part.avalanche_energy, part.junction_rating, part.avalanche_from.typ
-        if single is None or top is None or top.min <= rated:
+        if single is None or top is None:
             return None
         return single.typ * min(max((top.min - _warm(corner)) / (top.min - rated), 0.0), 1.0)
 
