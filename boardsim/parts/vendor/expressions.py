@@ -118,8 +118,11 @@ def _number(text: str, at: int, place: Place) -> tuple[float, int]:
     tail = re.compile(r"[a-z_0-9.]*").match(text, end)
     letters = tail[0] if tail else ""
     scaled = _LETTERS.fullmatch(letters)
-    if not scaled or letters == "a":
-        hint = "; 'a' is atto to ngspice and the unit to others, leave it out" if letters == "a" else ""
+    if not scaled or (not scaled[1] and letters[:1] in ("a", "f")):
+        hint = {
+            "a": "; a unit that begins with a is atto to some programs and the unit to others, leave it out",
+            "f": "; a unit that begins with f is femto to SPICE and the unit to people, leave it out",
+        }.get(letters[:1] if scaled else "", "")
         raise place.refuse(
             f"{shortened(found[0] + letters)!r} is not a number that every program reads alike; allowed after the digits: t, g, meg, "
             f"k, m, u, n, p, f and a unit{hint}"
