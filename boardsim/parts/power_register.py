@@ -110,6 +110,12 @@ class PowerRegister(Register):
     avalanche_package: Annotated[Quantity, ENERGY] | None = Field(
         None, description="into the clamps of all outputs of one package together, at one time"
     )
+    chip_cools_in: Annotated[Quantity, POSITIVE_TIME] = assume(
+        "60 ms",
+        POSITIVE_TIME,
+        "in which the heat of a clamp leaves the chip: 6 mJ/K of 3 by 3 by 0.4 mm of silicon times 10 K/W into the frame of the "
+        "package, 60 ms, from memory; clamp energies within it add up",
+    )
     leakage: tuple[LeakagePoint, ...] = Field(
         (), description="off-state drain current near the clamp voltage, at one or two temperatures"
     )
@@ -283,6 +289,7 @@ class PowerRegister(Register):
             output_capacitance=self.output_capacitance,
             capacitance_of_its_gate=self.gate_capacitance,
             pulse_that_its_current_is_rated_for=self.pulse_lasting,
+            time_in_which_its_chip_cools=self.chip_cools_in,
             turn_on_delay=s.turn_on,
             turn_off_delay=s.turn_off,
             falling_edge=s.fall,

@@ -151,7 +151,7 @@ class PowerOutputStage(Part):
         )
 
     def _totals(self, corner: Corner, meter: Ammeter, derated: float | None) -> tuple[Total, ...]:
-        """What the outputs of one package add up to: current, heat, and what their clamps take at one time.
+        """What the outputs of one package add up to: current, heat, and what their clamps take before their chip has cooled.
 
         Notes
         -----
@@ -196,7 +196,15 @@ class PowerOutputStage(Part):
                     growth=part.growth.typ,
                 )
             ),
-            Total(TogetherRule("overvoltage", whole, one, f"clamp each coil outside the package, or {advice}")),
+            Total(
+                TogetherRule(
+                    "overvoltage",
+                    whole,
+                    one,
+                    f"clamp each coil outside the package, or {advice}",
+                    within=part.chip_cools_in.typ,
+                )
+            ),
         )
 
 
