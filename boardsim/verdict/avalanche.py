@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
+from bisect import bisect_right
 from collections.abc import Iterator
 from dataclasses import replace
-from itertools import islice, takewhile
 
 from boardsim.circuit.deck import PlacedRule
 from boardsim.parts.rules import BreakdownRule, TogetherRule
@@ -182,10 +182,10 @@ def _stretches(rule: TogetherRule, readings: Readings) -> list[_Group]:
 
 def _shared(groups: list[_Group], within: float) -> list[_Group]:
     """From each stretch on what begins within a time, added up, where several switches have a part in it."""
+    begins = [g[0] for g in groups]
     sums: list[_Group] = []
-    for first in range(len(groups)):
-        at = groups[first][0]
-        window = [g for g in takewhile(lambda g, end=at + within: g[0] <= end, islice(groups, first, None))]
+    for first, at in enumerate(begins):
+        window = groups[first : bisect_right(begins, at + within)]
         members = frozenset[int]().union(*(g[3] for g in window))
         sums.append((at, max(g[1] for g in window), sum(g[2] for g in window), members))
     return [one for one in sums if len(one[3]) > 1]
