@@ -97,6 +97,10 @@ class PowerRegister(Register):
     total_current: Annotated[Quantity, CURRENT] | None = Field(
         None, description="of all outputs of one package together, continuous"
     )
+    total_pulse_current: Annotated[Quantity, CURRENT] | None = Field(
+        None,
+        description="of all outputs of one package together, in a pulse of pulse_lasting; total_current if not given",
+    )
     avalanche_current: Annotated[Quantity, CURRENT] | None = Field(None, description="into the clamp of one output")
     avalanche_energy: Annotated[Quantity, ENERGY] | None = Field(
         None, description="of a single pulse into the clamp of one output, the others idle"
@@ -111,10 +115,10 @@ class PowerRegister(Register):
         None, description="into the clamps of all outputs of one package together, at one time"
     )
     chip_cools_in: Annotated[Quantity, POSITIVE_TIME] = assume(
-        "60 ms",
+        "50 ms",
         POSITIVE_TIME,
-        "in which the heat of a clamp leaves the chip: 6 mJ/K of 3 by 3 by 0.4 mm of silicon times 10 K/W into the frame of the "
-        "package, 60 ms, from memory; clamp energies within it add up",
+        "in which the heat of a clamp leaves the chip: 5 mJ/K of 3 by 2.5 by 0.4 mm of silicon times 10 K/W into the frame of the "
+        "package, from memory; clamp energies within it add up",
     )
     leakage: tuple[LeakagePoint, ...] = Field(
         (), description="off-state drain current near the clamp voltage, at one or two temperatures"

@@ -158,6 +158,10 @@ def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: 
     )
 
 
+SumRule = PeakRule | PulseRule | MeanRule
+"""What can judge one quantity of the whole of a package."""
+
+
 @dataclass(frozen=True)
 class EnergyRule:
     """The energy of every single pulse of a power (the product of two quantities) must stay below a limit. [J]"""
