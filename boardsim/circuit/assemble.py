@@ -16,7 +16,7 @@ from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.drivers import add_driver, refuse_too_short
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
 from boardsim.circuit.matrix import add_crossing, add_line
-from boardsim.circuit.packages import of_package
+from boardsim.circuit.packages import of_package, of_sum
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
 from boardsim.firing.registers import ChainState, send
@@ -24,7 +24,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
 from boardsim.parts.clocked import Contents, Nets, comparator, flip_flops, output_pin
 from boardsim.parts.elements import GROUND, Drive, Element, Port, Signal, VoltageLaw, plus
-from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule, TogetherRule
+from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule, SumRule, TogetherRule
 from boardsim.quantities import Quantity
 
 RAIL = "rail"
@@ -119,7 +119,7 @@ class Assembly:
         self.assumptions: dict[Assumption, None] = {}
         self.assumed: dict[int | None, dict[str, None]] = {}
         self.rest: dict[str, float] = {}
-        self.totals: dict[tuple[str, str, PeakRule, str], list[tuple[int, Signal]]] = {}
+        self.totals: dict[tuple[str, str, SumRule, str], list[tuple[int, Signal]]] = {}
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
         self.commons: dict[str, str] = {}
         self.together: dict[tuple[str, str, TogetherRule], list[int]] = {}
@@ -165,10 +165,10 @@ class Assembly:
     def add_totals(self) -> None:
         """The sums over each package, and their rules."""
         for (package, part, rule, unit), shares in self.totals.items():
-            quantity = f"{rule.quantity}, {package}"
+            quantity, whole_sum = of_sum(rule, package)
             self.signals[None, quantity] = plus(*(signal for _, signal in shares))
             self.units[None, quantity] = unit
-            self.rules.append(PlacedRule(replace(rule, quantity=quantity), None, part, package))
+            self.rules.append(PlacedRule(whole_sum, None, part, package))
         for (package, part), heated in self.heats.items():
             # A package heats by its switches and by what else of it is used, such as its clamp diodes.
             powers = tuple(dict.fromkeys(pair for _, rule in heated for pair in rule.powers))

@@ -19,7 +19,7 @@ from pydantic_core import InitErrorDetails, PydanticCustomError
 from boardsim.parts.elements import Element, Port, Probe, Signal
 from boardsim.parts.proof import Proof
 from boardsim.parts.record import Name, Record, named_like, said, shown
-from boardsim.parts.rules import HeatRule, PeakRule, Rule, TogetherRule, linear_unknown
+from boardsim.parts.rules import HeatRule, Rule, SumRule, TogetherRule, linear_unknown
 from boardsim.quantities import Bound, Quantity
 
 if TYPE_CHECKING:
@@ -271,14 +271,14 @@ class Total:
 
     Attributes
     ----------
-    rule : PeakRule, HeatRule or TogetherRule
+    rule : PeakRule, PulseRule, MeanRule, HeatRule or TogetherRule
         Its quantity is that of the sum.
     signal : Signal
         This channel's share of the sum; empty where the rule sums powers or energies by itself.
     unit : str
     """
 
-    rule: PeakRule | HeatRule | TogetherRule
+    rule: SumRule | HeatRule | TogetherRule
     signal: Signal = ()
     unit: str = ""
 

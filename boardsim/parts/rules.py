@@ -158,6 +158,10 @@ def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: 
     )
 
 
+SumRule = PeakRule | PulseRule | MeanRule
+"""What can judge one quantity of the whole of a package."""
+
+
 @dataclass(frozen=True)
 class EnergyRule:
     """The energy of every single pulse of a power (the product of two quantities) must stay below a limit. [J]"""
@@ -193,8 +197,9 @@ class BreakdownRule:
 
 @dataclass(frozen=True)
 class TogetherRule:
-    """What the switches of one package take in avalanche at one time must stay below a limit. [J]
+    """What the switches of one package take in avalanche within a time must stay below a limit. [J]
 
+    `within` is that time: so long the heat of one stays in the chip that they share [s]. Stretches that overlap count in any case.
     `limit` is the rating of the package. Where it was not given, a sum that `one` of its switches stands is allowed as well, and
     nothing is known of more. `channels` are those that share the package, `voltage` the quantity whose avalanche is meant.
     """
@@ -205,6 +210,7 @@ class TogetherRule:
     advice: str
     channels: tuple[int, ...] = ()
     voltage: str = "v_ds"
+    within: float = 0.0
 
 
 @dataclass(frozen=True)

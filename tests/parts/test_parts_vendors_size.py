@@ -11,6 +11,7 @@ from pathlib import Path
 
 import pytest
 
+from boardsim.parts.elements import Resistor
 from boardsim.parts.vendor.cards import read_library
 from boardsim.parts.vendor.flatten import Flat, flatten
 from boardsim.parts.vendor.text import ModelTextError, read_statements
@@ -51,7 +52,17 @@ CASES: dict[str, tuple[str, str]] = {
     "deep brackets": (part(f"r1 a b {{{'(' * 1500}1{')' * 1500}}}"), "nests more than 30 levels deep"),
     "deep signs": (part(f"r1 a b {{{'-' * 1500}1}}"), "nests more than 30 levels deep"),
     "deep choices": (part(f"r1 a b {{{'1>0?' * 500}1{':1' * 500}}}"), "nests more than 30 levels deep"),
-    "a long chain of sums": (part(f"b1 a b i={{{'+'.join(['v(a)'] * 700)}}}"), "grows without bound"),
+    "a long chain of sums": (part(f"b1 a b i={{{'+'.join(['v(a)'] * 700)}}}"), "a law of more than 120 levels"),
+    "parameters that wait for each other within brackets": (
+        ".param p48=1\n"
+        + "".join(f".param p{i}={{{'(' * 13}p{i + 1}{')' * 13}}}\n" for i in range(48))
+        + part("r1 a b {p0}"),
+        "counted through the functions and parameters",
+    ),
+    "parameters that wait for each other within signs": (
+        ".param p48=1\n" + "".join(f".param p{i}={{{'-' * 28}p{i + 1}}}\n" for i in range(48)) + part("r1 a b {p0}"),
+        "counted through the functions and parameters",
+    ),
     "parameters that square": (
         ".param p0=10\n" + "".join(f".param p{i}={{p{i - 1}*p{i - 1}}}\n" for i in range(1, 40)) + part("r1 a b {p39}"),
         "not finite",
@@ -85,7 +96,7 @@ CASES: dict[str, tuple[str, str]] = {
     "parameters in a circle": (".param a={b}\n.param b={a}\n" + part("r1 a b {a}"), "hangs on itself"),
     "functions in a circle": (
         ".func f(x) {g(x)}\n.func g(x) {f(x)}\n" + part("r1 a b {f(1)}"),
-        "grows without bound",
+        "counted through the functions and parameters",
     ),
     "a huge number": (part("r1 a b 1e999"), "larger than any number"),
     "a number of many digits": (part(f"r1 a b {'9' * 4000}"), "larger than any number"),
@@ -109,6 +120,15 @@ CASES: dict[str, tuple[str, str]] = {
         "words after its name",
     ),
 }  # fmt: skip
+
+
+def test_a_sum_of_many_numbers_is_worked_out_and_nests_in_nothing(tmp_path: Path) -> None:
+    """Terms in a row are no brackets: 1,500 of them are a number, and so are 40 parameters that each wait for the next."""
+    found = understood(tmp_path, part(f"r1 a b {{{'+'.join(['1'] * 1500)}}}"))
+    assert [e.ohms for e in found.elements if isinstance(e, Resistor)] == [1500.0]
+    waiting = ".param p40=1\n" + "".join(f".param p{i}={{p{i + 1}+1-0.5*1}}\n" for i in range(40))
+    found = understood(tmp_path, waiting + part("r1 a b {p0}"))
+    assert [e.ohms for e in found.elements if isinstance(e, Resistor)] == [21.0]
 
 
 @pytest.mark.parametrize("what", CASES)

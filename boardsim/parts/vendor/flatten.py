@@ -361,6 +361,8 @@ class _Instance:
         size = {"l": SIDE, "w": SIDE, **dict(found.size), **{k: self.number(t) for k, t in given.items()}}
         if size["l"] <= 0 or size["w"] <= 0:
             raise self.place.refuse("length and width have to be above nothing")
+        if below := [key.upper() for key, value in size.items() if value < 0]:
+            raise self.place.refuse(f"{', '.join(below)} below nothing; no part has less")
         self.put(Mosfet(name, ends[0], ends[1], ends[2], ends[3], found.model, tuple(size.items())))
 
     def source(self, text: str, name: str) -> None:
