@@ -137,7 +137,8 @@ def _check_element(s: Statement, inside: Subcircuit | None) -> None:
     letter = s.text[0]
     allowed = ", ".join(f"{k.upper()}" for k in ELEMENTS)
     if letter not in ELEMENTS or not _NAME.fullmatch(s.text.split(maxsplit=1)[0]):
-        why = f" ({_NOT[letter]})" if letter in _NOT else ""
+        # What has as many words as an element line is told why its kind is not taken; a command is not.
+        why = f" ({_NOT[letter]})" if letter in _NOT and len(s.text.split()) > 3 else ""
         raise s.place.refuse(
             f"{shortened(s.text)!r} is not allowed in a model{why}; element lines may begin with {allowed}"
         )

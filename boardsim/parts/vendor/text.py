@@ -85,7 +85,9 @@ class _Taken:
     statements: int = 0
 
 
-def _read(path: Path, folder: Path, around: tuple[Path, ...], taken: _Taken) -> Iterator[Statement]:
+def _read(
+    path: Path, folder: Path, around: tuple[Path, ...], taken: _Taken, named: Place | None = None
+) -> Iterator[Statement]:
     where = around[-1].name if around else path.name
     try:
         real = path.resolve()
@@ -97,12 +99,14 @@ def _read(path: Path, folder: Path, around: tuple[Path, ...], taken: _Taken) -> 
         ) from None
     name = plain_name(path.name)
     if not inside:
-        raise ModelTextError(
+        said = (
             f"{name} lies outside the folder {plain_name(folder.name)}; a model file and what it includes lie beside the file that "
             "names them, or below"
         )
+        raise ModelTextError(said) if named is None else named.refuse(f"includes a file beyond what is allowed: {said}")
     if not there:
-        raise ModelTextError(f"{name} is not there, or is no file; name an existing model file, relative to this one")
+        said = f"{name} is not there, or is no file; name an existing model file, relative to this one"
+        raise ModelTextError(said) if named is None else named.refuse(f"includes a file that cannot be read: {said}")
     if real in around:
         raise ModelTextError(f"{name} includes itself, by way of {plain_name(where)}")
     if len(around) >= _DEEPEST:
@@ -130,7 +134,7 @@ def _read(path: Path, folder: Path, around: tuple[Path, ...], taken: _Taken) -> 
         included = _INCLUDE.match(statement.text)
         if included:
             target = _target(included[2], statement.place)
-            yield from _read(real.parent / target, folder, (*around, real), taken)
+            yield from _read(real.parent / target, folder, (*around, real), taken, statement.place)
         else:
             yield Statement(statement.place, statement.text.lower())
 
