@@ -368,7 +368,7 @@ def _current_rule(most: Quantity) -> Rule:
 
 
 def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
-    """The readings that plain ngspice can print by itself: extremes of single vectors."""
+    """The readings that plain ngspice can print by itself: extremes of vectors, and of sums of them."""
     wanted = {
         "v_rail": ("MIN", "MAX"),
         "i_supply": ("MAX",),
@@ -380,9 +380,12 @@ def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
         wanted["v_logic"] = ("MIN",)
     lines = []
     for (channel, quantity), signal in signals.items():
-        if quantity in wanted and len(signal) == 1 and signal[0][0] == 1.0:
+        if quantity in wanted and signal:
+            # ngspice takes no sums but in par('...').
+            alone = len(signal) == 1 and signal[0][0] == 1.0
+            read = signal[0][1] if alone else f"par('{'+'.join(f'({share!r})*{name}' for share, name in signal)}')"
             prefix = (
                 "board" if channel is None else f"c{channel}" if channel < LINES_FROM else f"line{channel - LINES_FROM}"
             )
-            lines += [f".meas tran {prefix}_{quantity}_{how.lower()} {how} {signal[0][1]}" for how in wanted[quantity]]
+            lines += [f".meas tran {prefix}_{quantity}_{how.lower()} {how} {read}" for how in wanted[quantity]]
     return tuple(lines)

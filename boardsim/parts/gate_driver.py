@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import math
-from typing import Annotated
+from typing import Annotated, Any
 
 from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner
 from boardsim.parts.elements import GROUND, Capacitor, Element, Resistor, VoltageLaw
-from boardsim.parts.record import Record
+from boardsim.parts.record import Record, said, shown
 from boardsim.quantities import POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity, assume, in_units
 
 _OHMS = 1e3  # of the lags, whose product with their capacitance counts alone
@@ -55,6 +55,18 @@ class GateDriver(Record):
         "1.5 V", VOLTAGE, "between the levels of an input for 3.3 V and 5 V logic, from memory"
     )
     pulldown: Annotated[Quantity, POSITIVE_RESISTANCE] | None = Field(None, description="at its input")
+
+    @model_validator(mode="before")
+    @classmethod
+    def _is_a_table(cls, value: Any) -> Any:
+        if isinstance(value, str):
+            needed = 'driver = { supply = "12 V", dead_time = "500 ns" }'
+            more = ", ".join(name for name in cls.model_fields if name not in ("supply", "dead_time"))
+            raise said(
+                f"gate drivers have no records by name, and {shown(value)} is one; give its numbers in place, such as {needed}; "
+                f"it can also have: {more}"
+            )
+        return value
 
     @model_validator(mode="after")
     def _edge_within_delay(self) -> GateDriver:

@@ -19,6 +19,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import BreakdownRule
 from boardsim.verdict.cutting import RunningEnergy, between
 from boardsim.verdict.findings import Envelope, Finding, Floats
+from boardsim.verdict.leg_closeups import LegCut, leg_rule
 from boardsim.verdict.readings import Key, SignalTable, our_name
 from boardsim.verdict.stretch import Stretch, channels_in_question, count_on, stretch_of
 from boardsim.verdict.watch import HYSTERESIS, Slices
@@ -63,6 +64,8 @@ class Panel:
         The reading. [s], [unit]
     mean : float or None
         The reading, where it is a mean over the stretch. [unit]
+    levels : tuple of float
+        What each wave is seen against, where that is no limit. [unit]
     """
 
     title: str
@@ -71,6 +74,7 @@ class Panel:
     limit: float | None = None
     marked: tuple[float, float] | None = None
     mean: float | None = None
+    levels: tuple[float, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -141,7 +145,12 @@ def take_closeups(
     if waves is None:
         deck = None
     wanted = [f for f in findings if wants_closeup(f)]
-    cuts = [_Cut(f, stretch_of(f, board, firing), _causes(f, board, deck), _breakdown(f, deck)) for f in wanted]
+    cuts: list[_Cut | _LegCut] = [
+        _Cut(f, stretch_of(f, board, firing), _causes(f, board, deck), _breakdown(f, deck))
+        if (leg := leg_rule(f, deck)) is None
+        else _LegCut(f, leg, firing, SLICES)
+        for f in wanted
+    ]
     if waves is not None and deck is not None:
         _feed(cuts, waves, deck)
     asked = _commanded(firing)
@@ -218,6 +227,20 @@ class _Cut:
         return Envelope(label, unit, self.slices.edges, self.slices.low[row], self.slices.high[row])
 
 
+class _LegCut(LegCut):
+    """A leg's, with its panels."""
+
+    def panels(self, deck: Deck) -> tuple[Panel, ...]:
+        found = self.waves()
+        if found is None:
+            return ()
+        gates, through = found
+        return (
+            Panel("Gate voltages", "V", gates, levels=self.rule.turn_on),
+            Panel(_title([through]), "A", (through,)),
+        )
+
+
 def _place(f: Finding) -> int | None:
     """Under which a finding's waveforms are found."""
     return f.channel if f.channel is not None else f.place
@@ -254,7 +277,7 @@ def _breakdown(f: Finding, deck: Deck | None) -> float:
     return found[0] if found else -np.inf
 
 
-def _feed(cuts: Sequence[_Cut], waves: Waves, deck: Deck) -> None:
+def _feed(cuts: Sequence[_Cut | _LegCut], waves: Waves, deck: Deck) -> None:
     """Give every cut its share of the waveforms."""
     cuts = [c for c in cuts if c.subject or c.causes]
     keys = tuple(dict.fromkeys(key for c in cuts for key in (*c.subject, *c.causes)))
@@ -279,12 +302,12 @@ def _commanded(firing: Firing) -> Mapping[int, Floats]:
 
 
 def _closeup(
-    cut: _Cut, board: Board, firing: Firing, asked: Mapping[int, Floats], deck: Deck | None, corner: str
+    cut: _Cut | _LegCut, board: Board, firing: Firing, asked: Mapping[int, Floats], deck: Deck | None, corner: str
 ) -> Closeup:
     f, (start, stop) = cut.finding, cut.stretch
     panels = cut.panels(deck) if deck is not None and (f.probes or cut.causes) else ()
     named = (f.corner or corner) if panels else f.corner
-    if f.shape == "count":
+    if f.shape == "count" and isinstance(cut, _Cut):
         panels = (_count(f, firing, cut), *panels)
     if f.at is None and not f.probes:
         return Closeup(f.key, named, start, stop, (), {}, {}, {})

@@ -18,6 +18,7 @@ from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding
 from boardsim.verdict.readings import Readings
 
+_NOISE = 1e-12  # [W]: decks resolve 1 uA (abstol) and 1 uV (vntol, ngspice's own), what is below their product has no sign even
 _HOTTEST = 1000.0  # [K] that a report says of a junction that runs away: none lives to see it
 
 
@@ -31,6 +32,7 @@ def judge_heat(
     part = rule.part or placed.part
     members = rule.channels or (placed.channel,)
     power = sum(readings.means[c, pair] for c in members for pair in rule.powers)
+    power = power if abs(power) >= _NOISE else 0.0
     among = f" of its {len(members)} {_members(rule)}" if rule.channels else ""
     said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average {firing.averaged_over}"
     r_th, limit = rule.resistance.value, rule.limit.value

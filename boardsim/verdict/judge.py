@@ -69,9 +69,7 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
             size = scale if finding.unit == "A" else 0.0
             size = hottest if finding.unit == "W" and finding.limit is None else size
             if isinstance(placed.rule, ShootThroughRule):
-                # The difference of two edges that come a dead time apart; of a gate that only just touches its threshold the
-                # time above it is ill-conditioned, and a hundredth of the dead time is a tenth of the guard band.
-                size = placed.rule.dead_time / SMALL
+                size = scale_of(placed.rule)
             found.append(
                 replace(
                     finding,
@@ -86,6 +84,18 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
                 )
             )
     return [*found, *judge_warmth(found, bench)]
+
+
+def scale_of(rule: ShootThroughRule) -> float:
+    """What a change of the time left is compared on by the audit, as a finding's scale: the dead time itself. [s]
+
+    Notes
+    -----
+    The reading is the difference of two edges that come a dead time apart. Of a gate that only just touches its threshold the
+    time above it is ill-conditioned, and no step resolves a hundredth of that; a hundredth of the dead time is a tenth of the
+    guard band. Without a dead time a change counts as a share of the reading.
+    """
+    return rule.dead_time / SMALL
 
 
 def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:

@@ -18,6 +18,7 @@ from boardsim.verdict.findings import Envelope, Floats, Reading
 from boardsim.verdict.readings import Key, SignalTable, our_name
 from boardsim.verdict.watch import Extremes, Integrals, Slices
 
+_RESOLVED = 1e-6  # of the coil's energy
 SLICES = 3000  # from turn-off to the end; a fast clamp's release is a tenth of it
 _BEFORE = 0.05  # share of the time after the turn-off that is shown before it
 
@@ -239,6 +240,7 @@ class _TurnOffWatch:
 
     def turn_off(self) -> TurnOff:
         into_clamp, into_switch, charge = (float(total) for total in self.taken.total)
+        held = 0.5 * self.deck.corner.take(self.coil.inductance, "inductance") * self.current**2
         edges = self.slices.edges - self.off
         v_switch, i_coil = (
             Envelope(label, unit, edges, self.slices.low[k], self.slices.high[k])
@@ -249,17 +251,29 @@ class _TurnOffWatch:
         return TurnOff(
             self.deck.corner.name,
             float(self.peak.high[0]),
-            into_clamp,
-            into_switch,
+            resolved(into_clamp, held),
+            resolved(into_switch, held),
             None if first is None else first - self.on,
             None if since is None else since - self.off,
             charge,
-            0.5 * self.deck.corner.take(self.coil.inductance, "inductance") * self.current**2,
+            held,
             v_switch,
             i_coil,
         )
 
 
 def _pairs(channel: int | None, stamp: Stamp) -> list[tuple[Key, Key]]:
-    """The voltages and currents whose products are the power into a stamp's ports."""
-    return [((channel, v), (channel, i)) for port in stamp.ports for v, i in port.pairs]
+    """The voltages and currents whose products are the power into a stamp's ports, and into those of what is inside it."""
+    inside = [pair for _, inner in stamp.inside for pair in _pairs(channel, inner)]
+    return [*inside, *(((channel, v), (channel, i)) for port in stamp.ports for v, i in port.pairs)]
+
+
+def resolved(energy: float, coil_energy: float) -> float:
+    """An energy, or 0 where it is no more than what is left of the rounding of a run. [J]
+
+    Notes
+    -----
+    What a gate gives back and what a run rounds away leave nanojoules of either sign. The audit vouches for a hundredth of the
+    energy that decides; below a millionth of what the coil held nothing is told apart from zero.
+    """
+    return energy if abs(energy) >= _RESOLVED * coil_energy else 0.0

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import math
+import shutil
 from pathlib import Path
 
 import pytest
-from test_boards_clamps import broken, fired
+from test_boards_clamps import HERE, broken, fired
 
 pytestmark = pytest.mark.engine
 
@@ -60,3 +61,23 @@ def test_one_direction_at_a_time_breaks_nothing(tmp_path: Path) -> None:
     assert {f.channel for f in result.findings if f.check == "pull-in"} == {0, 4}  # each in its own direction
     (total,) = (f for f in result.findings if f.check == "most-current")
     assert total.value == pytest.approx(1.0, rel=0.02)  # 24 V / 24 ohm, of one coil once
+
+
+def test_both_ends_of_a_drivers_supply_count_and_a_gate_that_only_touches_its_threshold_is_resolved(
+    tmp_path: Path,
+) -> None:
+    """12 V less and more 60 %: 4.8 V, and 19.2 V, at which the low gate is lifted past its threshold for a few nanoseconds."""
+    text = (HERE / "f15_shoot_through" / "repaired.toml").read_text(encoding="utf-8")
+    (tmp_path / "board.toml").write_text(text.replace('supply = "12 V"', 'supply = "12 V +/- 60 %"'), encoding="utf-8")
+    shutil.copy(HERE / "f15_shoot_through" / "pattern.toml", tmp_path)
+    result = fired(str(tmp_path), "board", tmp_path)  # which asks for every corner to be proven
+    found = broken(result)
+    drive, rating = (
+        found["under-drive", "gate drive of the high transistor"],
+        found["overvoltage", "gate-source voltage of the low transistor"],
+    )
+    assert drive.value == pytest.approx(4.8, rel=0.01)
+    assert rating.value == pytest.approx(19.2, rel=0.01)
+    touched = found["shoot-through", "dead time left at the gates"]
+    assert -20e-9 < touched.value < 0
+    assert not [f for f in result.findings if f.verdict == "unproven"]

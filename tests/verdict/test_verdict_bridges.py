@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -15,9 +16,11 @@ from boardsim.firing.pattern import Pattern, Pulse
 from boardsim.firing.schedule import Firing, fire
 from boardsim.parts.base import NOMINAL
 from boardsim.parts.rules import IdleRule, ReleaseRule, ShootThroughRule
+from boardsim.verdict.audit import refinement
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.bridges import Leg, both_at_once, fired_again, judge_directions, judge_leg
 from boardsim.verdict.findings import Finding
+from boardsim.verdict.judge import scale_of
 from boardsim.verdict.switching import judge_switching
 
 FOLDER = Path(__file__).parents[1] / "boards" / "f15_both_directions"
@@ -174,3 +177,15 @@ def test_a_drivers_threshold_lies_between_the_levels_of_the_output_that_drives_i
     assert (found["high level at the gate driver"].value, found["low level at the gate driver"].value) == pytest.approx(
         (4.9, 0.1)
     )
+
+
+@pytest.mark.parametrize(("dead", "share"), [(310e-9, 1.3 / 310), (0.0, 1.3 / 5)])
+def test_a_change_of_the_time_left_is_a_share_of_the_dead_time(dead: float, share: float) -> None:
+    """5 ns of overlap that moved by 1.3 ns."""
+    rule = ShootThroughRule("shoot-through", ("v_gs", "v_gs_low"), ("i_d", "i_d_low"), (2.0, 2.0), dead, "given")
+    found = flat(True)
+    assert found is not None
+    new = replace(found, value=-5e-9, limit=0.0, margin=-0.1, verdict="fail", scale=scale_of(rule))
+    entry = refinement([replace(new, value=-6.3e-9)], [new], (100, 200), "nominal", "run")
+    assert entry.measured == pytest.approx(100 * share)
+    assert entry.passed == (share < 0.01)
