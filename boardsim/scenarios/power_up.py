@@ -328,6 +328,7 @@ def _study(board: Board, done: Sequence[_Done], wanted: Sequence[Corner]) -> Pow
         min(harmless(board, c, corner) for c in board.channels for corner in wanted),
         reading.waves if reading is not None else {},
         boot.reset,
+        "off" if board.chain.register_.open_drain else "high impedance",
     )
 
 

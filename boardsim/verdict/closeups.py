@@ -21,7 +21,7 @@ from boardsim.verdict.cutting import RunningEnergy, between
 from boardsim.verdict.findings import Envelope, Finding, Floats
 from boardsim.verdict.leg_closeups import LegCut, leg_rule
 from boardsim.verdict.readings import Key, SignalTable, our_name
-from boardsim.verdict.stretch import Stretch, channels_in_question, count_on, stretch_of
+from boardsim.verdict.stretch import Stretch, channels_in_question, count_on, package_members, stretch_of
 from boardsim.verdict.watch import HYSTERESIS, Slices
 
 SLICES = 800  # across a close-up; about as many as it has pixels
@@ -45,6 +45,7 @@ _WORDS = {
     "v_ds": "voltage at the switch",
     "i_d": "current of the switch",
     "v_gs": "gate voltage of the switch",
+    "i_ground": "all outputs of the package",
 }
 _SEVERAL = {"A": "currents", "V": "voltages"}
 
@@ -202,7 +203,7 @@ class _Cut:
         beside: dict[str, list[Envelope]] = {}
         for row, key in enumerate(self.causes, 1):
             unit = deck.units[key]
-            beside.setdefault(unit, []).append(self._wave(row, _WORDS.get(key[1], key[1]), unit))
+            beside.setdefault(unit, []).append(self._wave(row, _WORDS.get(key[1].partition(",")[0], key[1]), unit))
         first: tuple[Panel, ...] = ()
         if self.finding.probes:
             alike = beside.pop(self.finding.unit, []) if self.finding.shape == "value" else []
@@ -261,6 +262,8 @@ def _causes(f: Finding, board: Board, deck: Deck | None) -> tuple[Key, ...]:
         causes = ((None, "v_rail"),)
     elif f.place is not None:
         causes = ((f.place, "i_d"), (f.place, "v_ds"))
+    elif package_members(f, board):  # their sum, where there is one; who is on says the rest
+        causes = ((None, f"i_ground, {f.label}"),)
     elif len(who) == 1 and f.shape != "count":
         causes = ((who[0], "i_coil"), (who[0], "v_ds")) if f.unit in ("A", "J") else ((who[0], "i_coil"),)
     else:
@@ -319,6 +322,9 @@ def _closeup(
     who = channels_in_question(f, board)
     in_view = {*on, *(c for c, spans in commanded.items() if len(_touching(spans, start, stop)))}
     in_view |= set(who) if len(who) == 1 else set()
+    if members := package_members(f, board):
+        in_view &= set(members)  # the others' coils are no part of the sum
+        on, commanded = ({c: rows for c, rows in every.items() if c in members} for every in (on, commanded))
     labels = {c.number: c.label for c in board.channels if c.number in in_view}
     return Closeup(f.key, named, start, stop, panels, on, commanded, labels, who)
 

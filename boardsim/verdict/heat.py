@@ -33,7 +33,7 @@ def judge_heat(
     members = rule.channels or (placed.channel,)
     power = sum(readings.means[c, pair] for c in members for pair in rule.powers)
     power = power if abs(power) >= _NOISE else 0.0
-    among = f" of its {len(members)} {_members(rule)}" if rule.channels else ""
+    among = f" of its {_members(rule)}" if rule.channels else ""
     said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average {firing.averaged_over}"
     r_th, limit = rule.resistance.value, rule.limit.value
     air = f"air of {celsius(rule.ambient)}"
@@ -54,8 +54,9 @@ def judge_heat(
 
 
 def _members(rule: HeatRule) -> str:
-    """Who shares a package: channels, or lines of a matrix."""
-    return "lines" if any(place >= LINES_FROM for place in rule.channels) else "channels"
+    """Who shares a package: channels, or lines of a matrix, and how many."""
+    who = "line" if any(place >= LINES_FROM for place in rule.channels) else "channel"
+    return f"one {who}" if len(rule.channels) == 1 else f"{len(rule.channels)} {who}s"
 
 
 def judge_warmth(found: Sequence[Finding], bench: Bench) -> Iterator[Finding]:

@@ -22,15 +22,24 @@ class Stretch(NamedTuple):
 
 
 def channels_in_question(finding: Finding, board: Board) -> tuple[int, ...]:
-    """The channels that a finding is about; none for a part of the whole board."""
+    """The channels that a finding is about; those of a package for a sum over it, none for a part of the whole board."""
     if finding.channel is not None:
         return (finding.channel,)
+    if members := package_members(finding, board):
+        return members
     if finding.place is not None:  # a row or column is all who lie along it
         return next((line.channels for line in board.lines if line.number == finding.place), ())
     if finding.channels or finding.probes or finding.at is None:
         return finding.channels
     # The worst pulse of all is a finding of the whole board, and is named by its channel.
     return tuple(c.number for c in board.channels if c.label == finding.label)
+
+
+def package_members(finding: Finding, board: Board) -> tuple[int, ...]:
+    """The channels of the package that a finding is about; none where it is about something else."""
+    if finding.channel is not None or finding.place is not None:
+        return ()
+    return tuple(c.number for c in board.channels if c.package and c.package == finding.label)
 
 
 def stretch_of(finding: Finding, board: Board, firing: Firing) -> Stretch:

@@ -204,6 +204,20 @@ def test_temperature_coefficients_that_programs_count_differently_are_refused(li
         understood(f"{COLD}{line}\n.ends\n", 127.0)
 
 
+@pytest.mark.parametrize(
+    ("text", "said"),
+    [
+        (".ends\n", "'.ends' ends nothing that was begun"),
+        (".subckt s a b\nr1 a b 1\n.ends s\n+ more words\n", ".ends is followed by 's more words'"),
+        (".subckt s a b\nr1 a b 1\n.ends t\n", ".ends is followed by 't'"),
+    ],
+)
+def test_an_end_that_is_none_is_told_from_one_with_more_behind_it(tmp_path: Path, text: str, said: str) -> None:
+    with pytest.raises(ModelTextError) as caught:
+        read(tmp_path, text)
+    assert said in str(caught.value)
+
+
 POWER = "vto=2 kp=20 cgs=500p cgdmin=10p cgdmax=500p cjo=300p is=1e-12"
 
 

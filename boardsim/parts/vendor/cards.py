@@ -104,8 +104,13 @@ def read_library(statements: tuple[Statement, ...]) -> Library:
             _once(library.subcircuits, inside.name, "subcircuit", s.place)
             library.subcircuits[inside.name] = inside
         elif word == ".ends":
-            if inside is None or rest not in ("", inside.name):
-                raise s.place.refuse(f".ends {shortened(rest)} ends nothing that was begun")
+            if inside is None:
+                raise s.place.refuse(f"{shortened(s.text)!r} ends nothing that was begun")
+            if rest not in ("", inside.name):
+                raise s.place.refuse(
+                    f".ends is followed by {shortened(rest)!r}; the name of the subcircuit that was begun, "
+                    f"{shortened(inside.name)!r}, or nothing is allowed, on this line and on those below that begin with +"
+                )
             inside = None
         else:
             _define(word, rest, inside if inside is not None else library, s.place)
