@@ -20,7 +20,7 @@ from boardsim.quantities import RESISTANCE, Quantity
 
 _TOO_HIGH = "a driver with a lower supply, or a gate rating that stands it"
 _TOO_LOW = "a driver with a higher supply, or a transistor that is specified at this gate voltage"
-_STOPS = 24  # while a gate follows the driver
+_STOPS = 16  # while a gate follows the driver; each costs a run some short steps, whatever its tolerance
 
 
 class Leg(Part):
@@ -121,7 +121,7 @@ class Leg(Part):
         edge, both = self.driver.edge.typ, first + self.driver.dead_time.min
         last = max(self._settles(part) for part in (self.high, self.low))
         # The lags start where the register's edge crosses the threshold, somewhat before its end.
-        after = (*(0.25 * edge * k for k in range(-8, 5)), *(last * k / _STOPS for k in range(1, _STOPS + 1)))
+        after = (*(0.5 * edge * k for k in range(-4, 3)), *(last * k / _STOPS for k in range(1, _STOPS + 1)))
         return tuple(start + step for start in dict.fromkeys((first, both)) for step in after if start + step > 0)
 
     def _settles(self, part: Mosfet) -> float:

@@ -38,10 +38,9 @@ PARTS = PERFECT_SWITCH.format(breakdown="100 V") + DIODE
 MIRRORED = PARTS.replace("[parts.perfect]", "[parts.perfect-p]").replace('"n-mosfet"', '"p-mosfet"')
 
 
+# An edge of the driver's that no ideal transistor without a gate resistor turns into spikes of nanoseconds.
 def text(rated: str = "50 V", channels: str = "0", reverse: str = "4") -> str:
-    driver = (
-        '{ supply = "12 V", delay = "1 us", dead_time = "60 us", output_resistance = "1 ohm", pulldown = "10 kohm" }'
-    )
+    driver = '{ supply = "12 V", delay = "1 us", dead_time = "60 us", edge = "500 ns", output_resistance = "1 ohm", pulldown = "10 kohm" }'
     switch = f'{{ kind = "full-bridge", high = "perfect-p", low = "perfect", gate = "0 ohm", driver = {driver} }}\nreverse = "{reverse}"'
     return board_text(
         supply=f'voltage = "24 V", resistance = "50 mohm", internal_load = "{R_LOAD:g} ohm"',
