@@ -52,7 +52,7 @@ def add_bridge_channel(
     coil = replace(coil, rules=tuple(_of_two(coil.rules, channel)))
     if channel.forwards:
         parts.add(
-            _with_size(coil, f"c{forth}", inner, channel.coil.winding(corner, board.around)),
+            _with_size(coil, f"c{forth}", inner, channel.coil.ohms(corner, board.around)),
             k,
             channel.coil_name,
             label,

@@ -1,8 +1,8 @@
-"""A coil of fixed inductance: winding, inductance, core loss, pull-in and release current."""
+"""A coil of fixed inductance: winding, inductance, core loss, pull-in and release current; or what such numbers follow from."""
 
 from __future__ import annotations
 
-from typing import Annotated, ClassVar, Literal
+from typing import Annotated, Any, ClassVar, Literal
 
 from pydantic import Field, model_validator
 
@@ -10,21 +10,31 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
 from boardsim.parts.elements import Inductor, Port, Probe, Resistor, current, plus, scaled, voltage
+from boardsim.parts.known_coil import MeasuredRise, inductance_from, resistance_from
 from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule
+from boardsim.parts.winding import ENAMEL_SOURCE, Winding
 from boardsim.quantities import (
     CURRENT,
     INDUCTANCE,
     POSITIVE_RESISTANCE,
     POSITIVE_TIME,
+    POWER,
     RESISTANCE,
     TEMPERATURE,
     TEMPERATURE_RISE,
+    VOLTAGE,
     Quantity,
     assume,
+    in_units,
 )
 
 _CORE_LOSS_FACTOR = 200
 IDLE_SHARE = 0.1  # of the settled current, where no release current is given: below it nothing is held, from memory
+
+
+def _without_default(schema: dict[str, Any]) -> None:
+    """A number that follows from others where it was not given has no default of its own."""
+    schema.pop("default", None)
 
 
 class Coil(Part):
@@ -38,11 +48,24 @@ class Coil(Part):
 
     role: ClassVar[str] = "coil"
     kind: Literal["coil"] = "coil"
-    resistance: Annotated[Quantity, POSITIVE_RESISTANCE]
+    resistance: Annotated[Quantity, POSITIVE_RESISTANCE] = Field(
+        None,
+        description="of the winding; from two of the ratings, or from the winding, if absent",
+        json_schema_extra=_without_default,
+    )  # type: ignore[assignment]  # never None once the coil is read
+    rated_voltage: Annotated[Quantity, VOLTAGE] | None = Field(None, description="voltage on its nameplate")
+    rated_current: Annotated[Quantity, CURRENT] | None = Field(None, description="current at the rated voltage")
+    rated_power: Annotated[Quantity, POWER] | None = Field(None, description="power at the rated voltage")
+    winding: Winding | None = Field(None, description="turns, wire and bobbin, of one that is wound to order")
     at: Annotated[Quantity, TEMPERATURE] = assume(
         "20 degC", TEMPERATURE, "coil data are given at 20 degC, common practice"
     )
-    inductance: Annotated[Quantity, INDUCTANCE]
+    inductance: Annotated[Quantity, INDUCTANCE] = Field(
+        None,
+        description="or a band such as '8 to 14 mH'; from measured_rise or from the winding if absent",
+        json_schema_extra=_without_default,
+    )  # type: ignore[assignment]  # never None once the coil is read
+    measured_rise: MeasuredRise | None = Field(None, description="one point of its current after switching it on")
     core_loss: Annotated[Quantity, POSITIVE_RESISTANCE] | None = None
     pull_in: Annotated[Quantity, CURRENT] | None = None
     release: Annotated[Quantity, CURRENT] | None = None
@@ -59,6 +82,23 @@ class Coil(Part):
     )
 
     @model_validator(mode="after")
+    def _from_what_is_known(self) -> Coil:
+        given = self.model_fields_set
+        ohms = resistance_from(
+            self.resistance if "resistance" in given else None,
+            {"voltage": self.rated_voltage, "current": self.rated_current, "power": self.rated_power},
+            self.winding,
+            self.at.typ,
+        )
+        henries = inductance_from(
+            self.inductance if "inductance" in given else None, self.measured_rise, self.winding, ohms
+        )
+        # Frozen for everybody else: these two follow from other fields, and every reader needs them.
+        object.__setattr__(self, "resistance", ohms)
+        object.__setattr__(self, "inductance", henries)
+        return self
+
+    @model_validator(mode="after")
     def _lets_go_below_pull_in(self) -> Coil:
         if self.pull_in is not None and self.release is not None and self.release.min >= self.pull_in.max:
             raise QuantityError(
@@ -70,7 +110,7 @@ class Coil(Part):
         """What the corners vary in this part."""
         return {"coil_resistance": self.resistance, "inductance": self.inductance}
 
-    def winding(self, corner: Corner, around: Surroundings | None) -> float:
+    def ohms(self, corner: Corner, around: Surroundings | None) -> float:
         """Winding resistance in a corner. [ohm]"""
         r = corner.take(self.resistance, "coil_resistance")
         if around is None or corner.winding == "reference":
@@ -103,9 +143,10 @@ class Coil(Part):
         if self.release is None:
             why = "no release current given: what a coil that is off may carry, from memory"
             assumed += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
+        assumed += self._of_the_winding(label)
         return Stamp(
             elements=(
-                Resistor(f"{name}_r", a, mid, self.winding(corner, around)),
+                Resistor(f"{name}_r", a, mid, self.ohms(corner, around)),
                 coil,
                 Resistor(f"{name}_core", mid, b, core),
             ),
@@ -135,3 +176,15 @@ class Coil(Part):
             ),
             assumptions=assumed,
         )
+
+    def _of_the_winding(self, label: str) -> tuple[Assumption, ...]:
+        """What a winding comes out as, and what had to be supplied for it."""
+        if self.winding is None:
+            return ()
+        wound = Assumption(
+            f"coil {label}", "winding", str(self.winding.wound()), "computed from turns, wire and bobbin"
+        )
+        if self.winding.over_enamel is not None:
+            return (wound,)
+        over = in_units(self.winding.diameter, "m")
+        return wound, Assumption(f"coil {label}", "diameter over the enamel", over, ENAMEL_SOURCE)

@@ -269,7 +269,7 @@ def _full_energy(board: Board, corner: Corner) -> list[float]:
     v = corner.take(board.supply.voltage, "supply")
     energies = []
     for channel in board.channels:
-        r = channel.coil.winding(corner, board.around)
+        r = channel.coil.ohms(corner, board.around)
         energies.append(0.5 * corner.take(channel.coil.inductance, "inductance") * (v / r) ** 2)
     return energies
 

@@ -163,7 +163,7 @@ def _highest_current(board: Board) -> float:
     """Of the only coil, once it has settled. [A]"""
     (channel,) = board.channels
     return max(
-        corner.take(board.supply.voltage, "supply") / channel.coil.winding(corner, board.around)
+        corner.take(board.supply.voltage, "supply") / channel.coil.ohms(corner, board.around)
         for corner in corners(board)
     )
 
@@ -179,9 +179,7 @@ def release_pattern(board: Board) -> Pattern:
     """
     (channel,) = board.channels
     coil = channel.coil
-    tau = max(
-        corner.take(coil.inductance, "inductance") / coil.winding(corner, board.around) for corner in corners(board)
-    )
+    tau = max(corner.take(coil.inductance, "inductance") / coil.ohms(corner, board.around) for corner in corners(board))
     frame = frame_time(board.chain)
     width = max(_SETTLED * tau, _FRAMES * frame / board.limits.pulse_error.typ)
     held = math.log(_highest_current(board) / coil.release.min) + 2.0 if coil.release is not None else 0.0

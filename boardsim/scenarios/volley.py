@@ -173,7 +173,7 @@ def settled_width(board: Board) -> float:
     Both with the largest inductance, capacitance and voltage and the smallest, coldest winding that was given.
     """
     cold = Corner("cold", {"coil_resistance": "min"}, "cold")
-    windings = [c.coil.winding(cold, board.around) for c in forwards(board)]
+    windings = [c.coil.ohms(cold, board.around) for c in forwards(board)]
     coils = max(c.coil.inductance.max / r for c, r in zip(forwards(board), windings, strict=True))
     warmest = board.around.ambient_high if board.around else T_20C
     resistance = board.supply.resistance.typ + board.cable.loop(warmest).typ + board.bulk.esr.max

@@ -118,7 +118,7 @@ class BootWatch:
 
 def settled(board: Board, channel: Channel, corner: Corner) -> float:
     """The coil's current once it has settled, from the supply's voltage and the winding alone. [A]"""
-    return float(corner.take(board.supply.voltage, "supply") / channel.coil.winding(corner, board.around))
+    return float(corner.take(board.supply.voltage, "supply") / channel.coil.ohms(corner, board.around))
 
 
 def take_boot(waves: Waves, deck: Deck, board: Board, boot: Boot) -> BootReading:

@@ -79,12 +79,12 @@ def test_a_corner_takes_the_end_that_it_names_and_the_middle_otherwise() -> None
 def test_a_winding_is_coldest_at_the_lowest_ambient_and_hottest_at_the_highest_with_its_own_rise() -> None:
     around = Surroundings(278.15, 318.15)
     part = coil(at="20 degC", rise="40 K")
-    cold = part.winding(Corner("cold", {}, "cold"), around)
-    hot = part.winding(Corner("hot", {}, "hot"), around)
+    cold = part.ohms(Corner("cold", {}, "cold"), around)
+    hot = part.ohms(Corner("hot", {}, "hot"), around)
     # R = R20 (1 + alpha (T - 20 degC)), alpha 0.00393 / K: IEC 60028
     assert cold == pytest.approx(16 * (1 + 0.00393 * (5 - 20)))
     assert hot == pytest.approx(16 * (1 + 0.00393 * (45 + 40 - 20)))
-    assert part.winding(NOMINAL, around) == part.winding(Corner("cold", {}, "cold"), None) == 16.0
+    assert part.ohms(NOMINAL, around) == part.ohms(Corner("cold", {}, "cold"), None) == 16.0
 
 
 def test_a_coil_cannot_let_go_at_more_current_than_it_pulls_in_with() -> None:
