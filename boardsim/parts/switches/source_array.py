@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from typing import ClassVar, Literal
 
-from boardsim.parts.base import Corner, Part, Stamp, Total, listed, named_part
+from boardsim.parts.array_stage import ArrayStage
+from boardsim.parts.base import Corner, Stamp, Total, listed, named_part
 from boardsim.parts.bipolar import breakdown_junction
 from boardsim.parts.diode import EMISSION, junction_parameters
 from boardsim.parts.elements import (
@@ -23,13 +24,13 @@ from boardsim.parts.heat import junction_heat
 from boardsim.parts.rules import BreakdownRule, DriveRule, Limit, MeanRule, PeakRule, Rule
 from boardsim.parts.source_array import SourceArray
 from boardsim.parts.temperature import in_celsius
-from boardsim.quantities import VOLTAGE_DRIFT, Quantity, assume
+from boardsim.quantities import VOLTAGE_DRIFT, assume
 
 _LEAST_JUNCTION = 0.6  # [V] across a base that conducts, from memory
 _DRIFT = assume("-2 mV/K", VOLTAGE_DRIFT, "forward voltage of a silicon junction against temperature, common practice")
 
 
-class SourceStage(Part):
+class SourceStage(ArrayStage):
     """One output of the package: the register's output at its input, the rail at its supply pin, coils at its output.
 
     Notes
@@ -44,30 +45,11 @@ class SourceStage(Part):
     kind: Literal["source-array"] = "source-array"
     part: named_part(SourceArray)  # type: ignore[valid-type]
 
-    active: ClassVar[Literal["high", "low"]] = "high"
-    """Output level that turns the coil on."""
-
-    def tolerances(self) -> dict[str, Quantity]:
-        """What the corners vary in this stage: where its output breaks down."""
-        return {"breakdown": self.part.output_voltage}
-
-    def held_off(self) -> bool:
-        """Always: without an input current nothing drives the output, and the package has its own resistors."""
-        return True
+    junctions: ClassVar[float] = _LEAST_JUNCTION
 
     def clamped(self) -> bool:
         """Always: by the diode from ground in the package."""
         return True
-
-    def per_package(self) -> int:
-        """Outputs of the package. [1]"""
-        return int(self.part.outputs)
-
-    def steady_input(self, volts: float, resistance: float) -> float:
-        """Into the input, at most as printed: a resistance before one junction of 0.6 V (from memory). [A]"""
-        printed = [(p.voltage.typ - _LEAST_JUNCTION, (p.highest or p.typical).max) for p in self.part.input_current]
-        least: float = min(over / amperes for over, amperes in printed if over > 0)
-        return max(volts - _LEAST_JUNCTION, 0.0) / (resistance + least)
 
     def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
         """The source from node `rail` to the coil's node `load`, driven by the register's node `pin`."""
