@@ -391,13 +391,14 @@ def _written(value: float, unit: str) -> str:
 
 
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
+_LEAST_WRITTEN, _MOST_WRITTEN = 1e-18, 1e18  # in SI units; beyond it an exponent is easier to read than a row of zeros
 _IN_PERCENT = {"1": "%", "1/K": "%/K"}
 _UNPREFIXED = {"K/W", "1", "%", "m^2", "N/m", "N/A", "kg/s"}
 _LARGEST = {"K": 0, "m": 0, "F": -6}  # nobody writes kilokelvin, or 4.7 mF on a capacitor
 
 
 def in_units(value: float, unit: str, digits: int = 3) -> str:
-    """Write an SI value for people, with an engineering prefix.
+    """Write an SI value for people, with an engineering prefix; with an exponent far beyond all prefixes.
 
     Parameters
     ----------
@@ -424,6 +425,8 @@ def in_units(value: float, unit: str, digits: int = 3) -> str:
     if unit in _UNPREFIXED or value == 0:
         return f"{value:.{digits}g} {unit}"
     rounded = float(f"{value:.{digits - 1}e}")
+    if not _LEAST_WRITTEN <= abs(rounded) < _MOST_WRITTEN:
+        return f"{value:.{digits - 1}e} {unit}"
     exponent = 3 * math.floor(math.log10(abs(rounded)) / 3)
     exponent = max(min(_PREFIXES), min(max(_PREFIXES), exponent))
     exponent = min(exponent, _LARGEST.get(unit, exponent))

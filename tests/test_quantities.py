@@ -281,6 +281,8 @@ def test_a_quantity_is_written_for_people(text: str, dimension: Dimension, writt
         (1e-18, "F", "0.00100 fF"),
         (1e15, "ohm", "1000000 Gohm"),
         (4.7e-3, "F", "4700 uF"),
+        (4.2e-31, "V", "4.20e-31 V"),
+        (-3.0e200, "A", "-3.00e+200 A"),
         (1500.0, "m", "1500 m"),
         (math.inf, "V", "inf V"),
         (math.nan, "V", "nan V"),

@@ -21,7 +21,12 @@ _INPUT_NAMES = {
     "logic": "logic rail",
     "on_resistance": "on-resistance",
     "threshold": "threshold",
+    "gate_supply": "gate driver's supply",
+    "charge_high": "gate charge of the high transistor",
+    "charge_low": "gate charge of the low transistor",
+    "gate_resistances": "gate resistances",
 }
+_GATES: dict[str, Bound] = {"charge_high": "max", "charge_low": "max", "gate_resistances": "max"}
 
 
 def _varied(board: Board) -> dict[str, list[Quantity]]:
@@ -32,9 +37,9 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
         "esr": [board.bulk.esr],
         "logic": [board.logic.voltage],
     }
-    for channel in board.channels:
-        for part in (channel.coil, channel.switch, channel.clamp):
-            for key, quantity in part.tolerances().items():
+    for parts in ((c.coil for c in board.channels), *((d.switch, d.clamp) for d in board.drivers)):
+        for part in parts:
+            for key, quantity in (*part.tolerances().items(), *part.tolerances_too()):
                 found.setdefault(key, []).append(quantity)
     return found
 
@@ -71,10 +76,13 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     on-resistance is largest; they are cold in the others, where breakdown is lowest and a bipolar transistor needs the
     most drive. Hot is the warmest air and `junction_rise`, cold the coldest air. Cold windings with hot junctions do not
     go together for long, which makes the first corner an upper bound.
+
+    Gates are driven hardest with the supply high and weakest with it low; with it high a leg's gates also turn off as late and on as
+    early as they may, and in the first corner their thresholds are lowest besides.
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
-    strong["opposing_force"] = "min"
-    weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min"}
+    strong |= {"gate_supply": "max", "opposing_force": "min", **_GATES}
+    weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min", "gate_supply": "min"}
     # Hot: the least threshold leaks most, the largest on-resistance heats most.
     stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max", "on_resistance": "max", "threshold": "min"}
     soft: dict[str, Bound] = {"clamp_voltage": "min", "breakdown": "min"}
@@ -179,7 +187,11 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
         ("chain", board.chain),
     ]
     for channel in board.channels:
-        parts += [(f"coil {channel.coil_name}", channel.coil), ("switch", channel.switch), ("clamp", channel.clamp)]
+        parts += [(f"coil {channel.coil_name}", channel.coil)]
+        parts += [("series diode", channel.diode)] if channel.diode is not None else []
+    for driver in board.drivers:
+        parts += [("switch", driver.switch), ("clamp", driver.clamp)]
+        used += driver.switch.taken_at_ends()
     found = {
         Assumption(
             part,

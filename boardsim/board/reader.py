@@ -4,13 +4,15 @@ from __future__ import annotations
 
 import difflib
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
 from pydantic import ValidationError
 
+from boardsim.board.bridges import backwards, refuse_wrong_bridges, with_opposites
 from boardsim.board.chain_outputs import refuse_wrong_outputs
+from boardsim.board.matrix import Crossing, Line, claim, cross, packages_of
 from boardsim.board.power_up import PowerUpTable
 from boardsim.board.ranges import read_range, write_range
 from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Limits
@@ -22,6 +24,7 @@ from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
 from boardsim.parts.controller import Controller
+from boardsim.parts.diode import Diode
 from boardsim.parts.kinds import kinds
 from boardsim.parts.leads import Leads
 from boardsim.parts.logic import LogicRail
@@ -31,10 +34,16 @@ from boardsim.parts.regulator import Regulator
 from boardsim.parts.supply import Supply
 from boardsim.quantities import Origin, Quantity
 
+_NONE = -1  # output and bit of a channel that has none of its own: no table of outputs has it
+
 
 @dataclass(frozen=True)
 class Channel:
-    """One coil with its switch and its clamp, driven by one register output."""
+    """One coil with its switch and its clamp, driven by one register output.
+
+    Where rows and columns cross it takes both lines' outputs: `output` and `bit` are then none, `switch` and `clamp` those of
+    the column. Whoever asks what drives coils asks `Board.drivers`.
+    """
 
     number: int
     output: int
@@ -46,6 +55,45 @@ class Channel:
     clamp: Any  # a part of role "clamp"
     leads: Leads | None = None  # between coil and board; none: the coil sits on the board
     package: str = ""  # which one of several channels' packages its switch is in, such as "array 2"
+    opposite: int | None = None  # the channel that drives the same coil the other way, of a full bridge
+    forwards: bool = True  # whether it drives the coil forwards; the other way round its readings change sign
+    crossing: Crossing | None = None  # of a matrix
+
+    @property
+    def stem(self) -> str:
+        """What names of its nodes begin with."""
+        return f"c{self.number}"
+
+    @property
+    def drivers(self) -> tuple[Channel | Line, ...]:
+        """Whose switches have to be on for its coil to be: row and column, or its own."""
+        return (self,) if self.crossing is None else (self.crossing.row, self.crossing.column)
+
+    @property
+    def outputs(self) -> tuple[int, ...]:
+        """Register outputs that have to be active for its coil to be on."""
+        return tuple(d.output for d in self.drivers)
+
+    @property
+    def bits(self) -> tuple[int, ...]:
+        """Bits of the firmware's image that mean it."""
+        return tuple(d.bit for d in self.drivers)
+
+    @property
+    def diode(self) -> Diode | None:
+        """In series with its coil."""
+        return None if self.crossing is None else self.crossing.diode
+
+    @property
+    def held_off(self) -> bool:
+        """Whether a switch of its own resistors keeps its coil off while nothing drives the registers' outputs."""
+        return any(d.switch.held_off() for d in self.drivers)
+
+    @property
+    def build(self) -> tuple[object, ...]:
+        """What a circuit knows of it beside the package: channels of one build differ in their names only."""
+        own = (self.coil, self.coil_name, self.switch, self.clamp, self.leads)
+        return own if self.crossing is None else (*own, *self.crossing.build)
 
 
 @dataclass(frozen=True)
@@ -78,6 +126,17 @@ class Board:
     def spi_mode(self) -> int:
         """In which the controller sends; 0 where it was not described."""
         return 0 if self.controller is None else int(self.controller.spi_mode)
+
+    @property
+    def lines(self) -> tuple[Line, ...]:
+        """Rows and columns, by number."""
+        lines = {d.number: d for c in self.channels for d in c.drivers if isinstance(d, Line)}
+        return tuple(lines[number] for number in sorted(lines))
+
+    @property
+    def drivers(self) -> tuple[Channel | Line, ...]:
+        """Whoever has a switch, a clamp and a register output: channels that share none, then lines."""
+        return (*(c for c in self.channels if c.crossing is None), *self.lines)
 
     def channel(self, number: int) -> Channel:
         """The channel of a number.
@@ -204,7 +263,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     except ValidationError as err:
         raise InputError(problems_of(err, file)) from None
     problems: list[Problem] = []
-    channels = _lay_out(board, file, problems)
+    channels = with_opposites(_lay_out(board, file, problems), board)
     _refuse_shared_labels(channels, file, problems)
     exclusive = []
     numbers = {c.number for c in channels}
@@ -227,6 +286,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         problems.append(file.problem(("limits", "brown_out"), text))
     problems += _of_the_logic_rail(board, file)
     problems += refuse_wrong_outputs(board, file)
+    problems += refuse_wrong_bridges(board, file)
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
     around = None
@@ -330,43 +390,52 @@ def _listed(what: str, numbers: list[int]) -> str:
 def _lay_out(board: BoardFile, file: TomlFile, problems: list[Problem]) -> list[Channel]:
     """One Channel per number of each range; complains of what is claimed twice or lies outside the chain."""
     channels: list[Channel] = []
+    lines: list[Line] = []
     claimed: dict[str, dict[int, str]] = {"channel": {}, "output": {}, "bit": {}}
-    for text, group in board.channels.items():
-        keys: Keys = ("channels", text)
-        numbers = _range(text, file, keys, problems)
+    ranges = [(text, group, "") for text, group in board.channels.items()]
+    ranges += [
+        (text, backwards(text, group), "reverse_")
+        for text, group in board.channels.items()
+        if group.reverse is not None and group.matrix is None
+    ]
+    for text, group, prefix in ranges:
+        keys: Keys = ("channels", text, "reverse") if prefix else ("channels", text)
+        numbers = _range(group.reverse or "" if prefix else text, file, keys, problems)
         columns = {"outputs": numbers, "bits": numbers, "numbers": numbers}
-        for column in columns:
+        crossings: tuple[Crossing, ...] = ()
+        if group.matrix is not None and numbers:
+            columns |= {"outputs": (), "bits": ()}
+            crossings = cross(group, text, numbers, lines, file, problems)
+        for column in columns if group.matrix is None else ("numbers",):
             given = getattr(group, column)
             if given is not None:
-                columns[column] = _range(given, file, (*keys, column), problems)
-                if len(columns[column]) not in (0, len(numbers)):
+                place = ("channels", text, prefix + column)
+                told = bool(prefix) and column == "numbers"  # by the channels that these are the reverse of
+                columns[column] = _range(given, file, place, [] if told else problems)
+                if len(columns[column]) not in (0, len(numbers)) and not told:
                     problems.append(
                         file.problem_at(
-                            (*keys, column),
+                            place,
                             f"names {len(columns[column])} where the range has {len(numbers)} channels",
                         )
                     )
             elif column == "bits":
                 columns[column] = columns["outputs"]
-        if any(len(c) != len(numbers) for c in columns.values()):
+        if any(len(c) != len(numbers) for c in columns.values() if c or group.matrix is None):
             continue
-        _claim(group, text, {"channel": numbers, **columns}, claimed, board.chain, file, problems)
-        packages = _packages(group, columns["outputs"], channels)
+        _claim(group, text, {"channel": numbers, **columns}, claimed, board.chain, file, problems, prefix)
+        if group.matrix is not None:
+            claim(group, text, crossings, claimed, board.chain, file, problems)
+            for number, n, crossing in zip(numbers, columns["numbers"], crossings, strict=bool(crossings)):
+                channels.append(replace(_channel(group, number, _NONE, _NONE, n, ""), crossing=crossing))
+            continue
+        before = [c.package for c in channels] + [line.package for line in lines]
+        packages = packages_of(group.switch, columns["outputs"], before)
         for number, output, bit, n, package in zip(
             numbers, columns["outputs"], columns["bits"], columns["numbers"], packages, strict=True
         ):
             channels.append(_channel(group, number, output, bit, n, package))
     return channels
-
-
-def _packages(group: ChannelRange, outputs: tuple[int, ...], before: list[Channel]) -> list[str]:
-    """Which package each channel of a range has its switch in, numbered over the board."""
-    switch: Any = group.switch  # a part of role "switch"
-    if not switch.per_package():
-        return [""] * len(outputs)
-    name = switch.part.title or switch.kind
-    first = 1 if switch.in_the_chain else len({c.package for c in before if c.package.rpartition(" ")[0] == name}) + 1
-    return [f"{name} {first + switch.package_of(i, output)}" for i, output in enumerate(outputs)]
 
 
 def _claim(
@@ -377,6 +446,7 @@ def _claim(
     chain: Chain,
     file: TomlFile,
     problems: list[Problem],
+    prefix: str = "",
 ) -> None:
     """Complain of numbers that an earlier range has, or that lie outside the chain; once where one follows from another."""
     registers = "1 register has" if chain.count == 1 else f"{chain.count} registers have"
@@ -384,7 +454,8 @@ def _claim(
     for what, column in (("channel", "channel"), ("output", "outputs"), ("bit", "bits")):
         own = column != "channel" and getattr(group, column) is not None
         blamed = set() if own else blamed
-        keys: Keys = ("channels", text, column) if own else ("channels", text)
+        whole: Keys = ("channels", text, "reverse") if prefix else ("channels", text)
+        keys: Keys = ("channels", text, prefix + column) if own else whole
         values = columns[column]
         fresh = [n for n in values if n not in blamed]
         if twice := [n for n in fresh if n in claimed[what]]:
@@ -413,6 +484,10 @@ def _channel(group: ChannelRange, number: int, output: int, bit: int, n: int, pa
 def _refuse_shared_labels(channels: list[Channel], file: TomlFile, problems: list[Problem]) -> None:
     """Reports name a channel by its label: two channels of one name could not be told apart."""
     named: dict[str, int] = {}
+    taken = {d.label for c in channels if c.crossing for d in c.drivers} & {c.label for c in channels}
+    if taken:
+        text = f'a channel is labelled "{min(taken)}", as a line of the matrix is called in reports; give another label'
+        problems.append(file.problem(("channels",), text))
     for channel in channels:
         other = named.setdefault(channel.label, channel.number)
         if other != channel.number:

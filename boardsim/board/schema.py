@@ -13,6 +13,7 @@ from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
 from boardsim.parts.controller import Controller
+from boardsim.parts.diode import Diode
 from boardsim.parts.kinds import kinds
 from boardsim.parts.leads import Leads
 from boardsim.parts.logic import Logic
@@ -163,12 +164,33 @@ class Chain(Record):
         return int(self.count * self.register_.outputs)
 
 
+class Matrix(Record):
+    """Rows and columns of coils: a switch per line, and each coil from a row to a column."""
+
+    rows: str = Field(description="register outputs of the rows, which tie coils to the rail, in order")
+    columns: str = Field(description="register outputs of the columns, which tie coils to ground, in order")
+    row_bits: str | None = Field(None, description="bits of the firmware's image; the outputs if absent")
+    column_bits: str | None = Field(None, description="bits of the firmware's image; the outputs if absent")
+    row_switch: Annotated[AnySwitch, BeforeValidator(_with_kind)] = Field(  # type: ignore[valid-type]
+        description="of each row, from the rail; `switch` of the range is that of each column"
+    )
+    row_clamp: AnyClamp = Field(  # type: ignore[valid-type]
+        description="of each row, from ground; `clamp` of the range is that of each column, to the rail"
+    )
+    diode: named_part(Diode) | None = Field(  # type: ignore[valid-type]
+        None, description="in series with each coil, from its row; without it currents find ways through other coils"
+    )
+
+
 class ChannelRange(Record):
     """Channels that are built alike."""
 
     coil: named_part(Coil, *_further("coil", Coil))  # type: ignore[valid-type]
     switch: Annotated[AnySwitch, BeforeValidator(_with_kind)]  # type: ignore[valid-type]
     clamp: AnyClamp  # type: ignore[valid-type]
+    matrix: Matrix | None = Field(
+        None, description="coils in rows and columns, numbered row by row; switch and clamp are then the columns'"
+    )
     leads: Leads | None = Field(
         None, description="the two wires from the board to the coil; none if it sits on the board"
     )
@@ -182,6 +204,14 @@ class ChannelRange(Record):
     )
     label: Name = Field("channel {n}", description="name for reports; {n} is the channel's number")
     numbers: str | None = Field(None, description="numbers for {n}, in order; the channel numbers if absent")
+    reverse: str | None = Field(
+        None, description="of a full bridge: further channel numbers that fire the same coils backwards, in order"
+    )
+    reverse_outputs: str | None = Field(None, description="their register outputs; their channel numbers if absent")
+    reverse_bits: str | None = Field(None, description="their bits of the firmware's image; their outputs if absent")
+    reverse_label: Name | None = Field(
+        None, description='their name for reports, with {n} as in label; the label and "back" if absent'
+    )
 
     @model_validator(mode="after")
     def _fits_together(self) -> ChannelRange:

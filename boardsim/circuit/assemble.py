@@ -8,11 +8,15 @@ from dataclasses import replace
 from functools import partial
 from typing import Literal
 
+from boardsim.board.matrix import LINES_FROM, Line
 from boardsim.board.reader import Board, Channel
+from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
+from boardsim.circuit.drivers import add_driver, refuse_too_short
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
-from boardsim.circuit.packages import of_package
+from boardsim.circuit.matrix import add_crossing, add_line
+from boardsim.circuit.packages import of_package, of_sum
 from boardsim.circuit.serial import Frames, busy, serial_lines
 from boardsim.errors import InputError
 from boardsim.firing.registers import ChainState, send
@@ -20,7 +24,7 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Assumption, Corner, Stamp
 from boardsim.parts.clocked import Contents, Nets, comparator, flip_flops, output_pin
 from boardsim.parts.elements import GROUND, Drive, Element, Port, Signal, VoltageLaw, plus
-from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule, TogetherRule
+from boardsim.parts.rules import DipRule, HeatRule, Limit, PeakRule, Rule, SumRule, TogetherRule
 from boardsim.quantities import Quantity
 
 RAIL = "rail"
@@ -34,8 +38,8 @@ MOST_CLOCKED = 50_000
 STOPS = 16
 """Steps at least, while a switch that is slow follows an edge."""
 
-Outputs = Callable[[Channel], Stamp]
-"""What drives a channel's pin."""
+Outputs = Callable[[Channel | Line], Stamp]
+"""What drives the pin of a channel's switch, or of a line's."""
 
 
 def windows(board: Board, firing: Firing) -> tuple[Window, ...]:
@@ -72,7 +76,9 @@ def gate_points(
     return tuple(points)
 
 
-def looked_at(points: tuple[tuple[float, float], ...], lasting: float) -> tuple[tuple[float, float], ...]:
+def looked_at(
+    points: tuple[tuple[float, float], ...], lasting: float, moments: tuple[float, ...] = ()
+) -> tuple[tuple[float, float], ...]:
     """The same straight lines with further points after each edge, at every one of which ngspice makes a step.
 
     Parameters
@@ -81,20 +87,23 @@ def looked_at(points: tuple[tuple[float, float], ...], lasting: float) -> tuple[
         [s], [V]
     lasting : float
         How long after an edge. [s]; 0 leaves the points as they are
+    moments : tuple of float
+        Further times after an edge. [s]
 
     Notes
     -----
     Its own estimate of the error lets ngspice step over most of what a slow gate does after its edge, and so miss a tenth of the
     energy that its transistor takes meanwhile.
     """
-    if lasting <= 0:
+    if lasting <= 0 and not moments:
         return points
+    steps = sorted({*(lasting * k / STOPS for k in range(1, STOPS + 1) if lasting > 0), *moments})
+    clear = lasting / STOPS / 2 if lasting > 0 else steps[0] / 2  # of the next edge
     found: list[tuple[float, float]] = []
     for (t, volts), (then, _) in itertools.pairwise(points):
         found.append((t, volts))
         if found[:-1] and found[-2][1] != volts:
-            stops = (t + lasting * k / STOPS for k in range(1, STOPS + 1))
-            found += [(at, volts) for at in stops if at < then - lasting / STOPS / 2]
+            found += [(t + step, volts) for step in steps if t + step < then - clear]
     return (*found, points[-1])
 
 
@@ -110,7 +119,7 @@ class Assembly:
         self.assumptions: dict[Assumption, None] = {}
         self.assumed: dict[int | None, dict[str, None]] = {}
         self.rest: dict[str, float] = {}
-        self.totals: dict[tuple[str, str, PeakRule, str], list[tuple[int, Signal]]] = {}
+        self.totals: dict[tuple[str, str, SumRule, str], list[tuple[int, Signal]]] = {}
         self.heats: dict[tuple[str, str], list[tuple[int, HeatRule]]] = {}
         self.commons: dict[str, str] = {}
         self.together: dict[tuple[str, str, TogetherRule], list[int]] = {}
@@ -141,7 +150,7 @@ class Assembly:
         for name, inner in stamp.inside:
             self.add(inner, channel, name, label, package)
 
-    def add_common(self, channel: Channel, b: str, corner: Corner) -> str:
+    def add_common(self, channel: Channel | Line, b: str, corner: Corner) -> str:
         """Where a channel's clamp ends: at node `b`, or at what its package has in common, which is added once."""
         package = channel.package or channel.label
         node = self.commons.get(package, f"common{len(self.commons)}")
@@ -156,10 +165,10 @@ class Assembly:
     def add_totals(self) -> None:
         """The sums over each package, and their rules."""
         for (package, part, rule, unit), shares in self.totals.items():
-            quantity = f"{rule.quantity}, {package}"
+            quantity, whole_sum = of_sum(rule, package)
             self.signals[None, quantity] = plus(*(signal for _, signal in shares))
             self.units[None, quantity] = unit
-            self.rules.append(PlacedRule(replace(rule, quantity=quantity), None, part, package))
+            self.rules.append(PlacedRule(whole_sum, None, part, package))
         for (package, part), heated in self.heats.items():
             # A package heats by its switches and by what else of it is used, such as its clamp diodes.
             powers = tuple(dict.fromkeys(pair for _, rule in heated for pair in rule.powers))
@@ -176,8 +185,9 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
     Raises
     ------
     InputError
-        If the pattern is too long for clocked registers.
+        If the pattern is too long for clocked registers, or has pulses too short for the models of switches.
     """
+    refuse_too_short(board, firing)
     parts = Assembly()
     add_rail(parts, board, corner)
     if board.logic.derived:
@@ -190,12 +200,23 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
         frames = [(start - window.start, image) for start, image in firing.sent if start >= window.start]
         before = [image for start, image in firing.sent if start < window.start]
         outputs = _clocked(parts, board, frames, before[-1] if before else 0, corner, window)
-    for channel in board.channels:
-        if channel.number in window.channels:
-            add_channel(parts, board, corner, channel, outputs(channel))
+    add_loads(parts, board, corner, outputs, window)
     deck = finished(parts, board, corner, window)
     stretches = tuple((a + window.start, b + window.start) for a, b in busy(frames, board.chain))
     return replace(deck, digital=detail == "clocked", clocked=stretches)
+
+
+def add_loads(parts: Assembly, board: Board, corner: Corner, outputs: Outputs, window: Window) -> None:
+    """Lines, and the channels of a window."""
+    for line in board.lines:
+        add_line(parts, board, corner, line, outputs(line), RAIL)
+    for channel in board.channels:
+        if channel.number not in window.channels:
+            continue
+        if channel.crossing is not None:
+            add_crossing(parts, board, corner, channel, channel.crossing)
+        else:
+            add_channel(parts, board, corner, channel, outputs(channel))
 
 
 def refuse_too_many(board: Board, firing: Firing) -> None:
@@ -220,14 +241,14 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
         )
 
 
-def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, channel: Channel) -> Stamp:
+def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, driver: Channel | Line) -> Stamp:
     """An output that does what the bits say, as a source."""
-    register, name = board.chain.register_, f"c{channel.number}_q"
+    register, name = board.chain.register_, f"{driver.stem}_q"
     volts = 1.0 if board.logic.derived else board.logic.level(corner)
-    points = gate_points(firing.levels[channel.output], window, volts, register.output_edge.typ)
-    points = looked_at(points, channel.switch.follows_within())
+    points = gate_points(firing.levels[driver.output], window, volts, register.output_edge.typ)
+    points = looked_at(points, driver.switch.follows_within(), driver.switch.moments())
     if board.logic.derived:
-        return known_output(register, name, channel.output, points)
+        return known_output(register, name, driver.output, points)
     driven: Stamp = register.drive(name, name, points)
     return driven
 
@@ -248,9 +269,9 @@ def _clocked(parts: Assembly, board: Board, frames: Frames, image: int, corner: 
     stages = flip_flops(register, chain.count, nets, Contents(state.shift, state.storage), volts)
     parts.add(Stamp(elements=(*rail, *stages)), None, register.title or "register", "chain")
 
-    def driven(channel: Channel) -> Stamp:
-        name = f"c{channel.number}_q"
-        pin = output_pin(register, name, name, channel.output, LOGIC, loads_rail=board.logic.derived)
+    def driven(driver: Channel | Line) -> Stamp:
+        name = f"{driver.stem}_q"
+        pin = output_pin(register, name, name, driver.output, LOGIC, loads_rail=board.logic.derived)
         return Stamp(elements=pin)
 
     return driven
@@ -283,8 +304,7 @@ def add_logic(parts: Assembly, board: Board, corner: Corner) -> None:
 def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> Deck:
     """What was collected as a deck: sums over packages and over all coils, and the rail's own rule."""
     parts.add_totals()
-    total = plus(*(s for (_, quantity), s in parts.signals.items() if quantity == "i_coil"))
-    parts.signals[None, "i_total"] = total
+    parts.signals[None, "i_total"] = plus(*drawn(parts.signals))
     parts.units[None, "i_total"] = "A"
     parts.rules.append(PlacedRule(_rail_rule(board), None, "coil rail", "board"))
     if board.logic.derived:
@@ -305,13 +325,17 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
         {channel: tuple(names) for channel, names in parts.assumed.items()},
         _measures(parts.signals),
         parts.rest,
+        lines={line.number: line.channels for line in board.lines},
     )
 
 
 def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel, driven: Stamp) -> None:
     """A channel behind what drives its pin."""
-    k, name, label = channel.number, f"c{channel.number}", channel.label
-    pin, load, stage = f"{name}_q", f"{name}_d", f"{name}_s"
+    if channel.opposite is not None:
+        add_bridge_channel(parts, board, corner, channel, driven, RAIL)
+        return
+    k, name, label = channel.number, channel.stem, channel.label
+    load = f"{name}_d"
     coil_end = load if channel.leads is None else f"{name}_k"
     low = channel.switch.side == "low"
     parts.add(driven, k, board.chain.register_.title or "register", label)
@@ -320,19 +344,7 @@ def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel,
     parts.add(coil, k, channel.coil_name, label)
     if channel.leads is not None:
         parts.add(channel.leads.stamp(f"{name}_lead", coil_end, load, corner, board.around), k, "leads", label)
-    switch = channel.switch.stamp(stage, pin, load, corner, RAIL)
-    parts.add(switch, k, channel.switch.part.title or "switch", label, channel.package)
-    end = coil_end if channel.clamp.at_the_coil() else load
-    if channel.clamp.across == "coil":
-        held = (end, RAIL) if low else (GROUND, end)
-    else:
-        held = (load, GROUND) if low else (RAIL, load)
-    end_of_clamp = parts.add_common(channel, held[1], corner)
-    clamp = channel.clamp.stamp(f"{name}_c", held[0], end_of_clamp, corner, channel.switch.control(stage))
-    parts.add(clamp, k, f"{channel.clamp.kind} clamp", label, channel.package or label)
-    if channel.clamp.holds_switch:
-        linear = Stamp(rules=channel.switch.linear(corner))
-        parts.add(linear, k, channel.switch.part.title or "switch", label, channel.package)
+    add_driver(parts, corner, channel, load, coil_end if channel.clamp.at_the_coil() else load, RAIL)
 
 
 def _rail_rule(board: Board) -> Rule:
@@ -356,7 +368,7 @@ def _current_rule(most: Quantity) -> Rule:
 
 
 def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
-    """The readings that plain ngspice can print by itself: extremes of single vectors."""
+    """The readings that plain ngspice can print by itself: extremes of vectors, and of sums of them."""
     wanted = {
         "v_rail": ("MIN", "MAX"),
         "i_supply": ("MAX",),
@@ -368,7 +380,12 @@ def _measures(signals: dict[tuple[int | None, str], Signal]) -> tuple[str, ...]:
         wanted["v_logic"] = ("MIN",)
     lines = []
     for (channel, quantity), signal in signals.items():
-        if quantity in wanted and len(signal) == 1 and signal[0][0] == 1.0:
-            prefix = "board" if channel is None else f"c{channel}"
-            lines += [f".meas tran {prefix}_{quantity}_{how.lower()} {how} {signal[0][1]}" for how in wanted[quantity]]
+        if quantity in wanted and signal:
+            # ngspice takes no sums but in par('...').
+            alone = len(signal) == 1 and signal[0][0] == 1.0
+            read = signal[0][1] if alone else f"par('{'+'.join(f'({share!r})*{name}' for share, name in signal)}')"
+            prefix = (
+                "board" if channel is None else f"c{channel}" if channel < LINES_FROM else f"line{channel - LINES_FROM}"
+            )
+            lines += [f".meas tran {prefix}_{quantity}_{how.lower()} {how} {read}" for how in wanted[quantity]]
     return tuple(lines)

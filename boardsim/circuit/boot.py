@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
+from boardsim.board.matrix import Line
 from boardsim.board.power_up import ControlLine
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.assemble import (
@@ -13,8 +14,8 @@ from boardsim.circuit.assemble import (
     Assembly,
     Detail,
     Outputs,
-    add_channel,
     add_lines,
+    add_loads,
     add_logic,
     add_rail,
     finished,
@@ -125,8 +126,7 @@ def boot_deck(board: Board, boot: Boot, corner: Corner, detail: Detail) -> Deck:
         parts.add(Stamp(elements=rails, probes=(Probe("v_logic", voltage(LOGIC), "V"),)), None, "logic rail", "board")
     add_rail(parts, board, corner, "supply_set")
     outputs = _chain(parts, board, boot, volts, detail)
-    for channel in board.channels:
-        add_channel(parts, board, corner, channel, outputs(channel))
+    add_loads(parts, board, corner, outputs, window)
     deck = finished(parts, board, corner, window)
     rules = () if boot.reset is not None else tuple(p for p in deck.rules if isinstance(p.rule, _JUDGED))
     clocked = detail == "clocked"
@@ -174,14 +174,16 @@ def _chain(parts: Assembly, board: Board, boot: Boot, volts: float, detail: Deta
     stamp = Stamp(elements=tuple(elements), probes=tuple(probes), assumptions=(*numbers, *pins))
     parts.add(stamp, None, register.title or "register", "chain")
 
-    def driven(channel: Channel) -> Stamp:
-        name = f"c{channel.number}_q"
+    def driven(driver: Channel | Line) -> Stamp:
+        name = f"{driver.stem}_q"
         leaning = None
         if not register.open_drain:
-            upwards = (channel.switch.active == "high") == boot.leans_on
+            # Both legs of a bridge at the same level would give its coil nothing.
+            to_on = boot.leans_on and (isinstance(driver, Line) or driver.forwards)
+            upwards = (driver.switch.active == "high") == to_on
             leaning = Leaning(upwards, register.off_leakage.typ, f"min(max(V({LOGIC}),V({RAIL})),{volts!r})")
         loads = board.logic.derived
-        return Stamp(elements=output_pin(register, name, name, channel.output, LOGIC, ENABLED, leaning, loads))
+        return Stamp(elements=output_pin(register, name, name, driver.output, LOGIC, ENABLED, leaning, loads))
 
     return driven
 
@@ -214,13 +216,13 @@ def _control(board: Board, boot: Boot, line: ControlLine | None, node: str, low_
 
 
 def _known_stages(board: Board, boot: Boot) -> Iterator[Element]:
-    """The storage stage of every output that a channel is wired to, computed bit by bit: a source of 0 V or 1 V each.
+    """The storage stage of every output that drives a switch, computed bit by bit: a source of 0 V or 1 V each.
 
     A clear that empties it too is left out: what it wakes up with then counts until the first frame, which errs to the safe side.
     """
     chain, register = board.chain, board.chain.register_
     state = ChainState(chain.outputs, boot.contents.shift, boot.contents.storage)
-    changes: dict[int, list[tuple[float, bool]]] = {c.output: [] for c in board.channels}
+    changes: dict[int, list[tuple[float, bool]]] = {d.output: [] for d in board.drivers}
     on_wire = 0
     for start, image in boot.frames:
         state, on_wire = send(state, image, chain, board.spi_mode, on_wire)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 from boardsim.parts.base import Assumption, Corner
@@ -46,7 +46,7 @@ class Window:
 
 @dataclass(frozen=True)
 class PlacedRule:
-    """A rule of a part at its place on the board."""
+    """A rule of a part at its place on the board; `channel` is the place of a line where it is one's (`Deck.lines`)."""
 
     rule: Rule
     channel: int | None
@@ -74,6 +74,8 @@ class Deck:
         Whether registers are in it as flip-flops.
     clocked : tuple of (start, stop)
         Stretches in which the edges of clocked lines set the points, however finely the rest is integrated. [s]
+    lines : mapping of place to tuple of int
+        Places that are no channels but rows and columns of a matrix, and the channels along each.
     """
 
     netlist: str
@@ -90,6 +92,7 @@ class Deck:
     rest: Mapping[str, float]
     digital: bool = False
     clocked: tuple[tuple[float, float], ...] = ()
+    lines: Mapping[int, tuple[int, ...]] = field(default_factory=dict)
 
     def text(self, settings: Settings, measures: bool = True) -> str:
         """The whole deck as plain ngspice runs it."""

@@ -5,7 +5,17 @@ from __future__ import annotations
 from dataclasses import replace
 
 from boardsim.parts.base import Stamp
-from boardsim.parts.rules import EnergyRule, HeatRule, MeanRule, PeakRule, PulseRule, Rule
+from boardsim.parts.rules import EnergyRule, HeatRule, LeastRule, MeanRule, PeakRule, PulseRule, Rule, SumRule
+
+
+def of_sum(rule: SumRule, package: str) -> tuple[str, SumRule]:
+    """The quantity that a package's channels add up to, by a name of the package's own, and the rule that judges it."""
+    if isinstance(rule, PeakRule):
+        quantity = f"{rule.quantity}, {package}"
+        return quantity, replace(rule, quantity=quantity)
+    (name,) = rule.quantities
+    quantity = f"{name}, {package}"
+    return quantity, replace(rule, quantities=(quantity,))
 
 
 def of_package(stamp: Stamp, package: str) -> Stamp:
@@ -22,7 +32,7 @@ def of_package(stamp: Stamp, package: str) -> Stamp:
 
     def rule_of(rule: Rule) -> Rule:
         match rule:
-            case PeakRule():
+            case PeakRule() | LeastRule():
                 return replace(rule, quantity=named(rule.quantity))
             case MeanRule() | PulseRule():
                 return replace(rule, quantities=tuple(named(q) for q in rule.quantities))

@@ -23,8 +23,11 @@ _FATAL = re.compile(
     r"|source stepping failed|iteration limit reached|circuit not parsed",
     re.IGNORECASE,
 )
+# ngspice writes what it is about to try without an end of line, so that what became of the try stands behind it.
 _RETRIED = re.compile(
-    r"gmin stepping failed|source stepping failed|iteration limit reached|^warning:\s*singular matrix", re.IGNORECASE
+    r"gmin stepping failed|source stepping failed|iteration limit reached"
+    r"|^(?:trying gmin =\s*\S+\s+|supplies reduced to\s*\S+\s*%\s+)*warning:\s*singular matrix",
+    re.IGNORECASE,
 )
 
 

@@ -220,7 +220,7 @@ class Engine:
         kept_deck, kept_log = self.keep / _KEPT_DECK, self.keep / _KEPT_LOG
         shutil.copyfile(deck, kept_deck)
         if files := _model_files(deck):
-            text += f" (in it are vendors' models, which can be the cause: {', '.join(files)})"
+            text += f" (the deck holds vendors' models, which can be the cause: {', '.join(files)})"
         log = self.folder / "ngspice.log"
         if log.exists():
             shutil.copyfile(log, kept_log)

@@ -13,8 +13,9 @@ from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import Keys, TomlFile
 from boardsim.errors import InputError, Problem
 from boardsim.firing.bus import LINES, Line, Recorded, Replayed, disabled_in, measured, replay
+from boardsim.firing.lines import active_levels, channel_times, line_times
 from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, snapped
-from boardsim.firing.schedule import Firing, on_times, settling_time
+from boardsim.firing.schedule import Firing, settling_time
 from boardsim.firing.vcd import Dump, read_dump
 from boardsim.parts.record import Name, Record, name_from
 from boardsim.quantities import POSITIVE_TIME, TIME, Quantity, in_units
@@ -123,7 +124,7 @@ class _Decoding:
             word: Line(np.round(s.times * dump.unit, 12), (s.levels == 1) ^ (word in raw.inverted))
             for word, s in dump.signals.items()
         }
-        self.active = {c.output: c.switch.active == "high" for c in board.channels}
+        self.active = active_levels(board)
         self.delay = board.chain.register_.propagation.typ
 
     def refuse(self, keys: Keys, text: str) -> InputError:
@@ -202,7 +203,7 @@ class _Decoding:
         if (asked := self.raw.duration) is not None:
             self._refuse_duration(asked.typ, snapped(stop - start), unfinished)
             duration = max(duration, asked.typ)
-        on = {c.number: on_times(inside[c.output], self.active[c.output], duration) for c in self.board.channels}
+        on = channel_times(self.board, inside, self.active, duration)
         pulses = by_start(
             Pulse(number, float(a), snapped(float(b - a))) for number, rows in on.items() for a, b in rows.tolist()
         )
@@ -229,7 +230,21 @@ class _Decoding:
         longest = float((frames.latched - frames.begun).max()) if len(frames.latched) else 0.0
         span = "the capture's own" if asked is None else "the capture's"
         sent = len(frames.latched)
-        firing = Firing(duration, inside, on, (), (), (), (), sent, longest, pulses, recorded=recorded, span=span)
+        firing = Firing(
+            duration,
+            inside,
+            on,
+            (),
+            (),
+            (),
+            (),
+            sent,
+            longest,
+            pulses,
+            recorded=recorded,
+            span=span,
+            lines=line_times(self.board, on),
+        )
         name = self.raw.name or name_from(self.file.path.stem, "capture")
         return Pattern(self.file.path, name, None, pulses, firing, span)
 
@@ -271,7 +286,7 @@ class _Decoding:
     def _on_at(self, edges: Mapping[int, tuple[tuple[float, bool], ...]], at: float) -> tuple[int, ...]:
         """Channels that are on at a time from the start. [s]"""
         level = {o: [lvl for t, lvl in rows if t <= at][-1] for o, rows in edges.items()}
-        return tuple(c.number for c in self.board.channels if level[c.output] == self.active[c.output])
+        return tuple(c.number for c in self.board.channels if all(level[o] == self.active[o] for o in c.outputs))
 
     def _cut(self, key: str, on: tuple[int, ...], replayed: Replayed, at: float) -> InputError:
         """A stretch that begins or ends while channels are on; names the nearest time at which none is."""

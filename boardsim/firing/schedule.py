@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
 from boardsim.board.reader import Board
 from boardsim.firing.bus import Recorded
+from boardsim.firing.lines import Images, active_levels, channel_times, ghost_of, line_times
 from boardsim.firing.pattern import Pattern, Pulse, snapped
 from boardsim.firing.registers import ChainState, frame_time, last_bit, shift_in
 from boardsim.parts.controller import Controller
@@ -57,11 +58,15 @@ class MovedPulse:
 
 @dataclass(frozen=True)
 class WrongOutput:
-    """From this time on a channel's output does not do what was commanded. [s]"""
+    """From this time on a channel's output does not do what was commanded. [s]
+
+    `by` are the channels of a matrix that were commanded and together turn on one that was not, across their lines.
+    """
 
     channel: int
     at: float
     commanded: bool
+    by: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -76,7 +81,7 @@ class Firing:
         Every output that a channel is wired to, from (0, initial level) on; times are latch edges plus
         propagation. [s]
     on : mapping of channel to (n, 2) array
-        When the channel's switch is turned on and off. [s]
+        When the channel's switch is turned on and off; of a matrix, when row and column both are. [s]
     moved : tuple of MovedPulse
     merged : tuple of Pulse
         Pulses that start while the same channel is still commanded on.
@@ -98,6 +103,8 @@ class Firing:
         When the controller starts each register frame, and the image that it sends. [s]
     span : str
         Whose time it is that averages are taken over, such as "the pattern's".
+    lines : mapping of line to (n, 2) array
+        The on-times of all channels along each row and column of a matrix: when it carries current. [s]
     """
 
     duration: float
@@ -114,6 +121,11 @@ class Firing:
     recorded: Recorded | None = None
     sent: tuple[tuple[float, int], ...] = ()
     span: str = "the pattern's"
+    lines: Mapping[int, Floats] = field(default_factory=dict)
+
+    def spans(self, place: int) -> Floats:
+        """On-times of a channel; of a line those of the channels along it, which overlap where several are on. (n, 2) [s]"""
+        return self.lines[place] if place in self.lines else self.on[place]
 
     @property
     def averaged_over(self) -> str:
@@ -147,7 +159,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     chain, controller = board.chain, board.controller or Controller()
     spent = frame_time(chain)
     delay = chain.register_.propagation.typ
-    bit_of = {c.number: c.bit for c in board.channels}
+    image_of = Images(board)
     timed = [(p, on_ticks(p, controller.tick.typ)) for p in pattern.pulses]
     asked, merged = _changes(timed)
     late = controller.spi_mode == 1
@@ -155,10 +167,9 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     state = shift_in(ChainState(chain.outputs), 0, chain)  # all off before the pattern starts
     if late:  # a second one: what the first left on the wire is known
         state = shift_in(state, 0, chain, last_bit(0, chain))
-    watched = {c.output: c for c in board.channels}
-    active = {c.output: c.switch.active == "high" for c in board.channels}
-    levels: dict[int, list[tuple[float, bool]]] = {o: [(0.0, bool(state.storage >> o & 1))] for o in watched}
-    wanted: dict[int, bool] = dict.fromkeys(bit_of, False)
+    active = active_levels(board)
+    levels: dict[int, list[tuple[float, bool]]] = {o: [(0.0, bool(state.storage >> o & 1))] for o in active}
+    wanted = {c.number: False for c in board.channels}
     latched: dict[tuple[int, float], float] = {}
     wrong: dict[int, WrongOutput] = {}
     _compare(state, wanted, board, 0.0, active, wrong)
@@ -171,8 +182,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         while i < len(asked) and asked[i][0] <= start:
             at, channel, turn_on = asked[i]
             wanted[channel] = turn_on
-            mask = 1 << bit_of[channel]
-            image = image | mask if turn_on else image & ~mask
+            image = image_of.changed(channel, turn_on)
             latched[channel, at] = start + spent + delay
             i += 1
         latch = start + spent
@@ -182,7 +192,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         before, state = state, shift_in(state, image, chain, on_wire if late else None)
         on_wire = last_bit(image, chain) if late else 0
         changed = before.storage ^ state.storage
-        for output in watched:
+        for output in active:
             if changed >> output & 1:
                 levels[output].append((latch + delay, bool(state.storage >> output & 1)))
         _compare(state, wanted, board, latch + delay, active, wrong)
@@ -195,7 +205,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     last = max([latch + delay, *(p.stop for pair in timed for p in pair)])
     # Also where a duration was asked for: what the last turn-off does to its switch comes after it.
     duration = max(pattern.duration or 0.0, last + settling_time(board))
-    on = {c.number: on_times(levels[c.output], active[c.output], duration) for c in board.channels}
+    on = channel_times(board, levels, active, duration)
     return Firing(
         duration,
         {o: tuple(v) for o, v in levels.items()},
@@ -210,6 +220,7 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         controller.jitter.max,
         sent=tuple(sent),
         span=pattern.span,
+        lines=line_times(board, on),
     )
 
 
@@ -283,21 +294,6 @@ def _compare(
 ) -> None:
     """Hold what the outputs do against what the pattern meant for the coil on each of them."""
     for c in board.channels:
-        on = bool(state.storage >> c.output & 1) == active[c.output]
+        on = all(bool(state.storage >> output & 1) == active[output] for output in c.outputs)
         if on != wanted[c.number] and c.number not in wrong:
-            wrong[c.number] = WrongOutput(c.number, at, wanted[c.number])
-
-
-def on_times(levels: Sequence[tuple[float, bool]], active: bool, end: float) -> Floats:
-    """On-times of a channel, whose switch is on at output level `active`, until `end` [s]: rows (on, off), (n, 2). [s]"""
-    rows: list[tuple[float, float]] = []
-    since: float | None = None
-    for t, level in levels:
-        if (level == active) and since is None:
-            since = t
-        elif (level != active) and since is not None:
-            rows.append((since, t))
-            since = None
-    if since is not None:
-        rows.append((since, end))
-    return np.array(rows, dtype=np.float64).reshape(-1, 2)
+            wrong[c.number] = WrongOutput(c.number, at, wanted[c.number], ghost_of(c, wanted) if on else ())

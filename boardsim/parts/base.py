@@ -19,7 +19,7 @@ from pydantic_core import InitErrorDetails, PydanticCustomError
 from boardsim.parts.elements import Element, Port, Probe, Signal
 from boardsim.parts.proof import Proof
 from boardsim.parts.record import Name, Record, named_like, said, shown
-from boardsim.parts.rules import HeatRule, PeakRule, Rule, TogetherRule, linear_unknown
+from boardsim.parts.rules import HeatRule, Rule, SumRule, TogetherRule, linear_unknown
 from boardsim.quantities import Bound, Quantity
 
 if TYPE_CHECKING:
@@ -35,6 +35,8 @@ class Part(Record):
     role: ClassVar[str] = ""
     side: ClassVar[Literal["low", "high"]] = "low"
     """Of a switch: whether it ties the coil to ground, and the coil's other end lies at the rail, or the other way round."""
+    both_ways: ClassVar[bool] = False
+    """Of a switch: whether its coil lies between two of it, each on a channel number of its own, and takes either direction."""
     in_the_chain: ClassVar[bool] = False
     """Of a switch: whether it is an output of the chain's own registers."""
     holds_switch: ClassVar[bool] = False
@@ -50,6 +52,14 @@ class Part(Record):
     def tolerances(self) -> dict[str, Quantity]:
         """What the corners vary in this part, by the keys of `Corner.ends`."""
         return {}
+
+    def tolerances_too(self) -> tuple[tuple[str, Quantity], ...]:
+        """Further numbers that the same ends vary, such as those of a stage's second transistor."""
+        return ()
+
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """Numbers whose worse end counts in every corner, or that lie within one that `tolerances` holds."""
+        return ()
 
     def implied(self) -> dict[str, Quantity]:
         """Numbers by the names of fields that follow from others, or are assumed where the field was not given."""
@@ -73,6 +83,10 @@ class Part(Record):
 
     def held_off(self) -> bool:
         """Whether a switch has a resistor of its own that keeps it off while nothing drives it."""
+        return False
+
+    def clamped(self) -> bool:
+        """Whether a switch has a clamp in its own package, which its stamp holds."""
         return False
 
     def control(self, name: str) -> str:
@@ -133,6 +147,10 @@ class Part(Record):
         """Highest current that a switch draws from an output that stays at `volts` behind `resistance`. [V], [ohm] -> [A]"""
         return 0.0
 
+    def input_threshold(self) -> Quantity | None:
+        """Of a switch with a logic input of its own, between which voltages that switches; None of any other. [V]"""
+        return None
+
     def edge_input(self, volts: float, resistance: float) -> tuple[float, float]:
         """Charge that a switch takes from an output that rises to `volts` behind `resistance`, and the current at first.
 
@@ -140,6 +158,22 @@ class Part(Record):
         """
         current = self.steady_input(volts, resistance)
         return math.inf if current > 0 else 0.0, current
+
+    def delays(self) -> tuple[float, float]:
+        """By how much a switch turns on and off later than an edge at its input by design, at most; what its gate takes besides
+        is left out. [s]
+        """
+        return 0.0, 0.0
+
+    def steady_for(self) -> float:
+        """How long a level at a switch's input has to last at least for its model to hold. [s]"""
+        return 0.0
+
+    def moments(self) -> tuple[float, ...]:
+        """When, after an edge at a switch's input, a run makes a step whatever its estimate of the error: where the switch
+        itself makes an edge that comes late and is short against how long it took to come. [s]
+        """
+        return ()
 
     @classmethod
     def candidates(cls, shelf: Shelf, coil: Coil, rail: float) -> tuple[Self, ...]:
@@ -237,14 +271,14 @@ class Total:
 
     Attributes
     ----------
-    rule : PeakRule, HeatRule or TogetherRule
+    rule : PeakRule, PulseRule, MeanRule, HeatRule or TogetherRule
         Its quantity is that of the sum.
     signal : Signal
         This channel's share of the sum; empty where the rule sums powers or energies by itself.
     unit : str
     """
 
-    rule: PeakRule | HeatRule | TogetherRule
+    rule: SumRule | HeatRule | TogetherRule
     signal: Signal = ()
     unit: str = ""
 

@@ -157,9 +157,14 @@ def straight_line(points: Sequence[tuple[float, float]]) -> tuple[float, float]:
 
 
 def breakdown_junction(
-    name: str, collector: str, volts: float, forward: float = _LEAST_RISE, farads: float = 0.0
+    name: str,
+    collector: str,
+    volts: float,
+    forward: float = _LEAST_RISE,
+    farads: float = 0.0,
+    emitter: str = GROUND,
 ) -> Junction:
-    """What conducts from the collector to the emitter at ground above V_(BR)CEO.
+    """What conducts from the collector to the emitter above V_(BR)CEO.
 
     Parameters
     ----------
@@ -169,6 +174,8 @@ def breakdown_junction(
         Saturation current for a collector below ground; next to nothing for a transistor without a diode there. [A]
     farads : float
         Its capacitance at 0 V. [F]
+    emitter : str
+        Where it conducts to.
 
     Notes
     -----
@@ -181,7 +188,7 @@ def breakdown_junction(
         "D",
         {"IS": forward, "N": 1.0, "BV": volts, "IBV": _BREAKDOWN_CURRENT, "CJO": farads, "TNOM": 25.0},
     )
-    return Junction(name, GROUND, collector, model)
+    return Junction(name, emitter, collector, model)
 
 
 def thermal(current: float, saturation_current: float) -> float:

@@ -37,7 +37,7 @@ from boardsim.parts.temperature import (
     reverse_current,
     thermal_voltage,
 )
-from boardsim.parts.vendor.beside import stored
+from boardsim.parts.vendor.beside import blocking, stored
 from boardsim.parts.vendor.model import A_MODEL, vendors_model
 from boardsim.quantities import (
     CAPACITANCE,
@@ -267,8 +267,10 @@ class Diode(Part):
             },
         )
         elements: list[Element] = [Junction(name, anode, cathode, model)]
+        beside = Stamp()
         if self.model is not None:
-            elements = [self.model.part(name, {"anode": anode, "cathode": cathode}, corner.junction)]
+            beside = self._beside(name, label, corner.junction)
+            elements = [self.model.part(name, {"anode": anode, "cathode": cathode}, corner.junction), *beside.elements]
         elif self.leakage and self.reverse_voltage is not None:
             reverse = reverse_current(self._leakages(), corner.junction)
             elements.append(Resistor(f"{name}_leak", cathode, anode, self.reverse_voltage.typ / reverse))
@@ -325,11 +327,17 @@ class Diode(Part):
                 Probe(v, voltage(anode, cathode), "V"),
                 Probe(v_r, scaled(-1, voltage(anode, cathode)), "V"),
                 Probe(i, through, "A"),
+                *beside.probes,
             ),
             ports=(Port(label, ((v, i),), holds=holds),),
-            rules=rules,
+            rules=(*rules, *beside.rules),
             assumptions=self._assumed(name_of),
         )
+
+    def _beside(self, name: str, label: str, t: float) -> Stamp:
+        """What shows whether a vendor's model stands the rated voltage. [K]"""
+        leaks = reverse_current(self._leakages(), t) if self.leakage else 0.0
+        return blocking(self.model, name, label, self.reverse_voltage, leaks, self.title or label, t)
 
     def _assumed(self, part: str) -> tuple[Assumption, ...]:
         if self.model is not None:

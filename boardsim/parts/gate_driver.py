@@ -3,16 +3,20 @@
 from __future__ import annotations
 
 import math
-from typing import Annotated
+from typing import Annotated, Any
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
+from boardsim.errors import QuantityError
+from boardsim.parts.base import Corner
 from boardsim.parts.elements import GROUND, Capacitor, Element, Resistor, VoltageLaw
-from boardsim.parts.record import Record
-from boardsim.quantities import POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity, assume
+from boardsim.parts.record import Record, said, shown
+from boardsim.quantities import POSITIVE_RESISTANCE, POSITIVE_TIME, TIME, VOLTAGE, Quantity, assume, in_units
 
 _OHMS = 1e3  # of the lags, whose product with their capacitance counts alone
-_STEEP = 200.0  # slope of the comparators: a gate that crosses an eighth of its voltage is then 1.5 % of the lag late
+_TEN_TO_NINETY = (
+    2 * 2 * math.atanh(0.8)
+)  # of the outputs' edges: 10 to 90 % of (1 + tanh x) / 2, at half a lag's speed per tau
 _INPUT = 0.05  # [V], half width of the input's threshold
 
 
@@ -23,7 +27,10 @@ class GateDriver(Record):
     -----
     The input as 0 or 1, u = (1 + tanh((v - v_th) / w)) / 2, goes through two lags dy/dt = (u - y) / tau with tau ln 2 = t_d and
     tau ln 2 = t_d + t_dead, so that they are at one half a delay, and a delay and the dead time, after an edge. A gate turns on
-    when both are past one half and off when the first is. Holds for pulses and pauses that are long against both times: after
+    when both are past one half and off when the first is: each output is (1 + tanh(s (y - 1/2))) / 2 of its supply. A lag passes
+    one half at dy/dt = 1 / (2 tau), so that s = 4 artanh(0.8) tau / t_edge makes every edge, from 10 to 90 %, last t_edge whatever
+    delay and dead time are. The edge must not be longer than the delay, else its foot would be there before the input's.
+    Holds for pulses and pauses that are long against both times: after
     seven times t_d + t_dead a lag is within 1 % of its end. The outputs give the driver's supply, or the coil rail where
     that is lower. What the driver takes from its supply is left out; the high side's is taken as always there (no bootstrap
     capacitor that runs empty).
@@ -36,6 +43,11 @@ class GateDriver(Record):
     delay: Annotated[Quantity, POSITIVE_TIME] = assume(
         "100 ns", POSITIVE_TIME, "propagation delay of a half-bridge driver, from memory"
     )
+    edge: Annotated[Quantity, POSITIVE_TIME] = assume(
+        "10 ns",
+        POSITIVE_TIME,
+        "10 to 90 % of an output that nothing loads: gates slow it by their charge at its resistance, from memory",
+    )
     output_resistance: Annotated[Quantity, POSITIVE_RESISTANCE] = assume(
         "5 ohm", POSITIVE_RESISTANCE, "output stage of an ampere or two, from memory"
     )
@@ -44,7 +56,28 @@ class GateDriver(Record):
     )
     pulldown: Annotated[Quantity, POSITIVE_RESISTANCE] | None = Field(None, description="at its input")
 
-    def elements(self, name: str, pin: str, rail: str) -> tuple[tuple[Element, ...], str, str]:
+    @model_validator(mode="before")
+    @classmethod
+    def _is_a_table(cls, value: Any) -> Any:
+        if isinstance(value, str):
+            needed = 'driver = { supply = "12 V", dead_time = "500 ns" }'
+            more = ", ".join(name for name in cls.model_fields if name not in ("supply", "dead_time"))
+            raise said(
+                f"gate drivers have no records by name, and {shown(value)} is one; give its numbers in place, such as {needed}; "
+                f"it can also have: {more}"
+            )
+        return value
+
+    @model_validator(mode="after")
+    def _edge_within_delay(self) -> GateDriver:
+        if self.edge.typ > self.delay.min:
+            raise QuantityError(
+                f"edge of {in_units(self.edge.typ, 's')} is longer than the delay of {in_units(self.delay.min, 's')}, and an output "
+                "does not move before its input; give an edge that nothing loads, or the delay up to its middle"
+            )
+        return self
+
+    def elements(self, name: str, pin: str, rail: str, corner: Corner) -> tuple[tuple[Element, ...], str, str]:
         """The input and both lags; what the high and the low gate get, as expressions. [V]"""
         level = f"(V({pin})-{self.threshold.typ!r})/{_INPUT!r}"
         first = self.delay.typ / math.log(2)
@@ -54,19 +87,21 @@ class GateDriver(Record):
             Resistor(f"{name}_y1", f"{name}_u", f"{name}_y1", _OHMS),
             Capacitor(f"{name}_y1", f"{name}_y1", GROUND, first / _OHMS),
         ]
-        up, down = _past(f"V({name}_y1)"), _past(f"V({name}_y1)", -1)
+        lag, steep = f"V({name}_y1)", _TEN_TO_NINETY * first / self.edge.typ
+        up, down = _past(lag, steep), _past(lag, -steep)
         if self.dead_time.min > 0:
             found += [
                 Resistor(f"{name}_y2", f"{name}_u", f"{name}_y2", _OHMS),
                 Capacitor(f"{name}_y2", f"{name}_y2", GROUND, both / _OHMS),
             ]
-            up, down = f"{up}*{_past(f'V({name}_y2)')}", f"{down}*{_past(f'V({name}_y2)', -1)}"
+            lag, steep = f"V({name}_y2)", _TEN_TO_NINETY * both / self.edge.typ
+            up, down = f"{up}*{_past(lag, steep)}", f"{down}*{_past(lag, -steep)}"
         if self.pulldown is not None:
             found.append(Resistor(f"{name}_pulldown", pin, GROUND, self.pulldown.typ))
-        volts = f"min({self.supply.typ!r},V({rail}))"
+        volts = f"min({corner.take(self.supply, 'gate_supply')!r},V({rail}))"
         return tuple(found), f"{volts}*{up}", f"{volts}*{down}"
 
 
-def _past(y: str, sign: int = 1) -> str:
-    """One where a lag is past one half, upwards or downwards."""
-    return f"0.5*(1+tanh({sign * _STEEP!r}*({y}-0.5)))"
+def _past(lag: str, steep: float) -> str:
+    """One where a lag is past one half: upwards, or downwards with a slope below 0."""
+    return f"0.5*(1+tanh({steep!r}*({lag}-0.5)))"

@@ -10,7 +10,7 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import T_MODEL, Corner
 from boardsim.parts.record import Record
 from boardsim.parts.rules import Limit, PeakRule, Rule, linear_rule, linear_unknown
-from boardsim.quantities import CURRENT, POSITIVE_TIME, THERMAL_RESISTANCE, VOLTAGE, Quantity
+from boardsim.quantities import CURRENT, POSITIVE_TIME, THERMAL_RESISTANCE, VOLTAGE, Quantity, celsius
 
 
 class SafeAreaPoint(Record):
@@ -71,7 +71,7 @@ def refuse_incoherent(
     Raises
     ------
     QuantityError
-        If their points do not go the way that they must, or say nothing without a junction rating.
+        If their points do not go the way that they must, or say nothing without a junction rating above 25 degC.
     """
     refuse_unordered(_powers(safe_area), "the powers of safe_area", rises=False)
     refuse_unordered(_impedances(impedance), "thermal_impedance", rises=True)
@@ -79,6 +79,11 @@ def refuse_incoherent(
         raise QuantityError(
             "safe_area and thermal_impedance need junction_rating: what they allow falls to nothing at the highest junction "
             "temperature"
+        )
+    if rating is not None and rating.min <= T_MODEL:
+        raise QuantityError(
+            f"junction_rating of {celsius(rating.min)} is not above {celsius(T_MODEL)}, at which the figures of a part are printed and its "
+            "safe area is drawn; datasheets print 150 or 175 degC"
         )
 
 

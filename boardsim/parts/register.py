@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from abc import abstractmethod
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Annotated, ClassVar, Literal
 
@@ -109,24 +110,24 @@ class Register(Part):
     if TYPE_CHECKING:  # fields of one kind, properties of another
 
         @property
+        @abstractmethod
         def propagation(self) -> Quantity:
             """From the latch edge to where an output begins to follow. [s]"""
-            raise NotImplementedError
 
         @property
+        @abstractmethod
         def output_edge(self) -> Quantity:
             """How long the step of the bit behind an output lasts. [s]"""
-            raise NotImplementedError
 
         @property
+        @abstractmethod
         def output_resistance(self) -> Quantity:
             """Of an output that is a logic pin. [ohm]"""
-            raise NotImplementedError
 
         @property
+        @abstractmethod
         def serial_resistance(self) -> Quantity:
             """Of the output that drives the next register. [ohm]"""
-            raise NotImplementedError
 
     @property
     def input_leakage(self) -> Quantity:
@@ -248,16 +249,11 @@ class Register(Part):
             found += (Assumption(name, "shortest delay from clock to serial output", values, _LEAST_WHY),)
         return found
 
+    @abstractmethod
     def drive(self, name: str, pin: str, points: tuple[tuple[float, float], ...]) -> Stamp:
-        """One output whose voltage is known, as straight lines [s], [V]; node `pin` goes to the channel's switch.
+        """One output whose voltage is known, as straight lines [s], [V]; node `pin` goes to the channel's switch."""
 
-        Raises
-        ------
-        NotImplementedError
-            In kinds that do not say what their outputs are.
-        """
-        raise NotImplementedError
-
+    @abstractmethod
     def follows(
         self, name: str, pin: str, bit: str, drives: str, rail: str, lets_go: bool, idle: str, loads_rail: bool
     ) -> tuple[Element, ...]:
@@ -277,13 +273,7 @@ class Register(Part):
             What flows into the pin while it does not drive, as an expression; nothing if empty. [A]
         loads_rail : bool
             Whether what the output gives comes out of the rail's node.
-
-        Raises
-        ------
-        NotImplementedError
-            In kinds that do not say what their outputs are.
         """
-        raise NotImplementedError
 
 
 class ShiftRegister(Register):

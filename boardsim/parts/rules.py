@@ -48,7 +48,10 @@ class PeakRule:
 
 @dataclass(frozen=True)
 class FloorRule:
-    """The highest value of a probe of a channel that is fired must reach a limit."""
+    """The highest value of a probe of a channel that is fired must reach a limit.
+
+    `any_time` says that the logic rail does not bear on it, so that the best moment speaks for every pulse.
+    """
 
     check: str
     quantity: str
@@ -56,6 +59,7 @@ class FloorRule:
     consequence: Consequence
     what: str
     advice: str
+    any_time: bool = False
 
 
 @dataclass(frozen=True)
@@ -154,6 +158,10 @@ def linear_rule(limit: Limit, points: tuple[tuple[float, float], ...], lasting: 
     )
 
 
+SumRule = PeakRule | PulseRule | MeanRule
+"""What can judge one quantity of the whole of a package."""
+
+
 @dataclass(frozen=True)
 class EnergyRule:
     """The energy of every single pulse of a power (the product of two quantities) must stay below a limit. [J]"""
@@ -189,8 +197,9 @@ class BreakdownRule:
 
 @dataclass(frozen=True)
 class TogetherRule:
-    """What the switches of one package take in avalanche at one time must stay below a limit. [J]
+    """What the switches of one package take in avalanche within a time must stay below a limit. [J]
 
+    `within` is that time: so long the heat of one stays in the chip that they share [s]. Stretches that overlap count in any case.
     `limit` is the rating of the package. Where it was not given, a sum that `one` of its switches stands is allowed as well, and
     nothing is known of more. `channels` are those that share the package, `voltage` the quantity whose avalanche is meant.
     """
@@ -199,8 +208,9 @@ class TogetherRule:
     limit: Limit
     one: Limit
     advice: str
-    voltage: str = "v_ds"
     channels: tuple[int, ...] = ()
+    voltage: str = "v_ds"
+    within: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -214,11 +224,15 @@ class PullInRule:
 
 @dataclass(frozen=True)
 class ReleaseRule:
-    """When a channel is fired again its coil current must have fallen below the release current."""
+    """When a channel is fired again its coil current must have fallen below the release current.
+
+    `besides` are channels that drive the same coil the other way: what they left counts too, in either direction.
+    """
 
     check: str
     quantity: str
     limit: Limit
+    besides: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -226,6 +240,21 @@ class IdleRule:
     """Before its first pulse and after its last a channel's coil must carry less than the release current.
 
     `limit` is that current; where it was not given, `share` of the current that settles in the coil at the lowest supply.
+    `besides` are channels that drive the same coil the other way, at their command.
+    """
+
+    check: str
+    quantity: str
+    limit: Limit
+    share: float
+    besides: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
+class SneakRule:
+    """While its channel is off a coil's current must not grow to the release current: what others' currents find a way through.
+
+    `limit` and `share` are those of `IdleRule`.
     """
 
     check: str
@@ -290,7 +319,7 @@ class DipRule:
 
 @dataclass(frozen=True)
 class LeastRule:
-    """The lowest value of a probe must stay above a limit.
+    """The lowest value of a probe must stay above a limit; `part` if not the stamp's own.
 
     `soft` says that what is below it is judged elsewhere by what follows from it: then it is tight, and never fails.
     """
@@ -301,6 +330,7 @@ class LeastRule:
     what: str
     advice: str
     soft: bool = False
+    part: str = ""
 
 
 @dataclass(frozen=True)
@@ -366,6 +396,7 @@ Rule = (
     | ReleaseRule
     | IdleRule
     | MotionRule
+    | SneakRule
     | DipRule
     | LeastRule
     | FallRule

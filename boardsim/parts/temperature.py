@@ -158,8 +158,9 @@ def refuse_drift(field: str, drift: float, volts: float) -> None:
         If it is more than 0.3 %/K of the voltage, three times what datasheets print (0.03 to 0.13 %/K).
     """
     if abs(drift) > _MOST_DRIFT * volts:
+        written = f"{drift:.4g} V/K" if abs(drift) >= 1 else f"{drift * 1e3:.4g} mV/K"
         raise QuantityError(
-            f"{field} of {drift * 1e3:.4g} mV/K is {abs(drift) / volts:.1%} of {volts:.4g} V per kelvin; datasheets print about 0.1 %/K"
+            f"{field} of {written} is {abs(drift) / volts:.1%} of {volts:.4g} V per kelvin; datasheets print about 0.1 %/K"
         )
 
 

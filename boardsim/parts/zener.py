@@ -25,7 +25,7 @@ from boardsim.parts.heat import junction_heat
 from boardsim.parts.proof import AtEnd, Proof
 from boardsim.parts.rules import EnergyRule, Limit, MeanRule, PeakRule, Rule
 from boardsim.parts.temperature import in_celsius, refuse_drift, reverse_current
-from boardsim.parts.vendor.beside import stored
+from boardsim.parts.vendor.beside import in_its_band, stored
 from boardsim.parts.vendor.model import A_MODEL, typical, vendors_model
 from boardsim.quantities import (
     CAPACITANCE,
@@ -101,7 +101,7 @@ class Zener(Part):
 
     def implied(self) -> dict[str, Quantity]:
         """What is assumed for want of a number."""
-        return {"drift": self.voltage_drift} if self.model is None else {}
+        return {"drift": self.voltage_drift}
 
     @property
     def clamping(self) -> Quantity:
@@ -157,17 +157,22 @@ class Zener(Part):
             Resistor(f"{name}_leak", positive, negative, 0.75 * self.voltage.typ / leak),
         )
         holds = 0.5 * self.capacitance.typ * v_z**2
+        beside = Stamp()
         assumed = listed(
             name_of, leakage=self.leakage, capacitance=self.capacitance, drift_of_the_voltage=self.voltage_drift
         )
         if self.model is not None:
-            elements = (self.model.part(name, {"anode": negative, "cathode": positive}, corner.junction),)
-            assumed = (*self.model.told(name_of), stored(name_of, "capacitance"))
+            drifted = corner.drifted(self.voltage_drift.typ)
+            beside = in_its_band(self.model, name, label, self.voltage, i_z, drifted, name_of, corner.junction)
+            device = self.model.part(name, {"anode": negative, "cathode": positive}, corner.junction)
+            elements = (device, *beside.elements)
+            moves = listed(name_of, drift_of_the_voltage=self.voltage_drift)
+            assumed = (*self.model.told(name_of), stored(name_of, "capacitance"), *moves)
         return Stamp(
             elements=elements,
-            probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A")),
+            probes=(Probe(v, voltage(positive, negative), "V"), Probe(i, through, "A"), *beside.probes),
             ports=(Port(label, ((v, i),), holds=holds),),
-            rules=self._rules(name_of, label, v, i, corner),
+            rules=(*self._rules(name_of, label, v, i, corner), *beside.rules),
             assumptions=assumed,
         )
 

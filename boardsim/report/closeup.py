@@ -109,7 +109,7 @@ def closeup_figure(result: Result, closeup: Closeup) -> Figure:
     channels = sorted(closeup.labels)
     lanes = [min(max(_LANE * len(channels), _LEAST_LANES), _MOST_LANES)] if channels else []
     bars = [_BAR] if not closeup.shows_reading or any(p.mean is not None for p in closeup.panels) else []
-    heights = [*bars, *(_MAIN if p.limit is not None else _CAUSE for p in closeup.panels), *lanes]
+    heights = [*bars, *(_MAIN if p.limit is not None or p.levels else _CAUSE for p in closeup.panels), *lanes]
     figure = Figure(figsize=(_WIDTH, 1.0), facecolor=PAPER, dpi=_DPI)
     FigureCanvasAgg(figure)
     rows = _heading(figure, result, finding, closeup)
@@ -256,6 +256,8 @@ def _waves(axes: Axes, panel: Panel, clock: Clock) -> dict[str, Artist]:
         band(axes, wave, clock.scale, None, clock.origin, facecolor=tone, edgecolor=tone, linewidth=width, zorder=order)
         if len(panel.waves) > 1:
             legend[plain(wave.label)] = Patch(color=tone)
+        if panel.levels:
+            axes.axhline(panel.levels[n], color=tone, linewidth=1.3, linestyle=(0, (4, 2)), zorder=4)
     return legend
 
 

@@ -41,6 +41,8 @@ _DPI = 120
 _WIDTH, _LEFT, _RIGHT, _GAP, _BOTTOM = 11.0, 0.85, 1.75, 0.5, 0.6  # [inch]
 _TOP, _STRIP, _CURRENTS, _RAIL, _LINES = 1.3, 0.3, 2.1, 1.3, 1.5  # [inch]
 _ANSWER, _MOST_LINES = 9.5, 3
+_FAINT = 0.02  # of what is shown, below which a current below 0 is none
+_LOWEST_WORDS = 0.12  # height of three lines beside the axes [share]
 _DASHES, _DOTS = (0, (6, 2.5)), (0, (1, 1.6))
 
 
@@ -138,7 +140,7 @@ def _answer(row: BootRow, study: PowerUp) -> str:
 
 
 def _enabled(axes: Axes, study: PowerUp, scale: float) -> None:
-    """When the registers' outputs drive, and when they are of high impedance."""
+    """When the registers' outputs drive, and when they are of high impedance, or off."""
     from matplotlib.patches import Patch
 
     wave = study.waves["enabled"]
@@ -150,7 +152,7 @@ def _enabled(axes: Axes, study: PowerUp, scale: float) -> None:
     axes.set_ylim(0, 1)
     axes.set_yticks([])
     axes.grid(False)
-    caption(axes, "Outputs of the registers", {"enabled": Patch(color=DARK), "high impedance": Patch(color=PALE)})
+    caption(axes, "Outputs of the registers", {"enabled": Patch(color=DARK), study.disabled: Patch(color=PALE)})
 
 
 def _currents(axes: Axes, study: PowerUp, scale: float) -> None:
@@ -166,15 +168,20 @@ def _currents(axes: Axes, study: PowerUp, scale: float) -> None:
         band(axes, early, scale, low=np.zeros_like(early.low), facecolor=FAILING, linewidth=0, zorder=2)
         legend = {"without command": Patch(facecolor=FAILING, edgecolor=MIDDLE, linewidth=1.2), **legend}
     band(axes, wave, scale, facecolor=DARK, edgecolor=DARK, linewidth=1.3, zorder=3)
-    frame(axes, min(float(np.min(wave.low)), 0.0), peak, None, above=0.3, below=0.02, least=4 * study.limit)
+    # From 0 to what counts at least: an idle board's last digits are no picture.
+    low, high = float(np.min(wave.low)), max(peak, study.limit)
+    frame(axes, low if low < -_FAINT * high else 0.0, high, None, above=0.3, below=0.02)
+    axes.axhline(study.limit, color=WARNING, linewidth=1.3, linestyle=_DASHES, zorder=4)
+    bottom, top = axes.get_ylim()
+    counts = max((study.limit - bottom) / (top - bottom), _LOWEST_WORDS)
     if early is not None:
         slot = int(np.argmax(early.high))
         at = float(early.edges[slot] + early.edges[slot + 1]) / 2
-        top = float(early.high[slot])
+        most = float(early.high[slot])
         if study.rows[study.shown].count:
-            mark(axes, at * scale, top, f"{in_units(top, 'A')} at {in_units(at, 's', 4)}", above=True)
-    beside(axes, 0.8, f"first enabled\nframe {in_units(study.until, 's', 4)}", INK)
-    beside(axes, 0.2, f"counts from\n{in_units(study.limit, 'A')}\nper coil", WARNING)
+            mark(axes, at * scale, most, f"{in_units(most, 'A')} at {in_units(at, 's', 4)}", above=True)
+    beside(axes, 0.8 if counts < 0.5 else 0.3, f"first enabled\nframe {in_units(study.until, 's', 4)}", INK)
+    beside(axes, counts, f"counts from\n{in_units(study.limit, 'A')}\nper coil", WARNING)
     caption(axes, "All coils together [A]", legend)
 
 

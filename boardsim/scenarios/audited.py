@@ -57,8 +57,9 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
 
 def _fastest(channel: Channel) -> float:
     """The shortest time in which a coil's current changes. [s]"""
-    henries, farads = channel.coil.inductances[0], channel.clamp.swings_with()
-    decay: float = henries / max(channel.coil.resistance.max + channel.clamp.in_the_way(), 1e-3)
+    henries, clamps = channel.coil.inductances[0], [d.clamp for d in channel.drivers]
+    farads = min((c.swings_with() for c in clamps if c.swings_with()), default=0.0)
+    decay: float = henries / max(channel.coil.resistance.max + sum(c.in_the_way() for c in clamps), 1e-3)
     return min(decay, math.sqrt(henries * farads)) if farads else decay
 
 

@@ -96,3 +96,9 @@ def clamp_in_words(clamp: Part) -> str:
     found += [value.title or value.kind for _, value in clamp if isinstance(value, Part)]
     found += [in_units(value.typ, value.unit) for _, value in clamp if isinstance(value, Quantity)]
     return clamp.kind + (f": {', '.join(found)}" if found else "")
+
+
+def clamps_of(channel: Channel) -> str:
+    """The clamps that take a channel's current: its own, or in a matrix those of row and column."""
+    words = [clamp_in_words(d.clamp) for d in channel.drivers]
+    return words[0] if channel.crossing is None else f"row {words[0]} and column {words[1]}"

@@ -30,7 +30,7 @@ def check_place(path: Path, inputs: Iterable[Path], pattern: Pattern) -> None:
 
 
 def write_edges(board: Board, pattern: Pattern, path: Path) -> None:
-    """Write the edges of every channel's register output as a value change dump.
+    """Write the edges of every channel's register output, of a matrix those of rows and columns, as a value change dump.
 
     Raises
     ------
@@ -38,6 +38,6 @@ def write_edges(board: Board, pattern: Pattern, path: Path) -> None:
         If the file cannot be written.
     """
     firing = fire(board, pattern)
-    labels = {c.number: c.label for c in board.channels}
-    levels = {c.number: firing.levels[c.output] for c in board.channels}
+    labels = {d.number: d.label for d in board.drivers}
+    levels = {d.number: firing.levels[d.output] for d in board.drivers}
     write_text(path, edges_text(board.name, labels, levels, firing.duration))

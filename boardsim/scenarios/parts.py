@@ -151,6 +151,9 @@ def _details(field: str, value: Any) -> Iterable[Detail]:
     elif isinstance(value, tuple):
         for i, one in enumerate(value, 1):
             yield from _details(f"{field} {i}", one)
+    elif isinstance(value, Mapping):  # from words to words, such as from terminals to pins; empty where there are none
+        if value:
+            yield Detail(label, ", ".join(f"{word} is {other}" for word, other in value.items()))
     elif hasattr(type(value), "model_fields"):
         for inner in type(value).model_fields:
             if (found := getattr(value, inner)) is not None:

@@ -12,7 +12,9 @@ from pathlib import Path
 
 import numpy as np
 
+from boardsim.board.bridges import forwards
 from boardsim.board.corners import corners, nominal_only
+from boardsim.board.matrix import Line
 from boardsim.board.reader import Board
 from boardsim.circuit.boot import Boot, boot_deck, detail_of
 from boardsim.circuit.deck import Deck, Window
@@ -102,7 +104,7 @@ def power_up(
     -----
     What a storage stage wakes up with is unknown (NXP 74HC595 rev. 6: clear does not touch it), so that every word has to be
     harmless. All ones turn on every switch that is on while its output is high, all zeros every other; where a board has both,
-    a word that turns on all is added. On a supply that gives way under them a coil carries most alone: one of every build
+    a word that turns on all is added, as where a board has full bridges, whose coils get nothing of all ones. On a supply that gives way under them a coil carries most alone: one of every build
     does. A random word shows what else may come. A latch line that floats can at worst copy one unknown word over another. The corners are those with the supply high and the coils cold,
     which give every uncommanded current its highest value.
     """
@@ -168,18 +170,22 @@ def boots(board: Board, seed: int) -> Iterator[Boot]:
         "storage all zeros": 0,
         f"storage random (random number {seed})": dice.getrandbits(width),
     }
-    on = sum(1 << c.output for c in board.channels if c.switch.active == "high")
-    if any(c.switch.active == "low" for c in board.channels) and on:
+    driving = [d for d in board.drivers if isinstance(d, Line) or d.forwards]
+    on = sum(1 << d.output for d in driving if d.switch.active == "high")
+    bridges = sum(1 << c.output for c in board.channels if c.opposite is not None)
+    if (any(d.switch.active == "low" for d in board.drivers) and on) or bridges:
         words["storage with every coil on"] = on
     alone = [build[0] for build in alike(board)]
-    if len(alone) < len(board.channels):
-        off = ones & ~on
-        words["storage with one coil of each build on"] = off ^ sum(1 << board.channel(n).output for n in alone)
+    if len(alone) < len(forwards(board)):
+        off = ones & ~(on | bridges)
+        words["storage with one coil of each build on"] = off ^ sum(
+            {1 << output for n in alone for output in board.channel(n).outputs}
+        )
     for name, word in words.items():
         yield _switched_on(board, name, Contents(dice.getrandbits(width) if "random" in name else word, word), True)
     line = board.chain.output_enable
     floating = line is not None and line.rests is None
-    if floating or not all(c.switch.held_off() for c in board.channels):
+    if floating or not all(c.held_off for c in board.channels):
         yield _switched_on(board, "storage all ones, what floats drifts to off", Contents(ones, ones), False)
     yield _reset(board)
 
@@ -224,10 +230,10 @@ def logic_comes(board: Board) -> tuple[float, float]:
 
 
 def _reset(board: Board) -> Boot:
-    """Every channel on as the firmware means it, then a reset: pins float until the first frame, all off."""
+    """Every coil on as the firmware means it, then a reset: pins float until the first frame, all off."""
     chain = board.chain
     off = shift_in(ChainState(chain.outputs), 0, chain)
-    image = sum(1 << c.bit for c in board.channels)
+    image = sum({1 << bit for c in forwards(board) for bit in c.bits})
     on = _RESET_BEGINS + frame_time(chain)
     reset = on + min(_SETTLED * _slowest(board), _LONGEST_PULSE)
     first = reset + board.power_up.first_frame.max
@@ -282,6 +288,7 @@ def _run(
     watch = BootWatch(board, boot)
     none = np.zeros((0, 2))
     firing = Firing(boot.duration, {}, {c.number: none for c in board.channels}, (), (), (), (), len(boot.frames), 0.0)
+    firing = replace(firing, lines={line.number: none for line in board.lines})
     detail = detail_of(board, boot)
 
     def made(on: Board, _firing: Firing, corner: Corner, _window: Window) -> Deck:
@@ -321,6 +328,7 @@ def _study(board: Board, done: Sequence[_Done], wanted: Sequence[Corner]) -> Pow
         min(harmless(board, c, corner) for c in board.channels for corner in wanted),
         reading.waves if reading is not None else {},
         boot.reset,
+        "off" if board.chain.register_.open_drain else "high impedance",
     )
 
 
@@ -401,7 +409,9 @@ def _told(board: Board, all_boots: Sequence[Boot], seed: int) -> Iterator[str]:
         f"what the storage stage of {chain.count * chain.register_.outputs} outputs wakes up with is unknown: run with all "
         f"ones, all zeros and a random word (random number {seed})"
     )
-    if all(c.switch.active == "high" for c in board.channels):
+    if any(c.opposite is not None for c in board.channels):
+        yield "a full bridge whose outputs are both high gives its coil nothing: a word that drives every coil forwards is run too"
+    elif all(d.switch.active == "high" for d in board.drivers):
         yield "all ones turn on every coil: each switch of this board is on while its output is high"
     if any("one coil" in boot.name for boot in all_boots):
         yield "one coil of each build alone shows what it carries where the others do not pull the rail down"

@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from boardsim.board.corners import corners
-from boardsim.board.ranges import write_range
+from boardsim.board.ranges import write_labels, write_range
 from boardsim.board.reader import Board, Channel
 from boardsim.errors import InputError
 from boardsim.firing.pattern import Pattern, Pulse
@@ -17,7 +17,7 @@ from boardsim.firing.registers import frame_time
 from boardsim.firing.schedule import fire
 from boardsim.quantities import in_units
 from boardsim.scenarios.all_corners import worst
-from boardsim.scenarios.clamps import clamp_in_words, other_clamps
+from boardsim.scenarios.clamps import clamps_of, other_clamps
 from boardsim.scenarios.crew import Crew
 from boardsim.scenarios.fire import fire_pattern
 from boardsim.verdict.findings import Finding, Result, Timing, overall
@@ -25,6 +25,7 @@ from boardsim.verdict.release import ReleaseWatch, TurnOff
 from boardsim.verdict.studies import Release, ReleaseRow
 
 NAME = "release"
+_BRIDGES = "the coil of a full bridge has no switch that is turned off for it: its current runs on through both low transistors"
 _SETTLED = 7.0  # L/R times: 0.1 % of the way is left
 _FRAMES = 2.0  # how far the register frames stay below the share of a pulse by which they may move it
 
@@ -77,7 +78,8 @@ def release_channel(
     EngineMissing, EngineStopped
         If there is no engine, or the run was interrupted.
     InputError
-        If the board has no such channel, or the waveforms would not fit on the disk.
+        If the board has no such channel, a full bridge feeds its coil, another clamp is to be tried in a matrix, or the waveforms would
+        not fit on the disk.
 
     Notes
     -----
@@ -92,6 +94,11 @@ def release_channel(
     chosen = chosen_channels(board, channel, every_clamp)
     tried: list[Channel] = []
     left_out: tuple[str, ...] = ()
+    if every_clamp and chosen[0].crossing is not None:
+        raise InputError(
+            f"{chosen[0].label} lies in a matrix, whose lines have clamps for all coils along them; leave --every-clamp out, and change "
+            "clamp or row_clamp in the board file"
+        )
     if every_clamp:
         one = _alone(board, chosen[0])
         clamps, left_out = other_clamps(one, chosen[0], _highest_current(one))
@@ -110,6 +117,8 @@ def release_channel(
         more = Timing("elapsed over all other clamps", time.perf_counter() - began - spent_own)
         result = replace(result, timings=(*result.timings, more))
     remarks = dict.fromkeys(remark for d in done for remark in d.remarks)
+    if any(c.opposite is not None for c in board.channels):
+        remarks[f"not asked of full bridges: {_BRIDGES}"] = None
     notes = (*result.notes, *_about(done), *remarks, *left_out)
     return replace(result, notes=notes, study=Release(tuple(d.row for d in done)))
 
@@ -124,16 +133,23 @@ def chosen_channels(board: Board, number: int | None, only_one: bool) -> list[Ch
     Raises
     ------
     InputError
-        If the board has no such channel.
+        If the board has no such channel, or a full bridge feeds its coil.
     """
+    known = [c.number for c in board.channels]
+    if number is not None and number not in known:
+        raise InputError(f"channel {number} is not on the board {board.path.name}; it has {write_range(known)}")
+    asked = [c for c in board.channels if number is None or c.number == number]
+    able = [c for c in asked if c.opposite is None]
+    if not able:
+        raise InputError(
+            f"{write_labels([c.label for c in asked])}: {_BRIDGES}; fire a pattern with a pulse each way, and see what is left "
+            "when the coil is fired again"
+        )
     if number is not None:
-        known = [c.number for c in board.channels]
-        if number not in known:
-            raise InputError(f"channel {number} is not on the board {board.path.name}; it has {write_range(known)}")
-        return [board.channel(number)]
+        return able
     builds: dict[tuple[object, ...], Channel] = {}
-    for c in board.channels:
-        builds.setdefault((c.coil, c.coil_name, c.switch, c.clamp, c.leads), c)
+    for c in able:
+        builds.setdefault(c.build, c)
     first = list(builds.values())
     return first[:1] if only_one else first
 
@@ -231,7 +247,7 @@ def _row(channel: Channel, own: bool, watch: ReleaseWatch, result: Result, prove
 
     slowest = max(found, key=lambda f: _slowness(f, coil.release is not None), default=None)
     return ReleaseRow(
-        clamp_in_words(channel.clamp),
+        clamps_of(channel),
         own,
         channel.number,
         channel.label,

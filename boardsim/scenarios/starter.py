@@ -7,6 +7,7 @@ from typing import Any
 
 from pydantic import BaseModel
 from pydantic.json_schema import GenerateJsonSchema
+from pydantic_core.core_schema import TaggedUnionSchema
 
 from boardsim.board.schema import BoardFile
 from boardsim.errors import InputError
@@ -162,10 +163,13 @@ def json_schema(what: str) -> dict[str, Any] | None:
 
 
 class _Schema(GenerateJsonSchema):
-    """Writes the default of a quantity as a file would: as text. A table without a kind may fit several of them."""
+    """Writes the default of a quantity as a file would: as text. A table of one of several kinds may be like several of them.
 
-    def tagged_union_schema(self, schema: Any) -> dict[str, Any]:
-        """Kinds told apart by `kind`; one that is told by the part it names looks like any that has the same keys."""
+    A switch is of the kind of the part that it names, which a schema cannot look up.
+    """
+
+    def tagged_union_schema(self, schema: TaggedUnionSchema) -> dict[str, Any]:
+        """One of several kinds of part, or more than one where the kind is left out."""
         found = super().tagged_union_schema(schema)
         if "oneOf" in found:
             found["anyOf"] = found.pop("oneOf")

@@ -8,6 +8,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from pathlib import Path
 
+from boardsim.board.bridges import forwards
 from boardsim.board.corners import not_varied
 from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
@@ -67,7 +68,7 @@ def volley(
     EngineMissing, EngineStopped
         If there is no engine, or the run was interrupted.
     InputError
-        If more channels are asked for than there are, or the waveforms would not fit on the disk.
+        If more channels are asked for than there are, the board has a matrix, or the waveforms would not fit on the disk.
 
     Notes
     -----
@@ -77,7 +78,7 @@ def volley(
     if crew is None:
         with Crew() as own:
             return volley(board, keep, strict, own, progress, width, at_least)
-    count = len(board.channels)
+    count = len(forwards(board))
     check_wanted(board, at_least)
     wanted = at_least if at_least is not None else board.limits.most_on
     wanted = None if wanted is None else min(wanted, count)
@@ -137,14 +138,19 @@ def read_width(text: str) -> float:
 
 
 def check_wanted(board: Board, at_least: int | None) -> None:
-    """Refuse to ask for more channels than there are.
+    """Refuse to ask for more channels than there are, or for any choice of channels of a matrix.
 
     Raises
     ------
     InputError
-        If so many channels cannot be on at once.
+        If so many channels cannot be on at once, or some of them would turn others on.
     """
-    count = len(board.channels)
+    if board.lines:
+        raise InputError(
+            f"volley fires any choice of channels together, and {board.name} has a matrix, where two coils of different rows and "
+            "columns turn on others as well; ask with the patterns that its firmware sends (boardsim fire)"
+        )
+    count = len(forwards(board))
     if at_least is not None and not 1 <= at_least <= count:
         channels = "1 channel" if count == 1 else f"{count} channels"
         raise InputError(f"{at_least} at once are asked for, and {board.name} has {channels}; ask for 1 to {count}")
@@ -167,8 +173,8 @@ def settled_width(board: Board) -> float:
     Both with the largest inductance, capacitance and voltage and the smallest, coldest winding that was given.
     """
     cold = Corner("cold", {"coil_resistance": "min"}, "cold")
-    windings = [c.coil.ohms(cold, board.around) for c in board.channels]
-    coils = max(c.coil.inductances[1] / r for c, r in zip(board.channels, windings, strict=True))
+    windings = [c.coil.ohms(cold, board.around) for c in forwards(board)]
+    coils = max(c.coil.inductances[1] / r for c, r in zip(forwards(board), windings, strict=True))
     warmest = board.around.ambient_high if board.around else T_20C
     resistance = board.supply.resistance.typ + board.cable.loop(warmest).typ + board.bulk.esr.max
     ceiling = board.supply.current_ceiling

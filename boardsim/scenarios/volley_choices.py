@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import replace
 
 import numpy as np
 
+from boardsim.board.bridges import forwards
 from boardsim.board.reader import Board
 from boardsim.scenarios.audited import CornerResult
 from boardsim.verdict.findings import Envelope
@@ -18,13 +18,13 @@ Results = list[tuple[Choice, CornerResult]]
 
 
 def alike(board: Board) -> tuple[Choice, ...]:
-    """The channels of each build: those with the same coil, switch and clamp.
+    """The channels of each build: those with the same coil, switch and clamp; of a full bridge the one that drives it forwards.
 
     Two channels of one build differ in nothing that a circuit knows of, so that one can stand for the other.
     """
     builds: list[tuple[object, list[int]]] = []
-    for channel in board.channels:
-        build = replace(channel, number=0, output=0, bit=0, label="")
+    for channel in forwards(board):
+        build = (channel.build, channel.package)
         mine = next((numbers for other, numbers in builds if other == build), None)
         if mine is None:
             builds.append((build, [channel.number]))

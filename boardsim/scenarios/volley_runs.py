@@ -10,6 +10,7 @@ from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
+from boardsim.board.bridges import forwards
 from boardsim.board.corners import corners, nominal_only, slow_rail
 from boardsim.board.ranges import write_labels
 from boardsim.board.reader import Board
@@ -98,7 +99,7 @@ class Runs:
         self.only = nominal_only(self.board)
         self.builds = alike(self.board)
         self.weights: dict[str, list[list[float]]] = {}  # of every build, by the name of the corner
-        self.duration = self.firing((self.board.channels[0].number,)).duration
+        self.duration = self.firing((forwards(self.board)[0].number,)).duration
         self._shares: dict[object, float] = {}
         self._expected = self._handed = 0.0
         self._told = 0.0
@@ -134,8 +135,9 @@ class Runs:
         return assemble(board, firing, trigger.corner, window).text(trigger.settings)
 
     def reduced(self, channels: Choice) -> Board:
-        """The board with these channels only: the others are off and draw nothing."""
-        return replace(self.hardware, channels=tuple(c for c in self.board.channels if c.number in channels))
+        """The board with these channels, and the other halves of full bridges, only: the others are off and draw nothing."""
+        kept = tuple(c for c in self.board.channels if c.number in channels or c.opposite in channels)
+        return replace(self.hardware, channels=kept)
 
     # ------------------------------------------------------------------------------------------------ runs
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
+from boardsim.board.bridges import forwards
 from boardsim.board.ranges import write_range
 from boardsim.parts.rules import Consequence
 from boardsim.quantities import in_units
@@ -49,7 +50,7 @@ def answer_of(runs: Runs, most: int, wanted: int | None, at_least: int | None) -
 
 
 def _sentence(runs: Runs, most: int, wanted: int | None, at_least: int | None) -> str:
-    count, width = len(runs.board.channels), in_units(runs.width, "s")
+    count, width = len(forwards(runs.board)), in_units(runs.width, "s")
     if count == 1:
         said = "the only channel passes" if most else "the only channel does not pass"
     elif most == 0:
@@ -78,7 +79,7 @@ def _sentence(runs: Runs, most: int, wanted: int | None, at_least: int | None) -
 
 def firing_sentences(runs: Runs, settled: bool) -> tuple[str, ...]:
     """What is fired, and how long the registers take; `settled` where the width was not asked for."""
-    width, firing = in_units(runs.width, "s"), runs.firing((runs.board.channels[0].number,))
+    width, firing = in_units(runs.width, "s"), runs.firing((forwards(runs.board)[0].number,))
     said = f"one pulse of {width} on so many channels at once, all commanded at {in_units(START, 's')}"
     if settled:
         said += (
@@ -105,7 +106,7 @@ def notes_on(
     rests_on : mapping of number of channels to Tried
         Without those that are not proven and that nothing rests on.
     """
-    count = len(runs.board.channels)
+    count = len(forwards(runs.board))
     # Reports write out the sentences of what does not pass; the answer is to be read in any case.
     notes = [answer.sentence] if answer.verdict == "pass" else []
     notes += [
@@ -113,6 +114,10 @@ def notes_on(
         "other ([limits] most_on, most_current, exclusive) did not decide which number passes",
         f"the findings below the answer are those of {shown.step.on} at once ({shown.step.who})",
     ]
+    if count < len(runs.board.channels):
+        notes.append(
+            "full bridges are fired forwards only: backwards they draw the same, and both ways at once nothing"
+        )
     if len(runs.builds) > 1:
         notes.append(
             f"the board has {len(runs.builds)} builds of channel: tried in each corner were the channels that draw most there, "

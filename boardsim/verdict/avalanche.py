@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from bisect import bisect_right
 from collections.abc import Iterator
 from dataclasses import replace
 
@@ -121,32 +122,25 @@ def _avalanche_energy(
 
 
 def judge_together(rule: TogetherRule, placed: PlacedRule, readings: Readings, bench: Bench) -> Iterator[Finding]:
-    """What the switches of one package take in avalanche at one time; nothing where at no time two of them do.
+    """What the switches of one package take in avalanche within a time; nothing where two of them never do.
 
     Notes
     -----
-    Stretches of avalanche that overlap count as one, with the sum of their energies: they are over in milliseconds, in which heat
-    spreads through a chip. Ratings for a single switch hold with the others idle. All of the energy in that one switch would
+    Stretches of avalanche that overlap count as one, with the sum of their energies. Those that begin within the rule's time of
+    each other are added as if nothing of the first had left the chip: it leaves with the time constant of the chip's heat
+    capacity against its package, so that the sum errs on the safe side within that time. What comes in later windows is heat, and
+    judged by average power. Ratings for a single switch hold with the others idle. All of the energy in that one switch would
     heat it more than a share in each of several does, so a sum that it stands is allowed; above that only the package's own
     rating says anything.
     """
-    found = sorted(
-        (event.start, event.start + event.lasting, event.energy, c)
-        for c in rule.channels
-        for event in readings.avalanches[c, rule.voltage]
-    )
-    groups: list[tuple[float, float, float, frozenset[int]]] = []
-    for start, stop, energy, channel in found:
-        if groups and start <= groups[-1][1]:
-            begun, until, so_far, members = groups[-1]
-            groups[-1] = (begun, max(until, stop), so_far + energy, members | {channel})
-        else:
-            groups.append((start, stop, energy, frozenset({channel})))
-    shared = [group for group in groups if len(group[3]) > 1]
-    if not shared:
+    groups = _shared(_stretches(rule, readings), rule.within)
+    if not groups:
         return
-    at, _, energy, members = max(shared, key=lambda group: group[2])
-    what, detail = "clamp energy of the package", f" in the clamps of {len(members)} outputs"
+    at, until, energy, members = max(groups, key=lambda group: group[2])
+    what, detail = (
+        "clamp energy of the package",
+        f" in the clamps of {len(members)} outputs, within {in_units(until - at, 's')}",
+    )
     if rule.limit.value is not None:
         yield upper(what, rule.limit, "destroy", placed, bench, energy, at, rule.advice, detail)
         return
@@ -164,3 +158,34 @@ def judge_together(rule: TogetherRule, placed: PlacedRule, readings: Readings, b
         sentence=f"{placed.label}: {what} is {in_units(energy, 'J')}{when(at)}{detail}; what {placed.part} stands in all of them "
         f"together was not given{stands}; try: {rule.advice}",
     )
+
+
+_Group = tuple[float, float, float, frozenset[int]]  # from [s], to [s], energy [J], whose
+
+
+def _stretches(rule: TogetherRule, readings: Readings) -> list[_Group]:
+    """Stretches of avalanche in the order of their beginnings, those that overlap as one."""
+    found = sorted(
+        (event.start, event.start + event.lasting, event.energy, c)
+        for c in rule.channels
+        for event in readings.avalanches[c, rule.voltage]
+    )
+    groups: list[_Group] = []
+    for start, stop, energy, channel in found:
+        if groups and start <= groups[-1][1]:
+            begun, until, so_far, members = groups[-1]
+            groups[-1] = (begun, max(until, stop), so_far + energy, members | {channel})
+        else:
+            groups.append((start, stop, energy, frozenset({channel})))
+    return groups
+
+
+def _shared(groups: list[_Group], within: float) -> list[_Group]:
+    """From each stretch on what begins within a time, added up, where several switches have a part in it."""
+    begins = [g[0] for g in groups]
+    sums: list[_Group] = []
+    for first, at in enumerate(begins):
+        window = groups[first : bisect_right(begins, at + within)]
+        members = frozenset[int]().union(*(g[3] for g in window))
+        sums.append((at, max(g[1] for g in window), sum(g[2] for g in window), members))
+    return [one for one in sums if len(one[3]) > 1]

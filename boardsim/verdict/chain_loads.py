@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 
 import numpy as np
 
-from boardsim.board.reader import Board, Channel
+from boardsim.board.reader import Board
+from boardsim.firing.lines import active_levels, on_times
 from boardsim.firing.schedule import Firing
 from boardsim.parts.family import LogicFamily
 from boardsim.quantities import Quantity, in_units
@@ -20,35 +21,43 @@ def judge_loads(board: Board, firing: Firing) -> Iterator[Finding]:
     Notes
     -----
     Ohm's law from the rail through the register's output into the switch's input network. What charges a gate, for some
-    tens of nanoseconds, is not in it: ratings are those of continuous current. Of each register the channels that are ever on
+    tens of nanoseconds, is not in it: ratings are those of continuous current. Of each register the outputs that are ever active
     at one time count together. Open-drain outputs are switches themselves: what they sink is judged there.
     """
     if board.chain.register_.open_drain:
         return
     volts, register = board.logic.voltage.max, board.chain.register_
     family: LogicFamily | None = register.family
-    each = {c.number: c.switch.steady_input(volts, register.output_resistance.min) for c in board.channels}
+    each = steady_currents(board, volts)
     if not each:
         return
-    worst = max(board.channels, key=lambda c: each[c.number])
-    said = f"{worst.label}: the output of {register_name(board)} gives up to {in_units(each[worst.number], 'A')} to {worst.switch.kind}"
+    worst = max(board.drivers, key=lambda d: each[d.output])
+    said = f"{worst.label}: the output of {register_name(board)} gives up to {in_units(each[worst.output], 'A')} to {worst.switch.kind}"
     pin = None if family is None else family.pin_current
-    yield _against(board, "current of an output", each[worst.number], pin, "pin_current", said, volts)
+    yield _against(board, "current of an output", each[worst.output], pin, "pin_current", said, volts)
     size = register.outputs
-    by_register: dict[int, list[Channel]] = {}
-    for c in board.channels:
-        by_register.setdefault(c.output // size, []).append(c)
-    totals = {k: together_at_most(firing, channels, each) for k, channels in by_register.items()}
+    by_register: dict[int, dict[int, float]] = {}
+    for output, current in each.items():
+        by_register.setdefault(output // size, {})[output] = current
+    totals = {k: together_at_most(board, firing, currents) for k, currents in by_register.items()}
     k = max(totals, key=lambda k: totals[k])
     said = f"outputs of register {k + 1} that are on together give up to {in_units(totals[k], 'A')}"
     total = None if family is None else family.total_current
     yield _against(board, "current of all outputs of a register", totals[k], total, "total_current", said, volts)
 
 
-def together_at_most(firing: Firing, channels: list[Channel], each: dict[int, float]) -> float:
-    """The largest sum of the currents of channels that are on at one time. [A]"""
-    starts = [(float(t), each[c.number]) for c in channels for t in firing.on[c.number][:, 0]]
-    stops = [(float(t), -each[c.number]) for c in channels for t in firing.on[c.number][:, 1]]
+def steady_currents(board: Board, volts: float) -> dict[int, float]:
+    """The highest steady current that each register output gives to its switch at a logic rail. [V] -> [A]"""
+    ohms = board.chain.register_.output_resistance.min
+    return {d.output: d.switch.steady_input(volts, ohms) for d in board.drivers}
+
+
+def together_at_most(board: Board, firing: Firing, each: Mapping[int, float]) -> float:
+    """The largest sum of the currents of outputs that are active at one time. [A]"""
+    active = active_levels(board)
+    spans = {output: on_times(firing.levels[output], active[output], firing.duration) for output in each}
+    starts = [(float(t), each[output]) for output, rows in spans.items() for t in rows[:, 0]]
+    stops = [(float(t), -each[output]) for output, rows in spans.items() for t in rows[:, 1]]
     steps = sorted([*starts, *stops])  # at one time what goes off comes first
     return float(max(np.cumsum([i for _, i in steps]), default=0.0))
 

@@ -19,8 +19,9 @@ from boardsim.firing.schedule import Firing
 from boardsim.parts.rules import BreakdownRule
 from boardsim.verdict.cutting import RunningEnergy, between
 from boardsim.verdict.findings import Envelope, Finding, Floats
+from boardsim.verdict.leg_closeups import LegCut, leg_rule
 from boardsim.verdict.readings import Key, SignalTable, our_name
-from boardsim.verdict.stretch import Stretch, channels_in_question, count_on, stretch_of
+from boardsim.verdict.stretch import Stretch, channels_in_question, count_on, package_members, stretch_of
 from boardsim.verdict.watch import HYSTERESIS, Slices
 
 SLICES = 800  # across a close-up; about as many as it has pixels
@@ -44,6 +45,7 @@ _WORDS = {
     "v_ds": "voltage at the switch",
     "i_d": "current of the switch",
     "v_gs": "gate voltage of the switch",
+    "i_ground": "all outputs of the package",
 }
 _SEVERAL = {"A": "currents", "V": "voltages"}
 
@@ -63,6 +65,8 @@ class Panel:
         The reading. [s], [unit]
     mean : float or None
         The reading, where it is a mean over the stretch. [unit]
+    levels : tuple of float
+        What each wave is seen against, where that is no limit. [unit]
     """
 
     title: str
@@ -71,6 +75,7 @@ class Panel:
     limit: float | None = None
     marked: tuple[float, float] | None = None
     mean: float | None = None
+    levels: tuple[float, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -141,7 +146,12 @@ def take_closeups(
     if waves is None:
         deck = None
     wanted = [f for f in findings if wants_closeup(f)]
-    cuts = [_Cut(f, stretch_of(f, board, firing), _causes(f, board, deck), _breakdown(f, deck)) for f in wanted]
+    cuts: list[_Cut | _LegCut] = [
+        _Cut(f, stretch_of(f, board, firing), _causes(f, board, deck), _breakdown(f, deck))
+        if (leg := leg_rule(f, deck)) is None
+        else _LegCut(f, leg, firing, SLICES)
+        for f in wanted
+    ]
     if waves is not None and deck is not None:
         _feed(cuts, waves, deck)
     asked = _commanded(firing)
@@ -168,7 +178,7 @@ class _Cut:
 
     @property
     def subject(self) -> tuple[Key, ...]:
-        return tuple((self.finding.channel, q) for q in self.finding.probes)
+        return tuple((_place(self.finding), q) for q in self.finding.probes)
 
     def feed(self, t: Floats, y: Mapping[Key, Floats]) -> None:
         """Times (m,) [s] and the values of every signal (m,)."""
@@ -193,7 +203,7 @@ class _Cut:
         beside: dict[str, list[Envelope]] = {}
         for row, key in enumerate(self.causes, 1):
             unit = deck.units[key]
-            beside.setdefault(unit, []).append(self._wave(row, _WORDS.get(key[1], key[1]), unit))
+            beside.setdefault(unit, []).append(self._wave(row, _WORDS.get(key[1].partition(",")[0], key[1]), unit))
         first: tuple[Panel, ...] = ()
         if self.finding.probes:
             alike = beside.pop(self.finding.unit, []) if self.finding.shape == "value" else []
@@ -218,6 +228,25 @@ class _Cut:
         return Envelope(label, unit, self.slices.edges, self.slices.low[row], self.slices.high[row])
 
 
+class _LegCut(LegCut):
+    """A leg's, with its panels."""
+
+    def panels(self, deck: Deck) -> tuple[Panel, ...]:
+        found = self.waves()
+        if found is None:
+            return ()
+        gates, through = found
+        return (
+            Panel("Gate voltages", "V", gates, levels=self.rule.turn_on),
+            Panel(_title([through]), "A", (through,)),
+        )
+
+
+def _place(f: Finding) -> int | None:
+    """Under which a finding's waveforms are found."""
+    return f.channel if f.channel is not None else f.place
+
+
 def _title(waves: Sequence[Envelope]) -> str:
     name = waves[0].label if len(waves) == 1 else _SEVERAL.get(waves[0].unit, waves[0].label)
     return name[:1].upper() + name[1:]
@@ -231,23 +260,27 @@ def _causes(f: Finding, board: Board, deck: Deck | None) -> tuple[Key, ...]:
     who = channels_in_question(f, board)
     if f.check == "pull-in":
         causes = ((None, "v_rail"),)
+    elif f.place is not None:
+        causes = ((f.place, "i_d"), (f.place, "v_ds"))
+    elif package_members(f, board):  # their sum, where there is one; who is on says the rest
+        causes = ((None, f"i_ground, {f.label}"),)
     elif len(who) == 1 and f.shape != "count":
         causes = ((who[0], "i_coil"), (who[0], "v_ds")) if f.unit in ("A", "J") else ((who[0], "i_coil"),)
     else:
         causes = _BOARD_CAUSES.get(f.check, ((None, "i_total"), (None, "i_supply")))
-    mine = [(f.channel, q) for q in f.probes] if len(f.probes) == 1 else []  # of a product neither is shown
+    mine = [(_place(f), q) for q in f.probes] if len(f.probes) == 1 else []  # of a product neither is shown
     return tuple(key for key in causes if key in deck.signals and key not in mine)
 
 
 def _breakdown(f: Finding, deck: Deck | None) -> float:
     """Where the model of a finding's switch conducts; minus infinity where there is none. [V]"""
     placed = deck.rules if deck is not None else ()
-    mine = [p.rule for p in placed if p.channel == f.channel and isinstance(p.rule, BreakdownRule)]
+    mine = [p.rule for p in placed if p.channel == _place(f) and isinstance(p.rule, BreakdownRule)]
     found = [r.breakdown for r in mine if r.voltage in f.probes] or [r.breakdown for r in mine]
     return found[0] if found else -np.inf
 
 
-def _feed(cuts: Sequence[_Cut], waves: Waves, deck: Deck) -> None:
+def _feed(cuts: Sequence[_Cut | _LegCut], waves: Waves, deck: Deck) -> None:
     """Give every cut its share of the waveforms."""
     cuts = [c for c in cuts if c.subject or c.causes]
     keys = tuple(dict.fromkeys(key for c in cuts for key in (*c.subject, *c.causes)))
@@ -272,12 +305,12 @@ def _commanded(firing: Firing) -> Mapping[int, Floats]:
 
 
 def _closeup(
-    cut: _Cut, board: Board, firing: Firing, asked: Mapping[int, Floats], deck: Deck | None, corner: str
+    cut: _Cut | _LegCut, board: Board, firing: Firing, asked: Mapping[int, Floats], deck: Deck | None, corner: str
 ) -> Closeup:
     f, (start, stop) = cut.finding, cut.stretch
     panels = cut.panels(deck) if deck is not None and (f.probes or cut.causes) else ()
     named = (f.corner or corner) if panels else f.corner
-    if f.shape == "count":
+    if f.shape == "count" and isinstance(cut, _Cut):
         panels = (_count(f, firing, cut), *panels)
     if f.at is None and not f.probes:
         return Closeup(f.key, named, start, stop, (), {}, {}, {})
@@ -289,6 +322,9 @@ def _closeup(
     who = channels_in_question(f, board)
     in_view = {*on, *(c for c, spans in commanded.items() if len(_touching(spans, start, stop)))}
     in_view |= set(who) if len(who) == 1 else set()
+    if members := package_members(f, board):
+        in_view &= set(members)  # the others' coils are no part of the sum
+        on, commanded = ({c: rows for c, rows in every.items() if c in members} for every in (on, commanded))
     labels = {c.number: c.label for c in board.channels if c.number in in_view}
     return Closeup(f.key, named, start, stop, panels, on, commanded, labels, who)
 

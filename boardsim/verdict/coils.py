@@ -8,7 +8,7 @@ from dataclasses import replace
 import numpy as np
 
 from boardsim.circuit.deck import PlacedRule
-from boardsim.parts.rules import IdleRule, PullInRule, ReleaseRule
+from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule, SneakRule
 from boardsim.quantities import in_units
 from boardsim.verdict.bench import Bench, when
 from boardsim.verdict.findings import Finding, Floats
@@ -38,13 +38,14 @@ def judge_release(
     times, values = samples
     if not len(values):
         return
-    k = int(np.argmax(values))
-    value, at, bound = max(float(values[k]), 0.0), float(times[k]), rule.limit.value
+    left = np.abs(values) if rule.besides else np.maximum(values, 0.0)
+    k = int(np.argmax(left))
+    value, at, bound = float(left[k]), float(times[k]), rule.limit.value
     margin = None if bound is None else (bound - value) / bound
-    said = (
-        f"{placed.label}: fired again at {in_units(at, 's', 4)} while its coil still carries {in_units(value, 'A')}; "
-    )
-    said += _held(placed, bound, margin, "lets go below", "release", "a longer pause, or a clamp of higher voltage")
+    other_way = " the other way" if rule.besides and values[k] < 0 else ""
+    said = f"{placed.label}: fired again at {in_units(at, 's', 4)} while its coil still carries {in_units(value, 'A')}{other_way}; "
+    remedy = "a longer pause" if rule.besides else "a longer pause, or a clamp of higher voltage"
+    said += _held(placed, bound, margin, "lets go below", "release", remedy)
     yield bench.finding(placed, rule.limit, "coil current when fired again", value, margin, at, said)
 
 
@@ -61,14 +62,7 @@ def judge_idle(rule: IdleRule, placed: PlacedRule, samples: tuple[Floats, Floats
         return
     k = int(np.argmax(np.abs(values)))
     value, at = float(abs(values[k])), float(times[k])
-    limit, board = rule.limit, bench.board
-    coil = board.channel(placed.channel or 0).coil
-    stands = f"{placed.part} lets go below"
-    if limit.value is None:
-        settled = board.supply.voltage.min / (coil.resistance.max + board.supply.resistance.max)
-        why = f"{rule.share:.0%} of the settled current, since no release current was given: from memory"
-        limit = replace(limit, value=rule.share * settled, source=f"assumed: {why}", name="harmless current")
-        stands = f"a tenth of the settled current of {placed.part}, for want of a release current, is"
+    limit, stands = harmless_limit(rule, placed, bench)
     bound = limit.value or 0.0
     margin = (bound - value) / bound
     said = (
@@ -78,6 +72,18 @@ def judge_idle(rule: IdleRule, placed: PlacedRule, samples: tuple[Floats, Floats
     if margin < 0:
         said += "; try: a clamp that blocks the highest rail, or a switch that is off at its gate's or base's level"
     yield bench.finding(placed, limit, "coil current while off", value, margin, at, said)
+
+
+def harmless_limit(rule: IdleRule | SneakRule, placed: PlacedRule, bench: Bench) -> tuple[Limit, str]:
+    """What a coil that is off may carry, and the words for it: its release current, or a share of its settled current."""
+    limit, board = rule.limit, bench.board
+    if limit.value is not None:
+        return limit, f"{placed.part} lets go below"
+    coil = board.channel(placed.channel or 0).coil
+    settled = board.supply.voltage.min / (coil.resistance.max + board.supply.resistance.max)
+    why = f"{rule.share:.0%} of the settled current, since no release current was given: from memory"
+    limit = replace(limit, value=rule.share * settled, source=f"assumed: {why}", name="harmless current")
+    return limit, f"a tenth of the settled current of {placed.part}, for want of a release current, is"
 
 
 def _held(placed: PlacedRule, bound: float | None, margin: float | None, does: str, name: str, remedy: str) -> str:

@@ -102,6 +102,8 @@ class Finding:
         Those that are counted, where channels are.
     accepted : Acceptance or None
         Whether somebody knows of the broken limit.
+    place : int or None
+        Of a row or column of a matrix, which is no channel: under which its waveforms are found.
     """
 
     check: str
@@ -128,6 +130,7 @@ class Finding:
     shape: Shape = "value"
     channels: tuple[int, ...] = ()
     accepted: Acceptance | None = None
+    place: int | None = None
 
     @property
     def excused(self) -> bool:

@@ -7,6 +7,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import replace
 
 from boardsim.board.corners import hot_junction
+from boardsim.board.matrix import LINES_FROM
 from boardsim.circuit.deck import PlacedRule
 from boardsim.firing.schedule import Firing
 from boardsim.parts.base import Corner
@@ -17,6 +18,7 @@ from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding
 from boardsim.verdict.readings import Readings
 
+_NOISE = 1e-12  # [W]: decks resolve 1 uA (abstol) and 1 uV (vntol, ngspice's own), what is below their product has no sign even
 _HOTTEST = 1000.0  # [K] that a report says of a junction that runs away: none lives to see it
 
 
@@ -30,7 +32,8 @@ def judge_heat(
     part = rule.part or placed.part
     members = rule.channels or (placed.channel,)
     power = sum(readings.means[c, pair] for c in members for pair in rule.powers)
-    among = f" of its {len(members)} channels" if rule.channels else ""
+    power = power if abs(power) >= _NOISE else 0.0
+    among = f" of its {_members(rule)}" if rule.channels else ""
     said = f"{placed.label}: {rule.what} takes {in_units(power, 'W')}{among} on average {firing.averaged_over}"
     r_th, limit = rule.resistance.value, rule.limit.value
     air = f"air of {celsius(rule.ambient)}"
@@ -48,6 +51,12 @@ def judge_heat(
     said += f": {reached} in {air} with {in_units(r_th, 'K/W')}; the {rule.limit.name} of {part} is {celsius(limit)}"
     said += f"; try: {rule.advice}" if margin < 0 else ""
     return bench.finding(placed, rule.limit, rule.what, hot, margin, None, said, rule.consequence, part=part)
+
+
+def _members(rule: HeatRule) -> str:
+    """Who shares a package: channels, or lines of a matrix, and how many."""
+    who = "line" if any(place >= LINES_FROM for place in rule.channels) else "channel"
+    return f"one {who}" if len(rule.channels) == 1 else f"{len(rule.channels)} {who}s"
 
 
 def judge_warmth(found: Sequence[Finding], bench: Bench) -> Iterator[Finding]:

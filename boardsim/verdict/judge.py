@@ -28,9 +28,11 @@ from boardsim.parts.rules import (
     ReleaseRule,
     Rule,
     ShootThroughRule,
+    SneakRule,
     TogetherRule,
 )
 from boardsim.quantities import in_units
+from boardsim.verdict.audit import SMALL
 from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
 from boardsim.verdict.bridges import judge_leg
@@ -42,6 +44,7 @@ from boardsim.verdict.logic_rail import judge_fall, judge_least
 from boardsim.verdict.motion import judge_motion
 from boardsim.verdict.rail import judge_ceiling, judge_dip
 from boardsim.verdict.readings import Readings, pulse_key
+from boardsim.verdict.sneak import judge_sneak
 from boardsim.verdict.surges import judge_pulses
 
 
@@ -61,13 +64,19 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
     for placed in deck.rules:
         assumed = _assumed(placed, deck)
         nominal = tuple(name for name in bench.nominal_only if not _beside_the_point(name, placed))
-        scale = readings.high.get((placed.channel, "i_coil"), (0.0, 0.0))[0]
+        line = placed.channel if placed.channel in deck.lines else None
+        carried = (placed.channel, "i_coil" if line is None else "i_d")
+        scale = max(abs(of.get(carried, (0.0, 0.0))[0]) for of in (readings.high, readings.low))
         for finding in _apply(placed, readings, firing, deck, bench):
             size = scale if finding.unit == "A" else 0.0
             size = hottest if finding.unit == "W" and finding.limit is None else size
+            if isinstance(placed.rule, ShootThroughRule):
+                size = scale_of(placed.rule)
             found.append(
                 replace(
                     finding,
+                    channel=finding.channel if line is None else None,
+                    place=line,
                     corner=bench.corner,
                     nominal_only=nominal,
                     assumed=assumed,
@@ -77,6 +86,18 @@ def judge(readings: Readings, deck: Deck, firing: Firing, bench: Bench) -> list[
                 )
             )
     return [*found, *judge_warmth(found, bench)]
+
+
+def scale_of(rule: ShootThroughRule) -> float:
+    """What a change of the time left is compared on by the audit, as a finding's scale: the dead time itself. [s]
+
+    Notes
+    -----
+    The reading is the difference of two edges that come a dead time apart. Of a gate that only just touches its threshold the
+    time above it is ill-conditioned, and no step resolves a hundredth of that; a hundredth of the dead time is a tenth of the
+    guard band. Without a dead time a change counts as a share of the reading.
+    """
+    return rule.dead_time / SMALL
 
 
 def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
@@ -114,6 +135,10 @@ def _beside_the_point(name: str, placed: PlacedRule) -> bool:
             return not isinstance(rule, HeatRule | PullInRule)
         case "threshold":
             return not isinstance(rule, IdleRule)
+        case "gate driver's supply":
+            return not isinstance(rule, ShootThroughRule | FloorRule | PeakRule | HeatRule)
+        case "gate charge of the high transistor" | "gate charge of the low transistor" | "gate resistances":
+            return not isinstance(rule, ShootThroughRule | HeatRule)
         case "bulk capacitance" | "bulk series resistance":
             return placed.channel is not None and not isinstance(rule, PullInRule)
         case _:
@@ -160,6 +185,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
         case MotionRule() as rule:
             yield from judge_motion(rule, placed, readings.motions[_channel(placed)], bench)
+        case SneakRule() as rule:
+            yield judge_sneak(rule, placed, readings.sneaks[_channel(placed)], firing, bench)
         case DipRule() as rule:
             yield judge_dip(rule, placed, readings, firing, bench)
         case LeastRule() as rule:
@@ -167,7 +194,9 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
         case FallRule() as rule:
             yield judge_fall(rule, placed, readings, firing, bench)
         case ShootThroughRule() as rule:
-            if (leg := judge_leg(rule, placed, readings.legs[_channel(placed)], bench)) is not None:
+            place = _channel(placed)
+            fired = bool(len(firing.spans(place)))
+            if (leg := judge_leg(rule, placed, readings.legs[place], bench, fired=fired)) is not None:
                 yield leg
         case CeilingRule() as rule:
             yield judge_ceiling(rule, placed, readings, firing, bench)
@@ -192,7 +221,7 @@ def _peak(rule: PeakRule, placed: PlacedRule, readings: Readings, bench: Bench) 
 
 
 def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Iterator[Finding]:
-    if not len(firing.on[_channel(placed)]):
+    if not len(firing.spans(_channel(placed))):
         return
     value, at = readings.high[placed.channel, rule.quantity]
     times, values = readings.at_ends.get((_channel(placed), rule.quantity), ((), ()))
@@ -213,6 +242,6 @@ def _floor(rule: FloorRule, placed: PlacedRule, readings: Readings, firing: Firi
 
 
 def _channel(placed: PlacedRule) -> int:
-    """The channel of a rule that only channels have."""
+    """The channel of a rule that only channels have, or the line."""
     assert placed.channel is not None
     return placed.channel

@@ -24,9 +24,9 @@ def judge_least(rule: LeastRule, placed: PlacedRule, readings: Readings, bench: 
     value, at = readings.low[placed.channel, rule.quantity]
     bound = rule.limit.value
     if bound is None:
-        said = f"{placed.label}: {rule.what} falls to {in_units(value, rule.limit.unit)}{when(at)}; no {rule.limit.name} of {placed.part} "
+        said = f"{placed.label}: {rule.what} falls to {in_units(value, rule.limit.unit)}{when(at)}; no {rule.limit.name} of {rule.part or placed.part} "
         said += "was given to hold it against"
-        return bench.finding(placed, rule.limit, rule.what, value, None, at, said, worse="low")
+        return bench.finding(placed, rule.limit, rule.what, value, None, at, said, part=rule.part, worse="low")
     margin = (value - bound) / bound
     reading, allowed = apart(value, bound, rule.limit.unit)
     said = f"{placed.label}: {rule.what} falls to {reading}{when(at)}; the {rule.limit.name} is {allowed}"
@@ -35,7 +35,7 @@ def judge_least(rule: LeastRule, placed: PlacedRule, readings: Readings, bench: 
         said += f"; below it the logic rail is no longer regulated, and falls to {lowest}, which is judged by itself"
         margin = 0.0
     said += f"; try: {rule.advice}" if margin < 0 else ""
-    return bench.finding(placed, rule.limit, rule.what, value, margin, at, said, worse="low")
+    return bench.finding(placed, rule.limit, rule.what, value, margin, at, said, part=rule.part, worse="low")
 
 
 def judge_fall(rule: FallRule, placed: PlacedRule, readings: Readings, firing: Firing, bench: Bench) -> Finding:

@@ -4,18 +4,19 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 
 import numpy as np
 
 from boardsim.board.held_lines import held_lines
+from boardsim.board.matrix import Line
 from boardsim.board.reader import Board, Channel
 from boardsim.firing.schedule import Firing
 from boardsim.parts.register import Register
 from boardsim.parts.regulator import Regulator
 from boardsim.quantities import in_units
 from boardsim.verdict.chain_findings import assumed_among, chain_finding, register_name
-from boardsim.verdict.chain_loads import together_at_most
+from boardsim.verdict.chain_loads import steady_currents, together_at_most
 from boardsim.verdict.findings import Finding
 
 
@@ -55,9 +56,8 @@ def _regulator(board: Board, part: Regulator, firing: Firing) -> Finding:
     Ohm's law, steady currents at the highest rail; what charges gates comes from the capacitors. The refill of the output
     capacitor after a dip is no load: there a regulator at its ceiling does what it is there for.
     """
-    volts, register = part.voltage.max, board.chain.register_
-    each = {c.number: c.switch.steady_input(volts, register.output_resistance.min) for c in board.channels}
-    outputs = together_at_most(firing, list(board.channels), each)
+    volts = part.voltage.max
+    outputs = together_at_most(board, firing, steady_currents(board, volts))
     total, ceiling = part.load.max + outputs, part.current_ceiling
     said = f"the logic rail feeds {in_units(part.load.max, 'A')} of load and up to {in_units(outputs, 'A')} of outputs, {in_units(total, 'A')} in all; "
     limit = None if ceiling is None else ceiling.min
@@ -178,25 +178,25 @@ def _charge(coulombs: float, amperes: float) -> str:
 def _worst_edge(board: Board, firing: Firing, volts: float) -> tuple[float, float, int]:
     """Of one register and one latch edge the most that rising outputs take: charge, first current, which. [C], [A]"""
     register: Register = board.chain.register_
-    by_register: dict[int, list[Channel]] = {}
-    for c in board.channels:
-        by_register.setdefault(c.output // int(register.outputs), []).append(c)
+    by_register: dict[int, list[Channel | Line]] = {}
+    for d in board.drivers:
+        by_register.setdefault(d.output // int(register.outputs), []).append(d)
     worst = (0.0, 0.0, 0)
-    for number, channels in by_register.items():
-        for together in _rising(firing, channels).values():
-            each = [c.switch.edge_input(volts, register.output_resistance.min) for c in together]
+    for number, drivers in by_register.items():
+        for together in _rising(firing, drivers).values():
+            each = [d.switch.edge_input(volts, register.output_resistance.min) for d in together]
             charge, current = (float(np.sum([one[k] for one in each])) for k in (0, 1))
             if current > worst[1]:
                 worst = (charge, current, number)
     return worst
 
 
-def _rising(firing: Firing, channels: list[Channel]) -> Mapping[float, list[Channel]]:
+def _rising(firing: Firing, drivers: Sequence[Channel | Line]) -> Mapping[float, list[Channel | Line]]:
     """Whose outputs rise on which latch edge. [s]"""
-    found: dict[float, list[Channel]] = {}
-    for c in channels:
-        levels = firing.levels[c.output]
+    found: dict[float, list[Channel | Line]] = {}
+    for d in drivers:
+        levels = firing.levels[d.output]
         for (_, before), (at, level) in itertools.pairwise(levels):
             if level and not before:
-                found.setdefault(at, []).append(c)
+                found.setdefault(at, []).append(d)
     return found

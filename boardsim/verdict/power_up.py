@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from boardsim.board.bridges import forwards
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.boot import Boot
 from boardsim.circuit.deck import Deck
@@ -99,7 +100,7 @@ class BootWatch:
         taken = take_boot(waves, deck, self.board, self.boot)
         self.found[deck.corner.name] = taken
         found = []
-        for c in self.board.channels:
+        for c in forwards(self.board):
             mine = taken.channels[c.number]
             full = settled(self.board, c, deck.corner)
             held = c.coil.held(full, deck.corner)
@@ -147,7 +148,7 @@ class _Watch:
 
     def __init__(self, deck: Deck, board: Board, boot: Boot):
         self.deck, self.boot = deck, boot
-        self.numbers = [c.number for c in board.channels]
+        self.numbers = [c.number for c in forwards(board)]  # of every coil once
         shown = [name for name in _SHOWN if (None, name) in deck.signals]
         self.keys: tuple[Key, ...] = (
             *((c, "i_coil") for c in self.numbers),
@@ -158,7 +159,7 @@ class _Watch:
         self.shown = {name: 2 * n + k for k, name in enumerate(shown)}
         self.peak, self.taken = Extremes(n), Integrals(n)
         self.last = np.zeros(n)
-        self.counts = np.array([harmless(board, c, deck.corner) for c in board.channels])[:, None]
+        self.counts = np.array([harmless(board, c, deck.corner) for c in forwards(board)])[:, None]
         self.fed = [Crossings(0.0) for _ in self.numbers]
         self.slices = Slices(np.linspace(0.0, boot.duration, SLICES + 1), len(shown))
         self.rails, self.highs = np.array(level_points(board.chain.register_, "high")).T

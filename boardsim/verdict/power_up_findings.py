@@ -6,6 +6,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from boardsim.board.bridges import forwards
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.boot import Boot
 from boardsim.parts.base import Corner
@@ -20,7 +21,7 @@ CHECK = "uncommanded"
 def judge_boot(board: Board, boot: Boot, found: BootReading, corner: Corner, nominal: tuple[str, ...]) -> list[Finding]:
     """Every channel's current before the first enabled frame against what counts, and the end of clear against the frame."""
     judged = _judge_channel if boot.reset is None else _judge_reset
-    findings = [judged(board, boot, c, found, corner, nominal) for c in board.channels]
+    findings = [judged(board, boot, c, found, corner, nominal) for c in forwards(board)]
     if found.cleared_until is not None and boot.reset is None:
         findings += where_limits_hold(board, [_judge_clear(board, boot, found, nominal)])
     return findings
@@ -154,7 +155,7 @@ def _remedy(board: Board, c: Channel, after_reset: bool) -> str:
     if line.capacitance is not None:
         behind = "rises slowly once its pin lets go" if after_reset else "lags behind the logic rail"
         return f"a smaller capacitor or pull-up at output enable: it {behind}"
-    if not c.switch.held_off():
+    if not c.held_off:
         return "a pull-down at its gate, which floats while the outputs are not enabled"
     if c.switch.in_the_chain:
         return "a smaller pull-up at output enable"

@@ -30,11 +30,13 @@ from boardsim.parts.rules import (
     ReleaseRule,
     Rule,
     ShootThroughRule,
+    SneakRule,
 )
-from boardsim.verdict.bridges import Leg
+from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
 from boardsim.verdict.motion import Strokes, Travelled
 from boardsim.verdict.pulses import OnePulse, Pulses
+from boardsim.verdict.sneak import Growth
 from boardsim.verdict.watch import (
     Avalanche,
     Avalanches,
@@ -101,6 +103,8 @@ class Readings:
         What its coil moved, pulse by pulse.
     legs : mapping of channel to Leg
         What the two transistors of a bridge's leg do.
+    sneaks : mapping of channel to Growth
+        What others drive through its coil, of channels of a matrix.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -123,6 +127,7 @@ class Readings:
     at_ends: Mapping[tuple[int, str], tuple[Floats, Floats]] = field(default_factory=dict)
     motions: Mapping[int, tuple[Travelled, ...]] = field(default_factory=dict)
     legs: Mapping[int, Leg] = field(default_factory=dict)
+    sneaks: Mapping[int, Growth] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -170,12 +175,12 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     ceiling_rule = next((r for _, r in rules if isinstance(r, CeilingRule)), None)
     ceiling = TimeAbove(AT_CEILING * ceiling_rule.limit.value if ceiling_rule and ceiling_rule.limit.value else np.inf)
     pull_in = {
-        c: Samples(_within(firing.on[c][:, 1], start, stop))
+        c: Samples(_within(firing.spans(c)[:, 1], start, stop))
         for c, r in rules
         if isinstance(r, PullInRule) and c is not None
     }
     release = {
-        c: Samples(_within(firing.on[c][1:, 0], start, stop))
+        c: Samples(_within(fired_again(firing, c, r.besides), start, stop))
         for c, r in rules
         if isinstance(r, ReleaseRule) and c is not None
     }
@@ -185,19 +190,22 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if isinstance(r, MotionRule) and r.check == "stroke" and c is not None
     }
     idle = {
-        c: Samples(_at_rest(firing.on[c], start, stop)) for c, r in rules if isinstance(r, IdleRule) and c is not None
+        c: Samples(_at_rest(np.concatenate([firing.spans(k) for k in (c, *r.besides)]), start, stop))
+        for c, r in rules
+        if isinstance(r, IdleRule) and c is not None
     }
+    sneaks = {c: Growth(firing.spans(c)) for c, r in rules if isinstance(r, SneakRule) and c is not None}
     drive = {
-        (c, quantity): Samples(_within(firing.on[c][:, 1], start, stop))
+        (c, quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
         for c, r in rules
         if isinstance(r, DriveRule) and c is not None
         for quantity in (r.quantity, r.current)
     }
     moving = (None, "i_regulator") in row
     at_ends = {
-        (c, r.quantity): Samples(_within(firing.on[c][:, 1], start, stop))
+        (c, r.quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
         for c, r in rules
-        if moving and isinstance(r, FloorRule) and c is not None
+        if moving and isinstance(r, FloorRule) and not r.any_time and c is not None
     }
     avalanches = {
         (c, r.voltage): (Avalanches(r.breakdown), r) for c, r in rules if isinstance(r, BreakdownRule) and c is not None
@@ -235,6 +243,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for samples in (pull_in, release, idle):
             for c, sample in samples.items():
                 sample.feed(t, y[row[c, "i_coil"]])
+        for c, growth in sneaks.items():
+            growth.feed(t, y[row[c, "i_coil"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for (c, _), (watch, rule) in avalanches.items():
@@ -257,6 +267,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         elif port.store and channel is not None:
             energy = 0.5 * port.store[1] * _largest(extremes, row[channel, port.store[0]]) ** 2
             held[channel] = max(held.get(channel, 0.0), energy)
+    held |= {line: max(held.get(c, 0.0) for c in along) for line, along in deck.lines.items()}
     held[None] = max(held.values(), default=0.0)
     return Readings(
         {k: (float(extremes.high[i]), float(extremes.high_at[i])) for k, i in row.items()},
@@ -301,6 +312,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {key: (sample.times, sample.values) for key, sample in at_ends.items()},
         {c: strokes.all() for c, (strokes, _) in moving_parts.items()},
         {c: leg for c, (leg, _) in legs.items()},
+        sneaks,
     )
 
 

@@ -282,7 +282,7 @@ def _unfinished(board: Board, firing: Firing, recorded: Recorded) -> Iterator[Fi
 
 def _not_held(board: Board) -> tuple[int, ...]:
     """Channels whose switch nothing keeps off while the register's output lets go."""
-    return tuple(c.number for c in board.channels if not c.switch.held_off())
+    return tuple(c.number for c in board.channels if not c.held_off)
 
 
 def _let_go(board: Board, recorded: Recorded) -> Iterator[Finding]:

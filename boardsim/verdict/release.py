@@ -18,6 +18,7 @@ from boardsim.verdict.findings import Envelope, Floats, Reading
 from boardsim.verdict.readings import Key, SignalTable, our_name
 from boardsim.verdict.watch import Extremes, Integrals, Slices
 
+_RESOLVED = 1e-6  # of the coil's energy
 SLICES = 3000  # from turn-off to the end; a fast clamp's release is a tenth of it
 _BEFORE = 0.05  # share of the time after the turn-off that is shown before it
 
@@ -193,19 +194,21 @@ class _TurnOffWatch:
 
     def __init__(self, deck: Deck, channel: Channel, on: float, off: float):
         self.deck, self.coil, self.on, self.off = deck, channel.coil, on, off
-        k = channel.number
-        switch = _pairs(k, channel.switch.stamp("s", "pin", "drain", deck.corner))
-        clamp = _pairs(k, channel.clamp.stamp("c", "drain", "rail", deck.corner))
-        shared = channel.clamp.common("p", "pin", "rail", deck.corner)
-        if shared is not None:  # the channel is alone on its board: what its package has once is all its own
-            clamp += _pairs(None, of_package(shared, channel.package or channel.label))
-        rule = breakdown_rule(channel)
-        v_switch = (k, rule.voltage) if rule is not None else switch[0][0]
-        i_coil, i_l = (k, "i_coil"), (k, "i_l")
+        # Of a matrix both lines' switches and clamps take the coil's energy; the voltage is the column's.
+        drivers, corner = channel.drivers, deck.corner
+        switch = [pair for d in drivers for pair in _pairs(d.number, d.switch.stamp("s", "a", "b", corner, "rail"))]
+        clamp = [pair for d in drivers for pair in _pairs(d.number, d.clamp.stamp("c", "a", "b", corner))]
+        for d in drivers:
+            shared = d.clamp.common("p", "a", "b", corner)
+            if shared is not None:  # the channel is alone on its board: what its package has once is all its own
+                clamp += _pairs(None, of_package(shared, d.package or d.label))
+        rule, place = breakdown_rule(channel), drivers[-1].number
+        v_switch = (place, rule.voltage) if rule is not None else switch[-1][0]
+        i_coil, i_l = (channel.number, "i_coil"), (channel.number, "i_l")
         self.keys: tuple[Key, ...] = tuple(
             dict.fromkeys([v_switch, i_coil, i_l, *(q for pair in (*switch, *clamp) for q in pair)])
         )
-        row = {key: place for place, key in enumerate(self.keys)}
+        row = {key: k for k, key in enumerate(self.keys)}
         self.v_switch, self.i_coil, self.i_l = row[v_switch], row[i_coil], row[i_l]
         self.ports = [[(row[v], row[i]) for v, i in pairs] for pairs in (clamp, switch)]
 
@@ -237,6 +240,7 @@ class _TurnOffWatch:
 
     def turn_off(self) -> TurnOff:
         into_clamp, into_switch, charge = (float(total) for total in self.taken.total)
+        held = self.coil.held(self.current, self.deck.corner)
         edges = self.slices.edges - self.off
         v_switch, i_coil = (
             Envelope(label, unit, edges, self.slices.low[k], self.slices.high[k])
@@ -247,17 +251,29 @@ class _TurnOffWatch:
         return TurnOff(
             self.deck.corner.name,
             float(self.peak.high[0]),
-            into_clamp,
-            into_switch,
+            resolved(into_clamp, held),
+            resolved(into_switch, held),
             None if first is None else first - self.on,
             None if since is None else since - self.off,
             charge,
-            self.coil.held(self.current, self.deck.corner),
+            held,
             v_switch,
             i_coil,
         )
 
 
 def _pairs(channel: int | None, stamp: Stamp) -> list[tuple[Key, Key]]:
-    """The voltages and currents whose products are the power into a stamp's ports."""
-    return [((channel, v), (channel, i)) for port in stamp.ports for v, i in port.pairs]
+    """The voltages and currents whose products are the power into a stamp's ports, and into those of what is inside it."""
+    inside = [pair for _, inner in stamp.inside for pair in _pairs(channel, inner)]
+    return [*inside, *(((channel, v), (channel, i)) for port in stamp.ports for v, i in port.pairs)]
+
+
+def resolved(energy: float, coil_energy: float) -> float:
+    """An energy, or 0 where it is no more than what is left of the rounding of a run. [J]
+
+    Notes
+    -----
+    What a gate gives back and what a run rounds away leave nanojoules of either sign. The audit vouches for a hundredth of the
+    energy that decides; below a millionth of what the coil held nothing is told apart from zero.
+    """
+    return energy if abs(energy) >= _RESOLVED * coil_energy else 0.0

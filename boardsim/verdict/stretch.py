@@ -22,13 +22,24 @@ class Stretch(NamedTuple):
 
 
 def channels_in_question(finding: Finding, board: Board) -> tuple[int, ...]:
-    """The channels that a finding is about; none for a part of the whole board."""
+    """The channels that a finding is about; those of a package for a sum over it, none for a part of the whole board."""
     if finding.channel is not None:
         return (finding.channel,)
+    if members := package_members(finding, board):
+        return members
+    if finding.place is not None:  # a row or column is all who lie along it
+        return next((line.channels for line in board.lines if line.number == finding.place), ())
     if finding.channels or finding.probes or finding.at is None:
         return finding.channels
     # The worst pulse of all is a finding of the whole board, and is named by its channel.
     return tuple(c.number for c in board.channels if c.label == finding.label)
+
+
+def package_members(finding: Finding, board: Board) -> tuple[int, ...]:
+    """The channels of the package that a finding is about; none where it is about something else."""
+    if finding.channel is not None or finding.place is not None:
+        return ()
+    return tuple(c.number for c in board.channels if c.package and c.package == finding.label)
 
 
 def stretch_of(finding: Finding, board: Board, firing: Firing) -> Stretch:
@@ -61,7 +72,8 @@ def _around_moment(f: Finding, at: float, board: Board, firing: Firing) -> Stret
     start, stop = at - reach, at + reach
     if f.lasting is not None:
         start, stop = start - f.lasting, stop + f.lasting
-    spans = firing.on.get(f.channel, np.empty((0, 2))) if f.channel is not None else np.empty((0, 2))
+    place = f.channel if f.channel is not None else f.place
+    spans = np.empty((0, 2)) if place is None else firing.spans(place)
     before, after = spans[spans[:, 0] < at], spans[spans[:, 0] > at]
     if f.shape == "energy":
         # The coil is empty in less than it takes to fill; what comes after the next turn-on is another event.

@@ -365,6 +365,8 @@ class PowerUp:
         "v_rail", "v_logic", "v_enable" and "v_clear" where these are lines of their own [V], "enabled" [1], "i_total" [A].
     reset : float or None
         When the reset is; None at switch-on. [s]
+    disabled : str
+        What outputs that are not enabled are, of these registers.
     """
 
     rows: tuple[BootRow, ...]
@@ -376,6 +378,7 @@ class PowerUp:
     limit: float
     waves: Mapping[str, Envelope]
     reset: float | None = None
+    disabled: str = "high impedance"
 
     @property
     def table(self) -> Table:

@@ -6,15 +6,17 @@ from collections.abc import Callable, Iterable, Iterator, Mapping
 
 import numpy as np
 
-from boardsim.board.ranges import write_range
-from boardsim.board.reader import Board
+from boardsim.board.ranges import write_labels, write_range
+from boardsim.board.reader import Board, Channel
 from boardsim.firing.pattern import Pulse
-from boardsim.firing.schedule import Firing, MovedPulse
+from boardsim.firing.schedule import Firing, MovedPulse, WrongOutput
 from boardsim.parts.controller import Controller
 from boardsim.quantities import apart, in_units
+from boardsim.verdict.bridges import judge_directions
 from boardsim.verdict.chain import judge_chain
 from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.chain_loads import judge_loads
+from boardsim.verdict.driver_levels import judge_driver_levels
 from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
 from boardsim.verdict.logic_supply import judge_supply
 
@@ -35,6 +37,8 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     for members, most, reason in board.exclusive:
         label = f"channels {write_range(members)}"
         found.append(_at_once(board, firing, members, most, "exclusive channels on at once", label, reason))
+    found += judge_directions(board, firing)
+    found += judge_driver_levels(board)
     loads = where_limits_hold(board, judge_loads(board, firing))
     return [*found, *loads, *judge_chain(board), *judge_supply(board, firing)]
 
@@ -94,13 +98,19 @@ def _swallowed(board: Board, firing: Firing) -> Iterator[Finding]:
 def _moved(board: Board, firing: Firing) -> list[Finding]:
     """The pulse that ticks, register frames and jitter distort most, as a share of its own width; and the latest of all.
 
-    An output turns on and off at the times of `firing` or up to the jitter later, each edge by itself.
+    An output turns on and off at the times of `firing` or up to the jitter later, each edge by itself. What a switch takes by
+    design, such as a gate driver's delay and dead time, comes on top.
     """
     seen = [m for m in firing.moved if not m.swallowed]
     if not seen:
         return []
-    late = {m: max(m.start - m.pulse.start + firing.jitter, m.pulse.start - m.start) for m in seen}
-    changed = {m: abs(m.stop - m.start - m.pulse.width) + firing.jitter for m in seen}
+    own = {c: _delays(board.channel(c)) for c in dict.fromkeys(m.pulse.channel for m in seen)}
+    late, changed = {}, {}
+    for m in seen:
+        on, off = own[m.pulse.channel]
+        late[m] = max(m.start - m.pulse.start + firing.jitter + on, m.pulse.start - m.start)
+        wider = m.stop - m.start - m.pulse.width
+        changed[m] = max(abs(wider), abs(wider + off - on)) + firing.jitter
     found = [
         _distorted(board, late, "lateness of a pulse", _LATE),
         _distorted(board, changed, "change of a pulse's width", "changes its width by"),
@@ -119,6 +129,12 @@ def _moved(board: Board, firing: Firing) -> list[Finding]:
             )
         )
     return found
+
+
+def _delays(channel: Channel) -> tuple[float, float]:
+    """What a channel's switches take to turn on and off by design, at most; of a matrix the slower of both. [s]"""
+    each = [driver.switch.delays() for driver in channel.drivers]
+    return max(on for on, _ in each), max(off for _, off in each)
 
 
 def _timing(
@@ -196,13 +212,35 @@ def _lost_pauses(board: Board, firing: Firing) -> Iterator[Finding]:
 def _wrong(board: Board, firing: Firing) -> Iterator[Finding]:
     for w in firing.wrong:
         channel = board.channel(w.channel)
+        if w.by:
+            yield _ghost(board, w)
+            continue
         did = "stays off although it is commanded on" if w.commanded else "is on although nothing commands it"
         said = (
-            f"{channel.label} (output {channel.output}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, "
+            f"{channel.label} ({_outputs(channel)}): {did} at {in_units(w.at, 's', 4)}: bit order, order of the registers, "
             "active level and the map from channel to output and bit do not fit together; try: bit_order, first_out, "
             "active, outputs, bits"
         )
         yield _plain("output against command", "wrong-output", w.channel, channel.label, 1, w.at, said)
+
+
+def _outputs(channel: Channel) -> str:
+    """ "output 3", or "outputs 0 and 8" of its row and column."""
+    numbers = " and ".join(str(output) for output in channel.outputs)
+    return f"output{'s' if len(channel.outputs) > 1 else ''} {numbers}"
+
+
+def _ghost(board: Board, w: WrongOutput) -> Finding:
+    """A channel of a matrix that others turn on: their rows and columns cross at its coil as well."""
+    channel = board.channel(w.channel)
+    row, column = (driver.label for driver in channel.drivers)
+    who = write_labels([board.channel(n).label for n in w.by])
+    said = (
+        f"{channel.label}: is on from {in_units(w.at, 's', 4)} although nothing commands it: {who} are on together, and "
+        f"{row} of one and {column} of the other cross at its coil; try: one row after the other, or only channels along one "
+        "line at once"
+    )
+    return _plain("output against command", "wrong-output", w.channel, channel.label, 1, w.at, said)
 
 
 def most_together(firing: Firing, channels: tuple[int, ...]) -> tuple[int, float]:

@@ -36,6 +36,7 @@ WHOLE = {
     "array": 'part = "sink-array-8", to = "rail"',
     "array-zener": 'part = "sink-array-8", zener = "24v-5w", to = "rail"',
     "avalanche": "",
+    "built-in": "",
     "diode": 'diode = "fast-2a", to = "rail", at = "coil"',
     "diode-zener": 'diode = "fast-2a", zener = "24v-5w", to = "rail", at = "board"',
     "led": 'led = "led-white-5mm", resistor = "47 ohm", power = "1 W", diode = "fast-2a"',
@@ -55,6 +56,8 @@ def data_of(kind: str) -> dict[str, Any]:
     )["clamp"]
     if kind.startswith("array"):
         data["channels"]["0"]["switch"] = {"part": "sink-array-8"}
+    if kind == "built-in":
+        data["channels"]["0"]["switch"] = {"part": "source-array-8"}
     return data
 
 

@@ -47,7 +47,7 @@ NAME_RULE = (
         (changed('kind = "diode-zener", ', ""), 27, 'channels."0-23".clamp: "clamp" needs a "kind"'),
         (with_part('voltage = "3 V"'), 29, 'parts.mine: "mine" needs a "kind"'),
         # words
-        (changed('"diode-zener"', '"diod-zener"'), 27, 'channels."0-23".clamp: kind "diod-zener" is not known for "clamp" (did you mean "diode-zener"?); known: "active", "array", "array-zener", "avalanche", "diode", "diode-zener"'),
+        (changed('"diode-zener"', '"diod-zener"'), 27, 'channels."0-23".clamp: kind "diod-zener" is not known for "clamp" (did you mean "diode-zener"?); known: "active", "array", "array-zener", "avalanche", "built-in", "diode", "diode-zener"'),
         (changed('"rail"', '"ground"'), 27, "channels.\"0-23\".clamp.to: 'ground' is not allowed for \"to\"; allowed: \"rail\""),
         (changed(CLAMP, '[channels."0-23".clamp]\nkind = "diode"\ndiode = "fast-2a"\nto = "ground"'), 30, "channels.\"0-23\".clamp.to: 'ground' is not allowed for \"to\""),
         (changed(CLAMP, '[channels."0-23".clamp]\nkind = "diode"\ndiode = "fast-2a"\nzener = "20v-5w"'), 30, 'channels."0-23".clamp.zener: "zener" is not known here; known: kind, title, to, at, diode'),

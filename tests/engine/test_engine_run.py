@@ -136,6 +136,8 @@ def test_the_worker_is_gone_with_the_engine(tmp_path: Path) -> None:
         "Warning: Further gmin increment",
         "Note: Starting dynamic gmin stepping",
         "Warning: singular matrix:  check nodes c0_d and c0_d",
+        "Trying gmin =   1.0000E-03 Warning: singular matrix:  check nodes c and e2#branch",
+        "Supplies reduced to   0.1000% Supplies reduced to   0.0000% Warning: singular matrix:  check node b",
     ],
 )
 def test_talk_on_stderr_is_no_failure(line: str) -> None:
@@ -148,10 +150,34 @@ def test_talk_on_stderr_is_no_failure(line: str) -> None:
         'doAnalyses: TRAN:  Timestep too small; time = 1e-3, timestep = 1e-18: trouble with node "c0_d"',
         "Error on line 12 or its substitute:",
         "run simulation(s) aborted",
+        "Trying gmin =   1.0000E-03 Fatal error: singular matrix",
+        "Error: singular matrix",
     ],
 )
 def test_what_means_failure_is_failure(line: str) -> None:
     assert fatal_lines([line]) == [line]
+
+
+@pytest.mark.engine
+def test_a_matrix_that_is_singular_at_a_try_does_not_end_a_run_that_is_found_in_the_end(tmp_path: Path) -> None:
+    """A node between two capacitors has no level at rest: every try fails but the last, which starts all sources from 0.
+
+    What the run then must come to is the capacitive divider: 2 V over 1 uF and 3 uF leave 2 V / 4 at the lower one.
+    """
+    deck = """.title divider
+Vin a 0 PWL(0 0 1u 0 2u 2)
+C1 a b 1u
+C2 b 0 3u
+.save v(b)
+.tran 1u 100u 0 1u
+.end
+"""
+    with Engine(tmp_path / "keep") as engine, engine.run_text(deck, 100e-6) as waves:
+        last = list(waves.blocks())[-1][-1]
+        log = (engine.folder / "ngspice.log").read_text()
+    assert "Trying gmin" in log
+    assert any("singular matrix" in line and line.startswith("Trying gmin") for line in log.splitlines())
+    assert last[1] == pytest.approx(0.5, rel=1e-6)
 
 
 def test_a_cut_off_waveform_file_is_refused(tmp_path: Path) -> None:

@@ -183,6 +183,8 @@ def test_both_sorts_of_points_are_judged_and_told_apart() -> None:
         ({"safe_area": [("50 V", "2 A", "1 ms"), ("50 V", "2 A", "1 ms")]}, "one point for each length"),
         ({"thermal_impedance": [("1 K/W", "1 ms"), ("0.5 K/W", "10 ms")]}, "must rise with the length"),
         ({"thermal_impedance": [("1 K/W", "1 ms")], "junction_rating": None}, "need junction_rating"),
+        ({"thermal_impedance": [("1 K/W", "1 ms")], "junction_rating": "20 degC"}, "20 degC is not above 25 degC"),
+        ({"safe_area": [("50 V", "2 A", "1 ms")], "junction_rating": "25 degC"}, "25 degC is not above 25 degC"),
     ],
 )
 def test_points_that_cannot_be_are_refused(fields: dict[str, Any], text: str) -> None:

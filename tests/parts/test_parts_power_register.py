@@ -6,15 +6,17 @@ import math
 from pathlib import Path
 
 import pytest
+from pydantic import ValidationError
 
 from boardsim.board.reader import Board, library_part, read_board
 from boardsim.errors import InputError
-from boardsim.parts.base import Corner
+from boardsim.parts.base import NOMINAL, Corner
 from boardsim.parts.power_register import PowerRegister
 from boardsim.parts.power_switching import gate_shape
-from boardsim.parts.rules import BreakdownRule
+from boardsim.parts.rules import BreakdownRule, MeanRule, PulseRule
 from boardsim.parts.switches.power_output import PowerOutputStage
 from boardsim.verdict.chain import judge_chain
+from boardsim.verdict.surges import rated_for
 
 BOARD = Path(__file__).parents[2] / "netlists" / "bean-planter" / "board.toml"
 
@@ -47,6 +49,47 @@ def test_limits_are_those_of_the_data_sheet() -> None:
     assert part.pulse_current is not None
     assert (part.output_current.typ, part.pulse_current.typ) == pytest.approx((0.15, 0.5))
     assert (1 + part.growth.typ) ** 100 == pytest.approx(1.62, rel=1e-3)
+
+
+def test_a_clamp_energy_that_is_rated_from_beyond_the_highest_junction_is_refused() -> None:
+    """Nothing is left between the two to derate over: the whole energy would be allowed at any temperature."""
+    part = register()
+    known = {k: getattr(part, k) for k in part.model_fields_set}
+    for start in ("150 degC", "160 degC"):
+        with pytest.raises(ValidationError, match=r"150 degC is not above avalanche_from"):
+            PowerRegister.model_validate({**known, "junction_rating": "150 degC", "avalanche_from": start})
+    PowerRegister.model_validate({**known, "junction_rating": "150 degC", "avalanche_from": "100 degC"})
+
+
+@pytest.mark.parametrize(
+    ("name", "amperes", "lasting", "allowed"),
+    [
+        ("TPIC6B595", 3.9, 50e-6, True),  # eight times 500 mA, pulses up to 100 us
+        ("TPIC6B595", 4.1, 50e-6, False),
+        ("TPIC6B595", 1.1, 1.0, True),  # eight times 150 mA, however long
+        ("TPIC6B595", 1.3, 10e-3, False),
+        ("TPIC6595", 2.1, 50e-6, False),  # nothing is printed for pulses of all outputs: the continuous current holds
+    ],
+)
+def test_all_outputs_together_are_held_against_what_lasts_and_what_does_not(
+    name: str, amperes: float, lasting: float, allowed: bool
+) -> None:
+    """TI SLIS032A p. 3: continuous 150 mA and pulsed 500 mA of each output with all outputs on."""
+    stage = PowerOutputStage.model_validate({"part": register(name)}, context={})
+    pulse, mean = (t.rule for t in stage.stamp("x", "p", "l", NOMINAL).totals[:2])
+    assert isinstance(pulse, PulseRule)
+    assert isinstance(mean, MeanRule)
+    assert mean.limit.value == pulse.lasting
+    assert (rated_for(pulse.points, lasting, pulse.lasting)[0] >= amperes) is allowed
+
+
+def test_without_a_current_of_all_outputs_their_limit_is_missing_and_not_made_up() -> None:
+    part = register().model_copy(update={"total_current": None, "total_pulse_current": None})
+    stage = PowerOutputStage.model_validate({"part": part}, context={})
+    pulse, mean = (t.rule for t in stage.stamp("x", "p", "l", NOMINAL).totals[:2])
+    assert isinstance(pulse, PulseRule)
+    assert isinstance(mean, MeanRule)
+    assert (pulse.limit.value, pulse.points, mean.limit.value) == (None, (), None)
 
 
 def test_resistance_is_a_straight_line_through_the_printed_points() -> None:

@@ -189,7 +189,8 @@ def test_a_transistors_heat_is_judged_with_the_growth_of_its_on_resistance() -> 
     ("changes", "text"),
     [
         ({"threshold_drift": "-12 mV/K"}, "leaves no threshold at 175 degC"),
-        ({"breakdown_drift": "-3 V/K"}, "5.5% of 55 V per kelvin"),
+        ({"breakdown_drift": "-3 V/K"}, "of -3 V/K is 5.5% of 55 V per kelvin"),
+        ({"breakdown_drift": "0.2 V/K"}, "of 200 mV/K is 0.4% of 55 V per kelvin"),
         ({"on_resistance": [*MOSFET["on_resistance"], {"value": "15 mohm", "gate": "10 V", "at": "125 degC"}]}, "has to rise"),  # type: ignore[misc]
         (
             {"on_resistance": [*MOSFET["on_resistance"], {"value": "30 mohm", "gate": "10 V", "at": "125 degC"}],  # type: ignore[misc]

@@ -13,7 +13,7 @@ from boardsim.board.corners import nominal_only
 from boardsim.board.reader import library_part, read_board
 from boardsim.board.shelves import read_shelves
 from boardsim.engine.run import Engine
-from boardsim.errors import InputError
+from boardsim.errors import InputError, NoConvergence
 from boardsim.firing.pattern import read_pattern
 from boardsim.parts.base import NOMINAL, Part
 from boardsim.scenarios.fire import fire_pattern
@@ -268,3 +268,47 @@ def test_a_model_that_breaks_down_below_the_rating_is_a_finding_of_every_run(
     )
     result = fire_pattern(board, read_pattern(tmp_path / "one.toml", board), tmp_path / "kept")
     assert {f.verdict for f in result.findings if f.check == "model-breakdown"} == {verdict}
+
+
+@pytest.mark.engine
+def test_a_run_that_a_vendors_model_spoils_is_told_with_the_name_of_its_file(tmp_path: Path) -> None:
+    """Two voltages of 0 and 1 V between the same nodes: no circuit with this model in it has a solution."""
+    (tmp_path / "parts.toml").write_text(DIODE, encoding="utf-8")
+    lines = "V1 1 3 1\nV2 1 4 0\nR1 3 4 0\nD1 4 2 dm\n.model dm D(IS=1n)"
+    (tmp_path / "d.lib").write_text(f".subckt dd 1 2\n{lines}\n.ends\n", encoding="utf-8")
+    part = read_shelves([tmp_path])["mine"].part("mine")
+    assert part is not None
+    text = proof_text(part.proofs()[0], 1e-6, 1e-3, 1e-9)
+    with (
+        Engine(tmp_path / "kept") as engine,
+        pytest.raises(NoConvergence, match=r"vendors' models, which can be the cause: d\.lib\).*failed\.cir"),
+        engine.run_text(text, 20e-3),
+    ):
+        pass
+    assert "read from d.lib" in (tmp_path / "kept" / "failed.cir").read_text(encoding="utf-8")
+
+
+@pytest.mark.parametrize(
+    ("name", "given", "missing"),
+    [
+        ("zener-mine", 'voltage = "20 V +/- 5 %"', False),
+        ("zener-mine", 'voltage = "20 V"', True),
+        ("diode-mine", 'reverse_voltage = "100 V"', False),
+        ("diode-mine", "", True),
+    ],
+)
+def test_what_a_model_cannot_be_held_against_is_a_missing_limit_and_no_pass(
+    tmp_path: Path, name: str, given: str, missing: bool
+) -> None:
+    """A Zener of one number has no band, a diode without a rated voltage nothing that it has to stand."""
+    diode = '[diode-mine]\nkind = "diode"\nforward = [{ voltage = "0.8 V", current = "1 A" }]\nREVERSE\nmodel = { file = "plain.lib", model = "dmine" }\nsource = "made up for this test"\n'
+    text = PLAIN.replace('voltage = "20 V"', given) if name == "zener-mine" else PLAIN
+    (tmp_path / "parts.toml").write_text(text + diode.replace("REVERSE", given if name == "diode-mine" else ""))
+    (tmp_path / "plain.lib").write_text(MODELS, encoding="utf-8")
+    part = read_shelves([tmp_path])[name].part(name)
+    assert part is not None
+    stamp = part.stamp("x", "clamp part", "a", "b", (), NOMINAL)  # type: ignore[attr-defined]
+    rules = [r for r in stamp.rules if r.check == "model-breakdown"]
+    assert rules
+    assert {r.limit.value is None for r in rules} == {missing}
+    assert {r.quantity for r in rules} <= {p.quantity for p in stamp.probes}

@@ -2,7 +2,11 @@
 
 from __future__ import annotations
 
+import contextlib
 import math
+import re
+import shutil
+import subprocess
 from pathlib import Path
 
 import pytest
@@ -39,7 +43,52 @@ def test_numbers_are_read_as_spice_writes_them(text: str, number: float) -> None
     assert read_number(text.lower(), HERE) == pytest.approx(number)
 
 
-@pytest.mark.parametrize("text", ["5a", "4k7", "1x", "1e", "--1", "", "1e999", "0x10", "k"])
+@pytest.mark.engine
+def test_what_is_taken_as_a_number_is_what_ngspice_reads(tmp_path: Path) -> None:
+    """Every scale letter before every unit: ngspice -b prints what each comes to as a source's voltage, and what is refused is none."""
+    program = shutil.which("ngspice")
+    assert program is not None, "the program ngspice itself is missing (Debian: apt-get install ngspice)"
+    scales = ("", "t", "g", "meg", "k", "mil", "m", "u", "n", "p", "f")
+    units = (
+        "",
+        "v",
+        "volts",
+        "a",
+        "amp",
+        "f",
+        "farad",
+        "h",
+        "henry",
+        "ohm",
+        "ohms",
+        "s",
+        "sec",
+        "hz",
+        "c",
+        "degc",
+        "w",
+    )
+    taken = dict[str, float]()
+    for text in (f"2{scale}{unit}" for scale in scales for unit in units):
+        with contextlib.suppress(ModelTextError):
+            taken[text] = read_number(text, HERE)
+    refused = {f"2{s}{u}" for s in scales for u in units} - taken.keys()
+    assert refused == {"2a", "2amp", "2farad"}
+    names = {f"n{i}": text for i, text in enumerate(taken)}
+    deck = ["numbers", *(f"v{n} {n} 0 {text}" for n, text in names.items()), ".control", "set numdgt=12", "op"]
+    deck += [*(f"print {n}" for n in names), "quit", ".endc", ".end", ""]
+    (tmp_path / "numbers.cir").write_text("\n".join(deck), encoding="utf-8")
+    done = subprocess.run(
+        [program, "-b", "numbers.cir"], cwd=tmp_path, capture_output=True, text=True, timeout=60, check=False,
+    )  # fmt: skip
+    found = dict(re.findall(r"^(n\d+) = (\S+)$", done.stdout, re.MULTILINE))
+    assert found.keys() == names.keys()
+    assert {names[n]: float(v) for n, v in found.items()} == pytest.approx(taken, rel=1e-9, abs=0.0)
+
+
+@pytest.mark.parametrize(
+    "text", ["5a", "5amp", "10farad", "10farads", "4k7", "1x", "1e", "--1", "", "1e999", "0x10", "k"]
+)
 def test_numbers_that_programs_read_differently_are_refused(text: str) -> None:
     with pytest.raises(ModelTextError):
         read_number(text, HERE)
@@ -88,13 +137,13 @@ def read(folder: Path, content: bytes | str, name: str = "m.lib") -> object:
     return read_library(read_statements(folder / name, folder))
 
 
-def understood(text: str) -> object:
+def understood(text: str, celsius: float = 25.0) -> object:
     from boardsim.parts.vendor.text import Statement
 
     lines = tuple(Statement(Place("x.lib", i), t.lower()) for i, t in enumerate(text.splitlines(), 1))
     library = read_library(lines)
     found = library.subcircuits["s"]
-    return flatten(library, found, "p", {pin: f"deck_{pin}" for pin in found.pins}, 25.0)
+    return flatten(library, found, "p", {pin: f"deck_{pin}" for pin in found.pins}, celsius)
 
 
 @pytest.mark.parametrize(
@@ -110,6 +159,91 @@ def test_lines_that_cannot_be_translated_without_a_change_are_refused(line: str)
     models = ".model dm d(is=1e-14)\n.model dx d(is=1e-14 foo=3)\n.model dbv d(is=1e-14 bv=5)\n.model dibvl d(is=1e-14 ibvl=1u)\n"
     with pytest.raises(QuantityError, match=r"x\.lib:\d"):
         understood(f"{models}.model mo nmos(level=7 vto=1)\n.subckt s a b\n{line}\n.ends\n")
+
+
+COLD = """.model rm res(tc1=0.01)
+.model rt res(r=2 tc1=0.01 t_measured=25)
+.model cm cap(c=1 tc1=0.01)
+.subckt s a b
+"""
+
+
+@pytest.mark.parametrize(
+    ("line", "value"),
+    [
+        ("r1 a b 100 tc=0.01", 200.0),
+        ("r1 a b 100 tc=0.01,0.0001", 300.0),
+        ("r1 a b 100 tc1=0.01 tc2=0.0001", 300.0),
+        ("r1 a b rm 100", 200.0),
+        ("r1 a b rt 100", 2 * 202.0),
+        ("c1 a b 1n tc1=0.01", 2e-9),
+        ("c1 a b cm 1n", 2e-9),
+        ("l1 a b 1u tc1=-0.002", 0.8e-6),
+    ],
+)
+def test_temperature_coefficients_count_from_27_degc_unless_the_model_says_from_where(line: str, value: float) -> None:
+    """R(T) = R (1 + TC1 dT + TC2 dT^2) with dT from SPICE's nominal 27 degC: SPICE 2G6's user guide. At 127 degC dT is 100 K."""
+    (found,) = understood(f"{COLD}{line}\n.ends\n", 127.0).elements  # type: ignore[attr-defined]
+    assert next(v for v in vars(found).values() if isinstance(v, float)) == pytest.approx(value)
+
+
+@pytest.mark.parametrize(
+    "line",
+    [
+        "r1 a b rm 100 tc=0.01",
+        "r1 a b rt 100 tc1=0.01",
+        "c1 a b cm 1n tc2=1u",
+        "r1 a b 1 tc=1,2,3",
+        "r1 a b 1 tc=1 tc1=1",
+        "r1 a b 1 tc=-0.02",
+    ],
+)
+def test_temperature_coefficients_that_programs_count_differently_are_refused(line: str) -> None:
+    """Beside those of a model; more than two; one twice; and what leaves less than nothing of a part at 127 degC."""
+    with pytest.raises(QuantityError, match=r"x\.lib:5"):
+        understood(f"{COLD}{line}\n.ends\n", 127.0)
+
+
+@pytest.mark.parametrize(
+    ("text", "said"),
+    [
+        (".ends\n", "'.ends' ends nothing that was begun"),
+        (".subckt s a b\nr1 a b 1\n.ends s\n+ more words\n", ".ends is followed by 's more words'"),
+        (".subckt s a b\nr1 a b 1\n.ends t\n", ".ends is followed by 't'"),
+    ],
+)
+def test_an_end_that_is_none_is_told_from_one_with_more_behind_it(tmp_path: Path, text: str, said: str) -> None:
+    with pytest.raises(ModelTextError) as caught:
+        read(tmp_path, text)
+    assert said in str(caught.value)
+
+
+POWER = "vto=2 kp=20 cgs=500p cgdmin=10p cgdmax=500p cjo=300p is=1e-12"
+
+
+@pytest.mark.parametrize(
+    "card",
+    [
+        *(f"vdmos({POWER.replace(f'{key}={old}', f'{key}={new}')})" for key, old, new in (
+            ("cgs", "500p", "0"), ("cgs", "500p", "-1p"), ("cjo", "300p", "-300p"), ("is", "1e-12", "-1e-12"),
+            ("cgdmin", "10p", "-10p"), ("cgdmax", "500p", "-500p"), ("kp", "20", "-20"),
+        )),
+        *(f"vdmos({POWER} {one})" for one in ("rg=-2", "rd=-10m", "rs=-1m", "rb=-1m", "tt=-50n", "m=-0.5", "vj=-0.75", "a=0",
+                                               "lambda=-1", "bv=-60", "ibv=-1u", "theta=-1", "tnom=-300")),
+        *(f"d(is=1e-14 {one})" for one in ("rs=-1", "tt=-1n", "cjo=-1p", "vj=0", "m=-0.3", "n=-1", "bv=10 ibv=-1m", "isr=-1")),
+        "d(is=-1e-14)",
+        *(f"npn(is=1e-14 bf=100 {one})" for one in ("rb=-1", "rc=-1", "cje=-1p", "tf=-1n", "vje=0", "mjc=-0.3", "xcjc=2", "vaf=-50")),
+        *(f"nmos(vto=1 {one})" for one in ("kp=-1", "rd=-1", "cgso=-1n", "tox=0", "lambda=-0.1", "l=-1u", "w=0")),
+    ],
+)  # fmt: skip
+def test_a_device_with_less_than_nothing_of_something_is_refused(card: str) -> None:
+    """A negative resistance, capacitance or time gives out energy; ngspice takes most of them without a word."""
+    kind, _, rest = card.partition("(")
+    line = {"d": "d1 a b m", "npn": "q1 a b c m"}.get(kind, "m1 a b c c m")
+    good = {"d": "is=1e-14", "npn": "is=1e-14 bf=100", "nmos": "vto=1", "vdmos": POWER}[kind]
+    understood(f".subckt s a b c\n.model m {kind}({good})\n{line}\n.ends\n", 25.0)
+    with pytest.raises(ModelTextError, match=r"x\.lib:2: .*(allowed|no size)"):
+        understood(f".subckt s a b c\n.model m {kind}({rest}\n{line}\n.ends\n", 25.0)
 
 
 PIECES = st.sampled_from(

@@ -30,7 +30,7 @@ V, R, L = 24.0, 16.0, 12e-3
 I_0 = V / R
 # The N-channel part of the other tests turned over: 1 mohm, and a gate that 100 ohm empty within a microsecond.
 PERFECT_P = PERFECT_SWITCH.replace("[parts.perfect]", "[parts.perfect-p]").replace('"n-mosfet"', '"p-mosfet"')
-SWITCH = '{{ part = "perfect-p", gate = "1 ohm", pullup = "{pullup}"{more}, shifter = {{ part = "perfect", gate = "10 ohm" }} }}'
+SWITCH = '{{ part = "perfect-p", gate = "1 ohm", pullup = "{pullup}"{more}, shifter = {{ {shifter} }} }}'
 ZENER = """
 [parts.constant]
 kind = "zener"
@@ -51,13 +51,14 @@ def run(
     pullup: str = "100 ohm",
     more: str = "",
     width: str = "5 ms",
+    shifter: str = 'part = "perfect", gate = "10 ohm"',
 ) -> Run:
     text = board_text(
         supply=f'voltage = "24 V", {STIFF}',
         coil=f'resistance = "16 ohm"\ninductance = "12 mH"\n{NO_LOSS}',
         clamp=clamp,
         bulk='{ capacitance = "1000 uF", esr = "10 mohm", esl = "0.1 nH" }',
-        switch=SWITCH.format(pullup=pullup, more=more),
+        switch=SWITCH.format(pullup=pullup, more=more, shifter=shifter),
         parts=PERFECT_SWITCH.format(breakdown="5 kV") + PERFECT_P.format(breakdown=breakdown) + PERFECT_DIODE + ZENER,
     )
     return run_board(engine, tmp_path, text, pattern_text(pulse("100 us", width)), Settings("gear", 1e-5, 50e-6))
@@ -135,3 +136,32 @@ def test_the_pull_up_alone_turns_it_off(engine: Engine, tmp_path: Path) -> None:
     # 3 nC over 30 V and C_rss = 30 pF: C_GS = 270 pF; C_GD is 100 pF on average and below 1 nF at small voltages.
     lower, upper = (1e5 * farads * math.log(V / 3.0) for farads in (270e-12, 1.3e-9))
     assert lower < below < upper
+
+
+def test_a_gate_zener_takes_what_the_level_shifter_pulls_beyond_its_voltage(engine: Engine, tmp_path: Path) -> None:
+    """Kirchhoff at the gate: (V - V_Z) / R_s flows down, V_Z / R_u of it through the pull-up, the rest through the Zener.
+
+    12v-5w holds 12 V at 100 mA with 2.5 ohm: at 10 mA it is 0.3 V lower at most.
+    """
+    more = ', series = "1 kohm", zener = "12v-5w"'
+    found = run(
+        engine, tmp_path, '{ kind = "diode", diode = "perfect-diode" }', pullup="10 kohm", more=more, width="200 us"
+    )
+    off = found.on()[1]
+    v_gs = float(found.at(off, "v_gs", 0))
+    assert 11.7 < v_gs < 12.0
+    through = (V - v_gs) / 1e3 - v_gs / 10e3
+    assert found.at(off, "i_gate Zener", 0) == pytest.approx(through, rel=5e-3)
+    assert found.at(off, "i_g", 0) == pytest.approx(0.0, abs=1e-5)  # the Zener's current is none of the gate's
+
+
+def test_a_bipolar_level_shifter_leaves_its_saturation_voltage(engine: Engine, tmp_path: Path) -> None:
+    """V_GS = (V - V_CE) R_u / (R_u + R_s), with V_CE from 0 to the 0.3 V that small transistors keep below at 12 mA."""
+    clamp = '{ kind = "diode", diode = "perfect-diode" }'
+    shifter = 'part = "npn-small", base = "2.2 kohm", pulldown = "100 kohm"'
+    found = run(engine, tmp_path, clamp, pullup="1 kohm", more=', series = "1 kohm"', width="200 us", shifter=shifter)
+    off = found.on()[1]
+    v_ce = float(found.at(off, "v_ds_shifter", 0))
+    assert 0.0 < v_ce < 0.3
+    assert found.at(off, "v_gs", 0) == pytest.approx((V - v_ce) / 2, rel=2e-3)
+    assert found.at(off, "i_d_shifter", 0) == pytest.approx((V - v_ce) / 2e3, rel=2e-3)

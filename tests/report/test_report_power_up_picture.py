@@ -55,6 +55,27 @@ def test_the_picture_answers_in_words_and_marks_the_first_enabled_frame() -> Non
     assert "counts from\n6.00 mA\nper coil" in said
 
 
+@pytest.mark.parametrize("count", [0, 3])
+def test_currents_begin_at_nothing_and_reach_what_counts(count: int) -> None:
+    """An idle board's picture shows that it is below the line, not the last digits of nothing on either side of 0."""
+    axes = next(a for a in power_up_figure(result(count)).axes if "All coils" in a.get_title(loc="left"))
+    low, high = axes.get_ylim()
+    assert high > max(6e-3, count * 0.4)
+    assert -0.05 * high < low <= 0
+    level = [np.asarray(line.get_ydata()) for line in axes.lines]
+    assert any((y == 6e-3).all() for y in level)
+
+
+def test_outputs_that_are_not_enabled_are_called_what_they_are() -> None:
+    """An open-drain output without enable is off, and never floats (TI SLIS032A: outputs off while G is high)."""
+    of = result(1)
+    assert isinstance(of.study, PowerUp)
+    for words_of, of_them in (("high impedance", of), ("off", replace(of, study=replace(of.study, disabled="off")))):
+        legend = power_up_figure(of_them).axes[0].get_legend()
+        assert legend is not None
+        assert [t.get_text() for t in legend.get_texts()] == ["enabled", words_of]
+
+
 @pytest.mark.parametrize(
     ("of", "expected"),
     [

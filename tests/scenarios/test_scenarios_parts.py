@@ -53,6 +53,28 @@ def test_every_part_of_the_library_is_listed_by_kind() -> None:
     assert kinds == sorted(kinds)
 
 
+@pytest.mark.parametrize(
+    ("model", "said"),
+    [
+        ('subcircuit = "dd", pins = { anode = "1", cathode = "2" }', "anode is 1, cathode is 2"),
+        ('model = "dm"', None),
+    ],
+)
+def test_the_pins_of_a_models_subcircuit_are_shown_in_words(
+    tmp_path: Path, run: Run, model: str, said: str | None
+) -> None:
+    record = f'[mine]\nkind = "diode"\nforward = [{{ voltage = "0.8 V", current = "1 A" }}]\nmodel = {{ file = "d.lib", {model} }}\n'
+    (tmp_path / "shelf").mkdir()
+    (tmp_path / "shelf" / "parts.toml").write_text(f'{record}source = "made up"\n', encoding="utf-8")
+    text = ".model dm D(IS=1n)\n.subckt dd 1 2\nD1 1 2 dm\n.ends\n"
+    (tmp_path / "shelf" / "d.lib").write_text(text, encoding="utf-8")
+    status, out, _ = run("show", "mine", "--library", "shelf")
+    assert status == 0
+    assert "{" not in out
+    row = [line.split("pins")[1].strip() for line in out.splitlines() if line.startswith("model, pins")]
+    assert row == ([] if said is None else [said])
+
+
 def test_a_filter_keeps_what_is_rated_for_at_least_that_much() -> None:
     names = {p.name for p in list_parts(kind="n-mosfet", voltage="55 V")}
     assert names == {"n-logic-60v", "IRLZ44N"}

@@ -102,9 +102,9 @@ def command(folder: Path, *options: str) -> tuple[int, str, str]:
 
 
 def kinds_beside(switch: Any) -> set[str]:
-    """Every kind of clamp that a board file may put beside a switch, but "avalanche", which is the circuit of "none" again."""
+    """Every kind of clamp that a board file may put beside a switch, but those that are the circuit of "none" again."""
     arrays = set() if switch.kind == "darlington-array" else {k for k in clamps.kinds("clamp") if k.startswith("array")}
-    return {*clamps.kinds("clamp")} - {"avalanche"} - arrays
+    return {*clamps.kinds("clamp")} - {"avalanche", "built-in"} - arrays
 
 
 # ------------------------------------------------------------------------------------------------------ rows
@@ -323,7 +323,7 @@ def test_every_kind_is_offered_but_the_clamp_that_is_there(tmp_path: Path) -> No
     beside = kinds_beside(board(tmp_path).channels[0].switch)
     assert {w.partition(":")[0] for w in words} == beside
     # What no board file may put beside this switch is not offered, and said.
-    refused = {*clamps.kinds("clamp")} - beside - {"avalanche"}
+    refused = {*clamps.kinds("clamp")} - beside - {"avalanche", "built-in"}
     assert refused == {
         r.partition("not tried, ")[2].partition(":")[0] for r in remarks if "the switch is another part" in r
     }

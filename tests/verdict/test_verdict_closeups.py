@@ -508,6 +508,30 @@ def test_a_finding_named_by_its_channel_is_about_that_channel(tmp_path: Path) ->
     assert seen.stop - seen.start < 5e-4
 
 
+def test_a_finding_of_a_package_shows_its_members_and_their_sum_only(tmp_path: Path) -> None:
+    run = noisy(tmp_path)
+    run.board = replace(
+        run.board,
+        channels=tuple(replace(c, package=f"array {1 + (c.number > 1)}") for c in run.board.channels),
+    )
+    whole = (None, "i_ground, array 1")
+    run.deck = replace(
+        run.deck,
+        signals={**run.deck.signals, whole: run.deck.signals[0, "i_d"]},
+        units={**run.deck.units, whole: "A"},
+    )
+    firing = run.firing((0, 0.01, 0.05), (1, 0.02, 0.05), (7, 0.01, 0.05))
+    taken = finding(check="overvoltage", quantity="clamp energy", channel=None, label="array 1", unit="J", probes=())
+    seen = run.closeup(taken, firing)
+    assert seen.who == (0, 1)
+    assert seen.labels.keys() == seen.on.keys() == seen.asked.keys() == {0, 1}
+    assert [p.title for p in seen.panels] == ["All outputs of the package"]
+    sums = finding(quantity="current of all outputs of the package", channel=None, label="array 1", probes=(whole[1],))
+    seen = run.closeup(sums, firing)
+    assert [[w.label for w in p.waves] for p in seen.panels] == [["current of all outputs of the package"]]
+    assert seen.labels.keys() == {0, 1}
+
+
 # -------------------------------------------------------------------------------------------------- an engine
 
 

@@ -87,6 +87,20 @@ def test_a_junction_that_runs_away_fails_by_name(growth: float, verdict: str) ->
     assert ("ever hotter" in found.sentence) == (growth > 0)
 
 
+def test_a_package_of_which_one_output_is_used_is_told_so() -> None:
+    board = read_board(FRUIT_SORTER)
+    rule = junction_heat(
+        "array", "package", (("v_ds", "i_d"),), parse("62 K/W", THERMAL_RESISTANCE), parse("175 degC", TEMPERATURE), 318.15, "less heat"
+    )  # fmt: skip
+    firing = fire(board, Pattern(Path("one.toml"), "one", None, (Pulse(3, 0.0, 0.01),)))
+    for channels, said in (((3,), "900 mW of its one channel on"), ((3, 4), "1.80 W of its 2 channels on")):
+        whole = replace(rule, channels=channels)
+        means: dict[tuple[int | None, tuple[str, ...]], float] = {(c, ("v_ds", "i_d")): 0.9 for c in channels}
+        readings = Readings({}, {}, means, (), (0.0, None), {}, {}, {}, {}, (), (), 0, {})
+        placed = PlacedRule(whole, None, "array", "array 1")
+        assert said in judge_heat(whole, placed, readings, firing, Corner("hot"), bench(board)).sentence
+
+
 @pytest.mark.parametrize(("square", "verdict"), [(0.1, "pass"), (0.9, "fail"), (9.0, "fail")])
 def test_only_what_the_on_resistance_takes_grows_with_it(square: float, verdict: str) -> None:
     """0.9 W in all at 62 K/W: with 0.1 A^2 in 1 ohm it settles at 45 + 62 (0.8 + 0.1 x 1.01^(T - 25)) degC, with 0.9 A^2 nowhere."""

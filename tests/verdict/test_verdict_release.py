@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from boardsim.verdict.findings import Floats
-from boardsim.verdict.release import Crossings, from_time
+from boardsim.verdict.release import Crossings, from_time, resolved
 
 T = np.array([0.0, 1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 7.0])
 # Reaches 1 at 0.5; falls below it at 2.5, is back at 3.5, and stays below from 5.25 on.
@@ -61,3 +61,9 @@ def test_a_stretch_holds_the_integral_from_its_start_on_however_blocks_are_cut(s
             total += float(np.trapezoid(part[1][0], part[0]))
     fine = np.linspace(min(max(start, 0.0), 7.0), 7.0, 700_001)
     assert total == pytest.approx(float(np.trapezoid(np.interp(fine, T, Y), fine)), abs=1e-4)
+
+
+def test_what_a_run_rounds_away_is_no_energy_and_what_a_part_takes_is() -> None:
+    assert resolved(-1.63e-9, 9.6e-3) == 0.0
+    assert resolved(1.63e-9, 1e-3) == 1.63e-9
+    assert resolved(-5e-3, 9.6e-3) == -5e-3  # far from noise: it is wrong, and has to be seen

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from typing import ClassVar, Literal
 
-from boardsim.parts.base import Corner, Part, Stamp, Total, named_part
+from boardsim.parts.array_stage import ArrayStage
+from boardsim.parts.base import Corner, Stamp, Total, named_part
 from boardsim.parts.bipolar import (
     breakdown_junction,
 )
@@ -21,41 +22,19 @@ from boardsim.parts.elements import (
 )
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.rules import BreakdownRule, DriveRule, Limit, MeanRule, PeakRule, Rule
-from boardsim.quantities import (
-    Quantity,
-)
 
 _SUBSTRATE = 1e-14  # [A], saturation current of the junction from the isolating substrate to the collector, from memory
 _LEAST_JUNCTIONS = 1.2  # [V] across two bases that conduct, from memory
 
 
-class DarlingtonStage(Part):
+class DarlingtonStage(ArrayStage):
     """One output of the package: the register's output at its input, ground at its emitter, the coil at its collector."""
 
     role: ClassVar[str] = "switch"
     kind: Literal["darlington-array"] = "darlington-array"
     part: named_part(DarlingtonArray)  # type: ignore[valid-type]
 
-    active: ClassVar[Literal["high", "low"]] = "high"
-    """Output level that turns the coil on."""
-
-    def tolerances(self) -> dict[str, Quantity]:
-        """What the corners vary in this stage: where its output breaks down."""
-        return {"breakdown": self.part.output_voltage}
-
-    def held_off(self) -> bool:
-        """Always: the resistors across its base-emitter junctions are in the package."""
-        return True
-
-    def per_package(self) -> int:
-        """Outputs of the package. [1]"""
-        return int(self.part.outputs)
-
-    def steady_input(self, volts: float, resistance: float) -> float:
-        """Into the input, at most as printed: a resistance before two junctions of 0.6 V each (from memory). [A]"""
-        printed = [(p.voltage.typ - _LEAST_JUNCTIONS, (p.highest or p.typical).max) for p in self.part.input_current]
-        least: float = min(over / amperes for over, amperes in printed if over > 0)
-        return max(volts - _LEAST_JUNCTIONS, 0.0) / (resistance + least)
+    junctions: ClassVar[float] = _LEAST_JUNCTIONS
 
     def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
         """The sink between the register's node `pin` and the coil's node `load`."""

@@ -1,120 +1,14 @@
-"""A half bridge: a transistor to the rail and one to ground, which a gate driver turns on in turns."""
+"""A half bridge as the switch of a channel: the coil lies between the leg's middle and ground."""
 
 from __future__ import annotations
 
-from dataclasses import replace
-from typing import Annotated, ClassVar, Literal
+from typing import ClassVar, Literal
 
-from pydantic import model_validator
-
-from boardsim.errors import QuantityError
-from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
-from boardsim.parts.elements import GROUND, Element, Resistor, VoltageLaw, scaled, voltage
-from boardsim.parts.gate_driver import GateDriver
-from boardsim.parts.mosfet import Mosfet, NMosfet
-from boardsim.parts.mosfet_stamp import Place, mosfet_stamp
-from boardsim.parts.p_mosfet import PMosfet
-from boardsim.parts.rules import ShootThroughRule
-from boardsim.quantities import RESISTANCE, Quantity
-
-_TOO_HIGH = "a driver with a lower supply, or a gate rating that stands it"
-_TOO_LOW = "a driver with a higher supply, or a transistor that is specified at this gate voltage"
+from boardsim.parts.leg import Leg
 
 
-class HalfBridge(Part):
-    """The coil lies between the two transistors and ground: fed by the high one, and freewheeling through the low one.
-
-    Notes
-    -----
-    In the dead time the coil's current flows through the low transistor's body diode. An N-channel transistor at the high side
-    takes a driver whose supply floats on the leg.
-    """
+class HalfBridge(Leg):
+    """The coil is fed by the high transistor, and freewheels through the low one."""
 
     role: ClassVar[str] = "switch"
-    side: ClassVar[Literal["low", "high"]] = "high"
     kind: Literal["half-bridge"] = "half-bridge"
-    high: named_part(PMosfet, NMosfet)  # type: ignore[valid-type]
-    low: named_part(NMosfet)  # type: ignore[valid-type]
-    gate: Annotated[Quantity, RESISTANCE]
-    driver: GateDriver
-
-    @model_validator(mode="after")
-    def _of_ours(self) -> HalfBridge:
-        for end in (self.high, self.low):
-            if end.model is not None:
-                raise QuantityError(
-                    "a half bridge takes no vendors' models: what is read is the voltage at the chip's gate, which lies inside them"
-                )
-        return self
-
-    active: ClassVar[Literal["high", "low"]] = "high"
-    """Output level that turns the coil on."""
-
-    @property
-    def part(self) -> Mosfet:
-        """The transistor that turns the coil on."""
-        found: Mosfet = self.high
-        return found
-
-    def tolerances(self) -> dict[str, Quantity]:
-        """What the corners vary: breakdown, on-resistance and threshold of the high transistor, and of the low one alike."""
-        return {"breakdown": self.high.breakdown, "on_resistance": self.high.spread, "threshold": self.high.threshold}
-
-    def steady_input(self, volts: float, resistance: float) -> float:
-        """Through the driver's pull-down. [V], [ohm] -> [A]"""
-        return 0.0 if self.driver.pulldown is None else volts / (resistance + self.driver.pulldown.min)
-
-    def held_off(self) -> bool:
-        """Whether the driver's input has a pull-down."""
-        return self.driver.pulldown is not None
-
-    def follows_within(self) -> float:
-        """Four times delay and dead time. [s]"""
-        return 4 * (self.driver.delay.typ + self.driver.dead_time.max)
-
-    def control(self, name: str) -> str:
-        """The high transistor's gate."""
-        return f"{name}_gh"
-
-    def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
-        """The leg between rail and ground, driven from `pin`, with its middle at the coil's node `load`."""
-        driver, up, down = self.driver.elements(name, pin, rail)
-        sources = {"h": rail if self.high.mirrored else load, "l": GROUND}
-        elements: list[Element] = [*driver]
-        stamps: dict[str, Stamp] = {}
-        for end, part, law, who in (("h", self.high, up, "high transistor"), ("l", self.low, down, "low transistor")):
-            sign, gate, out = (-1.0 if part.mirrored else 1.0), f"{name}_g{end}", f"{name}_o{end}"
-            ohms = self.driver.output_resistance.typ + self.gate.typ + part.gate_resistance.typ
-            law = law if sign > 0 else f"-({law})"
-            elements += [VoltageLaw(out, out, sources[end], law), Resistor(f"{name}_r{end}", out, gate, ohms)]
-            into = scaled(sign / ohms, voltage(out, gate))
-            drain = load if part.mirrored or end == "l" else rail
-            place = Place(drain, gate, sources[end], who, "" if end == "h" else "_low", _TOO_HIGH, _TOO_LOW)
-            stamps[end] = mosfet_stamp(part, f"{name}_{end}", place, into, corner, bare=True)
-        found = stamps["h"]
-        shoot = ShootThroughRule(
-            "shoot-through",
-            ("v_gs", "v_gs_low"),
-            ("i_d", "i_d_low"),
-            (turns_on(self.high, corner), turns_on(self.low, corner)),
-            self.driver.dead_time.min,
-            str(self.driver.dead_time.origin),
-        )
-        numbers = listed(
-            "gate driver",
-            delay=self.driver.delay,
-            output_resistance=self.driver.output_resistance,
-            input_threshold=self.driver.threshold,
-        )
-        return replace(
-            found,
-            elements=(*found.elements, *elements),
-            rules=(*found.rules, shoot),
-            assumptions=(*found.assumptions, *numbers),
-            inside=((self.low.title or "low transistor", stamps["l"]),),
-        )
-
-
-def turns_on(part: Mosfet, corner: Corner) -> float:
-    """The gate voltage at which a transistor begins to conduct in a corner: its threshold there. [V]"""
-    return corner.take(part.threshold, "threshold") + corner.drifted(part.drift_of_threshold.typ)

@@ -9,7 +9,7 @@ from boardsim.parts.bipolar import breakdown_junction
 from boardsim.parts.elements import GROUND, Ammeter, Element, Port, Probe, Resistor, current, voltage
 from boardsim.parts.heat import junction_heat
 from boardsim.parts.power_register import PowerRegister
-from boardsim.parts.rules import BreakdownRule, Limit, MeanRule, PeakRule, PulseRule, Rule, TogetherRule
+from boardsim.parts.rules import BreakdownRule, Limit, MeanRule, PulseRule, Rule, TogetherRule
 from boardsim.parts.temperature import reverse_current
 from boardsim.quantities import Quantity, celsius
 
@@ -97,7 +97,7 @@ class PowerOutputStage(Part):
         """
         part: PowerRegister = self.part
         single, top, rated = part.avalanche_energy, part.junction_rating, part.avalanche_from.typ
-        if single is None or top is None or top.min <= rated:
+        if single is None or top is None:
             return None
         return single.typ * min(max((top.min - _warm(corner)) / (top.min - rated), 0.0), 1.0)
 
@@ -151,7 +151,7 @@ class PowerOutputStage(Part):
         )
 
     def _totals(self, corner: Corner, meter: Ammeter, derated: float | None) -> tuple[Total, ...]:
-        """What the outputs of one package add up to: current, heat, and what their clamps take at one time.
+        """What the outputs of one package add up to: current, heat, and what their clamps take before their chip has cooled.
 
         Notes
         -----
@@ -172,18 +172,7 @@ class PowerOutputStage(Part):
         )
         one = Limit.of(part.avalanche_energy, "single-pulse clamp energy of one output", "J", "energy", derated)
         return (
-            Total(
-                PeakRule(
-                    "overcurrent",
-                    "i_ground",
-                    Limit.of(part.total_current, "current of all outputs together", "A", "current"),
-                    "destroy",
-                    "current of all outputs of the package",
-                    advice,
-                ),
-                current(meter),
-                "A",
-            ),
+            *self._together(meter, advice),
             Total(
                 junction_heat(
                     part.title or "register",
@@ -196,8 +185,43 @@ class PowerOutputStage(Part):
                     growth=part.growth.typ,
                 )
             ),
-            Total(TogetherRule("overvoltage", whole, one, f"clamp each coil outside the package, or {advice}")),
+            Total(
+                TogetherRule(
+                    "overvoltage",
+                    whole,
+                    one,
+                    f"clamp each coil outside the package, or {advice}",
+                    within=part.chip_cools_in.typ,
+                )
+            ),
         )
+
+    def _together(self, meter: Ammeter, advice: str) -> tuple[Total, Total]:
+        """The current of all outputs of one package: its pulses by their length, and its average."""
+        part: PowerRegister = self.part
+        lasting = part.total_current
+        pulsed = part.total_pulse_current or lasting
+        points = () if pulsed is None else ((part.pulse_lasting.typ, pulsed.typ),)
+        peaks = PulseRule(
+            "overcurrent",
+            ("i_ground",),
+            Limit.of(pulsed, "current of all outputs together", "A", "current"),
+            points,
+            0.0 if lasting is None else lasting.typ,
+            _SHARE,
+            "destroy",
+            "current of all outputs of the package",
+            advice,
+        )
+        mean = MeanRule(
+            "overcurrent",
+            ("i_ground",),
+            Limit.of(lasting, "continuous current of all outputs together", "A", "current"),
+            "destroy",
+            "average current of all outputs of the package",
+            advice,
+        )
+        return Total(peaks, current(meter), "A"), Total(mean, current(meter), "A")
 
 
 def _warm(corner: Corner) -> float:

@@ -39,7 +39,6 @@ _NOT = {
 _STATEMENTS = ".subckt, .ends, .model, .param, .func, .include and .lib FILE"
 _NAME = re.compile(r"[a-z0-9_][a-z0-9_.+\-]*")
 _ASSIGNED = re.compile(r"(?<![<>=!\w.])([a-z_][a-z0-9_.]*)\s*=(?!=)")
-_MOST = 20_000  # statements of one model
 
 
 @dataclass(frozen=True)
@@ -90,15 +89,13 @@ def read_library(statements: tuple[Statement, ...]) -> Library:
     """
     library = Library()
     inside: Subcircuit | None = None
-    if len(statements) > _MOST:
-        raise statements[_MOST].place.refuse(f"more than {_MOST} statements are no model")
     for s in statements:
         if not s.text.startswith("."):
             _check_element(s, inside)
             assert inside is not None
             inside.lines.append(s)
             continue
-        word, _, rest = s.text.partition(" ") if "\t" not in s.text else s.text.replace("\t", " ").partition(" ")
+        word, _, rest = s.text.partition(" ")
         rest = rest.strip()
         if word == ".subckt":
             if inside is not None:
@@ -107,8 +104,13 @@ def read_library(statements: tuple[Statement, ...]) -> Library:
             _once(library.subcircuits, inside.name, "subcircuit", s.place)
             library.subcircuits[inside.name] = inside
         elif word == ".ends":
-            if inside is None or rest not in ("", inside.name):
-                raise s.place.refuse(f".ends {shortened(rest)} ends nothing that was begun")
+            if inside is None:
+                raise s.place.refuse(f"{shortened(s.text)!r} ends nothing that was begun")
+            if rest not in ("", inside.name):
+                raise s.place.refuse(
+                    f".ends is followed by {shortened(rest)!r}; the name of the subcircuit that was begun, "
+                    f"{shortened(inside.name)!r}, or nothing is allowed, on this line and on those below that begin with +"
+                )
             inside = None
         else:
             _define(word, rest, inside if inside is not None else library, s.place)
@@ -140,7 +142,8 @@ def _check_element(s: Statement, inside: Subcircuit | None) -> None:
     letter = s.text[0]
     allowed = ", ".join(f"{k.upper()}" for k in ELEMENTS)
     if letter not in ELEMENTS or not _NAME.fullmatch(s.text.split(maxsplit=1)[0]):
-        why = f" ({_NOT[letter]})" if letter in _NOT else ""
+        # What has as many words as an element line is told why its kind is not taken; a command is not.
+        why = f" ({_NOT[letter]})" if letter in _NOT and len(s.text.split()) > 3 else ""
         raise s.place.refuse(
             f"{shortened(s.text)!r} is not allowed in a model{why}; element lines may begin with {allowed}"
         )

@@ -16,8 +16,8 @@ from boardsim.parts.temperature import LEAST_SATURATION
 from boardsim.parts.vendor.cards import ModelCard
 from boardsim.parts.vendor.expressions import Expression, parse
 
-_TNOM = 27.0  # [degC], SPICE's own, at which a model's figures count that does not say another
-_MEASURED = {"t_measured": "tnom", "tref": "tnom"}
+TNOM = 27.0  # [degC], SPICE's own, at which a model's figures count that does not say another
+MEASURED = {"t_measured": "tnom", "tref": "tnom"}
 _DISPLAY = {
     "mfg",
     "type",
@@ -33,6 +33,7 @@ _DISPLAY = {
 }  # shown in lists, no more
 _MOST_FC = 0.95  # above it ngspice takes this with a remark only
 _MOST_GRADING = 0.9  # the same of a diode's M
+_STEEPEST = 0.99  # of other junctions: their charge has 1 - M below a fraction
 
 
 @dataclass(frozen=True)
@@ -48,7 +49,7 @@ class Device:
     aliases : mapping
         Other names of these.
     bounds : mapping of name to (least, most)
-        Beyond which ngspice would take another value without failing.
+        Beyond which ngspice would take another value without failing, or a part would give out energy.
     zero_is_off : frozenset of str
         Where 0 stands for "leave this effect out", which is what leaving out the parameter does.
     refused : mapping of name to why
@@ -71,13 +72,30 @@ def _words(text: str) -> frozenset[str]:
     return frozenset(text.split())
 
 
-_JUNCTION = {"is": (LEAST_SATURATION, math.inf), "n": (1e-3, math.inf), "fc": (0.0, _MOST_FC), "eg": (0.1, math.inf)}
+def _least(names: str, least: float = 0.0, most: float = math.inf) -> dict[str, tuple[float, float]]:
+    """The same bounds for several parameters."""
+    return dict.fromkeys(names.split(), (least, most))
+
+
+# What is below nothing is no part: a resistance, capacitance, charge or time that gives out energy. ngspice takes most of these.
+_NONE = 1e-30  # what has to be above 0 in the units of a model, which are SI's
+_EVER = {**_least("tnom", -273.0), **_least("kf af")}
+_JUNCTION = {
+    **_EVER,
+    **_least("is", LEAST_SATURATION),
+    **_least("n", 1e-3),
+    **_least("fc", 0.0, _MOST_FC),
+    **_least("eg", 0.1),
+    **_least("rs tt cjo ibv"),
+    **_least("bv nbv vj", 1e-3),
+    **_least("m", 0.0, _MOST_GRADING),
+}
 
 _DIODE = Device(
     "D",
     _words("is tnom rs trs1 trs2 n tt cjo vj m tm1 tm2 ikf nbv eg xti kf af fc bv ibv tcv isr nr"),
-    {**_MEASURED, "js": "is", "cj0": "cjo", "cj": "cjo", "pb": "vj", "mj": "m", "ik": "ikf", "vb": "bv", "ib": "ibv", "trs": "trs1"},
-    {**_JUNCTION, "m": (0.0, _MOST_GRADING), "bv": (1e-3, math.inf), "ibv": (0.0, math.inf)},
+    {**MEASURED, "js": "is", "cj0": "cjo", "cj": "cjo", "pb": "vj", "mj": "m", "ik": "ikf", "vb": "bv", "ib": "ibv", "trs": "trs1"},
+    {**_JUNCTION, **_least("ikf isr"), **_least("nr", 1e-3)},
     _words("ikf isr cjo tt rs"),
     {
         "ibvl": "ngspice has no soft knee below breakdown",
@@ -97,10 +115,20 @@ _BIPOLAR = Device(
         "xtb eg xti fc kf af nkf iss ns tnom trb1 trb2 trm1 trm2 trc1 trc2 tre1 tre2"
     ),
     {
-        **_MEASURED, "va": "vaf", "ik": "ikf", "vb": "var", "pe": "vje", "me": "mje", "pc": "vjc", "mc": "mjc", "ccs": "cjs",
+        **MEASURED, "va": "vaf", "ik": "ikf", "vb": "var", "pe": "vje", "me": "mje", "pc": "vjc", "mc": "mjc", "ccs": "cjs",
         "csub": "cjs", "ps": "vjs", "ms": "mjs", "nk": "nkf", "pt": "xti",
     },
-    {"is": (1e-40, math.inf), "fc": (0.0, _MOST_FC), "bf": (1e-3, math.inf), "br": (1e-6, math.inf)},
+    {
+        **_EVER,
+        **_least("is", 1e-40),
+        **_least("fc", 0.0, _MOST_FC),
+        **_least("bf nf nr ne nc ns vje vjc vjs", 1e-3),
+        **_least("br", 1e-6),
+        **_least("eg", 0.1),
+        **_least("vaf ikf ise var ikr isc rb irb rbm re rc cje tf xtf vtf itf cjc tr cjs iss nkf"),
+        **_least("xcjc", 0.0, 1.0),
+        **_least("mje mjc mjs", 0.0, _STEEPEST),
+    },
     _words("ikf ikr vaf var irb itf vtf ise isc iss"),
     {
         **dict.fromkeys(("rco", "qco", "vo", "gamma"), "quasi-saturation is switched on by ngspice otherwise than by others"),
@@ -113,25 +141,40 @@ _POWER = Device(
         "vto kp phi lambda theta rd rs rg tnom kf af mtriode tcvth mu texp0 texp1 trd1 trd2 trg1 trg2 trs1 trs2 trb1 trb2 ksubthres "
         "tksubthres1 tksubthres2 subshift bv ibv nbv rds rb n tt eg xti is vj cjo m fc cgdmin cgdmax a cgs rq vq"
     ),
-    {**_MEASURED, "vt0": "vto", "vth0": "vto", "vtotc": "tcvth", "bex": "mu"},
-    {**_JUNCTION, "kp": (1e-9, math.inf), "rds": (1.0, math.inf)},
+    {**MEASURED, "vt0": "vto", "vth0": "vto", "vtotc": "tcvth", "bex": "mu"},
+    {
+        **_JUNCTION,
+        **_least("kp", 1e-9),
+        **_least("rds", 1.0),
+        **_least("phi", 1e-3),
+        **_least("cgs a mtriode", _NONE),
+        **_least("lambda theta rd rg rb cgdmin cgdmax ksubthres rq vq"),
+    },
     frozenset(),
     {"subthres": "ngspice rounds the threshold by KSUBTHRES (in volts) only; give this in its place"},
     None,
     ("vto", "kp", "cgs", "cgdmin", "cgdmax", "cjo", "is"),
 )
 _COMMON_MOS = "vto kp gamma phi lambda rd rs cbd cbs is pb cgso cgdo cgbo rsh cj mj cjsw mjsw js tox ld uo fc nsub tpg nss tnom kf af"
-_MOS_ALIASES = {**_MEASURED, "vt0": "vto", "u0": "uo"}
+_MOS_ALIASES = {**MEASURED, "vt0": "vto", "u0": "uo"}
 _MOS_REFUSED = {
     **dict.fromkeys(("rg", "rds", "rb"), "ngspice has no such resistance in this model; write it as an element"),
     "n": "ngspice's bulk diodes have no emission coefficient in this model",
 }
-_MOS1 = Device("NMOS", _words(_COMMON_MOS), _MOS_ALIASES, {"fc": (0.0, _MOST_FC)}, _words("js nsub"), _MOS_REFUSED)
+_MOS_BOUNDS = {
+    **_EVER,
+    **_least("fc", 0.0, _MOST_FC),
+    **_least("kp gamma lambda rd rs cbd cbs is cgso cgdo cgbo rsh cj cjsw js ld nsub vmax xj nfs theta kappa"),
+    **_least("phi pb", 1e-3),
+    **_least("mj mjsw", 0.0, _STEEPEST),
+    **_least("tox uo", _NONE),
+}
+_MOS1 = Device("NMOS", _words(_COMMON_MOS), _MOS_ALIASES, _MOS_BOUNDS, _words("js nsub"), _MOS_REFUSED)
 _MOS3 = Device(
     "NMOS",
     _words(_COMMON_MOS + " delta vmax xj nfs eta theta kappa") - {"lambda"},
     _MOS_ALIASES,
-    {"fc": (0.0, _MOST_FC)},
+    _MOS_BOUNDS,
     _words("js nsub nfs"),
     _MOS_REFUSED,
     {"kappa": "channel length modulation of level 3 follows ngspice, of which programs have variants"},
@@ -176,14 +219,14 @@ def device_model(card: ModelCard, number: Callable[[Expression], float], celsius
     found, remarks, size = _numbers(card, device, number)
     if card.device in ("nmos", "pmos"):
         found["level"] = level
-    shift = celsius - found.get("tnom", _TNOM)
+    shift = celsius - found.get("tnom", TNOM)
     if device is _DIODE:
         _breakdown(card, found, shift)
     for name, (least, most) in device.bounds.items():
         if name in found and not least <= found[name] <= most:
             what = f"at least {least:g}" if found[name] < least else f"at most {most:g}"
             raise card.place.refuse(
-                f"{name.upper()} of {found[name]:g} is not what ngspice would take: {what} is allowed"
+                f"{name.upper()} of {found[name]:g} is not what ngspice would take, or no part has it: {what} is allowed"
             )
     if missing := [name.upper() for name in device.needs if name not in found]:
         raise card.place.refuse(
@@ -197,7 +240,7 @@ def device_model(card: ModelCard, number: Callable[[Expression], float], celsius
         remarks.append(
             "MU or TEXP0 is not given: with temperature K_P and RD move by ngspice's own exponents, -1.5 and 1.5"
         )
-    found.setdefault("tnom", _TNOM)
+    found.setdefault("tnom", TNOM)
     kind = {"pnp": "PNP", "pmos": "PMOS"}.get(card.device, device.type)
     return Worked(Model(card.name, kind, {k.upper(): v for k, v in found.items()}), tuple(remarks), size)
 
@@ -249,6 +292,8 @@ def _numbers(
             raise card.place.refuse(f"{name.upper()} is given twice, by two of its names")
         value = number(parse(text, card.place))
         if name in ("l", "w") and device.type == "NMOS":
+            if value <= 0:
+                raise card.place.refuse(f"{name.upper()} of {value:g} is no size; above 0 is allowed")
             size.append((name, value))
         elif not (value == 0 and name in device.zero_is_off):
             found[name] = value
@@ -298,9 +343,9 @@ def passive(card: ModelCard, number: Callable[[Expression], float], celsius: flo
         If it has other parameters.
     """
     multiplier = card.device[0]
-    found = {multiplier: 1.0, "tc1": 0.0, "tc2": 0.0, "tnom": _TNOM}
+    found = {multiplier: 1.0, "tc1": 0.0, "tc2": 0.0, "tnom": TNOM}
     for key, text in card.parameters.items():
-        name = _MEASURED.get(key, key)
+        name = MEASURED.get(key, key)
         if name not in found:
             raise card.place.refuse(
                 f'parameter "{shortened(key).upper()}" of a {card.device.upper()} model is not translated; known: '

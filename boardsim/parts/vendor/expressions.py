@@ -20,8 +20,11 @@ from boardsim.parts.vendor.text import Place
 
 _LONGEST = 4000  # characters of an expression
 _DEEPEST = 30  # brackets within brackets
+_DEEPEST_LAW = 120  # levels of a law that hangs on voltages; each term of a sum is one
+_DEEPEST_TOGETHER = 150  # levels of expressions that wait for each other; each takes three of Python's thousand calls
 _MOST = 20_000  # parts of an expression once functions are written out
 _LONGEST_LAW = 8000  # characters of a law as it stands in a deck
+_MOST_WORK = 50_000  # parts of all expressions of one model; a large macro model has some thousands
 _HIGHEST_POWER = 16  # that is written as a product
 
 _SCALES = {
@@ -49,6 +52,7 @@ class Number:
 
     value: float
     size: ClassVar[int] = 1
+    depth: ClassVar[int] = 1
 
 
 @dataclass(frozen=True)
@@ -57,22 +61,26 @@ class Name:
 
     name: str
     size: ClassVar[int] = 1
+    depth: ClassVar[int] = 1
 
 
 @dataclass(frozen=True)
 class Call:
     """A function, an operator ("+", "<", "?:", "-x", "not"), or a voltage ("v") of nodes or current ("i") of a source.
 
-    `size` counts everything in it, what stands there several times as often.
+    `size` counts everything in it, what stands there several times as often; `depth` its levels, of which each operator of a
+    sum is one.
     """
 
     what: str
     inside: tuple[Expression, ...]
     places: tuple[str, ...] = ()
     size: int = field(init=False, compare=False)
+    depth: int = field(init=False, compare=False)
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "size", 1 + sum(x.size for x in self.inside))
+        object.__setattr__(self, "depth", 1 + max((x.depth for x in self.inside), default=0))
 
 
 Expression = Number | Name | Call
@@ -110,8 +118,11 @@ def _number(text: str, at: int, place: Place) -> tuple[float, int]:
     tail = re.compile(r"[a-z_0-9.]*").match(text, end)
     letters = tail[0] if tail else ""
     scaled = _LETTERS.fullmatch(letters)
-    if not scaled or letters == "a":
-        hint = "; 'a' is atto to ngspice and the unit to others, leave it out" if letters == "a" else ""
+    if not scaled or (not scaled[1] and letters[:1] in ("a", "f")):
+        hint = {
+            "a": "; a unit that begins with a is atto to some programs and the unit to others, leave it out",
+            "f": "; a unit that begins with f is femto to SPICE and the unit to people, leave it out",
+        }.get(letters[:1] if scaled else "", "")
         raise place.refuse(
             f"{shortened(found[0] + letters)!r} is not a number that every program reads alike; allowed after the digits: t, g, meg, "
             f"k, m, u, n, p, f and a unit{hint}"
@@ -268,6 +279,17 @@ class _Reader:
 # ------------------------------------------------------------------------------------------------------ names and numbers
 
 
+@dataclass
+class Work:
+    """How much was worked out for one model so far, so that many expressions together stay bounded as well as each.
+
+    `depth` is how deep in expressions the work is: a parameter that waits for another one adds its own levels to it.
+    """
+
+    steps: int = 0
+    depth: int = 0
+
+
 @dataclass(frozen=True)
 class Scope:
     """What names mean where an expression stands.
@@ -277,10 +299,13 @@ class Scope:
     value : callable
         The number of a parameter; None where there is none of this name.
     functions : mapping of name to Function
+    work : Work
+        Of the model, which all its scopes share.
     """
 
     value: Callable[[str], float | None]
     functions: Mapping[str, Function]
+    work: Work = field(default_factory=Work)
 
 
 def resolved(found: Expression, scope: Scope, place: Place) -> Expression:
@@ -291,7 +316,7 @@ def resolved(found: Expression, scope: Scope, place: Place) -> Expression:
     ModelTextError
         If a name is not known, or a number cannot be worked out.
     """
-    return _Resolver(scope, place).resolve(found, {}, 0)
+    return _Resolver(scope, place).resolve(found, {})
 
 
 def number_of(found: Expression, scope: Scope, place: Place) -> float:
@@ -312,10 +337,38 @@ class _Resolver:
     def __init__(self, scope: Scope, place: Place):
         self.scope, self.place, self.count = scope, place, 0
 
-    def resolve(self, found: Expression, arguments: Mapping[str, Expression], depth: int) -> Expression:
+    def resolve(self, found: Expression, arguments: Mapping[str, Expression]) -> Expression:
+        """What an expression comes to. Operators in a row are taken one after the other, and only brackets go deeper."""
+        if self.scope.work.depth >= _DEEPEST_TOGETHER:
+            raise self.place.refuse(
+                f"expressions nest more than {_DEEPEST_TOGETHER} levels deep, counted through the functions and parameters that "
+                "they wait for"
+            )
+        self.scope.work.depth += 1
+        row: list[Call] = []
+        while isinstance(found, Call) and found.what in _IN_A_ROW:
+            self.counted()
+            row.append(found)
+            found = found.inside[0]
+        result = self.one(found, arguments)
+        for call in reversed(row):
+            result = self.simplified(Call(call.what, (result, self.resolve(call.inside[1], arguments))))
+        self.scope.work.depth -= 1
+        return result
+
+    def counted(self) -> None:
+        """One more step, within what an expression and a model may take."""
         self.count += 1
-        if self.count > _MOST or depth > 4 * _DEEPEST:
+        if self.count > _MOST:
             raise self.place.refuse("an expression grows without bound once its functions are written out")
+        self.scope.work.steps += 1
+        if self.scope.work.steps > _MOST_WORK:
+            raise self.place.refuse(
+                f"the expressions of this model have more than {_MOST_WORK} parts once functions are written out"
+            )
+
+    def one(self, found: Expression, arguments: Mapping[str, Expression]) -> Expression:
+        self.counted()
         if isinstance(found, Number):
             return found
         if isinstance(found, Name):
@@ -329,14 +382,14 @@ class _Resolver:
                     f'"{shortened(found.name)}" is no parameter of this model; it cannot be worked out'
                 )
             return Number(value)
-        inside = tuple(self.resolve(x, arguments, depth + 1) for x in found.inside)
+        inside = tuple([self.resolve(x, arguments) for x in found.inside])
         if found.what in self.scope.functions:
             function = self.scope.functions[found.what]
             if len(inside) != len(function.arguments):
                 raise self.place.refuse(
                     f'"{shortened(found.what)}" takes {len(function.arguments)} arguments; found {len(inside)}'
                 )
-            return self.resolve(function.body, dict(zip(function.arguments, inside, strict=True)), depth + 1)
+            return self.resolve(function.body, dict(zip(function.arguments, inside, strict=True)))
         if found.what == "()":
             return inside[0]
         return self.simplified(Call(_ALIASES.get(found.what, found.what), inside, found.places))
@@ -345,6 +398,11 @@ class _Resolver:
         what, inside = call.what, call.inside
         if call.size > _MOST:
             raise self.place.refuse("an expression grows without bound once its functions are written out")
+        if call.depth > _DEEPEST_LAW:
+            raise self.place.refuse(
+                f"a law of more than {_DEEPEST_LAW} levels; each term that hangs on a voltage or current adds one: split it, such as "
+                "into several B lines"
+            )
         if what in ("v", "i"):
             return call
         if what not in _RULES:
@@ -404,6 +462,7 @@ class _Resolver:
         return Number(float(value))
 
 
+_IN_A_ROW = ("+", "-", "*", "/")
 _TRUE, _FALSE = Call("true", ()), Call("false", ())
 _ALIASES = {"if": "?:", "log": "ln", "pow": "**", "stp": "u"}
 _CONDITIONS = {"?:": 1, "&&": 2, "||": 2, "not": 1}

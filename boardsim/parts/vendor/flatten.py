@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections import ChainMap
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 
@@ -24,14 +25,18 @@ from boardsim.parts.elements import (
 )
 from boardsim.parts.record import nearest, shortened
 from boardsim.parts.vendor.cards import Definitions, Library, ModelCard, Subcircuit, split_assignments
-from boardsim.parts.vendor.devices import Worked, device_model, passive
-from boardsim.parts.vendor.expressions import Function, Scope, number_of, parse, resolved, volts, written
-from boardsim.parts.vendor.text import Place, Statement
+from boardsim.parts.vendor.devices import MEASURED, TNOM, Worked, device_model, passive
+from boardsim.parts.vendor.expressions import Function, Scope, Work, number_of, parse, resolved, volts, written
+from boardsim.parts.vendor.text import Place, Statement, some_of
 
 _DEEPEST = 8  # subcircuits within subcircuits
 _MOST = 2000  # elements of one part
+_MOST_LINES = 5000  # of all subcircuits, each as often as it is used: calls of empty ones make no element
+_LONGEST_LAWS = 200_000  # characters of all laws of one part as they stand in a deck
 SIDE = 1e-4  # [m], length and width of a MOSFET that names none, as in SPICE
 _TOKEN = re.compile(r"\{[^{}]*\}|[^\s(),{}=]+")
+_BY_LAW = re.compile(r"\s(value|table)\b")
+_TEMPERATURE = {"tc1", "tc2", "tnom", *MEASURED}  # of a resistor's, capacitor's or inductor's model
 _GROUNDS = ("0", "gnd")
 
 
@@ -44,10 +49,17 @@ class Flat:
     elements : list of Element
     remarks : dict
         What is told about its models, each once, by the line of the model.
+    lines, characters : int
+        Lines that were worked through, and length of the laws so far.
+    work : Work
+        What its expressions took so far.
     """
 
     elements: list[Element] = field(default_factory=list)
     remarks: dict[str, None] = field(default_factory=dict)
+    lines: int = 0
+    characters: int = 0
+    work: Work = field(default_factory=Work)
 
 
 def flatten(library: Library, top: Subcircuit, name: str, pins: Mapping[str, str], celsius: float) -> Flat:
@@ -81,22 +93,21 @@ def flat_model(card: ModelCard, library: Library, celsius: float) -> Worked:
     ModelTextError
         As `device_model` does.
     """
-    values = _Values([library], {}, celsius)
+    values = _Values([library], {}, celsius, Work())
     return device_model(card, lambda e: number_of(e, values.scope(), card.place), celsius)
 
 
 class _Values:
     """Parameters by name: what an instance is given, then its own, then the file's; worked out when asked for."""
 
-    def __init__(self, levels: Sequence[Definitions], given: Mapping[str, float], celsius: float):
-        self.levels, self.known, self.celsius = levels, dict(given), celsius
+    def __init__(self, levels: Sequence[Definitions], given: Mapping[str, float], celsius: float, work: Work):
+        self.levels, self.known, self.celsius, self.work = levels, dict(given), celsius, work
         self.waiting: list[str] = []
-        self.functions: dict[str, Function] = {}
-        for level in reversed(levels):
-            self.functions |= level.functions
+        # The inner one's comes first; looked up, not copied, since a part may call its subcircuits thousands of times.
+        self.functions: Mapping[str, Function] = ChainMap(*(level.functions for level in levels))
 
     def scope(self) -> Scope:
-        return Scope(self.value, self.functions)
+        return Scope(self.value, self.functions, self.work)
 
     def value(self, name: str) -> float | None:
         if name in self.known:
@@ -127,7 +138,7 @@ class _Instance:
     ):
         self.library, self.circuit, self.out, self.prefix, self.nodes = library, circuit, out, prefix, nodes
         self.celsius, self.depth = celsius, depth
-        self.values = _Values((circuit, library), given, celsius)
+        self.values = _Values((circuit, library), given, celsius, out.work)
         self.connected: set[str] = set(nodes)
         self.probed: list[tuple[str, Place]] = []
         self.meters: dict[str, str] = {}
@@ -147,6 +158,9 @@ class _Instance:
             self.place = s.place
             if len(self.out.elements) > _MOST:
                 raise s.place.refuse(f"a part of more than {_MOST} elements is too large for a board of many")
+            self.out.lines += 1
+            if self.out.lines > _MOST_LINES:
+                raise s.place.refuse(f"a part of more than {_MOST_LINES} lines, calls counted out, is no model")
             self.line(s, f"{self.prefix}_{i}")
         for node, place in self.probed:
             if node not in self.connected:
@@ -197,7 +211,7 @@ class _Instance:
         if name not in self.meters:
             raise self.place.refuse(
                 f"I({shortened(name)}): currents are read from voltage sources of the same subcircuit only; it has: "
-                f"{', '.join(sorted(self.meters)) or 'none'}"
+                f"{some_of(sorted(self.meters))}"
             )
         return f"V{self.meters[name]}"
 
@@ -206,7 +220,11 @@ class _Instance:
 
     def written(self, text: str) -> str:
         expression = resolved(parse(text, self.place), self.values.scope(), self.place)
-        return written(expression, self.read, self.meter, self.place)
+        law = written(expression, self.read, self.meter, self.place)
+        self.out.characters += len(law)
+        if self.out.characters > _LONGEST_LAWS:
+            raise self.place.refuse(f"laws of more than {_LONGEST_LAWS} characters together are too long for a deck")
+        return law
 
     def words(self, text: str, allowed: Sequence[str], least: int, most: int) -> tuple[list[str], dict[str, str]]:
         """Words after the element's own name, and what is assigned."""
@@ -229,7 +247,7 @@ class _Instance:
                 return level.models[name]
         known = [*self.circuit.models, *self.library.models]
         raise self.place.refuse(
-            f'model "{shortened(name)}" is not defined in this file{nearest(name, known)}; defined: {", ".join(map(shortened, known)) or "none"}'
+            f'model "{shortened(name)}" is not defined in this file{nearest(name, known)}; defined: {some_of(known)}'
         )
 
     def worked(self, name: str, *devices: str) -> Worked:
@@ -262,6 +280,11 @@ class _Instance:
                 raise self.place.refuse(
                     f'model "{shortened(models[0])}" is of type {card.device.upper()}, which does not fit here'
                 )
+            if given.keys() & {"tc", "tc1", "tc2"} and card.parameters.keys() & _TEMPERATURE:
+                raise self.place.refuse(
+                    f'{shortened(text)!r} has temperature coefficients beside those of its model "{shortened(models[0])}"; programs '
+                    "differ about which count, and from what temperature: give them in one of the two places"
+                )
             size *= passive(card, lambda e: number_of(e, self.values.scope(), card.place), self.celsius)
         if size < 0:
             raise self.place.refuse(f"{shortened(text)!r} comes to {size:g}; no part has less than nothing")
@@ -284,14 +307,14 @@ class _Instance:
             self.put(Capacitor(name, first, last, size))
 
     def growth(self, given: Mapping[str, str]) -> float:
-        """1 + TC1 dT + TC2 dT^2 from 27 degC. [1]"""
+        """1 + TC1 dT + TC2 dT^2 from 27 degC: SPICE's nominal temperature, which only .options could change. [1]"""
         both = [self.number(t) for t in re.split(r"[\s,]+", given["tc"])] if "tc" in given else []
         if len(both) > 2 or (both and ("tc1" in given or "tc2" in given)):
             raise self.place.refuse("tc takes one or two numbers, and tc1 and tc2 in its place")
         first, second = [*both, 0.0, 0.0][:2]
         first += self.number(given["tc1"]) if "tc1" in given else 0.0
         second += self.number(given["tc2"]) if "tc2" in given else 0.0
-        shift = self.celsius - 27.0
+        shift = self.celsius - TNOM
         return 1 + first * shift + second * shift**2
 
     def area(self, words: list[str], given: Mapping[str, str]) -> float:
@@ -338,6 +361,8 @@ class _Instance:
         size = {"l": SIDE, "w": SIDE, **dict(found.size), **{k: self.number(t) for k, t in given.items()}}
         if size["l"] <= 0 or size["w"] <= 0:
             raise self.place.refuse("length and width have to be above nothing")
+        if below := [key.upper() for key, value in size.items() if value < 0]:
+            raise self.place.refuse(f"{', '.join(below)} below nothing; no part has less")
         self.put(Mosfet(name, ends[0], ends[1], ends[2], ends[3], found.model, tuple(size.items())))
 
     def source(self, text: str, name: str) -> None:
@@ -356,15 +381,17 @@ class _Instance:
             self.put(Drive(own, plus, minus, steady) if value else Ammeter(own, plus, minus))
 
     def controlled(self, text: str, name: str) -> None:
-        law = re.fullmatch(r"(\S+\s+[^{}=]*?)\s+value\s*=?\s*(\{[^{}]*\}|[^{}]+)", text)
-        table = re.fullmatch(r"(\S+\s+[^{}=]*?)\s+table\s*(\{[^{}]*\})\s*=?\s*([^{}=]+)", text)
+        word = _BY_LAW.search(text)
+        head, rest = (text[: word.start()], text[word.end() :]) if word else (text, "")
+        law = re.fullmatch(r"\s*=?\s*(\{[^{}]*\}|[^{}]+)", rest) if word and word[1] == "value" else None
+        table = re.fullmatch(r"\s*(\{[^{}]*\})\s*=?\s*([^{}=]+)", rest) if word and word[1] == "table" else None
         if law:
-            (a, b), _ = self.words(law[1], (), 2, 2)
-            self.driven(text[0], name, a, b, self.written(law[2]))
+            (a, b), _ = self.words(head, (), 2, 2)
+            self.driven(text[0], name, a, b, self.written(law[1]))
         elif table:
-            (a, b), _ = self.words(table[1], (), 2, 2)
-            points = ", ".join(_TOKEN.findall(table[3]))
-            self.driven(text[0], name, a, b, self.written(f"table({table[2][1:-1]}, {points})"))
+            (a, b), _ = self.words(head, (), 2, 2)
+            points = ", ".join(_TOKEN.findall(table[2]))
+            self.driven(text[0], name, a, b, self.written(f"table({table[1][1:-1]}, {points})"))
         else:
             self.refuse_special(text)
             (a, b, c, d, gain), _ = self.words(text, (), 5, 5)

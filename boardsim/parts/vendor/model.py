@@ -21,7 +21,7 @@ from boardsim.parts.temperature import in_celsius
 from boardsim.parts.vendor.cards import Library, ModelCard, Subcircuit, read_library
 from boardsim.parts.vendor.devices import Worked
 from boardsim.parts.vendor.flatten import SIDE, flat_model, flatten
-from boardsim.parts.vendor.text import plain_name, read_statements
+from boardsim.parts.vendor.text import plain_name, read_statements, some_of
 from boardsim.quantities import Quantity
 
 A_MODEL = "the vendor's SPICE model, which replaces ours in decks; the figures stay the limits"
@@ -76,7 +76,7 @@ class VendorsModel(Record):
             what = ".subckt" if self.subcircuit is not None else ".model"
             raise QuantityError(
                 f'{shortened(self.file)} has no {what} "{shortened(name)}"{nearest(name, list(known))}; it has: '
-                f"{', '.join(map(shortened, known)) or 'none'}"
+                f"{some_of(known)}"
             )
         return known[name]
 

@@ -9,8 +9,8 @@ deck: what is read here becomes numbers and names of our own.
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass, field
 from pathlib import Path
 
 from boardsim.errors import QuantityError
@@ -18,6 +18,9 @@ from boardsim.parts.record import shortened
 
 LARGEST_FILE = 1 << 20  # [byte]; a maker's library of a hundred transistors has a fifth of it
 MOST_FILES = 32
+_LARGEST_TOGETHER = 2 << 20  # [byte] of a file and what it includes
+_MOST_LINES = 100_000  # of these together, comments among them
+_MOST_STATEMENTS = 20_000  # of these together
 _LONGEST_LINE = 4096
 _LONGEST_STATEMENT = 32768
 _DEEPEST = 8  # includes within includes
@@ -69,10 +72,22 @@ def read_statements(path: Path, folder: Path) -> tuple[Statement, ...]:
     ModelTextError
         If a file cannot be read, lies elsewhere, or holds what no model needs.
     """
-    return tuple(_read(path, folder.resolve(), (), {}))
+    return tuple(_read(path, folder.resolve(), (), _Taken()))
 
 
-def _read(path: Path, folder: Path, around: tuple[Path, ...], seen: dict[Path, None]) -> Iterator[Statement]:
+@dataclass
+class _Taken:
+    """What was read of a model so far, so that many files together stay bounded as well as each."""
+
+    files: set[Path] = field(default_factory=set)
+    size: int = 0
+    lines: int = 0
+    statements: int = 0
+
+
+def _read(
+    path: Path, folder: Path, around: tuple[Path, ...], taken: _Taken, named: Place | None = None
+) -> Iterator[Statement]:
     where = around[-1].name if around else path.name
     try:
         real = path.resolve()
@@ -84,26 +99,42 @@ def _read(path: Path, folder: Path, around: tuple[Path, ...], seen: dict[Path, N
         ) from None
     name = plain_name(path.name)
     if not inside:
-        raise ModelTextError(
+        said = (
             f"{name} lies outside the folder {plain_name(folder.name)}; a model file and what it includes lie beside the file that "
             "names them, or below"
         )
+        raise ModelTextError(said) if named is None else named.refuse(f"includes a file beyond what is allowed: {said}")
     if not there:
-        raise ModelTextError(f"{name} is not there, or is no file; name an existing model file, relative to this one")
+        said = f"{name} is not there, or is no file; name an existing model file, relative to this one"
+        raise ModelTextError(said) if named is None else named.refuse(f"includes a file that cannot be read: {said}")
     if real in around:
         raise ModelTextError(f"{name} includes itself, by way of {plain_name(where)}")
     if len(around) >= _DEEPEST:
         raise ModelTextError(f"{name}: includes nest more than {_DEEPEST} files deep")
-    if real in seen:
+    if real in taken.files:
         return  # its definitions are there already
-    seen[real] = None
-    if len(seen) > MOST_FILES:
+    taken.files.add(real)
+    if len(taken.files) > MOST_FILES:
         raise ModelTextError(f"{name}: more than {MOST_FILES} files are included")
-    for statement in _statements(_decoded(real, name), name):
+    text = _decoded(real, name)
+    taken.size += len(text)
+    taken.lines += text.count("\n") + text.count("\r")
+    if taken.size > _LARGEST_TOGETHER:
+        raise ModelTextError(
+            f"{name}: with the files before it more than {_LARGEST_TOGETHER >> 20} MiB are read; leave out what the part does not need"
+        )
+    if taken.lines > _MOST_LINES:
+        raise ModelTextError(
+            f"{name}: more than {_MOST_LINES} lines are no model; leave out what the part does not need"
+        )
+    for statement in _statements(text, name):
+        taken.statements += 1
+        if taken.statements > _MOST_STATEMENTS:
+            raise statement.place.refuse(f"more than {_MOST_STATEMENTS} statements are no model")
         included = _INCLUDE.match(statement.text)
         if included:
             target = _target(included[2], statement.place)
-            yield from _read(real.parent / target, folder, (*around, real), seen)
+            yield from _read(real.parent / target, folder, (*around, real), taken, statement.place)
         else:
             yield Statement(statement.place, statement.text.lower())
 
@@ -187,11 +218,18 @@ def _content(line: str, place: Place) -> str:
         )
     if '"' in text and not _INCLUDE.match(text):
         raise place.refuse("holds text in quotes; only the file name of .include may stand in quotes")
-    return text
+    # One blank for many: what looks for words later takes a time that grows with the square of a run of blanks.
+    return text if _INCLUDE.match(text) else re.sub(r"[ \t]+", " ", text)
 
 
 def _shown(text: str) -> str:
     return repr(shortened(text))
+
+
+def some_of(names: Iterable[str]) -> str:
+    """Names for a message; a dozen where there are more."""
+    every = [shortened(n) for n in names]
+    return ", ".join(every[:12]) + (f" ... ({len(every)} in all)" if len(every) > 12 else "") or "none"
 
 
 def plain_name(text: str) -> str:
