@@ -10,12 +10,12 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
 from boardsim.parts.elements import (
-    Ammeter,
     Element,
     Inductor,
     Port,
     Probe,
     Resistor,
+    Signal,
     Stored,
     current,
     plus,
@@ -153,12 +153,15 @@ class Coil(Part):
         """The most that its field can hold at a current. [A] -> [J]"""
         return 0.5 * corner.take(self.inductance, "inductance") * amperes**2
 
-    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Ammeter | Inductor]:
-        """What lies behind the winding's resistance, beside the core loss, and what measures its current."""
-        coil = Inductor(f"{name}_l", a, b, corner.take(self.inductance, "inductance"))
-        return (coil,), coil
+    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Signal | None]:
+        """What lies behind the winding's resistance, beside the core loss, and its current.
 
-    def more_probes(self, name: str) -> tuple[Probe, ...]:
+        None where no element carries all of it: it is then what goes through the winding's resistance and not through the core loss.
+        """
+        coil = Inductor(f"{name}_l", a, b, corner.take(self.inductance, "inductance"))
+        return (coil,), current(coil)
+
+    def more_probes(self, name: str, corner: Corner) -> tuple[Probe, ...]:
         """What a kind reads beyond voltages and currents."""
         return ()
 
@@ -177,9 +180,10 @@ class Coil(Part):
     def stamp(self, name: str, label: str, a: str, b: str, corner: Corner, around: Surroundings | None) -> Stamp:
         """The coil from node `a`, where its current enters while it is on, to node `b`."""
         mid = f"{name}_w"
-        elements, meter = self.field(name, mid, b, corner)
-        core = self.loss.typ
-        through = plus(current(meter), scaled(1 / core, voltage(mid, b)))
+        elements, inner = self.field(name, mid, b, corner)
+        ohms, lost = self.ohms(corner, around), scaled(1 / self.loss.typ, voltage(mid, b))
+        through = plus(inner, lost) if inner is not None else scaled(1 / ohms, voltage(a, mid))
+        inner = inner if inner is not None else plus(through, scaled(-1, lost))
         pairs, more = (("v_coil", "i_coil"),), self.stored(corner)
         store = ("i_l", corner.take(self.inductance, "inductance")) if more is None else None
         port = Port("coil", pairs, store=store, energy=more)
@@ -187,15 +191,15 @@ class Coil(Part):
         release = Limit.of(self.release, "release current", "A", None, self.release.min if self.release else None)
         return Stamp(
             elements=(
-                Resistor(f"{name}_r", a, mid, self.ohms(corner, around)),
+                Resistor(f"{name}_r", a, mid, ohms),
                 *elements,
-                Resistor(f"{name}_core", mid, b, core),
+                Resistor(f"{name}_core", mid, b, self.loss.typ),
             ),
             probes=(
                 Probe("v_coil", voltage(a, b), "V"),
                 Probe("i_coil", through, "A"),
-                Probe("i_l", current(meter), "A"),
-                *self.more_probes(name),
+                Probe("i_l", inner, "A"),
+                *self.more_probes(name, corner),
             ),
             ports=(port,),
             rules=(

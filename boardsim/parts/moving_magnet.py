@@ -8,7 +8,7 @@ from pydantic import Field
 
 from boardsim.parts.base import Assumption, Corner
 from boardsim.parts.coil import Coil
-from boardsim.parts.elements import Ammeter, Element, Inductor, Probe, Stored, VoltageLaw
+from boardsim.parts.elements import Element, Inductor, Probe, Signal, Stored, VoltageLaw, current
 from boardsim.parts.motion import Motion
 from boardsim.parts.rules import Rule
 from boardsim.quantities import FORCE_CONSTANT, Quantity
@@ -52,19 +52,16 @@ class MovingMagnetCoil(Coil):
         """What the corners vary in this part."""
         return {**super().tolerances(), **self.motion.tolerances()}
 
-    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Ammeter | Inductor]:
+    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Signal]:
         """Inductance, the voltage of the motion, and the magnet."""
         henries = corner.take(self.inductance, "inductance")
         k = self.force_constant.typ * (1 if self.wired == "right" else -1)
         coil = Inductor(f"{name}_l", a, f"{name}_li", henries)
-        meter = Ammeter(f"{name}_m", f"{name}_li", f"{name}_mi")
-        i = f"I(V{name}_m)"
         return (
             coil,
-            meter,
-            VoltageLaw(f"{name}_b", f"{name}_mi", b, f"{k!r}*V({name}_v)"),
-            *self.motion.elements(name, f"{k!r}*{i}", corner),
-        ), coil
+            VoltageLaw(f"{name}_b", f"{name}_li", b, f"{k!r}*V({name}_v)"),
+            *self.motion.elements(name, f"{k!r}*I(L{name}_l)", corner),
+        ), current(coil)
 
     def stored(self, corner: Corner) -> Stored:
         """What field and motion hold."""
@@ -75,7 +72,7 @@ class MovingMagnetCoil(Coil):
 
         return Stored(("i_l", "position", "speed"), law)
 
-    def more_probes(self, name: str) -> tuple[Probe, ...]:
+    def more_probes(self, name: str, corner: Corner) -> tuple[Probe, ...]:
         """What moves."""
         return self.motion.probes(name)
 

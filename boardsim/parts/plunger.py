@@ -10,28 +10,21 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner
 from boardsim.parts.coil import Coil
 from boardsim.parts.elements import (
-    GROUND,
-    Ammeter,
-    Capacitor,
     CurrentLaw,
     Element,
+    Inductor,
     Probe,
-    Resistor,
     Stored,
-    Transfer,
     scaled,
-    voltage,
 )
-from boardsim.parts.motion import SMALL, Motion
+from boardsim.parts.motion import Motion
 from boardsim.parts.rules import Rule
 from boardsim.quantities import INDUCTANCE, Quantity
 
 if TYPE_CHECKING:
     from boardsim.parts.motion import Floats
 
-_MILLI = 1e3  # flux linkage is held in mVs: near 1, as ngspice's tolerances want it
-_LEAK = 1e12  # [ohm], the flux's way to ground at direct current
-_MM = 1e3  # and positions in mm
+_MM = 1e3  # positions are held in mm
 
 
 class PlungerCoil(Coil):
@@ -92,20 +85,19 @@ class PlungerCoil(Coil):
         opened, closed = (corner.take(q, "inductance") for q in (self.inductance, self.closed_inductance))
         return 1 / opened, (1 / closed - 1 / opened) / self.motion.travel.typ
 
-    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Ammeter]:
-        """Flux, its current, and the plunger."""
+    def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], None]:
+        """The open coil, beside it the current that the plunger's way takes off, and the plunger.
+
+        The flux linkage is the open inductance times its own current; what flows in all is read at the winding's resistance.
+        """
         rest, slope = self._slopes(corner)
-        flux, x = f"V({name}_f)", f"V({name}_x)"  # [mVs], [mm]
-        meter = Ammeter(f"{name}_m", a, f"{name}_mi")
-        gap = f"({rest / _MILLI!r}+{slope / _MILLI / _MM!r}*{x})"
+        coil = Inductor(f"{name}_l", a, b, 1 / rest)
+        i = f"I(L{name}_l)"
         return (
-            meter,
-            CurrentLaw(f"{name}_l", b, f"{name}_mi", f"{flux}*{gap}"),
-            Capacitor(f"{name}_f", f"{name}_f", GROUND, SMALL),
-            Transfer(f"{name}_f", f"{name}_f", GROUND, a, b, SMALL * _MILLI),
-            Resistor(f"{name}_f", f"{name}_f", GROUND, _LEAK),
-            *self.motion.elements(name, f"{-slope / 2 / _MILLI**2!r}*{flux}*{flux}", corner),
-        ), meter
+            coil,
+            CurrentLaw(f"{name}_l", b, a, f"{slope / rest / _MM!r}*{i}*V({name}_x)"),
+            *self.motion.elements(name, f"{-slope / 2 / rest**2!r}*{i}*{i}", corner),
+        ), None
 
     def stored(self, corner: Corner) -> Stored:
         """What field and motion hold."""
@@ -116,9 +108,10 @@ class PlungerCoil(Coil):
 
         return Stored(("flux", "position", "speed"), law)
 
-    def more_probes(self, name: str) -> tuple[Probe, ...]:
+    def more_probes(self, name: str, corner: Corner) -> tuple[Probe, ...]:
         """Its flux linkage, and what moves."""
-        return (Probe("flux", scaled(1 / _MILLI, voltage(f"{name}_f")), "Wb"), *self.motion.probes(name))
+        rest, _ = self._slopes(corner)
+        return (Probe("flux", scaled(1 / rest, ((1.0, f"i(l{name}_l)"),)), "Wb"), *self.motion.probes(name))
 
     def more_rules(self) -> tuple[Rule, ...]:
         """What the motion is held against."""
