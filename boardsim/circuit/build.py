@@ -10,6 +10,7 @@ from PySpice.Spice.Netlist import Circuit, FixedPinElement
 from boardsim.parts.elements import (
     MODEL_FILE,
     Ammeter,
+    AtRest,
     Bipolar,
     Capacitor,
     CurrentDrive,
@@ -87,6 +88,8 @@ class Builder:
                     c.BehavioralSource(e.name, e.minus, e.plus, current_expression=e.expression)
                 case Transfer():
                     c.VCCS(e.name, e.minus, e.plus, e.a, e.b, transconductance=e.siemens)
+                case AtRest():
+                    c.raw_spice += f".ic v({e.node})={e.volts!r}\n"
                 case VoltageLaw():
                     c.BehavioralSource(e.name, e.plus, e.minus, voltage_expression=e.expression)
                 case ToDigital() | ToAnalog() | Gate() | FlipFlop():

@@ -149,6 +149,18 @@ class Transfer:
 
 
 @dataclass(frozen=True)
+class AtRest:
+    """The voltage of a node before anything happens, where it is known beforehand. [V]
+
+    ngspice chooses its pivots at direct current, where an integrator has no diagonal element to speak of, and keeps them: without this
+    they are the wrong ones for a step of picoseconds.
+    """
+
+    node: str
+    volts: float
+
+
+@dataclass(frozen=True)
 class VoltageLaw:
     """A voltage from plus to minus, given by an expression of node voltages and of currents of ammeters. [V]"""
 
@@ -229,6 +241,7 @@ Element = (
     | CurrentDrive
     | CurrentLaw
     | Transfer
+    | AtRest
     | VoltageLaw
     | ToDigital
     | ToAnalog

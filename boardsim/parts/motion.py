@@ -9,7 +9,18 @@ from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, listed
-from boardsim.parts.elements import GROUND, Capacitor, CurrentLaw, Element, Probe, Resistor, Transfer, scaled, voltage
+from boardsim.parts.elements import (
+    GROUND,
+    AtRest,
+    Capacitor,
+    CurrentLaw,
+    Element,
+    Probe,
+    Resistor,
+    Transfer,
+    scaled,
+    voltage,
+)
 from boardsim.parts.record import Record
 from boardsim.parts.rules import Limit, MotionRule, Motions
 from boardsim.quantities import (
@@ -36,11 +47,9 @@ _CREEP = 2e-3  # [m/s], below which dry friction fades: a slope for Newton's met
 _MM = 1e3  # positions are held in mm: near 1, as ngspice's tolerances want it
 _STIFFEST = 20.0  # damping ratio of a stop that gives back nothing to speak of
 _NEAR_ONE = 1e-7  # where both formulas divide by nothing
-SMALL = (
-    1e-3  # of what integrators would be with one ampere for each newton, volt or m/s: at picosecond steps the rounding
-)
-# of the charge of a farad makes milliamperes, which Newton's method cannot meet
-_LEAK = 1e12  # [ohm], gives the integrators a way to ground at direct current; hours against a run
+# [A/N], [A s/m]: how many amperes stand for a newton or for a speed. At picosecond steps the rounding of the charge of a farad, which
+# one ampere would need, makes milliamperes, which Newton's method cannot meet.
+_SMALL = 1e-3
 
 
 def damping_of_bounce(restitution: float) -> float:
@@ -170,28 +179,29 @@ class Motion(Record):
         s, m = self.travel.typ * _MM, self.mass.typ
         stiff = self._stiffness / _MM  # [N/mm]
         dash = 2 * damping_of_bounce(self.restitution.typ) * math.pi / self.contact.typ * m
-        stiff, dash = SMALL * stiff, SMALL * dash
+        stiff, dash = _SMALL * stiff, _SMALL * dash
         near, far = f"-({stiff!r}*{x}+{dash!r}*{v})", f"-({stiff!r}*({x}-{s!r})+{dash!r}*{v})"
         node = f"{name}_v"
         # One source for each law: ngspice works out an expression once more for each node in it. What is a straight line is none.
         found: list[Element] = [
-            Capacitor(node, node, GROUND, SMALL * m),  # a force is a current
-            CurrentLaw(node, node, GROUND, f"{SMALL!r}*({force}-{self._steady(corner)!r})"),
+            Capacitor(node, node, GROUND, _SMALL * m),  # a force is a current
+            CurrentLaw(node, node, GROUND, f"{_SMALL!r}*({force}-{self._steady(corner)!r})"),
             CurrentLaw(f"{name}_stops", node, GROUND, f"{x}<0 ? max({near},0) : ({x}>{s!r} ? min({far},0) : 0)"),
-            Capacitor(f"{name}_x", f"{name}_x", GROUND, SMALL),
-            Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, SMALL * _MM),
-            Resistor(f"{name}_x", f"{name}_x", GROUND, _LEAK),
+            Capacitor(f"{name}_x", f"{name}_x", GROUND, _SMALL),
+            Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, _SMALL * _MM),
+            AtRest(node, 0.0),
+            AtRest(f"{name}_x", -self._steady(corner) / (self._stiffness + self.spring_rate.typ) * _MM),
         ]
         if self.spring_rate.typ:
             found.append(
-                Transfer(f"{name}_spring", GROUND, node, f"{name}_x", GROUND, SMALL * self.spring_rate.typ / _MM)
+                Transfer(f"{name}_spring", GROUND, node, f"{name}_x", GROUND, _SMALL * self.spring_rate.typ / _MM)
             )
         if self.friction.typ:
             found.append(
-                CurrentLaw(f"{name}_rub", node, GROUND, f"-{SMALL * self.friction.typ!r}*tanh({v}/{_CREEP!r})")
+                CurrentLaw(f"{name}_rub", node, GROUND, f"-{_SMALL * self.friction.typ!r}*tanh({v}/{_CREEP!r})")
             )
         if self.damping.typ:
-            found.append(Resistor(f"{name}_drag", node, GROUND, 1 / (SMALL * self.damping.typ)))
+            found.append(Resistor(f"{name}_drag", node, GROUND, 1 / (_SMALL * self.damping.typ)))
         return tuple(found)
 
     @property
