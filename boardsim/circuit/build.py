@@ -8,7 +8,9 @@ from PySpice.Spice.ElementParameter import ModelPositionalParameter
 from PySpice.Spice.Netlist import Circuit, FixedPinElement
 
 from boardsim.parts.elements import (
+    GROUND,
     MODEL_FILE,
+    ONE,
     Ammeter,
     AtRest,
     Bipolar,
@@ -23,6 +25,7 @@ from boardsim.parts.elements import (
     Junction,
     Model,
     Mosfet,
+    One,
     PowerMosfet,
     Resistor,
     ToAnalog,
@@ -53,6 +56,7 @@ class Builder:
         self._circuit = Circuit(TITLE)
         self._models: dict[tuple[str, tuple[str, ...], tuple[tuple[str, float], ...]], str] = {}
         self._vendors: set[str] = set()
+        self._has_one = False
 
     def add(self, elements: Iterable[Element]) -> None:
         """Add elements to the netlist."""
@@ -88,12 +92,19 @@ class Builder:
                     c.BehavioralSource(e.name, e.minus, e.plus, current_expression=e.expression)
                 case Transfer():
                     c.VCCS(e.name, e.minus, e.plus, e.a, e.b, transconductance=e.siemens)
+                case One():
+                    self._one()
                 case AtRest():
                     c.raw_spice += f".ic v({e.node})={e.volts!r}\n"
                 case VoltageLaw():
                     c.BehavioralSource(e.name, e.plus, e.minus, voltage_expression=e.expression)
                 case ToDigital() | ToAnalog() | Gate() | FlipFlop():
                     self._digital(e)
+
+    def _one(self) -> None:
+        if not self._has_one:
+            self._has_one = True
+            self._circuit.V(ONE, ONE, GROUND, 1)
 
     def _vendors_part(self, e: VendorsPart) -> None:
         """What a vendor's model comes to; the deck names its file, which messages about a failed run then can."""

@@ -161,6 +161,11 @@ class AtRest:
 
 
 @dataclass(frozen=True)
+class One:
+    """A node named `ONE` at 1 V, however often it is asked for: what signals that begin elsewhere than at zero add."""
+
+
+@dataclass(frozen=True)
 class VoltageLaw:
     """A voltage from plus to minus, given by an expression of node voltages and of currents of ammeters. [V]"""
 
@@ -242,6 +247,7 @@ Element = (
     | CurrentLaw
     | Transfer
     | AtRest
+    | One
     | VoltageLaw
     | ToDigital
     | ToAnalog
@@ -253,6 +259,7 @@ Signal = tuple[tuple[float, str], ...]
 """A linear combination of saved vectors: ((coefficient, "v(node)" or "i(element)"), ...)."""
 
 GROUND = "0"
+ONE = "one"
 MODEL_FILE = "with a vendor's model read from"  # in a comment of a deck, before the name of the file
 
 

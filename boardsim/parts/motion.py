@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import cache
 from typing import TYPE_CHECKING, Annotated, Literal
 
 from pydantic import Field, model_validator
@@ -11,13 +12,16 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, listed
 from boardsim.parts.elements import (
     GROUND,
+    ONE,
     AtRest,
     Capacitor,
     CurrentLaw,
     Element,
+    One,
     Probe,
     Resistor,
     Transfer,
+    plus,
     scaled,
     voltage,
 )
@@ -45,13 +49,15 @@ if TYPE_CHECKING:
 GRAVITY = 9.80665  # [m/s^2], standard acceleration of free fall
 _CREEP = 2e-3  # [m/s], below which dry friction fades: a slope for Newton's method
 _MM = 1e3  # positions are held in mm: near 1, as ngspice's tolerances want it
-_STIFFEST = 20.0  # damping ratio of a stop that gives back nothing to speak of
-_NEAR_ONE = 1e-7  # where both formulas divide by nothing
+_STIFFEST = 20.0  # damping ratio of a stop that gives back 1 or 2 %
+_ONSET = 2.5  # how much stiffer than its spring a stop is at the onset of an impact, at the most
+_PANELS = 400  # of the sum: four digits
 # [A/N], [A s/m]: how many amperes stand for a newton or for a speed. At picosecond steps the rounding of the charge of a farad, which
 # one ampere would need, makes milliamperes, which Newton's method cannot meet.
 _SMALL = 1e-3
 
 
+@cache
 def damping_of_bounce(restitution: float) -> float:
     """Damping ratio of a stop from its coefficient of restitution.
 
@@ -67,21 +73,17 @@ def damping_of_bounce(restitution: float) -> float:
 
     Notes
     -----
-    The stop is a spring and a damper side by side, which push and never pull: the contact ends when their force is zero. For a
-    damping ratio z below 1 it does so at w t = (pi - atan2(2 z r, 1 - 2 z^2)) / r with r = sqrt(1 - z^2), and the speed is then
-    exp(-z w t) of what it was; above 1 at w t = ln((z + r) / (z - r)) / r with r = sqrt(z^2 - 1).
-
-    References
-    ----------
-    T. Schwager, T. Poeschel, Coefficient of restitution and linear-dashpot model revisited, Granular Matter 9 (2007) 465.
+    The stop is that of `Motion`. With w^2 = k/m, u = r cos(p), w d = r sin(p) and h = max(min(sin p + 2 z cos p, C sin p), 0) its law makes
+    d(ln r)/dp = cos(p) (sin(p) - h) / (cos(p)^2 + h sin(p)), whatever the speed: the restitution hangs on z alone. The mass leaves where the
+    force ends, at tan(p) = -2 z, with r |cos p|. The integral is a sum of midpoints.
 
     Examples
     --------
     >>> round(damping_of_bounce(0.3), 3)
-    0.497
+    0.722
     """
     low, high = 0.0, _STIFFEST
-    for _ in range(80):
+    for _ in range(40):
         z = (low + high) / 2
         if _bounce(z) > restitution:
             low = z
@@ -92,13 +94,14 @@ def damping_of_bounce(restitution: float) -> float:
 
 def _bounce(z: float) -> float:
     """Speed after over speed before, at a damping ratio. [1]"""
-    if abs(z - 1) < _NEAR_ONE:
-        return math.exp(-2)
-    if z < 1:
-        r = math.sqrt(1 - z * z)
-        return math.exp(-z / r * (math.pi - math.atan2(2 * z * r, 1 - 2 * z * z)))
-    r = math.sqrt(z * z - 1)
-    return math.exp(-z / r * math.log((z + r) / (z - r)))
+    end = math.pi - math.atan(2 * z)
+    step = end / _PANELS
+    total = 0.0
+    for k in range(_PANELS):
+        sine, cosine = math.sin((k + 0.5) * step), math.cos((k + 0.5) * step)
+        h = max(min(sine + 2 * z * cosine, _ONSET * sine), 0.0)
+        total += cosine * (sine - h) / (cosine * cosine + h * sine)
+    return math.exp(total * step) * abs(math.cos(end))
 
 
 class Motion(Record):
@@ -106,9 +109,17 @@ class Motion(Record):
 
     Notes
     -----
-    m dv/dt = F - F_0 - k x - F_load - F_gravity - c v - F_friction tanh(v / 2 mm/s) - (stops), dx/dt = v. A stop is a spring and a damper
-    that push back as long as the mass is in contact; its stiffness follows from how long a contact lasts, its damping from the
-    coefficient of restitution. Ignores that a mass may turn, bend, or stick to its stop by remanence or grease.
+    m dv/dt = F - F_0 - k x - F_load - F_gravity - c v - F_friction tanh(v / 2 mm/s) - (stops), dx/dt = v. A stop is
+    a spring and a damper that push and never pull, and whose force begins with the way and not with a step: d deep and pressed in
+    at a speed u it pushes with max(min(k d + c u, 2.5 k d), 0). The restitution is then the same at every speed, as for the
+    well-known spring and damper without the bound, whose step costs ngspice its accuracy. k = m (pi / T)^2 follows from how long a contact
+    would last without loss, c from the restitution.
+    Ignores that a mass may turn, bend, or stick to its stop by remanence or grease.
+
+    References
+    ----------
+    T. Schwager, T. Poeschel, Coefficient of restitution and linear-dashpot model revisited, Granular Matter 9 (2007) 465: the spring and
+    damper that do not pull. The bound at the onset is ours.
     """
 
     travel: Annotated[Quantity, LENGTH] = Field(description="from stop to stop")
@@ -174,23 +185,36 @@ class Motion(Record):
         return 2 * math.sqrt(2 * self.mass.max * self.travel.max / free)
 
     def elements(self, name: str, force: str, corner: Corner) -> tuple[Element, ...]:
-        """The mass in a deck: node `name`_x holds its position [mm], `name`_v its speed [m/s]; `force` is an expression. [N]"""
+        """The mass in a deck: node `name`_v holds its speed [m/s]; `force` is an expression. [N]
+
+        Node `name`_x holds how far it is beyond the far stop [mm], so below zero on its way: ngspice's tolerances are shares of what a node
+        holds, and it is the blow at the far stop that is read.
+        """
         x, v = f"V({name}_x)", f"V({name}_v)"
         s, m = self.travel.typ * _MM, self.mass.typ
-        stiff = self._stiffness / _MM  # [N/mm]
-        dash = 2 * damping_of_bounce(self.restitution.typ) * math.pi / self.contact.typ * m
-        stiff, dash = _SMALL * stiff, _SMALL * dash
-        near, far = f"-({stiff!r}*{x}+{dash!r}*{v})", f"-({stiff!r}*({x}-{s!r})+{dash!r}*{v})"
+        stiff = _SMALL * self._stiffness / _MM  # of a current for a newton: [A/mm]
+        dash = _SMALL * 2 * damping_of_bounce(self.restitution.typ) * math.pi / self.contact.typ * m
+
+        def push(d: str, u: str) -> str:
+            return f"max(min({stiff!r}*{d}+{dash!r}*{u},{_ONSET * stiff!r}*{d}),0)"
+
+        near, far = push(f"(-{s!r}-{x})", f"(-{v})"), push(x, v)
         node = f"{name}_v"
         # One source for each law: ngspice works out an expression once more for each node in it. What is a straight line is none.
         found: list[Element] = [
             Capacitor(node, node, GROUND, _SMALL * m),  # a force is a current
-            CurrentLaw(node, node, GROUND, f"{_SMALL!r}*({force}-{self._steady(corner)!r})"),
-            CurrentLaw(f"{name}_stops", node, GROUND, f"{x}<0 ? max({near},0) : ({x}>{s!r} ? min({far},0) : 0)"),
+            CurrentLaw(
+                node,
+                node,
+                GROUND,
+                f"{_SMALL!r}*({force}-{self._steady(corner) + self.spring_rate.typ * self.travel.typ!r})",
+            ),
+            CurrentLaw(f"{name}_stops", node, GROUND, f"{x}>0 ? -{far} : ({x}<-{s!r} ? {near} : 0)"),
             Capacitor(f"{name}_x", f"{name}_x", GROUND, _SMALL),
             Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, _SMALL * _MM),
             AtRest(node, 0.0),
-            AtRest(f"{name}_x", -self._steady(corner) / (self._stiffness + self.spring_rate.typ) * _MM),
+            AtRest(f"{name}_x", -self._steady(corner) / (self._stiffness + self.spring_rate.typ) * _MM - s),
+            One(),
         ]
         if self.spring_rate.typ:
             found.append(
@@ -233,7 +257,7 @@ class Motion(Record):
     def probes(self, name: str) -> tuple[Probe, ...]:
         """Where it is, and how fast it moves."""
         return (
-            Probe("position", scaled(1 / _MM, voltage(f"{name}_x")), "m"),
+            Probe("position", plus(scaled(1 / _MM, voltage(f"{name}_x")), scaled(self.travel.typ, voltage(ONE))), "m"),
             Probe("speed", voltage(f"{name}_v"), "m/s"),
         )
 

@@ -95,7 +95,7 @@ class PlungerCoil(Coil):
         i = f"I(L{name}_l)"
         return (
             coil,
-            CurrentLaw(f"{name}_l", b, a, f"{slope / rest / _MM!r}*{i}*V({name}_x)"),
+            CurrentLaw(f"{name}_l", b, a, f"{slope / rest / _MM!r}*{i}*(V({name}_x)+{self.motion.travel.typ * _MM!r})"),
             *self.motion.elements(name, f"{-slope / 2 / rest**2!r}*{i}*{i}", corner),
         ), None
 
