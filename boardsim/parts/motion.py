@@ -136,7 +136,7 @@ class Motion(Record):
         "30 %", SHARE, "speed after an impact over that before it, metal on metal with a damper, from memory"
     )
     contact: Annotated[Quantity, POSITIVE_TIME] = assume(
-        "100 us", POSITIVE_TIME, "how long an impact lasts, from memory"
+        "300 us", POSITIVE_TIME, "how long an impact lasts, on a stop with a thin washer, from memory"
     )
     arrives_within: Annotated[Quantity, POSITIVE_TIME] | None = Field(
         None, description="latest arrival after its pulse begins; the end of the pulse if absent"
@@ -145,7 +145,7 @@ class Motion(Record):
         None, description="band that the energy of its blow has to lie in"
     )
     second_impact: Annotated[Quantity, SHARE] = assume(
-        "20 %", SHARE, "share of the first blow's energy that a second one may have, from memory"
+        "25 %", SHARE, "share of the first blow's energy that a second one may have, from memory"
     )
 
     @model_validator(mode="after")

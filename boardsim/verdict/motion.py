@@ -81,7 +81,8 @@ class Strokes:
         if not len(self.on):
             return
         for k in np.flatnonzero((x[:-1] < self.travel) & (x[1:] >= self.travel)):
-            self._hits.append(_arrives(t, x, v, int(k), self.travel))
+            share = (self.travel - x[k]) / (x[k + 1] - x[k])
+            self._hits.append((float(t[k] + share * (t[k + 1] - t[k])), float(v[k] + share * (v[k + 1] - v[k]))))
         rest = BACK * self.travel
         for k in np.flatnonzero((x[:-1] > rest) & (x[1:] <= rest)):
             self._downs.append(float(t[k] + (rest - x[k]) / (x[k + 1] - x[k]) * (t[k + 1] - t[k])))
@@ -108,24 +109,6 @@ class Strokes:
                 Travelled(float(on), float(off), until, k == len(self.on) - 1, hits, far, began, ended, left, back)
             )
         return tuple(found)
-
-
-def _arrives(t: Floats, x: Floats, v: Floats, k: int, stop: float) -> tuple[float, float]:
-    """When and how fast it arrives at its stop between points k and k + 1. [s], [m/s]
-
-    Notes
-    -----
-    The second of these points lies in the stop already, where the mass slows down at once: from the first it flies on with the acceleration
-    that it had before, x + v s + a s^2 / 2. Where it was in the stop before that too, so that no such acceleration is known, with none.
-    """
-    free = k > 0 and x[k - 1] < stop
-    a = float((v[k] - v[k - 1]) / (t[k] - t[k - 1])) if free else 0.0
-    way, speed = float(stop - x[k]), float(v[k])
-    step = float(t[k + 1] - t[k])
-    under = speed * speed + 2 * a * way
-    took = 2 * way / (speed + under**0.5) if under >= 0 and speed + under**0.5 > 0 else step
-    took = min(took, step)
-    return float(t[k]) + took, speed + a * took
 
 
 def judge_motion(rule: MotionRule, placed: PlacedRule, pulses: Sequence[Travelled], bench: Bench) -> Iterator[Finding]:
