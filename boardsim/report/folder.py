@@ -19,9 +19,11 @@ from boardsim.report.junit import write_junit
 from boardsim.report.overview import draw_overview
 from boardsim.report.power_up_picture import draw_power_up
 from boardsim.report.release_picture import draw_release
+from boardsim.report.stroke_picture import draw_stroke
 from boardsim.report.terminal import print_result
 from boardsim.report.volley_picture import draw_volley
 from boardsim.verdict.findings import Result
+from boardsim.verdict.strokes_study import StrokeStudy
 from boardsim.verdict.studies import ChainStudy, PowerUp, Release, Volley
 
 _OURS = (
@@ -34,6 +36,7 @@ _OURS = (
     "release.png",
     "chain.png",
     "edges.csv",
+    "stroke.png",
     "volley.png",
     "closeup-*.png",
 )
@@ -112,6 +115,8 @@ def draw_main(result: Result, folder: Path) -> Path:
             draw_chain(result, path := folder / "chain.png")
         case PowerUp():
             draw_power_up(result, path := folder / "power-up.png")
+        case StrokeStudy():
+            draw_stroke(result, path := folder / "stroke.png")
         case None:
             draw_overview(result, path := folder / "overview.png")
     return path

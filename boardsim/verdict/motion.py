@@ -7,7 +7,7 @@ from dataclasses import replace
 
 from boardsim.circuit.deck import PlacedRule
 from boardsim.parts.rules import Limit, MotionRule
-from boardsim.quantities import in_units
+from boardsim.quantities import apart, in_units
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding
 from boardsim.verdict.strokes import BACK, IN, Travelled, energy
@@ -60,10 +60,11 @@ def _arrival(rule: MotionRule, placed: PlacedRule, pulses: Sequence[Travelled], 
         took = at - p.on + p.until_on
         said = f"{placed.label}: commanded at {in_units(p.commanded, 's', 4)}, {placed.part} arrives after "
     named, allowed = ("end of its pulse", p.off - p.on) if due is None else ("latest arrival", due)
-    said += in_units(took, "s")
+    took_said, allowed_said = apart(took, allowed, "s")
+    said += took_said
     if due is not None and p.until_on > 0:
         said += f", of which up to {in_units(p.until_on, 's')} pass until its output is on"
-    said += f"; the {named} is at {in_units(allowed, 's')}"
+    said += f"; the {named} is at {allowed_said}"
     if margin < 0:
         said += "; try: " + ("a longer pulse, or a higher voltage" if due is None else _sooner(p, due))
     limit = replace(rule.limit, value=allowed, name=named, source=rule.limit.source or "the pattern")
