@@ -16,6 +16,7 @@ from boardsim.report.edges import write_edges
 from boardsim.report.files import remove_unfinished, write_text
 from boardsim.report.json_report import write_findings
 from boardsim.report.junit import write_junit
+from boardsim.report.motion_picture import draw_motion
 from boardsim.report.overview import draw_overview
 from boardsim.report.power_up_picture import draw_power_up
 from boardsim.report.release_picture import draw_release
@@ -36,6 +37,7 @@ _OURS = (
     "release.png",
     "chain.png",
     "edges.csv",
+    "motion.png",
     "stroke.png",
     "volley.png",
     "closeup-*.png",
@@ -87,6 +89,8 @@ def write_results(result: Result, folder: Path) -> Path:
         If a file cannot be written.
     """
     picture = draw_main(result, folder)
+    if result.motions and result.study is None:
+        draw_motion(result, folder / "motion.png")
     pictures = draw_closeups(result, folder)
     if result.deck:
         write_text(folder / "board.cir", result.deck)

@@ -329,6 +329,8 @@ class Result:
         Every pulse as asked for, as the timer has it, and as the output shows it.
     simulated : bool
         Whether the question takes runs of the engine, without whose audit nothing is proven.
+    motions : tuple of Closeup
+        Of every kind of coil that moves something the pulse whose finding is worst, whatever its verdict.
     """
 
     board: str
@@ -349,6 +351,7 @@ class Result:
     study: Volley | Release | ChainStudy | PowerUp | StrokeStudy | None = None
     edges: tuple[EdgeTimes, ...] = ()
     simulated: bool = True
+    motions: tuple[Closeup, ...] = ()
 
     @property
     def proven(self) -> bool:

@@ -72,12 +72,10 @@ def _arrival(rule: MotionRule, placed: PlacedRule, pulses: Sequence[Travelled], 
 
 
 def _sooner(p: Travelled, due: float) -> str:
-    """What to try where the arrival is late: what the chain takes of the time may be the most of it."""
-    return (
-        "a faster clock or fewer registers in the chain, or an earlier command"
-        if p.until_on > due / 2
-        else "an earlier command, a higher voltage, or a weaker spring"
-    )
+    """What to try where the arrival is late: the chain, where it would be in time without what that takes."""
+    if p.hits[0][0] - p.on <= due < p.hits[0][0] - p.on + p.until_on:
+        return "a faster clock or fewer registers in the chain, or an earlier command"
+    return "an earlier command, a higher voltage, or a weaker spring"
 
 
 def _too_short(rule: MotionRule, placed: PlacedRule, p: Travelled, bench: Bench) -> Finding:
