@@ -296,6 +296,46 @@ def volley(
     _present(result, folder)
 
 
+@app.command(epilog='Example: boardsim stroke netlists/bean-planter/board.toml --channel 0 --width "12 ms"')
+def stroke(
+    board: BoardFile,
+    channel: Annotated[
+        int | None,
+        typer.Option(metavar="N", help="which channel; one of every build whose coil moves something if not given"),
+    ] = None,
+    width: Annotated[
+        str | None,
+        typer.Option(metavar="TIME", help='the pulse that has to work, such as "12 ms"; any if not given'),
+    ] = None,
+    out: Annotated[
+        Path | None,
+        typer.Option("--out", "-o", metavar="DIR", help="folder for the results; out/BOARD-stroke if not given"),
+    ] = None,
+    strict: Annotated[bool, typer.Option("--strict", help="count a limit that was not given as broken")] = False,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+    library: Libraries = None,
+) -> None:
+    """Find how wide a pulse must be: travel time, speed and energy of the blow for ever wider pulses, in every corner.
+
+    Exit status: 0 a pulse works in every corner (that of --width, if given), 1 none does, 2 wrong input, 3 unproven.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.report.folder import make_ready
+    from boardsim.report.wording import plain_path
+    from boardsim.scenarios import stroke as question
+    from boardsim.scenarios.volley import read_width
+
+    the_board = read_board(board, library or ())
+    the_width = None if width is None else read_width(width)
+    question.chosen_channels(the_board, channel)  # a wrong number must not cost an earlier result
+    question.check_width(the_board, the_width)
+    folder = out or Path("out") / f"{plain_path(the_board.name)}-stroke"
+    make_ready(folder, (board,))
+    with _working(f"{the_board.name}, stroke", time_limit) as (crew, progress):
+        result = question.stroke(the_board, folder, strict, crew, progress, channel, the_width)
+    _present(result, folder)
+
+
 @app.command(epilog="Example: boardsim chain netlists/fruit-sorter/board.toml")
 def chain(
     board: BoardFile,

@@ -169,6 +169,10 @@ class Motion(Record):
         """What the corners vary: what opposes the coil."""
         return {"opposing_force": self.spring_preload}
 
+    def limits(self) -> tuple[Quantity, ...]:
+        """What it is held against, each at its worse end in every corner."""
+        return tuple(q for q in (self.arrives_within, self.impact, self.second_impact) if q is not None)
+
     def _steady(self, corner: Corner) -> float:
         """What presses it to its rest there, as it is run. [N]"""
         return corner.take(self.spring_preload, "opposing_force") + self.load.typ + self.weight

@@ -76,6 +76,10 @@ class MovingMagnetCoil(Coil):
         """What moves."""
         return self.motion.probes(name)
 
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """The limits of its motion."""
+        return self.motion.limits()
+
     def more_rules(self) -> tuple[Rule, ...]:
         """What the motion is held against."""
         return self.motion.rules(_POLARITY)

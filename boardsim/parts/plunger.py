@@ -113,6 +113,10 @@ class PlungerCoil(Coil):
         rest, _ = self._slopes(corner)
         return (Probe("flux", scaled(1 / rest, ((1.0, f"i(l{name}_l)"),)), "Wb"), *self.motion.probes(name))
 
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """The limits of its motion."""
+        return self.motion.limits()
+
     def more_rules(self) -> tuple[Rule, ...]:
         """What the motion is held against."""
         return self.motion.rules()

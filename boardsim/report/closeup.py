@@ -54,7 +54,14 @@ _BAR, _MAIN, _CAUSE = 0.3, 1.8, 1.05  # heights of the panels [inch]
 _LANE, _LEAST_LANES, _MOST_LANES = 0.15, 0.25, 1.4  # height of a lane; of all lanes [inch]
 _LONGEST_NAME = 1.6  # of a lane [inch]
 _TICK = 0.27  # between two numbers beside an axis, about [inch]
-_LEAST_RANGE = {"V": 1e-2, "A": 1e-2, "W": 1e-2, "J": 1e-6}  # the smallest that is worth a picture [unit]
+_LEAST_RANGE = {
+    "V": 1e-2,
+    "A": 1e-2,
+    "W": 1e-2,
+    "J": 1e-6,
+    "m": 1e-5,
+    "m/s": 1e-2,
+}  # the smallest that is worth a picture [unit]
 _WORDS_STRIP = 0.24  # share of the waveform's range kept free for the reading in words
 _TONES = (DARK, MIDDLE, PALE)
 

@@ -16,12 +16,15 @@ from boardsim.report.edges import write_edges
 from boardsim.report.files import remove_unfinished, write_text
 from boardsim.report.json_report import write_findings
 from boardsim.report.junit import write_junit
+from boardsim.report.motion_picture import draw_motion
 from boardsim.report.overview import draw_overview
 from boardsim.report.power_up_picture import draw_power_up
 from boardsim.report.release_picture import draw_release
+from boardsim.report.stroke_picture import draw_stroke
 from boardsim.report.terminal import print_result
 from boardsim.report.volley_picture import draw_volley
 from boardsim.verdict.findings import Result
+from boardsim.verdict.strokes_study import StrokeStudy
 from boardsim.verdict.studies import ChainStudy, PowerUp, Release, Volley
 
 _OURS = (
@@ -34,6 +37,8 @@ _OURS = (
     "release.png",
     "chain.png",
     "edges.csv",
+    "motion.png",
+    "stroke.png",
     "volley.png",
     "closeup-*.png",
 )
@@ -84,6 +89,8 @@ def write_results(result: Result, folder: Path) -> Path:
         If a file cannot be written.
     """
     picture = draw_main(result, folder)
+    if result.motions and result.study is None:
+        draw_motion(result, folder / "motion.png")
     pictures = draw_closeups(result, folder)
     if result.deck:
         write_text(folder / "board.cir", result.deck)
@@ -112,6 +119,8 @@ def draw_main(result: Result, folder: Path) -> Path:
             draw_chain(result, path := folder / "chain.png")
         case PowerUp():
             draw_power_up(result, path := folder / "power-up.png")
+        case StrokeStudy():
+            draw_stroke(result, path := folder / "stroke.png")
         case None:
             draw_overview(result, path := folder / "overview.png")
     return path

@@ -30,6 +30,7 @@ from boardsim.verdict.closeups import Closeup, take_closeups, wants_closeup
 from boardsim.verdict.findings import EdgeTimes, Finding, Result, Timing, Traces, overall
 from boardsim.verdict.firmware import judge_firmware, not_given
 from boardsim.verdict.logic_rail import judge_sagged_chain
+from boardsim.verdict.motion_closeups import by_motion
 from boardsim.verdict.recorded import assumptions_of_capture, judge_recorded, told
 from boardsim.verdict.switching import judge_switching
 
@@ -116,6 +117,7 @@ def fire_pattern(
         strict,
         _closeups(findings, board, firing, sampled, shown) if pictured else (),
         edges=edge_times(board, firing),
+        motions=_motions(findings, sampled) if pictured else (),
     )
 
 
@@ -203,6 +205,18 @@ def _closeups(
         one = taken.get((f.key, f.corner or in_view))
         found += [one] if one is not None else take_closeups(None, None, board, firing, [f], f.corner)
     return tuple(found)
+
+
+def _motions(findings: Sequence[Finding], results: Sequence[CornerResult]) -> tuple[Closeup, ...]:
+    """Of every kind of coil that moves something what its worst finding shows, from the corner that this names."""
+    shown = {r.corner.name: r.trial for r in results if r.trial is not None}
+    found: dict[str, Closeup] = {}
+    for f in sorted(findings, key=by_motion):
+        trial = shown.get(f.corner)
+        taken = () if trial is None else (c for c in trial.closeups if c.finding == f.key and c.speeds is not None)
+        for closeup in taken:
+            found.setdefault(f.part, closeup)
+    return tuple(found.values())
 
 
 def _traces(board: Board, firing: Firing, shown: CornerResult | None) -> Traces | None:

@@ -24,12 +24,12 @@ from boardsim.verdict.expectations import Expectation, Expected, KnownFailure
 
 FILE_NAME = "scenarios.toml"
 _ONLY_FOR = {
-    "pattern": "fire",
-    "channel": "release",
-    "every_clamp": "release",
-    "width": "volley",
-    "at_least": "volley",
-    "random": "power-up",
+    "pattern": ("fire",),
+    "channel": ("release", "stroke"),
+    "every_clamp": ("release",),
+    "width": ("volley", "stroke"),
+    "at_least": ("volley",),
+    "random": ("power-up",),
 }
 
 
@@ -74,12 +74,16 @@ class ConditionsRecord(Record):
 class ScenarioRecord(Record):
     """One question put to a board."""
 
-    question: Literal["fire", "release", "volley", "chain", "power-up"] = "fire"
+    question: Literal["fire", "release", "volley", "stroke", "chain", "power-up"] = "fire"
     board: str | None = Field(None, description="board file, relative to this one; the file's own if absent")
     pattern: str | None = Field(None, description="for fire: pattern file, relative to this one")
-    channel: Annotated[int, Field(strict=True, ge=0)] | None = Field(None, description="for release: which channel")
+    channel: Annotated[int, Field(strict=True, ge=0)] | None = Field(
+        None, description="for release and stroke: which channel"
+    )
     every_clamp: bool | None = Field(None, strict=True, description="for release: every kind of clamp side by side")
-    width: Annotated[Quantity, POSITIVE_TIME] | None = Field(None, description="for volley: width of the pulse")
+    width: Annotated[Quantity, POSITIVE_TIME] | None = Field(
+        None, description="for volley and stroke: width of the pulse"
+    )
     at_least: Annotated[int, Field(strict=True, ge=1)] | None = Field(
         None, description="for volley: how many channels must pass at once; the board's most_on if absent"
     )
@@ -114,7 +118,7 @@ class Scenario:
         As its file calls it.
     path : Path
         Of the file.
-    question : {"fire", "release", "volley", "chain", "power-up"}
+    question : {"fire", "release", "volley", "stroke", "chain", "power-up"}
     board : Board
         Under the scenario's conditions.
     pattern : Pattern or None
@@ -127,7 +131,7 @@ class Scenario:
 
     name: str
     path: Path
-    question: Literal["fire", "release", "volley", "chain", "power-up"]
+    question: Literal["fire", "release", "volley", "stroke", "chain", "power-up"]
     board: Board
     pattern: Pattern | None
     channel: int | None
@@ -263,13 +267,14 @@ def _scenario(
 def _misplaced(record: ScenarioRecord, file: TomlFile, keys: Keys) -> list[Problem]:
     """Keys that do not belong to the question, or contradict each other."""
     problems = []
-    for key, question in _ONLY_FOR.items():
-        if getattr(record, key) is not None and record.question != question:
-            text = f'belongs to question = "{question}"; this scenario asks "{record.question}"'
+    for key, questions in _ONLY_FOR.items():
+        if getattr(record, key) is not None and record.question not in questions:
+            named = " or ".join(f'"{question}"' for question in questions)
+            text = f'belongs to question = {named}; this scenario asks "{record.question}"'
             problems.append(file.problem_at((*keys, key), text))
     if record.question == "fire" and record.pattern is None:
         problems.append(
-            file.problem_at(keys, 'needs a "pattern", or another "question": release, volley, chain, power-up')
+            file.problem_at(keys, 'needs a "pattern", or another "question": release, volley, stroke, chain, power-up')
         )
     if record.breaks and record.expect not in (None, "fail"):
         text = f'names checks that have to break, but expect is "{record.expect}"; leave one of the two out'

@@ -176,6 +176,7 @@ def release_pattern(board: Board) -> Pattern:
     Two, since a coil is there to be fired again: what a switch or a clamp stands once only must not pass.
     A slow register chain stretches the pulse, so that the time of a frame stays well within the share of a pulse
     by which it may be late: whether shorter pulses are moved too far is the question of other patterns.
+    What the coil moves has time to come back besides.
     """
     (channel,) = board.channels
     coil = channel.coil
@@ -185,7 +186,7 @@ def release_pattern(board: Board) -> Pattern:
     held = math.log(_highest_current(board) / coil.release.min) + 2.0 if coil.release is not None else 0.0
     # What swings dies out with 2 L / R, half as fast as what only decays.
     longer = 2.0 if channel.clamp.swings_with() else 1.0
-    period = width + 2 * frame + longer * tau * max(_SETTLED, held)
+    period = width + 2 * frame + longer * tau * max(_SETTLED, held) + coil.return_time
     pulses = tuple(Pulse(channel.number, start, width) for start in (0.0, period))
     return Pattern(board.path, NAME, 2 * period, pulses)
 

@@ -20,6 +20,7 @@ from boardsim.scenarios.fire import fire_pattern
 from boardsim.scenarios.plan import Scenario
 from boardsim.scenarios.power_up import power_up
 from boardsim.scenarios.release import release_channel
+from boardsim.scenarios.stroke import stroke
 from boardsim.scenarios.volley import volley
 from boardsim.verdict.expectations import IDLE, Outcome, accept, compare
 from boardsim.verdict.findings import Result
@@ -56,6 +57,8 @@ def run_scenario(
             result = release_channel(s.board, keep, s.strict, crew, progress, s.channel, s.every_clamp)
         case "volley":
             result = volley(s.board, keep, s.strict, crew, progress, s.width, s.at_least)
+        case "stroke":
+            result = stroke(s.board, keep, s.strict, crew, progress, s.channel, s.width)
         case "chain":
             result = check_chain(s.board, s.strict)
         case "power-up":

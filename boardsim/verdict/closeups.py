@@ -20,6 +20,7 @@ from boardsim.parts.rules import BreakdownRule
 from boardsim.verdict.cutting import RunningEnergy, between
 from boardsim.verdict.findings import Envelope, Finding, Floats
 from boardsim.verdict.leg_closeups import LegCut, leg_rule
+from boardsim.verdict.motion_closeups import MotionCut, motion_rule, worst_motions
 from boardsim.verdict.readings import Key, SignalTable, our_name
 from boardsim.verdict.stretch import Stretch, channels_in_question, count_on, package_members, stretch_of
 from boardsim.verdict.watch import HYSTERESIS, Slices
@@ -100,6 +101,8 @@ class Closeup:
         Of these channels, and of those that the finding is about.
     who : tuple of int
         The channels that the finding is about; empty for a part of the whole board.
+    hits : tuple of (time, speed)
+        When what a coil moves meets its stop. [s], [m/s]
     """
 
     finding: tuple[str, str, str, str]
@@ -111,6 +114,12 @@ class Closeup:
     asked: Mapping[int, Floats]
     labels: Mapping[int, str]
     who: tuple[int, ...] = ()
+    hits: tuple[tuple[float, float], ...] = ()
+
+    @property
+    def speeds(self) -> Envelope | None:
+        """The speed of what a coil moves, where that is shown. [m/s]"""
+        return next((p.waves[0] for p in self.panels if p.unit == "m/s"), None)
 
     @property
     def shows_reading(self) -> bool:
@@ -141,21 +150,27 @@ def take_closeups(
     Returns
     -------
     tuple of Closeup
-        In the order of the findings.
+        In the order of the findings; then what the picture of motion shows, of every kind of coil that moves something.
     """
     if waves is None:
         deck = None
+    findings = list(findings)
     wanted = [f for f in findings if wants_closeup(f)]
-    cuts: list[_Cut | _LegCut] = [
-        _Cut(f, stretch_of(f, board, firing), _causes(f, board, deck), _breakdown(f, deck))
-        if (leg := leg_rule(f, deck)) is None
-        else _LegCut(f, leg, firing, SLICES)
-        for f in wanted
-    ]
+    wanted += [f for f in worst_motions(findings, deck) if not wants_closeup(f)]
+    cuts = [_cut_of(f, deck, board, firing) for f in wanted]
     if waves is not None and deck is not None:
         _feed(cuts, waves, deck)
     asked = _commanded(firing)
     return tuple(_closeup(cut, board, firing, asked, deck, corner) for cut in cuts)
+
+
+def _cut_of(f: Finding, deck: Deck | None, board: Board, firing: Firing) -> _AnyCut:
+    """The cut that shows a finding."""
+    if (leg := leg_rule(f, deck)) is not None:
+        return _LegCut(f, leg, firing, SLICES)
+    if (motion := motion_rule(f, deck)) is not None:
+        return _MotionCut(f, motion, firing, SLICES)
+    return _Cut(f, stretch_of(f, board, firing), _causes(f, board, deck), _breakdown(f, deck))
 
 
 @dataclass
@@ -242,6 +257,28 @@ class _LegCut(LegCut):
         )
 
 
+class _MotionCut(MotionCut):
+    """A motion's, with its panels: where the stop is, or the limit of a position, and what the pulse's current does."""
+
+    def panels(self, deck: Deck) -> tuple[Panel, ...]:
+        found = self.waves()
+        if found is None:
+            return ()
+        position, speed, current = found
+        place = self.finding.unit == "m"
+        marked = self.marked
+        return (
+            Panel("Position", "m", (position,), self.finding.limit, marked)
+            if place
+            else Panel("Position; dashed: the stop", "m", (position,), levels=(self.rule.travel,)),
+            Panel("Speed", "m/s", (speed,), marked=None if place else marked),
+            Panel("Coil current", "A", (current,)),
+        )
+
+
+_AnyCut = _Cut | _LegCut | _MotionCut
+
+
 def _place(f: Finding) -> int | None:
     """Under which a finding's waveforms are found."""
     return f.channel if f.channel is not None else f.place
@@ -280,7 +317,7 @@ def _breakdown(f: Finding, deck: Deck | None) -> float:
     return found[0] if found else -np.inf
 
 
-def _feed(cuts: Sequence[_Cut | _LegCut], waves: Waves, deck: Deck) -> None:
+def _feed(cuts: Sequence[_AnyCut], waves: Waves, deck: Deck) -> None:
     """Give every cut its share of the waveforms."""
     cuts = [c for c in cuts if c.subject or c.causes]
     keys = tuple(dict.fromkeys(key for c in cuts for key in (*c.subject, *c.causes)))
@@ -305,7 +342,7 @@ def _commanded(firing: Firing) -> Mapping[int, Floats]:
 
 
 def _closeup(
-    cut: _Cut | _LegCut, board: Board, firing: Firing, asked: Mapping[int, Floats], deck: Deck | None, corner: str
+    cut: _AnyCut, board: Board, firing: Firing, asked: Mapping[int, Floats], deck: Deck | None, corner: str
 ) -> Closeup:
     f, (start, stop) = cut.finding, cut.stretch
     panels = cut.panels(deck) if deck is not None and (f.probes or cut.causes) else ()
@@ -326,7 +363,8 @@ def _closeup(
         in_view &= set(members)  # the others' coils are no part of the sum
         on, commanded = ({c: rows for c, rows in every.items() if c in members} for every in (on, commanded))
     labels = {c.number: c.label for c in board.channels if c.number in in_view}
-    return Closeup(f.key, named, start, stop, panels, on, commanded, labels, who)
+    hits = cut.hits if isinstance(cut, MotionCut) and panels else ()
+    return Closeup(f.key, named, start, stop, panels, on, commanded, labels, who, hits)
 
 
 def _touching(spans: Floats, start: float, stop: float) -> Floats:

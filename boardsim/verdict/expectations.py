@@ -131,7 +131,7 @@ class Outcome:
     folder : Path
         Where its files are, relative to the folder of all.
     question : str
-        "fire", "release", "volley", "chain" or "power-up".
+        "fire", "release", "volley", "stroke", "chain" or "power-up".
     expectation : Expectation
     result : Result or None
         None where there was none: the input was wrong, or the engine could not be started.

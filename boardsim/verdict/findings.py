@@ -17,6 +17,7 @@ from boardsim.parts.rules import Consequence
 
 if TYPE_CHECKING:
     from boardsim.verdict.closeups import Closeup
+    from boardsim.verdict.strokes_study import StrokeStudy
     from boardsim.verdict.studies import ChainStudy, PowerUp, Release, Volley
 
 Verdict = Literal["pass", "tight", "fail", "unproven", "limit-missing"]
@@ -322,12 +323,14 @@ class Result:
         Whether a missing limit counted as broken.
     closeups : tuple of Closeup
         One for each finding that fails or is tight.
-    study : Volley, Release, ChainStudy, PowerUp or None
+    study : Volley, Release, ChainStudy, PowerUp, StrokeStudy or None
         What the scenario found beyond findings: its table, and what its picture is drawn from.
     edges : tuple of EdgeTimes
         Every pulse as asked for, as the timer has it, and as the output shows it.
     simulated : bool
         Whether the question takes runs of the engine, without whose audit nothing is proven.
+    motions : tuple of Closeup
+        Of every kind of coil that moves something the pulse whose finding is worst, whatever its verdict.
     """
 
     board: str
@@ -345,9 +348,10 @@ class Result:
     engine: str = ""
     strict: bool = False
     closeups: tuple[Closeup, ...] = ()
-    study: Volley | Release | ChainStudy | PowerUp | None = None
+    study: Volley | Release | ChainStudy | PowerUp | StrokeStudy | None = None
     edges: tuple[EdgeTimes, ...] = ()
     simulated: bool = True
+    motions: tuple[Closeup, ...] = ()
 
     @property
     def proven(self) -> bool:

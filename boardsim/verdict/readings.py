@@ -34,9 +34,9 @@ from boardsim.parts.rules import (
 )
 from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
-from boardsim.verdict.motion import Strokes, Travelled
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.sneak import Growth
+from boardsim.verdict.strokes import Strokes, Travelled, commands
 from boardsim.verdict.watch import (
     Avalanche,
     Avalanches,
@@ -185,7 +185,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if isinstance(r, ReleaseRule) and c is not None
     }
     moving_parts = {
-        c: (Strokes(r.travel, firing.on[c], start, stop), r)
+        c: (Strokes(r.travel, firing.on[c], start, stop, commands(firing, c), firing.jitter), r)
         for c, r in rules
         if isinstance(r, MotionRule) and r.check == "stroke" and c is not None
     }

@@ -101,8 +101,11 @@ CALM = '[scenarios.calm]\npattern = "pattern.toml"\n'
         (CALM + "patern = 1\n", '(did you mean "pattern"?)'),
         (CALM + 'question = "salvo"\n', "'salvo' is not allowed for \"question\""),
         ("[scenarios.calm]\n", 'scenarios.toml:1: scenarios.calm: needs a "pattern"'),
-        (CALM + "channel = 1\n", 'scenarios.toml:3: scenarios.calm.channel: belongs to question = "release"'),
-        (CALM + 'width = "2 ms"\n', 'belongs to question = "volley"'),
+        (
+            CALM + "channel = 1\n",
+            'scenarios.toml:3: scenarios.calm.channel: belongs to question = "release" or "stroke"',
+        ),
+        (CALM + 'width = "2 ms"\n', 'belongs to question = "volley" or "stroke"'),
         (CALM + "every_clamp = false\n", 'belongs to question = "release"'),
         (CALM + 'expect = "pass"\nbreaks = ["overlap"]\n', 'but expect is "pass"'),
         (CALM + 'expect = "unproven"\n', "'unproven' is not allowed for \"expect\""),
