@@ -10,6 +10,7 @@ from boardsim.errors import QuantityError
 from boardsim.parts.base import Assumption, Corner, Part, Stamp, Surroundings, listed
 from boardsim.parts.copper import resistance_at
 from boardsim.parts.elements import (
+    CurrentLaw,
     Element,
     Inductor,
     Port,
@@ -24,6 +25,7 @@ from boardsim.parts.elements import (
 )
 from boardsim.parts.known_coil import MeasuredRise, inductance_from, resistance_from
 from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule, Rule
+from boardsim.parts.saturation import AIR_SHARE, Curve, Saturation
 from boardsim.parts.winding import ENAMEL_SOURCE, Winding
 from boardsim.quantities import (
     CURRENT,
@@ -37,6 +39,7 @@ from boardsim.quantities import (
     VOLTAGE,
     Quantity,
     assume,
+    computed,
     in_units,
 )
 
@@ -55,10 +58,11 @@ class Coil(Part):
     Notes
     -----
     Winding resistance in series with (inductance parallel to a core-loss resistance). Resistance follows the
-    winding's temperature as copper does. Ignores saturation and the plunger's motion.
+    winding's temperature as copper does. Its iron saturates where `saturation` says so; ignores the plunger's motion.
     """
 
     role: ClassVar[str] = "coil"
+    saturates: ClassVar[bool] = True  # each kind says so itself: one whose field leaves it out must not take the key
     kind: Literal["coil"] = "coil"
     resistance: Annotated[Quantity, POSITIVE_RESISTANCE] = Field(
         None,
@@ -79,6 +83,7 @@ class Coil(Part):
     )  # type: ignore[assignment]  # never None once the coil is read
     measured_rise: MeasuredRise | None = Field(None, description="one point of its current after switching it on")
     core_loss: Annotated[Quantity, POSITIVE_RESISTANCE] | None = None
+    saturation: Saturation | None = Field(None, description="how much of its inductance is left at a current")
     pull_in: Annotated[Quantity, CURRENT] | None = None
     release: Annotated[Quantity, CURRENT] | None = None
     longest_on: Annotated[Quantity, POSITIVE_TIME] | None = Field(
@@ -96,18 +101,31 @@ class Coil(Part):
     @model_validator(mode="after")
     def _from_what_is_known(self) -> Coil:
         given = self.model_fields_set
+        told = self.told_inductance()
         ohms = resistance_from(
             self.resistance if "resistance" in given else None,
             {"voltage": self.rated_voltage, "current": self.rated_current, "power": self.rated_power},
             self.winding,
             self.at.typ,
         )
-        henries = inductance_from(
-            self.inductance if "inductance" in given else None, self.measured_rise, self.winding, ohms
-        )
+        henries = inductance_from(told, self.measured_rise, self.winding, ohms)
         # Frozen for everybody else: these two follow from other fields, and every reader needs them.
         object.__setattr__(self, "resistance", ohms)
         object.__setattr__(self, "inductance", henries)
+        return self
+
+    def told_inductance(self) -> Quantity | None:
+        """The inductance that the file itself gives, if it does. [H]"""
+        return self.inductance if "inductance" in self.model_fields_set else None
+
+    @model_validator(mode="after")
+    def _saturates(self) -> Coil:
+        if self.saturation is None:
+            return self
+        if "saturates" not in type(self).__dict__:
+            raise QuantityError(f'saturation is not part of the model of a coil of kind "{self.kind}"; leave it out')
+        for henries in (self.full_inductance.min, self.full_inductance.typ, self.full_inductance.max):
+            self.saturation.curve(henries, self.air_core.typ)
         return self
 
     @model_validator(mode="after")
@@ -145,12 +163,50 @@ class Coil(Part):
         return self.inductance.min, self.inductance.max
 
     @property
+    def full_inductance(self) -> Quantity:
+        """That which its saturation counts from: with the iron as closed as it gets. [H]"""
+        return self.inductance
+
+    @property
+    def air_core(self) -> Quantity:
+        """What is left of the inductance beyond saturation. [H]"""
+        if self.saturation is not None and self.saturation.air_core is not None:
+            return self.saturation.air_core
+        if self.winding is not None:
+            return computed(self.winding.wound().inductance, "H", "of the winding without iron, Wheeler's formula")
+        return assume(
+            f"{AIR_SHARE * self.full_inductance.typ:.6g} H",
+            INDUCTANCE,
+            f"{AIR_SHARE:.0%} of the inductance is left once the iron has saturated, from memory; give air_core",
+        )
+
+    def curve(self, corner: Corner) -> Curve | None:
+        """Its flux linkage over current, where it saturates."""
+        if self.saturation is None:
+            return None
+        return self.saturation.curve(corner.take(self.full_inductance, "inductance"), self.air_core.typ)
+
+    def least_inductance(self, volts: float) -> float:
+        """The least for small changes, with this voltage across it at most: how fast its current changes. [V] -> [H]
+
+        Of iron that saturates, in series with the gap that is left where the least inductance is not that of closed iron.
+        """
+        least, full = self.inductances[0], self.full_inductance.min
+        if self.saturation is None:
+            return least
+        left = self.saturation.curve(full, self.air_core.typ).incremental(volts / self.resistance.min)
+        return 1 / (1 / least - 1 / full + 1 / left)
+
+    @property
     def return_time(self) -> float:
         """How long what it moves needs to come back once the current is gone; 0 where motion is not described. [s]"""
         return 0.0
 
     def held(self, amperes: float, corner: Corner) -> float:
         """The most that its field can hold at a current. [A] -> [J]"""
+        curve = self.curve(corner)
+        if curve is not None:
+            return float(curve.energy(curve.flux_at(amperes)))
         return 0.5 * corner.take(self.inductance, "inductance") * amperes**2
 
     def field(self, name: str, a: str, b: str, corner: Corner) -> tuple[tuple[Element, ...], Signal | None]:
@@ -159,15 +215,22 @@ class Coil(Part):
         None where no element carries all of it: it is then what goes through the winding's resistance and not through the core loss.
         """
         coil = Inductor(f"{name}_l", a, b, corner.take(self.inductance, "inductance"))
-        return (coil,), current(coil)
+        curve = self.curve(corner)
+        if curve is None:
+            return (coil,), current(coil)
+        # Beside it flows what its iron takes more; its own current tells the flux linkage.
+        return (coil, CurrentLaw(coil.name, b, a, curve.expression(f"I(L{coil.name})", coil.henries))), None
 
     def more_probes(self, name: str, corner: Corner) -> tuple[Probe, ...]:
         """What a kind reads beyond voltages and currents."""
-        return ()
+        if self.saturation is None:
+            return ()
+        return (Probe("flux", ((corner.take(self.inductance, "inductance"), f"i(l{name}_l)"),), "Wb"),)
 
     def stored(self, corner: Corner) -> Stored | None:
         """What a kind stores, where that is not L i^2 / 2."""
-        return None
+        curve = self.curve(corner)
+        return None if curve is None else Stored(("flux",), curve.energy)
 
     def more_rules(self) -> tuple[Rule, ...]:
         """What a kind is held against beyond pull-in and release."""
@@ -219,6 +282,9 @@ class Coil(Part):
             core_loss_resistance=self.loss,
             temperature_rise_of_the_winding=self.rise,
         )
+        if self.saturation is not None:
+            found += listed(f"coil {label}", inductance_without_iron=self.air_core)
+            found += self.saturation.assumed(f"coil {label}")
         if self.release is None:
             why = "no release current given: what a coil that is off may carry, from memory"
             found += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
