@@ -47,7 +47,7 @@ _CORE_LOSS_FACTOR = 200
 IDLE_SHARE = 0.1  # of the settled current, where no release current is given: below it nothing is held, from memory
 
 
-def _without_default(schema: dict[str, Any]) -> None:
+def without_default(schema: dict[str, Any]) -> None:
     """A number that follows from others where it was not given has no default of its own."""
     schema.pop("default", None)
 
@@ -67,7 +67,7 @@ class Coil(Part):
     resistance: Annotated[Quantity, POSITIVE_RESISTANCE] = Field(
         None,
         description="of the winding; from two of the ratings, or from the winding, if absent",
-        json_schema_extra=_without_default,
+        json_schema_extra=without_default,
     )  # type: ignore[assignment]  # never None once the coil is read
     rated_voltage: Annotated[Quantity, VOLTAGE] | None = Field(None, description="voltage on its nameplate")
     rated_current: Annotated[Quantity, CURRENT] | None = Field(None, description="current at the rated voltage")
@@ -79,7 +79,7 @@ class Coil(Part):
     inductance: Annotated[Quantity, INDUCTANCE] = Field(
         None,
         description="or a band such as '8 to 14 mH'; from measured_rise or from the winding if absent",
-        json_schema_extra=_without_default,
+        json_schema_extra=without_default,
     )  # type: ignore[assignment]  # never None once the coil is read
     measured_rise: MeasuredRise | None = Field(None, description="one point of its current after switching it on")
     core_loss: Annotated[Quantity, POSITIVE_RESISTANCE] | None = None

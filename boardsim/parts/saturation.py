@@ -145,7 +145,7 @@ class Curve:
         """
         m = self._iron / self.henries
         k = m * henries / self.flux
-        under = f"1+{2 * (1 - 2 * m) * k!r}*abs({i})+{k * k!r}*{i}*{i}"
+        under = f"1+({2 * (1 - 2 * m) * k!r})*abs({i})+{k * k!r}*{i}*{i}"
         return f"{self.knee * henries / self.henries!r}*{i}*(2/(1-{k!r}*abs({i})+sqrt({under}))-1)"
 
 
