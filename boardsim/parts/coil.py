@@ -23,7 +23,7 @@ from boardsim.parts.elements import (
     scaled,
     voltage,
 )
-from boardsim.parts.known_coil import MeasuredRise, inductance_from, resistance_from
+from boardsim.parts.known_coil import MeasuredLoss, MeasuredRise, inductance_from, loss_of_quality, resistance_from
 from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule, Rule
 from boardsim.parts.saturation import AIR_SHARE, Curve, Saturation
 from boardsim.parts.winding import ENAMEL_SOURCE, Winding
@@ -82,7 +82,12 @@ class Coil(Part):
         json_schema_extra=without_default,
     )  # type: ignore[assignment]  # never None once the coil is read
     measured_rise: MeasuredRise | None = Field(None, description="one point of its current after switching it on")
-    core_loss: Annotated[Quantity, POSITIVE_RESISTANCE] | None = None
+    core_loss: Annotated[Quantity, POSITIVE_RESISTANCE] | None = Field(
+        None, description="resistance across the inductance that stands for it; or measured_loss"
+    )
+    measured_loss: MeasuredLoss | None = Field(
+        None, description="quality of the coil at a frequency, or how it rings with a capacitor"
+    )
     saturation: Saturation | None = Field(None, description="how much of its inductance is left at a current")
     pull_in: Annotated[Quantity, CURRENT] | None = None
     release: Annotated[Quantity, CURRENT] | None = None
@@ -112,6 +117,9 @@ class Coil(Part):
         # Frozen for everybody else: these two follow from other fields, and every reader needs them.
         object.__setattr__(self, "resistance", ohms)
         object.__setattr__(self, "inductance", henries)
+        if self.core_loss is not None and self.measured_loss is not None:
+            raise QuantityError("core_loss and measured_loss both tell the core loss; give one of them")
+        _ = self.loss  # a quality that cannot be is refused here
         return self
 
     def told_inductance(self) -> Quantity | None:
@@ -150,7 +158,11 @@ class Coil(Part):
 
     @property
     def loss(self) -> Quantity:
-        """Core-loss resistance across the inductance; assumed where it was not given. [ohm]"""
+        """Core-loss resistance across the inductance; assumed where nothing tells it. [ohm]"""
+        if self.measured_loss is not None:
+            q, f = self.measured_loss.quality, self.measured_loss.frequency.typ
+            found = loss_of_quality(q, f, self.inductance.typ, self.resistance.typ)
+            return computed(found, "ohm", "from its measured quality")
         return self.core_loss or assume(
             f"{_CORE_LOSS_FACTOR * self.resistance.typ:.6g} ohm",
             RESISTANCE,
