@@ -40,6 +40,9 @@ SMALL = (
     1e-3  # of what integrators would be with one ampere for each newton, volt or m/s: at picosecond steps the rounding
 )
 # of the charge of a farad makes milliamperes, which Newton's method cannot meet
+# And of the position's integrator once more: with the speed's equation and this one on one scale ngspice takes the speed's part in this as
+# its pivot, and at picosecond steps loses the speed in the rounding of C/dt times the position ("timestep too small" at turn-off).
+_FAINT = 1e-3
 _LEAK = 1e12  # [ohm], gives the integrators a way to ground at direct current; hours against a run
 
 
@@ -178,8 +181,8 @@ class Motion(Record):
             Capacitor(node, node, GROUND, SMALL * m),  # a force is a current
             CurrentLaw(node, node, GROUND, f"{SMALL!r}*({force}-{self._steady(corner)!r})"),
             CurrentLaw(f"{name}_stops", node, GROUND, f"{x}<0 ? max({near},0) : ({x}>{s!r} ? min({far},0) : 0)"),
-            Capacitor(f"{name}_x", f"{name}_x", GROUND, SMALL),
-            Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, SMALL * _MM),
+            Capacitor(f"{name}_x", f"{name}_x", GROUND, _FAINT * SMALL),
+            Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, _FAINT * SMALL * _MM),
             Resistor(f"{name}_x", f"{name}_x", GROUND, _LEAK),
         ]
         if self.spring_rate.typ:
