@@ -1,4 +1,4 @@
-"""Resistance and inductance of a coil from what people know of it: ratings, a measured rise of its current, its winding."""
+"""What a coil comes to from what people know of it: ratings, a measured rise of its current, its winding, its loss."""
 
 from __future__ import annotations
 
@@ -7,15 +7,26 @@ import math
 from collections.abc import Callable, Mapping
 from typing import Annotated
 
-from pydantic import model_validator
+from pydantic import Field, model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.copper import T_20C, resistance_at
 from boardsim.parts.record import Record
 from boardsim.parts.winding import Winding
-from boardsim.quantities import CURRENT, POSITIVE_TIME, VOLTAGE, Origin, Quantity, computed, in_units
+from boardsim.quantities import (
+    CURRENT,
+    FREQUENCY,
+    POSITIVE_TIME,
+    SHARE,
+    VOLTAGE,
+    Origin,
+    Quantity,
+    computed,
+    in_units,
+)
 
 _CONTRADICTION = 0.05  # share by which numbers of one nameplate may differ: rounding of what is printed
+_RINGS = 2.0  # quality of what still rings: below it what is left after a cycle says little
 _WOUND = 0.15  # the same of a winding and a measured resistance: tension and tolerance of thin wire, from memory
 
 
@@ -33,6 +44,85 @@ class MeasuredRise(Record):
                 "voltage, time and current of a measured rise are one measured point each, without tolerance"
             )
         return self
+
+
+class MeasuredLoss(Record):
+    """Its quality at a frequency, from a meter or from how it rings with a capacitor across it."""
+
+    frequency: Annotated[Quantity, FREQUENCY] = Field(description="at which this was measured, or at which it rings")
+    q: Annotated[float, Field(ge=0.1, le=1000)] | None = Field(None, description="reactance over resistance")
+    cycles: Annotated[float, Field(ge=0.5, le=1000)] | None = Field(
+        None, description="of its ringing, until so much is left"
+    )
+    left: Annotated[Quantity, SHARE] | None = Field(None, description="share of the ringing that is left after these")
+
+    @model_validator(mode="after")
+    def _either(self) -> MeasuredLoss:
+        if (self.cycles is None) != (self.left is None) or (self.q is None) == (self.cycles is None):
+            raise QuantityError("measured_loss needs q, or cycles and left of its ringing")
+        if self.frequency.toleranced or (self.left is not None and self.left.toleranced):
+            raise QuantityError("numbers of a measured loss are one measurement, without tolerance")
+        if self.left is not None and self.left.typ >= 1:
+            raise QuantityError("measured_loss: what is left of the ringing must be less than 100 %")
+        if self.q is None and self.quality < _RINGS:
+            raise QuantityError(
+                f"measured_loss: what is left of the ringing makes its quality {self.quality:.2g}, and below {_RINGS:g} it says little; use a "
+                "larger frequency (a smaller capacitor), or give q from a meter"
+            )
+        return self
+
+    @property
+    def quality(self) -> float:
+        """As measured, or of the ringing: sqrt((pi/d)^2 + 1/4) with the logarithmic decrement d of one cycle. [1]"""
+        if self.q is not None:
+            return self.q
+        assert self.left is not None and self.cycles is not None  # noqa: PT018  # one measurement
+        return math.hypot(math.pi * self.cycles / math.log(1 / self.left.typ), 0.5)
+
+
+def loss_of_quality(quality: float, hertz: float, henries: float, ohms: float) -> float:
+    """Core-loss resistance across the inductance, from a coil's quality at a frequency.
+
+    Parameters
+    ----------
+    quality, hertz, henries, ohms : float
+        Reactance over resistance of the whole coil; at this frequency; its inductance; of the winding. [1], [Hz], [H], [ohm]
+
+    Returns
+    -------
+    float
+        [ohm]
+
+    Raises
+    ------
+    QuantityError
+        If the winding alone makes the quality lower than that.
+
+    Notes
+    -----
+    With X = 2 pi f L, and R_p across it, the coil's impedance is R + R_p X (X + j R_p) / (R_p^2 + X^2), so that
+    Q = X R_p^2 / (R (R_p^2 + X^2) + R_p X^2): a quadratic in R_p. Without the winding's resistance R_p = Q X. One resistance holds for thin
+    laminations and ferrite; in solid iron the eddy currents stay in the skin, and it grows with about the root of the
+    frequency: measure at one whose quarter period is about as long as the current takes to rise or to fall. Of a ringing the quality
+    is that of the circuit, whose capacitor loses nothing; the two differ by about 1/Q^2.
+
+    References
+    ----------
+    Series and parallel loss resistance: any textbook of alternating currents. Skin effect in solid iron: from memory.
+
+    Examples
+    --------
+    >>> round(loss_of_quality(6.0, 1e3, 12e-3, 0.001), 1)
+    452.4
+    """
+    x = 2 * math.pi * hertz * henries
+    spare = x - quality * ohms
+    if spare <= 0:
+        raise QuantityError(
+            f"measured_loss: a quality of {quality:.3g} at {in_units(hertz, 'Hz')} is more than {x / ohms:.3g}, which {in_units(ohms, 'ohm')} of winding "
+            f"leave of {in_units(henries, 'H')}; check frequency, inductance and resistance"
+        )
+    return (quality * x * x + math.sqrt(quality**2 * x**4 + 4 * spare * quality * ohms * x * x)) / (2 * spare)
 
 
 def inductance_of_rise(volts: float, seconds: float, amperes: float, ohms: float) -> float:

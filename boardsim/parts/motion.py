@@ -51,7 +51,7 @@ _CREEP = 2e-3  # [m/s], below which dry friction fades: a slope for Newton's met
 _MM = 1e3  # positions are held in mm: near 1, as ngspice's tolerances want it
 _STIFFEST = 20.0  # damping ratio of a stop that gives back 1 or 2 %
 _ONSET = 2.5  # how much stiffer than its spring a stop is at the onset of an impact, at the most
-_PANELS = 400  # of the sum: four digits
+_PANELS = 400  # of Simpson's rule
 # [A/N], [A s/m]: how many amperes stand for a newton or for a speed. At picosecond steps the rounding of the charge of a farad, which
 # one ampere would need, makes milliamperes, which Newton's method cannot meet.
 _SMALL = 1e-3
@@ -75,7 +75,7 @@ def damping_of_bounce(restitution: float) -> float:
     -----
     The stop is that of `Motion`. With w^2 = k/m, u = r cos(p), w d = r sin(p) and h = max(min(sin p + 2 z cos p, C sin p), 0) its law makes
     d(ln r)/dp = cos(p) (sin(p) - h) / (cos(p)^2 + h sin(p)), whatever the speed: the restitution hangs on z alone. The mass leaves where the
-    force ends, at tan(p) = -2 z, with r |cos p|. The integral is a sum of midpoints.
+    force ends, at tan(p) = -2 z, with r |cos p|. Simpson's rule where the integral is not closed.
 
     Examples
     --------
@@ -94,14 +94,14 @@ def damping_of_bounce(restitution: float) -> float:
 
 def _bounce(z: float) -> float:
     """Speed after over speed before, at a damping ratio. [1]"""
-    end = math.pi - math.atan(2 * z)
-    step = end / _PANELS
-    total = 0.0
-    for k in range(_PANELS):
-        sine, cosine = math.sin((k + 0.5) * step), math.cos((k + 0.5) * step)
-        h = max(min(sine + 2 * z * cosine, _ONSET * sine), 0.0)
-        total += cosine * (sine - h) / (cosine * cosine + h * sine)
-    return math.exp(total * step) * abs(math.cos(end))
+    onset, end = math.atan(2 * z / (_ONSET - 1)), math.pi - math.atan(2 * z)
+    total = -math.log(1 + (_ONSET - 1) * math.sin(onset) ** 2) / 2  # closed as long as the bound holds
+    step = (end - onset) / _PANELS
+    for k in range(_PANELS + 1):
+        sine, cosine = math.sin(onset + k * step), math.cos(onset + k * step)
+        slope = -2 * z * cosine**2 / (cosine**2 + (sine + 2 * z * cosine) * sine)
+        total += (1 if k in (0, _PANELS) else 4 if k % 2 else 2) * step / 3 * slope
+    return math.exp(total) * abs(math.cos(end))
 
 
 class Motion(Record):
@@ -188,6 +188,10 @@ class Motion(Record):
         free = self.rest_force - self.friction.max
         return 2 * math.sqrt(2 * self.mass.max * self.travel.max / free)
 
+    def position(self, name: str) -> str:
+        """How far it is from its rest, as an expression. [mm]"""
+        return f"(V({name}_x)+{self.travel.typ * _MM!r})"
+
     def elements(self, name: str, force: str, corner: Corner) -> tuple[Element, ...]:
         """The mass in a deck: node `name`_v holds its speed [m/s]; `force` is an expression. [N]
 
@@ -197,7 +201,7 @@ class Motion(Record):
         x, v = f"V({name}_x)", f"V({name}_v)"
         s, m = self.travel.typ * _MM, self.mass.typ
         stiff = _SMALL * self._stiffness / _MM  # of a current for a newton: [A/mm]
-        dash = _SMALL * 2 * damping_of_bounce(self.restitution.typ) * math.pi / self.contact.typ * m
+        dash = _SMALL * self._dash
 
         def push(d: str, u: str) -> str:
             return f"max(min({stiff!r}*{d}+{dash!r}*{u},{_ONSET * stiff!r}*{d}),0)"
@@ -231,6 +235,19 @@ class Motion(Record):
         if self.damping.typ:
             found.append(Resistor(f"{name}_drag", node, GROUND, 1 / (_SMALL * self.damping.typ)))
         return tuple(found)
+
+    def pushed_back(self, x: float, v: float) -> float:
+        """What its stops do to it. [m], [m/s] -> [N]"""
+        if 0 <= x <= self.travel.typ:
+            return 0.0
+        deep, speed, sign = (-x, -v, 1.0) if x < 0 else (x - self.travel.typ, v, -1.0)
+        force = self._stiffness * deep + self._dash * speed
+        return sign * max(min(force, _ONSET * self._stiffness * deep), 0.0)
+
+    @property
+    def _dash(self) -> float:
+        """Damping of a stop. [kg/s]"""
+        return 2 * damping_of_bounce(self.restitution.typ) * math.pi / self.contact.typ * self.mass.typ
 
     @property
     def _stiffness(self) -> float:

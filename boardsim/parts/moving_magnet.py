@@ -26,7 +26,7 @@ class MovingMagnetCoil(Coil):
     -----
     F = K i, and the motion induces K dx/dt against the current (the two constants are one, in N/A and V s/m: what the source
     gives is heat, field and motion): v = R i + L di/dt + K dx/dt. Holds while the magnet stays where the coil's field is
-    even, and for currents that do not demagnetise it; the attraction between magnet and iron nearby is left out. Wired the other way
+    even, for currents that do not demagnetise it, and for iron that does not saturate; the attraction between magnet and iron nearby is left out. Wired the other way
     round the coil pulls the magnet against its stop.
 
     References

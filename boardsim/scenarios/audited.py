@@ -47,7 +47,7 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
     that is a resistor R_x takes the current down with L / (R + R_x), one that is a capacitor makes it swing with sqrt(L C): as
     many steps then fall on a sixth of its period.
     """
-    tau = min(_fastest(c) for c in board.channels)
+    tau = min(_fastest(c, board.supply.voltage.max) for c in board.channels)
     counts = (*_STEPS_PER_TAU, *[_STEPS_PER_TAU[-1]] * len(ladder))
     return tuple(
         replace(s, max_step=min(s.max_step, max(tau, _SHORTEST_STEP * _STEPS_PER_TAU[0]) / n))
@@ -55,9 +55,9 @@ def fitted(ladder: Sequence[Settings], board: Board) -> tuple[Settings, ...]:
     )
 
 
-def _fastest(channel: Channel) -> float:
-    """The shortest time in which a coil's current changes. [s]"""
-    henries, clamps = channel.coil.inductances[0], [d.clamp for d in channel.drivers]
+def _fastest(channel: Channel, volts: float) -> float:
+    """The shortest time in which a coil's current changes, fed with this voltage. [V] -> [s]"""
+    henries, clamps = channel.coil.least_inductance(volts), [d.clamp for d in channel.drivers]
     farads = min((c.swings_with() for c in clamps if c.swings_with()), default=0.0)
     decay: float = henries / max(channel.coil.resistance.max + sum(c.in_the_way() for c in clamps), 1e-3)
     return min(decay, math.sqrt(henries * farads)) if farads else decay

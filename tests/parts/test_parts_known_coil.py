@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
+import numpy as np
 import pytest
 from pydantic import ValidationError
 
 from boardsim.parts.base import NOMINAL, Corner, Surroundings
 from boardsim.parts.coil import Coil
+from boardsim.parts.elements import Resistor
 
 BOBBIN = {"inner": "8 mm", "outer": "18 mm", "length": "20 mm"}
 
@@ -155,3 +158,60 @@ def test_a_measured_resistance_may_differ_from_the_winding_by_what_thin_wire_var
 
 def coil_with(winding: dict[str, Any], ohms: float) -> Coil:
     return Coil.model_validate({"winding": winding, "resistance": f"{ohms:.5g} ohm"})
+
+
+def quality(f: float, henries: float, ohms: float, loss: float) -> float:
+    """Reactance over resistance of the coil, with complex numbers. [Hz], [H], [ohm], [ohm] -> [1]"""
+    x = 2j * math.pi * f * henries
+    z = ohms + x * loss / (x + loss)
+    return z.imag / z.real
+
+
+@pytest.mark.parametrize(("f", "loss"), [(1e3, 500.0), (1e3, 80.0), (100.0, 3200.0), (20e3, 3200.0)])
+def test_a_measured_quality_gives_the_core_loss_back(f: float, loss: float) -> None:
+    q = quality(f, 10e-3, 4.0, loss)
+    part = coil(resistance="4 ohm", measured_loss={"frequency": f"{f:g} Hz", "q": q})
+    assert part.loss.typ == pytest.approx(loss, rel=1e-6)
+    assert not part.loss.assumed()
+    stamp = part.stamp("c", "c", "a", "b", NOMINAL, None)
+    assert [e.ohms for e in stamp.elements if isinstance(e, Resistor) and e.name == "c_core"] == [part.loss.typ]
+    assert "core loss resistance" not in [a.quantity for a in stamp.assumptions]
+
+
+@pytest.mark.parametrize(("farads", "loss"), [(1e-6, 1500.0), (0.1e-6, 3200.0)])
+def test_a_ringing_gives_the_core_loss_back(farads: float, loss: float) -> None:
+    # Coil and capacitor as a circuit of second order: eigenvalues of current and voltage, by NumPy.
+    ohms, henries = 4.0, 10e-3
+    # The winding's current w: v = -R w - u, w = i + u/R_p with u across the inductance, C dv/dt = w.
+    share = loss / (ohms + loss)
+    matrix = np.array([[-ohms * share / henries, share / henries], [-share / farads, -1 / (ohms + loss) / farads]])
+    value = max(np.linalg.eigvals(matrix), key=lambda v: v.imag)
+    f, left = value.imag / (2 * math.pi), math.exp(value.real * 3 * 2 * math.pi / value.imag)
+    ringing = {"frequency": f"{f:.6f} Hz", "cycles": 3, "left": f"{left * 100:.9f} %"}
+    found = coil(resistance="4 ohm", measured_loss=ringing)
+    assert found.measured_loss is not None
+    assert found.measured_loss.quality > 3
+    # Quality is that of the circuit at its own frequency; it differs from the coil's by about 1/Q^2.
+    assert found.loss.typ == pytest.approx(loss, rel=1.5 / found.measured_loss.quality**2)
+
+
+@pytest.mark.parametrize(
+    ("loss", "why"),
+    [
+        ({"frequency": "1 kHz"}, "needs q, or cycles and left"),
+        ({"frequency": "1 kHz", "q": 5, "cycles": 3, "left": "20 %"}, "needs q, or cycles and left"),
+        ({"frequency": "1 kHz", "cycles": 3}, "needs q, or cycles and left"),
+        ({"frequency": "1 kHz", "cycles": 1, "left": "100 %"}, "less than 100 %"),
+        ({"frequency": "1 kHz", "cycles": 1, "left": "5 %"}, "below 2 it says little"),
+        ({"frequency": "1 kHz", "q": 20}, "is more than 15.7, which 4.00 ohm of winding leave of 10.0 mH"),
+        ({"frequency": "1 kHz +/- 5 %", "q": 5}, "without tolerance"),
+        ({"frequency": "1 kHz", "q": 0}, '"q" must be 0.1 or more; found 0'),
+    ],
+)
+def test_a_loss_that_cannot_be_is_refused(loss: dict[str, Any], why: str) -> None:
+    assert why in refusal(resistance="4 ohm", inductance="10 mH", measured_loss=loss)
+
+
+def test_core_loss_is_told_once() -> None:
+    given = {"resistance": "4 ohm", "inductance": "10 mH", "core_loss": "2 kohm"}
+    assert "give one of them" in refusal(**given, measured_loss={"frequency": "1 kHz", "q": 5})
