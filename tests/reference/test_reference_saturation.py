@@ -28,9 +28,12 @@ from test_reference_motion import run as run_alone
 
 from boardsim.circuit.deck import Settings
 from boardsim.engine.run import Engine
-from boardsim.parts.base import NOMINAL
+from boardsim.parts.base import NOMINAL, Corner
+from boardsim.parts.coil import Coil
+from boardsim.parts.elements import Stored
 from boardsim.parts.plunger import PlungerCoil
 from boardsim.parts.saturation import Curve
+from boardsim.scenarios.fire import fire_pattern
 
 pytestmark = pytest.mark.engine
 
@@ -100,6 +103,25 @@ def test_a_saturating_coil_rises_and_lets_go_as_an_independent_solution_says(eng
     assert taken == pytest.approx(CLAMP * charge, rel=0.01)
     # What the clamp takes is what the field held less what the winding burnt, and the field held less than L i^2 / 2.
     assert taken < part.held(1.5, NOMINAL) < 0.8 * 0.5 * HENRIES * 1.5**2
+
+
+def test_the_audit_counts_the_field_s_own_energy(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    board, pattern = read_files(tmp_path, BOARD, PATTERN)
+    assert fire_pattern(board, pattern, tmp_path / "kept").proven
+    # Had it held half as much, the clamp would have got more than there was.
+    true = Coil.stored
+
+    def half(self: Coil, corner: Corner) -> Stored:
+        found = true(self, corner)
+        assert found is not None
+        return Stored(found.quantities, lambda flux: found.law(flux) / 2)
+
+    monkeypatch.setattr(Coil, "stored", half)
+    result = fire_pattern(board, pattern, tmp_path / "kept")
+    assert not result.proven
+    assert any(
+        "coil" in e.subject and e.criterion == "passivity" for c in result.audit for e in c.entries if not e.passed
+    )
 
 
 SATURATION = {"current": "1 A", "flux_left": "85 %", "air_core": "3 mH"}
