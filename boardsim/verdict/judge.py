@@ -178,7 +178,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
         case TogetherRule() as rule:
             yield from judge_together(rule, placed, readings, bench)
         case PullInRule() as rule:
-            yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], bench)
+            ends = firing.spans(_channel(placed))[:, 1]
+            yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], ends, bench)
         case ReleaseRule() as rule:
             yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
         case IdleRule() as rule:

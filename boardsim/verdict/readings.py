@@ -83,6 +83,7 @@ class Readings:
     lowest : (value, time) of the rail
     ceiling : (time at the ceiling, since when)
     pull_in, release : mapping of channel to (times, currents)
+        At the ends of pulses, or of the peaks of those that are held; when fired again.
     avalanches : mapping of (channel, voltage) to list of Avalanche
     drive : mapping of (channel, drive, current) to (times, drives, currents), at the ends of pulses
     guarded : tuple of Dip
@@ -175,7 +176,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     ceiling_rule = next((r for _, r in rules if isinstance(r, CeilingRule)), None)
     ceiling = TimeAbove(AT_CEILING * ceiling_rule.limit.value if ceiling_rule and ceiling_rule.limit.value else np.inf)
     pull_in = {
-        c: Samples(_within(firing.spans(c)[:, 1], start, stop))
+        c: Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
         if isinstance(r, PullInRule) and c is not None
     }
@@ -196,14 +197,14 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     }
     sneaks = {c: Growth(firing.spans(c)) for c, r in rules if isinstance(r, SneakRule) and c is not None}
     drive = {
-        (c, quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
+        (c, quantity): Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
         if isinstance(r, DriveRule) and c is not None
         for quantity in (r.quantity, r.current)
     }
     moving = (None, "i_regulator") in row
     at_ends = {
-        (c, r.quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
+        (c, r.quantity): Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
         if moving and isinstance(r, FloorRule) and not r.any_time and c is not None
     }
