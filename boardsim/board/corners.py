@@ -54,7 +54,7 @@ def nominal_only(board: Board) -> tuple[str, ...]:
     return (*names, *(() if board.around else ("winding temperature",)))
 
 
-def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
+def corners(board: Board, shortest: float = math.inf, held: bool = False) -> tuple[Corner, ...]:
     """The corners to run.
 
     Parameters
@@ -62,6 +62,8 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     board : Board
     shortest : float
         Width of the shortest pulse. [s]
+    held : bool
+        Whether any pulse is held by a chop.
 
     Notes
     -----
@@ -70,7 +72,8 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     clamps and low breakdown for energy and release; supply low with hot windings for pull-in; supply low with cold
     windings for the rail, which then has to feed the most. A coil of high inductance holds the most energy and lets go
     latest, unless pulses end before its current has settled (five times L/R): then the first two are run with low
-    inductance as well, which lets the current rise further. Corners that come out alike are run once.
+    inductance as well, which lets the current rise further. A chop's current falls lowest with the supply low, coils hot and low
+    inductance. Corners that come out alike are run once.
 
     Semiconductors are hot in the first and in the third: a Zener then clamps highest, a diode lowest, and a MOSFET's
     on-resistance is largest; they are cold in the others, where breakdown is lowest and a bipolar transistor needs the
@@ -116,6 +119,10 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
             Corner(f"{high}, clamps high and hot", {**strong, **stiff, "inductance": "min"}, "cold", junction=warm),
             Corner(f"{high}, clamps low and cold", {**strong, **soft, "inductance": "min"}, "cold", junction=cool),
         ]
+    if held:
+        ends: dict[str, Bound] = {**weak, "coil_resistance": "max", "inductance": "min", "on_resistance": "max"}
+        ends |= {"clamp_voltage": "max", "opposing_force": "max"}
+        wanted.append(Corner("supply low, coils hot, low inductance", ends, "hot", junction=warm))
     return _distinct(board, wanted)
 
 
@@ -179,7 +186,7 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     used += [q for q in (board.supply.current_ceiling,) if q is not None]
     for channel in board.channels:
         coil = channel.coil
-        used += [q for q in (coil.pull_in, coil.release, coil.longest_on, coil.least_off) if q is not None]
+        used += [q for q in (coil.pull_in, coil.release, coil.hold, coil.longest_on, coil.least_off) if q is not None]
     parts: list[tuple[str, Record]] = [
         ("supply", board.supply),
         ("cable", board.cable),

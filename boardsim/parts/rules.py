@@ -236,6 +236,15 @@ class ReleaseRule:
 
 
 @dataclass(frozen=True)
+class HoldRule:
+    """While a pulse is held, from its peak to its end, the coil current must stay above the hold current."""
+
+    check: str
+    quantity: str
+    limit: Limit
+
+
+@dataclass(frozen=True)
 class IdleRule:
     """Before its first pulse and after its last a channel's coil must carry less than the release current.
 
@@ -394,6 +403,7 @@ Rule = (
     | TogetherRule
     | PullInRule
     | ReleaseRule
+    | HoldRule
     | IdleRule
     | MotionRule
     | SneakRule

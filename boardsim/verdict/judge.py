@@ -18,6 +18,7 @@ from boardsim.parts.rules import (
     FallRule,
     FloorRule,
     HeatRule,
+    HoldRule,
     IdleRule,
     LeastRule,
     MeanRule,
@@ -40,6 +41,7 @@ from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.heat import judge_heat, judge_warmth
+from boardsim.verdict.hold import judge_hold
 from boardsim.verdict.logic_rail import judge_fall, judge_least
 from boardsim.verdict.motion import judge_motion
 from boardsim.verdict.rail import judge_ceiling, judge_dip
@@ -182,6 +184,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], ends, bench)
         case ReleaseRule() as rule:
             yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
+        case HoldRule() as rule:
+            yield from judge_hold(rule, placed, readings.valleys[_channel(placed)], firing, bench)
         case IdleRule() as rule:
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
         case MotionRule() as rule:

@@ -22,6 +22,7 @@ from boardsim.parts.rules import (
     FallRule,
     FloorRule,
     HeatRule,
+    HoldRule,
     IdleRule,
     MeanRule,
     MotionRule,
@@ -34,6 +35,7 @@ from boardsim.parts.rules import (
 )
 from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
+from boardsim.verdict.hold import Valleys, held_spans
 from boardsim.verdict.motion import Strokes, Travelled
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.sneak import Growth
@@ -106,6 +108,8 @@ class Readings:
         What the two transistors of a bridge's leg do.
     sneaks : mapping of channel to Growth
         What others drive through its coil, of channels of a matrix.
+    valleys : mapping of channel to Valleys
+        Of its coil's current while its pulses are held.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -129,6 +133,7 @@ class Readings:
     motions: Mapping[int, tuple[Travelled, ...]] = field(default_factory=dict)
     legs: Mapping[int, Leg] = field(default_factory=dict)
     sneaks: Mapping[int, Growth] = field(default_factory=dict)
+    valleys: Mapping[int, Valleys] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -196,6 +201,9 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if isinstance(r, IdleRule) and c is not None
     }
     sneaks = {c: Growth(firing.spans(c)) for c, r in rules if isinstance(r, SneakRule) and c is not None}
+    valleys = {
+        c: Valleys(held_spans(firing, c, start, stop)) for c, r in rules if isinstance(r, HoldRule) and c is not None
+    }
     drive = {
         (c, quantity): Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
@@ -246,6 +254,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
                 sample.feed(t, y[row[c, "i_coil"]])
         for c, growth in sneaks.items():
             growth.feed(t, y[row[c, "i_coil"]])
+        for c, valley in valleys.items():
+            valley.feed(t, y[row[c, "i_coil"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for (c, _), (watch, rule) in avalanches.items():
@@ -314,6 +324,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {c: strokes.all() for c, (strokes, _) in moving_parts.items()},
         {c: leg for c, (leg, _) in legs.items()},
         sneaks,
+        valleys,
     )
 
 
