@@ -6,6 +6,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo, model_validator
 
+from boardsim.board.enable import EnableTable
 from boardsim.board.power_up import ControlLine, PowerUpTable, check_lines
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Part, any_of, named_part
@@ -298,6 +299,9 @@ class BoardFile(Record):
     )
     parts: dict[Name, AnyComponent] = Field(default_factory=dict)  # type: ignore[valid-type]
     channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]
+    enable_lines: dict[Name, EnableTable] = Field(
+        default_factory=dict, description="lines that the controller's timer chops while pulses are held, by name"
+    )
     power_up: PowerUpTable = PowerUpTable()
     limits: Limits = Limits()
     derating: Deratings = Deratings()

@@ -14,6 +14,7 @@ from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.drivers import add_driver, refuse_too_short
+from boardsim.circuit.enable import letting_go, logic_source
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
 from boardsim.circuit.matrix import add_crossing, add_line
 from boardsim.circuit.packages import of_package, of_sum
@@ -193,6 +194,8 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
     if board.logic.derived:
         add_logic(parts, board, corner)
         parts.add(clear_line(board, corner), None, "clear line", "chain")
+    elif firing.held.let_go and detail == "edges":
+        parts.add(logic_source(board, corner), None, "logic rail", "chain")
     outputs: Outputs = partial(_known_edges, board, firing, corner, window)
     frames: Frames = ()
     if detail == "clocked":
@@ -232,6 +235,11 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
             "a capture holds what the bus did, and its registers were followed bit by bit; leave --clocked out, which would send "
             "frames of its own"
         )
+    if firing.held.lines:
+        raise InputError(
+            f"the enable line {firing.held.lines[0].line.name} chops outputs behind the registers, which are followed flip-flop by "
+            "flip-flop only with their outputs enabled; leave --clocked out"
+        )
     edges = len(firing.sent) * board.chain.outputs
     if edges * len(board.channels) > MOST_CLOCKED:
         most = MOST_CLOCKED // (board.chain.outputs * len(board.channels))
@@ -244,6 +252,11 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
 def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, driver: Channel | Line) -> Stamp:
     """An output that does what the bits say, as a source."""
     register, name = board.chain.register_, f"{driver.stem}_q"
+    if driver.output in firing.held.let_go:
+        held, off = firing.held.let_go[driver.output]
+        edges = (held, ((0.0, True), *((t, on) for a, b in off for t, on in ((a, False), (b, True)))))
+        bit, enabled = (gate_points(of, window, 1.0, register.output_edge.typ) for of in edges)
+        return letting_go(board, driver, bit, enabled)
     volts = 1.0 if board.logic.derived else board.logic.level(corner)
     points = gate_points(firing.levels[driver.output], window, volts, register.output_edge.typ)
     points = looked_at(points, driver.switch.follows_within(), driver.switch.moments())

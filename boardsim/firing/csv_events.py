@@ -15,7 +15,16 @@ from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import TomlFile
 from boardsim.errors import InputError, Problem, QuantityError
 from boardsim.firing.hold import KEYS, MOST_CHOPS
-from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, checked_hold, refuse_early_end, snapped
+from boardsim.firing.pattern import (
+    MOST_PULSES,
+    Pattern,
+    Pulse,
+    by_start,
+    checked_hold,
+    refuse_early_end,
+    refuse_mixed_holds,
+    snapped,
+)
 from boardsim.parts.record import Name, Record, name_from, nearest, shortened
 from boardsim.quantities import FREQUENCY, SHARE, TIME, Dimension, Quantity, computed, parse
 
@@ -95,6 +104,10 @@ def read_events(path: Path, board: Board) -> Pattern:
         problems.append(Problem(str(path), number, "no pulse follows the line of titles; write one per line"))
     if problems:
         raise InputError(problems)
+    try:
+        refuse_mixed_holds(pulses, board)
+    except QuantityError as err:
+        raise InputError([Problem(str(path), None, str(err))]) from None
     return Pattern(path, name_from(path.stem, "events"), None, by_start(pulses), span="the list's own")
 
 
@@ -238,7 +251,7 @@ def _pulse(
     if not any(key in times for key in KEYS):
         return Pulse(channel, start, width)
     said = {key: computed(times[key], _dimension(key).unit, "given") for key in KEYS if key in times}
-    return Pulse(channel, start, width, checked_hold(said, width, board))
+    return Pulse(channel, start, width, checked_hold(said, width, board, (channel,)))
 
 
 def _channel(

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,9 @@ from boardsim.board.matrix import Line
 from boardsim.board.reader import Board
 from boardsim.firing.hold import FrameChop, Hold, Span, chopped, joined
 from boardsim.firing.pattern import Pulse
+
+if TYPE_CHECKING:
+    from boardsim.firing.enable import LineChop
 
 Floats = NDArray[np.float64]
 _SAME = 1e-12  # [s], as far as times of pulses are told apart
@@ -27,6 +31,8 @@ class Commanded:
         [s]
     driven : tuple of (start, stop)
         When the firmware has the output on. [s]
+    full : tuple of (start, stop)
+        When it asks for full drive: in the peaks of those that are held, and all of those that are not. [s]
     hold : Hold or None
         Of the first of them that is held.
     """
@@ -34,12 +40,14 @@ class Commanded:
     start: float
     stop: float
     driven: tuple[Span, ...]
+    full: tuple[Span, ...]
     hold: Hold | None = None
 
     def with_(self, later: Commanded) -> Commanded:
         """This one and a later one that runs into it."""
-        driven = tuple(joined((*self.driven, *later.driven)))
-        return Commanded(self.start, max(self.stop, later.stop), driven, self.hold or later.hold)
+        driven, full = ((*a, *b) for a, b in ((self.driven, later.driven), (self.full, later.full)))
+        stop = max(self.stop, later.stop)
+        return Commanded(self.start, stop, tuple(joined(driven)), tuple(joined(full)), self.hold or later.hold)
 
     def edges(self) -> Iterator[tuple[float, bool]]:
         """When the firmware turns the output on and off, the end of the pulse last. [s]"""
@@ -55,7 +63,8 @@ def commanded(pulse: Pulse, chop: FrameChop | None) -> Commanded:
     driven: Iterable[Span] = ((pulse.start, pulse.stop),)
     if pulse.hold is not None and chop is not None:
         driven = chopped(pulse.start, pulse.stop, pulse.hold, chop)
-    return Commanded(pulse.start, pulse.stop, tuple(driven), pulse.hold)
+    full = pulse.stop if pulse.hold is None else pulse.start + pulse.hold.peak
+    return Commanded(pulse.start, pulse.stop, tuple(driven), ((pulse.start, full),), pulse.hold)
 
 
 def run_together(
@@ -97,6 +106,8 @@ class HeldPulse:
         Of the chop. [s]
     duty : float or None
         Share of the whole periods in it for which the switch is on; None where it is shorter than one period. [1]
+    line : str
+        The enable line that chops it; empty where register frames do.
     """
 
     channel: int
@@ -105,6 +116,18 @@ class HeldPulse:
     hold: Hold
     period: float
     duty: float | None
+    line: str = ""
+
+
+@dataclass(frozen=True)
+class Asked:
+    """A held pulse at its output, as the firmware asks for it; `period` is that of its chop. [s]"""
+
+    start: float
+    stop: float
+    hold: Hold
+    period: float
+    line: str = ""
 
 
 @dataclass(frozen=True)
@@ -120,12 +143,19 @@ class Held:
     pulses : tuple of HeldPulse
     chops : tuple of FrameChop
         Those that were counted in register frames.
+    lines : tuple of LineChop
+        Those of enable lines.
+    let_go : mapping of output to (levels, off)
+        Of outputs that a line makes let go of their switch: what the register holds, as (time, level), and when it lets go,
+        as (start, stop). [s]
     """
 
     switched: Mapping[int, Floats] = field(default_factory=dict)
     driven_until: Mapping[int, Floats] = field(default_factory=dict)
     pulses: tuple[HeldPulse, ...] = ()
     chops: tuple[FrameChop, ...] = ()
+    lines: tuple[LineChop, ...] = ()
+    let_go: Mapping[int, tuple[tuple[tuple[float, bool], ...], tuple[Span, ...]]] = field(default_factory=dict)
 
 
 def as_commanded(switched: Floats, pulses: Sequence[Span]) -> Floats:
@@ -149,9 +179,10 @@ def held_pulses(
     board: Board,
     switched: Mapping[int, Floats],
     on: Mapping[int, Floats],
-    asked: Mapping[int, Sequence[tuple[Span, Hold]]],
-    periods: Mapping[Hold, float],
+    asked: Mapping[int, Sequence[Asked]],
     chops: tuple[FrameChop, ...] = (),
+    lines: tuple[LineChop, ...] = (),
+    let_go: Mapping[int, tuple[tuple[tuple[float, bool], ...], tuple[Span, ...]]] | None = None,
 ) -> Held:
     """What is known of the pulses of channels that are held.
 
@@ -161,32 +192,33 @@ def held_pulses(
         When each switch is on. [s]
     on : mapping of channel to (n, 2) array
         Its pulses, as `as_commanded` has them. [s]
-    asked : mapping of channel to sequence of ((start, stop), Hold)
-        The held pulses of each, at its output. [s]
-    periods : mapping of Hold to float
-        That each is chopped with. [s]
+    asked : mapping of channel to sequence of Asked
+        The held pulses of each; none for one that others' holds take off.
     """
     until = {c: _first_ends(switched[c], on[c]) for c in asked}
     found = []
     for channel, mine in asked.items():
-        for (start, stop), hold in mine:
-            here = np.flatnonzero(np.abs(on[channel][:, 0] - start) <= _SAME)
-            if not len(here):
+        starts = on[channel][:, 0]
+        for p in mine:
+            k = int(np.searchsorted(starts, p.start - _SAME))
+            if k == len(starts) or abs(starts[k] - p.start) > _SAME:
                 continue
-            begins = float(until[channel][here[0]])
-            if begins < stop - _SAME:
-                duty = duty_within(switched[channel], begins, stop, periods[hold])
-                found.append(HeldPulse(channel, begins, stop, hold, periods[hold], duty))
+            begins = float(until[channel][k])
+            if begins < p.stop - _SAME:
+                duty = duty_within(switched[channel], begins, p.stop, p.period)
+                found.append(HeldPulse(channel, begins, p.stop, p.hold, p.period, duty, p.line))
     ends = dict(until)
     for line in (d for d in board.drivers if isinstance(d, Line)):
         if any(c in until for c in line.channels):
             ends[line.number] = np.concatenate([until.get(c, on[c][:, 1]) for c in line.channels])
-    return Held({c: switched[c] for c in asked}, ends, tuple(found), chops)
+    return Held({c: switched[c] for c in asked}, ends, tuple(found), chops, lines, let_go or {})
 
 
 def _first_ends(switched: Floats, on: Floats) -> Floats:
     """Of every pulse the end of the first stretch in which its switch is on. (n,) [s]"""
-    first = np.searchsorted(switched[:, 0], on[:, 0] - _SAME)
+    if not len(switched):
+        return on[:, 1]
+    first = np.minimum(np.searchsorted(switched[:, 0], on[:, 0] - _SAME), len(switched) - 1)
     ends: Floats = switched[first, 1]
     return ends
 

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Annotated
 
 from pydantic import Field, ValidationError
 
+from boardsim.board.enable import on_lines
 from boardsim.board.ranges import read_range, write_range
 from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import TomlFile, read_toml
@@ -126,6 +127,10 @@ def pattern_of(file: TomlFile, board: Board) -> Pattern:
         raise InputError(problems)
     if duration is not None:
         refuse_early_end(file, duration, pulses)
+    try:
+        refuse_mixed_holds(pulses, board)
+    except QuantityError as err:
+        raise InputError([file.problem(("pulses",), str(err))]) from None
     return Pattern(file.path, raw.name or name_from(file.path.stem, "pattern"), duration, by_start(pulses))
 
 
@@ -148,7 +153,9 @@ def by_start(pulses: Iterable[Pulse]) -> tuple[Pulse, ...]:
     return tuple(sorted(pulses, key=lambda p: (p.start, p.channel)))
 
 
-def checked_hold(given: Mapping[str, Quantity | None], width: float, board: Board) -> Hold | None:
+def checked_hold(
+    given: Mapping[str, Quantity | None], width: float, board: Board, channels: Iterable[int]
+) -> Hold | None:
     """The hold of a pulse on a board, if it is held.
 
     Parameters
@@ -157,6 +164,8 @@ def checked_hold(given: Mapping[str, Quantity | None], width: float, board: Boar
         `peak` [s], `hold` [1], `hold_frequency` [Hz].
     width : float
         Of the pulse. [s]
+    channels : iterable of int
+        That are fired so.
 
     Raises
     ------
@@ -164,9 +173,35 @@ def checked_hold(given: Mapping[str, Quantity | None], width: float, board: Boar
         If they do not go together, or the board cannot chop so.
     """
     hold = hold_of(given, width)
-    if hold is not None:
+    if hold is not None and not set(channels) <= {*on_lines(board)}:
         frame_chop(hold, slot_time(board.chain, board.controller))
     return hold
+
+
+def refuse_mixed_holds(pulses: Iterable[Pulse], board: Board) -> None:
+    """Refuse pulses that are held in different ways on one enable line, which has one duty and one frequency.
+
+    Raises
+    ------
+    QuantityError
+        With the line, and both.
+    """
+    first: dict[str, Hold] = {}
+    lined = on_lines(board)
+    for p in pulses:
+        if p.hold is None or p.channel not in lined:
+            continue
+        name = lined[p.channel].name
+        other = first.setdefault(name, p.hold)
+        if (other.duty, other.frequency) != (p.hold.duty, p.hold.frequency):
+            raise QuantityError(
+                f"pulses on the enable line {name} are held with {_said(other)} and with {_said(p.hold)}; the line chops all of its "
+                "channels alike: give them one hold and one hold_frequency"
+            )
+
+
+def _said(hold: Hold) -> str:
+    return f"{100 * hold.duty:.3g} % at {hold.frequency:.4g} Hz"
 
 
 def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problems: list[Problem]) -> list[Pulse]:
@@ -201,7 +236,7 @@ def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problem
     if len(problems) > before:
         return []
     try:
-        hold = checked_hold({key: getattr(train, key) for key in KEYS}, train.width.typ, board)
+        hold = checked_hold({key: getattr(train, key) for key in KEYS}, train.width.typ, board, channels)
     except QuantityError as err:
         at = next((key for key in ("hold_frequency", "hold", "peak") if getattr(train, key) is not None), "width")
         problems.append(file.problem_at((*keys, at), str(err)))

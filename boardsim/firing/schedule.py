@@ -9,11 +9,13 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from boardsim.board.enable import on_lines
 from boardsim.board.reader import Board
 from boardsim.firing.bus import Recorded
-from boardsim.firing.held import Held, as_commanded, changes_of, commanded, held_pulses, run_together
+from boardsim.firing.held import Held, changes_of, commanded, run_together
 from boardsim.firing.hold import frame_chop, slot_time
-from boardsim.firing.lines import Images, active_levels, channel_times, ghost_of, line_times
+from boardsim.firing.lines import Images, active_levels, ghost_of, line_times
+from boardsim.firing.outputs import outputs_of
 from boardsim.firing.pattern import Pattern, Pulse, snapped
 from boardsim.firing.registers import ChainState, frame_time, last_bit, shift_in
 from boardsim.parts.controller import Controller
@@ -80,8 +82,8 @@ class Firing:
     duration : float
         Until when a run looks. [s]
     levels : mapping of output to tuple of (time, level)
-        Every output that a channel is wired to, from (0, initial level) on; times are latch edges plus
-        propagation. [s]
+        Every output that a channel is wired to, as its switch gets it, from (0, initial level) on; times are latch edges plus
+        propagation, or edges of an enable line. [s]
     on : mapping of channel to (n, 2) array
         When the channel's switch is turned on and off; of a matrix, when row and column both are. A pulse that is held counts as
         one, from its start to its end. [s]
@@ -168,7 +170,8 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     is due and the last frame is latched and its pause over. A frame carries every change that is due until it starts;
     changes that come while a frame is under way wait for the next one. All changes of a frame appear together, at its latch
     edge. Jitter is left out here: it moves every edge by up to as much again, which `verdict` adds to what it finds.
-    A pulse that is held is chopped after its peak, on a beat of register frames (`FrameChop`).
+    A pulse that is held is chopped after its peak: on a beat of register frames (`FrameChop`), or, behind an enable line,
+    together with all others on that line (`line_chop`).
 
     Raises
     ------
@@ -183,8 +186,12 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     image_of = Images(board)
     timed = [(p, on_ticks(p, controller.tick.typ)) for p in pattern.pulses]
     slot = slot_time(chain, controller)
-    chops = {p.hold: frame_chop(p.hold, slot) for p in pattern.pulses if p.hold is not None}
-    together, merged = run_together([(p, t, commanded(t, None if t.hold is None else chops[t.hold])) for p, t in timed])
+    lined = on_lines(board)
+    framed = (p.hold for p in pattern.pulses if p.channel not in lined)
+    chops = {hold: frame_chop(hold, slot) for hold in framed if hold is not None}
+    together, merged = run_together(
+        [(p, t, commanded(t, None if t.hold is None or t.channel in lined else chops[t.hold])) for p, t in timed]
+    )
     asked = changes_of(together)
     late = controller.spi_mode == 1
 
@@ -231,18 +238,11 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     last = max([latch + delay, *(p.stop for pair in timed for p in pair)])
     # Also where a duration was asked for: what the last turn-off does to its switch comes after it.
     duration = max(pattern.duration or 0.0, last + settling_time(board))
-    on = dict(switched := channel_times(board, levels, active, duration))
-    holding = {
-        c: [((latched[c, p.start], latched[c, p.stop]), p.hold) for p in mine if p.hold is not None]
-        for c, mine in together.items()
-        if any(p.hold is not None for p in mine)
-    }
-    on |= {c: as_commanded(switched[c], [span for span, _ in mine]) for c, mine in holding.items()}
-    periods = {hold: chop.period for hold, chop in chops.items()}
+    outputs = outputs_of(board, levels, active, together, latched, chops, duration)
     return Firing(
         duration,
-        {o: tuple(v) for o, v in levels.items()},
-        on,
+        outputs.levels,
+        outputs.on,
         moved,
         merged,
         lost,
@@ -253,8 +253,8 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         controller.jitter.max,
         sent=tuple(sent),
         span=pattern.span,
-        lines=line_times(board, on),
-        held=held_pulses(board, switched, on, holding, periods, tuple(dict.fromkeys(chops.values()))),
+        lines=line_times(board, outputs.on),
+        held=outputs.held,
     )
 
 

@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
+from boardsim.board.ranges import write_range
 from boardsim.board.reader import Board
 from boardsim.circuit.deck import PlacedRule
 from boardsim.firing.held import HeldPulse
@@ -167,7 +168,11 @@ def judge_chops(board: Board, firing: Firing) -> Iterator[Finding]:
     else:
         said += f"{limit.typ:.0%} is allowed"
     if margin is None or margin < 0:
-        said += "; try: a lower hold_frequency, or a faster clock"
+        said += "; try: " + (
+            "peaks that do not fall into other pulses' holds, or a chop by register frames, each channel by itself"
+            if pulse.line
+            else "a lower hold_frequency, or a faster clock"
+        )
     yield Finding(
         "pulse-timing",
         "change of the duty of a hold",
@@ -193,6 +198,13 @@ def told_of_holds(firing: Firing) -> Iterator[str]:
             f"{chop.frames} register frames, one every {in_units(chop.slot, 's')}, fit into a chop's period of "
             f"{in_units(chop.period, 's')}, for all channels together: its duty is {chop.on} of {chop.frames}, {chop.duty:.1%}, in "
             f"steps of {1 / chop.frames:.1%}"
+        )
+    for chopped in firing.held.lines:
+        line = chopped.line
+        yield (
+            f"the enable line {line.name} chops channels {write_range(line.channels)} together, with "
+            f"{100 * chopped.hold.duty:.3g} % at {in_units(chopped.hold.frequency, 'Hz')}; it stays enabled as long as one of them is in "
+            "its peak or is fired without a hold, and gives those that are held full drive meanwhile"
         )
     duties = [p.duty for p in firing.held.pulses if p.duty is not None]
     short = len(firing.held.pulses) - len(duties)
