@@ -99,7 +99,7 @@ class HeldPulse:
     ----------
     channel : int
     start, stop : float
-        When its hold begins, at the end of its peak, and when it ends. [s]
+        When its hold begins, at the end of its peak as it was asked for, or at the frame that ends it; and when it ends. [s]
     hold : Hold
         As it was asked for.
     period : float
@@ -203,7 +203,8 @@ def held_pulses(
             k = int(np.searchsorted(starts, p.start - _SAME))
             if k == len(starts) or abs(starts[k] - p.start) > _SAME:
                 continue
-            begins = float(until[channel][k])
+            # A line may give it full drive for longer, for the sake of others: what that makes of its duty is to be seen.
+            begins = p.start + p.hold.peak if p.line else float(until[channel][k])
             if begins < p.stop - _SAME:
                 duty = duty_within(switched[channel], begins, p.stop, p.period)
                 found.append(HeldPulse(channel, begins, p.stop, p.hold, p.period, duty, p.line))
