@@ -16,6 +16,8 @@ _INPUT_NAMES = {
     "inductance": "coil inductance",
     "bulk": "bulk capacitance",
     "esr": "bulk series resistance",
+    "reservoir": "reservoir's capacitance",
+    "reservoir_esr": "reservoir's series resistance",
     "clamp_voltage": "clamp voltage",
     "breakdown": "breakdown voltage",
     "logic": "logic rail",
@@ -37,6 +39,9 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
         "esr": [board.bulk.esr],
         "logic": [board.logic.voltage],
     }
+    if board.boost is not None:
+        found["supply"].append(board.boost.voltage)
+        found |= {"reservoir": [board.boost.capacitance], "reservoir_esr": [board.boost.esr]}
     for parts in ((c.coil for c in board.channels), *((d.switch, d.clamp) for d in board.drivers)):
         for part in parts:
             for key, quantity in (*part.tolerances().items(), *part.tolerances_too()):
@@ -81,11 +86,14 @@ def corners(board: Board, shortest: float = math.inf, held: bool = False) -> tup
     go together for long, which makes the first corner an upper bound.
 
     Gates are driven hardest with the supply high and weakest with it low; with it high a leg's gates also turn off as late and on as
-    early as they may, and in the first corner their thresholds are lowest besides.
+    early as they may, and in the first corner their thresholds are lowest besides. A boost's reservoir is smallest throughout, which is
+    what a burst empties furthest.
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
-    strong |= {"gate_supply": "max", "opposing_force": "min", **_GATES}
+    reservoir: dict[str, Bound] = {"reservoir": "min", "reservoir_esr": "max"}
+    strong |= {"gate_supply": "max", "opposing_force": "min", **_GATES, **reservoir}
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min", "gate_supply": "min"}
+    weak |= reservoir
     # Hot: the least threshold leaks most, the largest on-resistance heats most.
     stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max", "on_resistance": "max", "threshold": "min"}
     soft: dict[str, Bound] = {"clamp_voltage": "min", "breakdown": "min"}
@@ -196,6 +204,9 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     for channel in board.channels:
         parts += [(f"coil {channel.coil_name}", channel.coil)]
         parts += [("series diode", channel.diode)] if channel.diode is not None else []
+    if board.boost is not None:
+        parts += [("boost", board.boost)]
+        used += [q for q in (board.boost.least,) if q is not None]
     for driver in board.drivers:
         parts += [("switch", driver.switch), ("clamp", driver.clamp)]
         used += driver.switch.taken_at_ends()

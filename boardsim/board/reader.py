@@ -10,6 +10,7 @@ from typing import Any
 
 from pydantic import ValidationError
 
+from boardsim.board.boost import boosted_channels
 from boardsim.board.bridges import backwards, refuse_wrong_bridges, with_opposites
 from boardsim.board.chain_outputs import refuse_wrong_outputs
 from boardsim.board.enable import EnableLine, enable_lines
@@ -21,6 +22,7 @@ from boardsim.board.shelves import Shelves, problems_in, read_shelves
 from boardsim.board.toml_file import Keys, TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
 from boardsim.parts.base import Assumption, Part, Surroundings, listed
+from boardsim.parts.boost import Boost
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
@@ -123,6 +125,8 @@ class Board:
     all_off: tuple[int, ...] = ()
     power_up: PowerUpTable = field(default_factory=PowerUpTable)
     enable_lines: tuple[EnableLine, ...] = ()
+    boost: Boost | None = None
+    boosted: tuple[int, ...] = ()  # channels of its bank
 
     @property
     def spi_mode(self) -> int:
@@ -290,6 +294,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     problems += refuse_wrong_outputs(board, file)
     problems += refuse_wrong_bridges(board, file)
     enables = enable_lines(board, channels, file, problems)
+    boosted = boosted_channels(board, channels, file, problems)
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
     around = None
@@ -329,6 +334,8 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         all_off,
         board.power_up,
         enables,
+        board.boost,
+        boosted,
     )
 
 

@@ -8,8 +8,10 @@ from dataclasses import replace
 from functools import partial
 from typing import Literal
 
+from boardsim.board.boost import feeds
 from boardsim.board.matrix import LINES_FROM, Line
 from boardsim.board.reader import Board, Channel
+from boardsim.circuit.boost import BANK, OPEN, add_boost, closed_points
 from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
@@ -190,7 +192,7 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
     """
     refuse_too_short(board, firing)
     parts = Assembly()
-    add_rail(parts, board, corner)
+    add_rail(parts, board, corner, closed=closed_points(board, firing.held, window))
     if board.logic.derived:
         add_logic(parts, board, corner)
         parts.add(clear_line(board, corner), None, "clear line", "chain")
@@ -301,12 +303,18 @@ def add_lines(parts: Assembly, board: Board, frames: Frames, span: float, on_wir
     return names
 
 
-def add_rail(parts: Assembly, board: Board, corner: Corner, setting: str = "") -> None:
-    """Supply, cable and bulk capacitor; `setting` is the node whose voltage the supply follows, its own if empty."""
+def add_rail(
+    parts: Assembly, board: Board, corner: Corner, setting: str = "", closed: tuple[tuple[float, float], ...] = OPEN
+) -> None:
+    """Supply, cable, bulk capacitor and a boosted bank; the supply follows node `setting`, its own voltage if empty.
+
+    `closed` is the bank's switch over time. [s], [1]
+    """
     parts.add(board.supply.stamp(SUPPLY, corner, setting), None, board.supply.title or "supply", "supply")
     around = board.around
     parts.add(board.cable.stamp(SUPPLY, RAIL, corner, around), None, board.cable.title or "cable", "cable")
     parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
+    add_boost(parts, board, corner, RAIL, closed)
 
 
 def add_logic(parts: Assembly, board: Board, corner: Corner) -> None:
@@ -350,14 +358,14 @@ def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel,
     k, name, label = channel.number, channel.stem, channel.label
     load = f"{name}_d"
     coil_end = load if channel.leads is None else f"{name}_k"
-    low = channel.switch.side == "low"
+    low, rail = channel.switch.side == "low", feeds(board, channel, RAIL, BANK)
     parts.add(driven, k, board.chain.register_.title or "register", label)
-    ends = (RAIL, coil_end) if low else (coil_end, GROUND)
+    ends = (rail, coil_end) if low else (coil_end, GROUND)
     coil = channel.coil.stamp(name, channel.coil_name, *ends, corner, board.around)
     parts.add(coil, k, channel.coil_name, label)
     if channel.leads is not None:
         parts.add(channel.leads.stamp(f"{name}_lead", coil_end, load, corner, board.around), k, "leads", label)
-    add_driver(parts, corner, channel, load, coil_end if channel.clamp.at_the_coil() else load, RAIL)
+    add_driver(parts, corner, channel, load, coil_end if channel.clamp.at_the_coil() else load, rail)
 
 
 def _rail_rule(board: Board) -> Rule:

@@ -145,6 +145,8 @@ class Held:
         Those that were counted in register frames.
     lines : tuple of LineChop
         Those of enable lines.
+    peaks : mapping of channel to (n, 2) array
+        When each held pulse's peak begins and ends. [s]
     let_go : mapping of output to (levels, off)
         Of outputs that a line makes let go of their switch: what the register holds, as (time, level), and when it lets go,
         as (start, stop). [s]
@@ -156,6 +158,7 @@ class Held:
     chops: tuple[FrameChop, ...] = ()
     lines: tuple[LineChop, ...] = ()
     let_go: Mapping[int, tuple[tuple[tuple[float, bool], ...], tuple[Span, ...]]] = field(default_factory=dict)
+    peaks: Mapping[int, Floats] = field(default_factory=dict)
 
 
 def as_commanded(switched: Floats, pulses: Sequence[Span]) -> Floats:
@@ -197,6 +200,7 @@ def held_pulses(
     """
     until = {c: _first_ends(switched[c], on[c]) for c in asked}
     found = []
+    peaks: dict[int, list[Span]] = {}
     for channel, mine in asked.items():
         starts = on[channel][:, 0]
         for p in mine:
@@ -205,6 +209,7 @@ def held_pulses(
                 continue
             # A line may give it full drive for longer, for the sake of others: what that makes of its duty is to be seen.
             begins = p.start + p.hold.peak if p.line else float(until[channel][k])
+            peaks.setdefault(channel, []).append((p.start, min(begins, p.stop)))
             if begins < p.stop - _SAME:
                 duty = duty_within(switched[channel], begins, p.stop, p.period)
                 found.append(HeldPulse(channel, begins, p.stop, p.hold, p.period, duty, p.line))
@@ -212,7 +217,15 @@ def held_pulses(
     for line in (d for d in board.drivers if isinstance(d, Line)):
         if any(c in until for c in line.channels):
             ends[line.number] = np.concatenate([until.get(c, on[c][:, 1]) for c in line.channels])
-    return Held({c: switched[c] for c in asked}, ends, tuple(found), chops, lines, let_go or {})
+    return Held(
+        {c: switched[c] for c in asked},
+        ends,
+        tuple(found),
+        chops,
+        lines,
+        let_go or {},
+        {c: np.array(rows) for c, rows in peaks.items()},
+    )
 
 
 def _first_ends(switched: Floats, on: Floats) -> Floats:

@@ -245,6 +245,16 @@ class HoldRule:
 
 
 @dataclass(frozen=True)
+class ReserveRule:
+    """When the peak of a held pulse of one of `channels` begins, the reservoir that feeds them must still have a voltage."""
+
+    check: str
+    quantity: str
+    limit: Limit
+    channels: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
 class IdleRule:
     """Before its first pulse and after its last a channel's coil must carry less than the release current.
 
@@ -404,6 +414,7 @@ Rule = (
     | PullInRule
     | ReleaseRule
     | HoldRule
+    | ReserveRule
     | IdleRule
     | MotionRule
     | SneakRule

@@ -160,7 +160,7 @@ def _firing_sentences(board: Board, firing: Firing, firmware: bool, detail: Deta
             f"their width changes by up to {in_units(abs(change) if abs(change) > 1e-12 else 0.0, 's')}"
         )
         lines += _rounded(board, firing)
-        lines += told_of_holds(firing)
+        lines += told_of_holds(board, firing)
     if detail == "clocked":
         lines.append("the registers were run flip-flop by flip-flop, clocked by their lines")
     return (*lines, *missing)

@@ -191,8 +191,10 @@ def judge_chops(board: Board, firing: Firing) -> Iterator[Finding]:
     )
 
 
-def told_of_holds(firing: Firing) -> Iterator[str]:
-    """What the chop of held pulses comes to, in plain sentences."""
+def told_of_holds(board: Board, firing: Firing) -> Iterator[str]:
+    """What the chop of held pulses comes to, and whether a boost feeds any of them, in plain sentences."""
+    if board.boost is not None and not any(c in firing.held.peaks for c in board.boosted):
+        yield "no pulse of the bank has a peak: the boost's switch stays open, and the coil rail feeds all of them"
     for chop in firing.held.chops:
         yield (
             f"{chop.frames} register frames, one every {in_units(chop.slot, 's')}, fit into a chop's period of "

@@ -27,6 +27,7 @@ from boardsim.parts.rules import (
     PullInRule,
     PulseRule,
     ReleaseRule,
+    ReserveRule,
     Rule,
     ShootThroughRule,
     SneakRule,
@@ -36,6 +37,7 @@ from boardsim.quantities import in_units
 from boardsim.verdict.audit import SMALL
 from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
+from boardsim.verdict.boost import judge_reserve
 from boardsim.verdict.bridges import judge_leg
 from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
@@ -186,6 +188,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
         case HoldRule() as rule:
             yield from judge_hold(rule, placed, readings.valleys[_channel(placed)], firing, bench)
+        case ReserveRule() as rule:
+            yield from judge_reserve(rule, placed, readings.reserve, firing, bench)
         case IdleRule() as rule:
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
         case MotionRule() as rule:

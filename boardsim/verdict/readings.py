@@ -29,10 +29,12 @@ from boardsim.parts.rules import (
     PullInRule,
     PulseRule,
     ReleaseRule,
+    ReserveRule,
     Rule,
     ShootThroughRule,
     SneakRule,
 )
+from boardsim.verdict.boost import peaks_begin
 from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
 from boardsim.verdict.hold import Valleys, held_spans
@@ -110,6 +112,7 @@ class Readings:
         What others drive through its coil, of channels of a matrix.
     valleys : mapping of channel to Valleys
         Of its coil's current while its pulses are held.
+    reserve : (times, voltages) of a boost's reservoir when peaks of its bank begin; None without one
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -134,6 +137,7 @@ class Readings:
     legs: Mapping[int, Leg] = field(default_factory=dict)
     sneaks: Mapping[int, Growth] = field(default_factory=dict)
     valleys: Mapping[int, Valleys] = field(default_factory=dict)
+    reserve: tuple[Floats, Floats] | None = None
 
 
 class SignalTable:
@@ -211,6 +215,11 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         for quantity in (r.quantity, r.current)
     }
     moving = (None, "i_regulator") in row
+    reserves = [
+        (Samples(_within(peaks_begin(firing, r.channels), start, stop)), r)
+        for _, r in rules
+        if isinstance(r, ReserveRule)
+    ]
     at_ends = {
         (c, r.quantity): Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
@@ -256,6 +265,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             growth.feed(t, y[row[c, "i_coil"]])
         for c, valley in valleys.items():
             valley.feed(t, y[row[c, "i_coil"]])
+        for sample, reserved in reserves:
+            sample.feed(t, y[row[None, reserved.quantity]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for (c, _), (watch, rule) in avalanches.items():
@@ -325,6 +336,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {c: leg for c, (leg, _) in legs.items()},
         sneaks,
         valleys,
+        next(((s.times, s.values) for s, _ in reserves), None),
     )
 
 

@@ -156,6 +156,7 @@ def test_the_duty_that_a_chop_reached_is_judged_as_a_pulse_is(tmp_path: Path) ->
 
 
 def test_the_report_says_how_many_frames_a_period_has(tmp_path: Path) -> None:
-    said = " ".join(told_of_holds(held_firing(board(tmp_path), 0)))
+    the_board = board(tmp_path)
+    said = " ".join(told_of_holds(the_board, held_firing(the_board, 0)))
     assert "59 register frames, one every 17.0 us, fit into a chop's period of 1.00 ms" in said
     assert "18 of 59, 30.5%" in said
