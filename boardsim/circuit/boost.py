@@ -9,7 +9,6 @@ from boardsim.circuit.deck import PlacedRule, Window
 from boardsim.firing.held import Held
 from boardsim.firing.hold import joined
 from boardsim.parts.base import Corner
-from boardsim.parts.boost import EDGE
 
 if TYPE_CHECKING:
     from boardsim.circuit.assemble import Assembly
@@ -21,14 +20,17 @@ OPEN = ((0.0, 0.0), (1.0, 0.0))
 
 def closed_points(board: Board, held: Held, window: Window) -> tuple[tuple[float, float], ...]:
     """The bank's switch as straight lines, 1 while it is closed: in the peaks of its channels. [s], [1]"""
+    if board.boost is None:
+        return OPEN
+    edge = board.boost.switch_edge.typ
     peaks = joined([(float(a), float(b)) for c in board.boosted for a, b in held.peaks.get(c, ())])
     points = [(0.0, 0.0)]
     for start, stop in peaks:
         for at, level in ((start, 1.0), (stop, 0.0)):
             t = max(at - window.start, points[-1][0] + 1e-12)
-            points += [(t, 1.0 - level), (t + EDGE, level)]
+            points += [(t, 1.0 - level), (t + edge, level)]
     span = window.stop - window.start
-    return (*points, (max(span, points[-1][0]) + EDGE, points[-1][1]))
+    return (*points, (max(span, points[-1][0]) + edge, points[-1][1]))
 
 
 def add_boost(

@@ -22,9 +22,17 @@ from boardsim.parts.elements import (
     voltage,
 )
 from boardsim.parts.rules import Limit, MeanRule, PeakRule, ReserveRule
-from boardsim.quantities import CAPACITANCE, POSITIVE_RESISTANCE, POWER, RESISTANCE, VOLTAGE, Quantity, assume
+from boardsim.quantities import (
+    CAPACITANCE,
+    POSITIVE_RESISTANCE,
+    POSITIVE_TIME,
+    POWER,
+    RESISTANCE,
+    VOLTAGE,
+    Quantity,
+    assume,
+)
 
-EDGE = 100e-9  # [s] that the switch takes to open or close, from memory: short against anything a coil does
 _MIN_ESR = 1e-4  # [ohm], keeps the branch resistive where 0 ohm was given
 _SUPPLY = "of its own: what charges it is not taken from the coil rail; where a converter makes it of that rail, add its load to the supply's"
 
@@ -56,6 +64,9 @@ class Boost(Part):
     diode: named_part(Diode) = Field(description="from the coil rail to the bank")  # type: ignore[valid-type]
     switch_resistance: Annotated[Quantity, POSITIVE_RESISTANCE] = assume(
         "50 mohm", POSITIVE_RESISTANCE, "of the switch between capacitor and bank, from memory"
+    )
+    switch_edge: Annotated[Quantity, POSITIVE_TIME] = assume(
+        "100 ns", POSITIVE_TIME, "that the switch takes to open or close, from memory"
     )
 
     def reserve(self, channels: tuple[int, ...]) -> ReserveRule:
@@ -114,7 +125,7 @@ class Boost(Part):
                 ),
             ),
             assumptions=(
-                *listed("boost", resistance_of_its_switch=self.switch_resistance),
+                *listed("boost", resistance_of_its_switch=self.switch_resistance, edge_of_its_switch=self.switch_edge),
                 Assumption("boost", "supply", "not of the coil rail", _SUPPLY),
             ),
         )

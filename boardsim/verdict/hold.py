@@ -150,8 +150,13 @@ def duty_for(settled: float, duty: float, lowest: float, wanted: float) -> float
 
 
 def judge_chops(board: Board, firing: Firing) -> Iterator[Finding]:
-    """The held pulse whose duty is farthest from what was asked for, as a share of that; nothing where none lasts a period."""
-    timed = [(abs(p.duty - p.hold.duty) / p.hold.duty, p.duty, p) for p in firing.held.pulses if p.duty is not None]
+    """The held pulse whose duty is farthest from what was asked for, as a share of that; nothing where none lasts a period.
+
+    Notes
+    -----
+    A frame may come later by up to the jitter, each by itself, so that the on-time of any one period may change by as much.
+    """
+    timed = [(_off(p, firing), p.duty, p) for p in firing.held.pulses if p.duty is not None]
     if not timed:
         return
     off, duty, pulse = max(timed, key=lambda one: one[0])
@@ -159,7 +164,7 @@ def judge_chops(board: Board, firing: Firing) -> Iterator[Finding]:
     margin: float | None = (limit.typ - off) / limit.typ
     said = (
         f"{label}: from {in_units(pulse.start, 's', 4)} on it is held with a duty of {duty:.1%} where {pulse.hold.duty:.1%} were "
-        f"asked for, {off:.1%} of it away; "
+        f"asked for, up to {off:.1%} of it away{' with jitter' if firing.jitter and not pulse.line else ''}; "
     )
     if limit.assumed() and limit.typ < off < 1:
         # Nobody gave a limit, as of the widths of pulses.
@@ -189,6 +194,13 @@ def judge_chops(board: Board, firing: Firing) -> Iterator[Finding]:
         said,
         source=str(limit.origin),
     )
+
+
+def _off(pulse: HeldPulse, firing: Firing) -> float:
+    """How far a hold's duty may be from what was asked for, as a share of that; jitter moves edges of frames only. [1]"""
+    assert pulse.duty is not None
+    late = 0.0 if pulse.line else firing.jitter / pulse.period
+    return (abs(pulse.duty - pulse.hold.duty) + late) / pulse.hold.duty
 
 
 def told_of_holds(board: Board, firing: Firing) -> Iterator[str]:

@@ -10,6 +10,7 @@ import pytest
 from firing_boards import board
 from hypothesis import given
 from hypothesis import strategies as st
+from matrix_boards import board as matrix
 
 from boardsim.board.reader import Board
 from boardsim.errors import InputError, QuantityError
@@ -196,3 +197,18 @@ def test_a_held_event_that_cannot_be_is_refused_with_its_line(tmp_path: Path, li
     with pytest.raises(InputError, match=said) as err:
         read_events(path, the_board)
     assert err.value.problems[0].line == 2
+
+
+def test_row_and_column_of_a_held_channel_are_chopped_together_and_asked_at_the_end_of_its_peak(tmp_path: Path) -> None:
+    the_board = matrix(tmp_path)
+    path = tmp_path / "held.toml"
+    path.write_text(f"[[pulses]]\n{held('0')}\n[[pulses]]\nchannels = '2'\nstart = '40 ms'\nwidth = '5 ms'")
+    firing = fire(the_board, read_pattern(path, the_board))
+    (only,) = firing.held.pulses
+    assert only.duty == pytest.approx(0.3, rel=0.05)
+    assert len(firing.switched(0)) > 10
+    for line in the_board.channel(0).drivers:
+        assert firing.spans(line.number)[0] == pytest.approx(firing.on[0][0])
+        assert firing.driven_until(line.number)[0] == pytest.approx(firing.switched(0)[0, 1])
+        levels = [t for t, _ in firing.levels[line.output][1 : 1 + 2 * len(firing.switched(0))]]
+        assert levels == pytest.approx(firing.switched(0).ravel().tolist())

@@ -153,6 +153,9 @@ def test_the_duty_that_a_chop_reached_is_judged_as_a_pulse_is(tmp_path: Path) ->
     assert found.value == pytest.approx(0.2)
     assert (found.label, found.verdict) == ("channel 3", "limit-missing")  # nobody gave pulse_error
     assert list(judge_chops(the_board, replace(firing, held=Held()))) == []
+    # Frames that may come 15 us late change the on-time of a period of 59 x 17 us by as much.
+    (found,) = judge_chops(the_board, replace(firing, jitter=15e-6))
+    assert found.value == pytest.approx((18 / 59 - 0.3 + 15 / (59 * 17)) / 0.3)
 
 
 def test_the_report_says_how_many_frames_a_period_has(tmp_path: Path) -> None:
