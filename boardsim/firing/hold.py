@@ -118,7 +118,7 @@ def frame_chop(hold: Hold, slot: float) -> FrameChop:
     least = fewest_frames(hold.duty)
     if frames < least:
         raise QuantityError(
-            f"a period of {in_units(hold.period, 's')} has room for {frames} register frames of {in_units(slot, 's')}, and a duty of "
+            f"a period of {in_units(hold.period, 's')} has room for {frames} register frame{'' if frames == 1 else 's'} of {in_units(slot, 's')}, and a duty of "
             f"{hold.duty:.3g} needs at least {least}, since each edge takes one; hold_frequency may be up to "
             f"{_written_down(1 / (least * slot))} through the chain of registers"
         )

@@ -71,8 +71,17 @@ def outputs_of(
     lined = on_lines(board)
     framed = {c: [(p.start, p.stop) for p in mine] for c, mine in asked.items() if c not in lined}
     whole = {**on, **{c: as_commanded(on[c], spans) for c, spans in framed.items()}}
+    whole |= {c: _shown(on[c], switched[c]) for chopped in lines for c in chopped.line.channels}
     used = tuple(dict.fromkeys(chops.values()))
     return Outputs(given, whole, held_pulses(board, switched, whole, asked, used, tuple(lines), let_go))
+
+
+def _shown(on: Floats, switched: Floats) -> Floats:
+    """On-times of a register output of which its switch gets anything: one that nobody commanded may fall into a line's off-time."""
+    first = np.searchsorted(switched[:, 0], on[:, 0])
+    starts = np.append(switched[:, 0], np.inf)[first]
+    shown: Floats = on[starts < on[:, 1]]
+    return shown
 
 
 def _behind(

@@ -7,7 +7,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 from firing_boards import board
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from boardsim.board.reader import Board
@@ -15,7 +15,8 @@ from boardsim.circuit.assemble import assemble, refuse_too_many, windows
 from boardsim.errors import InputError
 from boardsim.firing.csv_events import read_events
 from boardsim.firing.enable import gated, without
-from boardsim.firing.pattern import read_pattern
+from boardsim.firing.hold import Hold
+from boardsim.firing.pattern import Pattern, Pulse, by_start, read_pattern
 from boardsim.firing.schedule import Firing, fire
 from boardsim.parts.base import NOMINAL
 
@@ -124,6 +125,7 @@ edges = st.lists(st.integers(0, 60), min_size=0, max_size=12, unique=True).map(
 )
 
 
+@settings(deadline=None)
 @given(spans=edges, gaps=edges)
 def test_what_is_left_without_gaps_is_on_where_spans_are_and_gaps_are_not(
     spans: list[tuple[float, float]], gaps: list[tuple[float, float]]
@@ -200,3 +202,45 @@ def test_only_outputs_that_let_go_bring_an_enable_of_their_own_into_the_deck(tmp
     assert "c0_oe" in netlist("output-enable")
     assert "c8_oe" not in netlist("output-enable")
     assert "c0_oe" not in netlist("gates")
+
+
+HOLDS = (None, Hold(2e-3, 0.3, 1e3))
+pulses_of_some = st.lists(
+    st.builds(
+        Pulse,
+        channel=st.sampled_from([0, 1, 5, 8, 13]),
+        start=st.floats(0.0, 0.02).map(lambda t: round(t, 6)),
+        width=st.sampled_from([0.3e-3, 2.5e-3, 7.777e-3]),
+        hold=st.sampled_from(HOLDS),
+    ).filter(lambda p: p.hold is None or p.hold.peak < p.width),
+    min_size=1,
+    max_size=8,
+)
+
+
+@pytest.fixture(scope="module")
+def some_boards(tmp_path_factory: pytest.TempPathFactory) -> list[Board]:
+    """Boards with and without lines, ticks and bits that come late: outputs may be wrong, and yet nothing contradicts itself."""
+    folder = tmp_path_factory.mktemp("boards")
+    timers = ("", 'tick = "10 us"\nframe_gap = "3 us"\njitter = "5 us"', "spi_mode = 1")
+    lines = ((), ('channels = "0-7"',), ('channels = "0-7"\nthrough = "output-enable"', 'channels = "8-11"'))
+    return [lined(folder, *some, control=PIN, controller=timer) for timer in timers for some in lines]
+
+
+@given(which=st.integers(0, 8), pulses=pulses_of_some)
+@settings(max_examples=60, deadline=None)
+def test_whatever_is_fired_pulses_cover_what_switches_do_and_end_their_full_drive_within(
+    some_boards: list[Board], which: int, pulses: list[Pulse]
+) -> None:
+    the_board = some_boards[which]
+    firing = fire(the_board, Pattern(Path("some.toml"), "some", None, by_start(pulses)))
+    slack = LINE * 1.01
+    for c in the_board.channels:
+        on, switched, until = firing.on[c.number], firing.switched(c.number), firing.driven_until(c.number)
+        assert np.all(np.diff(switched.ravel()) > 0)
+        assert np.all(np.diff(on.ravel()) > 0)
+        assert len(until) == len(on)
+        assert np.all((until > on[:, 0]) & (until <= on[:, 1] + slack))
+        for start, stop in switched:
+            assert np.any((start >= on[:, 0]) & (stop <= on[:, 1] + slack))
+    assert all(p.duty is None or 0 <= p.duty <= 1 + 1e-9 for p in firing.held.pulses)

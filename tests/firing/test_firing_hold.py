@@ -8,7 +8,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 from firing_boards import board
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from matrix_boards import board as matrix
 
@@ -65,6 +65,7 @@ def test_too_few_frames_in_a_period_are_refused_with_the_highest_frequency_that_
     assert frame_chop(Hold(8e-3, 0.1, 10e3), SLOT).on == 1
 
 
+@settings(deadline=None)
 @given(duty=st.floats(0.01, 0.99), frequency=st.floats(10, 2e4), start=st.floats(0, 0.1))
 def test_a_chop_never_asks_for_edges_closer_than_a_frame_and_keeps_its_duty(
     duty: float, frequency: float, start: float
