@@ -16,6 +16,8 @@ _INPUT_NAMES = {
     "inductance": "coil inductance",
     "bulk": "bulk capacitance",
     "esr": "bulk series resistance",
+    "reservoir": "reservoir's capacitance",
+    "reservoir_esr": "reservoir's series resistance",
     "clamp_voltage": "clamp voltage",
     "breakdown": "breakdown voltage",
     "logic": "logic rail",
@@ -37,6 +39,9 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
         "esr": [board.bulk.esr],
         "logic": [board.logic.voltage],
     }
+    if board.boost is not None:
+        found["supply"].append(board.boost.voltage)
+        found |= {"reservoir": [board.boost.capacitance], "reservoir_esr": [board.boost.esr]}
     for parts in ((c.coil for c in board.channels), *((d.switch, d.clamp) for d in board.drivers)):
         for part in parts:
             for key, quantity in (*part.tolerances().items(), *part.tolerances_too()):
@@ -54,7 +59,7 @@ def nominal_only(board: Board) -> tuple[str, ...]:
     return (*names, *(() if board.around else ("winding temperature",)))
 
 
-def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
+def corners(board: Board, shortest: float = math.inf, held: bool = False) -> tuple[Corner, ...]:
     """The corners to run.
 
     Parameters
@@ -62,6 +67,8 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     board : Board
     shortest : float
         Width of the shortest pulse. [s]
+    held : bool
+        Whether any pulse is held by a chop.
 
     Notes
     -----
@@ -70,7 +77,8 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     clamps and low breakdown for energy and release; supply low with hot windings for pull-in; supply low with cold
     windings for the rail, which then has to feed the most. A coil of high inductance holds the most energy and lets go
     latest, unless pulses end before its current has settled (five times L/R): then the first two are run with low
-    inductance as well, which lets the current rise further. Corners that come out alike are run once.
+    inductance as well, which lets the current rise further. A chop's current falls lowest with the supply low, coils hot and low
+    inductance. Corners that come out alike are run once.
 
     Semiconductors are hot in the first and in the third: a Zener then clamps highest, a diode lowest, and a MOSFET's
     on-resistance is largest; they are cold in the others, where breakdown is lowest and a bipolar transistor needs the
@@ -78,11 +86,14 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
     go together for long, which makes the first corner an upper bound.
 
     Gates are driven hardest with the supply high and weakest with it low; with it high a leg's gates also turn off as late and on as
-    early as they may, and in the first corner their thresholds are lowest besides.
+    early as they may, and in the first corner their thresholds are lowest besides. A boost's reservoir is smallest throughout, which is
+    what a burst empties furthest.
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
-    strong |= {"gate_supply": "max", "opposing_force": "min", **_GATES}
+    reservoir: dict[str, Bound] = {"reservoir": "min", "reservoir_esr": "max"}
+    strong |= {"gate_supply": "max", "opposing_force": "min", **_GATES, **reservoir}
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min", "gate_supply": "min"}
+    weak |= reservoir
     # Hot: the least threshold leaks most, the largest on-resistance heats most.
     stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max", "on_resistance": "max", "threshold": "min"}
     soft: dict[str, Bound] = {"clamp_voltage": "min", "breakdown": "min"}
@@ -116,6 +127,10 @@ def corners(board: Board, shortest: float = math.inf) -> tuple[Corner, ...]:
             Corner(f"{high}, clamps high and hot", {**strong, **stiff, "inductance": "min"}, "cold", junction=warm),
             Corner(f"{high}, clamps low and cold", {**strong, **soft, "inductance": "min"}, "cold", junction=cool),
         ]
+    if held:
+        ends: dict[str, Bound] = {**weak, "coil_resistance": "max", "inductance": "min", "on_resistance": "max"}
+        ends |= {"clamp_voltage": "max", "opposing_force": "max"}
+        wanted.append(Corner("supply low, coils hot, low inductance", ends, "hot", junction=warm))
     return _distinct(board, wanted)
 
 
@@ -179,7 +194,7 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     used += [q for q in (board.supply.current_ceiling,) if q is not None]
     for channel in board.channels:
         coil = channel.coil
-        used += [q for q in (coil.pull_in, coil.release, coil.longest_on, coil.least_off) if q is not None]
+        used += [q for q in (coil.pull_in, coil.release, coil.hold, coil.longest_on, coil.least_off) if q is not None]
         used += coil.taken_at_ends()
     parts: list[tuple[str, Record]] = [
         ("supply", board.supply),
@@ -190,6 +205,9 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     for channel in board.channels:
         parts += [(f"coil {channel.coil_name}", channel.coil)]
         parts += [("series diode", channel.diode)] if channel.diode is not None else []
+    if board.boost is not None:
+        parts += [("boost", board.boost)]
+        used += [q for q in (board.boost.least,) if q is not None]
     for driver in board.drivers:
         parts += [("switch", driver.switch), ("clamp", driver.clamp)]
         used += driver.switch.taken_at_ends()

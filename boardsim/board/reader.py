@@ -10,8 +10,10 @@ from typing import Any
 
 from pydantic import ValidationError
 
+from boardsim.board.boost import boosted_channels
 from boardsim.board.bridges import backwards, refuse_wrong_bridges, with_opposites
 from boardsim.board.chain_outputs import refuse_wrong_outputs
+from boardsim.board.enable import EnableLine, enable_lines
 from boardsim.board.matrix import Crossing, Line, claim, cross, packages_of
 from boardsim.board.power_up import PowerUpTable
 from boardsim.board.ranges import read_range, write_range
@@ -20,6 +22,7 @@ from boardsim.board.shelves import Shelves, problems_in, read_shelves
 from boardsim.board.toml_file import Keys, TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
 from boardsim.parts.base import Assumption, Part, Surroundings, listed
+from boardsim.parts.boost import Boost
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
@@ -121,6 +124,9 @@ class Board:
     controller: Controller | None = None  # none: what drives the chain was not described
     all_off: tuple[int, ...] = ()
     power_up: PowerUpTable = field(default_factory=PowerUpTable)
+    enable_lines: tuple[EnableLine, ...] = ()
+    boost: Boost | None = None
+    boosted: tuple[int, ...] = ()  # channels of its bank
 
     @property
     def spi_mode(self) -> int:
@@ -287,13 +293,15 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
     problems += _of_the_logic_rail(board, file)
     problems += refuse_wrong_outputs(board, file)
     problems += refuse_wrong_bridges(board, file)
+    enables = enable_lines(board, channels, file, problems)
+    boosted = boosted_channels(board, channels, file, problems)
     if problems:
         raise InputError(sorted(problems, key=lambda p: p.line or 0))
     around = None
     assumed = listed("chain", latch_time=board.chain.latch_time) + listed(
         "limits", guard_band=board.limits.guard_band, pulse_error=board.limits.pulse_error
     )
-    assumed += _of_the_chain(board)
+    assumed += (*_of_the_chain(board), *(number for line in enables for number in line.assumed()))
     if board.ambient is not None:
         around = Surroundings(board.ambient.min, board.ambient.max, board.junction_rise.typ)
         assumed += listed("board", junction_rise=board.junction_rise)
@@ -325,6 +333,9 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         board.controller,
         all_off,
         board.power_up,
+        enables,
+        board.boost,
+        boosted,
     )
 
 

@@ -6,9 +6,11 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo, model_validator
 
+from boardsim.board.enable import EnableTable
 from boardsim.board.power_up import ControlLine, PowerUpTable, check_lines
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Part, any_of, named_part
+from boardsim.parts.boost import Boost
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
 from boardsim.parts.coil import Coil
@@ -298,6 +300,10 @@ class BoardFile(Record):
     )
     parts: dict[Name, AnyComponent] = Field(default_factory=dict)  # type: ignore[valid-type]
     channels: Annotated[dict[str, ChannelRange], Field(min_length=1)]
+    enable_lines: dict[Name, EnableTable] = Field(
+        default_factory=dict, description="lines that the controller's timer chops while pulses are held, by name"
+    )
+    boost: Boost | None = Field(None, description="a reservoir of a higher voltage for the peaks of held pulses")
     power_up: PowerUpTable = PowerUpTable()
     limits: Limits = Limits()
     derating: Deratings = Deratings()

@@ -8,12 +8,15 @@ from dataclasses import replace
 from functools import partial
 from typing import Literal
 
+from boardsim.board.boost import feeds
 from boardsim.board.matrix import LINES_FROM, Line
 from boardsim.board.reader import Board, Channel
+from boardsim.circuit.boost import BANK, OPEN, add_boost, closed_points
 from boardsim.circuit.bridge import add_bridge_channel, drawn
 from boardsim.circuit.build import Builder
 from boardsim.circuit.deck import Deck, PlacedRule, Window
 from boardsim.circuit.drivers import add_driver, refuse_too_short
+from boardsim.circuit.enable import letting_go, logic_source
 from boardsim.circuit.logic import LOGIC, clear_line, known_output, logic_rules, regulated
 from boardsim.circuit.matrix import add_crossing, add_line
 from boardsim.circuit.packages import of_package, of_sum
@@ -189,10 +192,12 @@ def assemble(board: Board, firing: Firing, corner: Corner, window: Window, detai
     """
     refuse_too_short(board, firing)
     parts = Assembly()
-    add_rail(parts, board, corner)
+    add_rail(parts, board, corner, closed=closed_points(board, firing.held, window))
     if board.logic.derived:
         add_logic(parts, board, corner)
         parts.add(clear_line(board, corner), None, "clear line", "chain")
+    elif firing.held.let_go and detail == "edges":
+        parts.add(logic_source(board, corner), None, "logic rail", "chain")
     outputs: Outputs = partial(_known_edges, board, firing, corner, window)
     frames: Frames = ()
     if detail == "clocked":
@@ -232,6 +237,11 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
             "a capture holds what the bus did, and its registers were followed bit by bit; leave --clocked out, which would send "
             "frames of its own"
         )
+    if firing.held.lines:
+        raise InputError(
+            f"the enable line {firing.held.lines[0].line.name} chops outputs behind the registers, which are followed flip-flop by "
+            "flip-flop only with their outputs enabled; leave --clocked out"
+        )
     edges = len(firing.sent) * board.chain.outputs
     if edges * len(board.channels) > MOST_CLOCKED:
         most = MOST_CLOCKED // (board.chain.outputs * len(board.channels))
@@ -244,6 +254,11 @@ def refuse_too_many(board: Board, firing: Firing) -> None:
 def _known_edges(board: Board, firing: Firing, corner: Corner, window: Window, driver: Channel | Line) -> Stamp:
     """An output that does what the bits say, as a source."""
     register, name = board.chain.register_, f"{driver.stem}_q"
+    if driver.output in firing.held.let_go:
+        held, off = firing.held.let_go[driver.output]
+        edges = (held, ((0.0, True), *((t, on) for a, b in off for t, on in ((a, False), (b, True)))))
+        bit, enabled = (gate_points(of, window, 1.0, register.output_edge.typ) for of in edges)
+        return letting_go(board, driver, bit, enabled)
     volts = 1.0 if board.logic.derived else board.logic.level(corner)
     points = gate_points(firing.levels[driver.output], window, volts, register.output_edge.typ)
     points = looked_at(points, driver.switch.follows_within(), driver.switch.moments())
@@ -288,12 +303,18 @@ def add_lines(parts: Assembly, board: Board, frames: Frames, span: float, on_wir
     return names
 
 
-def add_rail(parts: Assembly, board: Board, corner: Corner, setting: str = "") -> None:
-    """Supply, cable and bulk capacitor; `setting` is the node whose voltage the supply follows, its own if empty."""
+def add_rail(
+    parts: Assembly, board: Board, corner: Corner, setting: str = "", closed: tuple[tuple[float, float], ...] = OPEN
+) -> None:
+    """Supply, cable, bulk capacitor and a boosted bank; the supply follows node `setting`, its own voltage if empty.
+
+    `closed` is the bank's switch over time. [s], [1]
+    """
     parts.add(board.supply.stamp(SUPPLY, corner, setting), None, board.supply.title or "supply", "supply")
     around = board.around
     parts.add(board.cable.stamp(SUPPLY, RAIL, corner, around), None, board.cable.title or "cable", "cable")
     parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
+    add_boost(parts, board, corner, RAIL, closed)
 
 
 def add_logic(parts: Assembly, board: Board, corner: Corner) -> None:
@@ -337,14 +358,14 @@ def add_channel(parts: Assembly, board: Board, corner: Corner, channel: Channel,
     k, name, label = channel.number, channel.stem, channel.label
     load = f"{name}_d"
     coil_end = load if channel.leads is None else f"{name}_k"
-    low = channel.switch.side == "low"
+    low, rail = channel.switch.side == "low", feeds(board, channel, RAIL, BANK)
     parts.add(driven, k, board.chain.register_.title or "register", label)
-    ends = (RAIL, coil_end) if low else (coil_end, GROUND)
+    ends = (rail, coil_end) if low else (coil_end, GROUND)
     coil = channel.coil.stamp(name, channel.coil_name, *ends, corner, board.around)
     parts.add(coil, k, channel.coil_name, label)
     if channel.leads is not None:
         parts.add(channel.leads.stamp(f"{name}_lead", coil_end, load, corner, board.around), k, "leads", label)
-    add_driver(parts, corner, channel, load, coil_end if channel.clamp.at_the_coil() else load, RAIL)
+    add_driver(parts, corner, channel, load, coil_end if channel.clamp.at_the_coil() else load, rail)
 
 
 def _rail_rule(board: Board) -> Rule:

@@ -14,22 +14,33 @@ from pydantic import Field, ValidationError
 from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import TomlFile
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.firing.pattern import MOST_PULSES, Pattern, Pulse, by_start, refuse_early_end, snapped
+from boardsim.firing.hold import KEYS, MOST_CHOPS
+from boardsim.firing.pattern import (
+    MOST_PULSES,
+    Pattern,
+    Pulse,
+    by_start,
+    checked_hold,
+    refuse_early_end,
+    refuse_mixed_holds,
+    snapped,
+)
 from boardsim.parts.record import Name, Record, name_from, nearest, shortened
-from boardsim.quantities import TIME, Quantity, parse
+from boardsim.quantities import FREQUENCY, SHARE, TIME, Dimension, Quantity, computed, parse
 
 LARGEST_FILE = 128 * 1024 * 1024  # [byte]; the most pulses that a pattern may have fill a third of it
 _MOST_PROBLEMS = 20  # told one by one; a column in the wrong unit is a mistake in every line
 _DELIMITERS = ",;\t"
 _WHO = ("channel", "number", "label")  # number or label, whichever only one channel has; and either by its name
-_COLUMNS = ("channel", "start", "width", "stop", "number", "label")
+_COLUMNS = ("channel", "start", "width", "stop", "number", "label", *KEYS)
+_DIMENSIONS: Mapping[str, Dimension] = {"hold": SHARE, "hold_frequency": FREQUENCY}  # of the others it is a time
 _TITLE = re.compile(r"(\w+)\s*(?:[\[(]\s*([^\])]+?)\s*[\])])?")
 _NUMBER = re.compile(r"[0-9]*\.?[0-9]+(?:[eE][+-]?[0-9]+)?|[0-9]+\.")
 
 
 @dataclass(frozen=True)
 class _Column:
-    """Where a quantity stands in each line; `unit` in seconds where the title names one."""
+    """Where a quantity stands in each line; `unit` in SI units where the title names one."""
 
     place: int
     unit: float | None
@@ -48,7 +59,8 @@ def read_events(path: Path, board: Board) -> Pattern:
     The first line that is neither empty nor begins with "#" names the columns: `channel` (its number, or its label on
     the board; `number` or `label` where a label looks like another channel's number), `start`, and either `width` or `stop`,
     in any order. Times carry their unit ("10 ms"), or the title does,
-    in brackets: `start [ms]`. Columns are separated by comma, semicolon or tab, numbers have a decimal point.
+    in brackets: `start [ms]`. The columns `peak`, `hold` and `hold_frequency` are for pulses that are held; of others they are
+    empty. Columns are separated by comma, semicolon or tab, numbers have a decimal point.
     """
     text = _text(path)
     lines = text.split("\n")
@@ -70,6 +82,7 @@ def read_events(path: Path, board: Board) -> Pattern:
     }
     problems: list[Problem] = []
     pulses: list[Pulse] = []
+    chops = 0.0
     for k, line in wanted[1:]:
         try:
             pulses.append(_pulse(_cells(line, delimiter), columns, names, board))
@@ -78,6 +91,12 @@ def read_events(path: Path, board: Board) -> Pattern:
             if len(problems) == _MOST_PROBLEMS:
                 problems.append(Problem(str(path), k, "mistakes below this line are not told; mend these first"))
                 break
+            continue
+        if (last := pulses[-1]).hold is not None:
+            chops += (last.width - last.hold.peak) * last.hold.frequency
+        if chops > MOST_CHOPS:
+            problems.append(Problem(str(path), k, f"with this line the list has more than {MOST_CHOPS} chops"))
+            break
         if len(pulses) > MOST_PULSES:
             problems.append(Problem(str(path), k, f"with this line the list has more than {MOST_PULSES} pulses"))
             break
@@ -85,6 +104,10 @@ def read_events(path: Path, board: Board) -> Pattern:
         problems.append(Problem(str(path), number, "no pulse follows the line of titles; write one per line"))
     if problems:
         raise InputError(problems)
+    try:
+        refuse_mixed_holds(pulses, board)
+    except QuantityError as err:
+        raise InputError([Problem(str(path), None, str(err))]) from None
     return Pattern(path, name_from(path.stem, "events"), None, by_start(pulses), span="the list's own")
 
 
@@ -173,7 +196,7 @@ def _columns(titles: list[str], path: Path, line: int) -> Mapping[str, _Column]:
         else:
             unit = match[2] if match else None
             try:
-                found[name] = _Column(place, None if unit is None else parse(f"1 {unit}", TIME).typ)
+                found[name] = _Column(place, None if unit is None else _one(unit, name))
             except QuantityError as err:
                 problems.append(f'column "{shortened(title)}": {err}')
             if name in _WHO and unit is not None:
@@ -190,6 +213,22 @@ def _columns(titles: list[str], path: Path, line: int) -> Mapping[str, _Column]:
     return found
 
 
+def _one(unit: str, column: str) -> float:
+    """A unit of a column's quantity, in SI units.
+
+    Raises
+    ------
+    QuantityError
+        If it does not measure that.
+    """
+    return parse(f"1 {unit}", _dimension(column)).typ
+
+
+def _dimension(column: str) -> Dimension:
+    """What a column measures."""
+    return _DIMENSIONS.get(column, TIME)
+
+
 def _pulse(
     cells: list[str], columns: Mapping[str, _Column], names: Mapping[str, Mapping[str, int]], board: Board
 ) -> Pulse:
@@ -203,13 +242,16 @@ def _pulse(
     if len(cells) != len(columns):
         raise QuantityError(f"has {len(cells)} columns where the titles name {len(columns)}")
     channel = _channel(cells, columns, names, board)
-    times = dict(_times(cells, columns))
+    times = dict(_values(cells, columns))
     start = snapped(times["start"])
     width = snapped(times["width"] if "width" in times else times["stop"] - start)
     if width <= 0:
         text = "a pulse of 0 s is none; give its on-time" if "width" in times else "the pulse stops before it starts"
         raise QuantityError(text)
-    return Pulse(channel, start, width)
+    if not any(key in times for key in KEYS):
+        return Pulse(channel, start, width)
+    said = {key: computed(times[key], _dimension(key).unit, "given") for key in KEYS if key in times}
+    return Pulse(channel, start, width, checked_hold(said, width, board, (channel,)))
 
 
 def _channel(
@@ -241,26 +283,27 @@ def _channel(
     return next(iter(found.values()))
 
 
-def _times(cells: list[str], columns: Mapping[str, _Column]) -> Iterator[tuple[str, float]]:
-    """Every time of a line. [s]
+def _values(cells: list[str], columns: Mapping[str, _Column]) -> Iterator[tuple[str, float]]:
+    """Every time of a line, and what it says of a hold: of a pulse that is not held these are empty. [s], [1], [Hz]
 
     Raises
     ------
     QuantityError
-        If one is no time.
+        If one is none.
     """
     for name, column in columns.items():
-        if name in _WHO:
-            continue
         text = cells[column.place]
+        if name in _WHO or (name in KEYS and not text):
+            continue
         if column.unit is None:
-            found = parse(text, TIME)
+            found = parse(text, _dimension(name))
             if found.toleranced:
-                raise QuantityError(f"{name}: a commanded time has no tolerance; leave it out")
+                what = "number" if name in _DIMENSIONS else "time"
+                raise QuantityError(f"{name}: a commanded {what} has no tolerance; leave it out")
             yield name, found.typ
         elif _NUMBER.fullmatch(text):
             value = float(text) * column.unit
-            TIME.check(value, text)
+            _dimension(name).check(value, text)
             yield name, value
         else:
             raise QuantityError(

@@ -2,19 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 from pydantic import Field, ValidationError
 
+from boardsim.board.enable import on_lines
 from boardsim.board.ranges import read_range, write_range
 from boardsim.board.reader import Board, problems_of
 from boardsim.board.toml_file import TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
+from boardsim.firing.hold import KEYS, MOST_CHOPS, Hold, frame_chop, hold_of, slot_time
 from boardsim.parts.record import Name, Record, name_from
-from boardsim.quantities import TIME, Quantity, in_units
+from boardsim.quantities import FREQUENCY, SHARE, TIME, Quantity, in_units
 
 if TYPE_CHECKING:
     from boardsim.firing.schedule import Firing
@@ -31,6 +33,9 @@ class PulseTrain(Record):
     repeat: Annotated[int, Field(strict=True, ge=1, le=MOST_PULSES)] = 1
     every: Annotated[Quantity, TIME] | None = None
     stagger: Annotated[Quantity, TIME] | None = None
+    peak: Annotated[Quantity, TIME] | None = Field(None, description="full drive at the start of a pulse that is held")
+    hold: Annotated[Quantity, SHARE] | None = Field(None, description="duty with which it is chopped after its peak")
+    hold_frequency: Annotated[Quantity, FREQUENCY] | None = Field(None, description="of the chop")
 
 
 class PatternFile(Record):
@@ -54,11 +59,12 @@ def snapped(t: float) -> float:
 
 @dataclass(frozen=True)
 class Pulse:
-    """One commanded pulse on a channel. [s]"""
+    """One commanded pulse on a channel, and what it does after its peak where it is held. [s]"""
 
     channel: int
     start: float
     width: float
+    hold: Hold | None = None
 
     @property
     def stop(self) -> float:
@@ -121,6 +127,10 @@ def pattern_of(file: TomlFile, board: Board) -> Pattern:
         raise InputError(problems)
     if duration is not None:
         refuse_early_end(file, duration, pulses)
+    try:
+        refuse_mixed_holds(pulses, board)
+    except QuantityError as err:
+        raise InputError([file.problem(("pulses",), str(err))]) from None
     return Pattern(file.path, raw.name or name_from(file.path.stem, "pattern"), duration, by_start(pulses))
 
 
@@ -141,6 +151,57 @@ def refuse_early_end(file: TomlFile, duration: float, pulses: Iterable[Pulse]) -
 def by_start(pulses: Iterable[Pulse]) -> tuple[Pulse, ...]:
     """Pulses in the order in which a pattern holds them."""
     return tuple(sorted(pulses, key=lambda p: (p.start, p.channel)))
+
+
+def checked_hold(
+    given: Mapping[str, Quantity | None], width: float, board: Board, channels: Iterable[int]
+) -> Hold | None:
+    """The hold of a pulse on a board, if it is held.
+
+    Parameters
+    ----------
+    given : mapping of key to Quantity or None
+        `peak` [s], `hold` [1], `hold_frequency` [Hz].
+    width : float
+        Of the pulse. [s]
+    channels : iterable of int
+        That are fired so.
+
+    Raises
+    ------
+    QuantityError
+        If they do not go together, or the board cannot chop so.
+    """
+    hold = hold_of(given, width)
+    if hold is not None and not set(channels) <= {*on_lines(board)}:
+        frame_chop(hold, slot_time(board.chain, board.controller))
+    return hold
+
+
+def refuse_mixed_holds(pulses: Iterable[Pulse], board: Board) -> None:
+    """Refuse pulses that are held in different ways on one enable line, which has one duty and one frequency.
+
+    Raises
+    ------
+    QuantityError
+        With the line, and both.
+    """
+    first: dict[str, Hold] = {}
+    lined = on_lines(board)
+    for p in pulses:
+        if p.hold is None or p.channel not in lined:
+            continue
+        name = lined[p.channel].name
+        other = first.setdefault(name, p.hold)
+        if (other.duty, other.frequency) != (p.hold.duty, p.hold.frequency):
+            raise QuantityError(
+                f"pulses on the enable line {name} are held with {_said(other)} and with {_said(p.hold)}; the line chops all of its "
+                "channels alike: give them one hold and one hold_frequency"
+            )
+
+
+def _said(hold: Hold) -> str:
+    return f"{100 * hold.duty:.3g} % at {hold.frequency:.4g} Hz"
 
 
 def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problems: list[Problem]) -> list[Pulse]:
@@ -174,10 +235,19 @@ def _expand(train: PulseTrain, index: int, board: Board, file: TomlFile, problem
         problems.append(file.problem_at((*keys, "repeat"), f"more than {MOST_PULSES} pulses"))
     if len(problems) > before:
         return []
+    try:
+        hold = checked_hold({key: getattr(train, key) for key in KEYS}, train.width.typ, board, channels)
+    except QuantityError as err:
+        at = next((key for key in ("hold_frequency", "hold", "peak") if getattr(train, key) is not None), "width")
+        problems.append(file.problem_at((*keys, at), str(err)))
+        return []
+    if hold is not None and (train.width.typ - hold.peak) * hold.frequency * len(channels) * train.repeat > MOST_CHOPS:
+        problems.append(file.problem_at((*keys, "hold_frequency"), f"more than {MOST_CHOPS} chops"))
+        return []
     every = train.every.typ if train.every else 0.0
     stagger = train.stagger.typ if train.stagger else 0.0
     return [
-        Pulse(channel, snapped(train.start.typ + k * every + i * stagger), train.width.typ)
+        Pulse(channel, snapped(train.start.typ + k * every + i * stagger), train.width.typ, hold)
         for k in range(train.repeat)
         for i, channel in enumerate(channels)
     ]

@@ -4,14 +4,18 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from boardsim.board.enable import on_lines
 from boardsim.board.reader import Board
 from boardsim.firing.bus import Recorded
-from boardsim.firing.lines import Images, active_levels, channel_times, ghost_of, line_times
+from boardsim.firing.held import Held, changes_of, commanded, run_together
+from boardsim.firing.hold import frame_chop, slot_time
+from boardsim.firing.lines import Images, active_levels, ghost_of, line_times
+from boardsim.firing.outputs import outputs_of
 from boardsim.firing.pattern import Pattern, Pulse, snapped
 from boardsim.firing.registers import ChainState, frame_time, last_bit, shift_in
 from boardsim.parts.controller import Controller
@@ -78,10 +82,11 @@ class Firing:
     duration : float
         Until when a run looks. [s]
     levels : mapping of output to tuple of (time, level)
-        Every output that a channel is wired to, from (0, initial level) on; times are latch edges plus
-        propagation. [s]
+        Every output that a channel is wired to, as its switch gets it, from (0, initial level) on; times are latch edges plus
+        propagation, or edges of an enable line. [s]
     on : mapping of channel to (n, 2) array
-        When the channel's switch is turned on and off; of a matrix, when row and column both are. [s]
+        When the channel's switch is turned on and off; of a matrix, when row and column both are. A pulse that is held counts as
+        one, from its start to its end. [s]
     moved : tuple of MovedPulse
     merged : tuple of Pulse
         Pulses that start while the same channel is still commanded on.
@@ -105,6 +110,8 @@ class Firing:
         Whose time it is that averages are taken over, such as "the pattern's".
     lines : mapping of line to (n, 2) array
         The on-times of all channels along each row and column of a matrix: when it carries current. [s]
+    held : Held
+        What is known of pulses that are held, such as when their switches are on.
     """
 
     duration: float
@@ -122,10 +129,20 @@ class Firing:
     sent: tuple[tuple[float, int], ...] = ()
     span: str = "the pattern's"
     lines: Mapping[int, Floats] = field(default_factory=dict)
+    held: Held = field(default_factory=Held)
 
     def spans(self, place: int) -> Floats:
         """On-times of a channel; of a line those of the channels along it, which overlap where several are on. (n, 2) [s]"""
         return self.lines[place] if place in self.lines else self.on[place]
+
+    def driven_until(self, place: int) -> Floats:
+        """When the full drive of each pulse of a channel or line ends: its peak's, of one that is held. (n,) [s]"""
+        ends: Floats = self.held.driven_until[place] if place in self.held.driven_until else self.spans(place)[:, 1]
+        return ends
+
+    def switched(self, channel: int) -> Floats:
+        """When a channel's switch is on, chop by chop where it is held. (n, 2) [s]"""
+        return self.held.switched[channel] if channel in self.held.switched else self.on[channel]
 
     @property
     def averaged_over(self) -> str:
@@ -153,6 +170,13 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     is due and the last frame is latched and its pause over. A frame carries every change that is due until it starts;
     changes that come while a frame is under way wait for the next one. All changes of a frame appear together, at its latch
     edge. Jitter is left out here: it moves every edge by up to as much again, which `verdict` adds to what it finds.
+    A pulse that is held is chopped after its peak: on a beat of register frames (`FrameChop`), or, behind an enable line,
+    together with all others on that line (`line_chop`).
+
+    Raises
+    ------
+    QuantityError
+        If a pulse is to be chopped faster than frames can be sent; whoever reads patterns refuses such first.
     """
     if pattern.recorded is not None:
         return pattern.recorded
@@ -161,7 +185,14 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     delay = chain.register_.propagation.typ
     image_of = Images(board)
     timed = [(p, on_ticks(p, controller.tick.typ)) for p in pattern.pulses]
-    asked, merged = _changes(timed)
+    slot = slot_time(chain, controller)
+    lined = on_lines(board)
+    framed = (p.hold for p in pattern.pulses if p.channel not in lined)
+    chops = {hold: frame_chop(hold, slot) for hold in framed if hold is not None}
+    together, merged = run_together(
+        [(p, t, commanded(t, None if t.hold is None or t.channel in lined else chops[t.hold])) for p, t in timed]
+    )
+    asked = changes_of(together)
     late = controller.spi_mode == 1
 
     state = shift_in(ChainState(chain.outputs), 0, chain)  # all off before the pattern starts
@@ -200,16 +231,18 @@ def fire(board: Board, pattern: Pattern) -> Firing:
     moved = tuple(_moved(timed, latched))
     asked_at = {(t.channel, t.start): p for p, t in reversed(timed)}  # of several on one tick the first
     lost = tuple(
-        Pulse(c, asked_at[c, on].start, 0.0) for c, off, on in _pauses(asked) if latched[c, off] == latched[c, on]
+        Pulse(c, asked_at[c, on].start, 0.0)
+        for c, off, on in _pauses(asked)
+        if latched[c, off] == latched[c, on] and (c, on) in asked_at  # not the pauses of a chop
     )
     last = max([latch + delay, *(p.stop for pair in timed for p in pair)])
     # Also where a duration was asked for: what the last turn-off does to its switch comes after it.
     duration = max(pattern.duration or 0.0, last + settling_time(board))
-    on = channel_times(board, levels, active, duration)
+    outputs = outputs_of(board, levels, active, together, latched, chops, duration)
     return Firing(
         duration,
-        {o: tuple(v) for o, v in levels.items()},
-        on,
+        outputs.levels,
+        outputs.on,
         moved,
         merged,
         lost,
@@ -220,7 +253,8 @@ def fire(board: Board, pattern: Pattern) -> Firing:
         controller.jitter.max,
         sent=tuple(sent),
         span=pattern.span,
-        lines=line_times(board, on),
+        lines=line_times(board, outputs.on),
+        held=outputs.held,
     )
 
 
@@ -235,7 +269,7 @@ def on_ticks(pulse: Pulse, tick: float) -> Pulse:
     Examples
     --------
     >>> on_ticks(Pulse(0, 1.4e-3, 2.6e-3), 1e-3)
-    Pulse(channel=0, start=0.001, width=0.003)
+    Pulse(channel=0, start=0.001, width=0.003, hold=None)
     """
     if tick <= 0:
         return pulse
@@ -243,7 +277,7 @@ def on_ticks(pulse: Pulse, tick: float) -> Pulse:
     def nearest(t: float) -> float:
         return snapped(math.floor(snapped(t) / tick + 0.5 + 1e-9) * tick)
 
-    return Pulse(pulse.channel, nearest(pulse.start), nearest(pulse.width))
+    return replace(pulse, start=nearest(pulse.start), width=nearest(pulse.width))
 
 
 def _moved(timed: Sequence[tuple[Pulse, Pulse]], latched: Mapping[tuple[int, float], float]) -> Iterator[MovedPulse]:
@@ -255,23 +289,6 @@ def _moved(timed: Sequence[tuple[Pulse, Pulse]], latched: Mapping[tuple[int, flo
         elif (t.channel, t.start) in latched and (t.channel, t.stop) in latched:
             a, b = latched[t.channel, t.start], latched[t.channel, t.stop]
             yield MovedPulse(pulse, a, b, a == b, rounded)
-
-
-def _changes(timed: Sequence[tuple[Pulse, Pulse]]) -> tuple[list[tuple[float, int, bool]], tuple[Pulse, ...]]:
-    """Changes that are due, by time, overlapping pulses of a channel joined; and the pulses as asked that overlap."""
-    merged: list[Pulse] = []
-    spans: dict[int, list[tuple[float, float]]] = {}
-    for pulse, p in timed:  # by start
-        if p.width == 0:
-            continue
-        mine = spans.setdefault(p.channel, [])
-        if mine and p.start <= mine[-1][1]:
-            merged.append(pulse)
-            mine[-1] = (mine[-1][0], max(mine[-1][1], p.stop))
-        else:
-            mine.append((p.start, p.stop))
-    changes = [(t, c, on) for c, ss in spans.items() for a, b in ss for t, on in ((a, True), (b, False))]
-    return sorted(changes, key=lambda e: (e[0], e[2], e[1])), tuple(merged)
 
 
 def _pauses(asked: list[tuple[float, int, bool]]) -> Iterator[tuple[int, float, float]]:

@@ -24,7 +24,7 @@ from boardsim.parts.elements import (
     voltage,
 )
 from boardsim.parts.known_coil import MeasuredLoss, MeasuredRise, inductance_from, loss_of_quality, resistance_from
-from boardsim.parts.rules import IdleRule, Limit, PullInRule, ReleaseRule, Rule
+from boardsim.parts.rules import HoldRule, IdleRule, Limit, MotionRule, PullInRule, ReleaseRule, Rule
 from boardsim.parts.saturation import AIR_SHARE, Curve, Saturation
 from boardsim.parts.winding import ENAMEL_SOURCE, Winding
 from boardsim.quantities import (
@@ -45,6 +45,8 @@ from boardsim.quantities import (
 
 _CORE_LOSS_FACTOR = 200
 IDLE_SHARE = 0.1  # of the settled current, where no release current is given: below it nothing is held, from memory
+
+HELD_BY_RELEASE = "no hold current given: its release current, above which it does not let go"
 
 
 def without_default(schema: dict[str, Any]) -> None:
@@ -91,6 +93,9 @@ class Coil(Part):
     saturation: Saturation | None = Field(None, description="how much of its inductance is left at a current")
     pull_in: Annotated[Quantity, CURRENT] | None = None
     release: Annotated[Quantity, CURRENT] | None = None
+    hold: Annotated[Quantity, CURRENT] | None = Field(
+        None, description="least current that keeps it in while it is held; its release current if absent"
+    )
     longest_on: Annotated[Quantity, POSITIVE_TIME] | None = Field(
         None, description="longest time that the firmware may leave it on at once"
     )
@@ -142,6 +147,10 @@ class Coil(Part):
             raise QuantityError(
                 "release must be smaller than pull_in: a coil lets go at less current than it pulls in with"
             )
+        if self.hold is not None and self.pull_in is not None and self.hold.min > self.pull_in.max:
+            raise QuantityError("hold must not be larger than pull_in: what pulls it in keeps it in as well")
+        if self.hold is not None and self.release is not None and self.hold.max < self.release.min:
+            raise QuantityError("hold must not be smaller than release: below that it lets go")
         return self
 
     def tolerances(self) -> dict[str, Quantity]:
@@ -284,10 +293,23 @@ class Coil(Part):
                 PullInRule("pull-in", "i_coil", pull_in),
                 ReleaseRule("overlap", "i_coil", release),
                 IdleRule("uncommanded", "i_coil", release, IDLE_SHARE),
+                *self._hold_rule(),
                 *self.more_rules(),
             ),
             assumptions=self._assumed(label),
         )
+
+    def _hold_rule(self) -> tuple[Rule, ...]:
+        """The current that keeps it in; none of a coil whose motion says so itself."""
+        if self.hold is not None:
+            limit = Limit.of(self.hold, "hold current", "A", None, self.hold.max)
+        elif any(isinstance(rule, MotionRule) for rule in self.more_rules()):
+            return ()
+        elif self.release is not None:
+            limit = Limit(self.release.max, "A", None, f"assumed: {HELD_BY_RELEASE}", "hold current")
+        else:
+            limit = Limit.of(None, "hold current", "A", None)
+        return (HoldRule("hold", "i_coil", limit),)
 
     def _assumed(self, label: str) -> tuple[Assumption, ...]:
         """What had to be supplied."""

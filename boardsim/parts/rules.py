@@ -236,6 +236,25 @@ class ReleaseRule:
 
 
 @dataclass(frozen=True)
+class HoldRule:
+    """While a pulse is held, from its peak to its end, the coil current must stay above the hold current."""
+
+    check: str
+    quantity: str
+    limit: Limit
+
+
+@dataclass(frozen=True)
+class ReserveRule:
+    """When the peak of a held pulse of one of `channels` begins, the reservoir that feeds them must still have a voltage."""
+
+    check: str
+    quantity: str
+    limit: Limit
+    channels: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
 class IdleRule:
     """Before its first pulse and after its last a channel's coil must carry less than the release current.
 
@@ -394,6 +413,8 @@ Rule = (
     | TogetherRule
     | PullInRule
     | ReleaseRule
+    | HoldRule
+    | ReserveRule
     | IdleRule
     | MotionRule
     | SneakRule

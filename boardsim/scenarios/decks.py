@@ -24,7 +24,7 @@ def write_deck(
     -----
     With the settings that findings are usually read with.
     """
-    wanted = list(corners(board, min(p.width for p in pattern.pulses)))
+    wanted = list(corners(board, min(p.width for p in pattern.pulses), any(p.hold is not None for p in pattern.pulses)))
     longest = slow_rail(board)
     wanted += [longest] if longest else []
     names = tuple(c.name for c in wanted)

@@ -29,6 +29,7 @@ from boardsim.scenarios.crew import Crew
 from boardsim.verdict.closeups import Closeup, take_closeups, wants_closeup
 from boardsim.verdict.findings import EdgeTimes, Finding, Result, Timing, Traces, overall
 from boardsim.verdict.firmware import judge_firmware, not_given
+from boardsim.verdict.hold import assumptions_of_holds, told_of_holds
 from boardsim.verdict.logic_rail import judge_sagged_chain
 from boardsim.verdict.motion_closeups import by_motion
 from boardsim.verdict.recorded import assumptions_of_capture, judge_recorded, told
@@ -83,7 +84,7 @@ def fire_pattern(
         refuse_too_many(board, firing)
     switching = [*judge_switching(board, firing), *judge_recorded(board, firing)]
     switching += judge_firmware(board, firing) if firmware else []
-    wanted = corners(board, min(p.width for p in pattern.pulses))
+    wanted = corners(board, min(p.width for p in pattern.pulses), any(p.hold is not None for p in pattern.pulses))
     began = time.perf_counter()
     made = partial(assemble, detail=detail)
     run = partial(run_corners, board, firing, also=switching, measure=measure, pictured=pictured, assembled=made)
@@ -106,7 +107,11 @@ def fire_pattern(
         firing.duration,
         overall(findings, proven, strict),
         tuple(findings),
-        (*assumptions_of(board, sampled), *assumptions_of_capture(board, firing)),
+        (
+            *assumptions_of(board, sampled),
+            *assumptions_of_capture(board, firing),
+            *assumptions_of_holds(board, firing),
+        ),
         tuple(r.audit for r in results),
         _firing_sentences(board, firing, firmware, detail),
         _traces(board, firing, shown),
@@ -157,6 +162,7 @@ def _firing_sentences(board: Board, firing: Firing, firmware: bool, detail: Deta
             f"their width changes by up to {in_units(abs(change) if abs(change) > 1e-12 else 0.0, 's')}"
         )
         lines += _rounded(board, firing)
+        lines += told_of_holds(board, firing)
     if detail == "clocked":
         lines.append("the registers were run flip-flop by flip-flop, clocked by their lines")
     return (*lines, *missing)

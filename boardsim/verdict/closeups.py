@@ -33,6 +33,7 @@ _BOARD_CAUSES: Mapping[str, tuple[Key, ...]] = {
     "logic-sag": ((None, "v_rail"), (None, "i_total")),
     "uncommanded-edge": ((None, "v_logic"), (None, "v_rail"), (None, "i_total")),
     "regulator": ((None, "v_logic"), (None, "i_total")),
+    "boost": ((None, "v_bank"), (None, "i_total")),
 }
 """What is shown beside a reading of the whole board, by its check."""
 _WORDS = {
@@ -47,6 +48,8 @@ _WORDS = {
     "i_d": "current of the switch",
     "v_gs": "gate voltage of the switch",
     "i_ground": "all outputs of the package",
+    "v_reservoir": "reservoir",
+    "v_bank": "bank of coils",
 }
 _SEVERAL = {"A": "currents", "V": "voltages"}
 

@@ -15,18 +15,22 @@ from boardsim.verdict.findings import Finding, Floats
 
 
 def judge_pull_in(
-    rule: PullInRule, placed: PlacedRule, samples: tuple[Floats, Floats], bench: Bench
+    rule: PullInRule, placed: PlacedRule, samples: tuple[Floats, Floats], ends: Floats, bench: Bench
 ) -> Iterator[Finding]:
-    """Of all pulses the one whose coil current at its end is lowest; nothing where the channel is never fired."""
+    """Of all pulses the one whose coil current at its end is lowest; nothing where the channel is never fired.
+
+    A pulse that is held is asked at the end of its peak: `ends` are those of whole pulses. (n,) [s]
+    """
     times, values = samples
     if not len(values):
         return
     k = int(np.argmin(values))
     value, at, bound = float(values[k]), float(times[k]), rule.limit.value
     margin = None if bound is None else (value - bound) / bound
-    said = f"{placed.label}: at the end of its pulse at {in_units(at, 's', 4)} the coil current is {in_units(value, 'A')}; "
+    its = "pulse" if at in ends else "peak"
+    said = f"{placed.label}: at the end of its {its} at {in_units(at, 's', 4)} the coil current is {in_units(value, 'A')}; "
     said += _held(
-        placed, bound, margin, "pulls in at", "pull-in", "a longer pulse, fewer channels at once, or a stiffer supply"
+        placed, bound, margin, "pulls in at", "pull-in", f"a longer {its}, fewer channels at once, or a stiffer supply"
     )
     yield bench.finding(placed, rule.limit, "coil current at the end of a pulse", value, margin, at, said, worse="low")
 

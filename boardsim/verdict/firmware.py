@@ -8,6 +8,7 @@ import numpy as np
 
 from boardsim.board.ranges import write_labels
 from boardsim.board.reader import Board, Channel
+from boardsim.firing.registers import frame_time
 from boardsim.firing.schedule import Firing
 from boardsim.quantities import Quantity, apart, in_units
 from boardsim.verdict.findings import Finding, Verdict, verdict_of
@@ -124,15 +125,13 @@ def last_latch(board: Board, firing: Firing) -> float:
 
     Notes
     -----
-    Of a pattern every frame carries a change, so its last edge is that of the last frame, which is earlier than the output
-    by the register's propagation.
+    Of a pattern it is a frame's time after the last one is started; that of a held pulse may change no output, where its chop
+    had it off already.
     """
     if firing.recorded is not None:
         latched = firing.recorded.frames.latched
         return float(latched[-1]) if len(latched) else 0.0
-    last = max((rows[-1][0] for rows in firing.levels.values()), default=0.0)
-    delay: float = board.chain.register_.propagation.typ
-    return max(last - delay, 0.0)
+    return firing.sent[-1][0] + frame_time(board.chain) if firing.sent else 0.0
 
 
 def _all_off(board: Board, firing: Firing) -> Iterator[Finding]:

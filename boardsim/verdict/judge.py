@@ -18,6 +18,7 @@ from boardsim.parts.rules import (
     FallRule,
     FloorRule,
     HeatRule,
+    HoldRule,
     IdleRule,
     LeastRule,
     MeanRule,
@@ -26,6 +27,7 @@ from boardsim.parts.rules import (
     PullInRule,
     PulseRule,
     ReleaseRule,
+    ReserveRule,
     Rule,
     ShootThroughRule,
     SneakRule,
@@ -35,11 +37,13 @@ from boardsim.quantities import in_units
 from boardsim.verdict.audit import SMALL
 from boardsim.verdict.avalanche import judge_breakdown, judge_together
 from boardsim.verdict.bench import Bench, upper
+from boardsim.verdict.boost import judge_reserve
 from boardsim.verdict.bridges import judge_leg
 from boardsim.verdict.coils import judge_idle, judge_pull_in, judge_release
 from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.heat import judge_heat, judge_warmth
+from boardsim.verdict.hold import judge_hold
 from boardsim.verdict.logic_rail import judge_fall, judge_least
 from boardsim.verdict.motion import judge_motion
 from boardsim.verdict.rail import judge_ceiling, judge_dip
@@ -178,9 +182,14 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
         case TogetherRule() as rule:
             yield from judge_together(rule, placed, readings, bench)
         case PullInRule() as rule:
-            yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], bench)
+            ends = firing.spans(_channel(placed))[:, 1]
+            yield from judge_pull_in(rule, placed, readings.pull_in[_channel(placed)], ends, bench)
         case ReleaseRule() as rule:
             yield from judge_release(rule, placed, readings.release[_channel(placed)], bench)
+        case HoldRule() as rule:
+            yield from judge_hold(rule, placed, readings.valleys[_channel(placed)], firing, bench)
+        case ReserveRule() as rule:
+            yield from judge_reserve(rule, placed, readings.reserve, firing, bench)
         case IdleRule() as rule:
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
         case MotionRule() as rule:

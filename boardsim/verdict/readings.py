@@ -22,18 +22,22 @@ from boardsim.parts.rules import (
     FallRule,
     FloorRule,
     HeatRule,
+    HoldRule,
     IdleRule,
     MeanRule,
     MotionRule,
     PullInRule,
     PulseRule,
     ReleaseRule,
+    ReserveRule,
     Rule,
     ShootThroughRule,
     SneakRule,
 )
+from boardsim.verdict.boost import peaks_begin
 from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
+from boardsim.verdict.hold import Valleys, held_spans
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.sneak import Growth
 from boardsim.verdict.strokes import Strokes, Travelled, commands
@@ -83,6 +87,7 @@ class Readings:
     lowest : (value, time) of the rail
     ceiling : (time at the ceiling, since when)
     pull_in, release : mapping of channel to (times, currents)
+        At the ends of pulses, or of the peaks of those that are held; when fired again.
     avalanches : mapping of (channel, voltage) to list of Avalanche
     drive : mapping of (channel, drive, current) to (times, drives, currents), at the ends of pulses
     guarded : tuple of Dip
@@ -105,6 +110,9 @@ class Readings:
         What the two transistors of a bridge's leg do.
     sneaks : mapping of channel to Growth
         What others drive through its coil, of channels of a matrix.
+    valleys : mapping of channel to Valleys
+        Of its coil's current while its pulses are held.
+    reserve : (times, voltages) of a boost's reservoir when peaks of its bank begin; None without one
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -128,6 +136,8 @@ class Readings:
     motions: Mapping[int, tuple[Travelled, ...]] = field(default_factory=dict)
     legs: Mapping[int, Leg] = field(default_factory=dict)
     sneaks: Mapping[int, Growth] = field(default_factory=dict)
+    valleys: Mapping[int, Valleys] = field(default_factory=dict)
+    reserve: tuple[Floats, Floats] | None = None
 
 
 class SignalTable:
@@ -175,7 +185,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     ceiling_rule = next((r for _, r in rules if isinstance(r, CeilingRule)), None)
     ceiling = TimeAbove(AT_CEILING * ceiling_rule.limit.value if ceiling_rule and ceiling_rule.limit.value else np.inf)
     pull_in = {
-        c: Samples(_within(firing.spans(c)[:, 1], start, stop))
+        c: Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
         if isinstance(r, PullInRule) and c is not None
     }
@@ -195,15 +205,23 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if isinstance(r, IdleRule) and c is not None
     }
     sneaks = {c: Growth(firing.spans(c)) for c, r in rules if isinstance(r, SneakRule) and c is not None}
+    valleys = {
+        c: Valleys(held_spans(firing, c, start, stop)) for c, r in rules if isinstance(r, HoldRule) and c is not None
+    }
     drive = {
-        (c, quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
+        (c, quantity): Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
         if isinstance(r, DriveRule) and c is not None
         for quantity in (r.quantity, r.current)
     }
     moving = (None, "i_regulator") in row
+    reserves = [
+        (Samples(_within(peaks_begin(firing, r.channels), start, stop)), r)
+        for _, r in rules
+        if isinstance(r, ReserveRule)
+    ]
     at_ends = {
-        (c, r.quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
+        (c, r.quantity): Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
         if moving and isinstance(r, FloorRule) and not r.any_time and c is not None
     }
@@ -245,6 +263,10 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
                 sample.feed(t, y[row[c, "i_coil"]])
         for c, growth in sneaks.items():
             growth.feed(t, y[row[c, "i_coil"]])
+        for c, valley in valleys.items():
+            valley.feed(t, y[row[c, "i_coil"]])
+        for sample, reserved in reserves:
+            sample.feed(t, y[row[None, reserved.quantity]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for (c, _), (watch, rule) in avalanches.items():
@@ -313,6 +335,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {c: strokes.all() for c, (strokes, _) in moving_parts.items()},
         {c: leg for c, (leg, _) in legs.items()},
         sneaks,
+        valleys,
+        next(((s.times, s.values) for s, _ in reserves), None),
     )
 
 

@@ -18,6 +18,7 @@ from boardsim.verdict.chain_findings import where_limits_hold
 from boardsim.verdict.chain_loads import judge_loads
 from boardsim.verdict.driver_levels import judge_driver_levels
 from boardsim.verdict.findings import Finding, Floats, Verdict, verdict_of
+from boardsim.verdict.hold import judge_chops
 from boardsim.verdict.logic_supply import judge_supply
 
 _LATE = "comes late by"
@@ -28,6 +29,7 @@ def judge_switching(board: Board, firing: Firing) -> list[Finding]:
     found = [
         *_swallowed(board, firing),
         *_moved(board, firing),
+        *judge_chops(board, firing),
         *_joined(board, firing),
         *_lost_pauses(board, firing),
         *_wrong(board, firing),
