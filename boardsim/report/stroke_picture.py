@@ -165,9 +165,9 @@ def _names(axes: Axes, row: StrokeRow, scale: float) -> None:
     inch = axes.get_window_extent().height / axes.figure.dpi
     named = [("no width works in every corner", low, 0.46, "bold")]
     if row.stretch is not None:
-        named = [
-            (f"works in every corner from {in_units(row.stretch[0], 's')} on", row.stretch[0] * scale, 0.46, "bold")
-        ]
+        first, last = row.stretch
+        until = "on" if last == row.widths[-1] else f"to {in_units(last, 's')}"
+        named = [(f"works in every corner from {in_units(first, 's')} {until}", first * scale, 0.46, "bold")]
     if row.settled is not None and row.settled <= row.shown:
         named.append((f"no harder from {in_units(row.settled, 's')} on", row.settled * scale, 0.31, "normal"))
     if row.asked is not None and row.asked <= row.shown:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime
 import json
 import sys
 from itertools import pairwise
@@ -13,9 +14,12 @@ from boardsim import cli
 from boardsim.board.reader import read_board
 from boardsim.errors import InputError
 from boardsim.scenarios.crew import Crew
+from boardsim.scenarios.plan import read_scenarios
 from boardsim.scenarios.stroke import check_width, chosen_channels, stroke
 from boardsim.scenarios.stroke_sweep import Sweep, least_width
+from boardsim.scenarios.verify import run_scenario
 from boardsim.verdict.audit import SHARE
+from boardsim.verdict.expectations import compare
 from boardsim.verdict.findings import Result
 from boardsim.verdict.strokes_study import StrokeRow, StrokeStudy
 
@@ -125,6 +129,20 @@ def test_the_command_draws_a_picture_and_writes_a_table(
     assert len(found["table"]["rows"]) > 10
     assert (out / "stroke.png").stat().st_size > 10_000
     assert (out / "junit.xml").exists()
+
+
+@pytest.mark.engine
+@pytest.mark.slow
+def test_a_scenario_asks_for_a_width(tmp_path: Path) -> None:
+    nominal(tmp_path)
+    text = '[scenarios.reach]\nquestion = "stroke"\nchannel = 0\nwidth = "5 ms"\nbreaks = ["stroke", "stroke-width"]\n'
+    (tmp_path / "scenarios.toml").write_text(text, encoding="utf-8")
+    ((scenario,), problems) = read_scenarios(tmp_path / "scenarios.toml")
+    assert problems == ()
+    assert (scenario.question, scenario.channel, scenario.width) == ("stroke", 0, 5e-3)
+    with Crew() as crew:
+        result = run_scenario(scenario, tmp_path / "kept", crew, lambda share: None, datetime.date(2027, 1, 1))
+    assert compare(result, scenario.expectation) == (0, ())
 
 
 def test_a_board_whose_coils_move_nothing_is_told_which_kinds_do() -> None:
