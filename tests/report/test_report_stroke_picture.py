@@ -58,7 +58,7 @@ def judged(*rows: StrokeRow, sentence: str = SAID) -> Result:
     return result((answer,), study=StrokeStudy(rows), traces=None, pattern="stroke")
 
 
-@pytest.mark.parametrize("corners", [1, 3, 6])
+@pytest.mark.parametrize("corners", [1, 6])
 @pytest.mark.parametrize(
     "changes",
     [
@@ -121,7 +121,7 @@ def moved(part: str, hits: tuple[tuple[float, float], ...], **changes: Any) -> t
     return found, closeup(found, 3, span=span, panels=panels, hits=hits, **changes)
 
 
-@pytest.mark.parametrize("kinds", [1, 2, 3])
+@pytest.mark.parametrize("kinds", [1, 3])
 @pytest.mark.parametrize("hits", [(), ((32.4 * MS, 0.6),), ((21 * MS, 0.9), (22 * MS, 0.2), (22.5 * MS, 0.05))])
 def test_no_words_overlap_in_a_picture_of_motion(kinds: int, hits: tuple[tuple[float, float], ...]) -> None:
     several = [moved(f"rod {k}", hits) for k in range(kinds)]
