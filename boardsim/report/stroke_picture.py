@@ -48,7 +48,7 @@ _TOP, _LINE, _STRIP, _PANEL = (
 _ANSWER, _MOST_LINES = 9.5, 5
 _DASHES = (0, (6, 2.5))
 _STYLES = ((DARK, "-"), (DARK, (0, (5, 1.5))), (MIDDLE, "-"), (MIDDLE, (0, (5, 1.5))), (INK, (0, (1, 1))), (INK, "-"))
-_NEAR = 0.045  # of a panel's height: curves that end closer share a label
+_SAME, _NEAR = 0.035, 0.08  # of a panel's height: curves that end closer share a number; numbers keep this distance
 
 
 def draw_stroke(result: Result, path: Path) -> None:
@@ -86,7 +86,7 @@ def stroke_figure(result: Result) -> Figure:
     FigureCanvasAgg(figure)
     answers = [line for row in rows for line in _answer(figure, result, row, width)]
     corners = _corners(figure, study, rows, width)
-    top = _TOP + len(answers) * _LINE + _STRIP
+    top = _TOP + len(answers) * _LINE + _STRIP + (_LINE if any(row.asked is not None for row in rows) else 0.0)
     height = top + 3 * _PANEL + 2 * _GAP + _BOTTOM + len(corners) * _LINE + 0.1
     figure.set_size_inches(width, height)
     _heading(figure, result, rows, answers, (width, height))
@@ -165,9 +165,9 @@ def _names(axes: Axes, row: StrokeRow, scale: float) -> None:
     inch = axes.get_window_extent().height / axes.figure.dpi
     named = [("no width works in every corner", low, 0.46, "bold")]
     if row.stretch is not None:
-        named = [
-            (f"works in every corner from {in_units(row.stretch[0], 's')} on", row.stretch[0] * scale, 0.46, "bold")
-        ]
+        first, last = row.stretch
+        until = "on" if last == row.widths[-1] else f"to {in_units(last, 's')}"
+        named = [(f"works in every corner from {in_units(first, 's')} {until}", first * scale, 0.46, "bold")]
     if row.settled is not None and row.settled <= row.shown:
         named.append((f"no harder from {in_units(row.settled, 's')} on", row.settled * scale, 0.31, "normal"))
     if row.asked is not None and row.asked <= row.shown:
@@ -213,13 +213,16 @@ def _array(values: Sequence[float | None]) -> Floats:
 
 def _number(axes: Axes, ends: Sequence[tuple[float, int]], top: float) -> None:
     """The corners' numbers beside the ends of their curves; those that end together share one place."""
-    groups: list[tuple[float, list[int]]] = []
-    for y, number in sorted(ends):
-        if groups and y - groups[-1][0] < _NEAR * top:
-            groups[-1][1].append(number)
+    groups: list[list[tuple[float, int]]] = []
+    for end in sorted(ends):
+        if groups and end[0] - groups[-1][0][0] < _SAME * top:
+            groups[-1].append(end)
         else:
-            groups.append((y, [number]))
-    for y, numbers in groups:
+            groups.append([end])
+    lowest = 0.0
+    for group in groups:
+        y, numbers = max(sum(y for y, _ in group) / len(group), lowest), [number for _, number in group]
+        lowest = y + _NEAR * top
         axes.annotate(
             ", ".join(map(str, sorted(numbers))),
             xy=(1.0, y / top),
@@ -250,21 +253,15 @@ def _drawn(row: StrokeRow) -> list[tuple[StrokePoint, ...]]:
 
 
 def _times(axes: Axes, row: StrokeRow, unit: str, scale: float) -> None:
+    from matplotlib.lines import Line2D
+
     values = [[None if p.arrives is None else p.arrives * scale for p in points] for points in _drawn(row)]
     due = None if row.due is None else row.due * scale
     _curves(axes, row, scale, values, _highest(values, due))
     low, high = axes.get_xlim()
     axes.plot([low, high], [low, high], color=INK, linewidth=0.9, linestyle=(0, (1, 2)), zorder=2.5)
-    at = low + 0.015 * (high - low)
-    axes.annotate(
-        "dotted slope: it arrives as the pulse ends",
-        xy=(at, at),
-        xytext=(0, 10),
-        textcoords="offset points",
-        fontsize=SMALL,
-        color=INK,
-    )
-    caption(axes, f"From the command to the arrival [{unit}]", {})
+    slope = Line2D([], [], color=INK, linewidth=0.9, linestyle=(0, (1, 2)))
+    caption(axes, f"Arrival after the command [{unit}]", {"as the pulse ends": slope})
     if due is not None and row.due is not None:
         _limit(axes, due, f"latest arrival\n{in_units(row.due, 's')}")
     else:

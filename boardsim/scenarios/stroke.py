@@ -10,6 +10,7 @@ from pathlib import Path
 from boardsim.board.ranges import write_labels, write_range
 from boardsim.board.reader import Board, Channel
 from boardsim.errors import InputError
+from boardsim.firing.pattern import snapped
 from boardsim.firing.registers import frame_time
 from boardsim.parts.kinds import kinds
 from boardsim.quantities import in_units
@@ -85,11 +86,12 @@ def stroke(
             return stroke(board, keep, strict, own, progress, channel, width)
     chosen = chosen_channels(board, channel)
     check_width(board, width)
+    width = None if width is None else snapped(width)
     began = time.perf_counter()
     sweeps, findings = [], []
     for k, one in enumerate(chosen):
         alone = replace(board, channels=(one,), exclusive=())
-        sweep = Sweep(alone, one, keep if len(chosen) == 1 else keep / f"channel{one.number}", crew, strict)
+        sweep = Sweep(alone, one, keep if len(chosen) == 1 else keep / f"channel{one.number}", crew)
         for share in swept(sweep, width):
             if progress is not None:
                 progress((k + share) / len(chosen))

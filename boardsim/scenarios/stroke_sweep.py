@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field, replace
 from itertools import pairwise
@@ -32,6 +33,9 @@ _LONGER = 2.0  # times the pause, where that was not enough
 _TRIES = 3
 _GRID = 10  # widths between the two ends
 _LOW, _HIGH = 0.35, 1.25  # shares of the fastest and of the slowest travel time, from and to which widths are tried
+_FAR = (
+    2.0  # times the longest of these: a width that is asked for and longer would press the rest of the picture together
+)
 _BETWEEN = (4, 3)  # widths that are tried where something begins or ends, in two rounds: a hundredth of the travel time
 
 
@@ -43,8 +47,8 @@ class Sweep:
     channel: Channel
     keep: Path
     crew: Crew
-    strict: bool
     pause: float = 0.0
+    shown: float = 0.0
     results: list[CornerResult] = field(default_factory=list)
     points: dict[str, dict[float, StrokePoint]] = field(default_factory=dict)
     at_width: dict[tuple[str, float], list[Finding]] = field(default_factory=dict)
@@ -82,20 +86,20 @@ class Sweep:
 
     def _even(self, width: float) -> float:
         """A width that timer and chain can make, with no more digits than it takes. [s]"""
-        step = max(self.tick, 10.0 ** int(f"{max(width, 1e-9):e}".partition("e")[2]) / 100)
+        step = max(self.tick, 10.0 ** (math.floor(math.log10(width)) - 2))
         return snapped(max(round(width / step) * step, least_width(self.board), step))
 
     def try_widths(self, wanted: Iterable[float], exact: float | None = None) -> None:
         """Run those not yet tried, in all corners; again with longer pauses where a pulse did not begin at rest."""
-        new = {self._even(w) for w in wanted} | ({exact} if exact is not None else set())
-        new = {w for w in new if all(abs(w - old) > 1e-9 for old in self.widths)}
-        for _ in range(_TRIES):
-            if not new or self._run(sorted(new)):
+        new = {self._even(w) for w in wanted} - {*self.widths}
+        new |= {exact} - {*self.widths} if exact is not None else set()
+        for k in range(_TRIES):
+            if not new or self._run(sorted(new), last=k == _TRIES - 1):
                 return
             self.pause *= _LONGER
 
-    def _run(self, widths: Sequence[float]) -> bool:
-        """One run with these widths one after the other; whether every pulse began at rest."""
+    def _run(self, widths: Sequence[float], last: bool) -> bool:
+        """One run with these widths one after the other; whether every pulse began at rest. One that did not counts only if it is the last."""
         pulses, at = [], _START
         for width in widths:
             pulses.append(Pulse(self.channel.number, snapped(at), width))
@@ -108,10 +112,11 @@ class Sweep:
             self.board, firing, self.corners, keep, self.crew, measure=watch, pictured=False, assembled=_unjudged
         )
         calm = all(all(still) for _, still in watch.found.values())
-        self.results += results
-        self.duration += firing.duration
-        for r in results:
-            self._keep(r, watch, widths)
+        if calm or last:
+            self.results += results
+            self.duration += firing.duration
+            for r in results:
+                self._keep(r, watch, widths)
         return calm
 
     def _keep(self, r: CornerResult, watch: StrokeWatch, widths: Sequence[float]) -> None:
@@ -134,15 +139,14 @@ class Sweep:
     def row(self, asked: float | None) -> StrokeRow:
         """What the study says of the channel."""
         by_check = {p.rule.check: p.rule for p in self.rules if isinstance(p.rule, MotionRule)}
-        flights = self.flights()
-        others = [w for w in self.widths if w != self.widths[-1]] or self.widths
+        shown = max((w for w in self.widths if w <= self.shown), default=self.widths[-1])
         return StrokeRow(
             self.channel.number,
             self.channel.label,
             self.channel.coil_name,
             by_check["stroke"].travel,
             {corner: tuple(points[w] for w in sorted(points)) for corner, points in self.points.items()},
-            others[-1] if flights else self.widths[-1],
+            shown,
             by_check["stroke"].limit.value,
             by_check["impact"].least,
             by_check["impact"].limit.value,
@@ -163,6 +167,7 @@ def swept(sweep: Sweep, width: float | None) -> Iterator[float]:
     flights = sweep.flights()
     if flights:
         low, high = _LOW * flights[0], _HIGH * flights[-1]
+        sweep.shown = max(high, width if width is not None and width < _FAR * high else 0.0) * (1 + 1e-2)
         sweep.try_widths([low + (high - low) * k / (_GRID - 1) for k in range(_GRID)], width)
     else:  # nothing that lasts less can arrive where the longest does not
         sweep.try_widths([], width)

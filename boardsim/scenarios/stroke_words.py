@@ -74,7 +74,8 @@ def _shortest(row: StrokeRow, first: float) -> str:
     blows = [p.energy for p in points if p.energy is not None]
     if latest is not None:
         said += f": {row.coil} arrives within {in_units(latest, 's')} of its command"
-        said += f", with {in_units(min(blows), 'J')} to {in_units(max(blows), 'J')}"
+        softest, hardest = in_units(min(blows), "J"), in_units(max(blows), "J")
+        said += f", with {softest}" + (f" to {hardest}" if hardest != softest else "")
     shorter = [w for w in row.widths if w < first]
     if shorter:
         corner, p = _worst(row, shorter[-1])
@@ -88,7 +89,7 @@ def _upper(row: StrokeRow, last: float) -> str:
     if not longer:
         return ""
     corner, p = _worst(row, longer[0])
-    return f"; the longest before that changes is {in_units(last, 's')}: with {in_units(p.width, 's')}, {_why(p, row)} ({corner})"
+    return f"; the longest is {in_units(last, 's')}: with {in_units(p.width, 's')}, {_why(p, row)} ({corner})"
 
 
 def _settled(row: StrokeRow, last: float) -> str:

@@ -124,7 +124,7 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
 def _shape(rule: Rule, finding: Finding) -> Shape:
     if isinstance(rule, MeanRule):
         return "mean"
-    if isinstance(rule, EnergyRule | TogetherRule):
+    if isinstance(rule, EnergyRule | TogetherRule | MotionRule):
         return "value"
     return "energy" if finding.unit == "J" else "value"
 

@@ -22,6 +22,7 @@ _BEFORE, _AFTER = (
     0.08,
     0.5,
 )  # shares of the time from the beginning of the pulse to its end or the moment, shown around it
+_FLIES = 1.5  # the same after a pulse that was too short, while what it moves flies on and turns
 _CHECKS = get_args(Motions)
 
 
@@ -78,12 +79,10 @@ class MotionCut:
         mine = spans[spans[:, 0] < at] if later else spans[spans[:, 0] <= at]
         on, off = (float(t) for t in (mine[-1] if len(mine) else spans[0]))
         long = max(off, at) - on
-        first = (
-            at - self.finding.value if self.finding.unit == "s" and not later else on
-        )  # an arrival counts from the command
-        self.stretch = Stretch(
-            max(min(on, first) - _BEFORE * long, 0.0), min(max(off, at) + _AFTER * long, self.firing.duration)
-        )
+        timed, short = self.finding.unit == "s" and not later, self.finding.quantity == "way that a pulse moves it"
+        first = at - self.finding.value if timed else on  # an arrival counts from the command
+        stop = max(off, at) + (_FLIES if short else _AFTER) * long
+        self.stretch = Stretch(max(min(on, first) - _BEFORE * long, 0.0), min(stop, self.firing.duration))
         self.slices = Slices(np.linspace(*self.stretch, self.count + 1), 3)
         self.strokes = Strokes(self.rule.travel, np.array([[on, off]]), self.stretch.start, self.stretch.stop)
 

@@ -57,7 +57,7 @@ def test_widths_that_stop_working_again_bound_the_stretch_and_a_narrow_one_is_ti
     assert found.stretch == (8 * MS, 8 * MS)
     answer = answer_of(found, 0.1)
     assert (answer.verdict, answer.margin) == ("tight", 0.0)
-    assert "the longest before that changes is 8.00 ms: with 10.0 ms" in answer.sentence
+    assert "the longest is 8.00 ms: with 10.0 ms" in answer.sentence
     assert "makes no harder blow" not in answer.sentence
 
 
