@@ -22,6 +22,7 @@ from boardsim.errors import InputError, Problem, QuantityError
 from boardsim.parts.base import Assumption, Part, Surroundings, listed
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
+from boardsim.parts.charging import ChargingResistor
 from boardsim.parts.coil import Coil
 from boardsim.parts.controller import Controller
 from boardsim.parts.diode import Diode
@@ -121,6 +122,7 @@ class Board:
     controller: Controller | None = None  # none: what drives the chain was not described
     all_off: tuple[int, ...] = ()
     power_up: PowerUpTable = field(default_factory=PowerUpTable)
+    charging: ChargingResistor | None = None  # between the cable and the bulk capacitor
 
     @property
     def spi_mode(self) -> int:
@@ -325,6 +327,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         board.controller,
         all_off,
         board.power_up,
+        board.charging,
     )
 
 

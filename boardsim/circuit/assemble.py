@@ -292,7 +292,10 @@ def add_rail(parts: Assembly, board: Board, corner: Corner, setting: str = "") -
     """Supply, cable and bulk capacitor; `setting` is the node whose voltage the supply follows, its own if empty."""
     parts.add(board.supply.stamp(SUPPLY, corner, setting), None, board.supply.title or "supply", "supply")
     around = board.around
-    parts.add(board.cable.stamp(SUPPLY, RAIL, corner, around), None, board.cable.title or "cable", "cable")
+    fed = RAIL if board.charging is None else "charging_from"
+    parts.add(board.cable.stamp(SUPPLY, fed, corner, around), None, board.cable.title or "cable", "cable")
+    if board.charging is not None:
+        parts.add(board.charging.stamp(fed, RAIL, corner), None, "charging resistor", "board")
     parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
 
 
