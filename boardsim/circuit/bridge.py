@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 from boardsim.board.reader import Board, Channel
 from boardsim.parts.base import Corner, Stamp
 from boardsim.parts.elements import GROUND, Probe, Signal, VoltageLaw, scaled, voltage
-from boardsim.parts.rules import IdleRule, ReleaseRule, Rule
+from boardsim.parts.rules import IdleRule, LatchRule, ReleaseRule, Rule
 
 if TYPE_CHECKING:
     from boardsim.circuit.assemble import Assembly
@@ -91,6 +91,9 @@ def _of_two(rules: tuple[Rule, ...], channel: Channel) -> Iterator[Rule]:
                 yield replace(rule, besides=others)
         elif isinstance(rule, ReleaseRule):
             yield replace(rule, besides=others)
+        elif isinstance(rule, LatchRule):
+            if channel.forwards or rule.check == "flip":  # what nobody commands is told of once
+                yield replace(rule, besides=others, starts=rule.starts if channel.forwards else -rule.starts)
         else:
             yield rule
 

@@ -145,6 +145,11 @@ class Coil(Part):
         return self.inductance.min, self.inductance.max
 
     @property
+    def harmless(self) -> Quantity | None:
+        """What it may carry for ever while nobody commands it; None where that was not given. [A]"""
+        return self.release
+
+    @property
     def return_time(self) -> float:
         """How long what it moves needs to come back once the current is gone; 0 where motion is not described. [s]"""
         return 0.0

@@ -39,7 +39,7 @@ def _judge_channel(
     limit = harmless(board, c, corner)
     margin = (limit - mine.peak) / limit
     lasts = mine.last > limit
-    given = c.coil.release
+    given = c.coil.harmless
     share = f"{board.power_up.harmless.typ:.0%} of {c.coil_name}'s "
     share += f"release current{'' if given is not None else ', taken as 10 % of its settled one'}"
     what = "before the first enabled frame it carries"
@@ -141,7 +141,7 @@ def _hangs_on(board: Board, c: Channel) -> Iterator[str]:
         yield "time of the first frame"
     if table.harmless.assumed():
         yield "current that does not matter"
-    if c.coil.release is None:
+    if c.coil.harmless is None:
         yield "release current"
     if board.chain.output_enable is None:
         yield "output enable tied low"

@@ -23,6 +23,7 @@ from boardsim.parts.rules import (
     FloorRule,
     HeatRule,
     IdleRule,
+    LatchRule,
     MeanRule,
     MotionRule,
     PullInRule,
@@ -34,6 +35,7 @@ from boardsim.parts.rules import (
 )
 from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
+from boardsim.verdict.latching import Throws
 from boardsim.verdict.motion import Strokes, Travelled
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.sneak import Growth
@@ -105,6 +107,8 @@ class Readings:
         What the two transistors of a bridge's leg do.
     sneaks : mapping of channel to Growth
         What others drive through its coil, of channels of a matrix.
+    throws : mapping of channel to Throws
+        Which of its pulses flip its latching coil.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -128,6 +132,7 @@ class Readings:
     motions: Mapping[int, tuple[Travelled, ...]] = field(default_factory=dict)
     legs: Mapping[int, Leg] = field(default_factory=dict)
     sneaks: Mapping[int, Growth] = field(default_factory=dict)
+    throws: Mapping[int, Throws] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -195,6 +200,11 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         if isinstance(r, IdleRule) and c is not None
     }
     sneaks = {c: Growth(firing.spans(c)) for c, r in rules if isinstance(r, SneakRule) and c is not None}
+    throws = {
+        c: Throws.of(r, firing.spans(c), [firing.spans(k) for k in r.besides], stop)
+        for c, r in rules
+        if isinstance(r, LatchRule) and r.check == "flip" and c is not None
+    }
     drive = {
         (c, quantity): Samples(_within(firing.spans(c)[:, 1], start, stop))
         for c, r in rules
@@ -245,6 +255,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
                 sample.feed(t, y[row[c, "i_coil"]])
         for c, growth in sneaks.items():
             growth.feed(t, y[row[c, "i_coil"]])
+        for c, throw in throws.items():
+            throw.feed(t, y[row[c, "i_coil"]], y[row[None, "v_rail"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for (c, _), (watch, rule) in avalanches.items():
@@ -313,6 +325,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         {c: strokes.all() for c, (strokes, _) in moving_parts.items()},
         {c: leg for c, (leg, _) in legs.items()},
         sneaks,
+        throws,
     )
 
 
