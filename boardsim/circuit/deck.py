@@ -76,6 +76,8 @@ class Deck:
         Stretches in which the edges of clocked lines set the points, however finely the rest is integrated. [s]
     lines : mapping of place to tuple of int
         Places that are no channels but rows and columns of a matrix, and the channels along each.
+    bridged : bool
+        Whether coils in it lie between two legs.
     """
 
     netlist: str
@@ -93,6 +95,7 @@ class Deck:
     digital: bool = False
     clocked: tuple[tuple[float, float], ...] = ()
     lines: Mapping[int, tuple[int, ...]] = field(default_factory=dict)
+    bridged: bool = False
 
     def text(self, settings: Settings, measures: bool = True) -> str:
         """The whole deck as plain ngspice runs it."""
@@ -104,6 +107,9 @@ class Deck:
             f".options temp={in_celsius(self.corner.junction):g} tnom={MODEL_TEMPERATURE:g} noacct noinit",
             # With event-driven devices ngspice 39 takes the strictest tolerance of truncation; back to the usual one.
             *([".options xtrtol=7"] if self.digital else ()),
+            # Of many resting legs, each milliohms to ground or to the rail, the largest pivots come first, and their elimination fills the
+            # matrix: a step then costs up to five times as much. Pivots down to a millionth keep it sparse, and leave rounding 1e-10.
+            *([".options pivrel=1e-6"] if self.bridged else ()),
             f".save {' '.join(self.vectors)}",
             *(self.measures if measures else ()),
             f".tran {min(settings.max_step, duration / 50):.9g} {duration + _BEYOND:.15g} 0 {settings.max_step:.9g}",

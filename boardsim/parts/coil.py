@@ -224,7 +224,7 @@ class Coil(Part):
             core_loss_resistance=self.loss,
             temperature_rise_of_the_winding=self.rise,
         )
-        if self.release is None:
+        if self.harmless is None:
             why = "no release current given: what a coil that is off may carry, from memory"
             found += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
         return (*found, *self._of_the_winding(label), *self.more_assumed(label))
