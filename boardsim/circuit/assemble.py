@@ -329,7 +329,7 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
         _measures(parts.signals),
         parts.rest,
         lines={line.number: line.channels for line in board.lines},
-        bridged=any(c.opposite is not None for c in board.channels),
+        bridges=sum(c.opposite is not None for c in board.channels) // 2,
     )
 
 

@@ -35,10 +35,10 @@ from boardsim.parts.rules import (
 )
 from boardsim.verdict.bridges import Leg, fired_again
 from boardsim.verdict.findings import Envelope, Floats
-from boardsim.verdict.latching import Throws
 from boardsim.verdict.motion import Strokes, Travelled
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.sneak import Growth
+from boardsim.verdict.throws import Throws
 from boardsim.verdict.watch import (
     Avalanche,
     Avalanches,

@@ -20,7 +20,8 @@ from boardsim.parts.base import NOMINAL
 from boardsim.parts.rules import IdleRule, LatchRule, Limit, PullInRule, ReleaseRule
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding, Floats
-from boardsim.verdict.latching import Throws, judge_latch
+from boardsim.verdict.latching import judge_latch
+from boardsim.verdict.throws import Throws, lasting_current
 
 BOARD = Path(__file__).parents[1] / "boards" / "f16_under_pulsed" / "repaired.toml"
 TAU = 1e-3  # [s], of the made-up coil
@@ -70,49 +71,74 @@ def judged(of: LatchRule, throws: Throws) -> dict[str, Finding]:
     return {f.quantity: f for f in judge_latch(of, PlacedRule(of, 0, "gate", "gate 0"), throws, bench)}
 
 
-HIGHEST, TIME, KEPT = (
+LASTS, HIGHEST, SHORTEST, KEPT = (
+    "current that lasts for as long as a flip takes",
     "highest current of a pulse that has to flip",
-    "time at the current that flips it",
+    "shortest pulse that has to flip",
     "pulses that leave it as commanded",
 )
 
 
+def lasting(settled: float, span: tuple[float, float], after: float = 2e-3) -> float:
+    """Closed form: I (1 - exp(-s/tau)) at a time s after the start is as high as top exp(-r/tau) at r after the end, width + r - s = after."""
+    width = span[1] - span[0]
+    top = settled * (1 - math.exp(-width / TAU))
+    # With e = exp(-s/tau): settled (1 - e) = top exp((width - after) / tau) e.
+    e = settled / (settled + top * math.exp((width - after) / TAU))
+    return settled * (1 - e)
+
+
 @pytest.mark.parametrize("blocks", [1, 7, 400])
-def test_time_above_the_threshold_is_that_of_the_exponentials(blocks: int) -> None:
+def test_times_and_currents_are_those_of_the_exponentials(blocks: int) -> None:
     """i = I (1 - exp(-t/tau)) passes I_f at tau ln(I / (I - I_f)), and exp(-t/tau) of its top passes it tau ln(top / I_f) after the end."""
     throws = follow(rule(), rise(1.0, FORTH), spans(FORTH), blocks=blocks)
     (p,) = throws.all()
     top = 1 - math.exp(-4)
     assert p.peak == pytest.approx(top, rel=1e-6)
-    assert p.since - p.on == pytest.approx(TAU * math.log(1 / 0.4), rel=1e-4)
     assert p.above == pytest.approx(4e-3 - TAU * math.log(1 / 0.4) + TAU * math.log(top / 0.6), rel=1e-4)
-    found = judged(rule(), throws)
-    assert {f.verdict for f in found.values()} == {"pass"}
-    assert found[TIME].margin == pytest.approx(p.above / 2e-3 - 1)
+    assert p.lasting == pytest.approx(lasting(1.0, FORTH), rel=1e-5)
+    assert p.since - p.on == pytest.approx(TAU * math.log(1 / (1 - p.lasting)), rel=1e-3)
+    (f,) = judged(rule(), throws).values()
+    assert (f.check, f.quantity, f.unit, f.verdict) == ("flip", LASTS, "A", "pass")
+    assert f.margin == pytest.approx(lasting(1.0, FORTH) / 0.6 - 1, rel=1e-4)
 
 
-def test_a_pulse_whose_current_stays_too_low_fails_by_its_current_alone() -> None:
-    found = judged(rule(), follow(rule(), rise(0.5, FORTH), spans(FORTH)))
-    assert set(found) == {HIGHEST}
-    f = found[HIGHEST]
+def test_a_pulse_whose_current_stays_too_low_fails() -> None:
+    (f,) = judged(rule(), follow(rule(), rise(0.5, FORTH), spans(FORTH))).values()
     assert (f.check, f.verdict, f.consequence, f.unit) == ("flip", "fail", "misbehave", "A")
-    assert f.margin == pytest.approx(0.5 * (1 - math.exp(-4)) / 0.6 - 1)
-    assert "flips at 600 mA, and stays where it was; try: a longer pulse" in f.sentence
+    assert f.margin == pytest.approx(lasting(0.5, FORTH) / 0.6 - 1, rel=1e-4)
+    assert "flips after 2.00 ms at 600 mA, and may stay where it was; try: a longer pulse" in f.sentence
 
 
-def test_a_pulse_that_is_too_short_fails_by_its_time_and_says_how_much_is_missing() -> None:
+def test_a_pulse_that_is_too_short_fails_and_says_for_how_long_there_was_enough() -> None:
     short = (1e-3, 3e-3)
-    found = judged(rule(), follow(rule(), rise(1.0, short), spans(short)))
-    f = found[TIME]
+    (f,) = judged(rule(), follow(rule(), rise(1.0, short), spans(short))).values()
+    assert (f.verdict, f.value) == ("fail", pytest.approx(lasting(1.0, short), rel=1e-4))
     held = 2e-3 - TAU * math.log(1 / 0.4) + TAU * math.log((1 - math.exp(-2)) / 0.6)
-    assert found[HIGHEST].verdict == "pass"
-    assert (f.verdict, f.value) == ("fail", pytest.approx(held, rel=1e-3))
-    assert "longer by at least" in f.sentence
+    assert f"600 mA or above for about {held * 1e3:.2f} ms" in f.sentence
+    assert "a longer pulse" in f.sentence
+
+
+def test_a_pulse_that_flips_just_in_time_by_the_closed_form_has_no_margin() -> None:
+    """The threshold set to what lasts: the margin is nothing, whichever of current and time one looks at."""
+    of = rule(at=lasting(1.0, FORTH))
+    throws = follow(of, rise(1.0, FORTH), spans(FORTH))
+    (f,) = judged(of, throws).values()
+    assert f.margin == pytest.approx(0.0, abs=1e-5)
+    assert throws.all()[0].above == pytest.approx(2e-3, rel=1e-4)
+
+
+def test_a_current_that_never_lasts_that_long_is_none() -> None:
+    spike = np.array([0.0, 1.0, 0.0])
+    assert lasting_current(np.array([0.0, 1e-3, 2e-3]), spike, 5e-3) == (0.0, 0.0)
+    assert lasting_current(np.array([0.0, 1e-3, 2e-3]), -spike, 1e-3) == (0.0, 0.0)
+    flat, _ = lasting_current(np.array([0.0, 1e-3, 2e-3]), np.full(3, 0.4), 2e-3)
+    assert flat == pytest.approx(0.4)
 
 
 def test_a_current_that_sags_below_the_threshold_does_not_ask_for_a_longer_pulse() -> None:
     sagging = rise(1.0, FORTH) * np.where(T > 2.5e-3, 0.5, 1.0)
-    f = judged(rule(), follow(rule(), sagging, spans(FORTH)))[TIME]
+    (f,) = judged(rule(), follow(rule(), sagging, spans(FORTH))).values()
     assert f.verdict == "fail"
     assert "larger reservoir" in f.sentence
     assert "longer pulse" not in f.sentence
@@ -122,14 +148,15 @@ def test_two_stretches_that_are_each_too_short_do_not_add_up() -> None:
     broken = rise(1.0, FORTH) * np.where((T > 3.5e-3) & (T < 3.6e-3), 0.1, 1.0)
     (p,) = follow(rule(), broken, spans(FORTH)).all()
     assert p.above < 2e-3
+    assert p.lasting < 0.6
 
 
 def test_an_empty_reservoir_is_told_with_the_rail_of_both_moments() -> None:
     twice = spans(FORTH, (11e-3, 15e-3))
     i = rise(1.0, FORTH) + rise(0.5, (11e-3, 15e-3))
-    f = judged(rule(), follow(rule(), i, twice, rail=np.where(T < 5e-3, 24.0, 12.5)))[HIGHEST]
+    f = judged(rule(), follow(rule(), i, twice, rail=np.where(T < 5e-3, 24.0, 12.5)))[LASTS]
     assert f.verdict == "fail"
-    assert f.at == pytest.approx(15e-3, abs=2e-5)
+    assert 11e-3 < (f.at or 0.0) < 15e-3
     assert "the coil rail stood at 12.5 V when the pulse began, of 24.0 V before the first" in f.sentence
     assert "a longer pause before it" in f.sentence
 
@@ -149,8 +176,8 @@ def test_the_reverse_channel_reads_the_same_current_with_its_sign_turned() -> No
 def test_a_coil_that_is_wired_the_other_way_round_never_flips_as_it_should() -> None:
     of = rule()
     found = judged(of, follow(of, -rise(1.0, FORTH), spans(FORTH)))
-    assert found[HIGHEST].verdict == "fail"
-    assert found[HIGHEST].value == pytest.approx(0.0, abs=1e-9)
+    assert found[LASTS].verdict == "fail"
+    assert found[LASTS].value == 0.0
 
 
 def test_a_second_pulse_in_the_same_direction_has_nothing_to_do_if_the_state_is_known() -> None:
@@ -160,7 +187,7 @@ def test_a_second_pulse_in_the_same_direction_has_nothing_to_do_if_the_state_is_
     assert [p.already for p in throws.all()] == [False, True]
     assert {f.verdict for f in judged(known, throws).values()} == {"pass"}
     nobody_knows = judged(rule(), follow(rule(), i, twice))
-    assert nobody_knows[HIGHEST].verdict == "fail"  # the weak one has to flip too
+    assert nobody_knows[LASTS].verdict == "fail"  # the weak one has to flip too
 
 
 def test_a_pulse_that_finds_its_coil_there_at_the_start_is_told_of_and_passes() -> None:
@@ -178,7 +205,7 @@ def test_a_known_state_counts_only_as_long_as_every_pulse_before_did_its_work() 
     assert weak.all()[0].already
     worked = follow(of, -rise(1.0, FORTH) + rise(0.3, (31e-3, 35e-3)), sets, resets)
     assert not worked.all()[0].already
-    assert judged(of, worked)[HIGHEST].verdict == "fail"
+    assert judged(of, worked)[LASTS].verdict == "fail"
 
 
 def test_a_coil_that_is_flipped_back_before_the_next_pulse_fails_though_its_pulse_was_good() -> None:
@@ -187,7 +214,7 @@ def test_a_coil_that_is_flipped_back_before_the_next_pulse_fails_though_its_puls
     throws = follow(of, i, spans(FORTH))
     found = judged(of, throws)
     assert found[KEPT].verdict == "fail"
-    assert found[TIME].verdict == "pass"
+    assert found[LASTS].verdict == "pass"
     stray = rule("stray-flip")
     (f,) = judged(stray, throws).values()
     assert (f.check, f.verdict) == ("stray-flip", "fail")
@@ -220,7 +247,8 @@ def test_before_anything_is_commanded_either_direction_disturbs_a_coil_of_unknow
     ("of", "verdicts"),
     [
         (rule(at=None), {HIGHEST: "limit-missing"}),
-        (rule(after=None), {HIGHEST: "pass", TIME: "limit-missing"}),
+        (rule(after=None), {HIGHEST: "pass", SHORTEST: "limit-missing"}),
+        (rule(at=None, after=None), {HIGHEST: "limit-missing", SHORTEST: "limit-missing"}),
     ],
 )
 def test_nothing_passes_for_want_of_a_number(of: LatchRule, verdicts: dict[str, str]) -> None:
