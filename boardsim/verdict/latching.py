@@ -43,15 +43,13 @@ def _flipped(rule: LatchRule, placed: PlacedRule, pulses: Sequence[Thrown], thro
     p = min(pulses, key=lambda one: one.lasting)
     level, after = in_units(throws.level, "A"), in_units(throws.after, "s")
     margin = (p.lasting - throws.level) / throws.level
-    said = f"{placed.label}: in its pulse at {_pulse(p)} the coil current reaches {in_units(p.peak, 'A')}"
+    said = f"{placed.label}: in its pulse at {_pulse(p)} the coil current reaches {in_units(p.peak, 'A')}, and {in_units(p.lasting, 'A')} "
+    said += f"for {after}; {placed.part} flips after {after} at {level}"
     if margin < 0:
         short = sum(one.lasting < throws.level for one in pulses)
-        said += f" and stays at {level} or above for about {in_units(p.above, 's')}" if p.above > 0 else ""
-        said += f"; {placed.part} flips after {after} at {level}, and may stay where it was{_drained(p, throws)}"
+        said += f", and may stay where it was{_drained(p, throws)}"
         said += f"; so it is with {short} of its {len(pulses)} pulses" if short > 1 else ""
         said += f"; try: {_remedy(p, throws)}"
-    else:
-        said += f", and {in_units(p.lasting, 'A')} for {after}; {placed.part} flips after {after} at {level}"
     return bench.finding(
         placed, rule.at, "current that lasts for as long as a flip takes", p.lasting, margin, p.since, said, worse="low"
     )

@@ -28,8 +28,6 @@ class Thrown:
         Highest current in the direction of the pulse [A], and when. [s]
     lasting, since : float
         Highest current that lasts without a break for as long as a flip takes [A], and from when it does. [s]
-    above : float
-        How long it is without a break at or above the current that flips it, at most. [s]
     rail : float
         Coil rail when the pulse begins. [V]
     already : bool
@@ -45,7 +43,6 @@ class Thrown:
     peak_at: float
     lasting: float
     since: float
-    above: float
     rail: float
     already: bool
     lost: float | None
@@ -166,15 +163,12 @@ class Throws:
             own = self.ways[0]
             off = min(float(own[own[:, 0] == on, 1][0]), self.stop)
             peak, peak_at, lasting, since = self._done.get(k) or self._seen(k, keep=True)
-            above = self._longest(float(on), float(until))
             already = bool(self.starts) and self._state(float(on)) > 0
             there = already or lasting >= self.level
             last = max(((at, s) for at, s in self.flips if on < at <= until), default=None)
             lost = last[0] if there and last is not None and last[1] < 0 else None
             found.append(
-                Thrown(
-                    float(on), off, float(until), peak, peak_at, lasting, since, above, self._rails[k], already, lost
-                )
+                Thrown(float(on), off, float(until), peak, peak_at, lasting, since, self._rails[k], already, lost)
             )
         return tuple(found)
 
@@ -187,11 +181,6 @@ class Throws:
         t, i = np.concatenate(self._courses[k] if keep else self._courses.pop(k), axis=1)
         top = int(i.argmax())
         return float(i[top]), float(t[top]), *lasting_current(t, i, self.after)
-
-    def _longest(self, on: float, until: float) -> float:
-        """The longest stretch of enough current between two times. [s]"""
-        parts = (min(d.start + d.lasting, until) - max(d.start, on) for d in self._forth.all())
-        return max(0.0, *parts, 0.0)
 
 
 def lasting_current(t: Floats, i: Floats, after: float) -> tuple[float, float]:
