@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import itertools
 import math
 from collections.abc import Callable
@@ -11,7 +12,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from boardsim.board.reader import read_board
+from boardsim.board.reader import Board, read_board
 from boardsim.circuit.assemble import assemble, windows
 from boardsim.circuit.deck import PlacedRule
 from boardsim.firing.pattern import Pattern, Pulse
@@ -66,8 +67,13 @@ def follow(
     return found
 
 
+@functools.cache
+def board() -> Board:
+    return read_board(BOARD)
+
+
 def judged(of: LatchRule, throws: Throws) -> dict[str, Finding]:
-    bench = Bench(read_board(BOARD), "nominal", ())
+    bench = Bench(board(), "nominal", ())
     return {f.quantity: f for f in judge_latch(of, PlacedRule(of, 0, "gate", "gate 0"), throws, bench)}
 
 
@@ -272,9 +278,9 @@ def test_a_channel_that_is_never_fired_is_judged_by_its_disturbances_only() -> N
 
 def placed(pulses: tuple[Pulse, ...], edit: Callable[[str], str], folder: Path) -> list[PlacedRule]:
     (folder / "board.toml").write_text(edit(BOARD.read_text(encoding="utf-8")), encoding="utf-8")
-    board = read_board(folder / "board.toml")
-    firing = fire(board, Pattern(board.path, "p", None, pulses))
-    return list(assemble(board, firing, NOMINAL, windows(board, firing)[0]).rules)
+    edited = read_board(folder / "board.toml")
+    firing = fire(edited, Pattern(edited.path, "p", None, pulses))
+    return list(assemble(edited, firing, NOMINAL, windows(edited, firing)[0]).rules)
 
 
 def test_each_direction_of_a_bridge_is_judged_and_disturbances_once(tmp_path: Path) -> None:
