@@ -185,6 +185,7 @@ def not_varied(board: Board) -> tuple[Assumption, ...]:
     for channel in board.channels:
         coil = channel.coil
         used += [q for q in (coil.pull_in, coil.release, coil.longest_on, coil.least_off) if q is not None]
+        used += coil.taken_at_ends()
     parts: list[tuple[str, Record]] = [
         ("supply", board.supply),
         ("cable", board.cable),

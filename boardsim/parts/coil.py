@@ -144,6 +144,9 @@ class Coil(Part):
         """The least and the largest that it has. [H]"""
         return self.inductance.min, self.inductance.max
 
+    harmless_name: ClassVar[str] = "release current"
+    """What reports call the current that it may carry while nobody commands it."""
+
     @property
     def harmless(self) -> Quantity | None:
         """What it may carry for ever while nobody commands it; None where that was not given. [A]"""
@@ -225,7 +228,7 @@ class Coil(Part):
             temperature_rise_of_the_winding=self.rise,
         )
         if self.harmless is None:
-            why = "no release current given: what a coil that is off may carry, from memory"
+            why = f"no {self.harmless_name} given: what a coil that is off may carry, from memory"
             found += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
         return (*found, *self._of_the_winding(label), *self.more_assumed(label))
 

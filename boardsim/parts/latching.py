@@ -33,6 +33,7 @@ class LatchingCoil(Coil):
     """
 
     role: ClassVar[str] = "coil"
+    harmless_name: ClassVar[str] = "current that never flips it"
     kind: Literal["latching"] = "latching"  # type: ignore[assignment]  # a kind of its own
     flips_at: Annotated[Quantity, CURRENT] | None = Field(
         None, description="current at which it is sure to flip, in either direction"
@@ -65,6 +66,10 @@ class LatchingCoil(Coil):
             )
         return self
 
+    def taken_at_ends(self) -> tuple[Quantity, ...]:
+        """What flips it at its upper end, what never does at its lower one."""
+        return tuple(q for q in (self.flips_at, self.flips_after, self.holds_below) if q is not None)
+
     @property
     def harmless(self) -> Quantity | None:
         """What never flips it. [A]"""
@@ -75,7 +80,7 @@ class LatchingCoil(Coil):
         plain = super().stamp(name, label, a, b, corner, around)
         holds = Limit.of(
             self.holds_below,
-            "current that never flips it",
+            self.harmless_name,
             "A",
             None,
             self.holds_below.min if self.holds_below else None,

@@ -83,9 +83,9 @@ def harmless_limit(rule: IdleRule | SneakRule, placed: PlacedRule, bench: Bench)
     coil = board.channel(placed.channel or 0).coil
     fed = board.supply.resistance.max + (board.charging.resistance.max if board.charging is not None else 0.0)
     settled = board.supply.voltage.min / (coil.resistance.max + fed)
-    why = f"{rule.share:.0%} of the settled current, since no release current was given: from memory"
+    why = f"{rule.share:.0%} of the settled current, since no {coil.harmless_name} was given: from memory"
     limit = replace(limit, value=rule.share * settled, source=f"assumed: {why}", name="harmless current")
-    return limit, f"a tenth of the settled current of {placed.part}, for want of a release current, is"
+    return limit, f"a tenth of the settled current of {placed.part}, for want of a {coil.harmless_name}, is"
 
 
 def _held(placed: PlacedRule, bound: float | None, margin: float | None, does: str, name: str, remedy: str) -> str:

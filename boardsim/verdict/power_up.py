@@ -300,4 +300,6 @@ def release_assumed(board: Board) -> Iterator[Assumption]:
     for channel in board.channels:
         if channel.coil.harmless is None:
             why = "not given; of a coil that lets go late, from memory"
-            yield Assumption(f"coil {channel.coil_name}", "release current", "10 % of the settled current", why)
+            yield Assumption(
+                f"coil {channel.coil_name}", channel.coil.harmless_name, "10 % of the settled current", why
+            )

@@ -41,7 +41,7 @@ def _judge_channel(
     lasts = mine.last > limit
     given = c.coil.harmless
     share = f"{board.power_up.harmless.typ:.0%} of {c.coil_name}'s "
-    share += f"release current{'' if given is not None else ', taken as 10 % of its settled one'}"
+    share += f"{c.coil.harmless_name}{'' if given is not None else ', taken as 10 % of its settled one'}"
     what = "before the first enabled frame it carries"
     said = f"{c.label}: {what} up to {in_units(mine.peak, 'A')} ({boot.name}); {in_units(limit, 'A')} count ({share})"
     if margin < 0:
@@ -142,7 +142,7 @@ def _hangs_on(board: Board, c: Channel) -> Iterator[str]:
     if table.harmless.assumed():
         yield "current that does not matter"
     if c.coil.harmless is None:
-        yield "release current"
+        yield c.coil.harmless_name
     if board.chain.output_enable is None:
         yield "output enable tied low"
 

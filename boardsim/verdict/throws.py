@@ -157,24 +157,22 @@ class Throws:
     def all(self) -> tuple[Thrown, ...]:
         """This channel's pulses, one by one."""
         found = []
+        own, flips = self.ways[0], self.flips
+        times = np.array([at for at, _ in flips])
         for k, (on, until) in enumerate(itertools.pairwise([*self._begins, self.stop]), 1):
             if self._signs[k] < 0:
                 continue
-            own = self.ways[0]
-            off = min(float(own[own[:, 0] == on, 1][0]), self.stop)
+            off = min(float(own[np.searchsorted(own[:, 0], on), 1]), self.stop)
             peak, peak_at, lasting, since = self._done.get(k) or self._seen(k, keep=True)
-            already = bool(self.starts) and self._state(float(on)) > 0
+            # Its state as far as it is known: what it was at first, and what has surely flipped it since.
+            before, after = (int(np.searchsorted(times, at, side="right")) for at in (on, until))
+            already = bool(self.starts) and (flips[before - 1][1] if before else self.starts) > 0
             there = already or lasting >= self.level
-            last = max(((at, s) for at, s in self.flips if on < at <= until), default=None)
-            lost = last[0] if there and last is not None and last[1] < 0 else None
+            lost = flips[after - 1][0] if there and after > before and flips[after - 1][1] < 0 else None
             found.append(
                 Thrown(float(on), off, float(until), peak, peak_at, lasting, since, self._rails[k], already, lost)
             )
         return tuple(found)
-
-    def _state(self, at: float) -> int:
-        """As far as it is known at a time: by what it was at first, and by what has surely flipped it since."""
-        return max(((t, s) for t, s in self.flips if t <= at), default=(0.0, self.starts))[1]
 
     def _seen(self, k: int, *, keep: bool = False) -> tuple[float, float, float, float]:
         """Highest current of a window and when, the highest that lasts for a flip and since when; its course is then let go."""

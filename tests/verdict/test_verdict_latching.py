@@ -12,6 +12,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from boardsim.board.corners import not_varied
 from boardsim.board.reader import Board, read_board
 from boardsim.circuit.assemble import assemble, windows
 from boardsim.circuit.deck import PlacedRule
@@ -22,6 +23,7 @@ from boardsim.parts.rules import IdleRule, LatchRule, Limit, PullInRule, Release
 from boardsim.verdict.bench import Bench
 from boardsim.verdict.findings import Finding, Floats
 from boardsim.verdict.latching import judge_latch
+from boardsim.verdict.power_up import harmless, settled
 from boardsim.verdict.throws import Throws, lasting_current
 
 BOARD = Path(__file__).parents[1] / "boards" / "f16_under_pulsed" / "repaired.toml"
@@ -307,5 +309,13 @@ def test_limits_count_at_the_end_of_their_band_that_is_worse(tmp_path: Path) -> 
         return text
 
     latch = next(p.rule for p in placed((), wider, tmp_path) if isinstance(p.rule, LatchRule))
+    assert not [a for a in not_varied(read_board(tmp_path / "board.toml")) if a.part == "coil gate"]
     assert (latch.at.value, latch.after.value, latch.holds.value) == pytest.approx((0.66, 2.5e-3, 0.08))
     assert replace(latch, check="flip") == latch
+
+
+def test_before_the_first_frame_a_share_of_what_never_flips_it_counts() -> None:
+    """Of holds_below, 0.1 A; the settled current is 24 V over 24 ohm and the charging resistor's 22 ohm (Ohm's law)."""
+    channel = board().channel(0)
+    assert harmless(board(), channel, NOMINAL) == pytest.approx(board().power_up.harmless.typ * 0.1)
+    assert settled(board(), channel, NOMINAL) == pytest.approx(24 / (24 + 22))
