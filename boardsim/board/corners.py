@@ -27,6 +27,7 @@ _INPUT_NAMES = {
     "charge_high": "gate charge of the high transistor",
     "charge_low": "gate charge of the low transistor",
     "gate_resistances": "gate resistances",
+    "charging": "charging resistor",
 }
 _GATES: dict[str, Bound] = {"charge_high": "max", "charge_low": "max", "gate_resistances": "max"}
 
@@ -42,6 +43,8 @@ def _varied(board: Board) -> dict[str, list[Quantity]]:
     if board.boost is not None:
         found["supply"].append(board.boost.voltage)
         found |= {"reservoir": [board.boost.capacitance], "reservoir_esr": [board.boost.esr]}
+    if board.charging is not None:
+        found |= {key: [quantity] for key, quantity in board.charging.tolerances().items()}
     for parts in ((c.coil for c in board.channels), *((d.switch, d.clamp) for d in board.drivers)):
         for part in parts:
             for key, quantity in (*part.tolerances().items(), *part.tolerances_too()):
@@ -91,9 +94,10 @@ def corners(board: Board, shortest: float = math.inf, held: bool = False) -> tup
     """
     strong: dict[str, Bound] = {"supply": "max", "coil_resistance": "min", "logic": "max", "bulk": "min", "esr": "max"}
     reservoir: dict[str, Bound] = {"reservoir": "min", "reservoir_esr": "max"}
-    strong |= {"gate_supply": "max", "opposing_force": "min", **_GATES, **reservoir}
+    strong |= {"gate_supply": "max", "opposing_force": "min", "charging": "min", **_GATES, **reservoir}
     weak: dict[str, Bound] = {"supply": "min", "bulk": "min", "esr": "max", "logic": "min", "gate_supply": "min"}
     weak |= reservoir
+    weak["charging"] = "max"  # recharges slowest
     # Hot: the least threshold leaks most, the largest on-resistance heats most.
     stiff: dict[str, Bound] = {"clamp_voltage": "max", "breakdown": "max", "on_resistance": "max", "threshold": "min"}
     soft: dict[str, Bound] = {"clamp_voltage": "min", "breakdown": "min"}
@@ -146,6 +150,7 @@ def slow_rail(board: Board) -> Corner | None:
         "esr": "max",
         "coil_resistance": "min",
         "inductance": "min",
+        "charging": "max",
     }
     (corner,) = _distinct(
         board,

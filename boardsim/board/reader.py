@@ -25,6 +25,7 @@ from boardsim.parts.base import Assumption, Part, Surroundings, listed
 from boardsim.parts.boost import Boost
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
+from boardsim.parts.charging import ChargingResistor
 from boardsim.parts.coil import Coil
 from boardsim.parts.controller import Controller
 from boardsim.parts.diode import Diode
@@ -127,6 +128,7 @@ class Board:
     enable_lines: tuple[EnableLine, ...] = ()
     boost: Boost | None = None
     boosted: tuple[int, ...] = ()  # channels of its bank
+    charging: ChargingResistor | None = None  # between the cable and the bulk capacitor
 
     @property
     def spi_mode(self) -> int:
@@ -336,6 +338,7 @@ def read_board(path: Path, libraries: Sequence[Path] = ()) -> Board:
         enables,
         board.boost,
         boosted,
+        board.charging,
     )
 
 

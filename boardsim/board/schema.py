@@ -13,6 +13,7 @@ from boardsim.parts.base import Part, any_of, named_part
 from boardsim.parts.boost import Boost
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
+from boardsim.parts.charging import ChargingResistor
 from boardsim.parts.coil import Coil
 from boardsim.parts.controller import Controller
 from boardsim.parts.diode import Diode
@@ -291,6 +292,9 @@ class BoardFile(Record):
     )
     supply: Supply
     cable: Cable
+    charging: ChargingResistor | None = Field(
+        None, description="resistor behind the cable, through which bulk is charged as a reservoir; none if absent"
+    )
     bulk: Bulk
     logic: Annotated[AnyLogic, BeforeValidator(_stiff_unless_said)]  # type: ignore[valid-type]
     chain: Chain
@@ -312,6 +316,12 @@ class BoardFile(Record):
     def _models_hold(self) -> BoardFile:
         if self.ambient is not None:
             refuse_extremes(self.ambient, self.junction_rise)
+        rail: Any = self.logic  # a part of role "logic"
+        if self.charging is not None and rail.derived:
+            raise QuantityError(
+                "the logic rail hangs on a coil rail behind a charging resistor, which its load would hold down for ever; give logic "
+                "a supply of its own, or leave charging out"
+            )
         return self
 
 

@@ -312,7 +312,10 @@ def add_rail(
     """
     parts.add(board.supply.stamp(SUPPLY, corner, setting), None, board.supply.title or "supply", "supply")
     around = board.around
-    parts.add(board.cable.stamp(SUPPLY, RAIL, corner, around), None, board.cable.title or "cable", "cable")
+    fed = RAIL if board.charging is None else "charging_from"
+    parts.add(board.cable.stamp(SUPPLY, fed, corner, around), None, board.cable.title or "cable", "cable")
+    if board.charging is not None:
+        parts.add(board.charging.stamp(fed, RAIL, corner), None, "charging resistor", "board")
     parts.add(board.bulk.stamp(RAIL, corner), None, board.bulk.title or "bulk capacitor", "board")
     add_boost(parts, board, corner, RAIL, closed)
 
@@ -347,6 +350,7 @@ def finished(parts: Assembly, board: Board, corner: Corner, window: Window) -> D
         _measures(parts.signals),
         parts.rest,
         lines={line.number: line.channels for line in board.lines},
+        bridges=sum(c.opposite is not None for c in board.channels) // 2,
     )
 
 

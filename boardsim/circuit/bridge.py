@@ -8,8 +8,8 @@ from typing import TYPE_CHECKING
 
 from boardsim.board.reader import Board, Channel
 from boardsim.parts.base import Corner, Stamp
-from boardsim.parts.elements import GROUND, Probe, Signal, VoltageLaw, scaled, voltage
-from boardsim.parts.rules import IdleRule, ReleaseRule, Rule
+from boardsim.parts.elements import GROUND, Drive, Probe, Signal, VoltageLaw, scaled, voltage
+from boardsim.parts.rules import IdleRule, LatchRule, ReleaseRule, Rule
 
 if TYPE_CHECKING:
     from boardsim.circuit.assemble import Assembly
@@ -62,8 +62,15 @@ def add_bridge_channel(
             parts.add(channel.leads.stamp(f"{name}_lead", inner, start, corner, board.around), k, "leads", label)
     else:
         parts.add(_turned(coil), k, channel.coil_name, label)
-    switch = channel.switch.stamp(f"{name}_s", f"{name}_q", f"{name}_d", corner, rail)
+    leg = channel.switch.resting if _never_on(driven) else channel.switch.stamp
+    switch = leg(f"{name}_s", f"{name}_q", f"{name}_d", corner, rail)
     parts.add(switch, k, channel.switch.part.title or "switch", label)
+
+
+def _never_on(driven: Stamp) -> bool:
+    """Whether what drives a pin is known to stay low all the time."""
+    drives = [e for e in driven.elements if isinstance(e, Drive)]
+    return bool(drives) and all(volts == 0.0 for e in drives for _, volts in e.points)
 
 
 def _with_size(coil: Stamp, name: str, a: str, winding: float) -> Stamp:
@@ -91,6 +98,9 @@ def _of_two(rules: tuple[Rule, ...], channel: Channel) -> Iterator[Rule]:
                 yield replace(rule, besides=others)
         elif isinstance(rule, ReleaseRule):
             yield replace(rule, besides=others)
+        elif isinstance(rule, LatchRule):
+            if channel.forwards or rule.check == "flip":  # what nobody commands is told of once
+                yield replace(rule, besides=others, starts=rule.starts if channel.forwards else -rule.starts)
         else:
             yield rule
 

@@ -13,6 +13,7 @@ from boardsim.parts.rules import Rule
 from boardsim.parts.temperature import in_celsius
 
 _BEYOND = 1e-9  # [s] that a run goes on after its window, so that the window's last instant lies inside
+MANY_BRIDGES = 8  # from which on pivots are worth a thought; with few, and switches of a milliohm, smaller ones do harm
 MODEL_TEMPERATURE = 25.0  # [degC], of models that do not say another; windings carry their own temperature
 
 
@@ -76,6 +77,8 @@ class Deck:
         Stretches in which the edges of clocked lines set the points, however finely the rest is integrated. [s]
     lines : mapping of place to tuple of int
         Places that are no channels but rows and columns of a matrix, and the channels along each.
+    bridges : int
+        Coils in it that lie between two legs.
     """
 
     netlist: str
@@ -93,6 +96,7 @@ class Deck:
     digital: bool = False
     clocked: tuple[tuple[float, float], ...] = ()
     lines: Mapping[int, tuple[int, ...]] = field(default_factory=dict)
+    bridges: int = 0
 
     def text(self, settings: Settings, measures: bool = True) -> str:
         """The whole deck as plain ngspice runs it."""
@@ -104,6 +108,9 @@ class Deck:
             f".options temp={in_celsius(self.corner.junction):g} tnom={MODEL_TEMPERATURE:g} noacct noinit",
             # With event-driven devices ngspice 39 takes the strictest tolerance of truncation; back to the usual one.
             *([".options xtrtol=7"] if self.digital else ()),
+            # Of many resting legs, each milliohms to ground or to the rail, the largest pivots come first, and their elimination fills the
+            # matrix: a step then costs up to five times as much. Pivots down to a tenth of the usual share keep it sparse.
+            *([".options pivrel=1e-4"] if self.bridges >= MANY_BRIDGES else ()),
             f".save {' '.join(self.vectors)}",
             *(self.measures if measures else ()),
             f".tran {min(settings.max_step, duration / 50):.9g} {duration + _BEYOND:.15g} 0 {settings.max_step:.9g}",

@@ -183,6 +183,14 @@ class Coil(Part):
         """The least and the largest that it has. [H]"""
         return self.inductance.min, self.inductance.max
 
+    harmless_name: ClassVar[str] = "release current"
+    """What reports call the current that it may carry while nobody commands it."""
+
+    @property
+    def harmless(self) -> Quantity | None:
+        """What it may carry for ever while nobody commands it; None where that was not given. [A]"""
+        return self.release
+
     @property
     def full_inductance(self) -> Quantity:
         """That which its saturation counts from: with the iron as closed as it gets. [H]"""
@@ -322,8 +330,8 @@ class Coil(Part):
         if self.saturation is not None:
             found += listed(f"coil {label}", inductance_without_iron=self.air_core)
             found += self.saturation.assumed(f"coil {label}")
-        if self.release is None:
-            why = "no release current given: what a coil that is off may carry, from memory"
+        if self.harmless is None:
+            why = f"no {self.harmless_name} given: what a coil that is off may carry, from memory"
             found += (Assumption(f"coil {label}", "harmless current", f"{IDLE_SHARE:.0%} of the settled one", why),)
         return (*found, *self._of_the_winding(label), *self.more_assumed(label))
 

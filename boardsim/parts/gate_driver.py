@@ -96,10 +96,16 @@ class GateDriver(Record):
             ]
             lag, steep = f"V({name}_y2)", _TEN_TO_NINETY * both / self.edge.typ
             up, down = f"{up}*{_past(lag, steep)}", f"{down}*{_past(lag, -steep)}"
-        if self.pulldown is not None:
-            found.append(Resistor(f"{name}_pulldown", pin, GROUND, self.pulldown.typ))
-        volts = f"min({corner.take(self.supply, 'gate_supply')!r},V({rail}))"
-        return tuple(found), f"{volts}*{up}", f"{volts}*{down}"
+        volts = self.level(rail, corner)
+        return (*found, *self.load(name, pin)), f"{volts}*{up}", f"{volts}*{down}"
+
+    def load(self, name: str, pin: str) -> tuple[Element, ...]:
+        """What lies at its input, such as its pull-down."""
+        return () if self.pulldown is None else (Resistor(f"{name}_pulldown", pin, GROUND, self.pulldown.typ),)
+
+    def level(self, rail: str, corner: Corner) -> str:
+        """What an output that is on gives, as an expression. [V]"""
+        return f"min({corner.take(self.supply, 'gate_supply')!r},V({rail}))"
 
 
 def _past(lag: str, steep: float) -> str:

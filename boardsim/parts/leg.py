@@ -9,7 +9,7 @@ from pydantic import model_validator
 
 from boardsim.errors import QuantityError
 from boardsim.parts.base import Corner, Part, Stamp, listed, named_part
-from boardsim.parts.elements import GROUND, Element, Probe, Resistor, VoltageLaw, scaled, voltage
+from boardsim.parts.elements import GROUND, Ammeter, Element, Probe, Resistor, VoltageLaw, scaled, voltage
 from boardsim.parts.gate_driver import GateDriver
 from boardsim.parts.gate_spread import RESISTANCES, charge_spread, paced, resistance_spread, times_in
 from boardsim.parts.mosfet import Mosfet, NMosfet
@@ -136,18 +136,47 @@ class Leg(Part):
     def stamp(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
         """The leg between rail and ground, driven from `pin`, with its middle at the coil's node `load`."""
         driver, up, down = self.driver.elements(name, pin, rail, corner)
-        sources = {"h": rail if self.high.mirrored else load, "l": GROUND}
+        sources, outs = self._sources(load, rail), self._outs(name)
         elements: list[Element] = [*driver]
-        stamps: dict[str, Stamp] = {}
-        for end, part, law, who in (("h", self.high, up, "high transistor"), ("l", self.low, down, "low transistor")):
-            sign, gate, out = (-1.0 if part.mirrored else 1.0), f"{name}_g{end}", f"{name}_o{end}"
-            ohms = self.driver.output_resistance.typ + self.gate.typ + part.gate_resistance.typ
+        for end, part, law in (("h", self.high, up), ("l", self.low, down)):
+            sign, gate, out = (-1.0 if part.mirrored else 1.0), f"{name}_g{end}", outs[end]
             slow, quick = times_in(corner, end, charge_spread(part), self._resistance_spread())
             wanted, held = f"V({name}_w{end})", f"{sign!r}*(V({gate})-V({sources[end]}))"
             elements += [
                 VoltageLaw(f"{name}_w{end}", f"{name}_w{end}", GROUND, law),
                 VoltageLaw(out, out, sources[end], f"{sign!r}*({paced(wanted, held, slow, quick)})"),
             ]
+        return self._built(name, load, corner, rail, elements)
+
+    def resting(self, name: str, pin: str, load: str, corner: Corner, rail: str = "") -> Stamp:
+        """The same leg where its pin stays low all the time: its driver then holds the high transistor off and the low one on.
+
+        What the driver's lags and edges come to when nothing ever moves, without them: of many legs that rest while few are fired
+        they would be most of what a run computes.
+        """
+        sources, outs = self._sources(load, rail), self._outs(name)
+        elements: list[Element] = [
+            Ammeter(outs["h"], outs["h"], sources["h"]),
+            VoltageLaw(outs["l"], outs["l"], sources["l"], self.driver.level(rail, corner)),
+            *self.driver.load(name, pin),
+        ]
+        return self._built(name, load, corner, rail, elements)
+
+    def _sources(self, load: str, rail: str) -> dict[str, str]:
+        """Where the sources of the high and the low transistor are."""
+        return {"h": rail if self.high.mirrored else load, "l": GROUND}
+
+    def _outs(self, name: str) -> dict[str, str]:
+        """The driver's output for each of them."""
+        return {"h": f"{name}_oh", "l": f"{name}_ol"}
+
+    def _built(self, name: str, load: str, corner: Corner, rail: str, elements: list[Element]) -> Stamp:
+        """Both transistors behind what drives their gates, and what judges them."""
+        sources, outs = self._sources(load, rail), self._outs(name)
+        stamps: dict[str, Stamp] = {}
+        for end, part, who in (("h", self.high, "high transistor"), ("l", self.low, "low transistor")):
+            sign, gate, out = (-1.0 if part.mirrored else 1.0), f"{name}_g{end}", outs[end]
+            ohms = self.driver.output_resistance.typ + self.gate.typ + part.gate_resistance.typ
             elements += [Resistor(f"{name}_r{end}", out, gate, ohms)]
             into = scaled(sign / ohms, voltage(out, gate))
             drain = load if part.mirrored or end == "l" else rail

@@ -306,6 +306,24 @@ class MotionRule:
 
 
 @dataclass(frozen=True)
+class LatchRule:
+    """Every pulse leaves a latching coil in the state that it commands, and nothing else flips it.
+
+    `check` says which of these is asked. `at` is the current that flips it [A], `after` how long it has to last [s], `holds` the current
+    that never flips it [A]. `starts` is the state before the first pulse, as the rule's channel has it: 1 where its own pulses send
+    it, -1 the other way, 0 where nobody knows. `besides` are channels that drive the same coil the other way.
+    """
+
+    check: Literal["flip", "stray-flip"]
+    quantity: str
+    at: Limit
+    after: Limit
+    holds: Limit
+    starts: int = 0
+    besides: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
 class DriveRule:
     """At the end of every pulse, when its current is highest, a switch must be driven as hard as that current needs.
 
@@ -417,6 +435,7 @@ Rule = (
     | ReserveRule
     | IdleRule
     | MotionRule
+    | LatchRule
     | SneakRule
     | DipRule
     | LeastRule

@@ -12,7 +12,7 @@ from pathlib import Path
 
 from boardsim.board.reader import Board, Channel
 from boardsim.circuit.assemble import assemble, windows
-from boardsim.circuit.deck import Deck, Settings, Window
+from boardsim.circuit.deck import MANY_BRIDGES, Deck, Settings, Window
 from boardsim.engine.run import DEFAULT_TIME_LIMIT, Engine
 from boardsim.engine.waves import Waves
 from boardsim.errors import DeckRejected, EngineCrash, EngineTimeout, InputError, NoConvergence
@@ -119,10 +119,12 @@ class _Job:
     def run_either(self, settings: Settings, progress: Progress) -> Trial:
         """Run; where that does not converge, once more with another absolute tolerance of currents.
 
-        Event-driven devices make picosecond steps of their own, so that a deck with them begins with the looser one.
+        Event-driven devices make picosecond steps of their own, so that a deck with them begins with the looser one;
+        so does one with many bridges, whose resting legs otherwise set the points.
         """
         tries = [settings, replace(settings, abstol=LOOSE_ABSTOL)]
-        first, second = reversed(tries) if self.deck.digital else tries
+        looser = self.deck.digital or self.deck.bridges >= MANY_BRIDGES
+        first, second = reversed(tries) if looser else tries
         try:
             return self.run(first, progress)
         except NoConvergence:

@@ -177,6 +177,7 @@ def settled_width(board: Board) -> float:
     coils = max(c.coil.inductances[1] / r for c, r in zip(forwards(board), windings, strict=True))
     warmest = board.around.ambient_high if board.around else T_20C
     resistance = board.supply.resistance.typ + board.cable.loop(warmest).typ + board.bulk.esr.max
+    resistance += board.charging.resistance.max if board.charging is not None else 0.0
     ceiling = board.supply.current_ceiling
     if ceiling is not None and board.supply.voltage.max * sum(1 / r for r in windings) > ceiling.min / 3:
         coils *= 2

@@ -83,7 +83,7 @@ def weights_of(channel: int, results: Results) -> list[float]:
     if readings is None:
         return [math.inf] * 4
     energy = max((p.deciding for p in readings.ports if p.channel == channel), default=0.0)
-    current = float(np.max(readings.pull_in[channel][1], initial=0.0))
+    current = float(np.max(readings.pull_in[channel][1] if channel in readings.pull_in else (), initial=0.0))
     return [current, *(_charge(readings.envelopes[wave]) for wave in ("total", "supply")), energy]
 
 

@@ -298,7 +298,7 @@ def _causes(f: Finding, board: Board, deck: Deck | None) -> tuple[Key, ...]:
         return ()
     causes: tuple[Key, ...]
     who = channels_in_question(f, board)
-    if f.check == "pull-in":
+    if f.check in ("pull-in", "flip"):
         causes = ((None, "v_rail"),)
     elif f.place is not None:
         causes = ((f.place, "i_d"), (f.place, "v_ds"))

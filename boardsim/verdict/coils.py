@@ -82,12 +82,14 @@ def harmless_limit(rule: IdleRule | SneakRule, placed: PlacedRule, bench: Bench)
     """What a coil that is off may carry, and the words for it: its release current, or a share of its settled current."""
     limit, board = rule.limit, bench.board
     if limit.value is not None:
-        return limit, f"{placed.part} lets go below"
+        does = "lets go" if limit.name == "release current" else "is sure to stay where it is"
+        return limit, f"{placed.part} {does} below"
     coil = board.channel(placed.channel or 0).coil
-    settled = board.supply.voltage.min / (coil.resistance.max + board.supply.resistance.max)
-    why = f"{rule.share:.0%} of the settled current, since no release current was given: from memory"
+    fed = board.supply.resistance.max + (board.charging.resistance.max if board.charging is not None else 0.0)
+    settled = board.supply.voltage.min / (coil.resistance.max + fed)
+    why = f"{rule.share:.0%} of the settled current, since no {coil.harmless_name} was given: from memory"
     limit = replace(limit, value=rule.share * settled, source=f"assumed: {why}", name="harmless current")
-    return limit, f"a tenth of the settled current of {placed.part}, for want of a release current, is"
+    return limit, f"a tenth of the settled current of {placed.part}, for want of a {coil.harmless_name}, is"
 
 
 def _held(placed: PlacedRule, bound: float | None, margin: float | None, does: str, name: str, remedy: str) -> str:

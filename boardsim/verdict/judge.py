@@ -20,6 +20,7 @@ from boardsim.parts.rules import (
     HeatRule,
     HoldRule,
     IdleRule,
+    LatchRule,
     LeastRule,
     MeanRule,
     MotionRule,
@@ -44,6 +45,7 @@ from boardsim.verdict.drive import judge_drive
 from boardsim.verdict.findings import Finding, Shape
 from boardsim.verdict.heat import judge_heat, judge_warmth
 from boardsim.verdict.hold import judge_hold
+from boardsim.verdict.latching import judge_latch
 from boardsim.verdict.logic_rail import judge_fall, judge_least
 from boardsim.verdict.motion import judge_motion
 from boardsim.verdict.rail import judge_ceiling, judge_dip
@@ -111,6 +113,8 @@ def _probes(rule: Rule, finding: Finding) -> tuple[str, ...]:
             return rule.quantities
         case ShootThroughRule():
             return ()
+        case LatchRule():
+            return (rule.quantity,) if finding.unit == "A" else ()
         case EnergyRule() | TogetherRule():
             return ()  # a close-up counts the energy of avalanches only
         case HeatRule():
@@ -136,7 +140,7 @@ def _beside_the_point(name: str, placed: PlacedRule) -> bool:
         case "breakdown voltage":
             return not isinstance(rule, BreakdownRule | TogetherRule)
         case "on-resistance":
-            return not isinstance(rule, HeatRule | PullInRule)
+            return not isinstance(rule, HeatRule | PullInRule | LatchRule)
         case "threshold":
             return not isinstance(rule, IdleRule)
         case "gate driver's supply":
@@ -144,7 +148,7 @@ def _beside_the_point(name: str, placed: PlacedRule) -> bool:
         case "gate charge of the high transistor" | "gate charge of the low transistor" | "gate resistances":
             return not isinstance(rule, ShootThroughRule | HeatRule)
         case "bulk capacitance" | "bulk series resistance":
-            return placed.channel is not None and not isinstance(rule, PullInRule)
+            return placed.channel is not None and not isinstance(rule, PullInRule | LatchRule)
         case _:
             return False
 
@@ -154,7 +158,7 @@ def _assumed(placed: PlacedRule, deck: Deck) -> tuple[str, ...]:
     coils' own for what happens in a channel.
     """
     own = deck.assumed.get(placed.channel, ())
-    return (*deck.assumed.get(None, ()), *own) if isinstance(placed.rule, PullInRule) else own
+    return (*deck.assumed.get(None, ()), *own) if isinstance(placed.rule, PullInRule | LatchRule) else own
 
 
 def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, bench: Bench) -> Iterator[Finding]:
@@ -194,6 +198,8 @@ def _apply(placed: PlacedRule, readings: Readings, firing: Firing, deck: Deck, b
             yield from judge_idle(rule, placed, readings.idle[_channel(placed)], bench)
         case MotionRule() as rule:
             yield from judge_motion(rule, placed, readings.motions[_channel(placed)], bench)
+        case LatchRule() as rule:
+            yield from judge_latch(rule, placed, readings.throws[_channel(placed)], bench)
         case SneakRule() as rule:
             yield judge_sneak(rule, placed, readings.sneaks[_channel(placed)], firing, bench)
         case DipRule() as rule:

@@ -117,8 +117,9 @@ class BootWatch:
 
 
 def settled(board: Board, channel: Channel, corner: Corner) -> float:
-    """The coil's current once it has settled, from the supply's voltage and the winding alone. [A]"""
-    return float(corner.take(board.supply.voltage, "supply") / channel.coil.ohms(corner, board.around))
+    """The coil's current once it has settled, from the supply's voltage, the winding and a charging resistor alone. [A]"""
+    fed = corner.take(board.charging.resistance, "charging") if board.charging is not None else 0.0
+    return float(corner.take(board.supply.voltage, "supply") / (channel.coil.ohms(corner, board.around) + fed))
 
 
 def take_boot(waves: Waves, deck: Deck, board: Board, boot: Boot) -> BootReading:
@@ -289,7 +290,7 @@ def harmless(board: Board, channel: Channel, corner: Corner) -> float:
     A coil that carries less than its release current lets go of what it holds, and cannot pick it up either. Where no
     release current was given a tenth of the settled current stands for it (`release_assumed` lists it).
     """
-    release = channel.coil.release
+    release = channel.coil.harmless
     amperes = release.min if release is not None else _RELEASE_SHARE * settled(board, channel, corner)
     return float(board.power_up.harmless.typ * amperes)
 
@@ -297,6 +298,8 @@ def harmless(board: Board, channel: Channel, corner: Corner) -> float:
 def release_assumed(board: Board) -> Iterator[Assumption]:
     """What stands for release currents that were not given."""
     for channel in board.channels:
-        if channel.coil.release is None:
+        if channel.coil.harmless is None:
             why = "not given; of a coil that lets go late, from memory"
-            yield Assumption(f"coil {channel.coil_name}", "release current", "10 % of the settled current", why)
+            yield Assumption(
+                f"coil {channel.coil_name}", channel.coil.harmless_name, "10 % of the settled current", why
+            )

@@ -39,9 +39,9 @@ def _judge_channel(
     limit = harmless(board, c, corner)
     margin = (limit - mine.peak) / limit
     lasts = mine.last > limit
-    given = c.coil.release
+    given = c.coil.harmless
     share = f"{board.power_up.harmless.typ:.0%} of {c.coil_name}'s "
-    share += f"release current{'' if given is not None else ', taken as 10 % of its settled one'}"
+    share += f"{c.coil.harmless_name}{'' if given is not None else ', taken as 10 % of its settled one'}"
     what = "before the first enabled frame it carries"
     said = f"{c.label}: {what} up to {in_units(mine.peak, 'A')} ({boot.name}); {in_units(limit, 'A')} count ({share})"
     if margin < 0:
@@ -141,8 +141,8 @@ def _hangs_on(board: Board, c: Channel) -> Iterator[str]:
         yield "time of the first frame"
     if table.harmless.assumed():
         yield "current that does not matter"
-    if c.coil.release is None:
-        yield "release current"
+    if c.coil.harmless is None:
+        yield c.coil.harmless_name
     if board.chain.output_enable is None:
         yield "output enable tied low"
 

@@ -73,6 +73,10 @@ def _fewer(board: Board) -> str:
     level = board.limits.brown_out
     if level is None:
         return ""
+    if (
+        board.charging is not None
+    ):  # pulses live on the reservoir, and what the supply feeds for ever says nothing of them
+        return "; try: a larger reservoir, a longer pause in which it recharges, or fewer at once"
     r_coil = min(c.coil.resistance.min for c in board.channels)
     r = board.supply.resistance.typ + board.cable.loop(293.15).typ
     counts = [(board.supply.voltage.min - level.voltage.max) / r / (level.voltage.max / r_coil)]

@@ -24,6 +24,7 @@ from boardsim.parts.rules import (
     HeatRule,
     HoldRule,
     IdleRule,
+    LatchRule,
     MeanRule,
     MotionRule,
     PullInRule,
@@ -41,6 +42,7 @@ from boardsim.verdict.hold import Valleys, held_spans
 from boardsim.verdict.pulses import OnePulse, Pulses
 from boardsim.verdict.sneak import Growth
 from boardsim.verdict.strokes import Strokes, Travelled, commands
+from boardsim.verdict.throws import Throws
 from boardsim.verdict.watch import (
     Avalanche,
     Avalanches,
@@ -113,6 +115,8 @@ class Readings:
     valleys : mapping of channel to Valleys
         Of its coil's current while its pulses are held.
     reserve : (times, voltages) of a boost's reservoir when peaks of its bank begin; None without one
+    throws : mapping of channel to Throws
+        Which of its pulses flip its latching coil.
     """
 
     high: Mapping[Key, tuple[float, float]]
@@ -138,6 +142,7 @@ class Readings:
     sneaks: Mapping[int, Growth] = field(default_factory=dict)
     valleys: Mapping[int, Valleys] = field(default_factory=dict)
     reserve: tuple[Floats, Floats] | None = None
+    throws: Mapping[int, Throws] = field(default_factory=dict)
 
 
 class SignalTable:
@@ -208,6 +213,11 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
     valleys = {
         c: Valleys(held_spans(firing, c, start, stop)) for c, r in rules if isinstance(r, HoldRule) and c is not None
     }
+    throws = {
+        c: Throws.of(r, firing.spans(c), [firing.spans(k) for k in r.besides], stop)
+        for c, r in rules
+        if isinstance(r, LatchRule) and r.check == "flip" and c is not None
+    }
     drive = {
         (c, quantity): Samples(_within(firing.driven_until(c), start, stop))
         for c, r in rules
@@ -267,6 +277,8 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
             valley.feed(t, y[row[c, "i_coil"]])
         for sample, reserved in reserves:
             sample.feed(t, y[row[None, reserved.quantity]])
+        for c, throw in throws.items():
+            throw.feed(t, y[row[c, "i_coil"]], y[row[None, "v_rail"]])
         for (c, quantity), sample in (*drive.items(), *at_ends.items()):
             sample.feed(t, y[row[c, quantity]])
         for (c, _), (watch, rule) in avalanches.items():
@@ -337,6 +349,7 @@ def take_readings(waves: Waves, deck: Deck, firing: Firing) -> Readings:
         sneaks,
         valleys,
         next(((s.times, s.values) for s, _ in reserves), None),
+        throws,
     )
 
 

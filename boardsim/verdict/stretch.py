@@ -79,7 +79,7 @@ def _around_moment(f: Finding, at: float, board: Board, firing: Firing) -> Stret
         # The coil is empty in less than it takes to fill; what comes after the next turn-on is another event.
         start, stop = at - reach / 2, at + reach
         stop = min(stop, float(after[0, 0])) if len(after) else stop
-    elif f.check == "pull-in" and len(before):
+    elif f.check in ("pull-in", "flip") and len(before):
         start = float(before[-1, 0]) - 0.1 * (at - float(before[-1, 0]))
     elif f.check == "overlap" and len(before):
         start = float(before[-1, 1]) - reach / 3  # the turn-off that the coil has not got over
