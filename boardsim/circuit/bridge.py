@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from boardsim.circuit.assemble import Assembly
 
 _DRAWN = "i_drawn"  # what a coil carries, whichever way
+_MOVES = ("m", "m/s")
 
 
 def add_bridge_channel(
@@ -84,8 +85,8 @@ def _with_size(coil: Stamp, name: str, a: str, winding: float) -> Stamp:
 
 
 def _turned(coil: Stamp) -> Stamp:
-    """The same coil, which stands in the deck already, seen from its other end."""
-    probes = tuple(replace(p, signal=scaled(-1.0, p.signal)) for p in coil.probes)
+    """The same coil, which stands in the deck already, seen from its other end: what it moves is the same from either."""
+    probes = tuple(p if p.unit in _MOVES else replace(p, signal=scaled(-1.0, p.signal)) for p in coil.probes)
     return replace(coil, elements=(), probes=(*probes, Probe(_DRAWN, (), "A")), assumptions=())
 
 
