@@ -36,6 +36,11 @@ _OURS = (
     "edges.csv",
     "volley.png",
     "closeup-*.png",
+    "fired.json",
+    "overlay.png",
+    "overlay.json",
+    "computed.csv",
+    "coil.toml",
 )
 
 
