@@ -4,8 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
-from functools import cached_property
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -14,7 +13,7 @@ from boardsim.parts.coil import Coil
 from boardsim.quantities import in_units
 from boardsim.verdict.findings import Floats
 from boardsim.verdict.fit_model import Drive, Model, Values, model_of
-from boardsim.verdict.overlay import Difference, Overlay, noise_of
+from boardsim.verdict.overlay import Course, Difference, Overlay, noise_of
 
 _MOST_POINTS = 3000  # that are fitted; of more the mean of neighbours is taken
 _TOLD = 0.3  # standard error as a share of the value, above which a trace does not tell it
@@ -22,11 +21,26 @@ _WEIGHS = 0.3  # share of a number in a direction, above which the direction is 
 _SURE = 2.0  # standard errors by which a core loss must stand off from none
 _RESOLVED = 1e-4  # of the peak: an oscilloscope of 12 bits resolves 1/4096/sqrt(12) = 7e-5 of its range
 _STEP = 1e-4  # of a value, to see what it does to the current
+# Where something moves a small change of a value shifts blows and rebounds, and the sum of squares is rough: wider steps see through it.
+_ROUGH_STEP, _FINE_STEP = 1e-2, 2e-3
+_ALIKE = 1.01  # times the least that is left: by about as much it jumps with one rebound more or less, so that it does not decide
 _STANDS_OUT, _SHARE = (
     3.0,
     0.01,
 )  # a fit that leaves more than so many times the noise, and this share of the peak, is begun anew
-_BEGIN_AGAIN = ({"inductance": 0.7}, {"inductance": 1.4}, {"closed_inductance": 0.6}, {"closed_inductance": 1.6})
+_LATE = 0.12  # share of the pulse at its end, where what moves has arrived
+_ENDS = 4  # searches that have to end well, to see how far they agree
+_MOST_TRIES = 25  # of a search
+_ROUGHLY = 4.0  # steps in an impact, where a place to begin is looked for
+_AS_GOOD = 1.05  # times the noise: a fit that leaves no more is the one
+_BEGIN_AGAIN: tuple[Values, ...] = (
+    {"closed_inductance": 0.85},
+    {"closed_inductance": 1.18},
+    {"inductance": 0.9},
+    {"inductance": 1.1},
+    {"inductance": 0.85, "closed_inductance": 1.18},
+    {"inductance": 1.18, "closed_inductance": 0.85},
+)
 _UNITS = {"resistance": "ohm", "inductance": "H", "closed_inductance": "H", "loss": "S"}
 _RANGE = {
     "resistance": 5.0,
@@ -105,6 +119,8 @@ class Fit:
         Of what the fit leaves; noise of the trace. [A]
     moved : float
         How far what moves got in the model, as a share of its way; 0 where nothing does. [1]
+    follows : bool
+        Whether the model follows the trace: what is left is not much more than noise.
     t, current : (n,) array
         The fitted model's current, in the pattern's time. [s], [A]
     """
@@ -117,6 +133,7 @@ class Fit:
     largest: float
     noise: float
     moved: float
+    follows: bool
     t: Floats
     current: Floats
 
@@ -142,6 +159,10 @@ def fit(coil: Coil, overlay: Overlay) -> Fit:
     and 1/10 to 10 times the record, the core loss as a conductance G from 0 to 0.2/R. The drive is the measured voltage over the
     whole trace; without one the computed voltage until the turn-off, since after it the voltage lasts as long as the computed current.
 
+    Where something moves the sum of squares has minima in which a blow comes too early or too late, and is rough for rebounds: the
+    search begins in several places, one of them where the flux linkage tells (integral of v - R i, over i), and how far values that were
+    tried lie apart which leave within 1 % of the least counts as an error.
+
     The covariance is s^2 (J^T J)^-1 with the variance s^2 of what is left, at least (1e-4 of the peak)^2, times (1 + r) / (1 - r), where
     r is the correlation of neighbouring residuals: what is left is seldom white, and then counts as fewer points. Where the smallest
     singular value of J / s says that a combination of numbers is free within 30 %, the number that weighs most in it is left as the record has
@@ -166,12 +187,18 @@ class _Search:
     """One fit under way."""
 
     model: Model
+    rough: Model
+    direct: Values
     driven_by: str
     t: Floats
     y: Floats
     start: float
     with_delay: bool
     noise: float
+    moves: bool
+    step: float = _STEP
+    spread: dict[str, float] = field(default_factory=dict)
+    seen: list[tuple[float, Values]] | None = None
 
     @staticmethod
     def of(coil: Coil, overlay: Overlay, data: Difference) -> _Search:
@@ -189,9 +216,16 @@ class _Search:
         if (block := math.ceil(len(t) / _MOST_POINTS)) > 1:
             whole = len(t) // block * block
             t, y = (a[:whole].reshape(-1, block).mean(axis=1) for a in (t, y))
-        return _Search(model_of(coil, drive), driven_by, t, y, start, volts is None, noise)
+            noise /= math.sqrt(block)
+        level = overlay.baseline.get("current", 0.0)
+        direct = _direct(drive, t, y - level, course, volts is not None)
+        moves = hasattr(coil, "motion")
+        fine, rough = model_of(coil, drive), model_of(coil, drive, _ROUGHLY)
+        return _Search(
+            fine, rough, direct, driven_by, t, y, start, volts is None, noise, moves, _FINE_STEP if moves else _STEP
+        )
 
-    @cached_property
+    @property
     def peak(self) -> float:
         return float(np.abs(self.y).max())
 
@@ -202,29 +236,34 @@ class _Search:
     def result(self) -> Fit:
         free = [n for n in self.model.names if not (n == "loss" and self.with_delay)]
         why: dict[str, str] = {}
-        values = self._best(free, {})
+        values = self._best(free)
+        held: dict[str, float] = {}
         while (loose := self._loose(values, free)) is not None:
             why[loose] = self._because(loose, values)
             free.remove(loose)
-            values = self._best(free, values)
+            # What never moved stays so, whatever the record makes of it.
+            held[loose] = values[loose] if loose == "closed_inductance" else self.model.start[loose]
+            values = self._solve(free, values, held)
         errors = self._errors(values, free)
         before, least = self.model.start["loss"], False
         if "loss" not in free:
             why["loss"] = "without the voltage across the coil, measured, it is not told from a delay"
-            values, errors = self._with_loss(before, values, errors, free, self._best(free, values, {"loss": 0.0}))
+            values, errors = self._with_loss(
+                before, values, errors, free, held, self._solve(free, values, {**held, "loss": 0.0})
+            )
         elif values["loss"] < _SURE * errors["loss"]:
             why["loss"] = "the trace shows no core loss beyond its noise"
             free.remove("loss")
             most = values["loss"] + _SURE * errors["loss"]
             least = before > most
-            values, errors = self._with_loss(most if least else before, values, errors, free, values)
+            values, errors = self._with_loss(most if least else before, values, errors, free, held, values)
         return self._fit(values, errors, why, least)
 
     def _with_loss(
-        self, loss: float, values: Values, errors: Values, free: Sequence[str], other: Values
+        self, loss: float, values: Values, errors: Values, free: Sequence[str], held: Values, other: Values
     ) -> tuple[dict[str, float], dict[str, float]]:
         """The fit with a core loss that the trace does not tell; how far that moves the others counts as an error of theirs."""
-        found = self._best(free, values, {"loss": loss})
+        found = self._solve(free, values, {**held, "loss": loss})
         tight = self._errors(found, free)
         return found, {**errors, **{n: math.hypot(tight[n], found[n] - other[n]) for n in free}}
 
@@ -233,7 +272,8 @@ class _Search:
         t, i, moved = self.model.run(values, self.start)
         numbers = []
         for name in self.model.names:
-            before, value = self.model.start[name], values[name]
+            before = self.model.start[name]
+            value = before if name in why and name != "loss" else values[name]
             error = errors[name] if name not in why else math.inf
             if name == "loss":
                 told = "at least" if least else "left" if name in why else "fitted"
@@ -252,23 +292,43 @@ class _Search:
             float(left[np.argmax(np.abs(left))]),
             self.noise,
             moved,
+            self._rms(values) <= max(_STANDS_OUT * self.noise, _SHARE * self.peak),
             t + values["delay"],
             i,
         )
 
     # ------------------------------------------------------------------------------------------------ least squares
 
-    def _best(self, free: Sequence[str], begin: Values, held: Values | None = None) -> dict[str, float]:
-        """The values that leave least; begun anew elsewhere where much more than noise is left."""
-        best = self._solve(free, begin, held or {})
-        rest = self._rms(best)
-        if "closed_inductance" in self.model.names and rest > max(_STANDS_OUT * self.noise, _SHARE * self.peak):
-            for factors in _BEGIN_AGAIN:
-                again = {n: self.model.start[n] * factors.get(n, 1.0) for n in free}
-                other = self._solve(free, again, held or {})
-                if self._rms(other) < 0.98 * rest:
-                    best, rest = other, self._rms(other)
+    def _best(self, free: Sequence[str]) -> dict[str, float]:
+        """The values that leave least. Where something moves there are minima beside it, in which a blow comes too early or too
+        late: there the search is begun in several places, roughly, and the best is refined.
+        """
+        first = {n: self._within(n, self.direct.get(n, self.model.start[n])) for n in free}
+        if not self.moves:
+            return self._solve(free, first, {})
+        rough = replace(self, model=self.rough, step=_ROUGH_STEP)
+        enough = max(_AS_GOOD * self.noise, _RESOLVED * self.peak)
+        found: list[tuple[float, dict[str, float]]] = []
+        for begin in (
+            first,
+            {n: self.model.start[n] for n in free},
+            *({**first, **_times(first, f)} for f in _BEGIN_AGAIN),
+        ):
+            values = rough._solve(free, begin, {})
+            found.append((rough._rms(values), values))
+            if sum(rms < enough for rms, _ in found) >= _ENDS:
+                break
+        fine = replace(self, step=_ROUGH_STEP, seen=[])
+        best = fine._solve(free, min(found, key=_first)[1], {})
+        best = min(best, replace(fine, step=_FINE_STEP)._solve(free, best, {}), key=self._rms)
+        ends = [*found, *((rms / self._rms(best) * min(found, key=_first)[0], v) for rms, v in fine.seen or ())]
+        most = _ALIKE * min(found, key=_first)[0]
+        self.spread = {n: max((abs(v[n] - best[n]) for rms, v in ends if rms <= most), default=0.0) for n in free}
         return best
+
+    def _within(self, name: str, value: float) -> float:
+        before, most = self.model.start[name], _RANGE.get(name, 1.0)
+        return min(max(value, before / most), before * most) if name in _RANGE else before
 
     def _solve(self, free: Sequence[str], begin: Values, held: Values) -> dict[str, float]:
         from scipy.optimize import least_squares
@@ -288,7 +348,7 @@ class _Search:
             x_scale="jac",
             ftol=1e-8,
             xtol=1e-8,
-            max_nfev=40,
+            max_nfev=_MOST_TRIES,
         )
         return values(found.x)
 
@@ -321,7 +381,10 @@ class _Search:
 
     def _current(self, values: Values) -> Floats:
         t, i, _ = self.model.run(values, self.start)
-        return np.interp(self.t - values["delay"], t, i) + values["offset"]
+        found: Floats = np.interp(self.t - values["delay"], t, i) + values["offset"]
+        if self.seen is not None:
+            self.seen.append((float(np.sqrt(np.mean((self.y - found) ** 2))), values))
+        return found
 
     def _residuals(self, values: Values) -> Floats:
         return self.y - self._current(values)
@@ -346,7 +409,7 @@ class _Search:
         return np.column_stack(columns)
 
     def _stepped(self, name: str, value: float) -> float:
-        return value + 0.01 * self.model.start[name] if name == "loss" else value * math.exp(_STEP)
+        return value + 0.01 * self.model.start[name] if name == "loss" else value * math.exp(self.step)
 
     # ------------------------------------------------------------------------------------------- what the trace tells
 
@@ -391,6 +454,63 @@ class _Search:
             if moved < 0.5:
                 return "nothing moves far in this trace, so that it never shows the closed coil"
         return f"the trace does not tell it within {_TOLD:.0%}, whatever the others are"
+
+
+def _first(pair: tuple[float, dict[str, float]]) -> float:
+    return pair[0]
+
+
+def _times(values: Values, factors: Values) -> dict[str, float]:
+    return {n: values[n] * k for n, k in factors.items() if n in values}
+
+
+def _direct(drive: Drive, t: Floats, i: Floats, course: Course, whole: bool) -> dict[str, float]:
+    """Resistance and inductances as the flux linkage tells them, for a fit to begin with.
+
+    Parameters
+    ----------
+    drive : Drive
+    t, i : (n,) array
+        The measured current [A] at these times [s].
+    course : Course
+    whole : bool
+        Whether the drive is that of the trace, until its current is gone.
+
+    Returns
+    -------
+    dict
+        "resistance" [ohm], "inductance" and "closed_inductance" [H]; what cannot be told is left out.
+
+    Notes
+    -----
+    The flux linkage is the integral of v - R i. Where it begins and ends at nothing R is the integral of v over that of i; else it is the R
+    for which flux over current stands still at the end of the pulse, where nothing moves any more: v - R i = (flux / i) di/dt. L is flux over current: early in the rise that of the open coil, at the end
+    of the pulse that of the closed one. Takes no account of core loss.
+    """
+    v = np.interp(t, drive.t, drive.volts)
+    width = course.off - course.on
+    late = (t > course.off - _LATE * width) & (t < course.off - 0.005 * width)
+    rising = (t > course.on) & (t < course.off)
+    if late.sum() < 4 or i.max() <= 0 or float(i[late].mean()) <= 0:
+        return {}
+    volts, amperes = float(v[late].mean()), float(i[late].mean())
+    if whole and abs(float(i[-5:].mean())) < 0.02 * i.max():
+        ohms = float(np.trapezoid(v, t) / np.trapezoid(i, t))
+    else:
+        middle = t <= course.off - _LATE * width / 2
+        growth = float(np.polyfit(t[late], i[late], 1)[0]) / amperes
+        flux, charge = float(np.trapezoid(v[middle], t[middle])), float(np.trapezoid(i[middle], t[middle]))
+        ohms = (volts - flux * growth) / (amperes - charge * growth)
+    if not ohms > 0:
+        return {}
+    steps = np.concatenate([[0.0], np.cumsum(((v - ohms * i)[1:] + (v - ohms * i)[:-1]) / 2 * np.diff(t))])
+    found = {"resistance": ohms}
+    until = int(np.argmax(rising & (i > 0.3 * i.max())))
+    early = rising & (np.arange(len(t)) < until) & (i > 0.1 * i.max())
+    for name, where in (("inductance", early), ("closed_inductance", late)):
+        if where.sum() >= 2 and (henries := float(np.median(steps[where] / i[where]))) > 0:
+            found[name] = henries
+    return found
 
 
 def words(number: Fitted) -> str:

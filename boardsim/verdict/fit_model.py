@@ -74,8 +74,15 @@ class Model:
     run: Callable[[Values, float], tuple[Floats, Floats, float]]
 
 
-def model_of(coil: Coil, drive: Drive) -> Model:
+def model_of(coil: Coil, drive: Drive, steps: float = _IN_CONTACT) -> Model:
     """The forward model of a coil.
+
+    Parameters
+    ----------
+    coil : Coil
+    drive : Drive
+    steps : float
+        In an impact, where something moves. [1]
 
     Raises
     ------
@@ -96,13 +103,13 @@ def model_of(coil: Coil, drive: Drive) -> Model:
         return Model(
             ("resistance", "inductance", "closed_inductance", "loss"),
             start | closed,
-            lambda values, i0: moving(drive, values, i0, motion, None),
+            lambda values, i0: moving(drive, values, i0, motion, None, steps),
         )
     if isinstance(coil, MovingMagnetCoil) and type(coil) is MovingMagnetCoil:
         _short_enough(coil.motion, drive)
         constant = coil.force_constant.typ * (1 if coil.wired == "right" else -1)
         magnet = coil.motion
-        return Model(tuple(start), start, lambda values, i0: moving(drive, values, i0, magnet, constant))
+        return Model(tuple(start), start, lambda values, i0: moving(drive, values, i0, magnet, constant, steps))
     raise InputError(
         f"--fit: coils of kind {coil.kind!r} have no model that a trace could be fitted to; leave --fit out"
     )
@@ -147,7 +154,7 @@ def at_rest(drive: Drive, values: Values, start: float) -> tuple[Floats, Floats,
 
 
 def moving(
-    drive: Drive, values: Values, start: float, motion: Motion, constant: float | None
+    drive: Drive, values: Values, start: float, motion: Motion, constant: float | None, steps: float = _IN_CONTACT
 ) -> tuple[Floats, Floats, float]:
     """Current of a coil that moves a plunger or, with a force constant, a magnet.
 
@@ -160,6 +167,8 @@ def moving(
     motion : Motion
     constant : float or None
         Force constant of a magnet, negative where it is wired the other way round; None for a plunger. [N/A]
+    steps : float
+        In an impact. [1]
 
     Returns
     -------
@@ -175,7 +184,7 @@ def moving(
     """
     r, opened, loss = values["resistance"], values["inductance"], values["loss"]
     k = 1 / (1 + r * loss)
-    t, volts, means = drive.evenly(_step(motion, drive))
+    t, volts, means = drive.evenly(_step(motion, drive, steps))
     h = float(t[1] - t[0])
     way, mass = motion.travel.typ, motion.mass.typ
     rest, slope = 1 / opened, 0.0
@@ -215,8 +224,8 @@ def moving(
     return t, inner + loss * k * (volts - r * inner), furthest / way
 
 
-def _step(motion: Motion, drive: Drive) -> float:
-    return min(motion.contact.typ / _IN_CONTACT, float(drive.t[-1] - drive.t[0]) / 1000)
+def _step(motion: Motion, drive: Drive, steps: float = _IN_CONTACT) -> float:
+    return min(motion.contact.typ / steps, float(drive.t[-1] - drive.t[0]) / 1000)
 
 
 def _short_enough(motion: Motion, drive: Drive) -> None:

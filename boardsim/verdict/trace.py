@@ -6,6 +6,7 @@ semicolon or tab between them and a decimal point or comma in them.
 
 from __future__ import annotations
 
+import contextlib
 import csv
 import math
 import re
@@ -299,7 +300,8 @@ def _factor(unit: str, dimension: Dimension) -> float:
         return parse(f"1 {unit}", dimension).typ
     except QuantityError:
         if len(unit) > 2 and unit != unit.lower():  # "Second", "VOLTS"
-            return parse(f"1 {unit.lower()}", dimension).typ
+            with contextlib.suppress(QuantityError):
+                return parse(f"1 {unit.lower()}", dimension).typ
         raise
 
 
