@@ -169,7 +169,8 @@ def fit(coil: Coil, overlay: Overlay) -> Fit:
     it, and the rest is fitted again. A core loss less than two standard errors from none is no value: the record's stays where it
     lies within two; else the least resistance is given. After a step of voltage a core loss and a delay do the same to the current,
     so that without a measured voltage the record's core loss stays. How far what is taken for it moves R and L (without a voltage: against
-    none) counts as an error of theirs.
+    none) counts as an error of theirs, and so does half the time between two points of a measured voltage, within which its step lies somewhere:
+    to the current half a point is a conductance of half a point over L.
     """
     data = next((d for d in overlay.differences if d.quantity == "current"), None)
     if data is None:
@@ -197,6 +198,7 @@ class _Search:
     noise: float
     moves: bool
     step: float = _STEP
+    half_a_point: float = 0.0
     spread: dict[str, float] = field(default_factory=dict)
     seen: list[tuple[float, Values]] | None = None
 
@@ -220,9 +222,21 @@ class _Search:
         level = overlay.baseline.get("current", 0.0)
         direct = _direct(drive, t, y - level, course, volts is not None)
         moves = hasattr(coil, "motion")
+        half = 0.0 if volts is None else float(np.median(np.diff(volts.t))) / 2
         fine, rough = model_of(coil, drive), model_of(coil, drive, _ROUGHLY)
         return _Search(
-            fine, rough, direct, driven_by, t, y, start, volts is None, noise, moves, _FINE_STEP if moves else _STEP
+            fine,
+            rough,
+            direct,
+            driven_by,
+            t,
+            y,
+            start,
+            volts is None,
+            noise,
+            moves,
+            _FINE_STEP if moves else _STEP,
+            half,
         )
 
     @property
@@ -245,6 +259,13 @@ class _Search:
             held[loose] = values[loose] if loose == "closed_inductance" else self.model.start[loose]
             values = self._solve(free, values, held)
         errors = self._errors(values, free)
+        if "loss" in free:
+            # A step of the voltage may lie anywhere between two points: that much of a delay passes for a core loss, and moves L.
+            blind = self.half_a_point / values["inductance"]
+            errors["loss"] = math.hypot(errors["loss"], blind)
+            if "inductance" in free:
+                moved = values["inductance"] * values["resistance"] * blind
+                errors["inductance"] = math.hypot(errors["inductance"], moved)
         before, least = self.model.start["loss"], False
         if "loss" not in free:
             why["loss"] = "without the voltage across the coil, measured, it is not told from a delay"
@@ -360,7 +381,7 @@ class _Search:
                 yield -math.log(_RANGE[name]), math.log(_RANGE[name])
         yield -0.5, 0.5  # offset, of the peak
         if self.with_delay:
-            yield -0.1, 0.1  # of the span
+            yield -0.3, 0.3  # of the span
 
     def _to(self, name: str, value: float) -> float:
         before = self.model.start[name]
