@@ -169,8 +169,7 @@ def fit(coil: Coil, overlay: Overlay) -> Fit:
     it, and the rest is fitted again. A core loss less than two standard errors from none is no value: the record's stays where it
     lies within two; else the least resistance is given. After a step of voltage a core loss and a delay do the same to the current,
     so that without a measured voltage the record's core loss stays. How far what is taken for it moves R and L (without a voltage: against
-    none) counts as an error of theirs, and so does half the time between two points of a measured voltage, within which its step lies somewhere:
-    to the current half a point is a conductance of half a point over L.
+    none) counts as an error of theirs, and so does half the time between two points of a measured voltage, within which its steps lie somewhere.
     """
     data = next((d for d in overlay.differences if d.quantity == "current"), None)
     if data is None:
@@ -259,13 +258,10 @@ class _Search:
             held[loose] = values[loose] if loose == "closed_inductance" else self.model.start[loose]
             values = self._solve(free, values, held)
         errors = self._errors(values, free)
-        if "loss" in free:
-            # A step of the voltage may lie anywhere between two points: that much of a delay passes for a core loss, and moves L.
-            blind = self.half_a_point / values["inductance"]
-            errors["loss"] = math.hypot(errors["loss"], blind)
-            if "inductance" in free:
-                moved = values["inductance"] * values["resistance"] * blind
-                errors["inductance"] = math.hypot(errors["inductance"], moved)
+        if self.half_a_point:
+            # A step of the voltage may lie anywhere between two points: what half a point of delay does is an error as well.
+            later = replace(self, t=self.t + self.half_a_point)._solve(free, values, held)
+            errors = {n: math.hypot(e, later[n] - values[n]) for n, e in errors.items()}
         before, least = self.model.start["loss"], False
         if "loss" not in free:
             why["loss"] = "without the voltage across the coil, measured, it is not told from a delay"
@@ -392,6 +388,9 @@ class _Search:
         for name, u in zip(free, x, strict=False):
             before = self.model.start[name]
             found[name] = before * (float(u) if name == "loss" else math.exp(u))
+        if "closed_inductance" in found:  # an iron plunger never takes from the inductance as it comes in
+            opened = found.get("inductance", self.model.start["inductance"])
+            found["closed_inductance"] = max(found["closed_inductance"], opened)
         found["offset"] = float(x[len(free)]) * self.peak
         found["delay"] = float(x[len(free) + 1]) * self._span if self.with_delay else 0.0
         return found
