@@ -281,8 +281,7 @@ class _Search:
     ) -> tuple[dict[str, float], dict[str, float]]:
         """The fit with a core loss that the trace does not tell; how far that moves the others counts as an error of theirs."""
         found = self._solve(free, values, {**held, "loss": loss})
-        tight = self._errors(found, free)
-        return found, {**errors, **{n: math.hypot(tight[n], found[n] - other[n]) for n in free}}
+        return found, {**errors, **{n: math.hypot(errors[n], found[n] - other[n]) for n in free}}
 
     def _fit(self, values: Values, errors: Values, why: Mapping[str, str], least: bool) -> Fit:
         left = self._residuals(values)
