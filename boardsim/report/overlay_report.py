@@ -109,6 +109,7 @@ def _fit(found: Overlaid) -> dict[str, Any] | None:
         "largest": fit.largest,
         "noise": fit.noise,
         "moved": fit.moved,
+        "follows": fit.follows,
         "record": found.record,
     }
 
@@ -136,9 +137,9 @@ def print_overlay(found: Overlaid, console: Console, picture: Path, folder: Path
     console.print(Text(plain(f"{found.board}, pattern {found.pattern}: {found.label}, pulse {found.pulse}"), "bold"))
     on, off = moment(laid.course.on), moment(laid.course.off)
     where = (
-        f"its output is on from {on} to {off}; computed with {found.corner} parts"
+        f"the output is on from {on} to {off}; computed with {found.corner} parts"
         if found.corner == "nominal"
-        else (f"its output is on from {on} to {off}; corner: {found.corner}")
+        else (f"the output is on from {on} to {off}; corner: {found.corner}")
     )
     print_section(console, "Compared", [where, _aligned(found), *map(difference_words, laid.differences)])
     print_section(console, "Fitted", list(_fitted(found)))
@@ -188,6 +189,11 @@ def _fitted(found: Overlaid) -> Iterator[str]:
         f"the fit leaves {in_units(fit.rms, 'A')} root mean square, {_signed(fit.largest, 'A')} at most, where the trace has "
         f"{in_units(fit.noise, 'A')} of noise{moves}"
     )
+    if not fit.follows:
+        yield (
+            "the fitted coil does not follow the trace: something is in it that the model has not (a core that saturates, a motion that is described "
+            "otherwise, another coil); do not take these numbers over"
+        )
 
 
 def _judged(found: Overlaid) -> str:

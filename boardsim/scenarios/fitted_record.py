@@ -44,7 +44,11 @@ def record_of(board: Board, channel: Channel, fit: Fit, trace: str) -> str:
     had = dict(found)
     for name in _SOURCES:
         found.pop(name, None)
-    lines = [f"[coils.{_key(channel.coil_name)}]  # fitted to {_comment(trace)}, driven by {fit.driven_by}"]
+    warning = "# The fitted coil does not follow the trace: do not take these numbers over."
+    lines = [
+        *([] if fit.follows else [warning]),
+        f"[coils.{_key(channel.coil_name)}]  # fitted to {_comment(trace)}, driven by {fit.driven_by}",
+    ]
     order = [*dict.fromkeys(["kind", *(n for n in fitted if n != "core_loss"), *found, "core_loss"])]
     for name in order:
         if name in fitted and (line := _line(fitted[name], had.get(name))):

@@ -107,13 +107,23 @@ def test_results_and_files_may_move_together(run: Run, fired: Path, tmp_path: Pa
 
 
 @pytest.mark.engine
-def test_a_valve_from_firing_it_to_its_record(run: Run, tmp_path: Path) -> None:
-    status, _, _ = run("fire", "board.toml", "pattern.toml", "--out", "out")
-    assert (tmp_path / "out" / "fired.json").is_file()
+@pytest.mark.slow
+def test_fire_leaves_what_overlay_needs_and_no_more(run: Run, tmp_path: Path) -> None:
+    run("fire", "board.toml", "pattern.toml", "--out", "out")
+    assert (tmp_path / "out" / "fired.json").stat().st_size < 2000
+    status, out, _ = run("overlay", "out", "valve.csv", *COLUMNS, "--pulse", "2")
+    assert status == 0
+    assert "seed valve, pulse 2" in out
+    assert (
+        json.loads((tmp_path / "out" / "overlay-valve" / "overlay.json").read_text(encoding="utf-8"))["verdict"] is None
+    )
 
+
+@pytest.mark.engine
+def test_a_valve_from_its_trace_to_its_record(run: Run, fired: Path, tmp_path: Path) -> None:
     # A made-up trace of 25.2 ohm and 22.4 mH, 0.25 V and 8 mA to a step, over the board's 24 ohm and 20 mH.
     status, out, _ = run("overlay", "out", "valve.csv", *COLUMNS, "--fit", "--within", "3")
-    assert status == 1
+    assert status == 1, out
     folder = tmp_path / "out" / "overlay-valve"
     found = json.loads((folder / "overlay.json").read_text(encoding="utf-8"))
     assert found["verdict"] == "fail"
