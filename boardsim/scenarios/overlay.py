@@ -140,7 +140,7 @@ def overlay(
     nominal parts unless told otherwise, since the board on the bench is no worst case. Windings then have the temperature that
     their resistance was given for.
     """
-    firing, watch = _pulse(board, pattern, asked)
+    firing, watch = pulse_of(board, pattern, asked)
     (result,) = run_corners(board, firing, (asked.corner,), keep, crew, progress, measure=watch, pictured=False)
     if result.trial is None or watch.found is None:
         assert result.failure is not None  # without a run there is one
@@ -172,8 +172,14 @@ def overlay(
     )
 
 
-def _pulse(board: Board, pattern: Pattern, asked: Asked) -> tuple[Firing, CourseWatch]:
-    """The firing until the pulse is over, and what cuts the pulse out of it."""
+def pulse_of(board: Board, pattern: Pattern, asked: Asked) -> tuple[Firing, CourseWatch]:
+    """The firing until a pulse is over, and what cuts the pulse out of its waveforms.
+
+    Raises
+    ------
+    InputError
+        If the channel has no such pulse, or is still on at the end.
+    """
     firing = fire(board, pattern)
     number, coil = asked.channel.number, asked.channel.coil
     spans = firing.on[number]
@@ -185,7 +191,10 @@ def _pulse(board: Board, pattern: Pattern, asked: Asked) -> tuple[Firing, Course
         )
         raise InputError(f"--pulse {asked.pulse}: {said} in this pattern")
     on, off = (float(t) for t in spans[asked.pulse - 1])
-    later = float(spans[asked.pulse, 0]) if asked.pulse < len(spans) else firing.duration
+    both = [
+        firing.on[c] for c in (number, asked.channel.opposite) if c is not None
+    ]  # a full bridge fires its coil both ways
+    later = min((float(t) for each in both for t in each[:, 0] if t >= off), default=firing.duration)
     settled = off + _SETTLE * coil.inductances[1] / coil.resistance.min + coil.return_time
     start, stop = max(0.0, on - _BEFORE * (off - on)), min(later, settled, firing.duration)
     if off >= firing.duration:

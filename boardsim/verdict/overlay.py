@@ -242,8 +242,8 @@ def _begin(wave: Trace | Course, course: Course, quantity: str) -> float:
     base = float(y[0]) if isinstance(wave, Course) else float(np.median(y[: max(3, len(y) // 100)]))
     away = y - base
     computed = float(np.abs(course.waves[quantity]).max())
-    on = (course.t > course.on) & (course.t < course.off)
-    settled = float(np.median(course.waves[quantity][on]))
+    evenly = np.linspace(course.on, course.off, 999)[1:-1]  # the computed points crowd at edges
+    settled = float(np.median(np.interp(evenly, course.t, course.waves[quantity])))
     noise = noise_of(y)
     # What a turn-off gives is a higher voltage than what the turn-on does: the computed one tells what to look for. Of a current not the
     # tallest spike.

@@ -15,9 +15,12 @@ import pytest
 from boardsim import cli
 from boardsim.board.reader import read_board
 from boardsim.board.toml_file import read_toml
+from boardsim.firing.schedule import fire
+from boardsim.firing.sources import read_source
 from boardsim.parts.coil import Coil
 from boardsim.report.origin import origin_of, read_origin, write_origin
 from boardsim.scenarios.fitted_record import record_of
+from boardsim.scenarios.overlay import ask, pulse_of
 from boardsim.verdict.fit import Fit, Fitted
 
 BOARDS = Path(__file__).resolve().parents[1] / "boards"
@@ -77,6 +80,28 @@ def test_what_cannot_be_compared_ends_in_one_message(
     assert (status, out) == (2, "")
     assert said in err
     assert "Traceback" not in err
+
+
+def test_a_pulse_is_looked_at_until_its_coil_is_fired_again_either_way() -> None:
+    folder = BOARDS / "f15_both_directions"
+    board = read_board(folder / "board.toml")
+    pattern = read_source(folder / "repaired.toml", board)
+    firing, watch = pulse_of(board, pattern, ask(board, pattern, 0, 1, None, None, None, False))
+    assert (watch.on, watch.stop) == (firing.on[0][0, 0], firing.on[4][0, 0])
+    assert watch.start < watch.on < watch.off < watch.stop
+
+
+def test_only_pulses_that_matter_are_run_again(tmp_path: Path) -> None:
+    sorter = Path(__file__).resolve().parents[2] / "netlists" / "fruit-sorter"
+    board = read_board(sorter / "board.toml")
+    pattern = read_source(sorter / "patterns" / "steady.toml", board)
+    asked = ask(board, pattern, 7, 1, None, None, None, False)
+    whole, (part, watch) = fire(board, pattern), pulse_of(board, pattern, asked)
+    assert len(part.asked) < 0.1 * len(whole.asked)
+    assert part.duration >= watch.stop
+    for channel, spans in whole.on.items():  # until then the outputs do what they do in the whole pattern
+        mine = spans[spans[:, 0] < watch.stop]
+        np.testing.assert_array_equal(mine, part.on[channel][: len(mine)])
 
 
 def test_a_folder_whose_record_is_damaged_is_refused(run: Run, fired: Path) -> None:
