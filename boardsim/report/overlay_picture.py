@@ -76,7 +76,7 @@ def overlay_figure(found: Overlaid) -> Figure:
         panels.append(figure.add_axes(box))
         top += tall + _GAP
     course = found.overlay.course
-    clock = Clock.over(float(course.t[0]), float(course.t[-1]))
+    clock = Clock.over(float(course.t[0]), max(float(d.t[-1]) for d in found.overlay.differences))
     lean_axes(panels, clock)
     for axes in panels:
         axes.axvspan(clock(course.on), clock(course.off), color=_ON, zorder=0.5, linewidth=0)
