@@ -108,6 +108,7 @@ def fire(
     from boardsim.board.reader import read_board
     from boardsim.firing.sources import read_source
     from boardsim.report.folder import make_ready
+    from boardsim.report.origin import origin_of, write_origin
     from boardsim.report.wording import plain_path
     from boardsim.scenarios.edges import check_place, write_edges
     from boardsim.scenarios.fire import fire_pattern
@@ -118,12 +119,14 @@ def fire(
         check_place(edges, (board, pattern), the_pattern)
     folder = out or Path("out") / f"{plain_path(the_board.name)}-{plain_path(the_pattern.name)}"
     make_ready(folder, (board, pattern, the_pattern.path))
+    origin = origin_of(board, pattern, library or (), (the_pattern.path,))
     if edges is not None:
         _say_new_folder(edges)
         write_edges(the_board, the_pattern, edges)
     with _working(f"{the_board.name}, {the_pattern.name}", time_limit) as (crew, progress):
         detail: Literal["edges", "clocked"] = "clocked" if clocked else "edges"
         result = fire_pattern(the_board, the_pattern, folder, strict, crew, progress, detail=detail)
+    write_origin(origin, folder)
     _present(result, folder)
 
 
@@ -396,6 +399,81 @@ def power_up(
     with _working(f"{the_board.name}, power-up", time_limit) as (crew, progress):
         result = look(the_board, folder, strict, crew, progress, seed)
     _present(result, folder)
+
+
+@app.command(
+    epilog='Example: boardsim overlay out/rush scope.csv --channel 7 --current "CH2" --current-scale "100 mV/A" --fit'
+)
+def overlay(
+    result: Annotated[Path, typer.Argument(metavar="RESULT", help="folder that boardsim fire wrote its results into")],
+    trace: Annotated[Path, typer.Argument(metavar="TRACE.csv", help="trace of an oscilloscope, exported as CSV")],
+    channel: Annotated[
+        int | None, typer.Option(metavar="N", help="which channel it shows; the one that was fired if it was only one")
+    ] = None,
+    pulse: Annotated[int, typer.Option(metavar="N", min=1, help="which of the channel's pulses it shows")] = 1,
+    time: Annotated[str, typer.Option(metavar="COLUMN", help="title or number of the column of times")] = "time",
+    current: Annotated[
+        str | None, typer.Option(metavar="COLUMN", help="title or number of the column of the coil's current")
+    ] = None,
+    voltage: Annotated[
+        str | None, typer.Option(metavar="COLUMN", help="title or number of the column of the voltage across the coil")
+    ] = None,
+    current_scale: Annotated[
+        str | None,
+        typer.Option(metavar="SCALE", help='of the current probe or shunt, such as "100 mV/A" or "0.1 ohm"'),
+    ] = None,
+    voltage_scale: Annotated[
+        float, typer.Option(metavar="FACTOR", help="what the voltage is multiplied by, such as 10 for a 10:1 probe")
+    ] = 1.0,
+    at: Annotated[
+        str | None,
+        typer.Option(
+            metavar="TIME", help="when the output turns on, in the trace's time; found in the trace if not given"
+        ),
+    ] = None,
+    corner: Annotated[
+        int | None,
+        typer.Option(metavar="N", min=1, help="which of the worst corners, counted from 1; nominal parts if not given"),
+    ] = None,
+    within: Annotated[
+        float | None, typer.Option(metavar="PERCENT", min=0.0, help="largest difference allowed, of the computed peak")
+    ] = None,
+    fit: Annotated[
+        bool, typer.Option("--fit", help="adjust the coil's resistance, inductances and core loss to the trace")
+    ] = False,
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="folder for the results; overlay-TRACE in RESULT if not given"),
+    ] = None,
+    time_limit: Annotated[float, typer.Option(metavar="SECONDS", min=1.0, help="for each run of the engine")] = 900.0,
+) -> None:
+    """Lay a scope trace over the computed pulse of a channel, and fit the coil to it.
+
+    Exit status: 0 within what is allowed, or nothing was asked, 1 not within, 2 wrong input, 3 unproven.
+    """
+    from boardsim.board.reader import read_board
+    from boardsim.firing.sources import read_source
+    from boardsim.report.folder import make_ready
+    from boardsim.report.origin import read_origin
+    from boardsim.report.overlay_report import print_overlay, write_overlay
+    from boardsim.report.wording import plain_path
+    from boardsim.scenarios import overlay as question
+    from boardsim.verdict.findings import exit_status
+    from boardsim.verdict.trace import Columns, read_trace
+
+    origin = read_origin(result)
+    the_board = read_board(origin.board, origin.libraries)
+    the_pattern = read_source(origin.pattern, the_board)
+    asked = question.ask(the_board, the_pattern, channel, pulse, corner, at, within, fit)
+    the_trace = read_trace(trace, Columns(time, current, voltage, current_scale, voltage_scale))
+    folder = out or result / f"overlay-{plain_path(trace.stem)}"
+    make_ready(folder, (origin.board, origin.pattern, the_pattern.path, trace, result / "fired.json"))
+    with _working(f"{the_board.name}, {trace.name}", time_limit) as (crew, progress):
+        found = question.overlay(the_board, the_pattern, the_trace, asked, folder, crew, progress, origin.changes())
+    picture = write_overlay(found, folder)
+    with _reader_may_leave():
+        print_overlay(found, _console(), picture, folder)
+    raise typer.Exit(0 if found.verdict is None else exit_status(found.verdict))
 
 
 @app.command(epilog="Example: boardsim schema > board.schema.json")

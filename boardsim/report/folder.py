@@ -41,6 +41,11 @@ _OURS = (
     "stroke.png",
     "volley.png",
     "closeup-*.png",
+    "fired.json",
+    "overlay.png",
+    "overlay.json",
+    "computed.csv",
+    "coil.toml",
 )
 
 
