@@ -21,7 +21,7 @@ from boardsim.board.schema import BoardFile, Chain, ChannelRange, Deratings, Lim
 from boardsim.board.shelves import Shelves, problems_in, read_shelves
 from boardsim.board.toml_file import Keys, TomlFile, read_toml
 from boardsim.errors import InputError, Problem, QuantityError
-from boardsim.parts.base import Assumption, Part, Surroundings, listed
+from boardsim.parts.base import Assumption, Part, Surroundings, kinds_of, listed
 from boardsim.parts.boost import Boost
 from boardsim.parts.bulk import Bulk
 from boardsim.parts.cable import Cable
@@ -204,7 +204,7 @@ class _Shelf:
             If there is none, or it is of another kind.
         """
         classes = {c.model_fields["kind"].default: c for c in (cls, *others)}
-        kind = " or ".join(classes)
+        kind = kinds_of(cls, *others)
         mine: Mapping[str, Any] = self.coils if cls.role == "coil" else self.local
         record: Mapping[str, Any] | None = mine.get(name)
         context = self.context

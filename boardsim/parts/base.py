@@ -230,6 +230,12 @@ def any_of(classes: Sequence[type[Part]]) -> Any:
     return Annotated[Union[tuple(classes)], Field(discriminator="kind"), WrapValidator(without_tag)]  # noqa: UP007
 
 
+def kinds_of(*classes: type[Part]) -> str:
+    """What a part of one of several classes is called: by their role where a kind bears its name, as for coils, else by their kinds."""
+    kinds = [c.model_fields["kind"].default for c in classes]
+    return classes[0].role if classes[0].role in kinds else " or ".join(kinds)
+
+
 def named_part(cls: type[Part], *others: type[Part]) -> Any:
     """A field that takes a part inline, or by its name from the board file or the library.
 
@@ -239,7 +245,7 @@ def named_part(cls: type[Part], *others: type[Part]) -> Any:
     several: Any = Union[tuple(classes.values())] if others else cls  # noqa: UP007
 
     def find(value: Any, info: ValidationInfo) -> Any:
-        kind = " or ".join(classes)
+        kind = kinds_of(cls, *others)
         if isinstance(value, str):
             if not info.context or "find" not in info.context:
                 raise PydanticCustomError("no_library", "a part by name needs a library")

@@ -51,6 +51,7 @@ _CREEP = 2e-3  # [m/s], below which dry friction fades: a slope for Newton's met
 _MM = 1e3  # positions are held in mm: near 1, as ngspice's tolerances want it
 _STIFFEST = 20.0  # damping ratio of a stop that gives back 1 or 2 %
 _ONSET = 2.5  # how much stiffer than its spring a stop is at the onset of an impact, at the most
+_STILL = 1e-6  # [m/s], slower than which a stop's damping is left out: most of a board's coils rest most of the time
 _PANELS = 400  # of Simpson's rule
 # [A/N], [A s/m]: how many amperes stand for a newton or for a speed. At picosecond steps the rounding of the charge of a farad, which
 # one ampere would need, makes milliamperes, which Newton's method cannot meet.
@@ -206,7 +207,9 @@ class Motion(Record):
         def push(d: str, u: str) -> str:
             return f"max(min({stiff!r}*{d}+{dash!r}*{u},{_ONSET * stiff!r}*{d}),0)"
 
-        near, far = push(f"(-{s!r}-{x})", f"(-{v})"), push(x, v)
+        out = f"(-{s!r}-{x})"
+        near = f"({v}*{v}<{_STILL**2!r} ? {stiff!r}*{out} : {push(out, f'(-{v})')})"
+        far = push(x, v)
         node = f"{name}_v"
         # One source for each law: ngspice works out an expression once more for each node in it. What is a straight line is none.
         found: list[Element] = [
@@ -217,7 +220,7 @@ class Motion(Record):
                 GROUND,
                 f"{_SMALL!r}*({force}-{self._steady(corner) + self.spring_rate.typ * self.travel.typ!r})",
             ),
-            CurrentLaw(f"{name}_stops", node, GROUND, f"{x}>0 ? -{far} : ({x}<-{s!r} ? {near} : 0)"),
+            CurrentLaw(f"{name}_stops", node, GROUND, f"{x}<-{s!r} ? {near} : ({x}>0 ? -{far} : 0)"),
             Capacitor(f"{name}_x", f"{name}_x", GROUND, _SMALL),
             Transfer(f"{name}_x", f"{name}_x", GROUND, node, GROUND, _SMALL * _MM),
             AtRest(node, 0.0),
@@ -230,7 +233,12 @@ class Motion(Record):
             )
         if self.friction.typ:
             found.append(
-                CurrentLaw(f"{name}_rub", node, GROUND, f"-{_SMALL * self.friction.typ!r}*tanh({v}/{_CREEP!r})")
+                CurrentLaw(
+                    f"{name}_rub",
+                    node,
+                    GROUND,
+                    f"{v}*{v}<{_STILL**2!r} ? -{_SMALL * self.friction.typ / _CREEP!r}*{v} : -{_SMALL * self.friction.typ!r}*tanh({v}/{_CREEP!r})",
+                )
             )
         if self.damping.typ:
             found.append(Resistor(f"{name}_drag", node, GROUND, 1 / (_SMALL * self.damping.typ)))

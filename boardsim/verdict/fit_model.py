@@ -14,7 +14,7 @@ import numpy as np
 
 from boardsim.errors import InputError
 from boardsim.parts.coil import Coil
-from boardsim.parts.motion import Motion, damping_of_bounce
+from boardsim.parts.motion import Motion
 from boardsim.parts.moving_magnet import MovingMagnetCoil
 from boardsim.parts.plunger import PlungerCoil
 from boardsim.quantities import in_units
@@ -192,7 +192,6 @@ def moving(
         slope = (1 / values["closed_inductance"] - rest) / way
     pull, back = constant or 0.0, constant or 0.0
     stiff = mass * (math.pi / motion.contact.typ) ** 2
-    dash = 2 * damping_of_bounce(motion.restitution.typ) * math.pi / motion.contact.typ * mass
     steady = motion.spring_preload.typ + motion.load.typ + motion.weight
     spring, rub, drag, tanh = motion.spring_rate.typ, motion.friction.typ, motion.damping.typ, math.tanh
 
@@ -201,10 +200,8 @@ def moving(
         force = pull * i - f * f * slope / 2 - steady - spring * x - drag * v
         if rub:
             force -= rub * tanh(v / _CREEP)
-        if x < 0:
-            force += max(-stiff * x - dash * v, 0.0)
-        elif x > way:
-            force -= max(stiff * (x - way) + dash * v, 0.0)
+        if x < 0 or x > way:
+            force += motion.pushed_back(x, v)
         return k * (u - r * i) - back * v, v, force / mass
 
     f, x, v = start * opened, -steady / stiff, 0.0

@@ -40,8 +40,9 @@ def current(
         flux, x, v = y
         across = (u - ohms * inner(flux, x)) * LOSS / (ohms + LOSS)
         f = flux**2 / 2 * (1 / opened - 1 / closed) / TRAVEL - preload - RATE * x
-        f += max(-stiff * x - dash * v, 0.0) if x < 0 else 0.0
-        f -= max(stiff * (x - TRAVEL) + dash * v, 0.0) if x > TRAVEL else 0.0
+        for deep, speed, sign in ((-x, -v, 1.0), (x - TRAVEL, v, -1.0)):
+            if deep > 0:
+                f += sign * max(min(stiff * deep + dash * speed, 2.5 * stiff * deep), 0.0)
         return [across, v, f / MASS]
 
     y = np.array([0.0, -preload / stiff, 0.0])
