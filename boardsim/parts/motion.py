@@ -153,6 +153,10 @@ class Motion(Record):
     def _comes_back(self) -> Motion:
         if not 0.02 <= self.restitution.typ <= 0.95:
             raise QuantityError("restitution must be between 2 % and 95 %")
+        if self.impact is not None and self.impact.min == self.impact.max:
+            raise QuantityError(
+                f"impact is the band that the energy of a blow has to lie in, and {self.impact} is none; write it such as '2 to 12 mJ'"
+            )
         back = self.rest_force
         if back <= self.friction.max:
             raise QuantityError(
