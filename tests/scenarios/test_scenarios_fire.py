@@ -89,6 +89,7 @@ def test_a_sound_board_passes_and_leaves_every_file_of_the_contract(tmp_path: Pa
         "board.cir",
         "report.txt",
         "edges.csv",
+        "fired.json",
     }
     assert "verdict: pass" in out
     assert "overview.png" in out.splitlines()[-1]
