@@ -38,6 +38,7 @@ from boardsim.quantities import (
     STIFFNESS,
     Quantity,
     assume,
+    in_units,
 )
 
 if TYPE_CHECKING:
@@ -51,6 +52,8 @@ _CREEP = 2e-3  # [m/s], below which dry friction fades: a slope for Newton's met
 _MM = 1e3  # positions are held in mm: near 1, as ngspice's tolerances want it
 _STIFFEST = 20.0  # damping ratio of a stop that gives back 1 or 2 %
 _ONSET = 2.5  # how much stiffer than its spring a stop is at the onset of an impact, at the most
+_SHORTEST_CONTACT = 1e-6  # [s], hard metal on hard metal lasts tens of these
+_MOST_SAG = 0.02  # of the travel: what is within it counts as back at its rest
 _STILL = 1e-6  # [m/s], slower than which a stop's damping is left out: most of a board's coils rest most of the time
 _PANELS = 400  # of Simpson's rule
 # [A/N], [A s/m]: how many amperes stand for a newton or for a speed. At picosecond steps the rounding of the charge of a farad, which
@@ -156,6 +159,12 @@ class Motion(Record):
         if self.impact is not None and self.impact.min == self.impact.max:
             raise QuantityError(
                 f"impact is the band that the energy of a blow has to lie in, and {self.impact} is none; write it such as '2 to 12 mJ'"
+            )
+        sag = (self.spring_preload.max + self.load.max + max(self.weight, 0.0)) / self._stiffness
+        if self.contact.typ < _SHORTEST_CONTACT or sag > _MOST_SAG * self.travel.typ:
+            raise QuantityError(
+                f"contact of {in_units(self.contact.typ, 's')} cannot be: an impact lasts {in_units(_SHORTEST_CONTACT, 's')} at least, and a stop "
+                f"as soft as that would give way by {in_units(sag, 'm')} under what presses on it at rest; up to {_MOST_SAG:.0%} of the travel may be"
             )
         back = self.rest_force
         if back <= self.friction.max:

@@ -22,6 +22,8 @@ GIVEN = {"travel": "5 mm", "mass": "20 g", "spring_preload": "1 N"}
         ({"friction": "1.2 N"}, "nothing brings it back"),
         ({"moves": "down", "mass": "200 g"}, "nothing brings it back"),
         ({"impact": "5 mJ"}, "is none; write it such as '2 to 12 mJ'"),
+        ({"contact": "100 ms"}, "would give way by"),
+        ({"contact": "1 ns"}, "an impact lasts 1.00 us at least"),
         ({"mass": "0 g"}, "mass"),
         ({"travel": "-5 mm"}, "travel"),
     ],
