@@ -135,13 +135,13 @@ def test_a_coil_that_does_not_behave_like_r_and_l_is_said_not_to_follow() -> Non
 
 
 def test_a_magnet_that_is_held_fast_is_a_coil() -> None:
-    # It does not move against a spring of 500 N, and the force constant then does not matter.
+    # It does not move against a spring of 50 N, and the force constant then does not matter.
     held = MovingMagnetCoil.model_validate(
         {
             "resistance": "24 ohm",
             "inductance": "20 mH",
             "force_constant": "2 N/A",
-            "motion": {"travel": "5 mm", "mass": "20 g", "spring_preload": "500 N", "contact": "1 ms"},
+            "motion": {"travel": "5 mm", "mass": "20 g", "spring_preload": "50 N", "contact": "300 us"},
         }
     )
     found = fit(held, lay_over(trace(R, L, noise=0.01, points=800), course()))
